@@ -1,0 +1,1 @@
+"""Plans and judges plate screens of chromatography conditions."""

@@ -1,0 +1,1 @@
+"""The plate itself: well positions and layout."""

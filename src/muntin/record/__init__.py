@@ -1,0 +1,1 @@
+"""Files of a study: what is asked, what was run, what is at fault."""

@@ -1,0 +1,1 @@
+"""Figures and pages to look at and hand over."""

@@ -1,0 +1,1 @@
+"""Probabilities, window, set point and checks on the model."""
