@@ -143,7 +143,7 @@ def draw(kind: Kind, rng: np.random.Generator, target: float = 0.8) -> DrawnProc
 
 def _draw_any(kind: Kind, rng: np.random.Generator) -> DrawnProcess:
     nu = rng.uniform(3, 8)
-    salt_at_one = np.exp(rng.uniform(np.log(80), np.log(450)))  # mM where Kp = 1 at pH 6
+    salt_at_one = float(np.exp(rng.uniform(np.log(80), np.log(450))))  # mM where Kp = 1 at pH 6
     hydrophobic = k = 0.0
     if kind == "mixed mode":
         k = rng.uniform(0.002, 0.010)
