@@ -1,1 +1,18 @@
 """Files of a study: what is asked, what was run, what is at fault."""
+
+from muntin.record.definition import Definition
+from muntin.record.faults import Fault, StudyFaults
+from muntin.record.files import write_atomic
+from muntin.record.notes import Plate
+from muntin.record.study import Counts, Study, open_study
+
+__all__ = [
+    "Counts",
+    "Definition",
+    "Fault",
+    "Plate",
+    "Study",
+    "StudyFaults",
+    "open_study",
+    "write_atomic",
+]

@@ -1,0 +1,133 @@
+"""Levels of a factor on a plate: targets, measured values, choices."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import replace
+
+import numpy as np
+
+from muntin.record.cells import numbers
+from muntin.record.factors import Factor
+from muntin.record.faults import Fault, Findings, did_you_mean, listed, number
+from muntin.record.keys import Floats, Truths
+from muntin.record.stocks import Stock, stock_values
+from muntin.record.tables import Table
+
+
+def read_choices(table: Table, factor: Factor, needed: Truths, found: Findings) -> list[str]:
+    """Return the choices in a column, one a row; rows that are not `needed` may be empty."""
+    choices = factor.choices or ()
+    by_fold = {choice.casefold(): choice for choice in choices}
+    chosen = []
+    for row, cell in enumerate(table.cells(factor.name)):
+        choice = cell if cell in choices else by_fold.get(cell.casefold(), cell)
+        chosen.append(choice)
+        if not cell and needed[row]:
+            found.faults.append(table.fault(row, factor.name, "the well needs its choice"))
+        elif cell and choice not in choices:
+            hint = did_you_mean(cell, choices)
+            found.faults.append(table.fault(row, factor.name, "is not a choice", hint=hint))
+    return chosen
+
+
+def read_levels(
+    table: Table,
+    factor: Factor,
+    needed: Truths,
+    stocks: Sequence[Stock],
+    plate: str,
+    found: Findings,
+) -> tuple[Floats, Floats]:
+    """Return the values that the model uses and the targets (raw unit), shape (rows,) each.
+
+    A value is the well's measured one, else its stock's, else the target. Only rows that are
+    `needed` must hold a value, inside the range.
+    """
+    column = f"{factor.name}_measured"
+    targets = numbers(table, factor.name, found.faults)
+    measured = numbers(table, column, found.faults)
+    of_stock = stock_values(factor, targets, stocks, plate, found)
+    _check_targets(table, factor, targets, needed, found)
+    _check_measured(table, factor, measured, needed, found)
+    _check_stocks(factor, stocks, found)
+    measured = np.where(np.isfinite(measured), measured, of_stock)
+    found.notices.extend(_off_target(table, factor, targets, measured, needed))
+    return np.where(np.isfinite(measured), measured, targets), targets
+
+
+def _check_targets(
+    table: Table, factor: Factor, targets: Floats, needed: Truths, found: Findings
+) -> None:
+    low, high, step = factor.span
+    rule = f"study.toml, factors, {factor.name}"
+    cells = table.cells(factor.name)
+    slack = 1e-6 * step
+    outside = (targets < low - slack) | (targets > high + slack)
+    for row in np.flatnonzero(needed).tolist():
+        if outside[row]:
+            found.faults.append(_outside(table, row, factor.name, factor.range_text, rule))
+        elif not cells[row]:
+            found.faults.append(table.fault(row, factor.name, "the well needs its value"))
+
+
+def _outside(table: Table, row: int, column: str, allowed: str, rule: str) -> Fault:
+    fault = table.fault(row, column, "lies outside", allowed, rule)
+    return replace(fault, value=fault.value.strip('"'))
+
+
+def _measured_range(factor: Factor) -> tuple[float, float]:
+    low, high, step = factor.span
+    floor = low - step
+    return (max(floor, np.nextafter(0, 1)) if factor.scale == "log" else floor), high + step
+
+
+def _measured_text(factor: Factor) -> str:
+    low, high, step = factor.span
+    floor = "above 0" if factor.scale == "log" and low <= step else number(low - step)
+    return f"{floor} to {number(high + step)} {factor.unit}".rstrip() + ", the range and a step"
+
+
+def _check_measured(
+    table: Table, factor: Factor, measured: Floats, needed: Truths, found: Findings
+) -> None:
+    low, high = _measured_range(factor)
+    rule = f"study.toml, factors, {factor.name}"
+    slack = 1e-9 * (high - low)
+    outside = (measured < low - slack) | (measured > high + slack)
+    for row in np.flatnonzero(needed & outside).tolist():
+        column = f"{factor.name}_measured"
+        found.faults.append(_outside(table, row, column, _measured_text(factor), rule))
+
+
+def _check_stocks(factor: Factor, stocks: Sequence[Stock], found: Findings) -> None:
+    low, high = _measured_range(factor)
+    slack = 1e-9 * (high - low)
+    for stock in stocks:
+        if stock.factor == factor.name and not low - slack <= stock.measured <= high + slack:
+            found.faults.append(
+                Fault(
+                    file=stock.file,
+                    where=stock.where,
+                    column="measured",
+                    value=number(stock.measured),
+                    problem="lies outside",
+                    allowed=_measured_text(factor),
+                    hint=f"study.toml, factors, {factor.name}",
+                )
+            )
+
+
+def _off_target(
+    table: Table, factor: Factor, targets: Floats, measured: Floats, needed: Truths
+) -> list[str]:
+    half = factor.span[2] / 2
+    off = needed & (np.abs(measured - targets) > half * (1 + 1e-9))
+    if not off.any():
+        return []
+    wells = [table.cells("well")[row] for row in np.flatnonzero(off)]
+    unit = f" {factor.unit}" if factor.unit else ""
+    return [
+        f"{table.file}: {factor.name} measured more than half a step ({number(half)}{unit}) off "
+        f"its target in {len(wells)} wells ({listed(wells)}); the measured values are used"
+    ]

@@ -1,0 +1,84 @@
+"""Limits: which combinations of factors may be run."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+
+import numpy as np
+import pandas as pd
+
+from muntin.record.arithmetic import LimitError, check_limit, holds
+from muntin.record.factors import Factor
+from muntin.record.faults import Fault, quoted
+from muntin.record.keys import Keys, Text, Truths, key
+
+
+class Limit(Keys):
+    """A rule that every new condition must meet."""
+
+    allow: Text = key(
+        says="conditions that may be run: arithmetic and comparisons over factors; and, or, not",
+        example="salt <= 900 - 150 * (elution_ph - 5)",
+    )
+
+    def holds(self, frame: pd.DataFrame) -> Truths:
+        """Return which rows of `frame` (a column a factor, raw units) may be run, shape (n,).
+
+        Raises LimitError where the text is not a limit, KeyError where a column is missing.
+        """
+        columns = {str(name): frame[name].to_numpy() for name in frame.columns}
+        return np.array(np.broadcast_to(holds(self.allow, columns), (len(frame),)), dtype=bool)
+
+
+def limit_faults(limits: Sequence[Limit], factors: Sequence[Factor]) -> list[Fault]:
+    """Return what is wrong with the limits, each alone and all together."""
+    faults = []
+    for index, limit in enumerate(limits, start=1):
+        try:
+            check_limit(limit.allow, factors)
+        except LimitError as error:
+            faults.append(_fault(index, limit, error.problem, error.hint))
+    if faults or not limits:
+        return faults
+    box = sample_conditions(factors)
+    held = np.array([limit.holds(box) for limit in limits])
+    for index, limit in enumerate(limits, start=1):
+        if not held[index - 1].any():
+            faults.append(_fault(index, limit, "is met by no condition in the factors' ranges"))
+    if not faults and not held.all(axis=0).any():
+        problem = "no condition in the factors' ranges meets all of them"
+        faults.append(Fault(file="study.toml", where="limits", problem=problem))
+    return faults
+
+
+def _fault(index: int, limit: Limit, problem: str, hint: str = "") -> Fault:
+    where = f"limits {index}, allow"
+    value = quoted(limit.allow)
+    return Fault(file="study.toml", where=where, value=value, problem=problem, hint=hint)
+
+
+def sample_conditions(factors: Sequence[Factor], most: int = 65_536) -> pd.DataFrame:
+    """Return conditions on bench steps over the whole box, a column a factor (raw units).
+
+    All of them where there are at most `most`; else corners and an additive recurrence with the
+    generalised golden ratio (Roberts 2018), which covers the box evenly.
+    """
+    levels = [factor.levels() for factor in factors]
+    counts = [len(level) for level in levels]
+    if np.prod(counts, dtype=float) <= most:
+        picks = np.indices(counts).reshape(len(counts), -1)
+    else:
+        ratio = 2.0
+        for _ in range(60):
+            ratio = (1 + ratio) ** (1 / (len(counts) + 1))
+        shift = ratio ** -np.arange(1.0, len(counts) + 1)[:, None]
+        even = (0.5 + shift * np.arange(most)) % 1.0
+        corners = np.indices([2] * len(counts)).reshape(len(counts), -1)
+        size = np.array(counts)[:, None]
+        picks = np.hstack([corners * (size - 1), np.floor(even * size).astype(int)])
+    return pd.DataFrame(
+        {
+            factor.name: level[pick]
+            for factor, level, pick in zip(factors, levels, picks, strict=True)
+        }
+    )

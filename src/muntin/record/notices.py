@@ -1,0 +1,86 @@
+"""Notices: everything left out, awaited or passed over, counted and named."""
+
+from __future__ import annotations
+
+from collections import defaultdict
+from collections.abc import Iterator, Mapping, Sequence
+
+import numpy as np
+import pandas as pd
+
+from muntin.record.definition import Definition
+from muntin.record.faults import listed, number, quoted
+
+
+def definition_notices(definition: Definition) -> Iterator[str]:
+    """Yield what is odd, but not wrong, in study.toml."""
+    for factor in definition.factors:
+        if factor.continuous:
+            _, high, step = factor.span
+            last = float(factor.levels()[-1])
+            if high - last > 1e-6 * step:
+                yield (
+                    f"study.toml, factors, {factor.name}: whole steps from low end at "
+                    f"{number(last)}, short of high, which is {number(high)}"
+                )
+
+
+def well_notices(
+    definition: Definition, wells: pd.DataFrame, void: Mapping[str, str]
+) -> Iterator[str]:
+    """Yield counts of what was left out and what is awaited.
+
+    `wells` are the test, bridge and reference wells of all plates, `void` the reasons of plates
+    that do not count.
+    """
+    for plate, why in void.items():
+        count = int((wells["plate"] == plate).sum())
+        yield f"{plate} does not count, {wells_text(count)} left out: {why}"
+    counting = wells[~wells["plate"].isin([*void])]
+    yield from _reasons(counting, "exclude", "")
+    for response in definition.responses:
+        name = response.name
+        here = counting[counting["exclude"] == ""]
+        yield from _reasons(here, f"{name}_exclude", f" of {name}")
+        states = counting[f"{name}_state"]
+        for name_of, group in counting[states == "censored"].groupby("plate", sort=False):
+            yield (
+                f"{name_of}: {_readings_text(len(group))} of {name} censored (< or >) and left out "
+                f"({listed(group['well'])})"
+            )
+        awaited = int((states == "awaited").sum())
+        if awaited:
+            yield f"{name} is awaited in {awaited} of {wells_text(len(counting))}"
+        values = counting[name].dropna()
+        if response.per_cent and len(values) and np.all(values <= 1.5):
+            yield (
+                f"{name}: no reading lies above 1.5 %; are they fractions of 1? "
+                f"(study.toml, responses, {name}, unit)"
+            )
+
+
+def _reasons(wells: pd.DataFrame, column: str, what: str) -> Iterator[str]:
+    groups: dict[tuple[str, str], list[str]] = defaultdict(list)
+    for plate, well, why in zip(wells["plate"], wells["well"], wells[column], strict=True):
+        if why:
+            groups[plate, why].append(well)
+    for (plate, why), names in groups.items():
+        left = f"{_readings_text(len(names))}{what}" if what else wells_text(len(names))
+        yield f"{plate}: {left} left out ({listed(names)}): {quoted(why)}"
+
+
+def column_notice(definition: Definition, others: Sequence[str]) -> Iterator[str]:
+    """Yield the one notice about columns that passed through unused."""
+    used = {name for shared in definition.shared_errors for name in shared.by}
+    unused = [name for name in dict.fromkeys(others) if name not in used]
+    if unused:
+        yield f"columns passed through, not used: {listed(unused)}"
+
+
+def wells_text(count: int) -> str:
+    """Return "1 well" or "n wells"."""
+    return f"{count} well" + ("s" if count != 1 else "")
+
+
+def _readings_text(count: int) -> str:
+    return f"{count} reading" + ("s" if count != 1 else "")

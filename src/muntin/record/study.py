@@ -1,0 +1,225 @@
+"""A study as read: its definition, its wells, and what was left out."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from pathlib import Path
+
+import pandas as pd
+
+from muntin.record.definition import STUDY_FILE, Definition, definition_faults, sound_part
+from muntin.record.faults import Fault, Findings, StudyFaults
+from muntin.record.notes import Plate, read_notes
+from muntin.record.notices import column_notice, definition_notices, well_notices
+from muntin.record.plates import PlateRows, open_plate, outside_limits, read_plate
+from muntin.record.readings import INFORMING, Reading
+from muntin.record.results import join_results
+from muntin.record.stocks import read_stocks
+from muntin.record.tables import Table, table_files
+from muntin.record.toml_files import parse, read_toml
+from muntin.record.wells_table import (
+    late_faults,
+    no_reading_fault,
+    shared_column_faults,
+    wells_table,
+)
+
+
+@dataclass(frozen=True, kw_only=True)
+class Counts:
+    """What a study holds; wells and readings are those of test, bridge and reference wells.
+
+    `plates` counts all plates and `void` those that do not count; `wells` and what follows are of
+    the others. `excluded_wells` are left out whole. `read`, `awaited`, `excluded` and `censored`
+    map each response to its number of wells; for each response they add up to `wells`.
+    """
+
+    plates: int
+    void: int
+    wells: int
+    controls: int
+    excluded_wells: int
+    read: dict[str, int]
+    awaited: dict[str, int]
+    excluded: dict[str, int]
+    censored: dict[str, int]
+
+
+@dataclass(frozen=True, kw_only=True, eq=False)
+class Study:
+    """One study, frozen; made by `open_study`.
+
+    `wells` has a row a well of every plate, void ones too: plate, well, role; each factor (the
+    value the model uses, raw unit) and its target; each response in the user's unit with its _sd,
+    _state and _exclude; exclude; then the columns that passed through.
+    """
+
+    folder: Path
+    definition: Definition
+    wells: pd.DataFrame
+    plates: tuple[Plate, ...]
+    notices: tuple[str, ...]
+
+    @property
+    def void(self) -> tuple[Plate, ...]:
+        """Plates that do not count."""
+        return tuple(plate for plate in self.plates if plate.void)
+
+    def informing(self) -> pd.DataFrame:
+        """Return the test, bridge and reference wells of the plates that count."""
+        void = [plate.name for plate in self.void]
+        keep = self.wells["role"].isin(INFORMING) & ~self.wells["plate"].isin(void)
+        return self.wells[keep]
+
+    def readings(self, name: str) -> pd.DataFrame:
+        """Return the readings of one response that inform the model.
+
+        Columns: plate, well, role; the factors (raw unit); the columns that shared errors name,
+        and the target of each factor that they name; y and sd in the natural unit (per cent of a
+        fraction divided by 100), sd NaN where none is given; row, the row in `wells`. Raises
+        KeyError for an unknown response.
+        """
+        response = {response.name: response for response in self.definition.responses}[name]
+        wells = self.informing()
+        wells = wells[wells[f"{name}_state"] == "read"]
+        factors = self.definition.factor_names
+        shared = [by for error in self.definition.shared_errors for by in error.by]
+        targets = [f"{by}_target" for by in shared if by in factors]
+        columns = dict.fromkeys(["plate", "well", "role", *factors, *shared, *targets])
+        unit = response.unit_size
+        return wells[list(columns)].assign(
+            y=wells[name] / unit, sd=wells[f"{name}_sd"] / unit, row=wells.index
+        )
+
+    def counts(self) -> Counts:
+        """Count plates, wells and readings."""
+        wells = self.informing()
+        void = [plate.name for plate in self.void]
+        names = [response.name for response in self.definition.responses]
+
+        def count(state: str) -> dict[str, int]:
+            return {name: int((wells[f"{name}_state"] == state).sum()) for name in names}
+
+        return Counts(
+            plates=len(self.plates),
+            void=len(void),
+            wells=len(wells),
+            controls=int((~self.wells["plate"].isin(void)).sum()) - len(wells),
+            excluded_wells=int((wells["exclude"] != "").sum()),
+            read=count("read"),
+            awaited=count("awaited"),
+            excluded=count("excluded"),
+            censored=count("censored"),
+        )
+
+
+def open_study(path: str | Path) -> Study:
+    """Read a study folder; nothing is written.
+
+    Raises StudyFaults with every fault of its files.
+    """
+    folder = Path(path)
+    _check_folder(folder)
+    found = Findings()
+    definition = _read_definition(folder, found)
+    paths = dict(table_files(folder / "plates", found))
+    files = {name: f"plates/{path.name}" for name, path in paths.items()}
+    plates = read_notes(folder, files, found)
+    tables = {
+        name: open_plate(path, files[name], definition, found) for name, path in paths.items()
+    }
+    if definition is None:
+        raise StudyFaults(found.faults)
+    wells = _read_wells(folder, definition, plates, tables, found)
+    if found.faults:
+        raise StudyFaults(found.faults)
+    notices = tuple(found.notices)
+    counted = tuple(plates.values())
+    return Study(folder=folder, definition=definition, wells=wells, plates=counted, notices=notices)
+
+
+def _check_folder(folder: Path) -> None:
+    problem, hint = "", ""
+    if not folder.exists():
+        problem, hint = "there is no such folder", "muntin new DIR makes one"
+    elif not folder.is_dir():
+        problem, hint = "is a file, not the folder of a study", "name the folder that holds it"
+    elif not (folder / STUDY_FILE).is_file():
+        problem, hint = f"holds no {STUDY_FILE}", "muntin new DIR writes one"
+    if problem:
+        raise StudyFaults([Fault(file=str(folder), problem=problem, hint=hint)])
+
+
+def _read_definition(folder: Path, found: Findings) -> Definition | None:
+    data = read_toml(folder / STUDY_FILE, STUDY_FILE, found.faults)
+    definition = None if data is None else parse(Definition, data, STUDY_FILE, found.faults)
+    if definition is None:
+        return None
+    faults = definition_faults(definition)
+    found.faults.extend(faults)
+    return sound_part(definition) if faults else definition
+
+
+def _read_wells(
+    folder: Path,
+    definition: Definition,
+    plates: dict[str, Plate],
+    tables: dict[str, Table | None],
+    found: Findings,
+) -> pd.DataFrame:
+    stocks = read_stocks(folder, definition.factors, [*tables], found)
+    parts = {
+        name: read_plate(name, table, definition, stocks.get(name, ()), found)
+        for name, table in tables.items()
+        if table is not None
+    }
+    rows = [*parts.values()]
+    readings = _read_results(folder, definition, rows, tables, found)
+    frame = wells_table(definition, rows, readings)
+    void = {name: plate.void for name, plate in plates.items() if plate.void}
+    needed = {name: part.needed for name, part in parts.items() if name not in void}
+    found.faults.extend(late_faults(definition, frame, readings))
+    found.faults.extend(shared_column_faults(definition, tables, needed))
+    if not found.faults:
+        _take_stock(definition, frame, parts, void, found)
+    return frame
+
+
+def _read_results(
+    folder: Path,
+    definition: Definition,
+    rows: list[PlateRows],
+    tables: dict[str, Table | None],
+    found: Findings,
+) -> dict[str, list[Reading]]:
+    readings = {
+        response.name: [reading for part in rows for reading in part.readings[response.name]]
+        for response in definition.responses
+    }
+    places = [
+        place
+        for part in rows
+        for place in zip(part.columns["plate"], part.columns["well"], strict=True)
+    ]
+    wells = {place: row for row, place in enumerate(places)}
+    unread = [name for name, table in tables.items() if table is None]
+    return join_results(folder, definition, wells, unread, readings, found)
+
+
+def _take_stock(
+    definition: Definition,
+    frame: pd.DataFrame,
+    parts: dict[str, PlateRows],
+    void: dict[str, str],
+    found: Findings,
+) -> None:
+    informing = frame[frame["role"].isin(INFORMING)]
+    fault = no_reading_fault(definition, informing[~informing["plate"].isin([*void])])
+    if fault is not None:
+        found.faults.append(fault)
+    found.notices.extend(definition_notices(definition))
+    found.notices.extend(well_notices(definition, informing, void))
+    for name, part in parts.items():
+        found.notices.extend(outside_limits(name, definition, part))
+    others = [name for part in parts.values() for name in part.others]
+    found.notices.extend(column_notice(definition, others))

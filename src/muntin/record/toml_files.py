@@ -1,0 +1,178 @@
+"""TOML files read into tables of keys, with every fault named by table and key."""
+
+from __future__ import annotations
+
+import re
+import tomllib
+import typing
+from collections.abc import Iterator, Mapping
+from pathlib import Path
+from typing import Any, TypeVar
+
+from pydantic import BaseModel, ValidationError
+
+from muntin.record.faults import Fault, did_you_mean, number, quoted
+from muntin.record.files import NotTextError, decoded
+
+Model = TypeVar("Model", bound=BaseModel)
+_PLACE = re.compile(r" \(at (?:line (\d+), column \d+|(end of document))\)$")
+_PROBLEMS = {
+    "float_type": "is not a number",
+    "float_parsing": "is not a number",
+    "finite_number": "is not a finite number",
+    "int_type": "is not a whole number",
+    "int_from_float": "is not a whole number",
+    "string_type": "is not text; put it in quotes",
+    "tuple_type": "is not a list",
+    "dict_type": "is not a table",
+    "model_type": "is not a table",
+    "too_short": "has too few entries",
+    "too_long": "has too many entries",
+    "date_type": "is not a date such as 2026-05-04",
+    "date_parsing": "is not a date such as 2026-05-04",
+    "date_from_datetime_parsing": "is not a date such as 2026-05-04",
+    "date_from_datetime_inexact": "is not a date such as 2026-05-04",
+}
+_BOUNDS = {
+    "greater_than": ("must lie above", "gt"),
+    "greater_than_equal": ("must be at least", "ge"),
+    "less_than": ("must lie below", "lt"),
+    "less_than_equal": ("must be at most", "le"),
+}
+
+
+def read_toml(path: Path, file: str, faults: list[Fault]) -> dict[str, Any] | None:
+    """Return the content of a TOML file, or None and a fault; `file` is the path in messages."""
+    try:
+        return tomllib.loads(decoded(path.read_bytes()))
+    except NotTextError:
+        faults.append(Fault(file=file, problem="is not a text file"))
+    except OSError as error:
+        faults.append(Fault(file=file, problem="cannot be read", hint=error.strerror or ""))
+    except tomllib.TOMLDecodeError as error:
+        place = _PLACE.search(str(error))
+        where = "" if place is None else f"line {place[1]}" if place[1] else "last line"
+        said = _PLACE.sub("", str(error))
+        problem = f"is not valid TOML: {said[:1].lower()}{said[1:]}"
+        faults.append(Fault(file=file, where=where, problem=problem))
+    except RecursionError:
+        faults.append(Fault(file=file, problem="is nested too deeply"))
+    return None
+
+
+def parse(model: type[Model], data: dict[str, Any], file: str, faults: list[Fault]) -> Model | None:
+    """Return the record that `data` describes; every fault of its keys joins `faults`.
+
+    Unknown keys are left out after they are named, so that the rest can still be judged. None
+    where a known key is missing or holds something else than it may.
+    """
+    known = _known_keys(model, data, (), file, faults)
+    try:
+        return model.model_validate(known)
+    except ValidationError as error:
+        faults.extend(_fault(file, model, known, detail) for detail in error.errors())
+    return None
+
+
+def _known_keys(
+    model: type[BaseModel],
+    data: dict[str, Any],
+    at: tuple[str, ...],
+    file: str,
+    faults: list[Fault],
+) -> dict[str, Any]:
+    fields = {info.alias or name: info.annotation for name, info in model.model_fields.items()}
+    kept = {}
+    for name, value in data.items():
+        if name not in fields:
+            faults.append(
+                Fault(
+                    file=file,
+                    where=", ".join(at),
+                    value=quoted(name),
+                    problem="is not a key" + (f" of {_heading(at)}" if at else ""),
+                    hint=did_you_mean(name, [*fields]),
+                )
+            )
+            continue
+        inner = _inner_model(fields[name])
+        if inner is not None and isinstance(value, dict):
+            value = _known_keys(inner, value, (*at, name), file, faults)
+        elif inner is not None and isinstance(value, list):
+            value = [
+                _known_keys(inner, item, (*at, _item(name, index, item)), file, faults)
+                if isinstance(item, dict)
+                else item
+                for index, item in enumerate(value)
+            ]
+        kept[name] = value
+    return kept
+
+
+def _inner_model(annotation: Any) -> type[BaseModel] | None:
+    if isinstance(annotation, type) and issubclass(annotation, BaseModel):
+        return annotation
+    inner = (_inner_model(part) for part in typing.get_args(annotation))
+    return next((model for model in inner if model is not None), None)
+
+
+def _item(table: str, index: int, item: object) -> str:
+    name = item.get("name") if isinstance(item, Mapping) else None
+    return f"{table}, {name}" if isinstance(name, str) and name.strip() else f"{table} {index + 1}"
+
+
+def _heading(at: tuple[str, ...]) -> str:
+    """Return the table's heading as it is written: [[factors]], [study], [responses.priors]."""
+    first = re.split(r"[ ,]", at[0])[0]
+    heading = ".".join([first, *at[1:]])
+    return f"[[{heading}]]" if first != at[0] and len(at) == 1 else f"[{heading}]"
+
+
+def _places(loc: tuple[int | str, ...], data: Any) -> Iterator[str]:
+    steps = [*loc]
+    while steps:
+        name = steps.pop(0)
+        data = data.get(name) if isinstance(data, dict) else None
+        if steps and isinstance(steps[0], int) and isinstance(data, list):
+            index = steps.pop(0)
+            data = data[int(index)]
+            yield _item(str(name), int(index), data)
+        else:
+            yield str(name)
+
+
+def _fault(file: str, model: type[BaseModel], data: dict[str, Any], detail: Any) -> Fault:
+    *table, last = _places(detail["loc"], data)
+    if detail["type"] == "missing":
+        where = ", ".join(table)
+        if not table:
+            return Fault(file=file, problem=f"table [{last}] is missing")
+        says = _description(model, detail["loc"])
+        return Fault(file=file, where=where, value=quoted(last), problem="is missing", hint=says)
+    problem, allowed = _said(detail)
+    shown = quoted(detail["input"]) if isinstance(detail["input"], str | int | float) else ""
+    return Fault(
+        file=file, where=", ".join([*table, last]), value=shown, problem=problem, allowed=allowed
+    )
+
+
+def _said(detail: Any) -> tuple[str, str]:
+    kind, context = detail["type"], detail.get("ctx", {})
+    if kind == "value_error":
+        return str(context["error"]), ""
+    if kind == "literal_error":
+        return "is not", str(context["expected"]).replace("'", '"')
+    if kind in _BOUNDS:
+        problem, bound = _BOUNDS[kind]
+        return problem, number(float(context[bound]))
+    return _PROBLEMS.get(kind, str(detail["msg"])), ""
+
+
+def _description(model: type[BaseModel], loc: tuple[int | str, ...]) -> str:
+    current: type[BaseModel] | None = model
+    says = ""
+    for name in loc:
+        if isinstance(name, str) and current is not None and name in current.model_fields:
+            info = current.model_fields[name]
+            says, current = info.description or "", _inner_model(info.annotation)
+    return says
