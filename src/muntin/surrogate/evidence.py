@@ -1,0 +1,143 @@
+"""Evidence of hyperparameters: the approximation at given nodes and its gradient."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import Protocol
+
+import numpy as np
+from numpy.typing import NDArray
+
+from muntin.surrogate.cells import Cells
+from muntin.surrogate.coding import Columns
+from muntin.surrogate.layout import Layout
+from muntin.surrogate.links import Link
+from muntin.surrogate.priors import LogNormal, Priors
+from muntin.surrogate.propagation import Approximation, Rows, approximate
+from muntin.surrogate.tilted import CellLikelihood
+
+Array = NDArray[np.float64]
+
+
+class Family(Protocol):
+    """A prior of the latent surface: what the engine needs to know of it."""
+
+    @property
+    def columns(self) -> Columns:
+        """The coded columns."""
+
+    @property
+    def priors(self) -> Priors:
+        """The priors of the response."""
+
+    @property
+    def name(self) -> str:
+        """The surrogate's name."""
+
+    def own(self) -> tuple[tuple[str, LogNormal], ...]:
+        """Names and priors of the family's hyperparameters."""
+
+    def root(self, layout: Layout, theta: Array, cells: Cells) -> Array:
+        """L (S, U, R) with L L' the prior covariance of the latent values."""
+
+    def gradient(self, layout: Layout, theta: Array, cells: Cells, root: Array, E: Array) -> Array:
+        """d log Z / d theta (S, .) for the inside errors and the family's hyperparameters."""
+
+
+@dataclass(frozen=True)
+class Model:
+    """One response's cells under one family, with the link on which the readings lie."""
+
+    family: Family
+    cells: Cells
+    link: Link
+
+    @property
+    def layout(self) -> Layout:
+        """Order and priors of the hyperparameters."""
+        p, inside, scale = self.family.priors, self.cells.inside.shape[1], len(self.cells.scale)
+        named = [
+            ("noise_sd", p.noise_sd),
+            *((f"inside_error[{j}]", p.inside_error) for j in range(inside)),
+            *((f"scale_error[{j}]", p.scale_error) for j in range(scale)),
+            *self.family.own(),
+        ]
+        names, priors = zip(*named, strict=True)
+        return Layout(inside=inside, scale=scale, names=names, priors=priors)
+
+    def likelihood(self, theta: Array) -> CellLikelihood:
+        """The likelihood of the cells at log hyperparameters theta (S, H)."""
+        cells, layout = self.cells, self.layout
+        scale = np.sqrt((layout.scale_sd(theta) ** 2).sum(1, keepdims=True))
+        return CellLikelihood(
+            link=self.link,
+            offset=self.family.priors.mean,
+            mean=cells.mean,
+            count=cells.count,
+            within=cells.within,
+            variance=cells.variance,
+            noise=layout.noise(theta)[:, None] ** 2,
+            scale=scale,
+        )
+
+    def rows(self, theta: Array) -> tuple[Rows, Array]:
+        """Whitened rows of the cells, and the family's root (S, U, R0) they rest on."""
+        cells, layout = self.cells, self.layout
+        root = self.family.root(layout, theta, cells)
+        u = root[:, cells.latent]
+        if not cells.scale:
+            return Rows(u, None), root
+        sds = layout.scale_sd(theta)
+        share = sds / np.sqrt((sds**2).sum(1, keepdims=True))
+        blocks = [
+            share[:, j, None, None] * np.eye(groups)[cells.scale[j]]
+            for j, groups in enumerate(cells.scale_groups)
+        ]
+        s = np.concatenate([np.zeros_like(u), *blocks], axis=2)
+        u = np.concatenate([u, np.zeros((*u.shape[:2], s.shape[2] - u.shape[2]))], axis=2)
+        return Rows(u, s), root
+
+
+@dataclass(frozen=True)
+class Evidence:
+    """The approximation at S nodes theta (S, H), the family's root, and the log evidence (S,)."""
+
+    theta: Array
+    root: Array
+    approximation: Approximation
+
+    @property
+    def log(self) -> Array:
+        """Log evidence (S,)."""
+        return self.approximation.log_evidence
+
+
+def evaluate(model: Model, theta: Array, near: Evidence | None = None) -> Evidence:
+    """Evidence of the model at log hyperparameters theta (S, H); sites start from the first node
+    of `near`, sharpened or blunted as the noise asks.
+    """
+    rows, root = model.rows(theta)
+    start = None
+    if near is not None:
+        first = near.approximation.sites.nodes(np.zeros(len(theta), dtype=np.intp))
+        start = first.times(np.exp(2.0 * (near.theta[:1, :1] - theta[:, :1])))
+    return Evidence(theta, root, approximate(rows, model.likelihood(theta), start))
+
+
+def slope(model: Model, evidence: Evidence) -> Array:
+    """Gradient (S, H) of the log evidence in theta, at the fixed point of the sites."""
+    layout, approx = model.layout, evidence.approximation
+    second = approx.mean[:, :, None] * approx.mean[:, None, :] + approx.V
+    E = second - np.eye(second.shape[-1])
+    own = evidence.root.shape[2]
+    family = model.family.gradient(
+        layout, evidence.theta, model.cells, evidence.root, E[:, :own, :own]
+    )
+    noise = approx.tilted.noise_slope.sum(1, keepdims=True)
+    diagonal = np.diagonal(E, axis1=1, axis2=2)
+    scale, begin = [], own
+    for groups in model.cells.scale_groups:
+        scale.append(diagonal[:, begin : begin + groups].sum(1, keepdims=True))
+        begin += groups
+    inside = layout.inside
+    return np.concatenate([noise, family[:, :inside], *scale, family[:, inside:]], axis=1)

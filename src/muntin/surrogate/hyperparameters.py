@@ -1,0 +1,146 @@
+"""Integration over hyperparameters by importance sampling at their mode.
+
+The proposal is a multivariate t at the mode with the curvature found there, on scrambled Sobol'
+points; where its weights are poor it is refitted to them and more nodes are drawn, all rounds
+weighted by their mixture (adaptive multiple importance sampling, Cornuet et al. 2012).
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from muntin.surrogate.evidence import Evidence, Model, evaluate, slope
+from muntin.surrogate.pareto import tail_shape
+
+Array = NDArray[np.float64]
+_DEGREES = 6.0
+_BOUND = 4.0
+_ROUNDS = 5
+_STEP = 0.05
+
+
+@dataclass(frozen=True)
+class Proposal:
+    """Multivariate t with _DEGREES degrees of freedom: centre (H,) and root A (H, H), eta space."""
+
+    centre: Array
+    root: Array
+
+    def draw(self, points: Array) -> Array:
+        """Points (n, H + 1) of the unit cube to draws eta (n, H)."""
+        from scipy.special import chdtri, ndtri
+
+        inside = np.clip(points, 1e-9, 1.0 - 1e-9)
+        chi2 = chdtri(_DEGREES, inside[:, -1:])
+        return self.centre + ndtri(inside[:, :-1]) * np.sqrt(_DEGREES / chi2) @ self.root.T
+
+    def log_density(self, eta: Array) -> Array:
+        """Log density (n,) at eta (n, H)."""
+        from scipy.special import gammaln
+
+        h = len(self.centre)
+        z = np.linalg.solve(self.root, (eta - self.centre).T)
+        norm = (
+            gammaln((_DEGREES + h) / 2) - gammaln(_DEGREES / 2) - h / 2 * np.log(_DEGREES * np.pi)
+        )
+        log_det = np.log(np.abs(np.diagonal(self.root))).sum()
+        return norm - log_det - (_DEGREES + h) / 2 * np.log1p((z * z).sum(0) / _DEGREES)
+
+
+@dataclass(frozen=True)
+class Posterior:
+    """Hyperparameter nodes theta (S, H), normalised log weights (S,), the evidence of each round's
+    nodes joined; log marginal likelihood; effective sample size and Pareto k-hat of the weights.
+    """
+
+    log_weights: Array
+    rounds: tuple[Evidence, ...]
+    log_marginal: float
+    ess: float
+    k_hat: float
+
+
+def log_prior(eta: Array) -> Array:
+    """Log prior (S,) of standardised hyperparameters eta (S, H)."""
+    return -0.5 * (eta**2).sum(1) - 0.5 * eta.shape[1] * np.log(2.0 * np.pi)
+
+
+def mode(model: Model) -> tuple[Array, Evidence]:
+    """Posterior mode eta (H,), and the evidence there."""
+    from scipy.optimize import minimize
+
+    layout = model.layout
+    best: list[tuple[float, Evidence]] = []
+
+    def objective(eta: Array) -> tuple[float, Array]:
+        near = best[0][1] if best else None
+        evidence = evaluate(model, layout.theta(eta[None]), near)
+        value = float(evidence.log[0] - 0.5 * eta @ eta)
+        if not best or value > best[0][0]:
+            best[:] = [(value, evidence)]
+        return -value, eta - slope(model, evidence)[0] * layout.log_sd
+
+    h = len(layout)
+    found = minimize(
+        objective,
+        np.zeros(h),
+        jac=True,
+        method="L-BFGS-B",
+        bounds=[(-_BOUND, _BOUND)] * h,
+        options={"maxiter": 60, "ftol": 1e-7, "gtol": 1e-2},
+    )
+    return found.x, evaluate(model, layout.theta(found.x[None]), best[0][1])
+
+
+def _at_mode(model: Model, eta: Array, top: Evidence) -> Proposal:
+    """The proposal whose root follows from the curvature of the log posterior at its mode."""
+    layout, h = model.layout, len(eta)
+    around = np.concatenate([eta + _STEP * np.eye(h), eta - _STEP * np.eye(h)])
+    evidence = evaluate(model, layout.theta(around), top)
+    gradients = slope(model, evidence) * layout.log_sd - around
+    hessian = -(gradients[:h] - gradients[h:]) / (2.0 * _STEP)
+    values, vectors = np.linalg.eigh((hessian + hessian.T) / 2.0)
+    # No direction is wider than the prior, nor so narrow that rounding decides.
+    sd = 1.0 / np.sqrt(np.clip(values, 0.7, 1e8))
+    return Proposal(eta, np.linalg.cholesky(vectors * sd**2 @ vectors.T))
+
+
+def _refitted(eta: Array, weights: Array, last: Proposal) -> Proposal:
+    """A proposal with the weighted mean and covariance, held to the last one's by its weight."""
+    centre = weights @ eta
+    away = eta - centre
+    ess = 1.0 / (weights**2).sum()
+    trust = ess / (ess + 2.0 * eta.shape[1])
+    covariance = trust * (away.T * weights) @ away + (1.0 - trust) * last.root @ last.root.T
+    return Proposal(centre, np.linalg.cholesky(covariance))
+
+
+def integrate(model: Model, seed: int, nodes: int = 64) -> Posterior:
+    """The posterior of the hyperparameters as weighted nodes; `nodes` a round, a power of two."""
+    from scipy.stats.qmc import Sobol
+
+    layout = model.layout
+    eta0, top = mode(model)
+    proposals = [_at_mode(model, eta0, top)]
+    etas: list[Array] = []
+    rounds: list[Evidence] = []
+    for number in range(_ROUNDS):
+        sobol = Sobol(len(layout) + 1, rng=np.random.default_rng((seed, number)))
+        eta = np.clip(proposals[-1].draw(sobol.random(nodes)), -2 * _BOUND, 2 * _BOUND)
+        rounds.append(evaluate(model, layout.theta(eta), top))
+        etas.append(eta)
+        every = np.concatenate(etas)
+        log_q = np.logaddexp.reduce([p.log_density(every) for p in proposals]) - np.log(number + 1)
+        log_w = np.concatenate([r.log for r in rounds]) + log_prior(every) - log_q
+        log_sum = float(np.logaddexp.reduce(log_w))
+        weights = np.exp(log_w - log_sum)
+        ess, k_hat = 1.0 / (weights**2).sum(), tail_shape(log_w)
+        if ess >= 0.4 * nodes and k_hat < 0.7:
+            break
+        proposals.append(_refitted(every, weights, proposals[-1]))
+    return Posterior(
+        log_w - log_sum, tuple(rounds), log_sum - np.log(len(log_w)), float(ess), k_hat
+    )

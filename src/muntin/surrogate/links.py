@@ -1,0 +1,42 @@
+"""Links between a latent value and the process mean that a well reads."""
+
+from __future__ import annotations
+
+from typing import Literal
+
+import numpy as np
+from numpy.typing import ArrayLike, NDArray
+
+Array = NDArray[np.float64]
+Link = Literal["identity", "logit", "log"]
+
+
+def mean_of(link: Link, latent: ArrayLike) -> Array:
+    """Process mean g(f) on the raw scale of the response, elementwise."""
+    f = np.asarray(latent, dtype=float)
+    if link == "logit":
+        from scipy.special import expit
+
+        return np.asarray(expit(f))
+    return np.exp(f) if link == "log" else f
+
+
+def latent_of(link: Link, value: ArrayLike) -> Array:
+    """Latent value at which the process mean is `value`; infinite beyond the range of g."""
+    y = np.asarray(value, dtype=float)
+    if link == "identity":
+        return y
+    with np.errstate(divide="ignore"):
+        if link == "log":
+            return np.log(np.maximum(y, 0.0))
+        inside = np.clip(y, 0.0, 1.0)
+        return np.log(inside) - np.log1p(-inside)
+
+
+def slope_of(link: Link, latent: ArrayLike) -> Array:
+    """Derivative g'(f) of the process mean, elementwise."""
+    f = np.asarray(latent, dtype=float)
+    if link == "logit":
+        g = mean_of(link, f)
+        return g * (1.0 - g)
+    return np.exp(f) if link == "log" else np.ones_like(f)
