@@ -5,6 +5,7 @@ from muntin.record.faults import Fault, StudyFaults
 from muntin.record.files import write_atomic
 from muntin.record.notes import Plate
 from muntin.record.study import Counts, Study, open_study
+from muntin.record.template import new_study
 
 __all__ = [
     "Counts",
@@ -13,6 +14,7 @@ __all__ = [
     "Plate",
     "Study",
     "StudyFaults",
+    "new_study",
     "open_study",
     "write_atomic",
 ]

@@ -40,20 +40,24 @@ _ONLY_NUMBERS = (
 class Factor(Keys):
     """One thing that is varied: a number between low and high, or one of several choices."""
 
-    name: Name = key(says="column name in the plate tables: letters, digits and _", example="salt")
-    label: Text = key(
-        "", says="name shown in tables and figures; the name where absent", example="Salt"
+    name: Name = key(
+        says="column name in the plate tables: letters, digits and _", example="elution_ph"
     )
-    unit: Text = key("", says="unit shown beside values", example="mM")
-    low: Number | None = key(None, says="lowest value of the range", unit="the factor's", example=0)
+    label: Text = key(
+        "", says="name shown in tables and figures; the name where absent", example="Elution pH"
+    )
+    unit: Text = key("", says="unit shown beside values", example="")
+    low: Number | None = key(
+        None, says="lowest value of the range", unit="the factor's", example=4.5
+    )
     high: Number | None = key(
-        None, says="highest value of the range", unit="the factor's", example=500
+        None, says="highest value of the range", unit="the factor's", example=7.5
     )
     step: Number | None = key(
         None,
         says="smallest step the bench can make; proposals lie on steps counted from low",
         unit="the factor's",
-        example=10,
+        example=0.1,
         gt=0,
     )
     scale: Literal["linear", "log"] = key(
@@ -68,25 +72,25 @@ class Factor(Keys):
         None,
         says='the process keeps it within plus or minus this; "5 %" is a share of the set value',
         unit="the factor's, or %",
-        example=10,
+        example=0.1,
     )
     set_sd: AmountKey | None = key(
         None,
         says='the bench sets it with this standard deviation; "2 %" is a share of the set value',
         unit="the factor's, or %",
-        example="2 %",
+        example=0.03,
     )
     per_plate: Whole | None = key(
         None, says="at most so many distinct levels on one plate (prepared stocks)", example=6, ge=1
     )
     plan_low: Number | None = key(
-        None, says="new plans go no lower; wells already run stay", unit="the factor's", example=50
+        None, says="new plans go no lower; wells already run stay", unit="the factor's", example=5.0
     )
     plan_high: Number | None = key(
         None,
         says="new plans go no higher; wells already run stay",
         unit="the factor's",
-        example=400,
+        example=7.0,
     )
     plan_choices: tuple[Text, ...] | None = key(
         None, says="new plans use only these choices; wells already run stay", example=["A"]
@@ -95,13 +99,13 @@ class Factor(Keys):
         None,
         says="value on earlier plates, whose tables lack the column of a factor added later",
         unit="the factor's",
-        example=100,
+        example=5.5,
     )
 
     @model_validator(mode="before")
     @classmethod
     def _label_is_name(cls, data: Any) -> Any:
-        if isinstance(data, dict) and "label" not in data and "name" in data:
+        if isinstance(data, dict) and not data.get("label") and "name" in data:
             return {**data, "label": data["name"]}
         return data
 

@@ -44,7 +44,7 @@ class Response(Keys):
     unit: Text = key(
         "",
         says='unit shown beside values; "%" for a fraction means readings and targets in per cent',
-        example="%",
+        example="",
     )
     kind: Literal["fraction", "positive", "real"] = key(
         says='"fraction" (levels off at 0 and 1), "positive" (relative noise) or "real"',
@@ -72,7 +72,7 @@ class Response(Keys):
     @model_validator(mode="before")
     @classmethod
     def _label_is_name(cls, data: Any) -> Any:
-        if isinstance(data, dict) and "label" not in data and "name" in data:
+        if isinstance(data, dict) and not data.get("label") and "name" in data:
             return {**data, "label": data["name"]}
         return data
 
