@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import Protocol
 
@@ -13,7 +14,7 @@ from muntin.surrogate.coding import Columns
 from muntin.surrogate.layout import Layout
 from muntin.surrogate.links import Link
 from muntin.surrogate.priors import LogNormal, Priors
-from muntin.surrogate.propagation import Approximation, Rows, approximate
+from muntin.surrogate.propagation import Approximation, Rows, approximate, join
 from muntin.surrogate.tilted import CellLikelihood
 
 Array = NDArray[np.float64]
@@ -110,6 +111,15 @@ class Evidence:
     def log(self) -> Array:
         """Log evidence (S,)."""
         return self.approximation.log_evidence
+
+
+def joined(rounds: Sequence[Evidence]) -> Evidence:
+    """The evidence of several rounds of nodes as one."""
+    return Evidence(
+        np.concatenate([r.theta for r in rounds]),
+        np.concatenate([r.root for r in rounds]),
+        join([r.approximation for r in rounds]),
+    )
 
 
 def evaluate(model: Model, theta: Array, near: Evidence | None = None) -> Evidence:

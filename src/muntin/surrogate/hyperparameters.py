@@ -12,7 +12,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from muntin.surrogate.evidence import Evidence, Model, evaluate, slope
+from muntin.surrogate.evidence import Evidence, Model, evaluate, joined, slope
 from muntin.surrogate.pareto import tail_shape
 
 Array = NDArray[np.float64]
@@ -52,12 +52,12 @@ class Proposal:
 
 @dataclass(frozen=True)
 class Posterior:
-    """Hyperparameter nodes theta (S, H), normalised log weights (S,), the evidence of each round's
-    nodes joined; log marginal likelihood; effective sample size and Pareto k-hat of the weights.
+    """The evidence of S hyperparameter nodes and their normalised log weights (S,); log marginal
+    likelihood; effective sample size and Pareto k-hat of the weights.
     """
 
+    evidence: Evidence
     log_weights: Array
-    rounds: tuple[Evidence, ...]
     log_marginal: float
     ess: float
     k_hat: float
@@ -141,6 +141,6 @@ def integrate(model: Model, seed: int, nodes: int = 64) -> Posterior:
         if ess >= 0.4 * nodes and k_hat < 0.7:
             break
         proposals.append(_refitted(every, weights, proposals[-1]))
-    return Posterior(
-        log_w - log_sum, tuple(rounds), log_sum - np.log(len(log_w)), float(ess), k_hat
-    )
+    every_round = joined(rounds)
+    marginal = log_sum - float(np.log(len(log_w)))
+    return Posterior(every_round, log_w - log_sum, marginal, float(ess), k_hat)

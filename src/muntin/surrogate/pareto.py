@@ -24,8 +24,9 @@ def tail_shape(log_weights: Array) -> float:
 
 
 def generalised_pareto_shape(excess: Array) -> float:
-    """Shape k of a generalised Pareto law (Zhang & Stephens 2009), with the weak prior
-    k ~ N(0.5, .) worth ten observations of Vehtari et al. 2024, appendix C. excess (n,) > 0, sorted.
+    """Shape k of a generalised Pareto law (Zhang & Stephens 2009) from excess (n,) > 0, sorted.
+
+    A prior at 0.5 worth ten observations steadies it (Vehtari et al. 2024, appendix C).
     """
     n = len(excess)
     points = 30 + int(np.sqrt(n))

@@ -9,6 +9,7 @@ are the likelihood itself and one pass is exact.
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -90,6 +91,31 @@ class Approximation:
     cavity: Pair
     tilted: Tilted
     laplace: NDArray[np.intp]
+
+
+def join(parts: Sequence[Approximation]) -> Approximation:
+    """The approximations of several groups of nodes as one."""
+    if len(parts) == 1:
+        return parts[0]
+    starts = np.cumsum([0, *(len(p.mean) for p in parts[:-1])])
+    tilted = [p.tilted for p in parts]
+    return Approximation(
+        np.concatenate([p.mean for p in parts]),
+        np.concatenate([p.V for p in parts]),
+        np.concatenate([p.log_evidence for p in parts]),
+        Sites(**_fields([p.sites for p in parts])),
+        Pair(**_fields([p.cavity for p in parts])),
+        Tilted(
+            Pair(**_fields([t.pair for t in tilted])),
+            np.concatenate([t.log_z for t in tilted]),
+            np.concatenate([t.noise_slope for t in tilted]),
+        ),
+        np.concatenate([p.laplace + start for p, start in zip(parts, starts, strict=True)]),
+    )
+
+
+def _fields(parts: Sequence[Sites] | Sequence[Pair]) -> dict[str, Array]:
+    return {k: np.concatenate([vars(p)[k] for p in parts]) for k in vars(parts[0])}
 
 
 def approximate(
@@ -270,7 +296,7 @@ def _minus(a: Sites, b: Sites) -> Sites:
 
 
 def _divide(p: Pair, sites: Sites) -> tuple[Pair, NDArray[np.bool_]]:
-    """Cavity: the pair with its own site taken out, kept proper; whether it was so by itself (S,)."""
+    """Cavity: the pair less its own site, kept proper; and whether (S,) it was so unaided."""
     n = _minus(_natural(p), sites)
     uu, ss = np.maximum(n.uu, 1e-9 / p.uu), np.maximum(n.ss, 1e-9 / p.ss)
     rim = np.sqrt(0.9999 * uu * ss)

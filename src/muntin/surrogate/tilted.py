@@ -81,9 +81,14 @@ class Tilted:
 
 def tilt(lik: CellLikelihood, cavity: Pair, start_u: Array, start_sd: Array) -> Tilted:
     """Tilted moments; quadrature placed at start_u, start_sd (S, C), and moved until it fits."""
+    return place(lik, cavity, start_u, start_sd).moments(lik)
+
+
+def place(lik: CellLikelihood, cavity: Pair, start_u: Array, start_sd: Array) -> Points:
+    """Quadrature points that cover each tilted law, searched from start_u, start_sd (S, C)."""
     centre, spread = start_u, np.maximum(_WIDEN * start_sd, 1e-8)
     for _ in range(_PLACEMENTS):
-        points = _Points(lik, cavity, centre, spread)
+        points = Points(lik, cavity, centre, spread)
         shift = np.abs(points.mean_u - centre) / spread
         ratio = points.sd_u / spread
         if np.all((shift < 1.0) & (ratio > 0.4) & (ratio < 1.2)):
@@ -91,10 +96,10 @@ def tilt(lik: CellLikelihood, cavity: Pair, start_u: Array, start_sd: Array) -> 
         # Mass at the rim says where to go, not how wide: widen there, else follow the answer.
         factor = np.where(shift > 3.0, 1.5, np.clip(_WIDEN * ratio, 0.3, 3.0))
         centre, spread = points.mean_u, factor * spread
-    return points.moments(lik, cavity)
+    return points
 
 
-class _Points:
+class Points:
     """Quadrature points of u for every cell and the conditional law of s on them."""
 
     def __init__(self, lik: CellLikelihood, cavity: Pair, centre: Array, spread: Array) -> None:
@@ -121,10 +126,14 @@ class _Points:
         variance = (self.w * (self.u - self.mean_u[..., None]) ** 2).sum(-1)
         self.sd_u = np.sqrt(np.maximum(variance, 1e-16))
 
-    def moments(self, lik: CellLikelihood, cavity: Pair) -> Tilted:
+    def scale_given(self) -> tuple[Array, Array]:
+        """Mean and variance (S, C, Q) of s given u and the reading."""
         gain = self.loading * self.s_var / self.total
-        s_given = self.s_mean + gain * self.residual
-        v_given = self.s_var * (1.0 - gain * self.loading)
+        return self.s_mean + gain * self.residual, self.s_var * (1.0 - gain * self.loading)
+
+    def moments(self, lik: CellLikelihood) -> Tilted:
+        """Tilted moments of the pairs."""
+        s_given, v_given = self.scale_given()
         s = (self.w * s_given).sum(-1)
         du, ds = self.u - self.mean_u[..., None], s_given - s[..., None]
         pair = Pair(

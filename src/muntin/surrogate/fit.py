@@ -1,0 +1,176 @@
+"""Fit of one surrogate to one response, and of the stack of both."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from muntin.surrogate.cells import Readings, collapse
+from muntin.surrogate.coding import Columns
+from muntin.surrogate.evidence import Evidence, Family, Model
+from muntin.surrogate.hyperparameters import integrate
+from muntin.surrogate.links import Link
+from muntin.surrogate.loo import LeaveOneOut, leave_one_out
+from muntin.surrogate.nodes import (
+    Errors,
+    Nodes,
+    PolynomialNodes,
+    ProcessNodes,
+    Surface,
+    mixture,
+)
+from muntin.surrogate.polynomial import Quadratic
+from muntin.surrogate.priors import Kind, Priors
+from muntin.surrogate.process import GaussianProcess
+from muntin.surrogate.stacking import stacking_shares
+
+Array = NDArray[np.float64]
+_NEGLIGIBLE = 2e-3
+SURROGATES = ("gp", "quadratic")
+
+
+@dataclass(frozen=True)
+class Fit:
+    """One surrogate fitted to one response.
+
+    surface: its nodes. theta (S, H) and weights (S,): all hyperparameter nodes, log scale, named
+    by names. loo: leave-one-out predictions. ess, k_hat: of the importance weights.
+    log_marginal: log marginal likelihood. laplace: nodes without a fixed point, used as Laplace's.
+    """
+
+    name: str
+    surface: Surface
+    names: tuple[str, ...]
+    theta: Array
+    weights: Array
+    loo: LeaveOneOut
+    ess: float
+    k_hat: float
+    log_marginal: float
+    laplace: int
+
+
+@dataclass(frozen=True)
+class Stack:
+    """The fits of one response and their stacking shares (K,); surface is their mixture."""
+
+    fits: tuple[Fit, ...]
+    shares: Array
+    surface: Surface
+
+
+def link_of(kind: Kind) -> Link:
+    """The link from a latent value to the process mean of a kind of response."""
+    links: dict[Kind, Link] = {"fraction": "logit", "positive": "log", "real": "identity"}
+    return links[kind]
+
+
+def family_of(name: str, columns: Columns, priors: Priors) -> Family:
+    """The surrogate `gp` or `quadratic`."""
+    if name == "gp":
+        return GaussianProcess(columns, priors)
+    if name == "quadratic":
+        return Quadratic(columns, priors)
+    raise ValueError(f"surrogate {name!r} is none of {', '.join(SURROGATES)}")
+
+
+def fit_surrogate(
+    name: str, readings: Readings, kind: Kind, columns: Columns, priors: Priors, seed: int
+) -> Fit:
+    """Fit one surrogate; readings lie on the scale where noise is additive (ln y if positive)."""
+    link = link_of(kind)
+    model = Model(
+        family_of(name, columns, priors),
+        collapse(readings),
+        "logit" if kind == "fraction" else "identity",
+    )
+    posterior = integrate(model, seed)
+    evidence, weights = posterior.evidence, np.exp(posterior.log_weights)
+    loo = leave_one_out(
+        model.cells, model.likelihood(evidence.theta), evidence.approximation, posterior.log_weights
+    )
+    return Fit(
+        name=name,
+        surface=_surface(model, evidence, weights, link),
+        names=model.layout.names,
+        theta=evidence.theta,
+        weights=weights,
+        loo=loo,
+        ess=posterior.ess,
+        k_hat=posterior.k_hat,
+        log_marginal=posterior.log_marginal,
+        laplace=len(evidence.approximation.laplace),
+    )
+
+
+def fit_stack(
+    names: Sequence[str],
+    readings: Readings,
+    kind: Kind,
+    columns: Columns,
+    priors: Priors,
+    seed: int,
+) -> Stack:
+    """Fit the surrogates named and stack them by leave-one-out predictive density."""
+    fits = tuple(fit_surrogate(n, readings, kind, columns, priors, seed) for n in names)
+    shares = stacking_shares(np.stack([fit.loo.log_density for fit in fits]))
+    return Stack(fits, shares, mixture([fit.surface for fit in fits], shares))
+
+
+def prior_surface(
+    name: str,
+    kind: Kind,
+    columns: Columns,
+    priors: Priors,
+    shared: tuple[int, int],
+    seed: int,
+    nodes: int = 32,
+) -> Surface:
+    """The surface before any reading; shared: numbers of inside and of scale errors."""
+    from scipy.special import ndtri
+    from scipy.stats.qmc import Sobol
+
+    none = np.zeros(0, dtype=np.intp)
+    empty = Readings(
+        X=np.zeros((0, len(columns.factor))),
+        y=np.zeros(0),
+        sd=np.zeros(0),
+        inside=(none,) * shared[0],
+        scale=(none,) * shared[1],
+    )
+    model = Model(family_of(name, columns, priors), collapse(empty), "identity")
+    layout = model.layout
+    points = Sobol(len(layout), rng=np.random.default_rng(seed)).random(nodes)
+    theta = layout.theta(ndtri(np.clip(points, 1e-6, 1.0 - 1e-6)))
+    root = model.family.root(layout, theta, model.cells)
+    width = root.shape[2]
+    V = np.broadcast_to(np.eye(width), (nodes, width, width))
+    part = _part(model, theta, root, np.zeros((nodes, width)), V)
+    return Surface((part,), np.full(nodes, 1.0 / nodes), link_of(kind))
+
+
+def _surface(model: Model, evidence: Evidence, weights: Array, link: Link) -> Surface:
+    """The nodes that carry weight; the rest, together _NEGLIGIBLE, is left out."""
+    order = np.argsort(-weights)
+    enough = int(np.searchsorted(np.cumsum(weights[order]), 1.0 - _NEGLIGIBLE)) + 1
+    keep = np.sort(order[:enough])
+    root, approx = evidence.root[keep], evidence.approximation
+    own = root.shape[2]
+    mean, V = approx.mean[keep][:, :own], approx.V[keep][:, :own, :own]
+    part = _part(model, evidence.theta[keep], root, mean, V)
+    return Surface((part,), weights[keep] / weights[keep].sum(), link)
+
+
+def _part(model: Model, theta: Array, root: Array, mean: Array, V: Array) -> Nodes:
+    layout = model.layout
+    errors = Errors(layout.noise(theta), layout.inside_sd(theta), layout.scale_sd(theta))
+    own = layout.family(theta)
+    family = model.family
+    if isinstance(family, GaussianProcess):
+        alpha, Q = family.weights(root, mean, V)
+        return ProcessNodes(family, own, model.cells.X, alpha, Q, errors)
+    assert isinstance(family, Quadratic)
+    return PolynomialNodes(family, *family.coefficients(own, mean, V), errors)

@@ -1,0 +1,195 @@
+"""Weighted Gaussian nodes: the one posterior on which everything downstream rests.
+
+A node is a Gaussian law of the latent surface f at one set of hyperparameters; it knows the mean,
+variance and covariance of f anywhere, and the sds of the errors that a future well would meet.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Sequence
+from dataclasses import dataclass, replace
+from typing import Protocol
+
+import numpy as np
+from numpy.typing import NDArray
+
+from muntin.surrogate.links import Link
+from muntin.surrogate.polynomial import Quadratic
+from muntin.surrogate.process import GaussianProcess
+
+Array = NDArray[np.float64]
+Index = NDArray[np.intp]
+_CHUNK = 3_000_000
+
+
+@dataclass(frozen=True)
+class Errors:
+    """Sds at S nodes: of one reading (S,), and of each inside and scale error (S, J), latent and
+    relative units.
+    """
+
+    noise: Array
+    inside: Array
+    scale: Array
+
+    def nodes(self, index: Index) -> Errors:
+        """The errors of some nodes."""
+        return Errors(self.noise[index], self.inside[index], self.scale[index])
+
+
+class Nodes(Protocol):
+    """S Gaussian laws of f over coded conditions."""
+
+    @property
+    def errors(self) -> Errors:
+        """Sds of the errors of a future well."""
+
+    def __len__(self) -> int: ...
+
+    def moments(self, X: Array) -> tuple[Array, Array]:
+        """Mean and variance (S, n) of f at coded X (n, D)."""
+
+    def covariance(self, X: Array, Z: Array) -> Array:
+        """Covariance (S, n, m) of f between coded X (n, D) and Z (m, D)."""
+
+    def take(self, index: Index) -> Nodes:
+        """Some of the nodes."""
+
+
+@dataclass(frozen=True)
+class ProcessNodes:
+    """Nodes of the Gaussian process: own hyperparameters (S, H), inputs X (U, D), alpha, Q."""
+
+    family: GaussianProcess
+    own: Array
+    X: Array
+    alpha: Array
+    Q: Array
+    errors: Errors
+
+    def __len__(self) -> int:
+        return len(self.own)
+
+    def moments(self, X: Array) -> tuple[Array, Array]:
+        """Mean and variance (S, n) of f at coded X (n, D)."""
+        mean = np.empty((len(self), len(X)))
+        variance = self.family.variance(self.own, X)
+        size = max(1, _CHUNK // max(1, len(self) * len(self.X)))
+        for rows in _chunks(len(X), size):
+            k = self.family.covariance(self.own, X[rows], self.X)
+            mean[:, rows] = (k @ self.alpha[..., None])[..., 0]
+            variance[:, rows] -= np.einsum("snu,snu->sn", k @ self.Q, k)
+        return mean + self.family.priors.mean, _positive(variance)
+
+    def covariance(self, X: Array, Z: Array) -> Array:
+        """Covariance (S, n, m) of f between coded X (n, D) and Z (m, D)."""
+        left = self.family.covariance(self.own, X, self.X) @ self.Q
+        right = self.family.covariance(self.own, Z, self.X)
+        return self.family.covariance(self.own, X, Z) - left @ np.swapaxes(right, 1, 2)
+
+    def take(self, index: Index) -> ProcessNodes:
+        """Some of the nodes."""
+        return replace(
+            self,
+            own=self.own[index],
+            alpha=self.alpha[index],
+            Q=self.Q[index],
+            errors=self.errors.nodes(index),
+        )
+
+
+@dataclass(frozen=True)
+class PolynomialNodes:
+    """Nodes of the quadratic: coefficient means (S, p) and covariances (S, p, p)."""
+
+    family: Quadratic
+    mean: Array
+    V: Array
+    errors: Errors
+
+    def __len__(self) -> int:
+        return len(self.mean)
+
+    def moments(self, X: Array) -> tuple[Array, Array]:
+        """Mean and variance (S, n) of f at coded X (n, D)."""
+        B = self.family.basis(X)
+        mean = self.mean @ B.T + self.family.priors.mean
+        return mean, _positive(np.einsum("snp,np->sn", B @ self.V, B))
+
+    def covariance(self, X: Array, Z: Array) -> Array:
+        """Covariance (S, n, m) of f between coded X (n, D) and Z (m, D)."""
+        return self.family.basis(X) @ self.V @ self.family.basis(Z).T
+
+    def take(self, index: Index) -> PolynomialNodes:
+        """Some of the nodes."""
+        return replace(
+            self, mean=self.mean[index], V=self.V[index], errors=self.errors.nodes(index)
+        )
+
+
+@dataclass(frozen=True)
+class Surface:
+    """The posterior of one response: weighted nodes, one part a surrogate, and the link.
+
+    weights (S,) run over the nodes of all parts in order and sum to 1.
+    """
+
+    parts: tuple[Nodes, ...]
+    weights: Array
+    link: Link
+
+    def moments(self, X: Array) -> tuple[Array, Array]:
+        """Mean and variance (S, n) of the latent f at coded X (n, D)."""
+        moments = [part.moments(X) for part in self.parts]
+        return np.concatenate([m for m, _ in moments]), np.concatenate([v for _, v in moments])
+
+    def covariance(self, X: Array, Z: Array) -> Array:
+        """Covariance (S, n, m) of the latent f between coded X (n, D) and Z (m, D)."""
+        return np.concatenate([part.covariance(X, Z) for part in self.parts])
+
+    @property
+    def errors(self) -> Errors:
+        """Sds of the errors that a future well meets."""
+        every = [part.errors for part in self.parts]
+        return Errors(
+            np.concatenate([e.noise for e in every]),
+            np.concatenate([e.inside for e in every]),
+            np.concatenate([e.scale for e in every]),
+        )
+
+    def lightened(self, most: int) -> Surface:
+        """The surface on at most so many nodes: systematic resampling, weights by count."""
+        if len(self.weights) <= most:
+            return self
+        ticks = (np.arange(most) + 0.5) / most
+        picked = np.searchsorted(np.cumsum(self.weights), ticks * self.weights.sum())
+        index, count = np.unique(np.minimum(picked, len(self.weights) - 1), return_counts=True)
+        return self.take(index, count / most)
+
+    def take(self, index: Index, weights: Array) -> Surface:
+        """Some of the nodes, in ascending order, with new weights."""
+        parts, start = [], 0
+        for part in self.parts:
+            mine = index[(index >= start) & (index < start + len(part))] - start
+            if len(mine):
+                parts.append(part.take(mine))
+            start += len(part)
+        return Surface(tuple(parts), weights, self.link)
+
+
+def mixture(surfaces: Sequence[Surface], shares: Array) -> Surface:
+    """The union of surfaces of one response, each weighted by its share."""
+    kept = [(s, share) for s, share in zip(surfaces, shares, strict=True) if share > 0.0]
+    return Surface(
+        tuple(part for s, _ in kept for part in s.parts),
+        np.concatenate([share * s.weights for s, share in kept]),
+        surfaces[0].link,
+    )
+
+
+def _chunks(n: int, size: int) -> Iterator[slice]:
+    return (slice(i, min(i + size, n)) for i in range(0, n, size))
+
+
+def _positive(variance: Array) -> Array:
+    return np.maximum(variance, 1e-12)
