@@ -9,9 +9,8 @@ import numpy as np
 
 from muntin.record.faults import Fault
 from muntin.record.keys import Floats
-from muntin.record.tables import Table
+from muntin.record.tables import NUMBER, Table
 
-_NUMBER = re.compile(r"[+-]?(?:[0-9]+(?:[.,][0-9]*)?|[.,][0-9]+)(?:[eE][+-]?[0-9]+)?")
 _THOUSANDS = re.compile(r"[+-]?[1-9][0-9]{0,2},[0-9]{3}")
 _CENSORED = re.compile(r"([<>≤≥])=?\s*(.+)")
 _NO_REASON = frozenset(
@@ -36,9 +35,8 @@ def parse_number(text: str, comma: bool = False) -> float:
     """
     if text.lower().lstrip("+-") in ("inf", "infinity", "∞"):
         raise CellError("is not a finite number")
-    if not _NUMBER.fullmatch(text):
-        hint = "leave the cell empty where nothing is known" if not re.search(r"\d", text) else ""
-        raise CellError("is not a number", hint)
+    if not NUMBER.fullmatch(text):
+        raise CellError("is not a number")
     if comma and _THOUSANDS.fullmatch(text):
         raise CellError("may mean thousands or decimals", "write it without the comma")
     value = float(text.replace(",", "."))

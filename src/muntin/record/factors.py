@@ -208,8 +208,10 @@ def _range_faults(factor: Factor) -> Iterator[Fault]:
         return
     if step > high - low:
         yield fault("step", step, "is larger than the range", factor.range_text)
-    elif (high - low) / step > _MOST_LEVELS:
+        return
+    if (high - low) / step > _MOST_LEVELS:
         yield fault("step", step, "makes more levels than", f"{_MOST_LEVELS}; take a larger step")
+        return
     if factor.scale == "log" and low <= 0:
         yield fault("low", low, "must lie above 0 on a log scale;", 'or set scale = "linear"')
     for name in ("plan_low", "plan_high"):
@@ -226,7 +228,7 @@ def _plan_and_extras(factor: Factor, low: float, high: float) -> Iterator[Fault]
         problem = f"lies above plan_high, which is {number(ends[1])}"
         value = number(ends[0])
         yield Fault(file="study.toml", where=f"{where}, plan_low", value=value, problem=problem)
-    elif low < high and not len(factor.plan_levels()):
+    elif ends != (None, None) and not len(factor.plan_levels()):
         problem = "leave no bench step between them"
         yield Fault(file="study.toml", where=where, value="plan_low and plan_high", problem=problem)
     if factor.plan_choices is not None:

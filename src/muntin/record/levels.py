@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import replace
 
 import numpy as np
 
@@ -72,8 +71,7 @@ def _check_targets(
 
 
 def _outside(table: Table, row: int, column: str, allowed: str, rule: str) -> Fault:
-    fault = table.fault(row, column, "lies outside", allowed, rule)
-    return replace(fault, value=fault.value.strip('"'))
+    return table.fault(row, column, "lies outside", allowed, rule)
 
 
 def _measured_range(factor: Factor) -> tuple[float, float]:

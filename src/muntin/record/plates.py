@@ -161,28 +161,38 @@ def _earlier(table: Table, factor: Factor, needed: Truths, found: Findings) -> l
 
 
 def _others(table: Table, definition: Definition, found: Findings) -> tuple[str, ...]:
+    """Return the columns that pass through; odd ones are faults or notices."""
     known = plate_columns(definition)
-    others = [name for name in table.columns if name not in known]
-    taken = [f"{factor.name}_target" for factor in definition.factors]
-    taken += [f"{response.name}_state" for response in definition.responses]
-    for name in others:
-        if name.lower() in taken:
+    taken = {f"{factor.name}_target".casefold() for factor in definition.factors}
+    taken |= {f"{response.name}_state".casefold() for response in definition.responses}
+    others = []
+    for name in table.columns:
+        if name.casefold() in taken:
             problem = "is a name that muntin keeps for itself; rename the column"
             found.faults.append(Fault(file=table.file, column=name, problem=problem))
-    lacking = [name for name in known if name not in table.columns and name not in _FIXED]
-    responses = [response.name for response in definition.responses]
+        elif name not in known:
+            others.append(name)
+    _check_resemblance(table, definition, others, found)
+    return tuple(others)
+
+
+def _check_resemblance(
+    table: Table, definition: Definition, others: Sequence[str], found: Findings
+) -> None:
+    columns = (name for name in plate_columns(definition) if name not in (*_PLAN, "plate"))
+    lacking = [name for name in columns if name not in table.columns]
+    weighty = [response.name for response in definition.responses]
+    weighty += [factor.name for factor in definition.factors if factor.earlier_value is not None]
     for name in others:
         close = nearest(name, lacking, cutoff=0.8)
-        if close in responses:
-            problem = f"resembles {close}, a response that this table lacks"
+        if close in weighty:
+            problem = f"resembles {close}, which this table lacks"
             hint = "rename one of them"
             found.faults.append(Fault(file=table.file, column=name, problem=problem, hint=hint))
-        elif close is not None or nearest(name, _FIXED[:3], cutoff=0.8):
-            meant = close or nearest(name, _FIXED[:3])
+        elif close is not None and close not in definition.factor_names:
             found.notices.append(
-                f"{table.file}: is column {name} meant to be {meant}? It is not used"
+                f"{table.file}: column {name} is not used; is it meant as {close}?"
             )
-    return tuple(others)
 
 
 def outside_limits(name: str, definition: Definition, rows: PlateRows) -> list[str]:

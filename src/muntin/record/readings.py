@@ -7,7 +7,7 @@ from collections.abc import Iterable, Sequence
 from typing import NamedTuple
 
 from muntin.record.cells import CellError, numbers, parse_reading, reasons
-from muntin.record.faults import Fault, number, quoted
+from muntin.record.faults import Fault, number
 from muntin.record.responses import Response
 from muntin.record.tables import Table
 
@@ -45,7 +45,8 @@ def read_readings(table: Table, response: Response, faults: list[Fault]) -> list
         try:
             state, value = parse_reading(cell, table.comma)
         except CellError as error:
-            faults.append(table.fault(row, name, str(error), hint=error.hint))
+            hint = error.hint or "leave the cell empty while its reading is awaited"
+            faults.append(table.fault(row, name, str(error), hint=hint))
         if deviations[row] < 0:
             problem = "must be 0 or above, as it is a standard uncertainty"
             faults.append(table.fault(row, f"{name}_sd", problem))
@@ -67,7 +68,7 @@ def joined(old: Reading, new: Reading, name: str, faults: list[Fault]) -> Readin
         kept = old
         same = old.value == new.value if old.state == new.state == "read" else old.text == new.text
         if not same:
-            faults.append(_differs(old, new, name, quoted(old.text), quoted(new.text)))
+            faults.append(_differs(old, new, name, old.text, new.text))
     if not (math.isnan(old.sd) or math.isnan(new.sd) or old.sd == new.sd):
         faults.append(_differs(old, new, f"{name}_sd", number(old.sd), number(new.sd)))
     sd = new.sd if math.isnan(old.sd) else old.sd
@@ -108,8 +109,8 @@ def _fraction_faults(response: Response, readings: Sequence[Reading]) -> Iterabl
     for file in dict.fromkeys(reading.file for reading in wrong):
         here = [reading for reading in wrong if reading.file == file]
         if like_per_cent:
-            more = f", and {len(here) - 1} more cells" if len(here) > 1 else ""
-            problem = f"looks like per cent{more}; a fraction is read as 0 to 1"
+            all_of_them = f", as do {len(here)} cells in all" if len(here) > 1 else ""
+            problem = f"looks like per cent{all_of_them}; a fraction is read as 0 to 1"
             hint = f'for per cent set unit = "%" in study.toml, responses, {response.name}'
             yield _reading_fault(response, here[0], problem, hint)
             continue

@@ -6,7 +6,7 @@ from collections.abc import Collection, Mapping, Sequence
 from pathlib import Path
 
 from muntin.record.definition import Definition
-from muntin.record.faults import Fault, Findings, did_you_mean
+from muntin.record.faults import Fault, Findings, did_you_mean, nearest
 from muntin.record.readings import Reading, joined, read_readings, response_columns
 from muntin.record.tables import Table, missing_column, read_table, table_files
 from muntin.record.wells import WellError, last_well, well_name
@@ -51,8 +51,10 @@ def _has_responses(
     names = [response.name for response in definition.responses]
     if any(name in table.columns for name in names):
         return True
-    hints = [did_you_mean(other, names) for other in others] or ["known: " + ", ".join(names)]
-    fault = Fault(file=table.file, problem="has no column of a response", hint=hints[0])
+    pairs = [(other, nearest(other, names)) for other in others]
+    hint = next((f"is its column {other} meant to be {name}?" for other, name in pairs if name), "")
+    hint = hint or "known: " + ", ".join(names)
+    fault = Fault(file=table.file, problem="has no column of a response", hint=hint)
     found.faults.append(fault)
     return False
 

@@ -13,10 +13,11 @@ from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 
-from muntin.record.faults import Fault, Findings, did_you_mean, quoted
+from muntin.record.faults import Fault, Findings, nearest, quoted
 from muntin.record.files import NotTextError, decoded
 
 SUFFIXES = (".csv", ".xlsx")
+NUMBER = re.compile(r"[+-]?(?:[0-9]+(?:[.,][0-9]*)?|[.,][0-9]+)(?:[eE][+-]?[0-9]+)?")
 
 
 @dataclass(frozen=True, slots=True)
@@ -48,7 +49,7 @@ class Table:
             file=self.file,
             where=self.where[row],
             column=column,
-            value=quoted(cell) if cell else "",
+            value=cell if NUMBER.fullmatch(cell) else quoted(cell) if cell else "",
             problem=problem if cell else f"is empty; {problem}",
             allowed=allowed,
             hint=hint,
@@ -61,15 +62,19 @@ def table_files(folder: Path, found: Findings) -> list[tuple[str, Path]]:
     A stem that is there as .csv and as .xlsx is a fault; files of other kinds are a notice.
     """
     by_stem: dict[str, list[Path]] = {}
+    if folder.exists() and not folder.is_dir():
+        found.faults.append(Fault(file=folder.name, problem="is a file; it must be a folder"))
+        return []
     for path in sorted(folder.iterdir()) if folder.is_dir() else []:
-        if path.name.startswith((".", "~$")) or path.is_dir() or path.suffix.lower() == ".toml":
+        if path.name.startswith((".", "~$")) or (
+            path.suffix == ".toml" and folder.name == "plates"
+        ):
             continue
-        if path.suffix.lower() in SUFFIXES:
+        if path.suffix.lower() in SUFFIXES and path.is_file():
             by_stem.setdefault(path.stem, []).append(path)
         else:
             found.notices.append(
-                f"{folder.name}/{path.name} is not a table that muntin reads (.csv or .xlsx); "
-                "left out"
+                f"{folder.name}/{path.name} is not a .csv or .xlsx table; left out"
             )
     for stem, paths in by_stem.items():
         if len(paths) > 1:
@@ -126,12 +131,8 @@ def _table(
 ) -> Table | None:
     by_fold = {name.casefold(): name for name in known}
     headings = [by_fold.get(cell.casefold(), cell) for cell in rows[0][1]]
-    while headings and not headings[-1]:
-        headings.pop()
-    faults = [
-        *_heading_faults(file, headings, rows[1:]),
-        *_width_faults(file, headings, rows[1:], comma),
-    ]
+    faults = [*_heading_faults(file, headings, rows[1:])]
+    faults += _width_faults(file, len(headings), rows[1:], comma)
     found.faults.extend(faults)
     if faults:
         return None
@@ -157,14 +158,14 @@ def _heading_faults(
 
 
 def _width_faults(
-    file: str, headings: list[str], rows: list[tuple[int, list[str]]], comma: bool
+    file: str, room: int, rows: list[tuple[int, list[str]]], comma: bool
 ) -> Iterator[Fault]:
     hint = ""
     if comma:
         hint = "with decimal commas separate the cells by semicolons, or put numbers in quotes"
     for number, row in rows:
-        if any(row[len(headings) :]):
-            problem = f"has {len(row)} cells under {len(headings)} headings"
+        if len(row) > room:
+            problem = f"has {len(row)} cells under {room} headings"
             yield Fault(file=file, where=f"row {number}", problem=problem, hint=hint)
 
 
@@ -228,12 +229,8 @@ def _shown(row: Iterable[object]) -> list[str]:
 
 
 def missing_column(table: Table, column: str, hint: str = "") -> Fault:
-    """Return the fault of a table that lacks a column, with the heading that resembles it."""
-    close = did_you_mean(column, [*table.columns]) if table.columns else ""
-    mend = f"the heading {close.removeprefix('did you mean ').removesuffix('?')} resembles it"
-    parts = [mend if close.startswith("did") else "", hint]
-    return Fault(
-        file=table.file,
-        problem=f"has no column {column}",
-        hint="; ".join(part for part in parts if part),
-    )
+    """Return the fault of a table that lacks a column; a heading that resembles it is named."""
+    close = nearest(column, table.columns)
+    if close is not None:
+        hint = f"did you mean its column {close}?"
+    return Fault(file=table.file, problem=f"has no column {column}", hint=hint)

@@ -150,6 +150,8 @@ def _fault(file: str, model: type[BaseModel], data: dict[str, Any], detail: Any)
         says = _description(model, detail["loc"])
         return Fault(file=file, where=where, value=quoted(last), problem="is missing", hint=says)
     problem, allowed = _said(detail)
+    if detail["type"] == "tuple_type" and isinstance(detail["input"], dict):
+        problem = f"must be one or more tables, each headed [[{last}]]"
     shown = quoted(detail["input"]) if isinstance(detail["input"], str | int | float) else ""
     return Fault(
         file=file, where=", ".join([*table, last]), value=shown, problem=problem, allowed=allowed

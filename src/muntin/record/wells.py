@@ -38,6 +38,13 @@ def position(text: str, plate: int = 96) -> tuple[int, int]:
     return row, column
 
 
+def _corner(text: str, plate: int) -> tuple[int, int]:
+    try:
+        return position(text, plate)
+    except WellError as error:
+        raise WellError(f'names "{text.strip()}", which {error}') from None
+
+
 def last_well(plate: int) -> str:
     """Return the name of the last well: "H12" or "P24"."""
     rows, columns = ROWS_COLUMNS[plate]
@@ -61,10 +68,10 @@ def wells_in(text: str, plate: int) -> tuple[str, ...]:
     for part in text.split(","):
         ends = part.split(":")
         if len(ends) > 2:
-            raise WellError(f"holds {part.strip()!r}, which is not a range of wells")
-        (row, column), (row_end, column_end) = position(ends[0], plate), position(ends[-1], plate)
+            raise WellError(f'names "{part.strip()}", which is not a range of wells')
+        (row, column), (row_end, column_end) = (_corner(end, plate) for end in (ends[0], ends[-1]))
         if row_end < row or column_end < column:
-            raise WellError(f"holds {part.strip()!r}, a range that runs backwards")
+            raise WellError(f'names "{part.strip()}", a range that runs backwards')
         chosen |= {
             f"{chr(ord('A') + r)}{c + 1}"
             for r in range(row, row_end + 1)

@@ -36,7 +36,9 @@ def wells_table(
         data[f"{name}_state"] = states
         data[f"{name}_exclude"] = [reading.reason for reading in given]
     data["exclude"] = excluded
-    data |= {name: _stacked(rows, name) for part in rows for name in part.others}
+    shared = [name for error in definition.shared_errors for name in error.by]
+    others = [*shared, *(name for part in rows for name in part.others)]
+    data |= {name: _stacked(rows, name) for name in others if name not in data}
     return _typed(pd.DataFrame(data), definition)
 
 
