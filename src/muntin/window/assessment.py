@@ -1,0 +1,233 @@
+"""Where the study stands: the posterior of every response and what it says of a condition."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from functools import cached_property
+from typing import Literal
+
+import numpy as np
+import pandas as pd
+from numpy.typing import NDArray
+
+from muntin.record.faults import Fault, StudyFaults, did_you_mean, number, quoted
+from muntin.record.responses import Response
+from muntin.record.study import Study
+from muntin.surrogate.fit import SURROGATES, Stack, fit_stack, prior_surface
+from muntin.surrogate.nodes import Surface, mixture
+from muntin.window.checks import Check, study_checks
+from muntin.window.coded import code, coding_of, priors_for, readings_of, shared_by
+from muntin.window.grid import judged_grid
+from muntin.window.probability import (
+    Target,
+    mean_meets,
+    process_mean,
+    process_quantile,
+    well_meets,
+)
+from muntin.window.window import Window, judge_window
+
+Array = NDArray[np.float64]
+Surrogate = Literal["gp", "quadratic", "stacked"]
+_SPREAD = 16
+
+
+@dataclass(frozen=True, kw_only=True, eq=False)
+class Assessment:
+    """A study with the posterior surface of every response that has readings, or of the prior.
+
+    stacks: the fits of each response with readings. surfaces: the posterior of each response that
+    has readings, or, where nothing has been read yet, of each judged response under its prior.
+    awaited: judged responses without a reading; while there is one, nothing is judged jointly.
+    """
+
+    study: Study
+    surrogate: Surrogate
+    seed: int
+    stacks: Mapping[str, Stack]
+    surfaces: Mapping[str, Surface]
+
+    @property
+    def awaited(self) -> tuple[str, ...]:
+        """Names of the judged responses without a reading, when others have some."""
+        judged = [r.name for r in self.study.definition.judged]
+        return tuple(name for name in judged if name not in self.surfaces)
+
+    @property
+    def fresh(self) -> bool:
+        """Whether nothing has been read yet, so that the prior alone speaks."""
+        return not self.stacks
+
+    @cached_property
+    def checks(self) -> tuple[Check, ...]:
+        """Checks of the model against the readings."""
+        return study_checks(self.study, self.stacks)
+
+    def at(self, conditions: pd.DataFrame) -> pd.DataFrame:
+        """What is known at conditions: a column a factor, raw units; index kept.
+
+        Per response r: r_mean, r_low, r_high (process mean and its central 95 % interval, in the
+        user's unit), r_p_mean, r_p_well (judged responses); over all judged responses jointly
+        p_mean, p_well and, where a kept_within is given, p_kept, withheld while one is awaited.
+        Raises StudyFaults where a factor is missing or a value cannot be coded.
+        """
+        frame = _checked(self.study, conditions)
+        X = code(self.study.definition, frame)
+        columns: dict[str, Array] = {}
+        joint = {"p_mean": np.ones(len(X)), "p_well": np.ones(len(X))}
+        for response in self.study.definition.responses:
+            surface = self.surfaces.get(response.name)
+            if surface is None:
+                continue
+            r, moments = response.name, surface.moments(X)
+            columns[f"{r}_mean"] = process_mean(surface, moments) * response.unit_size
+            for name, level in (("low", 0.025), ("high", 0.975)):
+                quantile = process_quantile(surface, moments, level)
+                columns[f"{r}_{name}"] = quantile * response.unit_size
+            if response.judged:
+                target = target_of(response)
+                columns[f"{r}_p_mean"] = mean_meets(surface, moments, target)
+                columns[f"{r}_p_well"] = well_meets(surface, moments, target)
+                joint["p_mean"] *= columns[f"{r}_p_mean"]
+                joint["p_well"] *= columns[f"{r}_p_well"]
+        if not self.awaited:
+            columns.update(joint)
+            if any(f.kept_within for f in self.study.definition.factors):
+                columns["p_kept"] = self.kept(frame)
+        return pd.DataFrame(columns, index=conditions.index)
+
+    def kept(self, frame: pd.DataFrame) -> Array:
+        """p_kept (n,): p_well averaged over settings spread evenly within kept_within."""
+        factors = [f for f in self.study.definition.factors if f.kept_within is not None]
+        points, weights = _even_spread(len(factors))
+        total = np.zeros(len(frame))
+        for point, weight in zip(points, weights, strict=True):
+            moved = frame.copy()
+            for factor, u in zip(factors, point, strict=True):
+                x = frame[factor.name].to_numpy(dtype=float)
+                width = 0.0 if factor.kept_within is None else factor.kept_within.at(x)
+                moved[factor.name] = _inside(factor.scale, x, u * width)
+            total += weight * self.judged(moved, "well")
+        return total
+
+    def judged(self, frame: pd.DataFrame, by: Literal["mean", "well", "kept"]) -> Array:
+        """Joint probability (n,) over the judged responses at a frame of valid conditions."""
+        if by == "kept":
+            return self.kept(frame)
+        X = code(self.study.definition, frame)
+        p = np.ones(len(X))
+        meets = mean_meets if by == "mean" else well_meets
+        for response in self.study.definition.judged:
+            surface = self.surfaces.get(response.name)
+            if surface is not None:
+                p *= meets(surface, surface.moments(X), target_of(response))
+        return p
+
+    def window(self) -> Window:
+        """The predicted operating window (plate scale), on a grid of bench steps."""
+        definition = self.study.definition
+        grid, regular = judged_grid(definition)
+        p_mean = self.judged(grid, "mean")
+        by = definition.judged_by
+        judged = p_mean if by == "mean" else self.judged(grid, by)
+        unsupported = tuple(c.sentence for c in self.checks if not c.passed and c.serious)
+        return judge_window(definition, grid, regular, p_mean, judged, unsupported)
+
+
+def target_of(response: Response) -> Target:
+    """The response's target in its natural unit."""
+    low, high = response.target
+    return Target(-np.inf if low is None else low, np.inf if high is None else high)
+
+
+def assess(
+    study: Study, surrogate: Surrogate = "stacked", engine: Literal["fast"] = "fast", seed: int = 1
+) -> Assessment:
+    """Fit the surrogates to everything that has been read.
+
+    surrogate: `gp`, `quadratic` or `stacked` (both, weighted by leave-one-out predictive
+    density). engine: `fast`, deterministic given the seed. Raises ValueError for other names.
+    """
+    if surrogate not in (*SURROGATES, "stacked"):
+        raise ValueError(f"surrogate {surrogate!r} is none of gp, quadratic, stacked")
+    if engine != "fast":
+        raise ValueError(f"engine {engine!r} is not available; use fast")
+    names = SURROGATES if surrogate == "stacked" else (surrogate,)
+    definition = study.definition
+    columns = coding_of(definition).columns
+    stacks: dict[str, Stack] = {}
+    for response in definition.responses:
+        readings = readings_of(study, response)
+        if len(readings):
+            priors = priors_for(study, response)
+            stacks[response.name] = fit_stack(names, readings, response.kind, columns, priors, seed)
+    surfaces = {name: stack.surface for name, stack in stacks.items()}
+    if not stacks:
+        surfaces = {r.name: _prior(study, r, names, seed) for r in definition.judged}
+    return Assessment(study=study, surrogate=surrogate, seed=seed, stacks=stacks, surfaces=surfaces)
+
+
+def _prior(study: Study, response: Response, names: tuple[str, ...], seed: int) -> Surface:
+    shared = shared_by(study.definition, response)
+    counts = len(shared.inside), len(shared.scale)
+    columns = coding_of(study.definition).columns
+    priors = priors_for(study, response)
+    every = [prior_surface(n, response.kind, columns, priors, counts, seed) for n in names]
+    return mixture(every, np.full(len(names), 1.0 / len(names)))
+
+
+def _even_spread(factors: int) -> tuple[Array, Array]:
+    """Points (n, factors) of [-1, 1] and weights (n,): Gauss-Legendre to two factors, then Sobol'."""
+    if factors > 2:
+        from scipy.stats.qmc import Sobol
+
+        points = Sobol(factors, rng=np.random.default_rng(0)).random(_SPREAD) * 2.0 - 1.0
+        return points, np.full(_SPREAD, 1.0 / _SPREAD)
+    x, w = np.polynomial.legendre.leggauss(3)
+    grids = np.meshgrid(*[x] * factors, indexing="ij")
+    weights = np.prod(np.meshgrid(*[w / 2.0] * factors, indexing="ij"), axis=0)
+    return np.stack([g.ravel() for g in grids], axis=1), weights.ravel()
+
+
+def _inside(scale: str, x: Array, shift: Array) -> Array:
+    """Settings x + shift; on a log scale never below a tenth of x."""
+    moved = x + shift
+    return np.maximum(moved, 0.1 * x) if scale == "log" else moved
+
+
+def _checked(study: Study, conditions: pd.DataFrame) -> pd.DataFrame:
+    """The factor columns of the conditions, every problem in one report."""
+    faults: list[Fault] = []
+    names = study.definition.factor_names
+    for factor in study.definition.factors:
+        if factor.name not in conditions:
+            hint = did_you_mean(factor.name, [str(c) for c in conditions.columns])
+            problem = "is missing"
+            faults.append(Fault(file="conditions", column=factor.name, problem=problem, hint=hint))
+            continue
+        for row, value in enumerate(conditions[factor.name], start=1):
+            problem = _value_problem(factor.choices, factor.scale, value)
+            if problem:
+                allowed = factor.range_text
+                faults.append(
+                    Fault(
+                        file="conditions",
+                        where=f"row {row}",
+                        column=factor.name,
+                        value=quoted(value) if isinstance(value, str) else number(value),
+                        problem=problem,
+                        allowed=allowed,
+                    )
+                )
+    if faults:
+        raise StudyFaults(faults)
+    return conditions[list(names)].reset_index(drop=True)
+
+
+def _value_problem(choices: tuple[str, ...] | None, scale: str, value: object) -> str:
+    if choices is not None:
+        return "" if value in choices else "is not"
+    if isinstance(value, str | bool) or value is None or not np.isfinite(float(str(value))):
+        return "is not a number in"
+    return "lies at or below 0, outside" if scale == "log" and float(str(value)) <= 0 else ""

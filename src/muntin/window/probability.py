@@ -1,0 +1,123 @@
+"""Probabilities that a condition meets a target, from weighted nodes.
+
+`p_mean` is the chance that the process mean g(f) meets it; `p_well` that one future well on a new
+plate does, which adds the shared errors and the noise of a reading (Peterson 2004).
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from muntin.surrogate.links import latent_of, mean_of
+from muntin.surrogate.nodes import Surface
+
+Array = NDArray[np.float64]
+# Trapezoid points of a standard normal. A reading crosses its target over about 0.2 logits; where
+# the latent sd is large against that, the points must lie closer.
+_COARSE, _FINE = np.linspace(-4.5, 4.5, 19), np.linspace(-4.75, 4.75, 39)
+_FINE_ABOVE = 0.8
+_CHUNK = 2_000_000
+
+
+@dataclass(frozen=True)
+class Target:
+    """Limits of one response in its natural unit; infinite where there is none."""
+
+    low: float = -np.inf
+    high: float = np.inf
+
+
+def _normal_weights(z: Array) -> Array:
+    density = np.exp(-0.5 * z**2)
+    return density / density.sum()
+
+
+def _below(z: Array) -> Array:
+    from scipy.special import ndtr
+
+    return np.asarray(ndtr(z))
+
+
+def mean_meets(surface: Surface, moments: tuple[Array, Array], target: Target) -> Array:
+    """p_mean (n,) from latent moments (S, n)."""
+    return np.asarray(surface.weights @ node_mean_meets(surface, moments, target))
+
+
+def node_mean_meets(surface: Surface, moments: tuple[Array, Array], target: Target) -> Array:
+    """Probability (S, n) at each node that the process mean meets the target."""
+    mean, variance = moments
+    sd = np.sqrt(variance)
+    high = _below((latent_of(surface.link, target.high) - mean) / sd)
+    low = _below((latent_of(surface.link, target.low) - mean) / sd)
+    if not np.isfinite(target.high):
+        return 1.0 - low
+    return high - low
+
+
+def well_meets(surface: Surface, moments: tuple[Array, Array], target: Target) -> Array:
+    """p_well (n,) from latent moments (S, n): one future well on a new plate."""
+    mean, variance = moments
+    errors = surface.errors
+    inside = (errors.inside**2).sum(1)[:, None]
+    noise = errors.noise[:, None] ** 2
+    if surface.link == "logit":
+        return _fraction_well(surface, mean, variance + inside, target)
+    sd = np.sqrt(variance + inside + noise)
+    low, high = latent_of(surface.link, target.low), latent_of(surface.link, target.high)
+    return np.asarray(surface.weights @ (_below((high - mean) / sd) - _below((low - mean) / sd)))
+
+
+def _fraction_well(surface: Surface, mean: Array, variance: Array, target: Target) -> Array:
+    """The reading is (1 + scale) g(f) + noise; scale and noise are Gaussian given f."""
+    sd = np.sqrt(variance)
+    out = np.zeros(mean.shape[1])
+    fine = sd.max(axis=0) > _FINE_ABOVE
+    for chosen, z in ((fine, _FINE), (~fine, _COARSE)):
+        size = max(1, _CHUNK // (len(mean) * len(z)))
+        columns = np.flatnonzero(chosen)
+        for start in range(0, len(columns), size):
+            part = columns[start : start + size]
+            f = mean[:, part, None] + sd[:, part, None] * z
+            out[part] = surface.weights @ (_reading_meets(surface, f, target) @ _normal_weights(z))
+    return np.clip(out, 0.0, 1.0)
+
+
+def _reading_meets(surface: Surface, f: Array, target: Target) -> Array:
+    """Probability (S, n, Q) that a reading of wells with logits f (S, n, Q) meets the target."""
+    errors = surface.errors
+    g = mean_of("logit", f)
+    scale = (errors.scale**2).sum(1)[:, None, None]
+    sd = np.sqrt((errors.noise**2)[:, None, None] + scale * g * g)
+    met = np.ones_like(g) if not np.isfinite(target.high) else _below((target.high - g) / sd)
+    if np.isfinite(target.low):
+        met = met - _below((target.low - g) / sd)
+    return met
+
+
+def process_mean(surface: Surface, moments: tuple[Array, Array]) -> Array:
+    """Posterior mean (n,) of the process mean g(f), natural unit."""
+    mean, variance = moments
+    if surface.link == "identity":
+        return np.asarray(surface.weights @ mean)
+    if surface.link == "log":
+        return np.asarray(surface.weights @ np.exp(mean + 0.5 * variance))
+    out = np.zeros(mean.shape[1])
+    sd = np.sqrt(variance)
+    for z, weight in zip(_FINE, _normal_weights(_FINE), strict=True):
+        out += weight * (surface.weights @ mean_of(surface.link, mean + z * sd))
+    return out
+
+
+def process_quantile(surface: Surface, moments: tuple[Array, Array], level: float) -> Array:
+    """Quantile (n,) of the process mean g(f), natural unit, by bisection on the mixture."""
+    mean, variance = moments
+    sd = np.sqrt(variance)
+    low, high = (mean - 8.0 * sd).min(0), (mean + 8.0 * sd).max(0)
+    for _ in range(40):
+        middle = 0.5 * (low + high)
+        under = surface.weights @ _below((middle - mean) / sd) < level
+        low, high = np.where(under, middle, low), np.where(under, high, middle)
+    return mean_of(surface.link, 0.5 * (low + high))
