@@ -3,6 +3,7 @@ from collections import Counter
 import pytest
 
 from muntin.bench import well_names
+from muntin.record import open_study
 from tests.benchmarks.make_example import EXAMPLE, PLATES, TARGET, tables, true_process, write
 
 
@@ -60,3 +61,15 @@ def test_a_spoiled_well_keeps_its_reading_and_its_reason():
     for row in rows:
         truth = true_process().recovery(float(row["elution_ph"]), float(row["salt"]))
         assert float(row["recovery"]) < 0.7 * float(truth)
+
+
+@pytest.mark.parametrize(
+    ("name", "wells", "read"), [("fab-elution", 60, 43), ("reactor-yield", 14, 14)]
+)
+def test_the_examples_are_sound_studies(name, wells, read):
+    study = open_study(EXAMPLE.parent / name)
+    assert len(study.wells) == wells
+    (response,) = study.definition.judged
+    assert len(study.readings(response.name)) == read
+    for factor in study.definition.factors:
+        assert study.readings(response.name)[factor.name].between(factor.low, factor.high).all()
