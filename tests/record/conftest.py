@@ -6,6 +6,7 @@ from collections.abc import Callable, Mapping
 from pathlib import Path
 
 import pytest
+from hypothesis import settings
 
 STUDY = """\
 [study]
@@ -51,6 +52,7 @@ C1,blank,,,,0.01,,,
 C2,load,,,,,,,
 """
 
+STEADY = settings(deadline=None, derandomize=True)
 FILES = {"study.toml": STUDY, "plates/plate-01.csv": PLATE}
 Files = Mapping[str, str | bytes]
 

@@ -55,7 +55,8 @@ KEYS = {
     ),
     "factors_as_one_table": (
         {
-            TOML: '[study]\ntitle = "x"\n[factors]\nname = "ph"\n[[responses]]\nname = "y1"\nkind = "real"'
+            TOML: '[study]\ntitle = "x"\n[factors]\nname = "ph"\n'
+            '[[responses]]\nname = "y1"\nkind = "real"'
         },
         ["study.toml, factors: must be one or more tables, each headed [[factors]]"],
     ),
@@ -331,8 +332,8 @@ KEYS = {
         ],
     ),
     "protein_reserved": (
-        {TOML: STUDY + "[protein]\navailable_mg = 10\nreserved_mg = 20\nper_well_mg = 0.2\n"},
-        ["study.toml, protein, reserved_mg: 20 must lie below available_mg, which is 10"],
+        {TOML: STUDY + "[protein]\navailable_mg = 10\nreserved_mg = 10\nper_well_mg = 0.2\n"},
+        ["study.toml, protein, reserved_mg: 10 must lie below available_mg, which is 10"],
     ),
     "free_wells": (
         {TOML: STUDY + '[plan]\nfree_wells = "A1:H13"\n'},
@@ -494,7 +495,8 @@ TABLES = {
     "text_for_a_reading": (
         plate("0.83", "n/a"),
         [
-            f'{AT_A1} recovery: "n/a" is not a number (leave the cell empty while its reading is awaited)'
+            f'{AT_A1} recovery: "n/a" is not a number '
+            "(leave the cell empty while its reading is awaited)"
         ],
     ),
     "infinity_for_a_reading": (
@@ -625,7 +627,8 @@ LATER = {
     "stock_of_no_factor": (
         {"stocks/plate-01.csv": "factor,target,measured\nsalte,100,101\n"},
         [
-            'stocks/plate-01.csv, row 2, column factor: "salte" is not a factor (did you mean "salt"?)'
+            'stocks/plate-01.csv, row 2, column factor: "salte" is not a factor '
+            '(did you mean "salt"?)'
         ],
     ),
     "stock_of_a_choice": (

@@ -132,11 +132,10 @@ class Factor(Keys):
         if self.choices is not None:
             return np.array(self.plan_choices or self.choices, dtype=object)
         low, high, step = self.span
-        slack = 1e-9 * step
         levels = _steps(low, high, step)
         floor = low if self.plan_low is None else self.plan_low
         ceiling = high if self.plan_high is None else self.plan_high
-        kept: Floats = levels[(levels >= floor - slack) & (levels <= ceiling + slack)]
+        kept: Floats = levels[(levels >= floor) & (levels <= ceiling)]
         return kept
 
     @property

@@ -107,6 +107,11 @@ def number(value: float) -> str:
     return f"{value:.10g}"
 
 
+def counted(count: int, what: str) -> str:
+    """Return "1 well" or "2 wells"."""
+    return f"{count} {what}" + ("" if count == 1 else "s")
+
+
 def listed(names: Iterable[str], most: int = 8) -> str:
     """Join names with commas; beyond `most`, count the others."""
     shown = list(names)

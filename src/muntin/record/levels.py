@@ -8,7 +8,7 @@ import numpy as np
 
 from muntin.record.cells import numbers
 from muntin.record.factors import Factor
-from muntin.record.faults import Fault, Findings, did_you_mean, listed, number
+from muntin.record.faults import Fault, Findings, counted, did_you_mean, listed, number
 from muntin.record.keys import Floats, Truths
 from muntin.record.stocks import Stock, stock_values
 from muntin.record.tables import Table
@@ -127,5 +127,6 @@ def _off_target(
     unit = f" {factor.unit}" if factor.unit else ""
     return [
         f"{table.file}: {factor.name} measured more than half a step ({number(half)}{unit}) off "
-        f"its target in {len(wells)} wells ({listed(wells)}); the measured values are used"
+        f"its target in {counted(len(wells), 'well')} ({listed(wells)}); the measured values are "
+        "used"
     ]

@@ -10,7 +10,9 @@ import pandas as pd
 from muntin.record.arithmetic import LimitError, check_limit, holds
 from muntin.record.factors import Factor
 from muntin.record.faults import Fault, quoted
-from muntin.record.keys import Keys, Text, Truths, key
+from muntin.record.keys import Floats, Keys, Text, Truths, key
+
+_PRIMES = (2, 3, 5, 7, 11, 13)
 
 
 class Limit(Keys):
@@ -60,20 +62,16 @@ def _fault(index: int, limit: Limit, problem: str, hint: str = "") -> Fault:
 def sample_conditions(factors: Sequence[Factor], most: int = 65_536) -> pd.DataFrame:
     """Return conditions on bench steps over the whole box, a column a factor (raw units).
 
-    All of them where there are at most `most`; else corners and an additive recurrence with the
-    generalised golden ratio (Roberts 2018), which covers the box evenly.
+    All of them where there are at most `most`; else the corners and `most` points of the Halton
+    sequence (Halton 1960), which cover the box evenly.
     """
     levels = [factor.levels() for factor in factors]
     counts = [len(level) for level in levels]
     if np.prod(counts, dtype=float) <= most:
         picks = np.indices(counts).reshape(len(counts), -1)
     else:
-        ratio = 2.0
-        for _ in range(60):
-            ratio = (1 + ratio) ** (1 / (len(counts) + 1))
-        shift = ratio ** -np.arange(1.0, len(counts) + 1)[:, None]
-        even = (0.5 + shift * np.arange(most)) % 1.0
         corners = np.indices([2] * len(counts)).reshape(len(counts), -1)
+        even = np.array([_radical_inverse(most, base) for base in _PRIMES[: len(counts)]])
         size = np.array(counts)[:, None]
         picks = np.hstack([corners * (size - 1), np.floor(even * size).astype(int)])
     return pd.DataFrame(
@@ -82,3 +80,14 @@ def sample_conditions(factors: Sequence[Factor], most: int = 65_536) -> pd.DataF
             for factor, level, pick in zip(factors, levels, picks, strict=True)
         }
     )
+
+
+def _radical_inverse(count: int, base: int) -> Floats:
+    """Return 1 to `count` with their digits in `base` mirrored at the point, in (0, 1)."""
+    rest, weight = np.arange(1, count + 1), 1.0
+    mirrored = np.zeros(count)
+    while rest.any():
+        weight /= base
+        mirrored += weight * (rest % base)
+        rest //= base
+    return mirrored

@@ -9,7 +9,7 @@ import numpy as np
 import pandas as pd
 
 from muntin.record.definition import Definition
-from muntin.record.faults import listed, number, quoted
+from muntin.record.faults import counted, listed, number, quoted
 
 
 def definition_notices(definition: Definition) -> Iterator[str]:
@@ -35,7 +35,7 @@ def well_notices(
     """
     for plate, why in void.items():
         count = int((wells["plate"] == plate).sum())
-        yield f"{plate} does not count, {wells_text(count)} left out: {why}"
+        yield f"{plate} does not count, {counted(count, 'well')} left out: {why}"
     counting = wells[~wells["plate"].isin([*void])]
     yield from _reasons(counting, "exclude", "")
     for response in definition.responses:
@@ -45,12 +45,12 @@ def well_notices(
         states = counting[f"{name}_state"]
         for name_of, group in counting[states == "censored"].groupby("plate", sort=False):
             yield (
-                f"{name_of}: {_readings_text(len(group))} of {name} censored (< or >) and left out "
-                f"({listed(group['well'])})"
+                f"{name_of}: {counted(len(group), 'reading')} of {name} censored (< or >) and left "
+                f"out ({listed(group['well'])})"
             )
         awaited = int((states == "awaited").sum())
         if awaited:
-            yield f"{name} is awaited in {awaited} of {wells_text(len(counting))}"
+            yield f"{name} is awaited in {awaited} of {counted(len(counting), 'well')}"
         values = counting[name].dropna()
         if response.per_cent and len(values) and np.all(values <= 1.5):
             yield (
@@ -65,7 +65,7 @@ def _reasons(wells: pd.DataFrame, column: str, what: str) -> Iterator[str]:
         if why:
             groups[plate, why].append(well)
     for (plate, why), names in groups.items():
-        left = f"{_readings_text(len(names))}{what}" if what else wells_text(len(names))
+        left = f"{counted(len(names), 'reading')}{what}" if what else counted(len(names), "well")
         yield f"{plate}: {left} left out ({listed(names)}): {quoted(why)}"
 
 
@@ -75,12 +75,3 @@ def column_notice(definition: Definition, others: Sequence[str]) -> Iterator[str
     unused = [name for name in dict.fromkeys(others) if name not in used]
     if unused:
         yield f"columns passed through, not used: {listed(unused)}"
-
-
-def wells_text(count: int) -> str:
-    """Return "1 well" or "n wells"."""
-    return f"{count} well" + ("s" if count != 1 else "")
-
-
-def _readings_text(count: int) -> str:
-    return f"{count} reading" + ("s" if count != 1 else "")

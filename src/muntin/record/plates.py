@@ -13,7 +13,7 @@ import pandas as pd
 from muntin.record.cells import reasons
 from muntin.record.definition import Definition
 from muntin.record.factors import Factor
-from muntin.record.faults import Fault, Findings, did_you_mean, listed, nearest, quoted
+from muntin.record.faults import Fault, Findings, counted, did_you_mean, listed, nearest, quoted
 from muntin.record.keys import Truths
 from muntin.record.levels import read_choices, read_levels
 from muntin.record.readings import INFORMING, Reading, read_readings, response_columns
@@ -202,4 +202,6 @@ def outside_limits(name: str, definition: Definition, rows: PlateRows) -> list[s
     wells = [rows.columns["well"][row] for row in rows.needed if not allowed[row]]
     if not wells:
         return []
-    return [f"{name}: {len(wells)} wells outside the limits ({listed(wells)}); they are used"]
+    return [
+        f"{name}: {counted(len(wells), 'well')} outside the limits ({listed(wells)}); they are used"
+    ]

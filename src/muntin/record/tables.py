@@ -202,19 +202,37 @@ class _SheetError(ValueError):
 
 
 def _sheet_rows(raw: bytes) -> list[tuple[int, list[str]]]:
-    from openpyxl import load_workbook
-
     broken = (zipfile.BadZipFile, zlib.error, EOFError)
     wrong = (KeyError, ValueError, TypeError, IndexError, AttributeError, SyntaxError)
     try:
-        with warnings.catch_warnings():
-            warnings.simplefilter("ignore")
-            book = load_workbook(io.BytesIO(raw), read_only=True, data_only=True)
-            rows = [_shown(row) for row in book.worksheets[0].iter_rows(values_only=True)]
-            book.close()
+        rows = _first_sheet(raw, data_only=True)
+        if _has_formulas(raw):
+            # A formula that was never calculated has no value; its text says so in the fault.
+            texts = _first_sheet(raw, data_only=False)
+            rows = [
+                [text if value is None else value for value, text in zip(*both, strict=True)]
+                for both in zip(rows, texts, strict=True)
+            ]
     except (*broken, *wrong):
         raise _SheetError from None
-    return list(enumerate(rows, start=1))
+    return [(number, _shown(row)) for number, row in enumerate(rows, start=1)]
+
+
+def _first_sheet(raw: bytes, data_only: bool) -> list[list[Any]]:
+    from openpyxl import load_workbook
+
+    with warnings.catch_warnings():
+        warnings.simplefilter("ignore")
+        book = load_workbook(io.BytesIO(raw), read_only=True, data_only=data_only)
+        rows = [list(row) for row in book.worksheets[0].iter_rows(values_only=True)]
+        book.close()
+    return rows
+
+
+def _has_formulas(raw: bytes) -> bool:
+    with zipfile.ZipFile(io.BytesIO(raw)) as archive:
+        sheets = [name for name in archive.namelist() if name.startswith("xl/worksheets/")]
+        return any(b"<f" in archive.read(name) for name in sheets)
 
 
 def _shown(row: Iterable[object]) -> list[str]:

@@ -9,7 +9,7 @@ import numpy as np
 import pandas as pd
 
 from muntin.record.definition import STUDY_FILE, Definition
-from muntin.record.faults import Fault, did_you_mean, nearest, quoted
+from muntin.record.faults import Fault, counted, did_you_mean, nearest, quoted
 from muntin.record.plates import PlateRows
 from muntin.record.readings import INFORMING, Reading, reading_faults
 from muntin.record.tables import Table, missing_column
@@ -85,8 +85,8 @@ def no_reading_fault(definition: Definition, counting: pd.DataFrame) -> Fault | 
     plates = counting["plate"].nunique()
     return Fault(
         file="plates",
-        problem=f"hold no reading of any response in {len(counting)} wells on {plates} plate"
-        + ("s" if plates > 1 else ""),
+        problem=f"hold no reading of any response in {counted(len(counting), 'well')} "
+        f"on {counted(plates, 'plate')}",
         hint=f"fill in {', '.join(names)}, or keep a table in plans/ until it was run",
     )
 
