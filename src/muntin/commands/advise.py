@@ -1,0 +1,37 @@
+"""`muntin advise`: all of it, between two plates."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+
+from muntin.commands.shared import (
+    Aim,
+    AimOption,
+    Folder,
+    Output,
+    Surrogate,
+    SurrogateOption,
+    Wells,
+    command,
+)
+
+
+@command
+def advise(
+    folder: Folder,
+    seed: int,
+    tell: Callable[[str], None],
+    wells: Wells = 24,
+    aim: AimOption = Aim.edge,
+    surrogate: SurrogateOption = Surrogate.stacked,
+) -> Output:
+    """Check, assess and plan; write the plan to plans/ and all of it to advice/."""
+    from muntin.advise import advise as advise_on
+    from muntin.report.text import advice_screen
+
+    advice = advise_on(
+        folder, wells=wells, aim=aim.value, surrogate=surrogate.value, seed=seed, tell=tell
+    )
+    return Output(
+        advice.facts, advice_screen(advice.view, advice.window, advice.plan, advice.place)
+    )

@@ -1,0 +1,57 @@
+"""`muntin assess`: where do I stand?"""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from pathlib import Path
+from typing import Annotated, Any
+
+import typer
+
+from muntin.commands.shared import Folder, Output, Surrogate, SurrogateOption, command
+
+At = Annotated[Path | None, typer.Option(metavar="TABLE", help="conditions, a column a factor")]
+Out = Annotated[
+    Path | None,
+    typer.Option(metavar="TABLE", help="where to write what is known there, or everywhere (.csv)"),
+]
+
+
+@command
+def assess(
+    folder: Folder,
+    seed: int,
+    tell: Callable[[str], None],
+    at: At = None,
+    out: Out = None,
+    surrogate: SurrogateOption = Surrogate.stacked,
+) -> Output:
+    """Judge every condition of the range, or those of a table, and check the model."""
+    from muntin.commands.conditions import check_out, known_at, read_conditions, write_table
+    from muntin.record import open_study
+    from muntin.report.facts import records, standing_facts, study_facts
+    from muntin.report.text import assess_screen
+    from muntin.window.assessment import assess as judge
+    from muntin.window.grid import judged_grid
+
+    tell("reading the study")
+    study = open_study(folder)
+    conditions = None if at is None else read_conditions(at, study.definition)
+    if out is not None:
+        check_out(out, at, study.folder)
+    tell("fitting the readings")
+    view = judge(study, surrogate=surrogate.value, seed=seed)
+    window = None if view.fresh else view.window()
+    facts: dict[str, Any] = {
+        "command": "assess",
+        "settings": {"surrogate": surrogate.value, "seed": seed},
+    }
+    facts |= {"study": study_facts(study), **standing_facts(view, window)}
+    known = None if conditions is None else known_at(view, conditions)
+    if known is not None:
+        facts["at"] = records(known)
+    if out is not None:
+        everywhere = judged_grid(study.definition)[0]
+        write_table(known_at(view, everywhere) if known is None else known, out)
+        facts["files"] = [str(out)]
+    return Output(facts, assess_screen(view, window, known, out))

@@ -1,0 +1,140 @@
+"""What all commands share: their common options, how they print and how they end."""
+
+from __future__ import annotations
+
+import inspect
+import json
+import sys
+from collections.abc import Callable, Iterator
+from contextlib import contextmanager
+from dataclasses import dataclass
+from enum import StrEnum
+from pathlib import Path
+from typing import TYPE_CHECKING, Annotated, Any
+
+import typer
+
+if TYPE_CHECKING:
+    from rich.console import RenderableType
+
+_WIDTH = 100
+
+Folder = Annotated[Path, typer.Argument(metavar="DIR", help="the study's folder")]
+Wells = Annotated[int, typer.Option(min=1, help="test wells of the next plate; others come on top")]
+
+
+class Aim(StrEnum):
+    """What the next plate is for."""
+
+    edge = "edge"
+    best = "best"
+    both = "both"
+
+
+class Surrogate(StrEnum):
+    """Which surrogate is fitted."""
+
+    stacked = "stacked"
+    gp = "gp"
+    quadratic = "quadratic"
+
+
+AimOption = Annotated[
+    Aim, typer.Option(help="find the window's edge, the best condition, or take turns")
+]
+SurrogateOption = Annotated[
+    Surrogate, typer.Option(help="Gaussian process, quadratic polynomial, or both stacked")
+]
+_COMMON: dict[str, Any] = {
+    "seed": Annotated[int, typer.Option(min=0, help="same seed and input, same numbers")],
+    "as_json": Annotated[bool, typer.Option("--json", help="print one JSON document")],
+    "quiet": Annotated[bool, typer.Option("--quiet", help="print nothing but faults")],
+}
+_DEFAULTS = {"seed": 1, "as_json": False, "quiet": False}
+
+
+@dataclass(frozen=True)
+class Output:
+    """What a command found: plain values for --json, and the screen."""
+
+    facts: dict[str, Any]
+    screen: RenderableType
+
+
+def command(work: Callable[..., Output]) -> Callable[..., None]:
+    """Give a command --seed, --json and --quiet, print its output, and turn faults into exit 2.
+
+    `work` takes `seed` where it needs one, and `tell` where it reports its steps.
+    """
+    own = inspect.signature(work, eval_str=True).parameters
+
+    def run(**given: Any) -> None:
+        from muntin.record.faults import StudyFaults
+
+        common = {name: given.pop(name, _DEFAULTS[name]) for name in _COMMON}
+        if "seed" in own:
+            given["seed"] = common["seed"]
+        try:
+            with _progress(silent=common["quiet"]) as tell:
+                if "tell" in own:
+                    given["tell"] = tell
+                output = work(**given)
+        except StudyFaults as faults:
+            _print_faults(faults, common["as_json"])
+            raise typer.Exit(2) from None
+        _print(output, common["as_json"], common["quiet"])
+
+    keyword = inspect.Parameter.KEYWORD_ONLY
+    shown = [p for name, p in own.items() if name not in ("seed", "tell")]
+    common = [
+        inspect.Parameter(name, keyword, default=_DEFAULTS[name], annotation=kind)
+        for name, kind in _COMMON.items()
+    ]
+    parameters = [*(p.replace(kind=keyword) for p in shown), *common]
+    run.__signature__ = inspect.Signature(parameters)  # type: ignore[attr-defined]
+    run.__annotations__ = {p.name: p.annotation for p in parameters}
+    run.__name__, run.__doc__ = work.__name__, work.__doc__
+    return run
+
+
+def _print(output: Output, as_json: bool, quiet: bool) -> None:
+    if as_json:
+        from muntin.report.advice_files import json_text
+
+        sys.stdout.write(json_text(output.facts))
+    elif not quiet:
+        sys.stdout.write(_shown(output.screen))
+
+
+def _shown(screen: RenderableType) -> str:
+    """Return a screen as text, at most 100 columns wide, without blanks at the ends of lines."""
+    from rich.console import Console
+
+    console = Console(highlight=False, markup=False, emoji=False)
+    console.width = min(_WIDTH, console.width) if console.is_terminal else _WIDTH
+    with console.capture() as capture:
+        console.print(screen)
+    return "".join(f"{line.rstrip()}\n" for line in capture.get().splitlines())
+
+
+def _print_faults(faults: Any, as_json: bool) -> None:
+    for line in faults.lines():
+        typer.echo(line, err=True)
+    if as_json:
+        lines = [
+            {name: getattr(fault, name) for name in (*fault.__slots__, "text")}
+            for fault in faults.faults
+        ]
+        sys.stdout.write(json.dumps({"faults": lines}, ensure_ascii=False, indent=2) + "\n")
+
+
+@contextmanager
+def _progress(silent: bool) -> Iterator[Callable[[str], None]]:
+    """Give a function that shows the step at work on stderr, where that is a terminal."""
+    if silent or not sys.stderr.isatty():
+        yield lambda _: None
+        return
+    from rich.console import Console
+
+    with Console(stderr=True).status("") as status:
+        yield lambda step: status.update(step)

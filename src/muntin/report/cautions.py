@@ -1,0 +1,30 @@
+"""What to keep in mind before the numbers are used."""
+
+from __future__ import annotations
+
+from muntin.record.faults import number
+from muntin.report.words import joined, labels
+from muntin.window.assessment import Assessment
+
+_AID = "Development aid, not for release decisions."
+_PLATE = "A plate is not a column: confirm set point and edges of the window on columns."
+_CHOSEN = "Repeat the set point before believing it: the best of many looks better than it is."
+_SAFETY = (
+    "Site procedures and licensed practice come first; care with acids, caustic and azide; balance "
+    "the rotor."
+)
+
+
+def cautions(view: Assessment) -> tuple[str, ...]:
+    """Return the cautions that go with any advice on this study, the provisional one first."""
+    definition = view.study.definition
+    said = []
+    if view.awaited and not view.fresh:
+        said.append(f"Provisional: {labels(definition, view.awaited)} not read yet.")
+    fixed = [
+        f"{name} {value if isinstance(value, str) else number(value)}"
+        for name, value in definition.fixed.items()
+    ]
+    told = f" ({joined(fixed)})" if fixed else ""
+    held = f"Holds for this feed, resin lot, load and handling only{told}."
+    return (*said, _AID, _PLATE, held, *(() if view.fresh else (_CHOSEN,)), _SAFETY)

@@ -1,0 +1,172 @@
+"""The map: judged probability over two factors, with wells run and wells proposed."""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING
+
+import numpy as np
+import pandas as pd
+from numpy.typing import NDArray
+
+from muntin.record.definition import Definition
+from muntin.record.factors import Factor
+from muntin.report.markers import figure_legend, mark_proposed, mark_run, mark_set_point
+from muntin.report.style import (
+    BARRED,
+    INK,
+    QUIET,
+    dress,
+    factor_axis,
+    halo,
+    new_figure,
+    probability_colours,
+)
+from muntin.report.words import chance_text
+from muntin.window.window import Window
+
+if TYPE_CHECKING:
+    from matplotlib.axes import Axes
+    from matplotlib.contour import QuadContourSet
+    from matplotlib.figure import Figure
+
+Array = NDArray[np.float64]
+_MOST_CHOICES = 4
+
+
+def map_factors(definition: Definition) -> tuple[Factor, Factor, Factor | None] | None:
+    """Return the factors of a map: x, y and the choices to have a panel each, if a map fits."""
+    ranged = [factor for factor in definition.factors if factor.continuous]
+    others = [factor for factor in definition.factors if not factor.continuous]
+    few = all(len(factor.choices or ()) <= _MOST_CHOICES for factor in others)
+    if len(ranged) != 2 or len(others) > 1 or not few:
+        return None
+    return ranged[0], ranged[1], others[0] if others else None
+
+
+def draw_map(
+    definition: Definition,
+    window: Window | None,
+    run: pd.DataFrame,
+    proposed: pd.DataFrame,
+    titles: tuple[str, str],
+) -> Figure:
+    """Draw one panel a choice. `run` and `proposed` have a row a condition, factors in columns.
+
+    Without a window there is no probability to show, only the plan. Raises ValueError where the
+    study does not have two factors with a range and at most one with few choices.
+    """
+    factors = map_factors(definition)
+    if factors is None:
+        raise ValueError("a map needs two factors with a range, and at most one with few choices")
+    x, y, panel = factors
+    choices: list[str | None] = [None] if panel is None else list(panel.choices or ())
+    columns = min(2, len(choices)) if len(choices) != 3 else 3
+    rows = -(-len(choices) // columns)
+    height = 6.2 if columns == 1 else 0.9 + rows * (8.0 / columns + 0.6)
+    figure = new_figure(height, *titles)
+    grid = figure.subplots(rows, columns, squeeze=False, sharex=True, sharey=True)
+    panels: list[Axes] = list(grid.flat)
+    shade = None
+    for axes, choice in zip(panels, choices, strict=True):
+        factor_axis(axes, x, "x")
+        factor_axis(axes, y, "y")
+        dress(axes)
+        axes.label_outer()
+        if panel is not None:
+            axes.set_title(f"{panel.label} {choice}", loc="left", fontsize=10, color=INK)
+        if window is not None:
+            shade = _shade(axes, definition, _of(window.grid, panel, choice), x, y, panel is None)
+            set_point = window.setpoint
+            if panel is None or set_point[panel.name] == choice:
+                _box(axes, window, x, y)
+                mark_set_point(axes, window, float(set_point[x.name]), float(set_point[y.name]))
+        mark_run(axes, _of(run, panel, choice), x.name, y.name)
+        mark_proposed(axes, _of(proposed, panel, choice), x.name, y.name)
+    if shade is not None:
+        _colour_bar(figure, shade, panels, definition)
+    figure_legend(figure, panels)
+    return figure
+
+
+def _of(table: pd.DataFrame, panel: Factor | None, choice: str | None) -> pd.DataFrame:
+    return table if panel is None else table[table[panel.name] == choice]
+
+
+def _shade(
+    axes: Axes, definition: Definition, grid: pd.DataFrame, x: Factor, y: Factor, single: bool
+) -> QuadContourSet | None:
+    """Shade probability in tenths and draw the edge; what limits forbid is hatched."""
+    table = grid.pivot(index=y.name, columns=x.name, values="probability")
+    if min(table.shape) < 2:
+        return None
+    across, up = table.columns.to_numpy(dtype=float), table.index.to_numpy(dtype=float)
+    p = np.ma.masked_invalid(table.to_numpy(dtype=float))
+    if p.mask.any():
+        _bar(axes, across, up)
+    shade = axes.contourf(
+        across, up, p, levels=np.linspace(0, 1, 11), cmap=probability_colours(), zorder=1
+    )
+    required = definition.required_probability
+    if p.min() < required < p.max():
+        edge = axes.contour(across, up, p, levels=[required], colors=INK, linewidths=1.8, zorder=2)
+        axes.plot([], [], color=INK, linewidth=1.8, label=f"edge, {chance_text(required)}")
+        if single:
+            for label in axes.clabel(edge, fmt=chance_text(required), fontsize=9, inline=False):
+                label.set_path_effects(halo(3.0))
+    return shade
+
+
+def _bar(axes: Axes, across: Array, up: Array) -> None:
+    """Hatch the range; probability covers it again where conditions are allowed."""
+    from matplotlib.patches import Rectangle
+
+    barred = Rectangle(
+        (across[0], up[0]),
+        float(np.ptp(across)),
+        float(np.ptp(up)),
+        facecolor=BARRED,
+        edgecolor="#cfcac0",
+        hatch="////",
+        linewidth=0,
+        label="not allowed",
+        zorder=0,
+    )
+    axes.add_patch(barred)
+
+
+def _box(axes: Axes, window: Window, x: Factor, y: Factor) -> None:
+    """Outline the ranges that hold together."""
+    if window.ranges is None:
+        return
+    from matplotlib.patches import Rectangle
+
+    ends = [np.asarray(window.ranges[f.name], dtype=float) for f in (x, y)]
+    (left, right), (low, high) = ends
+    axes.add_patch(
+        Rectangle(
+            (left, low),
+            right - left,
+            high - low,
+            fill=False,
+            edgecolor=INK,
+            linewidth=1.1,
+            linestyle=(0, (5, 3)),
+            label="ranges that hold together",
+            zorder=3,
+        )
+    )
+
+
+def _colour_bar(
+    figure: Figure, shade: QuadContourSet, every: list[Axes], definition: Definition
+) -> None:
+    says = {
+        "mean": "Probability that the process mean passes",
+        "well": "Probability that a new well passes",
+        "kept": "Probability that a new well passes, factors kept within ±",
+    }
+    bar = figure.colorbar(shade, ax=every, pad=0.02, shrink=0.9, aspect=30)
+    bar.set_label(says[definition.judged_by], color=INK, fontsize=9)
+    bar.ax.axhline(definition.required_probability, color=INK, linewidth=1.8)
+    bar.ax.tick_params(labelsize=9, colors=QUIET, labelcolor=INK)
+    bar.outline.set_edgecolor(QUIET)

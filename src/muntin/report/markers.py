@@ -1,0 +1,114 @@
+"""Markers of wells run, wells proposed and the set point; all read without colour."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable
+from typing import TYPE_CHECKING, Any
+
+import pandas as pd
+
+from muntin.report.style import ACCENT, INK, PAPER, QUIET, halo
+from muntin.report.words import chance_text
+from muntin.window.window import Window
+
+if TYPE_CHECKING:
+    from matplotlib.axes import Axes
+    from matplotlib.figure import Figure
+
+_RUN: dict[str, dict[str, Any]] = {
+    "passed": {"marker": "o", "markerfacecolor": INK},
+    "failed": {"marker": "o", "markerfacecolor": PAPER},
+    "between": {"marker": "o", "markerfacecolor": INK, "fillstyle": "left"},
+    "awaited": {"marker": "x"},
+    "tracked": {"marker": "o", "markerfacecolor": QUIET},
+}
+
+
+def mark_run(axes: Axes, table: pd.DataFrame, x: str, y: str) -> None:
+    """Mark conditions that were run: filled passed, open failed, half filled between."""
+    for verdict, look in _RUN.items():
+        here = table[table["verdict"] == verdict]
+        if len(here):
+            axes.plot(
+                here[x],
+                here[y],
+                linestyle="none",
+                markersize=7,
+                markeredgecolor=INK,
+                markerfacecoloralt=PAPER,
+                markeredgewidth=1.1,
+                path_effects=halo(3.0),
+                label="run" if verdict == "tracked" else f"run, {verdict}",
+                zorder=4,
+                **look,
+            )
+
+
+def mark_proposed(axes: Axes, table: pd.DataFrame, x: str, y: str) -> None:
+    """Mark conditions of the next plate by diamonds."""
+    if not len(table):
+        return
+    axes.plot(
+        table[x],
+        table[y],
+        linestyle="none",
+        marker="D",
+        markersize=9,
+        markerfacecolor="none",
+        markeredgecolor=ACCENT,
+        markeredgewidth=1.8,
+        path_effects=halo(3.4),
+        label="proposed",
+        zorder=5,
+    )
+
+
+def mark_set_point(axes: Axes, window: Window, x: float, y: float) -> None:
+    """Mark the set point, or the best condition so far where none is inside, by a star."""
+    axes.plot(
+        [x],
+        [y],
+        linestyle="none",
+        marker="*",
+        markersize=17,
+        markerfacecolor=PAPER,
+        markeredgecolor=INK,
+        markeredgewidth=1.2,
+        label="set point" if window.share else "best so far",
+        zorder=7,
+    )
+
+
+def required_line(axes: Axes, required: float) -> None:
+    """Draw the required probability across a panel whose y axis is probability."""
+    axes.axhline(required, color=INK, linewidth=1, linestyle=(0, (4, 3)), zorder=1)
+    axes.annotate(
+        f"required {chance_text(required)}",
+        (1.0, required),
+        xycoords=("axes fraction", "data"),
+        xytext=(-2, -3),
+        textcoords="offset points",
+        ha="right",
+        va="top",
+        fontsize=8,
+        color=INK,
+        path_effects=halo(2.5),
+    )
+
+
+def figure_legend(figure: Figure, every: Iterable[Axes]) -> None:
+    """Put one legend below the panels, each marker once."""
+    found: dict[str, Any] = {}
+    for axes in every:
+        for handle, label in zip(*axes.get_legend_handles_labels(), strict=True):
+            found.setdefault(label, handle)
+    if found:
+        figure.legend(
+            found.values(),
+            found.keys(),
+            loc="outside lower left",
+            ncols=min(6, len(found)),
+            frameon=False,
+            fontsize=9,
+            labelcolor=INK,
+        )

@@ -1,0 +1,97 @@
+"""The plan as a plate table, ready to be filled in and moved to plates/."""
+
+from __future__ import annotations
+
+import csv
+import io
+import re
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+import pandas as pd
+
+from muntin.record.definition import Definition
+from muntin.record.files import write_atomic
+from muntin.report.words import value_text
+
+if TYPE_CHECKING:
+    from muntin.bench.plan import Plan
+
+PLANS, ADVICE = "plans", "advice"
+PLAN_COPY = "plan.csv"
+
+
+def plan_columns(definition: Definition) -> list[str]:
+    """Return the columns of the plan's table; readings and other cells to fill in are empty."""
+    shared = [name for error in definition.shared_errors for name in error.by]
+    own = [name for name in shared if name != "plate" and name not in definition.factor_names]
+    responses = [response.name for response in definition.responses]
+    factors = definition.factor_names
+    return list(
+        dict.fromkeys(["well", "role", *factors, *own, *responses, "exclude", "p_now", "reason"])
+    )
+
+
+def plan_table_text(definition: Definition, plan: Plan) -> str:
+    """Return the plan as a plate table (.csv), well by well along the rows of the plate."""
+    stream = io.StringIO()
+    columns = plan_columns(definition)
+    writer = csv.DictWriter(stream, columns, restval="", lineterminator="\n")
+    writer.writeheader()
+    rows = plan.wells.to_dict("records")
+    for row in sorted(rows, key=lambda row: _position(row["well"])):
+        writer.writerow(_cells(definition, row))
+    return stream.getvalue()
+
+
+def _position(well: str) -> tuple[int, str, int]:
+    found = re.fullmatch(r"([A-Z]+)([0-9]+)", well)
+    assert found is not None
+    return len(found[1]), found[1], int(found[2])
+
+
+def _cells(definition: Definition, row: dict[Any, Any]) -> dict[str, str]:
+    cells = {"well": row["well"], "role": row["role"], "reason": row["reason"] or ""}
+    for factor in definition.factors:
+        value = row[factor.name]
+        empty = value is None or value == "" or pd.isna(value)
+        cells[factor.name] = "" if empty else value_text(factor, value)
+    cells["p_now"] = "" if pd.isna(row["p_now"]) else f"{row['p_now']:.3f}"
+    return cells
+
+
+def plan_path(folder: Path, plate: str, text: str) -> tuple[Path, str]:
+    """Return where to write a plan so that no edited one is lost, and a remark on it.
+
+    A plan of that name that reads the same, or that equals a copy kept with earlier advice, is
+    taken as untouched and makes way; any other stays, and the new one gets a number.
+    """
+    path = folder / PLANS / f"{plate}.csv"
+    if not path.exists() or _untouched(folder, plate, path, text):
+        return path, ""
+    number = 2
+    while (other := path.with_name(f"{plate}.r{number}.csv")).exists() and not _untouched(
+        folder, plate, other, text
+    ):
+        number += 1
+    remark = (
+        f"{PLANS}/{path.name} was edited or differs, and was left as it is; rename the new plan to "
+        f"{path.name} when you move it to plates/."
+    )
+    return other, remark
+
+
+def _untouched(folder: Path, plate: str, path: Path, text: str) -> bool:
+    try:
+        there = path.read_bytes()
+        copies = [p.read_bytes() for p in (folder / ADVICE / plate).glob(f"r*/{PLAN_COPY}")]
+    except OSError:
+        return False
+    return there in (text.encode("utf-8"), *copies)
+
+
+def write_plan(folder: Path, plate: str, text: str) -> tuple[Path, str]:
+    """Write a plan into plans/; return its path and a remark. Raises StudyFaults."""
+    path, remark = plan_path(folder, plate, text)
+    write_atomic(path, text)
+    return path, remark

@@ -1,0 +1,255 @@
+"""Screens for the terminal: headings on the left, plain sentences beside them."""
+
+from __future__ import annotations
+
+import io
+from collections.abc import Sequence
+from pathlib import Path
+from typing import TYPE_CHECKING
+
+import pandas as pd
+from rich.console import Console, Group, RenderableType
+from rich.table import Table
+from rich.text import Text
+
+from muntin.record.definition import Definition
+from muntin.record.faults import counted
+from muntin.record.study import Study
+from muntin.report.advice_files import Place
+from muntin.report.cautions import cautions
+from muntin.report.plan_text import (
+    bridging_lines,
+    common_reason,
+    forecast_table,
+    known_table,
+    plan_heading,
+    plan_table,
+)
+from muntin.report.words import (
+    JUDGED_BY,
+    UNSUPPORTED,
+    WINDOW,
+    condition_text,
+    labels,
+    ranges_text,
+    reach_text,
+    share_text,
+    success_text,
+)
+from muntin.window.assessment import Assessment
+from muntin.window.checks import Check
+from muntin.window.window import Window
+
+if TYPE_CHECKING:
+    from muntin.bench.plan import Plan
+
+Section = tuple[str, Sequence[RenderableType]]
+_FEW = 3
+_PLAN_LINES = 10
+_SCREEN_LINES = 40
+
+
+def sheet(title: str, sections: Sequence[Section]) -> RenderableType:
+    """Return a titled screen; sections without lines are left out."""
+    grid = Table.grid(padding=(0, 2, 0, 0))
+    grid.add_column(no_wrap=True, min_width=8)
+    grid.add_column(overflow="fold")
+    for heading, lines in sections:
+        for index, line in enumerate(lines):
+            shown = Text(line) if isinstance(line, str) else line
+            grid.add_row(Text("" if index else heading, style="bold"), shown)
+    return Group(Text(title, style="bold"), grid)
+
+
+def read_lines(study: Study) -> list[str]:
+    """Return what was read, left out and awaited, in counts."""
+    counts = study.counts()
+    if not counts.plates:
+        return ["No plate yet."]
+    void = f" ({counts.void} void)" if counts.void else ""
+    total = (
+        f"{counted(counts.plates, 'plate')}{void}, {counted(counts.wells, 'well')}, "
+        f"{counted(counts.controls, 'control')}. "
+    )
+    parts = []
+    for response in study.definition.responses:
+        name = response.name
+        states = {
+            "left out": counts.excluded[name],
+            "censored and left out": counts.censored[name],
+            "awaited": counts.awaited[name],
+        }
+        others = "".join(f", {count} {state}" for state, count in states.items() if count)
+        parts.append(f"{response.label}: {counts.read[name]} read{others}")
+    return [total + "; ".join(parts) + "."]
+
+
+def few(
+    lines: Sequence[str], most: int = _FEW, where: str = "muntin check lists them"
+) -> list[str]:
+    """Return at most so many lines, and how many more there are."""
+    rest = len(lines) - most
+    return [*lines[:most], *([f"and {rest} more: {where}"] if rest > 0 else [])]
+
+
+def check_lines(checks: Sequence[Check]) -> list[str]:
+    """Return the checks of the model: failures first, then what passed in short."""
+    failed = sorted((c for c in checks if not c.passed), key=lambda c: not c.serious)
+    lines = [f"{'FAILED' if c.serious else 'Note'}: {c.sentence}" for c in failed]
+    passed = [c for c in checks if c.passed]
+    if passed:
+        names = ", ".join(dict.fromkeys(c.name for c in passed))
+        lines.append(f"Passed, {len(passed)} of {len(checks)}: {names}. {passed[0].sentence}")
+    return lines
+
+
+def window_lines(view: Assessment, window: Window | None) -> list[str]:
+    """Return where the window stands."""
+    definition = view.study.definition
+    if window is None:
+        return ["Nothing has been read yet, so there is no window; an opening plate comes first."]
+    if window.unsupported:
+        return [f"{_capital(WINDOW)}: {UNSUPPORTED}.", *few(window.unsupported)]
+    alone = tuple(r.name for r in definition.judged if r.name not in view.awaited)
+    of = f" for {labels(definition, alone)} alone" if view.awaited else ""
+    lines = [
+        f"{_capital(WINDOW)}{of}: {reach_text(definition, window.share)} "
+        f"{JUDGED_BY[definition.judged_by]}.",
+        _set_point(definition, window),
+    ]
+    if window.ranges is not None:
+        lines.append(f"Ranges that hold together: {ranges_text(definition, window.ranges)}.")
+    lines.append(f"Share of the range we may still call wrongly: {share_text(window.wrong_share)}.")
+    return lines + _stop(view, window)
+
+
+def _set_point(definition: Definition, window: Window) -> str:
+    kept = definition.judged_by == "kept"
+    where = condition_text(definition, window.setpoint.to_dict(), kept)
+    passes = success_text(definition, float(window.setpoint["probability"]))
+    return f"{'Set point' if window.share else 'The best so far'}: {where}: {passes}."
+
+
+def _stop(view: Assessment, window: Window) -> list[str]:
+    stop = view.study.definition.stop
+    if stop is None or view.awaited:
+        return []
+    met = []
+    if stop.wrong_share is not None and window.wrong_share <= stop.wrong_share:
+        met.append(f"wrong_share {share_text(stop.wrong_share)}")
+    best = float(window.setpoint["probability"])
+    if stop.best_probability is not None and best >= stop.best_probability:
+        met.append(f"best_probability {share_text(stop.best_probability)}")
+    return (
+        [f"The study's stop rule is met ({' and '.join(met)}): no plate is needed."] if met else []
+    )
+
+
+def _capital(text: str) -> str:
+    return text[:1].upper() + text[1:]
+
+
+def check_screen(study: Study) -> RenderableType:
+    """Return the screen of `check`."""
+    return sheet(
+        study.definition.title,
+        [
+            ("Read", read_lines(study)),
+            ("Noted", study.notices),
+            ("Sound", ["No faults were found."]),
+        ],
+    )
+
+
+def standing(view: Assessment, window: Window | None) -> list[Section]:
+    """Return the sections on what was read, the checks and the window."""
+    study = view.study
+    awaited = labels(study.definition, view.awaited)
+    notes = [f"Awaited: {awaited}; the advice is provisional."] if view.awaited else []
+    return [
+        ("Read", read_lines(study)),
+        ("Noted", [*notes, *few(study.notices)]),
+        ("Checks", few(check_lines(view.checks), 4, "see --json")),
+        ("Window", window_lines(view, window)),
+    ]
+
+
+def assess_screen(
+    view: Assessment, window: Window | None, known: pd.DataFrame | None, out: Path | None
+) -> RenderableType:
+    """Return the screen of `assess`; `known` is the table of the conditions asked for."""
+    sections = standing(view, window)
+    if known is not None and out is None:
+        sections.append(("There", [known_table(view.study.definition, known)]))
+    if out is not None:
+        sections.append(("Written", [str(out)]))
+    return sheet(view.study.definition.title, sections)
+
+
+def plan_sections(view: Assessment, plan: Plan, lines: int) -> list[Section]:
+    """Return the sections on the next plate, its conditions in about so many lines, and on its
+    forecast.
+    """
+    definition = view.study.definition
+    told = [plan_heading(plan), *few(plan.notices, 2, "see --json")]
+    bridging = few(bridging_lines(definition, plan.wells), 2, "see the plan's table")
+    shared = common_reason(plan.wells)
+    told += [f"{_capital(shared)}."] if shared else []
+    return [
+        ("Next", [*told, *bridging, plan_table(definition, plan.wells, lines)]),
+        ("Forecast", [forecast_table(plan)]),
+    ]
+
+
+def propose_screen(view: Assessment, plan: Plan, path: Path, remark: str) -> RenderableType:
+    """Return the screen of `propose`."""
+    written = ("Written", _plan_lines(path, remark))
+    return sheet(view.study.definition.title, [*plan_sections(view, plan, _PLAN_LINES), written])
+
+
+def _plan_lines(path: Path, remark: str) -> list[str]:
+    to_do = "fill in the readings and move it to plates/"
+    return [f"{path}: {to_do}", *([remark] if remark else [])]
+
+
+def advice_screen(
+    view: Assessment, window: Window | None, plan: Plan, place: Place
+) -> RenderableType:
+    """Return the screen of `advise`: 40 lines at 100 columns, the plan's table cut to fit."""
+    written = [*_plan_lines(place.plan, place.remark), f"{place.folder}: map, advice.json, inputs"]
+    for lines in range(_PLAN_LINES, 1, -1):
+        screen = sheet(
+            view.study.definition.title,
+            [
+                *standing(view, window),
+                *plan_sections(view, plan, lines),
+                ("Cautions", [" ".join(cautions(view))]),
+                ("Written", written),
+            ],
+        )
+        if height(screen) <= _SCREEN_LINES:
+            break
+    return screen
+
+
+def height(screen: RenderableType, width: int = 100) -> int:
+    """Return the lines that a screen takes at so many columns."""
+    return len(Console(width=width, file=io.StringIO()).render_lines(screen))
+
+
+def new_screen(folder: Path, written: Sequence[Path]) -> RenderableType:
+    """Return the screen of `new`."""
+    study, plate = written
+    return sheet(
+        "A new study",
+        [
+            ("Written", [f"{study}: put your process in the example's place", str(plate)]),
+            (
+                "Next",
+                [
+                    f"muntin check {folder}    names whatever cannot be read",
+                    f"muntin advise {folder}   plans the opening plate",
+                ],
+            ),
+        ],
+    )

@@ -1,0 +1,105 @@
+"""Conditions, shares and counts in the words of the trade."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from decimal import Decimal
+from typing import Any
+
+from muntin.record.definition import Definition
+from muntin.record.factors import Factor
+
+WINDOW = "predicted operating window (plate scale)"
+UNSUPPORTED = "not supported by the data"
+JUDGED_BY = {
+    "mean": "that the process mean passes",
+    "well": "that a new well on a new plate passes",
+    "kept": "that a new well on a new plate passes, factors kept within their ±",
+}
+
+
+def decimals(factor: Factor) -> int:
+    """Return the decimals that show every bench step of a factor with a range."""
+    low, _, step = factor.span
+    exponents = [Decimal(repr(value)).normalize().as_tuple().exponent for value in (low, step)]
+    return max(0, *(-e for e in exponents if isinstance(e, int)))
+
+
+def value_text(factor: Factor, value: Any) -> str:
+    """Return a value of a factor as the bench writes it, without its unit."""
+    if not factor.continuous:
+        return str(value)
+    shown = f"{float(value):.{decimals(factor)}f}"
+    return shown if abs(float(shown) - float(value)) < 1e-9 else f"{float(value):.6g}"
+
+
+def setting_text(factor: Factor, value: Any, kept: bool = False) -> str:
+    """Return "Salt 250 mM", or "Salt 250 ± 12 mM" where asked and `kept_within` is given."""
+    width = ""
+    if kept and factor.kept_within is not None:
+        width = f" ± {float(factor.kept_within.at(float(value))):.2g}"
+    return f"{factor.label} {value_text(factor, value)}{width} {factor.unit}".rstrip()
+
+
+def condition_text(definition: Definition, condition: Mapping[Any, Any], kept: bool = False) -> str:
+    """Return a condition in words, such as "pH 5.6 ± 0.1 and Salt 250 ± 12 mM"."""
+    return joined([setting_text(f, condition[f.name], kept) for f in definition.factors])
+
+
+def ranges_text(definition: Definition, ranges: Mapping[str, tuple[Any, Any]]) -> str:
+    """Return ranges that hold together, such as "pH 5.0 to 5.8 and Salt 100 to 300 mM"."""
+    texts = []
+    for factor in definition.factors:
+        low, high = (value_text(factor, end) for end in ranges[factor.name])
+        span = low if low == high else f"{low} to {high}"
+        texts.append(f"{factor.label} {span} {factor.unit}".rstrip())
+    return joined(texts)
+
+
+def share_text(share: float) -> str:
+    """Return a share of 1 in per cent, never rounded to a certainty that it is not."""
+    if 0 < share < 0.0005:
+        return "under 0.1 %"
+    if 0.9995 < share < 1:
+        return "over 99.9 %"
+    return f"{100 * share:.1f} %"
+
+
+def chance_text(probability: float) -> str:
+    """Return a probability with two decimals, or more where it has more."""
+    short = f"{probability:.2f}"
+    return short if abs(float(short) - probability) < 1e-9 else f"{probability:g}"
+
+
+def reach_text(definition: Definition, share: float) -> str:
+    """Return "32.2 % of the range reaches a probability of 0.90"."""
+    required = chance_text(definition.required_probability)
+    part = share_text(share) if share else "nothing"
+    return f"{part} of the range reaches a probability of {required}"
+
+
+def success_text(definition: Definition, probability: float) -> str:
+    """Return what the judged probability means: "93.0 % of new wells pass"."""
+    if definition.judged_by == "mean":
+        return f"{share_text(probability)} probable that the process mean passes"
+    return f"{share_text(probability)} of new wells pass"
+
+
+def joined(texts: list[str]) -> str:
+    """Return "a", "a and b" or "a, b and c"."""
+    return " and ".join([", ".join(texts[:-1]), texts[-1]] if len(texts) > 1 else texts)
+
+
+def labels(definition: Definition, names: tuple[str, ...]) -> str:
+    """Return the labels of the responses with these names, joined."""
+    return joined([r.label for r in definition.responses if r.name in names])
+
+
+def amount_text(milligrams: float) -> str:
+    """Return an amount of protein with its unit."""
+    return f"{milligrams:.3g} mg"
+
+
+def axis_label(name: str, unit: str) -> str:
+    """Return "Salt (mM)", or the bare name where there is no unit."""
+    return f"{name} ({unit})" if unit else name
