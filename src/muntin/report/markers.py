@@ -15,6 +15,7 @@ if TYPE_CHECKING:
     from matplotlib.axes import Axes
     from matplotlib.figure import Figure
 
+_ONE_ROW = 5
 _RUN: dict[str, dict[str, Any]] = {
     "passed": {"marker": "o", "markerfacecolor": INK},
     "failed": {"marker": "o", "markerfacecolor": PAPER},
@@ -107,7 +108,7 @@ def figure_legend(figure: Figure, every: Iterable[Axes]) -> None:
             found.values(),
             found.keys(),
             loc="outside lower left",
-            ncols=min(6, len(found)),
+            ncols=len(found) if len(found) <= _ONE_ROW else 4,
             frameon=False,
             fontsize=9,
             labelcolor=INK,

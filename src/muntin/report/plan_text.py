@@ -46,20 +46,19 @@ def bridging_lines(definition: Definition, wells: pd.DataFrame) -> list[str]:
     ]
 
 
-def common_reason(wells: pd.DataFrame) -> str:
-    """Return the reason that all test wells share, as on an opening plate, or nothing."""
-    reasons = wells[wells["role"] == "test"]["reason"].unique()
-    return str(reasons[0]) if len(reasons) == 1 else ""
+def usual_reason(wells: pd.DataFrame) -> str:
+    """Return the reason that most test wells share, such as that of an opening plate."""
+    return str(wells[wells["role"] == "test"]["reason"].mode().iloc[0])
 
 
-def plan_table(definition: Definition, wells: pd.DataFrame, most: int) -> Table:
-    """Return the test wells in about so many rows, with their reasons unless all share one.
+def plan_table(definition: Definition, wells: pd.DataFrame, most: int, why: bool = True) -> Table:
+    """Return the test wells in about so many rows, with probability and reason if `why`.
 
     A row a condition, where all of them fit; else, with two factors, a row a level of one of them;
     else the first conditions only.
     """
     tests = wells[wells["role"] == "test"]
-    stock, why = _stock(definition, tests), not common_reason(wells)
+    stock = _stock(definition, tests)
     lines = _lines(definition, tests, definition.factors)
     few_levels = len(definition.factors) == 2 and tests[stock.name].nunique() <= most
     if len(lines) > most and few_levels:

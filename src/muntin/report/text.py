@@ -19,11 +19,11 @@ from muntin.report.advice_files import Place
 from muntin.report.cautions import cautions
 from muntin.report.plan_text import (
     bridging_lines,
-    common_reason,
     forecast_table,
     known_table,
     plan_heading,
     plan_table,
+    usual_reason,
 )
 from muntin.report.words import (
     JUDGED_BY,
@@ -193,10 +193,9 @@ def plan_sections(view: Assessment, plan: Plan, lines: int) -> list[Section]:
     definition = view.study.definition
     told = [plan_heading(plan), *few(plan.notices, 2, "see --json")]
     bridging = few(bridging_lines(definition, plan.wells), 2, "see the plan's table")
-    shared = common_reason(plan.wells)
-    told += [f"{_capital(shared)}."] if shared else []
+    told += [f"{_capital(usual_reason(plan.wells))}."] if view.fresh else []
     return [
-        ("Next", [*told, *bridging, plan_table(definition, plan.wells, lines)]),
+        ("Next", [*told, *bridging, plan_table(definition, plan.wells, lines, not view.fresh)]),
         ("Forecast", [forecast_table(plan)]),
     ]
 
