@@ -181,7 +181,7 @@ def test_propose_writes_a_plan_that_can_be_filled_and_read(study: Path) -> None:
     assert result.exit_code == 0, result.stderr
     plan = study / "plans" / "plate-02.csv"
     rows = rows_of(plan)
-    assert list(rows[0]) == "well role ph salt recovery exclude p_now reason".split()
+    assert list(rows[0]) == ["well", "role", "ph", "salt", "recovery", "exclude", "p_now", "reason"]
     assert sum(row["role"] == "test" for row in rows) == 5
     filled = [{**row, "recovery": "0.5"} if row["ph"] else row for row in rows]
     with (study / "plates" / "plate-02.csv").open("w", newline="") as stream:

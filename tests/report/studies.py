@@ -131,4 +131,6 @@ def small(folder: Path, **changed: str | bytes) -> Path:
 
 def tree(folder: Path) -> dict[str, bytes]:
     """Every file below a folder with its content, hidden ones too."""
-    return {p.relative_to(folder).as_posix(): p.read_bytes() for p in folder.rglob("*") if p.is_file()}
+    return {
+        p.relative_to(folder).as_posix(): p.read_bytes() for p in folder.rglob("*") if p.is_file()
+    }
