@@ -1,1 +1,20 @@
 """Plans and judges plate screens of chromatography conditions."""
+
+from muntin.bench.plan import Plan, propose
+from muntin.record import Study, StudyFaults, new_study, open_study
+from muntin.window.assessment import Assessment, assess
+from muntin.window.window import Window
+
+__version__ = "0.1.0"
+
+__all__ = [
+    "Assessment",
+    "Plan",
+    "Study",
+    "StudyFaults",
+    "Window",
+    "assess",
+    "new_study",
+    "open_study",
+    "propose",
+]

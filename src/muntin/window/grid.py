@@ -13,19 +13,21 @@ MOST = 4000
 _GRID_FACTORS = 3
 
 
-def judged_grid(definition: Definition, most: int = MOST) -> tuple[pd.DataFrame, bool]:
+def judged_grid(
+    definition: Definition, most: int = MOST, planned: bool = False
+) -> tuple[pd.DataFrame, bool]:
     """Conditions (rows, raw units) that fill the range, and whether they form a grid.
 
     Bench steps, coarsened evenly where there are more than `most`; Sobol' points on bench steps
-    beyond three factors.
+    beyond three factors. planned: only what new plans may use.
     """
     if len(definition.factors) > _GRID_FACTORS:
-        return _scattered(definition, most), False
-    levels = [factor.levels() for factor in definition.factors]
+        return _allowed(definition, scattered(definition, most, 0, planned)), False
+    levels = [f.plan_levels() if planned else f.levels() for f in definition.factors]
     while np.prod([float(len(v)) for v in levels]) > most:
         numeric = [i for i, f in enumerate(definition.factors) if f.continuous]
-        finest = max(numeric, key=lambda i: len(levels[i]))
-        if len(levels[finest]) < 4:
+        finest = max(numeric, key=lambda i: len(levels[i]), default=-1)
+        if finest < 0 or len(levels[finest]) < 4:
             break
         levels[finest] = thinned(levels[finest])
     grid = pd.MultiIndex.from_product(levels, names=definition.factor_names).to_frame(index=False)
@@ -51,10 +53,6 @@ def scattered(definition: Definition, count: int, seed: int, planned: bool) -> p
         for i, factor in enumerate(definition.factors)
     }
     return pd.DataFrame(columns)
-
-
-def _scattered(definition: Definition, most: int) -> pd.DataFrame:
-    return _allowed(definition, scattered(definition, most, seed=0, planned=False))
 
 
 def _pick(factor: Factor, unit: NDArray[np.float64], planned: bool) -> NDArray[np.object_]:

@@ -1,0 +1,99 @@
+"""Conditions that a new plate may run."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+import pandas as pd
+from numpy.typing import NDArray
+
+from muntin.record.definition import Definition
+from muntin.record.study import Study
+from muntin.window.grid import judged_grid
+
+MOST = 2000
+
+
+@dataclass(frozen=True)
+class RunCondition:
+    """A condition that was run: its factor values (targets), and the wells that ran it."""
+
+    values: tuple[object, ...]
+    wells: tuple[tuple[str, str], ...]
+    bridged: bool
+
+
+def run_conditions(study: Study) -> tuple[RunCondition, ...]:
+    """The distinct conditions (targets) of the wells that inform the model, first run first."""
+    names = study.definition.factor_names
+    frame = study.informing()
+    frame = frame[frame["exclude"] == ""]
+    found: dict[tuple[object, ...], list[tuple[str, str, str]]] = {}
+    targets = [frame[f"{n}_target"] for n in names]
+    for *values, plate, well, role in zip(
+        *targets, frame["plate"], frame["well"], frame["role"], strict=True
+    ):
+        found.setdefault(tuple(values), []).append((plate, well, role))
+    return tuple(
+        RunCondition(
+            values, tuple((p, w) for p, w, _ in wells), any(r == "bridge" for *_, r in wells)
+        )
+        for values, wells in found.items()
+    )
+
+
+def candidate_frame(
+    definition: Definition, run: tuple[RunCondition, ...], most: int = MOST
+) -> pd.DataFrame:
+    """Candidate conditions (raw units): bench steps of the plan's range inside the limits, and
+    the conditions that were run and may be run again.
+    """
+    names = list(definition.factor_names)
+    grid, _ = judged_grid(definition, most, planned=True)
+    again = pd.DataFrame([r.values for r in run], columns=names)
+    if len(again):
+        again = again[plannable(definition, again)]
+        grid = pd.concat([again.astype(grid.dtypes.to_dict()), grid], ignore_index=True)
+    return grid.drop_duplicates(ignore_index=True)
+
+
+def plannable(definition: Definition, frame: pd.DataFrame) -> NDArray[np.bool_]:
+    """Which rows of a frame (raw units) a new plan may run: on plan levels, inside the limits."""
+    keep = definition.allowed(frame)
+    for factor in definition.factors:
+        levels, values = factor.plan_levels(), frame[factor.name]
+        if factor.continuous:
+            x = values.to_numpy(dtype=float)
+            slack = 1e-9 * factor.span[2]
+            keep &= (np.abs(x[:, None] - levels[None, :].astype(float)) <= slack).any(axis=1)
+        else:
+            keep &= values.isin(levels).to_numpy()
+    return np.asarray(keep, dtype=bool)
+
+
+@dataclass
+class Levels:
+    """The distinct levels that a plan uses of each factor with `per_plate`."""
+
+    definition: Definition
+    frame: pd.DataFrame
+
+    def __post_init__(self) -> None:
+        """Start with no level in use."""
+        limited = [f for f in self.definition.factors if f.per_plate is not None]
+        self._most = {f.name: f.per_plate or 0 for f in limited}
+        self._used: dict[str, set[object]] = {name: set() for name in self._most}
+
+    def use(self, values: dict[str, object]) -> None:
+        """Count the levels of a condition in the plan."""
+        for name, used in self._used.items():
+            used.add(values[name])
+
+    def open(self) -> NDArray[np.bool_]:
+        """Which candidates need no level more than the plate may have."""
+        keep = np.ones(len(self.frame), dtype=bool)
+        for name, used in self._used.items():
+            if len(used) >= self._most[name]:
+                keep &= self.frame[name].isin(used).to_numpy()
+        return keep

@@ -1,0 +1,117 @@
+"""What new wells would tell: Gaussian updating of one response, node by node, without readings.
+
+A new well reads, linearised in latent units, z = f(x) + inside errors + a * scale errors + noise;
+wells of the new plate share its errors. Noise is sigma^2 / E[g'(f)^2], so that a well on a
+plateau tells little of its logit.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field
+
+import numpy as np
+from numpy.typing import NDArray
+
+from muntin.surrogate.links import mean_of, slope_of
+from muntin.surrogate.nodes import Surface
+
+Array = NDArray[np.float64]
+Index = NDArray[np.intp]
+_Z, _W = np.polynomial.hermite_e.hermegauss(15)
+_W = _W / _W.sum()
+
+
+@dataclass
+class Outlook:
+    """Covariances of f at P judged points and of z at Q candidates, updated pick by pick.
+
+    surface: S nodes of the response. judged (P, D) and candidates (Q, D): coded. groups: for each
+    inside error and each scale error the group number (Q,) a candidate would fall into on the new
+    plate. watched: numbers of the judged points whose covariance with every candidate is held.
+    """
+
+    surface: Surface
+    judged: Array
+    candidates: Array
+    inside: tuple[Index, ...]
+    scale: tuple[Index, ...]
+    watched: Index
+    mean: Array = field(init=False)
+    variance: Array = field(init=False)
+    explained: Array = field(init=False)
+
+    def __post_init__(self) -> None:
+        """Compute today's moments, the noise of a well and the covariances."""
+        self.mean, self.variance = self.surface.moments(self.judged)
+        self.explained = np.zeros_like(self.variance)
+        self.well_mean, self.well_variance = self.surface.moments(self.candidates)
+        self._reading()
+        self._up: list[Array] = []
+        self._uq: list[Array] = []
+        self._cross = self.surface.covariance(self.judged[self.watched], self.candidates)
+        errors = self.surface.errors
+        spread = self.well_variance + self.noise + (errors.inside**2).sum(1)[:, None]
+        self.reading_variance = spread + self.lever**2 * (errors.scale**2).sum(1)[:, None]
+
+    def _reading(self) -> None:
+        """Noise (S, Q) of a well in latent units, and the lever (S, Q) of a scale error."""
+        link, sd = self.surface.link, np.sqrt(self.well_variance)
+        f = self.well_mean[..., None] + sd[..., None] * _Z
+        if link != "logit":
+            self.noise = np.repeat(self.surface.errors.noise[:, None] ** 2, f.shape[1], axis=1)
+            self.lever = np.zeros_like(sd)
+            return
+        slope, g = slope_of(link, f), mean_of(link, f)
+        square = np.maximum((slope**2) @ _W, 1e-12)
+        self.noise = self.surface.errors.noise[:, None] ** 2 / square
+        self.lever = ((slope * g) @ _W) / square
+
+    def after(self, wells: Index) -> Array:
+        """Variance (S, W, k) that would be explained at the watched points by one more well."""
+        c = self._cross[:, :, wells]
+        if self._up:
+            up = np.stack([u[:, self.watched] for u in self._up], axis=2)
+            c = c - up @ np.stack([u[:, wells] for u in self._uq], axis=1)
+        gained = c**2 / self.reading_variance[:, None, wells]
+        return self.explained[:, self.watched, None] + gained
+
+    def own_gain(self) -> Array:
+        """Variance (S, Q) that one more well at a candidate would explain of f there.
+
+        Only where the judged points are the candidates.
+        """
+        c = self.variance - sum(
+            (up * uq for up, uq in zip(self._up, self._uq, strict=True)),
+            np.zeros_like(self.variance),
+        )
+        return np.asarray(c**2 / self.reading_variance)
+
+    def pick(self, well: int) -> None:
+        """Take a candidate into the plan: its reading is to come."""
+        one = np.array([well])
+        root = np.sqrt(self.reading_variance[:, well])[:, None]
+        up = self.surface.covariance(self.judged, self.candidates[one])[..., 0]
+        for p, q in zip(self._up, self._uq, strict=True):
+            up = up - p * q[:, [well]]
+        up = up / root
+        column = self.surface.covariance(self.candidates, self.candidates[one])[..., 0]
+        column = column + self._shared(well)
+        for u in self._uq:
+            column = column - u * u[:, [well]]
+        # The diagonal entry is a repeat's covariance: it shares all but the noise of the well.
+        uq = column / root
+        self.explained = np.minimum(self.explained + up**2, (1.0 - 1e-9) * self.variance)
+        self.reading_variance = np.maximum(self.reading_variance - uq**2, self.noise)
+        self._up.append(up)
+        self._uq.append(uq)
+
+    def _shared(self, well: int) -> Array:
+        """Covariance (S, Q) that candidates share with a well through the new plate's errors."""
+        errors = self.surface.errors
+        total = np.zeros_like(self.noise)
+        for j, groups in enumerate(self.inside):
+            total += errors.inside[:, j, None] ** 2 * (groups == groups[well])
+        for j, groups in enumerate(self.scale):
+            same = errors.scale[:, j, None] ** 2 * (groups == groups[well])
+            total += same * self.lever * self.lever[:, [well]]
+        return total
