@@ -20,8 +20,14 @@ from muntin.record.definition import Definition
 from muntin.record.notes import Plate
 from muntin.record.study import Study
 from muntin.window.assessment import Assessment, Surrogate, assess
-from tests.benchmarks.processes import PH_LEVELS, SALT_LEVELS, DrawnProcess, draw, plate_errors
-from tests.benchmarks.processes import truth_grid
+from tests.benchmarks.processes import (
+    PH_LEVELS,
+    SALT_LEVELS,
+    DrawnProcess,
+    draw,
+    plate_errors,
+    truth_grid,
+)
 
 Array = NDArray[np.float64]
 TARGET = 0.8

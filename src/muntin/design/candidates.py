@@ -85,10 +85,10 @@ class Levels:
         self._most = {f.name: f.per_plate or 0 for f in limited}
         self._used: dict[str, set[object]] = {name: set() for name in self._most}
 
-    def use(self, values: dict[str, object]) -> None:
-        """Count the levels of a condition in the plan."""
+    def use(self, candidate: int) -> None:
+        """Count the levels of a candidate in the plan."""
         for name, used in self._used.items():
-            used.add(values[name])
+            used.add(self.frame[name].iloc[candidate])
 
     def open(self) -> NDArray[np.bool_]:
         """Which candidates need no level more than the plate may have."""

@@ -165,7 +165,7 @@ class _Table:
         for outlook in (*self.outlooks, *self.best):
             outlook.pick(candidate)
         self.taken.append(candidate)
-        self.levels.use(self.frame.iloc[candidate].to_dict())
+        self.levels.use(candidate)
 
     def forecast(self) -> float:
         """Expected wrong share with the wells taken so far read."""

@@ -99,7 +99,7 @@ def collapse(readings: Readings) -> Cells:
     rows, cell = _group(keys)
     count = np.bincount(cell, minlength=len(rows)).astype(float)
     mean = np.bincount(cell, readings.y, len(rows)) / np.maximum(count, 1.0)
-    within = np.bincount(cell, (readings.y - mean[cell]) ** 2, len(rows))
+    within = np.bincount(cell, (readings.y - mean[cell]) ** 2, len(rows)).astype(float)
     return Cells(
         X=latents[:, :depth],
         inside=latents[:, depth:].astype(np.intp),

@@ -54,7 +54,7 @@ class GaussianProcess:
             K += sd[:, None, None] ** 2 * same_group(groups, groups)
         index = np.arange(K.shape[1])
         K[:, index, index] += _JITTER * own[:, :1] ** 2
-        return np.linalg.cholesky(K)
+        return np.asarray(np.linalg.cholesky(K), dtype=float)
 
     def gradient(self, layout: Layout, theta: Array, cells: Cells, root: Array, E: Array) -> Array:
         """d log Z / d theta (S, H - 1 - scale) for inside errors, process sd and lengths.

@@ -226,7 +226,7 @@ class _Gaussian:
             M = self._precision()
             C = np.linalg.cholesky(M)
         self.log_det = 2.0 * np.log(np.diagonal(C, axis1=1, axis2=2)).sum(1)
-        self.V = np.linalg.inv(M)
+        self.V: Array = np.asarray(np.linalg.inv(M), dtype=float)
         self.mean = (self.V @ self.shift[..., None])[..., 0]
         self.pair = self._pair()
 

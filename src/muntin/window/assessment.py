@@ -178,7 +178,10 @@ def _prior(study: Study, response: Response, names: tuple[str, ...], seed: int) 
 
 
 def _even_spread(factors: int) -> tuple[Array, Array]:
-    """Points (n, factors) of [-1, 1] and weights (n,): Gauss-Legendre to two factors, then Sobol'."""
+    """Points (n, factors) of [-1, 1] and weights (n,).
+
+    Gauss-Legendre for one and two factors, Sobol' beyond.
+    """
     if factors > 2:
         from scipy.stats.qmc import Sobol
 

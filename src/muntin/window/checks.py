@@ -11,6 +11,7 @@ from numpy.typing import NDArray
 from muntin.record.responses import Response
 from muntin.record.study import Study
 from muntin.surrogate.fit import Stack
+from muntin.surrogate.loo import LeaveOneOut
 
 Array = NDArray[np.float64]
 _WILD = 3.5
@@ -39,15 +40,20 @@ def study_checks(study: Study, stacks: Mapping[str, Stack]) -> tuple[Check, ...]
     return (*checks, *_plates(study, stacks))
 
 
-def _mixed(stack: Stack, name: str) -> Array:
-    return np.asarray(sum(s * getattr(f.loo, name) for s, f in zip(stack.shares, stack.fits)))
+def _mixed(stack: Stack) -> LeaveOneOut:
+    """Leave-one-out predictions of the stack: the mixture of its fits'."""
+    loos, shares = [fit.loo for fit in stack.fits], stack.shares
+    mean = shares @ np.stack([loo.mean for loo in loos])
+    square = shares @ np.stack([loo.sd**2 + (loo.mean - mean) ** 2 for loo in loos])
+    density = np.log(shares @ np.exp(np.stack([loo.log_density for loo in loos])))
+    return LeaveOneOut(density, mean, np.sqrt(square), shares @ np.stack([loo.pit for loo in loos]))
 
 
 def _coverage(response: Response, stack: Stack) -> Check:
     """Share of readings inside their leave-one-out 90 % range, against its binomial 99 % limits."""
     from scipy.stats import binom
 
-    pit = _mixed(stack, "pit")
+    pit = _mixed(stack).pit
     n, hits = len(pit), int(((pit > 0.05) & (pit < 0.95)).sum())
     least = int(binom.ppf(0.005, n, 0.9))
     passed = hits >= least
@@ -64,7 +70,8 @@ def _wild(study: Study, response: Response, stack: Stack) -> Check:
     readings = study.readings(response.name)
     y = readings["y"].to_numpy(dtype=float)
     y = np.log(y) if response.kind == "positive" else y
-    z = (y - _mixed(stack, "mean")) / _mixed(stack, "sd")
+    loo = _mixed(stack)
+    z = (y - loo.mean) / loo.sd
     wild = np.flatnonzero(np.abs(z) > _WILD)
     if not len(wild):
         return Check("wild wells", True, False, f"{response.label}: no wild wells.")

@@ -64,7 +64,8 @@ def group_numbers(definition: Definition, frame: pd.DataFrame, by: tuple[str, ..
     """Number (n,) of the group that each row of a frame falls into; factors go by their target."""
     factors = definition.factor_names
     names = [f"{n}_target" if n in factors and f"{n}_target" in frame else n for n in by]
-    return frame.groupby(names, sort=False, dropna=False).ngroup().to_numpy(dtype=np.intp)
+    groups = frame.groupby(names, sort=False, dropna=False).ngroup()
+    return np.asarray(groups.to_numpy(), dtype=np.intp)
 
 
 def readings_of(study: Study, response: Response) -> Readings:

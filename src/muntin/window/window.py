@@ -53,7 +53,7 @@ def judge_window(
         regular=regular,
         share=float(inside.mean()),
         wrong_share=float(np.minimum(p_mean, 1.0 - p_mean).mean()),
-        setpoint=table.loc[best, [*definition.factor_names, "probability"]],
+        setpoint=table[[*definition.factor_names, "probability"]].iloc[best],
         ranges=ranges,
         unsupported=unsupported,
     )
