@@ -15,16 +15,19 @@ _SAFETY = (
 )
 
 
-def cautions(view: Assessment) -> tuple[str, ...]:
-    """Return the cautions that go with any advice on this study, the provisional one first."""
+def cautions(view: Assessment, fixed: bool = True) -> tuple[str, ...]:
+    """Return the cautions that go with any advice on this study, the provisional one first.
+
+    `fixed` spells out what the study keeps fixed.
+    """
     definition = view.study.definition
     said = []
-    if view.awaited and not view.fresh:
+    if view.awaited:
         said.append(f"Provisional: {labels(definition, view.awaited)} not read yet.")
-    fixed = [
+    kept = [
         f"{name} {value if isinstance(value, str) else number(value)}"
         for name, value in definition.fixed.items()
     ]
-    told = f" ({joined(fixed)})" if fixed else ""
+    told = f" ({joined(kept)})" if kept and fixed else ""
     held = f"Holds for this feed, resin lot, load and handling only{told}."
     return (*said, _AID, _PLATE, held, *(() if view.fresh else (_CHOSEN,)), _SAFETY)

@@ -92,24 +92,35 @@ def few(
     return [*lines[:most], *([f"and {rest} more: {where}"] if rest > 0 else [])]
 
 
-def check_lines(checks: Sequence[Check]) -> list[str]:
-    """Return the checks of the model: failures first, then what passed in short."""
+def check_lines(checks: Sequence[Check], told: Sequence[str] = ()) -> list[str]:
+    """Return the checks of the model: failures first, then what passed in short.
+
+    `told` are sentences that stand elsewhere on the screen; here they are only counted.
+    """
     failed = sorted((c for c in checks if not c.passed), key=lambda c: not c.serious)
-    lines = [f"{'FAILED' if c.serious else 'Note'}: {c.sentence}" for c in failed]
+    below = [c.name for c in failed if c.sentence in told]
+    lines = [f"FAILED: {_names(below)}; why is said with the window."] if below else []
+    said = [c for c in failed if c.sentence not in told]
+    lines += [f"{'FAILED' if c.serious else 'Note'}: {c.sentence}" for c in said]
     passed = [c for c in checks if c.passed]
     if passed:
-        names = ", ".join(dict.fromkeys(c.name for c in passed))
+        names = _names([c.name for c in passed])
         lines.append(f"Passed, {len(passed)} of {len(checks)}: {names}. {passed[0].sentence}")
     return lines
 
 
-def window_lines(view: Assessment, window: Window | None) -> list[str]:
+def _names(names: Sequence[str]) -> str:
+    return ", ".join(dict.fromkeys(names))
+
+
+def window_lines(view: Assessment, window: Window | None, most: int = _FEW) -> list[str]:
     """Return where the window stands."""
     definition = view.study.definition
     if window is None:
         return ["Nothing has been read yet, so there is no window; an opening plate comes first."]
     if window.unsupported:
-        return [f"{_capital(WINDOW)}: {UNSUPPORTED}.", *few(window.unsupported)]
+        reasons = few(window.unsupported, most, "see --json")
+        return [f"{_capital(WINDOW)}: {UNSUPPORTED}.", *reasons]
     alone = tuple(r.name for r in definition.judged if r.name not in view.awaited)
     of = f" for {labels(definition, alone)} alone" if view.awaited else ""
     lines = [
@@ -161,16 +172,19 @@ def check_screen(study: Study) -> RenderableType:
     )
 
 
-def standing(view: Assessment, window: Window | None) -> list[Section]:
-    """Return the sections on what was read, the checks and the window."""
+def standing(view: Assessment, window: Window | None, few_lines: int = _FEW) -> list[Section]:
+    """Return the sections on what was read, the checks and the window; at most so many lines of
+    notes and of failed checks.
+    """
     study = view.study
     awaited = labels(study.definition, view.awaited)
     notes = [f"Awaited: {awaited}; the advice is provisional."] if view.awaited else []
+    told = () if window is None else window.unsupported
     return [
         ("Read", read_lines(study)),
-        ("Noted", [*notes, *few(study.notices)]),
-        ("Checks", few(check_lines(view.checks), 4, "see --json")),
-        ("Window", window_lines(view, window)),
+        ("Noted", [*notes, *few(study.notices, few_lines)]),
+        ("Checks", few(check_lines(view.checks, told), few_lines + 1, "see --json")),
+        ("Window", window_lines(view, window, few_lines)),
     ]
 
 
@@ -186,24 +200,27 @@ def assess_screen(
     return sheet(view.study.definition.title, sections)
 
 
-def plan_sections(view: Assessment, plan: Plan, lines: int) -> list[Section]:
-    """Return the sections on the next plate, its conditions in about so many lines, and on its
-    forecast.
+def plan_sections(
+    view: Assessment, plan: Plan, lines: int = _PLAN_LINES, full: bool = True
+) -> list[Section]:
+    """Return the sections on the next plate, its test wells in about so many lines, and on its
+    forecast; its notices and bridging wells only in full.
     """
     definition = view.study.definition
-    told = [plan_heading(plan), *few(plan.notices, 2, "see --json")]
-    bridging = few(bridging_lines(definition, plan.wells), 2, "see the plan's table")
-    told += [f"{_capital(usual_reason(plan.wells))}."] if view.fresh else []
-    return [
-        ("Next", [*told, *bridging, plan_table(definition, plan.wells, lines, not view.fresh)]),
-        ("Forecast", [forecast_table(plan)]),
-    ]
+    told: list[RenderableType] = [plan_heading(plan)]
+    if full:
+        told += few(plan.notices, 2, "see --json")
+        told += few(bridging_lines(definition, plan.wells), 2, "see the plan's table")
+    if view.fresh:
+        told.append(f"{_capital(usual_reason(plan.wells))}.")
+    told.append(plan_table(definition, plan.wells, lines, not view.fresh))
+    return [("Next", told), ("Forecast", [forecast_table(plan)])]
 
 
 def propose_screen(view: Assessment, plan: Plan, path: Path, remark: str) -> RenderableType:
     """Return the screen of `propose`."""
     written = ("Written", _plan_lines(path, remark))
-    return sheet(view.study.definition.title, [*plan_sections(view, plan, _PLAN_LINES), written])
+    return sheet(view.study.definition.title, [*plan_sections(view, plan), written])
 
 
 def _plan_lines(path: Path, remark: str) -> list[str]:
@@ -214,21 +231,33 @@ def _plan_lines(path: Path, remark: str) -> list[str]:
 def advice_screen(
     view: Assessment, window: Window | None, plan: Plan, place: Place
 ) -> RenderableType:
-    """Return the screen of `advise`: 40 lines at 100 columns, the plan's table cut to fit."""
-    written = [*_plan_lines(place.plan, place.remark), f"{place.folder}: map, advice.json, inputs"]
-    for lines in range(_PLAN_LINES, 1, -1):
-        screen = sheet(
-            view.study.definition.title,
-            [
-                *standing(view, window),
-                *plan_sections(view, plan, lines),
-                ("Cautions", [" ".join(cautions(view))]),
-                ("Written", written),
-            ],
-        )
+    """Return the screen of `advise`, cut to 40 lines at 100 columns as far as that goes."""
+    shapes = [(lines, True) for lines in range(_PLAN_LINES, 2, -1)]
+    shapes += [(lines, False) for lines in range(4, 0, -1)]
+    for lines, full in shapes:
+        screen = _advice_sheet(view, window, plan, place, lines, full)
         if height(screen) <= _SCREEN_LINES:
             break
     return screen
+
+
+def _advice_sheet(
+    view: Assessment, window: Window | None, plan: Plan, place: Place, lines: int, full: bool
+) -> RenderableType:
+    """The screen of `advise`; in short it leaves notes, bridging wells and what is fixed to the
+    files.
+    """
+    written = [*_plan_lines(place.plan, place.remark), f"{place.folder}: map, advice.json, inputs"]
+    said = " ".join(cautions(view, fixed=full))
+    return sheet(
+        view.study.definition.title,
+        [
+            *standing(view, window, _FEW if full else 1),
+            *plan_sections(view, plan, lines, full),
+            ("Cautions", [said]),
+            ("Written", written),
+        ],
+    )
 
 
 def height(screen: RenderableType, width: int = 100) -> int:
