@@ -1,0 +1,89 @@
+import numpy as np
+import pytest
+from scipy.stats import multivariate_t, norm
+from scipy.stats.qmc import Sobol
+
+from muntin.surrogate.evidence import slope
+from muntin.surrogate.hyperparameters import Proposal, integrate, log_prior, mode
+from tests.surrogate.problems import model_of, readings, settled
+
+NAMES = pytest.mark.parametrize("name", ["gp", "quadratic"])
+DEGREES = 6.0
+
+
+@pytest.fixture
+def proposal():
+    rng = np.random.default_rng(1)
+    root = np.tril(rng.normal(size=(4, 4)))
+    np.fill_diagonal(root, rng.uniform(0.3, 1.5, 4))
+    return Proposal(rng.normal(size=4), root)
+
+
+def test_the_prior_is_standard_normal():
+    eta = np.random.default_rng(2).normal(size=(3, 5))
+    assert log_prior(eta) == pytest.approx(norm.logpdf(eta).sum(1))
+
+
+def test_the_proposals_density_is_the_multivariate_t(proposal):
+    eta = np.random.default_rng(3).normal(0.0, 3.0, (7, 4))
+    law = multivariate_t(proposal.centre, proposal.root @ proposal.root.T, df=DEGREES)
+    assert proposal.log_density(eta) == pytest.approx(law.logpdf(eta), rel=1e-10)
+
+
+def test_the_proposals_draws_have_its_moments(proposal):
+    n = 2**14
+    draws = proposal.draw(Sobol(5, rng=np.random.default_rng(4)).random(n))
+    covariance = DEGREES / (DEGREES - 2.0) * proposal.root @ proposal.root.T
+    sd = np.sqrt(np.diag(covariance))
+    # Plain Monte Carlo errors: sd / sqrt(n) of a mean; of a variance of this t, kurtosis 6, about
+    # sqrt(5 / n). Sobol' points do better, so 3 of them are ample.
+    assert (draws.mean(0) - proposal.centre) / sd == pytest.approx(np.zeros(4), abs=3 / n**0.5)
+    correlation = (np.cov(draws.T) - covariance) / np.outer(sd, sd)
+    assert correlation == pytest.approx(np.zeros((4, 4)), abs=3 * (5 / n) ** 0.5)
+
+
+@NAMES
+@pytest.mark.parametrize("kind", ["real", "fraction"])
+def test_the_mode_is_where_evidence_and_prior_balance(name, kind):
+    scale = (2,) if kind == "fraction" else ()
+    model = model_of(name, readings(31, kind, n=25, inside=(3,), scale=scale), kind)
+    eta, top = mode(model)
+    assert top.log == pytest.approx(settled(model, model.layout.theta(eta[None])).log, abs=1e-4)
+    gradient = slope(model, settled(model, model.layout.theta(eta[None])))[0]
+    # The search stops where no move of a prior sd would gain more than about 0.01.
+    assert gradient * model.layout.log_sd - eta == pytest.approx(np.zeros(len(eta)), abs=0.05)
+
+
+@NAMES
+def test_readings_that_say_nothing_leave_the_prior(name):
+    """With every reading drowned in its own sd the posterior nodes have the prior's moments."""
+    data = readings(32, "real", n=6, inside=(2,), scale=())
+    data = type(data)(X=data.X, y=data.y, sd=np.full(6, 1e4), inside=data.inside)
+    model = model_of(name, data, "real")
+    posterior = integrate(model, seed=1, nodes=512)
+    w = np.exp(posterior.log_weights)
+    eta = (posterior.evidence.theta - model.layout.log_median) / model.layout.log_sd
+    assert w.sum() == pytest.approx(1.0)
+    # 512 weighted nodes of effective size 400: 1 / sqrt(400) = 0.05 if they were independent.
+    assert w @ eta == pytest.approx(np.zeros(eta.shape[1]), abs=0.05)
+    assert w @ eta**2 == pytest.approx(np.ones(eta.shape[1]), abs=0.15)
+    flat = -0.5 * 6 * np.log(2.0 * np.pi * 1e8)
+    assert posterior.log_marginal == pytest.approx(flat, abs=0.01)
+
+
+def test_the_same_seed_gives_the_same_numbers():
+    model = model_of("gp", readings(33, n=18, inside=(), scale=(2,)))
+    one, again, other = integrate(model, 5), integrate(model, 5), integrate(model, 6)
+    assert np.array_equal(one.log_weights, again.log_weights)
+    assert one.log_marginal == again.log_marginal
+    assert one.log_marginal != other.log_marginal
+    # Sobol' points of another seed answer the same question: 64 nodes, error about 1 / ess.
+    assert one.log_marginal == pytest.approx(other.log_marginal, abs=0.15)
+
+
+def test_effective_nodes_are_counted_from_the_weights():
+    posterior = integrate(model_of("quadratic", readings(34, n=18, inside=(), scale=(2,))), 1)
+    w = np.exp(posterior.log_weights)
+    assert posterior.ess == pytest.approx(1.0 / (w**2).sum())
+    assert len(w) == len(posterior.evidence.log)
+    assert 0.4 * 64 <= posterior.ess <= len(w)
