@@ -148,7 +148,7 @@ def test_plate_labels_may_be_anything():
 
 
 def test_a_plate_that_reads_high_is_understood():
-    """Four plates that read up to 1.5 high or low: told of the plates, slope and noise are found."""
+    """Four plates that read up to 1.5 high or low hide neither slope nor noise."""
     rng = np.random.default_rng(4)
     x = np.tile(np.linspace(-1.0, 1.0, 6), 4)
     plates = np.repeat(np.arange(4), 6)
