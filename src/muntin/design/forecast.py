@@ -3,35 +3,64 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
 from muntin.design.excursion import expected_wrong
 from muntin.design.outlook import Outlook
-from muntin.surrogate.links import latent_of
-from muntin.window.probability import Target
+from muntin.surrogate.nodes import Surface
+from muntin.window.probability import Target, mean_meets
 
 Array = NDArray[np.float64]
 _DRAWS = 64
 
 
-def wrong_share(
-    outlooks: Sequence[Outlook], targets: Sequence[Target], today: Sequence[Array]
-) -> float:
+@dataclass(frozen=True)
+class Tails:
+    """Chances today (P,) that the process mean lies above the lower and below the upper limit."""
+
+    above: Array
+    below: Array
+
+    @classmethod
+    def of(cls, surface: Surface, moments: tuple[Array, Array], target: Target) -> Tails:
+        """The tails of a surface with latent moments (S, P)."""
+        return cls(
+            mean_meets(surface, moments, Target(low=target.low)),
+            mean_meets(surface, moments, Target(high=target.high)),
+        )
+
+    @property
+    def meets(self) -> Array:
+        """Chance (P,) that both limits are met."""
+        return np.maximum(self.above + self.below - 1.0, 0.0)
+
+
+def wrong_share(outlooks: Sequence[Outlook], today: Sequence[Tails]) -> float:
     """Expected share of the judged points called wrongly once the picks so far are read.
 
-    today: p_mean (P,) of each response now. The mixture of nodes is matched by one Gaussian a
-    point that keeps this probability, so that without picks the mean of min(p, 1 - p) results.
+    The mixture of nodes is matched by one Gaussian a point that keeps today's chances, so that
+    without picks the mean of min(p, 1 - p) results. One one-sided response has a closed form;
+    else the verdicts are averaged over Sobol' draws of what the posterior means may become.
     """
-    rho = [_explained_share(o) for o in outlooks]
-    one_sided = np.isinf(targets[0].low) or np.isinf(targets[0].high)
-    if len(outlooks) == 1 and one_sided:
-        from scipy.special import ndtri
+    from scipy.special import ndtr, ndtri
+    from scipy.stats.qmc import Sobol
 
-        c = ndtri(np.clip(today[0], 1e-15, 1.0 - 1e-15))
+    rho = [_explained_share(o) for o in outlooks]
+    scores = [tuple(ndtri(np.clip(p, 1e-15, 1.0)) for p in (t.above, t.below)) for t in today]
+    if len(outlooks) == 1 and any(np.all(np.isinf(c)) for c in scores[0]):
+        c = next(c for c in scores[0] if not np.all(np.isinf(c)))
         return float(expected_wrong(c, rho[0]).mean())
-    return _drawn(outlooks, targets, rho)
+    points = Sobol(len(outlooks), rng=np.random.default_rng(0)).random(_DRAWS)
+    joint = np.ones((_DRAWS, len(outlooks[0].judged)))
+    for r, (above, below) in enumerate(scores):
+        shift = ndtri(np.clip(points[:, [r]], 1e-6, 1.0 - 1e-6)) * np.sqrt(rho[r])
+        left = np.sqrt(1.0 - rho[r])
+        both = ndtr((above + shift) / left) + ndtr((below - shift) / left) - 1.0
+        joint *= np.maximum(both, 0.0)
+    return float(np.minimum(joint, 1.0 - joint).mean())
 
 
 def _explained_share(outlook: Outlook) -> Array:
@@ -39,22 +68,3 @@ def _explained_share(outlook: Outlook) -> Array:
     w = outlook.surface.weights
     total = w @ (outlook.variance + (outlook.mean - w @ outlook.mean) ** 2)
     return np.clip((w @ outlook.explained) / total, 0.0, 1.0 - 1e-9)
-
-
-def _drawn(outlooks: Sequence[Outlook], targets: Sequence[Target], rho: list[Array]) -> float:
-    """The same for several limits, over Sobol' draws of what the posterior means may become."""
-    from scipy.special import ndtr, ndtri
-    from scipy.stats.qmc import Sobol
-
-    points = Sobol(len(outlooks), rng=np.random.default_rng(0)).random(_DRAWS)
-    z = ndtri(np.clip(points, 1e-6, 1.0 - 1e-6))
-    joint = np.ones((_DRAWS, len(outlooks[0].judged)))
-    for r, (outlook, target) in enumerate(zip(outlooks, targets, strict=True)):
-        w, link = outlook.surface.weights, outlook.surface.link
-        mean = w @ outlook.mean
-        sd = np.sqrt(w @ (outlook.variance + (outlook.mean - mean) ** 2))
-        moved = mean + z[:, [r]] * np.sqrt(rho[r]) * sd
-        left = np.sqrt(1.0 - rho[r]) * sd
-        high = ndtr((latent_of(link, target.high) - moved) / left)
-        joint *= high - ndtr((latent_of(link, target.low) - moved) / left)
-    return float(np.minimum(joint, 1.0 - joint).mean())

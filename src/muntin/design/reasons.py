@@ -3,61 +3,59 @@
 from __future__ import annotations
 
 from collections import Counter
-from collections.abc import Mapping, Sequence
+
+import numpy as np
+from numpy.typing import NDArray
 
 from muntin.design.selection import Pick, Selection
 from muntin.record.definition import Definition
 
+Array = NDArray[np.float64]
+
 _ON_EDGE = 0.35
+_LEVEL = 0.98
+_SURE = 0.95
 
 
 def reasons(
-    definition: Definition, selection: Selection, p_mean: Sequence[float], opening: bool
+    definition: Definition, selection: Selection, p_mean: Array, p_now: Array, opening: bool
 ) -> list[str]:
-    """One sentence for each pick; p_mean is each pick's probability that the mean passes."""
+    """One sentence for each pick; p_mean (n,) that the process mean passes, p_now as judged."""
     run = {r.values: r.wells for r in selection.run}
     seen: Counter[int] = Counter()
     said = []
-    for pick, p in zip(selection.picks, p_mean, strict=True):
-        values = dict(selection.candidates.iloc[pick.candidate])
-        wells = run.get(tuple(values.values()), ())
-        said.append(_reason(definition, pick, values, p, wells, seen[pick.candidate], opening))
+    for pick, p, now in zip(selection.picks, p_mean.tolist(), p_now.tolist(), strict=True):
+        values = tuple(selection.candidates.iloc[pick.candidate])
+        before = seen[pick.candidate]
         seen[pick.candidate] += 1
+        if before and pick.role == "test":
+            said.append(f"well {before + 1} of this condition: averages the noise")
+        elif opening:
+            said.append("opening plate: spread over the range to find where the target is met")
+        else:
+            at = f"{definition.factors[0].label} {_value(values[0])}"
+            said.append(_reason(pick, p, now, at, _place(run.get(values, ()))))
     return said
 
 
-def _reason(
-    definition: Definition,
-    pick: Pick,
-    values: Mapping[object, object],
-    p: float,
-    wells: tuple[tuple[str, str], ...],
-    before: int,
-    opening: bool,
-) -> str:
+def _reason(pick: Pick, p: float, now: float, at: str, place: str) -> str:
+    """Why one condition was picked; at: its first factor, place: where it was run last, or ""."""
     if pick.role == "bridge":
-        return f"repeat of {_place(wells)}, a known {pick.purpose}, ties the plates together"
-    if opening and not before:
-        return "opening plate: spread over the range to find where the target is met"
-    if before:
-        return f"well {before + 1} of this condition, to average the noise ({_chance(p)})"
-    again = f"repeat of {_place(wells)}: " if wells else ""
+        sure = max(p, 1.0 - p) >= _SURE
+        return f"repeats {place}, a {'known' if sure else 'likely'} {pick.purpose}: ties plates"
+    again = f"repeats {place}: " if place else ""
+    chance = f"{again}probability {now:.2f}"
     if pick.purpose == "best":
-        return f"{again}may beat the best condition so far ({_chance(p)})"
-    where = f"{definition.factors[0].label} {_value(values[definition.factors[0].name])}"
+        return f"{chance}, may beat the best condition so far"
     if abs(p - 0.5) <= _ON_EDGE:
-        return f"{again}{_chance(p)}, on the edge at {where}"
-    side = "pass" if p > 0.5 else "fail"
-    return f"{again}{_chance(p)}, makes sure of the {side} side at {where}"
-
-
-def _chance(p: float) -> str:
-    return f"probability {p:.2f}"
+        return f"{chance}, on the edge at {at}"
+    if p >= _LEVEL:
+        return f"{chance}, reads the new plate's own error where the target is safe"
+    return f"{chance}, secures the {'pass' if p > 0.5 else 'fail'} side at {at}"
 
 
 def _place(wells: tuple[tuple[str, str], ...]) -> str:
-    plate, well = wells[-1]
-    return f"{plate} {well}"
+    return " ".join(wells[-1]) if wells else ""
 
 
 def _value(value: object) -> str:

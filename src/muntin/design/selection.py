@@ -13,18 +13,17 @@ from muntin.design.best import BestCriterion
 from muntin.design.bridging import bridging_conditions
 from muntin.design.candidates import Levels, RunCondition, candidate_frame, run_conditions
 from muntin.design.edge import EdgeCriterion, LazyGreedy
-from muntin.design.forecast import wrong_share
+from muntin.design.forecast import Tails, wrong_share
 from muntin.design.outlook import Outlook
 from muntin.record.definition import Definition
 from muntin.window.assessment import Assessment, target_of
 from muntin.window.coded import code, group_numbers, shared_by
 from muntin.window.grid import judged_grid
-from muntin.window.probability import mean_meets
 
 Array = NDArray[np.float64]
 Aim = Literal["edge", "best", "both"]
 _NODES = 8
-_JUDGED = 1500
+_WATCHED = 1500
 _DECIDED = 1e-3
 # A plate's shared errors leave little to learn from more wells of the best condition than these.
 _MOST_REPEATS = 4
@@ -103,16 +102,17 @@ class _Table:
     def __post_init__(self) -> None:
         definition = self.view.study.definition
         self.levels = Levels(definition, self.frame)
-        judged, _ = judged_grid(definition, _JUDGED)
+        judged, _ = judged_grid(definition)
         self.X, P = code(definition, self.frame), code(definition, judged)
         self.responses = [r for r in definition.judged if r.name in self.view.surfaces]
         self.targets = tuple(target_of(r) for r in self.responses)
         surfaces = [self.view.surfaces[r.name] for r in self.responses]
         self.today = [
-            mean_meets(surface, surface.moments(P), target)
+            Tails.of(surface, surface.moments(P), target)
             for surface, target in zip(surfaces, self.targets, strict=True)
         ]
-        self.outlooks = self._outlooks(P, _undecided(np.prod(self.today, axis=0)))
+        p = np.prod([tails.meets for tails in self.today], axis=0)
+        self.outlooks = self._outlooks(P, _undecided(p))
         self.greedy = LazyGreedy(EdgeCriterion(self.outlooks, self.targets), len(self.frame))
         self.best: tuple[Outlook, ...] = ()
 
@@ -169,13 +169,18 @@ class _Table:
 
     def forecast(self) -> float:
         """Expected wrong share with the wells taken so far read."""
-        return wrong_share(self.outlooks, self.targets, self.today)
+        return wrong_share(self.outlooks, self.today)
 
 
 def _undecided(p: Array) -> NDArray[np.intp]:
-    """Judged points whose verdict is open; all others add nothing to the criterion."""
+    """Judged points whose verdict is open, at most _WATCHED spread evenly among them; all others
+    add nothing to the criterion.
+    """
     still_open = np.flatnonzero(p * (1.0 - p) > _DECIDED)
-    return still_open if len(still_open) >= 10 else np.arange(len(p))
+    watched = still_open if len(still_open) >= 10 else np.arange(len(p))
+    if len(watched) <= _WATCHED:
+        return watched
+    return watched[np.round(np.linspace(0, len(watched) - 1, _WATCHED)).astype(int)]
 
 
 def _future_groups(

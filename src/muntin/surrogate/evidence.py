@@ -81,22 +81,16 @@ class Model:
             scale=scale,
         )
 
-    def rows(self, theta: Array) -> tuple[Rows, Array]:
-        """Whitened rows of the cells, and the family's root (S, U, R0) they rest on."""
+    def rows(self, theta: Array) -> Rows:
+        """Maps from the whitened variables to the cells' pairs."""
         cells, layout = self.cells, self.layout
         root = self.family.root(layout, theta, cells)
-        u = root[:, cells.latent]
-        if not cells.scale:
-            return Rows(u, None), root
         sds = layout.scale_sd(theta)
-        share = sds / np.sqrt((sds**2).sum(1, keepdims=True))
-        blocks = [
-            share[:, j, None, None] * np.eye(groups)[cells.scale[j]]
-            for j, groups in enumerate(cells.scale_groups)
-        ]
-        s = np.concatenate([np.zeros_like(u), *blocks], axis=2)
-        u = np.concatenate([u, np.zeros((*u.shape[:2], s.shape[2] - u.shape[2]))], axis=2)
-        return Rows(u, s), root
+        share = sds / np.sqrt((sds**2).sum(1, keepdims=True)) if cells.scale else sds
+        blocks = [np.zeros((len(theta), len(cells), 0))]
+        for j, groups in enumerate(cells.scale_groups):
+            blocks.append(share[:, j, None, None] * np.eye(groups)[cells.scale[j]])
+        return Rows(root, cells.latent, np.concatenate(blocks, axis=2))
 
 
 @dataclass(frozen=True)
@@ -126,12 +120,12 @@ def evaluate(model: Model, theta: Array, near: Evidence | None = None) -> Eviden
     """Evidence of the model at log hyperparameters theta (S, H); sites start from the first node
     of `near`, sharpened or blunted as the noise asks.
     """
-    rows, root = model.rows(theta)
+    rows = model.rows(theta)
     start = None
     if near is not None:
         first = near.approximation.sites.nodes(np.zeros(len(theta), dtype=np.intp))
         start = first.times(np.exp(2.0 * (near.theta[:1, :1] - theta[:, :1])))
-    return Evidence(theta, root, approximate(rows, model.likelihood(theta), start))
+    return Evidence(theta, rows.root, approximate(rows, model.likelihood(theta), start))
 
 
 def slope(model: Model, evidence: Evidence) -> Array:

@@ -20,6 +20,7 @@ _DEGREES = 6.0
 _BOUND = 4.0
 _ROUNDS = 5
 _STEP = 0.05
+_MANY_LATENTS = 200
 
 
 @dataclass(frozen=True)
@@ -118,10 +119,15 @@ def _refitted(eta: Array, weights: Array, last: Proposal) -> Proposal:
     return Proposal(centre, np.linalg.cholesky(covariance))
 
 
-def integrate(model: Model, seed: int, nodes: int = 64) -> Posterior:
-    """The posterior of the hyperparameters as weighted nodes; `nodes` a round, a power of two."""
+def integrate(model: Model, seed: int, nodes: int | None = None) -> Posterior:
+    """The posterior of the hyperparameters as weighted nodes.
+
+    nodes: drawn in each round, a power of two; by default 64, or 32 where many latent values make
+    a node dear and the hyperparameters well known.
+    """
     from scipy.stats.qmc import Sobol
 
+    nodes = nodes or (64 if len(model.cells.X) <= _MANY_LATENTS else 32)
     layout = model.layout
     eta0, top = mode(model)
     proposals = [_at_mode(model, eta0, top)]

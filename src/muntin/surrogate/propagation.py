@@ -1,9 +1,9 @@
 """Gaussian approximation of the latent values by expectation propagation (Minka 2001).
 
-Every latent quantity is a linear map of whitened variables w ~ N(0, I): a cell's latent value is
-rows.u @ w, its standardised scale error rows.s @ w. A cell contributes a two-dimensional Gaussian
-site in that pair; all sites are updated in parallel with damping, for S hyperparameter nodes at
-once (Rasmussen & Williams 2006, section 3.6, in whitened form). For the identity link the sites
+Every latent quantity is a linear map of whitened variables w ~ N(0, I). A cell contributes a
+two-dimensional Gaussian site in the pair of its latent value and its scale error; all sites are
+updated in parallel with damping, for S hyperparameter nodes at once (Rasmussen & Williams 2006,
+section 3.6, in whitened form). For the identity link the sites
 are the likelihood itself and one pass is exact.
 """
 
@@ -29,16 +29,28 @@ _SETTLED = 0.05
 
 @dataclass(frozen=True)
 class Rows:
-    """Linear maps (S, C, R) from w to the pairs; s is None without scale errors."""
+    """Linear maps from w to the pairs of C cells, in the factors that they share.
 
-    u: Array
-    s: Array | None
+    root (S, U, R0): latent values from the first whitened variables; latent (C,): the latent
+    value of a cell; scale (S, C, G): standardised scale errors from the last G variables, with
+    G = 0 where there are none.
+    """
+
+    root: Array
+    latent: NDArray[np.intp]
+    scale: Array
 
     def nodes(self, index: NDArray[np.intp]) -> Rows:
         """The maps of some nodes."""
-        if len(index) == len(self.u):
+        if len(index) == len(self.root):
             return self
-        return Rows(self.u[index], None if self.s is None else self.s[index])
+        return Rows(self.root[index], self.latent, self.scale[index])
+
+    def gathered(self, cells: Array) -> Array:
+        """Sums (S, U, ...) over the cells of each latent value of quantities (S, C, ...)."""
+        incidence = np.zeros((self.root.shape[1], len(self.latent)))
+        incidence[self.latent, np.arange(len(self.latent))] = 1.0
+        return np.tensordot(cells, incidence, axes=(1, 1)) if cells.ndim == 2 else incidence @ cells
 
 
 @dataclass(frozen=True)
@@ -231,31 +243,35 @@ class _Gaussian:
         self.pair = self._pair()
 
     def _precision(self) -> Array:
-        u, s, t = self.rows.u, self.rows.s, self.sites
-        left = t.uu[..., None] * u
-        shift = np.einsum("scr,sc->sr", u, t.u)
-        if s is not None:
-            left = left + t.us[..., None] * s
-            right = t.us[..., None] * u + t.ss[..., None] * s
-            shift = shift + np.einsum("scr,sc->sr", s, t.s)
-        M = np.swapaxes(u, 1, 2) @ left
-        if s is not None:
-            M += np.swapaxes(s, 1, 2) @ right
-        M += np.eye(M.shape[-1])
-        self.shift = shift
+        """I plus the sites, in w, by blocks; sets the shift."""
+        root, scale, t = self.rows.root, self.rows.scale, self.sites
+        turned = np.swapaxes(root, 1, 2)
+        gathered = self.rows.gathered
+        own = root.shape[2]
+        M = np.empty((len(root), own + scale.shape[2], own + scale.shape[2]))
+        M[:, :own, :own] = turned @ (gathered(t.uu)[..., None] * root)
+        M[:, :own, own:] = turned @ gathered(t.us[..., None] * scale)
+        M[:, own:, :own] = np.swapaxes(M[:, :own, own:], 1, 2)
+        M[:, own:, own:] = np.swapaxes(scale, 1, 2) @ (t.ss[..., None] * scale)
+        index = np.arange(M.shape[-1])
+        M[:, index, index] += 1.0
+        shift_u = (turned @ gathered(t.u)[..., None])[..., 0]
+        shift_s = np.einsum("scg,sc->sg", scale, t.s)
+        self.shift = np.concatenate([shift_u, shift_s], axis=1)
         return M
 
     def _pair(self) -> Pair:
-        u, s = self.rows.u, self.rows.s
-        uV = u @ self.V
-        mean_u = (u @ self.mean[..., None])[..., 0]
-        uu = (uV * u).sum(-1)
-        if s is None:
+        root, scale, latent = self.rows.root, self.rows.scale, self.rows.latent
+        own = root.shape[2]
+        mean_u = (root @ self.mean[:, :own, None])[..., 0][:, latent]
+        uu = np.einsum("sur,sur->su", root @ self.V[:, :own, :own], root)[:, latent]
+        if not scale.shape[2]:
             zero = np.zeros_like(uu)
             return Pair(mean_u, zero, uu, zero, np.ones_like(uu))
-        mean_s = (s @ self.mean[..., None])[..., 0]
-        ss = ((s @ self.V) * s).sum(-1)
-        return Pair(mean_u, mean_s, uu, (uV * s).sum(-1), ss)
+        mean_s = (scale @ self.mean[:, own:, None])[..., 0]
+        us = ((root @ self.V[:, :own, own:])[:, latent] * scale).sum(-1)
+        ss = ((scale @ self.V[:, own:, own:]) * scale).sum(-1)
+        return Pair(mean_u, mean_s, uu, us, ss)
 
     def log_integral(self) -> Array:
         """ln of the integral (S,) of N(w; 0, I) times the unnormalised sites."""
@@ -343,7 +359,8 @@ def _exact(rows: Rows, lik: CellLikelihood) -> Approximation:
     sites = Sites(y / v, zero, 1.0 / v, zero, zero)
     gaussian = _Gaussian(rows, sites)
     post = gaussian.pair
-    left = 1.0 - post.uu / v
+    # Readings that lie on the surface to rounding leave nothing to a cell's own noise.
+    left = np.maximum(1.0 - post.uu / v, 1e-12)
     spread = post.uu / left
     cavity = Pair((post.u - post.uu * y / v) / left, zero, spread, zero, np.ones_like(v))
     total = spread + v

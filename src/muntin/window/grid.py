@@ -11,6 +11,7 @@ from muntin.record.factors import Factor
 
 MOST = 4000
 _GRID_FACTORS = 3
+_SCATTERED = 2048
 
 
 def judged_grid(
@@ -22,7 +23,8 @@ def judged_grid(
     beyond three factors. planned: only what new plans may use.
     """
     if len(definition.factors) > _GRID_FACTORS:
-        return _allowed(definition, scattered(definition, most, 0, planned)), False
+        count = min(most, _SCATTERED)
+        return _allowed(definition, scattered(definition, count, 0, planned)), False
     levels = [f.plan_levels() if planned else f.levels() for f in definition.factors]
     while np.prod([float(len(v)) for v in levels]) > most:
         numeric = [i for i, f in enumerate(definition.factors) if f.continuous]
