@@ -25,6 +25,14 @@ def definition_notices(definition: Definition) -> Iterator[str]:
                 )
 
 
+    set_by_bench = [factor.label for factor in definition.factors if factor.set_sd is not None]
+    if set_by_bench:
+        yield (
+            f"set_sd of {listed(set_by_bench)} is kept on record but not yet added to the noise; "
+            "the readings' own spread stands for it"
+        )
+
+
 def well_notices(
     definition: Definition, wells: pd.DataFrame, void: Mapping[str, str]
 ) -> Iterator[str]:

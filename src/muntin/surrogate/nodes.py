@@ -83,9 +83,9 @@ class ProcessNodes:
 
     def covariance(self, X: Array, Z: Array) -> Array:
         """Covariance (S, n, m) of f between coded X (n, D) and Z (m, D)."""
-        left = self.family.covariance(self.own, X, self.X) @ self.Q
-        right = self.family.covariance(self.own, Z, self.X)
-        return self.family.covariance(self.own, X, Z) - left @ np.swapaxes(right, 1, 2)
+        left = self.family.covariance(self.own, X, self.X)
+        right = self.Q @ np.swapaxes(self.family.covariance(self.own, Z, self.X), 1, 2)
+        return self.family.covariance(self.own, X, Z) - left @ right
 
     def take(self, index: Index) -> ProcessNodes:
         """Some of the nodes."""
