@@ -50,8 +50,8 @@ def model_of(name, data, kind="fraction", columns=COLUMNS, own_priors=None):
 
 def settled(model, theta, tolerance=1e-9):
     """The evidence with the fixed point of the sites reached far closer than in use."""
-    rows, root = model.rows(theta)
-    return Evidence(theta, root, approximate(rows, model.likelihood(theta), None, tolerance))
+    rows = model.rows(theta)
+    return Evidence(theta, rows.root, approximate(rows, model.likelihood(theta), None, tolerance))
 
 
 def matern(r):

@@ -276,10 +276,12 @@ def test_a_start_near_by_leads_to_the_same_fixed_point():
 def test_the_laplace_sites_are_at_the_mode():
     """At the mode the pull of every reading, through its linearised site, balances the prior."""
     model, theta = two_wells((0.75, 0.4), 0.04, 0.06)
-    rows, _ = model.rows(theta)
+    rows = model.rows(theta)
     lik = model.likelihood(theta)
     sites = laplace_sites(rows, lik)
-    u, s = rows.u[0], rows.s[0]
+    groups = rows.scale.shape[2]
+    u = np.pad(rows.root[0][rows.latent], ((0, 0), (0, groups)))
+    s = np.pad(rows.scale[0], ((0, 0), (rows.root.shape[2], 0)))
     precision = np.eye(u.shape[1]) + u.T @ np.diag(sites.uu[0]) @ u + s.T @ np.diag(sites.ss[0]) @ s
     crossed = u.T @ np.diag(sites.us[0]) @ s
     precision += crossed + crossed.T
@@ -296,6 +298,27 @@ def test_the_laplace_sites_are_at_the_mode():
     assert gradient == pytest.approx(np.zeros(len(w)), abs=0.02)
 
 
+def test_rows_map_whitened_variables_to_latent_values_and_scale_errors():
+    """Root times root is the prior covariance of the latent values, written out term by term; the
+    scale errors of a cell have unit variance together, and agree where their groups do.
+    """
+    data = readings(15, n=22, inside=(3,), scale=(2, 4))
+    for name in ("gp", "quadratic"):
+        model = model_of(name, data)
+        theta = model.layout.theta(np.full((1, len(model.layout)), 0.3))
+        rows, cells = model.rows(theta), model.cells
+        own = model.layout.family(theta)[0]
+        expected = surface_covariances(model.family, own, cells.X, cells.X)
+        same = cells.inside[:, 0][:, None] == cells.inside[:, 0][None]
+        expected += model.layout.inside_sd(theta)[0, 0] ** 2 * same
+        assert rows.root[0] @ rows.root[0].T == pytest.approx(expected, rel=1e-7, abs=1e-7)
+        share = model.layout.scale_sd(theta)[0] ** 2
+        share /= share.sum()
+        agree = [g[:, None] == g[None] for g in cells.scale]
+        correlation = share[0] * agree[0] + share[1] * agree[1]
+        assert rows.scale[0] @ rows.scale[0].T == pytest.approx(correlation)
+
+
 def test_nodes_without_a_fixed_point_fall_back_on_laplace():
     """A noise far below a shared error's has no proper fixed point; the node is told of by number,
     is finite, and leaves its neighbour alone.
@@ -303,7 +326,7 @@ def test_nodes_without_a_fixed_point_fall_back_on_laplace():
     model, theta = two_wells((0.97, 0.9), 0.03, 0.05)
     wild = theta.copy()
     wild[0] = np.log([1e-4, 0.2, 30.0, 0.3])
-    rows, _ = model.rows(np.concatenate([wild, theta]))
+    rows = model.rows(np.concatenate([wild, theta]))
     both = approximate(rows, model.likelihood(np.concatenate([wild, theta])))
     assert list(both.laplace) == [0]
     assert np.isfinite(both.log_evidence).all()
