@@ -185,9 +185,10 @@ def _notices(view: Assessment, selection: Selection) -> tuple[str, ...]:
         notices.append("no bridging wells: no earlier condition lies in the plan's range")
     enough = _enough(selection.forecast)
     if not view.fresh and enough < len(selection.forecast) - 1:
+        word = "well" if enough == 1 else "wells"
         last, some = 100.0 * selection.forecast[-1], 100.0 * selection.forecast[enough]
         notices.append(
-            f"{enough} test wells would do nearly as well: {some:.1f} % still called wrongly, "
+            f"{enough} test {word} would do nearly as well: {some:.1f} % still called wrongly, "
             f"against {last:.1f} % with {len(selection.forecast) - 1}"
         )
     return tuple(notices)
