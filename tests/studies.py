@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import json
 from collections.abc import Mapping, Sequence
+from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
@@ -14,6 +15,8 @@ from scipy.stats.qmc import Sobol
 
 from muntin.bench import well_names
 from muntin.record import Study, open_study
+from muntin.record.definition import Definition, definition_faults
+from muntin.window.assessment import Assessment
 
 Keys = Mapping[str, Any]
 
@@ -56,6 +59,13 @@ def written(folder: Path, plates: Sequence[pd.DataFrame] = (), **given: Any) -> 
     return open_study(folder)
 
 
+def changed(view: Assessment, **given: Any) -> Assessment:
+    """The same posterior under another definition; only keys of plans and targets may differ."""
+    definition = Definition.model_validate(tables(**given))
+    assert definition_faults(definition) == []
+    return replace(view, study=replace(view.study, definition=definition))
+
+
 def spread(factors: Sequence[Keys], count: int, seed: int = 0) -> pd.DataFrame:
     """Conditions (count, factors) on bench steps that fill the range (Sobol' points)."""
     points = Sobol(len(factors), rng=np.random.default_rng(seed)).random_base2(10)[:count]
@@ -83,8 +93,20 @@ def logit_of(conditions: pd.DataFrame) -> np.ndarray:
 
 def read(conditions: pd.DataFrame, seed: int = 1, plate_error: float = 0.0) -> pd.DataFrame:
     """The conditions with an invented reading of recovery each, noise 0.02."""
-    rng = np.random.default_rng(seed)
-    y = (1.0 + plate_error) * expit(logit_of(conditions)) + 0.02 * rng.standard_normal(
-        len(conditions)
-    )
+    noise = 0.02 * np.random.default_rng(seed).standard_normal(len(conditions))
+    y = (1.0 + plate_error) * expit(logit_of(conditions)) + noise
     return conditions.assign(recovery=np.round(y, 4))
+
+
+def read_hcp(conditions: pd.DataFrame, seed: int = 1) -> pd.DataFrame:
+    """The conditions with an invented positive reading each, which rises with salt; noise 10 %."""
+    noise = 0.1 * np.random.default_rng(seed).standard_normal(len(conditions))
+    y = np.exp(3.0 + 0.006 * (conditions["salt"].to_numpy(dtype=float) - 250.0) + noise)
+    return conditions.assign(hcp=np.round(y, 3))
+
+
+def read_shift(conditions: pd.DataFrame, seed: int = 1) -> pd.DataFrame:
+    """The conditions with an invented real reading each, which falls with pH; noise 0.2."""
+    noise = 0.2 * np.random.default_rng(seed).standard_normal(len(conditions))
+    y = 1.5 * (6.0 - conditions["ph"].to_numpy(dtype=float)) + noise
+    return conditions.assign(shift=np.round(y, 3))
