@@ -31,9 +31,7 @@ def write_study(
     rng = np.random.default_rng(7)
     target = {"fraction": 0.8, "real": 1.0, "positive": 2.0}[kind]
     names = [f"x{i + 1}" for i in range(factors)]
-    tables = "".join(
-        f'[[factors]]\nname = "{n}"\nlow = 0\nhigh = 44\nstep = 1\n' for n in names
-    )
+    tables = "".join(f'[[factors]]\nname = "{n}"\nlow = 0\nhigh = 44\nstep = 1\n' for n in names)
     (folder / "plates").mkdir(parents=True)
     (folder / "study.toml").write_text(
         f'[study]\ntitle = "invented"\nplate = {size}\njudged_by = "well"\n{tables}'
@@ -46,9 +44,7 @@ def write_study(
         raw = pool[rng.integers(0, len(pool), wells)]
         x = raw / 22.0 - 1.0
         latent = 1.0 + 2.0 * x[:, 0] - 1.5 * x[:, -1] ** 2 + x[:, 0] * x[:, -1]
-        mean = {"fraction": 1.0 / (1.0 + np.exp(-latent)), "real": latent}.get(
-            kind, np.exp(latent)
-        )
+        mean = {"fraction": 1.0 / (1.0 + np.exp(-latent)), "real": latent}.get(kind, np.exp(latent))
         y = mean * (1.0 + 0.02 * rng.standard_normal()) + 0.03 * rng.standard_normal(wells)
         frame = pd.DataFrame(raw, columns=names).assign(signal=np.round(y, 5))
         frame.insert(0, "well", places)
@@ -83,7 +79,8 @@ def import_row() -> tuple[str, float, float, str]:
     imports = [sys.executable, "-c", "import numpy, pandas"]
     taken = best_of(lambda: subprocess.run(both, check=True), 5)
     base = best_of(lambda: subprocess.run(imports, check=True), 5)
-    return "import muntin, over numpy and pandas", taken - base, 0.6, f"{taken / base:.2f} x imports"
+    name = "import muntin, over numpy and pandas"
+    return name, taken - base, 0.6, f"{taken / base:.2f} x imports"
 
 
 def assess_row(root: Path, kind: str) -> tuple[str, float, float, str]:

@@ -42,7 +42,7 @@ def test_shape_of_the_mean_surface_is_the_published_one(surfaces):
 
 def test_level_lies_where_the_random_blocks_put_it(surfaces):
     fitted, published = surfaces
-    # Two blocks 4.46 apart leave the level open by about 2; the prior may move it by a few per cent.
+    # Two blocks 4.46 apart leave the level open by about 2; the prior moves it by a few per cent.
     assert abs((fitted - published).mean()) < 0.1
 
 

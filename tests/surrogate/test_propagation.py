@@ -9,7 +9,8 @@ from scipy.special import expit, logsumexp
 from muntin.surrogate.cells import Readings
 from muntin.surrogate.coding import Columns
 from muntin.surrogate.evidence import evaluate
-from muntin.surrogate.propagation import approximate, laplace_sites
+from muntin.surrogate.laplace import laplace_sites
+from muntin.surrogate.propagation import approximate
 from tests.surrogate.problems import (
     log_normal,
     model_of,

@@ -24,7 +24,6 @@ def definition_notices(definition: Definition) -> Iterator[str]:
                     f"{number(last)}, short of high, which is {number(high)}"
                 )
 
-
     set_by_bench = [factor.label for factor in definition.factors if factor.set_sd is not None]
     if set_by_bench:
         yield (

@@ -61,7 +61,7 @@ def _subtitle(view: Assessment, window: Window | None) -> str:
 
 
 def saved(figure: Figure, form: str) -> bytes:
-    """Return a figure as the bytes of a "png" or "svg" file; one drawn anew gives the same bytes."""
+    """Return a figure as the bytes of a "png" or "svg" file, the same whenever it is drawn."""
     import matplotlib as mpl
 
     stream = io.BytesIO()

@@ -14,7 +14,8 @@ from muntin.surrogate.coding import Columns
 from muntin.surrogate.layout import Layout
 from muntin.surrogate.links import Link
 from muntin.surrogate.priors import LogNormal, Priors
-from muntin.surrogate.propagation import Approximation, Rows, approximate, join
+from muntin.surrogate.propagation import Approximation, approximate, join
+from muntin.surrogate.sites import Rows
 from muntin.surrogate.tilted import CellLikelihood
 
 Array = NDArray[np.float64]
