@@ -178,3 +178,18 @@ def test_a_well_on_the_edge_is_worth_more_than_one_far_from_it(surfaces):
     gains = ahead.with_one(np.arange(3)) - ahead.now()
     assert gains[0] > gains[1] > 0.0
     assert gains[0] > gains[2] > 0.0
+
+
+@pytest.mark.parametrize("kinds", [("fraction",), ("fraction", "real")])
+def test_chosen_wells_tell_more_than_any_of_a_hundred_random_plates(surfaces, kinds):
+    lazy = criterion(surfaces, kinds)
+    search = LazyGreedy(lazy, 60)
+    for _ in range(5):
+        pick(lazy, search.best(np.ones(60, dtype=bool)))
+    rng, others = np.random.default_rng(2), []
+    for _ in range(100):
+        drawn = criterion(surfaces, kinds)
+        for well in rng.choice(60, 5, replace=False):
+            pick(drawn, int(well))
+        others.append(drawn.now())
+    assert lazy.now() > max(others)
