@@ -58,7 +58,11 @@ def node_mean_meets(surface: Surface, moments: tuple[Array, Array], target: Targ
 
 
 def well_meets(surface: Surface, moments: tuple[Array, Array], target: Target) -> Array:
-    """p_well (n,) from latent moments (S, n): one future well on a new plate."""
+    """p_well (n,) from latent moments (S, n): one future well on a new plate.
+
+    Its reading has the common noise; the uncertainty that a reading may state of itself is not
+    known beforehand and not added.
+    """
     mean, variance = moments
     errors = surface.errors
     inside = (errors.inside**2).sum(1)[:, None]
