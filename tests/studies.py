@@ -44,9 +44,16 @@ def text(**given: Any) -> str:
     for name, table in tables(**given).items():
         several = not isinstance(table, Mapping)
         for one in table if several else [table]:
-            keys = "".join(f"{key} = {json.dumps(value)}\n" for key, value in one.items())
+            keys = "".join(f"{key} = {_literal(value)}\n" for key, value in one.items())
             parts.append(f"[[{name}]]\n{keys}" if several else f"[{name}]\n{keys}")
     return "\n".join(parts)
+
+
+def _literal(value: Any) -> str:
+    """A value as TOML writes it; lists, numbers and texts are written as in JSON."""
+    if isinstance(value, Mapping):
+        return "{" + ", ".join(f"{key} = {_literal(v)}" for key, v in value.items()) + "}"
+    return json.dumps(value)
 
 
 def written(folder: Path, plates: Sequence[pd.DataFrame] = (), **given: Any) -> Study:
