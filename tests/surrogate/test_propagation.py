@@ -320,15 +320,17 @@ def test_rows_map_whitened_variables_to_latent_values_and_scale_errors():
         assert rows.scale[0] @ rows.scale[0].T == pytest.approx(correlation)
 
 
-def test_nodes_without_a_fixed_point_fall_back_on_laplace():
-    """A noise far below a shared error's has no proper fixed point; the node is told of by number,
-    is finite, and leaves its neighbour alone.
+def test_wild_nodes_are_finite_and_leave_their_neighbour_alone():
+    """Noise, scale error and process sd far from what the wells ask for: some nodes have no proper
+    fixed point and are kept from negative precisions or taken as Laplace's, told of by number.
     """
-    model, theta = two_wells((0.97, 0.9), 0.03, 0.05)
-    wild = theta.copy()
-    wild[0] = np.log([1e-4, 0.2, 30.0, 0.3])
-    rows = model.rows(np.concatenate([wild, theta]))
-    both = approximate(rows, model.likelihood(np.concatenate([wild, theta])))
-    assert list(both.laplace) == [0]
-    assert np.isfinite(both.log_evidence).all()
-    assert both.log_evidence[1] == pytest.approx(evaluate(model, theta).log[0], abs=1e-4)
+    model, sane = two_wells((0.85, 0.34), 0.03, 0.05)
+    medians = np.log([0.02, 0.05, 3.0, 1.0])
+    theta = medians + np.random.default_rng(9).normal(0.0, 1.5, (40, 4))
+    theta[20] = sane
+    together = approximate(model.rows(theta), model.likelihood(theta))
+    alone = [approximate(model.rows(one), model.likelihood(one)) for one in theta[:, None]]
+    assert np.isfinite(together.log_evidence).all()
+    assert np.isfinite(together.V).all()
+    assert list(together.laplace) == [i for i, one in enumerate(alone) if len(one.laplace)]
+    assert together.log_evidence[20] == pytest.approx(alone[20].log_evidence[0], abs=1e-6)
