@@ -5,7 +5,7 @@ import pytest
 from scipy.stats import kstest
 
 from muntin.record.definition import Definition
-from muntin.window.grid import judged_grid, scattered, thinned
+from muntin.window.grid import judged_grid, scattered
 from tests.studies import LOAD, PH, RESIN, SALT, TIME, tables
 
 
@@ -79,16 +79,6 @@ def test_plan_ranges_count_only_where_asked():
     planned, _ = judged_grid(made, planned=True)
     assert set(planned["ph"]) == {5.5, 6.0, 6.5, 7.0, 7.5}
     assert set(planned["resin"]) == {"Beta"}
-
-
-@pytest.mark.parametrize("count", [3, 4, 7, 10, 101])
-def test_thinning_keeps_both_ends(count):
-    levels = np.linspace(2.0, 9.0, count)
-    fewer = thinned(levels)
-    assert len(fewer) == max(3, int(0.8 * count))
-    assert (fewer[0], fewer[-1]) == (2.0, 9.0)
-    assert set(fewer) <= set(levels)
-    assert np.diff(fewer).max() <= 2.0 * (levels[1] - levels[0]) * (1.0 + 1e-9)
 
 
 # Beyond three factors.

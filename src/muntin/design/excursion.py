@@ -12,7 +12,6 @@ import numpy as np
 from numpy.typing import NDArray
 
 Array = NDArray[np.float64]
-_LEAST = 1e-12
 
 
 def expected_variance(c: Array, rho: Array) -> Array:
@@ -26,7 +25,8 @@ def expected_wrong(c: Array, rho: Array) -> Array:
     """E[min(p1, 1 - p1)] = 2 T(c, sqrt((1 - rho) / rho)): the chance of a wrong call."""
     from scipy.special import owens_t
 
-    return 2.0 * np.asarray(owens_t(c, np.sqrt((1.0 - rho) / np.maximum(rho, _LEAST))))
+    with np.errstate(divide="ignore"):
+        return 2.0 * np.asarray(owens_t(c, np.sqrt((1.0 - rho) / rho)))
 
 
 def expected_square(low: Array, high: Array, rho: Array) -> Array:

@@ -19,23 +19,28 @@ _DRAWS = 64
 
 @dataclass(frozen=True)
 class Tails:
-    """Chances today (P,) that the process mean lies above the lower and below the upper limit."""
+    """Chances today (P,) that the process mean lies above the lower and below the upper limit;
+    None where there is no such limit.
+    """
 
-    above: Array
-    below: Array
+    above: Array | None
+    below: Array | None
 
     @classmethod
     def of(cls, surface: Surface, moments: tuple[Array, Array], target: Target) -> Tails:
         """The tails of a surface with latent moments (S, P)."""
+        low, high = Target(low=target.low), Target(high=target.high)
         return cls(
-            mean_meets(surface, moments, Target(low=target.low)),
-            mean_meets(surface, moments, Target(high=target.high)),
+            None if np.isinf(target.low) else mean_meets(surface, moments, low),
+            None if np.isinf(target.high) else mean_meets(surface, moments, high),
         )
 
     @property
     def meets(self) -> Array:
         """Chance (P,) that both limits are met."""
-        return np.maximum(self.above + self.below - 1.0, 0.0)
+        above = 1.0 if self.above is None else self.above
+        below = 1.0 if self.below is None else self.below
+        return np.clip(above + below - 1.0, 0.0, 1.0)
 
 
 def wrong_share(outlooks: Sequence[Outlook], today: Sequence[Tails]) -> float:
@@ -49,18 +54,26 @@ def wrong_share(outlooks: Sequence[Outlook], today: Sequence[Tails]) -> float:
     from scipy.stats.qmc import Sobol
 
     rho = [_explained_share(o) for o in outlooks]
-    scores = [tuple(ndtri(np.clip(p, 1e-15, 1.0)) for p in (t.above, t.below)) for t in today]
-    if len(outlooks) == 1 and any(np.all(np.isinf(c)) for c in scores[0]):
-        c = next(c for c in scores[0] if not np.all(np.isinf(c)))
-        return float(expected_wrong(c, rho[0]).mean())
+    if len(outlooks) == 1 and (today[0].above is None or today[0].below is None):
+        return float(expected_wrong(_score(today[0].meets), rho[0]).mean())
     points = Sobol(len(outlooks), rng=np.random.default_rng(0)).random(_DRAWS)
     joint = np.ones((_DRAWS, len(outlooks[0].judged)))
-    for r, (above, below) in enumerate(scores):
+    for r, tails in enumerate(today):
+        above, below = _score(tails.above), _score(tails.below)
         shift = ndtri(np.clip(points[:, [r]], 1e-6, 1.0 - 1e-6)) * np.sqrt(rho[r])
         left = np.sqrt(1.0 - rho[r])
         both = ndtr((above + shift) / left) + ndtr((below - shift) / left) - 1.0
         joint *= np.maximum(both, 0.0)
     return float(np.minimum(joint, 1.0 - joint).mean())
+
+
+def _score(p: Array | None) -> Array:
+    """Standard normal score of a chance; infinite where there is no limit."""
+    from scipy.special import ndtri
+
+    if p is None:
+        return np.array(np.inf)
+    return np.asarray(ndtri(np.clip(p, 1e-15, 1.0 - 1e-15)))
 
 
 def _explained_share(outlook: Outlook) -> Array:

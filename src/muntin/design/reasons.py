@@ -41,8 +41,8 @@ def reasons(
 def _reason(pick: Pick, p: float, now: float, at: str, place: str) -> str:
     """Why one condition was picked; at: its first factor, place: where it was run last, or ""."""
     if pick.role == "bridge":
-        sure = max(p, 1.0 - p) >= _SURE
-        return f"repeats {place}, a {'known' if sure else 'likely'} {pick.purpose}: ties plates"
+        sure = "known" if max(p, 1.0 - p) >= _SURE else "likely"
+        return f"repeats {place}, a {sure} {'pass' if p >= 0.5 else 'fail'}: ties plates"
     again = f"repeats {place}: " if place else ""
     chance = f"{again}probability {now:.2f}"
     if pick.purpose == "best":

@@ -85,8 +85,15 @@ def _bridge(
     again = [r for r in run if r.values in number]
     if not again:
         return []
-    p = view.judged(pd.DataFrame([r.values for r in again], columns=names), "mean")
-    return [(number[again[i].values], kind) for i, kind in bridging_conditions(again, p, wells)]
+    ran = pd.DataFrame([r.values for r in again], columns=names)
+
+    def beside(first: int) -> NDArray[np.bool_]:
+        levels = Levels(view.study.definition, ran)
+        levels.use(first)
+        return levels.open()
+
+    chosen = bridging_conditions(again, view.judged(ran, "mean"), wells, beside)
+    return [(number[again[i].values], kind) for i, kind in chosen]
 
 
 @dataclass

@@ -11,7 +11,7 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
-from muntin.record.faults import Fault, StudyFaults, did_you_mean, number, quoted
+from muntin.record.faults import Fault, StudyFaults, did_you_mean, quoted
 from muntin.record.responses import Response
 from muntin.record.study import Study
 from muntin.surrogate.fit import SURROGATES, Stack, fit_stack, prior_surface
@@ -30,7 +30,6 @@ from muntin.window.window import Window, judge_window
 
 Array = NDArray[np.float64]
 Surrogate = Literal["gp", "quadratic", "stacked"]
-_SPREAD = 16
 
 
 @dataclass(frozen=True, kw_only=True, eq=False)
@@ -38,8 +37,7 @@ class Assessment:
     """A study with the posterior surface of every response that has readings, or of the prior.
 
     stacks: the fits of each response with readings. surfaces: the posterior of each response that
-    has readings, or, where nothing has been read yet, of each judged response under its prior.
-    awaited: judged responses without a reading; while there is one, nothing is judged jointly.
+    has readings; where no judged response has any, that of each judged one under its prior.
     """
 
     study: Study
@@ -50,14 +48,17 @@ class Assessment:
 
     @property
     def awaited(self) -> tuple[str, ...]:
-        """Names of the judged responses without a reading, when others have some."""
-        judged = [r.name for r in self.study.definition.judged]
-        return tuple(name for name in judged if name not in self.surfaces)
+        """Judged responses without a reading, by name, while any response has some.
+
+        While there is one, nothing is judged jointly.
+        """
+        judged = [r.name for r in self.study.definition.judged if self.stacks]
+        return tuple(name for name in judged if name not in self.stacks)
 
     @property
     def fresh(self) -> bool:
-        """Whether nothing has been read yet, so that the prior alone speaks."""
-        return not self.stacks
+        """Whether no judged response has been read yet, so that the prior alone speaks."""
+        return not any(r.name in self.stacks for r in self.study.definition.judged)
 
     @cached_property
     def checks(self) -> tuple[Check, ...]:
@@ -163,8 +164,8 @@ def assess(
             priors = priors_for(study, response)
             stacks[response.name] = fit_stack(names, readings, response.kind, columns, priors, seed)
     surfaces = {name: stack.surface for name, stack in stacks.items()}
-    if not stacks:
-        surfaces = {r.name: _prior(study, r, names, seed) for r in definition.judged}
+    if not any(r.name in stacks for r in definition.judged):
+        surfaces |= {r.name: _prior(study, r, names, seed) for r in definition.judged}
     return Assessment(study=study, surrogate=surrogate, seed=seed, stacks=stacks, surfaces=surfaces)
 
 
@@ -180,14 +181,9 @@ def _prior(study: Study, response: Response, names: tuple[str, ...], seed: int) 
 def _even_spread(factors: int) -> tuple[Array, Array]:
     """Points (n, factors) of [-1, 1] and weights (n,).
 
-    Gauss-Legendre for one and two factors, Sobol' beyond.
+    Products of Gauss-Legendre rules, of three points to three factors and of two beyond.
     """
-    if factors > 2:
-        from scipy.stats.qmc import Sobol
-
-        points = Sobol(factors, rng=np.random.default_rng(0)).random(_SPREAD) * 2.0 - 1.0
-        return points, np.full(_SPREAD, 1.0 / _SPREAD)
-    x, w = np.polynomial.legendre.leggauss(3)
+    x, w = np.polynomial.legendre.leggauss(3 if factors <= 3 else 2)
     grids = np.meshgrid(*[x] * factors, indexing="ij")
     weights = np.prod(np.meshgrid(*[w / 2.0] * factors, indexing="ij"), axis=0)
     return np.stack([g.ravel() for g in grids], axis=1), weights.ravel()
@@ -218,7 +214,7 @@ def _checked(study: Study, conditions: pd.DataFrame) -> pd.DataFrame:
                         file="conditions",
                         where=f"row {row}",
                         column=factor.name,
-                        value=quoted(value) if isinstance(value, str) else number(value),
+                        value=quoted(value),
                         problem=problem,
                         allowed=allowed,
                     )
@@ -230,7 +226,9 @@ def _checked(study: Study, conditions: pd.DataFrame) -> pd.DataFrame:
 
 def _value_problem(choices: tuple[str, ...] | None, scale: str, value: object) -> str:
     if choices is not None:
-        return "" if value in choices else "is not"
-    if isinstance(value, str | bool) or value is None or not np.isfinite(float(str(value))):
+        return "" if isinstance(value, str) and value in choices else "is not"
+    if not isinstance(value, int | float | np.integer | np.floating) or isinstance(value, bool):
         return "is not a number in"
-    return "lies at or below 0, outside" if scale == "log" and float(str(value)) <= 0 else ""
+    if not np.isfinite(value):
+        return "is not a number in"
+    return "lies at or below 0, outside" if scale == "log" and value <= 0 else ""

@@ -11,7 +11,6 @@ from numpy.typing import NDArray
 from muntin.record.responses import Response
 from muntin.record.study import Study
 from muntin.surrogate.fit import Stack
-from muntin.surrogate.loo import LeaveOneOut
 
 Array = NDArray[np.float64]
 _WILD = 3.5
@@ -40,20 +39,19 @@ def study_checks(study: Study, stacks: Mapping[str, Stack]) -> tuple[Check, ...]
     return (*checks, *_plates(study, stacks))
 
 
-def _mixed(stack: Stack) -> LeaveOneOut:
-    """Leave-one-out predictions of the stack: the mixture of its fits'."""
+def _predicted(stack: Stack) -> tuple[Array, Array]:
+    """Leave-one-out mean and sd (n,) of the stack: of the mixture of its fits'."""
     loos, shares = [fit.loo for fit in stack.fits], stack.shares
     mean = shares @ np.stack([loo.mean for loo in loos])
     square = shares @ np.stack([loo.sd**2 + (loo.mean - mean) ** 2 for loo in loos])
-    density = np.log(shares @ np.exp(np.stack([loo.log_density for loo in loos])))
-    return LeaveOneOut(density, mean, np.sqrt(square), shares @ np.stack([loo.pit for loo in loos]))
+    return mean, np.sqrt(square)
 
 
 def _coverage(response: Response, stack: Stack) -> Check:
     """Share of readings inside their leave-one-out 90 % range, against its binomial 99 % limits."""
     from scipy.stats import binom
 
-    pit = _mixed(stack).pit
+    pit = stack.shares @ np.stack([fit.loo.pit for fit in stack.fits])
     n, hits = len(pit), int(((pit > 0.05) & (pit < 0.95)).sum())
     least = int(binom.ppf(0.005, n, 0.9))
     passed = hits >= least
@@ -70,8 +68,8 @@ def _wild(study: Study, response: Response, stack: Stack) -> Check:
     readings = study.readings(response.name)
     y = readings["y"].to_numpy(dtype=float)
     y = np.log(y) if response.kind == "positive" else y
-    loo = _mixed(stack)
-    z = (y - loo.mean) / loo.sd
+    mean, sd = _predicted(stack)
+    z = (y - mean) / sd
     wild = np.flatnonzero(np.abs(z) > _WILD)
     if not len(wild):
         return Check("wild wells", True, False, f"{response.label}: no wild wells.")
@@ -100,7 +98,7 @@ def _plates(study: Study, stacks: Mapping[str, Stack]) -> tuple[Check, ...]:
     """Few plates hardly tell how far plates differ."""
     if not stacks:
         return ()
-    count = study.informing()["plate"].nunique()
+    count = len({plate for name in stacks for plate in study.readings(name)["plate"]})
     if count >= 3:
         return (Check("plates", True, False, f"{count} plates tell how far plates differ."),)
     said = "One plate cannot" if count == 1 else "Two plates hardly"

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from typing import Any
+
 import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
@@ -12,6 +14,7 @@ from muntin.record.factors import Factor
 MOST = 4000
 _GRID_FACTORS = 3
 _SCATTERED = 2048
+_FEW, _MANY = 100, 1e6
 
 
 def judged_grid(
@@ -26,21 +29,30 @@ def judged_grid(
         count = min(most, _SCATTERED)
         return _allowed(definition, scattered(definition, count, 0, planned)), False
     levels = [f.plan_levels() if planned else f.levels() for f in definition.factors]
-    while np.prod([float(len(v)) for v in levels]) > most:
-        numeric = [i for i, f in enumerate(definition.factors) if f.continuous]
-        finest = max(numeric, key=lambda i: len(levels[i]), default=-1)
-        if finest < 0 or len(levels[finest]) < 4:
+    grid = _allowed(definition, _product(definition, coarsened(definition, levels, most)))
+    if len(grid) < _FEW and np.prod([float(len(v)) for v in levels]) <= _MANY:
+        # Narrow limits fall between coarse levels: take every step that they allow.
+        grid = _allowed(definition, _product(definition, levels)).iloc[:most]
+    return grid, True
+
+
+def coarsened(definition: Definition, levels: list[NDArray[Any]], most: int) -> list[NDArray[Any]]:
+    """Fewer levels of the factors with a range, evenly from the first to the last, so that there
+    are at most `most` combinations; never fewer than three, choices stay.
+    """
+    counts = [len(v) for v in levels]
+    numeric = [i for i, f in enumerate(definition.factors) if f.continuous]
+    while np.prod([float(c) for c in counts]) > most:
+        finest = max(numeric, key=lambda i: counts[i], default=-1)
+        if finest < 0 or counts[finest] < 4:
             break
-        levels[finest] = thinned(levels[finest])
-    grid = pd.MultiIndex.from_product(levels, names=definition.factor_names).to_frame(index=False)
-    return _allowed(definition, grid), True
+        counts[finest] = max(3, int(counts[finest] * 0.9))
+    picked = [np.round(np.linspace(0, len(v) - 1, n)) for v, n in zip(levels, counts, strict=True)]
+    return [v[np.unique(p).astype(int)] for v, p in zip(levels, picked, strict=True)]
 
 
-def thinned(levels: NDArray[np.float64]) -> NDArray[np.float64]:
-    """Fewer levels (about a fifth fewer), still spread evenly from the first to the last."""
-    count = max(3, int(len(levels) * 0.8))
-    picked = np.round(np.linspace(0, len(levels) - 1, count)).astype(int)
-    return levels[np.unique(picked)]
+def _product(definition: Definition, levels: list[NDArray[Any]]) -> pd.DataFrame:
+    return pd.MultiIndex.from_product(levels, names=definition.factor_names).to_frame(index=False)
 
 
 def scattered(definition: Definition, count: int, seed: int, planned: bool) -> pd.DataFrame:

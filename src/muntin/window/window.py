@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 import pandas as pd
@@ -44,7 +45,7 @@ def judge_window(
     """The window from probabilities (n,) at the conditions of a grid."""
     inside = judged >= definition.required_probability
     table = grid.assign(p_mean=p_mean, probability=judged, inside=inside)
-    best = _best(definition, grid, judged)
+    best = _best(definition, grid, np.where(inside, judged, -1.0) if inside.any() else judged)
     ranges = None
     if regular and inside[best]:
         ranges = _ranges(definition, grid, inside, best)
@@ -76,8 +77,14 @@ def _ranges(
 ) -> dict[str, tuple[object, object]]:
     """A box around row `best` grown one level at a time while every condition in it is inside."""
     names = definition.factor_names
-    codes = np.stack([pd.factorize(grid[n], sort=False)[0] for n in names], axis=1)
-    levels = [list(dict.fromkeys(grid[n])) for n in names]
+    levels = [_levels(f.choices, grid[f.name]) for f in definition.factors]
+    codes = np.stack(
+        [
+            grid[n].map({v: i for i, v in enumerate(ls)})
+            for n, ls in zip(names, levels, strict=True)
+        ],
+        axis=1,
+    ).astype(np.intp)
     low, high = codes[best].copy(), codes[best].copy()
     movable = [
         (i, side) for i, f in enumerate(definition.factors) if f.continuous for side in (-1, 1)
@@ -97,6 +104,12 @@ def _ranges(
             high[i] += 1
         movable = [move for _, move in grown]
     return {n: (levels[i][low[i]], levels[i][high[i]]) for i, n in enumerate(names)}
+
+
+def _levels(choices: tuple[str, ...] | None, column: pd.Series[Any]) -> list[object]:
+    """The levels of a grid's factor in order: of the range, or of the choices as given."""
+    found = set(column)
+    return sorted(found) if choices is None else [c for c in choices if c in found]
 
 
 def _gain(
