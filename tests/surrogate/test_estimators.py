@@ -84,6 +84,29 @@ def test_predictions_are_moments_of_the_process_mean(kind_of, kind):
     assert np.array_equal(fitted.predict(new), mean)
 
 
+@KINDS
+def test_moments_far_out_where_little_is_known(kind):
+    """Mixture of nodes with a wide latent law each, against closed forms or a dense grid."""
+    X, y, _ = problem(kind, n=6)
+    fitted = QuadraticRegressor(kind=kind, bounds=BOUNDS).fit(X, y)
+    new = np.array([[3.0, 20.0], [9.0, 700.0]])
+    mean, sd = fitted.predict(new, return_std=True)
+    coded = (2.0 * new - np.sum(BOUNDS, axis=1)) / np.diff(BOUNDS).T
+    m, v = fitted.surface_.moments(coded)
+    assert np.sqrt(v).max() > 0.5
+    if kind == "positive":
+        first, second = np.exp(m + 0.5 * v), np.exp(2.0 * m + 2.0 * v)
+    else:
+        z = np.linspace(-9.0, 9.0, 4001)
+        density = np.exp(-0.5 * z**2)
+        g = mean_of(fitted.surface_.link, m[..., None] + np.sqrt(v)[..., None] * z)
+        first, second = (power @ density / density.sum() for power in (g, g**2))
+    w = fitted.surface_.weights
+    # 61 points a fifth of an sd apart, where a latent sd is several logits.
+    assert mean == pytest.approx(w @ first, rel=1e-4)
+    assert sd**2 == pytest.approx(w @ second - (w @ first) ** 2, rel=1e-3)
+
+
 @EVERY
 @KINDS
 def test_a_clone_fits_to_the_same_numbers(kind_of, kind):

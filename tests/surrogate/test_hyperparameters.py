@@ -3,6 +3,7 @@ import pytest
 from scipy.stats import multivariate_t, norm
 from scipy.stats.qmc import Sobol
 
+from muntin.surrogate import hyperparameters
 from muntin.surrogate.evidence import slope
 from muntin.surrogate.hyperparameters import Proposal, integrate, log_prior, mode
 from tests.surrogate.problems import model_of, readings, settled
@@ -87,3 +88,16 @@ def test_effective_nodes_are_counted_from_the_weights():
     assert posterior.ess == pytest.approx(1.0 / (w**2).sum())
     assert len(w) == len(posterior.evidence.log)
     assert 0.4 * 64 <= posterior.ess <= len(w)
+
+
+def test_poor_weights_ask_for_more_nodes(monkeypatch):
+    """With a shape that never pleases, five rounds are drawn and answer as one mixture."""
+    model = model_of("gp", readings(35, n=14, inside=(), scale=(2,)))
+    reference = integrate(model, seed=2, nodes=1024)
+    monkeypatch.setattr(hyperparameters, "tail_shape", lambda log_w: np.inf)
+    rounds = integrate(model, seed=1, nodes=64)
+    assert len(rounds.log_weights) == len(rounds.evidence.log) == 5 * 64
+    assert np.exp(rounds.log_weights).sum() == pytest.approx(1.0)
+    assert rounds.ess > 4.0 * 0.4 * 64
+    # Some 250 effective nodes against 800.
+    assert rounds.log_marginal == pytest.approx(reference.log_marginal, abs=0.05)
