@@ -324,6 +324,17 @@ KEYS = {
             'the plate tables (did you mean "resin"?)'
         ],
     ),
+    "shared_error_of_an_unknown_response": (
+        {TOML: STUDY + '[[shared_errors]]\nby = ["plate"]\nresponses = ["hcb"]\n'},
+        ['study.toml, shared_errors 1, responses: "hcb" is not a response (did you mean "hcp"?)'],
+    ),
+    "shared_error_of_no_response": (
+        {TOML: STUDY + '[[shared_errors]]\nby = ["plate"]\nresponses = []\n'},
+        [
+            "study.toml, shared_errors 1, responses: must name one or more responses; "
+            "without this key all are touched"
+        ],
+    ),
     "shared_error_by_well": (
         {TOML: STUDY + '[[shared_errors]]\nby = ["well"]\n'},
         [

@@ -30,7 +30,7 @@ def test_defaults(make):
     d = definition(make)
     assert (d.title, d.plate, d.required_probability) == ("Small invented study", 96, 0.9)
     assert [f.label for f in d.factors] == ["ph", "salt", "resin"]
-    assert [(s.by, s.acts) for s in d.shared_errors] == [(("plate",), "scale")]
+    assert [(s.by, s.acts, s.responses) for s in d.shared_errors] == [(("plate",), "scale", None)]
     assert (d.protein, d.stop, d.fixed, d.limits) == (None, None, {}, ())
     plan = d.plan
     assert (plan.bridging_wells, plan.repeats_min, plan.prepared_by) == (4, 1, "well")
@@ -70,6 +70,22 @@ def test_priors_are_a_plain_mapping(make):
     d = definition(make, priors=("at_least = 0.8", f"at_least = 0.8\n{priors}"))
     assert d.responses[0].priors == {"noise_sd": {"median": 0.03, "log_sd": 0.5}, "mean_sd": 2}
     assert d.responses[1].priors == {}
+
+
+def test_a_ceiling_gap_may_have_its_prior(make):
+    priors = "priors = { ceiling_gap = { median = 0.05, log_sd = 0.7 } }"
+    d = definition(make, priors=("at_least = 0.8", f"at_least = 0.8\n{priors}"))
+    assert d.responses[0].priors == {"ceiling_gap": {"median": 0.05, "log_sd": 0.7}}
+
+
+def test_no_shared_error_at_all(make):
+    assert definition(make, none=("[study]", "shared_errors = []\n[study]")).shared_errors == ()
+
+
+def test_a_shared_error_names_the_responses_it_touches(make):
+    text = STUDY + '[[shared_errors]]\nby = ["plate"]\nresponses = ["hcp"]\n'
+    (shared,) = open_study(make({"study.toml": text})).definition.shared_errors
+    assert shared.responses == ("hcp",)
 
 
 def test_levels_are_clean_numbers():

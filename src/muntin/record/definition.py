@@ -9,7 +9,7 @@ import numpy as np
 import pandas as pd
 
 from muntin.record.factors import Factor, factor_faults
-from muntin.record.faults import Fault, number, quoted
+from muntin.record.faults import Fault, did_you_mean, number, quoted
 from muntin.record.keys import Keys, Number, NumberOrText, Text, Truths, Whole, key
 from muntin.record.limits import Limit, limit_faults
 from muntin.record.responses import Response, response_faults
@@ -52,6 +52,9 @@ class SharedError(Keys):
         says='"scale" multiplies the readings (load, blank, calibration); "inside" moves the '
         "process itself (a stock made a little wrong)",
         example="scale",
+    )
+    responses: tuple[Text, ...] | None = key(
+        None, says="responses that it touches; all where absent", example=["recovery"]
     )
 
 
@@ -110,7 +113,9 @@ class Definition(Keys):
     responses: tuple[Response, ...] = key((), says="what is measured, 1 to 6")
     limits: tuple[Limit, ...] = key((), says="combinations that may be run")
     shared_errors: tuple[SharedError, ...] = key(
-        (SharedError(by=("plate",), acts="scale"),), says="errors that several wells share"
+        (SharedError(by=("plate",), acts="scale"),),
+        says='errors that several wells share; where absent, one: by = ["plate"], acts = "scale". '
+        "For no shared error at all write shared_errors = [] above [study]",
     )
     protein: Protein | None = key(None, says="what there is to load")
     plan: PlanRules = key(PlanRules(), says="how new plates are planned")
@@ -241,6 +246,23 @@ def _shared_faults(definition: Definition) -> Iterator[Fault]:
             if name in taken:
                 problem = "cannot be shared by wells; name plate, a factor or another column"
                 yield Fault(file=STUDY_FILE, where=where, value=quoted(name), problem=problem)
+        yield from _touched_faults(definition, shared, f"shared_errors {index}, responses")
+
+
+def _touched_faults(definition: Definition, shared: SharedError, where: str) -> Iterator[Fault]:
+    known = [response.name for response in definition.responses]
+    if shared.responses is not None and not shared.responses:
+        problem = "must name one or more responses; without this key all are touched"
+        yield Fault(file=STUDY_FILE, where=where, problem=problem)
+    for name in shared.responses or ():
+        if known and name not in known:
+            yield Fault(
+                file=STUDY_FILE,
+                where=where,
+                value=quoted(name),
+                problem="is not a response",
+                hint=did_you_mean(name, known),
+            )
 
 
 def _plan_faults(definition: Definition) -> Iterator[Fault]:

@@ -32,6 +32,9 @@ class PriorTable(Keys):
     noise_sd: Spread | None = key(None, says="standard deviation of the readings")
     scale_error: Spread | None = key(None, says="standard deviation of errors that act as scale")
     inside_error: Spread | None = key(None, says="standard deviation of errors that act inside")
+    ceiling_gap: Spread | None = key(
+        None, says="how far below 1 a fraction levels off (hold-up caps recovery)"
+    )
 
 
 class Response(Keys):
