@@ -17,7 +17,7 @@ from numpy.typing import NDArray
 
 from muntin.design.improvement import log_improvement_of_mean
 from muntin.design.outlook import Outlook
-from muntin.surrogate.links import latent_of
+from muntin.surrogate.links import latent_of, mean_of
 from muntin.surrogate.nodes import Surface
 from muntin.window.probability import Target
 
@@ -64,7 +64,7 @@ class BestCriterion:
             np.broadcast_to(mark[:, None], sd.shape),
             rising,
         )
-        log_w = np.log(outlook.surface.weights)[:, None]
+        log_w = np.log(outlook.surface.weights * outlook.surface.errors.ceiling)[:, None]
         return np.asarray(logsumexp(log_ei + log_w, axis=0))
 
     def _of_success(self, picked: list[int]) -> Array:
@@ -102,9 +102,8 @@ def _success(surface: Surface, f: Array, target: Target) -> Array:
     noise = float(surface.weights @ surface.errors.noise)
     link = surface.link
     if link == "logit":
-        from muntin.surrogate.links import mean_of
-
-        g, low, high = mean_of(link, f), target.low, target.high
+        g = mean_of(link, f, float(surface.weights @ surface.errors.ceiling))
+        low, high = target.low, target.high
     else:
         g, low, high = f, float(latent_of(link, target.low)), float(latent_of(link, target.high))
     return np.asarray(ndtr((high - g) / noise) - ndtr((low - g) / noise))

@@ -13,7 +13,6 @@ from numpy.typing import NDArray
 
 from muntin.design.excursion import expected_square
 from muntin.design.outlook import Outlook
-from muntin.surrogate.links import latent_of
 from muntin.window.probability import Target
 
 Array = NDArray[np.float64]
@@ -57,9 +56,9 @@ class EdgeCriterion:
     def _square(outlook: Outlook, target: Target, explained: Array) -> Array:
         """E[p1^2] (P, k), averaged over nodes, from explained variance (S, P, k)."""
         mean, variance = outlook.mean[:, outlook.watched], outlook.variance[:, outlook.watched]
-        sd, link = np.sqrt(variance), outlook.surface.link
-        low = ((latent_of(link, target.low) - mean) / sd)[..., None]
-        high = ((latent_of(link, target.high) - mean) / sd)[..., None]
+        sd = np.sqrt(variance)
+        low = ((outlook.surface.thresholds(target.low) - mean) / sd)[..., None]
+        high = ((outlook.surface.thresholds(target.high) - mean) / sd)[..., None]
         rho = np.clip(explained / variance[..., None], 0.0, 1.0 - 1e-9)
         return np.asarray(
             np.tensordot(outlook.surface.weights, expected_square(low, high, rho), axes=1)

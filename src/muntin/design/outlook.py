@@ -61,7 +61,8 @@ class Outlook:
             self.noise = np.repeat(self.surface.errors.noise[:, None] ** 2, f.shape[1], axis=1)
             self.lever = np.zeros_like(sd)
             return
-        slope, g = slope_of(link, f), mean_of(link, f)
+        ceiling = self.surface.errors.ceiling[:, None, None]
+        slope, g = slope_of(link, f, ceiling), mean_of(link, f, ceiling)
         square = np.maximum((slope**2) @ _W, 1e-12)
         self.noise = self.surface.errors.noise[:, None] ** 2 / square
         self.lever = ((slope * g) @ _W) / square

@@ -196,14 +196,16 @@ def _seed(random_state: int | np.random.RandomState | None) -> int:
 
 def _process_moments(surface: Surface, X: Array) -> tuple[Array, Array]:
     """Posterior mean and sd (n,) of g(f) at coded X (n, D), over all nodes."""
-    centre, within = _node_moments(surface.link, *surface.moments(X))
+    centre, within = _node_moments(
+        surface.link, *surface.moments(X), surface.errors.ceiling[:, None]
+    )
     mean = surface.weights @ centre
     variance = surface.weights @ (within + (centre - mean) ** 2)
     return mean, np.sqrt(variance)
 
 
-def _node_moments(link: Link, mean: Array, variance: Array) -> tuple[Array, Array]:
-    """Mean and variance (S, n) of g(f), f normal with the given moments (S, n)."""
+def _node_moments(link: Link, mean: Array, variance: Array, ceiling: Array) -> tuple[Array, Array]:
+    """Mean and variance (S, n) of g(f), f normal with the given moments (S, n); ceiling (S, 1)."""
     if link == "identity":
         return mean, variance
     if link == "log":
@@ -212,7 +214,7 @@ def _node_moments(link: Link, mean: Array, variance: Array) -> tuple[Array, Arra
     sd, first, second = np.sqrt(variance), np.zeros_like(mean), np.zeros_like(mean)
     density = np.exp(-0.5 * _NORMAL**2)
     for z, weight in zip(_NORMAL, density / density.sum(), strict=True):
-        g = mean_of(link, mean + z * sd)
+        g = mean_of(link, mean + z * sd, ceiling)
         first += weight * g
         second += weight * g * g
     return first, np.maximum(second - first**2, 0.0)

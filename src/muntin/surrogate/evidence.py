@@ -62,10 +62,12 @@ class Model:
             ("noise_sd", p.noise_sd),
             *((f"inside_error[{j}]", p.inside_error) for j in range(inside)),
             *((f"scale_error[{j}]", p.scale_error) for j in range(scale)),
+            *((("ceiling_gap", p.ceiling_gap),) if self.link == "logit" else ()),
             *self.family.own(),
         ]
         names, priors = zip(*named, strict=True)
-        return Layout(inside=inside, scale=scale, names=names, priors=priors)
+        ceiling = int(self.link == "logit")
+        return Layout(inside=inside, scale=scale, ceiling=ceiling, names=names, priors=priors)
 
     def likelihood(self, theta: Array) -> CellLikelihood:
         """The likelihood of the cells at log hyperparameters theta (S, H)."""
@@ -80,6 +82,7 @@ class Model:
             variance=cells.variance,
             noise=layout.noise(theta)[:, None] ** 2,
             scale=scale,
+            ceiling=layout.ceiling_of(theta)[:, None],
         )
 
     def rows(self, theta: Array) -> Rows:
@@ -144,5 +147,9 @@ def slope(model: Model, evidence: Evidence) -> Array:
     for groups in model.cells.scale_groups:
         scale.append(diagonal[:, begin : begin + groups].sum(1, keepdims=True))
         begin += groups
-    inside = layout.inside
-    return np.concatenate([noise, family[:, :inside], *scale, family[:, inside:]], axis=1)
+    inside, gap = layout.inside, []
+    if layout.ceiling:
+        ceiling = layout.ceiling_of(evidence.theta)
+        slope_gap = -(1.0 - ceiling) / ceiling * approx.tilted.ceiling_slope.sum(1)
+        gap.append(slope_gap[:, None])
+    return np.concatenate([noise, family[:, :inside], *scale, *gap, family[:, inside:]], axis=1)

@@ -68,6 +68,11 @@ def link_of(kind: Kind) -> Link:
     return links[kind]
 
 
+def _engine_link(kind: Kind) -> Link:
+    """The link to the scale on which noise is additive: positive readings come as logarithms."""
+    return "logit" if kind == "fraction" else "identity"
+
+
 def family_of(name: str, columns: Columns, priors: Priors) -> Family:
     """The surrogate `gp` or `quadratic`."""
     if name == "gp":
@@ -85,7 +90,7 @@ def fit_surrogate(
     model = Model(
         family_of(name, columns, priors),
         collapse(readings),
-        "logit" if kind == "fraction" else "identity",
+        _engine_link(kind),
     )
     posterior = integrate(model, seed)
     evidence, weights = posterior.evidence, np.exp(posterior.log_weights)
@@ -141,7 +146,7 @@ def prior_surface(
         inside=(none,) * shared[0],
         scale=(none,) * shared[1],
     )
-    model = Model(family_of(name, columns, priors), collapse(empty), "identity")
+    model = Model(family_of(name, columns, priors), collapse(empty), _engine_link(kind))
     layout = model.layout
     points = Sobol(len(layout), rng=np.random.default_rng(seed)).random(nodes)
     theta = layout.theta(ndtri(np.clip(points, 1e-6, 1.0 - 1e-6)))
@@ -166,7 +171,12 @@ def _surface(model: Model, evidence: Evidence, weights: Array, link: Link) -> Su
 
 def _part(model: Model, theta: Array, root: Array, mean: Array, V: Array) -> Nodes:
     layout = model.layout
-    errors = Errors(layout.noise(theta), layout.inside_sd(theta), layout.scale_sd(theta))
+    errors = Errors(
+        layout.noise(theta),
+        layout.inside_sd(theta),
+        layout.scale_sd(theta),
+        layout.ceiling_of(theta),
+    )
     own = layout.family(theta)
     family = model.family
     if isinstance(family, GaussianProcess):

@@ -15,7 +15,7 @@ _NEWTON_STEPS = 15
 
 def laplace_sites(rows: Rows, lik: CellLikelihood) -> Sites:
     """Sites of the likelihood linearised at the posterior mode (Gauss-Newton), never negative."""
-    inner = np.clip(lik.mean, 0.03, 0.97)
+    inner = np.clip(lik.mean / lik.ceiling, 0.03, 0.97)
     shape = lik.reading_variance.shape
     u = np.broadcast_to(np.log(inner / (1.0 - inner)) - lik.offset, shape)
     s = np.zeros(shape)
@@ -32,7 +32,7 @@ def laplace_sites(rows: Rows, lik: CellLikelihood) -> Sites:
 def _linearised(lik: CellLikelihood, u: Array, s: Array) -> Sites:
     """Sites of y = mean + J_u (u' - u) + J_s (s' - s), the reading linearised at u, s (S, C)."""
     g = lik.process_mean(u)
-    by_u, by_s = (1.0 + lik.scale * s) * g * (1.0 - g), lik.scale * g
+    by_u, by_s = (1.0 + lik.scale * s) * g * (1.0 - g / lik.ceiling), lik.scale * g
     precision = lik.count / lik.reading_variance
     target = lik.mean - (1.0 + lik.scale * s) * g + by_u * u + by_s * s
     return Sites(

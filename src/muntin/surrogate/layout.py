@@ -14,13 +14,15 @@ Array = NDArray[np.float64]
 
 @dataclass(frozen=True, kw_only=True)
 class Layout:
-    """Order of the log hyperparameters theta (S, H): noise, inside errors, scale errors, family.
+    """Order of the log hyperparameters theta (S, H): noise, inside errors, scale errors, the gap of
+    the ceiling (a fraction's), family.
 
     names: one a hyperparameter; priors: the log-normal prior of each.
     """
 
     inside: int
     scale: int
+    ceiling: int
     names: tuple[str, ...]
     priors: tuple[LogNormal, ...]
 
@@ -53,6 +55,13 @@ class Layout:
         """Sd (S, scale) of each scale error."""
         return np.exp(theta[:, 1 + self.inside : 1 + self.inside + self.scale])
 
+    def ceiling_of(self, theta: Array) -> Array:
+        """The ceiling (S,): 1 less the gap, which stays below a half; 1 where there is no gap."""
+        place = 1 + self.inside + self.scale
+        if not self.ceiling:
+            return np.ones(len(theta))
+        return 1.0 - np.minimum(np.exp(theta[:, place]), 0.5)
+
     def family(self, theta: Array) -> Array:
         """The family's own hyperparameters (S, rest), as positive values."""
-        return np.exp(theta[:, 1 + self.inside + self.scale :])
+        return np.exp(theta[:, 1 + self.inside + self.scale + self.ceiling :])

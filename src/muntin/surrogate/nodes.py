@@ -13,7 +13,7 @@ from typing import Protocol
 import numpy as np
 from numpy.typing import NDArray
 
-from muntin.surrogate.links import Link
+from muntin.surrogate.links import Link, latent_of
 from muntin.surrogate.polynomial import Quadratic
 from muntin.surrogate.process import GaussianProcess
 
@@ -24,17 +24,20 @@ _CHUNK = 3_000_000
 
 @dataclass(frozen=True)
 class Errors:
-    """Sds at S nodes: of one reading (S,), and of each inside and scale error (S, J), latent and
-    relative units.
+    """How a reading comes about at S nodes.
+
+    Sd of its noise (S,); sds of each inside and scale error (S, J), latent and relative units; the
+    ceiling (S,) at which a fraction levels off.
     """
 
     noise: Array
     inside: Array
     scale: Array
+    ceiling: Array
 
     def nodes(self, index: Index) -> Errors:
         """The errors of some nodes."""
-        return Errors(self.noise[index], self.inside[index], self.scale[index])
+        return Errors(self.noise[index], self.inside[index], self.scale[index], self.ceiling[index])
 
 
 class Nodes(Protocol):
@@ -155,7 +158,12 @@ class Surface:
             np.concatenate([e.noise for e in every]),
             np.concatenate([e.inside for e in every]),
             np.concatenate([e.scale for e in every]),
+            np.concatenate([e.ceiling for e in every]),
         )
+
+    def thresholds(self, value: float) -> Array:
+        """Latent values (S, 1) at which the process mean is `value` (natural unit)."""
+        return latent_of(self.link, value, self.errors.ceiling[:, None])
 
     def lightened(self, most: int) -> Surface:
         """The surface on at most so many nodes: systematic resampling, weights by count."""

@@ -27,6 +27,7 @@ class Priors:
     process, and of the linear and product coefficients of the polynomial. `curvature_sd`: sd of
     the square coefficients. `length_scale`: each factor's, in coded units (the range is 2).
     `noise_sd`: sd of a well's reading. `scale_error`, `inside_error`: sd of each shared error.
+    `ceiling_gap`: how far below 1 a fraction levels off; read for that kind only.
     """
 
     mean: float
@@ -37,6 +38,7 @@ class Priors:
     noise_sd: LogNormal
     scale_error: LogNormal
     inside_error: LogNormal
+    ceiling_gap: LogNormal = LogNormal(0.03, 1.0)
 
     def with_overrides(self, overrides: Mapping[str, object]) -> Priors:
         """A copy with some entries replaced; a LogNormal may be given as (median, log_sd)."""

@@ -60,6 +60,7 @@ def join(parts: Sequence[Approximation]) -> Approximation:
             Pair(**_fields([t.pair for t in tilted])),
             np.concatenate([t.log_z for t in tilted]),
             np.concatenate([t.noise_slope for t in tilted]),
+            np.concatenate([t.ceiling_slope for t in tilted]),
         ),
         np.concatenate([p.laplace + start for p, start in zip(parts, starts, strict=True)]),
     )
@@ -242,7 +243,7 @@ def _exact(rows: Rows, lik: CellLikelihood) -> Approximation:
     misfit = ((y - post.u) ** 2 + post.uu) / v**2 - 1.0 / v
     rv = lik.reading_variance
     about = (lik.within / rv - (lik.count - 1.0)) / rv
-    tilted = Tilted(post, log_z, lik.noise * (misfit / lik.count + about))
+    tilted = Tilted(post, log_z, lik.noise * (misfit / lik.count + about), zero)
     own = -0.5 * (y**2 / v + np.log(v) + _LOG_2PI) + lik.log_within()
     evidence = gaussian.log_integral() + own.sum(1)
     none = np.zeros(0, dtype=np.intp)

@@ -38,7 +38,8 @@ class CellLikelihood:
     """Likelihood of the cells at S nodes.
 
     link; offset: prior mean of the latent level; mean, count, within, variance (C,) as in Cells;
-    noise (S, 1): variance of a reading; scale (S, 1): sd of the summed scale errors.
+    noise (S, 1): variance of a reading; scale (S, 1): sd of the summed scale errors; ceiling
+    (S, 1): where a fraction levels off.
     """
 
     link: Link
@@ -49,10 +50,16 @@ class CellLikelihood:
     variance: Array
     noise: Array
     scale: Array
+    ceiling: Array
 
     def nodes(self, index: NDArray[np.intp]) -> CellLikelihood:
         """The likelihood of some nodes."""
-        return replace(self, noise=self.noise[index], scale=self.scale[index])
+        return replace(
+            self,
+            noise=self.noise[index],
+            scale=self.scale[index],
+            ceiling=self.ceiling[index],
+        )
 
     @property
     def reading_variance(self) -> Array:
@@ -66,17 +73,21 @@ class CellLikelihood:
         return spread - 0.5 * np.log(self.count)
 
     def process_mean(self, u: Array) -> Array:
-        """g at centred latent values u."""
-        return mean_of(self.link, u + self.offset)
+        """g at centred latent values u, (S, C) or (S, C, Q)."""
+        ceiling = self.ceiling if u.ndim == 2 else self.ceiling[..., None]
+        return mean_of(self.link, u + self.offset, ceiling)
 
 
 @dataclass(frozen=True)
 class Tilted:
-    """Moments of the tilted pairs, log normaliser (S, C), and its slope in ln noise sd (S, C)."""
+    """Moments of the tilted pairs, log normaliser (S, C), and its slopes (S, C) in ln noise sd and
+    in ln ceiling.
+    """
 
     pair: Pair
     log_z: Array
     noise_slope: Array
+    ceiling_slope: Array
 
 
 def tilt(lik: CellLikelihood, cavity: Pair, start_u: Array, start_sd: Array) -> Tilted:
@@ -146,4 +157,8 @@ class Points:
         v, n = lik.reading_variance, lik.count
         misfit = (self.w * (self.residual**2 / self.total**2 - 1.0 / self.total)).sum(-1)
         about = (lik.within / v - (n - 1.0)) / v
-        return Tilted(pair, self.log_z + lik.log_within(), lik.noise * (misfit / n + about))
+        centre = lik.mean[:, None] - self.residual
+        by_spread = (self.residual**2 / self.total - 1.0) * self.loading**2 * self.s_var
+        by_ceiling = (self.w * (self.residual * centre + by_spread) / self.total).sum(-1)
+        log_z = self.log_z + lik.log_within()
+        return Tilted(pair, log_z, lik.noise * (misfit / n + about), by_ceiling)

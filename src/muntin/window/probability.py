@@ -50,8 +50,8 @@ def node_mean_meets(surface: Surface, moments: tuple[Array, Array], target: Targ
     """Probability (S, n) at each node that the process mean meets the target."""
     mean, variance = moments
     sd = np.sqrt(variance)
-    high = _below((latent_of(surface.link, target.high) - mean) / sd)
-    low = _below((latent_of(surface.link, target.low) - mean) / sd)
+    high = _below((surface.thresholds(target.high) - mean) / sd)
+    low = _below((surface.thresholds(target.low) - mean) / sd)
     if not np.isfinite(target.high):
         return 1.0 - low
     return high - low
@@ -70,7 +70,7 @@ def well_meets(surface: Surface, moments: tuple[Array, Array], target: Target) -
     if surface.link == "logit":
         return _fraction_well(surface, mean, variance + inside, target)
     sd = np.sqrt(variance + inside + noise)
-    low, high = latent_of(surface.link, target.low), latent_of(surface.link, target.high)
+    low, high = surface.thresholds(target.low), surface.thresholds(target.high)
     return np.asarray(surface.weights @ (_below((high - mean) / sd) - _below((low - mean) / sd)))
 
 
@@ -92,7 +92,7 @@ def _fraction_well(surface: Surface, mean: Array, variance: Array, target: Targe
 def _reading_meets(surface: Surface, f: Array, target: Target) -> Array:
     """Probability (S, n, Q) that a reading of wells with logits f (S, n, Q) meets the target."""
     errors = surface.errors
-    g = mean_of("logit", f)
+    g = mean_of("logit", f, errors.ceiling[:, None, None])
     scale = (errors.scale**2).sum(1)[:, None, None]
     sd = np.sqrt((errors.noise**2)[:, None, None] + scale * g * g)
     met = np.ones_like(g) if not np.isfinite(target.high) else _below((target.high - g) / sd)
@@ -109,19 +109,21 @@ def process_mean(surface: Surface, moments: tuple[Array, Array]) -> Array:
     if surface.link == "log":
         return np.asarray(surface.weights @ np.exp(mean + 0.5 * variance))
     out = np.zeros(mean.shape[1])
-    sd = np.sqrt(variance)
+    sd, ceiling = np.sqrt(variance), surface.errors.ceiling[:, None]
     for z, weight in zip(_FINE, _normal_weights(_FINE), strict=True):
-        out += weight * (surface.weights @ mean_of(surface.link, mean + z * sd))
+        out += weight * (surface.weights @ mean_of(surface.link, mean + z * sd, ceiling))
     return out
 
 
 def process_quantile(surface: Surface, moments: tuple[Array, Array], level: float) -> Array:
     """Quantile (n,) of the process mean g(f), natural unit, by bisection on the mixture."""
     mean, variance = moments
-    sd = np.sqrt(variance)
+    sd, ceiling = np.sqrt(variance), surface.errors.ceiling[:, None]
     low, high = (mean - 8.0 * sd).min(0), (mean + 8.0 * sd).max(0)
     for _ in range(40):
         middle = 0.5 * (low + high)
-        under = surface.weights @ _below((middle - mean) / sd) < level
+        # The bisection runs over latent values of a ceiling of 1; each node has its own.
+        own = latent_of(surface.link, mean_of(surface.link, middle), ceiling)
+        under = surface.weights @ _below((own - mean) / sd) < level
         low, high = np.where(under, middle, low), np.where(under, high, middle)
     return mean_of(surface.link, 0.5 * (low + high))
