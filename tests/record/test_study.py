@@ -17,9 +17,15 @@ from tests.record.conftest import PLATE, STUDY
 TOML, CSV = "study.toml", "plates/plate-01.csv"
 
 
-def workbook(text: str) -> bytes:
+def workbook(text: str, before: str | None = None) -> bytes:
+    """A workbook with the table on its first sheet, or behind a sheet with the text `before`."""
     book = openpyxl.Workbook()
     sheet = book.active
+    if before is not None:
+        sheet.title = "Notes"
+        for line in before.splitlines():
+            sheet.append(line.split(","))
+        sheet = book.create_sheet("Plate")
     for line in text.splitlines():
         cells = [cell.strip() for cell in line.split(",")]
         sheet.append([float(c) if c.replace(".", "", 1).isdigit() else c or None for c in cells])
@@ -124,6 +130,27 @@ def test_a_workbook_reads_as_its_csv(make):
     study = open_study(folder)
     pd.testing.assert_frame_equal(study.wells, plain)
     assert study.plates[0].file == "plates/plate-01.xlsx"
+
+
+@pytest.mark.parametrize(
+    ("before", "problem"),
+    [
+        ("", "is empty; its first row must hold the headings"),
+        ("Second screen", "has no column well"),
+        ("screen,day\nsecond,Monday", "has no column well"),
+        ("Second screen\nrun by,lab 2", "has 2 cells under 1 headings"),
+    ],
+)
+def test_a_table_behind_the_first_sheet_is_pointed_at(make, before, problem):
+    folder = make({"plates/plate-01.xlsx": workbook(PLATE, before)})
+    (folder / CSV).unlink()
+    with pytest.raises(StudyFaults) as raised:
+        open_study(folder)
+    where = ", row 2" if "cells" in problem else ""
+    assert str(raised.value) == (
+        f"plates/plate-01.xlsx{where}: {problem} "
+        '(its first sheet, "Notes", was read; not read: "Plate", "second")'
+    )
 
 
 def test_a_formula_that_was_never_calculated_is_a_fault(make):
@@ -320,7 +347,10 @@ def test_columns_of_a_plan_pass_without_notice(make):
     assert open_study(make({CSV: plate})).notices == ("hcp is awaited in 1 of 1 well",)
 
 
-@pytest.mark.parametrize("files", [{CSV: "well,role,ph,salt,resin,recovery,hcp\n"}, None])
+EMPTY = ["well,role,ph,salt,resin,recovery,hcp\n", "position\n", "well,pH_old,salt,salt,hpc\n"]
+
+
+@pytest.mark.parametrize("files", [*({CSV: heading} for heading in EMPTY), None])
 def test_nothing_run_yet_is_sound(make, files):
     folder = make(files or {})
     if files is None:

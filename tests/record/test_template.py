@@ -32,6 +32,14 @@ def test_the_plate_table_has_its_headings_only(tmp_path):
     assert plate.read_text() == "well,role,elution_ph,salt,recovery,exclude\n"
 
 
+def test_the_empty_plate_table_never_blocks_a_renamed_factor(tmp_path):
+    path, _ = new_study(tmp_path)
+    path.write_text(path.read_text().replace('"salt"', '"chloride"').replace("elution_ph", "ph"))
+    study = open_study(tmp_path)
+    assert [factor.name for factor in study.definition.factors] == ["ph", "chloride"]
+    assert study.notices == ()
+
+
 def _tables(text: str) -> list[list[str]]:
     lines, tables = text.splitlines(), []
     for line in lines:

@@ -51,14 +51,19 @@ def plate_columns(definition: Definition) -> list[str]:
 def open_plate(
     path: Path, file: str, definition: Definition | None, found: Findings
 ) -> Table | None:
-    """Return a plate table with sound, plain well names, or None; faults join `found`."""
+    """Return a plate table with sound, plain well names, or None; faults join `found`.
+
+    A table without a row below its headings has no columns but `well`, so none can be wrong.
+    """
     known = list(_FIXED) if definition is None else plate_columns(definition)
     table = read_table(path, file, known, found)
     if table is None:
         return None
-    if "well" not in table.columns:
+    if "well" not in table.columns and (len(table) or table.sheets[1:]):
         found.faults.append(missing_column(table, "well"))
         return None
+    if not len(table):
+        return replace(table, columns={"well": []})
     plate = 384 if definition is None else definition.plate
     return _with_wells(table, plate, path.stem, found)
 
@@ -148,6 +153,8 @@ def _factor(
 
 
 def _earlier(table: Table, factor: Factor, needed: Truths, found: Findings) -> list[Any]:
+    if not len(table):
+        return []
     empty = np.nan if factor.continuous else ""
     if factor.earlier_value is None:
         hint = "a factor that was added later needs earlier_value in study.toml"

@@ -9,7 +9,7 @@ import warnings
 import zipfile
 import zlib
 from collections.abc import Iterable, Iterator, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import Any
 
@@ -25,13 +25,15 @@ class Table:
     """Cells of one table as stripped text, column by column.
 
     `file` is the path shown in messages, `where` the address of each row ("row 14"), `comma`
-    whether commas separate its cells (a comma inside a number is then doubtful).
+    whether commas separate its cells (a comma inside a number is then doubtful), `sheets` the
+    names of a workbook's sheets, the one that was read first.
     """
 
     file: str
     columns: dict[str, list[str]]
     where: list[str]
     comma: bool
+    sheets: tuple[str, ...] = ()
 
     def __len__(self) -> int:
         return len(self.where)
@@ -94,11 +96,12 @@ def read_table(path: Path, file: str, known: Sequence[str], found: Findings) -> 
     """Return the table in a file, or None where it is none; faults join `found`.
 
     Headings that equal a known name but for capitals get the known one. Rows without any content
-    are passed over.
+    are passed over; headings without a row below them are not judged.
     """
+    sheets: tuple[str, ...] = ()
     try:
         if path.suffix.lower() == ".xlsx":
-            rows, comma = _sheet_rows(path.read_bytes()), False
+            rows, sheets, comma = *_sheet_rows(path.read_bytes()), False
         else:
             rows, comma = _text_rows(decoded(path.read_bytes()), known)
     except NotTextError:
@@ -115,11 +118,18 @@ def read_table(path: Path, file: str, known: Sequence[str], found: Findings) -> 
     else:
         filled = [(number, row) for number, row in rows if any(row)]
         if filled:
-            return _table(file, filled, known, comma, found)
-        found.faults.append(
-            Fault(file=file, problem="is empty; its first row must hold the headings")
-        )
+            return _table(file, filled, known, comma, sheets, found)
+        problem = "is empty; its first row must hold the headings"
+        found.faults.append(Fault(file=file, problem=problem, hint=_sheet_hint(sheets)))
     return None
+
+
+def _sheet_hint(sheets: Sequence[str]) -> str:
+    """Return which sheet was read and which were not, "" for a file with no other sheet."""
+    if not sheets[1:]:
+        return ""
+    others = ", ".join(map(quoted, sheets[1:]))
+    return f"its first sheet, {quoted(sheets[0])}, was read; not read: {others}"
 
 
 def _table(
@@ -127,19 +137,21 @@ def _table(
     rows: list[tuple[int, list[str]]],
     known: Sequence[str],
     comma: bool,
+    sheets: tuple[str, ...],
     found: Findings,
 ) -> Table | None:
     by_fold = {name.casefold(): name for name in known}
     headings = [by_fold.get(cell.casefold(), cell) for cell in rows[0][1]]
-    faults = [*_heading_faults(file, headings, rows[1:])]
+    faults = [*_heading_faults(file, headings, rows[1:])] if rows[1:] else []
     faults += _width_faults(file, len(headings), rows[1:], comma)
-    found.faults.extend(faults)
     if faults:
+        hint = "; ".join(part for part in (faults[0].hint, _sheet_hint(sheets)) if part)
+        found.faults.extend([replace(faults[0], hint=hint), *faults[1:]])
         return None
     width = len(headings)
     body = [(row + [""] * width)[:width] for _, row in rows[1:]]
     columns = {name: [row[index] for row in body] for index, name in enumerate(headings) if name}
-    return Table(file, columns, [f"row {number}" for number, _ in rows[1:]], comma)
+    return Table(file, columns, [f"row {number}" for number, _ in rows[1:]], comma, sheets)
 
 
 def _heading_faults(
@@ -201,32 +213,33 @@ class _SheetError(ValueError):
     pass
 
 
-def _sheet_rows(raw: bytes) -> list[tuple[int, list[str]]]:
+def _sheet_rows(raw: bytes) -> tuple[list[tuple[int, list[str]]], tuple[str, ...]]:
     broken = (zipfile.BadZipFile, zlib.error, EOFError)
     wrong = (KeyError, ValueError, TypeError, IndexError, AttributeError, SyntaxError)
     try:
-        rows = _first_sheet(raw, data_only=True)
+        rows, sheets = _first_sheet(raw, data_only=True)
         if _has_formulas(raw):
             # A formula that was never calculated has no value; its text says so in the fault.
-            texts = _first_sheet(raw, data_only=False)
+            texts, _ = _first_sheet(raw, data_only=False)
             rows = [
                 [text if value is None else value for value, text in zip(*both, strict=True)]
                 for both in zip(rows, texts, strict=True)
             ]
     except (*broken, *wrong):
         raise _SheetError from None
-    return [(number, _shown(row)) for number, row in enumerate(rows, start=1)]
+    return [(number, _shown(row)) for number, row in enumerate(rows, start=1)], sheets
 
 
-def _first_sheet(raw: bytes, data_only: bool) -> list[list[Any]]:
+def _first_sheet(raw: bytes, data_only: bool) -> tuple[list[list[Any]], tuple[str, ...]]:
     from openpyxl import load_workbook
 
     with warnings.catch_warnings():
         warnings.simplefilter("ignore")
         book = load_workbook(io.BytesIO(raw), read_only=True, data_only=data_only)
         rows = [list(row) for row in book.worksheets[0].iter_rows(values_only=True)]
+        sheets = tuple(sheet.title for sheet in book.worksheets)
         book.close()
-    return rows
+    return rows, sheets
 
 
 def _has_formulas(raw: bytes) -> bool:
@@ -247,8 +260,12 @@ def _shown(row: Iterable[object]) -> list[str]:
 
 
 def missing_column(table: Table, column: str, hint: str = "") -> Fault:
-    """Return the fault of a table that lacks a column; a heading that resembles it is named."""
+    """Return the fault of a table that lacks a column.
+
+    A heading that resembles it is named in place of `hint`, and the sheet that was read besides.
+    """
     close = nearest(column, table.columns)
     if close is not None:
         hint = f"did you mean its column {close}?"
+    hint = "; ".join(part for part in (hint, _sheet_hint(table.sheets)) if part)
     return Fault(file=table.file, problem=f"has no column {column}", hint=hint)
