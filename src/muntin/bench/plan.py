@@ -90,7 +90,7 @@ def _check_room(study: Study, wells: int, bridging: int, controls: list[str]) ->
         problem = "must be 1 or more"
         faults.append(Fault(file="wells", value=str(wells), problem=problem))
     if wells > room:
-        problem, allowed = "is more than the plate has room for,", f"{max(room, 0)} test wells"
+        problem, allowed = "is more than the plate has room for;", f"ask for {max(room, 0)}"
         faults.append(_too_many(wells, problem, allowed, f"{free} wells are free; {extra}"))
     left, protein = protein_left_mg(study), study.definition.protein
     if left is not None and protein is not None:
@@ -98,7 +98,8 @@ def _check_room(study: Study, wells: int, bridging: int, controls: list[str]) ->
         enough = int(max(0.0, (left - fixed) / protein.per_well_mg + 1e-9))
         if wells > enough:
             hint = f"{number(round(left, 6))} mg left beyond the reserve; {extra}"
-            problem, allowed = "is more than the protein allows,", f"{enough} test wells"
+            problem = "is more than the protein allows;"
+            allowed = f"ask for {enough}" if enough else "not even the bridging wells fit"
             faults.append(_too_many(wells, problem, allowed, hint))
     if faults:
         raise StudyFaults(faults)
@@ -180,6 +181,16 @@ def _notices(view: Assessment, selection: Selection) -> tuple[str, ...]:
         labels = {r.name: r.label for r in view.study.definition.responses}
         names = ", ".join(labels[name] for name in view.awaited)
         notices.append(f"provisional: no reading yet of {names}, which the plan does not weigh")
+    read = {
+        plate
+        for r in view.study.definition.responses
+        if r.name in view.stacks
+        for plate in view.study.readings(r.name)["plate"]
+    }
+    unread = [p for p in view.study.informing()["plate"].unique() if p not in read]
+    if unread:
+        names = ", ".join(unread)
+        notices.append(f"no reading yet of {names}: the plan does not know of wells there")
     bridged = any(pick.role == "bridge" for pick in selection.picks)
     if view.study.definition.plan.bridging_wells and not view.fresh and not bridged:
         notices.append("no bridging wells: no earlier condition lies in the plan's range")

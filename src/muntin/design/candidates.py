@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 import pandas as pd
@@ -25,10 +26,11 @@ class RunCondition:
 
 
 def run_conditions(study: Study) -> tuple[RunCondition, ...]:
-    """The distinct conditions (targets) of the wells that inform the model, first run first."""
+    """The distinct conditions (targets) of the wells that were read, first run first."""
     names = study.definition.factor_names
     frame = study.informing()
-    frame = frame[frame["exclude"] == ""]
+    states = frame[[f"{r.name}_state" for r in study.definition.responses]]
+    frame = frame[(states == "read").any(axis=1)]
     found: dict[tuple[object, ...], list[tuple[str, str, str]]] = {}
     targets = [frame[f"{n}_target"] for n in names]
     for *values, plate, well, role in zip(
@@ -48,14 +50,32 @@ def candidate_frame(
 ) -> pd.DataFrame:
     """Candidate conditions (raw units): bench steps of the plan's range inside the limits, and
     the conditions that were run and may be run again.
+
+    On an opening plate a factor with `per_plate` gets so many levels, evenly over the plan's range.
     """
     names = list(definition.factor_names)
     grid, _ = judged_grid(definition, most, planned=True)
+    if not run:
+        grid = _spread(definition, grid)
     again = pd.DataFrame([r.values for r in run], columns=names)
     if len(again):
         again = again[plannable(definition, again)]
         grid = pd.concat([again.astype(grid.dtypes.to_dict()), grid], ignore_index=True)
     return grid.drop_duplicates(ignore_index=True)
+
+
+def _spread(definition: Definition, grid: pd.DataFrame) -> pd.DataFrame:
+    """The conditions on evenly spread levels of the factors with `per_plate`."""
+    keep = np.ones(len(grid), dtype=bool)
+    for factor in definition.factors:
+        if factor.per_plate is not None and factor.continuous:
+            levels = np.array(sorted(set(grid[factor.name])), dtype=float)
+            ends = np.linspace(levels[0], levels[-1], min(factor.per_plate, len(levels)))
+            if factor.per_plate == 1:
+                ends = np.array([levels.mean()])
+            nearest = levels[np.abs(levels[:, None] - ends).argmin(axis=0)]
+            keep &= grid[factor.name].isin(nearest).to_numpy()
+    return grid[keep] if keep.any() else grid
 
 
 def plannable(definition: Definition, frame: pd.DataFrame) -> NDArray[np.bool_]:
@@ -74,7 +94,11 @@ def plannable(definition: Definition, frame: pd.DataFrame) -> NDArray[np.bool_]:
 
 @dataclass
 class Levels:
-    """The distinct levels that a plan uses of each factor with `per_plate`."""
+    """The distinct levels that a plan uses of each factor with `per_plate`.
+
+    A new level keeps its distance from those in use, a third of what even spreading would give:
+    two stocks a bench step apart tell hardly more than one.
+    """
 
     definition: Definition
     frame: pd.DataFrame
@@ -83,7 +107,7 @@ class Levels:
         """Start with no level in use."""
         limited = [f for f in self.definition.factors if f.per_plate is not None]
         self._most = {f.name: f.per_plate or 0 for f in limited}
-        self._used: dict[str, set[object]] = {name: set() for name in self._most}
+        self._used: dict[str, set[Any]] = {name: set() for name in self._most}
 
     def use(self, candidate: int) -> None:
         """Count the levels of a candidate in the plan."""
@@ -93,7 +117,17 @@ class Levels:
     def open(self) -> NDArray[np.bool_]:
         """Which candidates need no level more than the plate may have."""
         keep = np.ones(len(self.frame), dtype=bool)
-        for name, used in self._used.items():
-            if len(used) >= self._most[name]:
-                keep &= self.frame[name].isin(used).to_numpy()
+        for factor in self.definition.factors:
+            used = self._used.get(factor.name)
+            if not used:
+                continue
+            again = self.frame[factor.name].isin(used).to_numpy()
+            if len(used) >= self._most[factor.name]:
+                keep &= again
+            elif factor.continuous:
+                low, high, _ = factor.span
+                apart = (high - low) / (3.0 * self._most[factor.name])
+                x = self.frame[factor.name].to_numpy(dtype=float)
+                away = np.abs(x[:, None] - np.array(sorted(used), dtype=float)).min(axis=1)
+                keep &= again | (away >= apart)
         return keep

@@ -12,7 +12,7 @@ from muntin.record.definition import Definition
 
 Array = NDArray[np.float64]
 
-_ON_EDGE = 0.35
+_INSIDE = 0.9
 _LEVEL = 0.98
 _SURE = 0.95
 
@@ -31,7 +31,7 @@ def reasons(
         if before and pick.role == "test":
             said.append(f"well {before + 1} of this condition: averages the noise")
         elif opening:
-            said.append("opening plate: spread over the range to find where the target is met")
+            said.append("opening plate, spread to find where the target is met")
         else:
             at = f"{definition.factors[0].label} {_value(values[0])}"
             said.append(_reason(pick, p, now, at, _place(run.get(values, ()))))
@@ -47,11 +47,10 @@ def _reason(pick: Pick, p: float, now: float, at: str, place: str) -> str:
     chance = f"{again}probability {now:.2f}"
     if pick.purpose == "best":
         return f"{chance}, may beat the best condition so far"
-    if abs(p - 0.5) <= _ON_EDGE:
-        return f"{chance}, on the edge at {at}"
-    if p >= _LEVEL:
-        return f"{chance}, reads the new plate's own error where the target is safe"
-    return f"{chance}, secures the {'pass' if p > 0.5 else 'fail'} side at {at}"
+    if p >= _LEVEL and now >= _INSIDE:
+        return f"{chance}, reads the new plate's own error where the target is met"
+    where = "inside" if now >= _INSIDE else "outside" if now <= 1.0 - _INSIDE else "on"
+    return f"{chance}, {where} the edge at {at}"
 
 
 def _place(wells: tuple[tuple[str, str], ...]) -> str:

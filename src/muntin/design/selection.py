@@ -25,6 +25,8 @@ Aim = Literal["edge", "best", "both"]
 _NODES = 8
 _WATCHED = 1500
 _DECIDED = 1e-3
+# An opening plate of so many wells begins and ends with its centre: one repeat shows the noise.
+_CENTRED = 8
 # A plate's shared errors leave little to learn from more wells of the best condition than these.
 _MOST_REPEATS = 4
 
@@ -65,15 +67,24 @@ def select(view: Assessment, wells: int, aim: Aim, seed: int) -> Selection:
     for candidate, _ in bridge:
         table.take(candidate)
     repeats = definition.plan.repeats_min
+    centre = _centre(table.X) if view.fresh and wells >= _CENTRED else None
     while len(forecast) <= wells:
         purpose = table.turn(aim, len(forecast) - 1)
         left = wells + 1 - len(forecast)
-        chosen = table.choose(purpose, new=left >= repeats)
+        if centre is not None and (left == wells or left <= repeats):
+            chosen = centre
+        else:
+            chosen = table.choose(purpose, new=left >= repeats)
         for number in range(min(repeats, left)):
             table.take(chosen)
             picks.append(Pick(chosen, "test", purpose if number == 0 else "repeat"))
             forecast.append(table.forecast())
     return Selection(frame, tuple(picks), run, tuple(forecast))
+
+
+def _centre(X: Array) -> int:
+    """The candidate nearest to the middle of the coded range."""
+    return int(np.argmin((X**2).sum(axis=1)))
 
 
 def _bridge(

@@ -55,10 +55,9 @@ def _coverage(response: Response, stack: Stack) -> Check:
     n, hits = len(pit), int(((pit > 0.05) & (pit < 0.95)).sum())
     least = int(binom.ppf(0.005, n, 0.9))
     passed = hits >= least
-    verdict = "as it should be" if passed else f"too few: {least} or more were to be expected"
     sentence = (
         f"{response.label}: {hits} of {n} readings lie in the 90 % range predicted from the "
-        f"others, {verdict}."
+        f"others ({'' if passed else 'too few: '}{least} or more were to be expected)."
     )
     return Check("coverage", passed, True, sentence)
 

@@ -55,8 +55,11 @@ def code(definition: Definition, frame: pd.DataFrame) -> Array:
 def shared_by(definition: Definition, response: Response) -> SharedBy:
     """The shared errors of a response; on a link without a plateau all of them act inside."""
     bounded = response.kind == "fraction"
-    scale = [e.by for e in definition.shared_errors if bounded and e.acts == "scale"]
-    inside = [e.by for e in definition.shared_errors if not (bounded and e.acts == "scale")]
+    touching = [
+        e for e in definition.shared_errors if e.responses is None or response.name in e.responses
+    ]
+    scale = [e.by for e in touching if bounded and e.acts == "scale"]
+    inside = [e.by for e in touching if not (bounded and e.acts == "scale")]
     return SharedBy(tuple(inside), tuple(scale))
 
 

@@ -61,8 +61,10 @@ def judge_window(
 
 
 def _best(definition: Definition, grid: pd.DataFrame, judged: Array) -> int:
-    """Row of the highest probability; among rows that tie to 0.1 %, the most central of them."""
-    tied = np.flatnonzero(judged >= judged.max() - 1e-3)
+    """Row of the highest probability; among rows that tie to half a per cent, which no model can
+    tell apart, the most central of them.
+    """
+    tied = np.flatnonzero(judged >= judged.max() - 5e-3)
     numeric = [f.name for f in definition.factors if f.continuous]
     if not numeric:
         return int(tied[np.argmax(judged[tied])])
