@@ -69,7 +69,12 @@ class Flat:
         a, theta, layout = self.evidence.approximation, self.evidence.theta, self.model.layout
         own = self.evidence.root.shape[2]
         mean, V = a.mean[:, :own], a.V[:, :own, :own]
-        errors = Errors(layout.noise(theta), layout.inside_sd(theta), layout.scale_sd(theta))
+        errors = Errors(
+            layout.noise(theta),
+            layout.inside_sd(theta),
+            layout.scale_sd(theta),
+            layout.ceiling_of(theta),
+        )
         coefficients = self.model.family.coefficients(layout.family(theta), mean, V)
         return PolynomialNodes(self.model.family, *coefficients, errors)
 

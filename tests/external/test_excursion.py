@@ -168,7 +168,9 @@ def surface_of(points, readings):
     own = np.array([[np.sqrt(REFERENCE["sigma_f2"]), *REFERENCE["lengthscale"]]])
     K = family.covariance(own, points, points)[0] + REFERENCE["sigma_n2"] * np.eye(len(points))
     Q = np.linalg.inv(K)
-    errors = Errors(np.sqrt([REFERENCE["sigma_n2"]]), np.zeros((1, 0)), np.zeros((1, 0)))
+    errors = Errors(
+        np.sqrt([REFERENCE["sigma_n2"]]), np.zeros((1, 0)), np.zeros((1, 0)), np.ones(1)
+    )
     alpha = Q @ (np.asarray(readings) - priors.mean)
     nodes = ProcessNodes(family, own, points, alpha[None], Q[None], errors)
     return Surface((nodes,), np.ones(1), "identity")

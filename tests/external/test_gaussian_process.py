@@ -34,7 +34,12 @@ def process(X, y, level, level_sd, theta):
     evidence = evaluate(model, theta)
     a, layout = evidence.approximation, model.layout
     weights = family.weights(evidence.root, a.mean, a.V)
-    errors = Errors(layout.noise(theta), layout.inside_sd(theta), layout.scale_sd(theta))
+    errors = Errors(
+        layout.noise(theta),
+        layout.inside_sd(theta),
+        layout.scale_sd(theta),
+        layout.ceiling_of(theta),
+    )
     nodes = ProcessNodes(family, layout.family(theta), model.cells.X, *weights, errors)
     return model, evidence, Surface((nodes,), np.ones(1), "identity")
 
