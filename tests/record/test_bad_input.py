@@ -49,6 +49,13 @@ KEYS = {
         {TOML: STUDY + "[protien]\n"},
         ['study.toml: "protien" is not a key (did you mean "protein"?)'],
     ),
+    "list_of_the_file_inside_a_table": (
+        {TOML: STUDY + "shared_errors = []\n"},
+        [
+            'study.toml, responses, hcp: "shared_errors" is not a key of [[responses]] '
+            "(it is no part of a table: write it above the first [table])"
+        ],
+    ),
     "missing_key": (
         study("title =", "# title ="),
         ['study.toml, study: "title" is missing (one line that names the study)'],
@@ -256,6 +263,16 @@ KEYS = {
         [
             'study.toml, responses, hcp, priors: "noise" is not a key of [responses.priors] '
             '(did you mean "noise_sd"?)'
+        ],
+    ),
+    "ceiling_of_a_positive_response": (
+        study(
+            "at_most = 100",
+            "at_most = 100\npriors = { ceiling_gap = { median = 0.1, log_sd = 1 } }",
+        ),
+        [
+            'study.toml, responses, hcp, priors, ceiling_gap: is for a "fraction"; '
+            'this response is "positive"'
         ],
     ),
     "kept_without_tolerance": (
@@ -573,6 +590,27 @@ TABLES = {
     ),
 }
 
+COPY = "well,ph,salt,resin,recovery,hcp\n" + "".join(
+    f"A{i},5.5,{i}00,Beta,0.{i},{i}\n" for i in (1, 2, 3)
+)
+
+COPIES = {
+    "plate_kept_twice": (
+        {CSV: COPY, "plates/plate-03.csv": COPY.replace("A1,", "A01,").replace("0.1", "0.10")},
+        [
+            "plates/plate-03.csv: all 6 readings equal those of plates/plate-01.csv (remove one "
+            'of them, or say repeats = "plate-01" or void = "reason" in plates/plate-03.toml)'
+        ],
+    ),
+    "plate_kept_under_other_conditions": (
+        {CSV: COPY, "plates/plate-02.csv": COPY.replace("5.5,", "6.5,")},
+        [
+            "plates/plate-02.csv: all 6 readings equal those of plates/plate-01.csv (remove one "
+            'of them, or say repeats = "plate-01" or void = "reason" in plates/plate-02.toml)'
+        ],
+    ),
+}
+
 MARKS = ["no", "No", "0", "x", "X", "yes", "1", "true", "TRUE", "n/a", "-", "excluded", "ok"]
 
 LATER = {
@@ -610,10 +648,17 @@ LATER = {
         ['results/hcp.csv, row 2, column well: "D07" was not run on plate-01'],
     ),
     "result_of_a_plate_not_run": (
-        {"results/hcp.csv": "plate,well,hcp\nplate-1,A1,12\n"},
+        {"results/hcp.csv": "plate,well,hcp\nplate-2,A1,12\n"},
         [
-            'results/hcp.csv, row 2, column plate: "plate-1" is not a plate that was run '
+            'results/hcp.csv, row 2, column plate: "plate-2" is not a plate that was run '
             '(did you mean "plate-01"?)'
+        ],
+    ),
+    "result_of_one_of_two_plates": (
+        {"plates/day2-1.csv": PLATE, "results/hcp.csv": "plate,well,hcp\n1,A1,40\n"},
+        [
+            "results/hcp.csv, row 2, column plate: 1 may be day2-1 or plate-01 "
+            "(write the plate's whole name)"
         ],
     ),
     "result_that_differs": (
@@ -629,11 +674,24 @@ LATER = {
     ),
     "results_without_plate": (
         {"results/hcp.csv": "well,hcp\nA1,41\n"},
-        ["results/hcp.csv: has no column plate"],
+        [
+            "results/hcp.csv: has no column plate "
+            "(expected header: plate,well and any of recovery,hcp)"
+        ],
+    ),
+    "results_with_a_misspelt_column": (
+        {"results/hcp.csv": "plates,well,hcp\nplate-01,A1,41\n"},
+        [
+            "results/hcp.csv: has no column plate (did you mean its column plates?; "
+            "expected header: plate,well and any of recovery,hcp)"
+        ],
     ),
     "results_without_response": (
         {"results/hcp.csv": "plate,well,hpc\nplate-01,A1,40\n"},
-        ["results/hcp.csv: has no column of a response (is its column hpc meant to be hcp?)"],
+        [
+            "results/hcp.csv: has no column of a response (is its column hpc meant to be hcp?; "
+            "expected header: plate,well and any of recovery,hcp)"
+        ],
     ),
     "stock_of_no_factor": (
         {"stocks/plate-01.csv": "factor,target,measured\nsalte,100,101\n"},
@@ -672,7 +730,7 @@ LATER = {
     ),
 }
 
-CASES = {**KEYS, **TABLES, **LATER}
+CASES = {**KEYS, **TABLES, **COPIES, **LATER}
 
 
 @pytest.mark.parametrize("name", CASES)

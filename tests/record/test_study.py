@@ -192,6 +192,31 @@ def test_fractions_under_a_per_cent_unit_are_pointed_out(make):
         assert (notice in open_study(make(files)).notices) == noticed
 
 
+def test_a_plate_of_fractions_among_plates_of_per_cent_is_pointed_out(make):
+    toml = STUDY.replace("at_least = 0.8", 'at_least = 80\nunit = "%"')
+    per_cent = PLATE.replace("0.83", "83").replace("0.91", "91")
+    study = open_study(make({TOML: toml, CSV: per_cent, "plates/plate-02.csv": PLATE}))
+    asked = [notice for notice in study.notices if "fractions of 1" in notice]
+    assert asked == [
+        "plate-02: no reading of recovery lies above 1.5 %, as they do elsewhere; are they "
+        "fractions of 1? (study.toml, responses, recovery, unit)"
+    ]
+
+
+@pytest.mark.parametrize(
+    ("unit", "readings", "shown"),
+    [("", ("-0.11", "-0.1"), "-0.1"), ("%", ("-10.5", "-10"), "-10 %")],
+)
+def test_a_fraction_far_below_0_is_pointed_out(make, unit, readings, shown):
+    toml = STUDY.replace("at_least = 0.8", f'at_least = 0.8\nunit = "{unit}"')
+    plate = PLATE.replace("0.83", readings[0]).replace("0.91", readings[1])
+    study = open_study(make({TOML: toml, CSV: plate}))
+    (asked,) = [notice for notice in study.notices if "below" in notice]
+    assert asked == (
+        f"plate-01: 1 reading of recovery below {shown} (A1), left in; is the blank right?"
+    )
+
+
 def test_readings_beyond_0_and_1_are_not_clipped(make):
     study = open_study(make({CSV: PLATE.replace("0.83", "1.07").replace("0.91", "-0.02")}))
     assert list(study.readings("recovery")["y"]) == [1.07, -0.02]
@@ -249,6 +274,56 @@ def test_results_fill_awaited_cells_by_plate_and_well(make):
     assert list(study.readings("hcp")["y"]) == [40, 12.5]
     assert "results/hcp.csv: columns not used: batch" in study.notices
     assert 'plate-01: 1 reading of recovery left out (B1): "bubble in the well"' in study.notices
+
+
+@pytest.mark.parametrize("name", ["1", "01", "plate-1", "plate 1", "Plate_01", "plate1"])
+def test_results_may_name_a_plate_by_its_number(make, name):
+    study = open_study(make({"results/hcp.csv": f"plate,well,hcp\n{name},B1,12.5\n"}))
+    assert list(study.readings("hcp")["y"]) == [40, 12.5]
+
+
+def test_the_exact_name_of_a_plate_comes_first(make):
+    files = {"plates/plate-1.csv": PLATE.replace("reference,6.0", "reference,6.1")}
+    results = {"results/hcp.csv": "plate,well,hcp\nplate-1,B1,12.5\n"}
+    readings = open_study(make({**files, **results})).readings("hcp")
+    assert list(readings["plate"][readings["y"] == 12.5]) == ["plate-1"]
+
+
+def test_results_of_wells_that_inform_nothing_are_noticed(make):
+    results = "plate,well,hcp\nplate-01,C1,3\nplate-01,C2,\nplate-01,B1,12.5\n"
+    study = open_study(make({"results/hcp.csv": results}))
+    assert study.notices[0] == (
+        "results/hcp.csv: 1 well whose role informs nothing (plate-01 C1 blank); "
+        "kept on record, not used"
+    )
+    assert study.wells["hcp"][4] == 3
+    assert list(study.readings("hcp")["y"]) == [40, 12.5]
+
+
+COPY = "well,ph,salt,resin,recovery,hcp\n" + "".join(
+    f"A{i},5.5,{i}00,Beta,0.{i},{i}\n" for i in (1, 2, 3)
+)
+
+
+FEW = COPY.replace(",3\n", ",\n")
+ALIKE = "well,ph,salt,resin,recovery\n" + "".join(f"B{i},5.5,100,Beta,1\n" for i in range(1, 8))
+
+
+@pytest.mark.parametrize(
+    "files",
+    [
+        {"plates/plate-02.csv": COPY.replace("0.1", "0.11")},
+        {"plates/plate-02.csv": COPY.replace("A1", "A4")},
+        {"plates/plate-02.csv": COPY, "plates/plate-02.toml": 'void = "a copy"\n'},
+        {"plates/plate-02.csv": COPY, "plates/plate-02.toml": 'repeats = "plate-01"\n'},
+        {"plates/plate-02.csv": COPY, "plates/plate-01.toml": 'repeats = "plate-02"\n'},
+        {CSV: FEW, "plates/plate-02.csv": FEW},
+        {CSV: ALIKE, "plates/plate-02.csv": ALIKE},
+    ],
+    ids=["value", "well", "void", "repeats", "repeated", "few", "alike"],
+)
+def test_plates_that_are_no_copies(make, files):
+    assert len(open_study(make({CSV: COPY, **files})).plates) == 2
 
 
 def test_a_later_reading_may_complete_a_table_without_the_column(make):

@@ -5,11 +5,13 @@ from __future__ import annotations
 from collections import defaultdict
 from collections.abc import Iterator, Mapping, Sequence
 
-import numpy as np
 import pandas as pd
 
 from muntin.record.definition import Definition
 from muntin.record.faults import counted, listed, number, quoted
+from muntin.record.responses import Response
+
+_LIKE_FRACTIONS = 1.5
 
 
 def definition_notices(definition: Definition) -> Iterator[str]:
@@ -58,12 +60,39 @@ def well_notices(
         awaited = int((states == "awaited").sum())
         if awaited:
             yield f"{name} is awaited in {awaited} of {counted(len(counting), 'well')}"
-        values = counting[name].dropna()
-        if response.per_cent and len(values) and np.all(values <= 1.5):
-            yield (
-                f"{name}: no reading lies above 1.5 %; are they fractions of 1? "
-                f"(study.toml, responses, {name}, unit)"
+
+
+def odd_notices(
+    definition: Definition, wells: pd.DataFrame, void: Mapping[str, str]
+) -> Iterator[str]:
+    """Yield readings that may stand, but look wrong; wells and void as in `well_notices`."""
+    counting = wells[~wells["plate"].isin([*void])]
+    for response in definition.responses:
+        if response.kind == "fraction":
+            yield from _odd_fractions(
+                response, counting[counting[f"{response.name}_state"] == "read"]
             )
+
+
+def _odd_fractions(response: Response, wells: pd.DataFrame) -> Iterator[str]:
+    """Yield readings that look like fractions among per cent, or lie far below 0."""
+    name = response.name
+    low = wells[name] < -0.1 * response.unit_size
+    for plate, names in wells["well"][low].groupby(wells["plate"], sort=False):
+        yield (
+            f"{plate}: {counted(len(names), 'reading')} of {name} below "
+            f"{'-10 %' if response.per_cent else '-0.1'} ({listed(names)}), left in; "
+            "is the blank right?"
+        )
+    if not response.per_cent or wells.empty:
+        return
+    question = f"are they fractions of 1? (study.toml, responses, {name}, unit)"
+    highest = wells.groupby("plate", sort=False)[name].max()
+    if (highest <= _LIKE_FRACTIONS).all():
+        yield f"{name}: no reading lies above 1.5 %; {question}"
+        return
+    for plate in highest.index[highest <= _LIKE_FRACTIONS]:
+        yield f"{plate}: no reading of {name} lies above 1.5 %, as they do elsewhere; {question}"
 
 
 def _reasons(wells: pd.DataFrame, column: str, what: str) -> Iterator[str]:

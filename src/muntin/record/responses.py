@@ -131,6 +131,9 @@ def response_faults(response: Response) -> Iterator[Fault]:
             problem=f"must lie below at_most, which is {number(high)}",
         )
     yield from _typical_faults(response, where)
+    if response.kind != "fraction" and "ceiling_gap" in response.priors:
+        problem = f'is for a "fraction"; this response is "{response.kind}"'
+        yield Fault(file="study.toml", where=f"{where}, priors, ceiling_gap", problem=problem)
 
 
 def _outside(where: str, value: float, top: int) -> Fault:

@@ -7,13 +7,14 @@ from pathlib import Path
 
 import pandas as pd
 
+from muntin.record.copies import copy_faults
 from muntin.record.definition import STUDY_FILE, Definition, definition_faults, sound_part
 from muntin.record.faults import Fault, Findings, StudyFaults
 from muntin.record.notes import Plate, read_notes
-from muntin.record.notices import column_notice, definition_notices, well_notices
+from muntin.record.notices import column_notice, definition_notices, odd_notices, well_notices
 from muntin.record.plates import PlateRows, open_plate, outside_limits, read_plate
 from muntin.record.readings import INFORMING, Reading
-from muntin.record.results import join_results
+from muntin.record.results import Run, join_results
 from muntin.record.stocks import read_stocks
 from muntin.record.tables import Table, table_files
 from muntin.record.toml_files import parse, read_toml
@@ -180,6 +181,7 @@ def _read_wells(
     needed = {name: part.needed for name, part in parts.items() if name not in void}
     found.faults.extend(late_faults(definition, frame, readings))
     found.faults.extend(shared_column_faults(definition, tables, needed))
+    found.faults.extend(copy_faults(plates, parts))
     if not found.faults:
         _take_stock(definition, frame, parts, void, found)
     return frame
@@ -202,8 +204,9 @@ def _read_results(
         for place in zip(part.columns["plate"], part.columns["well"], strict=True)
     ]
     wells = {place: row for row, place in enumerate(places)}
+    roles = [role for part in rows for role in part.columns["role"]]
     unread = [name for name, table in tables.items() if table is None]
-    return join_results(folder, definition, wells, unread, readings, found)
+    return join_results(folder, definition, Run(wells, roles, unread), readings, found)
 
 
 def _take_stock(
@@ -217,6 +220,7 @@ def _take_stock(
     fault = no_reading_fault(definition, informing[~informing["plate"].isin([*void])])
     if fault is not None:
         found.faults.append(fault)
+    found.notices[:0] = odd_notices(definition, informing, void)
     found.notices.extend(definition_notices(definition))
     found.notices.extend(well_notices(definition, informing, void))
     for name, part in parts.items():

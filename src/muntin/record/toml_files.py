@@ -5,7 +5,7 @@ from __future__ import annotations
 import re
 import tomllib
 import typing
-from collections.abc import Iterator, Mapping
+from collections.abc import Iterator, Mapping, Sequence
 from pathlib import Path
 from typing import Any, TypeVar
 
@@ -66,7 +66,7 @@ def parse(model: type[Model], data: dict[str, Any], file: str, faults: list[Faul
     Unknown keys are left out after they are named, so that the rest can still be judged. None
     where a known key is missing or holds something else than it may.
     """
-    known = _known_keys(model, data, (), file, faults)
+    known = _known_keys(model, data, (), file, faults, [*model.model_fields])
     try:
         return model.model_validate(known)
     except ValidationError as error:
@@ -80,6 +80,7 @@ def _known_keys(
     at: tuple[str, ...],
     file: str,
     faults: list[Fault],
+    top: Sequence[str],
 ) -> dict[str, Any]:
     fields = {info.alias or name: info.annotation for name, info in model.model_fields.items()}
     kept = {}
@@ -91,22 +92,28 @@ def _known_keys(
                     where=", ".join(at),
                     value=quoted(name),
                     problem="is not a key" + (f" of {_heading(at)}" if at else ""),
-                    hint=did_you_mean(name, [*fields]),
+                    hint=_meant(name, [*fields], top),
                 )
             )
             continue
         inner = _inner_model(fields[name])
         if inner is not None and isinstance(value, dict):
-            value = _known_keys(inner, value, (*at, name), file, faults)
+            value = _known_keys(inner, value, (*at, name), file, faults, top)
         elif inner is not None and isinstance(value, list):
             value = [
-                _known_keys(inner, item, (*at, _item(name, index, item)), file, faults)
+                _known_keys(inner, item, (*at, _item(name, index, item)), file, faults, top)
                 if isinstance(item, dict)
                 else item
                 for index, item in enumerate(value)
             ]
         kept[name] = value
     return kept
+
+
+def _meant(name: str, fields: Sequence[str], top: Sequence[str]) -> str:
+    if name in top and name not in fields:
+        return "it is no part of a table: write it above the first [table]"
+    return did_you_mean(name, fields)
 
 
 def _inner_model(annotation: Any) -> type[BaseModel] | None:
