@@ -52,6 +52,7 @@ def test_improvement_agrees_with_monte_carlo(surfaces, kind, rising):
     moved = ahead.mean[..., None] + np.sqrt(ahead.own_gain())[..., None] * z
     g = INVERSE[posterior.link]
     gain = np.maximum(sign * (g(moved) - g(mark)), 0.0)
+    gain *= posterior.errors.ceiling[:, None, None]
     drawn = np.einsum("s,sqz->qz", posterior.weights, gain)
     error = drawn.std(axis=1) / np.sqrt(len(z))
     # Where fewer than a hundred draws improve, their mean says little.
@@ -108,7 +109,9 @@ def test_values_stay_finite_where_all_is_far_below_the_mark(surfaces):
 
 def success(posterior, f, target):
     noise = float(posterior.weights @ posterior.errors.noise)
-    g = INVERSE["logit"](f) if posterior.link == "logit" else f
+    g = f
+    if posterior.link == "logit":
+        g = (posterior.weights @ posterior.errors.ceiling) * expit(f)
     low, high = target.low, target.high
     if posterior.link == "log":
         low, high = np.log(low) if low > 0.0 else -np.inf, np.log(high)

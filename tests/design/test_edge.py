@@ -14,11 +14,6 @@ TARGETS = {
     "positive": Target(high=1.3),
     "real": Target(low=-1.0, high=0.8),
 }
-LATENT = {
-    "fraction": (logit(0.6), np.inf),
-    "positive": (-np.inf, np.log(1.3)),
-    "real": (-1.0, 0.8),
-}
 STUDIES = [("fraction",), ("positive",), ("real",), ("fraction", "real")]
 
 
@@ -49,8 +44,16 @@ def pick(criterion, well):
         outlook.pick(well)
 
 
-def mean_square(outlook, low, high):
+def latent_limits(posterior, kind):
+    """Latent values of the limits; of a fraction (S, 1, 1), by its ceiling at each node."""
+    if kind == "fraction":
+        return logit(0.6 / posterior.errors.ceiling)[:, None, None], np.inf
+    return {"positive": (-np.inf, np.log(1.3)), "real": (-1.0, 0.8)}[kind]
+
+
+def mean_square(outlook, kind):
     """E[p1^2] (P,) of one response, averaged over nodes, by trapezoids over the updated mean."""
+    low, high = latent_limits(outlook.surface, kind)
     z = np.linspace(-9.0, 9.0, 4001)
     weight = np.exp(-0.5 * z**2)
     weight /= weight.sum()
@@ -66,8 +69,7 @@ def test_criterion_agrees_with_quadrature(surfaces, kinds):
     for well in (3, 17, 3):
         pick(ahead, well)
         squares = [
-            mean_square(outlook, *LATENT[kind])
-            for outlook, kind in zip(ahead.outlooks, kinds, strict=True)
+            mean_square(outlook, kind) for outlook, kind in zip(ahead.outlooks, kinds, strict=True)
         ]
         assert ahead.now() == pytest.approx(np.prod(squares, axis=0).mean(), rel=1e-6)
 
@@ -98,7 +100,7 @@ def test_blocks_of_wells_make_no_difference(surfaces, monkeypatch):
 def test_only_watched_points_are_weighed(surfaces):
     few = np.array([1, 8, 33])
     ahead = criterion(surfaces, ("fraction",), watched=few)
-    squares = mean_square(ahead.outlooks[0], *LATENT["fraction"])
+    squares = mean_square(ahead.outlooks[0], "fraction")
     assert ahead.now() == pytest.approx(squares[few].mean(), rel=1e-6)
     assert len(ahead.with_one(np.arange(4))) == 4
 

@@ -53,14 +53,14 @@ def noise_and_lever(posterior):
     if posterior.link != "logit":
         return np.broadcast_to(sigma**2, mean.shape), np.zeros_like(mean)
 
-    def slope(f):
-        return expit(f) * expit(-f)
+    def slope(f, ceiling):
+        return ceiling * expit(f) * expit(-f)
 
     square, product = np.empty_like(mean), np.empty_like(mean)
     for place in np.ndindex(*mean.shape):
-        m, v = mean[place], variance[place]
-        square[place] = weighed(m, v, lambda f: slope(f) ** 2)
-        product[place] = weighed(m, v, lambda f: slope(f) * expit(f))
+        m, v, top = mean[place], variance[place], posterior.errors.ceiling[place[0]]
+        square[place] = weighed(m, v, lambda f, top=top: slope(f, top) ** 2)
+        product[place] = weighed(m, v, lambda f, top=top: slope(f, top) * top * expit(f))
     return sigma**2 / square, product / square
 
 
@@ -101,7 +101,7 @@ def without_shared_errors(posterior):
     parts = []
     for part in posterior.parts:
         e = part.errors
-        bare = Errors(e.noise, np.zeros_like(e.inside), np.zeros_like(e.scale))
+        bare = Errors(e.noise, np.zeros_like(e.inside), np.zeros_like(e.scale), e.ceiling)
         parts.append(replace(part, errors=bare))
     return replace(posterior, parts=tuple(parts))
 
