@@ -90,6 +90,8 @@ def test_a_plan_nobody_touched_makes_way(study: Path) -> None:
     advice = quick(study, seed=2)
     assert advice.place.plan == study / PLAN
     assert advice.place.plan.read_text() != old
+    kept = advice.place.remark.removeprefix("It replaces a plan that nobody had edited, kept as ")
+    assert (study / kept.removesuffix(".")).read_text() == old
 
 
 def test_nothing_is_left_where_the_job_breaks(study: Path, monkeypatch: pytest.MonkeyPatch) -> None:

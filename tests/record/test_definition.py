@@ -116,6 +116,19 @@ def test_a_range_of_broken_steps_is_noticed(make):
     )
 
 
+def test_values_are_shown_with_the_decimals_of_the_step():
+    ph, salt = factor(low=4.5, high=7.5, step=0.1), factor(low=50, high=500, step=10)
+    assert [ph.shown(v) for v in (6, 6.1, 6.08)] == ["6.0", "6.1", "6.08"]
+    assert [salt.shown(v) for v in (250, 92.07)] == ["250", "92.07"]
+
+
+def test_a_label_is_not_repeated_by_its_choice():
+    resin = Factor.model_validate({"name": "resin", "label": "Resin", "choices": ["Resin A", "B"]})
+    assert [resin.named(choice) for choice in ("Resin A", "B", "Resinol")] == [
+        *("Resin A", "Resin B", "Resin Resinol")
+    ]
+
+
 def test_plan_levels_narrow_the_levels():
     narrow = factor(low=4.5, high=7.5, plan_low=5.0, plan_high=5.3)
     assert list(narrow.plan_levels()) == [5.0, 5.1, 5.2, 5.3]

@@ -53,10 +53,18 @@ def test_new_plan_goes_to_its_name(tmp_path: Path) -> None:
     assert plan_path(tmp_path, "plate-02", "a") == (tmp_path / "plans/plate-02.csv", "")
 
 
-@pytest.mark.parametrize("kept", ["old\n", "new\n"])
-def test_plan_that_was_not_edited_makes_way(tmp_path: Path, kept: str) -> None:
-    write(tmp_path, {"plans/plate-02.csv": kept, "advice/plate-02/r1/plan.csv": "old\n"})
-    assert plan_path(tmp_path, "plate-02", "new\n")[0].name == "plate-02.csv"
+def test_plan_that_was_not_edited_makes_way(tmp_path: Path) -> None:
+    copies = {f"advice/plate-02/r{n}/plan.csv": text for n, text in ((1, "a"), (9, "old"))}
+    write(tmp_path, {"plans/plate-02.csv": "old", "advice/plate-02/r10/plan.csv": "b", **copies})
+    path, remark = plan_path(tmp_path, "plate-02", "new")
+    assert path == tmp_path / "plans/plate-02.csv"
+    kept = "advice/plate-02/r9/plan.csv"
+    assert remark == f"It replaces a plan that nobody had edited, kept as {kept}."
+
+
+def test_plan_that_reads_the_same_is_not_worth_a_word(tmp_path: Path) -> None:
+    write(tmp_path, {"plans/plate-02.csv": "new", "advice/plate-02/r1/plan.csv": "new"})
+    assert plan_path(tmp_path, "plate-02", "new") == (tmp_path / "plans/plate-02.csv", "")
 
 
 def test_edited_plans_stay(tmp_path: Path) -> None:

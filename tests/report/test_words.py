@@ -17,7 +17,6 @@ from muntin.report.words import (
     reach_text,
     share_text,
     success_text,
-    value_text,
 )
 
 
@@ -39,10 +38,14 @@ def test_condition_with_and_without_tolerances() -> None:
     assert condition_text(definition(), condition, kept=True) == kept
 
 
-def test_values_off_the_steps_keep_their_digits() -> None:
-    ph, salt, _ = definition().factors
-    assert [value_text(ph, v) for v in (6, 6.1, 6.08)] == ["6.0", "6.1", "6.08"]
-    assert [value_text(salt, v) for v in (250, 92.07)] == ["250", "92.07"]
+def test_a_choice_that_begins_with_the_label_is_not_doubled() -> None:
+    factors = [{"name": "resin", "label": "Resin", "choices": ["Resin A", "resin b", "Resinol"]}]
+    study = {"title": "x"}
+    given = {"study": study, "factors": factors, "responses": []}
+    made = Definition.model_validate_json(json.dumps(given))
+    said = [condition_text(made, {"resin": choice}) for choice in factors[0]["choices"]]
+    assert said == ["Resin A", "resin b", "Resin Resinol"]
+    assert ranges_text(made, {"resin": ("Resin A", "Resin A")}) == "Resin A"
 
 
 def test_ranges_name_a_single_level_once() -> None:

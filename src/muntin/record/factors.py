@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 from collections.abc import Iterator
 from decimal import Decimal
 from typing import Any, Literal
@@ -137,6 +138,21 @@ class Factor(Keys):
         ceiling = high if self.plan_high is None else self.plan_high
         kept: Floats = levels[(levels >= floor) & (levels <= ceiling)]
         return kept
+
+    def shown(self, value: Any) -> str:
+        """Return a value (raw unit) as the bench writes it: 6.0 where steps are 0.1; no unit."""
+        if self.choices is not None:
+            return str(value)
+        low, _, step = self.span
+        text = f"{float(value):.{max(_decimals(low), _decimals(step))}f}"
+        return text if abs(float(text) - float(value)) < 1e-9 else f"{float(value):.6g}"
+
+    def named(self, shown: str) -> str:
+        """Return label and value, "pH 6.0"; a choice that begins with the label has it already."""
+        label = re.escape(self.label)
+        if self.choices is not None and re.match(rf"{label}\b", shown, re.IGNORECASE):
+            return shown
+        return f"{self.label} {shown}"
 
     @property
     def range_text(self) -> str:

@@ -12,7 +12,6 @@ import pandas as pd
 
 from muntin.record.definition import Definition
 from muntin.record.files import write_atomic
-from muntin.report.words import value_text
 
 if TYPE_CHECKING:
     from muntin.bench.plan import Plan
@@ -55,7 +54,7 @@ def _cells(definition: Definition, row: dict[Any, Any]) -> dict[str, str]:
     for factor in definition.factors:
         value = row[factor.name]
         empty = value is None or value == "" or pd.isna(value)
-        cells[factor.name] = "" if empty else value_text(factor, value)
+        cells[factor.name] = "" if empty else factor.shown(value)
     cells["p_now"] = "" if pd.isna(row["p_now"]) else f"{row['p_now']:.3f}"
     return cells
 
@@ -67,27 +66,33 @@ def plan_path(folder: Path, plate: str, text: str) -> tuple[Path, str]:
     taken as untouched and makes way; any other stays, and the new one gets a number.
     """
     path = folder / PLANS / f"{plate}.csv"
-    if not path.exists() or _untouched(folder, plate, path, text):
-        return path, ""
-    number = 2
-    while (other := path.with_name(f"{plate}.r{number}.csv")).exists() and not _untouched(
-        folder, plate, other, text
-    ):
+    remarks, number = [], 1
+    while path.exists() and (kept := _untouched(folder, plate, path, text)) is None:
         number += 1
-    remark = (
-        f"{PLANS}/{path.name} was edited or differs, and was left as it is; rename the new plan to "
-        f"{path.name} when you move it to plates/."
+        path = path.with_name(f"{plate}.r{number}.csv")
+    if number > 1:
+        remarks.append(
+            f"{PLANS}/{plate}.csv was edited or differs, and was left as it is; rename the new "
+            f"plan to {plate}.csv when you move it to plates/."
+        )
+    if path.exists() and kept:
+        remarks.append(f"It replaces a plan that nobody had edited, kept as {kept}.")
+    return path, " ".join(remarks)
+
+
+def _untouched(folder: Path, plate: str, path: Path, text: str) -> str | None:
+    """Where the advice keeps a copy of a plan, "" if it reads like the new one; None if neither."""
+    copies = sorted(
+        (folder / ADVICE / plate).glob(f"r*/{PLAN_COPY}"), key=lambda p: (len(str(p)), p)
     )
-    return other, remark
-
-
-def _untouched(folder: Path, plate: str, path: Path, text: str) -> bool:
     try:
         there = path.read_bytes()
-        copies = [p.read_bytes() for p in (folder / ADVICE / plate).glob(f"r*/{PLAN_COPY}")]
+        if there == text.encode("utf-8"):
+            return ""
+        same = [copy for copy in copies if copy.read_bytes() == there]
     except OSError:
-        return False
-    return there in (text.encode("utf-8"), *copies)
+        return None
+    return same[-1].relative_to(folder).as_posix() if same else None
 
 
 def write_plan(folder: Path, plate: str, text: str) -> tuple[Path, str]:

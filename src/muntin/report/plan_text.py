@@ -15,7 +15,7 @@ from rich.text import Text
 from muntin.record.definition import Definition
 from muntin.record.factors import Factor
 from muntin.record.faults import counted, listed
-from muntin.report.words import amount_text, axis_label, condition_text, share_text, value_text
+from muntin.report.words import amount_text, axis_label, condition_text, share_text
 
 if TYPE_CHECKING:
     from muntin.bench.plan import Plan
@@ -112,7 +112,7 @@ def _conditions(
 def _levels(factor: Factor, values: pd.Series) -> str:
     count = Counter(values)
     texts = [
-        value_text(factor, value) + (f"(×{n})" if n > 1 and len(count) > 1 else "")
+        factor.shown(value) + (f"(×{n})" if n > 1 and len(count) > 1 else "")
         for value, n in count.items()
     ]
     return listed(texts, 6)
@@ -158,7 +158,7 @@ def known_table(definition: Definition, known: pd.DataFrame, most: int = 20) -> 
     for name in chances:
         table.add_column(name, justify="right")
     for _, row in known.head(most).iterrows():
-        cells = [value_text(f, row[f.name]) for f in definition.factors]
+        cells = [f.shown(row[f.name]) for f in definition.factors]
         for r in shown:
             mean, low, high = (row[f"{r.name}_{end}"] for end in ("mean", "low", "high"))
             cells.append(f"{mean:.3g} ({low:.3g} to {high:.3g})")

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from decimal import Decimal
 from typing import Any
 
 from muntin.record.definition import Definition
@@ -18,27 +17,12 @@ JUDGED_BY = {
 }
 
 
-def decimals(factor: Factor) -> int:
-    """Return the decimals that show every bench step of a factor with a range."""
-    low, _, step = factor.span
-    exponents = [Decimal(repr(value)).normalize().as_tuple().exponent for value in (low, step)]
-    return max(0, *(-e for e in exponents if isinstance(e, int)))
-
-
-def value_text(factor: Factor, value: Any) -> str:
-    """Return a value of a factor as the bench writes it, without its unit."""
-    if not factor.continuous:
-        return str(value)
-    shown = f"{float(value):.{decimals(factor)}f}"
-    return shown if abs(float(shown) - float(value)) < 1e-9 else f"{float(value):.6g}"
-
-
 def setting_text(factor: Factor, value: Any, kept: bool = False) -> str:
     """Return "Salt 250 mM", or "Salt 250 ± 12 mM" where asked and `kept_within` is given."""
     width = ""
     if kept and factor.kept_within is not None:
         width = f" ± {float(factor.kept_within.at(float(value))):.2g}"
-    return f"{factor.label} {value_text(factor, value)}{width} {factor.unit}".rstrip()
+    return f"{factor.named(factor.shown(value))}{width} {factor.unit}".rstrip()
 
 
 def condition_text(definition: Definition, condition: Mapping[Any, Any], kept: bool = False) -> str:
@@ -50,9 +34,9 @@ def ranges_text(definition: Definition, ranges: Mapping[str, tuple[Any, Any]]) -
     """Return ranges that hold together, such as "pH 5.0 to 5.8 and Salt 100 to 300 mM"."""
     texts = []
     for factor in definition.factors:
-        low, high = (value_text(factor, end) for end in ranges[factor.name])
+        low, high = map(factor.shown, ranges[factor.name])
         span = low if low == high else f"{low} to {high}"
-        texts.append(f"{factor.label} {span} {factor.unit}".rstrip())
+        texts.append(f"{factor.named(span)} {factor.unit}".rstrip())
     return joined(texts)
 
 
