@@ -440,6 +440,50 @@ def test_nothing_run_yet_is_sound(make, files):
     assert study.notices == ()
 
 
+MOVE = "to have them counted"
+
+
+@pytest.mark.parametrize(
+    ("files", "notice"),
+    [
+        (
+            {"plans/plate-02.csv": PLATE},
+            f"plans/plate-02.csv holds 7 readings: move it to plates/ {MOVE}",
+        ),
+        (
+            {"plans/plate-02.r3.csv": PLATE},
+            f"plans/plate-02.r3.csv holds 7 readings: move it to plates/ as plate-02.csv {MOVE}",
+        ),
+        (
+            {"plans/plate-02.csv": PLATE, "plates/plate-02.csv": "well\n"},
+            "plans/plate-02.csv holds 7 readings: move it to plates/, in place of the empty table "
+            f"there, {MOVE}",
+        ),
+        (
+            {"plans/plate-01.csv": PLATE.replace("Alpha,,", "Alpha,0.7,")},
+            "plans/plate-01.csv holds 8 readings, the table of plate-01 in plates/ 7: only the "
+            "latter count",
+        ),
+    ],
+    ids=["plan", "revision", "empty", "more"],
+)
+def test_a_plan_with_readings_is_pointed_at_first(make, files, notice):
+    assert open_study(make(files)).notices[0] == notice
+
+
+@pytest.mark.parametrize(
+    "files",
+    [
+        {"plans/plate-02.csv": "well,ph,salt,resin,recovery\nA1,5.5,100,Beta,\n"},
+        {"plans/plate-01.csv": PLATE},
+        {"plans/plate-02.csv": b"\x00", "plans/plate-03.xlsx": b"none"},
+    ],
+    ids=["unread", "moved", "broken"],
+)
+def test_other_plans_are_no_matter(make, files):
+    assert open_study(make(files)).notices == open_study(make({})).notices
+
+
 def test_files_of_other_kinds_are_noticed(make):
     study = open_study(make({"plates/scan.pdf": b"%PDF", "plates/.hidden": b""}))
     assert study.notices[0] == "plates/scan.pdf is not a .csv or .xlsx table; left out"

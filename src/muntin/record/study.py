@@ -10,6 +10,7 @@ import pandas as pd
 from muntin.record.copies import copy_faults
 from muntin.record.definition import STUDY_FILE, Definition, definition_faults, sound_part
 from muntin.record.faults import Fault, Findings, StudyFaults
+from muntin.record.filled_plans import filled_plans
 from muntin.record.notes import Plate, read_notes
 from muntin.record.notices import column_notice, definition_notices, odd_notices, well_notices
 from muntin.record.plates import PlateRows, open_plate, outside_limits, read_plate
@@ -183,7 +184,7 @@ def _read_wells(
     found.faults.extend(shared_column_faults(definition, tables, needed))
     found.faults.extend(copy_faults(plates, parts))
     if not found.faults:
-        _take_stock(definition, frame, parts, void, found)
+        _take_stock(folder, definition, frame, parts, void, found)
     return frame
 
 
@@ -210,6 +211,7 @@ def _read_results(
 
 
 def _take_stock(
+    folder: Path,
     definition: Definition,
     frame: pd.DataFrame,
     parts: dict[str, PlateRows],
@@ -220,7 +222,8 @@ def _take_stock(
     fault = no_reading_fault(definition, informing[~informing["plate"].isin([*void])])
     if fault is not None:
         found.faults.append(fault)
-    found.notices[:0] = odd_notices(definition, informing, void)
+    odd = odd_notices(definition, informing, void)
+    found.notices[:0] = [*filled_plans(folder, definition, parts), *odd]
     found.notices.extend(definition_notices(definition))
     found.notices.extend(well_notices(definition, informing, void))
     for name, part in parts.items():
