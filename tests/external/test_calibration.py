@@ -58,8 +58,10 @@ def simulated(name):
         root = np.linalg.cholesky(K + 1e-9 * np.eye(13))
         f = PRIORS.mean + root @ rng.normal(size=13)
 
-        def read(latent, moved, scaled, rng=rng, noise=noise):
-            g = (1.0 + scaled) * expit(latent + moved)
+        ceiling = layout.ceiling_of(theta)[0]
+
+        def read(latent, moved, scaled, rng=rng, noise=noise, ceiling=ceiling):
+            g = (1.0 + scaled) * ceiling * expit(latent + moved)
             return g + noise * rng.normal(size=np.shape(latent))
 
         y = read(
@@ -77,7 +79,7 @@ def simulated(name):
         well = read(f[-1:], inside * rng.normal(), scale * rng.normal())[0]
         chances.append(
             [
-                (mean_meets(fit.surface, moments, target)[0], expit(f[-1]) >= 0.7),
+                (mean_meets(fit.surface, moments, target)[0], ceiling * expit(f[-1]) >= 0.7),
                 (well_meets(fit.surface, moments, target)[0], well >= 0.7),
             ]
         )

@@ -1,6 +1,7 @@
 """The fast engine's integration over hyperparameters against grids, with two of them unknown.
 
-Noise and process sd are unknown; the length scale is held by a prior of next to no width.
+Noise and process sd are unknown; the length scale, and a fraction's ceiling, are held by priors of
+next to no width.
 """
 
 from functools import cache
@@ -20,7 +21,7 @@ from muntin.surrogate.process import GaussianProcess
 from muntin.window.probability import Target, mean_meets, node_mean_meets
 from tests.surrogate.problems import log_normal, matern
 
-LENGTH = 1.5
+LENGTH, GAP = 1.5, 0.04
 NEW = np.array([-1.0, -0.6, -0.35, -0.1, 0.25, 0.7, 1.0])[:, None]
 ONE = Columns.plain(1)
 # Grid of standardised ln noise and ln process sd.
@@ -28,7 +29,8 @@ AXIS = np.linspace(-5.0, 5.0, 41)
 
 
 def priors(kind):
-    return priors_of(kind, (-1.0, 3.0)).with_overrides({"length_scale": (LENGTH, 1e-7)})
+    held = {"length_scale": (LENGTH, 1e-7), "ceiling_gap": (GAP, 1e-7)}
+    return priors_of(kind, (-1.0, 3.0)).with_overrides(held)
 
 
 @cache
@@ -86,9 +88,11 @@ def by_propagation_on_the_grid():
     """Logit link: the engine's own approximation at every point of the grid."""
     model = model_of("fraction")
     points, mass = grid(priors("fraction"))
-    theta = np.column_stack([points, np.full(len(points), np.log(LENGTH))])
+    noise, process = points.T
+    held = np.full(len(points), 1.0)
+    theta = np.column_stack([noise, np.log(GAP) * held, process, np.log(LENGTH) * held])
     # From the prior median outwards, so that each part starts near a fixed point.
-    middle = evaluate(model, np.log([[0.05, 2.0, LENGTH]]))
+    middle = evaluate(model, np.log([[0.05, GAP, 2.0, LENGTH]]))
     evidence = evaluate(model, theta, middle)
     surface = surface_of(model, evidence, np.exp(mass))
     chances = node_mean_meets(surface, surface.moments(NEW), target("fraction"))
@@ -106,7 +110,12 @@ def summary(log_w, chances):
 def surface_of(model, evidence, weights):
     layout, theta, a = model.layout, evidence.theta, evidence.approximation
     alpha, Q = model.family.weights(evidence.root, a.mean, a.V)
-    errors = Errors(layout.noise(theta), layout.inside_sd(theta), layout.scale_sd(theta))
+    errors = Errors(
+        layout.noise(theta),
+        layout.inside_sd(theta),
+        layout.scale_sd(theta),
+        layout.ceiling_of(theta),
+    )
     nodes = ProcessNodes(model.family, layout.family(theta), model.cells.X, alpha, Q, errors)
     return Surface((nodes,), weights, model.link)
 
@@ -167,7 +176,10 @@ def two_wells_by_brute_force(X, y, p, new, low):
     axis = np.linspace(-4.5, 4.5, 25)
     noise = p.noise_sd.median * np.exp(p.noise_sd.log_sd * axis)[:, None]
     first, second = (
-        np.exp(-0.5 * ((value - expit(f)) / noise) ** 2) / noise / np.sqrt(2.0 * np.pi) * step
+        np.exp(-0.5 * ((value - (1.0 - GAP) * expit(f)) / noise) ** 2)
+        / noise
+        / np.sqrt(2.0 * np.pi)
+        * step
         for value in y
     )
     mass, met = np.zeros((25, 25)), np.zeros((25, 25, len(new)))
@@ -183,7 +195,7 @@ def two_wells_by_brute_force(X, y, p, new, low):
         spread = np.sqrt(np.diag(kernel(p, sd, new, new)) - (pull * cross).sum(1))
         for i in range(len(new)):
             mean = pull[i, 0] * f[:, None] + pull[i, 1] * f
-            chance = ndtr((mean - np.log(low / (1.0 - low))) / spread[i])
+            chance = ndtr((mean - np.log(low / (1.0 - GAP - low))) / spread[i])
             met[:, j, i] = ((first @ (density * chance)) * second).sum(1)
     prior = np.exp(-0.5 * axis**2) / np.sqrt(2.0 * np.pi) * (axis[1] - axis[0])
     weight = np.outer(prior, prior)

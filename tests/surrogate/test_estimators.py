@@ -77,7 +77,7 @@ def test_predictions_are_moments_of_the_process_mean(kind_of, kind):
     rng, n = np.random.default_rng(2), 40_000
     node = rng.choice(len(latent), n, p=fitted.surface_.weights)
     f = latent[node] + np.sqrt(variance[node]) * rng.normal(size=(n, 3))
-    g = mean_of(fitted.surface_.link, f)
+    g = mean_of(fitted.surface_.link, f, fitted.surface_.errors.ceiling[node][:, None])
     assert (g.mean(0) - mean) / sd == pytest.approx(np.zeros(3), abs=5.0 / n**0.5)
     kurtosis = ((g - g.mean(0)) ** 4).mean(0) / g.var(0) ** 2
     assert (g.std(0) - sd) / sd == pytest.approx(np.zeros(3), abs=2.5 * np.sqrt(kurtosis.max() / n))
@@ -99,7 +99,8 @@ def test_moments_far_out_where_little_is_known(kind):
     else:
         z = np.linspace(-9.0, 9.0, 4001)
         density = np.exp(-0.5 * z**2)
-        g = mean_of(fitted.surface_.link, m[..., None] + np.sqrt(v)[..., None] * z)
+        ceiling = fitted.surface_.errors.ceiling[:, None, None]
+        g = mean_of(fitted.surface_.link, m[..., None] + np.sqrt(v)[..., None] * z, ceiling)
         first, second = (power @ density / density.sum() for power in (g, g**2))
     w = fitted.surface_.weights
     # 61 points a fifth of an sd apart, where a latent sd is several logits.

@@ -19,8 +19,8 @@ def differences(model, theta):
     return np.stack(sides, axis=1) / (2.0 * STEP)
 
 
-def case(name, kind, inside, scale):
-    model = model_of(name, readings(21, kind, n=24, inside=inside, scale=scale), kind)
+def case(name, kind, inside, scale, seed, n):
+    model = model_of(name, readings(seed, kind, n=n, inside=inside, scale=scale), kind)
     theta = model.layout.theta(np.random.default_rng(5).normal(0.0, 0.5, (3, len(model.layout))))
     return model, theta
 
@@ -42,7 +42,7 @@ ERRORS = pytest.mark.parametrize(
 @ERRORS
 @pytest.mark.usefixtures("fine_quadrature")
 def test_the_slope_agrees_with_central_differences(name, kind, inside, scale):
-    model, theta = case(name, kind, inside, scale)
+    model, theta = case(name, kind, inside, scale, seed=21, n=24)
     gradient = slope(model, settled(model, theta))
     assert gradient.shape == theta.shape
     assert gradient == pytest.approx(differences(model, theta), abs=1e-4)
@@ -51,10 +51,10 @@ def test_the_slope_agrees_with_central_differences(name, kind, inside, scale):
 @NAMES
 @ERRORS
 def test_the_slope_in_use_is_good_enough_to_climb_by(name, kind, inside, scale):
-    """32 points a cell cost some hundredths; the search for the mode stops at 0.01 of a move."""
-    model, theta = case(name, kind, inside, scale)
+    """32 points a cell leave 0.001 where wells are many; the search stops at 0.01 of a move."""
+    model, theta = case(name, kind, inside, scale, seed=22, n=40)
     gradient = slope(model, settled(model, theta))
-    assert gradient == pytest.approx(differences(model, theta), abs=0.04)
+    assert gradient == pytest.approx(differences(model, theta), abs=0.002)
 
 
 @NAMES

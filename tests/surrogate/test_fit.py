@@ -40,6 +40,8 @@ def test_before_any_reading_the_surface_is_the_priors(name, kind):
         )
     assert surface.errors.inside.shape == (16, 2)
     assert surface.errors.scale.shape == (16, 1)
+    assert surface.errors.ceiling.shape == (16,)
+    assert (surface.errors.ceiling < 1.0).all() == (kind == "fraction")
     assert surface.link == {"real": "identity", "fraction": "logit", "positive": "log"}[kind]
 
 
@@ -52,6 +54,7 @@ def test_the_nodes_of_the_prior_surface_have_the_priors_medians_and_spread(name)
         (errors.inside[:, 0], p.inside_error),
         (errors.scale[:, 0], p.scale_error),
         (errors.scale[:, 1], p.scale_error),
+        (1.0 - errors.ceiling, p.ceiling_gap),
     ):
         # 256 Sobol' points; plain draws would leave log_sd / 16 of the mean.
         assert np.log(values).mean() == pytest.approx(np.log(law.median), abs=law.log_sd / 16)

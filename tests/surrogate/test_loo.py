@@ -93,7 +93,7 @@ def test_predictions_of_a_fraction_agree_with_draws():
     mu = [cavity.u[0, c], cavity.s[0, c]]
     K = [[cavity.uu[0, c], cavity.us[0, c]], [cavity.us[0, c], cavity.ss[0, c]]]
     u, s = rng.multivariate_normal(mu, K, 200_000).T
-    mean = (1.0 + lik.scale[0, 0] * s) * lik.process_mean(u)
+    mean = (1.0 + lik.scale[0, 0] * s) * lik.process_mean(u[None])[0]
     w = norm.pdf(data.y[other], mean, noise)
     w /= w.sum()
     sd = np.sqrt(w @ (noise**2 + (mean - w @ mean) ** 2))

@@ -91,10 +91,18 @@ def test_a_mixture_is_its_parts_side_by_side():
         assert np.array_equal(whole, np.concatenate([a, b]))
     parts = [gp.covariance(X, Z), quadratic.covariance(X, Z)]
     assert np.array_equal(both.covariance(X, Z), np.concatenate(parts))
-    for field in ("noise", "inside", "scale"):
+    for field in ("noise", "inside", "scale", "ceiling"):
         own = [getattr(s.errors, field) for s in (gp, quadratic)]
         assert np.array_equal(getattr(both.errors, field), np.concatenate(own))
     assert both.link == "logit"
+
+
+def test_thresholds_are_where_each_nodes_process_mean_is_a_value():
+    both, _ = mixed()
+    thresholds, ceiling = both.thresholds(0.7), both.errors.ceiling
+    assert thresholds.shape == (len(both.weights), 1)
+    assert ceiling / (1.0 + np.exp(-thresholds[:, 0])) == pytest.approx(np.full(len(ceiling), 0.7))
+    assert (both.thresholds(float(ceiling.max())) == np.inf).any()
 
 
 def test_a_part_without_a_share_is_left_out():
@@ -119,6 +127,7 @@ def test_taking_nodes_takes_their_moments_and_errors():
         assert np.array_equal(some.errors.noise, both.errors.noise[index])
         assert np.array_equal(some.errors.scale, both.errors.scale[index])
         assert np.array_equal(some.errors.inside, both.errors.inside[index])
+        assert np.array_equal(some.errors.ceiling, both.errors.ceiling[index])
 
 
 @pytest.mark.parametrize("most", [1, 7, 30])

@@ -12,7 +12,7 @@ from muntin.surrogate.tilted import CellLikelihood, Pair, tilt
 MEAN, COUNT = np.array([0.55, 0.97, -0.02]), np.array([1.0, 3.0, 2.0])
 WITHIN, VARIANCE = np.array([0.0, 0.003, 0.001]), np.array([0.0, 0.0, 0.02**2])
 NOISE, SCALE = np.array([[0.03**2], [0.08**2]]), np.array([[0.03], [0.1]])
-OFFSET = 0.4
+OFFSET, CEILING = 0.4, np.array([[0.97], [0.9]])
 
 
 @pytest.fixture
@@ -26,6 +26,7 @@ def likelihood():
         variance=VARIANCE,
         noise=NOISE,
         scale=SCALE,
+        ceiling=CEILING,
     )
 
 
@@ -50,7 +51,7 @@ def dense(lik, cavity, node, cell):
     z = np.linspace(-7.0, 7.0, 561)
     Z = np.stack(np.meshgrid(z, z, indexing="ij")).reshape(2, -1)
     u, s = mu[:, None] + np.linalg.cholesky(K) @ Z
-    mean = (1.0 + lik.scale[node, 0] * s) * expit(u + OFFSET)
+    mean = (1.0 + lik.scale[node, 0] * s) * CEILING[node, 0] * expit(u + OFFSET)
     v = lik.noise[node, 0] + lik.variance[cell]
     # Density of every reading of the cell, written out from its sum of squares about their mean.
     squares = lik.within[cell] + lik.count[cell] * (lik.mean[cell] - mean) ** 2
@@ -86,15 +87,19 @@ def test_moments_agree_with_a_dense_grid(likelihood, cavity):
             assert p.us[node, cell] == pytest.approx(us, abs=4e-3 * sd_u * sd_s)
 
 
-def test_the_slope_in_the_noise_agrees_with_differences(likelihood, cavity):
-    h = 1e-4
+@pytest.mark.usefixtures("fine_quadrature")
+@pytest.mark.parametrize("what", ["noise", "ceiling"])
+def test_slopes_in_noise_and_ceiling_agree_with_differences(likelihood, cavity, what):
+    """Of the log normaliser in the logarithms of the noise sd and of the ceiling."""
+    h, power = 1e-4, {"noise": 2.0, "ceiling": 1.0}[what]
 
     def at(step):
-        moved = replace(likelihood, noise=likelihood.noise * np.exp(2.0 * step))
+        moved = replace(likelihood, **{what: getattr(likelihood, what) * np.exp(power * step)})
         return tilt(moved, cavity, cavity.u, np.sqrt(cavity.uu)).log_z
 
-    slope = tilt(likelihood, cavity, cavity.u, np.sqrt(cavity.uu)).noise_slope
-    assert slope == pytest.approx((at(h) - at(-h)) / (2.0 * h), rel=5e-3, abs=5e-3)
+    tilted = tilt(likelihood, cavity, cavity.u, np.sqrt(cavity.uu))
+    slope = getattr(tilted, f"{what}_slope")
+    assert slope == pytest.approx((at(h) - at(-h)) / (2.0 * h), rel=1e-5, abs=1e-5)
 
 
 def test_the_quadrature_finds_the_law_from_afar(likelihood, cavity):
