@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import csv
 import json
+import shlex
 import subprocess
 import sys
 from pathlib import Path
@@ -63,6 +64,17 @@ def test_new_check_and_advise_follow_each_other(tmp_path: Path) -> None:
     assert result.exit_code == 0, result.stderr
     assert "Nothing has been read yet" in result.stdout
     assert len(list((folder / "plans").iterdir())) == 1
+
+
+def test_new_quotes_a_folder_with_a_blank(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    folder = "my first screen"
+    monkeypatch.chdir(tmp_path)
+    lines = run("new", folder).stdout.splitlines()
+    commands = [line.split("muntin ")[1] for line in lines if "muntin " in line]
+    assert [shlex.split(command)[:2] for command in commands] == [
+        ["check", folder],
+        ["advise", folder],
+    ]
 
 
 def test_new_refuses_a_folder_with_a_study(study: Path) -> None:
@@ -167,6 +179,18 @@ def test_assess_never_overwrites_what_it_reads(study: Path) -> None:
     assert result.exit_code == 2
     assert result.stderr == f"{table}: is read by this command and is not overwritten\n"
     assert table.read_bytes() == before
+
+
+@pytest.mark.parametrize("name", ["out.xlsx", "out", "out.csv.txt"])
+def test_assess_writes_csv_only(study: Path, tmp_path: Path, name: str) -> None:
+    out = tmp_path / name
+    before = tree(tmp_path)
+    result = run("assess", study, "--out", out)
+    assert (result.exit_code, result.stdout) == (2, "")
+    assert result.stderr == (
+        f"{out}: cannot be written; tables are written as .csv (name it out.csv)\n"
+    )
+    assert tree(tmp_path) == before
 
 
 def test_assess_says_what_is_awaited(tmp_path: Path) -> None:

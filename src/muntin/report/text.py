@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import io
+import shlex
 from collections.abc import Sequence
 from pathlib import Path
 from typing import TYPE_CHECKING
@@ -268,6 +269,7 @@ def height(screen: RenderableType, width: int = 100) -> int:
 def new_screen(folder: Path, written: Sequence[Path]) -> RenderableType:
     """Return the screen of `new`."""
     study, plate = written
+    named = shlex.quote(str(folder))
     return sheet(
         "A new study",
         [
@@ -275,8 +277,8 @@ def new_screen(folder: Path, written: Sequence[Path]) -> RenderableType:
             (
                 "Next",
                 [
-                    f"muntin check {folder}    names whatever cannot be read",
-                    f"muntin advise {folder}   plans the opening plate",
+                    f"muntin check {named}    names whatever cannot be read",
+                    f"muntin advise {named}   plans the opening plate",
                 ],
             ),
         ],
