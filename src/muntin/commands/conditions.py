@@ -51,7 +51,7 @@ def check_out(out: Path, at: Path | None, folder: Path) -> None:
     """Raise StudyFaults where a table to write is no .csv, or would replace one that was read."""
     if out.suffix.lower() != ".csv":
         problem = "cannot be written; tables are written as .csv"
-        hint = f"name it {out.with_suffix('.csv').name}" if out.name.strip(".") else ""
+        hint = f"name it {out.stem.removesuffix('.csv')}.csv"
         raise StudyFaults([Fault(file=str(out), problem=problem, hint=hint)])
     read = [*input_paths(folder), *([at] if at is not None else [])]
     if out.exists() and out.resolve() in [path.resolve() for path in read]:
