@@ -47,7 +47,9 @@ def bivariate_normal(h: Array, k: Array, rho: Array) -> Array:
 
     h, k, rho = np.broadcast_arrays(*(np.asarray(v, dtype=float) for v in (h, k, rho)))
     # T is continuous but its argument is not at 0; a tiny shift picks the limit.
-    h, k = np.where(h == 0.0, 1e-300, h), np.where(k == 0.0, 1e-300, k)
+    # Beyond 38 a probability is 0 or 1 to the last digit, and infinities leave no 0 / 0.
+    h, k = np.clip(np.where(h == 0.0, 1e-300, h), -38, 38), np.clip(k, -38, 38)
+    k = np.where(k == 0.0, 1e-300, k)
     root = np.sqrt(np.maximum(1.0 - rho**2, 1e-30))
     with np.errstate(over="ignore"):
         first = owens_t(h, (k - rho * h) / (h * root))
