@@ -94,6 +94,17 @@ def test_a_plan_nobody_touched_makes_way(study: Path) -> None:
     assert (study / kept.removesuffix(".")).read_text() == old
 
 
+def test_a_plan_filled_in_where_it_lies_is_pointed_at(study: Path) -> None:
+    quick(study)
+    lines = (study / PLAN).read_text().splitlines()
+    filled = [line.replace(",,,0.", ",0.5,,0.") for line in lines]
+    count = sum(a != b for a, b in zip(lines, filled, strict=True))
+    assert count == 9
+    (study / PLAN).write_text("\n".join(filled) + "\n")
+    text = " ".join(" ".join(screen(study, "--wells", "5", "--seed", "2")).split())
+    assert f"Noted {PLAN} holds 9 readings: move it to plates/ to have them counted" in text
+
+
 def test_nothing_is_left_where_the_job_breaks(study: Path, monkeypatch: pytest.MonkeyPatch) -> None:
     def broken(*_: object) -> bytes:
         raise RuntimeError("no figure")
@@ -191,6 +202,7 @@ def test_nothing_run_gives_an_opening_plate_and_no_window(tmp_path: Path) -> Non
     folder = write(tmp_path, {"study.toml": STUDY})
     lines = screen(folder, "--wells", "6")
     assert "so there is no window; an opening plate comes first." in "\n".join(lines)
+    assert "Forecast  No forecast before the first readings." in lines
     facts = json.loads((folder / "advice/plate-01/r1/advice.json").read_text())
     assert (facts["nothing_run"], facts["provisional"], facts["window"]) == (True, False, None)
     assert {well["role"] for well in facts["plan"]["wells"]} >= {"test", "load", "blank"}

@@ -2,20 +2,23 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
 from dataclasses import replace
+from pathlib import Path
 
 import pandas as pd
 import pytest
+from rich.table import Table
 
+from muntin.bench.plan import propose
 from muntin.record import open_study
-from muntin.report.plan_text import plan_table
-from muntin.report.text import check_lines, few, sheet, window_lines
+from muntin.record.definition import Definition
+from muntin.report.plan_text import first_conditions, plan_tables
+from muntin.report.text import check_lines, few, propose_screen, sheet, window_lines
 from muntin.window.assessment import Assessment, assess
 from muntin.window.checks import Check
 from muntin.window.window import Window
 from tests.report.shown import shown
-from tests.report.studies import STUDY, small
+from tests.report.studies import LOAD, RESIN, STUDY, small, write
 
 GOOD = Check("coverage", True, True, "Nine of ten readings lie inside.")
 BAD = Check("integration", False, True, "Averages are unreliable.")
@@ -36,9 +39,40 @@ def window(view: Assessment) -> Window:
 
 def test_failures_come_first_and_what_passed_is_counted() -> None:
     assert check_lines((GOOD, NOTE, BAD)) == [
-        "FAILED: Averages are unreliable.",
-        "Note: One plate cannot tell.",
-        "Passed, 1 of 3: coverage. Nine of ten readings lie inside.",
+        "FAILED (integration): Averages are unreliable.",
+        "Note (plates): One plate cannot tell.",
+        "Passed, 1 of 3: coverage.",
+        "Nine of ten readings lie inside.",
+    ]
+
+
+def checks_of(*failed: tuple[str, str]) -> tuple[Check, ...]:
+    labels = ("Recovery", "HCP", "Purity", "Yield")
+    return tuple(
+        Check(name, (label, name) not in failed, False, f"{label}: {name} said.")
+        for label in labels
+        for name in ("coverage", "wild wells")
+    )
+
+
+def test_a_check_that_not_every_response_passed_names_those_that_did() -> None:
+    checks = checks_of(("HCP", "wild wells"), ("Yield", "wild wells"))
+    lines = check_lines(checks, (), ("Recovery", "HCP", "Purity", "Yield"))
+    assert lines == [
+        "Note (wild wells): HCP: wild wells said.",
+        "Note (wild wells): Yield: wild wells said.",
+        "Passed, 6 of 8: coverage, wild wells (Recovery, Purity).",
+    ]
+    told = check_lines(checks, ("HCP: wild wells said.",), ("Recovery", "HCP", "Purity", "Yield"))
+    assert told[0] == "FAILED: wild wells (HCP); why is said with the window."
+
+
+def test_coverage_is_said_of_each_response_where_they_are_few() -> None:
+    lines = check_lines(checks_of(("HCP", "coverage"))[:6], (), ("Recovery", "HCP", "Purity"))
+    assert lines[1:] == [
+        "Passed, 5 of 6: coverage (Recovery, Purity), wild wells.",
+        "Recovery: coverage said.",
+        "Purity: coverage said.",
     ]
 
 
@@ -103,20 +137,16 @@ WELLS = rows(
 )
 
 
-Lines = Callable[..., list[str]]
+def plain(table: Table) -> list[str]:
+    return [" ".join(line.split()) for line in shown(table)]
 
 
-@pytest.fixture
-def table(view: Assessment) -> Lines:
-    def lines(most: int, why: bool = True) -> list[str]:
-        made = plan_table(view.study.definition, WELLS, most, why)
-        return [" ".join(line.split()) for line in shown(made)]
-
-    return lines
+def tables(view: Assessment, wells: pd.DataFrame, why: bool = True) -> list[list[str]]:
+    return [plain(table) for table in plan_tables(view.study.definition, wells, why)]
 
 
-def test_every_condition_has_a_row_where_all_fit(table: Lines) -> None:
-    assert table(4) == [
+def test_every_condition_has_a_row_where_all_fit(view: Assessment) -> None:
+    assert tables(view, WELLS)[0] == [
         "wells pH Salt (mM) p now why",
         "1 5.0 100 0.20 reason of A2",
         "2 5.0 200 0.45 reason of A3",
@@ -125,21 +155,94 @@ def test_every_condition_has_a_row_where_all_fit(table: Lines) -> None:
     ]
 
 
-def test_else_conditions_are_gathered_by_level(table: Lines) -> None:
-    assert table(2) == [
+def test_else_conditions_are_gathered_by_level(view: Assessment) -> None:
+    assert tables(view, WELLS)[1] == [
         "wells pH Salt (mM) p now why",
         "3 5.0 100, 200(×2) 0.20 to 0.45 reason of A3",
         "2 6.0 150, 300 0.30 to 0.90 reason of A5",
     ]
 
 
-def test_else_the_first_conditions_are_shown(table: Lines) -> None:
-    assert table(1) == [
+def test_else_the_conditions_follow_one_another(view: Assessment) -> None:
+    assert tables(view, WELLS)[-1] == [
+        "wells pH / Salt (mM)",
+        "5 5.0/100, 5.0/200(×2), 6.0/150, 6.0/300",
+    ]
+
+
+def test_else_the_first_conditions_are_shown(view: Assessment) -> None:
+    assert plain(first_conditions(view.study.definition, WELLS, 1)) == [
         "wells pH Salt (mM) p now why",
         "1 5.0 100 0.20 reason of A2",
         "4 3 more conditions: see the plan's table",
     ]
 
 
-def test_opening_plate_has_no_probabilities(table: Lines) -> None:
-    assert table(2, False)[:2] == ["wells pH Salt (mM)", "3 5.0 100, 200(×2)"]
+def test_prepared_stocks_come_first_in_gathering(view: Assessment) -> None:
+    ph, salt = view.study.definition.factors
+    definition = view.study.definition.model_copy(
+        update={"factors": (ph, salt.model_copy(update={"per_plate": 4}))}
+    )
+    assert plain(plan_tables(definition, WELLS)[1])[:2] == [
+        "wells Salt (mM) pH p now why",
+        "1 100 5.0 0.20 reason of A2",
+    ]
+
+
+def test_a_table_says_once_what_probability_and_setting_are(view: Assessment) -> None:
+    said = "repeats plate-01 A1: probability 0.45, on the edge at pH 5"
+    first = tables(view, WELLS.assign(reason=said))[0]
+    assert first[1] == "1 5.0 100 0.20 repeats plate-01 A1: on the edge"
+
+
+def test_opening_plate_has_no_probabilities(view: Assessment) -> None:
+    assert tables(view, WELLS, False)[1][:2] == ["wells pH Salt (mM)", "3 5.0 100, 200(×2)"]
+
+
+def many(definition: Definition, count: int) -> pd.DataFrame:
+    """A plan with so many conditions of long settings and reasons."""
+    made = {
+        f.name: [f.levels()[(3 * i + i // 7 + j) % len(f.levels())] for i in range(count)]
+        for j, f in enumerate(definition.factors)
+    }
+    reason = "probability 0.55, on the edge between what was seen to pass and what was not"
+    return pd.DataFrame(made).assign(role="test", p_now=0.55, reason=reason)
+
+
+@pytest.mark.parametrize("more", ["", LOAD, LOAD + RESIN])
+def test_all_conditions_of_24_wells_show_in_14_lines(tmp_path: Path, more: str) -> None:
+    toml = STUDY.replace("\n[[responses]]", f"{more}\n[[responses]]")
+    files = {"study.toml": toml}
+    definition = open_study(write(tmp_path, files)).definition
+    wells = many(definition, 24)
+    names = list(definition.factor_names)
+    conditions = wells[names].drop_duplicates()
+    assert len(conditions) > 14
+    shapes = plan_tables(definition, wells)
+    assert shapes
+    by = definition.factors[0]
+    for table in shapes:
+        lines = shown(table)
+        assert len(lines) <= 14 + max(str(c.header).count("\n") + 1 for c in table.columns)
+        assert max(map(len, lines)) <= 90
+    rows = shapes[0].rows
+    cells = [list(column.cells) for column in shapes[0].columns]
+    seen = set()
+    for i in range(len(rows)):
+        for setting in str(cells[2][i]).split(", "):
+            others = setting.split("(")[0].split("/")
+            seen.add((str(cells[1][i]), *others))
+    rest = definition.factors[1:]
+    assert seen == {
+        (by.shown(row[by.name]), *(f.shown(row[f.name]) for f in rest))
+        for _, row in conditions.iterrows()
+    }
+
+
+def test_before_any_reading_there_is_no_forecast(tmp_path: Path) -> None:
+    fresh = assess(open_study(write(tmp_path, {"study.toml": STUDY})), surrogate="quadratic")
+    plan = propose(fresh, wells=3)
+    lines = shown(propose_screen(fresh, plan, tmp_path / "plan.csv", ""))
+    (forecast,) = [line for line in lines if line.startswith("Forecast")]
+    assert forecast.split(maxsplit=1)[1] == "No forecast before the first readings."
+    assert not any("nan" in line for line in lines)

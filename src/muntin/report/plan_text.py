@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import io
+import re
 import textwrap
 from collections import Counter
 from collections.abc import Sequence
@@ -9,12 +11,13 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 import pandas as pd
+from rich.console import Console, RenderableType
 from rich.table import Table
 from rich.text import Text
 
 from muntin.record.definition import Definition
 from muntin.record.factors import Factor
-from muntin.record.faults import counted, listed
+from muntin.record.faults import counted
 from muntin.report.words import amount_text, axis_label, condition_text, share_text
 
 if TYPE_CHECKING:
@@ -22,8 +25,10 @@ if TYPE_CHECKING:
 
 _ROLES = {"test": "test well", "bridge": "bridging well", "reference": "reference well"}
 _POINTS = 7
+_TIES = ": ties plates"
 _NARROW, _WHY = 12, 20
 _WIDTH, _GAP = 90, 2
+_MOST_LINES = 14
 
 
 def plan_heading(plan: Plan) -> str:
@@ -36,14 +41,17 @@ def plan_heading(plan: Plan) -> str:
     return f"{plan.plate} (aim {plan.aim}, seed {plan.seed}): {', '.join(parts)}{used}."
 
 
-def bridging_lines(definition: Definition, wells: pd.DataFrame) -> list[str]:
-    """Return a line a condition that ties the new plate to the earlier ones."""
+def bridging_line(definition: Definition, wells: pd.DataFrame, most: int = 2) -> list[str]:
+    """Return the conditions that tie the new plate to the earlier ones in one line, if any."""
     bridging = wells[wells["role"].isin(["bridge", "reference"])]
-    return [
-        f"{len(rows)} × {condition_text(definition, rows.iloc[0].to_dict())}: "
-        f"{rows['reason'].iloc[0]}."
-        for rows in _lines(definition, bridging, definition.factors)
+    lines = _lines(definition, bridging, definition.factors)
+    texts = [
+        f"{len(rows)} × {condition_text(definition, rows.iloc[0].to_dict())} "
+        f"({str(rows['reason'].iloc[0]).removesuffix(_TIES)})"
+        for rows in lines[:most]
     ]
+    more = [f"{len(lines) - most} more conditions: see the plan's table"] if lines[most:] else []
+    return [f"Bridging: {'; '.join([*texts, *more])}."] if texts else []
 
 
 def usual_reason(wells: pd.DataFrame) -> str:
@@ -51,29 +59,46 @@ def usual_reason(wells: pd.DataFrame) -> str:
     return str(wells[wells["role"] == "test"]["reason"].mode().iloc[0])
 
 
-def plan_table(definition: Definition, wells: pd.DataFrame, most: int, why: bool = True) -> Table:
-    """Return the test wells in about so many rows, with probability and reason if `why`.
+def plan_tables(definition: Definition, wells: pd.DataFrame, why: bool = True) -> list[Table]:
+    """Return tables that show all test wells in 14 lines, those that say most first.
 
-    A row a condition, where all of them fit; else, with two factors, a row a level of one of them;
-    else the first conditions only.
+    A row a condition; a row a level of one factor; only the conditions, one after the other.
+    Probability and reason stand in the first two if `why`.
     """
     tests = wells[wells["role"] == "test"]
-    stock = _stock(definition, tests)
-    lines = _lines(definition, tests, definition.factors)
-    few_levels = len(definition.factors) == 2 and tests[stock.name].nunique() <= most
-    if len(lines) > most and few_levels:
-        return _conditions(definition, _lines(definition, tests, [stock]), 0, 0, why)
+    tables = [
+        _conditions(definition, _lines(definition, tests, definition.factors), why),
+        *(_grouped(definition, tests, by, why) for by in _groupings(definition, tests)),
+        _row_of_all(definition, tests),
+    ]
+    return [table for table in tables if _body_lines(table) <= _MOST_LINES]
+
+
+def first_conditions(
+    definition: Definition, wells: pd.DataFrame, most: int, why: bool = True
+) -> Table:
+    """Return a table of so many conditions, and how many more there are."""
+    lines = _lines(definition, wells[wells["role"] == "test"], definition.factors)
     rest = lines[most:]
-    more = sum(len(rows) for rows in rest)
-    return _conditions(definition, lines[:most], len(rest), more, why)
+    return _conditions(definition, lines[:most], why, len(rest), sum(map(len, rest)))
 
 
-def _stock(definition: Definition, tests: pd.DataFrame) -> Factor:
-    """The factor to group by: choices, else prepared stocks, else the fewest levels."""
-    return min(
-        definition.factors,
-        key=lambda f: (f.continuous, f.per_plate is None, tests[f.name].nunique()),
-    )
+def _groupings(definition: Definition, tests: pd.DataFrame) -> list[Factor]:
+    """The factors to group by: prepared stocks, the first one, then those of fewest levels."""
+    first = [f for f in definition.factors if f.per_plate is not None][:1]
+    fewest = sorted(definition.factors, key=lambda f: tests[f.name].nunique())
+    by_name = {f.name: f for f in (*first, definition.factors[0], *fewest)}
+    return [*by_name.values()] if len(definition.factors) > 1 else []
+
+
+def height(screen: RenderableType, width: int = 100) -> int:
+    """Return the lines that a screen takes at so many columns."""
+    return len(Console(width=width, file=io.StringIO()).render_lines(screen))
+
+
+def _body_lines(table: Table) -> int:
+    headings = max(str(column.header).count("\n") + 1 for column in table.columns)
+    return height(table, _WIDTH) - headings
 
 
 def _lines(definition: Definition, wells: pd.DataFrame, by: Sequence[Factor]) -> list[pd.DataFrame]:
@@ -84,38 +109,97 @@ def _lines(definition: Definition, wells: pd.DataFrame, by: Sequence[Factor]) ->
 
 
 def _conditions(
-    definition: Definition, lines: Sequence[pd.DataFrame], more: int, more_wells: int, why: bool
+    definition: Definition,
+    lines: Sequence[pd.DataFrame],
+    why: bool,
+    more: int = 0,
+    more_wells: int = 0,
 ) -> Table:
-    """The lines as a table; reasons take the room that settings leave them."""
+    """A row a condition; `more` are the conditions left out, with so many wells."""
     factors = definition.factors
-    headings = ["wells", *(textwrap.fill(axis_label(f.label, f.unit), _NARROW) for f in factors)]
-    headings += ["p now"] if why else []
-    body = []
-    for rows in lines:
-        cells = [str(len(rows)), *(_levels(f, rows[f.name]) for f in factors)]
-        body.append([*cells, _span(rows["p_now"])] if why else cells)
-    table, left = _plain_table(), _WIDTH
-    for column, heading in enumerate(headings):
-        texts = [*heading.split("\n"), *(cells[column] for cells in body)]
-        width = max(map(len, texts))
-        table.add_column(heading, justify="right", no_wrap=True, min_width=width)
-        left -= width + _GAP
-    table.add_column("why" if why else "", max_width=max(left, _WHY))
-    for cells, rows in zip(body, lines, strict=True):
-        table.add_row(*map(Text, [*cells, _why(rows) if why else ""]))
+    body = [
+        [
+            str(len(rows)),
+            *(f.shown(rows[f.name].iloc[0]) for f in factors),
+            *_said(rows, definition.factors, why),
+        ]
+        for rows in lines
+    ]
+    table = _filled(["wells", *map(_heading, factors)], body, [], why)
     if more:
         said = f"{counted(more, 'more condition')}: see the plan's table"
-        table.add_row(str(more_wells), *[""] * (len(headings) - 1), said)
+        blanks = [""] * (len(table.columns) - 2)
+        table.add_row(str(more_wells), *blanks, said)
     return table
 
 
-def _levels(factor: Factor, values: pd.Series) -> str:
-    count = Counter(values)
-    texts = [
-        factor.shown(value) + (f"(×{n})" if n > 1 and len(count) > 1 else "")
-        for value, n in count.items()
+def _grouped(definition: Definition, tests: pd.DataFrame, by: Factor, why: bool) -> Table:
+    """A row a level of one factor, the conditions of the others in one cell."""
+    others = [factor for factor in definition.factors if factor.name != by.name]
+    body = [
+        [
+            str(len(rows)),
+            by.shown(rows[by.name].iloc[0]),
+            _settings(others, rows),
+            *_said(rows, definition.factors, why),
+        ]
+        for rows in _lines(definition, tests, [by])
     ]
-    return listed(texts, 6)
+    return _filled(["wells", _heading(by)], body, others, why)
+
+
+def _row_of_all(definition: Definition, tests: pd.DataFrame) -> Table:
+    """All conditions in one cell."""
+    factors = definition.factors
+    ordered = pd.concat(_lines(definition, tests, factors))
+    return _filled(["wells"], [[str(len(tests)), _settings(factors, ordered)]], factors, False)
+
+
+def _filled(
+    headings: Sequence[str], body: Sequence[Sequence[str]], gathered: Sequence[Factor], why: bool
+) -> Table:
+    """A table of cells: plain ones, then a cell of `gathered` settings if any, then p now and why.
+
+    Gathered settings and reasons share the room that the other columns leave.
+    """
+    plain = [*headings, *(["p now"] if why else [])]
+    at = [*range(len(headings)), *([len(body[0]) - 2] if why else [])]
+    widths = [
+        max(map(len, [*heading.split("\n"), *(cells[i] for cells in body)]))
+        for heading, i in zip(plain, at, strict=True)
+    ]
+    left = _WIDTH - sum(widths) - _GAP * len(widths)
+    table = _plain_table()
+    for heading, width in zip(headings, widths, strict=False):
+        table.add_column(heading, justify="right", no_wrap=True, min_width=width)
+    if gathered:
+        reasons = max((len(cells[-1]) for cells in body), default=0) if why else 0
+        room = max(left - _GAP - reasons, (left - _GAP) // 2)
+        widest = max(len(cells[len(headings)]) for cells in body)
+        table.add_column(" / ".join(axis_label(f.label, f.unit) for f in gathered), max_width=room)
+        left -= min(room, widest) + _GAP
+    if why:
+        table.add_column("p now", justify="right", no_wrap=True, min_width=widths[-1])
+        table.add_column("why", max_width=max(left, _WHY))
+    for cells in body:
+        table.add_row(*map(Text, cells))
+    return table
+
+
+def _heading(factor: Factor) -> str:
+    return textwrap.fill(axis_label(factor.label, factor.unit), _NARROW)
+
+
+def _said(rows: pd.DataFrame, factors: Sequence[Factor], why: bool) -> list[str]:
+    return [_span(rows["p_now"]), _why(rows, factors)] if why else []
+
+
+def _settings(factors: Sequence[Factor], rows: pd.DataFrame) -> str:
+    """Return conditions such as "5.0/100, 5.0/200(×2)", in the order of the rows."""
+    shown = ["/".join(f.shown(row[f.name]) for f in factors) for _, row in rows.iterrows()]
+    count = Counter(shown)
+    alone = len(count) == 1
+    return ", ".join(text + (f"(×{n})" if n > 1 and not alone else "") for text, n in count.items())
 
 
 def _span(p: pd.Series) -> str:
@@ -123,10 +207,15 @@ def _span(p: pd.Series) -> str:
     return low if low == high else f"{low} to {high}"
 
 
-def _why(rows: pd.DataFrame) -> str:
-    """Return the reason of the well whose outcome is most open, the first wording of it."""
+def _why(rows: pd.DataFrame, factors: Sequence[Factor]) -> str:
+    """Return the reason of the well whose outcome is most open, the first wording of it.
+
+    What the row's other cells say, probability and setting, is left out.
+    """
     openness = (rows["p_now"] - 0.5).abs().round(6)
-    return str(rows.assign(open=openness).sort_values(["open", "reason"])["reason"].iloc[0])
+    first = rows.assign(open=openness).sort_values(["open", "reason"])["reason"].iloc[0]
+    setting = "|".join(re.escape(f.label) for f in factors)
+    return re.sub(rf"probability [0-9.]+, | at ({setting}) \S+$", "", str(first))
 
 
 def forecast_table(plan: Plan) -> Table:

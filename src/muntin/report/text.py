@@ -2,14 +2,13 @@
 
 from __future__ import annotations
 
-import io
 import shlex
 from collections.abc import Sequence
 from pathlib import Path
 from typing import TYPE_CHECKING
 
 import pandas as pd
-from rich.console import Console, Group, RenderableType
+from rich.console import Group, RenderableType
 from rich.table import Table
 from rich.text import Text
 
@@ -19,11 +18,13 @@ from muntin.record.study import Study
 from muntin.report.advice_files import Place
 from muntin.report.cautions import cautions
 from muntin.report.plan_text import (
-    bridging_lines,
+    bridging_line,
+    first_conditions,
     forecast_table,
+    height,
     known_table,
     plan_heading,
-    plan_table,
+    plan_tables,
     usual_reason,
 )
 from muntin.report.words import (
@@ -46,7 +47,7 @@ if TYPE_CHECKING:
 
 Section = tuple[str, Sequence[RenderableType]]
 _FEW = 3
-_PLAN_LINES = 10
+_FIRST = 10
 _SCREEN_LINES = 40
 
 
@@ -93,25 +94,38 @@ def few(
     return [*lines[:most], *([f"and {rest} more: {where}"] if rest > 0 else [])]
 
 
-def check_lines(checks: Sequence[Check], told: Sequence[str] = ()) -> list[str]:
-    """Return the checks of the model: failures first, then what passed in short.
+def check_lines(
+    checks: Sequence[Check], told: Sequence[str] = (), labels: Sequence[str] = ()
+) -> list[str]:
+    """Return the checks of the model: failures first, then the names of those that passed.
 
-    `told` are sentences that stand elsewhere on the screen; here they are only counted.
+    `told` are sentences that stand elsewhere on the screen; here their checks are only named.
+    `labels` are those of the responses; where they are few, the coverage of each is said.
     """
     failed = sorted((c for c in checks if not c.passed), key=lambda c: not c.serious)
-    below = [c.name for c in failed if c.sentence in told]
-    lines = [f"FAILED: {_names(below)}; why is said with the window."] if below else []
+    below = [c for c in failed if c.sentence in told]
+    lines = [f"FAILED: {_named(below, checks, labels)}; why is said with the window."]
+    lines = lines if below else []
     said = [c for c in failed if c.sentence not in told]
-    lines += [f"{'FAILED' if c.serious else 'Note'}: {c.sentence}" for c in said]
+    lines += [f"{'FAILED' if c.serious else 'Note'} ({c.name}): {c.sentence}" for c in said]
     passed = [c for c in checks if c.passed]
     if passed:
-        names = _names([c.name for c in passed])
-        lines.append(f"Passed, {len(passed)} of {len(checks)}: {names}. {passed[0].sentence}")
+        names = _named(passed, checks, labels)
+        lines.append(f"Passed, {len(passed)} of {len(checks)}: {names}.")
+    if len(labels) <= _FEW:
+        lines += [c.sentence for c in passed if c.name == "coverage"]
     return lines
 
 
-def _names(names: Sequence[str]) -> str:
-    return ", ".join(dict.fromkeys(names))
+def _named(some: Sequence[Check], checks: Sequence[Check], labels: Sequence[str]) -> str:
+    """Name some of the checks, with their responses where not all of a name are among them."""
+    texts = []
+    for name in dict.fromkeys(check.name for check in some):
+        here = [check for check in some if check.name == name]
+        every = [check for check in checks if check.name == name]
+        of = [label for c in here for label in labels if c.sentence.startswith(f"{label}: ")]
+        texts.append(name if len(here) == len(every) else f"{name} ({', '.join(of)})")
+    return ", ".join(texts)
 
 
 def window_lines(view: Assessment, window: Window | None, most: int = _FEW) -> list[str]:
@@ -181,10 +195,12 @@ def standing(view: Assessment, window: Window | None, few_lines: int = _FEW) -> 
     awaited = labels(study.definition, view.awaited)
     notes = [f"Awaited: {awaited}; the advice is provisional."] if view.awaited else []
     told = () if window is None else window.unsupported
+    read = [r.label for r in study.definition.responses if r.name in view.stacks]
+    checks = check_lines(view.checks, told, read)
     return [
         ("Read", read_lines(study)),
         ("Noted", [*notes, *few(study.notices, few_lines)]),
-        ("Checks", few(check_lines(view.checks, told), few_lines + 1, "see --json")),
+        ("Checks", few(checks, few_lines + _FEW, "see --json")),
         ("Window", window_lines(view, window, few_lines)),
     ]
 
@@ -202,26 +218,36 @@ def assess_screen(
 
 
 def plan_sections(
-    view: Assessment, plan: Plan, lines: int = _PLAN_LINES, full: bool = True
+    view: Assessment, plan: Plan, table: RenderableType, full: bool = True
 ) -> list[Section]:
-    """Return the sections on the next plate, its test wells in about so many lines, and on its
+    """Return the sections on the next plate, with the table of its test wells, and on its
     forecast; its notices and bridging wells only in full.
     """
-    definition = view.study.definition
     told: list[RenderableType] = [plan_heading(plan)]
     if full:
         told += few(plan.notices, 2, "see --json")
-        told += few(bridging_lines(definition, plan.wells), 2, "see the plan's table")
+        told += bridging_line(view.study.definition, plan.wells)
     if view.fresh:
         told.append(f"{_capital(usual_reason(plan.wells))}.")
-    told.append(plan_table(definition, plan.wells, lines, not view.fresh))
-    return [("Next", told), ("Forecast", [forecast_table(plan)])]
+    early = "No forecast before the first readings."
+    forecast = early if view.fresh else forecast_table(plan)
+    return [("Next", [*told, table]), ("Forecast", [forecast])]
+
+
+def _tables(view: Assessment, plan: Plan) -> tuple[list[RenderableType], list[RenderableType]]:
+    """Tables of the test wells, those that say most first: of all of them, and of the first few."""
+    definition, why = view.study.definition, not view.fresh
+    whole: list[RenderableType] = [*plan_tables(definition, plan.wells, why)]
+    cut = [first_conditions(definition, plan.wells, most, why) for most in range(_FIRST, 0, -1)]
+    return whole, [*cut]
 
 
 def propose_screen(view: Assessment, plan: Plan, path: Path, remark: str) -> RenderableType:
     """Return the screen of `propose`."""
     written = ("Written", _plan_lines(path, remark))
-    return sheet(view.study.definition.title, [*plan_sections(view, plan), written])
+    whole, cut = _tables(view, plan)
+    sections = plan_sections(view, plan, [*whole, *cut][0])
+    return sheet(view.study.definition.title, [*sections, written])
 
 
 def _plan_lines(path: Path, remark: str) -> list[str]:
@@ -232,18 +258,27 @@ def _plan_lines(path: Path, remark: str) -> list[str]:
 def advice_screen(
     view: Assessment, window: Window | None, plan: Plan, place: Place
 ) -> RenderableType:
-    """Return the screen of `advise`, cut to 40 lines at 100 columns as far as that goes."""
-    shapes = [(lines, True) for lines in range(_PLAN_LINES, 2, -1)]
-    shapes += [(lines, False) for lines in range(4, 0, -1)]
-    for lines, full in shapes:
-        screen = _advice_sheet(view, window, plan, place, lines, full)
+    """Return the screen of `advise`, cut to 40 lines at 100 columns as far as that goes.
+
+    Notes go before reasons, reasons before conditions.
+    """
+    whole, cut = _tables(view, plan)
+    tables = [(table, full) for full in (True, False) for table in whole[:-1]]
+    tables += [(table, full) for table in whole[-1:] for full in (True, False)]
+    for table, full in [*tables, *((table, False) for table in cut)]:
+        screen = _advice_sheet(view, window, plan, place, table, full)
         if height(screen) <= _SCREEN_LINES:
             break
     return screen
 
 
 def _advice_sheet(
-    view: Assessment, window: Window | None, plan: Plan, place: Place, lines: int, full: bool
+    view: Assessment,
+    window: Window | None,
+    plan: Plan,
+    place: Place,
+    table: RenderableType,
+    full: bool,
 ) -> RenderableType:
     """The screen of `advise`; in short it leaves notes, bridging wells and what is fixed to the
     files.
@@ -254,16 +289,11 @@ def _advice_sheet(
         view.study.definition.title,
         [
             *standing(view, window, _FEW if full else 1),
-            *plan_sections(view, plan, lines, full),
+            *plan_sections(view, plan, table, full),
             ("Cautions", [said]),
             ("Written", written),
         ],
     )
-
-
-def height(screen: RenderableType, width: int = 100) -> int:
-    """Return the lines that a screen takes at so many columns."""
-    return len(Console(width=width, file=io.StringIO()).render_lines(screen))
 
 
 def new_screen(folder: Path, written: Sequence[Path]) -> RenderableType:
