@@ -125,6 +125,9 @@ def test_next_plate_follows_the_last_with_wells(tmp_path):
     assert next_plate(written(tmp_path / "two", EARLIER)) == "plate-03"
     many = written(tmp_path / "many", [EARLIER[0].head(2)] * 11)
     assert next_plate(many) == "plate-12"
+    few = written(tmp_path / "few", EARLIER).folder
+    (few / "plates" / "plate-02.csv").rename(few / "plates" / "plate-07.csv")
+    assert next_plate(muntin.open_study(few)) == "plate-08"
 
 
 # Notices.
@@ -181,7 +184,7 @@ def test_no_wells(view, wells):
 
 def test_more_wells_than_the_plate_has(view):
     assert faults(view, wells=85) == [
-        "wells: 85 is more than the plate has room for, 84 test wells (96 wells are free; "
+        "wells: 85 is more than the plate has room for; ask for 84 (96 wells are free; "
         "4 bridging wells and 8 controls come on top)"
     ]
     assert roles(muntin.propose(view, wells=84)) == {"test": 84, "bridge": 4, **CONTROLS}
@@ -190,7 +193,7 @@ def test_more_wells_than_the_plate_has(view):
 def test_more_wells_than_are_free(view):
     used = changed(view, plan={"free_wells": "A1:B12", "bridging_wells": 3})
     assert faults(used, wells=16) == [
-        "wells: 16 is more than the plate has room for, 15 test wells (24 wells are free; "
+        "wells: 16 is more than the plate has room for; ask for 15 (24 wells are free; "
         "3 bridging wells and 6 controls come on top)"
     ]
     plan = muntin.propose(used, wells=15)
@@ -201,7 +204,7 @@ def test_more_wells_than_the_protein_allows(view):
     # 24 wells were run: 10 - 2 - 6 = 2 mg are left, 8 wells of 0.25 mg; 10 come on top.
     scarce = {"available_mg": 10.0, "reserved_mg": 0.5, "per_well_mg": 0.25}
     assert faults(changed(view, protein=scarce), wells=5) == [
-        "wells: 5 is more than the protein allows, 4 test wells (3.5 mg left beyond the reserve; "
+        "wells: 5 is more than the protein allows; ask for 4 (3.5 mg left beyond the reserve; "
         "4 bridging wells and 8 controls come on top)"
     ]
     plan = muntin.propose(changed(view, protein=scarce), wells=4)
@@ -211,15 +214,15 @@ def test_more_wells_than_the_protein_allows(view):
 def test_protein_that_is_used_up(view):
     spent = {"available_mg": 6.0, "per_well_mg": 0.25}
     assert faults(changed(view, protein=spent), wells=1) == [
-        "wells: 1 is more than the protein allows, 0 test wells (0 mg left beyond the reserve; "
-        "4 bridging wells and 8 controls come on top)"
+        "wells: 1 is more than the protein allows; not even the bridging wells fit (0 mg left "
+        "beyond the reserve; 4 bridging wells and 8 controls come on top)"
     ]
 
 
 def test_both_reasons_in_one_report(view):
     scarce = {"available_mg": 10.0, "per_well_mg": 0.25}
     lines = faults(changed(view, protein=scarce), wells=200)
-    assert [line.split(",")[0] for line in lines] == [
+    assert [line.split(";")[0] for line in lines] == [
         "wells: 200 is more than the plate has room for",
         "wells: 200 is more than the protein allows",
     ]
@@ -228,7 +231,7 @@ def test_both_reasons_in_one_report(view):
 def test_an_opening_plate_needs_no_room_for_bridging_wells(tmp_path):
     fresh = muntin.assess(written(tmp_path / "study"), "quadratic")
     assert faults(fresh, wells=89) == [
-        "wells: 89 is more than the plate has room for, 88 test wells (96 wells are free; "
+        "wells: 89 is more than the plate has room for; ask for 88 (96 wells are free; "
         "0 bridging wells and 8 controls come on top)"
     ]
 
@@ -274,7 +277,10 @@ def test_opening_plate(tmp_path):
     assert plan.forecast["wrong_share"][1:].isna().all()
     assert plan.forecast["mg"][1] == 0.25 * (1 + 4 + 2)
     said = set(conditions(plan)["reason"])
-    assert said == {"opening plate: spread over the range to find where the target is met"}
+    assert said == {
+        "opening plate, spread to find where the target is met",
+        "well 2 of this condition: averages the noise",
+    }
     assert plan.notices == ()
 
 
@@ -328,9 +334,9 @@ def test_two_responses(tmp_path):
 def test_four_factors(tmp_path):
     factors = [PH, SALT, LOAD, RESIN]
     study = written(tmp_path / "study", [read(spread(factors, 16))], factors=factors)
-    plan = muntin.propose(muntin.assess(study, "quadratic"), wells=2)
+    plan = muntin.propose(muntin.assess(study, "quadratic"), wells=1)
     assert list(plan.wells.columns[2:6]) == ["ph", "salt", "load", "resin"]
-    assert roles(plan) == {"test": 2, "bridge": 4, **CONTROLS}
+    assert roles(plan) == {"test": 1, "bridge": 4, **CONTROLS}
 
 
 # No plan breaks what the study asks, whatever it asks.

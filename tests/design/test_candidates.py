@@ -2,6 +2,7 @@
 
 import numpy as np
 import pandas as pd
+import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
@@ -43,13 +44,13 @@ def test_run_conditions_go_by_target_and_are_told_once(tmp_path):
             "exclude": ["", "", "", "", "pipetted twice", "", ""],
         }
     )
+    # Of the others B1 was left out, B2 is a blank and B3 is awaited.
     again = pd.DataFrame({"ph": [5.5, 6.5], "salt": [100, 300], "recovery": [0.31, 0.92]})
     study = written(tmp_path / "study", [plate, again.assign(role="test")])
     assert run_conditions(study) == (
         RunCondition((5.0, 100.0), (("plate-01", "A1"), ("plate-01", "A3")), bridged=False),
         RunCondition((5.5, 100.0), (("plate-01", "A2"), ("plate-02", "A1")), bridged=True),
         RunCondition((6.0, 200.0), (("plate-01", "A4"),), bridged=False),
-        RunCondition((7.0, 400.0), (("plate-01", "B3"),), bridged=False),
         RunCondition((6.5, 300.0), (("plate-02", "A2"),), bridged=False),
     )
 
@@ -167,7 +168,7 @@ def test_plannable_says_which_rows_may_be_run():
 
 def test_levels_open_until_the_plate_has_its_most():
     made = definition(factors=[{**PH, "per_plate": 2}, SALT])
-    frame = candidate_frame(made, ())
+    frame = candidate_frame(made, (run(5.0, 100.0),))
     levels = Levels(made, frame)
     assert levels.open().all()
     first, second = (int(np.flatnonzero(frame["ph"] == ph)[3]) for ph in (5.0, 7.0))
@@ -179,6 +180,44 @@ def test_levels_open_until_the_plate_has_its_most():
     assert levels.open().sum() == 2 * 9
 
 
+def test_a_new_level_keeps_its_distance():
+    # Of 3 levels over 3 pH a new one lies a third of a pH from the others, or is one of them.
+    made = definition(factors=[{**PH, "step": 0.1, "per_plate": 3}, SALT])
+    frame = candidate_frame(made, (run(5.0, 100.0),))
+    levels = Levels(made, frame)
+    levels.use(int(np.flatnonzero(frame["ph"] == 5.5)[0]))
+    levels.use(int(np.flatnonzero(frame["ph"] == 6.0)[0]))
+    closed = set(frame["ph"]) - set(frame["ph"][levels.open()])
+    assert closed == {5.2, 5.3, 5.4, 5.6, 5.7, 5.8, 5.9, 6.1, 6.2, 6.3}
+
+
+def test_choices_keep_no_distance():
+    made = definition(factors=[PH, {**RESIN, "per_plate": 2}])
+    frame = candidate_frame(made, (run(5.0, "Alpha"),))
+    levels = Levels(made, frame)
+    levels.use(0)
+    assert levels.open().all()
+
+
+@pytest.mark.parametrize(
+    ("factor", "levels"),
+    [
+        ({**PH, "per_plate": 1}, {6.0}),
+        ({**PH, "per_plate": 2}, {4.5, 7.5}),
+        ({**PH, "per_plate": 3}, {4.5, 6.0, 7.5}),
+        ({**PH, "per_plate": 3, "plan_low": 5.5}, {5.5, 6.5, 7.5}),
+        ({**PH, "per_plate": 20}, {4.5, 5.0, 5.5, 6.0, 6.5, 7.0, 7.5}),
+    ],
+)
+def test_an_opening_plate_has_few_levels_evenly_over_the_range(factor, levels):
+    made = definition(factors=[factor, SALT])
+    opening = candidate_frame(made, ())
+    assert set(opening["ph"]) == levels
+    assert opening["salt"].nunique() == 9
+    later = candidate_frame(made, (run(6.0, 100.0),))
+    assert len(later) > len(opening) or len(levels) == 7
+
+
 @settings(deadline=None, derandomize=True, max_examples=60)
 @given(
     st.integers(1, 4),
@@ -187,7 +226,7 @@ def test_levels_open_until_the_plate_has_its_most():
 )
 def test_whatever_is_taken_from_the_open_ones_keeps_the_levels(ph, resin, choices):
     made = definition(factors=[{**PH, "per_plate": ph}, SALT, {**RESIN, "per_plate": resin}])
-    frame = candidate_frame(made, ())
+    frame = candidate_frame(made, (run(5.0, 100.0, "Alpha"),))
     levels, taken = Levels(made, frame), []
     for choice in choices:
         still = np.flatnonzero(levels.open())

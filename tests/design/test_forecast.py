@@ -4,8 +4,9 @@ from functools import reduce
 
 import numpy as np
 import pytest
-from scipy.special import logit, ndtr
+from scipy.special import logit, ndtr, ndtri
 
+from muntin.design.excursion import expected_wrong
 from muntin.design.forecast import Tails, wrong_share
 from muntin.design.outlook import Outlook
 from muntin.window.probability import Target, mean_meets
@@ -20,6 +21,7 @@ STUDIES = [
     (("positive", BELOW),),
     (("real", BETWEEN),),
     (("fraction", Target(low=0.3, high=0.9)),),
+    (("real", Target(low=0.1, high=0.3)),),
     (("fraction", ABOVE), ("positive", BELOW)),
     (("fraction", ABOVE), ("real", BETWEEN), ("positive", BELOW)),
 ]
@@ -54,9 +56,10 @@ def test_without_wells_it_is_todays_share(surfaces, study):
     assert share > 0.005
 
 
-def latent(link, value):
+def latent(link, value, ceiling):
     if link == "logit":
-        return -np.inf if value < 0.0 else (np.inf if value > 1.0 else logit(value))
+        share = value / ceiling
+        return -np.inf if share <= 0.0 else (np.inf if share >= 1.0 else logit(share))
     if link == "log":
         return -np.inf if value <= 0.0 else np.log(value)
     return value
@@ -69,7 +72,8 @@ def drawn_share(outlooks, targets, draws=30_000):
         mean, total, explained = ahead.mean[0], ahead.variance[0], ahead.explained[0]
         z = rng.standard_normal((draws, 1))
         moved, left = mean + np.sqrt(explained) * z, np.sqrt(total - explained)
-        low, high = (latent(ahead.surface.link, v) for v in (target.low, target.high))
+        link, (ceiling,) = ahead.surface.link, ahead.surface.errors.ceiling
+        low, high = (latent(link, v, ceiling) for v in (target.low, target.high))
         joint.append(ndtr((high - moved) / left) - ndtr((low - moved) / left))
     p = reduce(np.multiply, joint)
     return np.minimum(p, 1.0 - p).mean()
@@ -87,6 +91,19 @@ def test_what_wells_bring_agrees_with_drawn_readings(study):
     gain = before - wrong_share(outlooks, tails)
     assert gain == pytest.approx(before - drawn_share(outlooks, targets), rel=0.03)
     assert gain > 0.1 * before
+
+
+def test_nodes_that_disagree_are_part_of_what_is_not_known(surfaces):
+    # One limit has a closed form, in the share of the whole variance that the wells explain.
+    posterior = surfaces["fraction"]
+    ahead, w = outlook(posterior, [3, 8]), posterior.weights
+    p = today(posterior, ABOVE).above
+    between = w @ (ahead.mean - w @ ahead.mean) ** 2
+    within = w @ ahead.variance
+    rho = (w @ ahead.explained) / (within + between)
+    share = wrong_share([ahead], [Tails(above=p, below=None)])
+    assert share == pytest.approx(expected_wrong(ndtri(p), rho).mean(), rel=1e-9)
+    assert between.sum() > 0.02 * within.sum()
 
 
 @pytest.mark.parametrize("study", STUDIES)

@@ -25,24 +25,26 @@ def said(picks, p_mean, p_now=None, opening=False, definition=DEFINITION, candid
 
 
 @pytest.mark.parametrize(
-    ("purpose", "p", "sentence"),
+    ("purpose", "p", "now", "sentence"),
     [
-        ("edge", 0.5, "probability 0.47, on the edge at pH 5.6"),
-        ("edge", 0.16, "probability 0.47, on the edge at pH 5.6"),
-        ("edge", 0.84, "probability 0.47, on the edge at pH 5.6"),
-        ("edge", 0.1, "probability 0.47, secures the fail side at pH 5.6"),
-        ("edge", 0.9, "probability 0.47, secures the pass side at pH 5.6"),
+        ("edge", 0.5, 0.468, "probability 0.47, on the edge at pH 5.6"),
+        ("edge", 0.2, 0.11, "probability 0.11, on the edge at pH 5.6"),
+        ("edge", 0.95, 0.89, "probability 0.89, on the edge at pH 5.6"),
+        ("edge", 0.2, 0.09, "probability 0.09, outside the edge at pH 5.6"),
+        ("edge", 0.97, 0.9, "probability 0.90, inside the edge at pH 5.6"),
         (
             "edge",
             0.99,
-            "probability 0.47, reads the new plate's own error where the target is safe",
+            0.93,
+            "probability 0.93, reads the new plate's own error where the target is met",
         ),
-        ("best", 0.99, "probability 0.47, may beat the best condition so far"),
+        ("edge", 0.99, 0.6, "probability 0.60, on the edge at pH 5.6"),
+        ("best", 0.99, 0.97, "probability 0.97, may beat the best condition so far"),
     ],
 )
-def test_a_condition_that_was_not_run(purpose, p, sentence):
-    # The side follows the process mean; the number is the judged probability, as in p_now.
-    assert said([Pick(0, "test", purpose)], [p], [0.468]) == [sentence]
+def test_a_condition_that_was_not_run(purpose, p, now, sentence):
+    # The number is the judged probability, as in p_now.
+    assert said([Pick(0, "test", purpose)], [p], [now]) == [sentence]
 
 
 def test_a_condition_that_was_run_names_its_last_well():
@@ -87,8 +89,8 @@ def test_further_wells_of_a_condition_are_counted_over_the_whole_plan():
 def test_an_opening_plate_spreads():
     picks = [Pick(0, "test", "edge"), Pick(2, "test", "edge"), Pick(0, "test", "edge")]
     assert said(picks, [0.5, 0.4, 0.5], opening=True) == [
-        "opening plate: spread over the range to find where the target is met",
-        "opening plate: spread over the range to find where the target is met",
+        "opening plate, spread to find where the target is met",
+        "opening plate, spread to find where the target is met",
         "well 2 of this condition: averages the noise",
     ]
 

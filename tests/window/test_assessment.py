@@ -181,7 +181,7 @@ KEPT = [
 
 @pytest.mark.parametrize(("within", "widths", "allowed"), KEPT)
 def test_p_kept_agrees_with_settings_spread_within(view, within, widths, allowed):
-    # 25 settings of each factor at the middles of even shares; three points stand for them.
+    # 15 settings of each factor at the middles of even shares; three points stand for them.
     factors = [
         {**f, "kept_within": within[f["name"]]} if f["name"] in within else f for f in FACTORS
     ]
@@ -193,8 +193,8 @@ def test_p_kept_agrees_with_settings_spread_within(view, within, widths, allowed
     ph, salt = widths(edge)
     moved = [
         edge.assign(ph=edge["ph"] + u * ph, salt=edge["salt"] + v * salt)
-        for u in np.linspace(-0.96, 0.96, 25)
-        for v in np.linspace(-0.96, 0.96, 25)
+        for u in (np.arange(15) - 7.0) / 7.5
+        for v in (np.arange(15) - 7.0) / 7.5
     ]
     exact = kept.judged(pd.concat(moved), "well").reshape(len(moved), -1).mean(axis=0)
     np.testing.assert_allclose(kept.at(edge)["p_kept"], exact, atol=allowed)
@@ -233,7 +233,7 @@ def test_window_follows_what_is_judged(view, by):
     p = table["p_mean"]
     assert window.wrong_share == pytest.approx(np.minimum(p, 1.0 - p).mean(), rel=1e-8)
     assert window.share == (table[f"p_{by}"] >= 0.9).mean()
-    assert window.setpoint["probability"] >= table[f"p_{by}"].max() - 1e-3
+    assert window.setpoint["probability"] >= table[f"p_{by}"].max() - 5e-3
 
 
 def test_kept_is_the_default_only_where_a_tolerance_is_given(view):
@@ -245,7 +245,7 @@ def test_kept_is_the_default_only_where_a_tolerance_is_given(view):
 def test_a_higher_requirement_gives_a_smaller_window(view):
     shares = [
         changed(view, study={"required_probability": p}).window().share
-        for p in (0.5, 0.8, 0.95, 0.999)
+        for p in (0.5, 0.8, 0.95, 0.995)
     ]
     assert shares == sorted(shares, reverse=True)
     assert shares[0] > shares[-1] > 0.0
@@ -270,9 +270,9 @@ def test_nothing_run_speaks_from_the_prior(tmp_path):
     assert view.awaited == ()
     table = view.at(ASKED)
     assert "shift_mean" not in table
-    # The prior of a fraction is centred on 1/2 and wide.
-    np.testing.assert_allclose(table["recovery_mean"], 0.5, atol=0.02)
-    assert (table["recovery_high"] - table["recovery_low"] > 0.9).all()
+    # The prior of a fraction is centred on half of its ceiling, some per cent below 1, and wide.
+    assert table["recovery_mean"].between(0.46, 0.49).all()
+    assert (table["recovery_high"] - table["recovery_low"] > 0.85).all()
 
 
 def test_an_awaited_response_withholds_the_joint_probability(tmp_path):

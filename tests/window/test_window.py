@@ -88,6 +88,17 @@ def test_setpoint_lies_in_the_middle_of_a_plateau():
     assert window.setpoint["salt"] == 250.0
 
 
+def test_setpoint_lies_in_the_middle_of_what_ties_to_half_a_per_cent():
+    made = definition()
+
+    def tilted(grid):
+        p = 0.98 + 0.0045 * (grid["ph"] - 5.0) / 2.0
+        return np.where(grid["ph"].between(5.0, 7.0), p, 0.2)
+
+    assert judge(made, tilted).setpoint["ph"] == 6.0
+    assert judge(made, lambda grid: 5.0 * tilted(grid) - 4.0).setpoint["ph"] > 6.0
+
+
 def test_setpoint_of_choices_only():
     made = definition(factors=[RESIN])
     window = judge(made, [0.2, 0.95, 0.6])
@@ -123,6 +134,13 @@ def test_ranges_hold_for_the_choice_of_the_setpoint():
     made = definition(factors=[RESIN, PH])
     window = judge(made, lambda g: np.where((g["resin"] == "Gamma") & (g["ph"] > 5.9), 0.99, 0.1))
     assert window.ranges == {"resin": ("Gamma", "Gamma"), "ph": (6.0, 7.5)}
+
+
+def test_ranges_never_run_over_choices():
+    made = definition(factors=[RESIN, PH])
+    window = judge(made, lambda grid: np.where(grid["resin"] == "Alpha", 0.95, 0.99))
+    assert window.ranges["resin"] in {("Beta", "Beta"), ("Gamma", "Gamma")}
+    assert window.ranges["ph"] == (4.5, 7.5)
 
 
 def test_ranges_grow_to_both_sides_of_a_ridge():
