@@ -137,6 +137,81 @@ def test_a_factor_with_choices_gets_a_panel_a_choice(tmp_path: Path) -> None:
     assert sum(points(axes, "set point") + points(axes, "best so far") for axes in every) == 1
 
 
+NAMED = '["Resin A", "Resin B", "Resin C"]'
+CORNERS = pd.DataFrame(
+    {
+        "well": ["A1", "A2", "A3", "A4"],
+        "role": "test",
+        "ph": [4.5, 7.5, 7.5, 4.5],
+        "salt": [50.0, 450.0, 50.0, 450.0],
+        "resin": ["Resin A", "Resin B", "Resin A", "Resin C"],
+    }
+)
+THREE_RESINS = {
+    "study.toml": WITH_RESIN["study.toml"].replace('["A", "B"]', NAMED),
+    "plates/plate-01.csv": plate(column="resin", value="Resin A|Resin B|Resin C"),
+}
+
+
+def test_a_choice_that_begins_with_the_label_heads_its_panel_alone(tmp_path: Path) -> None:
+    figure, *_ = drawn(tmp_path, THREE_RESINS, CORNERS)
+    titles = [axes.get_title(loc="left") for axes in panels(figure)]
+    assert titles == ["Resin A", "Resin B", "Resin C"]
+
+
+def test_marks_at_the_border_are_whole(tmp_path: Path) -> None:
+    figure, *_ = drawn(tmp_path, THREE_RESINS, CORNERS)
+    figure.draw_without_rendering()
+    points_per_inch = 72.0
+    for axes in panels(figure):
+        assert all(not line.get_clip_on() for line in lines(axes, "proposed"))
+        box = axes.get_window_extent()
+        for line in axes.get_lines():
+            if line.get_clip_on() and line.get_label().startswith("run"):
+                at = axes.transData.transform(line.get_xydata())
+                radius = line.get_markersize() / 2 * figure.dpi / points_per_inch
+                assert (at - radius > box.min).all()
+                assert (at + radius < box.max).all()
+
+
+def test_name_of_the_colours_is_no_taller_than_the_panels(tmp_path: Path) -> None:
+    figure, *_ = drawn(tmp_path, THREE_RESINS, CORNERS)
+    figure.draw_without_rendering()
+    name = figure.axes[-1].yaxis.label.get_window_extent()
+    panel = panels(figure)[0].get_window_extent()
+    assert panel.y0 <= name.y0 < name.y1 <= panel.y1
+    assert name.x1 <= figure.bbox.x1
+
+
+def test_name_of_the_edge_lies_on_it_and_apart_from_the_marks(tmp_path: Path) -> None:
+    figure, *_ = drawn(tmp_path, SMALL, CORNERS.drop(columns="resin"))
+    figure.draw_without_rendering()
+    (axes,) = panels(figure)
+    (name,) = [text for text in axes.texts if text.get_text() == "0.90"]
+    box = name.get_window_extent()
+    middle = np.array([(box.x0 + box.x1) / 2, (box.y0 + box.y1) / 2])
+    edge = axes.collections[1].get_paths()
+    on_edge = np.concatenate([axes.transData.transform(path.vertices) for path in edge])
+    assert np.linalg.norm(on_edge - middle, axis=1).min() < 3
+    marks = [axes.transData.transform(line.get_xydata()) for line in axes.get_lines()]
+    nearest = min(np.linalg.norm(at - middle, axis=1).min() for at in marks if len(at))
+    assert nearest > box.width
+    assert name.get_zorder() > max(line.get_zorder() for line in axes.get_lines())
+
+
+@pytest.mark.parametrize("files", [WITH_LOAD, ONE], ids=["panels", "line"])
+def test_required_probability_is_named_beside_the_panel(
+    tmp_path: Path, files: dict[str, str]
+) -> None:
+    plan = PLAN if files is WITH_LOAD else PLAN[["well", "role", "salt"]]
+    figure, *_ = drawn(tmp_path, files, plan)
+    figure.draw_without_rendering()
+    axes = panels(figure)[0]
+    (name,) = [text for text in axes.texts if text.get_text().startswith("required")]
+    assert name.get_window_extent().x0 > axes.get_window_extent().x1
+    assert name.get_window_extent().x1 <= figure.bbox.x1
+
+
 def test_more_factors_get_a_panel_each(tmp_path: Path) -> None:
     figure, *_ = drawn(tmp_path, WITH_LOAD)
     every = panels(figure)

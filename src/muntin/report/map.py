@@ -68,20 +68,22 @@ def draw_map(
     panels: list[Axes] = list(grid.flat)
     shade = None
     for axes, choice in zip(panels, choices, strict=True):
-        factor_axis(axes, x, "x")
-        factor_axis(axes, y, "y")
+        for factor, which in ((x, "x"), (y, "y")):
+            factor_axis(axes, factor, which, 0.06 if columns > 2 else 0.03)
         dress(axes)
         axes.label_outer()
         if panel is not None:
-            axes.set_title(f"{panel.label} {choice}", loc="left", fontsize=10, color=INK)
+            axes.set_title(panel.named(str(choice)), loc="left", fontsize=10, color=INK)
         if window is not None:
-            shade = _shade(axes, definition, _of(window.grid, panel, choice), x, y, panel is None)
+            shade = _shade(axes, definition, _of(window.grid, panel, choice), x, y)
             set_point = window.setpoint
             if panel is None or set_point[panel.name] == choice:
                 _box(axes, window, x, y)
                 mark_set_point(axes, window, float(set_point[x.name]), float(set_point[y.name]))
         mark_run(axes, _of(run, panel, choice), x.name, y.name)
         mark_proposed(axes, _of(proposed, panel, choice), x.name, y.name)
+        if window is not None and panel is None:
+            _name_edge(axes, definition.required_probability)
     if shade is not None:
         _colour_bar(figure, shade, panels, definition)
     figure_legend(figure, panels)
@@ -93,7 +95,7 @@ def _of(table: pd.DataFrame, panel: Factor | None, choice: str | None) -> pd.Dat
 
 
 def _shade(
-    axes: Axes, definition: Definition, grid: pd.DataFrame, x: Factor, y: Factor, single: bool
+    axes: Axes, definition: Definition, grid: pd.DataFrame, x: Factor, y: Factor
 ) -> QuadContourSet | None:
     """Shade probability in tenths and draw the edge; what limits forbid is hatched."""
     table = grid.pivot(index=y.name, columns=x.name, values="probability")
@@ -108,12 +110,37 @@ def _shade(
     )
     required = definition.required_probability
     if p.min() < required < p.max():
-        edge = axes.contour(across, up, p, levels=[required], colors=INK, linewidths=1.8, zorder=2)
+        axes.contour(across, up, p, levels=[required], colors=INK, linewidths=1.8, zorder=2)
         axes.plot([], [], color=INK, linewidth=1.8, label=f"edge, {chance_text(required)}")
-        if single:
-            for label in axes.clabel(edge, fmt=chance_text(required), fontsize=9, inline=False):
-                label.set_path_effects(halo(3.0))
     return shade
+
+
+def _name_edge(axes: Axes, required: float) -> None:
+    """Write the required probability on the edge, where it lies farthest from markers and ends."""
+    to_panel = axes.transData + axes.transAxes.inverted()
+    contours = axes.collections[1:]
+    edge = [to_panel.transform(path.vertices) for c in contours for path in c.get_paths()]
+    if not edge:
+        return
+    points = np.concatenate(edge)
+    marks = np.concatenate(
+        [[[-9.0, -9.0]], *(to_panel.transform(line.get_xydata()) for line in axes.get_lines())]
+    )
+    apart = np.linalg.norm(points[:, None] - marks, axis=2).min(axis=1)
+    room = np.minimum(apart, 2.0 * np.minimum(points, 1.0 - points).min(axis=1))
+    x, y = points[np.argmax(room)]
+    axes.text(
+        x,
+        y,
+        chance_text(required),
+        transform=axes.transAxes,
+        ha="center",
+        va="center",
+        fontsize=9,
+        color=INK,
+        path_effects=halo(3.0),
+        zorder=8,
+    )
 
 
 def _bar(axes: Axes, across: Array, up: Array) -> None:
@@ -163,7 +190,7 @@ def _colour_bar(
     says = {
         "mean": "Probability that the process mean passes",
         "well": "Probability that a new well passes",
-        "kept": "Probability that a new well passes, factors kept within ±",
+        "kept": "Probability that a new well passes,\nfactors kept within ±",
     }
     bar = figure.colorbar(shade, ax=every, pad=0.02, shrink=0.9, aspect=30)
     bar.set_label(says[definition.judged_by], color=INK, fontsize=9)

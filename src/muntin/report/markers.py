@@ -46,7 +46,7 @@ def mark_run(axes: Axes, table: pd.DataFrame, x: str, y: str) -> None:
 
 
 def mark_proposed(axes: Axes, table: pd.DataFrame, x: str, y: str) -> None:
-    """Mark conditions of the next plate by diamonds."""
+    """Mark conditions of the next plate by diamonds, whole ones at the border of the range too."""
     if not len(table):
         return
     axes.plot(
@@ -60,6 +60,7 @@ def mark_proposed(axes: Axes, table: pd.DataFrame, x: str, y: str) -> None:
         markeredgewidth=1.8,
         path_effects=halo(3.4),
         label="proposed",
+        clip_on=False,
         zorder=5,
     )
 
@@ -76,24 +77,26 @@ def mark_set_point(axes: Axes, window: Window, x: float, y: float) -> None:
         markeredgecolor=INK,
         markeredgewidth=1.2,
         label="set point" if window.share else "best so far",
+        clip_on=False,
         zorder=7,
     )
 
 
 def required_line(axes: Axes, required: float) -> None:
-    """Draw the required probability across a panel whose y axis is probability."""
+    """Draw the required probability across a panel whose y axis is probability.
+
+    It is named beside the panel, where no curve or marker can hide it.
+    """
     axes.axhline(required, color=INK, linewidth=1, linestyle=(0, (4, 3)), zorder=1)
     axes.annotate(
-        f"required {chance_text(required)}",
+        f"required\n{chance_text(required)}",
         (1.0, required),
         xycoords=("axes fraction", "data"),
-        xytext=(-2, -3),
+        xytext=(7, 0),
         textcoords="offset points",
-        ha="right",
-        va="top",
+        va="center",
         fontsize=8,
         color=INK,
-        path_effects=halo(2.5),
     )
 
 

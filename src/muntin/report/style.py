@@ -57,12 +57,15 @@ def dress(axes: Axes) -> None:
     axes.yaxis.label.set_color(INK)
 
 
-def factor_axis(axes: Axes, factor: Factor, which: str) -> None:
-    """Label the "x" or "y" axis by a factor with a range, on the factor's scale."""
+def factor_axis(axes: Axes, factor: Factor, which: str, margin: float = 0.03) -> None:
+    """Label the "x" or "y" axis by a factor with a range, on the factor's scale.
+
+    `margin` is the share of the range that is left free beyond each end.
+    """
     low, high, _ = factor.span
     label = axis_label(factor.label, factor.unit)
-    margin = 0.03 * (high - low)
-    ends = (low / 1.05, high * 1.05) if factor.scale == "log" else (low - margin, high + margin)
+    more = (high / low) ** margin if factor.scale == "log" else margin * (high - low)
+    ends = (low / more, high * more) if factor.scale == "log" else (low - more, high + more)
     axes.set(**{f"{which}label": label, f"{which}scale": factor.scale, f"{which}lim": ends})
     if factor.scale == "log":
         plain_ticks(axes.xaxis if which == "x" else axes.yaxis)
