@@ -142,6 +142,15 @@ def test_awaited_response_makes_the_plan_provisional(tmp_path):
     assert said in plan.notices
 
 
+def test_plates_without_a_reading_are_told(tmp_path):
+    plates = [EARLIER[0], *[plate.assign(recovery="") for plate in EARLIER]]
+    view = muntin.assess(written(tmp_path / "study", plates), "quadratic")
+    said = "no reading yet of plate-02, plate-03: the plan does not know of wells there"
+    assert said in muntin.propose(view, wells=3).notices
+    none = muntin.assess(written(tmp_path / "read", EARLIER), "quadratic")
+    assert not any("no reading yet" in n for n in muntin.propose(none, wells=3).notices)
+
+
 def test_bridging_wells_that_cannot_be_are_told(view):
     # Nothing was run at pH 4.5 with 450 mM.
     narrow = changed(view, factors=[{**PH, "plan_high": 4.5}, {**SALT, "plan_low": 450}])

@@ -310,6 +310,12 @@ def test_an_opening_plate_of_some_size_begins_and_ends_with_its_centre(
     assert alone == []
 
 
+def test_a_later_plate_has_no_centre_of_its_own(view):
+    chosen = select(changed(view, plan={"bridging_wells": 0}), 8, "edge", 1)
+    values = list(conditions(chosen, chosen.picks).itertuples(index=False, name=None))
+    assert (6.0, 250.0) not in (values[0], values[-1])
+
+
 @pytest.mark.parametrize("aim", ["best", "both"])
 def test_an_opening_plate_with_another_aim(tmp_path, aim):
     view = muntin.assess(written(tmp_path / "study"), "gp")

@@ -116,6 +116,21 @@ def test_shared_errors_group_by_target(tmp_path):
     assert len(shared_by(study.definition, hcp).inside) == 3
 
 
+def test_a_shared_error_may_touch_some_responses_only():
+    errors = [
+        {"by": ["plate"], "acts": "scale", "responses": ["recovery", "shift"]},
+        {"by": ["plate", "ph"], "acts": "inside", "responses": ["recovery"]},
+        {"by": ["ph"], "acts": "inside"},
+    ]
+    made = definition(responses=RESPONSES, shared_errors=errors)
+    shared = {r.name: shared_by(made, r) for r in made.responses}
+    assert shared["recovery"].scale == (("plate",),)
+    assert shared["recovery"].inside == (("plate", "ph"), ("ph",))
+    assert shared["hcp"].inside == (("ph",),)
+    assert shared["shift"].inside == (("plate",), ("ph",))
+    assert shared["hcp"].scale == shared["shift"].scale == ()
+
+
 def test_group_numbers_follow_first_appearance():
     frame = pd.DataFrame({"plate": ["b", "a", "b"], "ph": [5.1, 5.0, 5.0], "ph_target": 5.0})
     made = definition()

@@ -40,7 +40,7 @@ WIDE = [
 def test_coarsening_keeps_ends_steps_and_choices(factors, most):
     grid, regular = judged_grid(definition(*factors), most)
     assert regular
-    assert 0.5 * most < len(grid) <= most
+    assert 0.75 * most < len(grid) <= most
     assert len(grid) == np.prod([grid[factor["name"]].nunique() for factor in factors])
     for factor in factors:
         values = grid[factor["name"]]
