@@ -239,9 +239,9 @@ def test_more_wells_than_the_plate_or_the_protein_has(tmp_path: Path, command: s
         2,
         "",
         [
-            "wells: 90 is more than the plate has room for, 84 test wells "
+            "wells: 90 is more than the plate has room for; ask for 84 "
             f"(96 wells are free; {on_top})",
-            "wells: 90 is more than the protein allows, 18 test wells "
+            "wells: 90 is more than the protein allows; ask for 18 "
             f"(7 mg left beyond the reserve; {on_top})",
         ],
     )

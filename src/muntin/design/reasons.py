@@ -33,7 +33,8 @@ def reasons(
         elif opening:
             said.append("opening plate, spread to find where the target is met")
         else:
-            at = f"{definition.factors[0].label} {_value(values[0])}"
+            first = definition.factors[0]
+            at = first.named(first.shown(values[0]))
             said.append(_reason(pick, p, now, at, _place(run.get(values, ()))))
     return said
 
@@ -55,7 +56,3 @@ def _reason(pick: Pick, p: float, now: float, at: str, place: str) -> str:
 
 def _place(wells: tuple[tuple[str, str], ...]) -> str:
     return " ".join(wells[-1]) if wells else ""
-
-
-def _value(value: object) -> str:
-    return f"{value:g}" if isinstance(value, float | int) else str(value)
