@@ -49,7 +49,7 @@ def test_a_condition_that_was_not_run(purpose, p, now, sentence):
 
 def test_a_condition_that_was_run_names_its_last_well():
     picks = [Pick(1, "test", "edge")]
-    assert said(picks, [0.6]) == ["repeats plate-02 A1: probability 0.60, on the edge at pH 6"]
+    assert said(picks, [0.6]) == ["repeats plate-02 A1: probability 0.60, on the edge at pH 6.0"]
     picks = [Pick(1, "test", "best")]
     sentence = "repeats plate-02 A1: probability 0.60, may beat the best condition so far"
     assert said(picks, [0.6]) == [sentence]

@@ -75,8 +75,9 @@ def test_log_marginal_likelihood_and_its_gradient():
 def test_leave_one_out():
     """Rasmussen & Williams 2006, eqs 5.10 to 5.12, though two conditions are collapsed to cells."""
     model, evidence, _ = reference()
+    prior = evidence.prior_variance(model.cells)
     loo = leave_one_out(
-        model.cells, model.likelihood(evidence.theta), evidence.approximation, np.zeros(1)
+        model.cells, model.likelihood(evidence.theta), evidence.approximation, np.zeros(1), prior
     )
     assert loo.mean == pytest.approx(KNOWN["loo_mean"], abs=1e-7)
     assert loo.sd**2 == pytest.approx(KNOWN["loo_var"], abs=1e-7)

@@ -195,7 +195,9 @@ def _notices(view: Assessment, selection: Selection) -> tuple[str, ...]:
     if view.study.definition.plan.bridging_wells and not view.fresh and not bridged:
         notices.append("no bridging wells: no earlier condition lies in the plan's range")
     enough = _enough(selection.forecast)
-    if not view.fresh and enough < len(selection.forecast) - 1:
+    if not view.fresh and enough == 0:
+        notices.append("these wells would bring nothing more about the edge")
+    elif not view.fresh and enough < len(selection.forecast) - 1:
         word = "well" if enough == 1 else "wells"
         last, some = 100.0 * selection.forecast[-1], 100.0 * selection.forecast[enough]
         notices.append(

@@ -125,8 +125,8 @@ class Levels:
             if len(used) >= self._most[factor.name]:
                 keep &= again
             elif factor.continuous:
-                low, high, _ = factor.span
-                apart = (high - low) / (3.0 * self._most[factor.name])
+                levels = factor.plan_levels()
+                apart = (levels[-1] - levels[0]) / (3.0 * self._most[factor.name])
                 x = self.frame[factor.name].to_numpy(dtype=float)
                 away = np.abs(x[:, None] - np.array(sorted(used), dtype=float)).min(axis=1)
                 keep &= again | (away >= apart)

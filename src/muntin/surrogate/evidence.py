@@ -110,6 +110,10 @@ class Evidence:
         """Log evidence (S,)."""
         return self.approximation.log_evidence
 
+    def prior_variance(self, cells: Cells) -> Array:
+        """Prior variance (S, C) of the latent value of each cell."""
+        return (self.root**2).sum(axis=2)[:, cells.latent]
+
 
 def joined(rounds: Sequence[Evidence]) -> Evidence:
     """The evidence of several rounds of nodes as one."""
@@ -150,6 +154,7 @@ def slope(model: Model, evidence: Evidence) -> Array:
     inside, gap = layout.inside, []
     if layout.ceiling:
         ceiling = layout.ceiling_of(evidence.theta)
-        slope_gap = -(1.0 - ceiling) / ceiling * approx.tilted.ceiling_slope.sum(1)
+        moving = np.where(ceiling > 0.5, (1.0 - ceiling) / ceiling, 0.0)
+        slope_gap = -moving * approx.tilted.ceiling_slope.sum(1)
         gap.append(slope_gap[:, None])
     return np.concatenate([noise, family[:, :inside], *scale, *gap, family[:, inside:]], axis=1)

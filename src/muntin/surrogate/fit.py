@@ -95,7 +95,11 @@ def fit_surrogate(
     posterior = integrate(model, seed)
     evidence, weights = posterior.evidence, np.exp(posterior.log_weights)
     loo = leave_one_out(
-        model.cells, model.likelihood(evidence.theta), evidence.approximation, posterior.log_weights
+        model.cells,
+        model.likelihood(evidence.theta),
+        evidence.approximation,
+        posterior.log_weights,
+        evidence.prior_variance(model.cells),
     )
     return Fit(
         name=name,

@@ -32,9 +32,18 @@ class LeaveOneOut:
 
 
 def leave_one_out(
-    cells: Cells, lik: CellLikelihood, approx: Approximation, log_weights: Array
+    cells: Cells,
+    lik: CellLikelihood,
+    approx: Approximation,
+    log_weights: Array,
+    prior_variance: Array,
 ) -> LeaveOneOut:
-    """Predictions of every reading from the others, averaged over S nodes of log weights (S,)."""
+    """Predictions of every reading from the others, averaged over S nodes of log weights (S,).
+
+    prior_variance (S, C): of the latent value of each cell. A cavity wider than the prior is no
+    posterior (a wild well nearby bends the sites); such a node says nothing of that reading, as
+    long as others do.
+    """
     c = cells.cell
     others = _others(cells, lik)
     cavity = Pair(**{k: v[:, c] for k, v in vars(approx.cavity).items()})
@@ -54,11 +63,20 @@ def leave_one_out(
     square = (points.w * ((centre - mean[..., None]) ** 2 + variance)).sum(-1)
     pit = (points.w * _normal_cdf((cells.y[:, None] - centre) / np.sqrt(variance))).sum(-1)
     log_w = log_weights[:, None] - log_p
+    absurd = (approx.cavity.uu > 1.001 * prior_variance) | (approx.cavity.ss > 1.001)
+    absurd = (absurd & ~absurd.all(axis=0))[:, c]
+    log_w = np.where(absurd, -np.inf, log_w) + _lost(log_weights, absurd)
     log_density = -np.logaddexp.reduce(log_w)
     w = np.exp(log_w + log_density)
     total = (w * mean).sum(0)
     spread = (w * (square + (mean - total) ** 2)).sum(0)
     return LeaveOneOut(log_density, total, np.sqrt(spread), (w * pit).sum(0))
+
+
+def _lost(log_weights: Array, absurd: NDArray[np.bool_]) -> Array:
+    """Log of the factor (n,) that makes up for the weight of the nodes left out."""
+    kept = np.where(absurd, -np.inf, log_weights[:, None])
+    return -np.logaddexp.reduce(kept)
 
 
 def _others(cells: Cells, lik: CellLikelihood) -> CellLikelihood:

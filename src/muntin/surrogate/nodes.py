@@ -163,7 +163,8 @@ class Surface:
 
     def thresholds(self, value: float) -> Array:
         """Latent values (S, 1) at which the process mean is `value` (natural unit)."""
-        return latent_of(self.link, value, self.errors.ceiling[:, None])
+        ceiling = self.errors.ceiling[:, None]
+        return np.broadcast_to(latent_of(self.link, value, ceiling), ceiling.shape)
 
     def lightened(self, most: int) -> Surface:
         """The surface on at most so many nodes: systematic resampling, weights by count."""

@@ -32,7 +32,10 @@ def judged_grid(
     grid = _allowed(definition, _product(definition, coarsened(definition, levels, most)))
     if len(grid) < _FEW and np.prod([float(len(v)) for v in levels]) <= _MANY:
         # Narrow limits fall between coarse levels: take every step that they allow.
-        grid = _allowed(definition, _product(definition, levels)).iloc[:most]
+        grid = _allowed(definition, _product(definition, levels))
+        if len(grid) > most:
+            rows = np.round(np.linspace(0, len(grid) - 1, most)).astype(int)
+            return grid.iloc[rows].reset_index(drop=True), False
     return grid, True
 
 

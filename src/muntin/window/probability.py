@@ -120,9 +120,12 @@ def process_quantile(surface: Surface, moments: tuple[Array, Array], level: floa
     mean, variance = moments
     sd, ceiling = np.sqrt(variance), surface.errors.ceiling[:, None]
     low, high = (mean - 8.0 * sd).min(0), (mean + 8.0 * sd).max(0)
-    for _ in range(40):
+    if surface.link == "logit":
+        # The bisection runs over logits under a ceiling of 1; a lower ceiling lowers them.
+        least = mean_of("logit", np.minimum(mean - 8.0 * sd, 30.0), ceiling)
+        low = latent_of("logit", least).min(axis=0)
+    for _ in range(50):
         middle = 0.5 * (low + high)
-        # The bisection runs over latent values of a ceiling of 1; each node has its own.
         own = latent_of(surface.link, mean_of(surface.link, middle), ceiling)
         under = surface.weights @ _below((own - mean) / sd) < level
         low, high = np.where(under, middle, low), np.where(under, high, middle)
