@@ -170,9 +170,10 @@ def test_fewer_wells_that_would_do_are_told(view):
     (said,) = (notice for notice in plan.notices if "would do" in notice)
     share = plan.forecast["wrong_share"]
     enough = int(np.argmax(share[0] - share >= 0.9 * (share[0] - share.iloc[-1])))
+    some, last = (f"{100 * value:.1f} %" for value in (share[enough], share.iloc[-1]))
     assert said == (
-        f"{enough} test wells would do nearly as well: {100 * share[enough]:.1f} % still called "
-        f"wrongly, against {100 * share.iloc[-1]:.1f} % with 24"
+        f"{enough} test wells would do nearly as well: {some} still called wrongly, "
+        + (f"against {last} with 24" if some != last else "as with 24")
     )
     assert enough < 24
 

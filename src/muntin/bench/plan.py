@@ -194,20 +194,22 @@ def _notices(view: Assessment, selection: Selection) -> tuple[str, ...]:
     bridged = any(pick.role == "bridge" for pick in selection.picks)
     if view.study.definition.plan.bridging_wells and not view.fresh and not bridged:
         notices.append("no bridging wells: no earlier condition lies in the plan's range")
-    enough = _enough(selection.forecast)
-    if not view.fresh and enough == 0:
-        notices.append("these wells would bring nothing more about the edge")
-    elif not view.fresh and enough < len(selection.forecast) - 1:
-        word = "well" if enough == 1 else "wells"
-        last, some = 100.0 * selection.forecast[-1], 100.0 * selection.forecast[enough]
-        notices.append(
-            f"{enough} test {word} would do nearly as well: {some:.1f} % still called wrongly, "
-            f"against {last:.1f} % with {len(selection.forecast) - 1}"
-        )
+    notices += _saving(selection.forecast) if not view.fresh else []
     return tuple(notices)
 
 
-def _enough(forecast: Sequence[float]) -> int:
-    """Fewest test wells that bring nine tenths of what the whole plan brings."""
-    gained = np.array(forecast[0]) - np.array(forecast)
-    return int(np.argmax(gained >= 0.9 * gained[-1]))
+def _saving(forecast: Sequence[float]) -> list[str]:
+    """What fewer test wells would do, where that is nearly as much."""
+    gained = forecast[0] - np.array(forecast)
+    enough, wells = int(np.argmax(gained >= 0.9 * gained[-1])), len(forecast) - 1
+    if enough == 0:
+        return ["these wells would bring nothing more about the edge"]
+    if enough == wells:
+        return []
+    some, last = (f"{100.0 * forecast[k]:.1f} %" for k in (enough, wells))
+    word = "well" if enough == 1 else "wells"
+    against = "as" if some == last else f"against {last}"
+    return [
+        f"{enough} test {word} would do nearly as well: {some} still called wrongly, "
+        f"{against} with {wells}"
+    ]
