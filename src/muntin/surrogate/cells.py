@@ -95,7 +95,10 @@ def collapse(readings: Readings) -> Cells:
     n, depth = readings.X.shape
     inside, scale = _stack(readings.inside, n), _stack(readings.scale, n)
     latents, latent = _group(np.concatenate([readings.X, inside], axis=1))
-    keys = np.concatenate([latent[:, None].astype(float), scale, readings.sd[:, None]], axis=1)
+    # Sds are told apart in shares of the largest, whatever the unit.
+    unit = max(float(readings.sd.max(initial=0.0)), 1e-300)
+    known = readings.sd[:, None] / unit
+    keys = np.concatenate([latent[:, None].astype(float), scale, known], axis=1)
     rows, cell = _group(keys)
     count = np.bincount(cell, minlength=len(rows)).astype(float)
     mean = np.bincount(cell, readings.y, len(rows)) / np.maximum(count, 1.0)
@@ -108,7 +111,7 @@ def collapse(readings: Readings) -> Cells:
         count=count,
         mean=mean,
         within=within,
-        variance=rows[:, -1] ** 2,
+        variance=(unit * rows[:, -1]) ** 2,
         cell=cell,
         y=readings.y,
     )

@@ -13,8 +13,9 @@ import numpy as np
 from numpy.typing import NDArray
 
 from muntin.surrogate.cells import Cells
+from muntin.surrogate.links import latent_of, slope_of
 from muntin.surrogate.propagation import Approximation
-from muntin.surrogate.tilted import CellLikelihood, Pair, place
+from muntin.surrogate.tilted import CellLikelihood, Pair, Points, place
 
 Array = NDArray[np.float64]
 
@@ -62,6 +63,10 @@ def leave_one_out(
     mean = (points.w * centre).sum(-1)
     square = (points.w * ((centre - mean[..., None]) ** 2 + variance)).sum(-1)
     pit = (points.w * _normal_cdf((cells.y[:, None] - centre) / np.sqrt(variance))).sum(-1)
+    if lik.link == "identity":
+        pit = _normal_cdf((cells.y - mean) / np.sqrt(square))
+    else:
+        pit = np.where(single, _single_pit(cells, lik, cavity, points, pit), pit)
     log_w = log_weights[:, None] - log_p
     absurd = (approx.cavity.uu > 1.001 * prior_variance) | (approx.cavity.ss > 1.001)
     absurd = (absurd & ~absurd.all(axis=0))[:, c]
@@ -71,6 +76,23 @@ def leave_one_out(
     total = (w * mean).sum(0)
     spread = (w * (square + (mean - total) ** 2)).sum(0)
     return LeaveOneOut(log_density, total, np.sqrt(spread), (w * pit).sum(0))
+
+
+def _single_pit(
+    cells: Cells, lik: CellLikelihood, cavity: Pair, points: Points, pit: Array
+) -> Array:
+    """The transform (S, n) of readings alone in their cell, the step taken out of the sum.
+
+    A small noise makes a step of it in u, which the points straddle; the Gaussian step of the
+    same place and slope has a known average over the cavity.
+    """
+    at = latent_of(lik.link, cells.y, lik.ceiling) - lik.offset
+    slope = slope_of(lik.link, np.where(np.isfinite(at), at, 0.0) + lik.offset, lik.ceiling)
+    noise = lik.noise + cells.variance[cells.cell]
+    width = np.sqrt(noise + (lik.scale * cells.y) ** 2 * cavity.ss) / slope
+    exact = _normal_cdf((at - cavity.u) / np.sqrt(cavity.uu + width**2))
+    summed = (points.w * _normal_cdf((at[..., None] - points.u) / width[..., None])).sum(-1)
+    return np.clip(pit + exact - summed, 0.0, 1.0)
 
 
 def _lost(log_weights: Array, absurd: NDArray[np.bool_]) -> Array:

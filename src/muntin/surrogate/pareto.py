@@ -35,7 +35,8 @@ def generalised_pareto_shape(excess: Array) -> float:
     theta = 1.0 / excess[-1] + grid / (3.0 * quartile)
     k = np.log1p(-theta[:, None] * excess[None]).mean(1)
     profile = n * (np.log(-theta / k) - k - 1.0)
-    weights = 1.0 / np.exp(profile[None, :] - profile[:, None]).sum(1)
+    weights = np.exp(profile - profile.max())
+    weights /= weights.sum()
     keep = weights >= 10.0 * np.finfo(float).eps
     best = float((theta[keep] * weights[keep]).sum() / weights[keep].sum())
     shape = float(np.log1p(-best * excess).mean())

@@ -11,7 +11,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from muntin.surrogate.links import latent_of, mean_of
+from muntin.surrogate.links import latent_of, mean_of, slope_of
 from muntin.surrogate.nodes import Surface
 
 Array = NDArray[np.float64]
@@ -77,28 +77,40 @@ def well_meets(surface: Surface, moments: tuple[Array, Array], target: Target) -
 def _fraction_well(surface: Surface, mean: Array, variance: Array, target: Target) -> Array:
     """The reading is (1 + scale) g(f) + noise; scale and noise are Gaussian given f."""
     sd = np.sqrt(variance)
-    out = np.zeros(mean.shape[1])
+    out = np.ones(mean.shape[1])
     fine = sd.max(axis=0) > _FINE_ABOVE
     for chosen, z in ((fine, _FINE), (~fine, _COARSE)):
         size = max(1, _CHUNK // (len(mean) * len(z)))
         columns = np.flatnonzero(chosen)
         for start in range(0, len(columns), size):
             part = columns[start : start + size]
-            f = mean[:, part, None] + sd[:, part, None] * z
-            out[part] = surface.weights @ (_reading_meets(surface, f, target) @ _normal_weights(z))
+            met = np.zeros((len(mean), len(part)))
+            for limit, sign in ((target.high, 1.0), (target.low, -1.0)):
+                met += sign * _reading_below(surface, mean[:, part], sd[:, part], z, limit)
+            out[part] = surface.weights @ met
     return np.clip(out, 0.0, 1.0)
 
 
-def _reading_meets(surface: Surface, f: Array, target: Target) -> Array:
-    """Probability (S, n, Q) that a reading of wells with logits f (S, n, Q) meets the target."""
+def _reading_below(surface: Surface, mean: Array, sd: Array, z: Array, limit: float) -> Array:
+    """Probability (S, n) that a reading lies below a limit, f ~ N(mean, sd^2), summed over z.
+
+    The step that a small noise makes of it in f is taken out of the sum by the Gaussian step
+    that has the same place and slope, whose average over f is known.
+    """
+    if np.isinf(limit):
+        return np.full_like(mean, 1.0 if limit > 0.0 else 0.0)
     errors = surface.errors
-    g = mean_of("logit", f, errors.ceiling[:, None, None])
-    scale = (errors.scale**2).sum(1)[:, None, None]
-    sd = np.sqrt((errors.noise**2)[:, None, None] + scale * g * g)
-    met = np.ones_like(g) if not np.isfinite(target.high) else _below((target.high - g) / sd)
-    if np.isfinite(target.low):
-        met = met - _below((target.low - g) / sd)
-    return met
+    ceiling, noise = errors.ceiling[:, None], errors.noise[:, None] ** 2
+    scale = (errors.scale**2).sum(1)[:, None]
+    place = surface.thresholds(limit)
+    slope = slope_of("logit", np.where(np.isfinite(place), place, 0.0), ceiling)
+    width = np.sqrt(noise + scale * limit**2) / slope
+    step = _below((place - mean) / np.sqrt(sd**2 + width**2))
+    f = mean[..., None] + sd[..., None] * z
+    g = mean_of("logit", f, ceiling[..., None])
+    below = _below((limit - g) / np.sqrt(noise[..., None] + scale[..., None] * g * g))
+    below -= _below((place[..., None] - f) / width[..., None])
+    return step + below @ _normal_weights(z)
 
 
 def process_mean(surface: Surface, moments: tuple[Array, Array]) -> Array:
