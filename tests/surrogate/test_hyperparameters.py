@@ -91,13 +91,16 @@ def test_effective_nodes_are_counted_from_the_weights():
 
 
 def test_poor_weights_ask_for_more_nodes(monkeypatch):
-    """With a shape that never pleases, five rounds are drawn and answer as one mixture."""
+    """With a shape that never pleases, rounds are drawn until as many nodes count as one round
+    has, and answer as one mixture.
+    """
     model = model_of("gp", readings(35, n=14, inside=(), scale=(2,)))
     reference = integrate(model, seed=2, nodes=1024)
     monkeypatch.setattr(hyperparameters, "tail_shape", lambda log_w: np.inf)
-    rounds = integrate(model, seed=1, nodes=64)
-    assert len(rounds.log_weights) == len(rounds.evidence.log) == 5 * 64
+    rounds = integrate(model, seed=1, nodes=256)
+    assert len(rounds.log_weights) == len(rounds.evidence.log)
+    assert len(rounds.log_weights) in (512, 768)
     assert np.exp(rounds.log_weights).sum() == pytest.approx(1.0)
-    assert rounds.ess > 4.0 * 0.4 * 64
-    # Some 250 effective nodes against 800.
+    assert rounds.ess >= 256
+    # Some 300 effective nodes against 800.
     assert rounds.log_marginal == pytest.approx(reference.log_marginal, abs=0.05)

@@ -158,7 +158,8 @@ def test_few_plates(tmp_path, count, passed, sentence):
     [
         (20.0, 0.69, True, "effective nodes 20, Pareto k 0.69"),
         (19.9, 0.1, False, "effective nodes 20, Pareto k 0.10"),
-        (64.0, 0.7, False, "effective nodes 64, Pareto k 0.70"),
+        (63.0, 0.7, False, "effective nodes 63, Pareto k 0.70"),
+        (64.0, 0.7, True, "effective nodes 64, Pareto k 0.70"),
         (64.0, -0.3, True, "effective nodes 64, Pareto k 0.00"),
     ],
 )

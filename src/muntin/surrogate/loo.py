@@ -22,8 +22,8 @@ Array = NDArray[np.float64]
 
 @dataclass(frozen=True)
 class LeaveOneOut:
-    """For each reading (n,): log predictive density, predictive mean and sd, and the probability
-    integral transform, all on the scale of the readings.
+    """For each reading (n,), or at each node (S, n): log predictive density, predictive mean and
+    sd, and the probability integral transform, all on the scale of the readings.
     """
 
     log_density: Array
@@ -46,6 +46,35 @@ def leave_one_out(
     long as others do.
     """
     c = cells.cell
+    predict = _normal_law if lik.link == "identity" else _fraction_law
+    law = predict(cells, lik, approx)
+    log_w = log_weights[:, None] - law.log_density
+    absurd = (approx.cavity.uu > 1.001 * prior_variance) | (approx.cavity.ss > 1.001)
+    absurd = (absurd & ~absurd.all(axis=0))[:, c]
+    log_w = np.where(absurd, -np.inf, log_w) + _lost(log_weights, absurd)
+    log_density = -np.logaddexp.reduce(log_w)
+    w = np.exp(log_w + log_density)
+    mean = (w * law.mean).sum(0)
+    variance = (w * (law.sd**2 + (law.mean - mean) ** 2)).sum(0)
+    return LeaveOneOut(log_density, mean, np.sqrt(variance), (w * law.pit).sum(0))
+
+
+def _normal_law(cells: Cells, lik: CellLikelihood, approx: Approximation) -> LeaveOneOut:
+    """Predictions (S, n) at each node of the identity link, in closed form."""
+    c = cells.cell
+    u, uu = approx.cavity.u[:, c], approx.cavity.uu[:, c]
+    v, others = lik.reading_variance[:, c], _others(cells, lik)
+    precision = 1.0 / uu + others.count / v
+    mean = (u / uu + others.count * (others.mean - lik.offset) / v) / precision + lik.offset
+    variance = 1.0 / precision + v
+    z = (cells.y - mean) / np.sqrt(variance)
+    log_density = -0.5 * (z**2 + np.log(2.0 * np.pi * variance))
+    return LeaveOneOut(log_density, mean, np.sqrt(variance), _normal_cdf(z))
+
+
+def _fraction_law(cells: Cells, lik: CellLikelihood, approx: Approximation) -> LeaveOneOut:
+    """Predictions (S, n) at each node of the logit link, by quadrature over the cavity."""
+    c = cells.cell
     others = _others(cells, lik)
     cavity = Pair(**{k: v[:, c] for k, v in vars(approx.cavity).items()})
     single = cells.count[c] == 1.0
@@ -54,28 +83,15 @@ def leave_one_out(
     start_sd = np.sqrt(np.where(single, cavity.uu, tilted.uu[:, c]))
     points = place(others, cavity, start_u, start_sd)
     log_rest = np.where(single, 0.0, points.log_z + others.log_within())
-    log_p = approx.tilted.log_z[:, c] - log_rest
+    log_density = approx.tilted.log_z[:, c] - log_rest
     s, s_var = points.scale_given()
-    loading = points.loading
-    g = others.process_mean(points.u)
-    centre = g + loading * s
-    variance = (lik.noise + cells.variance[c])[..., None] + loading**2 * s_var
+    centre = others.process_mean(points.u) + points.loading * s
+    variance = (lik.noise + cells.variance[c])[..., None] + points.loading**2 * s_var
     mean = (points.w * centre).sum(-1)
     square = (points.w * ((centre - mean[..., None]) ** 2 + variance)).sum(-1)
     pit = (points.w * _normal_cdf((cells.y[:, None] - centre) / np.sqrt(variance))).sum(-1)
-    if lik.link == "identity":
-        pit = _normal_cdf((cells.y - mean) / np.sqrt(square))
-    else:
-        pit = np.where(single, _single_pit(cells, lik, cavity, points, pit), pit)
-    log_w = log_weights[:, None] - log_p
-    absurd = (approx.cavity.uu > 1.001 * prior_variance) | (approx.cavity.ss > 1.001)
-    absurd = (absurd & ~absurd.all(axis=0))[:, c]
-    log_w = np.where(absurd, -np.inf, log_w) + _lost(log_weights, absurd)
-    log_density = -np.logaddexp.reduce(log_w)
-    w = np.exp(log_w + log_density)
-    total = (w * mean).sum(0)
-    spread = (w * (square + (mean - total) ** 2)).sum(0)
-    return LeaveOneOut(log_density, total, np.sqrt(spread), (w * pit).sum(0))
+    pit = np.where(single, _single_pit(cells, lik, cavity, points, pit), pit)
+    return LeaveOneOut(log_density, mean, np.sqrt(square), pit)
 
 
 def _single_pit(

@@ -71,7 +71,7 @@ def _fields(parts: Sequence[Sites] | Sequence[Pair]) -> dict[str, Array]:
 
 
 def approximate(
-    rows: Rows, lik: CellLikelihood, start: Sites | None = None, tolerance: float = 1e-3
+    rows: Rows, lik: CellLikelihood, start: Sites | None = None, tolerance: float = 3e-3
 ) -> Approximation:
     """The fixed point of expectation propagation, from `start` or from the Laplace mode.
 

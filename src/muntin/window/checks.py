@@ -14,6 +14,8 @@ from muntin.surrogate.fit import Stack
 
 Array = NDArray[np.float64]
 _WILD = 3.5
+# The shape of a short tail is uncertain; so many effective nodes outweigh it.
+_MANY_NODES = 64.0
 
 
 @dataclass(frozen=True)
@@ -84,7 +86,7 @@ def _wild(study: Study, response: Response, stack: Stack) -> Check:
 def _integration(response: Response, stack: Stack) -> Check:
     k = max(fit.k_hat for fit in stack.fits)
     ess = min(fit.ess for fit in stack.fits)
-    passed = k < 0.7 and ess >= 20.0
+    passed = all(f.ess >= 20.0 and (f.k_hat < 0.7 or f.ess >= _MANY_NODES) for f in stack.fits)
     verdict = "reliable" if passed else "unreliable: add readings or narrow the priors"
     sentence = (
         f"{response.label}: averages over hyperparameters are {verdict} "
