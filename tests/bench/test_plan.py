@@ -309,7 +309,8 @@ def test_per_cent_gives_the_plan_of_the_fraction(tmp_path, view):
     response = {**RECOVERY, "unit": "%", "at_least": 80}
     study = written(tmp_path / "study", plates, responses=[response])
     plan = muntin.propose(muntin.assess(study, "stacked"), wells=6)
-    pd.testing.assert_frame_equal(plan.wells, muntin.propose(view, wells=6).wells, rtol=1e-6)
+    # Dividing by 100 changes the last digit, and with it where the search for the mode stops.
+    pd.testing.assert_frame_equal(plan.wells, muntin.propose(view, wells=6).wells, rtol=1e-5)
 
 
 @pytest.mark.parametrize(
