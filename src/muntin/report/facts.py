@@ -65,6 +65,8 @@ def _model(stack: Any) -> Facts:
         "shares": {f.name: float(s) for f, s in zip(stack.fits, stack.shares, strict=True)},
         "effective_nodes": {f.name: float(f.ess) for f in stack.fits},
         "pareto_k": {f.name: float(f.k_hat) for f in stack.fits},
+        "log_marginal": {f.name: float(f.log_marginal) for f in stack.fits},
+        "laplace_nodes": {f.name: f.laplace for f in stack.fits},
     }
 
 
