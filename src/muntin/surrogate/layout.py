@@ -10,6 +10,8 @@ from numpy.typing import NDArray
 from muntin.surrogate.priors import LogNormal
 
 Array = NDArray[np.float64]
+# A ceiling never lies lower than this below 1.
+MOST_GAP = 0.5
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -60,7 +62,7 @@ class Layout:
         place = 1 + self.inside + self.scale
         if not self.ceiling:
             return np.ones(len(theta))
-        return 1.0 - np.minimum(np.exp(theta[:, place]), 0.5)
+        return 1.0 - np.minimum(np.exp(theta[:, place]), MOST_GAP)
 
     def family(self, theta: Array) -> Array:
         """The family's own hyperparameters (S, rest), as positive values."""

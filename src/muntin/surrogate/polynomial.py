@@ -49,10 +49,9 @@ class Quadratic:
         return np.array(kinds)
 
     def coefficient_sd(self, own: Array) -> Array:
-        """Prior sd (S, p) of the coefficients."""
+        """Prior sd (S, p) of the coefficients; plain arithmetic, so that `own` may be symbolic."""
         owner = self._owner()
-        sd = own[:, np.maximum(owner, 0)]
-        return np.where(owner < 0, self.priors.mean_sd, sd)
+        return own[:, np.maximum(owner, 0)] * (owner >= 0) + self.priors.mean_sd * (owner < 0)
 
     def root(self, layout: Layout, theta: Array, cells: Cells) -> Array:
         """L (S, U, p + groups) with L L' the prior covariance of the latent values."""
