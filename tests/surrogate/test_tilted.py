@@ -4,7 +4,7 @@ from dataclasses import replace
 
 import numpy as np
 import pytest
-from scipy.special import expit
+from scipy.special import expit, log_ndtr
 
 from muntin.surrogate.tilted import CellLikelihood, Pair, tilt
 
@@ -15,19 +15,32 @@ NOISE, SCALE = np.array([[0.03**2], [0.08**2]]), np.array([[0.03], [0.1]])
 OFFSET, CEILING = 0.4, np.array([[0.97], [0.9]])
 
 
-@pytest.fixture
-def likelihood():
-    return CellLikelihood(
+WANDER = np.array([0.3**2, 0.5**2, 0.2**2])
+CENSORED = np.array([-1, 1, -1])
+
+
+@pytest.fixture(params=["plain", "set with error", "censored"])
+def likelihood(request):
+    """Readings as they are, set with errors beside, and the last two as well as censored."""
+    plain = CellLikelihood(
         link="logit",
         offset=OFFSET,
         mean=MEAN,
         count=COUNT,
         within=WITHIN,
         variance=VARIANCE,
+        censored=np.zeros(3, dtype=int),
+        wander=np.zeros(3),
         noise=NOISE,
         scale=SCALE,
         ceiling=CEILING,
     )
+    if request.param == "plain":
+        return plain
+    wandering = replace(plain, wander=WANDER)
+    if request.param == "set with error":
+        return wandering
+    return replace(wandering, censored=CENSORED, count=np.ones(3), within=np.zeros(3))
 
 
 @pytest.fixture
@@ -51,11 +64,15 @@ def dense(lik, cavity, node, cell):
     z = np.linspace(-7.0, 7.0, 561)
     Z = np.stack(np.meshgrid(z, z, indexing="ij")).reshape(2, -1)
     u, s = mu[:, None] + np.linalg.cholesky(K) @ Z
-    mean = (1.0 + lik.scale[node, 0] * s) * CEILING[node, 0] * expit(u + OFFSET)
-    v = lik.noise[node, 0] + lik.variance[cell]
+    g = CEILING[node, 0] * expit(u + OFFSET)
+    mean = (1.0 + lik.scale[node, 0] * s) * g
+    slope = g * (1.0 - expit(u + OFFSET))
+    v = lik.noise[node, 0] + lik.variance[cell] + slope**2 * lik.wander[cell]
     # Density of every reading of the cell, written out from its sum of squares about their mean.
     squares = lik.within[cell] + lik.count[cell] * (lik.mean[cell] - mean) ** 2
     log_w = -0.5 * squares / v - 0.5 * lik.count[cell] * np.log(2.0 * np.pi * v)
+    if lik.censored[cell]:
+        log_w = log_ndtr(-lik.censored[cell] * (lik.mean[cell] - mean) / np.sqrt(v))
     log_w += -0.5 * (Z**2).sum(0) - np.log(2.0 * np.pi) + 2.0 * np.log(z[1] - z[0])
     w = np.exp(log_w)
     total = w.sum()

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import Protocol
 
 import numpy as np
@@ -19,6 +19,7 @@ from muntin.surrogate.sites import Rows
 from muntin.surrogate.tilted import CellLikelihood
 
 Array = NDArray[np.float64]
+_UNSAID = np.zeros(0)
 
 
 class Family(Protocol):
@@ -48,11 +49,21 @@ class Family(Protocol):
 
 @dataclass(frozen=True)
 class Model:
-    """One response's cells under one family, with the link on which the readings lie."""
+    """One response's cells under one family, with the link on which the readings lie.
+
+    wander (C,): latent variance of one reading of a cell that its setting errors make; 0 unless
+    given.
+    """
 
     family: Family
     cells: Cells
     link: Link
+    wander: Array = field(default_factory=lambda: _UNSAID)
+
+    def __post_init__(self) -> None:
+        """Fill in what was not given."""
+        if self.wander is _UNSAID:
+            object.__setattr__(self, "wander", np.zeros(len(self.cells)))
 
     @property
     def layout(self) -> Layout:
@@ -80,6 +91,8 @@ class Model:
             count=cells.count,
             within=cells.within,
             variance=cells.variance,
+            censored=cells.censored,
+            wander=self.wander,
             noise=layout.noise(theta)[:, None] ** 2,
             scale=scale,
             ceiling=layout.ceiling_of(theta)[:, None],

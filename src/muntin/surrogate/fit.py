@@ -8,24 +8,19 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from muntin.surrogate.assembly import nodes_of
 from muntin.surrogate.cells import Readings, collapse
 from muntin.surrogate.coding import Columns
 from muntin.surrogate.evidence import Evidence, Family, Model
-from muntin.surrogate.hyperparameters import integrate
+from muntin.surrogate.hyperparameters import Posterior, integrate
 from muntin.surrogate.links import Link
 from muntin.surrogate.loo import LeaveOneOut, leave_one_out
-from muntin.surrogate.nodes import (
-    Errors,
-    Nodes,
-    PolynomialNodes,
-    ProcessNodes,
-    Surface,
-    mixture,
-)
+from muntin.surrogate.nodes import Surface, mixture
 from muntin.surrogate.polynomial import Quadratic
 from muntin.surrogate.priors import Kind, Priors
 from muntin.surrogate.process import GaussianProcess
 from muntin.surrogate.stacking import stacking_shares
+from muntin.surrogate.wander import settled_wander
 
 Array = NDArray[np.float64]
 _NEGLIGIBLE = 2e-3
@@ -39,6 +34,7 @@ class Fit:
     surface: its nodes. theta (S, H) and weights (S,): all hyperparameter nodes, log scale, named
     by names. loo: leave-one-out predictions. ess, k_hat: of the importance weights.
     log_marginal: log marginal likelihood. laplace: nodes without a fixed point, used as Laplace's.
+    model and posterior: what was fitted, and the fast engine's nodes.
     """
 
     name: str
@@ -51,6 +47,8 @@ class Fit:
     k_hat: float
     log_marginal: float
     laplace: int
+    model: Model
+    posterior: Posterior
 
 
 @dataclass(frozen=True)
@@ -87,12 +85,10 @@ def fit_surrogate(
 ) -> Fit:
     """Fit one surrogate; readings lie on the scale where noise is additive (ln y if positive)."""
     link = link_of(kind)
-    model = Model(
-        family_of(name, columns, priors),
-        collapse(readings),
-        _engine_link(kind),
+    model, start = settled_wander(
+        Model(family_of(name, columns, priors), collapse(readings), _engine_link(kind))
     )
-    posterior = integrate(model, seed)
+    posterior = integrate(model, seed, start=start)
     evidence, weights = posterior.evidence, np.exp(posterior.log_weights)
     loo = leave_one_out(
         model.cells,
@@ -112,6 +108,8 @@ def fit_surrogate(
         k_hat=posterior.k_hat,
         log_marginal=posterior.log_marginal,
         laplace=len(evidence.approximation.laplace),
+        model=model,
+        posterior=posterior,
     )
 
 
@@ -157,7 +155,7 @@ def prior_surface(
     root = model.family.root(layout, theta, model.cells)
     width = root.shape[2]
     V = np.broadcast_to(np.eye(width), (nodes, width, width))
-    part = _part(model, theta, root, np.zeros((nodes, width)), V)
+    part = nodes_of(model, theta, root, np.zeros((nodes, width)), V)
     return Surface((part,), np.full(nodes, 1.0 / nodes), link_of(kind))
 
 
@@ -169,22 +167,5 @@ def _surface(model: Model, evidence: Evidence, weights: Array, link: Link) -> Su
     root, approx = evidence.root[keep], evidence.approximation
     own = root.shape[2]
     mean, V = approx.mean[keep][:, :own], approx.V[keep][:, :own, :own]
-    part = _part(model, evidence.theta[keep], root, mean, V)
+    part = nodes_of(model, evidence.theta[keep], root, mean, V)
     return Surface((part,), weights[keep] / weights[keep].sum(), link)
-
-
-def _part(model: Model, theta: Array, root: Array, mean: Array, V: Array) -> Nodes:
-    layout = model.layout
-    errors = Errors(
-        layout.noise(theta),
-        layout.inside_sd(theta),
-        layout.scale_sd(theta),
-        layout.ceiling_of(theta),
-    )
-    own = layout.family(theta)
-    family = model.family
-    if isinstance(family, GaussianProcess):
-        alpha, Q = family.weights(root, mean, V)
-        return ProcessNodes(family, own, model.cells.X, alpha, Q, errors)
-    assert isinstance(family, Quadratic)
-    return PolynomialNodes(family, *family.coefficients(own, mean, V), errors)

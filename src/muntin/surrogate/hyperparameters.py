@@ -53,11 +53,13 @@ class Proposal:
 
 @dataclass(frozen=True)
 class Posterior:
-    """The evidence of S hyperparameter nodes and their normalised log weights (S,); log marginal
-    likelihood; effective sample size and Pareto k-hat of the weights.
+    """The evidence of S hyperparameter nodes, their standardised coordinates eta (S, H) and
+    normalised log weights (S,); log marginal likelihood; effective sample size and Pareto k-hat of
+    the weights.
     """
 
     evidence: Evidence
+    eta: Array
     log_weights: Array
     log_marginal: float
     ess: float
@@ -69,8 +71,8 @@ def log_prior(eta: Array) -> Array:
     return -0.5 * (eta**2).sum(1) - 0.5 * eta.shape[1] * np.log(2.0 * np.pi)
 
 
-def mode(model: Model) -> tuple[Array, Evidence]:
-    """Posterior mode eta (H,), and the evidence there."""
+def mode(model: Model, start: Array | None = None) -> tuple[Array, Evidence]:
+    """Posterior mode eta (H,) searched from `start`, and the evidence there."""
     from scipy.optimize import minimize
 
     layout = model.layout
@@ -87,7 +89,7 @@ def mode(model: Model) -> tuple[Array, Evidence]:
     h = len(layout)
     found = minimize(
         objective,
-        np.zeros(h),
+        np.zeros(h) if start is None else start,
         jac=True,
         method="L-BFGS-B",
         bounds=[(-_BOUND, _BOUND)] * h,
@@ -119,8 +121,10 @@ def _refitted(eta: Array, weights: Array, last: Proposal) -> Proposal:
     return Proposal(centre, np.linalg.cholesky(covariance))
 
 
-def integrate(model: Model, seed: int, nodes: int | None = None) -> Posterior:
-    """The posterior of the hyperparameters as weighted nodes.
+def integrate(
+    model: Model, seed: int, nodes: int | None = None, start: Array | None = None
+) -> Posterior:
+    """The posterior of the hyperparameters as weighted nodes; their mode is searched from `start`.
 
     nodes: drawn in each round, a power of two; by default 64, or 32 where many latent values make
     a node dear and the hyperparameters well known.
@@ -129,7 +133,7 @@ def integrate(model: Model, seed: int, nodes: int | None = None) -> Posterior:
 
     nodes = nodes or (64 if len(model.cells.X) <= _MANY_LATENTS else 32)
     layout = model.layout
-    eta0, top = mode(model)
+    eta0, top = mode(model, start)
     proposals = [_at_mode(model, eta0, top)]
     etas: list[Array] = []
     rounds: list[Evidence] = []
@@ -150,4 +154,4 @@ def integrate(model: Model, seed: int, nodes: int | None = None) -> Posterior:
         proposals.append(_refitted(every, weights, proposals[-1]))
     every_round = joined(rounds)
     marginal = log_sum - float(np.log(len(log_w)))
-    return Posterior(every_round, log_w - log_sum, marginal, float(ess), k_hat)
+    return Posterior(every_round, every, log_w - log_sum, marginal, float(ess), k_hat)

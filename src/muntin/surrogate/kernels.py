@@ -56,3 +56,14 @@ def quadratic_terms(columns: Columns) -> list[tuple[int, ...]]:
 def polynomial_basis(X: Array, terms: list[tuple[int, ...]]) -> Array:
     """Values (n, p) of the polynomial terms at coded X (n, D)."""
     return np.stack([np.prod(X[:, list(term)], axis=1) for term in terms], axis=1)
+
+
+def polynomial_slopes(X: Array, terms: list[tuple[int, ...]]) -> Array:
+    """Slopes (n, p, D) of the polynomial terms with each column of coded X (n, D)."""
+    out = np.zeros((len(X), len(terms), X.shape[1]))
+    for t, term in enumerate(terms):
+        for column in set(term):
+            rest = list(term)
+            rest.remove(column)
+            out[:, t, column] = term.count(column) * np.prod(X[:, rest], axis=1)
+    return out

@@ -13,9 +13,9 @@ import numpy as np
 from numpy.typing import NDArray
 
 from muntin.surrogate.cells import Cells
-from muntin.surrogate.links import latent_of, slope_of
+from muntin.surrogate.links import latent_of
 from muntin.surrogate.propagation import Approximation
-from muntin.surrogate.tilted import CellLikelihood, Pair, Points, place
+from muntin.surrogate.tilted import CellLikelihood, Pair, Points, place, pull_of
 
 Array = NDArray[np.float64]
 
@@ -23,7 +23,8 @@ Array = NDArray[np.float64]
 @dataclass(frozen=True)
 class LeaveOneOut:
     """For each reading (n,), or at each node (S, n): log predictive density, predictive mean and
-    sd, and the probability integral transform, all on the scale of the readings.
+    sd, and the probability integral transform, all on the scale of the readings. Of a censored
+    reading the density is its probability, and the transform NaN.
     """
 
     log_density: Array
@@ -46,7 +47,8 @@ def leave_one_out(
     long as others do.
     """
     c = cells.cell
-    predict = _normal_law if lik.link == "identity" else _fraction_law
+    exact = lik.link == "identity" and not cells.censored.any()
+    predict = _normal_law if exact else _numeric_law
     law = predict(cells, lik, approx)
     log_w = log_weights[:, None] - law.log_density
     absurd = (approx.cavity.uu > 1.001 * prior_variance) | (approx.cavity.ss > 1.001)
@@ -63,7 +65,7 @@ def _normal_law(cells: Cells, lik: CellLikelihood, approx: Approximation) -> Lea
     """Predictions (S, n) at each node of the identity link, in closed form."""
     c = cells.cell
     u, uu = approx.cavity.u[:, c], approx.cavity.uu[:, c]
-    v, others = lik.reading_variance[:, c], _others(cells, lik)
+    v, others = (lik.base_variance + lik.wander)[:, c], _others(cells, lik)
     precision = 1.0 / uu + others.count / v
     mean = (u / uu + others.count * (others.mean - lik.offset) / v) / precision + lik.offset
     variance = 1.0 / precision + v
@@ -72,8 +74,8 @@ def _normal_law(cells: Cells, lik: CellLikelihood, approx: Approximation) -> Lea
     return LeaveOneOut(log_density, mean, np.sqrt(variance), _normal_cdf(z))
 
 
-def _fraction_law(cells: Cells, lik: CellLikelihood, approx: Approximation) -> LeaveOneOut:
-    """Predictions (S, n) at each node of the logit link, by quadrature over the cavity."""
+def _numeric_law(cells: Cells, lik: CellLikelihood, approx: Approximation) -> LeaveOneOut:
+    """Predictions (S, n) at each node by quadrature over the cavity."""
     c = cells.cell
     others = _others(cells, lik)
     cavity = Pair(**{k: v[:, c] for k, v in vars(approx.cavity).items()})
@@ -82,30 +84,30 @@ def _fraction_law(cells: Cells, lik: CellLikelihood, approx: Approximation) -> L
     start_u = np.where(single, cavity.u, tilted.u[:, c])
     start_sd = np.sqrt(np.where(single, cavity.uu, tilted.uu[:, c]))
     points = place(others, cavity, start_u, start_sd)
-    log_rest = np.where(single, 0.0, points.log_z + others.log_within())
+    log_rest = np.where(single, 0.0, points.log_z)
     log_density = approx.tilted.log_z[:, c] - log_rest
-    s, s_var = points.scale_given()
+    pull = pull_of(points.residual, points.total, points.censored)
+    s, s_var = points.scale_given(pull)
     centre = others.process_mean(points.u) + points.loading * s
-    variance = (lik.noise + cells.variance[c])[..., None] + points.loading**2 * s_var
+    variance = points.reading_variance + points.loading**2 * s_var
     mean = (points.w * centre).sum(-1)
     square = (points.w * ((centre - mean[..., None]) ** 2 + variance)).sum(-1)
     pit = (points.w * _normal_cdf((cells.y[:, None] - centre) / np.sqrt(variance))).sum(-1)
-    pit = np.where(single, _single_pit(cells, lik, cavity, points, pit), pit)
+    pit = np.where(single, _single_pit(others, cells.y, cavity, points, pit), pit)
+    pit = np.where(cells.censored[c] == 0, pit, np.nan)
     return LeaveOneOut(log_density, mean, np.sqrt(square), pit)
 
 
-def _single_pit(
-    cells: Cells, lik: CellLikelihood, cavity: Pair, points: Points, pit: Array
-) -> Array:
-    """The transform (S, n) of readings alone in their cell, the step taken out of the sum.
+def _single_pit(lik: CellLikelihood, y: Array, cavity: Pair, points: Points, pit: Array) -> Array:
+    """The transform (S, n) of readings y (n,) alone in their cell, the step taken out of the sum.
 
     A small noise makes a step of it in u, which the points straddle; the Gaussian step of the
     same place and slope has a known average over the cavity.
     """
-    at = latent_of(lik.link, cells.y, lik.ceiling) - lik.offset
-    slope = slope_of(lik.link, np.where(np.isfinite(at), at, 0.0) + lik.offset, lik.ceiling)
-    noise = lik.noise + cells.variance[cells.cell]
-    width = np.sqrt(noise + (lik.scale * cells.y) ** 2 * cavity.ss) / slope
+    at = latent_of(lik.link, y, lik.ceiling) - lik.offset
+    at_finite = np.where(np.isfinite(at), at, -lik.offset)
+    noise = lik.reading_variance(at_finite)
+    width = np.sqrt(noise + (lik.scale * y) ** 2 * cavity.ss) / lik.slope(at_finite)
     exact = _normal_cdf((at - cavity.u) / np.sqrt(cavity.uu + width**2))
     summed = (points.w * _normal_cdf((at[..., None] - points.u) / width[..., None])).sum(-1)
     return np.clip(pit + exact - summed, 0.0, 1.0)
@@ -125,7 +127,15 @@ def _others(cells: Cells, lik: CellLikelihood) -> CellLikelihood:
     mean = np.where(n > 1.0, (n * cells.mean[c] - cells.y) / rest, 0.0)
     total = cells.within[c] - (cells.y - cells.mean[c]) ** 2 * n / rest
     within = np.where(n > 1.0, np.maximum(total, 0.0), 0.0)
-    return replace(lik, mean=mean, count=rest, within=within, variance=cells.variance[c])
+    return replace(
+        lik,
+        mean=mean,
+        count=rest,
+        within=within,
+        variance=cells.variance[c],
+        censored=np.zeros_like(c),
+        wander=lik.wander[c],
+    )
 
 
 def _normal_cdf(z: Array) -> Array:

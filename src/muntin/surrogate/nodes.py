@@ -13,6 +13,7 @@ from typing import Protocol
 import numpy as np
 from numpy.typing import NDArray
 
+from muntin.surrogate.kernels import polynomial_slopes
 from muntin.surrogate.links import Link, latent_of
 from muntin.surrogate.polynomial import Quadratic
 from muntin.surrogate.process import GaussianProcess
@@ -55,6 +56,9 @@ class Nodes(Protocol):
     def covariance(self, X: Array, Z: Array) -> Array:
         """Covariance (S, n, m) of f between coded X (n, D) and Z (m, D)."""
 
+    def slopes(self, X: Array) -> Array:
+        """Slope (S, n, D) of the mean of f with each coded column at X (n, D)."""
+
     def take(self, index: Index) -> Nodes:
         """Some of the nodes."""
 
@@ -90,6 +94,15 @@ class ProcessNodes:
         right = self.Q @ np.swapaxes(self.family.covariance(self.own, Z, self.X), 1, 2)
         return self.family.covariance(self.own, X, Z) - left @ right
 
+    def slopes(self, X: Array) -> Array:
+        """Slope (S, n, D) of the mean of f with each coded column at X (n, D)."""
+        size = max(1, _CHUNK // max(1, len(self) * len(self.X)))
+        parts = [
+            self.family.slopes(self.own, X[rows], self.X, self.alpha)
+            for rows in _chunks(len(X), size)
+        ]
+        return np.concatenate(parts, axis=1) if parts else np.zeros((len(self), *X.shape))
+
     def take(self, index: Index) -> ProcessNodes:
         """Some of the nodes."""
         return replace(
@@ -123,6 +136,10 @@ class PolynomialNodes:
         """Covariance (S, n, m) of f between coded X (n, D) and Z (m, D)."""
         return self.family.basis(X) @ self.V @ self.family.basis(Z).T
 
+    def slopes(self, X: Array) -> Array:
+        """Slope (S, n, D) of the mean of f with each coded column at X (n, D)."""
+        return np.einsum("sp,npd->snd", self.mean, polynomial_slopes(X, self.family.terms))
+
     def take(self, index: Index) -> PolynomialNodes:
         """Some of the nodes."""
         return replace(
@@ -149,6 +166,14 @@ class Surface:
     def covariance(self, X: Array, Z: Array) -> Array:
         """Covariance (S, n, m) of the latent f between coded X (n, D) and Z (m, D)."""
         return np.concatenate([part.covariance(X, Z) for part in self.parts])
+
+    def slopes(self, X: Array) -> Array:
+        """Slope (S, n, D) of each node's mean of the latent f with coded X (n, D)."""
+        return np.concatenate([part.slopes(X) for part in self.parts])
+
+    def wander(self, X: Array, setting: Array) -> Array:
+        """Latent variance (S, n) of a well at coded X (n, D) set with sds `setting` (n, D)."""
+        return np.asarray(((self.slopes(X) * setting) ** 2).sum(-1))
 
     @property
     def errors(self) -> Errors:

@@ -14,7 +14,7 @@ from muntin.surrogate.layout import Layout
 from muntin.surrogate.priors import LogNormal, Priors
 
 Array = NDArray[np.float64]
-_JITTER = 1e-10
+JITTER = 1e-10
 
 
 @dataclass(frozen=True)
@@ -40,6 +40,13 @@ class GaussianProcess:
         value += self.priors.mean_sd**2
         return value
 
+    def slopes(self, own: Array, X: Array, Z: Array, alpha: Array) -> Array:
+        """Slopes (S, n, D) with x of k(x, Z) alpha at coded X (n, D); alpha (S, m), Z (m, D)."""
+        lengths = own[:, 1:][:, list(self.columns.factor)]
+        B = matern52_slope(squared_distance(X, Z, lengths))
+        B *= own[:, 0, None, None] ** 2 * alpha[:, None, :]
+        return (B @ Z - B.sum(-1)[..., None] * X) / lengths[:, None, :] ** 2
+
     def variance(self, own: Array, X: Array) -> Array:
         """Prior variance (S, n) of f at coded X (n, D)."""
         value = self.priors.mean_sd**2 + own[:, :1] ** 2
@@ -53,7 +60,7 @@ class GaussianProcess:
             groups = cells.inside[:, j]
             K += sd[:, None, None] ** 2 * same_group(groups, groups)
         index = np.arange(K.shape[1])
-        K[:, index, index] += _JITTER * own[:, :1] ** 2
+        K[:, index, index] += JITTER * own[:, :1] ** 2
         return np.asarray(np.linalg.cholesky(K), dtype=float)
 
     def gradient(self, layout: Layout, theta: Array, cells: Cells, root: Array, E: Array) -> Array:

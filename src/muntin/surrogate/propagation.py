@@ -80,7 +80,7 @@ def approximate(
     an improper cavity; such nodes are run again with sites kept from negative precisions, and
     taken as Laplace's where that fails too.
     """
-    if lik.link == "identity":
+    if lik.link == "identity" and not lik.censored.any():
         return _exact(rows, lik)
     sites, change = _fixed_point(rows, lik, start, tolerance, kept=False)
     state = _State(rows, lik, sites)
@@ -178,7 +178,8 @@ def _sweep(gaussian: Gaussian, lik: CellLikelihood, base: Pair, kept: bool = Fal
     proposed = natural(tilted.pair).less(outer).where_finite(gaussian.sites)
     # A reading cannot tell more of its logit than 1/4 of a reading's precision; far above that
     # the quadrature has lost the law, and the site is held back.
-    most = 0.25 * lik.count / lik.reading_variance
+    steepest = 0.25 if lik.link == "logit" else 1.0001
+    most = steepest * lik.count / lik.base_variance
     proposed = proposed.times(np.minimum(1.0, most / np.maximum(proposed.uu, 1e-300)))
     if kept:
         proposed = _with_mean(proposed.proper(), outer, tilted.pair)
@@ -228,7 +229,8 @@ def _change(old: Pair, new: Pair) -> Array:
 
 def _exact(rows: Rows, lik: CellLikelihood) -> Approximation:
     """The identity link: the sites are the likelihood, the answer is exact."""
-    v = lik.reading_variance / lik.count
+    rv = lik.base_variance + lik.wander
+    v = rv / lik.count
     y = np.broadcast_to(lik.mean - lik.offset, v.shape)
     zero = np.zeros_like(v)
     sites = Sites(y / v, zero, 1.0 / v, zero, zero)
@@ -239,12 +241,12 @@ def _exact(rows: Rows, lik: CellLikelihood) -> Approximation:
     spread = post.uu / left
     cavity = Pair((post.u - post.uu * y / v) / left, zero, spread, zero, np.ones_like(v))
     total = spread + v
-    log_z = -0.5 * ((y - cavity.u) ** 2 / total + np.log(total) + _LOG_2PI) + lik.log_within()
+    within = lik.log_within(zero)
+    log_z = -0.5 * ((y - cavity.u) ** 2 / total + np.log(total) + _LOG_2PI) + within
     misfit = ((y - post.u) ** 2 + post.uu) / v**2 - 1.0 / v
-    rv = lik.reading_variance
     about = (lik.within / rv - (lik.count - 1.0)) / rv
     tilted = Tilted(post, log_z, lik.noise * (misfit / lik.count + about), zero)
-    own = -0.5 * (y**2 / v + np.log(v) + _LOG_2PI) + lik.log_within()
+    own = -0.5 * (y**2 / v + np.log(v) + _LOG_2PI) + within
     evidence = gaussian.log_integral() + own.sum(1)
     none = np.zeros(0, dtype=np.intp)
     return Approximation(gaussian.mean, gaussian.V, evidence, sites, cavity, tilted, none)

@@ -11,7 +11,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
-from muntin.surrogate.links import Link, mean_of
+from muntin.surrogate.links import Link, mean_of, slope_of
 
 Array = NDArray[np.float64]
 _LOG_2PI = float(np.log(2.0 * np.pi))
@@ -37,9 +37,10 @@ class Pair:
 class CellLikelihood:
     """Likelihood of the cells at S nodes.
 
-    link; offset: prior mean of the latent level; mean, count, within, variance (C,) as in Cells;
-    noise (S, 1): variance of a reading; scale (S, 1): sd of the summed scale errors; ceiling
-    (S, 1): where a fraction levels off.
+    link; offset: prior mean of the latent level; mean, count, within, variance, censored (C,) as in
+    Cells; wander (C,): latent variance of one reading that its setting errors make; noise (S, 1):
+    variance of a reading; scale (S, 1): sd of the summed scale errors; ceiling (S, 1): where a
+    fraction levels off.
     """
 
     link: Link
@@ -48,6 +49,8 @@ class CellLikelihood:
     count: Array
     within: Array
     variance: Array
+    censored: NDArray[np.intp]
+    wander: Array
     noise: Array
     scale: Array
     ceiling: Array
@@ -62,20 +65,83 @@ class CellLikelihood:
         )
 
     @property
-    def reading_variance(self) -> Array:
-        """Variance (S, C) of one reading about the process mean and the shared errors."""
+    def base_variance(self) -> Array:
+        """Variance (S, C) of one reading but for its setting errors."""
         return self.noise + self.variance
 
-    def log_within(self) -> Array:
-        """Log density (S, C) of what the cell mean leaves out: the spread about it."""
-        v, extra = self.reading_variance, self.count - 1.0
-        spread = -0.5 * self.within / v - 0.5 * extra * (np.log(v) + _LOG_2PI)
-        return spread - 0.5 * np.log(self.count)
+    def wandering(self, u: Array) -> Array:
+        """Variance that setting errors add to one reading at centred latent values u, (S, C) or
+        (S, C, Q): g'(u)^2 wander (McHutchon & Rasmussen 2011, eq. 5).
+        """
+        wander = self.wander if u.ndim == 2 else self.wander[:, None]
+        if not self.wander.any():
+            return np.zeros(1)
+        return self.slope(u) ** 2 * wander
+
+    def reading_variance(self, u: Array) -> Array:
+        """Variance of one reading about the process mean and the shared errors, at centred latent
+        values u, (S, C) or (S, C, Q); of a shape that broadcasts with u.
+        """
+        base = self.base_variance if u.ndim == 2 else self.base_variance[..., None]
+        return base + self.wandering(u)
+
+    def log_within(self, u: Array) -> Array:
+        """Log density of what the cell mean leaves out, the spread about it, at u as above."""
+        v, n, within = self.reading_variance(u), self.count, self.within
+        if u.ndim == 3:
+            n, within = n[:, None], within[:, None]
+        return -0.5 * (within / v + (n - 1.0) * (np.log(v) + _LOG_2PI) + np.log(n))
 
     def process_mean(self, u: Array) -> Array:
         """g at centred latent values u, (S, C) or (S, C, Q)."""
-        ceiling = self.ceiling if u.ndim == 2 else self.ceiling[..., None]
-        return mean_of(self.link, u + self.offset, ceiling)
+        return mean_of(self.link, u + self.offset, self._ceiling(u))
+
+    def slope(self, u: Array) -> Array:
+        """g' at centred latent values u, (S, C) or (S, C, Q)."""
+        return slope_of(self.link, u + self.offset, self._ceiling(u))
+
+    def log_density(self, u: Array, s: Array) -> Array:
+        """Log density (S, C) of the readings of each cell given its pair (S, C)."""
+        v = self.reading_variance(u) / self.count
+        residual = self.mean - (1.0 + self.scale * s) * self.process_mean(u)
+        return _log_reading(residual, v, self.censored) + self.log_within(u)
+
+    def _ceiling(self, u: Array) -> Array:
+        return self.ceiling if u.ndim == 2 else self.ceiling[..., None]
+
+
+def _log_reading(residual: Array, variance: Array, censored: NDArray[np.intp]) -> Array:
+    """Log density of a residual, or log probability that it lies on the censored side."""
+    out = -0.5 * (residual**2 / variance + np.log(variance) + _LOG_2PI)
+    if censored.any():
+        from scipy.special import log_ndtr
+
+        out = np.where(censored == 0, out, log_ndtr(-censored * residual / np.sqrt(variance)))
+    return out
+
+
+@dataclass(frozen=True)
+class Pull:
+    """How a reading draws on its mean: score, the slope of its log density in the mean, and
+    precision, the curvature, both of the shape of the residual.
+    """
+
+    score: Array
+    precision: Array
+
+
+def pull_of(residual: Array, variance: Array, censored: NDArray[np.intp]) -> Pull:
+    """The pull of readings; for a censored one that of the normal distribution function."""
+    score, precision = residual / variance, 1.0 / variance + np.zeros_like(residual)
+    if censored.any():
+        from scipy.special import log_ndtr
+
+        sd = np.sqrt(variance)
+        z = -censored * residual / sd
+        hazard = np.exp(-0.5 * (z**2 + _LOG_2PI) - log_ndtr(z))
+        score = np.where(censored == 0, score, censored * hazard / sd)
+        precision = np.where(censored == 0, precision, hazard * (z + hazard) / variance)
+    return Pull(score, precision)
 
 
 @dataclass(frozen=True)
@@ -120,12 +186,14 @@ class Points:
         self.s_mean = cavity.s[..., None] + slope * away
         self.s_var = (cavity.ss - cavity.us**2 / cavity.uu)[..., None]
         g = lik.process_mean(self.u)
-        h = lik.scale[..., None]
-        self.loading = h * g
-        self.cell_variance = (lik.reading_variance / lik.count)[..., None]
-        self.total = self.cell_variance + self.loading**2 * self.s_var
-        self.residual = lik.mean[:, None] - g - self.loading * self.s_mean
-        log_like = -0.5 * (self.residual**2 / self.total + np.log(self.total) + _LOG_2PI)
+        self.loading = lik.scale[..., None] * g
+        self.centre = g + self.loading * self.s_mean
+        self.reading_variance = lik.reading_variance(self.u)
+        spared = self.reading_variance / lik.count[:, None]
+        self.total = spared + self.loading**2 * self.s_var
+        self.residual = lik.mean[:, None] - self.centre
+        self.censored = lik.censored[:, None]
+        log_like = _log_reading(self.residual, self.total, self.censored) + lik.log_within(self.u)
         log_cavity = -0.5 * (away**2 / cavity.uu[..., None] + np.log(cavity.uu)[..., None])
         log_w = log_like + log_cavity + _LOG_WEIGHTS + np.log(spread)[..., None] - 0.5 * _LOG_2PI
         top = log_w.max(-1, keepdims=True)
@@ -137,14 +205,15 @@ class Points:
         variance = (self.w * (self.u - self.mean_u[..., None]) ** 2).sum(-1)
         self.sd_u = np.sqrt(np.maximum(variance, 1e-16))
 
-    def scale_given(self) -> tuple[Array, Array]:
+    def scale_given(self, pull: Pull) -> tuple[Array, Array]:
         """Mean and variance (S, C, Q) of s given u and the reading."""
-        gain = self.loading * self.s_var / self.total
-        return self.s_mean + gain * self.residual, self.s_var * (1.0 - gain * self.loading)
+        gain = self.loading * self.s_var
+        return self.s_mean + gain * pull.score, self.s_var - gain**2 * pull.precision
 
     def moments(self, lik: CellLikelihood) -> Tilted:
         """Tilted moments of the pairs."""
-        s_given, v_given = self.scale_given()
+        pull = pull_of(self.residual, self.total, self.censored)
+        s_given, v_given = self.scale_given(pull)
         s = (self.w * s_given).sum(-1)
         du, ds = self.u - self.mean_u[..., None], s_given - s[..., None]
         pair = Pair(
@@ -154,11 +223,17 @@ class Points:
             us=(self.w * du * ds).sum(-1),
             ss=(self.w * (ds**2 + v_given)).sum(-1),
         )
-        v, n = lik.reading_variance, lik.count
-        misfit = (self.w * (self.residual**2 / self.total**2 - 1.0 / self.total)).sum(-1)
-        about = (lik.within / v - (n - 1.0)) / v
-        centre = lik.mean[:, None] - self.residual
-        by_spread = (self.residual**2 / self.total - 1.0) * self.loading**2 * self.s_var
-        by_ceiling = (self.w * (self.residual * centre + by_spread) / self.total).sum(-1)
-        log_z = self.log_z + lik.log_within()
-        return Tilted(pair, log_z, lik.noise * (misfit / n + about), by_ceiling)
+        n, rv = lik.count[:, None], self.reading_variance
+        # Slope of the log density in its variance, of the mean and of the spread about it.
+        if self.censored.any():
+            plain = pull.score**2 - pull.precision
+            bent = pull.score * self.residual / self.total
+            by_mean = np.where(self.censored == 0, plain, bent)
+        else:
+            by_mean = pull.score**2 - pull.precision
+        by_spread = (lik.within[:, None] / rv - (n - 1.0)) / rv
+        by_noise = (self.w * (by_mean / n + by_spread)).sum(-1)
+        wandering = lik.wandering(self.u)
+        moved = self.loading**2 * self.s_var * by_mean + wandering * (by_mean / n + by_spread)
+        by_ceiling = (self.w * (pull.score * self.centre + moved)).sum(-1)
+        return Tilted(pair, self.log_z, lik.noise * by_noise, by_ceiling)

@@ -1,0 +1,32 @@
+"""Nodes of a model from the Gaussian laws of its whitened variables."""
+
+from __future__ import annotations
+
+import numpy as np
+from numpy.typing import NDArray
+
+from muntin.surrogate.evidence import Model
+from muntin.surrogate.nodes import Errors, Nodes, PolynomialNodes, ProcessNodes
+from muntin.surrogate.polynomial import Quadratic
+from muntin.surrogate.process import GaussianProcess
+
+Array = NDArray[np.float64]
+
+
+def nodes_of(model: Model, theta: Array, root: Array, mean: Array, V: Array) -> Nodes:
+    """Nodes at log hyperparameters theta (S, H) with the family's root (S, U, R), from the mean
+    (S, R) and covariance V (S, R, R) of the whitened variables.
+    """
+    layout = model.layout
+    errors = Errors(
+        layout.noise(theta),
+        layout.inside_sd(theta),
+        layout.scale_sd(theta),
+        layout.ceiling_of(theta),
+    )
+    own, family = layout.family(theta), model.family
+    if isinstance(family, GaussianProcess):
+        alpha, Q = family.weights(root, mean, V)
+        return ProcessNodes(family, own, model.cells.X, alpha, Q, errors)
+    assert isinstance(family, Quadratic)
+    return PolynomialNodes(family, *family.coefficients(own, mean, V), errors)
