@@ -4,6 +4,7 @@ from dataclasses import dataclass
 from functools import cached_property
 
 import numpy as np
+from scipy.special import chdtri
 
 from muntin.surrogate.cells import Readings, collapse
 from muntin.surrogate.coding import Columns
@@ -106,3 +107,15 @@ class Flat:
         rows = np.concatenate([scaled, errors], axis=1)
         mean = family.priors.mean + rows @ a.mean[0]
         return mean, np.sqrt(np.einsum("nr,rs,ns->n", rows, a.V[0], rows))
+
+
+def over_noise(model, sd, freedom):
+    """The surface over nodes of ln sigma, flat before the data, weighted by their evidence.
+
+    The nodes reach where chi-square on the degrees of freedom leaves 1e-9 on either side.
+    """
+    low, high = chdtri(freedom, [1e-9, 1.0 - 1e-9])
+    ends = 0.5 * np.log(freedom / np.array([low, high]))
+    fit = Flat.of(model, sd * np.exp(np.linspace(*ends, 2000)))
+    weights = np.exp(fit.evidence.log - fit.evidence.log.max())
+    return fit.surface(weights / weights.sum())

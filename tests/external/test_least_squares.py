@@ -16,7 +16,7 @@ from scipy.stats import t as student
 
 from muntin.surrogate.evidence import slope
 from muntin.window.probability import Target, mean_meets, process_quantile, well_meets
-from tests.external.flat import Flat, flat_model
+from tests.external.flat import Flat, flat_model, over_noise
 
 DATA = Path(__file__).parent / "data"
 
@@ -247,20 +247,12 @@ def test_rotatable_design():
     expect_residual_sd(rotatable(), DESIGN_SD, 7, rel=1e-5)
 
 
-def unknown_noise(model, sd):
-    """Nodes over ln sigma under the flat prior of ln sigma, weighted by their evidence."""
-    noise = sd * np.exp(np.linspace(-1.6, 2.6, 400))
-    fit = Flat.of(model, noise)
-    weights = np.exp(fit.evidence.log - fit.evidence.log.max())
-    return fit.surface(weights / weights.sum())
-
-
 def test_probabilities_of_the_rotatable_design_are_students_t():
     """With sigma integrated over d ln sigma, the chances of meeting 79.5 or more are Student's t
     on 7 degrees of freedom, as tabulated; at (1, 1) a new run is likelier to meet it than the
     mean, at (1, 0) less likely.
     """
-    surface = unknown_noise(rotatable(), DESIGN_SD)
+    surface = over_noise(rotatable(), DESIGN_SD, 7)
     points = np.array(list(DESIGN_POINTS))
     expected = np.array(list(DESIGN_POINTS.values()))
     moments, target = surface.moments(points), Target(low=79.5)
@@ -272,7 +264,7 @@ def test_probabilities_of_the_rotatable_design_are_students_t():
 
 
 def test_quantiles_of_the_rotatable_design_are_students_t():
-    surface = unknown_noise(rotatable(), DESIGN_SD)
+    surface = over_noise(rotatable(), DESIGN_SD, 7)
     points = np.array(list(DESIGN_POINTS))
     expected = np.array(list(DESIGN_POINTS.values()))
     for level in (0.05, 0.5, 0.975):
