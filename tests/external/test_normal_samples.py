@@ -81,7 +81,7 @@ def test_tolerance_factors():
     which leaves 5e-5 of a chance where a hundred readings know it best.
 
     mean - k sd is met by a share p or more of the wells with probability gamma, and mean -+ k sd
-    likewise; Howe's two-sided approximation (1969) is not what comes out for a few readings.
+    likewise; Howe's two-sided approximation (1969) is not what comes out for three readings.
     """
     for n, rows in factors().groupby("n"):
         surface, mean, sd = sample(int(n))
@@ -92,9 +92,9 @@ def test_tolerance_factors():
             reach = row.k_two_sided_exact * sd
             found = chance_between(surface, HERE, row.p, mean, reach)
             assert found == pytest.approx(row.gamma, abs=5e-5)
-            if n <= 5:
+            if n == 3:
                 howe = chance_between(surface, HERE, row.p, mean, row.k_two_sided_howe * sd)
-                assert abs(howe - row.gamma) > 5e-5
+                assert abs(howe - row.gamma) > 2e-4
 
 
 @pytest.mark.parametrize(("n", "factor"), [(43, 1.873954), (6, 4.411081)])
