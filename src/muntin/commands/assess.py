@@ -15,6 +15,15 @@ Out = Annotated[
     Path | None,
     typer.Option(metavar="TABLE", help="where to write what is known there, or everywhere (.csv)"),
 ]
+Influence = Annotated[
+    bool, typer.Option("--influence", help="how much each factor moves each response")
+]
+Negligible = Annotated[
+    float | None,
+    typer.Option(
+        metavar="SIZE", help="--influence, and how likely a factor moves a response by less than it"
+    ),
+]
 
 
 @command
@@ -25,11 +34,14 @@ def assess(
     at: At = None,
     out: Out = None,
     surrogate: SurrogateOption = Surrogate.stacked,
+    influence: Influence = False,
+    negligible: Negligible = None,
 ) -> Output:
     """Judge every condition of the range, or those of a table, and check the model."""
     from muntin.commands.conditions import check_out, known_at, read_conditions, write_table
     from muntin.record import open_study
     from muntin.report.facts import records, standing_facts, study_facts
+    from muntin.report.influence_text import influence_facts, influence_lines
     from muntin.report.text import assess_screen
     from muntin.window.assessment import assess as judge
     from muntin.window.grid import judged_grid
@@ -50,8 +62,14 @@ def assess(
     known = None if conditions is None else known_at(view, conditions)
     if known is not None:
         facts["at"] = records(known)
+    moved: list[Any] = []
+    if influence or negligible is not None:
+        tell("drawing surfaces for the influence of the factors")
+        tables = {name: view.influence(name, negligible) for name in view.stacks}
+        facts["influence"] = influence_facts(tables, negligible)
+        moved = influence_lines(study, tables, negligible)
     if out is not None:
         everywhere = judged_grid(study.definition)[0]
         write_table(known_at(view, everywhere) if known is None else known, out)
         facts["files"] = [str(out)]
-    return Output(facts, assess_screen(view, window, known, out))
+    return Output(facts, assess_screen(view, window, known, out, moved))

@@ -206,10 +206,16 @@ def standing(view: Assessment, window: Window | None, few_lines: int = _FEW) -> 
 
 
 def assess_screen(
-    view: Assessment, window: Window | None, known: pd.DataFrame | None, out: Path | None
+    view: Assessment,
+    window: Window | None,
+    known: pd.DataFrame | None,
+    out: Path | None,
+    influence: Sequence[RenderableType] = (),
 ) -> RenderableType:
-    """Return the screen of `assess`; `known` is the table of the conditions asked for."""
-    sections = standing(view, window)
+    """Return the screen of `assess`; `known` is the table of the conditions asked for, and
+    `influence` what each factor does, where asked.
+    """
+    sections = [*standing(view, window), ("Factors", influence)]
     if known is not None and out is None:
         sections.append(("There", [known_table(view.study.definition, known)]))
     if out is not None:

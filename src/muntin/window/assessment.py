@@ -19,6 +19,7 @@ from muntin.surrogate.nodes import Surface, mixture
 from muntin.window.checks import Check, study_checks
 from muntin.window.coded import code, coding_of, priors_for, readings_of, shared_by
 from muntin.window.grid import judged_grid
+from muntin.window.influence import DRAWS, chosen_response, influence_of
 from muntin.window.probability import (
     Target,
     mean_meets,
@@ -124,6 +125,23 @@ class Assessment:
             if surface is not None:
                 p *= meets(surface, surface.moments(X), target_of(response))
         return p
+
+    def influence(
+        self,
+        response: str | None = None,
+        negligible: float | None = None,
+        draws: int = DRAWS,
+        seed: int | None = None,
+    ) -> pd.DataFrame:
+        """Influence of each factor on the process mean of a response that has been read.
+
+        Without a name the first judged response that has; see `influence_of` for the columns.
+        seed: that of the assessment where None. Raises StudyFaults and ValueError.
+        """
+        asked = chosen_response(self.study, response, self.stacks)
+        seed = self.seed if seed is None else seed
+        surface = self.surfaces[asked.name]
+        return influence_of(self.study, asked, surface, negligible, draws, seed)
 
     def window(self) -> Window:
         """The predicted operating window (plate scale), on a grid of bench steps."""
