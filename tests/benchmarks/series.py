@@ -71,8 +71,11 @@ def study_of(plates: list[pd.DataFrame]) -> Study:
                 role="test",
                 ph_target=plate["ph"],
                 salt_target=plate["salt"],
+                ph_measured=False,
+                salt_measured=False,
                 recovery_sd=np.nan,
                 recovery_state="read",
+                recovery_side=0,
                 exclude="",
             )
         )
@@ -84,9 +87,12 @@ def study_of(plates: list[pd.DataFrame]) -> Study:
         "salt",
         "ph_target",
         "salt_target",
+        "ph_measured",
+        "salt_measured",
         "recovery",
         "recovery_sd",
         "recovery_state",
+        "recovery_side",
         "exclude",
     ]
     wells = pd.concat(frames, ignore_index=True) if frames else pd.DataFrame(columns=columns)

@@ -15,6 +15,8 @@ from muntin.record import StudyFaults, open_study
 from tests.record.conftest import PLATE, STUDY
 
 TOML, CSV = "study.toml", "plates/plate-01.csv"
+FACTORS = ("ph", "salt", "resin")
+ENDS = ("", "_sd", "_state", "_side", "_exclude")
 
 
 def workbook(text: str, before: str | None = None) -> bytes:
@@ -40,9 +42,10 @@ def workbook(text: str, before: str | None = None) -> bytes:
 def test_wells_of_the_small_study(make):
     wells = open_study(make({})).wells
     assert list(wells.columns) == [
-        *("plate", "well", "role", "ph", "ph_target", "salt", "salt_target", "resin"),
-        *("resin_target", "recovery", "recovery_sd", "recovery_state", "recovery_exclude"),
-        *("hcp", "hcp_sd", "hcp_state", "hcp_exclude", "exclude"),
+        *("plate", "well", "role"),
+        *(f"{name}{end}" for name in FACTORS for end in ("", "_target", "_measured")),
+        *(f"{name}{end}" for name in ("recovery", "hcp") for end in ENDS),
+        "exclude",
     ]
     assert list(wells["well"]) == ["A1", "A2", "B1", "B2", "C1", "C2"]
     assert list(wells["role"]) == ["test", "bridge", "reference", "test", "blank", "load"]
@@ -50,6 +53,8 @@ def test_wells_of_the_small_study(make):
     assert list(wells["hcp_state"]) == ["read", "censored", "awaited", "excluded", "none", "none"]
     assert list(wells["exclude"]) == ["", "", "", "pipetted twice", "", ""]
     np.testing.assert_array_equal(wells["recovery"], [0.83, 0.91, np.nan, np.nan, 0.01, np.nan])
+    assert list(wells["hcp_side"]) == [0, -1, 0, 0, 0, 0]
+    assert not wells[["ph_measured", "salt_measured", "resin_measured"]].any(axis=None)
     np.testing.assert_array_equal(wells["recovery_sd"], [0.02, *[np.nan] * 5])
     np.testing.assert_array_equal(wells["salt"], [100, 200, 250, 300, np.nan, np.nan])
     assert list(wells["resin"]) == ["Alpha", "Beta", "Alpha", "Beta", "", ""]
@@ -65,8 +70,15 @@ def test_readings_hold_only_what_informs_the_model(make):
             "ph": [5.5, 5.5],
             "salt": [100.0, 200.0],
             "resin": ["Alpha", "Beta"],
+            "ph_target": [5.5, 5.5],
+            "ph_measured": [False, False],
+            "salt_target": [100.0, 200.0],
+            "salt_measured": [False, False],
+            "resin_target": ["Alpha", "Beta"],
+            "resin_measured": [False, False],
             "y": [0.83, 0.91],
             "sd": [0.02, np.nan],
+            "censored": [0, 0],
             "row": [0, 1],
         }
     )
@@ -94,7 +106,7 @@ def test_everything_left_out_is_noticed(make):
     assert open_study(make({})).notices == (
         'plate-01: 1 well left out (B2): "pipetted twice"',
         "recovery is awaited in 1 of 4 wells",
-        "plate-01: 1 reading of hcp censored (< or >) and left out (A2)",
+        "plate-01: 1 reading of hcp censored (< or >), used as such (A2)",
         "hcp is awaited in 1 of 4 wells",
     )
 
@@ -271,7 +283,7 @@ def test_results_fill_awaited_cells_by_plate_and_well(make):
     row = study.wells.loc[2]
     assert (row["hcp"], row["hcp_sd"], row["hcp_state"]) == (12.5, 0.5, "read")
     assert (row["recovery_state"], row["recovery_exclude"]) == ("excluded", "bubble in the well")
-    assert list(study.readings("hcp")["y"]) == [40, 12.5]
+    assert list(study.readings("hcp")["y"]) == [40, 5, 12.5]
     assert "results/hcp.csv: columns not used: batch" in study.notices
     assert 'plate-01: 1 reading of recovery left out (B1): "bubble in the well"' in study.notices
 
@@ -279,7 +291,7 @@ def test_results_fill_awaited_cells_by_plate_and_well(make):
 @pytest.mark.parametrize("name", ["1", "01", "plate-1", "plate 1", "Plate_01", "plate1"])
 def test_results_may_name_a_plate_by_its_number(make, name):
     study = open_study(make({"results/hcp.csv": f"plate,well,hcp\n{name},B1,12.5\n"}))
-    assert list(study.readings("hcp")["y"]) == [40, 12.5]
+    assert list(study.readings("hcp")["y"]) == [40, 5, 12.5]
 
 
 def test_the_exact_name_of_a_plate_comes_first(make):
@@ -297,7 +309,7 @@ def test_results_of_wells_that_inform_nothing_are_noticed(make):
         "kept on record, not used"
     )
     assert study.wells["hcp"][4] == 3
-    assert list(study.readings("hcp")["y"]) == [40, 12.5]
+    assert list(study.readings("hcp")["y"]) == [40, 5, 12.5]
 
 
 COPY = "well,ph,salt,resin,recovery,hcp\n" + "".join(
@@ -434,7 +446,9 @@ def test_nothing_run_yet_is_sound(make, files):
     study = open_study(folder)
     assert len(study.readings("recovery")) == 0
     assert list(study.readings("recovery").columns) == [
-        *("plate", "well", "role", "ph", "salt", "resin", "y", "sd", "row")
+        *("plate", "well", "role", *FACTORS),
+        *(f"{name}{end}" for name in FACTORS for end in ("_target", "_measured")),
+        *("y", "sd", "censored", "row"),
     ]
     assert study.counts().wells == 0
     assert study.notices == ()

@@ -287,10 +287,15 @@ def test_an_awaited_response_withholds_the_joint_probability(tmp_path):
     ]
 
 
-def test_censored_readings_alone_leave_a_response_awaited(tmp_path):
-    plates = [plate.assign(hcp="<2") for plate in EARLIER]
-    view = assessed(tmp_path, plates, "quadratic", responses=[RECOVERY, HCP])
-    assert view.awaited == ("hcp",)
+def test_censored_readings_alone_speak_for_their_side(tmp_path):
+    """All below 2, or all above it, where at most HCP["at_most"] is asked."""
+    p = {}
+    for sign in "<>":
+        plates = [plate.assign(hcp=f"{sign}2") for plate in EARLIER]
+        view = assessed(tmp_path / sign, plates, "quadratic", responses=[RECOVERY, HCP])
+        assert view.awaited == ()
+        p[sign] = view.at(ASKED)["hcp_p_mean"].to_numpy()
+    assert (p["<"] > p[">"]).all()
 
 
 # Faults of conditions.

@@ -10,6 +10,7 @@ import pandas as pd
 from numpy.typing import NDArray
 
 from muntin.record.definition import Definition
+from muntin.record.readings import USED
 from muntin.record.study import Study
 from muntin.window.grid import judged_grid
 
@@ -30,7 +31,7 @@ def run_conditions(study: Study) -> tuple[RunCondition, ...]:
     names = study.definition.factor_names
     frame = study.informing()
     states = frame[[f"{r.name}_state" for r in study.definition.responses]]
-    frame = frame[(states == "read").any(axis=1)]
+    frame = frame[states.isin(USED).any(axis=1)]
     found: dict[tuple[object, ...], list[tuple[str, str, str]]] = {}
     targets = [frame[f"{n}_target"] for n in names]
     for *values, plate, well, role in zip(

@@ -2,7 +2,7 @@
 
 A new well reads, linearised in latent units, z = f(x) + inside errors + a * scale errors + noise;
 wells of the new plate share its errors. Noise is sigma^2 / E[g'(f)^2], so that a well on a
-plateau tells little of its logit.
+plateau tells little of its logit, and what its setting errors make of f.
 """
 
 from __future__ import annotations
@@ -28,6 +28,7 @@ class Outlook:
     surface: S nodes of the response. judged (P, D) and candidates (Q, D): coded. groups: for each
     inside error and each scale error the group number (Q,) a candidate would fall into on the new
     plate. watched: numbers of the judged points whose covariance with every candidate is held.
+    setting (Q, D): sd with which the bench sets each coded column of a candidate; None says 0.
     """
 
     surface: Surface
@@ -36,6 +37,7 @@ class Outlook:
     inside: tuple[Index, ...]
     scale: tuple[Index, ...]
     watched: Index
+    setting: Array | None = None
     mean: Array = field(init=False)
     variance: Array = field(init=False)
     explained: Array = field(init=False)
@@ -56,16 +58,18 @@ class Outlook:
     def _reading(self) -> None:
         """Noise (S, Q) of a well in latent units, and the lever (S, Q) of a scale error."""
         link, sd = self.surface.link, np.sqrt(self.well_variance)
-        f = self.well_mean[..., None] + sd[..., None] * _Z
-        if link != "logit":
-            self.noise = np.repeat(self.surface.errors.noise[:, None] ** 2, f.shape[1], axis=1)
-            self.lever = np.zeros_like(sd)
-            return
-        ceiling = self.surface.errors.ceiling[:, None, None]
-        slope, g = slope_of(link, f, ceiling), mean_of(link, f, ceiling)
-        square = np.maximum((slope**2) @ _W, 1e-12)
-        self.noise = self.surface.errors.noise[:, None] ** 2 / square
-        self.lever = ((slope * g) @ _W) / square
+        own = self.surface.errors.noise[:, None] ** 2
+        self.lever = np.zeros_like(sd)
+        self.noise = np.repeat(own, sd.shape[1], axis=1)
+        if link == "logit":
+            f = self.well_mean[..., None] + sd[..., None] * _Z
+            ceiling = self.surface.errors.ceiling[:, None, None]
+            slope, g = slope_of(link, f, ceiling), mean_of(link, f, ceiling)
+            square = np.maximum((slope**2) @ _W, 1e-12)
+            self.noise = own / square
+            self.lever = ((slope * g) @ _W) / square
+        if self.setting is not None and self.setting.any():
+            self.noise = self.noise + self.surface.wander(self.candidates, self.setting)
 
     def after(self, wells: Index) -> Array:
         """Variance (S, W, k) that would be explained at the watched points by one more well."""

@@ -17,7 +17,7 @@ from muntin.design.forecast import Tails, wrong_share
 from muntin.design.outlook import Outlook
 from muntin.record.definition import Definition
 from muntin.window.assessment import Assessment, target_of
-from muntin.window.coded import code, group_numbers, shared_by
+from muntin.window.coded import code, group_numbers, setting_sd, shared_by
 from muntin.window.grid import judged_grid
 
 Array = NDArray[np.float64]
@@ -122,6 +122,7 @@ class _Table:
         self.levels = Levels(definition, self.frame)
         judged, _ = judged_grid(definition)
         self.X, P = code(definition, self.frame), code(definition, judged)
+        self.setting = setting_sd(definition, self.frame)
         self.responses = [r for r in definition.judged if r.name in self.view.surfaces]
         self.targets = tuple(target_of(r) for r in self.responses)
         surfaces = [self.view.surfaces[r.name] for r in self.responses]
@@ -148,6 +149,7 @@ class _Table:
                     tuple(_future_groups(definition, new, by) for by in shared.inside),
                     tuple(_future_groups(definition, new, by) for by in shared.scale),
                     watched,
+                    self.setting,
                 )
             )
         return tuple(outlooks)

@@ -46,7 +46,9 @@ def parse_number(text: str, comma: bool = False) -> float:
 
 
 def parse_reading(text: str, comma: bool = False) -> tuple[str, float]:
-    """Return the state of a reading ("awaited", "censored", "read") and its value, else NaN.
+    """Return the state of a reading ("awaited", "censored", "read") and its value, NaN if awaited.
+
+    The value of a censored reading is its limit.
 
     Raises CellError.
     """
@@ -54,8 +56,7 @@ def parse_reading(text: str, comma: bool = False) -> tuple[str, float]:
         return "awaited", math.nan
     censored = _CENSORED.fullmatch(text)
     if censored:
-        parse_number(censored[2], comma)
-        return "censored", math.nan
+        return "censored", parse_number(censored[2], comma)
     return "read", parse_number(text, comma)
 
 

@@ -37,8 +37,9 @@ def read_levels(
     stocks: Sequence[Stock],
     plate: str,
     found: Findings,
-) -> tuple[Floats, Floats]:
-    """Return the values that the model uses and the targets (raw unit), shape (rows,) each.
+) -> tuple[Floats, Floats, Truths]:
+    """Return the values that the model uses, the targets (raw unit) and whether a value was
+    measured, shape (rows,) each.
 
     A value is the well's measured one, else its stock's, else the target. Only rows that are
     `needed` must hold a value, inside the range.
@@ -52,7 +53,8 @@ def read_levels(
     _check_stocks(factor, stocks, found)
     measured = np.where(np.isfinite(measured), measured, of_stock)
     found.notices.extend(_off_target(table, factor, targets, measured, needed))
-    return np.where(np.isfinite(measured), measured, targets), targets
+    known = np.isfinite(measured)
+    return np.where(known, measured, targets), targets, known
 
 
 def _check_targets(

@@ -26,13 +26,6 @@ def definition_notices(definition: Definition) -> Iterator[str]:
                     f"{number(last)}, short of high, which is {number(high)}"
                 )
 
-    set_by_bench = [factor.label for factor in definition.factors if factor.set_sd is not None]
-    if set_by_bench:
-        yield (
-            f"set_sd of {listed(set_by_bench)} is kept on record but not yet added to the noise; "
-            "the readings' own spread stands for it"
-        )
-
 
 def well_notices(
     definition: Definition, wells: pd.DataFrame, void: Mapping[str, str]
@@ -54,8 +47,8 @@ def well_notices(
         states = counting[f"{name}_state"]
         for name_of, group in counting[states == "censored"].groupby("plate", sort=False):
             yield (
-                f"{name_of}: {counted(len(group), 'reading')} of {name} censored (< or >) and left "
-                f"out ({listed(group['well'])})"
+                f"{name_of}: {counted(len(group), 'reading')} of {name} censored (< or >), used as "
+                f"such ({listed(group['well'])})"
             )
         awaited = int((states == "awaited").sum())
         if awaited:

@@ -113,8 +113,9 @@ def read_plate(
         "exclude": excluded,
     }
     for factor in definition.factors:
-        values, targets = _factor(table, factor, needed, stocks, name, found)
-        columns |= {factor.name: values, f"{factor.name}_target": targets}
+        levels = _factor(table, factor, needed, stocks, name, found)
+        ends = ("", "_target", "_measured")
+        columns |= {f"{factor.name}{end}": v for end, v in zip(ends, levels, strict=True)}
     readings = {
         response.name: read_readings(table, response, found.faults)
         for response in definition.responses
@@ -142,13 +143,15 @@ def _factor(
     stocks: Sequence[Stock],
     plate: str,
     found: Findings,
-) -> tuple[Any, Any]:
+) -> tuple[Any, Any, Any]:
+    """Values that the model uses, targets, and whether a value was measured."""
+    unmeasured = [False] * len(table)
     if factor.name not in table.columns:
         filled = _earlier(table, factor, needed, found)
-        return filled, filled
+        return filled, filled, unmeasured
     if not factor.continuous:
         choices = read_choices(table, factor, needed, found)
-        return choices, choices
+        return choices, choices, unmeasured
     return read_levels(table, factor, needed, stocks, plate, found)
 
 
@@ -171,7 +174,8 @@ def _others(table: Table, definition: Definition, found: Findings) -> tuple[str,
     """Return the columns that pass through; odd ones are faults or notices."""
     known = plate_columns(definition)
     taken = {f"{factor.name}_target".casefold() for factor in definition.factors}
-    taken |= {f"{response.name}_state".casefold() for response in definition.responses}
+    ends = ("_state", "_side")
+    taken |= {f"{r.name}{end}".casefold() for r in definition.responses for end in ends}
     others = []
     for name in table.columns:
         if name.casefold() in taken:

@@ -12,12 +12,14 @@ from muntin.record.responses import Response
 from muntin.record.tables import Table
 
 INFORMING = ("test", "bridge", "reference")
+USED = ("read", "censored")
 
 
 class Reading(NamedTuple):
     """One cell: its state, value (user's unit), standard uncertainty, reason to leave it out.
 
-    `text` is the cell as written, `file` and `where` its address.
+    The value of a censored reading is its limit. `text` is the cell as written, `file` and `where`
+    its address.
     """
 
     state: str = "awaited"
@@ -27,6 +29,13 @@ class Reading(NamedTuple):
     text: str = ""
     file: str = ""
     where: str = ""
+
+    @property
+    def side(self) -> int:
+        """-1 where the reading lies below its value, 1 where above, 0 where it is the value."""
+        if self.state != "censored":
+            return 0
+        return -1 if self.text[0] in "<≤" else 1
 
 
 def response_columns(responses: Iterable[Response]) -> list[str]:
@@ -90,7 +99,7 @@ def _differs(old: Reading, new: Reading, column: str, first: str, second: str) -
 def reading_faults(response: Response, readings: Sequence[Reading]) -> Iterable[Fault]:
     """Yield the readings that cannot be: at or below 0 for "positive", far outside a fraction.
 
-    `readings` are those in use: read, and not left out.
+    `readings` are those in use: read or censored, and not left out.
     """
     if response.kind == "positive":
         for reading in readings:

@@ -14,7 +14,7 @@ from muntin.record.filled_plans import filled_plans
 from muntin.record.notes import Plate, read_notes
 from muntin.record.notices import column_notice, definition_notices, odd_notices, well_notices
 from muntin.record.plates import PlateRows, open_plate, outside_limits, read_plate
-from muntin.record.readings import INFORMING, Reading
+from muntin.record.readings import INFORMING, USED, Reading
 from muntin.record.results import Run, join_results
 from muntin.record.stocks import read_stocks
 from muntin.record.tables import Table, table_files
@@ -52,8 +52,9 @@ class Study:
     """One study, frozen; made by `open_study`.
 
     `wells` has a row a well of every plate, void ones too: plate, well, role; each factor (the
-    value the model uses, raw unit) and its target; each response in the user's unit with its _sd,
-    _state and _exclude; exclude; then the columns that passed through.
+    value the model uses, raw unit), its _target and whether it was _measured; each response in the
+    user's unit (the limit of a censored reading) with its _sd, _state, _side (-1 below the limit, 1
+    above, else 0) and _exclude; exclude; then the columns that passed through.
     """
 
     folder: Path
@@ -76,21 +77,25 @@ class Study:
     def readings(self, name: str) -> pd.DataFrame:
         """Return the readings of one response that inform the model.
 
-        Columns: plate, well, role; the factors (raw unit); the columns that shared errors name,
-        and the target of each factor that they name; y and sd in the natural unit (per cent of a
-        fraction divided by 100), sd NaN where none is given; row, the row in `wells`. Raises
-        KeyError for an unknown response.
+        Columns: plate, well, role; the factors (raw unit), their targets, and whether a value was
+        measured; the columns that shared errors name; y and sd in the natural unit (per cent of a
+        fraction divided by 100), sd NaN where none is given; censored, 0 for a reading, -1 where
+        it lies below y and 1 where above; row, the row in `wells`. Raises KeyError for an unknown
+        response.
         """
         response = {response.name: response for response in self.definition.responses}[name]
         wells = self.informing()
-        wells = wells[wells[f"{name}_state"] == "read"]
+        wells = wells[wells[f"{name}_state"].isin(USED)]
         factors = self.definition.factor_names
         shared = [by for error in self.definition.shared_errors for by in error.by]
-        targets = [f"{by}_target" for by in shared if by in factors]
-        columns = dict.fromkeys(["plate", "well", "role", *factors, *shared, *targets])
+        about = [f"{factor}{end}" for factor in factors for end in ("_target", "_measured")]
+        columns = dict.fromkeys(["plate", "well", "role", *factors, *about, *shared])
         unit = response.unit_size
         return wells[list(columns)].assign(
-            y=wells[name] / unit, sd=wells[f"{name}_sd"] / unit, row=wells.index
+            y=wells[name] / unit,
+            sd=wells[f"{name}_sd"] / unit,
+            censored=wells[f"{name}_side"],
+            row=wells.index,
         )
 
     def counts(self) -> Counts:

@@ -11,7 +11,7 @@ import pandas as pd
 from muntin.record.definition import STUDY_FILE, Definition
 from muntin.record.faults import Fault, counted, did_you_mean, nearest, quoted
 from muntin.record.plates import PlateRows
-from muntin.record.readings import INFORMING, Reading, reading_faults
+from muntin.record.readings import INFORMING, USED, Reading, reading_faults
 from muntin.record.tables import Table, missing_column
 
 
@@ -24,16 +24,18 @@ def wells_table(
     roles, excluded = _stacked(rows, "role"), _stacked(rows, "exclude")
     data: dict[str, Any] = {name: _stacked(rows, name) for name in ("plate", "well", "role")}
     for name in definition.factor_names:
-        data |= {column: _stacked(rows, column) for column in (name, f"{name}_target")}
+        columns = (name, f"{name}_target", f"{name}_measured")
+        data |= {column: _stacked(rows, column) for column in columns}
     for name, given in readings.items():
         states = [
             state_of(reading, role, why)
             for reading, role, why in zip(given, roles, excluded, strict=True)
         ]
-        read = np.array([state == "read" for state in states], dtype=bool)
+        read = np.array([state in USED for state in states], dtype=bool)
         data[name] = np.where(read, [reading.value for reading in given], np.nan)
         data[f"{name}_sd"] = np.where(read, [reading.sd for reading in given], np.nan)
         data[f"{name}_state"] = states
+        data[f"{name}_side"] = np.where(read, [reading.side for reading in given], 0)
         data[f"{name}_exclude"] = [reading.reason for reading in given]
     data["exclude"] = excluded
     shared = [name for error in definition.shared_errors for name in error.by]
@@ -54,6 +56,8 @@ def _typed(frame: pd.DataFrame, definition: Definition) -> pd.DataFrame:
     numbers = [column for name in ranged for column in (name, f"{name}_target")]
     numbers += [f"{r.name}{end}" for r in definition.responses for end in ("", "_sd")]
     types = {str(name): "float64" if name in numbers else "object" for name in frame.columns}
+    types |= {f"{name}_measured": "bool" for name in definition.factor_names}
+    types |= {f"{r.name}_side": "int64" for r in definition.responses}
     return frame.astype(types)
 
 
@@ -71,7 +75,7 @@ def late_faults(
     for response in definition.responses:
         states = frame[f"{response.name}_state"]
         given = zip(readings[response.name], states, strict=True)
-        yield from reading_faults(response, [one for one, state in given if state == "read"])
+        yield from reading_faults(response, [one for one, state in given if state in USED])
 
 
 def no_reading_fault(definition: Definition, counting: pd.DataFrame) -> Fault | None:
@@ -80,7 +84,7 @@ def no_reading_fault(definition: Definition, counting: pd.DataFrame) -> Fault | 
     `counting` are the informing wells of plates that count; without any, nothing has been run.
     """
     names = [response.name for response in definition.responses]
-    if counting.empty or any((counting[f"{name}_state"] == "read").any() for name in names):
+    if counting.empty or any(counting[f"{name}_state"].isin(USED).any() for name in names):
         return None
     plates = counting["plate"].nunique()
     return Fault(

@@ -78,7 +78,7 @@ def read_lines(study: Study) -> list[str]:
         name = response.name
         states = {
             "left out": counts.excluded[name],
-            "censored and left out": counts.censored[name],
+            "censored": counts.censored[name],
             "awaited": counts.awaited[name],
         }
         others = "".join(f", {count} {state}" for state, count in states.items() if count)
@@ -196,7 +196,7 @@ def standing(view: Assessment, window: Window | None, few_lines: int = _FEW) -> 
     notes = [f"Awaited: {awaited}; the advice is provisional."] if view.awaited else []
     told = () if window is None else window.unsupported
     read = [r.label for r in study.definition.responses if r.name in view.stacks]
-    checks = check_lines(view.checks, told, read)
+    checks = check_lines(view.checks(), told, read)
     return [
         ("Read", read_lines(study)),
         ("Noted", [*notes, *few(study.notices, few_lines)]),

@@ -104,7 +104,7 @@ def _single_pit(lik: CellLikelihood, y: Array, cavity: Pair, points: Points, pit
     A small noise makes a step of it in u, which the points straddle; the Gaussian step of the
     same place and slope has a known average over the cavity.
     """
-    at = latent_of(lik.link, y, lik.ceiling) - lik.offset
+    at = np.broadcast_to(latent_of(lik.link, y, lik.ceiling) - lik.offset, cavity.u.shape)
     at_finite = np.where(np.isfinite(at), at, -lik.offset)
     noise = lik.reading_variance(at_finite)
     width = np.sqrt(noise + (lik.scale * y) ** 2 * cavity.ss) / lik.slope(at_finite)

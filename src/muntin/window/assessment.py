@@ -17,7 +17,7 @@ from muntin.record.study import Study
 from muntin.surrogate.fit import SURROGATES, Stack, fit_stack, prior_surface
 from muntin.surrogate.nodes import Surface, mixture
 from muntin.window.checks import Check, study_checks
-from muntin.window.coded import code, coding_of, priors_for, readings_of, shared_by
+from muntin.window.coded import code, coding_of, priors_for, readings_of, setting_sd, shared_by
 from muntin.window.grid import judged_grid
 from muntin.window.influence import DRAWS, chosen_response, influence_of
 from muntin.window.probability import (
@@ -61,10 +61,13 @@ class Assessment:
         """Whether no judged response has been read yet, so that the prior alone speaks."""
         return not any(r.name in self.stacks for r in self.study.definition.judged)
 
-    @cached_property
     def checks(self) -> tuple[Check, ...]:
-        """Checks of the model against the readings."""
-        return study_checks(self.study, self.stacks)
+        """Checks of the model against the readings, made once."""
+        return self._checks
+
+    @cached_property
+    def _checks(self) -> tuple[Check, ...]:
+        return study_checks(self)
 
     def at(self, conditions: pd.DataFrame) -> pd.DataFrame:
         """What is known at conditions: a column a factor, raw units; index kept.
@@ -90,7 +93,8 @@ class Assessment:
             if response.judged:
                 target = target_of(response)
                 columns[f"{r}_p_mean"] = mean_meets(surface, moments, target)
-                columns[f"{r}_p_well"] = well_meets(surface, moments, target)
+                wander = self._wander(surface, X, frame)
+                columns[f"{r}_p_well"] = well_meets(surface, moments, target, wander)
                 joint["p_mean"] *= columns[f"{r}_p_mean"]
                 joint["p_well"] *= columns[f"{r}_p_well"]
         if not self.awaited:
@@ -119,12 +123,21 @@ class Assessment:
             return self.kept(frame)
         X = code(self.study.definition, frame)
         p = np.ones(len(X))
-        meets = mean_meets if by == "mean" else well_meets
         for response in self.study.definition.judged:
             surface = self.surfaces.get(response.name)
-            if surface is not None:
-                p *= meets(surface, surface.moments(X), target_of(response))
+            if surface is None:
+                continue
+            moments, target = surface.moments(X), target_of(response)
+            if by == "mean":
+                p *= mean_meets(surface, moments, target)
+            else:
+                p *= well_meets(surface, moments, target, self._wander(surface, X, frame))
         return p
+
+    def _wander(self, surface: Surface, X: Array, frame: pd.DataFrame) -> Array | float:
+        """Latent variance (S, n) that setting errors make of a new well at coded X."""
+        setting = setting_sd(self.study.definition, frame)
+        return surface.wander(X, setting) if setting.any() else 0.0
 
     def influence(
         self,
@@ -150,7 +163,7 @@ class Assessment:
         p_mean = self.judged(grid, "mean")
         by = definition.judged_by
         judged = p_mean if by == "mean" else self.judged(grid, by)
-        unsupported = tuple(c.sentence for c in self.checks if not c.passed and c.serious)
+        unsupported = tuple(c.sentence for c in self.checks() if not c.passed and c.serious)
         return judge_window(definition, grid, regular, p_mean, judged, unsupported)
 
 

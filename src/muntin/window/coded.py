@@ -52,6 +52,26 @@ def code(definition: Definition, frame: pd.DataFrame) -> Array:
     return coding_of(definition).code(columns)
 
 
+def setting_sd(
+    definition: Definition, frame: pd.DataFrame, measured: NDArray[np.bool_] | None = None
+) -> Array:
+    """Sd (n, D) with which the bench sets each coded column at the conditions of a frame (raw
+    units); 0 for choices, where a factor has no set_sd, and where `measured` (n, factors).
+    """
+    coding = coding_of(definition)
+    out = np.zeros((len(frame), len(coding.columns.factor)))
+    for number, factor in enumerate(definition.factors):
+        if factor.set_sd is None or not factor.continuous:
+            continue
+        x = frame[factor.name].to_numpy(dtype=float)
+        low, high, _ = factor.span
+        sd = factor.set_sd.at(x)
+        coded = sd / x / np.log(high / low) if factor.scale == "log" else sd / (high - low)
+        free = np.ones(len(x)) if measured is None else ~measured[:, number]
+        out[:, coding.columns.factor.index(number)] = 2.0 * coded * free
+    return out
+
+
 def shared_by(definition: Definition, response: Response) -> SharedBy:
     """The shared errors of a response; on a link without a plateau all of them act inside."""
     bounded = response.kind == "fraction"
@@ -80,10 +100,15 @@ def readings_of(study: Study, response: Response) -> Readings:
     if response.kind == "positive":
         y, sd = np.log(y), sd / y
     shared = shared_by(definition, response)
+    measured = [f"{name}_measured" for name in definition.factor_names]
+    known = frame[measured].to_numpy(dtype=bool)
     return Readings(
         X=code(definition, frame),
         y=y,
         sd=sd,
+        censored=frame["censored"].to_numpy(dtype=np.intp),
+        setting=setting_sd(definition, frame, known),
+        plate=np.asarray(frame.groupby("plate", sort=False).ngroup(), dtype=np.intp),
         inside=tuple(group_numbers(definition, frame, by) for by in shared.inside),
         scale=tuple(group_numbers(definition, frame, by) for by in shared.scale),
     )

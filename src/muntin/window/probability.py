@@ -57,15 +57,17 @@ def node_mean_meets(surface: Surface, moments: tuple[Array, Array], target: Targ
     return high - low
 
 
-def well_meets(surface: Surface, moments: tuple[Array, Array], target: Target) -> Array:
+def well_meets(
+    surface: Surface, moments: tuple[Array, Array], target: Target, wander: Array | float = 0.0
+) -> Array:
     """p_well (n,) from latent moments (S, n): one future well on a new plate.
 
-    Its reading has the common noise; the uncertainty that a reading may state of itself is not
-    known beforehand and not added.
+    wander (S, n): latent variance that its setting errors make. Its reading has the common noise;
+    the uncertainty that a reading may state of itself is not known beforehand and not added.
     """
     mean, variance = moments
     errors = surface.errors
-    inside = (errors.inside**2).sum(1)[:, None]
+    inside = (errors.inside**2).sum(1)[:, None] + wander
     noise = errors.noise[:, None] ** 2
     if surface.link == "logit":
         return _fraction_well(surface, mean, variance + inside, target)
