@@ -11,11 +11,14 @@ from numpy.typing import NDArray
 from muntin.surrogate.assembly import nodes_of
 from muntin.surrogate.cells import Readings, collapse
 from muntin.surrogate.coding import Columns
+from muntin.surrogate.convergence import Sampling
+from muntin.surrogate.draws import Draws
 from muntin.surrogate.evidence import Evidence, Family, Model
 from muntin.surrogate.hyperparameters import Posterior, integrate
 from muntin.surrogate.links import Link
 from muntin.surrogate.loo import LeaveOneOut, leave_one_out
 from muntin.surrogate.nodes import Surface, mixture
+from muntin.surrogate.nuts import Nuts, resampled
 from muntin.surrogate.polynomial import Quadratic
 from muntin.surrogate.priors import Kind, Priors
 from muntin.surrogate.process import GaussianProcess
@@ -34,7 +37,8 @@ class Fit:
     surface: its nodes. theta (S, H) and weights (S,): all hyperparameter nodes, log scale, named
     by names. loo: leave-one-out predictions. ess, k_hat: of the importance weights.
     log_marginal: log marginal likelihood. laplace: nodes without a fixed point, used as Laplace's.
-    model and posterior: what was fitted, and the fast engine's nodes.
+    model and posterior: what was fitted, and the fast engine's nodes. sampling and draws: of the
+    engine nuts, whose surface, nodes and predictions are then those above; None with the fast one.
     """
 
     name: str
@@ -49,6 +53,8 @@ class Fit:
     laplace: int
     model: Model
     posterior: Posterior
+    sampling: Sampling | None = None
+    draws: Draws | None = None
 
 
 @dataclass(frozen=True)
@@ -120,9 +126,15 @@ def fit_stack(
     columns: Columns,
     priors: Priors,
     seed: int,
+    engine: Nuts | None = None,
 ) -> Stack:
-    """Fit the surrogates named and stack them by leave-one-out predictive density."""
+    """Fit the surrogates named and stack them by leave-one-out predictive density.
+
+    engine: settings of the reference engine; None for the fast one. Raises NotInstalledError.
+    """
     fits = tuple(fit_surrogate(n, readings, kind, columns, priors, seed) for n in names)
+    if engine is not None:
+        fits = tuple(resampled(fit, seed, engine) for fit in fits)
     shares = stacking_shares(np.stack([fit.loo.log_density for fit in fits]))
     return Stack(fits, shares, mixture([fit.surface for fit in fits], shares))
 
