@@ -1,5 +1,6 @@
 """Checks of the model against the readings."""
 
+import re
 from dataclasses import replace
 
 import numpy as np
@@ -8,7 +9,7 @@ import pytest
 from scipy.stats import binom
 
 import muntin
-from muntin.window.checks import study_checks
+from muntin.window.checks.integration import integration
 from tests.studies import HCP, PH, RECOVERY, SALT, read, read_hcp, spread, written
 
 FACTORS = [PH, SALT]
@@ -17,15 +18,24 @@ SOUND = [read(spread(FACTORS, 12, seed), seed, error) for seed, error in ((1, 0.
 
 def checks(folder, plates, surrogate="gp", **given):
     view = muntin.assess(written(folder / "study", plates, **given), surrogate)
-    return {check.name: check for check in view.checks}, view
+    return {check.name: check for check in view.checks()}, view
 
 
 @pytest.mark.parametrize("surrogate", ["gp", "quadratic", "stacked"])
 def test_sound_readings_pass(tmp_path, surrogate):
     found, view = checks(tmp_path, SOUND, surrogate)
-    assert list(found) == ["coverage", "wild wells", "integration", "plates"]
-    for name in ("coverage", "wild wells", "integration"):
-        assert found[name].passed
+    assert list(found) == [
+        "coverage",
+        "other plates",
+        "lack of fit",
+        "wild wells",
+        "priors",
+        "integration",
+        "shared errors",
+        *(["gp against quadratic"] if surrogate == "stacked" else []),
+        "confounding",
+    ]
+    assert [name for name, check in found.items() if not check.passed] == ["shared errors"]
     assert found["wild wells"].sentence == "Recovery: no wild wells."
     assert found["coverage"].sentence.endswith(
         " of 24 readings lie in the 90 % range predicted from the others "
@@ -88,9 +98,11 @@ def test_a_wild_well_is_named_and_kept(tmp_path, surrogate):
     check = found["wild wells"]
     assert not check.passed
     assert not check.serious
-    assert check.sentence == (
-        f"Recovery: far from what the others predict: plate-01 C{row + 1}; look for a cause, and "
-        "exclude only with one."
+    change = r"\(without it the window would be \d+ % of the range instead of \d+ %\)"
+    assert re.fullmatch(
+        f"Recovery: far from what the others predict: plate-01 C{row + 1} {change}; look for a "
+        "cause, and exclude only with one.",
+        check.sentence,
     )
     assert len(view.study.readings("recovery")) == 24
 
@@ -109,10 +121,8 @@ def test_a_wild_well_of_a_positive_response_may_lie_near_nothing(tmp_path):
     least = int(np.argmin(plates[0]["hcp"]))
     plates[0].loc[least, "hcp"] /= 1000.0
     found, _ = checks(tmp_path, plates, responses=[HCP])
-    assert found["wild wells"].sentence == (
-        f"hcp: far from what the others predict: plate-01 A{least + 1}; look for a cause, and "
-        "exclude only with one."
-    )
+    said = f"hcp: far from what the others predict: plate-01 A{least + 1} (without it the "
+    assert found["wild wells"].sentence.startswith(said)
 
 
 def test_every_response_with_readings_is_checked(tmp_path):
@@ -120,37 +130,33 @@ def test_every_response_with_readings_is_checked(tmp_path):
     responses = [RECOVERY, {**HCP, "label": "HCP"}, {"name": "purity", "kind": "fraction"}]
     study = written(tmp_path / "study", [p.assign(purity="") for p in plates], responses=responses)
     view = muntin.assess(study, "quadratic")
-    said = [(check.name, check.sentence.split(":")[0]) for check in view.checks[:-1]]
-    assert said == [
-        (name, label)
-        for label in ("Recovery", "HCP")
-        for name in ("coverage", "wild wells", "integration")
-    ]
+    found = view.checks()
+    names = [check.name for check in found if check.response == "recovery"]
+    assert names == [check.name for check in found if check.response == "hcp"]
+    assert [check.name for check in found if check.response is None] == ["confounding"]
+    assert len(found) == 2 * len(names) + 1
+    labels = {check.sentence.split(":")[0] for check in found if check.response == "hcp"}
+    assert labels == {"HCP"}
 
 
 @pytest.mark.parametrize(
     ("count", "passed", "sentence"),
     [
-        (
-            1,
-            False,
-            "One plate cannot tell how far plates differ; the prior speaks for p_well there.",
-        ),
-        (
-            2,
-            False,
-            "Two plates hardly tell how far plates differ; the prior speaks for p_well there.",
-        ),
-        (3, True, "3 plates tell how far plates differ."),
+        (1, False, ", which one plate cannot tell; the prior speaks for p_well there."),
+        (2, False, ", which two of them hardly tell; the prior speaks for p_well there."),
+        (3, True, " %)."),
     ],
 )
 def test_few_plates(tmp_path, count, passed, sentence):
     plates = [read(spread(FACTORS, 8, seed), seed) for seed in range(count)]
     found, view = checks(tmp_path, plates, "quadratic")
-    assert found["plates"].passed == passed
-    assert found["plates"].sentence == sentence
-    assert not found["plates"].serious
-    assert sentence not in view.window().unsupported
+    check = found["shared errors"]
+    assert check.passed == passed
+    start = "Recovery: wells that share a plate share an error of "
+    assert re.fullmatch(start + r"[\d.]+ % \(90 % range [\d.]+ to [\d.]+ %\).*", check.sentence)
+    assert check.sentence.endswith(sentence)
+    assert not check.serious
+    assert check.sentence not in view.window().unsupported
 
 
 @pytest.mark.parametrize(
@@ -166,10 +172,11 @@ def test_few_plates(tmp_path, count, passed, sentence):
 def test_averages_rest_on_enough_nodes(tmp_path, ess, k_hat, passed, shown):
     # The worst of the fits counts.
     study = written(tmp_path / "study", SOUND)
-    stack = muntin.assess(study, "stacked").stacks["recovery"]
+    view = muntin.assess(study, "stacked")
+    stack = view.stacks["recovery"]
     good, other = (replace(fit, ess=64.0, k_hat=-0.5) for fit in stack.fits)
     poor = replace(stack, fits=(good, replace(other, ess=ess, k_hat=k_hat)))
-    (check,) = (c for c in study_checks(study, {"recovery": poor}) if c.name == "integration")
+    (check,) = integration(study.definition.responses[0], poor)
     verdict = "reliable" if passed else "unreliable: add readings or narrow the priors"
     assert check.sentence == f"Recovery: averages over hyperparameters are {verdict} ({shown})."
     assert check.passed == passed
@@ -187,4 +194,4 @@ def test_a_void_plate_does_not_count(tmp_path):
     (folder / "plates").mkdir(parents=True)
     (folder / "plates" / "plate-02.toml").write_text('void = "the feed was warm"\n')
     found, _ = checks(tmp_path, [*SOUND, pd.concat(SOUND, ignore_index=True)], "quadratic")
-    assert found["plates"].sentence.startswith("Two plates hardly")
+    assert "two of them hardly tell" in found["shared errors"].sentence

@@ -12,6 +12,7 @@ import pandas as pd
 from muntin.record.study import Study
 from muntin.report.words import WINDOW
 from muntin.window.assessment import Assessment
+from muntin.window.checks import Check
 from muntin.window.window import Window
 
 if TYPE_CHECKING:
@@ -52,11 +53,18 @@ def standing_facts(view: Assessment, window: Window | None) -> Facts:
         "provisional": bool(view.awaited) and not view.fresh,
         "awaited": list(view.awaited),
         "model": {name: _model(stack) for name, stack in view.stacks.items()},
-        "checks": [
-            {"name": c.name, "passed": c.passed, "serious": c.serious, "sentence": c.sentence}
-            for c in view.checks
-        ],
+        "checks": [_check(check) for check in view.checks()],
         "window": None if window is None else _window(view, window),
+    }
+
+
+def _check(check: Check) -> Facts:
+    return {
+        "name": check.name,
+        "response": check.response,
+        "passed": check.passed,
+        "serious": check.serious,
+        "sentence": check.sentence,
     }
 
 

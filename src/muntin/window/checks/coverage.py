@@ -1,0 +1,56 @@
+"""How the readings lie in what the others predict for them, leaving out one at a time."""
+
+from __future__ import annotations
+
+import numpy as np
+from numpy.typing import NDArray
+
+from muntin.record.responses import Response
+from muntin.surrogate.evenness import evenness
+from muntin.surrogate.fit import Stack
+from muntin.window.checks.check import Check
+
+Array = NDArray[np.float64]
+# Two-sided level 0.005 of a standard normal score, for each of the two scores.
+_UNEVEN = 2.81
+_FEWEST = 8
+
+
+def coverage(response: Response, stack: Stack) -> list[Check]:
+    """Share of readings inside their leave-one-out 90 % range, against its binomial 99 % limits,
+    and whether their transforms lie evenly (the smooth test at level 0.005).
+
+    Too narrow or shifted predictions are serious; predictions wider than need be are a note.
+    """
+    from scipy.stats import binom
+
+    pit = stack.shares @ np.stack([fit.loo.pit for fit in stack.fits])
+    pit = pit[np.isfinite(pit)]
+    n, hits = len(pit), int(((pit > 0.05) & (pit < 0.95)).sum())
+    least = int(binom.ppf(0.005, n, 0.9))
+    few = hits < least
+    doubt, serious = _doubt(pit, few)
+    sentence = (
+        f"{response.label}: {hits} of {n} readings lie in the 90 % range predicted from the "
+        f"others ({'too few: ' if few else ''}{least} or more were to be expected){doubt}."
+    )
+    passed = not few and not doubt
+    return [Check("coverage", passed, few or serious or not doubt, sentence, response.name)]
+
+
+def _doubt(pit: Array, few: bool) -> tuple[str, bool]:
+    """What the transforms (n,) say against the predictions, beyond too `few` of them inside, and
+    whether that is serious.
+    """
+    if len(pit) < _FEWEST:
+        return "", False
+    found = evenness(pit)
+    said = []
+    if abs(found.side) > _UNEVEN:
+        said.append(f"most lie {'above' if found.side > 0 else 'below'} what is predicted")
+    if found.width > _UNEVEN and not few:
+        said.append("too many lie far out, so predictions are too sure")
+    serious = bool(said)
+    if found.width < -_UNEVEN:
+        said.append("they lie closer to the predictions than these allow for")
+    return "".join(f"; {text}" for text in said), serious

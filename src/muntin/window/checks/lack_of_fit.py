@@ -1,0 +1,56 @@
+"""Whether conditions scatter about the surface by more than repeats of a condition do."""
+
+from __future__ import annotations
+
+import numpy as np
+
+from muntin.record.faults import counted
+from muntin.record.responses import Response
+from muntin.surrogate.fit import Stack
+from muntin.surrogate.pure_error import pure_error
+from muntin.window.checks.check import Check
+
+_LEVEL = 0.005
+_FEWEST = 3
+
+
+def lack_of_fit(response: Response, stack: Stack) -> list[Check]:
+    """Repeats within a condition of a plate, against the noise that the surface needs.
+
+    The classical test compares mean squares; here the noise has a posterior, so the chi-square
+    tail of the repeats is averaged over it, and over the fits by their stacking shares.
+    """
+    found = [pure_error(fit.model, fit.posterior) for fit in stack.fits]
+    degrees = found[0].degrees
+    if degrees < _FEWEST:
+        repeats = counted(degrees, "repeat") if degrees else "no repeat"
+        sentence = f"{response.label}: too few repeats to tell lack of fit from noise ({repeats})."
+        return [Check("lack of fit", True, True, sentence, response.name)]
+    tail = float(stack.shares @ [f.tail for f in found])
+    needed = float(np.exp(stack.shares @ np.log([f.needed for f in found])))
+    passed = tail >= _LEVEL
+    unit = _unit(response)
+    told = f"{_size(found[0].sd, unit)} by {counted(degrees, 'repeat')}, {_size(needed, unit)}"
+    if passed:
+        sentence = (
+            f"{response.label}: the surface fits as closely as repeats allow (sd {told} by the "
+            "conditions)."
+        )
+    else:
+        sentence = (
+            f"{response.label}: conditions lie off the surface by more than repeats allow (sd "
+            f"{told} by the conditions); where each condition has a stock of its own, made a "
+            'little wrong, add a shared error by it that acts "inside".'
+        )
+    return [Check("lack of fit", passed, True, sentence, response.name)]
+
+
+def _unit(response: Response) -> tuple[float, str]:
+    """Size and name of the unit in which a sd of readings is told."""
+    if response.kind == "positive":
+        return 100.0, " %"
+    return response.unit_size, f" {response.unit}".rstrip()
+
+
+def _size(value: float, unit: tuple[float, str]) -> str:
+    return f"{value * unit[0]:.2g}{unit[1]}"

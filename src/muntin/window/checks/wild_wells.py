@@ -1,0 +1,91 @@
+"""Readings far from what the others predict, and what excluding them would change."""
+
+from __future__ import annotations
+
+from dataclasses import replace
+from typing import TYPE_CHECKING
+
+import numpy as np
+from numpy.typing import NDArray
+
+from muntin.record.responses import Response
+from muntin.surrogate.fit import Stack, fit_stack
+from muntin.window.checks.check import Check
+from muntin.window.coded import coding_of, priors_for, readings_of
+from muntin.window.grid import judged_grid
+
+if TYPE_CHECKING:
+    from muntin.window.assessment import Assessment
+
+Array = NDArray[np.float64]
+Index = NDArray[np.intp]
+_WILD = 3.5
+_NAMED = 5
+_GRID = 500
+
+
+def wild_wells(view: Assessment, response: Response, stack: Stack) -> list[Check]:
+    """Readings more than 3.5 predictive sds from what the others say; named, never excluded."""
+    wild = _wild(view, response, stack)
+    if not len(wild):
+        sentence = f"{response.label}: no wild wells."
+        return [Check("wild wells", True, False, sentence, response.name)]
+    readings = view.study.readings(response.name)
+    places = [f"{readings['plate'].iloc[i]} {readings['well'].iloc[i]}" for i in wild[:_NAMED]]
+    more = f" and {len(wild) - _NAMED} more" if len(wild) > _NAMED else ""
+    sentence = (
+        f"{response.label}: far from what the others predict: {', '.join(places)}{more}"
+        f"{_change(view, response, stack, wild)}; look for a cause, and exclude only with one."
+    )
+    return [Check("wild wells", False, False, sentence, response.name)]
+
+
+def _wild(view: Assessment, response: Response, stack: Stack) -> Index:
+    """Rows of the wild readings; a censored one has no place and is none."""
+    readings = view.study.readings(response.name)
+    y = readings["y"].to_numpy(dtype=float)
+    y = np.log(y) if response.kind == "positive" else y
+    loos = [fit.loo for fit in stack.fits]
+    mean = stack.shares @ np.stack([loo.mean for loo in loos])
+    square = stack.shares @ np.stack([loo.sd**2 + (loo.mean - mean) ** 2 for loo in loos])
+    known = np.isfinite(np.stack([loo.pit for loo in loos])).all(axis=0)
+    return np.flatnonzero(known & (np.abs(y - mean) > _WILD * np.sqrt(square)))
+
+
+def _change(view: Assessment, response: Response, stack: Stack, wild: Index) -> str:
+    """What a fit without the wild readings says of the window, by the fast engine."""
+    if not response.judged:
+        return ""
+    study, every = view.study, readings_of(view.study, response)
+    rest = every.take(np.setdiff1d(np.arange(len(every)), wild))
+    if not len(rest):
+        return ""
+    columns, priors = coding_of(study.definition).columns, priors_for(study, response)
+    names = [fit.name for fit in stack.fits]
+    other = fit_stack(names, rest, response.kind, columns, priors, view.seed)
+    without = replace(
+        view,
+        stacks={**view.stacks, response.name: other},
+        surfaces={**view.surfaces, response.name: other.surface},
+    )
+    (share, best), (new_share, new_best) = _standing(view), _standing(without)
+    it = "it" if len(wild) == 1 else "them"
+    if share or new_share:
+        change = (
+            f"the window would be {_percent(new_share)} of the range instead of {_percent(share)}"
+        )
+    else:
+        change = f"the best condition would have {new_best:.2f} instead of {best:.2f}"
+    return f" (without {it} {change})"
+
+
+def _standing(view: Assessment) -> tuple[float, float]:
+    """Share of the range in the window, and the highest judged probability, on a coarse grid."""
+    definition = view.study.definition
+    grid, _ = judged_grid(definition, _GRID)
+    judged = view.judged(grid, definition.judged_by)
+    return float((judged >= definition.required_probability).mean()), float(judged.max())
+
+
+def _percent(share: float) -> str:
+    return f"{100 * share:.0f} %"
