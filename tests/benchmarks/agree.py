@@ -81,10 +81,10 @@ def probabilities(trial: Trial, surface: Surface) -> tuple[Array, Array]:
     )
 
 
-def wander_of(trial: Trial, surface: Surface) -> Array | None:
-    """Latent variance (S, n) of new wells that setting errors make, where the trial has some."""
+def wander_of(trial: Trial, surface: Surface) -> Array | float:
+    """Latent variance (S, n) of new wells that setting errors make, 0 where there are none."""
     if trial.setting is None:
-        return None
+        return 0.0
     return surface.wander(trial.grid, trial.setting(trial.grid))
 
 
@@ -152,7 +152,23 @@ def _repeated(fast: Fit, posterior: Posterior, weights: Array) -> Surface:
 
 def by_nuts(trial: Trial, name: str, fast: Fit) -> Reference:
     """NUTS: every draw a node; halves of chains are the parts."""
-    raise NotImplementedError
+    from muntin.surrogate.convergence import efficiency_of
+    from muntin.surrogate.nuts import Nuts, sample
+
+    start = time.perf_counter()
+    draws = sample(fast.model, SEED, Nuts(chains=CHAINS, draws=DRAWS))
+    seconds = time.perf_counter() - start
+    surface = draws.surface(fast.surface.link, len(draws), SEED)
+    halves = np.array_split(np.arange(len(draws)), 2 * CHAINS)
+    parts = [
+        probabilities(trial, surface.take(half, np.full(len(half), 1.0 / len(half))))
+        for half in halves
+    ]
+    p_mean, p_well = (np.array(p) for p in zip(*parts, strict=True))
+    r_hat, bulk, tail, _ = efficiency_of(draws)
+    divergent = int(np.sum(draws.stats["diverging"]))
+    note = f"R-hat {r_hat:.3f}, ESS {min(bulk, tail):.0f}, {divergent} divergent"
+    return Reference(p_mean, p_well, seconds, note)
 
 
 REFERENCES: dict[str, Callable[[Trial, str, Fit], Reference]] = {
