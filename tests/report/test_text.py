@@ -22,7 +22,8 @@ from tests.report.studies import LOAD, RESIN, STUDY, small, write
 
 GOOD = Check("coverage", True, True, "Nine of ten readings lie inside.")
 BAD = Check("integration", False, True, "Averages are unreliable.")
-NOTE = Check("plates", False, False, "One plate cannot tell.")
+NOTE = Check("shared errors", False, False, "One plate cannot tell.")
+LABELS = {"recovery": "Recovery", "hcp": "HCP", "purity": "Purity", "yield": "Yield"}
 
 
 @pytest.fixture(scope="module")
@@ -40,35 +41,35 @@ def window(view: Assessment) -> Window:
 def test_failures_come_first_and_what_passed_is_counted() -> None:
     assert check_lines((GOOD, NOTE, BAD)) == [
         "FAILED (integration): Averages are unreliable.",
-        "Note (plates): One plate cannot tell.",
+        "Note (shared errors): One plate cannot tell.",
         "Passed, 1 of 3: coverage.",
         "Nine of ten readings lie inside.",
     ]
 
 
 def checks_of(*failed: tuple[str, str]) -> tuple[Check, ...]:
-    labels = ("Recovery", "HCP", "Purity", "Yield")
     return tuple(
-        Check(name, (label, name) not in failed, False, f"{label}: {name} said.")
-        for label in labels
+        Check(name, (label, name) not in failed, False, f"{label}: {name} said.", response)
+        for response, label in LABELS.items()
         for name in ("coverage", "wild wells")
     )
 
 
 def test_a_check_that_not_every_response_passed_names_those_that_did() -> None:
     checks = checks_of(("HCP", "wild wells"), ("Yield", "wild wells"))
-    lines = check_lines(checks, (), ("Recovery", "HCP", "Purity", "Yield"))
+    lines = check_lines(checks, (), LABELS)
     assert lines == [
         "Note (wild wells): HCP: wild wells said.",
         "Note (wild wells): Yield: wild wells said.",
         "Passed, 6 of 8: coverage, wild wells (Recovery, Purity).",
     ]
-    told = check_lines(checks, ("HCP: wild wells said.",), ("Recovery", "HCP", "Purity", "Yield"))
+    told = check_lines(checks, ("HCP: wild wells said.",), LABELS)
     assert told[0] == "FAILED: wild wells (HCP); why is said with the window."
 
 
 def test_coverage_is_said_of_each_response_where_they_are_few() -> None:
-    lines = check_lines(checks_of(("HCP", "coverage"))[:6], (), ("Recovery", "HCP", "Purity"))
+    three = dict(list(LABELS.items())[:3])
+    lines = check_lines(checks_of(("HCP", "coverage"))[:6], (), three)
     assert lines[1:] == [
         "Passed, 5 of 6: coverage (Recovery, Purity), wild wells.",
         "Recovery: coverage said.",

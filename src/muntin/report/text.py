@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import shlex
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from pathlib import Path
 from typing import TYPE_CHECKING
 
@@ -95,13 +95,14 @@ def few(
 
 
 def check_lines(
-    checks: Sequence[Check], told: Sequence[str] = (), labels: Sequence[str] = ()
+    checks: Sequence[Check], told: Sequence[str] = (), labels: Mapping[str, str] | None = None
 ) -> list[str]:
     """Return the checks of the model: failures first, then the names of those that passed.
 
     `told` are sentences that stand elsewhere on the screen; here their checks are only named.
-    `labels` are those of the responses; where they are few, the coverage of each is said.
+    `labels` are those of the responses, by name; where they are few, the coverage of each is said.
     """
+    labels = labels or {}
     failed = sorted((c for c in checks if not c.passed), key=lambda c: not c.serious)
     below = [c for c in failed if c.sentence in told]
     lines = [f"FAILED: {_named(below, checks, labels)}; why is said with the window."]
@@ -117,13 +118,13 @@ def check_lines(
     return lines
 
 
-def _named(some: Sequence[Check], checks: Sequence[Check], labels: Sequence[str]) -> str:
+def _named(some: Sequence[Check], checks: Sequence[Check], labels: Mapping[str, str]) -> str:
     """Name some of the checks, with their responses where not all of a name are among them."""
     texts = []
     for name in dict.fromkeys(check.name for check in some):
         here = [check for check in some if check.name == name]
         every = [check for check in checks if check.name == name]
-        of = [label for c in here for label in labels if c.sentence.startswith(f"{label}: ")]
+        of = [labels[c.response] for c in here if c.response in labels]
         texts.append(name if len(here) == len(every) else f"{name} ({', '.join(of)})")
     return ", ".join(texts)
 
@@ -195,7 +196,7 @@ def standing(view: Assessment, window: Window | None, few_lines: int = _FEW) -> 
     awaited = labels(study.definition, view.awaited)
     notes = [f"Awaited: {awaited}; the advice is provisional."] if view.awaited else []
     told = () if window is None else window.unsupported
-    read = [r.label for r in study.definition.responses if r.name in view.stacks]
+    read = {r.name: r.label for r in study.definition.responses if r.name in view.stacks}
     checks = check_lines(view.checks(), told, read)
     return [
         ("Read", read_lines(study)),

@@ -12,6 +12,7 @@ from muntin.window.checks.integration import integration
 from muntin.window.checks.lack_of_fit import lack_of_fit
 from muntin.window.checks.other_plates import other_plates
 from muntin.window.checks.prior_weight import prior_weight
+from muntin.window.checks.sampling import sampling
 from muntin.window.checks.shared_errors import shared_errors
 from muntin.window.checks.wild_wells import wild_wells
 
@@ -30,7 +31,7 @@ def study_checks(view: Assessment) -> tuple[Check, ...]:
             checks += lack_of_fit(response, stack)
             checks += wild_wells(view, response, stack)
             checks += prior_weight(view, response, stack)
-            checks += integration(response, stack)
+            checks += sampling(response, stack) or integration(response, stack)
             checks += shared_errors(view.study, response, stack)
             checks += comparison(response, stack)
     return (*checks, *confounding(view.study)) if view.stacks else ()

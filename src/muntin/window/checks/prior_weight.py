@@ -28,6 +28,9 @@ _FAR = 2.0
 # A fit of less of the answer than this does not speak for it.
 _SPEAKS = 0.1
 _FEW_GROUPS = 5
+# Where readings ask for less of these than the built-in priors hold likely, the predictions are
+# wider than need be; the coverage says so.
+_CAUTIOUS = ("noise_sd", "ceiling_gap", "process_sd", "curvature_sd")
 _NODES = 24
 _GRID = 144
 # Share of the range; a window that moves by more with its priors rests on them.
@@ -45,7 +48,7 @@ def prior_weight(view: Assessment, response: Response, stack: Stack) -> list[Che
         text
         for fit, share in zip(stack.fits, stack.shares, strict=True)
         if share >= _SPEAKS
-        for text in _conflicts(view, fit)
+        for text in _conflicts(view, response, fit)
     ]
     if conflicts:
         said = " and ".join(dict.fromkeys(conflicts))
@@ -66,13 +69,14 @@ def prior_weight(view: Assessment, response: Response, stack: Stack) -> list[Che
     return [Check("priors", passed, passed, sentence, response.name)]
 
 
-def _conflicts(view: Assessment, fit: Fit) -> list[str]:
+def _conflicts(view: Assessment, response: Response, fit: Fit) -> list[str]:
     found, layout = sensitivity(fit.posterior), fit.model.layout
     texts = []
     for h in np.flatnonzero(found.conflict & (np.abs(found.place) > _FAR)):
         name, prior = layout.names[h], layout.priors[h]
         key, _, number = name.removesuffix("]").partition("[")
-        if _untold(fit, key, number) or (key == "ceiling_gap" and found.place[h] < 0.0):
+        cautious = key in _CAUTIOUS and key not in response.priors and found.place[h] < 0.0
+        if cautious or _untold(fit, key, number):
             continue
         of = ""
         if key == "length_scale":
