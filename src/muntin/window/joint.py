@@ -1,0 +1,224 @@
+"""The chance that several responses meet their targets in one future well.
+
+Process means are independent given the condition (Peterson 2004, 2008); what ties the readings of
+one well together is their noise, and where factors are set with errors, the setting. A Gaussian
+copula joins the exact predictive laws of the responses: the chances that a reading lies below its
+lower and below its upper target become normal scores, so that every target is a rectangle.
+
+How much of a score is noise: where y = f + noise, the copula's correlation changes the joint
+probability at rate E[phi(z_1)] E[phi(z_2)] with z the target less f in units of the reading's sd,
+and the correlation of the scores at rate phi(score_1) phi(score_2) (Plackett 1954). Their ratio is
+the product of the responses' loadings, sd of the noise x predictive density at the target /
+phi(score): noise sd / predictive sd where the law is normal, and right to first order where it is
+not, as near a plateau or for a mixture of nodes. It never exceeds 1, as phi(Phi^-1) is concave.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass, replace
+
+import numpy as np
+from numpy.typing import NDArray
+
+from muntin.surrogate.links import slope_of
+from muntin.surrogate.nodes import Surface
+from muntin.surrogate.rectangle import pair_excess, rectangle
+from muntin.window.probability import Target, well_meets
+
+Array = NDArray[np.float64]
+Index = NDArray[np.intp]
+# Nodes on which densities at a target are taken, and the part of the noise sd over which they are.
+_NODES = 12
+_STEP = 0.2
+# Beyond, a response passes or fails as good as surely, and joins as a factor.
+_SURE = 1e-5
+# Scores that move as one to the last digit have no density.
+_MOST = 1.0 - 1e-9
+
+
+@dataclass(frozen=True)
+class Law:
+    """The predictive law of one response at n conditions, as normal scores.
+
+    met (n,): chance that the target is met. score (n, 2): of its lower and upper end. noise (n, 2)
+    and setting (n, 2, D): loadings of each score on the noise of a reading and on setting errors.
+    """
+
+    met: Array
+    score: Array
+    noise: Array
+    setting: Array
+
+    def blended(self) -> tuple[Array, Array]:
+        """Loadings (n,) and (n, D) of both ends together, each by its density."""
+        share = _phi(self.score)
+        share = share / np.maximum(share.sum(axis=1, keepdims=True), 1e-300)
+        return (share * self.noise).sum(1), (share[..., None] * self.setting).sum(1)
+
+
+@dataclass(frozen=True)
+class Predicted:
+    """One response at n conditions: surface, latent moments (S, n), target, and where factors are
+    set with errors the latent variance (S, n) that they make and the latent shift (n, D) by one sd
+    of each.
+    """
+
+    surface: Surface
+    moments: tuple[Array, Array]
+    target: Target
+    wander: Array | None = None
+    shift: Array | None = None
+
+    def met(self, target: Target | None = None) -> Array:
+        """Chance (n,) that a reading meets the target, or another."""
+        wander = 0.0 if self.wander is None else self.wander
+        return well_meets(self.surface, self.moments, target or self.target, wander)
+
+    @classmethod
+    def of(cls, surface: Surface, X: Array, target: Target, setting: Array) -> Predicted:
+        """The response at coded X (n, D), set with sds `setting` (n, D) in coded units."""
+        moments = surface.moments(X)
+        if not setting.any():
+            return cls(surface, moments, target)
+        slopes = surface.slopes(X)
+        wander = ((slopes * setting) ** 2).sum(-1)
+        shift = np.tensordot(surface.weights, slopes, axes=1) * setting
+        return cls(surface, moments, target, wander, shift)
+
+    def at(self, rows: Index) -> Predicted:
+        """The response at some of the conditions."""
+        return replace(
+            self,
+            moments=(self.moments[0][:, rows], self.moments[1][:, rows]),
+            wander=None if self.wander is None else self.wander[:, rows],
+            shift=None if self.shift is None else self.shift[rows],
+        )
+
+    def thinned(self, weights: Array) -> Predicted:
+        """The response on a few nodes, drawn evenly by weights (S,)."""
+        ticks = (np.arange(_NODES) + 0.5) / _NODES
+        at = np.searchsorted(np.cumsum(weights), ticks * weights.sum())
+        index, count = np.unique(np.minimum(at, len(weights) - 1), return_counts=True)
+        return replace(
+            self,
+            surface=self.surface.take(index, count / _NODES),
+            moments=(self.moments[0][index], self.moments[1][index]),
+            wander=None if self.wander is None else self.wander[index],
+        )
+
+
+def joint_meets(responses: Sequence[Predicted], met: Array, correlation: Array) -> Array:
+    """Chance (n,) that all responses meet their targets in one future well on a new plate.
+
+    met (R, n): the responses' own chances. correlation (R, R): of the noise of their readings;
+    without any, and without setting errors, the product.
+    """
+    product = met.prod(axis=0)
+    unsure = (met > _SURE) & (met < 1.0 - _SURE)
+    together = any(r.shift is not None for r in responses)
+    tied = together or np.any(correlation != np.eye(len(responses)))
+    rows = np.flatnonzero(unsure.sum(axis=0) > 1) if tied else np.zeros(0, dtype=np.intp)
+    if not len(rows):
+        return product
+    laws = [_law(r.at(rows), p[rows]) for r, p in zip(responses, met, strict=True)]
+    excess = _excess_of_two(laws, correlation) if len(laws) == 2 else _excess(laws, correlation)
+    least, most = met[:, rows].sum(axis=0) - len(responses) + 1.0, met[:, rows].min(axis=0)
+    product[rows] = np.clip(product[rows] + excess, np.maximum(least, 0.0), most)
+    return product
+
+
+def _excess_of_two(laws: Sequence[Law], correlation: Array) -> Array:
+    """Joint chance (n,) of two responses less the product, corner by corner of the rectangle."""
+    one, other = laws
+    out = np.zeros(len(one.met))
+    for i in range(2):
+        for j in range(2):
+            rho = correlation[0, 1] * one.noise[:, i] * other.noise[:, j]
+            rho = rho + (one.setting[:, i] * other.setting[:, j]).sum(1)
+            sign = 1.0 if i == j else -1.0
+            rho = np.clip(rho, -_MOST, _MOST)
+            out += sign * pair_excess(one.score[:, i], other.score[:, j], rho)
+    return out
+
+
+def _excess(laws: Sequence[Law], correlation: Array) -> Array:
+    """Joint chance (n,) of three or more responses less the product."""
+    loadings = [law.blended() for law in laws]
+    noise = np.stack([k for k, _ in loadings], axis=1)
+    setting = np.stack([m for _, m in loadings], axis=1)
+    R = correlation * noise[:, :, None] * noise[:, None, :]
+    R = _MOST * (R + setting @ np.swapaxes(setting, 1, 2))
+    index = np.arange(len(laws))
+    R[:, index, index] = 1.0
+    low, high = (np.stack([law.score[:, end] for law in laws], axis=1) for end in range(2))
+    alone = np.prod([_between(law.score) for law in laws], axis=0)
+    return rectangle(low, high, R) - alone
+
+
+def _between(score: Array) -> Array:
+    """Chance (n,) that a normal score lies between the ends (n, 2)."""
+    from scipy.special import ndtr
+
+    return np.asarray(ndtr(score[:, 1]) - ndtr(score[:, 0]))
+
+
+def _law(response: Predicted, met: Array) -> Law:
+    """The law, p_well `met` given; where it is as good as sure, the response loads on nothing."""
+    score = _scores(response, met)
+    unsure = ((met > _SURE) & (met < 1.0 - _SURE))[:, None]
+    noise, setting = _loadings(response, score)
+    return Law(met, score, noise * unsure, setting * unsure[..., None])
+
+
+def _scores(response: Predicted, met: Array) -> Array:
+    """Normal scores (n, 2) of the lower and the upper target."""
+    from scipy.special import ndtri
+
+    target, none = response.target, np.full(len(met), np.inf)
+    if np.isinf(target.high):
+        return np.stack([-ndtri(met), none], axis=1)
+    if np.isinf(target.low):
+        return np.stack([-none, ndtri(met)], axis=1)
+    under = response.met(Target(high=target.low))
+    return np.stack([ndtri(under), ndtri(np.minimum(under + met, 1.0))], axis=1)
+
+
+def _loadings(response: Predicted, score: Array) -> tuple[Array, Array]:
+    """Loadings of the scores (n, 2) on the noise (n, 2) and on setting errors (n, 2, D)."""
+    surface = response.surface
+    noise_sd = float(surface.weights @ surface.errors.noise)
+    by_noise = response.thinned(surface.weights * surface.errors.noise)
+    shift = np.zeros((len(score), 0)) if response.shift is None else response.shift
+    noise, setting = np.zeros(score.shape), np.zeros((*score.shape, shift.shape[1]))
+    for end, limit in enumerate((response.target.low, response.target.high)):
+        if np.isfinite(limit):
+            height = np.maximum(_phi(score[:, end]), 1e-300)
+            steep = density(by_noise, limit) / height
+            noise[:, end] = np.clip(noise_sd * steep, 0.0, 1.0)
+            setting[:, end] = (_slope_at(surface, limit) * steep)[:, None] * shift
+    return noise, setting
+
+
+def _phi(z: Array) -> Array:
+    return np.asarray(np.exp(-0.5 * z**2) / np.sqrt(2.0 * np.pi))
+
+
+def _slope_at(surface: Surface, limit: float) -> float:
+    """Mean slope of the link where the process mean is the limit, on the scale of the readings."""
+    if surface.link != "logit":
+        return 1.0
+    place = surface.thresholds(limit)[:, 0]
+    slope = slope_of("logit", np.where(np.isfinite(place), place, 0.0), surface.errors.ceiling)
+    return float(surface.weights @ np.where(np.isfinite(place), slope, 0.0))
+
+
+def density(response: Predicted, limit: float) -> Array:
+    """Predictive density (n,) of a reading at a limit, on the scale where noise is additive."""
+    step = _STEP * float(response.surface.errors.noise.min())
+    if response.surface.link == "log":
+        ends = limit * np.exp([-step, step])
+    else:
+        ends = limit + np.array([-step, step])
+    under, over = (response.met(Target(high=float(end))) for end in ends)
+    return np.maximum(over - under, 0.0) / (2.0 * step)
