@@ -240,3 +240,30 @@ def test_help_imports_nothing_heavy() -> None:
     )
     done = subprocess.run([sys.executable, "-c", code], capture_output=True, text=True, check=False)
     assert (done.returncode, done.stderr) == (0, "")
+
+
+def test_influence_is_told_where_it_is_asked_for(study: Path) -> None:
+    plain = run("assess", study, "--surrogate", "quadratic")
+    asked = run("assess", study, "--surrogate", "quadratic", "--influence")
+    table = asked.stdout[len(plain.stdout) :]
+    assert asked.stdout.startswith(plain.stdout)
+    assert table.startswith("Factors   Recovery: share of its variation over the range")
+    assert "probability" not in table
+
+
+def test_a_size_asks_for_influence_too(study: Path) -> None:
+    sized = run("assess", study, "--surrogate", "quadratic", "--negligible", "0.1", "--json")
+    influence = json.loads(sized.stdout)["influence"]
+    assert influence["negligible"] == 0.1
+    rows = influence["responses"]["recovery"]
+    assert [row["factor"] for row in rows] == ["ph", "salt"]
+    for row in rows:
+        assert 0.0 < row["first_low"] < row["first"] < row["first_high"] < row["total_high"] < 1.0
+        assert row["p_negligible"] == 0.0
+    assert "influence" not in json.loads(run("assess", study, "--json").stdout)
+
+
+def test_a_size_of_nothing_is_a_fault(study: Path) -> None:
+    result = run("assess", study, "--negligible", "0")
+    assert result.exit_code == 2
+    assert result.stderr == "influence, negligible: 0 is not above 0\n"
