@@ -166,7 +166,7 @@ def test_names_of_surrogates_and_engines(tmp_path):
     study = written(tmp_path / "study", EARLIER)
     with pytest.raises(ValueError, match=r"^surrogate 'tree' is none of gp, quadratic, stacked$"):
         muntin.assess(study, "tree")
-    with pytest.raises(ValueError, match=r"^engine 'slow' is not available; use fast$"):
+    with pytest.raises(ValueError, match=r"^engine 'slow' is none of fast, nuts$"):
         muntin.assess(study, engine="slow")
 
 

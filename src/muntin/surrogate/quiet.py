@@ -30,12 +30,17 @@ def arviz() -> Any:
 
 
 def pymc() -> Any:
-    """PyMC. Raises NotInstalledError."""
+    """PyMC, without its note on BLAS, which nutpie does not use. Raises NotInstalledError."""
     arviz()
-    try:
-        import pymc
-    except ModuleNotFoundError:
-        raise NotInstalledError from None
+    with warnings.catch_warnings():
+        warnings.filterwarnings("ignore", message="PyTensor could not link to a BLAS installation")
+        try:
+            import pymc
+            import pytensor
+        except ModuleNotFoundError:
+            raise NotInstalledError from None
+        # Looked up once and kept; the note comes with the first look.
+        _ = pytensor.config.blas__ldflags
     return pymc
 
 

@@ -5,7 +5,8 @@ from __future__ import annotations
 from collections.abc import Mapping
 from dataclasses import dataclass
 from functools import cached_property
-from typing import Literal
+from pathlib import Path
+from typing import Any, Literal
 
 import numpy as np
 import pandas as pd
@@ -16,8 +17,10 @@ from muntin.record.responses import Response
 from muntin.record.study import Study
 from muntin.surrogate.fit import SURROGATES, Stack, fit_stack, prior_surface
 from muntin.surrogate.nodes import Surface, mixture
+from muntin.surrogate.nuts import Nuts
 from muntin.window.checks import Check, study_checks
 from muntin.window.coded import code, coding_of, priors_for, readings_of, setting_sd, shared_by
+from muntin.window.engine import Engine, inference_data_of, save_draws, settings_of
 from muntin.window.grid import judged_grid
 from muntin.window.influence import DRAWS, chosen_response, influence_of
 from muntin.window.probability import (
@@ -39,6 +42,7 @@ class Assessment:
 
     stacks: the fits of each response with readings. surfaces: the posterior of each response that
     has readings; where no judged response has any, that of each judged one under its prior.
+    engine: `fast` or `nuts`, which fitted them.
     """
 
     study: Study
@@ -46,6 +50,7 @@ class Assessment:
     seed: int
     stacks: Mapping[str, Stack]
     surfaces: Mapping[str, Surface]
+    engine: Engine = "fast"
 
     @property
     def awaited(self) -> tuple[str, ...]:
@@ -68,6 +73,18 @@ class Assessment:
     @cached_property
     def _checks(self) -> tuple[Check, ...]:
         return study_checks(self)
+
+    @cached_property
+    def inference_data(self) -> Mapping[str, Mapping[str, Any]]:
+        """Draws of the engine nuts as ArviZ data, by response and surrogate; empty for the fast."""
+        return inference_data_of(self.stacks)
+
+    def save_draws(self, folder: str | Path) -> tuple[Path, ...]:
+        """Write the draws to a folder, one netCDF file a response and surrogate; their paths.
+
+        Raises StudyFaults where there are none, or the folder cannot be written.
+        """
+        return save_draws(self.inference_data, Path(folder))
 
     def at(self, conditions: pd.DataFrame) -> pd.DataFrame:
         """What is known at conditions: a column a factor, raw units; index kept.
@@ -174,17 +191,22 @@ def target_of(response: Response) -> Target:
 
 
 def assess(
-    study: Study, surrogate: Surrogate = "stacked", engine: Literal["fast"] = "fast", seed: int = 1
+    study: Study,
+    surrogate: Surrogate = "stacked",
+    engine: Engine | Nuts = "fast",
+    seed: int = 1,
+    progress: bool = False,
 ) -> Assessment:
     """Fit the surrogates to everything that has been read.
 
     surrogate: `gp`, `quadratic` or `stacked` (both, weighted by leave-one-out predictive
-    density). engine: `fast`, deterministic given the seed. Raises ValueError for other names.
+    density). engine: `fast`; or `nuts`, the reference, which samples the same model, also with
+    settings of its own; `progress` then shows a bar on stderr. The same seed gives the same
+    numbers. Raises ValueError for other names, StudyFaults where PyMC is not installed.
     """
     if surrogate not in (*SURROGATES, "stacked"):
         raise ValueError(f"surrogate {surrogate!r} is none of gp, quadratic, stacked")
-    if engine != "fast":
-        raise ValueError(f"engine {engine!r} is not available; use fast")
+    settings = settings_of(engine, progress)
     names = SURROGATES if surrogate == "stacked" else (surrogate,)
     definition = study.definition
     columns = coding_of(definition).columns
@@ -193,11 +215,20 @@ def assess(
         readings = readings_of(study, response)
         if len(readings):
             priors = priors_for(study, response)
-            stacks[response.name] = fit_stack(names, readings, response.kind, columns, priors, seed)
+            stacks[response.name] = fit_stack(
+                names, readings, response.kind, columns, priors, seed, settings
+            )
     surfaces = {name: stack.surface for name, stack in stacks.items()}
     if not any(r.name in stacks for r in definition.judged):
         surfaces |= {r.name: _prior(study, r, names, seed) for r in definition.judged}
-    return Assessment(study=study, surrogate=surrogate, seed=seed, stacks=stacks, surfaces=surfaces)
+    return Assessment(
+        study=study,
+        surrogate=surrogate,
+        seed=seed,
+        stacks=stacks,
+        surfaces=surfaces,
+        engine="fast" if settings is None else "nuts",
+    )
 
 
 def _prior(study: Study, response: Response, names: tuple[str, ...], seed: int) -> Surface:
