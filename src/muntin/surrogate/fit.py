@@ -16,12 +16,13 @@ from muntin.surrogate.draws import Draws
 from muntin.surrogate.evidence import Evidence, Family, Model
 from muntin.surrogate.hyperparameters import Posterior, integrate
 from muntin.surrogate.links import Link
-from muntin.surrogate.loo import LeaveOneOut, leave_one_out
+from muntin.surrogate.loo import LeaveOneOut
 from muntin.surrogate.nodes import Surface, mixture
 from muntin.surrogate.nuts import Nuts, resampled
 from muntin.surrogate.polynomial import Quadratic
 from muntin.surrogate.priors import Kind, Priors
 from muntin.surrogate.process import GaussianProcess
+from muntin.surrogate.refits import leave_one_out_of
 from muntin.surrogate.stacking import stacking_shares
 from muntin.surrogate.wander import settled_wander
 
@@ -96,20 +97,13 @@ def fit_surrogate(
     )
     posterior = integrate(model, seed, start=start)
     evidence, weights = posterior.evidence, np.exp(posterior.log_weights)
-    loo = leave_one_out(
-        model.cells,
-        model.likelihood(evidence.theta),
-        evidence.approximation,
-        posterior.log_weights,
-        evidence.prior_variance(model.cells),
-    )
     return Fit(
         name=name,
         surface=_surface(model, evidence, weights, link),
         names=model.layout.names,
         theta=evidence.theta,
         weights=weights,
-        loo=loo,
+        loo=leave_one_out_of(model, posterior, seed),
         ess=posterior.ess,
         k_hat=posterior.k_hat,
         log_marginal=posterior.log_marginal,

@@ -15,7 +15,7 @@ from numpy.typing import NDArray
 from muntin.surrogate.cells import Cells
 from muntin.surrogate.links import latent_of
 from muntin.surrogate.propagation import Approximation
-from muntin.surrogate.tilted import CellLikelihood, Pair, Points, place, pull_of
+from muntin.surrogate.tilted import CellLikelihood, Pair, Points, Tilted, place, pull_of
 
 Array = NDArray[np.float64]
 
@@ -42,29 +42,52 @@ def leave_one_out(
 ) -> LeaveOneOut:
     """Predictions of every reading from the others, averaged over S nodes of log weights (S,).
 
-    prior_variance (S, C): of the latent value of each cell. A cavity wider than the prior is no
-    posterior (a wild well nearby bends the sites); such a node says nothing of that reading, as
-    long as others do.
+    prior_variance (S, C): of the latent value of each cell.
     """
-    c = cells.cell
-    exact = lik.link == "identity" and not cells.censored.any()
-    predict = _normal_law if exact else _numeric_law
-    law = predict(cells, lik, approx)
-    log_w = log_weights[:, None] - law.log_density
+    law = node_laws(cells, lik, approx.cavity, approx.tilted)
+    return averaged(law, left_out(cells, law, approx, log_weights, prior_variance))
+
+
+def node_laws(cells: Cells, lik: CellLikelihood, cavity: Pair, tilted: Tilted) -> LeaveOneOut:
+    """Predictions (S, n) of every reading at each node, from the cavity and the tilted answer of
+    its cell.
+    """
+    if lik.link == "identity" and not cells.censored.any():
+        return _normal_law(cells, lik, cavity)
+    return _numeric_law(cells, lik, cavity, tilted)
+
+
+def left_out(
+    cells: Cells,
+    law: LeaveOneOut,
+    approx: Approximation,
+    log_weights: Array,
+    prior_variance: Array,
+) -> Array:
+    """Normalised log weights (S, n) of the nodes for each reading, given the others.
+
+    A cavity wider than the prior is no posterior (a wild well nearby bends the sites); such a node
+    says nothing of that reading, as long as others do.
+    """
     absurd = (approx.cavity.uu > 1.001 * prior_variance) | (approx.cavity.ss > 1.001)
-    absurd = (absurd & ~absurd.all(axis=0))[:, c]
-    log_w = np.where(absurd, -np.inf, log_w) + _lost(log_weights, absurd)
-    log_density = -np.logaddexp.reduce(log_w)
-    w = np.exp(log_w + log_density)
+    absurd = (absurd & ~absurd.all(axis=0))[:, cells.cell]
+    log_w = np.where(absurd, -np.inf, log_weights[:, None] - law.log_density)
+    return log_w - np.logaddexp.reduce(log_w)
+
+
+def averaged(law: LeaveOneOut, log_weights: Array) -> LeaveOneOut:
+    """Predictions (n,) of the nodes together; normalised log weights (S, n)."""
+    w = np.exp(log_weights)
+    log_density = np.logaddexp.reduce(log_weights + law.log_density)
     mean = (w * law.mean).sum(0)
     variance = (w * (law.sd**2 + (law.mean - mean) ** 2)).sum(0)
     return LeaveOneOut(log_density, mean, np.sqrt(variance), (w * law.pit).sum(0))
 
 
-def _normal_law(cells: Cells, lik: CellLikelihood, approx: Approximation) -> LeaveOneOut:
+def _normal_law(cells: Cells, lik: CellLikelihood, cavity: Pair) -> LeaveOneOut:
     """Predictions (S, n) at each node of the identity link, in closed form."""
     c = cells.cell
-    u, uu = approx.cavity.u[:, c], approx.cavity.uu[:, c]
+    u, uu = cavity.u[:, c], cavity.uu[:, c]
     v, others = (lik.base_variance + lik.wander)[:, c], _others(cells, lik)
     precision = 1.0 / uu + others.count / v
     mean = (u / uu + others.count * (others.mean - lik.offset) / v) / precision + lik.offset
@@ -74,18 +97,17 @@ def _normal_law(cells: Cells, lik: CellLikelihood, approx: Approximation) -> Lea
     return LeaveOneOut(log_density, mean, np.sqrt(variance), _normal_cdf(z))
 
 
-def _numeric_law(cells: Cells, lik: CellLikelihood, approx: Approximation) -> LeaveOneOut:
+def _numeric_law(cells: Cells, lik: CellLikelihood, cavity: Pair, tilted: Tilted) -> LeaveOneOut:
     """Predictions (S, n) at each node by quadrature over the cavity."""
     c = cells.cell
     others = _others(cells, lik)
-    cavity = Pair(**{k: v[:, c] for k, v in vars(approx.cavity).items()})
+    cavity = Pair(**{k: v[:, c] for k, v in vars(cavity).items()})
     single = cells.count[c] == 1.0
-    tilted = approx.tilted.pair
-    start_u = np.where(single, cavity.u, tilted.u[:, c])
-    start_sd = np.sqrt(np.where(single, cavity.uu, tilted.uu[:, c]))
+    start_u = np.where(single, cavity.u, tilted.pair.u[:, c])
+    start_sd = np.sqrt(np.where(single, cavity.uu, tilted.pair.uu[:, c]))
     points = place(others, cavity, start_u, start_sd)
     log_rest = np.where(single, 0.0, points.log_z)
-    log_density = approx.tilted.log_z[:, c] - log_rest
+    log_density = tilted.log_z[:, c] - log_rest
     pull = pull_of(points.residual, points.total, points.censored)
     s, s_var = points.scale_given(pull)
     centre = others.process_mean(points.u) + points.loading * s
@@ -111,12 +133,6 @@ def _single_pit(lik: CellLikelihood, y: Array, cavity: Pair, points: Points, pit
     exact = _normal_cdf((at - cavity.u) / np.sqrt(cavity.uu + width**2))
     summed = (points.w * _normal_cdf((at[..., None] - points.u) / width[..., None])).sum(-1)
     return np.clip(pit + exact - summed, 0.0, 1.0)
-
-
-def _lost(log_weights: Array, absurd: NDArray[np.bool_]) -> Array:
-    """Log of the factor (n,) that makes up for the weight of the nodes left out."""
-    kept = np.where(absurd, -np.inf, log_weights[:, None])
-    return -np.logaddexp.reduce(kept)
 
 
 def _others(cells: Cells, lik: CellLikelihood) -> CellLikelihood:

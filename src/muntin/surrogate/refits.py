@@ -1,0 +1,99 @@
+"""Leave-one-out predictions with a fit of their own where the nodes at hand cannot give them.
+
+A reading that draws the hyperparameters to itself leaves its prediction to the one or two nodes
+that know it least, and its neighbours' sites stay where it bent them. Such readings are few; each
+is predicted by a fit without it (as Vehtari, Gelman & Gabry 2017, section 2, advise where the
+weights fail).
+"""
+
+from __future__ import annotations
+
+from dataclasses import replace
+
+import numpy as np
+from numpy.typing import NDArray
+
+from muntin.surrogate.cells import Cells
+from muntin.surrogate.evidence import Model
+from muntin.surrogate.hyperparameters import Posterior, integrate
+from muntin.surrogate.loo import LeaveOneOut, averaged, left_out, node_laws
+from muntin.surrogate.tilted import CellLikelihood, Pair, tilt
+
+Array = NDArray[np.float64]
+Index = NDArray[np.intp]
+# Below so many effective nodes a reading is predicted anew; the worst first, and no more than so
+# many, nor where a fit is dear.
+_FEW, _MOST, _MOST_LATENTS = 8.0, 4, 200
+# Sd of a reading that says nothing, in sds of all that it can be.
+_NOTHING = 1e3
+
+
+def leave_one_out_of(model: Model, posterior: Posterior, seed: int) -> LeaveOneOut:
+    """Predictions (n,) of every reading from the others; seed: of the fits without one."""
+    evidence, cells = posterior.evidence, model.cells
+    approx, lik = evidence.approximation, model.likelihood(evidence.theta)
+    law = node_laws(cells, lik, approx.cavity, approx.tilted)
+    prior = evidence.prior_variance(cells)
+    log_w = left_out(cells, law, approx, posterior.log_weights, prior)
+    loo = averaged(law, log_w)
+    refitted = _fewest(log_w) if len(cells.X) <= _MOST_LATENTS else np.zeros(0, dtype=np.intp)
+    if not len(refitted):
+        return loo
+    widest = float(prior.max() + lik.noise.max()) if lik.link == "identity" else 1.0
+    anew = [_without(model, i, _NOTHING**2 * widest, seed) for i in refitted]
+    out = {k: v.copy() for k, v in vars(loo).items()}
+    for name, values in out.items():
+        values[refitted] = [vars(one)[name][0] for one in anew]
+    return LeaveOneOut(**out)
+
+
+def _fewest(log_weights: Array) -> Index:
+    """Readings whose weights (S, n) rest on too few nodes, the worst first."""
+    ess = np.exp(-np.logaddexp.reduce(2.0 * log_weights))
+    order = np.argsort(ess)[:_MOST]
+    return order[ess[order] < _FEW]
+
+
+def _without(model: Model, i: int, nothing: float, seed: int) -> LeaveOneOut:
+    """Prediction (1,) of reading i by a fit without it; nothing: variance that says nothing."""
+    cells, c = model.cells, model.cells.cell[i]
+    posterior = integrate(replace(model, cells=_less(cells, i, nothing)), seed)
+    approx = posterior.evidence.approximation
+    cavity = Pair(**{k: v[:, [c]] for k, v in vars(approx.cavity).items()})
+    alone = _alone(cells, i)
+    lik = _of_one(model.likelihood(posterior.evidence.theta), c)
+    known = approx.tilted.pair
+    tilted = tilt(lik, cavity, known.u[:, [c]], np.sqrt(known.uu[:, [c]]))
+    return averaged(node_laws(alone, lik, cavity, tilted), posterior.log_weights[:, None])
+
+
+def _less(cells: Cells, i: int, nothing: float) -> Cells:
+    """The cells without reading i; a cell left empty keeps one reading that says nothing."""
+    c, y = cells.cell[i], cells.y[i]
+    count, mean = cells.count.copy(), cells.mean.copy()
+    within, variance, censored = cells.within.copy(), cells.variance.copy(), cells.censored.copy()
+    if count[c] == 1.0:
+        variance[c], censored[c] = nothing, 0
+    else:
+        away, left = y - mean[c], count[c] - 1.0
+        within[c] = max(within[c] - away**2 * count[c] / left, 0.0)
+        mean[c] -= away / left
+        count[c] = left
+    return replace(
+        cells, count=count, mean=mean, within=within, variance=variance, censored=censored
+    )
+
+
+def _alone(cells: Cells, i: int) -> Cells:
+    """The cell of reading i by itself, with that reading as the one to predict."""
+    c = cells.cell[[i]]
+    per_cell = ("latent", "count", "mean", "within", "variance", "censored", "setting")
+    own = {name: getattr(cells, name)[c] for name in per_cell}
+    scale = tuple(groups[c] for groups in cells.scale)
+    return replace(cells, **own, scale=scale, cell=np.zeros(1, dtype=np.intp), y=cells.y[[i]])
+
+
+def _of_one(lik: CellLikelihood, c: int) -> CellLikelihood:
+    """The likelihood of one cell."""
+    per_cell = ("mean", "count", "within", "variance", "censored", "wander")
+    return replace(lik, **{name: getattr(lik, name)[[c]] for name in per_cell})
