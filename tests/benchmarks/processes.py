@@ -19,6 +19,8 @@ from typing import Literal
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
+from scipy.special import ndtr, ndtri
+from scipy.stats.qmc import Sobol
 
 Kind = Literal["elution", "mixed mode"]
 Floats = NDArray[np.float64]
@@ -118,6 +120,32 @@ class DrawnProcess:
         expected = self.recovery(ph, salt) * (1 + np.asarray(plate_effects, dtype=float))
         sd = np.hypot(self.noise_floor, self.noise_cv * expected)
         return np.asarray(expected + sd * rng.standard_normal(sd.shape))
+
+    def chances(
+        self, conditions: ArrayLike, target: float, rng: np.random.Generator, wells: int = 512
+    ) -> Floats:
+        """Return the share of future wells whose reading reaches `target` at each condition.
+
+        Parameters
+        ----------
+        conditions
+            Target pH and salt (mM), shape (n, 2).
+        target
+            Recovery that the reading must reach.
+        rng
+            Scrambles the points of the errors.
+        wells
+            Wells simulated at each condition, a power of two, each on a new plate of its own. They
+            are set and their plates err on Sobol' points, the same at all conditions; the share of
+            their readings that reach the target is summed over the noise, not drawn.
+        """
+        ph, salt = np.asarray(conditions, dtype=float).reshape(-1, 2, 1).swapaxes(0, 1)
+        points = np.clip(Sobol(3, rng=rng).random(wells), 1e-9, 1 - 1e-9)
+        by_ph, by_salt, by_plate = ndtri(points).T
+        recovery = self.recovery(ph + PH_SD * by_ph, salt * (1 + SALT_SD * by_salt))
+        expected = recovery * (1 + PLATE_SD * by_plate)
+        sd = np.hypot(self.noise_floor, self.noise_cv * expected)
+        return np.asarray(ndtr((expected - target) / sd).mean(axis=-1))
 
 
 def plate_errors(n_plates: int, rng: np.random.Generator, sd: float = PLATE_SD) -> Floats:

@@ -1,5 +1,6 @@
 """Plate series played on drawn processes: what share of the range is called wrongly after how many
-wells, beside full factorials read with the same surrogate and an ordinary quadratic fit.
+wells, beside full factorials read with the same surrogate and an ordinary quadratic fit; and
+whether what is said to happen happens as often, for the process mean and for future wells.
 
 Run: python -m tests.benchmarks.series --processes 20
 """
@@ -7,9 +8,11 @@ Run: python -m tests.benchmarks.series --processes 20
 from __future__ import annotations
 
 import argparse
+import sys
 from concurrent.futures import ProcessPoolExecutor
 from dataclasses import dataclass
 from pathlib import Path
+from typing import Literal
 
 import numpy as np
 import pandas as pd
@@ -22,7 +25,9 @@ from muntin.record.study import Study
 from muntin.window.assessment import Assessment, Surrogate, assess
 from tests.benchmarks.processes import (
     PH_LEVELS,
+    PH_SD,
     SALT_LEVELS,
+    SALT_SD,
     DrawnProcess,
     draw,
     plate_errors,
@@ -34,13 +39,22 @@ TARGET = 0.8
 SERIES = (12, 6, 6)
 FACTORIALS = ((8, 6), (12, 8))
 KINDS = ("elution", "mixed mode", "near plateau")
+By = Literal["mean", "well"]
+BY: tuple[By, ...] = ("mean", "well")
+CALIBRATION_BUDGET = 0.02
 
 DEFINITION = Definition.model_validate(
     {
         "study": {"title": "drawn process", "judged_by": "mean"},
         "factors": [
-            {"name": "ph", "low": 4.5, "high": 7.5, "step": 0.1},
-            {"name": "salt", "low": 50, "high": 500, "step": 10},
+            {"name": "ph", "low": 4.5, "high": 7.5, "step": 0.1, "set_sd": PH_SD},
+            {
+                "name": "salt",
+                "low": 50,
+                "high": 500,
+                "step": 10,
+                "set_sd": f"{100.0 * SALT_SD:g} %",
+            },
         ],
         "responses": [{"name": "recovery", "kind": "fraction", "at_least": TARGET}],
         "plan": {"bridging_wells": 0},
@@ -51,12 +65,31 @@ DEFINITION = Definition.model_validate(
 @dataclass(frozen=True)
 class Outcome:
     """Share of the range called wrongly at p = 0.5 (percent), by design; and the calibration of
-    p_mean by design: points, sum of p and true passes (3, 10) in ten bins of p.
+    `mean` and `well` by design: points, sum of p and of true passes (3, 10) in ten bins of p.
     """
 
     kind: str
     wrong: dict[str, float]
-    bins: dict[str, Array]
+    bins: dict[By, dict[str, Array]]
+
+
+@dataclass(frozen=True)
+class Truth:
+    """Bench conditions, whether the process mean meets the target there, and how often a new well
+    on a new plate does.
+    """
+
+    frame: pd.DataFrame
+    mean: NDArray[np.bool_]
+    well: Array
+
+    @classmethod
+    def of(cls, process: DrawnProcess, rng: np.random.Generator) -> Truth:
+        """That of a drawn process at all conditions of the bench."""
+        grid = truth_grid()
+        mean = process.recovery(grid[:, 0], grid[:, 1]) >= TARGET
+        frame = pd.DataFrame(grid, columns=["ph", "salt"])
+        return cls(frame, mean, process.chances(grid, TARGET, rng))
 
 
 def study_of(plates: list[pd.DataFrame]) -> Study:
@@ -116,10 +149,8 @@ def play(
     else:
         process = draw("mixed mode" if kind == "mixed mode" else "elution", rng, TARGET)
     errors = plate_errors(len(SERIES) + len(FACTORIALS), rng)
-    grid = truth_grid()
-    truth = process.recovery(grid[:, 0], grid[:, 1]) >= TARGET
-    frame = pd.DataFrame(grid, columns=["ph", "salt"])
-    outcome = Outcome(kind, {}, {})
+    truth = Truth.of(process, np.random.default_rng((KINDS.index(kind), seed, 1)))
+    outcome = Outcome(kind, {}, {by: {} for by in BY})
     plates: list[pd.DataFrame] = []
     for number, wells in enumerate(SERIES):
         view = assess(study_of(plates), surrogate, seed=seed)
@@ -127,13 +158,13 @@ def play(
         chosen = selection.candidates.iloc[[p.candidate for p in selection.picks]]
         plates.append(_read(process, chosen.to_numpy(dtype=float), errors[number], rng))
         view = assess(study_of(plates), surrogate, seed=seed)
-        _record(outcome, f"{sum(SERIES[: number + 1])} wells", view, frame, truth)
+        _record(outcome, f"{sum(SERIES[: number + 1])} wells", view, truth)
     for number, (ph, salt) in enumerate(FACTORIALS if factorials else (), start=len(SERIES)):
         plate = _read(process, _factorial(ph, salt), errors[number], rng)
         name = f"factorial {ph * salt}"
         view = assess(study_of([plate]), surrogate, seed=seed)
-        _record(outcome, name, view, frame, truth)
-        outcome.wrong[f"least squares {ph * salt}"] = _least_squares(plate, grid, truth)
+        _record(outcome, name, view, truth)
+        outcome.wrong[f"least squares {ph * salt}"] = _least_squares(plate, truth)
     return outcome
 
 
@@ -151,18 +182,19 @@ def _factorial(ph: int, salt: int) -> Array:
     return np.stack(np.meshgrid(a, b, indexing="ij"), axis=-1).reshape(-1, 2).astype(float)
 
 
-def _record(
-    outcome: Outcome, name: str, view: Assessment, frame: pd.DataFrame, truth: NDArray[np.bool_]
-) -> None:
-    p = view.judged(frame, "mean")
-    outcome.wrong[name] = 100.0 * float(np.mean((p >= 0.5) != truth))
-    place = np.minimum((p * 10).astype(int), 9)
-    sums = [np.bincount(place, weights, minlength=10) for weights in (np.ones(len(p)), p, truth)]
-    outcome.bins[name] = np.array(sums)
+def _record(outcome: Outcome, name: str, view: Assessment, truth: Truth) -> None:
+    for by, passes in (("mean", truth.mean), ("well", truth.well)):
+        p = view.judged(truth.frame, by)
+        place = np.minimum((p * 10).astype(int), 9)
+        weights = (np.ones(len(p)), p, passes)
+        outcome.bins[by][name] = np.array([np.bincount(place, w, minlength=10) for w in weights])
+        if by == "mean":
+            outcome.wrong[name] = 100.0 * float(np.mean((p >= 0.5) != truth.mean))
 
 
-def _least_squares(plate: pd.DataFrame, grid: Array, truth: NDArray[np.bool_]) -> float:
+def _least_squares(plate: pd.DataFrame, truth: Truth) -> float:
     """An ordinary quadratic fit of recovery, called by its fitted mean."""
+    grid = truth.frame.to_numpy()
     low, high = grid.min(axis=0), grid.max(axis=0)
 
     def terms(conditions: Array) -> Array:
@@ -171,11 +203,44 @@ def _least_squares(plate: pd.DataFrame, grid: Array, truth: NDArray[np.bool_]) -
 
     x = terms(plate[["ph", "salt"]].to_numpy(dtype=float))
     coefficients, *_ = np.linalg.lstsq(x, plate["recovery"].to_numpy(dtype=float), rcond=None)
-    return 100.0 * float(np.mean((terms(grid) @ coefficients >= TARGET) != truth))
+    return 100.0 * float(np.mean((terms(grid) @ coefficients >= TARGET) != truth.mean))
+
+
+def wrong_calls(outcomes: list[Outcome]) -> None:
+    """Print the table of misclassification."""
+    print(f"{'share of the range called wrongly, %':<38}{'mean':>8}{'median':>8}{'90 %':>8}")
+    for kind in dict.fromkeys(o.kind for o in outcomes):
+        mine = [o for o in outcomes if o.kind == kind]
+        print(f"{kind} ({len(mine)} drawn processes)")
+        for name in mine[0].wrong:
+            values = np.array([o.wrong[name] for o in mine])
+            figures = (values.mean(), np.median(values), np.quantile(values, 0.9))
+            print(f"  {name:<36}" + "".join(f"{v:8.2f}" for v in figures))
+
+
+def calibration(outcomes: list[Outcome], by: By) -> bool:
+    """Print one table of calibration, all kinds together; return whether the series meets its
+    budget. The expected calibration error is that of the bins, weighted by their points.
+    """
+    said = {"mean": "true passes", "well": "passes of future wells"}[by]
+    print(f"observed frequency of {said} in ten bins of the predicted probability p_{by}")
+    met = True
+    for name in outcomes[0].bins[by]:
+        points, predicted, passed = sum(o.bins[by][name] for o in outcomes)
+        observed = passed / np.maximum(points, 1.0)
+        error = float(np.abs(passed - predicted).sum() / points.sum())
+        verdict = ""
+        if name.endswith("wells"):
+            verdict = "met" if error <= CALIBRATION_BUDGET else "MISSED"
+            verdict = f"  budget {CALIBRATION_BUDGET}: {verdict}"
+            met &= error <= CALIBRATION_BUDGET
+        figures = "".join(f"{v:6.2f}" for v in observed)
+        print(f"  {name:<16}{figures}   error {error:.3f}{verdict}")
+    return met
 
 
 def main() -> None:
-    """Print the tables of misclassification and calibration."""
+    """Print the tables of misclassification and calibration; exit code 1 over budget."""
     parser = argparse.ArgumentParser(description=__doc__)
     parser.add_argument("--processes", type=int, default=20, help="drawn processes of each kind")
     parser.add_argument("--workers", type=int, default=2)
@@ -191,21 +256,9 @@ def main() -> None:
     ]
     with ProcessPoolExecutor(given.workers) as pool:
         outcomes = list(pool.map(play, *zip(*jobs, strict=True)))
-    names = list(outcomes[0].wrong)
-    print(f"{'share of the range called wrongly, %':<38}{'mean':>8}{'median':>8}{'90 %':>8}")
-    for kind in given.kinds:
-        mine = [o for o in outcomes if o.kind == kind]
-        print(f"{kind} ({len(mine)} drawn processes)")
-        for name in names:
-            values = np.array([o.wrong[name] for o in mine])
-            figures = (values.mean(), np.median(values), np.quantile(values, 0.9))
-            print(f"  {name:<36}" + "".join(f"{v:8.2f}" for v in figures))
-    print("observed frequency of true passes in ten bins of the predicted probability p_mean")
-    for name in outcomes[0].bins:
-        points, predicted, passed = sum(o.bins[name] for o in outcomes)
-        observed = passed / np.maximum(points, 1.0)
-        error = float(np.abs(passed - predicted).sum() / points.sum())
-        print(f"  {name:<16}" + "".join(f"{v:6.2f}" for v in observed) + f"   error {error:.3f}")
+    wrong_calls(outcomes)
+    met = [calibration(outcomes, by) for by in BY]
+    sys.exit(int(not all(met)))
 
 
 if __name__ == "__main__":

@@ -149,3 +149,26 @@ def test_the_same_seed_draws_the_same_process_and_readings(kind, seed):
     assert one == other
     wells = truth_grid()[::97]
     assert one.read(wells, 0.02, first).tolist() == other.read(wells, 0.02, second).tolist()
+
+
+@pytest.mark.parametrize("kind", ["elution", "mixed mode"])
+def test_chances_are_the_share_of_wells_read_on_new_plates(kind):
+    """Against 40,000 wells read one by one, each on its own plate; four sds of that count."""
+    drawn = draw(kind, np.random.default_rng(3))
+    chances = drawn.chances(truth_grid(), 0.8, np.random.default_rng(4))
+    rng = np.random.default_rng(5)
+    for level in (0.03, 0.3, 0.5, 0.8, 0.97):
+        place = np.abs(chances - level).argmin()
+        chance = chances[place]
+        wells = np.repeat(truth_grid()[[place]], 40_000, axis=0)
+        share = np.mean(drawn.read(wells, plate_errors(40_000, rng), rng) >= 0.8)
+        assert share == pytest.approx(chance, abs=4 * np.sqrt(chance * (1 - chance) / 40_000))
+
+
+def test_chances_are_exact_to_a_thousandth():
+    """Against 32 times as many points with other scrambling, over the whole range."""
+    drawn, grid = draw("mixed mode", np.random.default_rng(6)), truth_grid()[::7]
+    some = drawn.chances(grid, 0.8, np.random.default_rng(1))
+    many = drawn.chances(grid, 0.8, np.random.default_rng(2), wells=2**14)
+    assert np.abs(some - many).max() < 0.001
+    assert 0.05 < many.mean() < 0.95
