@@ -1,5 +1,7 @@
 """Where a study stands: columns, units, joint probabilities, faults."""
 
+from dataclasses import replace
+
 import numpy as np
 import pandas as pd
 import pytest
@@ -101,12 +103,24 @@ def test_readings_are_met(view):
     assert away.mean() < 0.03
 
 
-def test_joint_probabilities_are_products_over_judged_responses(joint):
+def test_joint_p_mean_is_the_product_over_judged_responses(joint):
     table = joint.at(ASKED)
-    for kind in ("mean", "well"):
-        product = table[f"recovery_p_{kind}"] * table[f"hcp_p_{kind}"]
-        np.testing.assert_allclose(table[f"p_{kind}"], product, rtol=1e-12)
-        np.testing.assert_allclose(joint.judged(ASKED, kind), product, rtol=1e-9)
+    product = table["recovery_p_mean"] * table["hcp_p_mean"]
+    np.testing.assert_allclose(table["p_mean"], product, rtol=1e-12)
+    np.testing.assert_allclose(joint.judged(ASKED, "mean"), product, rtol=1e-9)
+
+
+def test_joint_p_well_follows_the_noise_that_readings_share(joint):
+    grid, _ = judged_grid(joint.study.definition)
+    table = joint.at(grid)
+    np.testing.assert_allclose(joint.judged(grid, "well"), table["p_well"], rtol=1e-9)
+    product = table["recovery_p_well"] * table["hcp_p_well"]
+    (pair,) = (t for t in joint.together if (t.first, t.second) == ("recovery", "hcp"))
+    gain = table["p_well"] - product
+    assert np.sign(gain[np.abs(gain) > 1e-6]).eq(-np.sign(pair.rho)).all()
+    assert np.abs(gain).max() > 1e-3
+    apart = replace(joint, together=())
+    np.testing.assert_allclose(apart.at(grid)["p_well"], product, rtol=1e-12)
 
 
 def test_targets_between_add_up(view):

@@ -2,8 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
-from dataclasses import dataclass
+from collections.abc import Iterator, Mapping
+from dataclasses import dataclass, replace
 from functools import cached_property
 from pathlib import Path
 from typing import Any, Literal
@@ -23,13 +23,15 @@ from muntin.window.coded import code, coding_of, priors_for, readings_of, settin
 from muntin.window.engine import Engine, inference_data_of, save_draws, settings_of
 from muntin.window.grid import judged_grid
 from muntin.window.influence import DRAWS, chosen_response, influence_of
+from muntin.window.joint import Predicted, joint_meets
+from muntin.window.limiting import limiting, sides_of
 from muntin.window.probability import (
     Target,
     mean_meets,
     process_mean,
     process_quantile,
-    well_meets,
 )
+from muntin.window.residuals import Together, correlation_matrix, residual_correlations
 from muntin.window.window import Window, judge_window
 
 Array = NDArray[np.float64]
@@ -42,7 +44,8 @@ class Assessment:
 
     stacks: the fits of each response with readings. surfaces: the posterior of each response that
     has readings; where no judged response has any, that of each judged one under its prior.
-    engine: `fast` or `nuts`, which fitted them.
+    engine: `fast` or `nuts`, which fitted them. together: how the readings of one well go
+    together, a record for every two responses read.
     """
 
     study: Study
@@ -51,6 +54,7 @@ class Assessment:
     stacks: Mapping[str, Stack]
     surfaces: Mapping[str, Surface]
     engine: Engine = "fast"
+    together: tuple[Together, ...] = ()
 
     @property
     def awaited(self) -> tuple[str, ...]:
@@ -92,69 +96,88 @@ class Assessment:
         Per response r: r_mean, r_low, r_high (process mean and its central 95 % interval, in the
         user's unit), r_p_mean, r_p_well (judged responses); over all judged responses jointly
         p_mean, p_well and, where a kept_within is given, p_kept, withheld while one is awaited.
+        p_mean is the product over the responses, whose means are independent given the condition
+        (Peterson 2004, 2008); in p_well the readings of one well go together as `together` has it.
         Raises StudyFaults where a factor is missing or a value cannot be coded.
         """
         frame = _checked(self.study, conditions)
         X = code(self.study.definition, frame)
         columns: dict[str, Array] = {}
-        joint = {"p_mean": np.ones(len(X)), "p_well": np.ones(len(X))}
+        predicted = self.predicted(frame)
+        p_mean, met = np.ones(len(X)), []
         for response in self.study.definition.responses:
             surface = self.surfaces.get(response.name)
             if surface is None:
                 continue
-            r, moments = response.name, surface.moments(X)
+            r = response.name
+            moments = predicted[r].moments if r in predicted else surface.moments(X)
             columns[f"{r}_mean"] = process_mean(surface, moments) * response.unit_size
             for name, level in (("low", 0.025), ("high", 0.975)):
                 quantile = process_quantile(surface, moments, level)
                 columns[f"{r}_{name}"] = quantile * response.unit_size
             if response.judged:
-                target = target_of(response)
-                columns[f"{r}_p_mean"] = mean_meets(surface, moments, target)
-                wander = self._wander(surface, X, frame)
-                columns[f"{r}_p_well"] = well_meets(surface, moments, target, wander)
-                joint["p_mean"] *= columns[f"{r}_p_mean"]
-                joint["p_well"] *= columns[f"{r}_p_well"]
+                columns[f"{r}_p_mean"] = mean_meets(surface, moments, predicted[r].target)
+                columns[f"{r}_p_well"] = predicted[r].met()
+                p_mean *= columns[f"{r}_p_mean"]
+                met.append(columns[f"{r}_p_well"])
         if not self.awaited:
-            columns.update(joint)
+            columns |= {"p_mean": p_mean, "p_well": self._jointly(predicted, met)}
             if any(f.kept_within for f in self.study.definition.factors):
                 columns["p_kept"] = self.kept(frame)
         return pd.DataFrame(columns, index=conditions.index)
 
     def kept(self, frame: pd.DataFrame) -> Array:
         """p_kept (n,): p_well averaged over settings spread evenly within kept_within."""
+        total = np.zeros(len(frame))
+        for weight, moved in self.settings(frame):
+            total += weight * self.judged(moved, "well")
+        return total
+
+    def settings(self, frame: pd.DataFrame) -> Iterator[tuple[float, pd.DataFrame]]:
+        """Weights and settings around conditions, spread evenly within kept_within."""
         factors = [f for f in self.study.definition.factors if f.kept_within is not None]
         points, weights = _even_spread(len(factors))
-        total = np.zeros(len(frame))
         for point, weight in zip(points, weights, strict=True):
             moved = frame.copy()
             for factor, u in zip(factors, point, strict=True):
                 x = frame[factor.name].to_numpy(dtype=float)
                 width = 0.0 if factor.kept_within is None else factor.kept_within.at(x)
                 moved[factor.name] = _inside(factor.scale, x, u * width)
-            total += weight * self.judged(moved, "well")
-        return total
+            yield float(weight), moved
 
     def judged(self, frame: pd.DataFrame, by: Literal["mean", "well", "kept"]) -> Array:
         """Joint probability (n,) over the judged responses at a frame of valid conditions."""
         if by == "kept":
             return self.kept(frame)
-        X = code(self.study.definition, frame)
-        p = np.ones(len(X))
-        for response in self.study.definition.judged:
-            surface = self.surfaces.get(response.name)
-            if surface is None:
-                continue
-            moments, target = surface.moments(X), target_of(response)
-            if by == "mean":
-                p *= mean_meets(surface, moments, target)
-            else:
-                p *= well_meets(surface, moments, target, self._wander(surface, X, frame))
-        return p
+        predicted = self.predicted(frame)
+        if by == "well":
+            return self._jointly(predicted, [p.met() for p in predicted.values()])
+        out = np.ones(len(frame))
+        for p in predicted.values():
+            out *= mean_meets(p.surface, p.moments, p.target)
+        return out
 
-    def _wander(self, surface: Surface, X: Array, frame: pd.DataFrame) -> Array | float:
-        """Latent variance (S, n) that setting errors make of a new well at coded X."""
-        setting = setting_sd(self.study.definition, frame)
-        return surface.wander(X, setting) if setting.any() else 0.0
+    def predicted(self, frame: pd.DataFrame) -> dict[str, Predicted]:
+        """What the judged responses may read at valid conditions; awaited ones left out."""
+        X, setting = code(self.study.definition, frame), setting_sd(self.study.definition, frame)
+        return {
+            r.name: Predicted.of(self.surfaces[r.name], X, target_of(r), setting)
+            for r in self.study.definition.judged
+            if r.name in self.surfaces
+        }
+
+    def _jointly(self, predicted: Mapping[str, Predicted], met: list[Array]) -> Array:
+        """Joint p_well (n,) of the responses, given the p_well of each."""
+        correlation = correlation_matrix([*predicted], self.together)
+        return joint_meets([*predicted.values()], np.stack(met), correlation)
+
+    def limiting(self, conditions: pd.DataFrame) -> pd.DataFrame:
+        """Which judged response is least likely to be met at conditions (raw units); index kept.
+
+        Columns: response (its name), probability (that it is met, of the kind that the study is
+        judged by) and fails ("low" or "high", the likelier way). Raises StudyFaults as `at` does.
+        """
+        return limiting(self, _checked(self.study, conditions)).set_index(conditions.index)
 
     def influence(
         self,
@@ -181,7 +204,8 @@ class Assessment:
         by = definition.judged_by
         judged = p_mean if by == "mean" else self.judged(grid, by)
         unsupported = tuple(c.sentence for c in self.checks() if not c.passed and c.serious)
-        return judge_window(definition, grid, regular, p_mean, judged, unsupported)
+        window = judge_window(definition, grid, regular, p_mean, judged, unsupported)
+        return replace(window, sides=sides_of(self, window))
 
 
 def target_of(response: Response) -> Target:
@@ -228,6 +252,7 @@ def assess(
         stacks=stacks,
         surfaces=surfaces,
         engine="fast" if settings is None else "nuts",
+        together=residual_correlations(study, stacks),
     )
 
 

@@ -30,7 +30,7 @@ Array = NDArray[np.float64]
 Index = NDArray[np.intp]
 # Nodes on which densities at a target are taken, and the part of the noise sd over which they are.
 _NODES = 12
-_STEP = 0.2
+_STEP = 0.1
 # Beyond, a response passes or fails as good as surely, and joins as a factor.
 _SURE = 1e-5
 # Scores that move as one to the last digit have no density.

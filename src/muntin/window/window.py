@@ -10,6 +10,7 @@ import pandas as pd
 from numpy.typing import NDArray
 
 from muntin.record.definition import Definition
+from muntin.window.limiting import Side
 
 Array = NDArray[np.float64]
 
@@ -23,6 +24,7 @@ class Window:
     that is called wrongly, mean of min(p, 1 - p) of p_mean. setpoint: the condition of highest
     probability, with it. ranges: factor ranges that hold together, all inside; None without a
     grid or a window. unsupported: reasons why the data do not support the window; empty if none.
+    sides: which response gives way first beyond each side of the ranges.
     """
 
     grid: pd.DataFrame
@@ -32,6 +34,7 @@ class Window:
     setpoint: pd.Series
     ranges: dict[str, tuple[object, object]] | None
     unsupported: tuple[str, ...]
+    sides: tuple[Side, ...] = ()
 
 
 def judge_window(

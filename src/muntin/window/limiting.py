@@ -1,0 +1,105 @@
+"""Which response gives way first: at conditions, and beyond each side of a window's ranges."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable
+from dataclasses import dataclass
+from typing import TYPE_CHECKING, Literal
+
+import numpy as np
+import pandas as pd
+from numpy.typing import NDArray
+
+from muntin.record.factors import Factor
+from muntin.window.joint import Predicted
+from muntin.window.probability import Target, mean_meets
+
+if TYPE_CHECKING:
+    from muntin.window.assessment import Assessment
+    from muntin.window.window import Window
+
+Array = NDArray[np.float64]
+End = Literal["low", "high"]
+ENDS: tuple[End, End] = ("low", "high")
+
+
+@dataclass(frozen=True, kw_only=True)
+class Side:
+    """One side of a window's ranges.
+
+    factor, end: which. at: the last level of the ranges there. beyond: the next level of the grid,
+    None where the tested range ends or a limit forbids it. At `beyond`, other factors at the set
+    point, `response` is the judged one least likely to be met, with its probability, and `fails`,
+    "low" or "high", the likelier way; None where there is nothing beyond.
+    """
+
+    factor: str
+    end: End
+    at: float
+    beyond: float | None = None
+    response: str | None = None
+    probability: float | None = None
+    fails: str | None = None
+
+
+def limiting(view: Assessment, frame: pd.DataFrame) -> pd.DataFrame:
+    """The judged response least likely to be met at valid conditions, row by row.
+
+    Columns: response, probability (of the kind that the study is judged by), fails.
+    """
+    by = view.study.definition.judged_by
+    settings: Iterable[tuple[float, pd.DataFrame]]
+    settings = view.settings(frame) if by == "kept" else [(1.0, frame)]
+    chances = [
+        [weight * _chances(p, by) for p in view.predicted(moved).values()]
+        for weight, moved in settings
+    ]
+    met, under, over = np.moveaxis(np.sum(chances, axis=0), 1, 0)
+    least, rows = met.argmin(axis=0), np.arange(len(frame))
+    names = np.array([*view.predicted(frame)], dtype=object)
+    return pd.DataFrame(
+        {
+            "response": names[least],
+            "probability": met[least, rows],
+            "fails": np.where(under >= over, "low", "high")[least, rows],
+        }
+    )
+
+
+def _chances(predicted: Predicted, by: str) -> Array:
+    """Chances (3, n) to meet the target, to lie below it and to lie above it."""
+    target = predicted.target
+    asked = target, Target(high=target.low), Target(low=target.high)
+    if by == "mean":
+        return np.stack([mean_meets(predicted.surface, predicted.moments, t) for t in asked])
+    return np.stack([predicted.met(t) for t in asked])
+
+
+def sides_of(view: Assessment, window: Window) -> tuple[Side, ...]:
+    """Every side of the window's ranges, factor by factor; none where there are no ranges."""
+    if window.ranges is None:
+        return ()
+    factors = [f for f in view.study.definition.factors if f.continuous]
+    return tuple(_side(view, window, factor, end) for factor in factors for end in ENDS)
+
+
+def _side(view: Assessment, window: Window, factor: Factor, end: End) -> Side:
+    name, definition = factor.name, view.study.definition
+    ranges = {} if window.ranges is None else window.ranges
+    last = float(np.asarray(ranges[name], dtype=float)[ENDS.index(end)])
+    levels = np.unique(window.grid[name].to_numpy(dtype=float))
+    further = levels[levels < last][-1:] if end == "low" else levels[levels > last][:1]
+    there = pd.DataFrame([window.setpoint[[*definition.factor_names]].to_dict()] * len(further))
+    there = there.assign(**{name: further})
+    if not len(there) or not definition.allowed(there).all():
+        return Side(factor=name, end=end, at=last)
+    found = limiting(view, there).iloc[0]
+    return Side(
+        factor=name,
+        end=end,
+        at=last,
+        beyond=float(further[0]),
+        response=str(found["response"]),
+        probability=float(found["probability"]),
+        fails=str(found["fails"]),
+    )
