@@ -28,9 +28,10 @@ class Side:
     """One side of a window's ranges.
 
     factor, end: which. at: the last level of the ranges there. beyond: the next level of the grid,
-    None where the tested range ends or a limit forbids it. At `beyond`, other factors at the set
-    point, `response` is the judged one least likely to be met, with its probability, and `fails`,
-    "low" or "high", the likelier way; None where there is nothing beyond.
+    where a condition that the ranges would take in lies outside the window; None where the tested
+    range ends or only a limit is in the way. At the worst of these conditions `response` is the
+    judged one least likely to be met, with its probability, and `fails`, "low" or "high", the
+    likelier way; None where there is nothing beyond.
     """
 
     factor: str
@@ -84,18 +85,17 @@ def sides_of(view: Assessment, window: Window) -> tuple[Side, ...]:
 
 
 def _side(view: Assessment, window: Window, factor: Factor, end: End) -> Side:
-    name, definition = factor.name, view.study.definition
     ranges = {} if window.ranges is None else window.ranges
-    last = float(np.asarray(ranges[name], dtype=float)[ENDS.index(end)])
-    levels = np.unique(window.grid[name].to_numpy(dtype=float))
+    last = float(np.asarray(ranges[factor.name], dtype=float)[ENDS.index(end)])
+    levels = np.unique(window.grid[factor.name].to_numpy(dtype=float))
     further = levels[levels < last][-1:] if end == "low" else levels[levels > last][:1]
-    there = pd.DataFrame([window.setpoint[[*definition.factor_names]].to_dict()] * len(further))
-    there = there.assign(**{name: further})
-    if not len(there) or not definition.allowed(there).all():
-        return Side(factor=name, end=end, at=last)
-    found = limiting(view, there).iloc[0]
+    slab = _slab(view, window, factor.name, further)
+    if slab["inside"].all():
+        return Side(factor=factor.name, end=end, at=last)
+    worst = slab.loc[[slab["probability"].idxmin()], [*view.study.definition.factor_names]]
+    found = limiting(view, worst).iloc[0]
     return Side(
-        factor=name,
+        factor=factor.name,
         end=end,
         at=last,
         beyond=float(further[0]),
@@ -103,3 +103,15 @@ def _side(view: Assessment, window: Window, factor: Factor, end: End) -> Side:
         probability=float(found["probability"]),
         fails=str(found["fails"]),
     )
+
+
+def _slab(view: Assessment, window: Window, moved: str, levels: Array) -> pd.DataFrame:
+    """Conditions of the grid at levels of one factor, the others within the ranges."""
+    grid, ranges = window.grid, window.ranges or {}
+    chosen = grid[moved].isin(levels)
+    for factor in view.study.definition.factors:
+        if factor.name != moved:
+            low, high = ranges[factor.name]
+            column = grid[factor.name]
+            chosen &= (column >= low) & (column <= high) if factor.continuous else column == low
+    return grid[chosen]
