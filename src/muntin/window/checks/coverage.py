@@ -11,31 +11,36 @@ from muntin.surrogate.fit import Stack
 from muntin.window.checks.check import Check
 
 Array = NDArray[np.float64]
-# Two-sided level 0.005 of a standard normal score, for each of the two scores.
-_UNEVEN = 2.81
+# Two-sided level 0.003 of a standard normal score, for each of the two scores.
+_UNEVEN = 3.0
 _FEWEST = 8
 
 
-def coverage(response: Response, stack: Stack) -> list[Check]:
+def coverage(response: Response, stack: Stack, calm: Stack) -> list[Check]:
     """Share of readings inside their leave-one-out 90 % range, against its binomial 99 % limits,
-    and whether their transforms lie evenly (the smooth test at level 0.005).
+    and whether their transforms lie evenly (the smooth test at level 0.003).
 
-    Too narrow or shifted predictions are serious; predictions wider than need be are a note.
+    calm: the fits by which evenness is judged, without wild wells. Too narrow or shifted
+    predictions are serious; predictions wider than need be are a note.
     """
     from scipy.stats import binom
 
-    pit = stack.shares @ np.stack([fit.loo.pit for fit in stack.fits])
-    pit = pit[np.isfinite(pit)]
+    pit = _transforms(stack)
     n, hits = len(pit), int(((pit > 0.05) & (pit < 0.95)).sum())
     least = int(binom.ppf(0.005, n, 0.9))
     few = hits < least
-    doubt, serious = _doubt(pit, few)
+    doubt, serious = _doubt(_transforms(calm), few)
     sentence = (
         f"{response.label}: {hits} of {n} readings lie in the 90 % range predicted from the "
         f"others ({'too few: ' if few else ''}{least} or more were to be expected){doubt}."
     )
     passed = not few and not doubt
     return [Check("coverage", passed, few or serious or not doubt, sentence, response.name)]
+
+
+def _transforms(stack: Stack) -> Array:
+    pit = stack.shares @ np.stack([fit.loo.pit for fit in stack.fits])
+    return np.asarray(pit[np.isfinite(pit)])
 
 
 def _doubt(pit: Array, few: bool) -> tuple[str, bool]:

@@ -10,7 +10,7 @@ from muntin.surrogate.fit import Stack
 from muntin.surrogate.pure_error import pure_error
 from muntin.window.checks.check import Check
 
-_LEVEL = 0.005
+_LEVEL = 0.002
 _FEWEST = 3
 
 

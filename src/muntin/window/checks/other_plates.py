@@ -17,8 +17,8 @@ from muntin.window.checks.check import Check
 Array = NDArray[np.float64]
 Index = NDArray[np.intp]
 # Level at which some plate of the study is called off where none is.
-_LEVEL = 0.01
-_UNEVEN = 2.81
+_LEVEL = 0.02
+_UNEVEN = 3.0
 # A plate so far off by reweighted nodes, in sds, is judged by nodes fitted without it.
 _SUSPECT = 2.0
 

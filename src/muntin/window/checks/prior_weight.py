@@ -7,6 +7,7 @@ from dataclasses import replace
 from typing import TYPE_CHECKING, Literal
 
 import numpy as np
+import pandas as pd
 from numpy.typing import NDArray
 
 from muntin.record.responses import Response
@@ -28,13 +29,18 @@ _FAR = 2.0
 # A fit of less of the answer than this does not speak for it.
 _SPEAKS = 0.1
 _FEW_GROUPS = 5
-# Where readings ask for less of these than the built-in priors hold likely, the predictions are
-# wider than need be; the coverage says so.
-_CAUTIOUS = ("noise_sd", "ceiling_gap", "process_sd", "curvature_sd")
+# On this side of the built-in priors the predictions are only wider than need be.
+_CAUTIOUS = {
+    "noise_sd": -1.0,
+    "ceiling_gap": -1.0,
+    "process_sd": -1.0,
+    "curvature_sd": -1.0,
+    "length_scale": 1.0,
+}
 _NODES = 24
 _GRID = 144
 # Share of the range; a window that moves by more with its priors rests on them.
-_MOVES = 0.05
+_MOVES = 0.1
 
 
 def prior_weight(view: Assessment, response: Response, stack: Stack) -> list[Check]:
@@ -75,8 +81,8 @@ def _conflicts(view: Assessment, response: Response, fit: Fit) -> list[str]:
     for h in np.flatnonzero(found.conflict & (np.abs(found.place) > _FAR)):
         name, prior = layout.names[h], layout.priors[h]
         key, _, number = name.removesuffix("]").partition("[")
-        cautious = key in _CAUTIOUS and key not in response.priors and found.place[h] < 0.0
-        if cautious or _untold(fit, key, number):
+        cautious = found.place[h] * _CAUTIOUS.get(key, 0.0) > 0.0
+        if (cautious and key not in response.priors) or _untold(fit, key, number):
             continue
         of = ""
         if key == "length_scale":
@@ -103,11 +109,12 @@ def _move(view: Assessment, response: Response, stack: Stack) -> float:
     thinned = [_thinned(fit, stack.surface.link) for fit, _ in kept]
     shares = np.array([s for _, s in kept])
     surfaces = [surface for surface, _ in thinned]
-    base = _share(view, response, mixture(surfaces, shares))
+    grid, _ = judged_grid(view.study.definition, _GRID)
+    base = _share(view, response, mixture(surfaces, shares), grid)
     moves = []
     for a in range(len(ALPHAS)):
         scaled = [_reweighted(s, factors[a]) for s, factors in thinned]
-        moves.append(abs(_share(view, response, mixture(scaled, shares)) - base))
+        moves.append(abs(_share(view, response, mixture(scaled, shares), grid) - base))
     return max(moves)
 
 
@@ -131,9 +138,8 @@ def _reweighted(surface: Surface, factor: Array) -> Surface:
     return replace(surface, weights=weights / weights.sum())
 
 
-def _share(view: Assessment, response: Response, surface: Surface) -> float:
+def _share(view: Assessment, response: Response, surface: Surface, grid: pd.DataFrame) -> float:
     definition = view.study.definition
-    grid, _ = judged_grid(definition, _GRID)
     by: Literal["mean", "well"] = "mean" if definition.judged_by == "mean" else "well"
     other = replace(view, surfaces={**view.surfaces, response.name: surface})
     return float((other.judged(grid, by) >= definition.required_probability).mean())

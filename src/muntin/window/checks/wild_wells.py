@@ -24,24 +24,29 @@ _NAMED = 5
 _GRID = 500
 
 
-def wild_wells(view: Assessment, response: Response, stack: Stack) -> list[Check]:
-    """Readings more than 3.5 predictive sds from what the others say; named, never excluded."""
-    wild = _wild(view, response, stack)
+def wild_wells(
+    view: Assessment, response: Response, wild: Index, without: Stack | None
+) -> list[Check]:
+    """Readings more than 3.5 predictive sds from what the others say; named, never excluded.
+
+    wild: their rows; without: the fits without them, which say what excluding them would change.
+    """
     if not len(wild):
         sentence = f"{response.label}: no wild wells."
         return [Check("wild wells", True, False, sentence, response.name)]
     readings = view.study.readings(response.name)
     places = [f"{readings['plate'].iloc[i]} {readings['well'].iloc[i]}" for i in wild[:_NAMED]]
     more = f" and {len(wild) - _NAMED} more" if len(wild) > _NAMED else ""
+    change = _change(view, response, without, len(wild))
     sentence = (
-        f"{response.label}: far from what the others predict: {', '.join(places)}{more}"
-        f"{_change(view, response, stack, wild)}; look for a cause, and exclude only with one."
+        f"{response.label}: far from what the others predict: {', '.join(places)}{more}{change}; "
+        "look for a cause, and exclude only with one."
     )
     return [Check("wild wells", False, False, sentence, response.name)]
 
 
-def _wild(view: Assessment, response: Response, stack: Stack) -> Index:
-    """Rows of the wild readings; a censored one has no place and is none."""
+def wild_rows(view: Assessment, response: Response, stack: Stack) -> Index:
+    """Rows (n,) of the wild readings; a censored one has no place and is none."""
     readings = view.study.readings(response.name)
     y = readings["y"].to_numpy(dtype=float)
     y = np.log(y) if response.kind == "positive" else y
@@ -52,24 +57,28 @@ def _wild(view: Assessment, response: Response, stack: Stack) -> Index:
     return np.flatnonzero(known & (np.abs(y - mean) > _WILD * np.sqrt(square)))
 
 
-def _change(view: Assessment, response: Response, stack: Stack, wild: Index) -> str:
-    """What a fit without the wild readings says of the window, by the fast engine."""
-    if not response.judged:
-        return ""
+def fit_without(view: Assessment, response: Response, stack: Stack, rows: Index) -> Stack | None:
+    """The fits of the other readings by the fast engine; None where no reading is left."""
     study, every = view.study, readings_of(view.study, response)
-    rest = every.take(np.setdiff1d(np.arange(len(every)), wild))
+    rest = every.take(np.setdiff1d(np.arange(len(every)), rows))
     if not len(rest):
-        return ""
+        return None
     columns, priors = coding_of(study.definition).columns, priors_for(study, response)
     names = [fit.name for fit in stack.fits]
-    other = fit_stack(names, rest, response.kind, columns, priors, view.seed)
-    without = replace(
+    return fit_stack(names, rest, response.kind, columns, priors, view.seed)
+
+
+def _change(view: Assessment, response: Response, without: Stack | None, count: int) -> str:
+    """What the fits without the wild readings say of the window."""
+    if not response.judged or without is None:
+        return ""
+    other = replace(
         view,
-        stacks={**view.stacks, response.name: other},
-        surfaces={**view.surfaces, response.name: other.surface},
+        stacks={**view.stacks, response.name: without},
+        surfaces={**view.surfaces, response.name: without.surface},
     )
-    (share, best), (new_share, new_best) = _standing(view), _standing(without)
-    it = "it" if len(wild) == 1 else "them"
+    (share, best), (new_share, new_best) = _standing(view), _standing(other)
+    it = "it" if count == 1 else "them"
     if share or new_share:
         change = (
             f"the window would be {_percent(new_share)} of the range instead of {_percent(share)}"
