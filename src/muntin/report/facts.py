@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Mapping
+from dataclasses import asdict
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
@@ -53,6 +54,7 @@ def standing_facts(view: Assessment, window: Window | None) -> Facts:
         "provisional": bool(view.awaited) and not view.fresh,
         "awaited": list(view.awaited),
         "model": {name: _model(stack) for name, stack in view.stacks.items()},
+        "together": [asdict(pair) for pair in view.together],
         "checks": [_check(check) for check in view.checks()],
         "window": None if window is None else _window(view, window),
     }
@@ -97,6 +99,7 @@ def _window(view: Assessment, window: Window) -> Facts:
             "wrong_share": window.wrong_share,
             "set_point": window.setpoint.to_dict(),
             "ranges": window.ranges,
+            "sides": [asdict(side) for side in window.sides],
         }
     return facts
 

@@ -27,6 +27,7 @@ from muntin.report.plan_text import (
     plan_tables,
     usual_reason,
 )
+from muntin.report.sides_text import sides_line
 from muntin.report.words import (
     JUDGED_BY,
     UNSUPPORTED,
@@ -100,7 +101,8 @@ def check_lines(
     """Return the checks of the model: failures first, then the names of those that passed.
 
     `told` are sentences that stand elsewhere on the screen; here their checks are only named.
-    `labels` are those of the responses, by name; where they are few, the coverage of each is said.
+    `labels` are those of the responses, by name; where they are few, the coverage of each is said,
+    and how far two of them move together.
     """
     labels = labels or {}
     failed = sorted((c for c in checks if not c.passed), key=lambda c: not c.serious)
@@ -114,7 +116,7 @@ def check_lines(
         names = _named(passed, checks, labels)
         lines.append(f"Passed, {len(passed)} of {len(checks)}: {names}.")
     if len(labels) <= _FEW:
-        lines += [c.sentence for c in passed if c.name == "coverage"]
+        lines += [c.sentence for c in passed if c.name in ("coverage", "readings together")]
     return lines
 
 
@@ -146,6 +148,7 @@ def window_lines(view: Assessment, window: Window | None, most: int = _FEW) -> l
     ]
     if window.ranges is not None:
         lines.append(f"Ranges that hold together: {ranges_text(definition, window.ranges)}.")
+        lines += sides_line(definition, window.sides)
     lines.append(f"Share of the range we may still call wrongly: {share_text(window.wrong_share)}.")
     return lines + _stop(view, window)
 

@@ -27,7 +27,7 @@ def _sentence(t: Together, first: str, second: str) -> str:
             f"{pair}: {wells} with both readings cannot tell whether they move together; they are "
             "taken as independent."
         )
-    how = "together" if t.rho >= 0.0 else "against each other"
-    return (
-        f"{pair}: readings of one well move {how} ({t.rho:.1f}, 95 % {t.low:.1f} to {t.high:.1f})."
-    )
+    how = "may move together or not"
+    if t.low > 0.0 or t.high < 0.0:
+        how = "move together" if t.rho > 0.0 else "move against each other"
+    return f"{pair}: readings of one well {how} ({t.rho:.1f}, 95 % {t.low:.1f} to {t.high:.1f})."
