@@ -76,13 +76,31 @@ def test_the_points_are_the_product_of_the_levels_in_coded_columns():
 
 @pytest.mark.parametrize(
     ("ranged", "choices", "points"),
-    [(1, (), 21), (3, (), 11), (6, (), 4), (2, (4, 5), 14), (4, (30,), 3), (0, (2, 7), 21)],
+    [(1, (), 21), (3, (), 11), (6, (), 5), (2, (9, 9), 14), (4, (90,), 3), (0, (2, 7), 21)],
 )
 def test_points_a_factor_fall_as_factors_and_choices_multiply(ranged, choices, points):
     every = [Continuous(low=0.0, high=1.0)] * ranged + [Choice(levels=k) for k in choices]
     grid = product_grid(Coding(tuple(every)))
     assert grid.shape == (points,) * ranged + choices
     assert grid.size == len(grid.points()) == np.prod(grid.shape)
+
+
+@pytest.mark.parametrize(
+    ("factors", "fine", "within"), [(3, 21, 0.001), (4, 15, 0.004), (5, 11, 0.02), (6, 8, 0.02)]
+)
+def test_indices_of_a_steep_logistic_surface(factors, fine, within):
+    """From 0.1 to 0.9 over a quarter of the first factor's range, against a finer rule."""
+
+    def shares(rule):
+        x = np.meshgrid(*[rule[0]] * factors, indexing="ij", sparse=True)
+        f = 1.0 + 8.0 * x[0] + 6.0 * x[1] - 4.0 * x[0] ** 2 + 2.4 * x[0] * x[1] + 1.6 * x[2]
+        f = f + 0.8 * sum(x[3:])
+        found = effects((1.0 / (1.0 + np.exp(-f)))[None], [rule[1]] * factors)
+        return np.concatenate([found.first[0], found.total[0]])
+
+    points, weights = np.polynomial.legendre.leggauss(fine)
+    own = lobatto(product_grid(Coding((Continuous(low=0.0, high=1.0),) * factors)).shape[0])
+    assert shares(own) == pytest.approx(shares((points, weights / 2.0)), abs=within)
 
 
 # --- indices -------------------------------------------------------------------------------------
