@@ -17,7 +17,7 @@ Plant = Literal["outlier", "plate", "stocks", "confounded", "prior"]
 FACTORS = [{**PH, "step": 0.25}, {**SALT, "step": 25}]
 NOISE, PLATE_SD = 0.025, 0.02
 # Logits; what a stock made a little wrong does to a condition.
-STOCK_SD = 0.4
+STOCK_SD = 0.3
 WELLS, REPEATS, BRIDGES = 14, 4, 8
 # The well of the second plate that reads far off.
 WILD = 6

@@ -133,8 +133,9 @@ def test_every_response_with_readings_is_checked(tmp_path):
     found = view.checks()
     names = [check.name for check in found if check.response == "recovery"]
     assert names == [check.name for check in found if check.response == "hcp"]
-    assert [check.name for check in found if check.response is None] == ["confounding"]
-    assert len(found) == 2 * len(names) + 1
+    of_all = [check.name for check in found if check.response is None]
+    assert of_all == ["readings together", "confounding"]
+    assert len(found) == 2 * len(names) + len(of_all)
     labels = {check.sentence.split(":")[0] for check in found if check.response == "hcp"}
     assert labels == {"HCP"}
 

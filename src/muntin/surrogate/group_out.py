@@ -16,6 +16,7 @@ from numpy.typing import NDArray
 from muntin.surrogate.cells import Cells
 from muntin.surrogate.evidence import Model
 from muntin.surrogate.hyperparameters import Posterior, integrate
+from muntin.surrogate.links import latent_of
 from muntin.surrogate.pareto import tail_shape
 from muntin.surrogate.propagation import Approximation
 from muntin.surrogate.sites import Rows, Sites, natural
@@ -209,12 +210,10 @@ def _summary(
     weights: Array,
     trusted: bool,
 ) -> GroupOut:
-    from scipy.special import ndtr
-
     carrying = np.flatnonzero(weights > 1e-4 * weights.max())
     w = weights[carrying] / weights[carrying].sum()
     some, law = lik.nodes(carrying), _nodes(ahead, carrying)
-    pit = w @ _transform(cells, some, law, readings)
+    pit = np.clip(w @ _transform(cells, some, law, readings), 0.0, 1.0)
     pit = np.where(cells.censored[cells.cell[readings]] == 0, pit, np.nan)
     read = np.flatnonzero(cells.censored[ahead.cells] == 0)
     shift, z, likeness = _together(cells, some, law, read)
@@ -222,7 +221,7 @@ def _summary(
         pit,
         float(w @ likeness),
         float(w @ shift),
-        float(w @ ndtr(z)),
+        float(w @ _normal_cdf(z)),
         float(1.0 / (weights**2).sum()),
         trusted,
     )
@@ -250,24 +249,42 @@ def _pairs(ahead: Ahead) -> tuple[Array, Array, Array, Array, Array]:
 
 def _transform(cells: Cells, lik: CellLikelihood, ahead: Ahead, readings: Index) -> Array:
     """Probability (S, n) at each node that a reading lies below what was read."""
-    from scipy.special import ndtr
-
     u, s, uu, us, ss = _pairs(ahead)
     place = np.searchsorted(ahead.cells, cells.cell[readings])
-    near = _few(lik, ahead.cells)
+    near, y = _few(lik, ahead.cells), cells.y[readings]
     points = u[..., None] + np.sqrt(uu)[..., None] * _Z
     s_given = s[..., None] + (us / uu)[..., None] * (points - u[..., None])
     s_var = np.maximum(ss - us**2 / uu, 0.0)[..., None]
     g, h = near.process_mean(points), near.scale[..., None]
-    noise = near.noise[..., None] + cells.variance[ahead.cells][:, None] + near.wandering(points)
-    sd = np.sqrt(noise + (h * g) ** 2 * s_var)
-    centre = (1.0 + h * s_given) * g
+    noise = near.reading_variance(points) + np.zeros_like(points)
     if lik.link == "identity":
         # The sum over u is known: a normal law again.
         total = np.sqrt(uu + noise[..., 0])[:, place]
-        return np.asarray(ndtr((cells.y[readings] - lik.offset - u[:, place]) / total))
-    below = ndtr((cells.y[readings][:, None] - centre[:, place]) / sd[:, place])
-    return np.asarray(below @ _W)
+        return _normal_cdf((y - lik.offset - u[:, place]) / total)
+    sd = np.sqrt(noise + (h * g) ** 2 * s_var)
+    centre = (1.0 + h * s_given) * g
+    below = _normal_cdf((y[:, None] - centre[:, place]) / sd[:, place]) @ _W
+    return below + _step(_few(near, place), y, u[:, place], uu[:, place], ss[:, place])
+
+
+def _step(lik: CellLikelihood, y: Array, u: Array, uu: Array, ss: Array) -> Array:
+    """What the sum over the points misses (S, n) of the step that a small noise makes in u.
+
+    The Gaussian step of the same place and slope has a known average over u.
+    """
+    at = latent_of(lik.link, y, lik.ceiling) - lik.offset
+    at = np.where(np.isfinite(at), at, 50.0 * np.sign(y - 0.5 * lik.ceiling))
+    noise = lik.reading_variance(at) + (lik.scale * y) ** 2 * ss
+    width = np.sqrt(noise) / np.maximum(lik.slope(at), 1e-6)
+    points = u[..., None] + np.sqrt(uu)[..., None] * _Z
+    summed = _normal_cdf((at[..., None] - points) / width[..., None]) @ _W
+    return _normal_cdf((at - u) / np.sqrt(uu + width**2)) - summed
+
+
+def _normal_cdf(z: Array) -> Array:
+    from scipy.special import ndtr
+
+    return np.asarray(ndtr(z))
 
 
 def _few(lik: CellLikelihood, cells: Index) -> CellLikelihood:
@@ -321,7 +338,7 @@ def _cell_law(cells: Cells, lik: CellLikelihood, ahead: Ahead) -> tuple[Array, A
     J[:, np.arange(len(at)), ahead.latent] = (1.0 + near.scale * s) * slope
     J[:, :, L:] = (near.scale * level)[..., None] * ahead.loads
     K = J @ ahead.covariance @ np.swapaxes(J, 1, 2)
-    noise = near.noise + cells.variance[at] + near.wandering(u)
+    noise = near.reading_variance(u)
     index = np.arange(len(at))
     K[:, index, index] += noise / cells.count[at] + spare
     centre = (1.0 + near.scale * s) * level

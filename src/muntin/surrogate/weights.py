@@ -23,11 +23,13 @@ def effective(log_weights: Array) -> float:
 def tempered(log_weights: Array, log_factor: Array) -> tuple[Array, float]:
     """Normalised log weights (S,) times a factor (S,), and the power to which it was taken.
 
-    Where few nodes would carry the weight the factor is tempered until enough of them do (as in
-    annealed importance sampling, Neal 2001), which leaves the posterior between the two.
+    Where few nodes would carry the weight the factor is tempered until _ENOUGH of them do, or half
+    of those that do now (as in annealed importance sampling, Neal 2001); the posterior then stays
+    between the two.
     """
+    enough = min(_ENOUGH, 0.5 * effective(normalised(log_weights)))
     for power in _POWERS:
         moved = normalised(log_weights + power * log_factor)
-        if effective(moved) >= _ENOUGH:
+        if effective(moved) >= enough:
             break
     return moved, power
