@@ -16,8 +16,8 @@ Plant = Literal["outlier", "plate", "stocks", "confounded", "prior"]
 
 FACTORS = [{**PH, "step": 0.25}, {**SALT, "step": 25}]
 NOISE, PLATE_SD = 0.025, 0.02
-# Logits; what a stock made a little wrong does to a condition.
-STOCK_SD = 0.3
+# Logits, up or down; what a stock made a little wrong does to a condition.
+STOCK_OFF = 0.4
 WELLS, REPEATS, BRIDGES = 14, 4, 8
 # The well of the second plate that reads far off.
 WILD = 6
@@ -38,7 +38,7 @@ def study(folder: Path, seed: int, plant: Plant | None = None, plates: int = 3) 
             plate = pd.concat([plate, first.iloc[:BRIDGES]], ignore_index=True)
         error = PLATE_SD * rng.standard_normal() - (0.3 if plant == "plate" and number == 1 else 0)
         latent = logit_of(plate)
-        draws = STOCK_SD * rng.standard_normal(len(plate))
+        draws = STOCK_OFF * np.sign(rng.standard_normal(len(plate)))
         if plant == "stocks":
             stocks = plate.groupby(["ph", "salt"], sort=False).ngroup()
             latent = latent + draws[stocks]
