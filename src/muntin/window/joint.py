@@ -9,14 +9,17 @@ How much of a score is noise: where y = f + noise, the copula's correlation chan
 probability at rate E[phi(z_1)] E[phi(z_2)] with z the target less f in units of the reading's sd,
 and the correlation of the scores at rate phi(score_1) phi(score_2) (Plackett 1954). Their ratio is
 the product of the responses' loadings, sd of the noise x predictive density at the target /
-phi(score): noise sd / predictive sd where the law is normal, and right to first order where it is
-not, as near a plateau or for a mixture of nodes. It never exceeds 1, as phi(Phi^-1) is concave.
+phi(score), one for each end of a target: noise sd / predictive sd where the law is normal, and
+right to first order where it is not, as near a plateau or for a mixture of nodes. A loading never
+exceeds 1, as phi(Phi^-1) is concave.
 """
 
 from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass, replace
+from itertools import combinations
+from itertools import product as product_of
 
 import numpy as np
 from numpy.typing import NDArray
@@ -24,13 +27,11 @@ from numpy.typing import NDArray
 from muntin.surrogate.links import slope_of
 from muntin.surrogate.nodes import Surface
 from muntin.surrogate.rectangle import pair_excess, rectangle
+from muntin.window.density import reading_density
 from muntin.window.probability import Target, well_meets
 
 Array = NDArray[np.float64]
 Index = NDArray[np.intp]
-# Nodes on which densities at a target are taken, and the part of the noise sd over which they are.
-_NODES = 12
-_STEP = 0.1
 # Beyond, a response passes or fails as good as surely, and joins as a factor.
 _SURE = 1e-5
 # Scores that move as one to the last digit have no density.
@@ -50,11 +51,13 @@ class Law:
     noise: Array
     setting: Array
 
-    def blended(self) -> tuple[Array, Array]:
-        """Loadings (n,) and (n, D) of both ends together, each by its density."""
+    def blended(self) -> Law:
+        """The law with one loading for both ends, each weighed by its density."""
         share = _phi(self.score)
         share = share / np.maximum(share.sum(axis=1, keepdims=True), 1e-300)
-        return (share * self.noise).sum(1), (share[..., None] * self.setting).sum(1)
+        noise = (share * self.noise).sum(1, keepdims=True) + np.zeros((1, 2))
+        setting = (share[..., None] * self.setting).sum(1, keepdims=True) + np.zeros((1, 2, 1))
+        return replace(self, noise=noise, setting=setting)
 
 
 @dataclass(frozen=True)
@@ -95,17 +98,10 @@ class Predicted:
             shift=None if self.shift is None else self.shift[rows],
         )
 
-    def thinned(self, weights: Array) -> Predicted:
-        """The response on a few nodes, drawn evenly by weights (S,)."""
-        ticks = (np.arange(_NODES) + 0.5) / _NODES
-        at = np.searchsorted(np.cumsum(weights), ticks * weights.sum())
-        index, count = np.unique(np.minimum(at, len(weights) - 1), return_counts=True)
-        return replace(
-            self,
-            surface=self.surface.take(index, count / _NODES),
-            moments=(self.moments[0][index], self.moments[1][index]),
-            wander=None if self.wander is None else self.wander[index],
-        )
+    def density(self, limit: float) -> Array:
+        """Density (S, n) of a reading at a limit at each node."""
+        wander = 0.0 if self.wander is None else self.wander
+        return reading_density(self.surface, self.moments, limit, wander)
 
 
 def joint_meets(responses: Sequence[Predicted], met: Array, correlation: Array) -> Array:
@@ -122,31 +118,39 @@ def joint_meets(responses: Sequence[Predicted], met: Array, correlation: Array) 
     if not len(rows):
         return product
     laws = [_law(r.at(rows), p[rows]) for r, p in zip(responses, met, strict=True)]
-    excess = _excess_of_two(laws, correlation) if len(laws) == 2 else _excess(laws, correlation)
+    excess = _excess_of_pairs(laws, correlation)
+    if len(laws) > 2:
+        alike = [law.blended() for law in laws]
+        excess += _excess_of_all(alike, correlation) - _excess_of_pairs(alike, correlation)
     least, most = met[:, rows].sum(axis=0) - len(responses) + 1.0, met[:, rows].min(axis=0)
     product[rows] = np.clip(product[rows] + excess, np.maximum(least, 0.0), most)
     return product
 
 
-def _excess_of_two(laws: Sequence[Law], correlation: Array) -> Array:
-    """Joint chance (n,) of two responses less the product, corner by corner of the rectangle."""
-    one, other = laws
-    out = np.zeros(len(one.met))
-    for i in range(2):
-        for j in range(2):
-            rho = correlation[0, 1] * one.noise[:, i] * other.noise[:, j]
-            rho = rho + (one.setting[:, i] * other.setting[:, j]).sum(1)
-            sign = 1.0 if i == j else -1.0
-            rho = np.clip(rho, -_MOST, _MOST)
-            out += sign * pair_excess(one.score[:, i], other.score[:, j], rho)
+def _excess_of_pairs(laws: Sequence[Law], correlation: Array) -> Array:
+    """What ties of two responses each add to the product (n,); all of it where there are two."""
+    out = np.zeros(len(laws[0].met))
+    for i, j in combinations(range(len(laws)), 2):
+        others = [law.met for k, law in enumerate(laws) if k not in (i, j)]
+        out += np.prod([*others, _excess_of_two(laws[i], laws[j], correlation[i, j])], axis=0)
     return out
 
 
-def _excess(laws: Sequence[Law], correlation: Array) -> Array:
-    """Joint chance (n,) of three or more responses less the product."""
-    loadings = [law.blended() for law in laws]
-    noise = np.stack([k for k, _ in loadings], axis=1)
-    setting = np.stack([m for _, m in loadings], axis=1)
+def _excess_of_two(one: Law, other: Law, correlation: float) -> Array:
+    """Joint chance (n,) of two responses less the product, corner by corner of the rectangle."""
+    out = np.zeros(len(one.met))
+    for i, j in product_of(range(2), range(2)):
+        rho = correlation * one.noise[:, i] * other.noise[:, j]
+        rho = np.clip(rho + (one.setting[:, i] * other.setting[:, j]).sum(1), -_MOST, _MOST)
+        gain = pair_excess(one.score[:, i], other.score[:, j], rho)
+        out += gain if i == j else -gain
+    return out
+
+
+def _excess_of_all(laws: Sequence[Law], correlation: Array) -> Array:
+    """Joint chance (n,) of responses less the product, one loading for both ends of each."""
+    noise = np.stack([law.noise[:, 0] for law in laws], axis=1)
+    setting = np.stack([law.setting[:, 0] for law in laws], axis=1)
     R = correlation * noise[:, :, None] * noise[:, None, :]
     R = _MOST * (R + setting @ np.swapaxes(setting, 1, 2))
     index = np.arange(len(laws))
@@ -186,39 +190,30 @@ def _scores(response: Predicted, met: Array) -> Array:
 
 def _loadings(response: Predicted, score: Array) -> tuple[Array, Array]:
     """Loadings of the scores (n, 2) on the noise (n, 2) and on setting errors (n, 2, D)."""
-    surface = response.surface
-    noise_sd = float(surface.weights @ surface.errors.noise)
-    by_noise = response.thinned(surface.weights * surface.errors.noise)
+    surface, target = response.surface, response.target
     shift = np.zeros((len(score), 0)) if response.shift is None else response.shift
     noise, setting = np.zeros(score.shape), np.zeros((*score.shape, shift.shape[1]))
-    for end, limit in enumerate((response.target.low, response.target.high)):
+    for end, limit in enumerate((target.low, target.high)):
         if np.isfinite(limit):
+            density = surface.weights[:, None] * response.density(limit)
             height = np.maximum(_phi(score[:, end]), 1e-300)
-            steep = density(by_noise, limit) / height
-            noise[:, end] = np.clip(noise_sd * steep, 0.0, 1.0)
-            setting[:, end] = (_slope_at(surface, limit) * steep)[:, None] * shift
-    return noise, setting
+            noise[:, end] = surface.errors.noise @ density / height
+            setting[:, end] = (_slopes_at(surface, limit) @ density / height)[:, None] * shift
+    # Together they make up no more than the whole score.
+    whole = np.sqrt(noise**2 + (setting**2).sum(-1))
+    most = np.maximum(whole, 1.0)
+    return noise / most, setting / most[..., None]
 
 
 def _phi(z: Array) -> Array:
     return np.asarray(np.exp(-0.5 * z**2) / np.sqrt(2.0 * np.pi))
 
 
-def _slope_at(surface: Surface, limit: float) -> float:
-    """Mean slope of the link where the process mean is the limit, on the scale of the readings."""
+def _slopes_at(surface: Surface, limit: float) -> Array:
+    """Slope (S,) of the link where the process mean is the limit, on the scale of the readings."""
     if surface.link != "logit":
-        return 1.0
+        return np.ones(len(surface.weights))
     place = surface.thresholds(limit)[:, 0]
-    slope = slope_of("logit", np.where(np.isfinite(place), place, 0.0), surface.errors.ceiling)
-    return float(surface.weights @ np.where(np.isfinite(place), slope, 0.0))
-
-
-def density(response: Predicted, limit: float) -> Array:
-    """Predictive density (n,) of a reading at a limit, on the scale where noise is additive."""
-    step = _STEP * float(response.surface.errors.noise.min())
-    if response.surface.link == "log":
-        ends = limit * np.exp([-step, step])
-    else:
-        ends = limit + np.array([-step, step])
-    under, over = (response.met(Target(high=float(end))) for end in ends)
-    return np.maximum(over - under, 0.0) / (2.0 * step)
+    reached = np.isfinite(place)
+    slope = slope_of("logit", np.where(reached, place, 0.0), surface.errors.ceiling)
+    return np.where(reached, slope, 0.0)
