@@ -69,11 +69,17 @@ def limiting(view: Assessment, frame: pd.DataFrame) -> pd.DataFrame:
 
 def _chances(predicted: Predicted, by: str) -> Array:
     """Chances (3, n) to meet the target, to lie below it and to lie above it."""
+
+    def met(target: Target) -> Array:
+        if by == "mean":
+            return mean_meets(predicted.surface, predicted.moments, target)
+        return predicted.met(target)
+
     target = predicted.target
-    asked = target, Target(high=target.low), Target(low=target.high)
-    if by == "mean":
-        return np.stack([mean_meets(predicted.surface, predicted.moments, t) for t in asked])
-    return np.stack([predicted.met(t) for t in asked])
+    never = np.zeros(predicted.moments[0].shape[1])
+    under = met(Target(high=target.low)) if np.isfinite(target.low) else never
+    over = met(Target(low=target.high)) if np.isfinite(target.high) else never
+    return np.stack([met(target), under, over])
 
 
 def sides_of(view: Assessment, window: Window) -> tuple[Side, ...]:
