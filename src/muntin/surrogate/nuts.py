@@ -48,7 +48,7 @@ class Nuts:
 def resampled(fit: Fit, seed: int, settings: Nuts | None = None) -> Fit:
     """A fit of the fast engine with surface, nodes and leave-one-out predictions from draws."""
     settings = settings or Nuts()
-    draws = sample(fit.model, seed, settings)
+    draws = sample(fit.model, seed, settings, _latents(fit))
     r_hat, bulk, tail, typical = efficiency_of(draws)
     loo, pareto_k = psis_leave_one_out(draws, typical / len(draws))
     chains, length = draws.eta.shape[:2]
@@ -70,12 +70,16 @@ def resampled(fit: Fit, seed: int, settings: Nuts | None = None) -> Fit:
     )
 
 
-def sample(model: Model, seed: int, settings: Nuts) -> Draws:
-    """Draws from the posterior; the same seed gives the same draws. Raises NotInstalledError."""
+def sample(model: Model, seed: int, settings: Nuts, near: Array | None = None) -> Draws:
+    """Draws from the posterior; the same seed gives the same draws.
+
+    near (U,): latent values not far from the posterior's, which make the sampling fast; they do
+    not change the posterior. Raises NotInstalledError.
+    """
     pm, fast = pymc(), None if settings.own else nutpie()
     with warnings.catch_warnings():
         warnings.simplefilter("ignore", FutureWarning)
-        symbolic = pymc_model(model, settings.noise)
+        symbolic = pymc_model(model, settings.noise, near)
         number = _seed(model, seed)
         found = _by_nutpie(fast, symbolic, number, settings) if fast else None
         if found is None:
@@ -86,11 +90,19 @@ def sample(model: Model, seed: int, settings: Nuts) -> Draws:
         model=model,
         eta=eta,
         w=posterior["w"].to_numpy(),
-        z=posterior["z"].to_numpy() if "z" in posterior else np.zeros((*eta.shape[:2], 0)),
+        z=posterior["z"].to_numpy(),
         nu=posterior["nu"].to_numpy() if "nu" in posterior else None,
         stats={k: stats[k].to_numpy() for k in ("diverging", "energy", "n_steps") if k in stats},
         sampler="nutpie" if fast else "PyMC",
     )
+
+
+def _latents(fit: Fit) -> Array:
+    """Posterior mean (U,) of the latent values by the fast engine."""
+    evidence, weights = fit.posterior.evidence, np.exp(fit.posterior.log_weights)
+    w = evidence.approximation.mean[:, : evidence.root.shape[2]]
+    mean = weights @ (evidence.root @ w[..., None])[..., 0]
+    return np.asarray(fit.model.family.priors.mean + mean)
 
 
 def _seed(model: Model, seed: int) -> int:

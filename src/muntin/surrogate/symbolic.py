@@ -1,7 +1,11 @@
 """The PyMC model of a response: the same cells, priors and link as the fast engine's `Model`.
 
-Everything is sampled in standardised variables, N(0, I) under the prior (non-centred, as in
-Papaspiliopoulos, Roberts & Skold 2007): hyperparameters eta, latents w, scale errors z.
+Everything is sampled in standardised variables: hyperparameters eta ~ N(0, I), and v, which makes
+the whitened latents w and scale errors z, N(0, I) under the prior, given eta. With no latents to
+start from, v is w and z themselves (non-centred). With such, v is standardised by the posterior
+that the likelihood linearised there would give at each eta (Murray & Adams 2010, section 3, do so
+with surrogate data): a change of variables, undone exactly by its Jacobian, after which v hardly
+depends on eta.
 """
 
 from __future__ import annotations
@@ -49,19 +53,22 @@ class Hyperparameters:
         return cls(value[0], value[1:inside], value[inside:scale], 1.0 - gap, value[own:])
 
 
-def pymc_model(model: Model, noise: Noise = "normal") -> Any:
+def pymc_model(model: Model, noise: Noise = "normal", near: Array | None = None) -> Any:
     """The `pymc.Model` of a response with C cells, n readings and R whitened latents.
 
-    Its variables: eta (H,), w (R,), z (groups of all scale errors,); with Student-t noise also nu,
-    and for censored readings the mixing variable of each. Data `y` (n,).
+    near (U,): latent values about which the variables are standardised. Free variables: eta (H,)
+    and v (R + groups of all scale errors,); with Student-t noise also nu, and for censored readings
+    the mixing variable of each. Kept: w (R,) and z (groups,). Data `y` (n,).
     """
     pm, cells, layout = pymc(), model.cells, model.layout
     with pm.Model() as symbolic:
         h = Hyperparameters.of(layout, pm.Normal("eta", shape=len(layout)))
-        w = pm.Normal("w", shape=whitened(model))
-        u = model.family.priors.mean + _latents(model.family, h, cells, w)
-        errors = pm.Normal("z", shape=sum(cells.scale_groups)) if cells.scale else None
-        centre, variance = _law(model, h, u, errors)
+        root, width = symbolic_root(model.family, h, cells), whitened(model)
+        v = pm.Normal("v", shape=width + sum(cells.scale_groups))
+        white = v if near is None else _standardised(model, h, root, v, near)
+        w, z = pm.Deterministic("w", white[:width]), pm.Deterministic("z", white[width:])
+        u = model.family.priors.mean + root @ w
+        centre, variance = _law(model, h, u, z)
         _observe(cells, centre, variance, noise)
     return symbolic
 
@@ -72,19 +79,18 @@ def whitened(model: Model) -> int:
     return int(model.family.root(model.layout, theta, model.cells).shape[2])
 
 
-def _latents(family: Family, h: Hyperparameters, cells: Cells, w: Any) -> Any:
-    """L w (U,): the latent values about their prior mean, L as in the family's `root`."""
+def symbolic_root(family: Family, h: Hyperparameters, cells: Cells) -> Any:
+    """The root L (U, R) of the prior covariance of the latents, as in the family's `root`."""
+    import pytensor.tensor as pt
+
     if isinstance(family, GaussianProcess):
-        return _process_root(family, h, cells) @ w
+        return _process_root(family, h, cells)
     assert isinstance(family, Quadratic)
-    p = len(family.terms)
-    value = family.basis(cells.X) @ (family.coefficient_sd(h.own[None])[0] * w[:p])
-    start = p
+    parts = [family.basis(cells.X) * family.coefficient_sd(h.own[None])[0]]
     for j in range(cells.inside.shape[1]):
-        groups = cells.inside[:, j]
-        value += h.inside[j] * w[start + groups]
-        start += int(groups.max(initial=-1)) + 1
-    return value
+        groups = int(cells.inside[:, j].max(initial=-1)) + 1
+        parts.append(np.eye(groups)[cells.inside[:, j]] * h.inside[j])
+    return pt.concatenate(parts, axis=1)
 
 
 def _process_root(family: GaussianProcess, h: Hyperparameters, cells: Cells) -> Any:
@@ -107,21 +113,50 @@ def _process_root(family: GaussianProcess, h: Hyperparameters, cells: Cells) -> 
     return pt.linalg.cholesky(K, lower=True, on_error="nan")
 
 
-def _law(model: Model, h: Hyperparameters, u: Any, errors: Any) -> tuple[Any, Any]:
-    """Mean and variance (n,) of every reading given latents u (U,) and scale errors (groups,)."""
+def _standardised(model: Model, h: Hyperparameters, root: Any, v: Any, near: Array) -> Any:
+    """w and z (R + groups,) from v: the mean and a root of the linearised posterior at eta.
+
+    A reading is g + g' (u - near) + g sum(scale_sd z) + noise there; a censored one says nothing.
+    """
     import pytensor.tensor as pt
 
+    pm, cells = pymc(), model.cells
+    mean, slope = _link(model, h, near[cells.latent])
+    blocks = [(slope * np.ones(len(cells)))[:, None] * root[cells.latent]]
+    for j, groups in enumerate(cells.scale_groups):
+        blocks.append(h.scale[j] * mean[:, None] * np.eye(groups)[cells.scale[j]])
+    J = pt.concatenate(blocks, axis=1)
+    variance = h.noise**2 + cells.variance + slope**2 * model.wander
+    precision = (cells.censored == 0) * cells.count / variance
+    away = cells.mean - mean + slope * (near[cells.latent] - model.family.priors.mean)
+    M = pt.eye(v.shape[0]) + J.T @ (precision[:, None] * J)
+    C = pt.linalg.cholesky(M, lower=True, on_error="nan")
+    shift = pt.linalg.solve_triangular(C, J.T @ (precision * away), lower=True)
+    white = pt.linalg.solve_triangular(C.T, shift + v, lower=False)
+    # The prior of w and z and the Jacobian, in place of the normal law of v.
+    change = 0.5 * (v @ v - white @ white) - pt.log(pt.diagonal(C)).sum()
+    pm.Potential("change of variables", change)
+    return white
+
+
+def _link(model: Model, h: Hyperparameters, at: Any) -> tuple[Any, Any]:
+    """Process mean and its slope (C,) at latent values (C,)."""
+    import pytensor.tensor as pt
+
+    if model.link != "logit":
+        return at, 1.0
+    share = pt.sigmoid(at)
+    return h.ceiling * share, h.ceiling * share * (1.0 - share)
+
+
+def _law(model: Model, h: Hyperparameters, u: Any, z: Any) -> tuple[Any, Any]:
+    """Mean and variance (n,) of every reading given latents u (U,) and scale errors z (groups,)."""
     cells = model.cells
-    at = u[cells.latent]
-    if model.link == "logit":
-        share = pt.sigmoid(at)
-        mean, slope = h.ceiling * share, h.ceiling * share * (1.0 - share)
-    else:
-        mean, slope = at, 1.0
+    mean, slope = _link(model, h, u[cells.latent])
     variance = h.noise**2 + cells.variance + slope**2 * model.wander
     factor, start = np.ones(len(cells)), 0
     for j, groups in enumerate(cells.scale_groups):
-        factor = factor + h.scale[j] * errors[start + cells.scale[j]]
+        factor = factor + h.scale[j] * z[start + cells.scale[j]]
         start += groups
     return (factor * mean)[cells.cell], variance[cells.cell]
 
