@@ -1,0 +1,146 @@
+"""Where the truth of simulated data sets lies in the posterior of an engine.
+
+Talts, Betancourt, Simpson, Vehtari & Gelman 2018: over data sets drawn from the model the place of
+every quantity in its posterior must be uniform. The fast engine knows its posterior distribution
+function; of NUTS the rank among thinned draws is taken.
+"""
+
+from __future__ import annotations
+
+import warnings
+from collections.abc import Callable
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+from scipy.special import ndtr
+
+from muntin.surrogate.draws import Draws
+from muntin.surrogate.fit import Fit, fit_surrogate, link_of
+from muntin.surrogate.links import mean_of
+from muntin.surrogate.nodes import Surface
+from muntin.window.probability import Target, mean_meets, well_meets
+from tests.benchmarks.simulated import COLUMNS, Setup, Simulated, simulate
+
+Array = NDArray[np.float64]
+NEW = ("latent value", "process mean", "future reading")
+# One less than a multiple of the 20 points of the bands, so that ranks cannot fall on them.
+RANKS = 99
+
+
+@dataclass(frozen=True)
+class Places:
+    """Places (N, quantities) in [0, 1] of the truth of N data sets, quantities by name."""
+
+    names: tuple[str, ...]
+    values: Array
+
+    def of(self, name: str) -> Array:
+        """Places (N,) of one quantity."""
+        return np.asarray(self.values[:, self.names.index(name)])
+
+
+def below(values: Array, weights: Array, truth: Array) -> Array:
+    """Weighted distribution function (H,) of nodes values (S, H) at truth (H,): linear between the
+    nodes, each of which has half of its weight on either side of it.
+    """
+    out = np.empty(len(truth))
+    for h, value in enumerate(truth):
+        order = np.argsort(values[:, h])
+        w = weights[order]
+        reached = np.cumsum(w) - 0.5 * w
+        ends = (0.5 * reached[0], 0.5 * (1.0 + reached[-1]))
+        out[h] = np.interp(value, values[order, h], reached, *ends)
+    return out
+
+
+def wander_of(setup: Setup, surface: Surface, x: Array) -> Array | float:
+    """Latent variance (S, 1) that setting errors make of a new well, 0 where there are none."""
+    return surface.wander(x, np.full(x.shape, setup.setting)) if setup.setting else 0.0
+
+
+def fitted(setup: Setup, data: Simulated) -> Fit:
+    """The fast engine on one data set."""
+    return fit_surrogate(setup.name, data.readings, setup.kind, COLUMNS, setup.priors, 1)
+
+
+def placed(setup: Setup, data: Simulated, fit: Fit) -> Array:
+    """Places of the truth in the fast engine's posterior: hyperparameters, then those of NEW."""
+    surface = fit.surface
+    moments = surface.moments(data.x)
+    z = (data.latent - moments[0]) / np.sqrt(moments[1])
+    wander = wander_of(setup, surface, data.x)
+    return np.array(
+        [
+            *below(fit.theta, fit.weights, data.theta),
+            (surface.weights @ ndtr(z))[0],
+            1.0 - mean_meets(surface, moments, Target(low=data.mean))[0],
+            1.0 - well_meets(surface, moments, Target(low=data.reading), wander)[0],
+        ]
+    )
+
+
+def fast_places(setup: Setup, sets: int, report: Callable[[int], None] = lambda _: None) -> Places:
+    """Places in the fast engine's posteriors; every data set has wells of its own."""
+    values = []
+    for seed in range(sets):
+        data = simulate(setup, seed)
+        fit = fitted(setup, data)
+        values.append(placed(setup, data, fit))
+        report(seed + 1)
+    return Places((*fit.names, *NEW), np.array(values))
+
+
+def ranked(setup: Setup, data: Simulated, draws: Draws, rng: np.random.Generator) -> Array:
+    """Places of the truth among RANKS thinned draws, in the order of `placed`."""
+    surface = draws.surface(link_of(setup.kind), RANKS, 1)
+    index = np.linspace(0, len(draws) - 1, RANKS).round().astype(np.intp)
+    mean, variance = (m[:, 0] for m in surface.moments(data.x))
+    errors, link = surface.errors, link_of(setup.kind)
+    f = mean + np.sqrt(variance) * rng.normal(size=RANKS)
+    inside = np.sqrt((errors.inside**2).sum(1) + np.ravel(wander_of(setup, surface, data.x)))
+    scale = np.sqrt((errors.scale**2).sum(1)) * rng.normal(size=RANKS)
+    moved, noise = f + inside * rng.normal(size=RANKS), errors.noise * rng.normal(size=RANKS)
+    if link == "log":
+        reading = np.exp(moved + noise)
+    else:
+        reading = (1.0 + scale) * mean_of(link, moved, errors.ceiling) + noise
+    new = np.stack([f, mean_of(link, f, errors.ceiling), reading], axis=1)
+    values = np.concatenate([draws.theta[index], new], axis=1)
+    truth = np.array([*data.theta, data.latent, data.mean, data.reading])
+    return ((values < truth).sum(axis=0) + 0.5) / (RANKS + 1)
+
+
+def nuts_places(setup: Setup, sets: int, report: Callable[[int], None] = lambda _: None) -> Places:
+    """Places among draws of NUTS; all data sets share their wells, so that the model is compiled
+    once and only the readings are exchanged. Needs nutpie; without censored readings and setting
+    errors, which would change the model.
+    """
+    import nutpie
+
+    from muntin.surrogate.symbolic import pymc_model
+
+    rng, values = np.random.default_rng(9), []
+    first = setup.model(simulate(setup, 0, design=0).readings)
+    with warnings.catch_warnings():
+        warnings.simplefilter("ignore", FutureWarning)
+        compiled = nutpie.compile_pymc_model(pymc_model(first))
+    for seed in range(sets):
+        data = simulate(setup, seed, design=0)
+        model = setup.model(data.readings)
+        found = nutpie.sample(
+            compiled.with_data(y=model.cells.y),
+            draws=500,
+            tune=500,
+            chains=2,
+            cores=1,
+            seed=seed,
+            progress_bar=False,
+            save_warmup=False,
+            target_accept=0.95,
+        )
+        eta, w, z = (found.posterior[name].to_numpy() for name in ("eta", "w", "z"))
+        draws = Draws(model=model, eta=eta, w=w, z=z, nu=None, stats={}, sampler="nutpie")
+        values.append(ranked(setup, data, draws, rng))
+        report(seed + 1)
+    return Places((*first.layout.names, *NEW), np.array(values))
