@@ -6,11 +6,25 @@ from dataclasses import replace
 import numpy as np
 import pandas as pd
 import pytest
+from scipy.special import expit
 from scipy.stats import binom
 
 import muntin
+from muntin.window.checks.coverage import coverage
 from muntin.window.checks.integration import integration
-from tests.studies import HCP, PH, RECOVERY, SALT, read, read_hcp, spread, written
+from tests.studies import (
+    HCP,
+    PH,
+    RECOVERY,
+    SALT,
+    SHIFT,
+    logit_of,
+    read,
+    read_hcp,
+    read_shift,
+    spread,
+    written,
+)
 
 FACTORS = [PH, SALT]
 SOUND = [read(spread(FACTORS, 12, seed), seed, error) for seed, error in ((1, 0.02), (2, -0.03))]
@@ -196,3 +210,166 @@ def test_a_void_plate_does_not_count(tmp_path):
     (folder / "plates" / "plate-02.toml").write_text('void = "the feed was warm"\n')
     found, _ = checks(tmp_path, [*SOUND, pd.concat(SOUND, ignore_index=True)], "quadratic")
     assert "two of them hardly tell" in found["shared errors"].sentence
+
+
+def test_readings_far_closer_than_predicted_are_a_note(tmp_path):
+    """Readings without noise where the study is sure that they scatter by 0.06."""
+    sure = {"noise_sd": {"median": 0.06, "log_sd": 0.05}}
+    exact = [p.assign(recovery=expit(logit_of(p)).round(4)) for p in SOUND]
+    found, view = checks(tmp_path, exact, responses=[{**RECOVERY, "priors": sure}])
+    coverage = found["coverage"]
+    assert not coverage.passed
+    assert not coverage.serious
+    assert coverage.sentence == (
+        "Recovery: 24 of 24 readings lie in the 90 % range predicted from the others (17 or more "
+        "were to be expected); they lie closer to the predictions than these allow for."
+    )
+    assert coverage.sentence not in view.window().unsupported
+
+
+@pytest.mark.parametrize(
+    ("pit", "serious", "said"),
+    [
+        (np.linspace(0.0, 1.0, 42)[1:-1], True, ""),
+        (np.linspace(0.0, 1.0, 42)[1:-1] ** 0.4, True, "; most lie above what is predicted"),
+        (np.linspace(0.0, 1.0, 42)[1:-1] ** 2.5, True, "; most lie below what is predicted"),
+        (
+            np.r_[np.full(14, 0.06), np.full(14, 0.94), np.full(14, 0.5)],
+            True,
+            "; too many lie far out, so predictions are too sure",
+        ),
+        (np.full(7, 0.5), True, ""),
+        (
+            np.full(20, 0.5),
+            False,
+            "; they lie closer to the predictions than these allow for",
+        ),
+    ],
+)
+def test_transforms_that_lie_unevenly_are_told(sound_view, pit, serious, said):
+    response, stack = sound_view.study.definition.responses[0], sound_view.stacks["recovery"]
+    (fit,) = stack.fits
+    odd = replace(stack, fits=(replace(fit, loo=replace(fit.loo, pit=pit)),))
+    (check,) = coverage(response, odd, odd)
+    assert check.sentence.endswith(f" or more were to be expected){said}.")
+    assert check.passed == (not said)
+    assert check.serious == serious
+
+
+@pytest.fixture(scope="module")
+def sound_view(tmp_path_factory):
+    return muntin.assess(written(tmp_path_factory.mktemp("sound"), SOUND), "quadratic")
+
+
+def test_repeats_that_are_too_few_are_said(tmp_path):
+    found, _ = checks(tmp_path, SOUND, "quadratic")
+    assert found["lack of fit"].passed
+    assert found["lack of fit"].sentence == (
+        "Recovery: too few repeats to tell lack of fit from noise (no repeat)."
+    )
+
+
+def test_sizes_of_scatter_are_told_in_the_unit_of_the_readings(tmp_path):
+    """Repeats 0.02 apart, which have a sd of 0.02 / sqrt(2) each; in per cent 1.4."""
+    plates = []
+    for plate in SOUND:
+        again = plate.iloc[:4].assign(recovery=plate["recovery"].iloc[:4] + 0.02)
+        both = pd.concat([plate, again], ignore_index=True)
+        plates.append(both.assign(recovery=(100.0 * both["recovery"]).round(2)))
+    response = {**RECOVERY, "unit": "%", "at_least": 80}
+    found, _ = checks(tmp_path, plates, "quadratic", responses=[response])
+    assert found["lack of fit"].sentence.startswith(
+        "Recovery: the surface fits as closely as repeats allow (sd 1.4 % by 8 repeats, "
+    )
+
+
+def test_the_better_surrogate_is_told_with_its_error(sound_view, tmp_path):
+    view = muntin.assess(written(tmp_path / "study", SOUND), "stacked")
+    stack = view.stacks["recovery"]
+    each = stack.fits[0].loo.log_density - stack.fits[1].loo.log_density
+    (check,) = (c for c in view.checks() if c.name == "gp against quadratic")
+    assert check.passed
+    assert not check.serious
+    # Vehtari, Gelman & Gabry 2017, eq. 24.
+    error = np.sqrt(((each - each.mean()) ** 2).sum())
+    assert f"(log density {abs(each.sum()):.1f} ± {error:.1f} higher)" in check.sentence
+    titles = ["the Gaussian process", "the quadratic"]
+    if each.sum() < 0:
+        titles.reverse()
+    how = "better than" if abs(each.sum()) > 2.0 * error else "about as well as"
+    said = f"Recovery: {titles[0]} predicts readings {how} {titles[1]} ("
+    assert check.sentence.startswith(said)
+    assert "gp against quadratic" not in {c.name for c in sound_view.checks()}
+
+
+def test_shared_errors_are_told_by_their_posterior(sound_view):
+    """Median and 90 % range of the sd over the nodes: so much weight lies below, to a node's."""
+    (check,) = (c for c in sound_view.checks() if c.name == "shared errors")
+    (fit,) = sound_view.stacks["recovery"].fits
+    sd = np.exp(fit.theta[:, fit.names.index("scale_error[0]")])
+    shown = re.findall(r"[\d.]+(?= %| to)", check.sentence.split("error of")[1])
+    middle, _, low, high = (float(x) / 100.0 for x in shown)
+    for value, level in ((low, 0.05), (middle, 0.5), (high, 0.95)):
+        below = fit.weights[sd < value].sum()
+        assert below == pytest.approx(level, abs=fit.weights.max())
+    assert low < middle < high
+
+
+def test_no_shared_errors_no_check(tmp_path):
+    shared = [{"by": ["plate"], "acts": "inside", "responses": ["hcp"]}]
+    plates = [read_hcp(plate) for plate in SOUND]
+    given = {"responses": [RECOVERY, HCP], "shared_errors": shared}
+    view = muntin.assess(written(tmp_path / "study", plates, **given), "quadratic")
+    assert [c.response for c in view.checks() if c.name == "shared errors"] == ["hcp"]
+
+
+@pytest.mark.parametrize(
+    ("response", "reader", "unit"),
+    [(HCP, read_hcp, " %"), (SHIFT, read_shift, ""), ({**SHIFT, "unit": "mV"}, read_shift, " mV")],
+)
+def test_shared_errors_have_the_unit_of_their_response(tmp_path, response, reader, unit):
+    plates = [reader(plate, seed) for seed, plate in enumerate(SOUND)]
+    found, _ = checks(tmp_path, plates, "quadratic", responses=[response])
+    said = rf" share an error of [\d.]+{unit} \(90 % range [\d.]+ to [\d.]+{unit}\)"
+    assert re.search(said, found["shared errors"].sentence)
+
+
+def test_of_two_plates_either_may_be_off(tmp_path):
+    low = SOUND[1].assign(recovery=(0.6 * SOUND[1]["recovery"]).round(4))
+    again = SOUND[0].iloc[:6].assign(recovery=(0.6 * SOUND[0]["recovery"].iloc[:6]).round(4))
+    found, view = checks(
+        tmp_path, [SOUND[0], pd.concat([low, again], ignore_index=True)], "quadratic"
+    )
+    check = found["other plates"]
+    assert not check.passed
+    assert re.match(
+        r"Recovery: plate-02 reads (39|4\d) % less than the other plate predicts, more than shared "
+        r"errors explain \(of two plates either may be off\); look at their load, ",
+        check.sentence,
+    )
+    assert check.sentence in view.window().unsupported
+
+
+def test_one_plate_has_no_other_plates(tmp_path):
+    found, _ = checks(tmp_path, SOUND[:1], "quadratic")
+    assert "other plates" not in found
+
+
+def test_scale_of_priors_is_told_by_the_window(sound_view):
+    (check,) = (c for c in sound_view.checks() if c.name == "priors")
+    assert check.passed
+    assert re.fullmatch(
+        "Recovery: the readings do not contradict the priors; a quarter more or less weight on "
+        r"them moves the window by (under 1|\d) % of the range\.",
+        check.sentence,
+    )
+
+
+def test_a_response_that_is_not_judged_has_no_window_to_move(tmp_path):
+    tracked = {key: value for key, value in RECOVERY.items() if key != "at_least"}
+    responses = [{**HCP}, tracked]
+    plates = [read_hcp(plate) for plate in SOUND]
+    study = written(tmp_path / "study", plates, responses=responses)
+    said = {c.response: c.sentence for c in muntin.assess(study).checks() if c.name == "priors"}
+    assert said["recovery"] == "Recovery: the readings do not contradict the priors."
+    assert "moves the window by" in said["hcp"]

@@ -52,7 +52,8 @@ def other_plates(study: Study, response: Response, stack: Stack, seed: int) -> l
     off = [plate for plate in found if abs(plate.z) > limit]
     pit = np.concatenate([plate.pit for plate in found])
     hits = int(_inside(pit).sum())
-    told = f"{hits} of {len(pit)} readings lie in the 90 % range predicted from the other plates"
+    others = "plate" if len(found) == 2 else "plates"
+    told = f"{hits} of {len(pit)} readings lie in the 90 % range predicted from the other {others}"
     if off:
         said = _off(response, off, len(found), told)
     else:
@@ -98,10 +99,13 @@ def _limit(plates: int) -> float:
 
 def _off(response: Response, off: list[_Plate], plates: int, told: str) -> str:
     parts = [f"{plate.name} reads {_size(response, plate.shift)}" for plate in off]
-    doubt = " (with two plates either may be)" if plates == 2 else ""
+    others = "other plates predict"
+    doubt, its = "", "its" if len(off) == 1 else "their"
+    if plates == 2:
+        others, doubt, its = "other plate predicts", " (of two plates either may be off)", "their"
     return (
-        f"{' and '.join(parts)} than the other plates predict, more than shared errors explain"
-        f"{doubt}; look at its load, blank and calibration ({told})"
+        f"{' and '.join(parts)} than the {others}, more than shared errors explain{doubt}; look at "
+        f"{its} load, blank and calibration ({told})"
     )
 
 

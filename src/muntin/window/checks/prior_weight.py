@@ -24,8 +24,9 @@ if TYPE_CHECKING:
 
 Array = NDArray[np.float64]
 Index = NDArray[np.intp]
-# A hyperparameter so many sds of its prior away is beyond what the prior holds likely.
-_FAR = 2.0
+# A hyperparameter so many sds of its prior away is beyond what the prior holds likely; the built-in
+# priors are for any process, so that some processes lie a little beyond one of them.
+_FAR_OWN, _FAR = 2.0, 3.0
 # A fit of less of the answer than this does not speak for it.
 _SPEAKS = 0.1
 _FEW_GROUPS = 5
@@ -46,9 +47,10 @@ _MOVES = 0.1
 def prior_weight(view: Assessment, response: Response, stack: Stack) -> list[Check]:
     """Power-scaling of the priors of one response's hyperparameters (Kallioinen et al. 2024).
 
-    A conflict, prior and readings both moving a hyperparameter that lies beyond its prior's central
-    95 %, is serious. Sds of shared errors are told apart by few groups only, so the prior moves
-    them in every ordinary study; they count from five groups on.
+    A conflict, prior and readings both moving a hyperparameter that lies more than two sds of the
+    study's own prior away, or three of a built-in one, is serious. Sds of shared errors are told
+    apart by few groups only, so the prior moves them in every ordinary study; they count from five
+    groups on.
     """
     conflicts = [
         text
@@ -69,20 +71,26 @@ def prior_weight(view: Assessment, response: Response, stack: Stack) -> list[Che
     move = _move(view, response, stack)
     sentence = (
         f"{response.label}: the readings do not contradict the priors; a quarter more or less "
-        f"weight on them moves the window by {100 * move:.0f} % of the range."
+        f"weight on them moves the window by {_points(move)} of the range."
     )
     passed = move <= _MOVES
     return [Check("priors", passed, passed, sentence, response.name)]
 
 
+def _points(move: float) -> str:
+    return f"{100 * move:.0f} %" if move >= 0.01 else "under 1 %"
+
+
 def _conflicts(view: Assessment, response: Response, fit: Fit) -> list[str]:
     found, layout = sensitivity(fit.posterior), fit.model.layout
     texts = []
-    for h in np.flatnonzero(found.conflict & (np.abs(found.place) > _FAR)):
+    for h in np.flatnonzero(found.conflict):
         name, prior = layout.names[h], layout.priors[h]
         key, _, number = name.removesuffix("]").partition("[")
+        own = key in response.priors
         cautious = found.place[h] * _CAUTIOUS.get(key, 0.0) > 0.0
-        if (cautious and key not in response.priors) or _untold(fit, key, number):
+        near = abs(found.place[h]) <= (_FAR_OWN if own else _FAR)
+        if near or (cautious and not own) or _untold(fit, key, number):
             continue
         of = ""
         if key == "length_scale":

@@ -59,9 +59,10 @@ def _quantiles(stack: Stack, name: str) -> tuple[float, float, float]:
     """5 %, 50 % and 95 % points of a hyperparameter over the nodes of the stack."""
     values, weights = [], []
     for fit, share in zip(stack.fits, stack.shares, strict=True):
-        values.append(np.exp(fit.theta[:, fit.names.index(name)]))
+        values.append(fit.theta[:, fit.names.index(name)])
         weights.append(share * fit.weights)
     x, w = np.concatenate(values), np.concatenate(weights)
     order = np.argsort(x)
-    low, middle, high = np.interp([0.05, 0.5, 0.95], np.cumsum(w[order]), x[order])
+    below = np.cumsum(w[order]) - 0.5 * w[order]
+    low, middle, high = np.exp(np.interp([0.05, 0.5, 0.95], below / w.sum(), x[order]))
     return float(low), float(middle), float(high)
