@@ -59,7 +59,14 @@ def test_files_of_an_advice(study: Path) -> None:
     assert files["plan.csv"] == (study / PLAN).read_bytes()
     facts = json.loads(files["advice.json"])
     assert facts["inputs"] == {n: hashlib.sha256(c).hexdigest() for n, c in inputs.items()}
-    assert facts["settings"] == {"wells": 5, "aim": "edge", "surrogate": "quadratic", "seed": 1}
+    assert facts["settings"] == {
+        "wells": 5,
+        "aim": "edge",
+        "surrogate": "quadratic",
+        "engine": "fast",
+        "seed": 1,
+    }
+    assert facts["engine"] == "fast"
     assert set(facts["versions"]) == {"muntin", "python", "numpy", "scipy", "pandas"}
 
 

@@ -24,6 +24,7 @@ from muntin.report.facts import Facts, plan_facts, standing_facts, study_facts
 from muntin.report.figures import FORMATS, draw, saved
 from muntin.report.plan_files import plan_table_text
 from muntin.window.assessment import Assessment, Surrogate, assess
+from muntin.window.engine import Engine
 from muntin.window.window import Window
 
 
@@ -48,20 +49,23 @@ def advise(
     wells: int = 24,
     aim: Aim = "edge",
     surrogate: Surrogate = "stacked",
+    engine: Engine = "fast",
     seed: int = 1,
     tell: Callable[[str], None] = lambda _: None,
+    progress: bool = False,
 ) -> Advice:
     """Read a study, assess it, plan its next plate, and write the plan and the advice.
 
-    wells counts test wells; `tell` hears the name of each step. Raises StudyFaults where the
+    wells counts test wells; `tell` hears the name of each step, or an empty one where the engine
+    nuts shows a bar of its own, as it does with `progress`. Raises StudyFaults where the
     study, the number of wells or the folder is at fault, and then nothing is written.
     """
     tell("reading the study")
     study = open_study(folder)
     inputs = read_inputs(study.folder)
 
-    tell("fitting the readings")
-    view = assess(study, surrogate=surrogate, seed=seed)
+    tell("" if progress and engine == "nuts" else "fitting the readings")
+    view = assess(study, surrogate=surrogate, engine=engine, seed=seed, progress=progress)
     window = None if view.fresh else view.window()
 
     tell("planning the next plate")
@@ -74,7 +78,13 @@ def advise(
         "command": "advise",
         "written_at": datetime.now(UTC).isoformat(timespec="seconds"),
         "versions": versions(),
-        "settings": {"wells": wells, "aim": aim, "surrogate": surrogate, "seed": seed},
+        "settings": {
+            "wells": wells,
+            "aim": aim,
+            "surrogate": surrogate,
+            "engine": engine,
+            "seed": seed,
+        },
         "inputs": hashes(inputs),
         "study": study_facts(study),
         **standing_facts(view, window),

@@ -2,15 +2,16 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
-
 from muntin.commands.shared import (
     Aim,
     AimOption,
+    Engine,
+    EngineOption,
     Folder,
     Output,
     Surrogate,
     SurrogateOption,
+    Tell,
     Wells,
     command,
 )
@@ -20,17 +21,25 @@ from muntin.commands.shared import (
 def advise(
     folder: Folder,
     seed: int,
-    tell: Callable[[str], None],
+    tell: Tell,
     wells: Wells = 24,
     aim: AimOption = Aim.edge,
     surrogate: SurrogateOption = Surrogate.stacked,
+    engine: EngineOption = Engine.fast,
 ) -> Output:
     """Check, assess and plan; write the plan to plans/ and all of it to advice/."""
     from muntin.advise import advise as advise_on
     from muntin.report.text import advice_screen
 
     advice = advise_on(
-        folder, wells=wells, aim=aim.value, surrogate=surrogate.value, seed=seed, tell=tell
+        folder,
+        wells=wells,
+        aim=aim.value,
+        surrogate=surrogate.value,
+        engine=engine.value,
+        seed=seed,
+        tell=tell,
+        progress=tell.bar,
     )
     return Output(
         advice.facts, advice_screen(advice.view, advice.window, advice.plan, advice.place)

@@ -2,13 +2,21 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
 from pathlib import Path
 from typing import Annotated, Any
 
 import typer
 
-from muntin.commands.shared import Folder, Output, Surrogate, SurrogateOption, command
+from muntin.commands.shared import (
+    Engine,
+    EngineOption,
+    Folder,
+    Output,
+    Surrogate,
+    SurrogateOption,
+    Tell,
+    command,
+)
 
 At = Annotated[Path | None, typer.Option(metavar="TABLE", help="conditions, a column a factor")]
 Out = Annotated[
@@ -25,20 +33,33 @@ Negligible = Annotated[
     ),
 ]
 
+Draws = Annotated[
+    Path | None,
+    typer.Option(metavar="DIR", help="where to write the draws of --engine nuts (netCDF)"),
+]
+
 
 @command
 def assess(
     folder: Folder,
     seed: int,
-    tell: Callable[[str], None],
+    tell: Tell,
     at: At = None,
     out: Out = None,
     surrogate: SurrogateOption = Surrogate.stacked,
+    engine: EngineOption = Engine.fast,
+    draws: Draws = None,
     influence: Influence = False,
     negligible: Negligible = None,
 ) -> Output:
     """Judge every condition of the range, or those of a table, and check the model."""
-    from muntin.commands.conditions import check_out, known_at, read_conditions, write_table
+    from muntin.commands.conditions import (
+        check_draws,
+        check_out,
+        known_at,
+        read_conditions,
+        write_table,
+    )
     from muntin.record import open_study
     from muntin.report.facts import records, standing_facts, study_facts
     from muntin.report.influence_text import influence_facts, influence_lines
@@ -51,12 +72,14 @@ def assess(
     conditions = None if at is None else read_conditions(at, study.definition)
     if out is not None:
         check_out(out, at, study.folder)
-    tell("fitting the readings")
-    view = judge(study, surrogate=surrogate.value, seed=seed)
+    if draws is not None:
+        check_draws(draws, engine.value)
+    bar = tell.fitting(engine)
+    view = judge(study, surrogate=surrogate.value, engine=engine.value, seed=seed, progress=bar)
     window = None if view.fresh else view.window()
     facts: dict[str, Any] = {
         "command": "assess",
-        "settings": {"surrogate": surrogate.value, "seed": seed},
+        "settings": {"surrogate": surrogate.value, "engine": engine.value, "seed": seed},
     }
     facts |= {"study": study_facts(study), **standing_facts(view, window)}
     known = None if conditions is None else known_at(view, conditions)
@@ -72,4 +95,6 @@ def assess(
         everywhere = judged_grid(study.definition)[0]
         write_table(known_at(view, everywhere) if known is None else known, out)
         facts["files"] = [str(out)]
+    if draws is not None:
+        facts["draws"] = [str(path) for path in view.save_draws(draws)]
     return Output(facts, assess_screen(view, window, known, out, moved))

@@ -59,6 +59,15 @@ def check_out(out: Path, at: Path | None, folder: Path) -> None:
         raise StudyFaults([fault])
 
 
+def check_draws(folder: Path, engine: str) -> None:
+    """Raise StudyFaults where draws are asked of an engine that makes none, or into a file."""
+    if engine != "nuts":
+        problem = "gets no draws: only --engine nuts makes them"
+        raise StudyFaults([Fault(file=str(folder), problem=problem)])
+    if folder.exists() and not folder.is_dir():
+        raise StudyFaults([Fault(file=str(folder), problem="is a file, not a folder for draws")])
+
+
 def known_at(view: Assessment, conditions: pd.DataFrame) -> pd.DataFrame:
     """Return the conditions with what is known there beside them."""
     known = view.at(conditions)

@@ -2,15 +2,16 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
-
 from muntin.commands.shared import (
     Aim,
     AimOption,
+    Engine,
+    EngineOption,
     Folder,
     Output,
     Surrogate,
     SurrogateOption,
+    Tell,
     Wells,
     command,
 )
@@ -20,10 +21,11 @@ from muntin.commands.shared import (
 def propose(
     folder: Folder,
     seed: int,
-    tell: Callable[[str], None],
+    tell: Tell,
     wells: Wells = 24,
     aim: AimOption = Aim.edge,
     surrogate: SurrogateOption = Surrogate.stacked,
+    engine: EngineOption = Engine.fast,
 ) -> Output:
     """Plan the next plate: conditions at final wells, each with a reason; write it to plans/."""
     from muntin.bench.plan import propose as plan_next
@@ -35,14 +37,20 @@ def propose(
 
     tell("reading the study")
     study = open_study(folder)
-    tell("fitting the readings")
-    view = assess(study, surrogate=surrogate.value, seed=seed)
+    bar = tell.fitting(engine)
+    view = assess(study, surrogate=surrogate.value, engine=engine.value, seed=seed, progress=bar)
     tell("planning the next plate")
     plan = plan_next(view, wells=wells, aim=aim.value, seed=seed)
     path, remark = write_plan(study.folder, plan.plate, plan_table_text(study.definition, plan))
     facts = {
         "command": "propose",
-        "settings": {"wells": wells, "aim": aim.value, "surrogate": surrogate.value, "seed": seed},
+        "settings": {
+            "wells": wells,
+            "aim": aim.value,
+            "surrogate": surrogate.value,
+            "engine": engine.value,
+            "seed": seed,
+        },
         "study": study_facts(study),
         "plan": plan_facts(plan),
         "files": {"plan": str(path), "remark": remark},

@@ -16,6 +16,7 @@ import typer
 
 if TYPE_CHECKING:
     from rich.console import RenderableType
+    from rich.status import Status
 
 _WIDTH = 100
 
@@ -29,6 +30,13 @@ class Aim(StrEnum):
     edge = "edge"
     best = "best"
     both = "both"
+
+
+class Engine(StrEnum):
+    """What fits the surrogates."""
+
+    fast = "fast"
+    nuts = "nuts"
 
 
 class Surrogate(StrEnum):
@@ -45,12 +53,41 @@ AimOption = Annotated[
 SurrogateOption = Annotated[
     Surrogate, typer.Option(help="Gaussian process, quadratic polynomial, or both stacked")
 ]
+EngineOption = Annotated[
+    Engine, typer.Option(help="approximate and fast, or the reference that samples (minutes)")
+]
 _COMMON: dict[str, Any] = {
     "seed": Annotated[int, typer.Option(min=0, help="same seed and input, same numbers")],
     "as_json": Annotated[bool, typer.Option("--json", help="print one JSON document")],
     "quiet": Annotated[bool, typer.Option("--quiet", help="print nothing but faults")],
 }
 _DEFAULTS = {"seed": 1, "as_json": False, "quiet": False}
+
+
+class Tell:
+    """Shows the step at work; `bar` where a library's own progress bar may be shown in its place.
+
+    An empty step clears the line for such a bar.
+    """
+
+    def __init__(self, status: Status | None = None) -> None:
+        self._status, self.bar = status, status is not None
+
+    def __call__(self, step: str) -> None:
+        """Show a step."""
+        if self._status is None:
+            return
+        if step:
+            self._status.update(step)
+            self._status.start()
+        else:
+            self._status.stop()
+
+    def fitting(self, engine: Engine) -> bool:
+        """Show that the readings are fitted; whether the engine shows a bar of its own."""
+        own = self.bar and engine is Engine.nuts
+        self("" if own else "fitting the readings")
+        return own
 
 
 @dataclass(frozen=True)
@@ -129,12 +166,12 @@ def _print_faults(faults: Any, as_json: bool) -> None:
 
 
 @contextmanager
-def _progress(silent: bool) -> Iterator[Callable[[str], None]]:
+def _progress(silent: bool) -> Iterator[Tell]:
     """Give a function that shows the step at work on stderr, where that is a terminal."""
     if silent or not sys.stderr.isatty():
-        yield lambda _: None
+        yield Tell()
         return
     from rich.console import Console
 
     with Console(stderr=True).status("") as status:
-        yield lambda step: status.update(step)
+        yield Tell(status)

@@ -18,6 +18,7 @@ from muntin.window.window import Window
 
 if TYPE_CHECKING:
     from muntin.bench.plan import Plan
+    from muntin.surrogate.convergence import Sampling
 
 Facts = dict[str, Any]
 
@@ -53,6 +54,7 @@ def standing_facts(view: Assessment, window: Window | None) -> Facts:
         "nothing_run": view.fresh,
         "provisional": bool(view.awaited) and not view.fresh,
         "awaited": list(view.awaited),
+        "engine": view.engine,
         "model": {name: _model(stack) for name, stack in view.stacks.items()},
         "together": [asdict(pair) for pair in view.together],
         "checks": [_check(check) for check in view.checks()],
@@ -77,6 +79,22 @@ def _model(stack: Any) -> Facts:
         "pareto_k": {f.name: float(f.k_hat) for f in stack.fits},
         "log_marginal": {f.name: float(f.log_marginal) for f in stack.fits},
         "laplace_nodes": {f.name: f.laplace for f in stack.fits},
+        "sampling": {f.name: _sampling(f.sampling) for f in stack.fits if f.sampling is not None},
+    }
+
+
+def _sampling(sampling: Sampling) -> Facts:
+    """Return how the chains of the engine nuts went."""
+    return {
+        "sampler": sampling.sampler,
+        "passed": sampling.passed,
+        "chains": sampling.chains,
+        "draws": sampling.draws,
+        "r_hat": sampling.r_hat,
+        "bulk_ess": sampling.bulk,
+        "tail_ess": sampling.tail,
+        "divergent": sampling.divergent,
+        "unreliable_leave_one_out": sampling.unreliable,
     }
 
 

@@ -36,12 +36,20 @@ def pymc() -> Any:
         warnings.filterwarnings("ignore", message="PyTensor could not link to a BLAS installation")
         try:
             import pymc
-            import pytensor
+            from pytensor.configdefaults import config
         except ModuleNotFoundError:
             raise NotInstalledError from None
         # Looked up once and kept; the note comes with the first look.
-        _ = pytensor.config.blas__ldflags
+        _ = config.blas__ldflags
     return pymc
+
+
+def tensors() -> Any:
+    """The symbolic arrays that PyMC stands on. Raises NotInstalledError."""
+    pymc()
+    import pytensor.tensor
+
+    return pytensor.tensor
 
 
 def nutpie() -> Any:

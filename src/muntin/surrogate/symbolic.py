@@ -22,7 +22,7 @@ from muntin.surrogate.kernels import same_group
 from muntin.surrogate.layout import MOST_GAP, Layout
 from muntin.surrogate.polynomial import Quadratic
 from muntin.surrogate.process import JITTER, GaussianProcess
-from muntin.surrogate.quiet import pymc
+from muntin.surrogate.quiet import pymc, tensors
 
 Array = NDArray[np.float64]
 Noise = Literal["normal", "student"]
@@ -43,8 +43,7 @@ class Hyperparameters:
     @classmethod
     def of(cls, layout: Layout, eta: Any) -> Hyperparameters:
         """Those of standardised coordinates eta (H,)."""
-        import pytensor.tensor as pt
-
+        pt = tensors()
         value = pt.exp(layout.log_median + layout.log_sd * eta)
         inside = 1 + layout.inside
         scale = inside + layout.scale
@@ -81,8 +80,7 @@ def whitened(model: Model) -> int:
 
 def symbolic_root(family: Family, h: Hyperparameters, cells: Cells) -> Any:
     """The root L (U, R) of the prior covariance of the latents, as in the family's `root`."""
-    import pytensor.tensor as pt
-
+    pt = tensors()
     if isinstance(family, GaussianProcess):
         return _process_root(family, h, cells)
     assert isinstance(family, Quadratic)
@@ -95,8 +93,7 @@ def symbolic_root(family: Family, h: Hyperparameters, cells: Cells) -> Any:
 
 def _process_root(family: GaussianProcess, h: Hyperparameters, cells: Cells) -> Any:
     """Cholesky factor (U, U) of the prior covariance of the latent values."""
-    import pytensor.tensor as pt
-
+    pt = tensors()
     gaps = (cells.X[:, None, :] - cells.X[None, :, :]) ** 2
     owner = np.array(family.columns.factor)
     r2 = sum(
@@ -118,9 +115,7 @@ def _standardised(model: Model, h: Hyperparameters, root: Any, v: Any, near: Arr
 
     A reading is g + g' (u - near) + g sum(scale_sd z) + noise there; a censored one says nothing.
     """
-    import pytensor.tensor as pt
-
-    pm, cells = pymc(), model.cells
+    pm, pt, cells = pymc(), tensors(), model.cells
     mean, slope = _link(model, h, near[cells.latent])
     blocks = [(slope * np.ones(len(cells)))[:, None] * root[cells.latent]]
     for j, groups in enumerate(cells.scale_groups):
@@ -141,8 +136,7 @@ def _standardised(model: Model, h: Hyperparameters, root: Any, v: Any, near: Arr
 
 def _link(model: Model, h: Hyperparameters, at: Any) -> tuple[Any, Any]:
     """Process mean and its slope (C,) at latent values (C,)."""
-    import pytensor.tensor as pt
-
+    pt = tensors()
     if model.link != "logit":
         return at, 1.0
     share = pt.sigmoid(at)
@@ -167,10 +161,9 @@ def _observe(cells: Cells, centre: Any, variance: Any, noise: Noise) -> None:
     Student's t law spreads over the whole variance of a reading. A censored reading has its mixing
     variable as an unknown, given which it is normal.
     """
-    import pytensor.tensor as pt
     from pymc.distributions.dist_math import normal_lccdf, normal_lcdf
 
-    pm, beyond = pymc(), cells.censored[cells.cell]
+    pm, pt, beyond = pymc(), tensors(), cells.censored[cells.cell]
     read, hidden = np.flatnonzero(beyond == 0), np.flatnonzero(beyond != 0)
     y, sd = pm.Data("y", cells.y), pt.sqrt(variance)
     nu = pm.Gamma("nu", *DEGREES_PRIOR) if noise == "student" else None
