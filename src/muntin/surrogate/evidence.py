@@ -98,10 +98,10 @@ class Model:
             ceiling=layout.ceiling_of(theta)[:, None],
         )
 
-    def rows(self, theta: Array) -> Rows:
-        """Maps from the whitened variables to the cells' pairs."""
+    def rows(self, theta: Array, root: Array | None = None) -> Rows:
+        """Maps from the whitened variables to the cells' pairs; root where it is at hand."""
         cells, layout = self.cells, self.layout
-        root = self.family.root(layout, theta, cells)
+        root = self.family.root(layout, theta, cells) if root is None else root
         sds = layout.scale_sd(theta)
         share = sds / np.sqrt((sds**2).sum(1, keepdims=True)) if cells.scale else sds
         blocks = [np.zeros((len(theta), len(cells), 0))]

@@ -78,7 +78,7 @@ def leave_group_out(model: Model, posterior: Posterior, readings: Index) -> Grou
     evidence, cells = posterior.evidence, np.unique(model.cells.cell[readings])
     carrying = np.flatnonzero(posterior.log_weights > posterior.log_weights.max() - _SPAN)
     lik = model.likelihood(evidence.theta[carrying])
-    rows = model.rows(evidence.theta).nodes(carrying)
+    rows = model.rows(evidence.theta[carrying], evidence.root[carrying])
     ahead = predict_ahead(rows, evidence.approximation, carrying, cells)
     log_w, trusted = _without(posterior.log_weights[carrying], ahead)
     return _summary(model.cells, readings, lik, ahead, np.exp(log_w), trusted)
@@ -91,7 +91,8 @@ def refit_group_out(model: Model, seed: int, readings: Index) -> GroupOut:
     evidence = posterior.evidence
     every = np.arange(len(evidence.theta))
     lik = model.likelihood(evidence.theta)
-    ahead = predict_ahead(model.rows(evidence.theta), evidence.approximation, every, cells)
+    rows = model.rows(evidence.theta, evidence.root)
+    ahead = predict_ahead(rows, evidence.approximation, every, cells)
     weights = np.exp(posterior.log_weights)
     return _summary(model.cells, readings, lik, ahead, weights, True)
 
