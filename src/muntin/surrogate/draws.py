@@ -147,4 +147,4 @@ class Draws:
 
 def _flat(values: Array) -> Array:
     """Values (K, N, ...) as (K N, ...)."""
-    return values.reshape(-1, *values.shape[2:])
+    return values.reshape(values.shape[0] * values.shape[1], *values.shape[2:])
