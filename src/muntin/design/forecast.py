@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 from muntin.design.excursion import expected_wrong
 from muntin.design.outlook import Outlook
 from muntin.surrogate.nodes import Surface
-from muntin.window.probability import Target, mean_meets
+from muntin.window.probability import Moments, Target, mean_meets
 
 Array = NDArray[np.float64]
 _DRAWS = 64
@@ -27,7 +27,7 @@ class Tails:
     below: Array | None
 
     @classmethod
-    def of(cls, surface: Surface, moments: tuple[Array, Array], target: Target) -> Tails:
+    def of(cls, surface: Surface, moments: Moments, target: Target) -> Tails:
         """The tails of a surface with latent moments (S, P)."""
         low, high = Target(low=target.low), Target(high=target.high)
         return cls(

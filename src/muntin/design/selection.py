@@ -127,7 +127,7 @@ class _Table:
         self.targets = tuple(target_of(r) for r in self.responses)
         surfaces = [self.view.surfaces[r.name] for r in self.responses]
         self.today = [
-            Tails.of(surface, surface.moments(P), target)
+            Tails.of(surface, surface.latent(P), target)
             for surface, target in zip(surfaces, self.targets, strict=True)
         ]
         p = np.prod([tails.meets for tails in self.today], axis=0)

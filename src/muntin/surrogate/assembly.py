@@ -9,13 +9,16 @@ from muntin.surrogate.evidence import Model
 from muntin.surrogate.nodes import Errors, Nodes, PolynomialNodes, ProcessNodes
 from muntin.surrogate.polynomial import Quadratic
 from muntin.surrogate.process import GaussianProcess
+from muntin.surrogate.skewness import Skew
 
 Array = NDArray[np.float64]
 
 
-def nodes_of(model: Model, theta: Array, root: Array, mean: Array, V: Array) -> Nodes:
+def nodes_of(
+    model: Model, theta: Array, root: Array, mean: Array, V: Array, skew: Skew | None = None
+) -> Nodes:
     """Nodes at log hyperparameters theta (S, H) with the family's root (S, U, R), from the mean
-    (S, R) and covariance V (S, R, R) of the whitened variables.
+    (S, R) and covariance V (S, R, R) of the whitened variables, and the skew on them.
     """
     layout = model.layout
     errors = Errors(
@@ -27,6 +30,11 @@ def nodes_of(model: Model, theta: Array, root: Array, mean: Array, V: Array) -> 
     own, family = layout.family(theta), model.family
     if isinstance(family, GaussianProcess):
         alpha, Q = family.weights(root, mean, V)
-        return ProcessNodes(family, own, model.cells.X, alpha, Q, errors)
+        # f at x loads on the whitened variables by k(x, X) L^-T.
+        turned = None if skew is None else skew.under(np.swapaxes(np.linalg.inv(root), 1, 2))
+        return ProcessNodes(family, own, model.cells.X, alpha, Q, errors, turned)
     assert isinstance(family, Quadratic)
-    return PolynomialNodes(family, *family.coefficients(own, mean, V), errors)
+    if skew is not None:
+        sd = family.coefficient_sd(own)
+        skew = skew.under(sd[:, :, None] * np.eye(sd.shape[1], root.shape[2]))
+    return PolynomialNodes(family, *family.coefficients(own, mean, V), errors, skew)

@@ -23,6 +23,7 @@ from muntin.surrogate.polynomial import Quadratic
 from muntin.surrogate.priors import Kind, Priors
 from muntin.surrogate.process import GaussianProcess
 from muntin.surrogate.refits import leave_one_out_of
+from muntin.surrogate.skewness import skew_of
 from muntin.surrogate.stacking import stacking_shares
 from muntin.surrogate.wander import settled_wander
 
@@ -173,5 +174,6 @@ def _surface(model: Model, evidence: Evidence, weights: Array, link: Link) -> Su
     root, approx = evidence.root[keep], evidence.approximation
     own = root.shape[2]
     mean, V = approx.mean[keep][:, :own], approx.V[keep][:, :own, :own]
-    part = nodes_of(model, evidence.theta[keep], root, mean, V)
+    skew = skew_of(model.rows(evidence.theta), approx).take(keep) if approx.skewed else None
+    part = nodes_of(model, evidence.theta[keep], root, mean, V, skew)
     return Surface((part,), weights[keep] / weights[keep].sum(), link)

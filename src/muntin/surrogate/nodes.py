@@ -1,14 +1,15 @@
-"""Weighted Gaussian nodes: the one posterior on which everything downstream rests.
+"""Weighted nodes: the one posterior on which everything downstream rests.
 
-A node is a Gaussian law of the latent surface f at one set of hyperparameters; it knows the mean,
-variance and covariance of f anywhere, and the sds of the errors that a future well would meet.
+A node is a law of the latent surface f at one set of hyperparameters, Gaussian but for a skewness;
+it knows the mean, variance and covariance of f anywhere, and the sds of the errors that a future
+well would meet.
 """
 
 from __future__ import annotations
 
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass, replace
-from typing import Protocol
+from typing import NamedTuple, Protocol
 
 import numpy as np
 from numpy.typing import NDArray
@@ -17,6 +18,7 @@ from muntin.surrogate.kernels import polynomial_slopes
 from muntin.surrogate.links import Link, latent_of
 from muntin.surrogate.polynomial import Quadratic
 from muntin.surrogate.process import GaussianProcess
+from muntin.surrogate.skewness import Skew
 
 Array = NDArray[np.float64]
 Index = NDArray[np.intp]
@@ -41,8 +43,16 @@ class Errors:
         return Errors(self.noise[index], self.inside[index], self.scale[index], self.ceiling[index])
 
 
+class Latent(NamedTuple):
+    """Mean, variance and skewness (S, n) of f at n conditions; a skewness of 0 says Gaussian."""
+
+    mean: Array
+    variance: Array
+    skew: Array
+
+
 class Nodes(Protocol):
-    """S Gaussian laws of f over coded conditions."""
+    """S laws of f over coded conditions, Gaussian but for a skewness."""
 
     @property
     def errors(self) -> Errors:
@@ -56,6 +66,9 @@ class Nodes(Protocol):
     def covariance(self, X: Array, Z: Array) -> Array:
         """Covariance (S, n, m) of f between coded X (n, D) and Z (m, D)."""
 
+    def skewness(self, X: Array, variance: Array) -> Array:
+        """Skewness (S, n) of f at coded X (n, D), where it has the variance (S, n)."""
+
     def slopes(self, X: Array) -> Array:
         """Slope (S, n, D) of the mean of f with each coded column at X (n, D)."""
 
@@ -65,7 +78,9 @@ class Nodes(Protocol):
 
 @dataclass(frozen=True)
 class ProcessNodes:
-    """Nodes of the Gaussian process: own hyperparameters (S, H), inputs X (U, D), alpha, Q."""
+    """Nodes of the Gaussian process: own hyperparameters (S, H), inputs X (U, D), alpha, Q, and
+    the skew for covariances with f at X; None says none.
+    """
 
     family: GaussianProcess
     own: Array
@@ -73,6 +88,7 @@ class ProcessNodes:
     alpha: Array
     Q: Array
     errors: Errors
+    skew: Skew | None = None
 
     def __len__(self) -> int:
         return len(self.own)
@@ -94,6 +110,16 @@ class ProcessNodes:
         right = self.Q @ np.swapaxes(self.family.covariance(self.own, Z, self.X), 1, 2)
         return self.family.covariance(self.own, X, Z) - left @ right
 
+    def skewness(self, X: Array, variance: Array) -> Array:
+        """Skewness (S, n) of f at coded X (n, D), where it has the variance (S, n)."""
+        out = np.zeros_like(variance)
+        if self.skew is None:
+            return out
+        widest = max(len(self.X), self.skew.third.shape[1])
+        for rows in _chunks(len(X), max(1, _CHUNK // max(1, len(self) * widest))):
+            out[:, rows] = self.skew.cumulant(self.family.covariance(self.own, X[rows], self.X))
+        return out / variance**1.5
+
     def slopes(self, X: Array) -> Array:
         """Slope (S, n, D) of the mean of f with each coded column at X (n, D)."""
         size = max(1, _CHUNK // max(1, len(self) * len(self.X)))
@@ -111,17 +137,21 @@ class ProcessNodes:
             alpha=self.alpha[index],
             Q=self.Q[index],
             errors=self.errors.nodes(index),
+            skew=None if self.skew is None else self.skew.take(index),
         )
 
 
 @dataclass(frozen=True)
 class PolynomialNodes:
-    """Nodes of the quadratic: coefficient means (S, p) and covariances (S, p, p)."""
+    """Nodes of the quadratic: coefficient means (S, p) and covariances (S, p, p), and the skew for
+    the polynomial terms; None says none.
+    """
 
     family: Quadratic
     mean: Array
     V: Array
     errors: Errors
+    skew: Skew | None = None
 
     def __len__(self) -> int:
         return len(self.mean)
@@ -136,6 +166,16 @@ class PolynomialNodes:
         """Covariance (S, n, m) of f between coded X (n, D) and Z (m, D)."""
         return self.family.basis(X) @ self.V @ self.family.basis(Z).T
 
+    def skewness(self, X: Array, variance: Array) -> Array:
+        """Skewness (S, n) of f at coded X (n, D), where it has the variance (S, n)."""
+        out = np.zeros_like(variance)
+        if self.skew is None:
+            return out
+        B = self.family.basis(X)
+        for rows in _chunks(len(X), max(1, _CHUNK // max(1, self.skew.u[0].size))):
+            out[:, rows] = self.skew.cumulant(np.broadcast_to(B[rows], (len(self), *B[rows].shape)))
+        return out / variance**1.5
+
     def slopes(self, X: Array) -> Array:
         """Slope (S, n, D) of the mean of f with each coded column at X (n, D)."""
         return np.einsum("sp,npd->snd", self.mean, polynomial_slopes(X, self.family.terms))
@@ -143,7 +183,11 @@ class PolynomialNodes:
     def take(self, index: Index) -> PolynomialNodes:
         """Some of the nodes."""
         return replace(
-            self, mean=self.mean[index], V=self.V[index], errors=self.errors.nodes(index)
+            self,
+            mean=self.mean[index],
+            V=self.V[index],
+            errors=self.errors.nodes(index),
+            skew=None if self.skew is None else self.skew.take(index),
         )
 
 
@@ -162,6 +206,16 @@ class Surface:
         """Mean and variance (S, n) of the latent f at coded X (n, D)."""
         moments = [part.moments(X) for part in self.parts]
         return np.concatenate([m for m, _ in moments]), np.concatenate([v for _, v in moments])
+
+    def latent(self, X: Array) -> Latent:
+        """Mean, variance and skewness (S, n) of the latent f at coded X (n, D)."""
+        mean, variance = self.moments(X)
+        skew, start = np.empty_like(mean), 0
+        for part in self.parts:
+            rows = slice(start, start + len(part))
+            skew[rows] = part.skewness(X, variance[rows])
+            start += len(part)
+        return Latent(mean, variance, skew)
 
     def covariance(self, X: Array, Z: Array) -> Array:
         """Covariance (S, n, m) of the latent f between coded X (n, D) and Z (m, D)."""

@@ -43,6 +43,11 @@ class Approximation:
     tilted: Tilted
     laplace: NDArray[np.intp]
 
+    @property
+    def skewed(self) -> bool:
+        """Whether any cell's own law is skewed."""
+        return bool(self.tilted.third.any())
+
 
 def join(parts: Sequence[Approximation]) -> Approximation:
     """The approximations of several groups of nodes as one."""
@@ -58,6 +63,7 @@ def join(parts: Sequence[Approximation]) -> Approximation:
         Pair(**_fields([p.cavity for p in parts])),
         Tilted(
             Pair(**_fields([t.pair for t in tilted])),
+            np.concatenate([t.third for t in tilted]),
             np.concatenate([t.log_z for t in tilted]),
             np.concatenate([t.noise_slope for t in tilted]),
             np.concatenate([t.ceiling_slope for t in tilted]),
@@ -245,7 +251,8 @@ def _exact(rows: Rows, lik: CellLikelihood) -> Approximation:
     log_z = -0.5 * ((y - cavity.u) ** 2 / total + np.log(total) + _LOG_2PI) + within
     misfit = ((y - post.u) ** 2 + post.uu) / v**2 - 1.0 / v
     about = (lik.within / rv - (lik.count - 1.0)) / rv
-    tilted = Tilted(post, log_z, lik.noise * (misfit / lik.count + about), zero)
+    third = np.zeros((*v.shape, 4))
+    tilted = Tilted(post, third, log_z, lik.noise * (misfit / lik.count + about), zero)
     own = -0.5 * (y**2 / v + np.log(v) + _LOG_2PI) + within
     evidence = gaussian.log_integral() + own.sum(1)
     none = np.zeros(0, dtype=np.intp)

@@ -64,6 +64,26 @@ class CellLikelihood:
             ceiling=self.ceiling[index],
         )
 
+    def flat(self, chosen: NDArray[np.bool_]) -> CellLikelihood:
+        """The likelihood of the cells chosen (S, C), each at its node, as those of one node."""
+        cell = np.nonzero(chosen)[1]
+        noise, scale, ceiling = (
+            np.broadcast_to(v, chosen.shape)[chosen][None]
+            for v in (self.noise, self.scale, self.ceiling)
+        )
+        return replace(
+            self,
+            mean=self.mean[cell],
+            count=self.count[cell],
+            within=self.within[cell],
+            variance=self.variance[cell],
+            censored=self.censored[cell],
+            wander=self.wander[cell],
+            noise=noise,
+            scale=scale,
+            ceiling=ceiling,
+        )
+
     @property
     def base_variance(self) -> Array:
         """Variance (S, C) of one reading but for its setting errors."""
@@ -146,11 +166,12 @@ def pull_of(residual: Array, variance: Array, censored: NDArray[np.intp]) -> Pul
 
 @dataclass(frozen=True)
 class Tilted:
-    """Moments of the tilted pairs, log normaliser (S, C), and its slopes (S, C) in ln noise sd and
-    in ln ceiling.
+    """Moments of the tilted pairs, their third central moments uuu, uus, uss, sss (S, C, 4), log
+    normaliser (S, C), and its slopes (S, C) in ln noise sd and in ln ceiling.
     """
 
     pair: Pair
+    third: Array
     log_z: Array
     noise_slope: Array
     ceiling_slope: Array
@@ -162,18 +183,39 @@ def tilt(lik: CellLikelihood, cavity: Pair, start_u: Array, start_sd: Array) -> 
 
 
 def place(lik: CellLikelihood, cavity: Pair, start_u: Array, start_sd: Array) -> Points:
-    """Quadrature points that cover each tilted law, searched from start_u, start_sd (S, C)."""
-    centre, spread = start_u, np.maximum(_WIDEN * start_sd, 1e-8)
+    """Quadrature points that cover each tilted law, searched from start_u, start_sd (S, C).
+
+    A cell whose points fit is left alone, so that its answer does not hang on its company.
+    """
+    spread = np.maximum(_WIDEN * start_sd, 1e-8)
+    points = Points(lik, cavity, start_u, spread)
+    astray = ~_fits(*_fit(points, start_u, spread))
+    if not astray.any():
+        return points
+    some, few = lik.flat(astray), Pair(**{k: v[astray][None] for k, v in vars(cavity).items()})
+    centre, spread = start_u[astray][None], spread[astray][None]
+    mean_u, sd_u = points.mean_u[astray][None], points.sd_u[astray][None]
     for _ in range(_PLACEMENTS):
-        points = Points(lik, cavity, centre, spread)
-        shift = np.abs(points.mean_u - centre) / spread
-        ratio = points.sd_u / spread
-        if np.all((shift < 1.0) & (ratio > 0.4) & (ratio < 1.2)):
+        shift, ratio = np.abs(mean_u - centre) / spread, sd_u / spread
+        lost = ~_fits(shift, ratio)
+        if not lost.any():
             break
         # Mass at the rim says where to go, not how wide: widen there, else follow the answer.
         factor = np.where(shift > 3.0, 1.5, np.clip(_WIDEN * ratio, 0.3, 3.0))
-        centre, spread = points.mean_u, factor * spread
+        centre, spread = np.where(lost, mean_u, centre), np.where(lost, factor * spread, spread)
+        moved = Points(some, few, centre, spread)
+        mean_u, sd_u = moved.mean_u, moved.sd_u
+    points.put(astray, moved)
     return points
+
+
+def _fit(points: Points, centre: Array, spread: Array) -> tuple[Array, Array]:
+    """How far, in spreads, the law lies from the points' centre, and how wide it is for them."""
+    return np.abs(points.mean_u - centre) / spread, points.sd_u / spread
+
+
+def _fits(shift: Array, ratio: Array) -> NDArray[np.bool_]:
+    return (shift < 0.4) & (ratio > 0.6) & (ratio < 1.05)
 
 
 class Points:
@@ -205,6 +247,12 @@ class Points:
         variance = (self.w * (self.u - self.mean_u[..., None]) ** 2).sum(-1)
         self.sd_u = np.sqrt(np.maximum(variance, 1e-16))
 
+    def put(self, chosen: NDArray[np.bool_], moved: Points) -> None:
+        """Take over the points of `moved`, of one node, for the cells chosen (S, C)."""
+        for name, value in vars(self).items():
+            if name != "censored":
+                value[chosen] = getattr(moved, name)[0]
+
     def scale_given(self, pull: Pull) -> tuple[Array, Array]:
         """Mean and variance (S, C, Q) of s given u and the reading."""
         gain = self.loading * self.s_var
@@ -223,6 +271,10 @@ class Points:
             us=(self.w * du * ds).sum(-1),
             ss=(self.w * (ds**2 + v_given)).sum(-1),
         )
+        wu = self.w * du
+        powers = (wu * du * du, wu * du * ds, wu * (ds**2 + v_given), self.w * ds)
+        third = [p.sum(-1) for p in powers[:3]]
+        third.append((powers[3] * (ds**2 + 3.0 * v_given)).sum(-1))
         n, rv = lik.count[:, None], self.reading_variance
         # Slope of the log density in its variance, of the mean and of the spread about it.
         if self.censored.any():
@@ -236,4 +288,4 @@ class Points:
         wandering = lik.wandering(self.u)
         moved = self.loading**2 * self.s_var * by_mean + wandering * (by_mean / n + by_spread)
         by_ceiling = (self.w * (pull.score * self.centre + moved)).sum(-1)
-        return Tilted(pair, self.log_z, lik.noise * by_noise, by_ceiling)
+        return Tilted(pair, np.stack(third, axis=-1), self.log_z, lik.noise * by_noise, by_ceiling)

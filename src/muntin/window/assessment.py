@@ -110,7 +110,7 @@ class Assessment:
             if surface is None:
                 continue
             r = response.name
-            moments = predicted[r].moments if r in predicted else surface.moments(X)
+            moments = predicted[r].moments if r in predicted else surface.latent(X)
             columns[f"{r}_mean"] = process_mean(surface, moments) * response.unit_size
             for name, level in (("low", 0.025), ("high", 0.975)):
                 quantile = process_quantile(surface, moments, level)

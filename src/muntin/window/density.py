@@ -7,6 +7,7 @@ from numpy.typing import NDArray
 
 from muntin.surrogate.links import mean_of, slope_of
 from muntin.surrogate.nodes import Surface
+from muntin.window.probability import Moments
 
 Array = NDArray[np.float64]
 _STEPS = 4
@@ -15,15 +16,16 @@ _ABSCISSAE, _WEIGHTS = np.polynomial.hermite_e.hermegauss(9)
 
 
 def reading_density(
-    surface: Surface, moments: tuple[Array, Array], limit: float, wander: Array | float = 0.0
+    surface: Surface, moments: Moments, limit: float, wander: Array | float = 0.0
 ) -> Array:
-    """Density (S, n) at a limit of one future well's reading at each node, latent moments (S, n).
+    """Density (S, n) at a limit of one future well's reading at each node, latent law (S, n), whose
+    skewness is left out.
 
     wander (S, n): latent variance that its setting errors make. The density is that of ln y for a
     positive response. For a fraction the latent value is integrated by nine Gauss-Hermite points
     about its mode given the reading (Liu & Pierce 1994).
     """
-    mean, variance = moments
+    mean, variance, *_ = moments
     variance = variance + wander + (surface.errors.inside**2).sum(1)[:, None]
     if surface.link == "logit":
         return _of_fraction(surface, mean, variance, limit)

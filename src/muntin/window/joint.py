@@ -28,12 +28,13 @@ from muntin.surrogate.links import slope_of
 from muntin.surrogate.nodes import Surface
 from muntin.surrogate.rectangle import pair_excess, rectangle
 from muntin.window.density import reading_density
-from muntin.window.probability import Target, well_meets
+from muntin.window.probability import Moments, Target, well_meets
 
 Array = NDArray[np.float64]
 Index = NDArray[np.intp]
 # Beyond, a response passes or fails as good as surely, and joins as a factor.
 _SURE = 1e-5
+_LEAST_HEIGHT = 1e-6
 # Scores that move as one to the last digit have no density.
 _MOST = 1.0 - 1e-9
 
@@ -62,13 +63,13 @@ class Law:
 
 @dataclass(frozen=True)
 class Predicted:
-    """One response at n conditions: surface, latent moments (S, n), target, and where factors are
+    """One response at n conditions: surface, latent law (S, n), target, and where factors are
     set with errors the latent variance (S, n) that they make and the latent shift (n, D) by one sd
     of each.
     """
 
     surface: Surface
-    moments: tuple[Array, Array]
+    moments: Moments
     target: Target
     wander: Array | None = None
     shift: Array | None = None
@@ -81,7 +82,7 @@ class Predicted:
     @classmethod
     def of(cls, surface: Surface, X: Array, target: Target, setting: Array) -> Predicted:
         """The response at coded X (n, D), set with sds `setting` (n, D) in coded units."""
-        moments = surface.moments(X)
+        moments = surface.latent(X)
         if not setting.any():
             return cls(surface, moments, target)
         slopes = surface.slopes(X)
@@ -93,7 +94,7 @@ class Predicted:
         """The response at some of the conditions."""
         return replace(
             self,
-            moments=(self.moments[0][:, rows], self.moments[1][:, rows]),
+            moments=tuple(part[:, rows] for part in self.moments),
             wander=None if self.wander is None else self.wander[:, rows],
             shift=None if self.shift is None else self.shift[rows],
         )
@@ -196,7 +197,7 @@ def _loadings(response: Predicted, score: Array) -> tuple[Array, Array]:
     for end, limit in enumerate((target.low, target.high)):
         if np.isfinite(limit):
             density = surface.weights[:, None] * response.density(limit)
-            height = np.maximum(_phi(score[:, end]), 1e-300)
+            height = np.maximum(_phi(score[:, end]), _LEAST_HEIGHT)
             noise[:, end] = surface.errors.noise @ density / height
             setting[:, end] = (_slopes_at(surface, limit) @ density / height)[:, None] * shift
     # Together they make up no more than the whole score.

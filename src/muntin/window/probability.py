@@ -12,7 +12,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from muntin.surrogate.links import latent_of, mean_of, slope_of
-from muntin.surrogate.nodes import Surface
+from muntin.surrogate.nodes import Latent, Surface
 
 Array = NDArray[np.float64]
 # Trapezoid points of a standard normal. A reading crosses its target over about 0.2 logits; where
@@ -20,6 +20,10 @@ Array = NDArray[np.float64]
 _COARSE, _FINE = np.linspace(-4.5, 4.5, 19), np.linspace(-4.75, 4.75, 39)
 _FINE_ABOVE = 0.8
 _CHUNK = 2_000_000
+# Beyond this the first term no longer makes a law.
+_MOST_SKEW = 1.2
+_NO_SKEW = np.zeros((1, 1))
+Moments = tuple[Array, ...]
 
 
 @dataclass(frozen=True)
@@ -41,64 +45,95 @@ def _below(z: Array) -> Array:
     return np.asarray(ndtr(z))
 
 
-def mean_meets(surface: Surface, moments: tuple[Array, Array], target: Target) -> Array:
-    """p_mean (n,) from latent moments (S, n)."""
+def latent_law(moments: Moments) -> Latent:
+    """The law of mean and variance (S, n), and of a skewness where it is given."""
+    mean, variance, *skew = moments
+    return Latent(mean, variance, np.clip(skew[0], -_MOST_SKEW, _MOST_SKEW) if skew else _NO_SKEW)
+
+
+def skewed_below(z: Array, skew: Array) -> Array:
+    """Chance that a standardised variable lies below z (Edgeworth's first term; Kendall & Stuart
+    1977, section 6.18).
+    """
+    p = _below(z)
+    if skew is not _NO_SKEW:
+        z = np.clip(z, -30.0, 30.0)
+        p = p - skew * ((z * z - 1.0) * np.exp(-0.5 * z * z) / (6.0 * np.sqrt(2.0 * np.pi)))
+    return np.clip(p, 0.0, 1.0)
+
+
+def mean_meets(surface: Surface, moments: Moments, target: Target) -> Array:
+    """p_mean (n,) from the latent law (S, n)."""
     return np.asarray(surface.weights @ node_mean_meets(surface, moments, target))
 
 
-def node_mean_meets(surface: Surface, moments: tuple[Array, Array], target: Target) -> Array:
+def node_mean_meets(surface: Surface, moments: Moments, target: Target) -> Array:
     """Probability (S, n) at each node that the process mean meets the target."""
-    mean, variance = moments
+    mean, variance, skew = latent_law(moments)
     sd = np.sqrt(variance)
-    high = _below((surface.thresholds(target.high) - mean) / sd)
-    low = _below((surface.thresholds(target.low) - mean) / sd)
+    low = _finite_below(surface, mean, sd, skew, target.low)
     if not np.isfinite(target.high):
         return 1.0 - low
-    return high - low
+    return np.maximum(_finite_below(surface, mean, sd, skew, target.high) - low, 0.0)
+
+
+def _finite_below(surface: Surface, mean: Array, sd: Array, skew: Array, limit: float) -> Array:
+    """Chance (S, n) that the process mean lies below a limit, which a ceiling may put out of
+    reach.
+    """
+    place = surface.thresholds(limit)
+    reach = np.isfinite(place)
+    p = skewed_below((np.where(reach, place, 0.0) - mean) / sd, skew)
+    return np.where(reach, p, place > 0.0)
 
 
 def well_meets(
-    surface: Surface, moments: tuple[Array, Array], target: Target, wander: Array | float = 0.0
+    surface: Surface, moments: Moments, target: Target, wander: Array | float = 0.0
 ) -> Array:
-    """p_well (n,) from latent moments (S, n): one future well on a new plate.
+    """p_well (n,) from the latent law (S, n): one future well on a new plate.
 
     wander (S, n): latent variance that its setting errors make. Its reading has the common noise;
     the uncertainty that a reading may state of itself is not known beforehand and not added.
     """
-    mean, variance = moments
+    mean, variance, skew = latent_law(moments)
     errors = surface.errors
-    inside = (errors.inside**2).sum(1)[:, None] + wander
-    noise = errors.noise[:, None] ** 2
+    more = (errors.inside**2).sum(1)[:, None] + wander
+    if surface.link != "logit":
+        more = more + errors.noise[:, None] ** 2
+    total = variance + more
+    law = Latent(mean, total, skew if skew is _NO_SKEW else skew * (variance / total) ** 1.5)
     if surface.link == "logit":
-        return _fraction_well(surface, mean, variance + inside, target)
-    sd = np.sqrt(variance + inside + noise)
-    low, high = surface.thresholds(target.low), surface.thresholds(target.high)
-    return np.asarray(surface.weights @ (_below((high - mean) / sd) - _below((low - mean) / sd)))
+        return _fraction_well(surface, law, target)
+    return mean_meets(surface, law, target)
 
 
-def _fraction_well(surface: Surface, mean: Array, variance: Array, target: Target) -> Array:
+def _fraction_well(surface: Surface, law: Latent, target: Target) -> Array:
     """The reading is (1 + scale) g(f) + noise; scale and noise are Gaussian given f."""
-    sd = np.sqrt(variance)
-    out = np.ones(mean.shape[1])
+    sd = np.sqrt(law.variance)
+    out = np.ones(sd.shape[1])
     fine = sd.max(axis=0) > _FINE_ABOVE
+    skew = np.broadcast_to(law.skew, sd.shape)
     for chosen, z in ((fine, _FINE), (~fine, _COARSE)):
-        size = max(1, _CHUNK // (len(mean) * len(z)))
+        size = max(1, _CHUNK // (len(sd) * len(z)))
         columns = np.flatnonzero(chosen)
         for start in range(0, len(columns), size):
             part = columns[start : start + size]
-            met = np.zeros((len(mean), len(part)))
+            here = Latent(law.mean[:, part], sd[:, part], skew[:, part])
+            met = np.zeros((len(sd), len(part)))
             for limit, sign in ((target.high, 1.0), (target.low, -1.0)):
-                met += sign * _reading_below(surface, mean[:, part], sd[:, part], z, limit)
+                met += sign * _reading_below(surface, here, z, limit)
             out[part] = surface.weights @ met
     return np.clip(out, 0.0, 1.0)
 
 
-def _reading_below(surface: Surface, mean: Array, sd: Array, z: Array, limit: float) -> Array:
-    """Probability (S, n) that a reading lies below a limit, f ~ N(mean, sd^2), summed over z.
+def _reading_below(surface: Surface, law: Latent, z: Array, limit: float) -> Array:
+    """Probability (S, n) that a reading lies below a limit, summed over z; the law with sds in the
+    place of variances.
 
     The step that a small noise makes of it in f is taken out of the sum by the Gaussian step
     that has the same place and slope, whose average over f is known.
     """
+    mean, sd, skew = law
     if np.isinf(limit):
         return np.full_like(mean, 1.0 if limit > 0.0 else 0.0)
     errors = surface.errors
@@ -107,31 +142,38 @@ def _reading_below(surface: Surface, mean: Array, sd: Array, z: Array, limit: fl
     place = surface.thresholds(limit)
     slope = slope_of("logit", np.where(np.isfinite(place), place, 0.0), ceiling)
     width = np.sqrt(noise + scale * limit**2) / slope
-    step = _below((place - mean) / np.sqrt(sd**2 + width**2))
+    spread = np.sqrt(sd**2 + width**2)
+    reach = np.isfinite(place)
+    step = skewed_below((np.where(reach, place, 0.0) - mean) / spread, skew * (sd / spread) ** 3)
+    step = np.where(reach, step, place > 0.0)
     f = mean[..., None] + sd[..., None] * z
     g = mean_of("logit", f, ceiling[..., None])
     below = _below((limit - g) / np.sqrt(noise[..., None] + scale[..., None] * g * g))
     below -= _below((place[..., None] - f) / width[..., None])
-    return step + below @ _normal_weights(z)
+    weights = _normal_weights(z)
+    bent = below @ (weights * (z**3 - 3.0 * z)) if skew.any() else 0.0
+    return step + below @ weights + skew / 6.0 * bent
 
 
-def process_mean(surface: Surface, moments: tuple[Array, Array]) -> Array:
+def process_mean(surface: Surface, moments: Moments) -> Array:
     """Posterior mean (n,) of the process mean g(f), natural unit."""
-    mean, variance = moments
+    mean, variance, skew = latent_law(moments)
     if surface.link == "identity":
         return np.asarray(surface.weights @ mean)
     if surface.link == "log":
-        return np.asarray(surface.weights @ np.exp(mean + 0.5 * variance))
+        third = skew * variance**1.5 / 6.0
+        return np.asarray(surface.weights @ np.exp(mean + 0.5 * variance + third))
     out = np.zeros(mean.shape[1])
     sd, ceiling = np.sqrt(variance), surface.errors.ceiling[:, None]
     for z, weight in zip(_FINE, _normal_weights(_FINE), strict=True):
-        out += weight * (surface.weights @ mean_of(surface.link, mean + z * sd, ceiling))
+        g = mean_of(surface.link, mean + z * sd, ceiling)
+        out += weight * (surface.weights @ (g * (1.0 + skew / 6.0 * (z**3 - 3.0 * z))))
     return out
 
 
-def process_quantile(surface: Surface, moments: tuple[Array, Array], level: float) -> Array:
+def process_quantile(surface: Surface, moments: Moments, level: float) -> Array:
     """Quantile (n,) of the process mean g(f), natural unit, by bisection on the mixture."""
-    mean, variance = moments
+    mean, variance, skew = latent_law(moments)
     sd, ceiling = np.sqrt(variance), surface.errors.ceiling[:, None]
     low, high = (mean - 8.0 * sd).min(0), (mean + 8.0 * sd).max(0)
     if surface.link == "logit":
@@ -141,6 +183,6 @@ def process_quantile(surface: Surface, moments: tuple[Array, Array], level: floa
     for _ in range(50):
         middle = 0.5 * (low + high)
         own = latent_of(surface.link, mean_of(surface.link, middle), ceiling)
-        under = surface.weights @ _below((own - mean) / sd) < level
+        under = surface.weights @ skewed_below((own - mean) / sd, skew) < level
         low, high = np.where(under, middle, low), np.where(under, high, middle)
     return mean_of(surface.link, 0.5 * (low + high))
