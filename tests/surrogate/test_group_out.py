@@ -33,7 +33,8 @@ def test_the_identity_link_agrees_with_dense_conditioning(name):
     model = model_of(name, data, "real")
     theta = model.layout.theta(np.random.default_rng(7).normal(0.0, 0.3, (2, len(model.layout))))
     weights = np.array([0.3, 0.7])
-    out = leave_group_out(model, posterior_of(settled(model, theta), np.log(weights)), group)
+    posterior = posterior_of(settled(model, theta), np.log(weights))
+    out = leave_group_out(model, posterior, group, np.inf)
     densities, below, shifts, zs = [], [], [], []
     for s in range(2):
         K = reading_covariance(model, theta[s : s + 1], data)
@@ -112,7 +113,7 @@ def test_transform_and_shift_of_a_fraction_agree_with_draws():
     evidence = settled(model, theta)
     cells = np.unique(model.cells.cell[group])
     ahead = predict_ahead(model.rows(theta), evidence.approximation, np.arange(1), cells)
-    out = leave_group_out(model, posterior_of(evidence, np.zeros(1)), group)
+    out = leave_group_out(model, posterior_of(evidence, np.zeros(1)), group, np.inf)
     lik, draws = model.likelihood(theta), 200_000
     rng = np.random.default_rng(9)
     x = rng.multivariate_normal(ahead.mean[0], ahead.covariance[0], draws)
@@ -167,3 +168,18 @@ def test_censored_readings_have_no_place():
     model = model_of("quadratic", replace(data, censored=censored))
     out = leave_group_out(model, integrate(model, 1), group)
     assert np.flatnonzero(np.isnan(out.pit)).tolist() == [2]
+
+
+def test_readings_where_the_others_say_nothing_are_left_aside():
+    """A group on one factor, half of it far from all others."""
+    x = np.r_[np.linspace(-1.0, 0.0, 20), np.linspace(-1.0, 0.0, 6), np.linspace(2.0, 3.0, 6)]
+    y = 1.0 / (1.0 + np.exp(-2.0 * x)) + np.random.default_rng(5).normal(0.0, 0.02, len(x))
+    plate = np.repeat([0, 1], [20, 12])
+    data = Readings(X=x[:, None], y=y, sd=np.zeros(len(x)), scale=(plate,))
+    model = model_of("gp", data, columns=Columns.plain(1))
+    posterior = integrate(model, 1)
+    out = leave_group_out(model, posterior, np.flatnonzero(plate == 1))
+    assert np.isnan(out.pit).tolist() == [False] * 6 + [True] * 6
+    none = leave_group_out(model, posterior, np.flatnonzero(plate == 1)[6:])
+    assert np.isnan(none.pit).all()
+    assert (none.shift, none.shift_pit) == (0.0, 0.5)

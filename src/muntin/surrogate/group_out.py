@@ -29,6 +29,8 @@ Index = NDArray[np.intp]
 _Z = np.linspace(-3.6, 3.6, 13)
 # Nodes of less than e^-12 of the largest weight never come to matter.
 _SPAN = 12.0
+# Sd of a process mean, in shares of the usual range, up to which the others tell it.
+TOLD = 0.08
 _W = np.exp(-0.5 * _Z**2) / np.exp(-0.5 * _Z**2).sum()
 
 
@@ -36,11 +38,12 @@ _W = np.exp(-0.5 * _Z**2) / np.exp(-0.5 * _Z**2).sum()
 class GroupOut:
     """A group of readings as the others predict them.
 
-    pit (n,): probability integral transform of each reading, NaN where censored. likeness: mean
-    correlation between the predictive errors of two cells. shift: how far the group's readings lie
-    off together, as a share of their level for a fraction, else in the unit of y; shift_pit: its
-    transform. ess: effective number of the reweighted nodes. trusted: whether their weights can be
-    relied on.
+    pit (n,): probability integral transform of each reading; NaN where it is censored, and where
+    the others hardly tell the process mean, so that the prior would be judged and not the group.
+    likeness: mean correlation between the predictive errors of two cells. shift: how far the
+    group's readings lie off together, as a share of their level for a fraction, else in the unit of
+    y; shift_pit: its transform. ess: effective number of the reweighted nodes. trusted: whether
+    their weights can be relied on.
     """
 
     pit: Array
@@ -70,8 +73,12 @@ class Ahead:
     proper: NDArray[np.bool_]
 
 
-def leave_group_out(model: Model, posterior: Posterior, readings: Index) -> GroupOut:
+def leave_group_out(
+    model: Model, posterior: Posterior, readings: Index, within: float = TOLD
+) -> GroupOut:
     """Predictions of some readings (n,) from those of other cells, over the nodes of a fit.
+
+    within: sd of a process mean, in shares of the usual range, up to which the others tell it.
 
     Where few nodes would carry the new weights they are tempered, so that the group keeps a say.
     """
@@ -81,10 +88,10 @@ def leave_group_out(model: Model, posterior: Posterior, readings: Index) -> Grou
     rows = model.rows(evidence.theta[carrying], evidence.root[carrying])
     ahead = predict_ahead(rows, evidence.approximation, carrying, cells)
     log_w, trusted = _without(posterior.log_weights[carrying], ahead)
-    return _summary(model.cells, readings, lik, ahead, np.exp(log_w), trusted)
+    return _summary(model, readings, lik, ahead, np.exp(log_w), trusted, within)
 
 
-def refit_group_out(model: Model, seed: int, readings: Index) -> GroupOut:
+def refit_group_out(model: Model, seed: int, readings: Index, within: float = TOLD) -> GroupOut:
     """The same over the nodes of a fit of the others alone."""
     cells = np.unique(model.cells.cell[readings])
     posterior = integrate(silent(model, cells), seed)
@@ -94,7 +101,7 @@ def refit_group_out(model: Model, seed: int, readings: Index) -> GroupOut:
     rows = model.rows(evidence.theta, evidence.root)
     ahead = predict_ahead(rows, evidence.approximation, every, cells)
     weights = np.exp(posterior.log_weights)
-    return _summary(model.cells, readings, lik, ahead, weights, True)
+    return _summary(model, readings, lik, ahead, weights, True, within)
 
 
 def _without(log_weights: Array, ahead: Ahead) -> tuple[Array, bool]:
@@ -204,20 +211,26 @@ def _site_constants(approx: Approximation, nodes: Index, cells: Index) -> Array:
 
 
 def _summary(
-    cells: Cells,
+    model: Model,
     readings: Index,
     lik: CellLikelihood,
     ahead: Ahead,
     weights: Array,
     trusted: bool,
+    within: float,
 ) -> GroupOut:
+    cells = model.cells
+    span = 1.0 if lik.link == "logit" else 2.0 * model.family.priors.mean_sd
     carrying = np.flatnonzero(weights > 1e-4 * weights.max())
     w = weights[carrying] / weights[carrying].sum()
     some, law = lik.nodes(carrying), _nodes(ahead, carrying)
     pit = np.clip(w @ _transform(cells, some, law, readings), 0.0, 1.0)
-    pit = np.where(cells.censored[cells.cell[readings]] == 0, pit, np.nan)
-    read = np.flatnonzero(cells.censored[ahead.cells] == 0)
-    shift, z, likeness = _together(cells, some, law, read)
+    means = _cell_law(cells, some, law)
+    told = (cells.censored[ahead.cells] == 0) & (w @ (means.spread < within * span) >= 0.5)
+    pit = np.where(told[np.searchsorted(ahead.cells, cells.cell[readings])], pit, np.nan)
+    if not told.any():
+        return GroupOut(pit, 0.0, 0.0, 0.5, float(1.0 / (weights**2).sum()), trusted)
+    shift, z, likeness = _together(means, np.flatnonzero(told))
     return GroupOut(
         pit,
         float(w @ likeness),
@@ -300,30 +313,38 @@ def _few(lik: CellLikelihood, cells: Index) -> CellLikelihood:
     )
 
 
-def _together(
-    cells: Cells, lik: CellLikelihood, ahead: Ahead, read: Index
-) -> tuple[Array, Array, Array]:
-    """Shift (S,) of the cells read, by generalised least squares; it in its sd; mean correlation.
-
-    The process mean is linearised about its average slope, with the variance that it really has.
+@dataclass(frozen=True)
+class _Means:
+    """Cell means y (m,) and their law at S nodes: centre (S, m) and covariance (S, m, m); levels
+    (S, m) that a common shift multiplies, the process mean of a fraction, else 1; spread (S, m): sd
+    of the process mean.
     """
-    y, centre, K, levels = _cell_law(cells, lik, ahead)
-    y, centre, levels = y[read], centre[:, read], levels[:, read]
-    K = K[:, read][:, :, read]
-    both = np.stack([levels, y - centre], axis=2)
+
+    y: Array
+    centre: Array
+    covariance: Array
+    levels: Array
+    spread: Array
+
+
+def _together(means: _Means, told: Index) -> tuple[Array, Array, Array]:
+    """Shift (S,) of the cells told, by generalised least squares, it in its sd; their likeness."""
+    levels, K = means.levels[:, told], means.covariance[:, told][:, :, told]
+    both = np.stack([levels, means.y[told] - means.centre[:, told]], axis=2)
     solved = np.linalg.solve(K, both)
     strength = (levels * solved[..., 0]).sum(1)
     shift = (levels * solved[..., 1]).sum(1) / strength
     sd = np.sqrt(np.diagonal(K, axis1=1, axis2=2))
-    m = len(read)
+    m = len(told)
     total = (K / (sd[:, :, None] * sd[:, None, :])).sum((1, 2))
     likeness = (total - m) / (m * (m - 1.0)) if m > 1 else np.zeros(len(K))
     return shift, shift * np.sqrt(strength), likeness
 
 
-def _cell_law(cells: Cells, lik: CellLikelihood, ahead: Ahead) -> tuple[Array, Array, Array, Array]:
-    """Cell means y (m,), their predictive means (S, m), covariance (S, m, m), and the levels that
-    a common shift multiplies: the process mean of a fraction, else 1.
+def _cell_law(cells: Cells, lik: CellLikelihood, ahead: Ahead) -> _Means:
+    """The law of the cell means.
+
+    The process mean is linearised about its average slope, with the variance that it really has.
     """
     at = ahead.cells
     L = ahead.mean.shape[1] - ahead.loads.shape[2]
@@ -344,4 +365,5 @@ def _cell_law(cells: Cells, lik: CellLikelihood, ahead: Ahead) -> tuple[Array, A
     K[:, index, index] += noise / cells.count[at] + spare
     centre = (1.0 + near.scale * s) * level
     levels = level if lik.link == "logit" else np.ones_like(level)
-    return cells.mean[at], centre, K, levels
+    spread = np.sqrt(slope**2 * uu + spare)
+    return _Means(cells.mean[at], centre, K, levels, spread)

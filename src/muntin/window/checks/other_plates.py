@@ -40,8 +40,9 @@ def other_plates(study: Study, response: Response, stack: Stack, seed: int) -> l
     """Leave-one-plate-out predictions: each plate's common shift against what shared errors and
     the others allow, and the coverage of its readings.
 
-    The readings of one plate are predicted with an error in common, so coverage and evenness are
-    judged as if there were fewer of them, by the mean correlation (Kish 1965).
+    Conditions of which the other plates hardly tell are left aside. The readings of one plate are
+    predicted with an error in common, so coverage and evenness are judged as if there were fewer of
+    them, by the mean correlation (Kish 1965).
     """
     names = study.readings(response.name)["plate"].to_numpy()
     plates = list(dict.fromkeys(names))
@@ -52,6 +53,9 @@ def other_plates(study: Study, response: Response, stack: Stack, seed: int) -> l
     off = [plate for plate in found if abs(plate.z) > limit]
     pit = np.concatenate([plate.pit for plate in found])
     hits = int(_inside(pit).sum())
+    if not len(pit):
+        sentence = f"{response.label}: the plates have too little in common to predict one another."
+        return [Check("other plates", True, True, sentence, response.name)]
     others = "plate" if len(found) == 2 else "plates"
     told = f"{hits} of {len(pit)} readings lie in the 90 % range predicted from the other {others}"
     if off:
