@@ -177,6 +177,14 @@ def test_two_responses_are_a_case_of_three():
     )
 
 
+def test_an_untied_third_multiplies():
+    two = built(["logit", "real"], [Target(0.7, 0.9), Target(0.15, 0.3)])
+    third = built(["real"], [LOW])[0]
+    R = tied(0.7, 0.0, 0.0)
+    ours = joint([*two, third], R)
+    np.testing.assert_allclose(ours, joint(two, R[:2, :2]) * third.met(), atol=1e-4)
+
+
 def test_order_of_responses_makes_little_difference():
     responses = built(["logit", "log", "real"], [LOW, Target(high=1.25), LOW])
     R, turn = tied(0.5, -0.3, 0.2), [2, 0, 1]
@@ -190,7 +198,7 @@ def known_exactly(target, mean=None):
     errors = Errors(np.full(1, 0.1), np.zeros((1, 0)), np.zeros((1, 0)), np.ones(1))
     surface = Surface((Known(errors),), np.ones(1), "identity")
     mean = np.linspace(-0.2, 0.2, 5)[None] if mean is None else mean
-    return Predicted(surface, (mean, np.full_like(mean, 1e-12)), target)
+    return Predicted(surface, (mean, np.zeros_like(mean)), target)
 
 
 @pytest.mark.parametrize("rho", [-0.9, 0.3, 0.9])
@@ -208,3 +216,4 @@ def test_wholly_tied_noise_does_not_fail():
     np.testing.assert_allclose(joint(twice, np.ones((2, 2))), twice[0].met(), atol=1e-4)
     thrice = joint([*twice, twice[0]], np.ones((3, 3)))
     np.testing.assert_allclose(thrice, twice[0].met(), atol=2e-3)
+    assert (thrice <= twice[0].met()).all()

@@ -1,16 +1,20 @@
 """Which response gives way first: at conditions, and beyond each side of the ranges."""
 
+from dataclasses import replace
+
 import numpy as np
 import pandas as pd
 import pytest
 
 import muntin
 from muntin.record import StudyFaults
+from muntin.window.limiting import sides_of
 from tests.studies import HCP, PH, RECOVERY, SALT, changed, read, read_hcp, spread, written
 
 FACTORS = [PH, SALT]
 # Recovery asks for much salt, host cell protein for little; neither minds the other.
 RESPONSES = [RECOVERY, {**HCP, "at_most": 45}]
+WIDE = [{**RECOVERY, "at_least": 0.6}, {**HCP, "at_most": 60}]
 ASKED = pd.DataFrame(
     {"salt": [100, 250, 450, 300], "ph": [7.0, 6.0, 7.0, 7.5]}, index=["d", "b", "a", "b"]
 )
@@ -77,16 +81,28 @@ def test_sides_name_what_gives_way(view):
 
 
 def test_a_side_tells_the_worst_condition_just_beyond(view):
+    view = changed(view, responses=WIDE)
     window = view.window()
     low, high = window.ranges["ph"]
-    side = next(s for s in window.sides if (s.factor, s.end) == ("salt", "high"))
-    assert side.beyond == side.at + 50
+    side = next(s for s in window.sides if (s.factor, s.end) == ("salt", "low"))
+    assert side.beyond == side.at - 50
     beyond = pd.DataFrame({"ph": np.arange(low, high + 0.1, 0.5), "salt": side.beyond})
     table = view.at(beyond)
     worst = beyond.loc[[table["p_well"].idxmin()]]
     found = view.limiting(worst).iloc[0]
     assert side.probability == pytest.approx(found["probability"], rel=1e-9)
-    assert (table["p_well"] < 0.9).any()
+    assert table["p_well"].min() < 0.9 < table["p_well"].max()
+
+
+def test_a_box_that_could_grow_has_nothing_in_its_way(view):
+    # Such a box is left where a limit cuts the next level short.
+    view = changed(view, responses=WIDE)
+    window = view.window()
+    (low, high), salt = window.ranges["ph"], window.ranges["salt"]
+    assert high - low >= 0.5
+    small = replace(window, ranges={"ph": (low + 0.5, high), "salt": salt})
+    side = sides_of(view, small)[0]
+    assert (side.factor, side.end, side.beyond) == ("ph", "low", None)
 
 
 def test_a_limit_in_the_way_is_no_failure(view):
