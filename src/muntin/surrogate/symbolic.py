@@ -57,14 +57,17 @@ def pymc_model(model: Model, noise: Noise = "normal", near: Array | None = None)
 
     near (U,): latent values about which the variables are standardised. Free variables: eta (H,)
     and v (R + groups of all scale errors,); with Student-t noise also nu, and for censored readings
-    the mixing variable of each. Kept: w (R,) and z (groups,). Data `y` (n,).
+    the mixing variable of each. Kept: w (R,) and z (groups,). Data: `y` (n,) and, with near, `near`
+    and `cell_mean` (C,), which may be exchanged for those of other readings of the same wells.
     """
     pm, cells, layout = pymc(), model.cells, model.layout
     with pm.Model() as symbolic:
         h = Hyperparameters.of(layout, pm.Normal("eta", shape=len(layout)))
         root, width = symbolic_root(model.family, h, cells), whitened(model)
         v = pm.Normal("v", shape=width + sum(cells.scale_groups))
-        white = v if near is None else _standardised(model, h, root, v, near)
+        white = v
+        if near is not None:
+            white = _standardised(model, h, root, v, pm.Data("near", near))
         w, z = pm.Deterministic("w", white[:width]), pm.Deterministic("z", white[width:])
         u = model.family.priors.mean + root @ w
         centre, variance = _law(model, h, u, z)
@@ -110,7 +113,7 @@ def _process_root(family: GaussianProcess, h: Hyperparameters, cells: Cells) -> 
     return pt.linalg.cholesky(K, lower=True, on_error="nan")
 
 
-def _standardised(model: Model, h: Hyperparameters, root: Any, v: Any, near: Array) -> Any:
+def _standardised(model: Model, h: Hyperparameters, root: Any, v: Any, near: Any) -> Any:
     """w and z (R + groups,) from v: the mean and a root of the linearised posterior at eta.
 
     A reading is g + g' (u - near) + g sum(scale_sd z) + noise there; a censored one says nothing.
@@ -123,7 +126,8 @@ def _standardised(model: Model, h: Hyperparameters, root: Any, v: Any, near: Arr
     J = pt.concatenate(blocks, axis=1)
     variance = h.noise**2 + cells.variance + slope**2 * model.wander
     precision = (cells.censored == 0) * cells.count / variance
-    away = cells.mean - mean + slope * (near[cells.latent] - model.family.priors.mean)
+    level = model.family.priors.mean
+    away = pm.Data("cell_mean", cells.mean) - mean + slope * (near[cells.latent] - level)
     M = pt.eye(v.shape[0]) + J.T @ (precision[:, None] * J)
     C = pt.linalg.cholesky(M, lower=True, on_error="nan")
     shift = pt.linalg.solve_triangular(C, J.T @ (precision * away), lower=True)
