@@ -152,12 +152,14 @@ def _repeated(fast: Fit, posterior: Posterior, weights: Array) -> Surface:
 
 def by_nuts(trial: Trial, name: str, fast: Fit) -> Reference:
     """NUTS: every draw a node; halves of chains are the parts."""
-    from muntin.surrogate.convergence import efficiency_of
-    from muntin.surrogate.nuts import Nuts, sample
+    from muntin.surrogate.nuts import Nuts, resampled
 
     start = time.perf_counter()
-    draws = sample(fast.model, SEED, Nuts(chains=CHAINS, draws=DRAWS))
+    found = resampled(fast, SEED, Nuts(chains=CHAINS, draws=DRAWS))
     seconds = time.perf_counter() - start
+    assert found.draws is not None
+    assert found.sampling is not None
+    draws, sampling = found.draws, found.sampling
     surface = draws.surface(fast.surface.link, len(draws), SEED)
     halves = np.array_split(np.arange(len(draws)), 2 * CHAINS)
     parts = [
@@ -165,9 +167,9 @@ def by_nuts(trial: Trial, name: str, fast: Fit) -> Reference:
         for half in halves
     ]
     p_mean, p_well = (np.array(p) for p in zip(*parts, strict=True))
-    r_hat, bulk, tail, _ = efficiency_of(draws)
-    divergent = int(np.sum(draws.stats["diverging"]))
-    note = f"R-hat {r_hat:.3f}, ESS {min(bulk, tail):.0f}, {divergent} divergent"
+    note = f"R-hat {sampling.r_hat:.3f}, ESS {min(sampling.bulk, sampling.tail):.0f}"
+    if sampling.divergent:
+        note += f", {100.0 * sampling.divergent:.2g} % divergent"
     return Reference(p_mean, p_well, seconds, note)
 
 

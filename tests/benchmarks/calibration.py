@@ -131,17 +131,19 @@ def draw(runs: list[Run], path: Path) -> None:
     engines = list(dict.fromkeys(run.engine for run in runs))
     figure = Figure(figsize=(8.0, 1.3 + 2.0 * len(engines)), dpi=150, layout="constrained")
     figure.suptitle(
-        "Where the truth of simulated data sets lies in its posterior", fontsize=11, color=INK
+        "Place z of the truth in its posterior, over simulated data sets", fontsize=11, color=INK
     )
     every = figure.subplots(len(engines), len(PANELS), sharex=True, sharey="row", squeeze=False)
-    for row, engine in zip(every, engines, strict=True):
+    for number, (row, engine) in enumerate(zip(every, engines, strict=True)):
         mine = [run for run in runs if run.engine == engine]
         for axes, panel, heading in zip(row, PANELS, HEADINGS, strict=True):
             draw_panel(axes, mine, panel)
-            if row is every[0]:
+            if number == 0:
                 axes.set_title(heading, fontsize=9, color=INK)
-        row[0].set_ylabel(f"engine {engine}, {mine[0].size} sets\nshare below less z", fontsize=8.5)
-    figure.supxlabel("z, place in the posterior", fontsize=9, color=INK)
+            if number == len(engines) - 1:
+                axes.set_xlabel("z", fontsize=9, color=INK)
+        label = f"engine {engine}, {mine[0].size} sets\nshare of sets below z, less z"
+        row[0].set_ylabel(label, fontsize=8.5, color=INK)
     shown = dict.fromkeys(run.surrogate for run in runs)
     keys: list[Any] = [
         Line2D([], [], color=COLOURS[s], linestyle=DASHES[s], linewidth=1.8, label=s) for s in shown

@@ -26,6 +26,7 @@ Array = NDArray[np.float64]
 NEW = ("latent value", "process mean", "future reading")
 # One less than a multiple of the 20 points of the bands, so that ranks cannot fall on them.
 RANKS = 99
+DRAWS = 500
 
 
 @dataclass(frozen=True)
@@ -118,29 +119,31 @@ def nuts_places(setup: Setup, sets: int, report: Callable[[int], None] = lambda 
     """
     import nutpie
 
+    from muntin.surrogate.nuts import _latents
     from muntin.surrogate.symbolic import pymc_model
 
-    rng, values = np.random.default_rng(9), []
-    first = setup.model(simulate(setup, 0, design=0).readings)
-    with warnings.catch_warnings():
-        warnings.simplefilter("ignore", FutureWarning)
-        compiled = nutpie.compile_pymc_model(pymc_model(first))
+    rng, values, compiled = np.random.default_rng(9), [], None
     for seed in range(sets):
         data = simulate(setup, seed, design=0)
-        model = setup.model(data.readings)
-        found = nutpie.sample(
-            compiled.with_data(y=model.cells.y),
-            draws=500,
-            tune=500,
-            chains=2,
-            cores=1,
-            seed=seed,
-            progress_bar=False,
-            save_warmup=False,
-            target_accept=0.95,
-        )
+        fit = fitted(setup, data)
+        cells, near = fit.model.cells, _latents(fit)
+        with warnings.catch_warnings():
+            warnings.simplefilter("ignore", FutureWarning)
+            if compiled is None:
+                compiled = nutpie.compile_pymc_model(pymc_model(fit.model, near=near))
+            found = nutpie.sample(
+                compiled.with_data(y=cells.y, cell_mean=cells.mean, near=near),
+                draws=DRAWS,
+                tune=DRAWS,
+                chains=2,
+                cores=1,
+                seed=seed,
+                progress_bar=False,
+                save_warmup=False,
+                target_accept=0.95,
+            )
         eta, w, z = (found.posterior[name].to_numpy() for name in ("eta", "w", "z"))
-        draws = Draws(model=model, eta=eta, w=w, z=z, nu=None, stats={}, sampler="nutpie")
+        draws = Draws(model=fit.model, eta=eta, w=w, z=z, nu=None, stats={}, sampler="nutpie")
         values.append(ranked(setup, data, draws, rng))
         report(seed + 1)
-    return Places((*first.layout.names, *NEW), np.array(values))
+    return Places((*fit.names, *NEW), np.array(values))
