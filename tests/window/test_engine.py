@@ -55,7 +55,8 @@ def test_a_failed_sampling_withdraws_the_window(study, sampled, monkeypatch):
 
     def torn(fit, seed, settings):
         fit = good(fit, seed, settings)
-        return replace(fit, sampling=replace(fit.sampling, divergent=0.02))
+        k = np.where(np.arange(12) < 3, 0.8, 0.1)
+        return replace(fit, sampling=replace(fit.sampling, divergent=0.02, pareto_k=k))
 
     monkeypatch.setattr("muntin.surrogate.fit.resampled", torn)
     view = muntin.assess(study, surrogate="quadratic", engine="nuts")
@@ -63,7 +64,7 @@ def test_a_failed_sampling_withdraws_the_window(study, sampled, monkeypatch):
     assert [c.response for c in failed] == ["recovery", "hcp"]
     sentence = (
         "Recovery: for the quadratic 4 chains of 1000 draws cannot be relied on: 2 % of the draws "
-        "diverged."
+        "diverged; leave-one-out predictions are uncertain for 3 of 12 readings."
     )
     assert failed[0].sentence == sentence
     assert sentence in view.window().unsupported
