@@ -30,7 +30,7 @@ _Z = np.linspace(-3.6, 3.6, 13)
 # Nodes of less than e^-12 of the largest weight never come to matter.
 _SPAN = 12.0
 # Sd of a process mean, in shares of the usual range, up to which the others tell it.
-TOLD = 0.08
+TOLD = 0.06
 _W = np.exp(-0.5 * _Z**2) / np.exp(-0.5 * _Z**2).sum()
 
 

@@ -21,6 +21,8 @@ _LEVEL = 0.02
 _UNEVEN = 3.0
 # A plate so far off by reweighted nodes, in sds, is judged by nodes fitted without it.
 _SUSPECT = 2.0
+# A plate of which the others tell less than this share of the readings is not judged.
+_COMMON = 0.5
 
 
 @dataclass(frozen=True)
@@ -40,9 +42,9 @@ def other_plates(study: Study, response: Response, stack: Stack, seed: int) -> l
     """Leave-one-plate-out predictions: each plate's common shift against what shared errors and
     the others allow, and the coverage of its readings.
 
-    Conditions of which the other plates hardly tell are left aside. The readings of one plate are
-    predicted with an error in common, so coverage and evenness are judged as if there were fewer of
-    them, by the mean correlation (Kish 1965).
+    Conditions of which the other plates hardly tell are left aside, and so is a plate that has few
+    others. The readings of one plate are predicted with an error in common, so coverage and
+    evenness are judged as if there were fewer of them, by the mean correlation (Kish 1965).
     """
     names = study.readings(response.name)["plate"].to_numpy()
     plates = list(dict.fromkeys(names))
@@ -82,7 +84,10 @@ def _mixed(name: str, outs: list[GroupOut], shares: Array) -> _Plate:
     from scipy.special import ndtri
 
     pit = shares @ np.stack([out.pit for out in outs])
-    pit = pit[np.isfinite(pit)]
+    told = np.isfinite(pit)
+    if told.mean() < _COMMON:
+        return _Plate(name, np.zeros(0), 0.0, 0.0, 0.0)
+    pit = pit[told]
     place = float(shares @ [out.shift_pit for out in outs])
     z = float(ndtri(np.clip(place, 1e-12, 1.0 - 1e-12)))
     shift = float(shares @ [out.shift for out in outs])
