@@ -126,7 +126,7 @@ def _named(some: Sequence[Check], checks: Sequence[Check], labels: Mapping[str, 
     for name in dict.fromkeys(check.name for check in some):
         here = [check for check in some if check.name == name]
         every = [check for check in checks if check.name == name]
-        of = [labels[c.response] for c in here if c.response in labels]
+        of = [labels[c.response] for c in here if c.response is not None and c.response in labels]
         texts.append(name if len(here) == len(every) else f"{name} ({', '.join(of)})")
     return ", ".join(texts)
 
