@@ -130,7 +130,9 @@ def nuts_places(setup: Setup, sets: int, report: Callable[[int], None] = lambda 
         with warnings.catch_warnings():
             warnings.simplefilter("ignore", FutureWarning)
             if compiled is None:
-                compiled = nutpie.compile_pymc_model(pymc_model(fit.model, near=near))
+                compiled = nutpie.compile_pymc_model(
+                    pymc_model(fit.model, near=near, exchangeable=True)
+                )
             found = nutpie.sample(
                 compiled.with_data(y=cells.y, cell_mean=cells.mean, near=near),
                 draws=DRAWS,

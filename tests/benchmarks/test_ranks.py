@@ -45,7 +45,8 @@ def test_exchanged_readings_make_the_model_of_the_other_data_set(kind):
     rng = np.random.default_rng(5)
     models = [setup.model(simulate(setup, seed, design=0).readings) for seed in (1, 2)]
     near = [rng.normal(size=len(m.cells.X)) for m in models]
-    first, other = (pymc_model(m, near=u) for m, u in zip(models, near, strict=True))
+    first = pymc_model(models[0], near=near[0], exchangeable=True)
+    other = pymc_model(models[1], near=near[1])
     at = {k: rng.normal(size=np.shape(v)) for k, v in first.initial_point().items()}
     compiled = first.compile_logp(mode="FAST_COMPILE")
     before = compiled(at)

@@ -52,13 +52,15 @@ class Hyperparameters:
         return cls(value[0], value[1:inside], value[inside:scale], 1.0 - gap, value[own:])
 
 
-def pymc_model(model: Model, noise: Noise = "normal", near: Array | None = None) -> Any:
+def pymc_model(
+    model: Model, noise: Noise = "normal", near: Array | None = None, exchangeable: bool = False
+) -> Any:
     """The `pymc.Model` of a response with C cells, n readings and R whitened latents.
 
     near (U,): latent values about which the variables are standardised. Free variables: eta (H,)
     and v (R + groups of all scale errors,); with Student-t noise also nu, and for censored readings
-    the mixing variable of each. Kept: w (R,) and z (groups,). Data: `y` (n,) and, with near, `near`
-    and `cell_mean` (C,), which may be exchanged for those of other readings of the same wells.
+    the mixing variable of each. Kept: w (R,) and z (groups,). Data `y` (n,); exchangeable: also
+    `near` and `cell_mean` (C,), so that all may give way to those of other readings of the wells.
     """
     pm, cells, layout = pymc(), model.cells, model.layout
     with pm.Model() as symbolic:
@@ -67,7 +69,10 @@ def pymc_model(model: Model, noise: Noise = "normal", near: Array | None = None)
         v = pm.Normal("v", shape=width + sum(cells.scale_groups))
         white = v
         if near is not None:
-            white = _standardised(model, h, root, v, pm.Data("near", near))
+            about = near, cells.mean
+            if exchangeable:
+                about = pm.Data("near", near), pm.Data("cell_mean", cells.mean)
+            white = _standardised(model, h, root, v, *about)
         w, z = pm.Deterministic("w", white[:width]), pm.Deterministic("z", white[width:])
         u = model.family.priors.mean + root @ w
         centre, variance = _law(model, h, u, z)
@@ -113,7 +118,9 @@ def _process_root(family: GaussianProcess, h: Hyperparameters, cells: Cells) -> 
     return pt.linalg.cholesky(K, lower=True, on_error="nan")
 
 
-def _standardised(model: Model, h: Hyperparameters, root: Any, v: Any, near: Any) -> Any:
+def _standardised(
+    model: Model, h: Hyperparameters, root: Any, v: Any, near: Any, cell_mean: Any
+) -> Any:
     """w and z (R + groups,) from v: the mean and a root of the linearised posterior at eta.
 
     A reading is g + g' (u - near) + g sum(scale_sd z) + noise there; a censored one says nothing.
@@ -127,7 +134,7 @@ def _standardised(model: Model, h: Hyperparameters, root: Any, v: Any, near: Any
     variance = h.noise**2 + cells.variance + slope**2 * model.wander
     precision = (cells.censored == 0) * cells.count / variance
     level = model.family.priors.mean
-    away = pm.Data("cell_mean", cells.mean) - mean + slope * (near[cells.latent] - level)
+    away = cell_mean - mean + slope * (near[cells.latent] - level)
     M = pt.eye(v.shape[0]) + J.T @ (precision[:, None] * J)
     C = pt.linalg.cholesky(M, lower=True, on_error="nan")
     shift = pt.linalg.solve_triangular(C, J.T @ (precision * away), lower=True)
