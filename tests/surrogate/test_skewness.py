@@ -81,14 +81,15 @@ def test_readings_on_a_straight_scale_leave_no_skew():
     real = replace(trial, kind="real", readings=replace(trial.readings, scale=()))
     _, posterior, nodes = approximated(real, "gp")
     assert not posterior.evidence.approximation.skewed
-    assert not nodes.skewness(real.grid, nodes.moments(real.grid)[1]).any()
+    assert not nodes.latent(real.grid).skew.any()
 
 
 @pytest.mark.parametrize("name", ["gp", "quadratic"])
 def test_some_nodes_keep_their_skew(name):
     trial = few_wells()
     _, _, nodes = approximated(trial, name)
-    variance = nodes.moments(trial.grid)[1]
     index = np.array([1, 4, 7])
-    part = nodes.take(index).skewness(trial.grid, variance[index])
-    assert part == pytest.approx(nodes.skewness(trial.grid, variance)[index])
+    part = nodes.take(index).latent(trial.grid)
+    for some, every in zip(part, nodes.latent(trial.grid), strict=True):
+        assert some == pytest.approx(every[index])
+    assert part[:2] == pytest.approx(np.stack(nodes.take(index).moments(trial.grid)))

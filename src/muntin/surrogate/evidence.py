@@ -20,6 +20,8 @@ from muntin.surrogate.tilted import CellLikelihood
 
 Array = NDArray[np.float64]
 _UNSAID = np.zeros(0)
+# A hundredth of an sd moves no probability by a thousandth.
+_TOLERANCE = 1e-2
 
 
 class Family(Protocol):
@@ -138,15 +140,18 @@ def joined(rounds: Sequence[Evidence]) -> Evidence:
 
 
 def evaluate(model: Model, theta: Array, near: Evidence | None = None) -> Evidence:
-    """Evidence of the model at log hyperparameters theta (S, H); sites start from the first node
+    """Evidence of the model at log hyperparameters theta (S, H); sites start from the closest node
     of `near`, sharpened or blunted as the noise asks.
     """
     rows = model.rows(theta)
     start = None
     if near is not None:
-        first = near.approximation.sites.nodes(np.zeros(len(theta), dtype=np.intp))
-        start = first.times(np.exp(2.0 * (near.theta[:1, :1] - theta[:, :1])))
-    return Evidence(theta, rows.root, approximate(rows, model.likelihood(theta), start))
+        unit = model.layout.log_sd
+        away = ((theta[:, None] - near.theta[None]) / unit) ** 2
+        closest = away.sum(-1).argmin(axis=1)
+        sites = near.approximation.sites.nodes(closest)
+        start = sites.times(np.exp(2.0 * (near.theta[closest, :1] - theta[:, :1])))
+    return Evidence(theta, rows.root, approximate(rows, model.likelihood(theta), start, _TOLERANCE))
 
 
 def slope(model: Model, evidence: Evidence) -> Array:

@@ -11,6 +11,7 @@ from numpy.typing import NDArray
 from muntin.surrogate.assembly import nodes_of
 from muntin.surrogate.cells import Readings, collapse
 from muntin.surrogate.coding import Columns
+from muntin.surrogate.compression import compressed
 from muntin.surrogate.convergence import Sampling
 from muntin.surrogate.draws import Draws
 from muntin.surrogate.evidence import Evidence, Family, Model
@@ -167,7 +168,7 @@ def prior_surface(
 
 
 def _surface(model: Model, evidence: Evidence, weights: Array, link: Link) -> Surface:
-    """The nodes that carry weight; the rest, together _NEGLIGIBLE, is left out."""
+    """The nodes that carry weight, made few; the rest, together _NEGLIGIBLE, is left out."""
     order = np.argsort(-weights)
     enough = int(np.searchsorted(np.cumsum(weights[order]), 1.0 - _NEGLIGIBLE)) + 1
     keep = np.sort(order[:enough])
@@ -176,4 +177,5 @@ def _surface(model: Model, evidence: Evidence, weights: Array, link: Link) -> Su
     mean, V = approx.mean[keep][:, :own], approx.V[keep][:, :own, :own]
     skew = skew_of(model.rows(evidence.theta), approx).take(keep) if approx.skewed else None
     part = nodes_of(model, evidence.theta[keep], root, mean, V, skew)
-    return Surface((part,), weights[keep] / weights[keep].sum(), link)
+    surface = Surface((part,), weights[keep] / weights[keep].sum(), link)
+    return compressed(surface, model.family.columns, model.cells)

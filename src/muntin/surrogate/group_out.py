@@ -24,6 +24,8 @@ from muntin.surrogate.tilted import CellLikelihood, Pair
 from muntin.surrogate.weights import tempered
 
 Array = NDArray[np.float64]
+# Nodes of a fit without a plate.
+_NODES = 64
 Index = NDArray[np.intp]
 # Trapezoid points of a standard normal, over which a latent value is averaged.
 _Z = np.linspace(-3.6, 3.6, 13)
@@ -94,7 +96,7 @@ def leave_group_out(
 def refit_group_out(model: Model, seed: int, readings: Index, within: float = TOLD) -> GroupOut:
     """The same over the nodes of a fit of the others alone."""
     cells = np.unique(model.cells.cell[readings])
-    posterior = integrate(silent(model, cells), seed)
+    posterior = integrate(silent(model, cells), seed, _NODES)
     evidence = posterior.evidence
     every = np.arange(len(evidence.theta))
     lik = model.likelihood(evidence.theta)

@@ -20,7 +20,9 @@ _DEGREES = 6.0
 _BOUND = 4.0
 _ROUNDS = 5
 _STEP = 0.05
-_MANY_LATENTS = 200
+# Up to so many latent values: nodes of a round, effective nodes that are enough, and plenty.
+_EFFORT = ((40, 128, 90.0, 110.0), (200, 64, 26.0, 64.0))
+_LEAST_EFFORT = (32, 13.0, 32.0)
 
 
 @dataclass(frozen=True)
@@ -93,7 +95,7 @@ def mode(model: Model, start: Array | None = None) -> tuple[Array, Evidence]:
         jac=True,
         method="L-BFGS-B",
         bounds=[(-_BOUND, _BOUND)] * h,
-        options={"maxiter": 60, "ftol": 1e-7, "gtol": 1e-2},
+        options={"maxiter": 60, "ftol": 1e-5, "gtol": 1e-2},
     )
     return found.x, evaluate(model, layout.theta(found.x[None]), best[0][1])
 
@@ -121,37 +123,48 @@ def _refitted(eta: Array, weights: Array, last: Proposal) -> Proposal:
     return Proposal(centre, np.linalg.cholesky(covariance))
 
 
+def effort(latents: int) -> tuple[int, float, float]:
+    """Nodes of a round, effective nodes that are enough, and that are plenty whatever the tail of
+    the weights: more where few latent values make a node cheap and leave the hyperparameters open.
+    """
+    for most, nodes, enough, plenty in _EFFORT:
+        if latents <= most:
+            return nodes, enough, plenty
+    return _LEAST_EFFORT
+
+
 def integrate(
     model: Model, seed: int, nodes: int | None = None, start: Array | None = None
 ) -> Posterior:
     """The posterior of the hyperparameters as weighted nodes; their mode is searched from `start`.
 
-    nodes: drawn in each round, a power of two; by default 64, or 32 where many latent values make
-    a node dear and the hyperparameters well known.
+    nodes: drawn in each round, a power of two; 0.4 of them effective are enough. By default as
+    many as `effort` says.
     """
     from scipy.stats.qmc import Sobol
 
-    nodes = nodes or (64 if len(model.cells.X) <= _MANY_LATENTS else 32)
     layout = model.layout
+    nodes, enough, plenty = (
+        effort(len(model.cells.X)) if nodes is None else (nodes, 0.4 * nodes, float(nodes))
+    )
     eta0, top = mode(model, start)
     proposals = [_at_mode(model, eta0, top)]
-    etas: list[Array] = []
-    rounds: list[Evidence] = []
+    every, evidence = np.zeros((0, len(layout))), top
     for number in range(_ROUNDS):
         sobol = Sobol(len(layout) + 1, rng=np.random.default_rng((seed, number)))
-        eta = np.clip(proposals[-1].draw(sobol.random(nodes)), -2 * _BOUND, 2 * _BOUND)
-        rounds.append(evaluate(model, layout.theta(eta), top))
-        etas.append(eta)
-        every = np.concatenate(etas)
+        points = sobol.random(nodes)
+        eta = np.clip(proposals[-1].draw(points), -2 * _BOUND, 2 * _BOUND)
+        found = evaluate(model, layout.theta(eta), evidence)
+        evidence = joined([evidence, found]) if number else found
+        every = np.concatenate([every, eta])
         log_q = np.logaddexp.reduce([p.log_density(every) for p in proposals]) - np.log(number + 1)
-        log_w = np.concatenate([r.log for r in rounds]) + log_prior(every) - log_q
+        log_w = evidence.log + log_prior(every) - log_q
         log_sum = float(np.logaddexp.reduce(log_w))
         weights = np.exp(log_w - log_sum)
-        ess, k_hat = 1.0 / (weights**2).sum(), tail_shape(log_w)
+        ess, k_hat = float(1.0 / (weights**2).sum()), tail_shape(log_w)
         # The shape of so short a tail is itself uncertain; many effective nodes outweigh it.
-        if ess >= nodes or (ess >= 0.4 * nodes and k_hat < 0.7):
+        if ess >= plenty or (ess >= enough and k_hat < 0.7):
             break
         proposals.append(_refitted(every, weights, proposals[-1]))
-    every_round = joined(rounds)
     marginal = log_sum - float(np.log(len(log_w)))
-    return Posterior(every_round, every, log_w - log_sum, marginal, float(ess), k_hat)
+    return Posterior(evidence, every, log_w - log_sum, marginal, ess, k_hat)

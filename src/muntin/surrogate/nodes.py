@@ -22,7 +22,7 @@ from muntin.surrogate.skewness import Skew
 
 Array = NDArray[np.float64]
 Index = NDArray[np.intp]
-_CHUNK = 3_000_000
+_CHUNK = 300_000
 
 
 @dataclass(frozen=True)
@@ -66,8 +66,8 @@ class Nodes(Protocol):
     def covariance(self, X: Array, Z: Array) -> Array:
         """Covariance (S, n, m) of f between coded X (n, D) and Z (m, D)."""
 
-    def skewness(self, X: Array, variance: Array) -> Array:
-        """Skewness (S, n) of f at coded X (n, D), where it has the variance (S, n)."""
+    def latent(self, X: Array) -> Latent:
+        """Mean, variance and skewness (S, n) of f at coded X (n, D)."""
 
     def slopes(self, X: Array) -> Array:
         """Slope (S, n, D) of the mean of f with each coded column at X (n, D)."""
@@ -95,14 +95,8 @@ class ProcessNodes:
 
     def moments(self, X: Array) -> tuple[Array, Array]:
         """Mean and variance (S, n) of f at coded X (n, D)."""
-        mean = np.empty((len(self), len(X)))
-        variance = self.family.variance(self.own, X)
-        size = max(1, _CHUNK // max(1, len(self) * len(self.X)))
-        for rows in _chunks(len(X), size):
-            k = self.family.covariance(self.own, X[rows], self.X)
-            mean[:, rows] = (k @ self.alpha[..., None])[..., 0]
-            variance[:, rows] -= np.einsum("snu,snu->sn", k @ self.Q, k)
-        return mean + self.family.priors.mean, _positive(variance)
+        plain = self if self.skew is None else replace(self, skew=None)
+        return plain.latent(X)[:2]
 
     def covariance(self, X: Array, Z: Array) -> Array:
         """Covariance (S, n, m) of f between coded X (n, D) and Z (m, D)."""
@@ -110,15 +104,19 @@ class ProcessNodes:
         right = self.Q @ np.swapaxes(self.family.covariance(self.own, Z, self.X), 1, 2)
         return self.family.covariance(self.own, X, Z) - left @ right
 
-    def skewness(self, X: Array, variance: Array) -> Array:
-        """Skewness (S, n) of f at coded X (n, D), where it has the variance (S, n)."""
-        out = np.zeros_like(variance)
-        if self.skew is None:
-            return out
-        widest = max(len(self.X), self.skew.third.shape[1])
-        for rows in _chunks(len(X), max(1, _CHUNK // max(1, len(self) * widest))):
-            out[:, rows] = self.skew.cumulant(self.family.covariance(self.own, X[rows], self.X))
-        return out / variance**1.5
+    def latent(self, X: Array) -> Latent:
+        """Mean, variance and skewness (S, n) of f at coded X (n, D)."""
+        mean, third = np.empty((len(self), len(X))), np.zeros((len(self), len(X)))
+        variance = self.family.variance(self.own, X)
+        size = max(1, _CHUNK // max(1, len(self) * len(self.X)))
+        for rows in _chunks(len(X), size):
+            k = self.family.covariance(self.own, X[rows], self.X)
+            mean[:, rows] = (k @ self.alpha[..., None])[..., 0]
+            variance[:, rows] -= np.einsum("snu,snu->sn", k @ self.Q, k)
+            if self.skew is not None:
+                third[:, rows] = self.skew.cumulant(k)
+        variance = _positive(variance)
+        return Latent(mean + self.family.priors.mean, variance, third / variance**1.5)
 
     def slopes(self, X: Array) -> Array:
         """Slope (S, n, D) of the mean of f with each coded column at X (n, D)."""
@@ -166,15 +164,14 @@ class PolynomialNodes:
         """Covariance (S, n, m) of f between coded X (n, D) and Z (m, D)."""
         return self.family.basis(X) @ self.V @ self.family.basis(Z).T
 
-    def skewness(self, X: Array, variance: Array) -> Array:
-        """Skewness (S, n) of f at coded X (n, D), where it has the variance (S, n)."""
-        out = np.zeros_like(variance)
+    def latent(self, X: Array) -> Latent:
+        """Mean, variance and skewness (S, n) of f at coded X (n, D)."""
+        mean, variance = self.moments(X)
         if self.skew is None:
-            return out
+            return Latent(mean, variance, np.zeros_like(mean))
         B = self.family.basis(X)
-        for rows in _chunks(len(X), max(1, _CHUNK // max(1, self.skew.u[0].size))):
-            out[:, rows] = self.skew.cumulant(np.broadcast_to(B[rows], (len(self), *B[rows].shape)))
-        return out / variance**1.5
+        third = self.skew.cumulant(np.broadcast_to(B, (len(self), *B.shape)))
+        return Latent(mean, variance, third / variance**1.5)
 
     def slopes(self, X: Array) -> Array:
         """Slope (S, n, D) of the mean of f with each coded column at X (n, D)."""
@@ -209,13 +206,8 @@ class Surface:
 
     def latent(self, X: Array) -> Latent:
         """Mean, variance and skewness (S, n) of the latent f at coded X (n, D)."""
-        mean, variance = self.moments(X)
-        skew, start = np.empty_like(mean), 0
-        for part in self.parts:
-            rows = slice(start, start + len(part))
-            skew[rows] = part.skewness(X, variance[rows])
-            start += len(part)
-        return Latent(mean, variance, skew)
+        every = [part.latent(X) for part in self.parts]
+        return Latent(*(np.concatenate(values) for values in zip(*every, strict=True)))
 
     def covariance(self, X: Array, Z: Array) -> Array:
         """Covariance (S, n, m) of the latent f between coded X (n, D) and Z (m, D)."""

@@ -17,12 +17,14 @@ from numpy.typing import NDArray
 
 from muntin.surrogate.laplace import laplace_evidence, laplace_sites
 from muntin.surrogate.sites import Gaussian, Rows, Sites, natural
-from muntin.surrogate.tilted import CellLikelihood, Pair, Tilted, tilt
+from muntin.surrogate.tilted import CellLikelihood, Pair, Points, Tilted, place
 
 Array = NDArray[np.float64]
 _LOG_2PI = float(np.log(2.0 * np.pi))
 # Sweeps before settled nodes are set aside; the sum bounds the work on one node.
-_STAGES = (4, 3, 4, 6, 10, 20, 40)
+_FIRST_STAGES, _LAST_STAGES = (4, 3, 4, 6), (10, 20, 40)
+# Nodes whose evidence is smaller by so many nats carry no weight.
+_NEGLIGIBLE = 15.0
 _FIRST_STEP, _LEAST_STEP = 0.9, 0.4
 # A fixed point is taken as reached below this last move, in sds of a latent value.
 _SETTLED = 0.05
@@ -88,26 +90,53 @@ def approximate(
     """
     if lik.link == "identity" and not lik.censored.any():
         return _exact(rows, lik)
-    sites, change = _fixed_point(rows, lik, start, tolerance, kept=False)
+    sites, change = _fixed_point(rows, lik, start, tolerance, _FIRST_STAGES)
     state = _State(rows, lik, sites)
-    failed = state.failed(change)
+    open_nodes, weak = _still_open(rows, lik, state, change, tolerance)
+    if len(open_nodes):
+        some, few = rows.nodes(open_nodes), lik.nodes(open_nodes)
+        moved, last = _fixed_point(some, few, sites.nodes(open_nodes), tolerance, _LAST_STAGES)
+        change[open_nodes] = last
+        state = _State(rows, lik, state.gaussian.sites.replaced(open_nodes, moved))
+    failed = np.setdiff1d(state.failed(change), weak)
     if len(failed):
         some, few = rows.nodes(failed), lik.nodes(failed)
-        again, last = _fixed_point(some, few, None, tolerance, kept=True)
+        stages = (*_FIRST_STAGES, *_LAST_STAGES)
+        again, last = _fixed_point(some, few, None, tolerance, stages, kept=True)
         hopeless = _State(some, few, again).failed(last)
-        if len(hopeless):
-            again = again.replaced(
-                hopeless, laplace_sites(some.nodes(hopeless), few.nodes(hopeless))
-            )
         state = _State(rows, lik, state.gaussian.sites.replaced(failed, again))
         failed = failed[hopeless]
-    evidence = state.evidence
-    if len(failed):
-        evidence[failed] = laplace_evidence(state.gaussian, lik)[failed]
+    linear = np.concatenate([weak, failed])
+    if len(linear):
+        new = laplace_sites(rows.nodes(linear), lik.nodes(linear))
+        state = _State(rows, lik, state.gaussian.sites.replaced(linear, new))
+        state.evidence[linear] = laplace_evidence(state.gaussian, lik)[linear]
     gaussian, sweep = state.gaussian, state.sweep
     return Approximation(
-        gaussian.mean, gaussian.V, evidence, gaussian.sites, sweep.cavity, sweep.tilted, failed
+        gaussian.mean,
+        gaussian.V,
+        state.evidence,
+        gaussian.sites,
+        sweep.cavity,
+        state.tilted,
+        failed,
     )
+
+
+def _still_open(
+    rows: Rows, lik: CellLikelihood, state: _State, change: Array, tolerance: float
+) -> tuple[NDArray[np.intp], NDArray[np.intp]]:
+    """Nodes that have not settled: those worth more sweeps, and those too weak beside the others,
+    by Laplace's evidence, to matter.
+    """
+    settled = (change < tolerance) & np.isfinite(state.evidence)
+    unsettled = np.flatnonzero(~(change < tolerance))
+    if not len(unsettled) or not settled.any():
+        return unsettled, unsettled[:0]
+    some, few = rows.nodes(unsettled), lik.nodes(unsettled)
+    evidence = laplace_evidence(Gaussian(some, laplace_sites(some, few)), few)
+    weak = evidence < state.evidence[settled].max() - _NEGLIGIBLE
+    return unsettled[~weak], unsettled[weak]
 
 
 class _State:
@@ -116,7 +145,9 @@ class _State:
     def __init__(self, rows: Rows, lik: CellLikelihood, sites: Sites) -> None:
         self.gaussian = Gaussian(rows, sites)
         self.sweep = _sweep(self.gaussian, lik, self.gaussian.pair)
-        own = (self.sweep.tilted.log_z - self.sweep.log_sites).sum(1)
+        self.tilted = self.sweep.points.moments(lik)
+        log_sites = _log_product(self.gaussian.pair, self.sweep.cavity)
+        own = (self.tilted.log_z - log_sites).sum(1)
         self.evidence = self.gaussian.log_integral() + own
 
     def failed(self, change: Array) -> NDArray[np.intp]:
@@ -126,16 +157,22 @@ class _State:
 
 
 def _fixed_point(
-    rows: Rows, lik: CellLikelihood, start: Sites | None, tolerance: float, kept: bool
+    rows: Rows,
+    lik: CellLikelihood,
+    start: Sites | None,
+    tolerance: float,
+    stages: tuple[int, ...],
+    kept: bool = False,
 ) -> tuple[Sites, Array]:
     """Sites after as many sweeps as each node needs, and its last move (S,).
 
-    kept: keep the sites from negative precisions.
+    stages: sweeps before settled nodes are set aside. kept: keep the sites from negative
+    precisions.
     """
     sites = start or laplace_sites(rows, lik)
     change = np.full(len(lik.noise), np.inf)
     active = np.arange(len(change))
-    for number, sweeps in enumerate(_STAGES):
+    for number, sweeps in enumerate(stages):
         if number == 1 and start is not None:
             lost = active[~(change[active] < 1.0)]
             if len(lost):
@@ -163,33 +200,33 @@ def _settle(
         change = _change(gaussian.pair, moved.pair) / step[:, 0]
         factor = np.where(change > last, 0.6, 1.3)[:, None]
         step = np.clip(factor * step, _LEAST_STEP, _FIRST_STEP)
-        gaussian, base, last = moved, state.tilted.pair, change
+        gaussian, base, last = moved, state.pair, change
     return gaussian.sites, last
 
 
 @dataclass(frozen=True)
 class _Sweep:
     cavity: Pair
-    tilted: Tilted
+    points: Points
+    pair: Pair
     proposed: Sites
-    log_sites: Array
     proper: NDArray[np.bool_]
 
 
 def _sweep(gaussian: Gaussian, lik: CellLikelihood, base: Pair, kept: bool = False) -> _Sweep:
     """Cavities, tilted moments and the sites that would match them; quadrature placed at base."""
     cavity, proper = _divide(gaussian.pair, gaussian.sites)
-    tilted = tilt(lik, cavity, base.u, np.sqrt(base.uu))
-    outer = natural(cavity)
-    proposed = natural(tilted.pair).less(outer).where_finite(gaussian.sites)
+    points = place(lik, cavity, base.u, np.sqrt(base.uu))
+    outer, pair = natural(cavity), points.pair()
+    proposed = natural(pair).less(outer).where_finite(gaussian.sites)
     # A reading cannot tell more of its logit than 1/4 of a reading's precision; far above that
     # the quadrature has lost the law, and the site is held back.
     steepest = 0.25 if lik.link == "logit" else 1.0001
     most = steepest * lik.count / lik.base_variance
     proposed = proposed.times(np.minimum(1.0, most / np.maximum(proposed.uu, 1e-300)))
     if kept:
-        proposed = _with_mean(proposed.proper(), outer, tilted.pair)
-    return _Sweep(cavity, tilted, proposed, _log_product(gaussian.pair, cavity), proper)
+        proposed = _with_mean(proposed.proper(), outer, pair)
+    return _Sweep(cavity, points, pair, proposed, proper)
 
 
 def _with_mean(sites: Sites, cavity: Sites, tilted: Pair) -> Sites:

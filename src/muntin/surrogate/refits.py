@@ -24,6 +24,7 @@ Index = NDArray[np.intp]
 # Below so many effective nodes a reading is predicted anew; the worst first, and no more than so
 # many, nor where a fit is dear.
 _FEW, _MOST, _MOST_LATENTS = 8.0, 4, 200
+_NODES = 64
 # Sd of a reading that says nothing, in sds of all that it can be.
 _NOTHING = 1e3
 
@@ -57,7 +58,7 @@ def _fewest(log_weights: Array) -> Index:
 def _without(model: Model, i: int, nothing: float, seed: int) -> LeaveOneOut:
     """Prediction (1,) of reading i by a fit without it; nothing: variance that says nothing."""
     cells, c = model.cells, model.cells.cell[i]
-    posterior = integrate(replace(model, cells=_less(cells, i, nothing)), seed)
+    posterior = integrate(replace(model, cells=_less(cells, i, nothing)), seed, _NODES)
     approx = posterior.evidence.approximation
     cavity = Pair(**{k: v[:, [c]] for k, v in vars(approx.cavity).items()})
     alone = _alone(cells, i)

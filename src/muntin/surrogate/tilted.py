@@ -130,6 +130,12 @@ class CellLikelihood:
         return self.ceiling if u.ndim == 2 else self.ceiling[..., None]
 
 
+def _average(w: Array, *factors: Array) -> Array:
+    """Average (S, C) of a product over the quadrature points."""
+    letters = ",".join(["scq"] * (1 + len(factors)))
+    return np.asarray(np.einsum(f"{letters}->sc", w, *factors))
+
+
 def _log_reading(residual: Array, variance: Array, censored: NDArray[np.intp]) -> Array:
     """Log density of a residual, or log probability that it lies on the censored side."""
     out = -0.5 * (residual**2 / variance + np.log(variance) + _LOG_2PI)
@@ -235,17 +241,18 @@ class Points:
         self.total = spared + self.loading**2 * self.s_var
         self.residual = lik.mean[:, None] - self.centre
         self.censored = lik.censored[:, None]
-        log_like = _log_reading(self.residual, self.total, self.censored) + lik.log_within(self.u)
-        log_cavity = -0.5 * (away**2 / cavity.uu[..., None] + np.log(cavity.uu)[..., None])
-        log_w = log_like + log_cavity + _LOG_WEIGHTS + np.log(spread)[..., None] - 0.5 * _LOG_2PI
+        log_w = _log_reading(self.residual, self.total, self.censored)
+        log_w -= 0.5 * away * away / cavity.uu[..., None]
+        constant = lik.log_within(self.u) - 0.5 * (np.log(cavity.uu) + _LOG_2PI)[..., None]
+        log_w += constant + np.log(spread)[..., None] + _LOG_WEIGHTS
         top = log_w.max(-1, keepdims=True)
-        w = np.exp(log_w - top)
-        mass = w.sum(-1, keepdims=True)
-        self.w = w / mass
+        self.w = np.exp(log_w - top)
+        mass = self.w.sum(-1, keepdims=True)
+        self.w /= mass
         self.log_z = (top + np.log(mass))[..., 0]
-        self.mean_u = (self.w * self.u).sum(-1)
-        variance = (self.w * (self.u - self.mean_u[..., None]) ** 2).sum(-1)
-        self.sd_u = np.sqrt(np.maximum(variance, 1e-16))
+        self.mean_u = _average(self.w, self.u)
+        away = self.u - self.mean_u[..., None]
+        self.sd_u = np.sqrt(np.maximum(_average(self.w, away, away), 1e-16))
 
     def put(self, chosen: NDArray[np.bool_], moved: Points) -> None:
         """Take over the points of `moved`, of one node, for the cells chosen (S, C)."""
@@ -258,23 +265,22 @@ class Points:
         gain = self.loading * self.s_var
         return self.s_mean + gain * pull.score, self.s_var - gain**2 * pull.precision
 
-    def moments(self, lik: CellLikelihood) -> Tilted:
-        """Tilted moments of the pairs."""
-        pull = pull_of(self.residual, self.total, self.censored)
-        s_given, v_given = self.scale_given(pull)
-        s = (self.w * s_given).sum(-1)
+    def pair(self) -> Pair:
+        """Mean and covariance (S, C) of the pairs."""
+        s_given, v_given = self.scale_given(pull_of(self.residual, self.total, self.censored))
+        s = _average(self.w, s_given)
         du, ds = self.u - self.mean_u[..., None], s_given - s[..., None]
-        pair = Pair(
-            u=self.mean_u,
-            s=s,
-            uu=self.sd_u**2,
-            us=(self.w * du * ds).sum(-1),
-            ss=(self.w * (ds**2 + v_given)).sum(-1),
-        )
-        wu = self.w * du
-        powers = (wu * du * du, wu * du * ds, wu * (ds**2 + v_given), self.w * ds)
-        third = [p.sum(-1) for p in powers[:3]]
-        third.append((powers[3] * (ds**2 + 3.0 * v_given)).sum(-1))
+        ss = _average(self.w, ds, ds) + _average(self.w, v_given)
+        return Pair(self.mean_u, s, self.sd_u**2, _average(self.w, du, ds), ss)
+
+    def moments(self, lik: CellLikelihood) -> Tilted:
+        """Tilted moments of the pairs, and slopes of the log normaliser."""
+        pull, pair = pull_of(self.residual, self.total, self.censored), self.pair()
+        s_given, v_given = self.scale_given(pull)
+        du, ds = self.u - pair.u[..., None], s_given - pair.s[..., None]
+        wu, ws = self.w * du, self.w * ds
+        powers = (wu * du * du, wu * du * ds, wu * (ds**2 + v_given), ws * (ds**2 + 3.0 * v_given))
+        third = [p.sum(-1) for p in powers]
         n, rv = lik.count[:, None], self.reading_variance
         # Slope of the log density in its variance, of the mean and of the spread about it.
         if self.censored.any():

@@ -35,6 +35,8 @@ from muntin.window.residuals import Together, correlation_matrix, residual_corre
 from muntin.window.window import Window, judge_window
 
 Array = NDArray[np.float64]
+# Of many conditions most are decided, and a few nodes tell which.
+_MANY, _SCOUTS, _SURE = 500, 16, 1e-6
 Surrogate = Literal["gp", "quadratic", "stacked"]
 
 
@@ -128,10 +130,9 @@ class Assessment:
 
     def kept(self, frame: pd.DataFrame) -> Array:
         """p_kept (n,): p_well averaged over settings spread evenly within kept_within."""
-        total = np.zeros(len(frame))
-        for weight, moved in self.settings(frame):
-            total += weight * self.judged(moved, "well")
-        return total
+        moved = [*self.settings(frame)]
+        every = self.judged(pd.concat([part for _, part in moved], ignore_index=True), "well")
+        return np.array([weight for weight, _ in moved]) @ every.reshape(len(moved), len(frame))
 
     def settings(self, frame: pd.DataFrame) -> Iterator[tuple[float, pd.DataFrame]]:
         """Weights and settings around conditions, spread evenly within kept_within."""
@@ -149,21 +150,39 @@ class Assessment:
         """Joint probability (n,) over the judged responses at a frame of valid conditions."""
         if by == "kept":
             return self.kept(frame)
-        predicted = self.predicted(frame)
         if by == "well":
-            return self._jointly(predicted, [p.met() for p in predicted.values()])
+            return self._by_well(frame)
         out = np.ones(len(frame))
-        for p in predicted.values():
+        for p in self.predicted(frame).values():
             out *= mean_meets(p.surface, p.moments, p.target)
         return out
 
-    def predicted(self, frame: pd.DataFrame) -> dict[str, Predicted]:
-        """What the judged responses may read at valid conditions; awaited ones left out."""
+    def _by_well(self, frame: pd.DataFrame) -> Array:
+        """Joint p_well (n,); where a few nodes are all but sure of a response, theirs stands."""
+        few = self.predicted(frame, _SCOUTS if len(frame) > _MANY else None)
+        met = [p.met() for p in few.values()]
+        if len(frame) <= _MANY:
+            return self._jointly(few, met)
+        out = np.prod(met, axis=0)
+        unsure = np.any([(p > _SURE) & (p < 1.0 - _SURE) for p in met], axis=0) & (out > _SURE)
+        if unsure.any():
+            every = self.predicted(frame[unsure])
+            out[unsure] = self._jointly(every, [p.met() for p in every.values()])
+        return out
+
+    def predicted(self, frame: pd.DataFrame, nodes: int | None = None) -> dict[str, Predicted]:
+        """What the judged responses may read at valid conditions; awaited ones left out.
+
+        nodes: on so many nodes at most, or on all.
+        """
         X, setting = code(self.study.definition, frame), setting_sd(self.study.definition, frame)
+        surfaces = self.surfaces
+        if nodes is not None:
+            surfaces = {name: surface.lightened(nodes) for name, surface in surfaces.items()}
         return {
-            r.name: Predicted.of(self.surfaces[r.name], X, target_of(r), setting)
+            r.name: Predicted.of(surfaces[r.name], X, target_of(r), setting)
             for r in self.study.definition.judged
-            if r.name in self.surfaces
+            if r.name in surfaces
         }
 
     def _jointly(self, predicted: Mapping[str, Predicted], met: list[Array]) -> Array:
