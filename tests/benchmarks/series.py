@@ -156,11 +156,11 @@ def play(
         view = assess(study_of(plates), surrogate, seed=seed)
         selection = select(view, wells, "edge", seed)
         chosen = selection.candidates.iloc[[p.candidate for p in selection.picks]]
-        plates.append(_read(process, chosen.to_numpy(dtype=float), errors[number], rng))
+        plates.append(read_plate(process, chosen.to_numpy(dtype=float), errors[number], rng))
         view = assess(study_of(plates), surrogate, seed=seed)
         _record(outcome, f"{sum(SERIES[: number + 1])} wells", view, truth)
     for number, (ph, salt) in enumerate(FACTORIALS if factorials else (), start=len(SERIES)):
-        plate = _read(process, _factorial(ph, salt), errors[number], rng)
+        plate = read_plate(process, factorial(ph, salt), errors[number], rng)
         name = f"factorial {ph * salt}"
         view = assess(study_of([plate]), surrogate, seed=seed)
         _record(outcome, name, view, truth)
@@ -168,14 +168,15 @@ def play(
     return outcome
 
 
-def _read(
+def read_plate(
     process: DrawnProcess, conditions: Array, error: float, rng: np.random.Generator
 ) -> pd.DataFrame:
+    """Read a plate at conditions (n, 2) with the relative error of the plate."""
     y = process.read(conditions, error, rng)
     return pd.DataFrame({"ph": conditions[:, 0], "salt": conditions[:, 1], "recovery": y})
 
 
-def _factorial(ph: int, salt: int) -> Array:
+def factorial(ph: int, salt: int) -> Array:
     """A full factorial on bench steps, from end to end of both ranges."""
     a = PH_LEVELS[np.round(np.linspace(0, len(PH_LEVELS) - 1, ph)).astype(int)]
     b = SALT_LEVELS[np.round(np.linspace(0, len(SALT_LEVELS) - 1, salt)).astype(int)]
