@@ -68,3 +68,25 @@ def test_without_pymc_the_command_says_what_to_install(study, monkeypatch):
     assert result.exit_code == 2
     assert result.stderr.startswith("engine: the engine nuts needs PyMC")
     assert "pip install 'muntin[nuts]'" in result.stderr
+
+
+def test_student_noise_reaches_the_sampler(study, monkeypatch):
+    seen = []
+
+    def noted(model, seed, settings, near=None):
+        seen.append(settings.noise)
+        return stand_in(model, seed, settings, near)
+
+    monkeypatch.setattr(nuts, "sample", noted)
+    arguments = ("--engine", "nuts", "--noise", "student", "--surrogate", "quadratic", "--json")
+    result = run("assess", study, *arguments)
+    assert result.exit_code == 0, result.output
+    assert json.loads(result.stdout)["settings"]["noise"] == "student"
+    assert seen == ["student"]
+
+
+def test_the_fast_engine_knows_normal_noise_only(study):
+    result = run("assess", study, "--noise", "student")
+    assert result.exit_code == 2
+    assert result.stdout == ""
+    assert "--noise student: only --engine nuts knows it" in result.stderr

@@ -11,11 +11,14 @@ from muntin.commands.shared import (
     Engine,
     EngineOption,
     Folder,
+    Noise,
+    NoiseOption,
     Output,
     Surrogate,
     SurrogateOption,
     Tell,
     command,
+    sampler,
 )
 
 At = Annotated[Path | None, typer.Option(metavar="TABLE", help="conditions, a column a factor")]
@@ -48,6 +51,7 @@ def assess(
     out: Out = None,
     surrogate: SurrogateOption = Surrogate.stacked,
     engine: EngineOption = Engine.fast,
+    noise: NoiseOption = Noise.normal,
     draws: Draws = None,
     influence: Influence = False,
     negligible: Negligible = None,
@@ -55,6 +59,7 @@ def assess(
     """Judge every condition of the range, or those of a table, and check the model."""
     from muntin.commands.conditions import (
         check_draws,
+        check_noise,
         check_out,
         known_at,
         read_conditions,
@@ -74,12 +79,18 @@ def assess(
         check_out(out, at, study.folder)
     if draws is not None:
         check_draws(draws, engine.value)
+    check_noise(noise.value, engine.value)
     bar = tell.fitting(engine)
-    view = judge(study, surrogate=surrogate.value, engine=engine.value, seed=seed, progress=bar)
+    view = judge(study, surrogate.value, sampler(engine, noise), seed, progress=bar)
     window = None if view.fresh else view.window()
     facts: dict[str, Any] = {
         "command": "assess",
-        "settings": {"surrogate": surrogate.value, "engine": engine.value, "seed": seed},
+        "settings": {
+            "surrogate": surrogate.value,
+            "engine": engine.value,
+            "noise": noise.value,
+            "seed": seed,
+        },
     }
     facts |= {"study": study_facts(study), **standing_facts(view, window)}
     known = None if conditions is None else known_at(view, conditions)

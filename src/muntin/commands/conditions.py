@@ -68,6 +68,13 @@ def check_draws(folder: Path, engine: str) -> None:
         raise StudyFaults([Fault(file=str(folder), problem="is a file, not a folder for draws")])
 
 
+def check_noise(noise: str, engine: str) -> None:
+    """Raise StudyFaults where a law of the noise is asked of an engine that has one only."""
+    if noise != "normal" and engine != "nuts":
+        problem = f"--noise {noise}: only --engine nuts knows it"
+        raise StudyFaults([Fault(file="muntin assess", problem=problem)])
+
+
 def known_at(view: Assessment, conditions: pd.DataFrame) -> pd.DataFrame:
     """Return the conditions with what is known there beside them."""
     known = view.at(conditions)

@@ -39,6 +39,13 @@ class Engine(StrEnum):
     nuts = "nuts"
 
 
+class Noise(StrEnum):
+    """The law of the readings' noise."""
+
+    normal = "normal"
+    student = "student"
+
+
 class Surrogate(StrEnum):
     """Which surrogate is fitted."""
 
@@ -55,6 +62,9 @@ SurrogateOption = Annotated[
 ]
 EngineOption = Annotated[
     Engine, typer.Option(help="approximate and fast, or the reference that samples (minutes)")
+]
+NoiseOption = Annotated[
+    Noise, typer.Option(help="with --engine nuts: student lets wild wells pull less")
 ]
 _COMMON: dict[str, Any] = {
     "seed": Annotated[int, typer.Option(min=0, help="same seed and input, same numbers")],
@@ -88,6 +98,15 @@ class Tell:
         own = self.bar and engine is Engine.nuts
         self("" if own else "fitting the readings")
         return own
+
+
+def sampler(engine: Engine, noise: Noise) -> Any:
+    """Return what `muntin.assess` takes as its engine."""
+    if noise is Noise.normal:
+        return engine.value
+    from muntin.surrogate.nuts import Nuts
+
+    return Nuts(noise="student")
 
 
 @dataclass(frozen=True)
