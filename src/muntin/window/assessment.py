@@ -12,12 +12,12 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
-from muntin.record.faults import Fault, StudyFaults, did_you_mean, quoted
 from muntin.record.responses import Response
 from muntin.record.study import Study
 from muntin.surrogate.fit import SURROGATES, Stack, fit_stack, prior_surface
 from muntin.surrogate.nodes import Surface, mixture
 from muntin.surrogate.nuts import Nuts
+from muntin.window.asked import asked_conditions
 from muntin.window.checks import Check, study_checks
 from muntin.window.coded import code, coding_of, priors_for, readings_of, setting_sd, shared_by
 from muntin.window.engine import Engine, inference_data_of, save_draws, settings_of
@@ -32,6 +32,7 @@ from muntin.window.probability import (
     process_quantile,
 )
 from muntin.window.residuals import Together, correlation_matrix, residual_correlations
+from muntin.window.settings import settings_around
 from muntin.window.window import Window, judge_window
 
 Array = NDArray[np.float64]
@@ -102,7 +103,7 @@ class Assessment:
         (Peterson 2004, 2008); in p_well the readings of one well go together as `together` has it.
         Raises StudyFaults where a factor is missing or a value cannot be coded.
         """
-        frame = _checked(self.study, conditions)
+        frame = asked_conditions(self.study, conditions)
         X = code(self.study.definition, frame)
         columns: dict[str, Array] = {}
         predicted = self.predicted(frame)
@@ -136,15 +137,7 @@ class Assessment:
 
     def settings(self, frame: pd.DataFrame) -> Iterator[tuple[float, pd.DataFrame]]:
         """Weights and settings around conditions, spread evenly within kept_within."""
-        factors = [f for f in self.study.definition.factors if f.kept_within is not None]
-        points, weights = _even_spread(len(factors))
-        for point, weight in zip(points, weights, strict=True):
-            moved = frame.copy()
-            for factor, u in zip(factors, point, strict=True):
-                x = frame[factor.name].to_numpy(dtype=float)
-                width = 0.0 if factor.kept_within is None else factor.kept_within.at(x)
-                moved[factor.name] = _inside(factor.scale, x, u * width)
-            yield float(weight), moved
+        return settings_around(self.study.definition, frame)
 
     def judged(self, frame: pd.DataFrame, by: Literal["mean", "well", "kept"]) -> Array:
         """Joint probability (n,) over the judged responses at a frame of valid conditions."""
@@ -196,7 +189,7 @@ class Assessment:
         Columns: response (its name), probability (that it is met, of the kind that the study is
         judged by) and fails ("low" or "high", the likelier way). Raises StudyFaults as `at` does.
         """
-        return limiting(self, _checked(self.study, conditions)).set_index(conditions.index)
+        return limiting(self, asked_conditions(self.study, conditions)).set_index(conditions.index)
 
     def influence(
         self,
@@ -282,59 +275,3 @@ def _prior(study: Study, response: Response, names: tuple[str, ...], seed: int) 
     priors = priors_for(study, response)
     every = [prior_surface(n, response.kind, columns, priors, counts, seed) for n in names]
     return mixture(every, np.full(len(names), 1.0 / len(names)))
-
-
-def _even_spread(factors: int) -> tuple[Array, Array]:
-    """Points (n, factors) of [-1, 1] and weights (n,).
-
-    Products of Gauss-Legendre rules, of three points to three factors and of two beyond.
-    """
-    x, w = np.polynomial.legendre.leggauss(3 if factors <= 3 else 2)
-    grids = np.meshgrid(*[x] * factors, indexing="ij")
-    weights = np.prod(np.meshgrid(*[w / 2.0] * factors, indexing="ij"), axis=0)
-    return np.stack([g.ravel() for g in grids], axis=1), weights.ravel()
-
-
-def _inside(scale: str, x: Array, shift: Array) -> Array:
-    """Settings x + shift; on a log scale never below a tenth of x."""
-    moved = x + shift
-    return np.maximum(moved, 0.1 * x) if scale == "log" else moved
-
-
-def _checked(study: Study, conditions: pd.DataFrame) -> pd.DataFrame:
-    """The factor columns of the conditions, every problem in one report."""
-    faults: list[Fault] = []
-    names = study.definition.factor_names
-    for factor in study.definition.factors:
-        if factor.name not in conditions:
-            hint = did_you_mean(factor.name, [str(c) for c in conditions.columns])
-            problem = "is missing"
-            faults.append(Fault(file="conditions", column=factor.name, problem=problem, hint=hint))
-            continue
-        for row, value in enumerate(conditions[factor.name], start=1):
-            problem = _value_problem(factor.choices, factor.scale, value)
-            if problem:
-                allowed = factor.range_text
-                faults.append(
-                    Fault(
-                        file="conditions",
-                        where=f"row {row}",
-                        column=factor.name,
-                        value=quoted(value),
-                        problem=problem,
-                        allowed=allowed,
-                    )
-                )
-    if faults:
-        raise StudyFaults(faults)
-    return conditions[list(names)].reset_index(drop=True)
-
-
-def _value_problem(choices: tuple[str, ...] | None, scale: str, value: object) -> str:
-    if choices is not None:
-        return "" if isinstance(value, str) and value in choices else "is not"
-    if not isinstance(value, int | float | np.integer | np.floating) or isinstance(value, bool):
-        return "is not a number in"
-    if not np.isfinite(value):
-        return "is not a number in"
-    return "lies at or below 0, outside" if scale == "log" and value <= 0 else ""
