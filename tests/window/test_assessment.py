@@ -133,10 +133,12 @@ def test_targets_between_add_up(view):
     np.testing.assert_allclose(below.at(ASKED)["p_mean"], 1.0 - whole["p_mean"], atol=1e-9)
 
 
-def test_per_cent_shows_the_users_unit(tmp_path, view):
+def test_per_cent_shows_the_users_unit(tmp_path):
     plates = [plate.assign(recovery=(100 * plate["recovery"]).round(6)) for plate in EARLIER]
+    plain = [plate.assign(recovery=plate["recovery"] / 100) for plate in plates]
     responses = [{**RECOVERY, "unit": "%", "at_least": 80}]
-    ours, theirs = assessed(tmp_path, plates, responses=responses).at(ASKED), view.at(ASKED)
+    ours = assessed(tmp_path / "ours", plates, responses=responses).at(ASKED)
+    theirs = assessed(tmp_path / "theirs", plain, responses=[RECOVERY]).at(ASKED)
     for name in ("mean", "low", "high"):
         np.testing.assert_allclose(
             ours[f"recovery_{name}"], 100 * theirs[f"recovery_{name}"], rtol=1e-6
