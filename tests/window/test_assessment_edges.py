@@ -62,3 +62,19 @@ def test_p_kept_over_three_tolerances(tmp_path):
         )
         exact += w[i] * w[j] * w[k] / 8.0 * view.judged(moved, "well")
     np.testing.assert_allclose(view.kept(edge), exact, atol=0.005)
+
+
+def test_p_kept_at_many_conditions_agrees_with_that_at_few(tmp_path):
+    factors = [{**PH, "step": 0.1, "kept_within": 0.2}, {**SALT, "step": 20, "kept_within": "10 %"}]
+    view = assessed(tmp_path, [read(spread(factors, 14))], "stacked", factors=factors)
+    grid, _ = judged_grid(view.study.definition)
+    assert len(grid) > 500
+    rows = slice(0, None, 2)
+    some = view.kept(grid[rows])
+    many = view.kept(grid)[rows]
+    np.testing.assert_allclose(many, some, atol=0.03)
+    near = np.abs(some - view.study.definition.required_probability) < 0.02
+    assert near.any()
+    np.testing.assert_allclose(many[near], some[near], atol=1e-5)
+    # What is kept differs from the well itself by more than that.
+    assert np.abs(some - view.judged(grid[rows], "well")).max() > 0.1

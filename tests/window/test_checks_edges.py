@@ -16,4 +16,5 @@ def test_readings_far_from_the_model_fail_without_a_warning(tmp_path):
 
 def test_a_plate_that_is_awaited_does_not_count(tmp_path):
     found, _ = checks(tmp_path, [SOUND[0], SOUND[1].assign(recovery="")], "quadratic")
-    assert found["plates"].sentence.startswith("One plate cannot")
+    assert "other plates" not in found
+    assert "which one plate cannot tell" in found["shared errors"].sentence

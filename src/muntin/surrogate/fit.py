@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -23,12 +23,13 @@ from muntin.surrogate.nuts import Nuts, resampled
 from muntin.surrogate.polynomial import Quadratic
 from muntin.surrogate.priors import Kind, Priors
 from muntin.surrogate.process import GaussianProcess
-from muntin.surrogate.refits import leave_one_out_of
+from muntin.surrogate.refits import leave_one_out_of, less, nothing
 from muntin.surrogate.skewness import skew_of
 from muntin.surrogate.stacking import stacking_shares
 from muntin.surrogate.wander import settled_wander
 
 Array = NDArray[np.float64]
+Index = NDArray[np.intp]
 _NEGLIGIBLE = 2e-3
 SURROGATES = ("gp", "quadratic")
 
@@ -93,10 +94,12 @@ def fit_surrogate(
     name: str, readings: Readings, kind: Kind, columns: Columns, priors: Priors, seed: int
 ) -> Fit:
     """Fit one surrogate; readings lie on the scale where noise is additive (ln y if positive)."""
-    link = link_of(kind)
-    model, start = settled_wander(
-        Model(family_of(name, columns, priors), collapse(readings), _engine_link(kind))
-    )
+    model = Model(family_of(name, columns, priors), collapse(readings), _engine_link(kind))
+    return _fitted(name, model, link_of(kind), seed)
+
+
+def _fitted(name: str, model: Model, link: Link, seed: int, start: Array | None = None) -> Fit:
+    model, start = settled_wander(model, start)
     posterior = integrate(model, seed, start=start)
     evidence, weights = posterior.evidence, np.exp(posterior.log_weights)
     return Fit(
@@ -133,6 +136,28 @@ def fit_stack(
         fits = tuple(resampled(fit, seed, engine) for fit in fits)
     shares = stacking_shares(np.stack([fit.loo.log_density for fit in fits]))
     return Stack(fits, shares, mixture([fit.surface for fit in fits], shares))
+
+
+def stack_without(stack: Stack, rows: Index, seed: int) -> Stack:
+    """The fits of all readings but those of some rows, by the fast engine, searched from the fits
+    of all; leave-one-out predictions are those of the readings left.
+    """
+    fits = tuple(_without(fit, rows, seed) for fit in stack.fits)
+    shares = stacking_shares(np.stack([fit.loo.log_density for fit in fits]))
+    return Stack(fits, shares, mixture([fit.surface for fit in fits], shares))
+
+
+def _without(fit: Fit, rows: Index, seed: int) -> Fit:
+    """The cells stay as they are; in those left empty stands a reading that says nothing."""
+    cells, posterior = fit.model.cells, fit.posterior
+    for i in rows:
+        cells = less(cells, int(i), nothing(fit.model, posterior))
+    start = np.exp(posterior.log_weights) @ posterior.eta
+    model = replace(fit.model, cells=cells)
+    found = _fitted(fit.name, model, fit.surface.link, seed, start)
+    left = np.setdiff1d(np.arange(len(cells.y)), rows)
+    loo = LeaveOneOut(**{name: values[left] for name, values in vars(found.loo).items()})
+    return replace(found, loo=loo)
 
 
 def prior_surface(

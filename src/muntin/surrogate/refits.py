@@ -24,7 +24,8 @@ Index = NDArray[np.intp]
 # Below so many effective nodes a reading is predicted anew; the worst first, and no more than so
 # many, nor where a fit is dear.
 _FEW, _MOST, _MOST_LATENTS = 8.0, 4, 200
-_NODES = 64
+# Nodes of a round of such a fit.
+_NODES = 128
 # Sd of a reading that says nothing, in sds of all that it can be.
 _NOTHING = 1e3
 
@@ -40,12 +41,20 @@ def leave_one_out_of(model: Model, posterior: Posterior, seed: int) -> LeaveOneO
     refitted = _fewest(log_w) if len(cells.X) <= _MOST_LATENTS else np.zeros(0, dtype=np.intp)
     if not len(refitted):
         return loo
-    widest = float(prior.max() + lik.noise.max()) if lik.link == "identity" else 1.0
-    anew = [_without(model, i, _NOTHING**2 * widest, seed) for i in refitted]
+    anew = [_without(model, i, nothing(model, posterior), seed) for i in refitted]
     out = {k: v.copy() for k, v in vars(loo).items()}
     for name, values in out.items():
         values[refitted] = [vars(one)[name][0] for one in anew]
     return LeaveOneOut(**out)
+
+
+def nothing(model: Model, posterior: Posterior) -> float:
+    """Variance of a reading that says nothing."""
+    evidence = posterior.evidence
+    if model.link != "identity":
+        return _NOTHING**2
+    noise = model.likelihood(evidence.theta).noise
+    return _NOTHING**2 * float(evidence.prior_variance(model.cells).max() + noise.max())
 
 
 def _fewest(log_weights: Array) -> Index:
@@ -58,7 +67,7 @@ def _fewest(log_weights: Array) -> Index:
 def _without(model: Model, i: int, nothing: float, seed: int) -> LeaveOneOut:
     """Prediction (1,) of reading i by a fit without it; nothing: variance that says nothing."""
     cells, c = model.cells, model.cells.cell[i]
-    posterior = integrate(replace(model, cells=_less(cells, i, nothing)), seed, _NODES)
+    posterior = integrate(replace(model, cells=less(cells, i, nothing)), seed, _NODES)
     approx = posterior.evidence.approximation
     cavity = Pair(**{k: v[:, [c]] for k, v in vars(approx.cavity).items()})
     alone = _alone(cells, i)
@@ -68,7 +77,7 @@ def _without(model: Model, i: int, nothing: float, seed: int) -> LeaveOneOut:
     return averaged(node_laws(alone, lik, cavity, tilted), posterior.log_weights[:, None])
 
 
-def _less(cells: Cells, i: int, nothing: float) -> Cells:
+def less(cells: Cells, i: int, nothing: float) -> Cells:
     """The cells without reading i; a cell left empty keeps one reading that says nothing."""
     c, y = cells.cell[i], cells.y[i]
     count, mean = cells.count.copy(), cells.mean.copy()

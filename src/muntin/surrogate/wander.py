@@ -20,14 +20,15 @@ Array = NDArray[np.float64]
 _PASSES = 2
 
 
-def settled_wander(model: Model) -> tuple[Model, Array | None]:
+def settled_wander(model: Model, start: Array | None = None) -> tuple[Model, Array | None]:
     """The model with the latent variance (C,) that setting errors give a reading of each cell, and
-    the mode eta (H,) of its last pass; the model itself and None where nothing was set with error.
+    the mode eta (H,) of its last pass; the model itself and the start where nothing was set with
+    error. start: a mode nearby (H,), whose model has a wander nearby, so that one pass is enough.
     """
     if not model.cells.setting.any():
-        return model, None
-    eta = None
-    for _ in range(_PASSES):
+        return model, start
+    eta = start
+    for _ in range(_PASSES if start is None else 1):
         eta, top = mode(model, eta)
         model = replace(model, wander=_wander(model, top))
     return model, eta

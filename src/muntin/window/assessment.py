@@ -38,6 +38,8 @@ from muntin.window.window import Window, judge_window
 Array = NDArray[np.float64]
 # Of many conditions most are decided, and a few nodes tell which.
 _MANY, _SCOUTS, _SURE = 500, 16, 1e-6
+# Nodes that tell what a tolerance takes from a probability, and how far they may be off.
+_FEW, _NEAR = 12, 0.03
 Surrogate = Literal["gp", "quadratic", "stacked"]
 
 
@@ -130,7 +132,22 @@ class Assessment:
         return pd.DataFrame(columns, index=conditions.index)
 
     def kept(self, frame: pd.DataFrame) -> Array:
-        """p_kept (n,): p_well averaged over settings spread evenly within kept_within."""
+        """p_kept (n,): p_well averaged over settings spread evenly within kept_within.
+
+        At many conditions a few nodes tell by how much it differs from p_well, which all tell;
+        conditions near the required probability get all nodes.
+        """
+        if len(frame) <= _MANY:
+            return self._spread(frame)
+        few = replace(self, surfaces={n: s.lightened(_FEW) for n, s in self.surfaces.items()})
+        away = few._spread(frame) - few.judged(frame, "well")
+        out = np.clip(self.judged(frame, "well") + away, 0.0, 1.0)
+        near = np.abs(out - self.study.definition.required_probability) < _NEAR
+        if near.any():
+            out[near] = self._spread(frame[near])
+        return out
+
+    def _spread(self, frame: pd.DataFrame) -> Array:
         moved = [*self.settings(frame)]
         every = self.judged(pd.concat([part for _, part in moved], ignore_index=True), "well")
         return np.array([weight for weight, _ in moved]) @ every.reshape(len(moved), len(frame))
@@ -152,15 +169,17 @@ class Assessment:
 
     def _by_well(self, frame: pd.DataFrame) -> Array:
         """Joint p_well (n,); where a few nodes are all but sure of a response, theirs stands."""
-        few = self.predicted(frame, _SCOUTS if len(frame) > _MANY else None)
+        nodes = max((len(s.weights) for s in self.surfaces.values()), default=0)
+        every = len(frame) <= _MANY or nodes <= _SCOUTS
+        few = self.predicted(frame, None if every else _SCOUTS)
         met = [p.met() for p in few.values()]
-        if len(frame) <= _MANY:
+        if every:
             return self._jointly(few, met)
         out = np.prod(met, axis=0)
         unsure = np.any([(p > _SURE) & (p < 1.0 - _SURE) for p in met], axis=0) & (out > _SURE)
         if unsure.any():
-            every = self.predicted(frame[unsure])
-            out[unsure] = self._jointly(every, [p.met() for p in every.values()])
+            all_nodes = self.predicted(frame[unsure])
+            out[unsure] = self._jointly(all_nodes, [p.met() for p in all_nodes.values()])
         return out
 
     def predicted(self, frame: pd.DataFrame, nodes: int | None = None) -> dict[str, Predicted]:

@@ -5,7 +5,7 @@ from __future__ import annotations
 from typing import TYPE_CHECKING
 
 from muntin.record.responses import Response
-from muntin.surrogate.fit import Stack
+from muntin.surrogate.fit import Stack, stack_without
 from muntin.window.checks.check import Check
 from muntin.window.checks.comparison import comparison
 from muntin.window.checks.confounding import confounding
@@ -17,7 +17,7 @@ from muntin.window.checks.prior_weight import prior_weight
 from muntin.window.checks.sampling import sampling
 from muntin.window.checks.shared_errors import shared_errors
 from muntin.window.checks.together import readings_together
-from muntin.window.checks.wild_wells import fit_without, wild_rows, wild_wells
+from muntin.window.checks.wild_wells import wild_rows, wild_wells
 
 if TYPE_CHECKING:
     from muntin.window.assessment import Assessment
@@ -38,7 +38,8 @@ def _response_checks(view: Assessment, response: Response, stack: Stack) -> list
     noise that it asks for.
     """
     wild = wild_rows(view, response, stack)
-    without = fit_without(view, response, stack, wild) if len(wild) else None
+    some = 0 < len(wild) < len(stack.fits[0].model.cells.y)
+    without = stack_without(stack, wild, view.seed) if some else None
     calm = without or stack
     return [
         *coverage(response, stack, calm),

@@ -9,9 +9,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 from muntin.record.responses import Response
-from muntin.surrogate.fit import Stack, fit_stack
+from muntin.surrogate.fit import Stack
 from muntin.window.checks.check import Check
-from muntin.window.coded import coding_of, priors_for, readings_of
 from muntin.window.grid import judged_grid
 
 if TYPE_CHECKING:
@@ -21,7 +20,8 @@ Array = NDArray[np.float64]
 Index = NDArray[np.intp]
 _WILD = 3.5
 _NAMED = 5
-_GRID = 500
+# Conditions judged; each many times over where factors are kept within a tolerance.
+_GRID, _GRID_KEPT = 500, 144
 
 
 def wild_wells(
@@ -57,17 +57,6 @@ def wild_rows(view: Assessment, response: Response, stack: Stack) -> Index:
     return np.flatnonzero(known & (np.abs(y - mean) > _WILD * np.sqrt(square)))
 
 
-def fit_without(view: Assessment, response: Response, stack: Stack, rows: Index) -> Stack | None:
-    """The fits of the other readings by the fast engine; None where no reading is left."""
-    study, every = view.study, readings_of(view.study, response)
-    rest = every.take(np.setdiff1d(np.arange(len(every)), rows))
-    if not len(rest):
-        return None
-    columns, priors = coding_of(study.definition).columns, priors_for(study, response)
-    names = [fit.name for fit in stack.fits]
-    return fit_stack(names, rest, response.kind, columns, priors, view.seed)
-
-
 def _change(view: Assessment, response: Response, without: Stack | None, count: int) -> str:
     """What the fits without the wild readings say of the window."""
     if not response.judged or without is None:
@@ -91,7 +80,7 @@ def _change(view: Assessment, response: Response, without: Stack | None, count: 
 def _standing(view: Assessment) -> tuple[float, float]:
     """Share of the range in the window, and the highest judged probability, on a coarse grid."""
     definition = view.study.definition
-    grid, _ = judged_grid(definition, _GRID)
+    grid, _ = judged_grid(definition, _GRID_KEPT if definition.judged_by == "kept" else _GRID)
     judged = view.judged(grid, definition.judged_by)
     return float((judged >= definition.required_probability).mean()), float(judged.max())
 
