@@ -117,6 +117,14 @@ def unsupported(every: list[Alarms]) -> bool:
     return met
 
 
+def told(every: list[Alarms]) -> None:
+    """Print the sentences of the checks that failed."""
+    for a in every:
+        for c in a.failed():
+            mark = "serious" if c.serious else "note"
+            print(f"{a.kind} {a.seed}, {a.design}: {mark}, {c.name}: {c.sentence}", flush=True)
+
+
 def main() -> None:
     """Print the tables; exit code 1 over budget."""
     parser = argparse.ArgumentParser(description=__doc__)
@@ -129,13 +137,12 @@ def main() -> None:
     given = parser.parse_args()
     seeds = range(given.first, given.first + given.processes)
     jobs = [(kind, seed, given.surrogate) for kind in given.kinds for seed in seeds]
+    every: list[Alarms] = []
     with ProcessPoolExecutor(given.workers) as pool:
-        every = [a for part in pool.map(play, *zip(*jobs, strict=True)) for a in part]
-    if given.sentences:
-        for a in every:
-            for c in a.failed():
-                mark = "serious" if c.serious else "note"
-                print(f"{a.kind} {a.seed}, {a.design}: {mark}, {c.name}: {c.sentence}")
+        for part in pool.map(play, *zip(*jobs, strict=True)):
+            every += part
+            if given.sentences:
+                told(part)
     table(every)
     sys.exit(int(not unsupported(every)))
 

@@ -12,6 +12,7 @@ from scipy.stats import binom
 import muntin
 from muntin.window.checks.coverage import coverage
 from muntin.window.checks.integration import integration
+from muntin.window.checks.wild_wells import wild_rows
 from tests.studies import (
     HCP,
     PH,
@@ -52,16 +53,16 @@ def test_sound_readings_pass(tmp_path, surrogate):
     assert [name for name, check in found.items() if not check.passed] == ["shared errors"]
     assert found["wild wells"].sentence == "Recovery: no wild wells."
     assert found["coverage"].sentence.endswith(
-        " of 24 readings lie in the 90 % range predicted from the others "
-        "(17 or more were to be expected)."
+        " of 24 readings lie in the 90 % range predicted from the others (17 or more expected)."
     )
     assert found["integration"].sentence.startswith(
-        "Recovery: averages over hyperparameters are reliable (effective nodes "
+        "Recovery: probabilities average over enough model settings (effective nodes "
     )
     assert view.window().unsupported == ()
 
 
 # Readings that scatter by 0.06 where the study is sure that they scatter by 0.01.
+NARROW = ": predictions are too sure; read more conditions, or state errors that wells share"
 SURE = {
     "noise_sd": {"median": 0.01, "log_sd": 0.1},
     "length_scale": {"median": 4.0, "log_sd": 0.1},
@@ -85,7 +86,7 @@ def test_readings_that_contradict_the_model_fail_coverage(tmp_path):
     assert hits < least
     assert coverage.sentence == (
         f"Recovery: {hits} of 24 readings lie in the 90 % range predicted from the others "
-        f"(too few: {least} or more were to be expected)."
+        f"({least} or more expected){NARROW}."
     )
     assert coverage.sentence in view.window().unsupported
 
@@ -119,6 +120,18 @@ def test_a_wild_well_is_named_and_kept(tmp_path, surrogate):
         check.sentence,
     )
     assert len(view.study.readings("recovery")) == 24
+
+
+@pytest.mark.parametrize(("sds", "pit", "wild"), [(4.0, 0.999, 0), (3.0, 1.0, 0), (4.0, 1.0, 1)])
+def test_a_wild_well_is_far_and_unlikely(sound_view, sds, pit, wild):
+    response, stack = sound_view.study.definition.responses[0], sound_view.stacks["recovery"]
+    (fit,) = stack.fits
+    y = sound_view.study.readings("recovery")["y"].to_numpy(dtype=float)
+    mean, transform = y.copy(), np.full(24, 0.5)
+    mean[5] -= sds * fit.loo.sd[5]
+    transform[5] = pit
+    odd = replace(stack, fits=(replace(fit, loo=replace(fit.loo, mean=mean, pit=transform)),))
+    assert list(wild_rows(sound_view, response, odd)) == [5] * wild
 
 
 def test_a_wild_well_that_is_excluded_is_gone(tmp_path):
@@ -157,8 +170,8 @@ def test_every_response_with_readings_is_checked(tmp_path):
 @pytest.mark.parametrize(
     ("count", "passed", "sentence"),
     [
-        (1, False, ", which one plate cannot tell; the prior speaks for p_well there."),
-        (2, False, ", which two of them hardly tell; the prior speaks for p_well there."),
+        (1, False, ", which one plate cannot tell; until there are 3 it rests on the prior."),
+        (2, False, ", which two of them hardly tell; until there are 3 it rests on the prior."),
         (3, True, " %)."),
     ],
 )
@@ -192,8 +205,14 @@ def test_averages_rest_on_enough_nodes(tmp_path, ess, k_hat, passed, shown):
     good, other = (replace(fit, ess=64.0, k_hat=-0.5) for fit in stack.fits)
     poor = replace(stack, fits=(good, replace(other, ess=ess, k_hat=k_hat)))
     (check,) = integration(study.definition.responses[0], poor)
-    verdict = "reliable" if passed else "unreliable: add readings or narrow the priors"
-    assert check.sentence == f"Recovery: averages over hyperparameters are {verdict} ({shown})."
+    verdict, advice = "average over enough", "."
+    if not passed:
+        verdict, advice = (
+            "rest on too few",
+            "; add readings, narrow the priors, or use --engine nuts.",
+        )
+    said = f"Recovery: probabilities {verdict} model settings ({shown}){advice}"
+    assert check.sentence == said
     assert check.passed == passed
     assert check.serious
 
@@ -222,7 +241,7 @@ def test_readings_far_closer_than_predicted_are_a_note(tmp_path):
     assert not coverage.serious
     assert coverage.sentence == (
         "Recovery: 24 of 24 readings lie in the 90 % range predicted from the others (17 or more "
-        "were to be expected); they lie closer to the predictions than these allow for."
+        "expected); they lie closer than predicted, so the window may be larger than shown."
     )
     assert coverage.sentence not in view.window().unsupported
 
@@ -232,17 +251,21 @@ def test_readings_far_closer_than_predicted_are_a_note(tmp_path):
     [
         (np.linspace(0.0, 1.0, 42)[1:-1], True, ""),
         (np.linspace(0.0, 1.0, 42)[1:-1] ** 0.4, True, "; most lie above what is predicted"),
-        (np.linspace(0.0, 1.0, 42)[1:-1] ** 2.5, True, "; most lie below what is predicted"),
+        (
+            np.linspace(0.0, 1.0, 42)[1:-1] ** 2.5,
+            True,
+            f"{NARROW}; most lie below what is predicted",
+        ),
         (
             np.r_[np.full(14, 0.06), np.full(14, 0.94), np.full(14, 0.5)],
             True,
-            "; too many lie far out, so predictions are too sure",
+            f"; too many lie far out{NARROW}",
         ),
         (np.full(7, 0.5), True, ""),
         (
             np.full(20, 0.5),
             False,
-            "; they lie closer to the predictions than these allow for",
+            "; they lie closer than predicted, so the window may be larger than shown",
         ),
     ],
 )
@@ -251,7 +274,7 @@ def test_transforms_that_lie_unevenly_are_told(sound_view, pit, serious, said):
     (fit,) = stack.fits
     odd = replace(stack, fits=(replace(fit, loo=replace(fit.loo, pit=pit)),))
     (check,) = coverage(response, odd, odd)
-    assert check.sentence.endswith(f" or more were to be expected){said}.")
+    assert check.sentence.endswith(f" or more expected){said}.")
     assert check.passed == (not said)
     assert check.serious == serious
 
@@ -265,7 +288,7 @@ def test_repeats_that_are_too_few_are_said(tmp_path):
     found, _ = checks(tmp_path, SOUND, "quadratic")
     assert found["lack of fit"].passed
     assert found["lack of fit"].sentence == (
-        "Recovery: too few repeats to tell lack of fit from noise (no repeat)."
+        "Recovery: too few repeats to tell lack of fit from noise (no repeat; 3 are enough)."
     )
 
 
@@ -278,9 +301,9 @@ def test_sizes_of_scatter_are_told_in_the_unit_of_the_readings(tmp_path):
         plates.append(both.assign(recovery=(100.0 * both["recovery"]).round(2)))
     response = {**RECOVERY, "unit": "%", "at_least": 80}
     found, _ = checks(tmp_path, plates, "quadratic", responses=[response])
-    assert found["lack of fit"].sentence.startswith(
-        "Recovery: the surface fits as closely as repeats allow (sd 1.4 % by 8 repeats, "
-    )
+    said = found["lack of fit"].sentence
+    assert said.startswith("Recovery: conditions scatter about the surface no more than repeats do")
+    assert said.endswith("; 8 repeats 1.4 %).")
 
 
 def test_the_better_surrogate_is_told_with_its_error(sound_view, tmp_path):

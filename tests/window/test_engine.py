@@ -64,7 +64,7 @@ def test_a_failed_sampling_withdraws_the_window(study, sampled, monkeypatch):
     assert [c.response for c in failed] == ["recovery", "hcp"]
     sentence = (
         "Recovery: for the quadratic 4 chains of 1000 draws cannot be relied on: 2 % of the draws "
-        "diverged; leave-one-out predictions are uncertain for 3 of 12 readings."
+        "diverged; predictions from the others are uncertain for 3 of 12 readings."
     )
     assert failed[0].sentence == sentence
     assert sentence in view.window().unsupported

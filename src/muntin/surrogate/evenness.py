@@ -41,5 +41,7 @@ def evenness(pit: Array, worth: float | None = None) -> Evenness:
 
 
 def worth_of(n: int, likeness: float) -> float:
-    """Independent readings that n are worth whose mean correlation is likeness (Kish 1965, 8.2)."""
+    """Independent readings that n are worth whose mean correlation is likeness (Kish 1965, section
+    8.2, cited from memory).
+    """
     return n / (1.0 + (n - 1.0) * min(max(likeness, 0.0), 1.0)) if n else 0.0

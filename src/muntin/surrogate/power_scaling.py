@@ -2,7 +2,8 @@
 
 Power-scaling (Kallioinen, Paananen, Buerkner & Vehtari 2024, Statistics and Computing 34:57): the
 prior or the likelihood is raised to a power alpha by reweighting, and the move of each quantity is
-measured by the cumulative Jensen-Shannon distance (Nguyen & Vreeken 2015).
+measured by the cumulative Jensen-Shannon distance (Nguyen & Vreeken 2015). Its normalisation, the
+threshold and the section numbers below are cited from memory.
 """
 
 from __future__ import annotations

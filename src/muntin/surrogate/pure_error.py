@@ -4,7 +4,7 @@ The likelihood of the readings is that of the cell means times that of the sprea
 posterior without the second factor says how much noise the surface needs to pass the means; under
 the model the sum of squares of the repeats over that variance is chi-square. For least squares with
 a flat prior on ln(noise) its lower tail, averaged over the posterior, is the tail of the F test of
-lack of fit (Montgomery, Design and Analysis of Experiments, section 11.2).
+lack of fit (Montgomery, Design and Analysis of Experiments, section 11.2, cited from memory).
 """
 
 from __future__ import annotations

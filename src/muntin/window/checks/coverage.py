@@ -14,6 +14,7 @@ Array = NDArray[np.float64]
 # Two-sided level 0.003 of a standard normal score, for each of the two scores.
 _UNEVEN = 3.0
 _FEWEST = 8
+_TOO_SURE = ": predictions are too sure; read more conditions, or state errors that wells share"
 
 
 def coverage(response: Response, stack: Stack, calm: Stack) -> list[Check]:
@@ -32,7 +33,7 @@ def coverage(response: Response, stack: Stack, calm: Stack) -> list[Check]:
     doubt, serious = _doubt(_transforms(calm), few)
     sentence = (
         f"{response.label}: {hits} of {n} readings lie in the 90 % range predicted from the "
-        f"others ({'too few: ' if few else ''}{least} or more were to be expected){doubt}."
+        f"others ({least} or more expected){_TOO_SURE if few else ''}{doubt}."
     )
     passed = not few and not doubt
     return [Check("coverage", passed, few or serious or not doubt, sentence, response.name)]
@@ -54,8 +55,8 @@ def _doubt(pit: Array, few: bool) -> tuple[str, bool]:
     if abs(found.side) > _UNEVEN:
         said.append(f"most lie {'above' if found.side > 0 else 'below'} what is predicted")
     if found.width > _UNEVEN and not few:
-        said.append("too many lie far out, so predictions are too sure")
+        said.append(f"too many lie far out{_TOO_SURE}")
     serious = bool(said)
     if found.width < -_UNEVEN:
-        said.append("they lie closer to the predictions than these allow for")
+        said.append("they lie closer than predicted, so the window may be larger than shown")
     return "".join(f"; {text}" for text in said), serious

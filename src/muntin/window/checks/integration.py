@@ -18,9 +18,11 @@ def integration(response: Response, stack: Stack) -> list[Check]:
     passed = all(
         f.ess >= _FEWEST and (f.k_hat < _HEAVY or f.ess >= _MANY_NODES) for f in stack.fits
     )
-    verdict = "reliable" if passed else "unreliable: add readings or narrow the priors"
-    sentence = (
-        f"{response.label}: averages over hyperparameters are {verdict} "
-        f"(effective nodes {ess:.0f}, Pareto k {max(k, 0.0):.2f})."
-    )
+    numbers = f"(effective nodes {ess:.0f}, Pareto k {max(k, 0.0):.2f})"
+    sentence = f"{response.label}: probabilities average over enough model settings {numbers}."
+    if not passed:
+        sentence = (
+            f"{response.label}: probabilities rest on too few model settings {numbers}; add "
+            "readings, narrow the priors, or use --engine nuts."
+        )
     return [Check("integration", passed, True, sentence, response.name)]

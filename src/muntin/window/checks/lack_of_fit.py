@@ -22,25 +22,28 @@ def lack_of_fit(response: Response, stack: Stack) -> list[Check]:
     """
     found = [pure_error(fit.model, fit.posterior) for fit in stack.fits]
     degrees = found[0].degrees
+    repeats = counted(degrees, "repeat") if degrees else "no repeat"
     if degrees < _FEWEST:
-        repeats = counted(degrees, "repeat") if degrees else "no repeat"
-        sentence = f"{response.label}: too few repeats to tell lack of fit from noise ({repeats})."
+        sentence = (
+            f"{response.label}: too few repeats to tell lack of fit from noise ({repeats}; "
+            f"{_FEWEST} are enough)."
+        )
         return [Check("lack of fit", True, True, sentence, response.name)]
     tail = float(stack.shares @ [f.tail for f in found])
     needed = float(np.exp(stack.shares @ np.log([f.needed for f in found])))
     passed = tail >= _LEVEL
     unit = _unit(response)
-    told = f"{_size(found[0].sd, unit)} by {counted(degrees, 'repeat')}, {_size(needed, unit)}"
+    sizes = f"sd {_size(needed, unit)}; {repeats} {_size(found[0].sd, unit)}"
     if passed:
         sentence = (
-            f"{response.label}: the surface fits as closely as repeats allow (sd {told} by the "
-            "conditions)."
+            f"{response.label}: conditions scatter about the surface no more than repeats do "
+            f"({sizes})."
         )
     else:
         sentence = (
-            f"{response.label}: conditions lie off the surface by more than repeats allow (sd "
-            f"{told} by the conditions); where each condition has a stock of its own, made a "
-            'little wrong, add a shared error by it that acts "inside".'
+            f"{response.label}: conditions scatter about the surface more than repeats do "
+            f"({sizes}); where each condition has its own stock, add a shared error by it that "
+            'acts "inside".'
         )
     return [Check("lack of fit", passed, True, sentence, response.name)]
 

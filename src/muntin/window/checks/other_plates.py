@@ -23,6 +23,7 @@ _UNEVEN = 3.0
 _SUSPECT = 2.0
 # A plate of which the others tell less than this share of the readings is not judged.
 _COMMON = 0.5
+_DO = "; repeat earlier conditions on the next plate"
 
 
 @dataclass(frozen=True)
@@ -53,10 +54,16 @@ def other_plates(study: Study, response: Response, stack: Stack, seed: int) -> l
     found = [_plate(str(p), stack, np.flatnonzero(names == p), seed) for p in plates]
     limit = _limit(len(found))
     off = [plate for plate in found if abs(plate.z) > limit]
+    if len(found) == 2 and off:
+        # Each of two is off where the other is; the surer of the two differences is told.
+        off = [max(off, key=lambda plate: abs(plate.z))]
     pit = np.concatenate([plate.pit for plate in found])
     hits = int(_inside(pit).sum())
     if not len(pit):
-        sentence = f"{response.label}: the plates have too little in common to predict one another."
+        sentence = (
+            f"{response.label}: the plates have too little in common to check one by the others; "
+            "bridging wells would tell."
+        )
         return [Check("other plates", True, True, sentence, response.name)]
     others = "plate" if len(found) == 2 else "plates"
     told = f"{hits} of {len(pit)} readings lie in the 90 % range predicted from the other {others}"
@@ -134,7 +141,7 @@ def _uneven(pit: Array, worth: float, told: str) -> str:
     least = binom.ppf(0.005, independent, 0.9) / independent
     if len(pit) and _inside(pit).mean() < least:
         few = int(np.ceil(least * len(pit)))
-        return f"{told} (too few: {few} or more were to be expected)"
+        return f"{told} ({few} or more expected): plates differ by more than is said{_DO}"
     if evenness(pit, worth).width > _UNEVEN:
-        return f"{told}, but too many lie far out, so predictions of a new plate are too sure"
+        return f"{told}, but too many lie far out: plates differ by more than is said{_DO}"
     return ""

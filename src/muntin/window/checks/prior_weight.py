@@ -71,9 +71,10 @@ def prior_weight(view: Assessment, response: Response, stack: Stack) -> list[Che
     move = _move(view, response, stack)
     sentence = (
         f"{response.label}: the readings do not contradict the priors; a quarter more or less "
-        f"weight on them moves the window by {_points(move)} of the range."
+        f"weight on them moves the window by {_points(move)} of the range"
     )
     passed = move <= _MOVES
+    sentence += "." if passed else ", so it rests on them; more readings would settle it."
     return [Check("priors", passed, passed, sentence, response.name)]
 
 

@@ -17,7 +17,7 @@ def sampling(response: Response, stack: Stack) -> list[Check]:
             told = f"{response.label}: for {_NAMES[fit.name]} {fit.sampling.sentence}"
             if heavy := fit.sampling.unreliable:
                 of = f"{heavy} of {len(fit.sampling.pareto_k)}"
-                told += f"; leave-one-out predictions are uncertain for {of} readings"
+                told += f"; predictions from the others are uncertain for {of} readings"
             told += "."
             found.append(Check("sampling", fit.sampling.passed, True, told, response.name))
     return found

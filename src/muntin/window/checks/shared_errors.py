@@ -45,7 +45,7 @@ def _told(
     if groups >= _ENOUGH:
         return text
     few = f"one {group} cannot" if groups == 1 else "two of them hardly"
-    return f"{text}, which {few} tell; the prior speaks for p_well there"
+    return f"{text}, which {few} tell; until there are {_ENOUGH} it rests on the prior"
 
 
 def _unit(response: Response, acts: str) -> tuple[float, str]:

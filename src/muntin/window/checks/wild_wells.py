@@ -27,7 +27,7 @@ _GRID, _GRID_KEPT = 500, 144
 def wild_wells(
     view: Assessment, response: Response, wild: Index, without: Stack | None
 ) -> list[Check]:
-    """Readings more than 3.5 predictive sds from what the others say; named, never excluded.
+    """Readings more than 3.5 sds from what the others predict; named, never excluded.
 
     wild: their rows; without: the fits without them, which say what excluding them would change.
     """
@@ -46,15 +46,22 @@ def wild_wells(
 
 
 def wild_rows(view: Assessment, response: Response, stack: Stack) -> Index:
-    """Rows (n,) of the wild readings; a censored one has no place and is none."""
+    """Rows (n,) of the wild readings; a censored one has no place and is none.
+
+    Wild is what lies far off in predictive sds and is as unlikely as that for a normal law: the
+    predictive law of few readings has heavier tails, in which sound ones lie.
+    """
+    from scipy.special import ndtri
+
     readings = view.study.readings(response.name)
     y = readings["y"].to_numpy(dtype=float)
     y = np.log(y) if response.kind == "positive" else y
     loos = [fit.loo for fit in stack.fits]
     mean = stack.shares @ np.stack([loo.mean for loo in loos])
     square = stack.shares @ np.stack([loo.sd**2 + (loo.mean - mean) ** 2 for loo in loos])
-    known = np.isfinite(np.stack([loo.pit for loo in loos])).all(axis=0)
-    return np.flatnonzero(known & (np.abs(y - mean) > _WILD * np.sqrt(square)))
+    pit = stack.shares @ np.stack([loo.pit for loo in loos])
+    z, score = (y - mean) / np.sqrt(square), ndtri(np.clip(pit, 1e-12, 1.0 - 1e-12))
+    return np.flatnonzero(np.minimum(np.abs(z), np.abs(score)) > _WILD)
 
 
 def _change(view: Assessment, response: Response, without: Stack | None, count: int) -> str:
@@ -69,9 +76,10 @@ def _change(view: Assessment, response: Response, without: Stack | None, count: 
     (share, best), (new_share, new_best) = _standing(view), _standing(other)
     it = "it" if count == 1 else "them"
     if share or new_share:
-        change = (
-            f"the window would be {_percent(new_share)} of the range instead of {_percent(share)}"
-        )
+        new, now = _percent(new_share), _percent(share)
+        change = f"the window would be {new} of the range instead of {now}"
+        if new == now:
+            change = f"the window stays {now} of the range"
     else:
         change = f"the best condition would have {new_best:.2f} instead of {best:.2f}"
     return f" (without {it} {change})"
