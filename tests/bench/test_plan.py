@@ -339,8 +339,7 @@ def test_two_responses(tmp_path):
     plan = muntin.propose(view, wells=6, aim="both")
     rows = conditions(plan)
     table = view.at(rows)
-    product = table["recovery_p_well"] * table["hcp_p_well"]
-    np.testing.assert_allclose(rows["p_now"], product, rtol=1e-9)
+    np.testing.assert_allclose(rows["p_now"], table["p_well"], rtol=1e-9)
     assert plan.forecast["wrong_share"].is_monotonic_decreasing
 
 

@@ -10,16 +10,15 @@ import pytest
 from scipy.special import expit, log_ndtr, logsumexp, ndtr
 
 from muntin.surrogate import refits
+from muntin.surrogate.assembly import nodes_of
 from muntin.surrogate.cells import Readings
 from muntin.surrogate.coding import Columns
 from muntin.surrogate.evidence import evaluate
-from muntin.surrogate.fit import fit_surrogate
 from muntin.surrogate.hyperparameters import integrate
 from muntin.surrogate.loo import leave_one_out
 from muntin.surrogate.refits import leave_one_out_of
 from tests.studies import PH, SALT, read, spread
-from tests.surrogate.problems import COLUMNS as MIXED
-from tests.surrogate.problems import model_of, priors, readings
+from tests.surrogate.problems import model_of, readings
 
 Z = np.linspace(-7.0, 7.0, 701)
 LOG_W = -0.5 * Z**2 - np.log(np.exp(-0.5 * Z**2).sum())
@@ -42,7 +41,7 @@ def without(data, i, seed=1):
     """Log density, mean and transform of reading i by a fit to the others."""
     rest = data.take(np.delete(np.arange(len(data)), i))
     model = model_of("quadratic", rest, columns=COLUMNS)
-    posterior = integrate(model, seed)
+    posterior = integrate(model, seed, refits._NODES)
     theta, a = posterior.evidence.theta, posterior.evidence.approximation
     layout, family = model.layout, model.family
     lik, p = model.likelihood(theta), len(family.terms)
@@ -134,7 +133,7 @@ def test_a_refit_of_any_reading_is_the_fit_without_it(all_refitted):
     for i in (0, 1):
         rest = data.take(np.delete(np.arange(len(data)), i))
         fewer = model_of("quadratic", rest, columns=COLUMNS)
-        nodes = integrate(fewer, 1)
+        nodes = integrate(fewer, 1, refits._NODES)
         ratio = evaluate(model, nodes.evidence.theta).log - nodes.evidence.log
         expected = logsumexp(ratio + nodes.log_weights)
         assert loo.log_density[i] == pytest.approx(expected, abs=3e-3)
@@ -147,10 +146,13 @@ def test_the_identity_link_is_refitted_alike(all_refitted):
     loo = leave_one_out_of(model, integrate(model, 1), 1)
     for i in range(len(data)):
         rest = data.take(np.delete(np.arange(len(data)), i))
-        fit = fit_surrogate("quadratic", rest, "real", MIXED, priors("real"), 1)
-        surface, (mean, variance) = fit.surface, fit.surface.moments(data.X[[i]])
-        mean, weights = mean[:, 0], surface.weights
-        sd = np.sqrt(variance[:, 0] + surface.errors.noise**2 + data.sd[i] ** 2)
+        fewer = model_of("quadratic", rest, "real")
+        posterior = integrate(fewer, 1, refits._NODES)
+        evidence, approx = posterior.evidence, posterior.evidence.approximation
+        nodes = nodes_of(fewer, evidence.theta, evidence.root, approx.mean, approx.V)
+        mean, variance = nodes.moments(data.X[[i]])
+        mean, weights = mean[:, 0], np.exp(posterior.log_weights)
+        sd = np.sqrt(variance[:, 0] + nodes.errors.noise**2 + data.sd[i] ** 2)
         z = (data.y[i] - mean) / sd
         assert loo.mean[i] == pytest.approx(weights @ mean, abs=1e-3)
         assert loo.pit[i] == pytest.approx(weights @ ndtr(z), abs=1e-3)

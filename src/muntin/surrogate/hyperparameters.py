@@ -13,6 +13,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from muntin.surrogate.evidence import Evidence, Model, evaluate, joined, slope
+from muntin.surrogate.layout import Layout
 from muntin.surrogate.pareto import tail_shape
 
 Array = NDArray[np.float64]
@@ -20,6 +21,8 @@ _DEGREES = 6.0
 _BOUND = 4.0
 _ROUNDS = 5
 _STEP = 0.05
+# How far from the mode the fall along the last coordinate is looked at, in sds of its prior.
+_AFAR = np.array([-3.5, -2.5, -1.5, -0.7, 0.4, 0.8])
 # Up to so many latent values: nodes of a round, effective nodes that are enough, and plenty.
 _EFFORT = ((40, 128, 90.0, 110.0), (200, 64, 26.0, 64.0))
 _LEAST_EFFORT = (32, 13.0, 32.0)
@@ -27,30 +30,57 @@ _LEAST_EFFORT = (32, 13.0, 32.0)
 
 @dataclass(frozen=True)
 class Proposal:
-    """Multivariate t with _DEGREES degrees of freedom: centre (H,) and root A (H, H), eta space."""
+    """Multivariate split t with _DEGREES degrees of freedom, eta space.
+
+    centre (H,); root (H, H) of the covariance of the coordinates in `order`; the last of them has
+    another scale to the left than to the right of the centre, in sds that root gives it (the
+    two-piece law of Geweke 1989, section 4).
+    """
 
     centre: Array
+    order: NDArray[np.intp]
     root: Array
+    left: float = 1.0
+    right: float = 1.0
+
+    @property
+    def covariance(self) -> Array:
+        """Covariance (H, H) without the split."""
+        back = np.argsort(self.order)
+        return (self.root @ self.root.T)[np.ix_(back, back)]
 
     def draw(self, points: Array) -> Array:
         """Points (n, H + 1) of the unit cube to draws eta (n, H)."""
         from scipy.special import chdtri, ndtri
 
         inside = np.clip(points, 1e-9, 1.0 - 1e-9)
-        chi2 = chdtri(_DEGREES, inside[:, -1:])
-        return self.centre + ndtri(inside[:, :-1]) * np.sqrt(_DEGREES / chi2) @ self.root.T
+        chi2, u, share = chdtri(_DEGREES, inside[:, -1:]), inside[:, -2], self._share
+        below, above = u / (2.0 * share), 0.5 + (u - share) / (2.0 * (1.0 - share))
+        split = ndtri(np.where(u < share, below, above)) * np.where(
+            u < share, self.left, self.right
+        )
+        z = np.column_stack([ndtri(inside[:, :-2]), split]) * np.sqrt(_DEGREES / chi2)
+        eta = np.empty_like(z)
+        eta[:, self.order] = z @ self.root.T
+        return self.centre + eta
 
     def log_density(self, eta: Array) -> Array:
         """Log density (n,) at eta (n, H)."""
         from scipy.special import gammaln
 
         h = len(self.centre)
-        z = np.linalg.solve(self.root, (eta - self.centre).T)
+        z = np.linalg.solve(self.root, (eta - self.centre)[:, self.order].T)
+        z[-1] /= np.where(z[-1] < 0.0, self.left, self.right)
         norm = (
             gammaln((_DEGREES + h) / 2) - gammaln(_DEGREES / 2) - h / 2 * np.log(_DEGREES * np.pi)
         )
-        log_det = np.log(np.abs(np.diagonal(self.root))).sum()
+        log_det = np.log(np.diagonal(self.root)).sum() + np.log((self.left + self.right) / 2.0)
         return norm - log_det - (_DEGREES + h) / 2 * np.log1p((z * z).sum(0) / _DEGREES)
+
+    @property
+    def _share(self) -> float:
+        """Mass to the left of the centre."""
+        return self.left / (self.left + self.right)
 
 
 @dataclass(frozen=True)
@@ -101,26 +131,56 @@ def mode(model: Model, start: Array | None = None) -> tuple[Array, Evidence]:
 
 
 def _at_mode(model: Model, eta: Array, top: Evidence) -> Proposal:
-    """The proposal whose root follows from the curvature of the log posterior at its mode."""
+    """The proposal whose root follows from the curvature of the log posterior at its mode, and
+    whose split from how the log posterior falls off along the last coordinate.
+    """
     layout, h = model.layout, len(eta)
+    order = _order(layout)
+    along = np.eye(h)[order[-1]]
     around = np.concatenate([eta + _STEP * np.eye(h), eta - _STEP * np.eye(h)])
-    evidence = evaluate(model, layout.theta(around), top)
-    gradients = slope(model, evidence) * layout.log_sd - around
+    afar = eta + np.outer(_AFAR, along)
+    evidence = evaluate(model, layout.theta(np.concatenate([around, afar])), top)
+    gradients = slope(model, evidence)[: 2 * h] * layout.log_sd - around
     hessian = -(gradients[:h] - gradients[h:]) / (2.0 * _STEP)
     values, vectors = np.linalg.eigh((hessian + hessian.T) / 2.0)
     # No direction is wider than the prior, nor so narrow that rounding decides.
     sd = 1.0 / np.sqrt(np.clip(values, 0.7, 1e8))
-    return Proposal(eta, np.linalg.cholesky(vectors * sd**2 @ vectors.T))
+    root = np.linalg.cholesky((vectors * sd**2 @ vectors.T)[np.ix_(order, order)])
+    if not layout.ceiling:
+        return Proposal(eta, order, root)
+    height = top.log[0] + log_prior(eta[None])[0]
+    fall = np.maximum(height - evidence.log[2 * h :] - log_prior(afar), 1e-3)
+    # The sd of a Gaussian that falls off as far at that distance.
+    wide = np.abs(_AFAR) / np.sqrt(2.0 * fall) / root[-1, -1]
+    left, right = (float(np.max(wide[side], initial=1.0)) for side in (_AFAR < 0.0, _AFAR > 0.0))
+    return Proposal(eta, order, root, left, right)
+
+
+def _order(layout: Layout) -> NDArray[np.intp]:
+    """The coordinates with the gap of the ceiling, where there is one, last: far below what the
+    readings tell apart its posterior is the prior's, which makes a long tail.
+    """
+    h, gap = len(layout), 1 + layout.inside + layout.scale
+    every = np.arange(h)
+    return np.append(np.delete(every, gap), gap) if layout.ceiling else every
 
 
 def _refitted(eta: Array, weights: Array, last: Proposal) -> Proposal:
-    """A proposal with the weighted mean and covariance, held to the last one's by its weight."""
-    centre = weights @ eta
+    """A proposal with the weighted mean, covariance and split, held to the last one's by its
+    weight.
+    """
+    centre, order = weights @ eta, last.order
     away = eta - centre
     ess = 1.0 / (weights**2).sum()
     trust = ess / (ess + 2.0 * eta.shape[1])
-    covariance = trust * (away.T * weights) @ away + (1.0 - trust) * last.root @ last.root.T
-    return Proposal(centre, np.linalg.cholesky(covariance))
+    covariance = trust * (away.T * weights) @ away + (1.0 - trust) * last.covariance
+    root = np.linalg.cholesky(covariance[np.ix_(order, order)])
+    if last.left == last.right:
+        return Proposal(centre, order, root)
+    z = np.linalg.solve(root, away[:, order].T)[-1]
+    sides = [side * weights for side in (z < 0.0, z >= 0.0)]
+    left, right = (float(np.sqrt((w @ z**2) / max(w.sum(), 1e-9))) for w in sides)
+    return Proposal(centre, order, root, max(left, 0.5), max(right, 0.5))
 
 
 def effort(latents: int) -> tuple[int, float, float]:
