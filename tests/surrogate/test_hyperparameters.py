@@ -1,9 +1,13 @@
+from dataclasses import replace
+
 import numpy as np
 import pytest
 from scipy.stats import multivariate_t, norm
 from scipy.stats.qmc import Sobol
 
 from muntin.surrogate import hyperparameters
+from muntin.surrogate.cells import Readings
+from muntin.surrogate.coding import Columns
 from muntin.surrogate.evidence import slope
 from muntin.surrogate.hyperparameters import Proposal, integrate, log_prior, mode
 from tests.surrogate.problems import model_of, readings, settled
@@ -17,7 +21,7 @@ def proposal():
     rng = np.random.default_rng(1)
     root = np.tril(rng.normal(size=(4, 4)))
     np.fill_diagonal(root, rng.uniform(0.3, 1.5, 4))
-    return Proposal(rng.normal(size=4), root)
+    return Proposal(rng.normal(size=4), np.array([2, 0, 3, 1]), root)
 
 
 def test_the_prior_is_standard_normal():
@@ -27,20 +31,62 @@ def test_the_prior_is_standard_normal():
 
 def test_the_proposals_density_is_the_multivariate_t(proposal):
     eta = np.random.default_rng(3).normal(0.0, 3.0, (7, 4))
-    law = multivariate_t(proposal.centre, proposal.root @ proposal.root.T, df=DEGREES)
+    law = multivariate_t(proposal.centre, proposal.covariance, df=DEGREES)
     assert proposal.log_density(eta) == pytest.approx(law.logpdf(eta), rel=1e-10)
 
 
 def test_the_proposals_draws_have_its_moments(proposal):
     n = 2**14
     draws = proposal.draw(Sobol(5, rng=np.random.default_rng(4)).random(n))
-    covariance = DEGREES / (DEGREES - 2.0) * proposal.root @ proposal.root.T
+    covariance = DEGREES / (DEGREES - 2.0) * proposal.covariance
     sd = np.sqrt(np.diag(covariance))
     # Plain Monte Carlo errors: sd / sqrt(n) of a mean; of a variance of this t, kurtosis 6, about
     # sqrt(5 / n). Sobol' points do better, so 3 of them are ample.
     assert (draws.mean(0) - proposal.centre) / sd == pytest.approx(np.zeros(4), abs=3 / n**0.5)
     correlation = (np.cov(draws.T) - covariance) / np.outer(sd, sd)
     assert correlation == pytest.approx(np.zeros((4, 4)), abs=3 * (5 / n) ** 0.5)
+
+
+def test_the_covariance_is_that_of_the_coordinates_in_order(proposal):
+    assert proposal.covariance[np.ix_(proposal.order, proposal.order)] == pytest.approx(
+        proposal.root @ proposal.root.T
+    )
+
+
+def test_a_split_proposal_is_a_law_and_draws_follow_it(proposal):
+    """Reweighted to the law without a split, its draws have that law's mass and moments; its last
+    coordinate lies on either side as often as its scales say.
+    """
+    n, split = 2**14, replace(proposal, left=2.5, right=0.7)
+    draws = split.draw(Sobol(5, rng=np.random.default_rng(5)).random(n))
+    weights = np.exp(proposal.log_density(draws) - split.log_density(draws)) / n
+    assert weights.sum() == pytest.approx(1.0, abs=0.02)
+    sd = np.sqrt(np.diag(proposal.covariance) * DEGREES / (DEGREES - 2.0))
+    mean = weights @ (draws - proposal.centre) / sd
+    assert mean == pytest.approx(np.zeros(4), abs=0.03)
+    z = np.linalg.solve(split.root, (draws - split.centre)[:, split.order].T)[-1]
+    assert (z < 0.0).mean() == pytest.approx(2.5 / 3.2, abs=0.01)
+    back = split.log_density(split.centre[None])
+    assert proposal.log_density(split.centre[None]) - back == pytest.approx(np.log(1.6))
+
+
+def test_the_split_finds_the_long_tail_of_a_gap():
+    """A plateau at 0.9: gaps far smaller than 0.1 are told apart by the prior alone."""
+    rng = np.random.default_rng(6)
+    x = np.linspace(-1.0, 1.0, 16)
+    y = 0.9 / (1.0 + np.exp(-1.0 - 4.0 * x)) + 0.02 * rng.normal(size=16)
+    data = Readings(X=x[:, None], y=y, sd=np.zeros(16), scale=(np.arange(16) // 8,))
+    model = model_of("quadratic", data, columns=Columns.plain(1))
+    eta, top = mode(model)
+    found = hyperparameters._at_mode(model, eta, top)
+    gap = model.layout.names.index("ceiling_gap")
+    assert found.order[-1] == gap
+    assert found.left > 1.5 * found.right
+    # Far more nodes of another seed agree on how much of the tail there is.
+    few, many = integrate(model, 1, 128), integrate(model, 2, 1024)
+    below = [np.exp(p.log_weights) @ (p.eta[:, gap] < eta[gap] - 1.0) for p in (few, many)]
+    assert below[1] > 0.05
+    assert below[0] == pytest.approx(below[1], abs=0.08)
 
 
 @NAMES
