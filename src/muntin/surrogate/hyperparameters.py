@@ -209,7 +209,7 @@ def integrate(
     )
     eta0, top = mode(model, start)
     proposals = [_at_mode(model, eta0, top)]
-    every, evidence = np.zeros((0, len(layout))), top
+    every, evidence, again = np.zeros((0, len(layout))), top, False
     for number in range(_ROUNDS):
         sobol = Sobol(len(layout) + 1, rng=np.random.default_rng((seed, number)))
         points = sobol.random(nodes)
@@ -225,6 +225,11 @@ def integrate(
         # The shape of so short a tail is itself uncertain; many effective nodes outweigh it.
         if ess >= plenty or (ess >= enough and k_hat < 0.7):
             break
-        proposals.append(_refitted(every, weights, proposals[-1]))
+        if not again and ess < len(layout):
+            # So few nodes carry the weight where a second, heavier mode lies beside the first.
+            again = True
+            proposals.append(_at_mode(model, *mode(model, every[np.argmax(log_w)])))
+        else:
+            proposals.append(_refitted(every, weights, proposals[-1]))
     marginal = log_sum - float(np.log(len(log_w)))
     return Posterior(evidence, every, log_w - log_sum, marginal, ess, k_hat)
