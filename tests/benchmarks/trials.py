@@ -99,7 +99,7 @@ def both_errors() -> Trial:
     moved = X + np.column_stack([0.05 * rng.standard_normal(stock.max() + 1)[stock], np.zeros(30)])
     y = elution(draw("mixed mode", rng), moved, plate, rng)
     readings = Readings(X=X, y=y, sd=np.zeros(30), inside=(stock,), scale=(plate,))
-    return fraction("inside and scale errors", readings)
+    return fraction("inside and scale errors", readings, surrogates=("gp",))
 
 
 def real() -> Trial:
@@ -110,7 +110,15 @@ def real() -> Trial:
     y = f + 0.1 * rng.standard_normal(3)[plate] + 0.1 * rng.standard_normal(24)
     readings = Readings(X=X, y=y, sd=np.zeros(24), inside=(plate,))
     priors = priors_of("real", (-3.0, 4.0))
-    return Trial(name="real", kind="real", readings=readings, target=1.5, priors=priors, grid=GRID)
+    return Trial(
+        name="real",
+        kind="real",
+        readings=readings,
+        target=1.5,
+        priors=priors,
+        grid=GRID,
+        surrogates=("gp",),
+    )
 
 
 def positive() -> Trial:
@@ -122,7 +130,13 @@ def positive() -> Trial:
     readings = Readings(X=X, y=y, sd=np.zeros(24), inside=(plate,))
     priors = priors_of("positive", (1.0, 30.0))
     return Trial(
-        name="positive", kind="positive", readings=readings, target=6.0, priors=priors, grid=GRID
+        name="positive",
+        kind="positive",
+        readings=readings,
+        target=6.0,
+        priors=priors,
+        grid=GRID,
+        surrogates=("quadratic",),
     )
 
 
@@ -144,6 +158,7 @@ def choices() -> Trial:
         Readings(X=coding.code([*X.T, resin]), y=y, sd=np.zeros(36), scale=(plate,)),
         grid=coding.code(list(every.T)),
         columns=coding.columns,
+        surrogates=("gp",),
     )
 
 
@@ -153,7 +168,11 @@ def own_sd() -> Trial:
     X, plate = spread(24, rng), plates_of(24, 2)
     sd = rng.choice([0.0, 0.02, 0.05, 0.1], 24)
     y = elution(draw("elution", rng), X, plate, rng, sd)
-    return fraction("uncertainty of each reading", Readings(X=X, y=y, sd=sd, scale=(plate,)))
+    return fraction(
+        "uncertainty of each reading",
+        Readings(X=X, y=y, sd=sd, scale=(plate,)),
+        surrogates=("quadratic",),
+    )
 
 
 def few_wells() -> Trial:
@@ -169,7 +188,11 @@ def near_ceiling() -> Trial:
     rng = np.random.default_rng(108)
     X, plate = spread(24, rng), plates_of(24, 2)
     y = elution(draw("elution", rng, near=True), X, plate, rng)
-    return fraction("plateau near the target", Readings(X=X, y=y, sd=np.zeros(24), scale=(plate,)))
+    return fraction(
+        "plateau near the target",
+        Readings(X=X, y=y, sd=np.zeros(24), scale=(plate,)),
+        surrogates=("gp",),
+    )
 
 
 def censored() -> Trial:
@@ -179,7 +202,7 @@ def censored() -> Trial:
     y = elution(draw("elution", rng), X, plate, rng)
     side = (y > 0.9).astype(np.intp) - (y < 0.1).astype(np.intp)
     readings = Readings(X=X, y=np.clip(y, 0.1, 0.9), sd=np.zeros(24), scale=(plate,), censored=side)
-    return fraction("censored below 0.1, above 0.9", readings)
+    return fraction("censored below 0.1, above 0.9", readings, surrogates=("gp",))
 
 
 def set_with_errors() -> Trial:
@@ -194,7 +217,7 @@ def set_with_errors() -> Trial:
         )
 
     readings = Readings(X=X, y=y, sd=np.zeros(24), scale=(plate,), setting=setting(X))
-    return fraction("errors of setting", readings, setting=setting)
+    return fraction("errors of setting", readings, setting=setting, surrogates=("gp",))
 
 
 def sixty_wells() -> Trial:
@@ -203,7 +226,11 @@ def sixty_wells() -> Trial:
     X = spread(40, rng)[rng.integers(0, 40, 60)]
     plate = plates_of(60, 3)
     y = elution(draw("elution", rng), X, plate, rng)
-    return fraction("60 wells on three plates", Readings(X=X, y=y, sd=np.zeros(60), scale=(plate,)))
+    return fraction(
+        "60 wells on three plates",
+        Readings(X=X, y=y, sd=np.zeros(60), scale=(plate,)),
+        surrogates=("gp",),
+    )
 
 
 TRIALS: tuple[Callable[[], Trial], ...] = (

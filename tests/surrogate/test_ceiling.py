@@ -10,6 +10,7 @@ from scipy.stats.qmc import Sobol
 from muntin.surrogate.cells import Readings
 from muntin.surrogate.coding import Columns
 from muntin.surrogate.fit import Fit, fit_surrogate
+from muntin.surrogate.hyperparameters import integrate
 from muntin.surrogate.priors import LogNormal, priors_of
 from muntin.window.probability import Target, mean_meets
 
@@ -62,28 +63,36 @@ def known(name, seed, top, plates=True, priors=PRIORS):
 
 @NAMES
 @SEEDS
-@pytest.mark.parametrize(("plates", "most"), [(False, 0.012), (True, 0.021)])
-def test_a_plateau_below_one_is_seen(name, seed, plates, most):
-    """Its six wells leave an sd of 0.02 / sqrt(6) = 0.008, the errors of two plates 0.02 / sqrt(2)
-    = 0.014 beside it, and not to know where the curve levels off a little more. Seen: 0.008 to
-    0.010 without plate errors, 0.013 to 0.020 with them; means of 0.924 to 0.934.
+@pytest.mark.parametrize("plates", [False, True])
+def test_a_plateau_below_one_is_seen(name, seed, plates):
+    """Its six wells leave an sd of 0.02 / sqrt(6) = 0.008 at least; not to know where the curve
+    levels off, and the errors of two plates, leave more. Whatever the readings leave, four times
+    as many nodes of another seed leave, too.
     """
     seen = known(name, seed, 0.92, plates)
-    assert 0.006 < seen.sd < most
+    assert seen.sd > 0.008
     assert abs(seen.mean - 0.92) < 1.5 * seen.sd
-    assert seen.below(0.97) > 0.9
+    assert seen.below(0.97) > 0.8
+    posterior = integrate(seen.fit.model, 5, 512)
+    w = np.exp(posterior.log_weights)
+    gap = seen.fit.names.index("ceiling_gap")
+    c = 1.0 - np.exp(posterior.evidence.theta[:, gap])
+    mean = w @ c
+    assert seen.mean == pytest.approx(mean, abs=0.25 * seen.sd)
+    assert seen.sd == pytest.approx(np.sqrt(w @ (c - mean) ** 2), rel=0.15)
 
 
 @NAMES
 @SEEDS
 def test_a_target_above_the_plateau_is_not_met_there(name, seed):
     """0.95 lies 2 to 3 sds above the ceiling without plate errors, 1 to 2 with them, and the curve
-    must be near its ceiling, too. Seen: less than 0.0001 without, at most 0.08 with plate errors;
-    a curve that can only end at 1 says 0.12 to 0.40.
+    must be near its ceiling, too. Seen: at most 0.0015 without, 0.09 with plate errors; a curve
+    that can only end at 1 says more, 0.07 to 0.34.
     """
     assert known(name, seed, 0.92, plates=False).chances(0.95).max() < 0.002
     assert known(name, seed, 0.92).chances(0.95).max() < 0.1
-    assert known(name, seed, 0.92, priors=NO_GAP).chances(0.95).min() > 0.1
+    endless = known(name, seed, 0.92, priors=NO_GAP).chances(0.95)
+    assert (endless > known(name, seed, 0.92).chances(0.95)).all()
     assert known(name, seed, 0.92).chances(0.8).min() > 0.99
 
 
@@ -91,13 +100,13 @@ def test_a_target_above_the_plateau_is_not_met_there(name, seed):
 @SEEDS
 def test_a_plateau_of_one_leaves_the_ceiling_there(name, seed):
     """Noise and plate errors leave 0.016, so that 0.97 lies 2 sds below, and the prior has half of
-    its mass above 0.97. Seen: means of 0.988, 0.02 to 0.04 of the posterior below 0.97, and p_mean
-    of 0.993 to 0.997 at a target of 0.95.
+    its mass above 0.97: in all 0.5 * 0.05 / (0.5 * 0.05 + 0.5) = 0.05 is left below. Seen: means of
+    0.985, 0.04 to 0.06 below 0.97, and p_mean of 0.97 to 0.99 at a target of 0.95.
     """
     seen = known(name, seed, 1.0)
     assert seen.mean > 0.98
-    assert seen.below(0.97) < 0.05
-    assert seen.chances(0.95).min() > 0.98
+    assert seen.below(0.97) < 0.075
+    assert seen.chances(0.95).min() > 0.96
 
 
 @NAMES
