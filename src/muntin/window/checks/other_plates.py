@@ -19,8 +19,9 @@ Index = NDArray[np.intp]
 # Level at which some plate of the study is called off where none is.
 _LEVEL = 0.02
 _UNEVEN = 3.0
-# A plate so far off by reweighted nodes, in sds, is judged by nodes fitted without it.
-_SUSPECT = 2.0
+# A plate that reweighted nodes put at this share of the limit, or most of whose readings they miss,
+# is judged by nodes fitted without it; elsewhere such a fit moves it by less than the rest.
+_SUSPECT = 0.85
 # A plate of which the others tell less than this share of the readings is not judged.
 _COMMON = 0.5
 _DO = "; repeat earlier conditions on the next plate"
@@ -51,8 +52,8 @@ def other_plates(study: Study, response: Response, stack: Stack, seed: int) -> l
     plates = list(dict.fromkeys(names))
     if len(plates) < 2:
         return []
-    found = [_plate(str(p), stack, np.flatnonzero(names == p), seed) for p in plates]
-    limit = _limit(len(found))
+    limit = _limit(len(plates))
+    found = [_plate(str(p), stack, np.flatnonzero(names == p), seed, limit) for p in plates]
     off = [plate for plate in found if abs(plate.z) > limit]
     if len(found) == 2 and off:
         # Each of two is off where the other is; the surer of the two differences is told.
@@ -75,13 +76,13 @@ def other_plates(study: Study, response: Response, stack: Stack, seed: int) -> l
     return [Check("other plates", not said, True, sentence, response.name)]
 
 
-def _plate(name: str, stack: Stack, readings: Index, seed: int) -> _Plate:
+def _plate(name: str, stack: Stack, readings: Index, seed: int, limit: float) -> _Plate:
     kept = [(f, s) for f, s in zip(stack.fits, stack.shares, strict=True) if s > 0.0]
     outs = [leave_group_out(f.model, f.posterior, readings) for f, _ in kept]
     shares = np.array([s for _, s in kept])
     plate = _mixed(name, outs, shares)
     lost = len(plate.pit) > 0 and bool(_inside(plate.pit).mean() < 0.5)
-    if abs(plate.z) > _SUSPECT or lost:
+    if abs(plate.z) > _SUSPECT * limit or lost:
         outs = [refit_group_out(f.model, seed, readings) for f, _ in kept]
         plate = _mixed(name, outs, shares)
     return plate
