@@ -17,12 +17,13 @@ from numpy.typing import NDArray
 
 from muntin.surrogate.laplace import laplace_evidence, laplace_sites
 from muntin.surrogate.sites import Gaussian, Rows, Sites, natural
-from muntin.surrogate.tilted import CellLikelihood, Pair, Points, Tilted, place
+from muntin.surrogate.tilted import CellLikelihood, Pair, Points, Rule, Tilted, place, rule_of
 
 Array = NDArray[np.float64]
 _LOG_2PI = float(np.log(2.0 * np.pi))
 # Sweeps before settled nodes are set aside; the sum bounds the work on one node.
-_FIRST_STAGES, _LAST_STAGES = (4, 3, 4, 6), (10, 20, 40)
+_FIRST_STAGES, _LAST_STAGES = (4, 2, 3, 4, 6), (10, 20, 40)
+_COARSE = rule_of(12)
 # Nodes whose evidence is smaller by so many nats carry no weight.
 _NEGLIGIBLE = 15.0
 _FIRST_STEP, _LEAST_STEP = 0.9, 0.4
@@ -178,16 +179,19 @@ def _fixed_point(
             if len(lost):
                 sites = sites.replaced(lost, laplace_sites(rows.nodes(lost), lik.nodes(lost)))
         some, few = rows.nodes(active), lik.nodes(active)
-        moved, last = _settle(some, few, sites.nodes(active), sweeps, kept)
+        # The way there need not be followed as finely as the fixed point itself.
+        coarse = number == 0 and len(stages) > 1 and not kept
+        rule = _COARSE if coarse else None
+        moved, last = _settle(some, few, sites.nodes(active), sweeps, kept, rule)
         sites, change[active] = sites.replaced(active, moved), last
-        active = active[~(last < tolerance)]
+        active = active[~((last < tolerance) & (not coarse))]
         if not len(active):
             break
     return sites, change
 
 
 def _settle(
-    rows: Rows, lik: CellLikelihood, sites: Sites, sweeps: int, kept: bool
+    rows: Rows, lik: CellLikelihood, sites: Sites, sweeps: int, kept: bool, rule: Rule | None
 ) -> tuple[Sites, Array]:
     """A number of parallel sweeps; nodes whose moves grow are damped. Returns the last move."""
     gaussian = Gaussian(rows, sites)
@@ -195,7 +199,7 @@ def _settle(
     step = np.full((len(lik.noise), 1), _FIRST_STEP)
     last = np.full(len(step), np.inf)
     for _ in range(sweeps):
-        state = _sweep(gaussian, lik, base, kept)
+        state = _sweep(gaussian, lik, base, kept, rule)
         moved = Gaussian(rows, gaussian.sites.toward(state.proposed, step))
         change = _change(gaussian.pair, moved.pair) / step[:, 0]
         factor = np.where(change > last, 0.6, 1.3)[:, None]
@@ -213,10 +217,16 @@ class _Sweep:
     proper: NDArray[np.bool_]
 
 
-def _sweep(gaussian: Gaussian, lik: CellLikelihood, base: Pair, kept: bool = False) -> _Sweep:
+def _sweep(
+    gaussian: Gaussian,
+    lik: CellLikelihood,
+    base: Pair,
+    kept: bool = False,
+    rule: Rule | None = None,
+) -> _Sweep:
     """Cavities, tilted moments and the sites that would match them; quadrature placed at base."""
     cavity, proper = _divide(gaussian.pair, gaussian.sites)
-    points = place(lik, cavity, base.u, np.sqrt(base.uu))
+    points = place(lik, cavity, base.u, np.sqrt(base.uu), rule)
     outer, pair = natural(cavity), points.pair()
     proposed = natural(pair).less(outer).where_finite(gaussian.sites)
     # A reading cannot tell more of its logit than 1/4 of a reading's precision; far above that

@@ -7,6 +7,7 @@ the reading is linear in s, so s is integrated in closed form and u by Gauss-Her
 from __future__ import annotations
 
 from dataclasses import dataclass, replace
+from typing import NamedTuple
 
 import numpy as np
 from numpy.typing import NDArray
@@ -20,6 +21,19 @@ _ABSCISSAE, _WEIGHTS = np.polynomial.hermite_e.hermegauss(32)
 _WIDEN = 1.2
 _PLACEMENTS = 25
 _LOG_WEIGHTS = np.log(_WEIGHTS) + 0.5 * _ABSCISSAE**2
+
+
+class Rule(NamedTuple):
+    """Gauss-Hermite abscissae and log weights (Q,), the normal density taken out."""
+
+    abscissae: Array
+    log_weights: Array
+
+
+def rule_of(points: int) -> Rule:
+    """The rule with so many points."""
+    x, w = np.polynomial.hermite_e.hermegauss(points)
+    return Rule(x, np.log(w) + 0.5 * x**2)
 
 
 @dataclass(frozen=True)
@@ -188,13 +202,17 @@ def tilt(lik: CellLikelihood, cavity: Pair, start_u: Array, start_sd: Array) -> 
     return place(lik, cavity, start_u, start_sd).moments(lik)
 
 
-def place(lik: CellLikelihood, cavity: Pair, start_u: Array, start_sd: Array) -> Points:
+def place(
+    lik: CellLikelihood, cavity: Pair, start_u: Array, start_sd: Array, rule: Rule | None = None
+) -> Points:
     """Quadrature points that cover each tilted law, searched from start_u, start_sd (S, C).
 
-    A cell whose points fit is left alone, so that its answer does not hang on its company.
+    A cell whose points fit is left alone, so that its answer does not hang on its company. rule:
+    another than the fine one.
     """
+    rule = rule or Rule(_ABSCISSAE, _LOG_WEIGHTS)
     spread = np.maximum(_WIDEN * start_sd, 1e-8)
-    points = Points(lik, cavity, start_u, spread)
+    points = Points(lik, cavity, start_u, spread, rule)
     astray = ~_fits(*_fit(points, start_u, spread))
     if not astray.any():
         return points
@@ -209,7 +227,7 @@ def place(lik: CellLikelihood, cavity: Pair, start_u: Array, start_sd: Array) ->
         # Mass at the rim says where to go, not how wide: widen there, else follow the answer.
         factor = np.where(shift > 3.0, 1.5, np.clip(_WIDEN * ratio, 0.3, 3.0))
         centre, spread = np.where(lost, mean_u, centre), np.where(lost, factor * spread, spread)
-        moved = Points(some, few, centre, spread)
+        moved = Points(some, few, centre, spread, rule)
         mean_u, sd_u = moved.mean_u, moved.sd_u
     points.put(astray, moved)
     return points
@@ -227,8 +245,10 @@ def _fits(shift: Array, ratio: Array) -> NDArray[np.bool_]:
 class Points:
     """Quadrature points of u for every cell and the conditional law of s on them."""
 
-    def __init__(self, lik: CellLikelihood, cavity: Pair, centre: Array, spread: Array) -> None:
-        self.u = centre[..., None] + spread[..., None] * _ABSCISSAE
+    def __init__(
+        self, lik: CellLikelihood, cavity: Pair, centre: Array, spread: Array, rule: Rule
+    ) -> None:
+        self.u = centre[..., None] + spread[..., None] * rule.abscissae
         away = self.u - cavity.u[..., None]
         slope = (cavity.us / cavity.uu)[..., None]
         self.s_mean = cavity.s[..., None] + slope * away
@@ -244,7 +264,7 @@ class Points:
         log_w = _log_reading(self.residual, self.total, self.censored)
         log_w -= 0.5 * away * away / cavity.uu[..., None]
         constant = lik.log_within(self.u) - 0.5 * (np.log(cavity.uu) + _LOG_2PI)[..., None]
-        log_w += constant + np.log(spread)[..., None] + _LOG_WEIGHTS
+        log_w += constant + np.log(spread)[..., None] + rule.log_weights
         top = log_w.max(-1, keepdims=True)
         self.w = np.exp(log_w - top)
         mass = self.w.sum(-1, keepdims=True)

@@ -1,0 +1,6 @@
+"""One thread for each test process: several processes of several threads hold each other up."""
+
+import os
+
+for _name in ("OPENBLAS_NUM_THREADS", "OMP_NUM_THREADS", "MKL_NUM_THREADS"):
+    os.environ.setdefault(_name, "1")
