@@ -26,6 +26,7 @@ _AFAR = np.array([-3.5, -2.5, -1.5, -0.7, 0.4, 0.8])
 # Up to so many latent values: nodes of a round, effective nodes that are enough, and plenty.
 _EFFORT = ((40, 128, 90.0, 110.0), (200, 64, 26.0, 64.0))
 _LEAST_EFFORT = (32, 13.0, 32.0)
+_EXACT_EFFORT = (512, 256.0, 384.0)
 
 
 @dataclass(frozen=True)
@@ -183,10 +184,13 @@ def _refitted(eta: Array, weights: Array, last: Proposal) -> Proposal:
     return Proposal(centre, order, root, max(left, 0.5), max(right, 0.5))
 
 
-def effort(latents: int) -> tuple[int, float, float]:
+def effort(latents: int, exact: bool) -> tuple[int, float, float]:
     """Nodes of a round, effective nodes that are enough, and that are plenty whatever the tail of
-    the weights: more where few latent values make a node cheap and leave the hyperparameters open.
+    the weights: more where few latent values make a node cheap and leave the hyperparameters open,
+    and where the node is exact, which makes it cheaper still.
     """
+    if exact and latents <= _EFFORT[0][0]:
+        return _EXACT_EFFORT
     for most, nodes, enough, plenty in _EFFORT:
         if latents <= most:
             return nodes, enough, plenty
@@ -205,7 +209,9 @@ def integrate(
 
     layout = model.layout
     nodes, enough, plenty = (
-        effort(len(model.cells.X)) if nodes is None else (nodes, 0.4 * nodes, float(nodes))
+        effort(len(model.cells.X), model.link == "identity")
+        if nodes is None
+        else (nodes, 0.4 * nodes, float(nodes))
     )
     eta0, top = mode(model, start)
     proposals = [_at_mode(model, eta0, top)]

@@ -23,9 +23,9 @@ Array = NDArray[np.float64]
 Index = NDArray[np.intp]
 # Below so many effective nodes a reading is predicted anew; the worst first, and no more than so
 # many, nor where a fit is dear.
-_FEW, _MOST, _MOST_LATENTS = 5.0, 4, 200
+_FEW, _MOST, _MOST_LATENTS = 8.0, 4, 200
 # Nodes of a round of such a fit.
-_NODES = 64
+_NODES = 128
 # Sd of a reading that says nothing, in sds of all that it can be.
 _NOTHING = 1e3
 
