@@ -14,11 +14,11 @@ from muntin.surrogate.hyperparameters import integrate
 from muntin.surrogate.nodes import Surface
 from muntin.surrogate.skewness import skew_of
 from muntin.window.probability import Target, node_mean_meets, skewed_below
-from tests.benchmarks.trials import censored, few_wells, scale_error
+from tests.benchmarks.trials import few_wells, own_sd, scale_error
 from tests.surrogate.exact import exact_node, least_latent
 
 CASES = [
-    (trial, name) for trial in (scale_error, few_wells, censored) for name in ("gp", "quadratic")
+    (trial, name) for trial in (scale_error, few_wells, own_sd) for name in ("gp", "quadratic")
 ]
 
 

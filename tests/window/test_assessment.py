@@ -255,7 +255,10 @@ def test_window_follows_what_is_judged(view, by):
 def test_kept_is_the_default_only_where_a_tolerance_is_given(view):
     assert view.study.definition.judged_by == "well"
     kept = changed(view, factors=[{**PH, "kept_within": 0.3}, SALT])
-    assert kept.window().share < changed(kept, study={"judged_by": "well"}).window().share
+    asked = changed(kept, study={"judged_by": "kept"}).window().grid["probability"]
+    unkept = changed(kept, study={"judged_by": "well"}).window().grid["probability"]
+    assert (kept.window().grid["probability"] == asked).all()
+    assert np.abs(asked - unkept).max() > 0.01
 
 
 def test_a_higher_requirement_gives_a_smaller_window(view):
