@@ -59,9 +59,13 @@ def test_hyperparameters_lie_anywhere_in_their_posterior_alike(name):
     assert [n for n in places.names if not uniform(places.of(n))] == []
 
 
+LEANING = pytest.mark.xfail(
+    reason="truths of the scale error lie low too often in these sets; under NUTS they lean alike"
+)
+
+
 @pytest.mark.slow
-@pytest.mark.xfail(reason="64 nodes cut the tails of the ceiling's gap and of the process sd")
-@FAMILIES
+@pytest.mark.parametrize("name", [pytest.param("gp", marks=LEANING), "quadratic"])
 def test_hyperparameters_lie_anywhere_in_their_posterior_alike_in_many_sets(name):
     places, _ = simulated(name, MANY)
     assert [n for n in places.names if not uniform(places.of(n))] == []
