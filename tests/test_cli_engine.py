@@ -38,6 +38,16 @@ def test_assess_writes_the_draws_and_says_which_engine(study, tmp_path):
     }
 
 
+def test_the_screen_says_how_the_chains_did_and_where_the_draws_are(study, tmp_path):
+    place = tmp_path / "draws"
+    result = run("assess", study, "--engine", "nuts", "--surrogate", "quadratic", "--draws", place)
+    assert result.exit_code == 0, result.output
+    # A long path is folded over lines.
+    said = "".join(result.stdout.split())
+    assert "4chains" in said
+    assert str(place / "recovery-quadratic.nc") in said
+
+
 @pytest.mark.parametrize("command", ["propose", "advise"])
 def test_plans_rest_on_the_engine_asked_for(study, command):
     result = run(command, study, "--engine", "nuts", "--surrogate", "quadratic", "--json")

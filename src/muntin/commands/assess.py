@@ -106,6 +106,7 @@ def assess(
         everywhere = judged_grid(study.definition)[0]
         write_table(known_at(view, everywhere) if known is None else known, out)
         facts["files"] = [str(out)]
-    if draws is not None:
-        facts["draws"] = [str(path) for path in view.save_draws(draws)]
-    return Output(facts, assess_screen(view, window, known, out, moved))
+    kept = () if draws is None else view.save_draws(draws)
+    if kept:
+        facts["draws"] = [str(path) for path in kept]
+    return Output(facts, assess_screen(view, window, known, out, moved, kept))

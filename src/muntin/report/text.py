@@ -50,6 +50,8 @@ Section = tuple[str, Sequence[RenderableType]]
 _FEW = 3
 _FIRST = 10
 _SCREEN_LINES = 40
+# Checks whose sentence is said even where they passed.
+_SAID = ("coverage", "sampling", "readings together")
 
 
 def sheet(title: str, sections: Sequence[Section]) -> RenderableType:
@@ -116,7 +118,7 @@ def check_lines(
         names = _named(passed, checks, labels)
         lines.append(f"Passed, {len(passed)} of {len(checks)}: {names}.")
     if len(labels) <= _FEW:
-        lines += [c.sentence for c in passed if c.name in ("coverage", "readings together")]
+        lines += [c.sentence for c in passed if c.name in _SAID]
     return lines
 
 
@@ -215,15 +217,16 @@ def assess_screen(
     known: pd.DataFrame | None,
     out: Path | None,
     influence: Sequence[RenderableType] = (),
+    draws: Sequence[Path] = (),
 ) -> RenderableType:
-    """Return the screen of `assess`; `known` is the table of the conditions asked for, and
-    `influence` what each factor does, where asked.
+    """Return the screen of `assess`; `known` is the table of the conditions asked for, `influence`
+    what each factor does, where asked, and `draws` the files of draws.
     """
     sections = [*standing(view, window), ("Factors", influence)]
     if known is not None and out is None:
         sections.append(("There", [known_table(view.study.definition, known)]))
-    if out is not None:
-        sections.append(("Written", [str(out)]))
+    written = [str(path) for path in (out, *draws) if path is not None]
+    sections.append(("Written", written))
     return sheet(view.study.definition.title, sections)
 
 

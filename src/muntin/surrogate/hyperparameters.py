@@ -137,9 +137,8 @@ def _at_mode(model: Model, eta: Array, top: Evidence) -> Proposal:
     """
     layout, h = model.layout, len(eta)
     order = _order(layout)
-    along = np.eye(h)[order[-1]]
     around = np.concatenate([eta + _STEP * np.eye(h), eta - _STEP * np.eye(h)])
-    afar = eta + np.outer(_AFAR, along)
+    afar = eta + np.outer(_AFAR if layout.ceiling else _AFAR[:0], np.eye(h)[order[-1]])
     evidence = evaluate(model, layout.theta(np.concatenate([around, afar])), top)
     gradients = slope(model, evidence)[: 2 * h] * layout.log_sd - around
     hessian = -(gradients[:h] - gradients[h:]) / (2.0 * _STEP)

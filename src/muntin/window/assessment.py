@@ -128,7 +128,7 @@ class Assessment:
         if not self.awaited:
             columns |= {"p_mean": p_mean, "p_well": self._jointly(predicted, met)}
             if any(f.kept_within for f in self.study.definition.factors):
-                columns["p_kept"] = self.kept(frame)
+                columns["p_kept"] = self._spread(frame)
         return pd.DataFrame(columns, index=conditions.index)
 
     def kept(self, frame: pd.DataFrame) -> Array:
@@ -148,6 +148,7 @@ class Assessment:
         return out
 
     def _spread(self, frame: pd.DataFrame) -> Array:
+        """p_kept (n,) with all nodes at every condition."""
         moved = [*self.settings(frame)]
         every = self.judged(pd.concat([part for _, part in moved], ignore_index=True), "well")
         return np.array([weight for weight, _ in moved]) @ every.reshape(len(moved), len(frame))
