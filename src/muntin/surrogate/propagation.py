@@ -128,9 +128,9 @@ def _still_open(
     rows: Rows, lik: CellLikelihood, state: _State, change: Array, tolerance: float
 ) -> tuple[NDArray[np.intp], NDArray[np.intp]]:
     """Nodes that have not settled: those worth more sweeps, and those too weak beside the others,
-    by Laplace's evidence, to matter.
+    by Laplace's evidence, to matter. What has improper cavities has no evidence to be beside.
     """
-    settled = (change < tolerance) & np.isfinite(state.evidence)
+    settled = (change < tolerance) & np.isfinite(state.evidence) & state.sweep.proper
     unsettled = np.flatnonzero(~(change < tolerance))
     if not len(unsettled) or not settled.any():
         return unsettled, unsettled[:0]
