@@ -71,7 +71,7 @@ def placed(setup: Setup, data: Simulated, fit: Fit) -> Array:
     moments = surface.moments(data.x)
     z = (data.latent - moments[0]) / np.sqrt(moments[1])
     wander = wander_of(setup, surface, data.x)
-    return np.array(
+    found = np.array(
         [
             *below(fit.theta, fit.weights, data.theta),
             (surface.weights @ ndtr(z))[0],
@@ -79,6 +79,8 @@ def placed(setup: Setup, data: Simulated, fit: Fit) -> Array:
             1.0 - well_meets(surface, moments, Target(low=data.reading), wander)[0],
         ]
     )
+    # A truth above the highest ceiling of the nodes lies at the end of the last bin.
+    return np.minimum(found, np.nextafter(1.0, 0.0))
 
 
 def fast_places(setup: Setup, sets: int, report: Callable[[int], None] = lambda _: None) -> Places:

@@ -6,6 +6,8 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
+from scipy.special import ndtri
+from scipy.stats.qmc import Sobol
 
 from muntin.surrogate.cells import Readings, collapse
 from muntin.surrogate.coding import Columns
@@ -84,7 +86,7 @@ def simulate(setup: Setup, seed: int, design: int | None = None) -> Simulated:
     wells, x = designed(setup, np.random.default_rng((seed if design is None else design, 7)))
     rng = np.random.default_rng((seed, 8))
     layout = setup.model(wells).layout
-    theta = layout.theta(rng.normal(size=(1, len(layout))))
+    theta = layout.theta(_truth(len(layout), seed))
     # Every well is set apart, and so is the future well, which stands last.
     target = np.concatenate([wells.X, x, x])
     moved = target + setup.setting * rng.normal(size=target.shape)
@@ -104,6 +106,14 @@ def simulate(setup: Setup, seed: int, design: int | None = None) -> Simulated:
         mean=float(mean_of(link, f[-2], ceiling)),
         reading=float(np.exp(y[-1]) if setup.kind == "positive" else y[-1]),
     )
+
+
+def _truth(count: int, seed: int) -> Array:
+    """Standardised hyperparameters (1, count) of one set: points of a scrambled Sobol' sequence, so
+    that the truths of any number of sets spread as their prior does.
+    """
+    sequence = Sobol(count, rng=np.random.default_rng(8))
+    return np.asarray(ndtri(sequence.random_base2(max(seed, 1).bit_length())[[seed]]))
 
 
 def _surface(setup: Setup, own: Array, X: Array, rng: np.random.Generator) -> Array:

@@ -30,8 +30,8 @@ def test_data_sets_of_one_design_share_their_wells_and_nothing_else():
 
 
 def test_censored_readings_lie_at_their_limits():
-    data = simulate(Setup(name="quadratic", limits=(0.2, 0.8), wells=40), 3).readings
-    free = simulate(Setup(name="quadratic", wells=40), 3).readings
+    data = simulate(Setup(name="quadratic", limits=(0.2, 0.8), wells=40), 5).readings
+    free = simulate(Setup(name="quadratic", wells=40), 5).readings
     assert set(data.censored) == {-1, 0, 1}
     assert (data.y[data.censored < 0] == 0.2).all()
     assert (data.y[data.censored > 0] == 0.8).all()

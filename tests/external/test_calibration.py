@@ -59,13 +59,8 @@ def test_hyperparameters_lie_anywhere_in_their_posterior_alike(name):
     assert [n for n in places.names if not uniform(places.of(n))] == []
 
 
-LEANING = pytest.mark.xfail(
-    reason="the 200 truths of the scale error happen to spread by 1.16 prior sds, and lie low"
-)
-
-
 @pytest.mark.slow
-@pytest.mark.parametrize("name", [pytest.param("gp", marks=LEANING), "quadratic"])
+@FAMILIES
 def test_hyperparameters_lie_anywhere_in_their_posterior_alike_in_many_sets(name):
     places, _ = simulated(name, MANY)
     assert [n for n in places.names if not uniform(places.of(n))] == []

@@ -11,7 +11,7 @@ from muntin.surrogate.fit import family_of
 from muntin.surrogate.hyperparameters import integrate
 from muntin.surrogate.nodes import Surface
 from muntin.window.probability import Target, mean_meets, process_mean, well_meets
-from tests.benchmarks.trials import both_errors, choices, few_wells, real, scale_error
+from tests.benchmarks.trials import both_errors, choices, few_wells, near_ceiling, real, scale_error
 
 
 def many(trial, name):
@@ -55,6 +55,18 @@ def test_probabilities_and_means_are_kept(make, name):
             assert apart.mean() < 0.002
     means = process_mean(few, at_few) - process_mean(full, at_full)
     assert np.abs(means).max() < 0.005 * scale
+
+
+@pytest.mark.parametrize(("make", "name"), [(near_ceiling, "gp"), (few_wells, "quadratic")])
+def test_probabilities_among_the_ceilings_are_kept(make, name):
+    """Targets that the process reaches only where it levels off high enough."""
+    trial = make()
+    model, full = many(trial, name)
+    few = compressed(full, trial.columns, model.cells)
+    at_few, at_full = few.moments(trial.grid), full.moments(trial.grid)
+    for low in (0.9, 0.95, 0.97, 0.98, 0.99):
+        p, q = mean_meets(few, at_few, Target(low=low)), mean_meets(full, at_full, Target(low=low))
+        assert np.abs(p - q).max() < 0.03
 
 
 def test_equal_weights_on_as_many_nodes_do_worse():

@@ -1,9 +1,10 @@
 """Few nodes that speak for many.
 
 Weights are found again on as few nodes as there are averages to keep: chances that the process mean
-lies below levels spread over its law, at conditions spread over the range, and means and squares of
-the log error sds. A non-negative least-squares solution has no more nodes than averages (Lawson &
-Hanson 1995, chapter 23; Tchakaloff 1957).
+lies below levels spread over its law, at conditions spread over the range, that the ceiling lies
+below levels spread over its own, and means and squares of the log error sds. A non-negative
+least-squares solution has no more nodes than averages (Lawson & Hanson 1995, chapter 23; Tchakaloff
+1957).
 """
 
 from __future__ import annotations
@@ -19,6 +20,7 @@ from muntin.surrogate.nodes import Surface
 Array = NDArray[np.float64]
 _PROBES = 24
 _LEVELS = (-1.1, 0.0, 1.4)
+_SHARES = (0.04, 0.12, 0.25, 0.4, 0.55, 0.7, 0.82, 0.92, 0.97)
 # How much the sums to one and the error sds count beside a chance.
 _ONE, _ERRORS = 10.0, 0.3
 
@@ -58,6 +60,10 @@ def _kept(surface: Surface, X: Array) -> Array:
     for level in _LEVELS:
         value = mean_of(link, centre + level * spread, usual)
         rows.append(ndtr((latent_of(link, value, own) - mean) / np.sqrt(variance)))
+    order = np.argsort(errors.ceiling)
+    reached = np.cumsum(weights[order]) - 0.5 * weights[order]
+    levels = np.interp(_SHARES, reached, errors.ceiling[order])
+    rows.append((own <= levels).astype(float))
     logs = np.log(np.maximum(np.column_stack([errors.noise, errors.inside, errors.scale]), 1e-9))
     away = logs - weights @ logs
     away = _ERRORS * away / np.maximum(np.sqrt(weights @ away**2), 1e-9)
