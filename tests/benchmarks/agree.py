@@ -78,7 +78,7 @@ class Line:
 
 def probabilities(trial: Trial, surface: Surface) -> tuple[Array, Array]:
     """p_mean and p_well (n,) over the trial's grid."""
-    moments, target = surface.moments(trial.grid), Target(low=trial.target)
+    moments, target = surface.latent(trial.grid), Target(low=trial.target)
     return mean_meets(surface, moments, target), well_meets(
         surface, moments, target, wander_of(trial, surface)
     )

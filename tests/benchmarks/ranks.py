@@ -13,13 +13,18 @@ from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy.special import ndtr
 
 from muntin.surrogate.draws import Draws
 from muntin.surrogate.fit import Fit, fit_surrogate, link_of
 from muntin.surrogate.links import mean_of
 from muntin.surrogate.nodes import Surface
-from muntin.window.probability import Target, mean_meets, well_meets
+from muntin.window.probability import (
+    Target,
+    latent_law,
+    mean_meets,
+    skewed_below,
+    well_meets,
+)
 from tests.benchmarks.simulated import COLUMNS, Setup, Simulated, simulate
 
 Array = NDArray[np.float64]
@@ -68,13 +73,13 @@ def fitted(setup: Setup, data: Simulated) -> Fit:
 def placed(setup: Setup, data: Simulated, fit: Fit) -> Array:
     """Places of the truth in the fast engine's posterior: hyperparameters, then those of NEW."""
     surface = fit.surface
-    moments = surface.moments(data.x)
-    z = (data.latent - moments[0]) / np.sqrt(moments[1])
+    moments = surface.latent(data.x)
+    z = (data.latent - moments.mean) / np.sqrt(moments.variance)
     wander = wander_of(setup, surface, data.x)
     found = np.array(
         [
             *below(fit.theta, fit.weights, data.theta),
-            (surface.weights @ ndtr(z))[0],
+            (surface.weights @ skewed_below(z, latent_law(moments).skew))[0],
             1.0 - mean_meets(surface, moments, Target(low=data.mean))[0],
             1.0 - well_meets(surface, moments, Target(low=data.reading), wander)[0],
         ]

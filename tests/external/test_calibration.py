@@ -32,7 +32,7 @@ def simulated(name, sets):
         data = simulate(setup, seed)
         fit = fitted(setup, data)
         values.append(placed(setup, data, fit))
-        moments, target = fit.surface.moments(data.x), Target(low=TARGET)
+        moments, target = fit.surface.latent(data.x), Target(low=TARGET)
         chances.append(
             [
                 (mean_meets(fit.surface, moments, target)[0], data.mean >= TARGET),
