@@ -208,8 +208,9 @@ class _Sites:
     room: float
 
     def log_liquid(self, x: Floats) -> Floats:
-        # log y - nu log(1 - y), where log(1 - y) = log y - x
-        return np.log(self.most) - self.log_a + x + (self.nu - 1) * np.logaddexp(0, x)
+        # log y = -log(1 + e^-x), log(1 - y) = -log(1 + e^x)
+        free = self.nu * np.logaddexp(0, x)
+        return np.log(self.most) - self.log_a - np.logaddexp(0, -x) + free
 
     def rise(self, x: Floats) -> Floats:
         """Slope of log c in x."""

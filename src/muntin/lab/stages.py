@@ -154,7 +154,8 @@ def through_stages(
         liquid, on_resin = binding.settle(total, wet, resin, ph, salt)
         bound = on_resin * resin
         stages.append((liquid, volume, bound))
-    return _fractions(roles, stages, loaded, hold_up)
+    wells = np.broadcast_shapes((1,), ph.shape, salt.shape, resin.shape)
+    return _fractions(roles, stages, loaded, hold_up, wells)
 
 
 def _refuse_order(roles: tuple[Role, ...]) -> None:
@@ -169,10 +170,11 @@ def _fractions(
     stages: list[tuple[Floats, Floats, Floats]],
     loaded: Floats,
     hold_up: Floats,
+    wells: tuple[int, ...],
 ) -> Fractions:
     """Bring all stages to the same n wells."""
     parts = [part for stage in stages for part in stage]
-    whole = np.broadcast_arrays(np.zeros(1), loaded, hold_up, *parts)[1:]
+    whole = np.broadcast_arrays(np.zeros(wells), loaded, hold_up, *parts)[1:]
     columns = np.stack(whole[2:], axis=-1)
     return Fractions(
         roles=roles,
