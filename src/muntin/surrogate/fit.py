@@ -26,6 +26,7 @@ from muntin.surrogate.process import GaussianProcess
 from muntin.surrogate.refits import leave_one_out_of, less, nothing
 from muntin.surrogate.skewness import skew_of
 from muntin.surrogate.stacking import stacking_shares
+from muntin.surrogate.threads import threads_for
 from muntin.surrogate.wander import settled_wander
 
 Array = NDArray[np.float64]
@@ -99,16 +100,19 @@ def fit_surrogate(
 
 
 def _fitted(name: str, model: Model, link: Link, seed: int, start: Array | None = None) -> Fit:
-    model, start = settled_wander(model, start)
-    posterior = integrate(model, seed, start=start)
-    evidence, weights = posterior.evidence, np.exp(posterior.log_weights)
+    with threads_for(len(model.cells.X)):
+        model, start = settled_wander(model, start)
+        posterior = integrate(model, seed, start=start)
+        evidence, weights = posterior.evidence, np.exp(posterior.log_weights)
+        surface = _surface(model, evidence, weights, link)
+        loo = leave_one_out_of(model, posterior, seed)
     return Fit(
         name=name,
-        surface=_surface(model, evidence, weights, link),
+        surface=surface,
         names=model.layout.names,
         theta=evidence.theta,
         weights=weights,
-        loo=leave_one_out_of(model, posterior, seed),
+        loo=loo,
         ess=posterior.ess,
         k_hat=posterior.k_hat,
         log_marginal=posterior.log_marginal,

@@ -23,6 +23,8 @@ Array = NDArray[np.float64]
 _LOG_2PI = float(np.log(2.0 * np.pi))
 # Sweeps before settled nodes are set aside; the sum bounds the work on one node.
 _FIRST_STAGES, _LAST_STAGES = (4, 2, 3, 4, 6), (10, 20, 40)
+# Moves that have not shrunk to this share over so many sweeps lead to no fixed point.
+_SHRINKING = 0.7
 _COARSE = rule_of(12)
 # Nodes whose evidence is smaller by so many nats carry no weight.
 _NEGLIGIBLE = 15.0
@@ -128,16 +130,17 @@ def _still_open(
     rows: Rows, lik: CellLikelihood, state: _State, change: Array, tolerance: float
 ) -> tuple[NDArray[np.intp], NDArray[np.intp]]:
     """Nodes that have not settled: those worth more sweeps, and those too weak beside the others,
-    by Laplace's evidence, to matter. What has improper cavities has no evidence to be beside.
+    by Laplace's evidence, to matter. What has improper cavities has no evidence to be beside, and
+    more sweeps of the same kind do not mend it.
     """
     settled = (change < tolerance) & np.isfinite(state.evidence) & state.sweep.proper
     unsettled = np.flatnonzero(~(change < tolerance))
     if not len(unsettled) or not settled.any():
-        return unsettled, unsettled[:0]
+        return unsettled[state.sweep.proper[unsettled]], unsettled[:0]
     some, few = rows.nodes(unsettled), lik.nodes(unsettled)
     evidence = laplace_evidence(Gaussian(some, laplace_sites(some, few)), few)
     weak = evidence < state.evidence[settled].max() - _NEGLIGIBLE
-    return unsettled[~weak], unsettled[weak]
+    return unsettled[~weak & state.sweep.proper[unsettled]], unsettled[weak]
 
 
 class _State:
@@ -183,8 +186,9 @@ def _fixed_point(
         coarse = number == 0 and len(stages) > 1 and not kept
         rule = _COARSE if coarse else None
         moved, last = _settle(some, few, sites.nodes(active), sweeps, kept, rule)
+        stuck = (last > _SHRINKING * change[active]) & (sweeps >= _LAST_STAGES[0])
         sites, change[active] = sites.replaced(active, moved), last
-        active = active[~((last < tolerance) & (not coarse))]
+        active = active[~((last < tolerance) & (not coarse)) & ~stuck]
         if not len(active):
             break
     return sites, change
