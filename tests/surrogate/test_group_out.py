@@ -6,11 +6,11 @@ import numpy as np
 import pytest
 from scipy.stats import norm
 
+from muntin.surrogate.ahead import predict_ahead
 from muntin.surrogate.cells import Readings
 from muntin.surrogate.coding import Columns
 from muntin.surrogate.group_out import (
     leave_group_out,
-    predict_ahead,
     refit_group_out,
     silent,
 )

@@ -1,9 +1,7 @@
 """Predictions of a group of cells, such as a plate, from all others, without refitting.
 
-At fixed hyperparameters the sites of the group are divided out of the Gaussian, which leaves the
-law of its latent values and shared errors given the rest; nodes are reweighted by
-1 / p(y_group | rest, theta), as leave-one-out does for a single reading (Gelfand, Dey & Chang
-1992; Vehtari, Gelman & Gabry 2017, section 2).
+Nodes are reweighted by 1 / p(y_group | rest, theta), as leave-one-out does for a single reading
+(Gelfand, Dey & Chang 1992; Vehtari, Gelman & Gabry 2017, section 2).
 """
 
 from __future__ import annotations
@@ -13,14 +11,13 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
+from muntin.surrogate.ahead import Ahead, predict_ahead
 from muntin.surrogate.cells import Cells
 from muntin.surrogate.evidence import Model
 from muntin.surrogate.hyperparameters import Posterior, integrate
 from muntin.surrogate.links import latent_of
 from muntin.surrogate.pareto import tail_shape
-from muntin.surrogate.propagation import Approximation
-from muntin.surrogate.sites import Rows, Sites, natural
-from muntin.surrogate.tilted import CellLikelihood, Pair
+from muntin.surrogate.tilted import CellLikelihood
 from muntin.surrogate.weights import tempered
 
 Array = NDArray[np.float64]
@@ -54,25 +51,6 @@ class GroupOut:
     shift_pit: float
     ess: float
     trusted: bool
-
-
-@dataclass(frozen=True)
-class Ahead:
-    """Law at S nodes of the latent values and shared errors of a group given the rest.
-
-    cells (m,): its cells. latent (m,): place of each cell's latent value among the first L of the
-    mean (S, L + G) and covariance (S, L + G, L + G); loads (S, m, G): how each cell's summed scale
-    error is made of the last G. log_density (S,): log p(y_group | rest, theta). proper (S,):
-    whether the law is one.
-    """
-
-    cells: Index
-    latent: Index
-    mean: Array
-    covariance: Array
-    loads: Array
-    log_density: Array
-    proper: NDArray[np.bool_]
 
 
 def leave_group_out(
@@ -125,93 +103,6 @@ def silent(model: Model, cells: Index) -> Model:
     return replace(model, cells=replace(own, variance=variance, within=within))
 
 
-def predict_ahead(rows: Rows, approx: Approximation, nodes: Index, cells: Index) -> Ahead:
-    """The law of a group's latent values and scale errors without the group's sites.
-
-    rows: of the `nodes` (S,) of the approximation.
-    With the posterior N(mu, S) of x and the sites exp(t'x - x'Tx/2) of the group, the law without
-    them has the covariance (I - S T)^-1 S and the mean (I - S T)^-1 (mu - S t).
-    """
-    latents, latent = np.unique(rows.latent[cells], return_inverse=True)
-    loads, own = rows.scale[:, cells], rows.root.shape[2]
-    root = rows.root[:, latents]
-    w = approx.mean[nodes]
-    mu = np.concatenate([(root @ w[:, :own, None])[..., 0], w[:, own:]], axis=1)
-    S = _joint(root, approx.V[nodes], own)
-    sites = {k: v[np.ix_(nodes, cells)] for k, v in vars(approx.sites).items()}
-    T, t = _group_sites(loads, latent, len(latents), Sites(**sites))
-    left = np.eye(S.shape[-1]) - S @ T
-    solved = np.linalg.solve(
-        left, np.concatenate([S, (mu - (S @ t[..., None])[..., 0])[..., None]], 2)
-    )
-    C, mean = 0.5 * (solved[..., :-1] + np.swapaxes(solved[..., :-1], 1, 2)), solved[..., -1]
-    sign, log_det = np.linalg.slogdet(left)
-    bent = t - (T @ mu[..., None])[..., 0]
-    log_integral = 0.5 * ((mean * bent).sum(1) + (mu * t).sum(1) + log_det)
-    log_density = log_integral + _site_constants(approx, nodes, cells).sum(1)
-    prior = (root**2).sum(2)
-    wide = np.diagonal(C, axis1=1, axis2=2)[:, : len(latents)] > 1.001 * prior + 1e-9
-    proper = (sign > 0) & ~wide.any(1) & np.isfinite(log_density) & _definite(C)
-    return Ahead(cells, latent, mean, C, loads, log_density, proper)
-
-
-def _definite(C: Array) -> NDArray[np.bool_]:
-    """Whether (S,) the covariances (S, R, R) are such, but for rounding."""
-    index = np.arange(C.shape[-1])
-    shored = C.copy()
-    shored[:, index, index] += 1e-9
-    try:
-        np.linalg.cholesky(shored)
-    except np.linalg.LinAlgError:
-        return np.asarray(np.linalg.eigvalsh(shored)[:, 0] > 0.0)
-    return np.ones(len(C), dtype=bool)
-
-
-def _joint(root: Array, V: Array, own: int) -> Array:
-    """Covariance (S, L + G, L + G) of latent values, root (S, L, R), and the scale errors."""
-    latents, groups = root.shape[1], V.shape[-1] - own
-    S = np.empty((len(V), latents + groups, latents + groups))
-    S[:, :latents, :latents] = root @ V[:, :own, :own] @ np.swapaxes(root, 1, 2)
-    S[:, :latents, latents:] = root @ V[:, :own, own:]
-    S[:, latents:, :latents] = np.swapaxes(S[:, :latents, latents:], 1, 2)
-    S[:, latents:, latents:] = V[:, own:, own:]
-    return S
-
-
-def _group_sites(loads: Array, latent: Index, latents: int, sites: Sites) -> tuple[Array, Array]:
-    """Precision (S, L + G, L + G) and shift (S, L + G) of the product of the group's sites."""
-    picks = np.eye(latents)[latent]
-    size = latents + loads.shape[2]
-    T, t = np.zeros((len(loads), size, size)), np.zeros((len(loads), size))
-    place = np.arange(latents)
-    T[:, place, place] = sites.uu @ picks
-    T[:, :latents, latents:] = picks.T @ (sites.us[..., None] * loads)
-    T[:, latents:, :latents] = np.swapaxes(T[:, :latents, latents:], 1, 2)
-    T[:, latents:, latents:] = np.swapaxes(loads, 1, 2) @ (sites.ss[..., None] * loads)
-    t[:, :latents] = sites.u @ picks
-    t[:, latents:] = (loads * sites.s[..., None]).sum(1)
-    return T, t
-
-
-def _site_constants(approx: Approximation, nodes: Index, cells: Index) -> Array:
-    """Log normaliser (S, m) by which a site falls short of the likelihood of its cell.
-
-    The likelihood averaged over the cavity, less the bare site averaged over it.
-    """
-    at = np.ix_(nodes, cells)
-    cavity = Pair(**{k: v[at] for k, v in vars(approx.cavity).items()})
-    sites = Sites(**{k: v[at] for k, v in vars(approx.sites).items()})
-    outer = natural(cavity)
-    uu, us, ss = outer.uu + sites.uu, outer.us + sites.us, outer.ss + sites.ss
-    u, s = outer.u + sites.u, outer.s + sites.s
-    det = uu * ss - us**2
-    form = (ss * u**2 - 2.0 * us * u * s + uu * s**2) / det
-    form_cavity = outer.u * cavity.u + outer.s * cavity.s
-    det_cavity = outer.uu * outer.ss - outer.us**2
-    log_bare = 0.5 * (np.log(det_cavity) - np.log(det) + form - form_cavity)
-    return approx.tilted.log_z[at] - log_bare
-
-
 def _summary(
     model: Model,
     readings: Index,
@@ -225,7 +116,7 @@ def _summary(
     span = 1.0 if lik.link == "logit" else 2.0 * model.family.priors.mean_sd
     carrying = np.flatnonzero(weights > 1e-4 * weights.max())
     w = weights[carrying] / weights[carrying].sum()
-    some, law = lik.nodes(carrying), _nodes(ahead, carrying)
+    some, law = lik.nodes(carrying), ahead.nodes(carrying)
     pit = np.clip(w @ _transform(cells, some, law, readings), 0.0, 1.0)
     means = _cell_law(cells, some, law)
     told = (cells.censored[ahead.cells] == 0) & (w @ (means.spread < within * span) >= 0.5)
@@ -243,29 +134,10 @@ def _summary(
     )
 
 
-def _nodes(ahead: Ahead, index: Index) -> Ahead:
-    return replace(
-        ahead,
-        mean=ahead.mean[index],
-        covariance=ahead.covariance[index],
-        loads=ahead.loads[index],
-    )
-
-
-def _pairs(ahead: Ahead) -> tuple[Array, Array, Array, Array, Array]:
-    """Means u, s and covariances uu, us, ss (S, m) of the cells' pairs."""
-    L = ahead.mean.shape[1] - ahead.loads.shape[2]
-    C, loads, at = ahead.covariance, ahead.loads, ahead.latent
-    u, uu = ahead.mean[:, at], np.diagonal(C, axis1=1, axis2=2)[:, at]
-    s = (loads @ ahead.mean[:, L:, None])[..., 0]
-    us = (C[:, at, L:] * loads).sum(-1)
-    ss = ((loads @ C[:, L:, L:]) * loads).sum(-1)
-    return u, s, np.maximum(uu, 1e-12), us, ss
-
-
 def _transform(cells: Cells, lik: CellLikelihood, ahead: Ahead, readings: Index) -> Array:
     """Probability (S, n) at each node that a reading lies below what was read."""
-    u, s, uu, us, ss = _pairs(ahead)
+    pair = ahead.pairs()
+    u, s, uu, us, ss = pair.u, pair.s, pair.uu, pair.us, pair.ss
     place = np.searchsorted(ahead.cells, cells.cell[readings])
     near, y = _few(lik, ahead.cells), cells.y[readings]
     points = u[..., None] + np.sqrt(uu)[..., None] * _Z
@@ -349,8 +221,8 @@ def _cell_law(cells: Cells, lik: CellLikelihood, ahead: Ahead) -> _Means:
     The process mean is linearised about its average slope, with the variance that it really has.
     """
     at = ahead.cells
-    L = ahead.mean.shape[1] - ahead.loads.shape[2]
-    u, s, uu, _, _ = _pairs(ahead)
+    L, pair = ahead.latents, ahead.pairs()
+    u, s, uu = pair.u, pair.s, pair.uu
     near = _few(lik, at)
     points = u[..., None] + np.sqrt(uu)[..., None] * _Z
     g = near.process_mean(points)
