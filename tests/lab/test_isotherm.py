@@ -153,7 +153,17 @@ def test_hydrophobic_sites_add_langmuir_binding_that_grows_with_salt(other, liqu
     SALT,
 )
 @example(  # as good as no charge, an overloaded resin: the logit of the occupancy is near 20,000
-    Isotherm(ionic=Ionic(groups=1.0, half_ph=5.0, steepness=1.0, capacity=100.0, steric=1.0)),
+    Isotherm(
+        ionic=Ionic(
+            groups=1.0,
+            half_ph=5.0,
+            steepness=1.0,
+            log_k=0.0,
+            log_k_per_ph=0.0,
+            capacity=100.0,
+            steric=1.0,
+        )
+    ),
     *(1000.0, 1.0, 1.0, 9.0, 1.0),
 )
 def test_a_settled_well_holds_its_protein_and_lies_on_the_isotherm(

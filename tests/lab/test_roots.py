@@ -28,6 +28,12 @@ def test_finds_the_root_when_the_slope_is_of_no_use():
     assert found == pytest.approx(0.3, rel=1e-14)
 
 
+def test_bisects_where_newton_steps_stay_inside_and_creep():
+    # A slope given fifty times too steep: 400 steps of a fiftieth would leave 0.03 % of the way.
+    found = increasing_root(lambda x: (x - 0.7, np.full(x.shape, 50.0)), [0.0, -9.0], 4.0)
+    assert found == pytest.approx([0.7, 0.7], rel=1e-12)
+
+
 def test_each_element_has_bounds_and_root_of_its_own():
     cubes = np.array([[8.0], [27.0], [-64.0]])
     low, high = np.array([-10.0, -5.0]), 20.0
