@@ -62,6 +62,14 @@ def test_wells_that_share_a_plate_or_stock_share_its_error(size):
     assert len(set(getattr(draw(replace(NONE, **{size: 0.3})), name))) == 1
 
 
+def test_the_two_errors_of_a_plate_or_stock_are_drawn_apart():
+    alone = list(range(WELLS))
+    drawn = draw(replace(NONE, load_cv=0.1, blank_sd=0.1), plates=alone)
+    assert abs(np.corrcoef(drawn.load, drawn.blank)[0, 1]) < 4 / np.sqrt(WELLS)
+    drawn = draw(replace(NONE, stock_ph_sd=0.1, stock_salt_cv=0.1), stocks=alone)
+    assert abs(np.corrcoef(drawn.ph, drawn.salt)[0, 1]) < 4 / np.sqrt(WELLS)
+
+
 def test_factors_stay_above_zero_and_sizes_of_zero_leave_all_as_it_was():
     assert draw(replace(NONE, hold_up_cv=1.5)).hold_up.min() > 0
     drawn, absent = draw(NONE), Errors.absent(STAGES)

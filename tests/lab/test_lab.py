@@ -75,13 +75,13 @@ def test_wells_of_one_ph_on_one_plate_share_a_stock():
     assert np.all(np.abs(fed / LAB.recovery(conditions) - 1) > 1e-4)
 
 
-def test_a_stock_moves_its_wells_along_the_truth():
-    sizes = replace(NONE, stock_ph_sd=0.2)
-    ph_off = sizes.draw(4, 4, rng(), [0] * 4, [5.5, 5.5, 6.0, 6.0]).ph
+def test_setting_errors_move_wells_along_the_truth():
+    sizes = replace(NONE, ph_sd=0.1, salt_cv=0.1, stock_ph_sd=0.2, stock_salt_cv=0.05)
     conditions = np.array([[5.5, 200.0], [5.5, 260.0], [6.0, 200.0], [6.0, 240.0]])
-    moved = conditions + np.column_stack([ph_off, np.zeros(4)])
+    errors = sizes.draw(4, 4, rng(), [0] * 4, [5.5, 5.5, 6.0, 6.0])
+    set_to = np.column_stack([conditions[:, 0] + errors.ph, conditions[:, 1] * errors.salt])
     read = LAB.read(conditions, rng(), sizes).recovery
-    assert read == pytest.approx(LAB.recovery(moved), rel=1e-12)
+    assert read == pytest.approx(LAB.recovery(set_to), rel=1e-12)
 
 
 def test_default_errors_scatter_a_good_recovery_as_published_wells_do():
