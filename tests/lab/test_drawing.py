@@ -4,6 +4,7 @@ import numpy as np
 import pytest
 
 from muntin.lab import bench_grid, draw_lab
+from muntin.lab.drawing import _has_shape
 
 KINDS = ["elution", "mixed mode", "island"]
 SHARES = {"elution": (0.1, 0.6), "mixed mode": (0.1, 0.6), "island": (0.05, 0.4)}
@@ -50,6 +51,16 @@ def test_plain_elution_falls_nowhere_as_ph_or_salt_rises():
         assert lab.binding.hydrophobic is None
         assert np.diff(truth, axis=0).min() > -1e-9
         assert np.diff(truth, axis=1).min() > -1e-9
+
+
+def test_a_surface_that_falls_anywhere_is_no_plain_elution():
+    lab = drawn("elution")[0]
+    rising = surface(lab)
+    assert _has_shape("elution", rising.ravel(), lab, 0.8)
+    for place in [(10, 0), (30, 20), (0, 45)]:
+        dented = rising.copy()
+        dented[place] += 0.3 if place[1] == 0 else -0.3
+        assert not _has_shape("elution", dented.ravel(), lab, 0.8)
 
 
 def test_mixed_mode_has_its_best_salt_inside_the_range():
