@@ -11,7 +11,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
-from muntin.surrogate.propagation import Approximation
+from muntin.surrogate.approximation import Approximation
 from muntin.surrogate.sites import Rows, Sites, natural
 from muntin.surrogate.tilted import Pair
 

@@ -9,12 +9,13 @@ from typing import Protocol
 import numpy as np
 from numpy.typing import NDArray
 
+from muntin.surrogate.approximation import Approximation, join
 from muntin.surrogate.cells import Cells
 from muntin.surrogate.coding import Columns
 from muntin.surrogate.layout import Layout
 from muntin.surrogate.links import Link
 from muntin.surrogate.priors import LogNormal, Priors
-from muntin.surrogate.propagation import Approximation, approximate, join
+from muntin.surrogate.propagation import approximate
 from muntin.surrogate.sites import Rows
 from muntin.surrogate.tilted import CellLikelihood
 

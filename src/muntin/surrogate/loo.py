@@ -12,9 +12,9 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
+from muntin.surrogate.approximation import Approximation
 from muntin.surrogate.cells import Cells
 from muntin.surrogate.links import latent_of
-from muntin.surrogate.propagation import Approximation
 from muntin.surrogate.tilted import CellLikelihood, Pair, Points, Tilted, place, pull_of
 
 Array = NDArray[np.float64]

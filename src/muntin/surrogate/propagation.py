@@ -9,15 +9,15 @@ are the likelihood itself and one pass is exact.
 
 from __future__ import annotations
 
-from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
 
+from muntin.surrogate.approximation import Approximation, join
 from muntin.surrogate.laplace import laplace_evidence, laplace_sites
 from muntin.surrogate.sites import Gaussian, Rows, Sites, natural
-from muntin.surrogate.tilted import CellLikelihood, Pair, Points, Rule, Tilted, place, rule_of
+from muntin.surrogate.tilted import CellLikelihood, Pair, Rule, Tilted, place, rule_of, tilt
 
 Array = NDArray[np.float64]
 _LOG_2PI = float(np.log(2.0 * np.pi))
@@ -33,54 +33,6 @@ _FIRST_STEP, _LEAST_STEP = 0.9, 0.4
 _SETTLED = 0.05
 
 
-@dataclass(frozen=True)
-class Approximation:
-    """Posterior of w at S nodes: mean (S, R), covariance V (S, R, R); log evidence (S,); the
-    sites, the cavity pair and the tilted answer of every cell; numbers of the nodes that have no
-    proper fixed point (a noise far smaller than the shared errors) and are Laplace's instead.
-    """
-
-    mean: Array
-    V: Array
-    log_evidence: Array
-    sites: Sites
-    cavity: Pair
-    tilted: Tilted
-    laplace: NDArray[np.intp]
-
-    @property
-    def skewed(self) -> bool:
-        """Whether any cell's own law is skewed."""
-        return bool(self.tilted.third.any())
-
-
-def join(parts: Sequence[Approximation]) -> Approximation:
-    """The approximations of several groups of nodes as one."""
-    if len(parts) == 1:
-        return parts[0]
-    starts = np.cumsum([0, *(len(p.mean) for p in parts[:-1])])
-    tilted = [p.tilted for p in parts]
-    return Approximation(
-        np.concatenate([p.mean for p in parts]),
-        np.concatenate([p.V for p in parts]),
-        np.concatenate([p.log_evidence for p in parts]),
-        Sites(**_fields([p.sites for p in parts])),
-        Pair(**_fields([p.cavity for p in parts])),
-        Tilted(
-            Pair(**_fields([t.pair for t in tilted])),
-            np.concatenate([t.third for t in tilted]),
-            np.concatenate([t.log_z for t in tilted]),
-            np.concatenate([t.noise_slope for t in tilted]),
-            np.concatenate([t.ceiling_slope for t in tilted]),
-        ),
-        np.concatenate([p.laplace + start for p, start in zip(parts, starts, strict=True)]),
-    )
-
-
-def _fields(parts: Sequence[Sites] | Sequence[Pair]) -> dict[str, Array]:
-    return {k: np.concatenate([vars(p)[k] for p in parts]) for k in vars(parts[0])}
-
-
 def approximate(
     rows: Rows, lik: CellLikelihood, start: Sites | None = None, tolerance: float = 3e-3
 ) -> Approximation:
@@ -94,36 +46,25 @@ def approximate(
     if lik.link == "identity" and not lik.censored.any():
         return _exact(rows, lik)
     sites, change = _fixed_point(rows, lik, start, tolerance, _FIRST_STAGES)
-    state = _State(rows, lik, sites)
+    state = _state(rows, lik, sites)
     open_nodes, weak = _still_open(rows, lik, state, change, tolerance)
     if len(open_nodes):
         some, few = rows.nodes(open_nodes), lik.nodes(open_nodes)
         moved, last = _fixed_point(some, few, sites.nodes(open_nodes), tolerance, _LAST_STAGES)
         change[open_nodes] = last
-        state = _State(rows, lik, state.gaussian.sites.replaced(open_nodes, moved))
+        state = state.replaced(open_nodes, _state(some, few, moved))
     failed = np.setdiff1d(state.failed(change), weak)
     if len(failed):
         some, few = rows.nodes(failed), lik.nodes(failed)
         stages = (*_FIRST_STAGES, *_LAST_STAGES)
         again, last = _fixed_point(some, few, None, tolerance, stages, kept=True)
-        hopeless = _State(some, few, again).failed(last)
-        state = _State(rows, lik, state.gaussian.sites.replaced(failed, again))
-        failed = failed[hopeless]
+        kept = _state(some, few, again)
+        state, failed = state.replaced(failed, kept), failed[kept.failed(last)]
     linear = np.concatenate([weak, failed])
     if len(linear):
-        new = laplace_sites(rows.nodes(linear), lik.nodes(linear))
-        state = _State(rows, lik, state.gaussian.sites.replaced(linear, new))
-        state.evidence[linear] = laplace_evidence(state.gaussian, lik)[linear]
-    gaussian, sweep = state.gaussian, state.sweep
-    return Approximation(
-        gaussian.mean,
-        gaussian.V,
-        state.evidence,
-        gaussian.sites,
-        sweep.cavity,
-        state.tilted,
-        failed,
-    )
+        some, few = rows.nodes(linear), lik.nodes(linear)
+        state = state.replaced(linear, _state(some, few, laplace_sites(some, few), laplace=True))
+    return replace(state.approximation, laplace=failed)
 
 
 def _still_open(
@@ -133,31 +74,57 @@ def _still_open(
     by Laplace's evidence, to matter. What has improper cavities has no evidence to be beside, and
     more sweeps of the same kind do not mend it.
     """
-    settled = (change < tolerance) & np.isfinite(state.evidence) & state.sweep.proper
+    settled = (change < tolerance) & np.isfinite(state.evidence) & state.proper
     unsettled = np.flatnonzero(~(change < tolerance))
     if not len(unsettled) or not settled.any():
-        return unsettled[state.sweep.proper[unsettled]], unsettled[:0]
+        return unsettled[state.proper[unsettled]], unsettled[:0]
     some, few = rows.nodes(unsettled), lik.nodes(unsettled)
     evidence = laplace_evidence(Gaussian(some, laplace_sites(some, few)), few)
     weak = evidence < state.evidence[settled].max() - _NEGLIGIBLE
-    return unsettled[~weak & state.sweep.proper[unsettled]], unsettled[weak]
+    return unsettled[~weak & state.proper[unsettled]], unsettled[weak]
 
 
+@dataclass(frozen=True)
 class _State:
-    """The Gaussian and the last sweep at given sites, and the evidence (S,) there."""
+    """The approximation at given sites, and whether (S,) all its cavities are proper unaided."""
 
-    def __init__(self, rows: Rows, lik: CellLikelihood, sites: Sites) -> None:
-        self.gaussian = Gaussian(rows, sites)
-        self.sweep = _sweep(self.gaussian, lik, self.gaussian.pair)
-        self.tilted = self.sweep.points.moments(lik)
-        log_sites = _log_product(self.gaussian.pair, self.sweep.cavity)
-        own = (self.tilted.log_z - log_sites).sum(1)
-        self.evidence = self.gaussian.log_integral() + own
+    approximation: Approximation
+    proper: NDArray[np.bool_]
+
+    @property
+    def evidence(self) -> Array:
+        """Log evidence (S,)."""
+        return self.approximation.log_evidence
 
     def failed(self, change: Array) -> NDArray[np.intp]:
         """Nodes that are no proper fixed point, after last moves `change` (S,)."""
         settled = np.isfinite(self.evidence) & (change < _SETTLED)
-        return np.flatnonzero(~(self.sweep.proper & settled))
+        return np.flatnonzero(~(self.proper & settled))
+
+    def replaced(self, index: NDArray[np.intp], other: _State) -> _State:
+        """The state with some nodes from another."""
+        order = np.arange(len(self.proper))
+        order[index] = len(order) + np.arange(len(index))
+        both = join([self.approximation, other.approximation])
+        return _State(both.nodes(order), np.concatenate([self.proper, other.proper])[order])
+
+
+def _state(rows: Rows, lik: CellLikelihood, sites: Sites, laplace: bool = False) -> _State:
+    """The state at sites; laplace: with the evidence of sites linearised at the mode."""
+    gaussian = Gaussian(rows, sites)
+    pair = gaussian.pair
+    cavity, proper = _divide(pair, gaussian.sites)
+    tilted = tilt(lik, cavity, pair.u, np.sqrt(pair.uu))
+    if laplace:
+        evidence = laplace_evidence(gaussian, lik)
+    else:
+        own = (tilted.log_z - _log_product(pair, cavity)).sum(1)
+        evidence = gaussian.log_integral() + own
+    none = np.zeros(0, dtype=np.intp)
+    return _State(
+        Approximation(gaussian.mean, gaussian.V, evidence, gaussian.sites, cavity, tilted, none),
+        proper,
+    )
 
 
 def _fixed_point(
@@ -214,11 +181,8 @@ def _settle(
 
 @dataclass(frozen=True)
 class _Sweep:
-    cavity: Pair
-    points: Points
     pair: Pair
     proposed: Sites
-    proper: NDArray[np.bool_]
 
 
 def _sweep(
@@ -229,7 +193,7 @@ def _sweep(
     rule: Rule | None = None,
 ) -> _Sweep:
     """Cavities, tilted moments and the sites that would match them; quadrature placed at base."""
-    cavity, proper = _divide(gaussian.pair, gaussian.sites)
+    cavity, _ = _divide(gaussian.pair, gaussian.sites)
     points = place(lik, cavity, base.u, np.sqrt(base.uu), rule)
     outer, pair = natural(cavity), points.pair()
     proposed = natural(pair).less(outer).where_finite(gaussian.sites)
@@ -240,7 +204,7 @@ def _sweep(
     proposed = proposed.times(np.minimum(1.0, most / np.maximum(proposed.uu, 1e-300)))
     if kept:
         proposed = _with_mean(proposed.proper(), outer, pair)
-    return _Sweep(cavity, points, pair, proposed, proper)
+    return _Sweep(pair, proposed)
 
 
 def _with_mean(sites: Sites, cavity: Sites, tilted: Pair) -> Sites:

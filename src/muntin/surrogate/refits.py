@@ -41,7 +41,7 @@ def leave_one_out_of(model: Model, posterior: Posterior, seed: int) -> LeaveOneO
     refitted = _fewest(log_w) if len(cells.X) <= _MOST_LATENTS else np.zeros(0, dtype=np.intp)
     if not len(refitted):
         return loo
-    anew = [_without(model, posterior, i, seed) for i in refitted]
+    anew = [_without(model, i, nothing(model, posterior), seed) for i in refitted]
     out = {k: v.copy() for k, v in vars(loo).items()}
     for name, values in out.items():
         values[refitted] = [vars(one)[name][0] for one in anew]
@@ -64,11 +64,10 @@ def _fewest(log_weights: Array) -> Index:
     return order[ess[order] < _FEW]
 
 
-def _without(model: Model, full: Posterior, i: int, seed: int) -> LeaveOneOut:
-    """Prediction (1,) of reading i by a fit without it, searched from the mean of the full one."""
+def _without(model: Model, i: int, nothing: float, seed: int) -> LeaveOneOut:
+    """Prediction (1,) of reading i by a fit without it; nothing: variance that says nothing."""
     cells, c = model.cells, model.cells.cell[i]
-    left = replace(model, cells=less(cells, i, nothing(model, full)))
-    posterior = integrate(left, seed, _NODES, start=np.exp(full.log_weights) @ full.eta)
+    posterior = integrate(replace(model, cells=less(cells, i, nothing)), seed, _NODES)
     approx = posterior.evidence.approximation
     cavity = Pair(**{k: v[:, [c]] for k, v in vars(approx.cavity).items()})
     alone = _alone(cells, i)

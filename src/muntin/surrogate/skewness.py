@@ -18,7 +18,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from muntin.surrogate.propagation import Approximation
+from muntin.surrogate.approximation import Approximation
 from muntin.surrogate.sites import Rows
 
 Array = NDArray[np.float64]
