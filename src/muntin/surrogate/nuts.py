@@ -79,6 +79,8 @@ def sample(model: Model, seed: int, settings: Nuts, near: Array | None = None) -
     pm, fast = pymc(), None if settings.own else nutpie()
     with warnings.catch_warnings():
         warnings.simplefilter("ignore", FutureWarning)
+        # Of compiled code, to those who write it.
+        warnings.filterwarnings("ignore", message=r"np\.dot\(\) is faster on contiguous arrays")
         symbolic = pymc_model(model, settings.noise, near)
         number = _seed(model, seed)
         found = _by_nutpie(fast, symbolic, number, settings) if fast else None
