@@ -36,7 +36,7 @@ class Known:
     def chances(self, low):
         """p_mean (3,) on the plateau."""
         surface = self.fit.surface
-        return mean_meets(surface, surface.moments(PLATEAU), Target(low=low))
+        return mean_meets(surface, surface.latent(PLATEAU), Target(low=low))
 
 
 def ceilings(fit):
@@ -86,21 +86,14 @@ def test_a_plateau_below_one_is_seen(name, seed, plates):
 @SEEDS
 def test_a_target_above_the_plateau_is_not_met_there(name, seed):
     """0.95 lies 2 to 3 sds above the ceiling without plate errors, 1 to 2 with them, and the curve
-    must be near its ceiling, too. Seen: at most 0.0025 without, 0.09 with plate errors.
+    must be near its ceiling, too. Seen: at most 0.0025 without, 0.09 with plate errors; a curve
+    that can only end at 1 says more, 0.07 to 0.34.
     """
     assert known(name, seed, 0.92, plates=False).chances(0.95).max() < 0.005
     assert known(name, seed, 0.92).chances(0.95).max() < 0.1
+    endless = known(name, seed, 0.92, priors=NO_GAP).chances(0.95)
+    assert endless.mean() > known(name, seed, 0.92).chances(0.95).mean()
     assert known(name, seed, 0.92).chances(0.8).min() > 0.99
-
-
-@NAMES
-def test_a_curve_that_can_only_end_at_one_says_more_of_a_target_above_the_plateau(name):
-    """Over both sets together: a single chance of 0.1 is known to 0.02 on so few nodes. Seen: 0.05
-    and 0.07 with a ceiling, 0.22 and 0.15 without.
-    """
-    capped = [known(name, seed, 0.92).chances(0.95).mean() for seed in (1, 2)]
-    endless = [known(name, seed, 0.92, priors=NO_GAP).chances(0.95).mean() for seed in (1, 2)]
-    assert np.mean(endless) > np.mean(capped) + 0.04
 
 
 @NAMES
