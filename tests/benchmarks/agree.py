@@ -24,10 +24,11 @@ import numpy as np
 from numpy.typing import NDArray
 
 from muntin.surrogate.assembly import nodes_of
-from muntin.surrogate.fit import Fit, fit_surrogate
+from muntin.surrogate.fit import Fit, Stack, fit_stack
 from muntin.surrogate.hyperparameters import Posterior, integrate
 from muntin.surrogate.nodes import Surface
-from muntin.window.probability import Target, mean_meets, node_mean_meets, well_meets
+from muntin.window.predicted import Predicted
+from muntin.window.probability import Target, node_mean_meets, well_meets
 from tests.benchmarks.trials import TRIALS, Trial
 from tests.surrogate.exact import exact_node, least_latent, node_weights
 
@@ -77,11 +78,10 @@ class Line:
 
 
 def probabilities(trial: Trial, surface: Surface) -> tuple[Array, Array]:
-    """p_mean and p_well (n,) over the trial's grid."""
-    moments, target = surface.latent(trial.grid), Target(low=trial.target)
-    return mean_meets(surface, moments, target), well_meets(
-        surface, moments, target, wander_of(trial, surface)
-    )
+    """p_mean and p_well (n,) over the trial's grid, as the tool reports them."""
+    setting = np.zeros_like(trial.grid) if trial.setting is None else trial.setting(trial.grid)
+    predicted = Predicted.of(surface, trial.grid, Target(low=trial.target), setting)
+    return predicted.process_met(), predicted.met()
 
 
 def wander_of(trial: Trial, surface: Surface) -> Array | float:
@@ -91,12 +91,12 @@ def wander_of(trial: Trial, surface: Surface) -> Array | float:
     return surface.wander(trial.grid, trial.setting(trial.grid))
 
 
-def fit(trial: Trial, name: str) -> Fit:
+def fit(trial: Trial, name: str) -> Stack:
     """The fast engine on a trial."""
-    return fit_surrogate(name, trial.readings, trial.kind, trial.columns, trial.priors, SEED)
+    return fit_stack((name,), trial.readings, trial.kind, trial.columns, trial.priors, SEED)
 
 
-def timed_fit(trial: Trial, name: str, times: int = 3) -> tuple[Fit, float]:
+def timed_fit(trial: Trial, name: str, times: int = 3) -> tuple[Stack, float]:
     """The fast engine's fit and the median of its seconds."""
     taken = []
     for _ in range(times):
@@ -186,7 +186,7 @@ def compare(trial: Trial, name: str, reference: str) -> Line:
     """One surrogate on one trial."""
     found, seconds = timed_fit(trial, name)
     p_fast = probabilities(trial, found.surface)
-    held_to = REFERENCES[reference](trial, name, found)
+    held_to = REFERENCES[reference](trial, name, found.fits[0])
     parts = (held_to.p_mean, held_to.p_well)
     apart = [np.abs(p - q.mean(axis=0)) for p, q in zip(p_fast, parts, strict=True)]
     error = [q.std(axis=0, ddof=1) / np.sqrt(len(q)) for q in parts]

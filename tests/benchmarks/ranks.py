@@ -15,16 +15,11 @@ import numpy as np
 from numpy.typing import NDArray
 
 from muntin.surrogate.draws import Draws
-from muntin.surrogate.fit import Fit, fit_surrogate, link_of
+from muntin.surrogate.fit import Stack, fit_stack, link_of
 from muntin.surrogate.links import mean_of
 from muntin.surrogate.nodes import Surface
-from muntin.window.probability import (
-    Target,
-    latent_law,
-    mean_meets,
-    skewed_below,
-    well_meets,
-)
+from muntin.window.predicted import Predicted
+from muntin.window.probability import Target, latent_law, skewed_below
 from tests.benchmarks.simulated import COLUMNS, Setup, Simulated, simulate
 
 Array = NDArray[np.float64]
@@ -65,23 +60,28 @@ def wander_of(setup: Setup, surface: Surface, x: Array) -> Array | float:
     return surface.wander(x, np.full(x.shape, setup.setting)) if setup.setting else 0.0
 
 
-def fitted(setup: Setup, data: Simulated) -> Fit:
+def fitted(setup: Setup, data: Simulated) -> Stack:
     """The fast engine on one data set."""
-    return fit_surrogate(setup.name, data.readings, setup.kind, COLUMNS, setup.priors, 1)
+    return fit_stack((setup.name,), data.readings, setup.kind, COLUMNS, setup.priors, 1)
 
 
-def placed(setup: Setup, data: Simulated, fit: Fit) -> Array:
+def expected(setup: Setup, data: Simulated, stack: Stack, target: Target) -> Predicted:
+    """What the tool says of the new condition."""
+    setting = np.full(data.x.shape, setup.setting or 0.0)
+    return Predicted.of(stack.surface, data.x, target, setting)
+
+
+def placed(setup: Setup, data: Simulated, stack: Stack) -> Array:
     """Places of the truth in the fast engine's posterior: hyperparameters, then those of NEW."""
-    surface = fit.surface
-    moments = surface.latent(data.x)
+    fit, law = stack.fits[0], stack.surface.cloud or stack.surface
+    moments = law.latent(data.x)
     z = (data.latent - moments.mean) / np.sqrt(moments.variance)
-    wander = wander_of(setup, surface, data.x)
     found = np.array(
         [
             *below(fit.theta, fit.weights, data.theta),
-            (surface.weights @ skewed_below(z, latent_law(moments).skew))[0],
-            1.0 - mean_meets(surface, moments, Target(low=data.mean))[0],
-            1.0 - well_meets(surface, moments, Target(low=data.reading), wander)[0],
+            (law.weights @ skewed_below(z, latent_law(moments).skew))[0],
+            1.0 - expected(setup, data, stack, Target(low=data.mean)).process_met()[0],
+            1.0 - expected(setup, data, stack, Target(low=data.reading)).met()[0],
         ]
     )
     # A truth above the highest ceiling of the nodes lies at the end of the last bin.
@@ -93,10 +93,10 @@ def fast_places(setup: Setup, sets: int, report: Callable[[int], None] = lambda 
     values = []
     for seed in range(sets):
         data = simulate(setup, seed)
-        fit = fitted(setup, data)
-        values.append(placed(setup, data, fit))
+        stack = fitted(setup, data)
+        values.append(placed(setup, data, stack))
         report(seed + 1)
-    return Places((*fit.names, *NEW), np.array(values))
+    return Places((*stack.fits[0].names, *NEW), np.array(values))
 
 
 def ranked(setup: Setup, data: Simulated, draws: Draws, rng: np.random.Generator) -> Array:

@@ -9,6 +9,7 @@ from scipy.special import logit, ndtr, ndtri
 from muntin.design.excursion import expected_wrong
 from muntin.design.forecast import Tails, wrong_share
 from muntin.design.outlook import Outlook
+from muntin.window.predicted import Predicted
 from muntin.window.probability import Target, mean_meets
 from tests.design.surfaces import points, surface
 
@@ -36,7 +37,7 @@ def outlook(posterior, picks=()):
 
 
 def today(posterior, target):
-    return Tails.of(posterior, posterior.moments(JUDGED), target)
+    return Tails.of(Predicted(posterior, posterior.moments(JUDGED), target))
 
 
 @pytest.fixture(scope="module")

@@ -10,9 +10,9 @@ from functools import cache
 import numpy as np
 import pytest
 
-from muntin.window.probability import Target, mean_meets, well_meets
+from muntin.window.probability import Target
 from tests.benchmarks.bands import bands
-from tests.benchmarks.ranks import NEW, Places, fitted, placed
+from tests.benchmarks.ranks import NEW, Places, expected, fitted, placed
 from tests.benchmarks.simulated import Setup, simulate
 
 POINTS, ALPHA, TARGET = 20, 0.01, 0.7
@@ -30,16 +30,16 @@ def simulated(name, sets):
     values, chances = [], []
     for seed in range(sets):
         data = simulate(setup, seed)
-        fit = fitted(setup, data)
-        values.append(placed(setup, data, fit))
-        moments, target = fit.surface.latent(data.x), Target(low=TARGET)
+        stack = fitted(setup, data)
+        values.append(placed(setup, data, stack))
+        predicted = expected(setup, data, stack, Target(low=TARGET))
         chances.append(
             [
-                (mean_meets(fit.surface, moments, target)[0], data.mean >= TARGET),
-                (well_meets(fit.surface, moments, target)[0], data.reading >= TARGET),
+                (predicted.process_met()[0], data.mean >= TARGET),
+                (predicted.met()[0], data.reading >= TARGET),
             ]
         )
-    return Places((*fit.names, *NEW), np.array(values)), np.array(chances, dtype=float)
+    return Places((*stack.fits[0].names, *NEW), np.array(values)), np.array(chances, dtype=float)
 
 
 def uniform(u):

@@ -9,7 +9,8 @@ import pytest
 from scipy.special import ndtri
 
 from muntin.surrogate.nodes import Errors, Surface
-from muntin.window.joint import Predicted, joint_meets
+from muntin.window.joint import joint_meets
+from muntin.window.predicted import Predicted
 from muntin.window.probability import Target
 
 DATA = Path(__file__).parent / "data"

@@ -7,7 +7,8 @@ import pytest
 
 from muntin.surrogate.bivariate import bivariate_normal
 from muntin.surrogate.nodes import Errors, Surface
-from muntin.window.joint import Predicted, joint_meets
+from muntin.window.joint import joint_meets
+from muntin.window.predicted import Predicted
 from muntin.window.probability import Target
 
 DRAWS = 600_000

@@ -10,8 +10,8 @@ from numpy.typing import NDArray
 
 from muntin.design.excursion import expected_wrong
 from muntin.design.outlook import Outlook
-from muntin.surrogate.nodes import Surface
-from muntin.window.probability import Moments, Target, mean_meets
+from muntin.window.predicted import Predicted
+from muntin.window.probability import Target
 
 Array = NDArray[np.float64]
 _DRAWS = 64
@@ -27,12 +27,12 @@ class Tails:
     below: Array | None
 
     @classmethod
-    def of(cls, surface: Surface, moments: Moments, target: Target) -> Tails:
-        """The tails of a surface with latent moments (S, P)."""
-        low, high = Target(low=target.low), Target(high=target.high)
+    def of(cls, predicted: Predicted) -> Tails:
+        """The tails of a response at P conditions."""
+        low, high = Target(low=predicted.target.low), Target(high=predicted.target.high)
         return cls(
-            None if np.isinf(target.low) else mean_meets(surface, moments, low),
-            None if np.isinf(target.high) else mean_meets(surface, moments, high),
+            None if np.isinf(low.low) else predicted.process_met(low),
+            None if np.isinf(high.high) else predicted.process_met(high),
         )
 
     @property

@@ -19,6 +19,7 @@ from muntin.record.definition import Definition
 from muntin.window.assessment import Assessment, target_of
 from muntin.window.coded import code, group_numbers, setting_sd, shared_by
 from muntin.window.grid import judged_grid
+from muntin.window.predicted import Predicted
 
 Array = NDArray[np.float64]
 Aim = Literal["edge", "best", "both"]
@@ -127,7 +128,7 @@ class _Table:
         self.targets = tuple(target_of(r) for r in self.responses)
         surfaces = [self.view.surfaces[r.name] for r in self.responses]
         self.today = [
-            Tails.of(surface, surface.latent(P), target)
+            Tails.of(Predicted.of(surface, P, target, np.zeros_like(P)))
             for surface, target in zip(surfaces, self.targets, strict=True)
         ]
         p = np.prod([tails.meets for tails in self.today], axis=0)

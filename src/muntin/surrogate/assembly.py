@@ -5,6 +5,7 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import NDArray
 
+from muntin.surrogate.drawn import DrawnPolynomial, DrawnProcess
 from muntin.surrogate.evidence import Model
 from muntin.surrogate.nodes import Errors, Nodes, PolynomialNodes, ProcessNodes
 from muntin.surrogate.polynomial import Quadratic
@@ -12,6 +13,7 @@ from muntin.surrogate.process import GaussianProcess
 from muntin.surrogate.skewness import Skew
 
 Array = NDArray[np.float64]
+Index = NDArray[np.intp]
 
 
 def nodes_of(
@@ -38,3 +40,18 @@ def nodes_of(
         sd = family.coefficient_sd(own)
         skew = skew.under(sd[:, :, None] * np.eye(sd.shape[1], root.shape[2]))
     return PolynomialNodes(family, *family.coefficients(own, mean, V), errors, skew)
+
+
+def drawn_nodes_of(
+    model: Model, theta: Array, root: Array, mean: Array, V: Array, node: Index, w: Array
+) -> Nodes:
+    """Nodes about draws w (N, R) of the family's whitened variables; node (N,), ascending: that of
+    each draw among theta (S, H) with the family's root (S, U, R). Each draw has the covariance V
+    (S, R, R) of its node, whose mean (S, R) gives the slopes.
+    """
+    given = nodes_of(model, theta, root, mean, V)
+    if isinstance(given, ProcessNodes):
+        return DrawnProcess(given, node, w, np.asarray(np.linalg.inv(root), dtype=float), V)
+    assert isinstance(given, PolynomialNodes)
+    sd = given.family.coefficient_sd(model.layout.family(theta))
+    return DrawnPolynomial(given, node, sd[node] * w[:, : sd.shape[1]])

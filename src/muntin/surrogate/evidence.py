@@ -126,6 +126,10 @@ class Evidence:
         """Log evidence (S,)."""
         return self.approximation.log_evidence
 
+    def nodes(self, index: NDArray[np.intp]) -> Evidence:
+        """The evidence at some of the nodes."""
+        return Evidence(self.theta[index], self.root[index], self.approximation.nodes(index))
+
     def prior_variance(self, cells: Cells) -> Array:
         """Prior variance (S, C) of the latent value of each cell."""
         return (self.root**2).sum(axis=2)[:, cells.latent]

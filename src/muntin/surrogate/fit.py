@@ -10,6 +10,7 @@ from numpy.typing import NDArray
 
 from muntin.surrogate.assembly import nodes_of
 from muntin.surrogate.cells import Readings, collapse
+from muntin.surrogate.cloud import DRAWS, cloud_of
 from muntin.surrogate.coding import Columns
 from muntin.surrogate.compression import compressed
 from muntin.surrogate.convergence import Sampling
@@ -32,6 +33,7 @@ from muntin.surrogate.wander import settled_wander
 Array = NDArray[np.float64]
 Index = NDArray[np.intp]
 _NEGLIGIBLE = 2e-3
+_LEAST_DRAWS = 64
 SURROGATES = ("gp", "quadratic")
 
 
@@ -136,8 +138,9 @@ def fit_stack(
     engine: settings of the reference engine; None for the fast one. Raises NotInstalledError.
     """
     fits = tuple(fit_surrogate(n, readings, kind, columns, priors, seed) for n in names)
-    if engine is not None:
-        fits = tuple(resampled(fit, seed, engine) for fit in fits)
+    if engine is None:
+        return _stacked(fits, seed)
+    fits = tuple(resampled(fit, seed, engine) for fit in fits)
     shares = stacking_shares(np.stack([fit.loo.log_density for fit in fits]))
     return Stack(fits, shares, mixture([fit.surface for fit in fits], shares))
 
@@ -146,9 +149,25 @@ def stack_without(stack: Stack, rows: Index, seed: int) -> Stack:
     """The fits of all readings but those of some rows, by the fast engine, searched from the fits
     of all; leave-one-out predictions are those of the readings left.
     """
-    fits = tuple(_without(fit, rows, seed) for fit in stack.fits)
+    return _stacked(tuple(_without(fit, rows, seed) for fit in stack.fits), seed)
+
+
+def _stacked(fits: tuple[Fit, ...], seed: int) -> Stack:
+    """The stack of fits by the fast engine, with a cloud of draws."""
     shares = stacking_shares(np.stack([fit.loo.log_density for fit in fits]))
-    return Stack(fits, shares, mixture([fit.surface for fit in fits], shares))
+    surfaces = [
+        _clouded(fit, share, seed) if share > 0.0 else fit.surface
+        for fit, share in zip(fits, shares, strict=True)
+    ]
+    return Stack(fits, shares, mixture(surfaces, shares))
+
+
+def _clouded(fit: Fit, share: float, seed: int) -> Surface:
+    """The surface of a fit with as many draws as its share asks."""
+    draws = max(_LEAST_DRAWS, int(DRAWS * share))
+    with threads_for(len(fit.model.cells.X)):
+        cloud = cloud_of(fit.model, fit.posterior, fit.surface.link, draws, seed)
+    return replace(fit.surface, cloud=cloud)
 
 
 def _without(fit: Fit, rows: Index, seed: int) -> Fit:

@@ -192,12 +192,14 @@ class PolynomialNodes:
 class Surface:
     """The posterior of one response: weighted nodes, one part a surrogate, and the link.
 
-    weights (S,) run over the nodes of all parts in order and sum to 1.
+    weights (S,) run over the nodes of all parts in order and sum to 1. cloud: weighted draws that
+    tell the law of f better than the nodes do; None where there are none.
     """
 
     parts: tuple[Nodes, ...]
     weights: Array
     link: Link
+    cloud: Surface | None = None
 
     def moments(self, X: Array) -> tuple[Array, Array]:
         """Mean and variance (S, n) of the latent f at coded X (n, D)."""
@@ -247,7 +249,7 @@ class Surface:
         return self.take(index, count / most)
 
     def take(self, index: Index, weights: Array) -> Surface:
-        """Some of the nodes, in ascending order, with new weights."""
+        """Some of the nodes, in ascending order, with new weights and without the cloud."""
         parts, start = [], 0
         for part in self.parts:
             mine = index[(index >= start) & (index < start + len(part))] - start
@@ -258,12 +260,19 @@ class Surface:
 
 
 def mixture(surfaces: Sequence[Surface], shares: Array) -> Surface:
-    """The union of surfaces of one response, each weighted by its share."""
+    """The union of surfaces of one response, each weighted by its share; with a cloud where all
+    have one.
+    """
     kept = [(s, share) for s, share in zip(surfaces, shares, strict=True) if share > 0.0]
+    clouds = [s.cloud for s, _ in kept if s.cloud is not None]
+    cloud = None
+    if len(clouds) == len(kept):
+        cloud = mixture(clouds, np.array([share for _, share in kept]))
     return Surface(
         tuple(part for s, _ in kept for part in s.parts),
         np.concatenate([share * s.weights for s, share in kept]),
         surfaces[0].link,
+        cloud,
     )
 
 

@@ -23,14 +23,10 @@ from muntin.window.coded import code, coding_of, priors_for, readings_of, settin
 from muntin.window.engine import Engine, inference_data_of, save_draws, settings_of
 from muntin.window.grid import judged_grid
 from muntin.window.influence import DRAWS, chosen_response, influence_of
-from muntin.window.joint import Predicted, joint_meets
+from muntin.window.joint import joint_meets
 from muntin.window.limiting import limiting, sides_of
-from muntin.window.probability import (
-    Target,
-    mean_meets,
-    process_mean,
-    process_quantile,
-)
+from muntin.window.predicted import Predicted
+from muntin.window.probability import Target, process_mean, process_quantile
 from muntin.window.residuals import Together, correlation_matrix, residual_correlations
 from muntin.window.settings import settings_around
 from muntin.window.window import Window, judge_window
@@ -121,7 +117,7 @@ class Assessment:
                 quantile = process_quantile(surface, moments, level)
                 columns[f"{r}_{name}"] = quantile * response.unit_size
             if response.judged:
-                columns[f"{r}_p_mean"] = mean_meets(surface, moments, predicted[r].target)
+                columns[f"{r}_p_mean"] = predicted[r].process_met()
                 columns[f"{r}_p_well"] = predicted[r].met()
                 p_mean *= columns[f"{r}_p_mean"]
                 met.append(columns[f"{r}_p_well"])
@@ -165,7 +161,7 @@ class Assessment:
             return self._by_well(frame)
         out = np.ones(len(frame))
         for p in self.predicted(frame).values():
-            out *= mean_meets(p.surface, p.moments, p.target)
+            out *= p.process_met()
         return out
 
     def _by_well(self, frame: pd.DataFrame) -> Array:

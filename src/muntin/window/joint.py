@@ -27,8 +27,8 @@ from numpy.typing import NDArray
 from muntin.surrogate.links import slope_of
 from muntin.surrogate.nodes import Surface
 from muntin.surrogate.rectangle import pair_excess, rectangle
-from muntin.window.density import reading_density
-from muntin.window.probability import Moments, Target, well_meets
+from muntin.window.predicted import Predicted
+from muntin.window.probability import Target
 
 Array = NDArray[np.float64]
 Index = NDArray[np.intp]
@@ -59,50 +59,6 @@ class Law:
         noise = (share * self.noise).sum(1, keepdims=True) + np.zeros((1, 2))
         setting = (share[..., None] * self.setting).sum(1, keepdims=True) + np.zeros((1, 2, 1))
         return replace(self, noise=noise, setting=setting)
-
-
-@dataclass(frozen=True)
-class Predicted:
-    """One response at n conditions: surface, latent law (S, n), target, and where factors are
-    set with errors the latent variance (S, n) that they make and the latent shift (n, D) by one sd
-    of each.
-    """
-
-    surface: Surface
-    moments: Moments
-    target: Target
-    wander: Array | None = None
-    shift: Array | None = None
-
-    def met(self, target: Target | None = None) -> Array:
-        """Chance (n,) that a reading meets the target, or another."""
-        wander = 0.0 if self.wander is None else self.wander
-        return well_meets(self.surface, self.moments, target or self.target, wander)
-
-    @classmethod
-    def of(cls, surface: Surface, X: Array, target: Target, setting: Array) -> Predicted:
-        """The response at coded X (n, D), set with sds `setting` (n, D) in coded units."""
-        moments = surface.latent(X)
-        if not setting.any():
-            return cls(surface, moments, target)
-        slopes = surface.slopes(X)
-        wander = ((slopes * setting) ** 2).sum(-1)
-        shift = np.tensordot(surface.weights, slopes, axes=1) * setting
-        return cls(surface, moments, target, wander, shift)
-
-    def at(self, rows: Index) -> Predicted:
-        """The response at some of the conditions."""
-        return replace(
-            self,
-            moments=tuple(part[:, rows] for part in self.moments),
-            wander=None if self.wander is None else self.wander[:, rows],
-            shift=None if self.shift is None else self.shift[rows],
-        )
-
-    def density(self, limit: float) -> Array:
-        """Density (S, n) of a reading at a limit at each node."""
-        wander = 0.0 if self.wander is None else self.wander
-        return reading_density(self.surface, self.moments, limit, wander)
 
 
 def joint_meets(responses: Sequence[Predicted], met: Array, correlation: Array) -> Array:

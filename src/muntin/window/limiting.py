@@ -11,8 +11,8 @@ import pandas as pd
 from numpy.typing import NDArray
 
 from muntin.record.factors import Factor
-from muntin.window.joint import Predicted
-from muntin.window.probability import Target, mean_meets
+from muntin.window.predicted import Predicted
+from muntin.window.probability import Target
 
 if TYPE_CHECKING:
     from muntin.window.assessment import Assessment
@@ -72,7 +72,7 @@ def _chances(predicted: Predicted, by: str) -> Array:
 
     def met(target: Target) -> Array:
         if by == "mean":
-            return mean_meets(predicted.surface, predicted.moments, target)
+            return predicted.process_met(target)
         return predicted.met(target)
 
     target = predicted.target

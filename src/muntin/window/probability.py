@@ -20,6 +20,9 @@ Array = NDArray[np.float64]
 _COARSE, _FINE = np.linspace(-4.5, 4.5, 19), np.linspace(-4.75, 4.75, 39)
 _FINE_ABOVE = 0.8
 _CHUNK = 2_000_000
+# So many nodes, each with a point of its own, sum a normal law as well as a few with all points.
+_CROWD = 2000
+_GOLDEN = (np.sqrt(5.0) - 1.0) / 2.0
 # Beyond this the first term no longer makes a law.
 _MOST_SKEW = 1.2
 _NO_SKEW = np.zeros((1, 1))
@@ -46,9 +49,11 @@ def _below(z: Array) -> Array:
 
 
 def latent_law(moments: Moments) -> Latent:
-    """The law of mean and variance (S, n), and of a skewness where it is given."""
+    """The law of mean and variance (S, n), and of a skewness where there is one."""
     mean, variance, *skew = moments
-    return Latent(mean, variance, np.clip(skew[0], -_MOST_SKEW, _MOST_SKEW) if skew else _NO_SKEW)
+    if not skew or not skew[0].any():
+        return Latent(mean, variance, _NO_SKEW)
+    return Latent(mean, variance, np.clip(skew[0], -_MOST_SKEW, _MOST_SKEW))
 
 
 def skewed_below(z: Array, skew: Array) -> Array:
@@ -113,27 +118,41 @@ def _fraction_well(surface: Surface, law: Latent, target: Target) -> Array:
     out = np.ones(sd.shape[1])
     fine = sd.max(axis=0) > _FINE_ABOVE
     skew = np.broadcast_to(law.skew, sd.shape)
-    for chosen, z in ((fine, _FINE), (~fine, _COARSE)):
-        size = max(1, _CHUNK // (len(sd) * len(z)))
+    for chosen, points in ((fine, _points(len(sd), _FINE)), (~fine, _points(len(sd), _COARSE))):
+        size = max(1, _CHUNK // (len(sd) * points[0].shape[-1]))
         columns = np.flatnonzero(chosen)
         for start in range(0, len(columns), size):
             part = columns[start : start + size]
             here = Latent(law.mean[:, part], sd[:, part], skew[:, part])
             met = np.zeros((len(sd), len(part)))
             for limit, sign in ((target.high, 1.0), (target.low, -1.0)):
-                met += sign * _reading_below(surface, here, z, limit)
+                met += sign * _reading_below(surface, here, points, limit)
             out[part] = surface.weights @ met
     return np.clip(out, 0.0, 1.0)
 
 
-def _reading_below(surface: Surface, law: Latent, z: Array, limit: float) -> Array:
-    """Probability (S, n) that a reading lies below a limit, summed over z; the law with sds in the
-    place of variances.
+def _points(nodes: int, z: Array) -> tuple[Array, Array]:
+    """Points of a standard normal, (Q,) for all nodes or one (S, 1, 1) for each of a crowd, and
+    their weights.
+    """
+    if nodes < _CROWD:
+        return z, _normal_weights(z)
+    from scipy.special import ndtri
+
+    own = ndtri((0.5 + _GOLDEN * np.arange(nodes)) % 1.0)
+    return own[:, None, None], np.ones(1)
+
+
+def _reading_below(
+    surface: Surface, law: Latent, points: tuple[Array, Array], limit: float
+) -> Array:
+    """Probability (S, n) that a reading lies below a limit, summed over points of a standard
+    normal; the law with sds in the place of variances.
 
     The step that a small noise makes of it in f is taken out of the sum by the Gaussian step
     that has the same place and slope, whose average over f is known.
     """
-    mean, sd, skew = law
+    (mean, sd, skew), (z, weights) = law, points
     if np.isinf(limit):
         return np.full_like(mean, 1.0 if limit > 0.0 else 0.0)
     errors = surface.errors
@@ -150,8 +169,7 @@ def _reading_below(surface: Surface, law: Latent, z: Array, limit: float) -> Arr
     g = mean_of("logit", f, ceiling[..., None])
     below = _below((limit - g) / np.sqrt(noise[..., None] + scale[..., None] * g * g))
     below -= _below((place[..., None] - f) / width[..., None])
-    weights = _normal_weights(z)
-    bent = below @ (weights * (z**3 - 3.0 * z)) if skew.any() else 0.0
+    bent = (below * (weights * (z**3 - 3.0 * z))).sum(-1) if skew.any() else 0.0
     return step + below @ weights + skew / 6.0 * bent
 
 

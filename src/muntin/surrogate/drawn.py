@@ -1,0 +1,117 @@
+"""Nodes about draws of the latent values: many at each set of hyperparameters."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable
+from dataclasses import dataclass, replace
+
+import numpy as np
+from numpy.typing import NDArray
+
+from muntin.surrogate.nodes import Errors, Latent, PolynomialNodes, ProcessNodes
+
+Array = NDArray[np.float64]
+Index = NDArray[np.intp]
+
+
+@dataclass(frozen=True)
+class DrawnPolynomial:
+    """N draws of the quadratic's coefficients.
+
+    given: S laws, whose variances and covariances hold for every draw about it, and whose slopes do
+    as nearly as setting errors ask. node (N,), ascending: the law of each draw. drawn (N, p):
+    coefficients.
+    """
+
+    given: PolynomialNodes
+    node: Index
+    drawn: Array
+
+    def __len__(self) -> int:
+        return len(self.node)
+
+    @property
+    def errors(self) -> Errors:
+        """Sds of the errors of a future well."""
+        return self.given.errors.nodes(self.node)
+
+    def moments(self, X: Array) -> tuple[Array, Array]:
+        """Mean and variance (N, n) of f at coded X (n, D)."""
+        family = self.given.family
+        mean = self.drawn @ family.basis(X).T + family.priors.mean
+        return mean, self.given.moments(X)[1][self.node]
+
+    def covariance(self, X: Array, Z: Array) -> Array:
+        """Covariance (N, n, m) of f between coded X (n, D) and Z (m, D)."""
+        return self.given.covariance(X, Z)[self.node]
+
+    def latent(self, X: Array) -> Latent:
+        """Mean, variance and skewness (N, n), which is none, of f at coded X (n, D)."""
+        mean, variance = self.moments(X)
+        return Latent(mean, variance, np.zeros_like(mean))
+
+    def slopes(self, X: Array) -> Array:
+        """Slope (N, n, D) of the mean of f, over a node's draws, with coded X (n, D)."""
+        return self.given.slopes(X)[self.node]
+
+    def take(self, index: Index) -> DrawnPolynomial:
+        """Some of the draws, in ascending order."""
+        return replace(self, node=self.node[index], drawn=self.drawn[index])
+
+
+@dataclass(frozen=True)
+class DrawnProcess:
+    """N draws of the Gaussian process's whitened latent values.
+
+    given and node as above. drawn (N, U): whitened values. inverse (S, U, U): of the prior's root,
+    and V (S, U, U): covariance of the whitened values about each draw; with these the mean and the
+    variance of f are not small differences of large numbers.
+    """
+
+    given: ProcessNodes
+    node: Index
+    drawn: Array
+    inverse: Array
+    V: Array
+
+    def __len__(self) -> int:
+        return len(self.node)
+
+    @property
+    def errors(self) -> Errors:
+        """Sds of the errors of a future well."""
+        return self.given.errors.nodes(self.node)
+
+    def moments(self, X: Array) -> tuple[Array, Array]:
+        """Mean and variance (N, n) of f at coded X (n, D)."""
+        family, own = self.given.family, self.given.own
+        loading = family.covariance(own, X, self.given.X) @ np.swapaxes(self.inverse, 1, 2)
+        left = family.variance(own, X) - (loading**2).sum(-1)
+        left += np.einsum("snu,snu->sn", loading @ self.V, loading)
+        mean = np.empty((len(self), len(X)))
+        ends = np.searchsorted(self.node, np.arange(len(own) + 1))
+        for rows, start, stop in _blocks(loading, ends):
+            mean[start:stop] = self.drawn[start:stop] @ rows.T
+        return mean + family.priors.mean, np.maximum(left, 1e-12)[self.node]
+
+    def covariance(self, X: Array, Z: Array) -> Array:
+        """Covariance (N, n, m) of f between coded X (n, D) and Z (m, D)."""
+        return self.given.covariance(X, Z)[self.node]
+
+    def latent(self, X: Array) -> Latent:
+        """Mean, variance and skewness (N, n), which is none, of f at coded X (n, D)."""
+        mean, variance = self.moments(X)
+        return Latent(mean, variance, np.zeros_like(mean))
+
+    def slopes(self, X: Array) -> Array:
+        """Slope (N, n, D) of the mean of f, over a node's draws, with coded X (n, D)."""
+        return self.given.slopes(X)[self.node]
+
+    def take(self, index: Index) -> DrawnProcess:
+        """Some of the draws, in ascending order."""
+        return replace(self, node=self.node[index], drawn=self.drawn[index])
+
+
+def _blocks(loading: Array, ends: Index) -> Iterable[tuple[Array, int, int]]:
+    """Each node's loadings (n, U), and where its draws begin and end."""
+    return zip(loading, ends[:-1].tolist(), ends[1:].tolist(), strict=True)
