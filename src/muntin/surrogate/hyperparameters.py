@@ -24,7 +24,7 @@ _STEP = 0.05
 # How far from the mode the fall along the last coordinate is looked at, in sds of its prior.
 _AFAR = np.array([-3.5, -2.5, -1.5, -0.7, 0.4, 0.8])
 # Up to so many latent values: nodes of a round, effective nodes that are enough, and plenty.
-_EFFORT = ((40, 256, 170.0, 210.0), (200, 64, 26.0, 64.0))
+_EFFORT = ((40, 256, 110.0, 150.0), (200, 64, 26.0, 64.0))
 _LEAST_EFFORT = (32, 13.0, 32.0)
 _EXACT_EFFORT = (512, 256.0, 384.0)
 
