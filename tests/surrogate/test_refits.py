@@ -158,3 +158,19 @@ def test_the_identity_link_is_refitted_alike(all_refitted):
         assert loo.pit[i] == pytest.approx(weights @ ndtr(z), abs=1e-3)
         density = weights @ (np.exp(-0.5 * z**2) / np.sqrt(2.0 * np.pi) / sd)
         assert loo.log_density[i] == pytest.approx(np.log(density), abs=2e-3)
+
+
+def spread_over(*effective):
+    """Log weights (200, n) that are even over so many of the nodes."""
+    out = np.full((200, len(effective)), -60.0)
+    for i, nodes in enumerate(effective):
+        out[:nodes, i] = 0.0
+    return out - logsumexp(out, axis=0)
+
+
+def test_readings_beside_one_that_few_nodes_predict_are_predicted_anew():
+    """Fewer than a third of the effective nodes are then too few; else eight are enough."""
+    beside = refits._fewest(spread_over(150, 3, 40, 60, 45), 150.0)
+    assert list(beside) == [1, 2, 4]
+    assert list(refits._fewest(spread_over(150, 20, 40, 60, 45), 150.0)) == []
+    assert list(refits._fewest(spread_over(150, 3, 9, 60), 24.0)) == [1]

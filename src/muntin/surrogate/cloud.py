@@ -11,6 +11,8 @@ variance that the latent values leave and a fiftieth of the node's own.
 
 from __future__ import annotations
 
+import itertools
+
 import numpy as np
 from numpy.typing import NDArray
 
@@ -87,9 +89,9 @@ def _around(evidence: Evidence, node: Index, rng: np.random.Generator) -> tuple[
     z = ndtri(points[:, 1:]) * np.sqrt(_DEGREES / chdtri(_DEGREES, points[:, :1]))
     root = np.linalg.cholesky(approx.V)
     w = np.empty_like(z)
-    for k in np.unique(node):
-        mine = node == k
-        w[mine] = approx.mean[k] + z[mine] @ root[k].T
+    ends = np.searchsorted(node, np.arange(len(root) + 1))
+    for k, (start, stop) in enumerate(itertools.pairwise(ends)):
+        w[start:stop] = approx.mean[k] + z[start:stop] @ root[k].T
     return w, -0.5 * (_DEGREES + size) * np.log1p((z**2).sum(1) / _DEGREES)
 
 

@@ -24,6 +24,8 @@ Index = NDArray[np.intp]
 # Below so many effective nodes a reading is predicted anew; the worst first, and no more than so
 # many, nor where a fit is dear.
 _FEW, _MOST, _MOST_LATENTS = 8.0, 4, 200
+# Beside such a reading those that keep less than this share of the effective nodes are, too.
+_SHARE = 1.0 / 3.0
 # Nodes of a round of such a fit.
 _NODES = 128
 # Sd of a reading that says nothing, in sds of all that it can be.
@@ -38,7 +40,11 @@ def leave_one_out_of(model: Model, posterior: Posterior, seed: int) -> LeaveOneO
     prior = evidence.prior_variance(cells)
     log_w = left_out(cells, law, approx, posterior.log_weights, prior)
     loo = averaged(law, log_w)
-    refitted = _fewest(log_w) if len(cells.X) <= _MOST_LATENTS else np.zeros(0, dtype=np.intp)
+    refitted = (
+        _fewest(log_w, posterior.ess)
+        if len(cells.X) <= _MOST_LATENTS
+        else np.zeros(0, dtype=np.intp)
+    )
     if not len(refitted):
         return loo
     anew = [_without(model, i, nothing(model, posterior), seed) for i in refitted]
@@ -57,11 +63,12 @@ def nothing(model: Model, posterior: Posterior) -> float:
     return _NOTHING**2 * float(evidence.prior_variance(model.cells).max() + noise.max())
 
 
-def _fewest(log_weights: Array) -> Index:
-    """Readings whose weights (S, n) rest on too few nodes, the worst first."""
+def _fewest(log_weights: Array, every: float) -> Index:
+    """Readings whose weights (S, n) rest on too few of the effective nodes, the worst first."""
     ess = np.exp(-np.logaddexp.reduce(2.0 * log_weights))
     order = np.argsort(ess)[:_MOST]
-    return order[ess[order] < _FEW]
+    few = max(_FEW, _SHARE * every) if ess.min(initial=np.inf) < _FEW else _FEW
+    return order[ess[order] < few]
 
 
 def _without(model: Model, i: int, nothing: float, seed: int) -> LeaveOneOut:
