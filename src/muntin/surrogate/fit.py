@@ -66,7 +66,9 @@ class Fit:
 
 @dataclass(frozen=True)
 class Stack:
-    """The fits of one response and their stacking shares (K,); surface is their mixture."""
+    """The fits of one response and their stacking shares (K,); surface is their mixture, by the
+    fast engine with a cloud where that tells more.
+    """
 
     fits: tuple[Fit, ...]
     shares: Array

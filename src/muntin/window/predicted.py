@@ -17,7 +17,6 @@ Index = NDArray[np.intp]
 # Where the nodes are as sure as this the cloud has nothing to add.
 _SURE = 5e-4
 _CHUNK = 600_000
-_NONE = 0.0
 # A reading's noise smooths its law, so that fewer draws tell it.
 _ENOUGH = 8192
 
@@ -59,7 +58,7 @@ class Predicted:
     def met(self, target: Target | None = None) -> Array:
         """Chance (n,) that a reading meets the target, or another."""
         asked = target or self.target
-        wander = _NONE if self.wander is None else self.wander
+        wander = 0.0 if self.wander is None else self.wander
         p = well_meets(self.surface, self.moments, asked, wander)
         if self.surface.cloud is None:
             return p
@@ -78,7 +77,7 @@ class Predicted:
 
     def density(self, limit: float) -> Array:
         """Density (S, n) of a reading at a limit at each node."""
-        wander = _NONE if self.wander is None else self.wander
+        wander = 0.0 if self.wander is None else self.wander
         return reading_density(self.surface, self.moments, limit, wander)
 
     def _sharpened(
@@ -92,6 +91,6 @@ class Predicted:
         for start in range(0, len(rows), size):
             some = rows[start : start + size]
             # Draws differ little in what setting errors make of them.
-            wander = _NONE if self.wander is None else self.surface.weights @ self.wander[:, some]
+            wander = 0.0 if self.wander is None else self.surface.weights @ self.wander[:, some]
             out[some] = meets(cloud.latent(self.X[some]), wander)
         return out
