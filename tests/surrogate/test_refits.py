@@ -1,7 +1,7 @@
 """Leave-one-out predictions of the fast engine against brute force: a fit without each reading.
 
-The reference drops the reading, fits the quadratic to the rest with the same seed, and averages the
-reading's law over latent value and plate error on a grid of its own.
+The reference drops the reading, fits the quadratic to the rest with the same seed and start, and
+averages the reading's law over latent value and plate error on a grid of its own.
 """
 
 import numpy as np
@@ -16,7 +16,7 @@ from muntin.surrogate.coding import Columns
 from muntin.surrogate.evidence import evaluate
 from muntin.surrogate.hyperparameters import integrate
 from muntin.surrogate.loo import leave_one_out
-from muntin.surrogate.refits import leave_one_out_of
+from muntin.surrogate.refits import leave_one_out_of, start_of
 from tests.studies import PH, SALT, read, spread
 from tests.surrogate.problems import model_of, readings
 
@@ -37,11 +37,11 @@ def two_plates(wild=()):
     return Readings(X=X, y=y, sd=np.zeros(16), scale=(np.repeat([0, 1], (9, 7)),))
 
 
-def without(data, i, seed=1):
+def without(data, i, start, seed=1):
     """Log density, mean and transform of reading i by a fit to the others."""
     rest = data.take(np.delete(np.arange(len(data)), i))
     model = model_of("quadratic", rest, columns=COLUMNS)
-    posterior = integrate(model, seed, refits._NODES)
+    posterior = integrate(model, seed, refits._NODES, start)
     theta, a = posterior.evidence.theta, posterior.evidence.approximation
     layout, family = model.layout, model.family
     lik, p = model.likelihood(theta), len(family.terms)
@@ -71,10 +71,11 @@ def without(data, i, seed=1):
     )
 
 
-def errors(loo, data):
-    """Absolute errors (n, 3) of log density, mean and transform."""
+def errors(loo, data, whole):
+    """Absolute errors (n, 3) of log density, mean and transform; whole: the fit to all."""
     found = np.stack([loo.log_density, loo.mean, loo.pit], axis=1)
-    return np.abs(found - np.array([without(data, i) for i in range(len(data))]))
+    start = start_of(whole)
+    return np.abs(found - np.array([without(data, i, start) for i in range(len(data))]))
 
 
 def cavities_only(model, posterior):
@@ -96,7 +97,7 @@ def test_every_reading_beside_a_wild_one_agrees_with_a_refit():
     model = model_of("quadratic", data, columns=COLUMNS)
     posterior = integrate(model, 1)
     loo = leave_one_out_of(model, posterior, 1)
-    off = errors(loo, data)
+    off = errors(loo, data, posterior)
     assert off[:, 0].mean() < 0.05
     assert off.max(axis=0)[0] < 0.15
     assert off.max(axis=0)[1] < 0.03
@@ -123,8 +124,9 @@ def test_a_refit_of_any_reading_is_the_fit_without_it(all_refitted):
     data.censored[5], data.y[5] = 1, 0.9
     model = model_of("quadratic", data, columns=COLUMNS)
     assert model.cells.count.max() == 2.0
-    loo = leave_one_out_of(model, integrate(model, 1), 1)
-    off = errors(loo, data)
+    whole = integrate(model, 1)
+    loo = leave_one_out_of(model, whole, 1)
+    off = errors(loo, data, whole)
     assert list(np.flatnonzero(np.isnan(loo.pit))) == [5]
     # Sites settle to 1e-2 of a latent sd.
     assert off[2:, 0].max() < 1.5e-2
@@ -133,7 +135,7 @@ def test_a_refit_of_any_reading_is_the_fit_without_it(all_refitted):
     for i in (0, 1):
         rest = data.take(np.delete(np.arange(len(data)), i))
         fewer = model_of("quadratic", rest, columns=COLUMNS)
-        nodes = integrate(fewer, 1, refits._NODES)
+        nodes = integrate(fewer, 1, refits._NODES, start_of(whole))
         ratio = evaluate(model, nodes.evidence.theta).log - nodes.evidence.log
         expected = logsumexp(ratio + nodes.log_weights)
         assert loo.log_density[i] == pytest.approx(expected, abs=3e-3)
@@ -143,11 +145,12 @@ def test_the_identity_link_is_refitted_alike(all_refitted):
     """Without shared errors the law of a left out reading is that of the rest's surface there."""
     data = readings(44, "real", n=9, inside=(), scale=())
     model = model_of("quadratic", data, "real")
-    loo = leave_one_out_of(model, integrate(model, 1), 1)
+    whole = integrate(model, 1)
+    loo = leave_one_out_of(model, whole, 1)
     for i in range(len(data)):
         rest = data.take(np.delete(np.arange(len(data)), i))
         fewer = model_of("quadratic", rest, "real")
-        posterior = integrate(fewer, 1, refits._NODES)
+        posterior = integrate(fewer, 1, refits._NODES, start_of(whole))
         evidence, approx = posterior.evidence, posterior.evidence.approximation
         nodes = nodes_of(fewer, evidence.theta, evidence.root, approx.mean, approx.V)
         mean, variance = nodes.moments(data.X[[i]])

@@ -14,7 +14,7 @@ from muntin.window.predicted import Predicted
 from muntin.window.probability import Target
 
 Array = NDArray[np.float64]
-_DRAWS = 128
+_DRAWS = 256
 
 
 @dataclass(frozen=True)

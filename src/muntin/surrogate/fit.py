@@ -24,7 +24,7 @@ from muntin.surrogate.nuts import Nuts, resampled
 from muntin.surrogate.polynomial import Quadratic
 from muntin.surrogate.priors import Kind, Priors
 from muntin.surrogate.process import GaussianProcess
-from muntin.surrogate.refits import leave_one_out_of, less, nothing
+from muntin.surrogate.refits import leave_one_out_of, less, nothing, start_of
 from muntin.surrogate.skewness import skew_of
 from muntin.surrogate.stacking import stacking_shares
 from muntin.surrogate.threads import threads_for
@@ -177,9 +177,8 @@ def _without(fit: Fit, rows: Index, seed: int) -> Fit:
     cells, posterior = fit.model.cells, fit.posterior
     for i in rows:
         cells = less(cells, int(i), nothing(fit.model, posterior))
-    start = np.exp(posterior.log_weights) @ posterior.eta
     model = replace(fit.model, cells=cells)
-    found = _fitted(fit.name, model, fit.surface.link, seed, start)
+    found = _fitted(fit.name, model, fit.surface.link, seed, start_of(posterior))
     left = np.setdiff1d(np.arange(len(cells.y)), rows)
     loo = LeaveOneOut(**{name: values[left] for name, values in vars(found.loo).items()})
     return replace(found, loo=loo)

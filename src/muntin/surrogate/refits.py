@@ -47,11 +47,16 @@ def leave_one_out_of(model: Model, posterior: Posterior, seed: int) -> LeaveOneO
     )
     if not len(refitted):
         return loo
-    anew = [_without(model, i, nothing(model, posterior), seed) for i in refitted]
+    anew = [_without(model, posterior, i, seed) for i in refitted]
     out = {k: v.copy() for k, v in vars(loo).items()}
     for name, values in out.items():
         values[refitted] = [vars(one)[name][0] for one in anew]
     return LeaveOneOut(**out)
+
+
+def start_of(posterior: Posterior) -> Array:
+    """Where (H,) to search the mode of a fit to fewer readings: the mean of the fit to all."""
+    return np.asarray(np.exp(posterior.log_weights) @ posterior.eta)
 
 
 def nothing(model: Model, posterior: Posterior) -> float:
@@ -71,10 +76,11 @@ def _fewest(log_weights: Array, every: float) -> Index:
     return order[ess[order] < few]
 
 
-def _without(model: Model, i: int, nothing: float, seed: int) -> LeaveOneOut:
-    """Prediction (1,) of reading i by a fit without it; nothing: variance that says nothing."""
+def _without(model: Model, whole: Posterior, i: int, seed: int) -> LeaveOneOut:
+    """Prediction (1,) of reading i by a fit without it, searched from the fit of all."""
     cells, c = model.cells, model.cells.cell[i]
-    posterior = integrate(replace(model, cells=less(cells, i, nothing)), seed, _NODES)
+    fewer = replace(model, cells=less(cells, i, nothing(model, whole)))
+    posterior = integrate(fewer, seed, _NODES, start_of(whole))
     approx = posterior.evidence.approximation
     cavity = Pair(**{k: v[:, [c]] for k, v in vars(approx.cavity).items()})
     alone = _alone(cells, i)

@@ -35,7 +35,7 @@ Array = NDArray[np.float64]
 # Of many conditions most are decided, and a few nodes tell which.
 _MANY, _SCOUTS, _SURE = 500, 16, 1e-6
 # Nodes that tell what a tolerance takes from a probability, and how far they may be off.
-_FEW, _NEAR = 12, 0.03
+_FEW, _NEAR = 48, 0.03
 Surrogate = Literal["gp", "quadratic", "stacked"]
 
 
