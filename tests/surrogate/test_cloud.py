@@ -7,7 +7,7 @@ import pytest
 
 from muntin.surrogate import cloud as cloud_file
 from muntin.surrogate.cells import Readings, collapse
-from muntin.surrogate.cloud import DRAWS, _around, _log_likelihood, _shares, cloud_of
+from muntin.surrogate.cloud import DRAWS, _around, _log_likelihood, _weighed, cloud_of
 from muntin.surrogate.evidence import Model
 from muntin.surrogate.fit import _surface, family_of, fit_stack
 from muntin.surrogate.hyperparameters import integrate
@@ -53,7 +53,7 @@ def test_likelihood_of_draws_is_the_one_written_out_apart(make, name):
     evidence = posterior.evidence
     for k in np.argsort(-posterior.log_weights)[:3]:
         node = np.full(40, k)
-        w, _ = _around(evidence, node, np.random.default_rng(1))
+        w, _ = _around(model, evidence, node, np.random.default_rng(1))
         theta = evidence.theta[[k]]
         latents, _, _ = maps(model, theta, trial.grid[:1])
         width = latents.shape[1]
@@ -66,14 +66,17 @@ def test_likelihood_of_draws_is_the_one_written_out_apart(make, name):
 
 @pytest.mark.parametrize(("make", "name"), [(few_wells, "quadratic"), (near_ceiling, "gp")])
 def test_probabilities_are_nearer_to_the_exact_ones_than_those_of_the_nodes(make, name):
-    """At the same nodes with the same weights."""
+    """At the same nodes, weighted by their exact evidences."""
     trial = make()
     model, posterior = modelled(trial, name, nodes=32)
     weights, X = np.exp(posterior.log_weights), trial.grid[::7]
-    rng, exact = np.random.default_rng(3), np.zeros(len(X))
+    rng, exact, total = np.random.default_rng(3), np.zeros(len(X)), 0.0
     for k in np.flatnonzero(weights > 1e-4):
         least = least_latent(model, posterior.evidence.theta[[k]], trial.target)
-        exact += weights[k] * exact_node(model, posterior, k, X, rng, 2048).above(least)
+        node = exact_node(model, posterior, k, X, rng, 8192)
+        weight = weights[k] * np.exp(node.log_evidence - posterior.evidence.log[k])
+        exact, total = exact + weight * node.above(least), total + weight
+    exact /= total
     cloud = cloud_of(model, posterior, "logit", DRAWS, 1)
     nodes, target = _surface(model, posterior.evidence, weights, "logit"), Target(low=trial.target)
     off, plain = (np.abs(mean_meets(s, tuple(s.latent(X)), target) - exact) for s in (cloud, nodes))
@@ -114,12 +117,36 @@ def test_nodes_about_draws(name):
 
 
 def test_weights_within_a_node():
-    """A weight counts for sqrt(n) times the mean at most (Ionides 2008)."""
+    """A weight counts for sqrt(n) times the mean at most (Ionides 2008), in the mean as well."""
     high = np.log(60.0)
-    shares = _shares(np.array([high, *np.zeros(15), 700.0, 700.0]), np.array([16, 2]))
+    log_w = np.array([high, *np.zeros(15), 700.0, 700.0])
+    shares, log_mean = _weighed(log_w, np.array([16, 2]))
     most = 75.0 / 4.0
     expected = [most / (most + 15.0), *np.full(15, 1.0 / (most + 15.0)), 0.5, 0.5]
     np.testing.assert_allclose(shares, expected)
+    np.testing.assert_allclose(log_mean, [np.log((most + 15.0) / 16.0), 700.0])
+
+
+def test_a_node_counts_by_its_exact_evidence():
+    """Held to importance sampling apart from the engine, where the approximation is some way off:
+    what the weights of the nodes gain by the draws is what their evidences lack.
+    """
+    trial = set_with_errors()
+    model, posterior = modelled(trial, "gp", nodes=8)
+    model = replace(model, wander=np.full(len(model.cells), 0.04))
+    posterior = integrate(model, 1, nodes=8)
+    cloud = cloud_of(model, posterior, "logit", 100_000, 1)
+    weights = np.exp(posterior.log_weights)
+    keep = np.flatnonzero(weights * 100_000 >= 0.5)
+    found = np.log(np.bincount(cloud.parts[0].node, cloud.weights) / weights[keep])
+    rng, exact = np.random.default_rng(4), []
+    for k in keep:
+        node = exact_node(model, posterior, k, trial.grid[:1], rng, 32_768)
+        exact.append(node.log_evidence - posterior.evidence.log[k])
+    likely = weights[keep] > 0.02
+    off, away = np.array(exact)[likely], (found - exact)[likely]
+    assert off.std() > 0.04
+    assert away.std() < 0.4 * off.std()
 
 
 def test_draws_are_shared_out_by_weight_and_seeded():

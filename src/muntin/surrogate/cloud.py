@@ -1,11 +1,11 @@
 """Draws of the latent surface about the nodes, weighted by the exact likelihood.
 
 Where few readings leave the law of f at a node a shape that mean, variance and skewness do not
-tell, a cloud of draws tells it. At every node the whitened variables are drawn from a multivariate
-t about the node's Gaussian, on scrambled Sobol' points, and weighted by prior times likelihood over
-the density they were drawn from (Geweke 1989, Econometrica 57:1317, eq. 4); within a node the
-weights are made to sum to the node's own. A weight counts for sqrt(n) times the mean weight at most
-(Ionides 2008, J. Comput. Graph. Stat. 17:295). Given a draw the surface is Gaussian with the
+tell, a cloud of draws tells it. At every node the whitened variables are drawn about the node's
+Gaussian, on scrambled Sobol' points, and weighted by prior times likelihood over the density they
+were drawn from (Geweke 1989, Econometrica 57:1317, eq. 4). A weight counts for sqrt(n) times the
+mean weight of its node at most (Ionides 2008, J. Comput. Graph. Stat. 17:295). The mean weight of a
+node is its evidence, by which the node counts. Given a draw the surface is Gaussian with the
 variance that the latent values leave and a fiftieth of the node's own.
 """
 
@@ -22,6 +22,8 @@ from muntin.surrogate.hyperparameters import Posterior
 from muntin.surrogate.links import Link
 from muntin.surrogate.nodes import Nodes, Surface
 from muntin.surrogate.sites import Rows
+from muntin.surrogate.skewness import skew_axis
+from muntin.surrogate.tailed import Tailed
 
 Array = NDArray[np.float64]
 Index = NDArray[np.intp]
@@ -29,7 +31,6 @@ DRAWS = 32768
 # More latent values make the weights uneven, and the Gaussian law of a node nearly exact.
 _MOST_LATENTS = 40
 _LEAST_DRAWS, _LEAST_SHARE, _LEAST_EFFECTIVE = 8, 0.5, 0.1
-_DEGREES = 12.0
 # Share of a node's covariance that spreads each of its draws.
 _SMOOTH = 0.02
 # Numbers that the maps of some draws may hold at a time.
@@ -51,12 +52,15 @@ def cloud_of(
     evidence, weights = posterior.evidence.nodes(keep), every[keep] / every[keep].sum()
     counts = np.maximum(_LEAST_DRAWS, np.round(draws * weights)).astype(np.intp)
     node = np.repeat(np.arange(len(keep)), counts)
-    w, log_q = _around(evidence, node, np.random.default_rng((seed, draws)))
+    w, log_q = _around(model, evidence, node, np.random.default_rng((seed, draws)))
     log_w = _log_likelihood(model, evidence, node, w) - 0.5 * (w**2).sum(1) - log_q
-    shares = _shares(log_w, counts)
+    shares, log_mean = _weighed(log_w, counts)
     effective = weights @ (1.0 / np.add.reduceat(shares**2, _starts(counts)) / counts)
     if effective < _LEAST_EFFECTIVE:
         return None
+    log_evidence = log_mean - evidence.log
+    weights = weights * np.exp(log_evidence - log_evidence.max())
+    weights /= weights.sum()
     return Surface((_smoothed(model, evidence, node, w),), weights[node] * shares, link)
 
 
@@ -75,24 +79,23 @@ def _starts(counts: Index) -> Index:
     return np.cumsum(counts) - counts
 
 
-def _around(evidence: Evidence, node: Index, rng: np.random.Generator) -> tuple[Array, Array]:
-    """Draws (N, R) of the whitened variables, and their log density (N,) but for a constant of the
-    node.
-    """
-    from scipy.special import chdtri, ndtri
+def _around(
+    model: Model, evidence: Evidence, node: Index, rng: np.random.Generator
+) -> tuple[Array, Array]:
+    """Draws (N, R) of the whitened variables, and their log density (N,) but for a constant."""
     from scipy.stats.qmc import Sobol
 
     approx = evidence.approximation
-    size = approx.mean.shape[1]
-    points = Sobol(size + 1, rng=rng).random_base2(int(np.ceil(np.log2(len(node)))))[: len(node)]
-    points = np.clip(points, 1e-9, 1.0 - 1e-9)
-    z = ndtri(points[:, 1:]) * np.sqrt(_DEGREES / chdtri(_DEGREES, points[:, :1]))
-    root = np.linalg.cholesky(approx.V)
+    root = np.asarray(np.linalg.cholesky(approx.V))
+    law = Tailed(skew_axis(model.rows(evidence.theta, evidence.root), approx, root))
+    sobol = Sobol(root.shape[1] + 2, rng=rng)
+    z = law.draw(sobol.random_base2(int(np.ceil(np.log2(len(node)))))[: len(node)], node)
     w = np.empty_like(z)
     ends = np.searchsorted(node, np.arange(len(root) + 1))
     for k, (start, stop) in enumerate(itertools.pairwise(ends)):
         w[start:stop] = approx.mean[k] + z[start:stop] @ root[k].T
-    return w, -0.5 * (_DEGREES + size) * np.log1p((z**2).sum(1) / _DEGREES)
+    log_det = np.log(np.diagonal(root, axis1=1, axis2=2)).sum(1)
+    return w, law.log_density(z, node) - log_det[node]
 
 
 def _log_likelihood(model: Model, evidence: Evidence, node: Index, w: Array) -> Array:
@@ -116,11 +119,14 @@ def _pairs(rows: Rows, w: Array) -> tuple[Array, Array]:
     return u, (rows.scale @ w[:, own:, None])[..., 0]
 
 
-def _shares(log_w: Array, counts: Index) -> Array:
-    """Weights (N,) that sum to 1 at every node, none of them far above the mean."""
+def _weighed(log_w: Array, counts: Index) -> tuple[Array, Array]:
+    """Weights (N,) that sum to 1 at every node, none of them far above the mean, and the log mean
+    (S,) of the weights of each node.
+    """
     starts = _starts(counts)
-    highest = np.repeat(np.maximum.reduceat(log_w, starts), counts)
-    w = np.exp(log_w - highest)
+    highest = np.maximum.reduceat(log_w, starts)
+    w = np.exp(log_w - np.repeat(highest, counts))
     total = np.repeat(np.add.reduceat(w, starts), counts)
     w = np.minimum(w, total / np.sqrt(np.repeat(counts, counts)))
-    return np.asarray(w / np.repeat(np.add.reduceat(w, starts), counts))
+    held = np.add.reduceat(w, starts)
+    return w / np.repeat(held, counts), highest + np.log(held / counts)

@@ -21,10 +21,15 @@ _DEGREES = 6.0
 _BOUND = 4.0
 _ROUNDS = 5
 _STEP = 0.05
-# How far from the mode the fall along the last coordinate is looked at, in sds of its prior.
-_AFAR = np.array([-3.5, -2.5, -1.5, -0.7, 0.4, 0.8])
-# Up to so many latent values: nodes of a round, effective nodes that are enough, and plenty.
-_EFFORT = ((40, 256, 110.0, 150.0), (200, 64, 26.0, 64.0))
+# How far from the mode the fall along an axis is looked at, in sds there, and along the gap of a
+# ceiling, in sds of its prior.
+_AFAR = np.array([-4.0, -2.5, -1.2, 1.2, 2.5, 4.0])
+_AFAR_GAP = np.array([-3.5, -2.5, -1.5, -0.7, 0.4, 0.8])
+# The proposal is wider than the curvature says, since what it misses no weight can mend.
+_WIDEN = 1.15
+# Up to so many latent values: nodes of a round, effective nodes that are enough, and plenty; the
+# first for each hyperparameter beyond two.
+_EFFORT = ((40, 128, 35.0, 50.0), (200, 64, 26.0, 64.0))
 _LEAST_EFFORT = (32, 13.0, 32.0)
 _EXACT_EFFORT = (512, 256.0, 384.0)
 
@@ -33,16 +38,16 @@ _EXACT_EFFORT = (512, 256.0, 384.0)
 class Proposal:
     """Multivariate split t with _DEGREES degrees of freedom, eta space.
 
-    centre (H,); root (H, H) of the covariance of the coordinates in `order`; the last of them has
-    another scale to the left than to the right of the centre, in sds that root gives it (the
-    two-piece law of Geweke 1989, section 4).
+    centre (H,); root (H, H), whose columns are its axes, of the covariance of the coordinates in
+    `order`; left and right (H,): scales of each axis to either side of the centre, in sds that root
+    gives it (the two-piece law of Geweke 1989, section 4).
     """
 
     centre: Array
     order: NDArray[np.intp]
     root: Array
-    left: float = 1.0
-    right: float = 1.0
+    left: Array
+    right: Array
 
     @property
     def covariance(self) -> Array:
@@ -55,12 +60,11 @@ class Proposal:
         from scipy.special import chdtri, ndtri
 
         inside = np.clip(points, 1e-9, 1.0 - 1e-9)
-        chi2, u, share = chdtri(_DEGREES, inside[:, -1:]), inside[:, -2], self._share
+        chi2, u, share = chdtri(_DEGREES, inside[:, -1:]), inside[:, :-1], self._share
         below, above = u / (2.0 * share), 0.5 + (u - share) / (2.0 * (1.0 - share))
-        split = ndtri(np.where(u < share, below, above)) * np.where(
-            u < share, self.left, self.right
-        )
-        z = np.column_stack([ndtri(inside[:, :-2]), split]) * np.sqrt(_DEGREES / chi2)
+        z = np.where(u < share, self.left * ndtri(np.minimum(below, 0.5)), 0.0)
+        z += np.where(u < share, 0.0, self.right * ndtri(np.maximum(above, 0.5)))
+        z *= np.sqrt(_DEGREES / chi2)
         eta = np.empty_like(z)
         eta[:, self.order] = z @ self.root.T
         return self.centre + eta
@@ -70,17 +74,22 @@ class Proposal:
         from scipy.special import gammaln
 
         h = len(self.centre)
-        z = np.linalg.solve(self.root, (eta - self.centre)[:, self.order].T)
-        z[-1] /= np.where(z[-1] < 0.0, self.left, self.right)
+        z = self.along(eta)
+        z /= np.where(z < 0.0, self.left, self.right)
         norm = (
             gammaln((_DEGREES + h) / 2) - gammaln(_DEGREES / 2) - h / 2 * np.log(_DEGREES * np.pi)
         )
-        log_det = np.log(np.diagonal(self.root)).sum() + np.log((self.left + self.right) / 2.0)
-        return norm - log_det - (_DEGREES + h) / 2 * np.log1p((z * z).sum(0) / _DEGREES)
+        log_det = np.log(np.diagonal(self.root)).sum()
+        log_det += np.log((self.left + self.right) / 2.0).sum()
+        return norm - log_det - (_DEGREES + h) / 2 * np.log1p((z * z).sum(1) / _DEGREES)
+
+    def along(self, eta: Array) -> Array:
+        """Coordinates (n, H) of eta (n, H) along the axes."""
+        return np.asarray(np.linalg.solve(self.root, (eta - self.centre)[:, self.order].T).T)
 
     @property
-    def _share(self) -> float:
-        """Mass to the left of the centre."""
+    def _share(self) -> Array:
+        """Mass (H,) to the left of the centre."""
         return self.left / (self.left + self.right)
 
 
@@ -133,27 +142,55 @@ def mode(model: Model, start: Array | None = None) -> tuple[Array, Evidence]:
 
 def _at_mode(model: Model, eta: Array, top: Evidence) -> Proposal:
     """The proposal whose root follows from the curvature of the log posterior at its mode, and
-    whose split from how the log posterior falls off along the last coordinate.
+    whose splits from how the log posterior falls off along the axes.
     """
     layout, h = model.layout, len(eta)
     order = _order(layout)
     around = np.concatenate([eta + _STEP * np.eye(h), eta - _STEP * np.eye(h)])
-    afar = eta + np.outer(_AFAR if layout.ceiling else _AFAR[:0], np.eye(h)[order[-1]])
-    evidence = evaluate(model, layout.theta(np.concatenate([around, afar])), top)
-    gradients = slope(model, evidence)[: 2 * h] * layout.log_sd - around
+    evidence = evaluate(model, layout.theta(around), top)
+    gradients = slope(model, evidence) * layout.log_sd - around
     hessian = -(gradients[:h] - gradients[h:]) / (2.0 * _STEP)
     values, vectors = np.linalg.eigh((hessian + hessian.T) / 2.0)
     # No direction is wider than the prior, nor so narrow that rounding decides.
     sd = 1.0 / np.sqrt(np.clip(values, 0.7, 1e8))
     root = np.linalg.cholesky((vectors * sd**2 @ vectors.T)[np.ix_(order, order)])
-    if not layout.ceiling:
-        return Proposal(eta, order, root)
+    left, right = np.ones(h), np.ones(h)
+    looked = _looked_along(model)
+    if len(looked):
+        axes = np.zeros((len(looked), h))
+        axes[:, order] = root.T[looked]
+        left[looked], right[looked] = _splits(model, eta, top, axes)
+    return Proposal(eta, order, _WIDEN * root, left, right)
+
+
+def _looked_along(model: Model) -> NDArray[np.intp]:
+    """Axes along which the fall of the log posterior is looked at: all, or the gap's, the last,
+    where a node is dear.
+    """
+    h = len(model.layout)
+    if len(model.cells.X) <= _EFFORT[0][0]:
+        return np.arange(h)
+    return np.arange(h - model.layout.ceiling, h)
+
+
+def _splits(model: Model, eta: Array, top: Evidence, axes: Array) -> tuple[Array, Array]:
+    """Scales (K,) to the left and to the right along axes (K, H), in their lengths; the gap of a
+    ceiling is the last.
+    """
+    layout = model.layout
+    length = np.linalg.norm(axes, axis=1)
+    steps = np.tile(_AFAR, (len(axes), 1))
+    if layout.ceiling:
+        steps[-1] = _AFAR_GAP / length[-1]
+    steps /= np.maximum(1.0, np.abs(steps) * length[:, None] / _BOUND)
+    afar = (eta + steps[:, :, None] * axes[:, None, :]).reshape(-1, len(eta))
     height = top.log[0] + log_prior(eta[None])[0]
-    fall = np.maximum(height - evidence.log[2 * h :] - log_prior(afar), 1e-3)
+    there = evaluate(model, layout.theta(afar), top).log + log_prior(afar)
+    fall = np.maximum(height - there, 1e-3).reshape(steps.shape)
     # The sd of a Gaussian that falls off as far at that distance.
-    wide = np.abs(_AFAR) / np.sqrt(2.0 * fall) / root[-1, -1]
-    left, right = (float(np.max(wide[side], initial=1.0)) for side in (_AFAR < 0.0, _AFAR > 0.0))
-    return Proposal(eta, order, root, left, right)
+    wide = np.maximum(np.abs(steps) / np.sqrt(2.0 * fall), 1.0)
+    left = np.where(steps < 0.0, wide, 0.0).max(axis=1)
+    return left, np.where(steps > 0.0, wide, 0.0).max(axis=1)
 
 
 def _order(layout: Layout) -> NDArray[np.intp]:
@@ -175,22 +212,31 @@ def _refitted(eta: Array, weights: Array, last: Proposal) -> Proposal:
     trust = ess / (ess + 2.0 * eta.shape[1])
     covariance = trust * (away.T * weights) @ away + (1.0 - trust) * last.covariance
     root = np.linalg.cholesky(covariance[np.ix_(order, order)])
-    if last.left == last.right:
-        return Proposal(centre, order, root)
-    z = np.linalg.solve(root, away[:, order].T)[-1]
-    sides = [side * weights for side in (z < 0.0, z >= 0.0)]
-    left, right = (float(np.sqrt((w @ z**2) / max(w.sum(), 1e-9))) for w in sides)
-    return Proposal(centre, order, root, max(left, 0.5), max(right, 0.5))
+    z = np.linalg.solve(root, away[:, order].T).T
+    few = 2.0 / ess
+    left, right = (
+        np.sqrt(
+            ((side * weights[:, None] * z**2).sum(0) + few)
+            / ((side * weights[:, None]).sum(0) + few)
+        )
+        for side in (z < 0.0, z >= 0.0)
+    )
+    return Proposal(centre, order, root, np.maximum(left, 0.5), np.maximum(right, 0.5))
 
 
-def effort(latents: int, exact: bool) -> tuple[int, float, float]:
+def effort(model: Model) -> tuple[int, float, float]:
     """Nodes of a round, effective nodes that are enough, and that are plenty whatever the tail of
     the weights: more where few latent values make a node cheap and leave the hyperparameters open,
     and where the node is exact, which makes it cheaper still.
     """
-    if exact and latents <= _EFFORT[0][0]:
-        return _EXACT_EFFORT
-    for most, nodes, enough, plenty in _EFFORT:
+    latents = len(model.cells.X)
+    if latents <= _EFFORT[0][0]:
+        if model.link == "identity":
+            return _EXACT_EFFORT
+        _, nodes, enough, plenty = _EFFORT[0]
+        open_to = max(len(model.layout) - 2, 1)
+        return nodes, open_to * enough, open_to * plenty
+    for most, nodes, enough, plenty in _EFFORT[1:]:
         if latents <= most:
             return nodes, enough, plenty
     return _LEAST_EFFORT
@@ -207,11 +253,7 @@ def integrate(
     from scipy.stats.qmc import Sobol
 
     layout = model.layout
-    nodes, enough, plenty = (
-        effort(len(model.cells.X), model.link == "identity")
-        if nodes is None
-        else (nodes, 0.4 * nodes, float(nodes))
-    )
+    nodes, enough, plenty = effort(model) if nodes is None else (nodes, 0.4 * nodes, float(nodes))
     eta0, top = mode(model, start)
     proposals = [_at_mode(model, eta0, top)]
     every, evidence, again = np.zeros((0, len(layout))), top, False

@@ -28,9 +28,10 @@ _SHRINKING = 0.7
 _COARSE = rule_of(12)
 # Nodes whose evidence is smaller by so many nats carry no weight.
 _NEGLIGIBLE = 15.0
-_FIRST_STEP, _LEAST_STEP = 0.9, 0.4
-# A fixed point is taken as reached below this last move, in sds of a latent value.
-_SETTLED = 0.05
+_FIRST_STEP, _LEAST_STEP, _LEAST_KEPT_STEP = 0.9, 0.4, 0.1
+# A fixed point is taken as reached below this last move, in sds of a latent value; with sites kept
+# from negative precisions, about which moves may go round without end, below that one.
+_SETTLED, _SETTLED_KEPT = 0.05, 0.6
 
 
 def approximate(
@@ -59,7 +60,7 @@ def approximate(
         stages = (*_FIRST_STAGES, *_LAST_STAGES)
         again, last = _fixed_point(some, few, None, tolerance, stages, kept=True)
         kept = _state(some, few, again)
-        state, failed = state.replaced(failed, kept), failed[kept.failed(last)]
+        state, failed = state.replaced(failed, kept), failed[kept.failed(last, _SETTLED_KEPT)]
     linear = np.concatenate([weak, failed])
     if len(linear):
         some, few = rows.nodes(linear), lik.nodes(linear)
@@ -96,9 +97,9 @@ class _State:
         """Log evidence (S,)."""
         return self.approximation.log_evidence
 
-    def failed(self, change: Array) -> NDArray[np.intp]:
-        """Nodes that are no proper fixed point, after last moves `change` (S,)."""
-        settled = np.isfinite(self.evidence) & (change < _SETTLED)
+    def failed(self, change: Array, most: float = _SETTLED) -> NDArray[np.intp]:
+        """Nodes that are no proper fixed point, after last moves `change` (S,) of `most`."""
+        settled = np.isfinite(self.evidence) & (change < most)
         return np.flatnonzero(~(self.proper & settled))
 
     def replaced(self, index: NDArray[np.intp], other: _State) -> _State:
@@ -174,7 +175,7 @@ def _settle(
         moved = Gaussian(rows, gaussian.sites.toward(state.proposed, step))
         change = _change(gaussian.pair, moved.pair) / step[:, 0]
         factor = np.where(change > last, 0.6, 1.3)[:, None]
-        step = np.clip(factor * step, _LEAST_STEP, _FIRST_STEP)
+        step = np.clip(factor * step, _LEAST_KEPT_STEP if kept else _LEAST_STEP, _FIRST_STEP)
         gaussian, base, last = moved, state.pair, change
     return gaussian.sites, last
 

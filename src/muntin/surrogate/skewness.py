@@ -22,6 +22,7 @@ from muntin.surrogate.approximation import Approximation
 from muntin.surrogate.sites import Rows
 
 Array = NDArray[np.float64]
+_STEPS = 8
 # Cells whose standardised third moments stay below this at all nodes pass on nothing to speak of.
 _LEAST = 0.05
 
@@ -74,3 +75,25 @@ def skew_of(rows: Rows, approx: Approximation) -> Skew:
     if rows.scale.shape[2]:
         by_s = approx.V[:, :own, own:] @ np.swapaxes(rows.scale[:, chosen], 1, 2)
     return Skew((ss * by_u - us * by_s) / det, (uu * by_s - us * by_u) / det, third[:, chosen])
+
+
+def skew_axis(rows: Rows, approx: Approximation, root: Array) -> Array:
+    """Unit vectors (S, R) along which the third cumulant that latent values pass on is largest.
+
+    root (S, R, R): of the covariance of w, in whose coordinates they are. Powers of the cumulant as
+    a tensor find it, from the cell that is skewed most (De Lathauwer, De Moor & Vandewalle 2000,
+    SIAM J. Matrix Anal. Appl. 21:1324, from memory); where nothing is skewed, it is any.
+    """
+    own = rows.root.shape[2]
+    loading = rows.root[:, rows.latent] @ root[:, :own]
+    variance, third = (loading**2).sum(-1), approx.tilted.third[..., 0]
+    most = np.argmax(np.abs(third) / variance**1.5, axis=1)
+    each = np.arange(len(most))
+    axis = loading[each, most] / np.sqrt(variance[each, most])[:, None]
+    for _ in range(_STEPS):
+        along = np.einsum("scr,sr->sc", loading, axis)
+        turned = np.einsum("sc,scr->sr", third * along**2 / variance**3, loading)
+        length = np.sqrt((turned**2).sum(1, keepdims=True))
+        axis = np.where(length > 1e-12, turned / np.maximum(length, 1e-300), axis)
+    cumulant = (third * (np.einsum("scr,sr->sc", loading, axis) / variance) ** 3).sum(1)
+    return axis * np.where(cumulant < 0.0, -1.0, 1.0)[:, None]
