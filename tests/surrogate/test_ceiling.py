@@ -44,10 +44,10 @@ def ceilings(fit):
 
 
 @cache
-def known(name, seed, top, plates=True, priors=PRIORS):
+def known(name, seed, top, plates=True, priors=PRIORS, nodes=1):
     """Two plates of twelve wells each, without plate errors, that level off at `top`; noise 0.02.
 
-    plates: the model allows for plate errors.
+    plates: the model allows for plate errors. nodes: seed of the nodes.
     """
     rng = np.random.default_rng(seed)
     X = 2.0 * Sobol(2, rng=rng).random_base2(5)[:24] - 1.0
@@ -55,7 +55,7 @@ def known(name, seed, top, plates=True, priors=PRIORS):
     y = top / (1.0 + np.exp(-f)) + 0.02 * rng.normal(size=24)
     scale = (np.arange(24) // 12,) if plates else ()
     data = Readings(X=X, y=y, sd=np.zeros(24), scale=scale)
-    fit = fit_surrogate(name, data, "fraction", Columns.plain(2), priors, 1)
+    fit = fit_surrogate(name, data, "fraction", Columns.plain(2), priors, nodes)
     c = ceilings(fit)
     mean = fit.weights @ c
     return Known(fit, mean, np.sqrt(fit.weights @ (c - mean) ** 2))
@@ -87,12 +87,15 @@ def test_a_plateau_below_one_is_seen(name, seed, plates):
 def test_a_target_above_the_plateau_is_not_met_there(name, seed):
     """0.95 lies 2 to 3 sds above the ceiling without plate errors, 1 to 2 with them, and the curve
     must be near its ceiling, too. Seen: at most 0.0025 without, 0.09 with plate errors; a curve
-    that can only end at 1 says more, 0.07 to 0.34.
+    that can only end at 1 says more, 0.07 to 0.34, on the mean of three sets of nodes.
     """
     assert known(name, seed, 0.92, plates=False).chances(0.95).max() < 0.005
     assert known(name, seed, 0.92).chances(0.95).max() < 0.1
-    endless = known(name, seed, 0.92, priors=NO_GAP).chances(0.95)
-    assert endless.mean() > known(name, seed, 0.92).chances(0.95).mean()
+    endless, ending = (
+        np.mean([known(name, seed, 0.92, priors=p, nodes=n).chances(0.95) for n in (1, 2, 3)])
+        for p in (NO_GAP, PRIORS)
+    )
+    assert endless > ending
     assert known(name, seed, 0.92).chances(0.8).min() > 0.99
 
 

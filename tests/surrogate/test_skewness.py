@@ -10,7 +10,7 @@ from muntin.surrogate.assembly import nodes_of
 from muntin.surrogate.cells import collapse
 from muntin.surrogate.evidence import Model
 from muntin.surrogate.fit import family_of
-from muntin.surrogate.hyperparameters import integrate
+from muntin.surrogate.hyperparameters import integrate, log_prior
 from muntin.surrogate.nodes import Surface
 from muntin.surrogate.skewness import skew_of
 from muntin.window.probability import Target, node_mean_meets, skewed_below
@@ -48,7 +48,8 @@ def test_skewness_and_probabilities_at_likely_nodes(make, name):
     found = node_mean_meets(surface, latent, Target(low=trial.target))
     gaussian = node_mean_meets(surface, latent[:2], Target(low=trial.target))
     off, plain, skews = [], [], []
-    for node in np.argsort(-posterior.log_weights)[:6]:
+    likely = posterior.evidence.log + log_prior(posterior.eta)
+    for node in np.argsort(-likely)[:6]:
         exact = exact_node(model, posterior, node, X, rng, 4096)
         theta = posterior.evidence.theta[[node]]
         p = exact.above(least_latent(model, theta, trial.target_additive))
