@@ -65,7 +65,7 @@ def test_the_density_along_the_axis_integrates_to_the_mass_across():
 
 
 def test_the_axis_is_where_the_third_cumulant_is_largest():
-    """Against hundred thousands of directions tried."""
+    """Against some thousands of directions tried, near it and far from it."""
     model, posterior = modelled(set_with_errors(), "gp", nodes=4)
     evidence = posterior.evidence
     approx, rows = evidence.approximation, model.rows(evidence.theta, evidence.root)

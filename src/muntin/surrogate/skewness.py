@@ -22,6 +22,7 @@ from muntin.surrogate.approximation import Approximation
 from muntin.surrogate.sites import Rows
 
 Array = NDArray[np.float64]
+# Powers that find the axis of the skew.
 _STEPS = 8
 # Cells whose standardised third moments stay below this at all nodes pass on nothing to speak of.
 _LEAST = 0.05
