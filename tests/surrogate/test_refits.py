@@ -5,6 +5,8 @@ the nodes of the refit, and averages the reading's law over latent value and pla
 of its own.
 """
 
+from dataclasses import replace
+
 import numpy as np
 import pandas as pd
 import pytest
@@ -164,6 +166,24 @@ def test_a_refit_of_any_reading_is_the_fit_without_it(all_refitted):
         ratio = evaluate(model, nodes.evidence.theta).log - nodes.evidence.log
         expected = logsumexp(ratio + nodes.log_weights)
         assert loo.log_density[i] == pytest.approx(expected, abs=3e-3)
+
+
+def test_nodes_without_a_free_fixed_point_have_the_evidence_of_the_rest():
+    """A reading that says nothing changes the evidence by one number alike at all nodes, though the
+    way to the sites differs; Laplace's, where only one of the two settles, would be further off.
+    """
+    data = two_plates().take(np.array([0, 0, 2, 3, 5, 6, 10, 12, 14]))
+    model = model_of("quadratic", data, columns=COLUMNS)
+    whole = integrate(model, 1)
+    fewer = replace(model, cells=refits.less(model.cells, 8, refits.nothing(model, whole)))
+    refit = integrate(fewer, 1, 128)
+    rest = model_of("quadratic", data.take(np.arange(8)), columns=COLUMNS)
+    evidence, _ = on_nodes(rest, refit)
+    away = evidence.log - refit.evidence.log
+    assert not len(evidence.approximation.laplace)
+    assert not len(refit.evidence.approximation.laplace)
+    likely = refit.log_weights > np.log(1e-3)
+    assert np.abs(away - np.median(away))[likely].max() < 0.15
 
 
 def test_the_identity_link_is_refitted_alike(all_refitted):

@@ -82,7 +82,8 @@ def test_the_axis_is_where_the_third_cumulant_is_largest():
 
         tried = rng.normal(size=(2000, 50)) @ np.eye(50)[:, : root.shape[2]]
         near = axis[k] + rng.normal(size=(2000, root.shape[2])) * rng.choice([0.05, 0.3], (2000, 1))
-        every = np.concatenate([tried, near, own, -own])
+        toward = [axis[k] + c * own for c in (-0.3, -0.1, -0.02, 0.02, 0.1, 0.3)]
+        every = np.concatenate([tried, near, own, -own, *toward])
         every /= np.linalg.norm(every, axis=1, keepdims=True)
         assert cumulant(axis[k]) > 0.2
         assert cumulant(every).max() < 1.001 * cumulant(axis[k])
