@@ -47,14 +47,14 @@ def on_nodes(model, refit):
     return evidence, log_w - logsumexp(log_w)
 
 
-def without(data, i, start, refit=None, seed=1):
+def without(data, i, start, refit=None, nodes=512):
     """Log density, mean and transform of reading i by a fit to the others; refit: whose nodes to
-    take.
+    take, else so many of its own.
     """
     rest = data.take(np.delete(np.arange(len(data)), i))
     model = model_of("quadratic", rest, columns=COLUMNS)
     if refit is None:
-        posterior = integrate(model, seed, refits._NODES, start)
+        posterior = integrate(model, 11, nodes, start)
         evidence, log_weights = posterior.evidence, posterior.log_weights
     else:
         evidence, log_weights = on_nodes(model, refit)
@@ -87,13 +87,9 @@ def without(data, i, start, refit=None, seed=1):
     )
 
 
-def errors(loo, data, whole, anew=None):
-    """Absolute errors (n, 3) of log density, mean and transform; whole: the fit to all; anew: the
-    refits.
-    """
+def errors(loo, expected):
+    """Absolute errors (n, 3) of log density, mean and transform."""
     found = np.stack([loo.log_density, loo.mean, loo.pit], axis=1)
-    start, refit = start_of(whole), anew or {}
-    expected = [without(data, i, start, refit.get(i)) for i in range(len(data))]
     return np.abs(found - np.array(expected))
 
 
@@ -110,17 +106,22 @@ def cavities_only(model, posterior):
 
 def test_every_reading_beside_a_wild_one_agrees_with_a_refit():
     """A log density off by 0.1 is off by a tenth of the density. From the cavities alone the wild
-    well's is off by more than 2, that is by a factor of 7 of the density.
+    well's is off by more than 2, that is by a factor of 7 of the density, and from the nodes of its
+    refit it may be as far off, since few of them come near so wild a reading.
     """
     data = two_plates(wild=(3,))
     model = model_of("quadratic", data, columns=COLUMNS)
     posterior = integrate(model, 1)
-    loo = leave_one_out_of(model, posterior, 1)
-    off = errors(loo, data, posterior)
-    assert off[:, 0].mean() < 0.05
-    assert off.max(axis=0)[0] < 0.15
-    assert off.max(axis=0)[1] < 0.03
-    assert off.max(axis=0)[2] < 0.04
+    start = start_of(posterior)
+    expected = [without(data, i, start, nodes=4096 if i == 3 else 512) for i in range(len(data))]
+    for seed in (1, 2, 3):
+        loo = leave_one_out_of(model, integrate(model, seed), seed)
+        off = errors(loo, expected)
+        assert off[:, 0].mean() < 0.06
+        assert off[3, 0] < 0.25
+        assert np.delete(off[:, 0], 3).max() < 0.15
+        assert off[:, 1].max() < 0.03
+        assert off[:, 2].max() < 0.04
     before = np.abs(cavities_only(model, posterior).log_density - loo.log_density)
     assert before.max() > 2.0
 
@@ -153,7 +154,8 @@ def test_a_refit_of_any_reading_is_the_fit_without_it(all_refitted):
     assert model.cells.count.max() == 2.0
     whole = integrate(model, 1)
     loo = leave_one_out_of(model, whole, 1)
-    off = errors(loo, data, whole, dict(enumerate(all_refitted)))
+    start = start_of(whole)
+    off = errors(loo, [without(data, i, start, refit) for i, refit in enumerate(all_refitted)])
     assert list(np.flatnonzero(np.isnan(loo.pit))) == [5]
     # Sites settle to 1e-2 of a latent sd.
     assert off[2:, 0].max() < 1.5e-2
@@ -162,7 +164,7 @@ def test_a_refit_of_any_reading_is_the_fit_without_it(all_refitted):
     for i in (0, 1):
         rest = data.take(np.delete(np.arange(len(data)), i))
         fewer = model_of("quadratic", rest, columns=COLUMNS)
-        nodes = integrate(fewer, 1, refits._NODES, start_of(whole))
+        nodes = refits.fit_of_fewer(fewer, 1, start_of(whole))
         ratio = evaluate(model, nodes.evidence.theta).log - nodes.evidence.log
         expected = logsumexp(ratio + nodes.log_weights)
         assert loo.log_density[i] == pytest.approx(expected, abs=3e-3)
@@ -195,7 +197,7 @@ def test_the_identity_link_is_refitted_alike(all_refitted):
     for i in range(len(data)):
         rest = data.take(np.delete(np.arange(len(data)), i))
         fewer = model_of("quadratic", rest, "real")
-        posterior = integrate(fewer, 1, refits._NODES, start_of(whole))
+        posterior = refits.fit_of_fewer(fewer, 1, start_of(whole))
         evidence, approx = posterior.evidence, posterior.evidence.approximation
         nodes = nodes_of(fewer, evidence.theta, evidence.root, approx.mean, approx.V)
         mean, variance = nodes.moments(data.X[[i]])

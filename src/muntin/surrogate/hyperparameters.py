@@ -243,17 +243,25 @@ def effort(model: Model) -> tuple[int, float, float]:
 
 
 def integrate(
-    model: Model, seed: int, nodes: int | None = None, start: Array | None = None
+    model: Model,
+    seed: int,
+    nodes: int | None = None,
+    start: Array | None = None,
+    enough: float | None = None,
 ) -> Posterior:
     """The posterior of the hyperparameters as weighted nodes; their mode is searched from `start`.
 
-    nodes: drawn in each round, a power of two; 0.4 of them effective are enough. By default as
-    many as `effort` says.
+    nodes: drawn in each round, a power of two, by default as many as `effort` says. enough:
+    effective nodes after which no more are drawn, by default 0.4 of a round's nodes where those
+    are given.
     """
     from scipy.stats.qmc import Sobol
 
     layout = model.layout
-    nodes, enough, plenty = effort(model) if nodes is None else (nodes, 0.4 * nodes, float(nodes))
+    if nodes is None:
+        nodes, enough, plenty = effort(model)
+    else:
+        enough, plenty = enough or 0.4 * nodes, float(nodes)
     eta0, top = mode(model, start)
     proposals = [_at_mode(model, eta0, top)]
     every, evidence, again = np.zeros((0, len(layout))), top, False

@@ -22,7 +22,7 @@ from muntin.surrogate.tilted import CellLikelihood, Pair, Rule, Tilted, place, r
 Array = NDArray[np.float64]
 _LOG_2PI = float(np.log(2.0 * np.pi))
 # Sweeps before settled nodes are set aside; the sum bounds the work on one node.
-_FIRST_STAGES, _LAST_STAGES = (4, 2, 3, 4, 6), (10, 20, 40)
+_FIRST_STAGES, _LAST_STAGES = (4, 2, 3, 4, 6), (10, 20, 20, 20)
 # Moves that have not shrunk to this share over so many sweeps lead to no fixed point.
 _SHRINKING = 0.7
 _COARSE = rule_of(12)

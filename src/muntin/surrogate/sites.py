@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from functools import cached_property
 
 import numpy as np
 from numpy.typing import NDArray
@@ -31,8 +32,19 @@ class Rows:
             return self
         return Rows(self.root[index], self.latent, self.scale[index])
 
+    @cached_property
+    def _apart(self) -> bool:
+        """Whether every cell has a latent value of its own, in order."""
+        return np.array_equal(self.latent, np.arange(self.root.shape[1]))
+
+    def spread(self, latents: Array) -> Array:
+        """The value (S, C, ...) of each cell's latent value, of quantities (S, U, ...)."""
+        return latents if self._apart else latents[:, self.latent]
+
     def gathered(self, cells: Array) -> Array:
         """Sums (S, U, ...) over the cells of each latent value of quantities (S, C, ...)."""
+        if self._apart:
+            return cells
         incidence = np.zeros((self.root.shape[1], len(self.latent)))
         incidence[self.latent, np.arange(len(self.latent))] = 1.0
         return np.tensordot(cells, incidence, axes=(1, 1)) if cells.ndim == 2 else incidence @ cells
@@ -123,15 +135,15 @@ class Gaussian:
         return M
 
     def _pair(self) -> Pair:
-        root, scale, latent = self.rows.root, self.rows.scale, self.rows.latent
+        root, scale, spread = self.rows.root, self.rows.scale, self.rows.spread
         own = root.shape[2]
-        mean_u = (root @ self.mean[:, :own, None])[..., 0][:, latent]
-        uu = np.einsum("sur,sur->su", root @ self.V[:, :own, :own], root)[:, latent]
+        mean_u = spread((root @ self.mean[:, :own, None])[..., 0])
+        uu = spread(np.einsum("sur,sur->su", root @ self.V[:, :own, :own], root))
         if not scale.shape[2]:
             zero = np.zeros_like(uu)
             return Pair(mean_u, zero, uu, zero, np.ones_like(uu))
         mean_s = (scale @ self.mean[:, own:, None])[..., 0]
-        us = ((root @ self.V[:, :own, own:])[:, latent] * scale).sum(-1)
+        us = (spread(root @ self.V[:, :own, own:]) * scale).sum(-1)
         ss = ((scale @ self.V[:, own:, own:]) * scale).sum(-1)
         return Pair(mean_u, mean_s, uu, us, ss)
 
@@ -148,15 +160,16 @@ def invert(M: Array) -> tuple[Array, Array, NDArray[np.intp]]:
 
     # Two calls of LAPACK a matrix take half the time of a factor and a general inverse.
     turned = np.swapaxes(M, 1, 2)
-    failed = [dpotrf(A, lower=0, clean=0, overwrite_a=1)[1] for A in turned]
+    failed = [dpotrf(A, lower=0, clean=1, overwrite_a=1)[1] for A in turned]
     bad = np.flatnonzero(failed)
     M[bad] = np.eye(M.shape[1])
     log_det = 2.0 * np.log(np.diagonal(M, axis1=1, axis2=2)).sum(1)
     for A in turned:
         dpotri(A, lower=0, overwrite_c=1)
-    rows, columns = np.triu_indices(M.shape[1], 1)
-    M[:, rows, columns] = M[:, columns, rows]
-    return M, log_det, bad
+    # One triangle holds the inverse, the other zeros.
+    index = np.arange(M.shape[1])
+    M[:, index, index] *= 0.5
+    return M + turned, log_det, bad
 
 
 def natural(p: Pair) -> Sites:

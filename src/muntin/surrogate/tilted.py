@@ -29,6 +29,11 @@ class Rule(NamedTuple):
     abscissae: Array
     log_weights: Array
 
+    @property
+    def powers(self) -> Array:
+        """The abscissae and their squares (Q, 2)."""
+        return np.stack([self.abscissae, self.abscissae**2], axis=1)
+
 
 def rule_of(points: int) -> Rule:
     """The rule with so many points."""
@@ -144,10 +149,9 @@ class CellLikelihood:
         return self.ceiling if u.ndim == 2 else self.ceiling[..., None]
 
 
-def _average(w: Array, *factors: Array) -> Array:
-    """Average (S, C) of a product over the quadrature points."""
-    letters = ",".join(["scq"] * (1 + len(factors)))
-    return np.asarray(np.einsum(f"{letters}->sc", w, *factors))
+def _average(w: Array, values: Array) -> Array:
+    """Average (S, C) over the quadrature points."""
+    return np.asarray(np.einsum("scq,scq->sc", w, values))
 
 
 def _log_reading(residual: Array, variance: Array, censored: NDArray[np.intp]) -> Array:
@@ -270,9 +274,9 @@ class Points:
         mass = self.w.sum(-1, keepdims=True)
         self.w /= mass
         self.log_z = (top + np.log(mass))[..., 0]
-        self.mean_u = _average(self.w, self.u)
-        away = self.u - self.mean_u[..., None]
-        self.sd_u = np.sqrt(np.maximum(_average(self.w, away, away), 1e-16))
+        x, xx = np.moveaxis(self.w @ rule.powers, -1, 0)
+        self.mean_u = centre + spread * x
+        self.sd_u = np.sqrt(np.maximum(spread**2 * (xx - x * x), 1e-16))
 
     def put(self, chosen: NDArray[np.bool_], moved: Points) -> None:
         """Take over the points of `moved`, of one node, for the cells chosen (S, C)."""
@@ -289,9 +293,10 @@ class Points:
         """Mean and covariance (S, C) of the pairs."""
         s_given, v_given = self.scale_given(pull_of(self.residual, self.total, self.censored))
         s = _average(self.w, s_given)
-        du, ds = self.u - self.mean_u[..., None], s_given - s[..., None]
-        ss = _average(self.w, ds, ds) + _average(self.w, v_given)
-        return Pair(self.mean_u, s, self.sd_u**2, _average(self.w, du, ds), ss)
+        s_given -= s[..., None]
+        us = _average(self.w, (self.u - self.mean_u[..., None]) * s_given)
+        ss = _average(self.w, s_given * s_given + v_given)
+        return Pair(self.mean_u, s, self.sd_u**2, us, ss)
 
     def moments(self, lik: CellLikelihood) -> Tilted:
         """Tilted moments of the pairs, and slopes of the log normaliser."""
