@@ -144,9 +144,11 @@ def joined(rounds: Sequence[Evidence]) -> Evidence:
     )
 
 
-def evaluate(model: Model, theta: Array, near: Evidence | None = None) -> Evidence:
+def evaluate(
+    model: Model, theta: Array, near: Evidence | None = None, tolerance: float = _TOLERANCE
+) -> Evidence:
     """Evidence of the model at log hyperparameters theta (S, H); sites start from the closest node
-    of `near`, sharpened or blunted as the noise asks.
+    of `near`, sharpened or blunted as the noise asks, and move until they settle to `tolerance`.
     """
     rows = model.rows(theta)
     start = None
@@ -156,7 +158,7 @@ def evaluate(model: Model, theta: Array, near: Evidence | None = None) -> Eviden
         closest = away.sum(-1).argmin(axis=1)
         sites = near.approximation.sites.nodes(closest)
         start = sites.times(np.exp(2.0 * (near.theta[closest, :1] - theta[:, :1])))
-    return Evidence(theta, rows.root, approximate(rows, model.likelihood(theta), start, _TOLERANCE))
+    return Evidence(theta, rows.root, approximate(rows, model.likelihood(theta), start, tolerance))
 
 
 def slope(model: Model, evidence: Evidence) -> Array:

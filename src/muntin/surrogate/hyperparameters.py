@@ -21,6 +21,8 @@ _DEGREES = 6.0
 _BOUND = 4.0
 _ROUNDS = 5
 _STEP = 0.05
+# So roughly settled are nodes that say no more than how wide the proposal should be.
+_ROUGH = 0.1
 # How far from the mode the fall along an axis is looked at, in sds there, and along the gap of a
 # ceiling, in sds of its prior.
 _AFAR = np.array([-4.0, -2.5, -1.2, 1.2, 2.5, 4.0])
@@ -185,7 +187,7 @@ def _splits(model: Model, eta: Array, top: Evidence, axes: Array) -> tuple[Array
     steps /= np.maximum(1.0, np.abs(steps) * length[:, None] / _BOUND)
     afar = (eta + steps[:, :, None] * axes[:, None, :]).reshape(-1, len(eta))
     height = top.log[0] + log_prior(eta[None])[0]
-    there = evaluate(model, layout.theta(afar), top).log + log_prior(afar)
+    there = evaluate(model, layout.theta(afar), top, _ROUGH).log + log_prior(afar)
     fall = np.maximum(height - there, 1e-3).reshape(steps.shape)
     # The sd of a Gaussian that falls off as far at that distance.
     wide = np.maximum(np.abs(steps) / np.sqrt(2.0 * fall), 1.0)
