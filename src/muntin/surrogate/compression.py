@@ -18,9 +18,12 @@ from muntin.surrogate.links import latent_of, mean_of
 from muntin.surrogate.nodes import Surface
 
 Array = NDArray[np.float64]
-_PROBES = 23
+_PROBES = 22
 _LEVELS = (-1.1, 0.0, 1.4)
-_SHARES = (0.04, 0.12, 0.25, 0.4, 0.55, 0.68, 0.78, 0.85, 0.9, 0.94, 0.965, 0.985)
+_SHARES = (
+    *(0.03, 0.08, 0.16, 0.26, 0.37, 0.48, 0.58, 0.67, 0.75),
+    *(0.82, 0.875, 0.915, 0.945, 0.968, 0.987),
+)
 # How much the sums to one and the error sds count beside a chance.
 _ONE, _ERRORS = 10.0, 0.3
 
