@@ -11,12 +11,15 @@ from typing import TYPE_CHECKING, Any
 import pandas as pd
 
 from muntin.record.definition import Definition
+from muntin.record.edits import record_path
+from muntin.record.faults import StudyFaults
 from muntin.record.files import write_atomic
+from muntin.record.offers import OFFERED, PLANS
 
 if TYPE_CHECKING:
     from muntin.bench.plan import Plan
 
-PLANS, ADVICE = "plans", "advice"
+ADVICE = "advice"
 PLAN_COPY = "plan.csv"
 
 
@@ -35,6 +38,7 @@ def plan_table_text(definition: Definition, plan: Plan) -> str:
     """Return the plan as a plate table (.csv), well by well along the rows of the plate."""
     stream = io.StringIO()
     columns = plan_columns(definition)
+    columns += [name for name in plan.wells if name not in columns]
     writer = csv.DictWriter(stream, columns, restval="", lineterminator="\n")
     writer.writeheader()
     rows = plan.wells.to_dict("records")
@@ -50,7 +54,8 @@ def _position(well: str) -> tuple[int, str, int]:
 
 
 def _cells(definition: Definition, row: dict[Any, Any]) -> dict[str, str]:
-    cells = {"well": row["well"], "role": row["role"], "reason": row["reason"] or ""}
+    cells = {str(name): "" if pd.isna(value) else str(value) for name, value in row.items()}
+    cells |= {"well": row["well"], "role": row["role"], "reason": row["reason"] or ""}
     for factor in definition.factors:
         value = row[factor.name]
         empty = value is None or value == "" or pd.isna(value)
@@ -96,7 +101,38 @@ def _untouched(folder: Path, plate: str, path: Path, text: str) -> str | None:
 
 
 def write_plan(folder: Path, plate: str, text: str) -> tuple[Path, str]:
-    """Write a plan into plans/; return its path and a remark. Raises StudyFaults."""
+    """Write a plan into plans/, and a copy of it into plans/offered/, which is to stay as it is;
+    return its path and a remark. Raises StudyFaults.
+    """
     path, remark = plan_path(folder, plate, text)
+    write_atomic(offered_path(path), text)
     write_atomic(path, text)
     return path, remark
+
+
+def offered_path(plan: Path) -> Path:
+    """Where the copy of a plan lies that tells what was offered."""
+    return plan.parent / OFFERED / plan.name
+
+
+def edited_path(folder: Path, plate: str) -> Path:
+    """Return a name for an edited plan under which nothing lies yet: no plan, copy or record."""
+    path, number = folder / PLANS / f"{plate}.csv", 1
+    while any(p.exists() for p in (path, offered_path(path), record_path(path))):
+        number += 1
+        path = path.with_name(f"{plate}.r{number}.csv")
+    return path
+
+
+def write_edited(path: Path, text: str, record: str) -> None:
+    """Write an edited plan, its copy and its record; all of them or, with StudyFaults, none."""
+    files = {record_path(path): record, offered_path(path): text, path: text}
+    written: list[Path] = []
+    try:
+        for file, content in files.items():
+            write_atomic(file, content)
+            written.append(file)
+    except StudyFaults:
+        for file in written:
+            file.unlink(missing_ok=True)
+        raise
