@@ -8,8 +8,9 @@ from dataclasses import dataclass
 import numpy as np
 import pandas as pd
 
-from muntin.design.selection import Aim, select
+from muntin.design.selection import select
 from muntin.design.terms import Terms, measured_by_stock
+from muntin.design.weighing import Aim
 from muntin.record.definition import Definition
 from muntin.record.offers import (
     Change,

@@ -81,7 +81,7 @@ def _as_kept(view: Assessment, rows: pd.DataFrame, kept: KeptPlan, found: Found)
     definition = view.study.definition
     there = wells_of(definition, kept.rows)
     by_hand = [c.now for c in found[1] if c.kind in ("changed", "added")]
-    out: list[dict[str, Any]] = []
+    out: list[dict[Any, Any]] = []
     for row in rows.to_dict("records"):
         number = row["kept"]
         if number >= 0:

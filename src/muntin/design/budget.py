@@ -64,7 +64,7 @@ class Budget:
     def _floors(self, levels: Levels, open_wells: Truths) -> Array:
         """Least protein (Q,) of a candidate that stays open once each candidate is taken."""
         stocks = levels.stocks()
-        floors = np.full(len(self.mg), np.inf)
+        floors = self.mg.copy()
         for stock in np.unique(stocks[open_wells]):
             first = int(np.flatnonzero(open_wells & (stocks == stock))[0])
             left_open = open_wells & levels.with_one([first]).open()

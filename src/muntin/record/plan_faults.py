@@ -19,30 +19,35 @@ from muntin.record.wells import position
 def step_faults(
     table: Table, factor: Factor, targets: Floats, needed: Truths, found: Findings
 ) -> Floats:
-    """Return the targets (raw unit) put exactly on the levels of new plans; one that lies on none
-    joins `found`, with the nearest, and becomes NaN, as does one outside the range.
+    """Return the targets (raw unit) put exactly on the levels of new plans. A needed one that lies
+    on none becomes NaN and joins `found`, with the nearest; one outside the range is told already.
     """
     low, high, step = factor.span
     levels = factor.plan_levels().astype(float)
-    out = np.full(len(targets), np.nan)
-    for row in np.flatnonzero(needed & np.isfinite(targets)).tolist():
+    out = targets.copy()
+    for row in np.flatnonzero(np.isfinite(targets)).tolist():
         value = float(targets[row])
-        if not low - 1e-6 * step <= value <= high + 1e-6 * step:
-            continue
         close = float(levels[np.abs(levels - value).argmin()])
         if abs(close - value) <= 1e-6 * step:
             out[row] = close
-            continue
-        inside = levels[0] <= value <= levels[-1]
-        problem = (
-            "is not on a bench step; nearest is" if inside else "is not in new plans; they use"
-        )
-        span = f"{factor.shown(levels[0])} to {factor.shown(levels[-1])} {factor.unit}".rstrip()
-        allowed = factor.shown(close) if inside else span
-        rule = f"steps of {number(step)} from {number(low)}" if inside else "plan_low, plan_high"
-        hint = f"study.toml, factors, {factor.name}: {rule}"
-        found.faults.append(table.fault(row, factor.name, problem, allowed, hint))
+        elif needed[row]:
+            out[row] = np.nan
+            if low - 1e-6 * step <= value <= high + 1e-6 * step:
+                found.faults.append(_off_step(table, factor, row, value, close))
     return out
+
+
+def _off_step(table: Table, factor: Factor, row: int, value: float, close: float) -> Fault:
+    low, _, step = factor.span
+    first, last = (float(end) for end in factor.plan_levels()[[0, -1]])
+    rule = f"study.toml, factors, {factor.name}: "
+    if not first <= value <= last:
+        span = f"{factor.shown(first)} to {factor.shown(last)} {factor.unit}".rstrip()
+        hint = f"{rule}plan_low, plan_high; nearest is {factor.shown(close)}"
+        return table.fault(row, factor.name, "lies outside new plans,", span, hint)
+    hint = f"{rule}steps of {number(step)} from {number(low)}"
+    problem = "is not on a bench step; nearest is"
+    return table.fault(row, factor.name, problem, factor.shown(close), hint)
 
 
 def condition_faults(
@@ -53,8 +58,9 @@ def condition_faults(
     for factor in definition.factors:
         chosen = [] if factor.plan_choices is None else [*factor.plan_choices]
         for row in rows.tolist() if chosen else []:
-            if frame[factor.name][row] not in chosen:
-                hint = did_you_mean(str(frame[factor.name][row]), chosen)
+            choice = str(frame[factor.name][row])
+            if choice in (factor.choices or ()) and choice not in chosen:
+                hint = did_you_mean(choice, chosen)
                 rule = f"study.toml, factors, {factor.name}, plan_choices; {hint}"
                 yield table.fault(row, factor.name, "is not a choice of new plans", hint=rule)
     conditions = frame.loc[rows, [*definition.factor_names]].infer_objects()
@@ -77,11 +83,12 @@ def _broken(
     rule: str,
     where: str,
 ) -> Fault:
-    close = _nearest_condition(definition, frame.loc[row])
+    condition = frame.iloc[row]
+    close = _nearest_condition(definition, condition)
     return Fault(
         file=table.file,
         where=table.where[row],
-        value=_shown(definition, frame.loc[row]),
+        value=_shown(definition, condition),
         problem=problem,
         allowed=quoted(rule),
         hint=where + (f"; nearest that may be run: {close}" if close else ""),
@@ -100,9 +107,8 @@ def _nearest_condition(definition: Definition, row: pd.Series) -> str:
     for factor in definition.factors:
         if factor.continuous:
             low, high, _ = factor.span
-            away += (
-                (box[factor.name].to_numpy(dtype=float) - row[factor.name]) / (high - low)
-            ) ** 2
+            off = box[factor.name].to_numpy(dtype=float) - row[factor.name]
+            away += (off / (high - low)) ** 2
         else:
             away += (box[factor.name] != row[factor.name]).to_numpy(dtype=float)
     return _shown(definition, box.iloc[int(away.argmin())]) if len(box) else ""

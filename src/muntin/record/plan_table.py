@@ -146,6 +146,9 @@ def _rows(
             columns[f"{factor.name}_measured"] = np.where(known, used, np.nan)
     columns["reason"] = table.cells("reason")
     frame = pd.DataFrame(columns, index=range(len(table)))
+    controls = ~frame["role"].isin(INFORMING)
+    for factor in definition.factors:
+        frame.loc[controls, factor.name] = np.nan if factor.continuous else None
     own = {name: table.cells(name) for name in table.columns if name not in _known(definition)}
     cells = pd.DataFrame(own, index=frame.index)
     _check_rows(table, study, frame, needed, found)

@@ -38,7 +38,7 @@ def plan_table_text(definition: Definition, plan: Plan) -> str:
     """Return the plan as a plate table (.csv), well by well along the rows of the plate."""
     stream = io.StringIO()
     columns = plan_columns(definition)
-    columns += [name for name in plan.wells if name not in columns]
+    columns += [str(name) for name in plan.wells if name not in columns]
     writer = csv.DictWriter(stream, columns, restval="", lineterminator="\n")
     writer.writeheader()
     rows = plan.wells.to_dict("records")
