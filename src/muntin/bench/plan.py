@@ -23,7 +23,6 @@ from muntin.record.faults import Fault, Findings, StudyFaults
 from muntin.record.levels import check_stocks
 from muntin.record.offers import Change, Offer
 from muntin.record.plan_table import KeptPlan, read_plan
-from muntin.record.readings import INFORMING
 from muntin.record.stocks import Stock, planned_stocks
 from muntin.record.study import Study
 from muntin.window.assessment import Assessment
@@ -73,7 +72,7 @@ def propose(
     if aim not in AIMS:
         raise ValueError(f"aim {aim!r} is none of {', '.join(AIMS)}")
     plate = next_plate(view.study)
-    asked, stocks, noted = _asked(view, wells, plate, keep)
+    asked, stocks = _asked(view, wells, plate, keep)
     found = None if asked.kept is None else edited(view, asked.kept, plate)
     terms = _terms(view.study, asked, stocks, found)
     selection = _selected(view, asked, aim, seed, terms)
@@ -89,7 +88,7 @@ def propose(
         aim=aim,
         seed=seed,
         protein_mg=protein_needed_mg(view.study, placed),
-        notices=(*noted, *plan_notices(view, selection, asked, stocks)),
+        notices=plan_notices(view, selection, asked, stocks),
         edit=edit,
     )
 
@@ -103,11 +102,8 @@ def next_plate(study: Study) -> str:
 
 def _asked(
     view: Assessment, wells: int | None, plate: str, keep: str | Path | None
-) -> tuple[Asked, tuple[Stock, ...], list[str]]:
-    """Read what is kept and the stocks, and look whether there is room; every fault in one report.
-
-    Besides the stocks measured for the plate, notices of the kept plan are returned.
-    """
+) -> tuple[Asked, tuple[Stock, ...]]:
+    """Read what is kept and the stocks, and look for room; every fault comes in one report."""
     study, found = view.study, Findings()
     stocks = planned_stocks(study.folder, study.definition.factors, plate, found)
     kept = None if keep is None else read_plan(Path(keep), study, plate, stocks, found)
@@ -120,7 +116,7 @@ def _asked(
     faults = [*found.faults, *(room_faults(study, asked) if readable else [])]
     if faults:
         raise StudyFaults(faults)
-    return asked, stocks, found.notices
+    return asked, stocks
 
 
 def _terms(
@@ -136,7 +132,7 @@ def _terms(
     if kept is None or found is None:
         return Terms(stocks=stocks, budget_mg=budget)
     return Terms(
-        held=kept.rows[kept.rows["role"].isin(INFORMING)],
+        held=kept.held(),
         declined=declined(study.definition, kept, found[1]),
         stocks=stocks,
         budget_mg=budget,

@@ -55,7 +55,10 @@ def _of_stocks(definition: Definition, selection: Selection, stocks: Sequence[St
     for stock in stocks:
         factor = factors[stock.factor]
         wells = sum(same_target(factor, v, stock.target) for v in rows[factor.name].tolist())
-        if wells and not same_target(factor, stock.measured, stock.target):
+        if not wells:
+            target = factor.named(factor.shown(stock.target))
+            notices.append(f"{stock.file}: no well of the plan has {target}; its stock is not used")
+        elif not same_target(factor, stock.measured, stock.target):
             said = factor.named(factor.shown(stock.target))
             notices.append(
                 f"{said} measured {number(stock.measured)} ({stock.file}): probabilities and "

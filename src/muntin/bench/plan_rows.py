@@ -2,14 +2,15 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from typing import Any
 
-import numpy as np
 import pandas as pd
 
 from muntin.bench.room import Asked
 from muntin.design.reasons import reasons
 from muntin.design.selection import Selection
+from muntin.record.definition import Definition
 from muntin.record.offers import Change, Offer, own_words, wells_of
 from muntin.record.plan_table import KeptPlan
 from muntin.record.readings import INFORMING
@@ -37,11 +38,12 @@ def plan_rows(
     actual = selection.actual.iloc[picked].reset_index(drop=True)
     p_mean = view.judged(actual, "mean")
     p_now = view.judged(actual, definition.judged_by)
-    said = reasons(definition, selection, p_mean, p_now, opening=view.fresh)
+    plain = reasons(definition, selection, p_mean, p_now, opening=view.fresh)
+    measured = _measured(definition, conditions, actual)
     rows = conditions.assign(
         role=[pick.role for pick in selection.picks],
         p_now=p_now,
-        reason=said,
+        reason=[f"{said}{more}" for said, more in zip(plain, measured, strict=True)],
         well="",
         kept=_kept_numbers(asked.kept, selection),
     )
@@ -54,7 +56,7 @@ def plan_rows(
     parts = [rows, _kept_controls(asked.kept), pd.DataFrame(added)]
     whole = pd.concat([part for part in parts if len(part)], ignore_index=True)
     if asked.kept is not None and found is not None:
-        whole = _as_kept(view, whole, asked.kept, found)
+        whole = _as_kept(view, whole, asked.kept, found, measured)
     return whole
 
 
@@ -62,7 +64,7 @@ def _kept_numbers(kept: KeptPlan | None, selection: Selection) -> list[int]:
     """The number in the kept plan of each pick, -1 for those that were chosen."""
     if kept is None:
         return [-1] * len(selection.picks)
-    rows = kept.rows.index[kept.rows["role"].isin(INFORMING)]
+    rows = kept.held().index
     return [-1 if p.held is None else int(rows[p.held]) for p in selection.picks]
 
 
@@ -76,13 +78,19 @@ def _kept_controls(kept: KeptPlan | None) -> pd.DataFrame:
     return pd.DataFrame(columns)
 
 
-def _as_kept(view: Assessment, rows: pd.DataFrame, kept: KeptPlan, found: Found) -> pd.DataFrame:
+def _as_kept(
+    view: Assessment,
+    rows: pd.DataFrame,
+    kept: KeptPlan,
+    found: Found,
+    measured: Sequence[str],
+) -> pd.DataFrame:
     """The rows with the wells, words and own columns of the kept ones."""
     definition = view.study.definition
     there = wells_of(definition, kept.rows)
     by_hand = [c.now for c in found[1] if c.kind in ("changed", "added")]
     out: list[dict[Any, Any]] = []
-    for row in rows.to_dict("records"):
+    for at, row in enumerate(rows.to_dict("records")):
         number = row["kept"]
         if number >= 0:
             row["well"] = kept.rows.loc[number, "well"]
@@ -90,8 +98,9 @@ def _as_kept(view: Assessment, rows: pd.DataFrame, kept: KeptPlan, found: Found)
             if row["role"] in INFORMING:
                 well = there[number]
                 own = own_words(well.reason)
-                row["reason"] = own or _reason(view, row["reason"], well in by_hand)
-                row["reason"] += _measured(view, kept.rows.loc[number])
+                hand = well in by_hand or well.reason.startswith(_BY_HAND)
+                said = _reason(view, row["reason"], hand)
+                row["reason"] = f"{own}{measured[at]}" if own else said
         out.append(row)
     columns = [*rows.columns, *kept.cells.columns]
     frame = pd.DataFrame(out, columns=columns, index=rows.index)
@@ -106,11 +115,12 @@ def _reason(view: Assessment, said: str, by_hand: bool) -> str:
     return _BY_HAND if view.fresh else f"{_BY_HAND}: {said}"
 
 
-def _measured(view: Assessment, row: pd.Series) -> str:
-    """The measured values of a row, as "; pH measured 5.12"."""
-    said = []
-    for factor in view.study.definition.factors:
-        value = row[f"{factor.name}_measured"]
-        if np.isfinite(value) and abs(value - row[factor.name]) > 1e-9:
-            said.append(f"; {factor.label} measured {value:.6g}")
-    return "".join(said)
+def _measured(definition: Definition, targets: pd.DataFrame, actual: pd.DataFrame) -> list[str]:
+    """The measured values of each row, as "; pH measured 5.12", "" where they are the targets."""
+    said = [""] * len(targets)
+    for factor in definition.factors:
+        pairs = zip(targets[factor.name], actual[factor.name], strict=True)
+        for row, (target, value) in enumerate(pairs):
+            if factor.continuous and abs(value - target) > 1e-9:
+                said[row] += f"; {factor.label} measured {value:.6g}"
+    return said

@@ -131,12 +131,19 @@ def differences(offered: Sequence[OfferedWell], there: Sequence[OfferedWell]) ->
     """
     left, right = [*offered], [*there]
     _pair(left, right, lambda a, b: (a.well, a.role, a.condition) == (b.well, b.role, b.condition))
-    moved = _pair(left, right, lambda a, b: (a.role, a.condition) == (b.role, b.condition))
+    taken = {well.well for well in right}
+    moved = _pair(left, right, lambda a, b: a.well not in taken and _same(a, b))
+    moved += _pair(left, right, _same)
     changed = _pair(left, right, lambda a, b: bool(a.well) and a.well == b.well)
     changes = [Change("moved", was, now) for was, now in moved if now.well]
     changes += [Change("changed", was, now) for was, now in changed]
     changes += [Change("left out", was, None) for was in left]
     return changes + [Change("added", None, now) for now in right]
+
+
+def _same(one: OfferedWell, other: OfferedWell) -> bool:
+    """Whether two wells are given the same, wherever they lie."""
+    return (one.role, one.condition) == (other.role, other.condition)
 
 
 def _pair(
@@ -169,8 +176,13 @@ def nearest_offer(
 
 def own_words(reason: str) -> str:
     """Return a reason as far as it is the user's own, "" for one that muntin gave."""
-    plain = _MEASURED.sub("", reason)
+    plain = without_measured(reason)
     return "" if _GIVEN.search(plain) else plain
+
+
+def without_measured(reason: str) -> str:
+    """Return a reason without the measured values that may stand at its end."""
+    return _MEASURED.sub("", reason)
 
 
 def with_reasons(

@@ -25,6 +25,7 @@ from muntin.record.tables import Table, missing_column, read_table
 from muntin.record.wells import WellError, last_well, well_name
 
 _REVISION = re.compile(r"\.r[0-9]+$")
+_REPEAT = re.compile(r"^well ([0-9]{1,4}) of this condition")
 _OWN = ("well", "role", "plate", "exclude", "p_now", "reason")
 
 
@@ -43,6 +44,14 @@ class KeptPlan:
     rows: pd.DataFrame
     left_out: pd.DataFrame
     cells: pd.DataFrame
+
+    def held(self) -> pd.DataFrame:
+        """The rows that inform the model, in the order in which they were chosen as far as their
+        reasons tell; the index is that of `rows`.
+        """
+        rows = self.rows[self.rows["role"].isin(INFORMING)]
+        number = rows["reason"].str.extract(_REPEAT, expand=False).fillna("1").astype(int)
+        return rows.loc[number.sort_values(kind="stable").index]
 
     def count(self, role: str) -> int:
         """How many rows have a role."""
@@ -66,7 +75,8 @@ def read_plan(
         return None
     _check_plate(path, file, study, plate, found)
     table = _with_wells(table, definition, found)
-    return _rows(path, table, study, plate, stocks, found)
+    # What stocks measured is told with the plan, not row by row.
+    return _rows(path, table, study, plate, stocks, Findings(faults=found.faults))
 
 
 def _shown(path: Path, folder: Path) -> str:
