@@ -67,6 +67,9 @@ def select(
     table = Weighing(view, offered, run, seed, _budget(definition, offered, terms))
     choosing = _Choosing(table, aim, wells)
     ties, tests = _held_rows(terms)
+    for candidate in offered.held:
+        # Bridging wells must do with the levels that test wells leave, too.
+        table.levels.use(candidate)
     choosing.hold(ties)
     bridging = definition.plan.bridging_wells if terms.fill else 0
     choosing.bridge(_bridge(table, max(0, bridging - _count(ties, "bridge"))))
