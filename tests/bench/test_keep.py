@@ -152,6 +152,15 @@ def test_a_whole_plate_is_chosen_around_locked_rows(view, offered):
     assert kinds.count("chosen") == 7 + 4 + 8
 
 
+def test_kept_bridging_wells_and_controls_count_toward_those_that_are_asked(view, offered):
+    _, path = offered
+    rows = [r for r in table(path) if r["role"] != "blank"]
+    rows.remove(next(r for r in rows if r["role"] == "bridge"))
+    plan = muntin.propose(view, wells=8, keep=saved(path, rows))
+    count = plan.wells["role"].value_counts().to_dict()
+    assert count == {"test": 8, "bridge": 4, "blank": 2, "load": 4, "no_resin": 2}
+
+
 def test_new_wells_do_not_repeat_what_the_locked_ones_tell(view):
     # Locking the first choices of a plan, the rest follows as it would have.
     plan = muntin.propose(changed(view, plan={"bridging_wells": 0}), wells=6)

@@ -117,7 +117,8 @@ def _taken(
     """The levels that a greedy pass takes as they come, filled up evenly where it needs fewer."""
     _, picks = scout.run(_kept(scout, chosen))
     column: pd.Series = scout.levels.frame[name]
-    levels = list(dict.fromkeys([*scout.levels.used[name], *column.iloc[picks]]))
+    used = sorted(scout.levels.used[name], key=here.index)
+    levels = list(dict.fromkeys([*used, *column.iloc[picks]]))
     return _filled_up(levels[:most], here, most)
 
 
@@ -135,7 +136,7 @@ def _medoids(
     here: Sequence[Any], weights: Counter[Any], used: Collection[Any], most: int
 ) -> LevelSet:
     """Levels in use, and those that lie nearest (in steps) to where the wells would go."""
-    out = list(used)
+    out = sorted(used, key=here.index)
     wanted = [(here.index(level), count) for level, count in weights.items() if level in here]
 
     def away(levels: Sequence[Any]) -> float:
