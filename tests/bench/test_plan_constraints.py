@@ -179,13 +179,15 @@ def check(given, view, plan, wells, bridging, repeated=True):
     count = plan.wells["role"].value_counts().to_dict()
     assert count["test"] == wells
     assert count.get("bridge", 0) == bridging
+    known = known_to_run(given, view)
+    names = [factor["name"] for factor in given["factors"]]
+    assert {tuple(r[n] for n in names) for r in told if r["role"] == "bridge"} <= known
     wanted = default_controls(96, len(free))
     assert all(count.get(role, 0) >= n for role, n in wanted.items())
     needed = sum(mg_of(given, row) for row in rows)
     assert plan.protein_mg == pytest.approx(needed)
     assert needed <= left_mg(given, view) + 1e-8
     check_lines(given, told)
-    names = [factor["name"] for factor in given["factors"]]
     frame = pd.DataFrame(told)
     counts = frame.groupby(names).size()
     if repeated:

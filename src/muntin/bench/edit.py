@@ -13,10 +13,12 @@ from muntin.design.terms import Terms, measured_by_stock
 from muntin.design.weighing import Aim
 from muntin.record.definition import Definition
 from muntin.record.offers import (
+    PLANS,
     Change,
     Offer,
     OfferedWell,
     nearest_offer,
+    offers_for,
     offers_of,
     wells_of,
     with_reasons,
@@ -64,7 +66,9 @@ def edited(view: Assessment, kept: KeptPlan, plate: str) -> tuple[Offer | None, 
     """Return the offer that an edited plan differs least from, and how, with the user's reasons."""
     definition = view.study.definition
     there = wells_of(definition, kept.rows)
-    found = nearest_offer(offers_of(view.study.folder, definition, plate), there)
+    folder = view.study.folder
+    offers = offers_of(folder, definition, plate)
+    found = nearest_offer(offers_for(offers, kept.path, folder / PLANS), there)
     offer, changes = (None, [Change("added", None, w) for w in there]) if found is None else found
     out = kept.left_out
     left_out = [

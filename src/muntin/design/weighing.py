@@ -30,7 +30,8 @@ Truths = NDArray[np.bool_]
 Aim = Literal["edge", "best", "both"]
 _NODES = 8
 _WATCHED = 1500
-_SCOUT_NODES, _SCOUTED = 3, 250
+# Sets of levels are told apart by few watched points, not by few nodes.
+_SCOUTED = 100
 _DECIDED = 1e-3
 # A plate's shared errors leave little to learn from more wells of the best condition than these.
 _MOST_REPEATS = 4
@@ -71,9 +72,7 @@ class Weighing:
         self.greedy = LazyGreedy(EdgeCriterion(self.outlooks, self.targets), len(self.X))
         self.best: tuple[Outlook, ...] = ()
 
-    def _outlooks(
-        self, P: Array, watched: NDArray[np.intp], nodes: int = _NODES
-    ) -> tuple[Outlook, ...]:
+    def _outlooks(self, P: Array, watched: NDArray[np.intp]) -> tuple[Outlook, ...]:
         definition = self.view.study.definition
         new = self.offered.targets.assign(plate="new")
         outlooks = []
@@ -81,7 +80,7 @@ class Weighing:
             shared = shared_by(definition, response)
             outlooks.append(
                 Outlook(
-                    self.view.surfaces[response.name].lightened(nodes),
+                    self.view.surfaces[response.name].lightened(_NODES),
                     P,
                     self.X,
                     tuple(future_groups(definition, new, by) for by in shared.inside),
@@ -104,7 +103,7 @@ class Weighing:
         """
         if wells and aim != "best" and not self.view.fresh and self.levels.most:
             watched = self.watched[_evenly(len(self.watched), _SCOUTED)]
-            light = self._outlooks(self.P[watched], np.arange(len(watched)), _SCOUT_NODES)
+            light = self._outlooks(self.P[watched], np.arange(len(watched)))
             for outlook in light:
                 for candidate in self.taken:
                     outlook.pick(candidate)

@@ -162,6 +162,17 @@ def _pair(
     return pairs
 
 
+def offers_for(offers: Sequence[Offer], path: Path, plans: Path) -> list[Offer]:
+    """Return the offers that a plan's file may have been edited from: of a file in plans/ the copy
+    of its name, else those kept with advice, else all.
+    """
+    if path.resolve().parent != plans.resolve():
+        return [*offers]
+    copy = [o for o in offers if o.path.parent.name == OFFERED and o.path.name == path.name]
+    advice = [o for o in offers if o.path.parent.name != OFFERED]
+    return copy or advice or [*offers]
+
+
 def nearest_offer(
     offers: Sequence[Offer], there: Sequence[OfferedWell]
 ) -> tuple[Offer, list[Change]] | None:
