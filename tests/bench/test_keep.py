@@ -179,14 +179,29 @@ def test_conditions_taken_out_do_not_come_back(view, offered):
     _, path = offered
     rows = table(path)
     tests = first_tests(rows, 6)
-    for row in tests[:5]:
+    for row in tests:
         row["exclude"] = "turbid at the bench"
-    rows.remove(tests[5])
     out = {(float(r["ph"]), float(r["salt"])) for r in tests}
     again = muntin.propose(view, wells=6, keep=saved(path, rows))
     new = again.wells[again.wells["role"] == "test"]
     assert len(new) == 6
     assert not out & set(zip(new["ph"], new["salt"], strict=True))
+
+
+def test_rows_that_are_merely_gone_may_come_back_and_that_is_told(view, offered):
+    _, path = offered
+    rows = table(path)
+    gone = {(float(r["ph"]), float(r["salt"])) for r in first_tests(rows, 6)}
+    rows = [row for row in rows if row["role"] != "test"]
+    again = muntin.propose(view, wells=6, keep=saved(path, rows))
+    new = again.wells[again.wells["role"] == "test"]
+    back = len(gone & set(zip(new["ph"], new["salt"], strict=True)))
+    assert back == len(gone)
+    word = "condition" if back == 1 else "conditions"
+    assert (
+        f"{back} {word} that you took out chosen again: leave such a row in the plan with a reason "
+        "in exclude, and it is not"
+    ) in again.notices
 
 
 def test_held_conditions_get_their_repeats(view):
@@ -211,6 +226,14 @@ def test_rows_without_a_well_are_given_one(view, offered):
     assert again.wells["well"].is_unique
     assert (again.wells["well"] != "").all()
     assert again.edit.changes == ()
+    rows += [{"role": "test", "ph": ph, "salt": "50"} for ph in ("5.0", "7.5")]
+    more = muntin.propose(view, keep=saved(path, rows))
+    kept = by_well(more)
+    for told in more.edit.changes:
+        now = told.change.now
+        assert tuple(kept.loc[now.well, ["ph", "salt"]]) == now.condition
+        assert told.p_now == kept.loc[now.well, "p_now"]
+    assert [told.change.kind for told in more.edit.changes] == ["added", "added"]
 
 
 def test_own_columns_stay(view, offered):

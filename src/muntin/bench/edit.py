@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 import pandas as pd
@@ -57,10 +57,6 @@ class Edit:
     offered_wells: int | None = None
     offered_share: float | None = None
 
-    def count(self, *kinds: str) -> int:
-        """How many changes are of these kinds."""
-        return sum(scored.change.kind in kinds for scored in self.changes)
-
 
 def edited(view: Assessment, kept: KeptPlan, plate: str) -> tuple[Offer | None, list[Change]]:
     """Return the offer that an edited plan differs least from, and how, with the user's reasons."""
@@ -78,16 +74,17 @@ def edited(view: Assessment, kept: KeptPlan, plate: str) -> tuple[Offer | None, 
     return offer, with_reasons(changes, left_out)
 
 
-def declined(
-    definition: Definition, kept: KeptPlan, changes: Sequence[Change]
-) -> frozenset[Condition]:
-    """Conditions that the user took out of a plan altogether; they are not chosen again."""
-    stay = {w.condition for w in wells_of(definition, kept.rows)}
+def declined(definition: Definition, kept: KeptPlan) -> frozenset[Condition]:
+    """Conditions of rows that were left out with a reason; they are not chosen again."""
     out = kept.left_out
     whole = out[list(definition.factor_names)].notna().all(axis=1)
-    gone = {w.condition for w in wells_of(definition, out[whole])}
-    gone |= {c.was.condition for c in changes if c.was is not None}
-    return frozenset(c for c in gone - stay if c is not None)
+    return frozenset(w.condition for w in wells_of(definition, out[whole]) if w.condition)
+
+
+def chosen_again(changes: Sequence[Change], chosen: Sequence[Condition]) -> int:
+    """How many conditions were taken out without a reason, and chosen again."""
+    gone = {c.was.condition for c in changes if c.was is not None and c.kind == "left out"}
+    return len(gone & set(chosen))
 
 
 def scored(
@@ -104,7 +101,7 @@ def scored(
     """
     offer, changes = found
     definition = view.study.definition
-    changes = [*_with_wells(changes, kept, placed), *_chosen(definition, placed)]
+    changes = [*_with_wells(definition, changes, kept, placed), *_chosen(definition, placed)]
     offered = None if offer is None else _frame(definition, offer.wells, terms.stocks)
     wells, share = None, None
     if offered is not None and (offered["role"] == "test").any():
@@ -112,23 +109,32 @@ def scored(
         again = Terms(held=offered, stocks=terms.stocks, fill=False)
         share = None if view.fresh else select(view, wells, aim, view.seed, again).forecast[-1]
     known = _probabilities(view, changes, terms.stocks)
+    here = placed.set_index("well")["p_now"].dropna().to_dict()
     every = tuple(
-        ScoredChange(change=c, p_was=_of(c.was, known), p_now=_of(c.now, known)) for c in changes
+        ScoredChange(
+            change=c,
+            p_was=None if c.was is None else known.get(c.was.condition or ()),
+            p_now=None if c.now is None else here.get(c.now.well),
+        )
+        for c in changes
     )
     return Edit(kept=kept, offer=offer, changes=every, offered_wells=wells, offered_share=share)
 
 
-def _with_wells(changes: Sequence[Change], kept: KeptPlan, placed: pd.DataFrame) -> list[Change]:
+def _with_wells(
+    definition: Definition, changes: Sequence[Change], kept: KeptPlan, placed: pd.DataFrame
+) -> list[Change]:
     """The changes, each row that had no well with the one that was found for it."""
-    empty = kept.rows["well"] == ""
-    found = placed[placed["kept"].isin(kept.rows.index[empty])]
-    waiting = list(zip(found["role"], found["well"], strict=True))
+    empty = kept.rows.index[kept.rows["well"] == ""]
+    waiting = wells_of(definition, placed[placed["kept"].isin(empty)])
     out = []
     for change in changes:
         now = change.now
         if now is not None and not now.well:
-            at = next(i for i, (role, _) in enumerate(waiting) if role == now.role)
-            now = OfferedWell(waiting.pop(at)[1], now.role, now.condition, now.reason)
+            alike = (now.role, now.condition)
+            found = next(well for well in waiting if (well.role, well.condition) == alike)
+            waiting.remove(found)
+            now = replace(now, well=found.well)
         out.append(Change(change.kind, change.was, now, change.because))
     return out
 
@@ -164,7 +170,7 @@ def _probabilities(
     view: Assessment, changes: Sequence[Change], stocks: Sequence[Stock]
 ) -> dict[Condition, float]:
     definition = view.study.definition
-    wells = [w for c in changes for w in (c.was, c.now) if w is not None and w.condition]
+    wells = [c.was for c in changes if c.was is not None and c.was.condition]
     distinct = list({w.condition: w for w in wells}.values())
     frame = _frame(definition, distinct, stocks)
     if frame is None or not len(frame):
@@ -175,7 +181,3 @@ def _probabilities(
             frame[factor.name] = measured.where(np.isfinite(measured), frame[factor.name])
     p = view.judged(frame[list(definition.factor_names)], definition.judged_by)
     return {w.condition: float(v) for w, v in zip(distinct, p, strict=True) if w.condition}
-
-
-def _of(well: OfferedWell | None, known: dict[Condition, float]) -> float | None:
-    return None if well is None or well.condition is None else known.get(well.condition)

@@ -21,7 +21,6 @@ from muntin.design.terms import Terms
 from muntin.design.weighing import Aim, NoConditionLeftError
 from muntin.record.faults import Fault, Findings, StudyFaults
 from muntin.record.levels import check_stocks
-from muntin.record.offers import Change, Offer
 from muntin.record.plan_table import KeptPlan, read_plan
 from muntin.record.stocks import Stock, planned_stocks
 from muntin.record.study import Study
@@ -74,7 +73,7 @@ def propose(
     plate = next_plate(view.study)
     asked, stocks = _asked(view, wells, plate, keep)
     found = None if asked.kept is None else edited(view, asked.kept, plate)
-    terms = _terms(view.study, asked, stocks, found)
+    terms = _terms(view.study, asked, stocks)
     selection = _selected(view, asked, aim, seed, terms)
     rows = plan_rows(view, selection, asked, found)
     placed = _placed(view.study, rows, seed)
@@ -88,7 +87,7 @@ def propose(
         aim=aim,
         seed=seed,
         protein_mg=protein_needed_mg(view.study, placed),
-        notices=plan_notices(view, selection, asked, stocks),
+        notices=plan_notices(view, selection, asked, stocks, found),
         edit=edit,
     )
 
@@ -119,21 +118,16 @@ def _asked(
     return asked, stocks
 
 
-def _terms(
-    study: Study,
-    asked: Asked,
-    stocks: tuple[Stock, ...],
-    found: tuple[Offer | None, list[Change]] | None,
-) -> Terms:
+def _terms(study: Study, asked: Asked, stocks: tuple[Stock, ...]) -> Terms:
     """What the choice must keep to."""
     kept: KeptPlan | None = asked.kept
     left = protein_left_mg(study)
     budget = None if left is None else left - given_mg(study.definition, asked)
-    if kept is None or found is None:
+    if kept is None:
         return Terms(stocks=stocks, budget_mg=budget)
     return Terms(
         held=kept.held(),
-        declined=declined(study.definition, kept, found[1]),
+        declined=declined(study.definition, kept),
         stocks=stocks,
         budget_mg=budget,
         fill=asked.fill,

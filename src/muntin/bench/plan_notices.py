@@ -7,18 +7,24 @@ from collections.abc import Sequence
 
 import numpy as np
 
+from muntin.bench.edit import chosen_again
 from muntin.bench.layout import default_controls
 from muntin.bench.room import Asked
 from muntin.design.selection import Selection
 from muntin.record.definition import Definition
 from muntin.record.faults import counted, number
+from muntin.record.offers import Change, Offer
 from muntin.record.plan_table import KeptPlan
 from muntin.record.stocks import Stock, same_target
 from muntin.window.assessment import Assessment
 
 
 def plan_notices(
-    view: Assessment, selection: Selection, asked: Asked, stocks: Sequence[Stock]
+    view: Assessment,
+    selection: Selection,
+    asked: Asked,
+    stocks: Sequence[Stock],
+    found: tuple[Offer | None, list[Change]] | None = None,
 ) -> tuple[str, ...]:
     """Return what the user should know of a plan, in sentences."""
     notices = []
@@ -43,6 +49,7 @@ def plan_notices(
     notices += _of_stocks(view.study.definition, selection, stocks)
     if asked.kept is not None:
         notices += _lacking(view, asked.kept, asked)
+    notices += [] if found is None else _again(selection, found[1])
     notices += _saving(selection.forecast) if not view.fresh else []
     return tuple(notices)
 
@@ -87,6 +94,18 @@ def _lacking(view: Assessment, kept: KeptPlan, asked: Asked) -> list[str]:
         least = definition.plan.repeats_min
         notices.append(f"{counted(fewer, 'kept condition')} with fewer than {least} wells")
     return notices
+
+
+def _again(selection: Selection, changes: Sequence[Change]) -> list[str]:
+    """Conditions that were taken out of a plan and chosen again."""
+    new = [pick.candidate for pick in selection.picks if pick.held is None]
+    again = chosen_again(changes, [*selection.candidates.iloc[new].itertuples(index=False)])
+    if not again:
+        return []
+    return [
+        f"{counted(again, 'condition')} that you took out chosen again: leave such a row in the "
+        "plan with a reason in exclude, and it is not"
+    ]
 
 
 def _saving(forecast: Sequence[float]) -> list[str]:
