@@ -342,6 +342,14 @@ def test_fewer_wells_than_are_kept(view, offered):
     ]
 
 
+def test_what_is_kept_takes_no_room_twice(view, offered):
+    _, path = offered
+    assert refused(view, path, wells=85) == [
+        "wells: 85 is more than the plate has room for; ask for 84 (96 wells are free; "
+        "4 bridging wells and 8 controls come on top)"
+    ]
+
+
 def test_a_plan_without_test_wells(view, offered):
     _, path = offered
     saved(path, [row for row in table(path) if row["role"] != "test"])

@@ -92,6 +92,12 @@ def test_nothing_is_chosen_where_a_plate_holds_every_level(view):
     assert choose_level_sets(scout_of(view, 4)) == {}
 
 
+def test_closed_levels_are_not_counted(view):
+    # Three levels are left, as many as a plate may hold.
+    few = scout_of(limited(view, 3), 4, barred=lambda frame: frame["ph"].to_numpy() > 5.1)
+    assert choose_level_sets(few) == {}
+
+
 def test_all_levels_in_use_stay(view):
     scout = scout_of(limited(view, 2), 4, used=[("ph", 4.5), ("ph", 7.5)])
     assert choose_level_sets(scout) == {"ph": {4.5, 7.5}}
