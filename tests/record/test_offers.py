@@ -12,6 +12,7 @@ from muntin.record.offers import (
     nearest_offer,
     offers_of,
     own_words,
+    with_chosen,
     with_reasons,
 )
 from tests.studies import tables
@@ -157,3 +158,20 @@ def test_the_nearest_offer_is_the_one_that_was_edited(tmp_path):
         offer, _ = nearest_offer(offers, [*there, blank])
         assert offer.file == f"plans/offered/plate-02{nearest}.csv"
     assert nearest_offer([], [blank]) is None
+
+
+def test_wells_that_are_chosen_again_only_moved():
+    changes = [
+        Change("left out", well("A1", A), None),
+        Change("left out", well("A2", B), None),
+        Change("left out", well("A3", C), None, "precipitates"),
+        Change("left out", well("A4", None, "blank"), None),
+    ]
+    new = [well("A1", A), well("B5", B), well("B6", C), well("B7", None, "blank"), well("B8", B)]
+    assert with_chosen(changes, new) == [
+        Change("left out", well("A3", C), None, "precipitates"),
+        Change("moved", well("A2", B), well("B5", B)),
+        Change("chosen", None, well("B6", C)),
+        Change("moved", well("A4", None, "blank"), well("B7", None, "blank")),
+        Change("chosen", None, well("B8", B)),
+    ]

@@ -21,6 +21,7 @@ from muntin.record.offers import (
     offers_for,
     offers_of,
     wells_of,
+    with_chosen,
     with_reasons,
 )
 from muntin.record.plan_table import KeptPlan
@@ -101,7 +102,9 @@ def scored(
     """
     offer, changes = found
     definition = view.study.definition
-    changes = [*_with_wells(definition, changes, kept, placed), *_chosen(definition, placed)]
+    changes = _with_wells(definition, changes, kept, placed)
+    new = wells_of(definition, placed[placed["kept"] < 0])
+    changes = with_chosen(changes, new)
     offered = None if offer is None else _frame(definition, offer.wells, terms.stocks)
     wells, share = None, None
     if offered is not None and (offered["role"] == "test").any():
@@ -137,11 +140,6 @@ def _with_wells(
             now = replace(now, well=found.well)
         out.append(Change(change.kind, change.was, now, change.because))
     return out
-
-
-def _chosen(definition: Definition, placed: pd.DataFrame) -> list[Change]:
-    new = placed[placed["kept"] < 0]
-    return [Change("chosen", None, well) for well in wells_of(definition, new)]
 
 
 def _frame(

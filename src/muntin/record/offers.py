@@ -212,3 +212,26 @@ def with_reasons(
             because = own_words(change.now.reason)
         out.append(replace(change, because=because))
     return out
+
+
+def with_chosen(changes: Sequence[Change], chosen: Sequence[OfferedWell]) -> list[Change]:
+    """Return the changes with the wells that were chosen besides what was kept.
+
+    Where one is given what a well was that was taken out without a reason, that well only moved, or
+    is not changed at all.
+    """
+    out = [*changes]
+    for now in chosen:
+        back = [c for c in out if c.kind == "left out" and not c.because and _is(c.was, now)]
+        if not back:
+            out.append(Change("chosen", None, now))
+            continue
+        there = next((c for c in back if c.was is not None and c.was.well == now.well), back[0])
+        out.remove(there)
+        if there.was is not None and there.was.well != now.well:
+            out.append(Change("moved", there.was, now))
+    return out
+
+
+def _is(was: OfferedWell | None, now: OfferedWell) -> bool:
+    return was is not None and _same(was, now)
