@@ -8,7 +8,7 @@ from datetime import UTC, datetime
 from pathlib import Path
 
 from muntin.bench.plan import Plan, propose
-from muntin.design.selection import Aim
+from muntin.design.weighing import Aim
 from muntin.record import open_study
 from muntin.report.advice_files import (
     Place,

@@ -19,7 +19,7 @@ DEFINITION = Definition.model_validate(tables())
 
 
 def said(picks, p_mean, p_now=None, opening=False, definition=DEFINITION, candidates=CANDIDATES):
-    selection = Selection(candidates, tuple(picks), RUN, (0.1,))
+    selection = Selection(candidates, candidates, tuple(picks), RUN, (0.1,))
     now = p_mean if p_now is None else p_now
     return reasons(definition, selection, np.array(p_mean), np.array(now), opening)
 

@@ -7,6 +7,7 @@ plateau tells little of its logit, and what its setting errors make of f.
 
 from __future__ import annotations
 
+from copy import copy
 from dataclasses import dataclass, field
 
 import numpy as np
@@ -70,6 +71,12 @@ class Outlook:
             self.lever = ((slope * g) @ _W) / square
         if self.setting is not None and self.setting.any():
             self.noise = self.noise + self.surface.wander(self.candidates, self.setting)
+
+    def branch(self) -> Outlook:
+        """The same state; picks of either leave the other as it is."""
+        other = copy(self)
+        other._up, other._uq = [*self._up], [*self._uq]
+        return other
 
     def after(self, wells: Index) -> Array:
         """Variance (S, W, k) that would be explained at the watched points by one more well."""

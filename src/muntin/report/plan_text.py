@@ -18,6 +18,7 @@ from rich.text import Text
 from muntin.record.definition import Definition
 from muntin.record.factors import Factor
 from muntin.record.faults import counted
+from muntin.record.offers import without_measured
 from muntin.report.words import amount_text, axis_label, condition_text, share_text
 
 if TYPE_CHECKING:
@@ -215,7 +216,7 @@ def _why(rows: pd.DataFrame, factors: Sequence[Factor]) -> str:
     openness = (rows["p_now"] - 0.5).abs().round(6)
     first = rows.assign(open=openness).sort_values(["open", "reason"])["reason"].iloc[0]
     setting = "|".join(re.escape(f.label) for f in factors)
-    return re.sub(rf"probability [0-9.]+, | at ({setting}) \S+$", "", str(first))
+    return re.sub(rf"probability [0-9.]+, | at ({setting}) \S+$", "", without_measured(str(first)))
 
 
 def forecast_table(plan: Plan) -> Table:

@@ -17,6 +17,7 @@ from muntin.record.faults import counted
 from muntin.record.study import Study
 from muntin.report.advice_files import Place
 from muntin.report.cautions import cautions
+from muntin.report.edit_record import edit_lines
 from muntin.report.plan_text import (
     bridging_line,
     first_conditions,
@@ -181,13 +182,14 @@ def _capital(text: str) -> str:
     return text[:1].upper() + text[1:]
 
 
-def check_screen(study: Study) -> RenderableType:
-    """Return the screen of `check`."""
+def check_screen(study: Study, plans: Sequence[str] = ()) -> RenderableType:
+    """Return the screen of `check`; `plans` is what is on record of edited plans."""
     return sheet(
         study.definition.title,
         [
             ("Read", read_lines(study)),
             ("Noted", study.notices),
+            ("Plans", plans),
             ("Sound", ["No faults were found."]),
         ],
     )
@@ -260,7 +262,8 @@ def propose_screen(view: Assessment, plan: Plan, path: Path, remark: str) -> Ren
     written = ("Written", _plan_lines(path, remark))
     whole, cut = _tables(view, plan)
     sections = plan_sections(view, plan, [*whole, *cut][0])
-    return sheet(view.study.definition.title, [*sections, written])
+    edited = ("Edited", [] if plan.edit is None else edit_lines(plan, plan.edit))
+    return sheet(view.study.definition.title, [edited, *sections, written])
 
 
 def _plan_lines(path: Path, remark: str) -> list[str]:
