@@ -10,9 +10,12 @@ import numpy as np
 import pandas as pd
 
 from muntin.bench.layout import default_controls, lay_out
+from muntin.bench.outlay import Outlay
 from muntin.bench.protein import protein_left_mg, protein_needed_mg
+from muntin.design.further import prospects
 from muntin.design.reasons import reasons
 from muntin.design.selection import Aim, Selection, select
+from muntin.design.stopping import Ruling, rule_on
 from muntin.record.faults import Fault, StudyFaults, number
 from muntin.record.study import Study
 from muntin.window.assessment import Assessment
@@ -26,10 +29,11 @@ class Plan:
 
     plate: its name. wells: well, role, the factors (raw units, empty for controls), p_now (the
     judged probability today) and reason, in the order of the wells; the index counts in the order
-    of choice. forecast: wells (test wells,
-    0 means no further plate), mg (protein, where the study says) and wrong_share (expected share
-    of the range still called wrongly; NaN beyond 0 before anything was read). seed: of the choice
-    and of the layout.
+    of choice. forecast: wells (test wells, 0 means no further plate), plates, mg (protein), assays
+    (slots) and days where the study says what they take, wrong_share (expected share of the range
+    still called wrongly) and set_point (expected probability of the set point); the last two are
+    NaN before anything was read, but for the share at 0. ruling: the forecast against the stop
+    rule. seed: of the choice and of the layout.
     """
 
     plate: str
@@ -39,6 +43,7 @@ class Plan:
     seed: int
     protein_mg: float | None
     notices: tuple[str, ...]
+    ruling: Ruling
 
 
 def propose(view: Assessment, wells: int = 24, aim: Aim = "edge", seed: int = 1) -> Plan:
@@ -57,14 +62,16 @@ def propose(view: Assessment, wells: int = 24, aim: Aim = "edge", seed: int = 1)
     rows = _rows(view, selection, controls)
     placed = _placed(study, rows, seed)
     needed = protein_needed_mg(study, placed["role"])
+    forecast = _forecast(view, selection, wells)
     return Plan(
         plate=next_plate(study),
         wells=placed,
-        forecast=_forecast(study, selection, controls),
+        forecast=forecast,
         aim=aim,
         seed=seed,
         protein_mg=needed,
         notices=_notices(view, selection),
+        ruling=_ruling(view, forecast, wells),
     )
 
 
@@ -158,21 +165,28 @@ def _placed(study: Study, rows: pd.DataFrame, seed: int) -> pd.DataFrame:
     return placed[["well", "role", *names, "p_now", "reason"]]
 
 
-def _forecast(study: Study, selection: Selection, controls: Sequence[str]) -> pd.DataFrame:
-    bridging = [p.role for p in selection.picks if p.role == "bridge"]
-    counts = range(len(selection.forecast))
-    shares = list(selection.forecast)
-    if not selection.run:
+def _forecast(view: Assessment, selection: Selection, wells: int) -> pd.DataFrame:
+    bridging = sum(pick.role == "bridge" for pick in selection.picks)
+    outlay = Outlay(view.study, bridging)
+    counts = outlay.counts(wells)
+    table = outlay.table(counts)
+    if view.fresh:
         # Before any reading the prior alone would speak, and it has seen no plateau yet.
-        shares[1:] = [np.nan] * (len(shares) - 1)
-    table = pd.DataFrame({"wells": counts, "wrong_share": shares})
-    if study.definition.protein is not None:
-        mg = [
-            protein_needed_mg(study, [*bridging, *controls, *["test"] * k]) if k else 0.0
-            for k in counts
-        ]
-        table.insert(1, "mg", mg)
-    return table
+        shares = [selection.forecast[0], *[np.nan] * (len(counts) - 1)]
+        return table.assign(wrong_share=shares, set_point=np.nan)
+    ahead = prospects(view, view.window(), selection, counts, outlay.rooms)
+    return table.assign(
+        wrong_share=[p.wrong_share for p in ahead], set_point=[p.set_point for p in ahead]
+    )
+
+
+def _ruling(view: Assessment, forecast: pd.DataFrame, wells: int) -> Ruling:
+    ruling = rule_on(forecast, view.study.stopping.rule, wells)
+    if view.fresh or ruling.because == "no rule":
+        return ruling
+    if view.awaited:
+        return Ruling(word="none", because="awaited")
+    return Ruling(word="none", because="unsupported") if view.window().unsupported else ruling
 
 
 def _notices(view: Assessment, selection: Selection) -> tuple[str, ...]:

@@ -29,7 +29,7 @@ def propose(
 ) -> Output:
     """Plan the next plate: conditions at final wells, each with a reason; write it to plans/."""
     from muntin.bench.plan import propose as plan_next
-    from muntin.record import open_study
+    from muntin.record import keep_stop_rule, open_study
     from muntin.report.facts import plan_facts, study_facts
     from muntin.report.plan_files import plan_table_text, write_plan
     from muntin.report.text import propose_screen
@@ -42,6 +42,7 @@ def propose(
     tell("planning the next plate")
     plan = plan_next(view, wells=wells, aim=aim.value, seed=seed)
     path, remark = write_plan(study.folder, plan.plate, plan_table_text(study.definition, plan))
+    keep_stop_rule(study)
     facts = {
         "command": "propose",
         "settings": {
@@ -52,7 +53,7 @@ def propose(
             "seed": seed,
         },
         "study": study_facts(study),
-        "plan": plan_facts(plan),
+        "plan": plan_facts(study, plan),
         "files": {"plan": str(path), "remark": remark},
     }
     return Output(facts, propose_screen(view, plan, path, remark))

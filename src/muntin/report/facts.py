@@ -11,6 +11,7 @@ import numpy as np
 import pandas as pd
 
 from muntin.record.study import Study
+from muntin.report.ruling_text import ruling_facts
 from muntin.report.words import WINDOW
 from muntin.window.assessment import Assessment
 from muntin.window.checks import Check
@@ -122,8 +123,8 @@ def _window(view: Assessment, window: Window) -> Facts:
     return facts
 
 
-def plan_facts(plan: Plan) -> Facts:
-    """Return the plan with its forecast."""
+def plan_facts(study: Study, plan: Plan) -> Facts:
+    """Return the plan with its forecast, and the verdict on it."""
     return {
         "plate": plan.plate,
         "aim": plan.aim,
@@ -132,6 +133,7 @@ def plan_facts(plan: Plan) -> Facts:
         "notices": list(plan.notices),
         "wells": records(plan.wells),
         "forecast": records(plan.forecast),
+        "verdict": ruling_facts(study, plan),
     }
 
 

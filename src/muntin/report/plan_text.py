@@ -9,7 +9,6 @@ from collections import Counter
 from collections.abc import Sequence
 from typing import TYPE_CHECKING
 
-import numpy as np
 import pandas as pd
 from rich.console import Console, RenderableType
 from rich.table import Table
@@ -24,7 +23,12 @@ if TYPE_CHECKING:
     from muntin.bench.plan import Plan
 
 _ROLES = {"test": "test well", "bridge": "bridging well", "reference": "reference well"}
-_POINTS = 7
+_OUTLAY = {
+    "plates": "plates",
+    "mg": "protein, mg",
+    "assays": "assay slots",
+    "days": "days",
+}
 _TIES = ": ties plates"
 _NARROW, _WHY = 12, 20
 _WIDTH, _GAP = 90, 2
@@ -219,17 +223,17 @@ def _why(rows: pd.DataFrame, factors: Sequence[Factor]) -> str:
 
 
 def forecast_table(plan: Plan) -> Table:
-    """Return the forecast at a few numbers of test wells: milligrams and share called wrongly."""
+    """Return the forecast: what so many test wells take, and what they are expected to bring."""
     forecast = plan.forecast
-    rows = np.unique(np.linspace(0, len(forecast) - 1, _POINTS).round().astype(int))
     table = _plain_table()
     table.add_column("test wells")
-    for row in rows:
-        table.add_column(f"{int(forecast['wells'].iloc[row])}", justify="right")
-    if "mg" in forecast:
-        table.add_row("protein, mg", *(f"{mg:.3g}" for mg in forecast["mg"].iloc[rows]))
-    shares = forecast["wrong_share"].iloc[rows]
-    table.add_row("may be called wrongly", *map(share_text, shares))
+    for wells in forecast["wells"]:
+        table.add_column(f"{int(wells)}", justify="right")
+    for name, label in _OUTLAY.items():
+        if name in forecast and (name != "plates" or forecast[name].max() > 1):
+            table.add_row(label, *(f"{value:.3g}" for value in forecast[name]))
+    table.add_row("may be called wrongly", *map(share_text, forecast["wrong_share"]))
+    table.add_row("set point passes", *map(share_text, forecast["set_point"]))
     return table
 
 

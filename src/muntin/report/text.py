@@ -27,6 +27,7 @@ from muntin.report.plan_text import (
     plan_tables,
     usual_reason,
 )
+from muntin.report.ruling_text import ruling_line
 from muntin.report.sides_text import sides_line
 from muntin.report.words import (
     JUDGED_BY,
@@ -163,7 +164,7 @@ def _set_point(definition: Definition, window: Window) -> str:
 
 
 def _stop(view: Assessment, window: Window) -> list[str]:
-    stop = view.study.definition.stop
+    stop = view.study.stopping.rule
     if stop is None or view.awaited:
         return []
     met = []
@@ -243,8 +244,8 @@ def plan_sections(
     if view.fresh:
         told.append(f"{_capital(usual_reason(plan.wells))}.")
     early = "No forecast before the first readings."
-    forecast = early if view.fresh else forecast_table(plan)
-    return [("Next", [*told, table]), ("Forecast", [forecast])]
+    forecast = [early] if view.fresh else [forecast_table(plan), ruling_line(view.study, plan)]
+    return [("Next", [*told, table]), ("Forecast", forecast)]
 
 
 def _tables(view: Assessment, plan: Plan) -> tuple[list[RenderableType], list[RenderableType]]:
@@ -260,7 +261,9 @@ def propose_screen(view: Assessment, plan: Plan, path: Path, remark: str) -> Ren
     written = ("Written", _plan_lines(path, remark))
     whole, cut = _tables(view, plan)
     sections = plan_sections(view, plan, [*whole, *cut][0])
-    return sheet(view.study.definition.title, [*sections, written])
+    told = view.study.stopping.notice
+    noted = ("Noted", [told] if told else [])
+    return sheet(view.study.definition.title, [noted, *sections, written])
 
 
 def _plan_lines(path: Path, remark: str) -> list[str]:

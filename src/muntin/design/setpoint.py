@@ -1,0 +1,210 @@
+"""Forecast of the set point's probability.
+
+At a fixed condition the expected posterior probability after any plate is today's, so no forecast
+can promise that today's set point will look better. What a plate brings is a choice: the set point
+is put where the probability is then highest, and the expectation of the highest of correlated
+posterior probabilities, E[max_x p_k(x)] after k wells, never falls with k. It is what the stop rule
+is compared with (preposterior analysis: Raiffa & Schlaifer 1961; expected maxima of correlated
+posterior means: Frazier, Powell & Dayanik 2009, INFORMS Journal on Computing 21:599).
+
+The law of p_k over x follows in closed form from the moves of the posterior mean: with rho the
+share of the predictive variance that k wells explain, z(x) the standardised move and c the normal
+score of today's chance, p_k = Phi((c + sqrt(rho) z) / sqrt(1 - rho)), whose mean is today's chance.
+Only the maximum is taken over draws of z. They measure the advantage over today's set point, whose
+own expectation is known, so that few of them do.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Sequence
+from dataclasses import dataclass
+
+import numpy as np
+import pandas as pd
+from numpy.typing import NDArray
+
+from muntin.design.forecast import score
+from muntin.design.moves import moves
+from muntin.design.outlook import Outlook
+from muntin.surrogate.links import slope_of
+from muntin.surrogate.nodes import Surface
+from muntin.window.assessment import Assessment
+from muntin.window.coded import code, setting_sd
+from muntin.window.predicted import Predicted
+from muntin.window.probability import Target
+from muntin.window.window import Window
+
+Array = NDArray[np.float64]
+Index = NDArray[np.intp]
+_PAIRS = 128
+_POINTS = 1500
+_TODAY = 40
+_MOST = 1.0 - 1e-9
+
+
+@dataclass(frozen=True)
+class Around:
+    """One response at n points around the conditions that may become the set point.
+
+    scores (n,): normal scores today of the chances that the lower and the upper limit are met,
+    infinite where there is none. spread (S, n): for each limit the predictive variance in latent
+    units, infinite where a limit is out of reach. U (S, n, k): moves of the posterior mean, and the
+    nodes' weights (S,).
+    """
+
+    scores: tuple[Array, Array]
+    spread: tuple[Array, Array]
+    U: Array
+    weights: Array
+
+    def now(self) -> Array:
+        """Chance today (n,) that the target is met."""
+        from scipy.special import ndtr
+
+        low, high = self.scores
+        return np.maximum(ndtr(low) + ndtr(high) - 1.0, 0.0)
+
+    def then(self, read: int, drawn: Drawn) -> Array:
+        """The chances (n, d) that draws of what the first `read` wells show lead to."""
+        from scipy.special import ndtr
+
+        U = self.U[:, :, :read]
+        gained = (U**2).sum(axis=2)
+        z = drawn.standardised(U, gained)
+        met = np.full(z.shape, -1.0)
+        for c, spread, sign in zip(self.scores, self.spread, (1.0, -1.0), strict=True):
+            rho = np.clip(self.weights @ (gained / spread), 0.0, _MOST)[:, None]
+            met += ndtr((c[:, None] + sign * np.sqrt(rho) * z) / np.sqrt(1.0 - rho))
+        return np.maximum(met, 0.0)
+
+
+@dataclass(frozen=True)
+class Drawn:
+    """Draws in pairs of opposite sign: the node (d,) and the readings' news xi (d, k) of each."""
+
+    nodes: Index
+    xi: Array
+
+    @classmethod
+    def of(cls, weights: Array, wells: int, rng: np.random.Generator) -> Drawn:
+        """Draws with each node as often as its weight (S,) says."""
+        ticks = (rng.permutation(_PAIRS) + 0.5) / _PAIRS * weights.sum()
+        nodes = np.minimum(np.searchsorted(np.cumsum(weights), ticks), len(weights) - 1)
+        xi = rng.standard_normal((_PAIRS, wells))
+        return cls(np.tile(nodes, 2), np.concatenate([xi, -xi]))
+
+    def standardised(self, U: Array, gained: Array) -> Array:
+        """Moves (n, d) at n points in units of their sd, from U (S, n, k) and its squares' sum."""
+        z = np.zeros((U.shape[1], len(self.nodes)))
+        for node in np.unique(self.nodes):
+            mine = self.nodes == node
+            sd = np.sqrt(np.maximum(gained[node], 1e-300))
+            z[:, mine] = U[node] @ self.xi[mine, : U.shape[2]].T / sd[:, None]
+        return z
+
+
+def expected_best(
+    view: Assessment,
+    window: Window,
+    outlooks: Sequence[Outlook],
+    taken: Sequence[int],
+    read: Sequence[int],
+) -> list[float]:
+    """Expected probability of the set point once the first k of the wells taken are read, for each
+    k of `read` (ascending); for k = 0 that of the window.
+
+    outlooks: one a judged response in the order of `view.predicted`; taken: numbers of their
+    candidates. A new set point must lead by as much as the window's central one gives away today.
+    """
+    definition = view.study.definition
+    today = window.grid["probability"].to_numpy(dtype=float)
+    at = int(str(window.setpoint.name))
+    kept = definition.judged_by == "kept"
+    size = sum(1 for _ in view.settings(window.grid.iloc[[at]])) if kept else 1
+    rows = _contenders(today, at, max(2, _POINTS // size))
+    frame = window.grid.iloc[rows][list(definition.factor_names)].reset_index(drop=True)
+    around = [*view.settings(frame)] if kept else [(1.0, frame)]
+    points = pd.concat([part for _, part in around], ignore_index=True)
+    weights = np.array([weight for weight, _ in around])
+    every = [*_around(view, points, outlooks, taken)]
+    rng = np.random.default_rng(0)
+    drawn = [Drawn.of(a.weights, len(taken), rng) for a in every]
+    now = _averaged(weights, np.prod([a.now() for a in every], axis=0)[:, None])
+    # What the ties of readings and the finer law of today add to these chances stays as it is.
+    offset = score(today[rows])[:, None] - score(now)
+    lead = float(today.max()) - today[at]
+    best = [float(today[at])]
+    for k in [k for k in read if k > 0]:
+        met = np.prod([a.then(k, d) for a, d in zip(every, drawn, strict=True)], axis=0)
+        p = _chance(score(_averaged(weights, met)) + offset)
+        gain = np.maximum(p.max(axis=0) - lead - p[0], 0.0).mean()
+        best.append(min(1.0, max(best[-1], float(today[at] + gain))))
+    return best
+
+
+def _contenders(today: Array, at: int, most: int) -> Index:
+    """Rows that may become the set point, today's first: the likeliest half, and an even spread."""
+    if len(today) <= most:
+        rows = np.arange(len(today))
+    else:
+        spread = np.linspace(0, len(today) - 1, most // 2).round().astype(int)
+        rows = np.union1d(np.argsort(-today, kind="stable")[: most // 2], spread)
+    return np.asarray([at, *rows[rows != at]], dtype=np.intp)
+
+
+def _averaged(weights: Array, p: Array) -> Array:
+    """Chances (n, d) averaged over the settings around each condition, from (settings * n, d)."""
+    return np.tensordot(weights, p.reshape(len(weights), -1, p.shape[1]), axes=1)
+
+
+def _chance(z: Array) -> Array:
+    from scipy.special import ndtr
+
+    return np.asarray(ndtr(z))
+
+
+def _around(
+    view: Assessment, points: pd.DataFrame, outlooks: Sequence[Outlook], taken: Sequence[int]
+) -> Iterator[Around]:
+    """Each judged response at points (raw units)."""
+    definition = view.study.definition
+    X, setting = code(definition, points), setting_sd(definition, points)
+    predicted = view.predicted(points, _TODAY)
+    for response, outlook in zip(predicted.values(), outlooks, strict=True):
+        surface, target = outlook.surface, response.target
+        by_mean = definition.judged_by == "mean"
+        mean, variance = surface.moments(X)
+        total = variance + surface.weights @ (mean - surface.weights @ mean) ** 2
+        more = [0.0 if by_mean else _unknown(surface, limit) for limit in (target.low, target.high)]
+        wander = surface.wander(X, setting) if setting.any() and not by_mean else 0.0
+        yield Around(
+            _scores(response, by_mean),
+            (total + wander + more[0], total + wander + more[1]),
+            moves(outlook, X, taken),
+            surface.weights,
+        )
+
+
+def _scores(response: Predicted, by_mean: bool) -> tuple[Array, Array]:
+    """Normal scores (n,) today of the chances that each limit is met."""
+    chance = response.process_met if by_mean else response.met
+    none = np.full(response.moments[0].shape[1], np.inf)
+    low, high = response.target.low, response.target.high
+    return (
+        none if np.isinf(low) else score(chance(Target(low=low))),
+        none if np.isinf(high) else score(chance(Target(high=high))),
+    )
+
+
+def _unknown(surface: Surface, limit: float) -> Array:
+    """Latent variance (S, 1) that a well on a new plate adds where its reading is at the limit."""
+    errors = surface.errors
+    inside = (errors.inside**2).sum(axis=1)[:, None]
+    if np.isinf(limit) or surface.link != "logit":
+        return np.asarray(errors.noise[:, None] ** 2 + inside)
+    place, ceiling = surface.thresholds(limit), errors.ceiling[:, None]
+    reach = np.isfinite(place)
+    slope = np.maximum(slope_of("logit", np.where(reach, place, 0.0), ceiling), 1e-12)
+    scale = (errors.scale**2).sum(axis=1)[:, None] * limit**2
+    own = (errors.noise[:, None] ** 2 + scale) / slope**2
+    return np.where(reach, own + inside, np.inf)
