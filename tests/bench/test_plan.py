@@ -32,6 +32,7 @@ from tests.studies import (
 FACTORS = [PH, SALT]
 EARLIER = [read(spread(FACTORS, 12, seed), seed, error) for seed, error in ((1, 0.02), (2, -0.03))]
 PROTEIN = {"available_mg": 40.0, "reserved_mg": 10.0, "per_well_mg": 0.25}
+EXPECTED = ["wrong_share", "set_point", "reached"]
 CONTROLS = {"blank": 2, "load": 4, "no_resin": 2}
 
 
@@ -98,7 +99,7 @@ def test_same_seed_same_plan(view):
 
 def test_forecast(view):
     plan = muntin.propose(view, wells=6)
-    assert list(plan.forecast.columns) == ["wells", "plates", "wrong_share", "set_point"]
+    assert list(plan.forecast.columns) == ["wells", "plates", *EXPECTED]
     assert list(plan.forecast["wells"]) == [0, 6, 12, 24, 48, 96]
     assert list(plan.forecast["plates"]) == [0, 1, 1, 1, 1, 2]
     share, best = plan.forecast["wrong_share"], plan.forecast["set_point"]
@@ -133,7 +134,7 @@ def test_verdict_on_the_plan(view):
 def test_forecast_by_milligrams(view):
     # Bridging wells, loads and wells without resin are given protein; blanks are not.
     plan = muntin.propose(changed(view, protein=PROTEIN), wells=3)
-    assert list(plan.forecast.columns) == ["wells", "plates", "mg", "wrong_share", "set_point"]
+    assert list(plan.forecast.columns) == ["wells", "plates", "mg", *EXPECTED]
     extra = 4 + 4 + 2
     # 24 mg are left after 24 wells; 96 more would take two plates and 29 mg.
     assert list(plan.forecast["wells"]) == [0, 3, 6, 12, 24, 48]
@@ -314,7 +315,7 @@ def test_opening_plate(tmp_path):
     assert list(plan.forecast["wells"]) == [0, 6, 8, 12, 24, 48, 96]
     assert plan.forecast["wrong_share"][0] == pytest.approx(view.window().wrong_share, abs=1e-12)
     assert plan.forecast["wrong_share"][1:].isna().all()
-    assert plan.forecast["set_point"].isna().all()
+    assert plan.forecast[["set_point", "reached"]].isna().all(axis=None)
     assert plan.ruling == Ruling(word="none", because="no rule")
     assert plan.forecast["mg"][1] == 0.25 * (6 + 4 + 2)
     said = set(conditions(plan)["reason"])

@@ -32,6 +32,7 @@ from tests.benchmarks.series import DEFINITION, TARGET, Truth, read_plate, study
 Floats = NDArray[np.float64]
 OPENING, SECOND, WELLS = 12, 12, (6, 12, 24, 48)
 LARGE_PLATE_SD = 0.08
+LIMIT = 0.9
 JUDGED = DEFINITION.study.model_copy(update={"judged_by": "well"})
 BY_WELL = DEFINITION.model_copy(update={"study": JUDGED})
 
@@ -140,7 +141,7 @@ def _next_plate(
     window = view.window()
     selection = select(view, max(wells), "edge", seed)
     chosen = selection.candidates.iloc[[pick.candidate for pick in selection.picks]]
-    ahead = prospects(view, window, selection, (0, *wells), Rooms(first=96, further=96))
+    ahead = prospects(view, window, selection, (0, *wells), Rooms(first=96, further=96), LIMIT)
     for prospect in ahead[1:]:
         some = chosen.iloc[: prospect.wells].to_numpy(dtype=float)
         plate = read_plate(process, some, plate_errors(1, rng, sd)[0], rng)

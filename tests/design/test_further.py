@@ -33,7 +33,7 @@ def test_rooms():
 
 
 def test_the_plans_own_wells_come_first(view, selection):
-    ahead = prospects(view, view.window(), selection, (0, 1, 4, 6), ONE_PLATE)
+    ahead = prospects(view, view.window(), selection, (0, 1, 4, 6), ONE_PLATE, 0.9)
     assert [p.wells for p in ahead] == [0, 1, 4, 6]
     shares = [p.wrong_share for p in ahead]
     assert shares == pytest.approx([selection.forecast[k] for k in (0, 1, 4, 6)], rel=1e-8)
@@ -41,13 +41,14 @@ def test_the_plans_own_wells_come_first(view, selection):
 
 def test_without_wells_it_is_the_window_of_today(view, selection):
     window = view.window()
-    first = prospects(view, window, selection, (0, 2), ONE_PLATE)[0]
+    first = prospects(view, window, selection, (0, 2), ONE_PLATE, 0.9)[0]
     assert first.wrong_share == window.wrong_share
     assert first.set_point == window.setpoint["probability"]
+    assert first.reached == float(first.set_point >= 0.9)
 
 
 def test_more_wells_bring_more(view, selection):
-    ahead = prospects(view, view.window(), selection, (0, 3, 6, 10, 16), ONE_PLATE)
+    ahead = prospects(view, view.window(), selection, (0, 3, 6, 10, 16), ONE_PLATE, 0.9)
     assert (np.diff([p.wrong_share for p in ahead]) < 0.0).all()
     assert (np.diff([p.set_point for p in ahead]) >= 0.0).all()
 

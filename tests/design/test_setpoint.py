@@ -8,7 +8,7 @@ from scipy.special import ndtr
 
 import muntin
 from muntin.design.outlook import Outlook
-from muntin.design.setpoint import expected_best
+from muntin.design.setpoint import Drawn, SetPoint, _around, set_points
 from muntin.window.coded import code
 from tests.studies import PH, RECOVERY, SALT, SHIFT, changed, read, read_shift, spread, written
 
@@ -41,11 +41,13 @@ def outlook_of(view, name="shift"):
     return Outlook(view.surfaces[name], X, X, inside, scale, np.zeros(0, dtype=np.intp))
 
 
-def drawn_best(view, wells, by, low, high, draws=6000):
-    """Mean over drawn readings of the highest probability that the posterior then gives, by the
-    textbook update of a normal law (Rasmussen & Williams 2006, eq. 2.23).
+def drawn_tops(view, wells, by, low, high, draws=6000):
+    """The highest probability that the posterior gives after drawn readings, and that of today's
+    set point (draws,): readings are taken in by the textbook update of a normal law (Rasmussen &
+    Williams 2006, eq. 2.23).
     """
-    surface, X = view.surfaces["shift"], code(view.study.definition, view.window().grid)
+    window = view.window()
+    surface, X = view.surfaces["shift"], code(view.study.definition, window.grid)
     Z, (noise,), ((plate,),) = X[wells], surface.errors.noise, surface.errors.inside
     mean, variance = (part[0] for part in surface.moments(X))
     R = surface.covariance(Z, Z)[0] + plate**2 + noise**2 * np.eye(len(wells))
@@ -56,32 +58,51 @@ def drawn_best(view, wells, by, low, high, draws=6000):
     news = np.random.default_rng(4).multivariate_normal(np.zeros(len(wells)), R, draws)
     then = mean[:, None] + gain @ news.T
     sd = np.sqrt(left + more)[:, None]
-    return (ndtr((high - then) / sd) - ndtr((low - then) / sd)).max(axis=0).mean()
+    p = ndtr((high - then) / sd) - ndtr((low - then) / sd)
+    lead = window.grid["probability"].max() - window.setpoint["probability"]
+    own = p[window.setpoint.name]
+    return np.maximum(p.max(axis=0) - lead, own), own
 
 
 @pytest.mark.parametrize("by", ["mean", "well"])
 @pytest.mark.parametrize(
-    ("low", "high"), [(1.8, np.inf), (-np.inf, -1.9), (0.2, 0.5)], ids=["low", "high", "both"]
+    ("low", "high"),
+    [(2.3, np.inf), (-np.inf, -2.3), (0.2, 0.5)],
+    ids=["low", "high", "both"],
 )
 def test_agrees_with_drawn_readings(one_node, by, low, high):
     target = {"at_least": low, "at_most": high}
     view = judged(one_node, by, **{k: v for k, v in target.items() if np.isfinite(v)})
-    window = view.window()
-    today, lead = window.setpoint["probability"], window.grid["probability"].max()
-    now, then = expected_best(view, window, [outlook_of(view)], WELLS, [0, len(WELLS)])
-    assert now == today
-    gain = drawn_best(view, WELLS, by, low, high) - lead
-    # 128 pairs of draws of a gain whose sd is about its size.
-    assert then - now == pytest.approx(gain, abs=0.15 * gain + 0.003)
-
-
-def test_never_falls_with_wells(one_node):
-    view = judged(one_node, "well", at_least=1.8)
     outlook, window = outlook_of(view), view.window()
-    best = expected_best(view, window, [outlook], WELLS, [0, 1, 2, 4, 8])
-    assert best[0] == window.setpoint["probability"]
-    assert (np.diff(best) >= 0.0).all()
-    assert best[-1] > best[0]
+    limit = window.setpoint["probability"] + 0.03
+    now, then = set_points(view, window, [outlook], WELLS, [0, len(WELLS)], limit)
+    assert now == SetPoint(window.setpoint["probability"], 0.0)
+    top, own = drawn_tops(view, WELLS, by, low, high)
+    # Three standard errors of the 512 draws, and what half a draw in doubt adds.
+    gain, error = (top - own).mean(), (top - own).std() / np.sqrt(512)
+    assert then.expected - now.expected == pytest.approx(gain, abs=3.0 * error + 1e-4)
+    reached = (top >= limit).mean()
+    error = np.sqrt(reached * (1.0 - reached) / 512)
+    assert then.reached == pytest.approx(reached, abs=3.0 * error + 0.001)
+    assert 0.05 < reached < 0.95
+
+
+def test_choosing_again_is_worth_something_where_the_best_may_move(one_node):
+    view = judged(one_node, "mean", at_least=0.2, at_most=0.5)
+    outlook, window = outlook_of(view), view.window()
+    best = set_points(view, window, [outlook], WELLS, [0, 1, 2, 4, 8], 0.9)
+    expected = [b.expected for b in best]
+    assert expected[0] == window.setpoint["probability"]
+    assert (np.diff(expected) >= 0.0).all()
+    assert expected[-1] > expected[0] + 0.05
+
+
+def test_a_limit_that_is_reached_today(one_node):
+    view = judged(one_node, "well", at_least=1.8)
+    p = view.window().setpoint["probability"]
+    for limit, reached in ((p, 1.0), (np.nextafter(p, 1.0), 0.0)):
+        (now,) = set_points(view, view.window(), [outlook_of(view)], WELLS, [0], limit)
+        assert now == SetPoint(p, reached)
 
 
 @pytest.mark.parametrize("by", ["mean", "well", "kept"])
@@ -94,6 +115,21 @@ def test_it_starts_at_the_windows_set_point(tmp_path_factory, by):
     view = muntin.assess(study, "quadratic")
     view = changed(view, factors=kept, responses=[RECOVERY, SHIFT], study={"judged_by": by})
     outlooks = [outlook_of(view, name) for name in ("recovery", "shift")]
-    best = expected_best(view, view.window(), outlooks, WELLS, [0, 8])
-    assert best[0] == view.window().setpoint["probability"]
-    assert best[0] <= best[1] <= 1.0
+    now, then = set_points(view, view.window(), outlooks, WELLS, [0, 8], 0.9)
+    assert now.expected == view.window().setpoint["probability"]
+    assert now.expected <= then.expected <= 1.0
+
+
+@pytest.mark.parametrize("by", ["mean", "well"])
+def test_every_condition_is_expected_to_stay_what_it_is(one_node, by):
+    # The mean of posterior probabilities is the prior one.
+    view = judged(one_node, by, at_least=0.4, at_most=2.5)
+    (around,) = _around(view, view.window().grid, [outlook_of(view)], WELLS)
+    drawn = Drawn.of(around.weights, len(WELLS), np.random.default_rng(3))
+    then, now = around.then(len(WELLS), drawn), around.now()
+    np.testing.assert_allclose(around.then(0, drawn), now[:, None] + np.zeros(512), atol=1e-12)
+    unsure = (now > 0.05) & (now < 0.95)
+    assert unsure.sum() >= 5
+    error = then[unsure].std(axis=1) / np.sqrt(512)
+    assert (np.abs(then.mean(axis=1) - now)[unsure] < 4.0 * error).all()
+    assert error.max() > 0.005

@@ -8,8 +8,8 @@ from muntin.design.stopping import Ruling, rule_on
 from muntin.record.definition import StopRule
 
 
-def forecast(shares, best=(0.80, 0.81, 0.82, 0.83)):
-    return pd.DataFrame({"wells": [0, 6, 12, 24], "wrong_share": shares, "set_point": best})
+def forecast(shares, reached=(0.0, 0.2, 0.3, 0.4)):
+    return pd.DataFrame({"wells": [0, 6, 12, 24], "wrong_share": shares, "reached": reached})
 
 
 FALLING = (0.05, 0.04, 0.03, 0.02)
@@ -30,22 +30,23 @@ def test_the_share_against_its_limit(limit, asked, expected):
 
 
 @pytest.mark.parametrize(
-    ("limit", "asked", "expected"),
+    ("reached", "expected"),
     [
-        (0.80, 24, Ruling(word="stop", because="met", wells=0)),
-        (0.82, 24, Ruling(word="go on with fewer", because="enough", wells=12)),
-        (0.825, 24, Ruling(word="go on", because="enough", wells=24)),
-        (0.90, 24, Ruling(word="go on", because="out of reach")),
+        ((1.0, 0.9, 0.9, 0.9), Ruling(word="stop", because="met", wells=0)),
+        ((0.0, 0.2, 0.5, 0.6), Ruling(word="go on with fewer", because="enough", wells=12)),
+        ((0.0, 0.2, 0.49, 0.6), Ruling(word="go on", because="enough", wells=24)),
+        ((0.0, 0.2, 0.3, 0.49), Ruling(word="go on", because="out of reach")),
+        ((0.0, 0.01, 0.02, 0.04), Ruling(word="stop", because="nothing gained")),
     ],
 )
-def test_the_set_point_against_its_limit(limit, asked, expected):
-    assert rule_on(forecast(FALLING), StopRule(best_probability=limit), asked) == expected
+def test_the_chance_of_the_set_point(reached, expected):
+    assert rule_on(forecast(FALLING, reached), StopRule(best_probability=0.9), 24) == expected
 
 
 def test_either_limit_will_do():
-    rule = StopRule(wrong_share=0.001, best_probability=0.81)
+    rule = StopRule(wrong_share=0.001, best_probability=0.9)
     expected = Ruling(word="go on with fewer", because="enough", wells=6)
-    assert rule_on(forecast(FALLING), rule, 24) == expected
+    assert rule_on(forecast(FALLING, (0.0, 0.5, 0.6, 0.7)), rule, 24) == expected
     rule = StopRule(wrong_share=0.03, best_probability=0.999)
     expected = Ruling(word="go on with fewer", because="enough", wells=12)
     assert rule_on(forecast(FALLING), rule, 24) == expected

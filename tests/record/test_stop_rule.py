@@ -129,9 +129,10 @@ def test_the_record_of_a_study(tmp_path):
     assert again.stopping.rule == THREE
 
 
-def test_wells_without_a_reading_leave_the_rule_free(tmp_path):
+def test_an_empty_plate_leaves_the_rule_free(tmp_path):
     keep_stop_rule(written(tmp_path, stop={"wrong_share": 0.02}), DAY)
-    study = written(tmp_path, [PLATE.assign(recovery="")], stop={"wrong_share": 0.03})
+    heading = PLATE.head(0).assign(well=[])
+    study = written(tmp_path, [heading], stop={"wrong_share": 0.03})
     assert study.stopping.rule == THREE
 
 

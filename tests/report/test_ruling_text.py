@@ -19,6 +19,7 @@ FORECAST = pd.DataFrame(
         "mg": [0.0, 4.0, 5.5, 8.5],
         "wrong_share": [0.05, 0.04, 0.03, 0.02],
         "set_point": [0.80, 0.81, 0.82, 0.83],
+        "reached": [0.0, 0.35, 0.62, 0.4],
     }
 )
 
@@ -42,32 +43,22 @@ def plan_of(ruling: Ruling, asked: int = 12, forecast: pd.DataFrame = FORECAST) 
     [
         (
             {"wrong_share": 0.05},
-            "Stop: the stop rule is met today (5.0 % called wrongly, rule 5.0 %).",
+            "Stop: the stop rule is met today (5.0 % called wrongly, rule 5 %).",
         ),
         (
             {"wrong_share": 0.04},
             "Go on with fewer: 6 test wells are expected to meet the stop rule (4.0 % called "
-            "wrongly, rule 4.0 %).",
+            "wrongly, rule 4 %).",
         ),
         (
             {"best_probability": 0.815},
-            "Go on: 12 test wells are expected to meet the stop rule (set point 82.0 %, rule "
-            "81.5 %).",
+            "Go on: 12 test wells are expected to meet the stop rule (chance of a set point at "
+            "81.5 %: 62 %).",
         ),
         (
             {"wrong_share": 0.02},
             "Go on: 24 test wells are expected to meet the stop rule (2.0 % called wrongly, rule "
-            "2.0 %), 12 are not.",
-        ),
-        (
-            {"wrong_share": 0.01, "best_probability": 0.95},
-            "Go on, but up to 24 test wells are not expected to meet the stop rule (after 24: "
-            "2.0 % called wrongly, rule 1.0 %; set point 83.0 %, rule 95.0 %).",
-        ),
-        (
-            {"best_probability": 0.999_999},
-            "Go on, but up to 24 test wells are not expected to meet the stop rule (after 24: set "
-            "point 83.0 %, rule over 99.9 %).",
+            "2 %), 12 are not.",
         ),
     ],
 )
@@ -77,13 +68,34 @@ def test_verdict_in_a_sentence(tmp_path, stop, said):
     assert ruling_line(study, plan) == said
 
 
+@pytest.mark.parametrize(
+    ("stop", "said"),
+    [
+        (
+            {"best_probability": 0.8},
+            "Stop: the stop rule is met today (set point 80.0 %, rule 80 %).",
+        ),
+        (
+            {"wrong_share": 0.01, "best_probability": 0.95},
+            "Go on, but up to 24 test wells are not expected to meet the stop rule (after 24: "
+            "2.0 % called wrongly, rule 1 %; chance of a set point at 95 %: under 1 %).",
+        ),
+    ],
+)
+def test_verdict_with_other_chances(tmp_path, stop, said):
+    reached = [1.0] * 4 if len(stop) == 1 else [0.0, 0.0, 0.001, 0.001]
+    forecast = FORECAST.assign(reached=reached)
+    plan = plan_of(rule_on(forecast, StopRule(**stop), 12), forecast=forecast)
+    assert ruling_line(written(tmp_path, stop=stop), plan) == said
+
+
 def test_next_to_nothing(tmp_path):
     flat = FORECAST.assign(wrong_share=[0.05, 0.0499, 0.0498, 0.0497])
     study = written(tmp_path, stop={"wrong_share": 0.01})
     plan = plan_of(rule_on(flat, StopRule(wrong_share=0.01), 12), forecast=flat)
     assert ruling_line(study, plan) == (
         "Stop: 24 test wells would bring next to nothing (after 24: 5.0 % called wrongly, rule "
-        "1.0 %)."
+        "1 %)."
     )
 
 
@@ -122,17 +134,16 @@ def test_figure_shows_the_forecast_and_the_stop_rule(tmp_path):
     study = written(tmp_path, stop={"wrong_share": 0.035})
     plan = plan_of(rule_on(FORECAST, StopRule(wrong_share=0.035), 12))
     left, right = draw_forecast(study, plan).axes
-    for axes, name in ((left, "wrong_share"), (right, "set_point")):
-        np.testing.assert_allclose(axes.lines[0].get_ydata(), 100.0 * FORECAST[name])
-        assert [t.get_text() for t in axes.get_xticklabels()] == [
-            "0\n(0)",
-            "6\n(4)",
-            "12\n(5.5)",
-            "24\n(8.5)",
-        ]
-        assert axes.lines[1].get_xdata() == [2]
+    curves = [(left.lines[0], "wrong_share"), (right.lines[0], "set_point")]
+    for line, name in (*curves, (right.lines[2], "reached")):
+        np.testing.assert_allclose(line.get_ydata(), 100.0 * FORECAST[name])
+    assert [list(line.get_xdata()) for line in (left.lines[1], right.lines[1])] == [[2], [2]]
+    for axes in (left, right):
+        ticks = [t.get_text() for t in axes.get_xticklabels()]
+        assert ticks == ["0\n(0)", "6\n(4)", "12\n(5.5)", "24\n(8.5)"]
     assert list(left.lines[2].get_ydata()) == pytest.approx([3.5, 3.5])
-    assert len(right.lines) == 2
+    assert len(right.lines) == 4
+    assert right.lines[2].get_label() == "chance that it reaches 90 %"
 
 
 def test_figure_without_protein_counts_wells_only(tmp_path):

@@ -15,7 +15,7 @@ from muntin.bench.protein import protein_left_mg, protein_needed_mg
 from muntin.design.further import prospects
 from muntin.design.reasons import reasons
 from muntin.design.selection import Aim, Selection, select
-from muntin.design.stopping import Ruling, rule_on
+from muntin.design.stopping import Ruling, asked_of_set_point, rule_on
 from muntin.record.faults import Fault, StudyFaults, number
 from muntin.record.study import Study
 from muntin.window.assessment import Assessment
@@ -31,8 +31,9 @@ class Plan:
     judged probability today) and reason, in the order of the wells; the index counts in the order
     of choice. forecast: wells (test wells, 0 means no further plate), plates, mg (protein), assays
     (slots) and days where the study says what they take, wrong_share (expected share of the range
-    still called wrongly) and set_point (expected probability of the set point); the last two are
-    NaN before anything was read, but for the share at 0. ruling: the forecast against the stop
+    still called wrongly), set_point (expected probability of the set point) and reached (chance
+    that it reaches what the stop rule asks, else what the window requires); the last three are NaN
+    before anything was read, but for the share at 0. ruling: the forecast against the stop
     rule. seed: of the choice and of the layout.
     """
 
@@ -173,10 +174,13 @@ def _forecast(view: Assessment, selection: Selection, wells: int) -> pd.DataFram
     if view.fresh:
         # Before any reading the prior alone would speak, and it has seen no plateau yet.
         shares = [selection.forecast[0], *[np.nan] * (len(counts) - 1)]
-        return table.assign(wrong_share=shares, set_point=np.nan)
-    ahead = prospects(view, view.window(), selection, counts, outlay.rooms)
+        return table.assign(wrong_share=shares, set_point=np.nan, reached=np.nan)
+    limit = asked_of_set_point(view.study)
+    ahead = prospects(view, view.window(), selection, counts, outlay.rooms, limit)
     return table.assign(
-        wrong_share=[p.wrong_share for p in ahead], set_point=[p.set_point for p in ahead]
+        wrong_share=[p.wrong_share for p in ahead],
+        set_point=[p.set_point for p in ahead],
+        reached=[p.reached for p in ahead],
     )
 
 

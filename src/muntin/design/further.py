@@ -20,12 +20,13 @@ from muntin.design.edge import EdgeCriterion, LazyGreedy
 from muntin.design.forecast import Tails, wrong_share
 from muntin.design.outlook import Outlook
 from muntin.design.selection import Selection
-from muntin.design.setpoint import expected_best
+from muntin.design.setpoint import set_points
 from muntin.record.definition import Definition
 from muntin.surrogate.nodes import Surface
 from muntin.window.assessment import Assessment, target_of
 from muntin.window.coded import SharedBy, code, group_numbers, setting_sd, shared_by
 from muntin.window.predicted import Predicted
+from muntin.window.probability import Target
 from muntin.window.window import Window
 
 Array = NDArray[np.float64]
@@ -57,18 +58,27 @@ class Rooms:
 @dataclass(frozen=True, kw_only=True)
 class Prospect:
     """What is expected once so many test wells are read: the share of the range that may still be
-    called wrongly, and the probability of the set point.
+    called wrongly, the probability of the set point, and the chance that it reaches a limit.
     """
 
     wells: int
     wrong_share: float
     set_point: float
+    reached: float
 
 
 def prospects(
-    view: Assessment, window: Window, selection: Selection, counts: Sequence[int], rooms: Rooms
+    view: Assessment,
+    window: Window,
+    selection: Selection,
+    counts: Sequence[int],
+    rooms: Rooms,
+    limit: float,
 ) -> tuple[Prospect, ...]:
-    """What so many test wells (ascending, first 0) would bring, those of the selection first."""
+    """What so many test wells (ascending, first 0) would bring, those of the selection first.
+
+    limit: the probability that the set point is to reach.
+    """
     coming = _Coming(view, window, selection, max(1, rooms.plates(counts[-1])))
     wrong, read = [window.wrong_share], [0]
     for count in counts[1:]:
@@ -76,10 +86,10 @@ def prospects(
             coming.next(count, rooms)
         wrong.append(wrong_share(coming.outlooks, coming.today))
         read.append(len(coming.taken))
-    best = expected_best(view, window, coming.outlooks, coming.taken, read)
+    best = set_points(view, window, coming.outlooks, coming.taken, read, limit)
     return tuple(
-        Prospect(wells=k, wrong_share=share, set_point=p)
-        for k, share, p in zip(counts, wrong, best, strict=True)
+        Prospect(wells=k, wrong_share=share, set_point=b.expected, reached=b.reached)
+        for k, share, b in zip(counts, wrong, best, strict=True)
     )
 
 
@@ -111,10 +121,7 @@ class _Coming:
         targets = tuple(target_of(r) for r in responses)
         surfaces = [self.view.surfaces[r.name] for r in responses]
         P = code(definition, self.window.grid)
-        self.today = [
-            Tails.of(Predicted.of(surface, P, target, np.zeros_like(P)))
-            for surface, target in zip(surfaces, targets, strict=True)
-        ]
+        self.today = _today(surfaces, P, targets, self.window)
         watched = _watched(np.prod([tails.meets for tails in self.today], axis=0))
         self.outlooks = tuple(
             self._outlook(surface, P, watched, shared_by(definition, response))
@@ -167,6 +174,19 @@ class _Coming:
             outlook.pick(at)
         self.levels.use(well)
         self.taken.append(at)
+
+
+def _today(
+    surfaces: Sequence[Surface], P: Array, targets: Sequence[Target], window: Window
+) -> list[Tails]:
+    """Chances today at the judged points; those of a single limit stand in the window."""
+    if len(targets) == 1 and np.isinf([targets[0].low, targets[0].high]).any():
+        p = window.grid["p_mean"].to_numpy(dtype=float)
+        return [Tails(None, p) if np.isinf(targets[0].low) else Tails(p, None)]
+    return [
+        Tails.of(Predicted.of(surface, P, target, np.zeros_like(P)))
+        for surface, target in zip(surfaces, targets, strict=True)
+    ]
 
 
 def _watched(p: Array) -> Index:

@@ -1,17 +1,19 @@
-"""Forecast of the set point's probability.
+"""Forecast of the set point.
 
 At a fixed condition the expected posterior probability after any plate is today's, so no forecast
-can promise that today's set point will look better. What a plate brings is a choice: the set point
-is put where the probability is then highest, and the expectation of the highest of correlated
-posterior probabilities, E[max_x p_k(x)] after k wells, never falls with k. It is what the stop rule
-is compared with (preposterior analysis: Raiffa & Schlaifer 1961; expected maxima of correlated
-posterior means: Frazier, Powell & Dayanik 2009, INFORMS Journal on Computing 21:599).
+can promise that today's set point will look better; what a plate brings is that one knows, and may
+choose again. The set point is put where the probability is then highest. Two numbers follow for k
+wells to come (preposterior analysis: Raiffa & Schlaifer 1961): the expectation of the highest of
+correlated posterior probabilities, E[max_x p_k(x)], which never falls with k (Frazier, Powell &
+Dayanik 2009, INFORMS Journal on Computing 21:599), and the chance P(max_x p_k(x) >= q) that there
+is then a set point as probable as the stop rule asks. Where one condition is best whatever is read
+the first stays where it is and only the second tells what wells are good for.
 
 The law of p_k over x follows in closed form from the moves of the posterior mean: with rho the
 share of the predictive variance that k wells explain, z(x) the standardised move and c the normal
 score of today's chance, p_k = Phi((c + sqrt(rho) z) / sqrt(1 - rho)), whose mean is today's chance.
-Only the maximum is taken over draws of z. They measure the advantage over today's set point, whose
-own expectation is known, so that few of them do.
+Only the maximum is taken over draws of z. For the expectation they measure the advantage over
+today's set point, whose own expectation is known.
 """
 
 from __future__ import annotations
@@ -36,10 +38,18 @@ from muntin.window.window import Window
 
 Array = NDArray[np.float64]
 Index = NDArray[np.intp]
-_PAIRS = 128
-_POINTS = 1500
+_PAIRS = 256
+_POINTS = 750
 _TODAY = 40
 _MOST = 1.0 - 1e-9
+
+
+@dataclass(frozen=True)
+class SetPoint:
+    """The expected probability of the set point, and the chance that it reaches a limit."""
+
+    expected: float
+    reached: float
 
 
 @dataclass(frozen=True)
@@ -103,29 +113,23 @@ class Drawn:
         return z
 
 
-def expected_best(
+def set_points(
     view: Assessment,
     window: Window,
     outlooks: Sequence[Outlook],
     taken: Sequence[int],
     read: Sequence[int],
-) -> list[float]:
-    """Expected probability of the set point once the first k of the wells taken are read, for each
-    k of `read` (ascending); for k = 0 that of the window.
+    limit: float,
+) -> list[SetPoint]:
+    """The set point once the first k of the wells taken are read, for each k of `read`
+    (ascending); for k = 0 that of the window.
 
     outlooks: one a judged response in the order of `view.predicted`; taken: numbers of their
     candidates. A new set point must lead by as much as the window's central one gives away today.
     """
-    definition = view.study.definition
     today = window.grid["probability"].to_numpy(dtype=float)
     at = int(str(window.setpoint.name))
-    kept = definition.judged_by == "kept"
-    size = sum(1 for _ in view.settings(window.grid.iloc[[at]])) if kept else 1
-    rows = _contenders(today, at, max(2, _POINTS // size))
-    frame = window.grid.iloc[rows][list(definition.factor_names)].reset_index(drop=True)
-    around = [*view.settings(frame)] if kept else [(1.0, frame)]
-    points = pd.concat([part for _, part in around], ignore_index=True)
-    weights = np.array([weight for weight, _ in around])
+    weights, rows, points = _points(view, window, today, at)
     every = [*_around(view, points, outlooks, taken)]
     rng = np.random.default_rng(0)
     drawn = [Drawn.of(a.weights, len(taken), rng) for a in every]
@@ -133,13 +137,36 @@ def expected_best(
     # What the ties of readings and the finer law of today add to these chances stays as it is.
     offset = score(today[rows])[:, None] - score(now)
     lead = float(today.max()) - today[at]
-    best = [float(today[at])]
-    for k in [k for k in read if k > 0]:
+    found = []
+    for k in read:
+        if k == 0:
+            found.append(SetPoint(float(today[at]), float(today[at] >= limit)))
+            continue
         met = np.prod([a.then(k, d) for a, d in zip(every, drawn, strict=True)], axis=0)
         p = _chance(score(_averaged(weights, met)) + offset)
-        gain = np.maximum(p.max(axis=0) - lead - p[0], 0.0).mean()
-        best.append(min(1.0, max(best[-1], float(today[at] + gain))))
-    return best
+        top = np.maximum(p.max(axis=0) - lead, p[0])
+        expected = min(1.0, float(today[at] + (top - p[0]).mean()))
+        expected = max([expected, *(f.expected for f in found)])
+        # Draws that all agree leave half of one in doubt.
+        reached = ((top >= limit).sum() + 0.5) / (len(top) + 1.0)
+        found.append(SetPoint(expected, float(reached)))
+    return found
+
+
+def _points(
+    view: Assessment, window: Window, today: Array, at: int
+) -> tuple[Array, Index, pd.DataFrame]:
+    """Rows of the window's grid that may become the set point, row `at` first; the settings around
+    them at which they are judged (raw units, one after the other), with the weight of each.
+    """
+    definition = view.study.definition
+    kept = definition.judged_by == "kept"
+    size = sum(1 for _ in view.settings(window.grid.iloc[[at]])) if kept else 1
+    rows = _contenders(today, at, max(2, _POINTS // size))
+    frame = window.grid.iloc[rows][list(definition.factor_names)].reset_index(drop=True)
+    around = [*view.settings(frame)] if kept else [(1.0, frame)]
+    points = pd.concat([part for _, part in around], ignore_index=True)
+    return np.array([weight for weight, _ in around]), rows, points
 
 
 def _contenders(today: Array, at: int, most: int) -> Index:

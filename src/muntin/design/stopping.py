@@ -9,6 +9,7 @@ import numpy as np
 import pandas as pd
 
 from muntin.record.definition import StopRule
+from muntin.record.study import Study
 
 Word = Literal["go on", "go on with fewer", "stop", "none"]
 Because = Literal[
@@ -24,6 +25,7 @@ Because = Literal[
 ]
 # Wells that close less than this part of what is missing to the rule bring next to nothing.
 _NEXT_TO_NOTHING = 0.1
+_EVEN = 0.5
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -39,13 +41,23 @@ class Ruling:
     wells: int | None = None
 
 
+def asked_of_set_point(study: Study) -> float:
+    """Probability that the set point is to reach: the stop rule's, else the required one."""
+    rule = study.stopping.rule
+    given = None if rule is None else rule.best_probability
+    return study.definition.required_probability if given is None else given
+
+
 def rule_on(forecast: pd.DataFrame, rule: StopRule | None, asked: int) -> Ruling:
-    """Judge a forecast (columns wells, ascending from 0, wrong_share and set_point) by a rule, for
-    a plate of `asked` test wells.
+    """Judge a forecast (columns wells, ascending from 0, wrong_share and reached) by a rule, for a
+    plate of `asked` test wells.
+
+    Wells are expected to meet the rule where the expected share does, or where the set point
+    reaches the rule's probability more likely than not.
     """
     if rule is None or (rule.wrong_share is None and rule.best_probability is None):
         return Ruling(word="none", because="no rule")
-    if forecast[["wrong_share", "set_point"]].isna().any(axis=None):
+    if forecast[["wrong_share", "reached"]].isna().any(axis=None):
         return Ruling(word="none", because="no reading")
     missing = _missing(forecast, rule)
     meets = forecast["wells"].to_numpy()[(missing <= 0.0).any(axis=0)]
@@ -72,5 +84,5 @@ def _missing(forecast: pd.DataFrame, rule: StopRule) -> np.ndarray:
     if rule.wrong_share is not None:
         missing.append(forecast["wrong_share"] - rule.wrong_share)
     if rule.best_probability is not None:
-        missing.append(rule.best_probability - forecast["set_point"])
+        missing.append(_EVEN - forecast["reached"])
     return np.array(missing, dtype=float)

@@ -7,11 +7,13 @@ from typing import TYPE_CHECKING
 import numpy as np
 import pandas as pd
 
+from muntin.design.stopping import asked_of_set_point
 from muntin.record.definition import StopRule
 from muntin.record.study import Study
+from muntin.report.markers import figure_legend
 from muntin.report.ruling_text import ruling_line
-from muntin.report.style import ACCENT, INK, QUIET, dress, new_figure
-from muntin.report.words import share_text
+from muntin.report.style import ACCENT, INK, PAPER, dress, new_figure
+from muntin.report.words import per_cent
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
@@ -21,56 +23,59 @@ if TYPE_CHECKING:
 
 _LINE = "#1c5a80"
 _HEIGHT = 3.6
-_LABELS = {
-    "wrong_share": "May be called wrongly, % of the range",
-    "set_point": "Probability of the set point, %",
-}
 
 
 def draw_forecast(study: Study, plan: Plan) -> Figure:
-    """Draw the expected share called wrongly and the expected probability of the set point
-    against test wells, with the limits of the stop rule that holds.
+    """Draw the forecast against test wells, with the limits of the stop rule that holds: the
+    expected share called wrongly; the expected probability of the set point and the chance that
+    it is as probable as asked.
 
     The plan must have a forecast beyond 0 wells.
     """
-    rule = study.stopping.rule or StopRule()
-    limits = {"wrong_share": rule.wrong_share, "set_point": rule.best_probability}
+    rule, forecast = study.stopping.rule or StopRule(), plan.forecast
     figure = new_figure(_HEIGHT, study.definition.title, ruling_line(study, plan))
-    asked = int((plan.wells["role"] == "test").sum())
-    for axes, (name, label) in zip(figure.subplots(1, 2), _LABELS.items(), strict=True):
-        _panel(axes, plan.forecast, name, asked, limits[name])
-        axes.set_ylabel(label)
+    left, right = figure.subplots(1, 2)
+    at = int(np.flatnonzero(forecast["wells"] == (plan.wells["role"] == "test").sum())[0])
+    _curve(left, forecast["wrong_share"], at, _LINE, "o")
+    left.set_ylabel("May be called wrongly, % of the range")
+    _curve(right, forecast["set_point"], at, _LINE, "o", "expected probability")
+    asked = f"chance that it reaches {per_cent(asked_of_set_point(study))}"
+    _curve(right, forecast["reached"], at, INK, "s", asked)
+    right.set(ylabel="Set point, %", ylim=(-4.0, 104.0))
+    for axes, limit in ((left, rule.wrong_share), (right, rule.best_probability)):
+        axes.set_xticks(np.arange(len(forecast)), _ticks(forecast))
+        axes.set_xlabel("Test wells" + (" (protein, mg)" if "mg" in forecast else ""))
+        axes.margins(x=0.08, y=0.16)
+        _stop_line(axes, limit)
         dress(axes)
+    left.set_ylim(bottom=0.0)
+    figure_legend(figure, (left, right))
     return figure
 
 
-def _panel(axes: Axes, forecast: pd.DataFrame, name: str, asked: int, limit: float | None) -> None:
-    wells = forecast["wells"].to_numpy()
-    # Even steps: each count of wells doubles the one before.
-    x, y = np.arange(len(wells)), 100.0 * forecast[name].to_numpy()
-    axes.plot(x, y, color=_LINE, linewidth=2.2, marker="o", markersize=5, zorder=3)
-    at = int(np.flatnonzero(wells == asked)[0])
+def _curve(
+    axes: Axes, shares: pd.Series[float], at: int, colour: str, marker: str, label: str = ""
+) -> None:
+    """Draw shares against the counts of wells in even steps, the plan's filled."""
+    x, y = np.arange(len(shares)), 100.0 * shares.to_numpy(dtype=float)
+    style = "-" if marker == "o" else (0, (1, 1.2))
     axes.plot(
-        [x[at]],
-        [y[at]],
-        linestyle="none",
-        marker="D",
-        markersize=10,
-        markerfacecolor="none",
-        markeredgecolor=INK,
-        markeredgewidth=1.4,
-        zorder=4,
+        x,
+        y,
+        color=colour,
+        linewidth=2.0,
+        linestyle=style,
+        marker=marker,
+        markersize=7,
+        markerfacecolor=PAPER,
+        markeredgewidth=1.6,
+        label=label or None,
+        zorder=3,
     )
-    axes.annotate(
-        "this plan", (x[at], y[at]), (0, 11), textcoords="offset points", ha="center", fontsize=8
+    this = "this plan" if label == "" else None
+    axes.plot(
+        x[[at]], y[[at]], marker, color=colour, markersize=7, label=this, zorder=4, clip_on=False
     )
-    axes.set_xticks(x, _ticks(forecast))
-    axes.set_xlabel("Test wells" + (" (protein, mg)" if "mg" in forecast else ""))
-    axes.margins(x=0.08, y=0.16)
-    if limit is not None:
-        _stop_line(axes, 100.0 * limit, limit)
-    if name == "wrong_share":
-        axes.set_ylim(bottom=0.0)
 
 
 def _ticks(forecast: pd.DataFrame) -> list[str]:
@@ -81,15 +86,17 @@ def _ticks(forecast: pd.DataFrame) -> list[str]:
     return [f"{wells}\n({mg:.3g})" for wells, mg in pairs]
 
 
-def _stop_line(axes: Axes, height: float, limit: float) -> None:
-    """Draw the limit of the stop rule, named at the left end above the line."""
-    axes.axhline(height, color=ACCENT, linewidth=1.6, linestyle=(0, (4, 3)), zorder=2)
+def _stop_line(axes: Axes, limit: float | None) -> None:
+    """Draw the limit of the stop rule, if there is one, named above its left end."""
+    if limit is None:
+        return
+    axes.axhline(100.0 * limit, color=ACCENT, linewidth=1.6, linestyle=(0, (5, 3)), zorder=2)
     axes.annotate(
-        f"stop rule {share_text(limit)}",
-        (0.0, height),
+        f"stop rule {per_cent(limit)}",
+        (0.0, 100.0 * limit),
         xycoords=("axes fraction", "data"),
         xytext=(3, 3),
         textcoords="offset points",
         fontsize=8,
-        color=QUIET,
+        color=INK,
     )

@@ -17,7 +17,14 @@ from rich.text import Text
 from muntin.record.definition import Definition
 from muntin.record.factors import Factor
 from muntin.record.faults import counted
-from muntin.report.words import amount_text, axis_label, condition_text, share_text
+from muntin.report.words import (
+    amount_text,
+    axis_label,
+    condition_text,
+    likely_text,
+    per_cent,
+    share_text,
+)
 
 if TYPE_CHECKING:
     from muntin.bench.plan import Plan
@@ -222,8 +229,11 @@ def _why(rows: pd.DataFrame, factors: Sequence[Factor]) -> str:
     return re.sub(rf"probability [0-9.]+, | at ({setting}) \S+$", "", str(first))
 
 
-def forecast_table(plan: Plan) -> Table:
-    """Return the forecast: what so many test wells take, and what they are expected to bring."""
+def forecast_table(plan: Plan, limit: float) -> Table:
+    """Return the forecast: what so many test wells take, and what they are expected to bring.
+
+    `limit` is the probability that the set point is to reach.
+    """
     forecast = plan.forecast
     table = _plain_table()
     table.add_column("test wells")
@@ -234,6 +244,8 @@ def forecast_table(plan: Plan) -> Table:
             table.add_row(label, *(f"{value:.3g}" for value in forecast[name]))
     table.add_row("may be called wrongly", *map(share_text, forecast["wrong_share"]))
     table.add_row("set point passes", *map(share_text, forecast["set_point"]))
+    reaches = f"it reaches {per_cent(limit)}"
+    table.add_row(reaches, *map(likely_text, forecast["reached"]))
     return table
 
 

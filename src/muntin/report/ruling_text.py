@@ -9,7 +9,7 @@ import pandas as pd
 from muntin.record.definition import StopRule
 from muntin.record.faults import counted
 from muntin.record.study import Study
-from muntin.report.words import share_text
+from muntin.report.words import likely_text, per_cent, share_text
 
 if TYPE_CHECKING:
     from muntin.bench.plan import Plan
@@ -54,11 +54,13 @@ def _figures(forecast: pd.DataFrame, rule: StopRule, wells: int) -> str:
     row = forecast[forecast["wells"] == wells].iloc[0]
     parts = []
     if rule.wrong_share is not None:
-        share, limit = share_text(row["wrong_share"]), share_text(rule.wrong_share)
+        share, limit = share_text(row["wrong_share"]), per_cent(rule.wrong_share)
         parts.append(f"{share} called wrongly, rule {limit}")
     if rule.best_probability is not None:
-        p, limit = share_text(row["set_point"]), share_text(rule.best_probability)
-        parts.append(f"set point {p}, rule {limit}")
+        limit = per_cent(rule.best_probability)
+        today = f"set point {share_text(row['set_point'])}, rule {limit}"
+        chance = likely_text(row["reached"])
+        parts.append(f"chance of a set point at {limit}: {chance}" if wells else today)
     return "; ".join(parts)
 
 

@@ -12,6 +12,7 @@ from rich.console import Group, RenderableType
 from rich.table import Table
 from rich.text import Text
 
+from muntin.design.stopping import asked_of_set_point
 from muntin.record.definition import Definition
 from muntin.record.faults import counted
 from muntin.record.study import Study
@@ -244,8 +245,9 @@ def plan_sections(
     if view.fresh:
         told.append(f"{_capital(usual_reason(plan.wells))}.")
     early = "No forecast before the first readings."
-    forecast = [early] if view.fresh else [forecast_table(plan), ruling_line(view.study, plan)]
-    return [("Next", [*told, table]), ("Forecast", forecast)]
+    limit = asked_of_set_point(view.study)
+    ahead: list[RenderableType] = [forecast_table(plan, limit), ruling_line(view.study, plan)]
+    return [("Next", [*told, table]), ("Forecast", [early] if view.fresh else ahead)]
 
 
 def _tables(view: Assessment, plan: Plan) -> tuple[list[RenderableType], list[RenderableType]]:
