@@ -33,15 +33,17 @@ def draw_forecast(study: Study, plan: Plan) -> Figure:
     The plan must have a forecast beyond 0 wells.
     """
     rule, forecast = study.stopping.rule or StopRule(), plan.forecast
-    figure = new_figure(_HEIGHT, study.definition.title, ruling_line(study, plan))
+    # A number and its per cent sign stay on one line.
+    verdict = ruling_line(study, plan).replace(" %", "\N{NO-BREAK SPACE}%")
+    figure = new_figure(_HEIGHT, study.definition.title, verdict)
     left, right = figure.subplots(1, 2)
     at = int(np.flatnonzero(forecast["wells"] == (plan.wells["role"] == "test").sum())[0])
     _curve(left, forecast["wrong_share"], at, _LINE, "o")
-    left.set_ylabel("May be called wrongly, % of the range")
-    _curve(right, forecast["set_point"], at, _LINE, "o", "expected probability")
+    left.set_ylabel("May be called wrongly, %")
+    _curve(right, forecast["set_point"], at, _LINE, "o", "set point, expected probability")
     asked = f"chance that it reaches {per_cent(asked_of_set_point(study))}"
     _curve(right, forecast["reached"], at, INK, "s", asked)
-    right.set(ylabel="Set point, %", ylim=(-4.0, 104.0))
+    right.set(ylabel="Set point, probability in %", ylim=(-4.0, 104.0))
     for axes, limit in ((left, rule.wrong_share), (right, rule.best_probability)):
         axes.set_xticks(np.arange(len(forecast)), _ticks(forecast))
         axes.set_xlabel("Test wells" + (" (protein, mg)" if "mg" in forecast else ""))
@@ -87,16 +89,17 @@ def _ticks(forecast: pd.DataFrame) -> list[str]:
 
 
 def _stop_line(axes: Axes, limit: float | None) -> None:
-    """Draw the limit of the stop rule, if there is one, named above its left end."""
+    """Draw the limit of the stop rule, if there is one, named beside the panel."""
     if limit is None:
         return
     axes.axhline(100.0 * limit, color=ACCENT, linewidth=1.6, linestyle=(0, (5, 3)), zorder=2)
     axes.annotate(
-        f"stop rule {per_cent(limit)}",
-        (0.0, 100.0 * limit),
+        f"stop rule\n{per_cent(limit)}",
+        (1.0, 100.0 * limit),
         xycoords=("axes fraction", "data"),
-        xytext=(3, 3),
+        xytext=(6, 0),
         textcoords="offset points",
+        va="center",
         fontsize=8,
         color=INK,
     )

@@ -229,10 +229,11 @@ def _why(rows: pd.DataFrame, factors: Sequence[Factor]) -> str:
     return re.sub(rf"probability [0-9.]+, | at ({setting}) \S+$", "", str(first))
 
 
-def forecast_table(plan: Plan, limit: float) -> Table:
+def forecast_table(plan: Plan, limit: float, full: bool = True) -> Table:
     """Return the forecast: what so many test wells take, and what they are expected to bring.
 
-    `limit` is the probability that the set point is to reach.
+    `limit` is the probability that the set point is to reach. In short plates and the set point's
+    expected probability are left out.
     """
     forecast = plan.forecast
     table = _plain_table()
@@ -240,11 +241,13 @@ def forecast_table(plan: Plan, limit: float) -> Table:
     for wells in forecast["wells"]:
         table.add_column(f"{int(wells)}", justify="right")
     for name, label in _OUTLAY.items():
-        if name in forecast and (name != "plates" or forecast[name].max() > 1):
-            table.add_row(label, *(f"{value:.3g}" for value in forecast[name]))
+        if name in forecast and (name != "plates" or (full and forecast[name].max() > 1)):
+            digits = ".1f" if name == "days" else ".3g"
+            table.add_row(label, *(f"{value:{digits}}" for value in forecast[name]))
     table.add_row("may be called wrongly", *map(share_text, forecast["wrong_share"]))
-    table.add_row("set point passes", *map(share_text, forecast["set_point"]))
-    reaches = f"it reaches {per_cent(limit)}"
+    if full:
+        table.add_row("set point passes", *map(share_text, forecast["set_point"]))
+    reaches = f"set point reaches {per_cent(limit)}"
     table.add_row(reaches, *map(likely_text, forecast["reached"]))
     return table
 

@@ -236,7 +236,7 @@ def plan_sections(
     view: Assessment, plan: Plan, table: RenderableType, full: bool = True
 ) -> list[Section]:
     """Return the sections on the next plate, with the table of its test wells, and on its
-    forecast; its notices and bridging wells only in full.
+    forecast; its notices and bridging wells, and why there is no verdict, only in full.
     """
     told: list[RenderableType] = [plan_heading(plan)]
     if full:
@@ -246,7 +246,9 @@ def plan_sections(
         told.append(f"{_capital(usual_reason(plan.wells))}.")
     early = "No forecast before the first readings."
     limit = asked_of_set_point(view.study)
-    ahead: list[RenderableType] = [forecast_table(plan, limit), ruling_line(view.study, plan)]
+    ahead: list[RenderableType] = [forecast_table(plan, limit, full)]
+    if full or plan.ruling.word != "none":
+        ahead.append(ruling_line(view.study, plan))
     return [("Next", [*told, table]), ("Forecast", [early] if view.fresh else ahead)]
 
 
