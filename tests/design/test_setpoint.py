@@ -1,15 +1,18 @@
 """The expected probability of the set point, against readings drawn and taken in one by one."""
 
 from dataclasses import replace
+from unittest import mock
 
 import numpy as np
 import pytest
-from scipy.special import ndtr
+from scipy.special import expit, ndtr
 
 import muntin
 from muntin.design.outlook import Outlook
-from muntin.design.setpoint import Drawn, SetPoint, _around, set_points
+from muntin.design.setpoint import Drawn, SetPoint, _around, _unknown, set_points
+from muntin.surrogate.nodes import Surface
 from muntin.window.coded import code
+from tests.design.surfaces import surface
 from tests.studies import PH, RECOVERY, SALT, SHIFT, changed, read, read_shift, spread, written
 
 FACTORS = [PH, SALT]
@@ -133,3 +136,28 @@ def test_every_condition_is_expected_to_stay_what_it_is(one_node, by):
     error = then[unsure].std(axis=1) / np.sqrt(512)
     assert (np.abs(then.mean(axis=1) - now)[unsure] < 4.0 * error).all()
     assert error.max() > 0.005
+
+
+@pytest.mark.parametrize("limit", [0.3, 0.8])
+def test_what_a_well_adds_where_the_surface_is_known(limit):
+    # Without inside errors the chance that a reading meets the limit is exact.
+    posterior = surface("fraction")
+    none = np.zeros((len(posterior.weights), 0))
+    errors = replace(posterior.errors, inside=none)
+    place = posterior.thresholds(limit)
+    assert np.isfinite(place).all()
+    away = np.array([-3.0, -1.0, -1e-6, 1e-6, 0.5, 1.5, 4.0])
+    mean = place + away
+    with mock.patch.object(Surface, "errors", errors):
+        n = _unknown(posterior, limit, mean)
+        for node in range(len(posterior.weights)):
+            g = errors.ceiling[node] * expit(mean[node])
+            sd = np.sqrt(errors.noise[node] ** 2 + (errors.scale[node] ** 2).sum() * g**2)
+            exact = ndtr((g - limit) / sd)
+            np.testing.assert_allclose(ndtr(away / np.sqrt(n[node])), exact, atol=1e-6)
+    assert (n[:, -1] > 2.0 * n[:, 3]).all()
+
+
+def test_a_limit_above_the_ceiling_is_out_of_reach():
+    posterior = surface("fraction")
+    assert np.isinf(_unknown(posterior, 1.0, np.ones((len(posterior.weights), 2)))).all()

@@ -28,7 +28,7 @@ from numpy.typing import NDArray
 from muntin.design.forecast import score
 from muntin.design.moves import moves
 from muntin.design.outlook import Outlook
-from muntin.surrogate.links import slope_of
+from muntin.surrogate.links import mean_of, slope_of
 from muntin.surrogate.nodes import Surface
 from muntin.window.assessment import Assessment
 from muntin.window.coded import code, setting_sd
@@ -42,6 +42,7 @@ _PAIRS = 256
 _POINTS = 750
 _TODAY = 40
 _MOST = 1.0 - 1e-9
+_NEAR = 1e-4
 
 
 @dataclass(frozen=True)
@@ -202,7 +203,10 @@ def _around(
         by_mean = definition.judged_by == "mean"
         mean, variance = surface.moments(X)
         total = variance + surface.weights @ (mean - surface.weights @ mean) ** 2
-        more = [0.0 if by_mean else _unknown(surface, limit) for limit in (target.low, target.high)]
+        more = [
+            np.zeros_like(mean) if by_mean else _unknown(surface, limit, mean)
+            for limit in (target.low, target.high)
+        ]
         wander = surface.wander(X, setting) if setting.any() and not by_mean else 0.0
         yield Around(
             _scores(response, by_mean),
@@ -223,15 +227,23 @@ def _scores(response: Predicted, by_mean: bool) -> tuple[Array, Array]:
     )
 
 
-def _unknown(surface: Surface, limit: float) -> Array:
-    """Latent variance (S, 1) that a well on a new plate adds where its reading is at the limit."""
+def _unknown(surface: Surface, limit: float, mean: Array) -> Array:
+    """Latent variance (S, n) that a well on a new plate adds, at latent means (S, n).
+
+    It is such that were f known to be its mean, the reading would meet the limit with the chance
+    that its noise and scale errors leave: on a plateau they take more than beside the limit.
+    """
     errors = surface.errors
-    inside = (errors.inside**2).sum(axis=1)[:, None]
+    inside = (errors.inside**2).sum(axis=1)[:, None] + np.zeros_like(mean)
     if np.isinf(limit) or surface.link != "logit":
         return np.asarray(errors.noise[:, None] ** 2 + inside)
     place, ceiling = surface.thresholds(limit), errors.ceiling[:, None]
     reach = np.isfinite(place)
-    slope = np.maximum(slope_of("logit", np.where(reach, place, 0.0), ceiling), 1e-12)
-    scale = (errors.scale**2).sum(axis=1)[:, None] * limit**2
-    own = (errors.noise[:, None] ** 2 + scale) / slope**2
-    return np.where(reach, own + inside, np.inf)
+    place = np.where(reach, place, 0.0)
+    g, away = mean_of("logit", mean, ceiling), mean - place
+    near = np.abs(away) < _NEAR
+    slope = np.where(
+        near, slope_of("logit", place, ceiling), (g - limit) / np.where(near, 1.0, away)
+    )
+    own = errors.noise[:, None] ** 2 + (errors.scale**2).sum(axis=1)[:, None] * g**2
+    return np.where(reach, own / np.maximum(slope, 1e-12) ** 2 + inside, np.inf)
