@@ -1,5 +1,8 @@
 """The next plate: conditions at final wells, each with a reason."""
 
+from dataclasses import replace
+from unittest import mock
+
 import numpy as np
 import pandas as pd
 import pytest
@@ -131,6 +134,15 @@ def test_verdict_on_the_plan(view):
     assert muntin.propose(view, wells=12).ruling == Ruling(word="none", because="no rule")
 
 
+def test_no_verdict_on_a_window_that_the_data_do_not_support(view):
+    asked = changed(view, stop={"wrong_share": 0.5})
+    assert muntin.propose(asked, wells=2).ruling.because == "met"
+    unsupported = replace(asked.window(), unsupported=("The readings do not fit.",))
+    with mock.patch.object(type(asked), "window", return_value=unsupported):
+        plan = muntin.propose(asked, wells=2)
+    assert plan.ruling == Ruling(word="none", because="unsupported")
+
+
 def test_forecast_by_milligrams(view):
     # Bridging wells, loads and wells without resin are given protein; blanks are not.
     plan = muntin.propose(changed(view, protein=PROTEIN), wells=3)
@@ -166,8 +178,10 @@ def test_next_plate_follows_the_last_with_wells(tmp_path):
 def test_awaited_response_makes_the_plan_provisional(tmp_path):
     plates = [plate.assign(hcp="") for plate in EARLIER]
     responses = [RECOVERY, {**HCP, "label": "Host cell protein"}]
-    study = written(tmp_path / "study", plates, responses=responses)
+    stop = {"wrong_share": 0.5}
+    study = written(tmp_path / "study", plates, responses=responses, stop=stop)
     plan = muntin.propose(muntin.assess(study, "quadratic"), wells=3)
+    assert plan.ruling == Ruling(word="none", because="awaited")
     said = "provisional: no reading yet of Host cell protein, which the plan does not weigh"
     assert said in plan.notices
 
