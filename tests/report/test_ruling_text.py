@@ -10,7 +10,10 @@ from muntin.bench.plan import Plan
 from muntin.design.stopping import Ruling, rule_on
 from muntin.record.definition import StopRule
 from muntin.report.forecast_figure import draw_forecast
+from muntin.report.plan_text import forecast_table
 from muntin.report.ruling_text import ruling_facts, ruling_line
+from muntin.report.words import likely_text
+from tests.report.shown import shown
 from tests.studies import written
 
 FORECAST = pd.DataFrame(
@@ -153,3 +156,34 @@ def test_figure_without_protein_counts_wells_only(tmp_path):
     ).axes
     assert [t.get_text() for t in left.get_xticklabels()] == ["0", "6", "12", "24"]
     assert left.get_xlabel() == "Test wells"
+
+
+WELLS = "test wells 0 6 12 24"
+OUTLAY = ["protein, mg 0 4 5.5 8.5", "days 0.0 2.0 2.1 4.2"]
+SHARES = "may be called wrongly 5.0 % 4.0 % 3.0 % 2.0 %"
+PASSES = "set point passes 80.0 % 81.0 % 82.0 % 83.0 %"
+REACHES = "set point reaches {} % 0 % 35 % 62 % 40 %"
+
+
+@pytest.mark.parametrize(
+    ("stop", "full", "rows"),
+    [
+        ({}, True, ["plates 0 1 1 2", *OUTLAY, SHARES, PASSES, REACHES.format(90)]),
+        ({}, False, [*OUTLAY, SHARES, PASSES]),
+        ({"best_probability": 0.975}, False, [*OUTLAY, SHARES, REACHES.format(97.5)]),
+    ],
+)
+def test_table_of_the_forecast(tmp_path, stop, full, rows):
+    forecast = FORECAST.assign(plates=[0, 1, 1, 2], days=[0.0, 2.0, 2.125, 4.25])
+    forecast = forecast[["wells", "plates", "mg", "days", "wrong_share", "set_point", "reached"]]
+    plan = plan_of(Ruling(word="none", because="no rule"), forecast=forecast)
+    table = forecast_table(written(tmp_path, stop=stop), plan, full)
+    assert [" ".join(line.split()) for line in shown(table)] == [WELLS, *rows]
+
+
+@pytest.mark.parametrize(
+    ("chance", "said"),
+    [(0.0, "0 %"), (0.001, "under 1 %"), (0.5, "50 %"), (0.999, "over 99 %"), (1.0, "100 %")],
+)
+def test_chances_are_not_rounded_to_certainties(chance, said):
+    assert likely_text(chance) == said

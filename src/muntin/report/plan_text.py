@@ -14,9 +14,11 @@ from rich.console import Console, RenderableType
 from rich.table import Table
 from rich.text import Text
 
+from muntin.design.stopping import asked_of_set_point
 from muntin.record.definition import Definition
 from muntin.record.factors import Factor
 from muntin.record.faults import counted
+from muntin.record.study import Study
 from muntin.report.words import (
     amount_text,
     axis_label,
@@ -229,13 +231,12 @@ def _why(rows: pd.DataFrame, factors: Sequence[Factor]) -> str:
     return re.sub(rf"probability [0-9.]+, | at ({setting}) \S+$", "", str(first))
 
 
-def forecast_table(plan: Plan, limit: float, full: bool = True) -> Table:
+def forecast_table(study: Study, plan: Plan, full: bool = True) -> Table:
     """Return the forecast: what so many test wells take, and what they are expected to bring.
 
-    `limit` is the probability that the set point is to reach. In short plates and the set point's
-    expected probability are left out.
+    In short plates are left out, and of the set point only that is said which the stop rule asks.
     """
-    forecast = plan.forecast
+    forecast, rule = plan.forecast, study.stopping.rule
     table = _plain_table()
     table.add_column("test wells")
     for wells in forecast["wells"]:
@@ -245,10 +246,12 @@ def forecast_table(plan: Plan, limit: float, full: bool = True) -> Table:
             digits = ".1f" if name == "days" else ".3g"
             table.add_row(label, *(f"{value:{digits}}" for value in forecast[name]))
     table.add_row("may be called wrongly", *map(share_text, forecast["wrong_share"]))
-    if full:
+    asked = rule is not None and rule.best_probability is not None
+    if full or not asked:
         table.add_row("set point passes", *map(share_text, forecast["set_point"]))
-    reaches = f"set point reaches {per_cent(limit)}"
-    table.add_row(reaches, *map(likely_text, forecast["reached"]))
+    if full or asked:
+        reaches = f"set point reaches {per_cent(asked_of_set_point(study))}"
+        table.add_row(reaches, *map(likely_text, forecast["reached"]))
     return table
 
 

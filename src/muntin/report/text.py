@@ -12,7 +12,6 @@ from rich.console import Group, RenderableType
 from rich.table import Table
 from rich.text import Text
 
-from muntin.design.stopping import asked_of_set_point
 from muntin.record.definition import Definition
 from muntin.record.faults import counted
 from muntin.record.study import Study
@@ -245,8 +244,7 @@ def plan_sections(
     if view.fresh:
         told.append(f"{_capital(usual_reason(plan.wells))}.")
     early = "No forecast before the first readings."
-    limit = asked_of_set_point(view.study)
-    ahead: list[RenderableType] = [forecast_table(plan, limit, full)]
+    ahead: list[RenderableType] = [forecast_table(view.study, plan, full)]
     if full or plan.ruling.word != "none":
         ahead.append(ruling_line(view.study, plan))
     return [("Next", [*told, table]), ("Forecast", [early] if view.fresh else ahead)]
