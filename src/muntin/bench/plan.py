@@ -11,12 +11,15 @@ import pandas as pd
 
 from muntin.bench.edit import Edit, declined, edited, scored
 from muntin.bench.layout import lay_out
+from muntin.bench.outlay import Outlay
 from muntin.bench.plan_notices import plan_notices
 from muntin.bench.plan_rows import plan_rows
-from muntin.bench.protein import protein_left_mg, protein_needed_mg, wells_mg
+from muntin.bench.protein import protein_left_mg, protein_needed_mg
 from muntin.bench.room import Asked, asked_of, given_mg, protein_fault, room_faults, too_many
 from muntin.design.budget import ProteinShortError
+from muntin.design.further import prospects
 from muntin.design.selection import Selection, select
+from muntin.design.stopping import Ruling, asked_of_set_point, rule_on
 from muntin.design.terms import Terms
 from muntin.design.weighing import Aim, NoConditionLeftError
 from muntin.record.faults import Fault, Findings, StudyFaults
@@ -37,10 +40,13 @@ class Plan:
     plate: its name. wells: well, role, the factors (raw units, empty for controls), p_now (the
     judged probability today, at measured values where a stock has one) and reason, in the order of
     the wells, then the user's own columns of a plan that was kept; the index counts in the order of
-    choice. forecast: wells (test wells, 0 means no further plate), mg (protein, where the study
-    says) and wrong_share (expected share of the range still called wrongly; NaN beyond 0 before
-    anything was read). seed: of the choice and of the layout. edit: what was changed in a plan that
-    was kept, None where none was.
+    choice. forecast: wells (test wells, 0 means no further plate), plates, mg (protein), assays
+    (slots) and days where the study says what they take, wrong_share (expected share of the range
+    still called wrongly), set_point (expected probability of the set point) and reached (chance
+    that it reaches what the stop rule asks, else what the window requires); the last three are NaN
+    before anything was read, but for the share at 0. ruling: the forecast against the stop rule.
+    seed: of the choice and of the layout. edit: what was changed in a plan that was kept, None
+    where none was.
     """
 
     plate: str
@@ -50,7 +56,14 @@ class Plan:
     seed: int
     protein_mg: float | None
     notices: tuple[str, ...]
+    ruling: Ruling
     edit: Edit | None = None
+
+    @property
+    def wrong_share(self) -> float:
+        """Expected share of the range still called wrongly once the plan's own wells are read."""
+        tests = int((self.wells["role"] == "test").sum())
+        return float(self.forecast.set_index("wells")["wrong_share"][tests])
 
 
 def propose(
@@ -80,14 +93,16 @@ def propose(
     edit = None
     if asked.kept is not None and found is not None:
         edit = scored(view, asked.kept, found, placed, terms, aim)
+    forecast = _forecast(view, selection, rows)
     return Plan(
         plate=plate,
         wells=placed.drop(columns="kept"),
-        forecast=_forecast(view.study, selection, rows),
+        forecast=forecast,
         aim=aim,
         seed=seed,
         protein_mg=protein_needed_mg(view.study, placed),
         notices=plan_notices(view, selection, asked, stocks, found),
+        ruling=_ruling(view, forecast, asked.wells),
         edit=edit,
     )
 
@@ -173,17 +188,29 @@ def _placed(study: Study, rows: pd.DataFrame, seed: int) -> pd.DataFrame:
     return placed[[*first, *(name for name in placed if name not in first)]]
 
 
-def _forecast(study: Study, selection: Selection, rows: pd.DataFrame) -> pd.DataFrame:
+def _forecast(view: Assessment, selection: Selection, rows: pd.DataFrame) -> pd.DataFrame:
     """The forecast by test wells; rows: those of the plan in order of choice."""
-    counts = range(len(selection.forecast))
-    shares = list(selection.forecast)
-    if not selection.run:
+    roles = rows["role"].tolist()
+    outlay = Outlay(view.study, rows, roles.count("bridge"))
+    counts = outlay.counts(roles.count("test"))
+    table = outlay.table(counts)
+    if view.fresh:
         # Before any reading the prior alone would speak, and it has seen no plateau yet.
-        shares[1:] = [np.nan] * (len(shares) - 1)
-    table = pd.DataFrame({"wells": counts, "wrong_share": shares})
-    if study.definition.protein is not None:
-        each = wells_mg(study.definition, rows)
-        test = (rows["role"] == "test").to_numpy()
-        by_wells = float(each[~test].sum()) + np.cumsum(each[test])
-        table.insert(1, "mg", [0.0, *by_wells.tolist()])
-    return table
+        shares = [selection.forecast[0], *[np.nan] * (len(counts) - 1)]
+        return table.assign(wrong_share=shares, set_point=np.nan, reached=np.nan)
+    limit = asked_of_set_point(view.study)
+    ahead = prospects(view, view.window(), selection, counts, outlay.rooms, limit)
+    return table.assign(
+        wrong_share=[p.wrong_share for p in ahead],
+        set_point=[p.set_point for p in ahead],
+        reached=[p.reached for p in ahead],
+    )
+
+
+def _ruling(view: Assessment, forecast: pd.DataFrame, wells: int) -> Ruling:
+    ruling = rule_on(forecast, view.study.stopping.rule, wells)
+    if view.fresh or ruling.because == "no rule":
+        return ruling
+    if view.awaited:
+        return Ruling(word="none", because="awaited")
+    return Ruling(word="none", because="unsupported") if view.window().unsupported else ruling

@@ -59,7 +59,7 @@ def propose(
 ) -> Output:
     """Plan the next plate: conditions at final wells, each with a reason; write it to plans/."""
     from muntin.bench.plan import propose as plan_next
-    from muntin.record import open_study
+    from muntin.record import keep_stop_rule, open_study
     from muntin.report.facts import plan_facts, study_facts
     from muntin.report.text import propose_screen
     from muntin.window.assessment import assess
@@ -72,6 +72,7 @@ def propose(
     tell("planning the next plate")
     plan = plan_next(view, wells=wells, aim=aim.value, seed=seed, keep=keep)
     files = _written(study, plan, by, because)
+    keep_stop_rule(study)
     facts = {
         "command": "propose",
         "settings": {
@@ -82,7 +83,7 @@ def propose(
             "seed": seed,
         },
         "study": study_facts(study),
-        "plan": plan_facts(plan),
+        "plan": plan_facts(study, plan),
         "files": files,
     }
     screen = propose_screen(view, plan, Path(files["plan"]), files["remark"])

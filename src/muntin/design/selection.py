@@ -41,17 +41,25 @@ class Pick:
 class Selection:
     """The conditions chosen for a plate.
 
-    candidates: all conditions that were weighed (targets, raw units), `actual` the values that the
-    model uses; picks: the wells in order of choice, bridging and reference wells first; run:
-    conditions that were run; forecast: expected wrong share after 0, 1, ... test wells, the first
-    with nothing new read.
+    offered: the candidates; picks: the wells in order of choice, bridging and reference wells
+    first; run: conditions that were run; forecast: expected wrong share after 0, 1, ... test wells,
+    the first with nothing new read.
     """
 
-    candidates: pd.DataFrame
-    actual: pd.DataFrame
+    offered: Weighed
     picks: tuple[Pick, ...]
     run: tuple[RunCondition, ...]
     forecast: tuple[float, ...]
+
+    @property
+    def candidates(self) -> pd.DataFrame:
+        """All conditions that were weighed (targets, raw units)."""
+        return self.offered.targets
+
+    @property
+    def actual(self) -> pd.DataFrame:
+        """The same at the values that the model uses."""
+        return self.offered.actual
 
 
 def select(
@@ -76,9 +84,7 @@ def select(
     choosing.hold(tests)
     table.settle(aim, choosing.left)
     choosing.fill(definition.plan.repeats_min)
-    return Selection(
-        offered.targets, offered.actual, tuple(choosing.picks), run, tuple(choosing.forecast)
-    )
+    return Selection(offered, tuple(choosing.picks), run, tuple(choosing.forecast))
 
 
 def _held_rows(terms: Terms) -> tuple[Held, Held]:

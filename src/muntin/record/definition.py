@@ -79,6 +79,28 @@ class PlanRules(Keys):
     prepared_by: Literal["row", "column", "well"] = key(
         "well", says='how stocks reach the plate: by "row", "column" or "well"', example="well"
     )
+    days_per_plate: Number | None = key(
+        None,
+        says="from pipetting a plate to its last plate read, assays that queue not counted",
+        unit="days",
+        example=2.0,
+        gt=0,
+    )
+    assays_per_well: Number | None = key(
+        None,
+        says="assay slots (chromatography runs, wells of an assay plate) that one test or bridging "
+        "well takes",
+        unit="slots",
+        example=1.0,
+        gt=0,
+    )
+    assays_per_day: Number | None = key(
+        None,
+        says="assay slots that are free a day, where results wait for them; needs assays_per_well",
+        unit="slots",
+        example=96.0,
+        gt=0,
+    )
 
 
 class StopRule(Keys):
@@ -93,6 +115,12 @@ class StopRule(Keys):
     )
     best_probability: Number | None = key(
         None, says="stop when the set point reaches this probability", example=0.95, gt=0, lt=1
+    )
+    changed_because: Text | None = key(
+        None,
+        says="why this rule differs from the one recorded before data; without a reason the "
+        "recorded rule holds",
+        example="the next step takes what a lower recovery leaves",
     )
 
 
@@ -276,6 +304,13 @@ def _touched_faults(definition: Definition, shared: SharedError, where: str) -> 
 def _plan_faults(definition: Definition) -> Iterator[Fault]:
     if definition.protein is not None:
         yield from protein_faults(definition.protein, definition.factors)
+    if definition.plan.assays_per_day is not None and definition.plan.assays_per_well is None:
+        yield Fault(
+            file=STUDY_FILE,
+            where="plan, assays_per_day",
+            value=number(definition.plan.assays_per_day),
+            problem="needs assays_per_well beside it",
+        )
     if definition.plan.free_wells is not None:
         try:
             wells_in(definition.plan.free_wells, definition.plate)

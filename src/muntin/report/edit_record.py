@@ -44,7 +44,7 @@ def edit_text(
     inputs: Mapping[str, str],
 ) -> str:
     """Return the record of an edited plan that is to be written to `path` with this `text`."""
-    offer, share = edit.offer, float(plan.forecast["wrong_share"].iloc[-1])
+    offer, tests = edit.offer, int((plan.wells["role"] == "test").sum())
     record = EditRecord(
         plate=plan.plate,
         plan=path.relative_to(study.folder).as_posix(),
@@ -58,8 +58,8 @@ def edit_text(
         because=because,
         aim=plan.aim,
         seed=plan.seed,
-        wells=int(plan.forecast["wells"].iloc[-1]),
-        wrong_share=_rounded(share),
+        wells=tests,
+        wrong_share=_rounded(plan.wrong_share),
         offered_wells=edit.offered_wells,
         offered_wrong_share=_rounded(edit.offered_share),
         inputs=dict(inputs),
@@ -105,9 +105,9 @@ def edit_lines(plan: Plan, edit: Edit) -> list[str]:
         return [f"{edit.kept.file}: no offered plan of {plan.plate} is on record to compare with."]
     lines = [f"Against {edit.offer.file}: {said or 'nothing was changed'}."]
     if edit.offered_share is not None:
-        now, wells = plan.forecast["wrong_share"].iloc[-1], plan.forecast["wells"].iloc[-1]
+        tests = int((plan.wells["role"] == "test").sum())
         lines.append(
-            f"May be called wrongly after it: {share_text(float(now))} ({wells} test wells); as "
+            f"May be called wrongly after it: {share_text(plan.wrong_share)} ({tests} test wells); as "
             f"offered {share_text(edit.offered_share)} ({edit.offered_wells})."
         )
     return lines

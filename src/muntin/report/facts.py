@@ -11,6 +11,7 @@ import numpy as np
 import pandas as pd
 
 from muntin.record.study import Study
+from muntin.report.ruling_text import ruling_facts
 from muntin.report.words import WINDOW
 from muntin.window.assessment import Assessment
 from muntin.window.checks import Check
@@ -123,8 +124,10 @@ def _window(view: Assessment, window: Window) -> Facts:
     return facts
 
 
-def plan_facts(plan: Plan) -> Facts:
-    """Return the plan with its forecast, and what was changed in it where it was edited."""
+def plan_facts(study: Study, plan: Plan) -> Facts:
+    """Return the plan with its forecast and the verdict on it, and what was changed in it where it
+    was edited.
+    """
     return {
         "plate": plan.plate,
         "aim": plan.aim,
@@ -133,6 +136,7 @@ def plan_facts(plan: Plan) -> Facts:
         "notices": list(plan.notices),
         "wells": records(plan.wells),
         "forecast": records(plan.forecast),
+        "verdict": ruling_facts(study, plan),
         "edit": None if plan.edit is None else edit_facts(plan.edit),
     }
 

@@ -28,6 +28,7 @@ from muntin.report.plan_text import (
     plan_tables,
     usual_reason,
 )
+from muntin.report.ruling_text import ruling_line
 from muntin.report.sides_text import sides_line
 from muntin.report.words import (
     JUDGED_BY,
@@ -164,7 +165,7 @@ def _set_point(definition: Definition, window: Window) -> str:
 
 
 def _stop(view: Assessment, window: Window) -> list[str]:
-    stop = view.study.definition.stop
+    stop = view.study.stopping.rule
     if stop is None or view.awaited:
         return []
     met = []
@@ -236,7 +237,7 @@ def plan_sections(
     view: Assessment, plan: Plan, table: RenderableType, full: bool = True
 ) -> list[Section]:
     """Return the sections on the next plate, with the table of its test wells, and on its
-    forecast; its notices and bridging wells only in full.
+    forecast; its notices and bridging wells, and why there is no verdict, only in full.
     """
     told: list[RenderableType] = [plan_heading(plan)]
     if full:
@@ -245,8 +246,10 @@ def plan_sections(
     if view.fresh:
         told.append(f"{_capital(usual_reason(plan.wells))}.")
     early = "No forecast before the first readings."
-    forecast = early if view.fresh else forecast_table(plan)
-    return [("Next", [*told, table]), ("Forecast", [forecast])]
+    ahead: list[RenderableType] = [forecast_table(view.study, plan, full)]
+    if full or plan.ruling.word != "none":
+        ahead.append(ruling_line(view.study, plan))
+    return [("Next", [*told, table]), ("Forecast", [early] if view.fresh else ahead)]
 
 
 def _tables(view: Assessment, plan: Plan) -> tuple[list[RenderableType], list[RenderableType]]:
@@ -263,7 +266,9 @@ def propose_screen(view: Assessment, plan: Plan, path: Path, remark: str) -> Ren
     whole, cut = _tables(view, plan)
     sections = plan_sections(view, plan, [*whole, *cut][0])
     edited = ("Edited", [] if plan.edit is None else edit_lines(plan, plan.edit))
-    return sheet(view.study.definition.title, [edited, *sections, written])
+    told = view.study.stopping.notice
+    noted = ("Noted", [told] if told else [])
+    return sheet(view.study.definition.title, [noted, edited, *sections, written])
 
 
 def _plan_lines(path: Path, remark: str) -> list[str]:
