@@ -112,8 +112,14 @@ def _counting(tell: Tell, store: Path) -> Iterator[Callable[[int, int], None]]:
     interrupt says what was kept and ends with exit code 1.
     """
     from rich.console import Console
-    from rich.progress import BarColumn, MofNCompleteColumn, Progress, TextColumn
-    from rich.progress import TimeElapsedColumn, TimeRemainingColumn
+    from rich.progress import (
+        BarColumn,
+        MofNCompleteColumn,
+        Progress,
+        TextColumn,
+        TimeElapsedColumn,
+        TimeRemainingColumn,
+    )
 
     columns = (
         TextColumn("playing series"),
