@@ -4,11 +4,13 @@ from __future__ import annotations
 
 from pathlib import Path
 
+import pytest
+
 from muntin.design.selection import select
 from muntin.rehearsal.designs import controls, designs_for, room, wells_of
 from muntin.window.assessment import assess
 from tests.rehearsal.played import small
-from tests.studies import RESIN, SALT, read, spread, written
+from tests.studies import PH, RESIN, SALT, read, spread, written
 
 
 def test_rivals_have_as_many_test_wells_and_the_same_bridging_wells(tmp_path: Path) -> None:
@@ -67,15 +69,11 @@ def test_a_factorial_too_large_is_left_out_and_said(tmp_path: Path) -> None:
 
 def test_spread_plates_do_not_look_at_the_readings(tmp_path: Path) -> None:
     first, second = (
-        assess(written(tmp_path / name, [read(spread(factors, 10), seed)]), "quadratic")
-        for name, seed, factors in (("a", 1, _factors()), ("b", 2, _factors()))
+        assess(written(tmp_path / name, [read(spread([PH, SALT], 10), seed)]), "quadratic")
+        for name, seed in (("a", 1), ("b", 2))
     )
     chosen = [wells_of("full factorial", view, 6, "edge", 1) for view in (first, second)]
     tests = [plate[plate["role"] == "test"].to_numpy().tolist() for plate in chosen]
     assert tests[0] == tests[1]
-
-
-def _factors() -> list[dict]:
-    from tests.studies import PH
-
-    return [dict(PH), dict(SALT)]
+    with pytest.raises(ValueError, match="no full factorial has 1 wells or fewer"):
+        wells_of("full factorial", first, 1, "edge", 1)

@@ -39,8 +39,8 @@ def test_a_salt_in_mol_is_taken_in_mmol() -> None:
         {"factors": [PH, TIME]},
         {"factors": [PH, SALT, TIME]},
         {"factors": [SALT, RESIN]},
-        {"factors": [{**PH, "name": "phase"}, SALT]},
-        {"factors": [{**PH, "label": "", "name": "acid"}, SALT]},
+        {"factors": [{**PH, "name": "phase", "label": "Phase"}, SALT]},
+        {"factors": [{**PH, "unit": "mM"}, SALT]},
         {"factors": [PH, {**SALT, "unit": "g/L"}]},
         {"factors": [PH, {**SALT, "high": 5000}]},
         {"responses": [HCP]},
@@ -50,10 +50,7 @@ def test_a_salt_in_mol_is_taken_in_mmol() -> None:
     ],
 )
 def test_other_studies_have_no_lab(given: dict[str, Any]) -> None:
-    factors = given.get("factors", [PH, SALT])
-    if factors[0].get("name") in ("phase", "acid"):
-        factors = [{k: v for k, v in factors[0].items() if k != "label"}, *factors[1:]]
-    assert lab_factors(definition(**{**given, "factors": factors})) is None
+    assert lab_factors(definition(**given)) is None
 
 
 def test_errors_of_setting_are_the_studys_own() -> None:

@@ -21,7 +21,7 @@ from muntin.rehearsal.series import (
 from muntin.window.assessment import assess
 from muntin.window.grid import judged_grid
 from tests.rehearsal.played import conditions, small
-from tests.studies import HCP, RECOVERY, logit_of
+from tests.studies import HCP, RECOVERY, logit_of, written
 
 
 def test_wrong_calls_are_counted_against_the_truth() -> None:
@@ -78,7 +78,7 @@ def test_a_series_counts_wells_milligrams_and_wrong_calls(tmp_path: Path) -> Non
     wrong = np.mean(called != (grid["salt"].to_numpy() >= 300.0))
     assert 0.0 < wrong < 1.0
     assert {s[0].wrong for s in played.designs.values()} == {pytest.approx(wrong)}
-    assert [s.best for s in own][0] == 0.5
+    assert own[0].best == 0.5
     assert all(0.0 < s.best < 1.0 for s in own)
 
 
@@ -133,8 +133,6 @@ def test_a_first_plate_may_be_added_to_a_study_without_any(tmp_path: Path) -> No
 def test_a_lot_that_plates_name_is_new_with_a_plate(tmp_path: Path) -> None:
     shared = [{"by": ["feed"], "acts": "scale"}]
     plate = small(tmp_path / "plain").wells[["ph", "salt", "recovery"]].assign(feed="F-1")
-    from tests.studies import written
-
     study = written(tmp_path / "lots", [plate], shared_errors=shared)
     more = with_plate(
         study,

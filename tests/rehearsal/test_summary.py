@@ -64,6 +64,7 @@ def test_what_it_takes_to_reach_the_rule() -> None:
     assert (own["series"], own["reached"]) == (4, 3)
     assert (own["tests_half"], own["plates_half"], own["wells_half"]) == (12.0, 1.0, 120.0)
     assert own["tests_most"] == own["plates_most"] == own["wells_most"] == math.inf
+    assert own["wrong"] == pytest.approx((0.04 + 0.04 + 0.08) / 3)
     assert math.isnan(own["mg_half"])
     assert math.isnan(own["mg_most"])
     assert (rival["reached"], rival["tests_half"]) == (1, math.inf)

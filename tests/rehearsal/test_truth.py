@@ -38,7 +38,6 @@ def test_drawn_surfaces_have_the_mean_and_the_variance_of_the_posterior(
     centre = cloud.weights @ mean
     total = cloud.weights @ (variance + (mean - centre) ** 2)
     error = np.sqrt(total / DRAWS)
-    assert np.abs(f.mean(axis=0) - centre) == pytest.approx(0, abs=1), "no draw is afar"
     assert (np.abs(f.mean(axis=0) - centre) < 4.0 * error).all()
     # The sampling sd of a variance from its own fourth moment.
     away = (f - f.mean(axis=0)) ** 2

@@ -45,8 +45,9 @@ def to_stop(table: pd.DataFrame, stop: StopRule) -> pd.DataFrame:
     """What it takes to reach the stop rule, a row a design, in their order.
 
     Columns: design; planned plates and tests; series; reached, how many met the rule after some
-    plate; for tests, plates, wells and mg spent by then, _half and _most: what half of all series
-    and nine in ten stay within, infinite where fewer reach the rule, NaN where not known.
+    plate; wrong, mean share of the range that they truly call wrongly then, NaN where none did; for
+    tests, plates, wells and mg spent by then, _half and _most: what half of all series and nine in
+    ten stay within, infinite where fewer reach the rule, NaN where not known.
     """
     met = table[holds(table, stop)]
     first = met.sort_values("plate", kind="stable").groupby(["design", "series"], sort=False)
@@ -61,6 +62,7 @@ def to_stop(table: pd.DataFrame, stop: StopRule) -> pd.DataFrame:
             "planned_tests": int(mine["tests"].max()),
             "series": count,
             "reached": len(reached),
+            "wrong": float(reached["wrong"].mean()),
         }
         for what in _SPENT:
             values = reached[what].to_numpy(dtype=float)

@@ -108,14 +108,15 @@ def _to_stop(told: Rehearsal) -> Table:
     shown = {
         k: v for k, v in columns.items() if k != "mg" or told.to_stop[f"{k}_half"].notna().all()
     }
-    for heading in shown.values():
+    for heading in (*shown.values(), "truly wrong then"):
         table.add_column(heading, justify="right")
     for _, row in told.to_stop.iterrows():
         plates = counted(int(row["planned_plates"]), "plate")
         name = f"{row['design']} ({row['planned_tests']} on {plates})"
         reach = f"{row['reached']} of {row['series']}"
         spent = [f"{_number(row[f'{k}_half'])} / {_number(row[f'{k}_most'])}" for k in shown]
-        table.add_row(*map(Text, (name, reach, *spent)))
+        wrong = share_text(row["wrong"]) if row["reached"] else "-"
+        table.add_row(*map(Text, (name, reach, *spent, wrong)))
     return table
 
 
