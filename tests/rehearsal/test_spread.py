@@ -46,7 +46,7 @@ def test_wells_that_no_factorial_fills_repeat_its_middle() -> None:
     frame = full_factorial(definition(FINE_PH, FINE_SALT), 11, NONE)
     assert frame is not None
     assert counts(frame) == {"ph": 3, "salt": 3}
-    assert frame.tail(3).to_numpy().tolist() == [[6.0, 250.0]] * 3
+    assert frame.tail(2).to_numpy().tolist() == [[6.0, 250.0]] * 2
 
 
 def test_a_factorial_leaves_room_for_the_bottles_of_bridging_wells() -> None:

@@ -148,12 +148,17 @@ def test_positive_readings_have_relative_noise_and_per_cent_are_per_cent() -> No
 
 def test_every_target_must_be_met() -> None:
     two = Definition.model_validate(
-        tables(responses=[{**RECOVERY, "at_least": 0.5}, {**RECOVERY, "name": "y", "at_most": 0.7}])
+        tables(
+            responses=[
+                {**RECOVERY, "at_least": 0.5},
+                {**RECOVERY, "name": "purity", "at_most": 0.7},
+            ]
+        )
     )
     low = Known("logit", 0.0, [], [])
-    truth = SurfaceTruth(two, {"recovery": low, "y": low})  # type: ignore[dict-item]
+    truth = SurfaceTruth(two, {"recovery": low, "purity": low})  # type: ignore[dict-item]
     frame = pd.DataFrame({"ph": [5.0, 6.5, 7.5], "salt": 100.0})
-    # 0.9 expit(2 x) is 0.19, 0.59 and 0.79; y asks for 0.8 at least, as well.
+    # 0.9 expit(2 x) is 0.19, 0.59 and 0.79; purity asks for 0.8 at least, as well.
     assert truth.passes(frame).tolist() == [False, False, False]
     alone = SurfaceTruth(two, {"recovery": low})  # type: ignore[dict-item]
     assert alone.passes(frame).tolist() == [False, True, True]

@@ -2,16 +2,35 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
+
+import numpy as np
+from numpy.typing import NDArray
+
 from muntin.record.study import Study
-from muntin.surrogate.fit import SURROGATES, Stack, brief_stack
+from muntin.surrogate.fit import SURROGATES, Stack, brief_stack, starts_of
 from muntin.window.assessment import Assessment, Surrogate
 from muntin.window.coded import coding_of, priors_for, readings_of
 from muntin.window.residuals import residual_correlations
 
+Starts = Mapping[str, Mapping[str, NDArray[np.float64]]]
 
-def assess_briefly(study: Study, surrogate: Surrogate, seed: int, nodes: int) -> Assessment:
+
+def starts_from(view: Assessment) -> Starts:
+    """Where to begin the search for fits to more readings, by response and surrogate."""
+    return {name: starts_of(stack) for name, stack in view.stacks.items()}
+
+
+def assess_briefly(
+    study: Study,
+    surrogate: Surrogate,
+    seed: int,
+    nodes: int,
+    starts: Starts,
+) -> Assessment:
     """The judged responses that have readings, on so many hyperparameter nodes a round (a power of
-    two) and without a cloud of draws; else as `assess`.
+    two) and without a cloud of draws; else as `assess`. starts: by response where the search
+    begins, as an assessment of fewer readings gives them.
     """
     names = SURROGATES if surrogate == "stacked" else (surrogate,)
     columns = coding_of(study.definition).columns
@@ -21,7 +40,14 @@ def assess_briefly(study: Study, surrogate: Surrogate, seed: int, nodes: int) ->
         if len(readings):
             priors = priors_for(study, response)
             stacks[response.name] = brief_stack(
-                names, readings, response.kind, columns, priors, seed, nodes
+                names,
+                readings,
+                response.kind,
+                columns,
+                priors,
+                seed,
+                nodes,
+                starts.get(response.name, {}),
             )
     return Assessment(
         study=study,

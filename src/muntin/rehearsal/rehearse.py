@@ -19,6 +19,7 @@ from muntin.record.study import Study
 from muntin.rehearsal.designs import OWN, check_sizes, designs_for
 from muntin.rehearsal.lab_truth import LabFactors, LabRecipe, lab_factors
 from muntin.rehearsal.played import Series
+from muntin.rehearsal.refit import starts_from
 from muntin.rehearsal.series import Setup, best_probability
 from muntin.rehearsal.store import Store
 from muntin.rehearsal.summary import after_plates, against, table_of, to_stop
@@ -32,7 +33,7 @@ PLATES, SERIES = (12, 12), 24
 # Where a study fixes no rule, its manual's example stands in.
 ASSUMED = StopRule(wrong_share=0.02)
 # Hyperparameter nodes of a round of each refit, a power of two.
-NODES = 32
+NODES = 64
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -175,6 +176,7 @@ def _setup(view: Assessment, settings: Settings) -> tuple[Setup, list[str]]:
         with_best=with_best,
         p_now=view.judged(judged_grid(study.definition)[0], "mean"),
         best_now=best_probability(view) if with_best else np.nan,
+        starts=starts_from(view),
     )
     return setup, [*notices, *_awaited(view)]
 

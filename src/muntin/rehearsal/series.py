@@ -17,7 +17,7 @@ from muntin.record.notes import Plate
 from muntin.record.study import Study
 from muntin.rehearsal.designs import Design, controls
 from muntin.rehearsal.played import Series, Standing
-from muntin.rehearsal.refit import assess_briefly
+from muntin.rehearsal.refit import Starts, assess_briefly, starts_from
 from muntin.rehearsal.truth import Recipe, Truth
 from muntin.window.assessment import Assessment, Surrogate
 from muntin.window.grid import judged_grid
@@ -33,7 +33,8 @@ class Setup:
     """What all series of a rehearsal share.
 
     study: as it stands. p_now (P,): p_mean at the judged conditions today; best_now: today's best
-    judged probability, NaN where with_best is not set. nodes: hyperparameter nodes of a refit.
+    judged probability, NaN where with_best is not set. nodes: hyperparameter nodes of a refit;
+    starts: where the first refits begin to search.
     """
 
     study: Study
@@ -45,6 +46,7 @@ class Setup:
     with_best: bool
     p_now: Array
     best_now: float
+    starts: Starts
 
 
 def play(setup: Setup, recipe: Recipe) -> Series:
@@ -100,7 +102,8 @@ def _played(
         readings = truth.read(wells[list(study.definition.factor_names)], name, rng)
         study = with_plate(study, name, wells, readings)
         roles += [*wells["role"], *controls(study)]
-        view = assess_briefly(study, setup.surrogate, setup.seed, setup.nodes)
+        starts = setup.starts if view is None else starts_from(view)
+        view = assess_briefly(study, setup.surrogate, setup.seed, setup.nodes, starts)
         best = best_probability(view) if setup.with_best else np.nan
         standings.append(_standing(setup, roles, view.judged(grid, "mean"), best, passes))
     return tuple(standings)

@@ -18,6 +18,8 @@ from muntin.window.grid import judged_grid
 
 Array = NDArray[np.float64]
 _RANGE = 600
+# How often each spread well is chosen anew.
+_SWEEPS = 3
 # What a factorial may lose of the wells to be even, for each step of the largest over the least
 # number of levels.
 _UNEVEN = 0.1
@@ -46,30 +48,48 @@ def bridging(view: Assessment) -> pd.DataFrame:
 
 
 def space_filling(view: Assessment, wells: int, beside: pd.DataFrame) -> pd.DataFrame:
-    """So many conditions (raw units), each where it most shortens the way from anywhere in the
-    range to the nearest well, those run and those `beside` them on the plate included.
+    """So many conditions (raw units) that shorten the way from anywhere in the range to the nearest
+    well, those run and those `beside` them on the plate included.
+
+    Each is the best one beside those chosen before, then each in turn is chosen anew.
     """
     definition = view.study.definition
     run = () if view.fresh else run_conditions(view.study)
     frame = candidate_frame(definition, run)
-    levels = Levels(definition, pd.concat([frame, beside], ignore_index=True))
-    for row in range(len(beside)):
-        levels.use(len(frame) + row)
-    everywhere = code(definition, judged_grid(definition, _RANGE, planned=True)[0])
-    away = _squares(everywhere, code(definition, frame))
-    nearest = np.full(len(everywhere), float(away.max(initial=1.0)))
     ran = pd.DataFrame([r.values for r in run], columns=list(definition.factor_names))
     known = pd.concat([part for part in (ran, beside) if len(part)] or [ran], ignore_index=True)
-    if len(known):
-        nearest = np.minimum(nearest, _squares(everywhere, code(definition, known)).min(axis=1))
+    filling = _Filling(definition, frame, beside, known)
     picked: list[int] = []
     for _ in range(wells):
-        left = np.minimum(away, nearest[:, None]).mean(axis=0)
-        chosen = int(np.argmin(np.where(levels.open()[: len(frame)], left, np.inf)))
-        picked.append(chosen)
-        levels.use(chosen)
-        nearest = np.minimum(nearest, away[:, chosen])
+        picked.append(filling.best(picked))
+    for place in [*range(wells)] * _SWEEPS:
+        picked[place] = filling.best(picked[:place] + picked[place + 1 :])
     return frame.iloc[picked].reset_index(drop=True)
+
+
+class _Filling:
+    """The ways from anywhere in the range to candidates, squared, and to the wells known."""
+
+    def __init__(
+        self, definition: Definition, frame: pd.DataFrame, beside: pd.DataFrame, known: pd.DataFrame
+    ) -> None:
+        self.definition, self.count = definition, len(frame)
+        self.every = pd.concat([frame, beside], ignore_index=True) if len(beside) else frame
+        anywhere = code(definition, judged_grid(definition, _RANGE, planned=True)[0])
+        self.away = _squares(anywhere, code(definition, frame))
+        self.nearest = np.full(len(anywhere), float(self.away.max(initial=1.0)))
+        if len(known):
+            ways = _squares(anywhere, code(definition, known)).min(axis=1)
+            self.nearest = np.minimum(self.nearest, ways)
+
+    def best(self, others: list[int]) -> int:
+        """The candidate that shortens the way most beside others, on levels that are open."""
+        levels = Levels(self.definition, self.every)
+        for candidate in [*range(self.count, len(self.every)), *others]:
+            levels.use(candidate)
+        nearest = np.minimum(self.nearest, self.away[:, others].min(axis=1, initial=np.inf))
+        left = np.minimum(self.away, nearest[:, None]).mean(axis=0)
+        return int(np.argmin(np.where(levels.open()[: self.count], left, np.inf)))
 
 
 def _squares(X: Array, Z: Array) -> Array:

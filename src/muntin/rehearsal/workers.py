@@ -53,7 +53,7 @@ def on_cluster(setup: Setup, recipes: Sequence[Recipe], address: str) -> Iterato
         shared = client.scatter(setup, broadcast=True)
         futures = [client.submit(play, shared, recipe, pure=False) for recipe in recipes]
         try:
-            for future in as_completed(futures):
+            for future in as_completed(futures, loop=client.loop):
                 yield future.result()
         finally:
             client.cancel(futures)

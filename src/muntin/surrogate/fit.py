@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -110,16 +110,24 @@ def brief_stack(
     priors: Priors,
     seed: int,
     nodes: int,
+    starts: Mapping[str, Array],
 ) -> Stack:
     """The stack by the fast engine in brief: so many hyperparameter nodes a round (a power of two),
-    no reading refitted, no cloud of draws.
+    no reading refitted, no cloud of draws. starts: where to search the mode, by surrogate, as
+    `starts_of` a fit to nearly the same readings gives them; empty where there is none.
     """
+    models = [_model(n, readings, kind, columns, priors) for n in names]
     fits = tuple(
-        _fitted(n, _model(n, readings, kind, columns, priors), link_of(kind), seed, nodes=nodes)
-        for n in names
+        _fitted(name, model, link_of(kind), seed, starts.get(name), nodes)
+        for name, model in zip(names, models, strict=True)
     )
     shares = stacking_shares(np.stack([fit.loo.log_density for fit in fits]))
     return Stack(fits, shares, mixture([fit.surface for fit in fits], shares))
+
+
+def starts_of(stack: Stack) -> dict[str, Array]:
+    """Where (H,) to search the mode of fits to a few readings more or less, by surrogate."""
+    return {fit.name: start_of(fit.posterior) for fit in stack.fits}
 
 
 def _model(name: str, readings: Readings, kind: Kind, columns: Columns, priors: Priors) -> Model:
