@@ -52,7 +52,7 @@ def test_one_plate_is_its_own_one_shot(tmp_path: Path) -> None:
 
 def test_rivals_that_fit_no_plate_are_left_out_and_said(tmp_path: Path) -> None:
     study = small(tmp_path, plan={"free_wells": "A1:A12"})
-    assert controls(study) == ("blank", "load", "no_resin")
+    assert controls(study) == ("blank", "load", "load")
     assert room(study, 4) == 5
     designs, notices = designs_for(assess(study, "quadratic"), (3, 3), "edge", 1)
     assert [d.name for d in designs] == ["plate by plate", "space filling"]

@@ -93,7 +93,7 @@ def test_before_any_reading_the_virtual_lab_is_played_or_the_prior(tmp_path: Pat
     told = quick(fresh, (6,), series=2)
     assert told.settings.truths == "lab"
     assert (told.table["wrong"] > 0).any()
-    prior = quick(fresh, (6,), series=2, truths="prior")
+    prior = quick(fresh, (6,), series=1, truths="prior")
     assert prior.settings.truths == "prior"
     other = written(tmp_path / "other", factors=[TIME, RESIN])
     assert quick(other, (6,), series=1).settings.truths == "prior"

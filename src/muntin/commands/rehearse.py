@@ -54,7 +54,7 @@ def rehearse(
     seed: int,
     tell: Tell,
     plates: Plates = "12,12",
-    series: Series = 24,
+    series: Series = 20,
     aim: AimOption = Aim.edge,
     surrogate: SurrogateOption = Surrogate.stacked,
     truths: TruthsOption = None,

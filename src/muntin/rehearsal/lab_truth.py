@@ -13,6 +13,7 @@ from muntin.lab import ErrorSizes, Kind, VirtualLab, draw_lab
 from muntin.record.definition import STUDY_FILE, Definition
 from muntin.record.factors import Factor
 from muntin.record.faults import Fault, StudyFaults
+from muntin.window.assessment import target_of
 from muntin.window.grid import judged_grid
 
 Array = NDArray[np.float64]
@@ -90,8 +91,8 @@ class LabTruth:
 
     def passes(self, frame: pd.DataFrame) -> NDArray[np.bool_]:
         """Whether the true recovery reaches the target (n,)."""
-        low = self.definition.judged[0].target[0]
-        return np.asarray(self.lab.recovery(self.factors.conditions(frame)) >= low)
+        target = target_of(self.definition.judged[0])
+        return np.asarray(self.lab.recovery(self.factors.conditions(frame)) >= target.low)
 
     def read(self, frame: pd.DataFrame, plate: str, rng: np.random.Generator) -> dict[str, Array]:
         """Recovery (n,) that a bench would find in the wells of a new plate."""
@@ -122,7 +123,7 @@ class LabRecipe:
         Raises StudyFaults where none of 25 does.
         """
         rng = np.random.default_rng((self.seed, self.number))
-        target = self.definition.judged[0].target[0] or 0.0
+        target = target_of(self.definition.judged[0]).low
         grid = judged_grid(self.definition)[0]
         room = max(min(_ROOM, 0.5 * (_PLATEAU - target)), 0.0)
         for _ in range(_TRIES):

@@ -29,7 +29,7 @@ from muntin.window.assessment import Assessment, Surrogate, assess
 from muntin.window.grid import judged_grid
 
 Origin = Literal["posterior", "lab", "prior"]
-PLATES, SERIES = (12, 12), 24
+PLATES, SERIES = (12, 12), 20
 # Where a study fixes no rule, its manual's example stands in.
 ASSUMED = StopRule(wrong_share=0.02)
 # Hyperparameter nodes of a round of each refit, a power of two.

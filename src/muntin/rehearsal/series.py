@@ -59,7 +59,7 @@ def play(setup: Setup, recipe: Recipe) -> Series:
         truth = recipe.draw()
         grid = judged_grid(setup.study.definition)[0]
         passes = truth.passes(grid)
-        played = {
+        played: dict[str, tuple[Standing, ...]] = {
             design.name: _played(setup, design, truth, recipe.number, grid, passes)
             for design in setup.designs
         }

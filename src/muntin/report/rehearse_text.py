@@ -12,7 +12,6 @@ from rich.table import Table
 from rich.text import Text
 
 from muntin.record.definition import StopRule
-from muntin.record.faults import counted
 from muntin.report.facts import Facts, records, study_facts
 from muntin.report.rehearse_verdict import verdict
 from muntin.report.text import few, read_lines, sheet
@@ -22,6 +21,8 @@ if TYPE_CHECKING:
     from muntin.rehearsal.rehearse import Rehearsal
 
 _GAP = 3
+_WITHIN = "What half of the series / nine in ten need at most; - where too few reach the rule:"
+_SHARES = "Share of the range called wrongly after test wells: mean (nine in ten at most):"
 _TRUTHS = {
     "posterior": "surfaces drawn from what the readings leave open",
     "lab": "labs drawn from published mechanism: elution, mixed mode and island windows in turn",
@@ -61,9 +62,8 @@ def rehearse_screen(told: Rehearsal) -> RenderableType:
             ("Read", read_lines(told.study)),
             ("Played", _played(told)),
             ("Noted", few(told.notices, 4, "see --json")),
-            ("Stop rule", [_rule(told), _to_stop(told)]),
-            ("Wrongly called", ["Share of the range, mean (nine in ten series stay within):"]),
-            ("", [_after(told.after)]),
+            ("Stop rule", [_rule(told), _WITHIN, _to_stop(told)]),
+            ("Wrong calls", [_SHARES, _after(told.after)]),
             ("Verdict", verdict(told)),
             ("Caution", [_CAUTION[told.settings.truths]]),
         ],
@@ -103,18 +103,14 @@ def _rule(told: Rehearsal) -> str:
 
 def _to_stop(told: Rehearsal) -> Table:
     """What each design takes: half of the series stay within / nine in ten do."""
-    table = _plain("half of the series within / nine in ten", "reach it")
-    columns = {"tests": "test wells", "plates": "plates", "mg": "protein, mg"}
-    shown = {
-        k: v for k, v in columns.items() if k != "mg" or told.to_stop[f"{k}_half"].notna().all()
-    }
-    for heading in (*shown.values(), "truly wrong then"):
-        table.add_column(heading, justify="right")
+    known = told.to_stop["mg_half"].notna().all()
+    columns = {"tests": "test wells", "plates": "plates"} | ({"mg": "mg"} if known else {})
+    table = _plain("", "reach it", *columns.values(), "truly wrong then")
     for _, row in told.to_stop.iterrows():
-        plates = counted(int(row["planned_plates"]), "plate")
-        name = f"{row['design']} ({row['planned_tests']} on {plates})"
+        fewer = row["planned_plates"] < len(told.settings.plates)
+        name = f"{row['design']}, one plate" if fewer else str(row["design"])
         reach = f"{row['reached']} of {row['series']}"
-        spent = [f"{_number(row[f'{k}_half'])} / {_number(row[f'{k}_most'])}" for k in shown]
+        spent = [f"{_number(row[f'{k}_half'])} / {_number(row[f'{k}_most'])}" for k in columns]
         wrong = share_text(row["wrong"]) if row["reached"] else "-"
         table.add_row(*map(Text, (name, reach, *spent, wrong)))
     return table
@@ -127,7 +123,7 @@ def _number(value: Any) -> str:
 def _after(after: pd.DataFrame) -> Table:
     """A row a design, a column a number of test wells."""
     tests = sorted(set(after["tests"]))
-    table = _plain("after so many new test wells", *(f"{n}" for n in tests))
+    table = _plain("", *("now" if n == 0 else f"{n} wells" for n in tests))
     for name in after["design"].unique():
         mine = after[after["design"] == name].set_index("tests")
         cells = [
@@ -142,7 +138,7 @@ def _after(after: pd.DataFrame) -> Table:
 
 def _plain(first: str, *others: str) -> Table:
     table = Table(box=None, pad_edge=False, padding=(0, _GAP, 0, 0), header_style="dim")
-    table.add_column(first)
+    table.add_column(first, no_wrap=True)
     for heading in others:
         table.add_column(heading, justify="right")
     return table
