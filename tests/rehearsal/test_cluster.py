@@ -8,7 +8,7 @@ from pathlib import Path
 
 import pytest
 
-from tests.rehearsal.played import quick, same, small
+from tests.rehearsal.played import plain, quick, same
 
 distributed = pytest.importorskip("distributed")
 
@@ -25,14 +25,14 @@ def address() -> Iterator[str]:
 
 
 def test_a_cluster_changes_nothing(address: str, tmp_path: Path) -> None:
-    study = small(tmp_path / "study")
+    study = plain(tmp_path / "study")
     told = quick(study, cluster=address, store=tmp_path / "kept")
     same(told.table, quick(study).table)
     assert len([*(tmp_path / "kept").rglob("series-*.json")]) == 3
 
 
 def test_a_cluster_takes_up_what_was_played_elsewhere(address: str, tmp_path: Path) -> None:
-    study = small(tmp_path / "study")
+    study = plain(tmp_path / "study")
     quick(study, series=1, store=tmp_path / "kept")
     told = quick(study, cluster=address, store=tmp_path / "kept")
     assert told.taken_up == 1

@@ -9,13 +9,14 @@ import pytest
 
 from muntin.record import Study
 from muntin.record.faults import StudyFaults
-from tests.rehearsal.played import quick, same, small
-from tests.studies import HCP, RECOVERY, RESIN, SALT, TIME, read, spread, written
+from muntin.rehearsal.rehearse import origin_of
+from tests.rehearsal.played import REAL, plain, quick, same, small
+from tests.studies import HCP, RESIN, SALT, TIME, read, spread, written
 
 
 @pytest.fixture(scope="module")
 def study(tmp_path_factory: pytest.TempPathFactory) -> Study:
-    return small(tmp_path_factory.mktemp("study"))
+    return plain(tmp_path_factory.mktemp("study"))
 
 
 def test_same_seed_same_numbers_and_another_seed_others(study: Study) -> None:
@@ -83,56 +84,64 @@ def test_another_setting_has_series_of_its_own(study: Study, tmp_path: Path) -> 
 
 
 def test_nothing_is_written_without_a_store(tmp_path: Path) -> None:
-    own = small(tmp_path)
+    own = plain(tmp_path)
     quick(own, series=1)
     assert not (tmp_path / "rehearsals").exists()
 
 
-def test_before_any_reading_the_virtual_lab_is_played_or_the_prior(tmp_path: Path) -> None:
-    fresh = small(tmp_path / "lab", wells=0)
-    told = quick(fresh, (6,), series=2)
+def test_before_any_reading_the_virtual_lab_is_played(tmp_path: Path) -> None:
+    told = quick(small(tmp_path, wells=0), (6,), series=1)
     assert told.settings.truths == "lab"
-    assert (told.table["wrong"] > 0).any()
-    prior = quick(fresh, (6,), series=1, truths="prior")
-    assert prior.settings.truths == "prior"
-    other = written(tmp_path / "other", factors=[TIME, RESIN])
-    assert quick(other, (6,), series=1).settings.truths == "prior"
+    assert told.table["wrong"].between(0.0, 1.0).all()
+    assert (told.table["wrong"] > 0.0).any()
+    assert told.notices == ()
 
 
-def test_readings_settle_where_truths_come_from(study: Study, tmp_path: Path) -> None:
-    assert quick(study, series=1).settings.truths == "posterior"
+def test_before_any_reading_the_prior_is_played_where_there_is_no_lab(tmp_path: Path) -> None:
+    told = quick(plain(tmp_path, wells=0), (5, 2), series=2)
+    assert told.settings.truths == "prior"
+    now, last = (told.table[told.table["plate"] == plate]["wrong"].mean() for plate in (0, 1))
+    assert last < now
+    assert told.notices == ()
+
+
+def test_where_truths_come_from(study: Study, tmp_path: Path) -> None:
+    fresh, other = small(tmp_path / "a", wells=0), written(tmp_path / "b", factors=[TIME, SALT])
+    assert origin_of(study, None) == origin_of(study, "posterior") == "posterior"
+    assert origin_of(fresh, None) == origin_of(fresh, "lab") == "lab"
+    assert origin_of(fresh, "prior") == origin_of(other, None) == "prior"
     with pytest.raises(StudyFaults, match="truths: lab cannot be: the study has readings"):
-        quick(study, truths="lab")
+        origin_of(study, "lab")
     with pytest.raises(StudyFaults, match="truths: posterior cannot be: nothing has been read"):
-        quick(small(tmp_path / "a", wells=0), truths="posterior")
+        origin_of(fresh, "posterior")
     with pytest.raises(StudyFaults, match="truths: lab cannot be: the virtual lab knows"):
-        quick(written(tmp_path / "b", factors=[TIME, SALT]), truths="lab")
+        origin_of(other, "lab")
 
 
 def test_a_study_without_a_rule_is_held_against_an_example(study: Study, tmp_path: Path) -> None:
     told = quick(study, series=1)
     assert told.assumed
     assert told.stop.wrong_share == 0.02
-    own = quick(small(tmp_path, stop={"wrong_share": 0.5}), series=1)
+    own = quick(plain(tmp_path, stop={"wrong_share": 0.5}), series=1)
     assert not own.assumed
     assert own.to_stop["tests_most"].tolist() == [0.0] * 4
 
 
 def test_the_set_point_is_judged_only_where_the_rule_asks(study: Study, tmp_path: Path) -> None:
     assert quick(study, series=1).table["best"].isna().all()
-    told = quick(small(tmp_path, stop={"best_probability": 0.2}), series=1)
+    told = quick(plain(tmp_path, stop={"best_probability": 0.2}), series=1)
     assert told.table["best"].between(0, 1).all()
     assert told.to_stop["reached"].tolist() == [1] * 4
 
 
 def test_an_awaited_response_is_left_out_and_said(tmp_path: Path) -> None:
-    told = quick(small(tmp_path, responses=[RECOVERY, HCP]), series=1)
+    told = quick(small(tmp_path, responses=[REAL, HCP]), series=1)
     assert told.notices == ("provisional: no reading yet of hcp, which is not rehearsed",)
 
 
 def test_protein_that_does_not_suffice_is_said(tmp_path: Path) -> None:
     protein = {"available_mg": 10.0, "per_well_mg": 0.5}
-    told = quick(small(tmp_path, protein=protein), series=1)
+    told = quick(plain(tmp_path, protein=protein), series=1)
     # Ten wells were run; two plates need 5 test, 8 bridging wells and 12 controls with protein.
     assert told.notices == (
         "these plates need 12.5 mg of protein; 5 mg are left beyond the reserve",

@@ -102,7 +102,7 @@ def rehearse(
     Raises StudyFaults where plates do not fit, truths cannot be drawn, or the cluster does not
     answer; ValueError for numbers and names that are none.
     """
-    origin = _origin(study, truths)
+    origin = origin_of(study, truths)
     if aim not in AIMS:
         raise ValueError(f"aim {aim!r} is none of {', '.join(AIMS)}")
     if series < 1 or (workers is not None and workers < 1):
@@ -136,7 +136,7 @@ def rehearse(
     return _told(study, settings, done, len(found), tuple(notices))
 
 
-def _origin(study: Study, asked: Origin | None) -> Origin:
+def origin_of(study: Study, asked: Origin | None) -> Origin:
     """Where truths come from; raises StudyFaults where the one asked for cannot be."""
     if asked is not None and asked not in get_args(Origin):
         raise ValueError(f"truths {asked!r} is none of {', '.join(get_args(Origin))}")
