@@ -98,9 +98,9 @@ def test_rivals_are_told_apart_only_where_the_difference_is_clear() -> None:
         last = {name: [(0, 0.2, 0.2), (24, 0.04, wrong)] for name, wrong in ends.items()}
         return {OWN: [(0, 0.2, 0.2), (24, 0.04, 0.05)], **last}
 
-    lines = verdict(told(one(-0.01), one(0.01), one(0.0)))
+    lines = verdict(told(one(-0.01), one(0.01), one(0.003)))
     assert lines[1] == (
-        "Rivals with as many test wells: more is called wrongly by full factorial (4.0 points); "
+        "Rivals with as many test wells: more is called wrongly by full factorial (4.1 points); "
         "less by space filling (3.0 points); no clear difference to one shot."
     )
 
