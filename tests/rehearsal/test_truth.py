@@ -161,14 +161,8 @@ def test_positive_readings_have_relative_noise_and_per_cent_are_per_cent() -> No
 
 
 def test_every_target_must_be_met() -> None:
-    two = Definition.model_validate(
-        tables(
-            responses=[
-                {**RECOVERY, "at_least": 0.5},
-                {**RECOVERY, "name": "purity", "at_most": 0.7},
-            ]
-        )
-    )
+    purity = {"name": "purity", "kind": "fraction", "at_most": 0.7}
+    two = Definition.model_validate(tables(responses=[{**RECOVERY, "at_least": 0.5}, purity]))
     low = Known("logit", 0.0, [], [])
     truth = SurfaceTruth(two, {"recovery": low, "purity": low})  # type: ignore[dict-item]
     frame = pd.DataFrame({"ph": [5.0, 6.5, 7.5], "salt": 100.0})

@@ -105,7 +105,7 @@ def _to_stop(told: Rehearsal) -> Table:
     """What each design takes: half of the series stay within / nine in ten do."""
     known = told.to_stop["mg_half"].notna().all()
     columns = {"tests": "test wells", "plates": "plates"} | ({"mg": "mg"} if known else {})
-    table = _plain("", "reach it", *columns.values(), "truly wrong then")
+    table = _plain("", "reach it", *columns.values(), "wrong then")
     for _, row in told.to_stop.iterrows():
         fewer = row["planned_plates"] < len(told.settings.plates)
         name = f"{row['design']}, one plate" if fewer else str(row["design"])
