@@ -44,6 +44,7 @@ def test_the_screen_says_what_was_played_and_ends_in_a_verdict(study: Path) -> N
     assert (
         "At most 2.0 % of the range may be called wrongly, as the tool says it. An example" in said
     )
+    assert "one shot: its choice of all wells at once." in said
     for design in ("plate by plate", "one shot, one plate", "full factorial, one plate"):
         assert re.search(rf"{design} \d of 2 ", said), design
     headings = [line[:12].strip() for line in lines[1:] if line[:12].strip()]

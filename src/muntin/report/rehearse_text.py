@@ -21,6 +21,9 @@ if TYPE_CHECKING:
     from muntin.rehearsal.rehearse import Rehearsal
 
 _GAP = 3
+_DESIGNS = (
+    "Plate by plate: muntin's choice after each plate; one shot: its choice of all wells at once."
+)
 _WITHIN = "What half of the series / nine in ten need at most; - where too few reach the rule:"
 _SHARES = "Share of the range called wrongly after test wells: mean (nine in ten at most):"
 _TRUTHS = {
@@ -78,6 +81,8 @@ def _played(told: Rehearsal) -> list[str]:
         f"{settings.seed}) on {_TRUTHS[settings.truths]}; refits in brief, on {settings.nodes} "
         "nodes a round."
     ]
+    if "one shot" in set(told.to_stop["design"]):
+        lines.append(_DESIGNS)
     if told.taken_up:
         lines.append(f"{told.taken_up} of them were played before and taken up from rehearsals/.")
     return lines
