@@ -44,11 +44,20 @@ def test_the_screen_says_what_was_played_and_ends_in_a_verdict(study: Path) -> N
     assert (
         "At most 2.0 % of the range may be called wrongly, as the tool says it. An example" in said
     )
-    assert "one shot: its choice of all wells at once." in said
-    for design in ("plate by plate", "one shot, one plate", "full factorial, one plate"):
+    assert "One shot: its choice of all wells at once" in said
+    for design in ("plate by plate", "one shot", "full factorial", "space filling"):
         assert re.search(rf"{design} \d of 2 ", said), design
     headings = [line[:12].strip() for line in lines[1:] if line[:12].strip()]
-    assert headings == ["Read", "Played", "Stop rule", "Wrong calls", "Verdict", "Caution"]
+    assert headings == [
+        *("Read", "Played", "Stop rule", "Wrong calls", "Caution", "Rivals", "Verdict")
+    ]
+
+
+def test_many_plates_stand_one_below_the_other(study: Path) -> None:
+    lines = run(study, "--plates", "1,1,1,1", "--series", "1").stdout.splitlines()
+    assert max(map(len, lines)) <= 100
+    first = [line.split()[0] for line in lines if line.strip().endswith("%)")]
+    assert first == ["now", "1", "2", "3", "4"]
 
 
 def test_a_second_start_takes_up_what_was_played(study: Path) -> None:

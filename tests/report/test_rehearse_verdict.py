@@ -100,7 +100,7 @@ def test_rivals_are_told_apart_only_where_the_difference_is_clear() -> None:
 
     lines = verdict(told(one(-0.01), one(0.01), one(0.003)))
     assert lines[1] == (
-        "Rivals with as many test wells: more is called wrongly by full factorial (4.1 points); "
+        "With as many test wells: more is called wrongly by full factorial (4.1 points); "
         "less by space filling (3.0 points); no clear difference to one shot."
     )
 
@@ -109,7 +109,7 @@ def test_one_series_tells_no_difference() -> None:
     lines = verdict(
         told({OWN: [(0, 0.2, 0.2), (9, 0.1, 0.1)], "x": [(0, 0.2, 0.2), (9, 0.1, 0.3)]})
     )
-    assert lines[1] == "Rivals with as many test wells: no clear difference to x."
+    assert lines[1] == "With as many test wells: no clear difference to x."
 
 
 def test_the_table_of_a_hand_made_series_has_a_row_a_standing() -> None:

@@ -40,7 +40,10 @@ TruthsOption = Annotated[
     typer.Option(help="draw truths from here; before any reading lab or prior, else posterior"),
 ]
 Workers = Annotated[
-    int | None, typer.Option(min=1, help="processes to play series on; one a core if not given")
+    int | None,
+    typer.Option(
+        min=1, help="processes to play series on without --cluster; one a core if not given"
+    ),
 ]
 Cluster = Annotated[
     str | None,

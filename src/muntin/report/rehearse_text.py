@@ -20,9 +20,10 @@ from muntin.report.words import share_text
 if TYPE_CHECKING:
     from muntin.rehearsal.rehearse import Rehearsal
 
-_GAP = 3
+_GAP, _MOST_COLUMNS = 2, 4
 _DESIGNS = (
-    "Plate by plate: muntin's choice after each plate; one shot: its choice of all wells at once."
+    "Plate by plate: muntin's choice after each plate. One shot: its choice of all wells at once; "
+    "the full factorial is one plate, too."
 )
 _WITHIN = "What half of the series / nine in ten need at most; - where too few reach the rule:"
 _SHARES = "Share of the range called wrongly after test wells: mean (nine in ten at most):"
@@ -58,7 +59,8 @@ def rehearse_facts(told: Rehearsal) -> Facts:
 
 
 def rehearse_screen(told: Rehearsal) -> RenderableType:
-    """Return the screen of `rehearse`."""
+    """Return the screen of `rehearse`; it ends in the verdict."""
+    own, *rivals = verdict(told)
     return sheet(
         told.study.definition.title,
         [
@@ -67,8 +69,9 @@ def rehearse_screen(told: Rehearsal) -> RenderableType:
             ("Noted", few(told.notices, 4, "see --json")),
             ("Stop rule", [_rule(told), _WITHIN, _to_stop(told)]),
             ("Wrong calls", [_SHARES, _after(told.after)]),
-            ("Verdict", verdict(told)),
             ("Caution", [_CAUTION[told.settings.truths]]),
+            ("Rivals", rivals),
+            ("Verdict", [own]),
         ],
     )
 
@@ -112,12 +115,10 @@ def _to_stop(told: Rehearsal) -> Table:
     columns = {"tests": "test wells", "plates": "plates"} | ({"mg": "mg"} if known else {})
     table = _plain("", "reach it", *columns.values(), "wrong then")
     for _, row in told.to_stop.iterrows():
-        fewer = row["planned_plates"] < len(told.settings.plates)
-        name = f"{row['design']}, one plate" if fewer else str(row["design"])
         reach = f"{row['reached']} of {row['series']}"
         spent = [f"{_number(row[f'{k}_half'])} / {_number(row[f'{k}_most'])}" for k in columns]
         wrong = share_text(row["wrong"]) if row["reached"] else "-"
-        table.add_row(*map(Text, (name, reach, *spent, wrong)))
+        table.add_row(*map(Text, (str(row["design"]), reach, *spent, wrong)))
     return table
 
 
@@ -126,18 +127,24 @@ def _number(value: Any) -> str:
 
 
 def _after(after: pd.DataFrame) -> Table:
-    """A row a design, a column a number of test wells."""
-    tests = sorted(set(after["tests"]))
-    table = _plain("", *("now" if n == 0 else f"{n} wells" for n in tests))
-    for name in after["design"].unique():
-        mine = after[after["design"] == name].set_index("tests")
-        cells = [
-            f"{share_text(mine.at[n, 'wrong'])} ({share_text(mine.at[n, 'wrong_most'])})"
-            if n in mine.index
-            else ""
-            for n in tests
-        ]
-        table.add_row(*map(Text, (name, *cells)))
+    """A row a design and a column a number of test wells, or the other way where these are many."""
+    cells = {
+        (
+            row["design"],
+            row["tests"],
+        ): f"{share_text(row['wrong'])} ({share_text(row['wrong_most'])})"
+        for _, row in after.iterrows()
+    }
+    tests, designs = sorted(set(after["tests"])), list(after["design"].unique())
+    shown = ["now" if n == 0 else f"{n} wells" for n in tests]
+    if len(tests) <= _MOST_COLUMNS:
+        table = _plain("", *shown)
+        for name in designs:
+            table.add_row(*map(Text, (name, *(cells.get((name, n), "") for n in tests))))
+        return table
+    table = _plain("", *designs)
+    for n, heading in zip(tests, shown, strict=True):
+        table.add_row(*map(Text, (heading, *(cells.get((name, n), "") for name in designs))))
     return table
 
 

@@ -85,4 +85,4 @@ def _rivals(told: Rehearsal) -> list[str]:
         )
     if alike:
         said.append(f"no clear difference to {joined(alike)}")
-    return [f"Rivals with as many test wells: {'; '.join(said)}."]
+    return [f"With as many test wells: {'; '.join(said)}."]
