@@ -9,7 +9,7 @@ import numpy as np
 import pandas as pd
 
 from muntin.record.factors import Factor, factor_faults
-from muntin.record.faults import Fault, did_you_mean, quoted
+from muntin.record.faults import Fault, did_you_mean, number, quoted
 from muntin.record.keys import Keys, Number, NumberOrText, Text, Truths, Whole, key
 from muntin.record.limits import Forbidden, Limit, forbidden_faults, limit_faults
 from muntin.record.protein import Protein, protein_faults

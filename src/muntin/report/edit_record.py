@@ -107,8 +107,8 @@ def edit_lines(plan: Plan, edit: Edit) -> list[str]:
     if edit.offered_share is not None:
         tests = int((plan.wells["role"] == "test").sum())
         lines.append(
-            f"May be called wrongly after it: {share_text(plan.wrong_share)} ({tests} test wells); as "
-            f"offered {share_text(edit.offered_share)} ({edit.offered_wells})."
+            f"May be called wrongly after it: {share_text(plan.wrong_share)} ({tests} test wells); "
+            f"as offered {share_text(edit.offered_share)} ({edit.offered_wells})."
         )
     return lines
 
