@@ -92,30 +92,33 @@ def _played(
     passes: NDArray[np.bool_],
 ) -> tuple[Standing, ...]:
     view: Assessment | None = None
-    study, roles = setup.study, list[str]()
-    standings = [_standing(setup, roles, setup.p_now, setup.best_now, passes)]
+    study, names = setup.study, list(setup.study.definition.factor_names)
+    rows = pd.DataFrame(columns=["role", *names])
+    standings = [_standing(setup, rows, setup.p_now, setup.best_now, passes)]
     for plate in range(len(design.sizes)):
         wells = design.first if view is None else design.plate(view, plate, setup.aim, setup.seed)
         # Equal for all designs, so that a plate's own error does not tell them apart.
         rng = np.random.default_rng((setup.seed, number, _READING, plate))
         name = next_plate(study)
-        readings = truth.read(wells[list(study.definition.factor_names)], name, rng)
+        readings = truth.read(wells[names], name, rng)
         study = with_plate(study, name, wells, readings)
-        roles += [*wells["role"], *controls(study)]
+        added = [wells[["role", *names]], pd.DataFrame({"role": controls(study)})]
+        rows = pd.concat([rows, *added] if len(rows) else added, ignore_index=True)
         starts = setup.starts if view is None else starts_from(view)
         view = assess_briefly(study, setup.surrogate, setup.seed, setup.nodes, starts)
         best = best_probability(view) if setup.with_best else np.nan
-        standings.append(_standing(setup, roles, view.judged(grid, "mean"), best, passes))
+        standings.append(_standing(setup, rows, view.judged(grid, "mean"), best, passes))
     return tuple(standings)
 
 
 def _standing(
-    setup: Setup, roles: Sequence[str], p: Array, best: float, passes: NDArray[np.bool_]
+    setup: Setup, rows: pd.DataFrame, p: Array, best: float, passes: NDArray[np.bool_]
 ) -> Standing:
-    needed = protein_needed_mg(setup.study, roles)
+    """rows: role and factors of all wells so far."""
+    needed = protein_needed_mg(setup.study, rows)
     return Standing(
-        tests=sum(role == "test" for role in roles),
-        wells=len(roles),
+        tests=int((rows["role"] == "test").sum()),
+        wells=len(rows),
         mg=np.nan if needed is None else needed,
         expected=expected_wrong(p),
         wrong=wrongly_called(p, passes),

@@ -100,7 +100,8 @@ def _squares(X: Array, Z: Array) -> Array:
 
 def full_factorial(definition: Definition, wells: int, beside: pd.DataFrame) -> pd.DataFrame | None:
     """A full factorial of at most so many wells inside the limits (raw units), from end to end of
-    the plan's range; wells left over repeat its middle. None where no factorial is so small.
+    the plan's range, without what is forbidden; wells left over repeat its middle. None where no
+    factorial is so small.
 
     Factors with `per_plate` keep room for the levels of the wells `beside` it.
     """
@@ -111,7 +112,7 @@ def full_factorial(definition: Definition, wells: int, beside: pd.DataFrame) -> 
     levels = [_levels(f, n) for f, n in zip(definition.factors, counts, strict=True)]
     names = list(definition.factor_names)
     frame = pd.MultiIndex.from_product(levels, names=names).to_frame(index=False)
-    frame = frame[definition.allowed(frame)].reset_index(drop=True)
+    frame = frame[definition.allowed(frame) & ~definition.forbids(frame)].reset_index(drop=True)
     if frame.empty:
         return None
     middle = int(np.argmin((code(definition, frame) ** 2).sum(axis=1)))
