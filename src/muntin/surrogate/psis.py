@@ -24,7 +24,8 @@ def psis_leave_one_out(draws: Draws, efficiency: float) -> tuple[LeaveOneOut, Ar
     """
     y = draws.model.cells.y
     law, log_like = draws.law, draws.log_likelihood
-    log_w, k = arviz().psislw(-log_like.T, reff=min(efficiency, 1.0))
+    with np.errstate(over="ignore"):
+        log_w, k = arviz().psislw(-log_like.T, reff=min(efficiency, 1.0))
     log_w, k = np.asarray(log_w).T, np.asarray(k)
     w = np.exp(log_w)
     mean = (w * law.centre).sum(0)
