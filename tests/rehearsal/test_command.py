@@ -130,6 +130,19 @@ def test_an_interrupt_says_what_is_kept_and_ends_with_1(
     assert "1 of them were played before" in words(run(study))
 
 
+def test_an_interrupt_before_a_series_is_done_promises_nothing(
+    study: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    def breaking(setup: Any, recipe: Any) -> Any:
+        raise KeyboardInterrupt
+
+    monkeypatch.setattr(workers, "play", breaking)
+    result = run(study)
+    assert (result.exit_code, result.stdout) == (1, "")
+    assert result.stderr == "interrupted: no series was finished yet\n"
+    assert not (study / "rehearsals").exists()
+
+
 @pytest.mark.parametrize("plates", ["", "12;12", "twelve", "-3", "12,", "1.5"])
 def test_plates_that_are_no_numbers(study: Path, plates: str) -> None:
     before = tree(study)

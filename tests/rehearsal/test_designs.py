@@ -7,7 +7,10 @@ from pathlib import Path
 import pytest
 
 from muntin.design.selection import select
-from muntin.rehearsal.designs import controls, designs_for, room, wells_of
+from muntin.design.weighing import NoConditionLeftError
+from muntin.record.faults import StudyFaults
+from muntin.rehearsal import designs
+from muntin.rehearsal.designs import check_sizes, controls, designs_for, room, wells_of
 from muntin.window.assessment import assess
 from tests.rehearsal.played import small
 from tests.studies import PH, RESIN, SALT, read, spread, written
@@ -15,15 +18,15 @@ from tests.studies import PH, RESIN, SALT, read, spread, written
 
 def test_rivals_have_as_many_test_wells_and_the_same_bridging_wells(tmp_path: Path) -> None:
     view = assess(small(tmp_path), "quadratic")
-    designs, notices = designs_for(view, (5, 3), "edge", 1)
+    found, notices = designs_for(view, (5, 3), "edge", 1)
     assert notices == ()
-    assert [(d.name, d.sizes) for d in designs] == [
+    assert [(d.name, d.sizes) for d in found] == [
         ("plate by plate", (5, 3)),
         ("one shot", (8,)),
         ("full factorial", (8,)),
         ("space filling", (5, 3)),
     ]
-    for design in designs:
+    for design in found:
         roles = design.first["role"].tolist()
         assert roles == ["bridge"] * 4 + ["test"] * design.sizes[0], design.name
 
@@ -46,24 +49,54 @@ def test_a_later_plate_looks_at_the_readings_and_bridges(tmp_path: Path) -> None
 
 
 def test_one_plate_is_its_own_one_shot(tmp_path: Path) -> None:
-    designs, _ = designs_for(assess(small(tmp_path), "quadratic"), (6,), "edge", 1)
-    assert [d.name for d in designs] == ["plate by plate", "full factorial", "space filling"]
+    found, _ = designs_for(assess(small(tmp_path), "quadratic"), (6,), "edge", 1)
+    assert [d.name for d in found] == ["plate by plate", "full factorial", "space filling"]
 
 
 def test_rivals_that_fit_no_plate_are_left_out_and_said(tmp_path: Path) -> None:
     study = small(tmp_path, plan={"free_wells": "A1:A12"})
     assert controls(study) == ("blank", "load", "load")
     assert room(study, 4) == 5
-    designs, notices = designs_for(assess(study, "quadratic"), (3, 3), "edge", 1)
-    assert [d.name for d in designs] == ["plate by plate", "space filling"]
+    found, notices = designs_for(assess(study, "quadratic"), (3, 3), "edge", 1)
+    assert [d.name for d in found] == ["plate by plate", "space filling"]
     assert notices == ("no one shot and full factorial: 6 test wells do not fit one plate",)
+
+
+def test_wells_that_are_taken_are_taken_on_the_next_plate_only(tmp_path: Path) -> None:
+    study = small(tmp_path, wells=0, plan={"free_wells": "A1:A12"})
+    assert controls(study, 1) == ("blank",) * 2 + ("load",) * 4 + ("no_resin",) * 2
+    assert room(study, 4, 1) == 84
+    check_sizes(study, (9, 84), fresh=True)
+    with pytest.raises(StudyFaults) as faults:
+        check_sizes(study, (10, 85), fresh=True)
+    assert faults.value.lines() == [
+        "plates, plate 1: 10 test wells are more than a plate has room for; ask for 9 "
+        "(0 bridging wells and 3 controls come on top)",
+        "plates, plate 2: 85 test wells are more than a plate has room for; ask for 84 "
+        "(4 bridging wells and 8 controls come on top)",
+    ]
+
+
+def test_a_plate_without_conditions_left_is_a_fault(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    def none_left(*_given: object) -> None:
+        raise NoConditionLeftError
+
+    view = assess(small(tmp_path), "quadratic")
+    monkeypatch.setattr(designs, "select", none_left)
+    with pytest.raises(StudyFaults) as faults:
+        designs_for(view, (3,), "edge", 1)
+    assert faults.value.lines() == [
+        "plates: no condition is left that may be chosen for 3 test wells"
+    ]
 
 
 def test_a_factorial_too_large_is_left_out_and_said(tmp_path: Path) -> None:
     factors = [SALT, RESIN]
     study = written(tmp_path, [read(spread(factors, 12))], factors=factors)
-    designs, notices = designs_for(assess(study, "quadratic"), (4,), "edge", 1)
-    assert [d.name for d in designs] == ["plate by plate", "space filling"]
+    found, notices = designs_for(assess(study, "quadratic"), (4,), "edge", 1)
+    assert [d.name for d in found] == ["plate by plate", "space filling"]
     assert notices == ("no full factorial: no full factorial has 4 wells or fewer",)
 
 

@@ -9,6 +9,7 @@ import pytest
 
 from muntin.record import Study
 from muntin.record.faults import StudyFaults
+from muntin.record.study import keep_stop_rule
 from muntin.rehearsal.rehearse import origin_of
 from tests.rehearsal.played import REAL, plain, quick, same, small
 from tests.studies import HCP, RESIN, SALT, TIME, read, spread, written
@@ -127,6 +128,17 @@ def test_a_study_without_a_rule_is_held_against_an_example(study: Study, tmp_pat
     assert own.to_stop["tests_most"].tolist() == [0.0] * 4
 
 
+def test_the_rule_on_record_holds_against_a_later_one_without_a_reason(tmp_path: Path) -> None:
+    first = plain(tmp_path, stop={"wrong_share": 0.5})
+    keep_stop_rule(first)
+    told = quick(plain(tmp_path, stop={"best_probability": 0.2}), series=1)
+    assert (told.stop.wrong_share, told.stop.best_probability) == (0.5, None)
+    assert not told.assumed
+    assert told.table["best"].isna().all()
+    assert told.to_stop["tests_most"].tolist() == [0.0] * 4
+    assert "THE RECORDED RULE HOLDS" in told.notices[0]
+
+
 def test_the_set_point_is_judged_only_where_the_rule_asks(study: Study, tmp_path: Path) -> None:
     assert quick(study, series=1).table["best"].isna().all()
     told = quick(plain(tmp_path, stop={"best_probability": 0.2}), series=1)
@@ -144,7 +156,7 @@ def test_protein_that_does_not_suffice_is_said(tmp_path: Path) -> None:
     told = quick(plain(tmp_path, protein=protein), series=1)
     # Ten wells were run; two plates need 5 test, 8 bridging wells and 12 controls with protein.
     assert told.notices == (
-        "these plates need 12.5 mg of protein; 5 mg are left beyond the reserve",
+        "a series takes up to 12.5 mg of protein; 5 mg are left beyond the reserve",
     )
 
 

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from itertools import pairwise
 from pathlib import Path
 
 import numpy as np
@@ -21,7 +22,7 @@ from muntin.rehearsal.series import (
 from muntin.window.assessment import assess
 from muntin.window.grid import judged_grid
 from tests.rehearsal.played import conditions, small
-from tests.studies import HCP, RECOVERY, logit_of, written
+from tests.studies import HCP, LOAD, RECOVERY, SALT, logit_of, read, spread, written
 
 
 def test_wrong_calls_are_counted_against_the_truth() -> None:
@@ -81,6 +82,53 @@ def test_a_series_counts_wells_milligrams_and_wrong_calls(tmp_path: Path) -> Non
     assert [s[0].wrong for s in played.designs.values()] == [pytest.approx(wrong)] * 4
     assert own[0].best == 0.5
     assert all(0.0 < s.best < 1.0 for s in own)
+
+
+class Heard(Plain):
+    """The same, and keeps the wells of every plate that it reads."""
+
+    def __init__(self) -> None:
+        super().__init__()
+        self.plates: list[pd.DataFrame] = []
+
+    def read(self, frame: pd.DataFrame, plate: str, rng: np.random.Generator) -> dict:
+        self.plates.append(frame)
+        return super().read(frame, plate, rng)
+
+
+@pytest.mark.parametrize(("per_well", "of_control"), [({"per_well_mg": 0.1}, 0.1), ({}, 0.8)])
+def test_protein_goes_by_the_load_of_each_well(
+    tmp_path: Path, per_well: dict[str, float], of_control: float
+) -> None:
+    protein = {"available_mg": 90.0, "load_factor": "load", "resin_ul": 20.0, **per_well}
+    factors = [SALT, LOAD]
+    study = written(tmp_path, [read(spread(factors, 10))], factors=factors, protein=protein)
+    view = assess(study, "quadratic")
+    designs, _ = designs_for(view, (4, 3), "edge", 1)
+    truth = Heard()
+    setup = Setup(
+        study=study,
+        designs=designs,
+        surrogate="quadratic",
+        aim="edge",
+        seed=1,
+        nodes=4,
+        with_best=False,
+        p_now=view.judged(judged_grid(study.definition)[0], "mean"),
+        best_now=np.nan,
+        starts={},
+    )
+    played = play(setup, truth)
+    plates = iter(truth.plates)
+    for name, standings in played.designs.items():
+        mg = 0.0
+        for before, after in pairwise(standings):
+            loads = next(plates)["load"].to_numpy(dtype=float)
+            assert len(loads) + 8 == after.wells - before.wells, name
+            # 20 µL of resin a well; six of the eight controls hold protein.
+            mg += 0.02 * loads.sum() + 6 * of_control
+            assert after.mg == pytest.approx(mg), name
+    assert next(plates, None) is None
 
 
 def test_more_plates_bring_the_calls_nearer_to_the_truth(tmp_path: Path) -> None:

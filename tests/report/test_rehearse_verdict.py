@@ -105,6 +105,19 @@ def test_rivals_are_told_apart_only_where_the_difference_is_clear() -> None:
     )
 
 
+def test_a_difference_of_few_series_must_exceed_what_students_t_allows() -> None:
+    def one(away: float) -> dict[str, list[tuple[int, float, float]]]:
+        ends = {OWN: 0.05, "x": 0.05 + away}
+        return {name: [(0, 0.2, 0.2), (9, 0.1, wrong)] for name, wrong in ends.items()}
+
+    def said(*every: float) -> str:
+        return verdict(told(*map(one, every)))[1]
+
+    # Means of 3.52 and 4.46 standard errors; Student's t with two degrees of freedom allows 4.303.
+    assert said(0.010, 0.019, 0.029).endswith("no clear difference to x.")
+    assert said(0.012, 0.019, 0.027).endswith("more is called wrongly by x (1.9 points).")
+
+
 def test_one_series_tells_no_difference() -> None:
     lines = verdict(
         told({OWN: [(0, 0.2, 0.2), (9, 0.1, 0.1)], "x": [(0, 0.2, 0.2), (9, 0.1, 0.3)]})

@@ -146,8 +146,9 @@ def _counting(tell: Tell, store: Path) -> Iterator[Callable[[int, int], None]]:
         yield heard
     except KeyboardInterrupt:
         bar.stop()
-        kept = f"{counts[0]} of {counts[1]} series are kept in {store}; " if counts[1] else ""
-        typer.echo(f"interrupted: {kept}the same command goes on from there", err=True)
+        kept = f"{counts[0]} of {counts[1]} series are kept in {store}; the same command goes on"
+        told = f"{kept} from there" if counts[0] else "no series was finished yet"
+        typer.echo(f"interrupted: {told}", err=True)
         raise typer.Exit(1) from None
     finally:
         bar.stop()

@@ -9,7 +9,8 @@ from typing import Literal
 import pandas as pd
 
 from muntin.bench.layout import default_controls
-from muntin.design.selection import Aim, select
+from muntin.design.selection import Selection, select
+from muntin.design.weighing import Aim, NoConditionLeftError
 from muntin.record.faults import Fault, StudyFaults, counted
 from muntin.record.study import Study
 from muntin.rehearsal.spread import bridging, full_factorial, space_filling
@@ -40,10 +41,11 @@ class Design:
 def wells_of(name: Name, view: Assessment, wells: int, aim: Aim, seed: int) -> pd.DataFrame:
     """Role and factors (raw units) of one plate of so many test wells, bridging wells first.
 
-    Raises ValueError for a full factorial that no such number of wells holds.
+    Raises ValueError for a full factorial that no such number of wells holds, StudyFaults where no
+    condition is left that a plate may use.
     """
     if name in _LOOKING:
-        selection = select(view, wells, aim, seed)
+        selection = _selected(view, wells, aim, seed)
         chosen = selection.candidates.iloc[[pick.candidate for pick in selection.picks]]
         return chosen.reset_index(drop=True).assign(role=[p.role for p in selection.picks])
     tie = bridging(view)
@@ -55,6 +57,14 @@ def wells_of(name: Name, view: Assessment, wells: int, aim: Aim, seed: int) -> p
         raise ValueError(f"no full factorial has {wells} wells or fewer")
     parts = [part.assign(role=role) for part, role in ((tie, "bridge"), (tests, "test"))]
     return pd.concat([part for part in parts if len(part)], ignore_index=True)
+
+
+def _selected(view: Assessment, wells: int, aim: Aim, seed: int) -> Selection:
+    try:
+        return select(view, wells, aim, seed)
+    except NoConditionLeftError:
+        problem, value = "no condition is left that may be chosen for", counted(wells, "test well")
+        raise StudyFaults([Fault(file="plates", problem=problem, allowed=value)]) from None
 
 
 def designs_for(
@@ -83,31 +93,38 @@ def designs_for(
     return tuple(designs), tuple(notices)
 
 
-def room(study: Study, bridging_wells: int) -> int:
-    """Test wells that one plate has room for beside its controls and so many bridging wells."""
-    return len(study.definition.free_wells) - len(controls(study)) - bridging_wells
+def room(study: Study, bridging_wells: int, number: int = 0) -> int:
+    """Test wells that new plate `number`, from 0, has room for beside its controls and so many
+    bridging wells.
+    """
+    return _free(study, number) - len(controls(study, number)) - bridging_wells
 
 
-def controls(study: Study) -> tuple[str, ...]:
-    """The roles of the controls of a plate, one a well."""
-    definition = study.definition
-    counts = default_controls(definition.plate, len(definition.free_wells))
+def controls(study: Study, number: int = 0) -> tuple[str, ...]:
+    """The roles of the controls of new plate `number`, from 0, one a well."""
+    counts = default_controls(study.definition.plate, _free(study, number))
     return tuple(role for role, count in counts.items() for _ in range(count))
+
+
+def _free(study: Study, number: int) -> int:
+    """Wells of new plate `number`: the free ones of the first, all of those that follow."""
+    definition = study.definition
+    return definition.plate if number else len(definition.free_wells)
 
 
 def check_sizes(study: Study, sizes: Sequence[int], fresh: bool) -> None:
     """Raise StudyFaults with every plate that cannot hold its test wells."""
     faults = [] if sizes else [Fault(file="plates", problem="none is given to rehearse")]
-    for number, wells in enumerate(sizes, start=1):
-        tie = 0 if fresh and number == 1 else study.definition.plan.bridging_wells
-        most = max(room(study, tie), 0)
-        where, value = f"plate {number}", counted(wells, "test well")
+    for number, wells in enumerate(sizes):
+        tie = 0 if fresh and not number else study.definition.plan.bridging_wells
+        most = max(room(study, tie, number), 0)
+        where, value = f"plate {number + 1}", counted(wells, "test well")
         if wells < 1:
             fault = Fault(file="plates", where=where, value=str(wells), problem="must be 1 or more")
             faults.append(fault)
         elif wells > most:
             problem, allowed = "are more than a plate has room for;", f"ask for {most}"
-            hint = f"{tie} bridging wells and {len(controls(study))} controls come on top"
+            hint = f"{tie} bridging wells and {len(controls(study, number))} controls come on top"
             faults.append(
                 Fault(
                     file="plates",

@@ -163,9 +163,8 @@ def _setup(view: Assessment, settings: Settings) -> tuple[Setup, list[str]]:
     """What all series share, and what the user should know of it."""
     study = view.study
     designs, notices = designs_for(view, settings.plates, settings.aim, settings.seed)
-    with_best = study.definition.stop is not None and (
-        study.definition.stop.best_probability is not None
-    )
+    rule = study.stopping.rule
+    with_best = rule is not None and rule.best_probability is not None
     setup = Setup(
         study=study,
         designs=designs,
@@ -178,7 +177,8 @@ def _setup(view: Assessment, settings: Settings) -> tuple[Setup, list[str]]:
         best_now=best_probability(view) if with_best else np.nan,
         starts=starts_from(view),
     )
-    return setup, [*notices, *_awaited(view)]
+    told = study.stopping.notice
+    return setup, [*([told] if told else []), *notices, *_awaited(view)]
 
 
 def _awaited(view: Assessment) -> list[str]:
@@ -218,10 +218,8 @@ def _told(
     study: Study, settings: Settings, done: list[Series], found: int, notices: tuple[str, ...]
 ) -> Rehearsal:
     """The rehearsal from its series, in whatever order they were finished."""
-    stop = study.definition.stop
-    if stop is None or (stop.wrong_share is None and stop.best_probability is None):
-        stop = None
     table = table_of(sorted(done, key=lambda one: one.number))
+    stop = study.stopping.rule
     held = ASSUMED if stop is None else stop
     return Rehearsal(
         study=study,
@@ -242,4 +240,6 @@ def _protein(study: Study, table: pd.DataFrame) -> list[str]:
     if left is None or needed <= left + 1e-9:
         return []
     rest = number(round(max(left, 0.0), 6))
-    return [f"these plates need {needed:.3g} mg of protein; {rest} mg are left beyond the reserve"]
+    return [
+        f"a series takes up to {needed:.3g} mg of protein; {rest} mg are left beyond the reserve"
+    ]

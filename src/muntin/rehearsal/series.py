@@ -102,7 +102,7 @@ def _played(
         name = next_plate(study)
         readings = truth.read(wells[names], name, rng)
         study = with_plate(study, name, wells, readings)
-        added = [wells[["role", *names]], pd.DataFrame({"role": controls(study)})]
+        added = [wells[["role", *names]], pd.DataFrame({"role": controls(study, plate)})]
         rows = pd.concat([rows, *added] if len(rows) else added, ignore_index=True)
         starts = setup.starts if view is None else starts_from(view)
         view = assess_briefly(study, setup.surrogate, setup.seed, setup.nodes, starts)

@@ -24,6 +24,8 @@ _SWEEPS = 3
 # What a factorial may lose of the wells to be even, for each step of the largest over the least
 # number of levels.
 _UNEVEN = 0.1
+# Where limits take conditions out, larger factorials are tried, of so many times the wells.
+_LARGER = (1.25, 1.5, 2.0, 3.0, 4.0)
 
 
 def bridging(view: Assessment) -> pd.DataFrame:
@@ -106,18 +108,26 @@ def full_factorial(definition: Definition, wells: int, beside: pd.DataFrame) -> 
     Factors with `per_plate` keep room for the levels of the wells `beside` it.
     """
     every = [_level_counts(f, wells, beside) for f in definition.factors]
-    counts = _evenest(definition, every, wells)
-    if counts is None:
-        return None
-    levels = [_levels(f, n) for f, n in zip(definition.factors, counts, strict=True)]
-    names = list(definition.factor_names)
-    frame = pd.MultiIndex.from_product(levels, names=names).to_frame(index=False)
-    frame = frame[definition.allowed(frame) & ~definition.forbids(frame)].reset_index(drop=True)
-    if frame.empty:
+    cut = bool(definition.limits or definition.forbidden)
+    budgets = [int(wells * share) for share in (1.0, *(_LARGER if cut else ()))]
+    tried = [
+        _inside(definition, counts) for n in budgets if (counts := _evenest(definition, every, n))
+    ]
+    frame = max((f for f in tried if 0 < len(f) <= wells), key=len, default=None)
+    if frame is None:
         return None
     middle = int(np.argmin((code(definition, frame) ** 2).sum(axis=1)))
     rest = frame.iloc[[middle] * (wells - len(frame))]
     return pd.concat([frame, rest], ignore_index=True)
+
+
+def _inside(definition: Definition, counts: tuple[int, ...]) -> pd.DataFrame:
+    """The conditions of a factorial of so many levels a factor that a plan may use."""
+    levels = [_levels(f, n) for f, n in zip(definition.factors, counts, strict=True)]
+    names = list(definition.factor_names)
+    frame = pd.MultiIndex.from_product(levels, names=names).to_frame(index=False)
+    may = definition.allowed(frame) & ~definition.forbids(frame)
+    return frame[may].reset_index(drop=True)
 
 
 def _level_counts(factor: Factor, wells: int, beside: pd.DataFrame) -> range:

@@ -17,7 +17,7 @@ from muntin.rehearsal.played import Series
 
 FOLDER = "rehearsals"
 # Raised whenever a series is played otherwise than before.
-_FORM = 1
+_FORM = 2
 _PACKAGES = ("muntin", "numpy", "scipy", "pandas")
 
 

@@ -49,9 +49,8 @@ def to_stop(table: pd.DataFrame, stop: StopRule) -> pd.DataFrame:
     tests, plates, wells and mg spent by then, _half and _most: what half of all series and nine in
     ten stay within, infinite where fewer reach the rule, NaN where not known.
     """
-    met = table[holds(table, stop)]
-    first = met.sort_values("plate", kind="stable").groupby(["design", "series"], sort=False)
-    spent = first.first().reset_index().assign(plates=lambda t: t["plate"])
+    met = table[holds(table, stop)].sort_values("plate", kind="stable")
+    spent = met.drop_duplicates(["design", "series"]).assign(plates=lambda t: t["plate"])
     rows = []
     for name in table["design"].unique():
         mine = table[table["design"] == name]
@@ -119,13 +118,15 @@ def standard_error(values: Array) -> float:
 def against(table: pd.DataFrame, own: str) -> pd.DataFrame:
     """Each rival's true wrong share less that of a design `own`, after the last plate of both.
 
-    Columns: design, difference (mean over the series, truth by truth) and its standard error se.
+    Columns: design, series, difference (mean over them, truth by truth) and its standard error se.
     """
-    last = table.sort_values("plate", kind="stable").groupby(["design", "series"], sort=False)
-    wrong = last["wrong"].last().unstack("design")
+    last = table.sort_values("plate", kind="stable")
+    last = last.drop_duplicates(["design", "series"], keep="last")
+    wrong = last.pivot(index="series", columns="design", values="wrong")
     rows = []
     for name in table["design"].unique():
         if name != own:
             away = (wrong[name] - wrong[own]).to_numpy(dtype=float)
-            rows.append({"design": name, "difference": away.mean(), "se": standard_error(away)})
-    return pd.DataFrame(rows, columns=["design", "difference", "se"])
+            found = {"difference": away.mean(), "se": standard_error(away)}
+            rows.append({"design": name, "series": len(away)} | found)
+    return pd.DataFrame(rows, columns=["design", "series", "difference", "se"])

@@ -70,7 +70,7 @@ def _client(address: str) -> Iterator[Client]:
     try:
         client = Client(address, timeout=_PATIENCE, set_as_default=False)
     except (OSError, ValueError) as error:
-        problem, hint = "no Dask scheduler answers there", str(error).splitlines()[0]
+        problem, hint = "no Dask scheduler answers there", str(error).partition("\n")[0]
         fault = Fault(file="cluster", value=address, problem=problem, hint=hint)
         raise StudyFaults([fault]) from None
     try:

@@ -15,8 +15,8 @@ if TYPE_CHECKING:
 
 # A fall of the wrongly called share below this is hardly one.
 _HARDLY = 0.1
-# Standard errors that a difference must exceed to be one.
-_CLEAR = 2.0
+# Chance that a difference is called clear where there is none.
+_MISTAKEN = 0.05
 
 
 def verdict(told: Rehearsal) -> tuple[str, ...]:
@@ -54,12 +54,20 @@ def _own(own: pd.Series, after: pd.DataFrame) -> str:
 
 def _spent(own: pd.Series, share: str) -> str:
     """Return "12 test wells (1 plate, 7 mg)"."""
-    if own[f"tests_{share}"] == 0:
-        return "no new well"
     parts = [counted(int(own[f"plates_{share}"]), "plate")]
     if np.isfinite(own[f"mg_{share}"]):
         parts.append(amount_text(own[f"mg_{share}"]))
     return f"{counted(int(own[f'tests_{share}']), 'test well')} ({', '.join(parts)})"
+
+
+def _clear(rival: pd.Series) -> bool:
+    """Whether a mean difference lies further from 0 than Student's t allows for."""
+    from scipy.special import stdtrit
+
+    if not np.isfinite(rival["se"]):
+        return False
+    allowed = stdtrit(rival["series"] - 1, 1.0 - _MISTAKEN / 2.0) * rival["se"]
+    return bool(abs(rival["difference"]) > allowed)
 
 
 def _rivals(told: Rehearsal) -> list[str]:
@@ -69,8 +77,7 @@ def _rivals(told: Rehearsal) -> list[str]:
     worse, better, alike = [], [], []
     for _, rival in told.against.iterrows():
         points = f"{rival['design']} ({100 * abs(rival['difference']):.1f} points)"
-        clear = abs(rival["difference"]) > _CLEAR * rival["se"]
-        if not clear:
+        if not _clear(rival):
             alike.append(str(rival["design"]))
         elif rival["difference"] > 0:
             worse.append(points)
