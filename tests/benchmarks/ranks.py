@@ -132,7 +132,7 @@ def nuts_places(setup: Setup, sets: int, report: Callable[[int], None] = lambda 
     rng, values, compiled = np.random.default_rng(9), [], None
     for seed in range(sets):
         data = simulate(setup, seed, design=0)
-        fit = fitted(setup, data)
+        fit = fitted(setup, data).fits[0]
         cells, near = fit.model.cells, _latents(fit)
         with warnings.catch_warnings():
             warnings.simplefilter("ignore", FutureWarning)
