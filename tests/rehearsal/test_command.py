@@ -12,6 +12,7 @@ import pytest
 from typer.testing import CliRunner, Result
 
 from muntin.cli import app
+from muntin.commands.rehearse import time_left
 from muntin.rehearsal import workers
 from tests.report.studies import STUDY, small, tree, write
 
@@ -200,6 +201,22 @@ def test_a_missing_extra_is_named(study: Path, monkeypatch: pytest.MonkeyPatch) 
     assert result.stderr == (
         "cluster: needs Dask, which is not installed (pip install 'muntin[cluster]')\n"
     )
+
+
+@pytest.mark.parametrize(
+    ("played", "left", "seconds", "said"),
+    [
+        (0, 20, 0.0, ""),
+        (2, 18, 10.0, "about 2 min left"),
+        (2, 17, 10.0, "about 85 s left"),
+        (4, 16, 60.0, "about 4 min left"),
+        (20, 0, 100.0, ""),
+    ],
+)
+def test_the_time_left_is_told_by_the_mean_pace(
+    played: int, left: int, seconds: float, said: str
+) -> None:
+    assert time_left(played, left, seconds) == said
 
 
 def test_progress_is_heard_series_by_series(study: Path) -> None:

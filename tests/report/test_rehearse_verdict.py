@@ -54,8 +54,8 @@ SOON, LATE, NEVER = (0.04, 0.03), (0.1, 0.04), (0.1, 0.09)
     [
         (
             [SOON] * 10,
-            "Go on with fewer: 10 of 10 series reach the stop rule, half within 12 test wells "
-            "(1 plate, 6 mg).",
+            "Go on with fewer: 10 of 10 series reach the stop rule, nine in ten within 12 test "
+            "wells (1 plate, 6 mg).",
         ),
         (
             [SOON] * 6 + [LATE] * 3 + [NEVER],

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import re
+import time
 from collections.abc import Callable, Iterator
 from contextlib import contextmanager
 from enum import StrEnum
@@ -109,38 +110,44 @@ def plate_sizes(text: str) -> tuple[int, ...]:
     return tuple(map(int, parts))
 
 
+def time_left(played: int, left: int, seconds: float) -> str:
+    """Return how long the series that are left take, at the mean pace of those played in so many
+    seconds; "" before one is.
+    """
+    if not played or not left:
+        return ""
+    minutes = seconds / played * left / 60.0
+    return (
+        f"about {minutes:.0f} min left" if minutes >= 1.5 else f"about {60.0 * minutes:.0f} s left"
+    )
+
+
 @contextmanager
 def _counting(tell: Tell, store: Path) -> Iterator[Callable[[int, int], None]]:
     """Give a function that shows how many series are done, on stderr where that is a terminal; an
     interrupt says what was kept and ends with exit code 1.
     """
     from rich.console import Console
-    from rich.progress import (
-        BarColumn,
-        MofNCompleteColumn,
-        Progress,
-        TextColumn,
-        TimeElapsedColumn,
-        TimeRemainingColumn,
-    )
+    from rich.progress import BarColumn, MofNCompleteColumn, Progress, TextColumn, TimeElapsedColumn
 
     columns = (
         TextColumn("playing series"),
         BarColumn(),
         MofNCompleteColumn(),
         TimeElapsedColumn(),
-        TextColumn("left"),
-        TimeRemainingColumn(),
+        TextColumn("{task.fields[left]}"),
     )
     bar = Progress(*columns, console=Console(stderr=True), disable=not tell.bar, transient=True)
-    task, counts = bar.add_task("", total=None), [0, 0]
+    task, counts, began = bar.add_task("", total=None, left=""), [0, 0], [0, 0.0]
 
     def heard(done: int, of: int) -> None:
         if not counts[1]:
             tell("")
             bar.start()
+            began[:] = done, time.monotonic()
         counts[:] = done, of
-        bar.update(task, completed=done, total=of)
+        left = time_left(done - began[0], of - done, time.monotonic() - began[1])
+        bar.update(task, completed=done, total=of, left=left)
 
     try:
         yield heard

@@ -33,13 +33,10 @@ def _own(own: pd.Series, after: pd.DataFrame) -> str:
         return "Stop: the stop rule is met already; no plate is needed."
     if np.isfinite(own["tests_most"]):
         fewer = own["tests_most"] < own["planned_tests"]
-        then = (
-            f", nine in ten within {_spent(own, 'most')}"
-            if own["tests_half"] < own["tests_most"]
-            else ""
-        )
+        half = f"half within {_spent(own, 'half')}, "
+        sooner = half if own["tests_half"] < own["tests_most"] else ""
         first = "Go on with fewer" if fewer else "Go on"
-        return f"{first}: {count}, half within {_spent(own, 'half')}{then}."
+        return f"{first}: {count}, {sooner}nine in ten within {_spent(own, 'most')}."
     before, last = float(after["wrong"].iloc[0]), float(after["wrong"].iloc[-1])
     fall = f"what is called wrongly goes from {share_text(before)} to {share_text(last)}"
     if np.isfinite(own["tests_half"]):
