@@ -138,15 +138,17 @@ def _counting(tell: Tell, store: Path) -> Iterator[Callable[[int, int], None]]:
         TextColumn("{task.fields[left]}"),
     )
     bar = Progress(*columns, console=Console(stderr=True), disable=not tell.bar, transient=True)
-    task, counts, began = bar.add_task("", total=None, left=""), [0, 0], [0, 0.0]
+    task, counts = bar.add_task("", total=None, left=""), [0, 0]
+    began: list[tuple[int, float]] = []
 
     def heard(done: int, of: int) -> None:
-        if not counts[1]:
+        if not began:
             tell("")
             bar.start()
-            began[:] = done, time.monotonic()
+            began.append((done, time.monotonic()))
         counts[:] = done, of
-        left = time_left(done - began[0], of - done, time.monotonic() - began[1])
+        before, when = began[0]
+        left = time_left(done - before, of - done, time.monotonic() - when)
         bar.update(task, completed=done, total=of, left=left)
 
     try:

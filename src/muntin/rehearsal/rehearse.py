@@ -12,7 +12,7 @@ import pandas as pd
 
 from muntin.bench.plan import AIMS
 from muntin.bench.protein import protein_left_mg
-from muntin.design.selection import Aim
+from muntin.design.weighing import Aim
 from muntin.record.definition import StopRule
 from muntin.record.faults import Fault, StudyFaults, number
 from muntin.record.study import Study

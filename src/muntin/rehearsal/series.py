@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 from muntin.bench.plan import next_plate
 from muntin.bench.protein import protein_needed_mg
 from muntin.bench.wells import well_names
-from muntin.design.selection import Aim
+from muntin.design.weighing import Aim
 from muntin.record.notes import Plate
 from muntin.record.study import Study
 from muntin.rehearsal.designs import Design, controls
