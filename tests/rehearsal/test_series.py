@@ -10,7 +10,7 @@ import numpy as np
 import pandas as pd
 import pytest
 
-from muntin.rehearsal.designs import designs_for
+from muntin.rehearsal.designs import Design, designs_for
 from muntin.rehearsal.series import (
     Setup,
     best_probability,
@@ -19,7 +19,7 @@ from muntin.rehearsal.series import (
     with_plate,
     wrongly_called,
 )
-from muntin.window.assessment import assess
+from muntin.window.assessment import Assessment, assess
 from muntin.window.grid import judged_grid
 from tests.rehearsal.played import conditions, small
 from tests.studies import HCP, LOAD, RECOVERY, SALT, logit_of, read, spread, written
@@ -50,24 +50,29 @@ class Plain:
         return {"recovery": 1.0 / (1.0 + np.exp(-logit_of(frame)))}
 
 
+def setup_of(view: Assessment, designs: tuple[Design, ...], best_now: float = np.nan) -> Setup:
+    """What series share, on few nodes of the quadratic; the set point is judged with a best_now."""
+    return Setup(
+        study=view.study,
+        designs=designs,
+        surrogate="quadratic",
+        aim="edge",
+        seed=1,
+        nodes=4,
+        with_best=bool(np.isfinite(best_now)),
+        p_now=view.judged(judged_grid(view.study.definition)[0], "mean"),
+        best_now=best_now,
+        starts={},
+    )
+
+
 def test_a_series_counts_wells_milligrams_and_wrong_calls(tmp_path: Path) -> None:
     protein = {"available_mg": 90.0, "per_well_mg": 0.5}
     study = small(tmp_path, protein=protein, plan={"bridging_wells": 2})
     view = assess(study, "quadratic")
     grid = judged_grid(study.definition)[0]
     designs, notices = designs_for(view, (4, 3), "edge", 1)
-    setup = Setup(
-        study=study,
-        designs=designs,
-        surrogate="quadratic",
-        aim="edge",
-        seed=1,
-        nodes=4,
-        with_best=True,
-        p_now=view.judged(grid, "mean"),
-        best_now=0.5,
-        starts={},
-    )
+    setup = setup_of(view, designs, best_now=0.5)
     played = play(setup, Plain())
     assert notices == ()
     assert list(played.designs) == ["plate by plate", "one shot", "full factorial", "space filling"]
@@ -85,14 +90,16 @@ def test_a_series_counts_wells_milligrams_and_wrong_calls(tmp_path: Path) -> Non
 
 
 class Heard(Plain):
-    """The same, and keeps the wells of every plate that it reads."""
+    """The same, and keeps the name, wells and first chance number of every plate that it reads."""
 
-    def __init__(self) -> None:
-        super().__init__()
+    def __init__(self, number: int = 0) -> None:
+        super().__init__(number)
         self.plates: list[pd.DataFrame] = []
+        self.chances: list[tuple[str, float]] = []
 
     def read(self, frame: pd.DataFrame, plate: str, rng: np.random.Generator) -> dict:
         self.plates.append(frame)
+        self.chances.append((plate, float(rng.random())))
         return super().read(frame, plate, rng)
 
 
@@ -106,18 +113,7 @@ def test_protein_goes_by_the_load_of_each_well(
     view = assess(study, "quadratic")
     designs, _ = designs_for(view, (4, 3), "edge", 1)
     truth = Heard()
-    setup = Setup(
-        study=study,
-        designs=designs,
-        surrogate="quadratic",
-        aim="edge",
-        seed=1,
-        nodes=4,
-        with_best=False,
-        p_now=view.judged(judged_grid(study.definition)[0], "mean"),
-        best_now=np.nan,
-        starts={},
-    )
+    setup = setup_of(view, designs)
     played = play(setup, truth)
     plates = iter(truth.plates)
     for name, standings in played.designs.items():
@@ -131,25 +127,35 @@ def test_protein_goes_by_the_load_of_each_well(
     assert next(plates, None) is None
 
 
+def test_plates_of_one_number_have_the_same_chances_whatever_the_design(tmp_path: Path) -> None:
+    view = assess(small(tmp_path), "quadratic")
+    designs, _ = designs_for(view, (3, 2), "edge", 1)
+    first, other = Heard(), Heard(1)
+    for truth in (first, other):
+        play(setup_of(view, designs), truth)
+    # Two plates of two designs, and one plate of the two others.
+    assert [name for name, _ in first.chances].count("plate-02") == 4
+    assert [name for name, _ in first.chances].count("plate-03") == 2
+    assert len(set(first.chances)) == 2
+    assert len({chance for _, chance in [*first.chances, *other.chances]}) == 4
+
+
+def test_only_the_next_plate_has_wells_that_are_taken(tmp_path: Path) -> None:
+    study = small(tmp_path, plan={"free_wells": "A1:A12"})
+    view = assess(study, "quadratic")
+    designs, _ = designs_for(view, (3, 2), "edge", 1)
+    own = play(setup_of(view, designs), Plain()).designs["plate by plate"]
+    # Three, then eight controls beside four bridging wells.
+    assert [standing.wells for standing in own] == [0, 3 + 4 + 3, 10 + 2 + 4 + 8]
+
+
 def test_more_plates_bring_the_calls_nearer_to_the_truth(tmp_path: Path) -> None:
     study = small(tmp_path, wells=4)
     view = assess(study, "quadratic")
-    grid = judged_grid(study.definition)[0]
     truth = Plain()
     truth.passes = lambda frame: logit_of(frame) >= np.log(4.0)  # type: ignore[method-assign]
     designs, _ = designs_for(view, (12,), "edge", 1)
-    setup = Setup(
-        study=study,
-        designs=designs,
-        surrogate="quadratic",
-        aim="edge",
-        seed=1,
-        nodes=4,
-        with_best=False,
-        p_now=view.judged(grid, "mean"),
-        best_now=np.nan,
-        starts={},
-    )
+    setup = setup_of(view, designs)
     for name, standings in play(setup, truth).designs.items():
         assert standings[-1].wrong < standings[0].wrong, name
         assert standings[-1].expected < standings[0].expected, name

@@ -72,9 +72,12 @@ def test_bytes_that_are_no_text_are_spoilt(tmp_path: Path) -> None:
     assert store.take_up(3, NAMES)[0] == []
 
 
-def test_a_file_with_a_share_that_cannot_be_is_spoilt(tmp_path: Path) -> None:
+@pytest.mark.parametrize("shares", [(1.3, 0.25), (0.3, 1.25), (0.3, -0.1), (math.nan, 0.25)])
+def test_a_file_with_a_share_that_cannot_be_is_spoilt(
+    tmp_path: Path, shares: tuple[float, float]
+) -> None:
     store = Store(tmp_path)
-    store.write(Series(2, {"plate by plate": (standing(0, 1.3, 0.25),)}))
+    store.write(Series(2, {"plate by plate": (standing(0, *shares),)}))
     assert store.take_up(3, NAMES)[0] == []
 
 
