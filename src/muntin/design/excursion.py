@@ -14,13 +14,20 @@ from numpy.typing import NDArray
 from muntin.surrogate.bivariate import bivariate_normal
 
 Array = NDArray[np.float64]
+# A verdict so many sds off its threshold is decided: less than 1e-9 of it is open.
+_DECIDED = 6.0
 
 
 def expected_variance(c: Array, rho: Array) -> Array:
     """E[p1 (1 - p1)] = 2 T(c, sqrt((1 - rho) / (1 + rho))), c = (m - threshold) / s."""
     from scipy.special import owens_t
 
-    return 2.0 * np.asarray(owens_t(c, np.sqrt((1.0 - rho) / (1.0 + rho))))
+    c, rho = np.broadcast_arrays(c, rho)
+    still_open = np.abs(c) < _DECIDED
+    r = rho[still_open]
+    out = np.zeros(c.shape)
+    out[still_open] = 2.0 * owens_t(c[still_open], np.sqrt((1.0 - r) / (1.0 + r)))
+    return out
 
 
 def expected_wrong(c: Array, rho: Array) -> Array:

@@ -20,6 +20,9 @@ Array = NDArray[np.float64]
 Index = NDArray[np.intp]
 _Z, _W = np.polynomial.hermite_e.hermegauss(15)
 _W = _W / _W.sum()
+# Covariances of watched points and candidates up to so many are held, 240 MB; more are computed
+# anew for the candidates that are asked for.
+_HELD = 30_000_000
 
 
 @dataclass
@@ -28,7 +31,7 @@ class Outlook:
 
     surface: S nodes of the response. judged (P, D) and candidates (Q, D): coded. groups: for each
     inside error and each scale error the group number (Q,) a candidate would fall into on the new
-    plate. watched: numbers of the judged points whose covariance with every candidate is held.
+    plate. watched: numbers of the judged points over which a candidate is weighed.
     setting (Q, D): sd with which the bench sets each coded column of a candidate; None says 0.
     """
 
@@ -51,7 +54,8 @@ class Outlook:
         self._reading()
         self._up: list[Array] = []
         self._uq: list[Array] = []
-        self._cross = self.surface.covariance(self.judged[self.watched], self.candidates)
+        size = len(self.mean) * len(self.watched) * len(self.candidates)
+        self._cross = self._covariance(slice(None)) if size <= _HELD else None
         errors = self.surface.errors
         spread = self.well_variance + self.noise + (errors.inside**2).sum(1)[:, None]
         self.reading_variance = spread + self.lever**2 * (errors.scale**2).sum(1)[:, None]
@@ -72,6 +76,10 @@ class Outlook:
         if self.setting is not None and self.setting.any():
             self.noise = self.noise + self.surface.wander(self.candidates, self.setting)
 
+    def _covariance(self, wells: Index | slice) -> Array:
+        """Covariance (S, W, k) of f today at the watched points and at candidates."""
+        return self.surface.covariance(self.judged[self.watched], self.candidates[wells])
+
     def branch(self) -> Outlook:
         """The same state; picks of either leave the other as it is."""
         other = copy(self)
@@ -80,7 +88,7 @@ class Outlook:
 
     def after(self, wells: Index) -> Array:
         """Variance (S, W, k) that would be explained at the watched points by one more well."""
-        c = self._cross[:, :, wells]
+        c = self._covariance(wells) if self._cross is None else self._cross[:, :, wells]
         if self._up:
             up = np.stack([u[:, self.watched] for u in self._up], axis=2)
             c = c - up @ np.stack([u[:, wells] for u in self._uq], axis=1)
