@@ -16,7 +16,6 @@ from pathlib import Path
 
 import numpy as np
 import pandas as pd
-
 from scipy.stats.qmc import Sobol
 
 from muntin.bench.plan import propose

@@ -146,6 +146,10 @@ def test_looking_ahead_at_watched_points_only(posterior):
 def test_covariances_too_many_to_hold_are_computed_when_asked_for(posterior, monkeypatch):
     held = outlook(posterior, picks=(3, 5)).after(np.array([0, 6, 3]))
     monkeypatch.setattr("muntin.design.outlook._HELD", 10)
+    single = outlook(posterior, picks=(3, 5))
+    assert single._cross.dtype == np.float32
+    assert single.after(np.array([0, 6, 3])) == pytest.approx(held, rel=1e-5)
+    monkeypatch.setattr("muntin.design.outlook._HELD_SINGLE", 10)
     free = outlook(posterior, picks=(3, 5))
     assert free._cross is None
     assert free.after(np.array([0, 6, 3])) == pytest.approx(held, rel=1e-12)
