@@ -106,6 +106,22 @@ class _Coming:
     plate: int = -1
 
     def __post_init__(self) -> None:
+        self._copies()
+        definition = self.view.study.definition
+        responses = [r for r in definition.judged if r.name in self.view.surfaces]
+        targets = tuple(target_of(r) for r in responses)
+        surfaces = [self.view.surfaces[r.name] for r in responses]
+        P = code(definition, self.window.grid)
+        self.today = _today(surfaces, P, targets, self.window)
+        watched = _watched(np.prod([tails.meets for tails in self.today], axis=0))
+        self.outlooks = tuple(
+            self._outlook(surface, P, watched, shared_by(definition, response))
+            for surface, response in zip(surfaces, responses, strict=True)
+        )
+        self.greedy = LazyGreedy(EdgeCriterion(self.outlooks, targets), len(self.frame))
+
+    def _copies(self) -> None:
+        """The candidates, some of those weighed and all of the plan, once for each plate."""
         definition, offered = self.view.study.definition, self.selection.offered
         picks = self.selection.picks
         may = np.flatnonzero(~offered.barred)
@@ -126,17 +142,6 @@ class _Coming:
         self.frame = pd.concat(copies, ignore_index=True)
         self.measured = np.zeros((len(self.frame), len(definition.factors)), dtype=bool)
         self.measured[: self.size] = offered.measured[number]
-        responses = [r for r in definition.judged if r.name in self.view.surfaces]
-        targets = tuple(target_of(r) for r in responses)
-        surfaces = [self.view.surfaces[r.name] for r in responses]
-        P = code(definition, self.window.grid)
-        self.today = _today(surfaces, P, targets, self.window)
-        watched = _watched(np.prod([tails.meets for tails in self.today], axis=0))
-        self.outlooks = tuple(
-            self._outlook(surface, P, watched, shared_by(definition, response))
-            for surface, response in zip(surfaces, responses, strict=True)
-        )
-        self.greedy = LazyGreedy(EdgeCriterion(self.outlooks, targets), len(self.frame))
 
     def _outlook(self, surface: Surface, P: Array, watched: Index, shared: SharedBy) -> Outlook:
         definition = self.view.study.definition
