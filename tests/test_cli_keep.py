@@ -46,6 +46,15 @@ def test_a_plan_is_offered_with_a_copy(study: Path) -> None:
     assert plan.read_bytes() == (study / "plans" / "offered" / "plate-02.csv").read_bytes()
 
 
+@pytest.mark.parametrize("keep", [False, True])
+def test_settings_hold_the_test_wells_of_the_plan(study: Path, keep: bool) -> None:
+    # The forecast goes on beyond them.
+    asked = ("--keep", study / "plans" / "plate-02.csv") if keep else ("--wells", 5)
+    facts = json.loads(run("propose", study, *asked, "--json", *QUICK).stdout)
+    assert facts["plan"]["forecast"][-1]["wells"] > 5
+    assert facts["settings"]["wells"] == 5
+
+
 def test_an_edited_plan_is_written_beside_the_others(study: Path) -> None:
     path, _ = edited(study)
     before = tree(study)

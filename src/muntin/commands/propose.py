@@ -76,7 +76,7 @@ def propose(
     facts = {
         "command": "propose",
         "settings": {
-            "wells": int(plan.forecast["wells"].iloc[-1]),
+            "wells": int((plan.wells["role"] == "test").sum()),
             "aim": aim.value,
             "surrogate": surrogate.value,
             "engine": engine.value,
