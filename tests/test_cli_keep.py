@@ -168,6 +168,8 @@ def test_a_file_that_is_not_there(study: Path) -> None:
     before = tree(study)
     result = run("propose", study, "--keep", study / "plans" / "none.csv", *QUICK)
     assert (result.exit_code, result.stderr) == (2, "plans/none.csv: there is no such file\n")
+    result = run("propose", study, "--keep", study / "plans")
+    assert (result.exit_code, result.stderr) == (2, "plans: is a folder, not a plan\n")
     assert tree(study) == before
 
 

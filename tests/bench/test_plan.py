@@ -332,6 +332,8 @@ def test_opening_plate(tmp_path):
     assert plan.forecast[["set_point", "reached"]].isna().all(axis=None)
     assert plan.ruling == Ruling(word="none", because="no rule")
     assert plan.forecast["mg"][1] == 0.25 * (6 + 4 + 2)
+    # The second plate has bridging wells beside its controls.
+    assert plan.forecast["mg"][6] == 0.25 * (96 + 2 * (4 + 2) + 4)
     said = set(conditions(plan)["reason"])
     assert said == {
         "opening plate, spread to find where the target is met",

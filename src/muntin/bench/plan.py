@@ -191,7 +191,9 @@ def _placed(study: Study, rows: pd.DataFrame, seed: int) -> pd.DataFrame:
 def _forecast(view: Assessment, selection: Selection, rows: pd.DataFrame) -> pd.DataFrame:
     """The forecast by test wells; rows: those of the plan in order of choice."""
     roles = rows["role"].tolist()
-    outlay = Outlay(view.study, rows, roles.count("bridge"))
+    # An opening plate has nothing to repeat yet, the plates after it do.
+    usual = view.study.definition.plan.bridging_wells
+    outlay = Outlay(view.study, rows, usual if view.fresh else roles.count("bridge"))
     counts = outlay.counts(roles.count("test"))
     table = outlay.table(counts)
     if view.fresh:

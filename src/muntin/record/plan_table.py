@@ -68,7 +68,8 @@ def read_plan(
     definition = study.definition
     file = _shown(path, study.folder)
     if not path.is_file():
-        found.faults.append(Fault(file=file, problem="there is no such file"))
+        problem = "is a folder, not a plan" if path.is_dir() else "there is no such file"
+        found.faults.append(Fault(file=path.name if path.is_dir() else file, problem=problem))
         return None
     table = read_table(path, file, plate_columns(definition), found)
     if table is None:
