@@ -92,7 +92,14 @@ class Weighing:
         return tuple(outlooks)
 
     def turn(self, aim: Aim, number: int) -> Literal["edge", "best"]:
-        """What the next pick is for; `both` takes turns."""
+        """What the next pick is for; `both` takes turns.
+
+        Before any reading it is the edge whatever the aim. Expected improvement under the prior
+        alone seeks the largest variance, which lies in the corners, and is begun after wells that
+        fill the range (Jones, Schonlau & Welch 1998); those of the edge do.
+        """
+        if self.view.fresh:
+            return "edge"
         if aim == "both":
             return "edge" if number % 2 == 0 else "best"
         return aim
