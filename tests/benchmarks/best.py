@@ -227,13 +227,13 @@ def table(name: str, regrets: dict[Search, Floats]) -> None:
     case, truth = CASES[name], truth_of(name, 0)
     plate = f"plate error sd {case.plate_sd:g}" if case.plate_sd else "no plate error"
     least, most = float(truth.signal.min()), float(truth.signal.max())
-    print(f"{name}: noise sd {NOISE_SD:g}, {plate}; {len(truth.frame)} bench steps,", end=" ")
-    print(f"{least:.1f} to {most:.1f} points", end="")
+    print(f"{name}: {len(truth.frame)} bench steps, {least:.1f} to {most:.1f} points;", end=" ")
+    print(f"noise sd {NOISE_SD:g}, {plate}")
     if case.limited is not None:
         print(
-            f"; {100.0 * truth.meets.mean():.0f} % allowed, best of them {truth.best:.1f}", end=""
+            f"  {100.0 * truth.meets.mean():.0f} % of them allowed, best {truth.best:.1f};", end=" "
         )
-    print()
+        print(f"noise sd {LIMIT_NOISE_SD:g} on a limit of {LIMIT:g}")
     for search, values in regrets.items():
         median, ninth = np.median(values, axis=0), np.quantile(values, 0.9, axis=0)
         figures = zip(median, ninth, strict=True)
