@@ -16,6 +16,7 @@ from muntin.cli import app
 from muntin.record import StudyFaults
 from tests.report.studies import ONE_FACTOR, STUDY, one_factor_plate, plate, small, tree, write
 
+STOP = "stop-rule.jsonl"
 PLAN = "plans/plate-02.csv"
 
 
@@ -54,7 +55,7 @@ def test_files_of_an_advice(study: Path) -> None:
     files = tree(folder)
     copies = {name.removeprefix("inputs/"): c for name, c in files.items() if "inputs/" in name}
     assert copies == inputs
-    own = {"advice.json", "map.png", "map.svg", "plan.csv"}
+    own = {"advice.json", "map.png", "map.svg", "plan.csv", "forecast.png", "forecast.svg"}
     assert {name for name in files if not name.startswith("inputs/")} == own
     assert files["plan.csv"] == (study / PLAN).read_bytes()
     facts = json.loads(files["advice.json"])
@@ -220,8 +221,36 @@ def test_stop_rule_is_called_when_it_is_met(tmp_path: Path) -> None:
     met = "The study's stop rule is met (wrong_share 99.0 %): no plate is needed."
     toml = STUDY + "[stop]\nwrong_share = 0.99\nbest_probability = 0.999999\n"
     assert met in "\n".join(screen(small(tmp_path / "met", toml=toml)))
-    toml = STUDY + "[stop]\nwrong_share = 0.0001\nbest_probability = 0.999999\n"
-    assert "stop rule" not in "\n".join(screen(small(tmp_path / "unmet", toml=toml)))
+    toml = STUDY + "[stop]\nwrong_share = 0.0001\n"
+    unmet = " ".join(" ".join(screen(small(tmp_path / "unmet", toml=toml))).split())
+    assert "rule is met" not in unmet
+    assert "Go on, but up to 48 test wells are not expected to meet the stop rule" in unmet
+
+
+def test_stop_rule_is_kept_and_a_quiet_change_does_not_count(tmp_path: Path) -> None:
+    folder = write(tmp_path, {"study.toml": STUDY + "[stop]\nwrong_share = 0.0001\n"})
+    screen(folder, "--wells", "6")
+    (first,) = [json.loads(line) for line in (folder / STOP).read_text().splitlines()]
+    assert (first["wrong_share"], first["wells_read"], first["reason"]) == (0.0001, 0, "")
+    moved = STUDY + "[stop]\nwrong_share = 0.99\n"
+    small(folder, toml=moved)
+    kept = (folder / STOP).read_bytes()
+    text = " ".join(" ".join(screen(folder, "--wells", "6")).split())
+    assert "THE RECORDED RULE HOLDS" in text
+    assert "stop rule is met" not in text
+    assert (folder / STOP).read_bytes() == kept
+    assert (folder / "advice/plate-02/r1/inputs" / STOP).read_bytes() == kept
+    write(folder, {"study.toml": moved + 'changed_because = "Only a rough idea is asked for"\n'})
+    text = " ".join(" ".join(screen(folder, "--wells", "6")).split())
+    assert "Stop: the stop rule is met today" in text
+    (_, second) = [json.loads(line) for line in (folder / STOP).read_text().splitlines()]
+    assert (second["wrong_share"], second["wells_read"]) == (0.99, 12)
+    assert second["reason"] == "Only a rough idea is asked for"
+    facts = json.loads((folder / "advice/plate-02/r2/advice.json").read_text())
+    verdict = facts["plan"]["verdict"]
+    assert (verdict["word"], verdict["because"], verdict["wells"]) == ("stop", "met", 0)
+    assert verdict["stop_rule"]["wrong_share"] == 0.99
+    assert [rule["wrong_share"] for rule in verdict["stop_rule"]["recorded"]] == [0.0001]
 
 
 def test_plate_that_shared_errors_need_a_column_for_gets_it(tmp_path: Path) -> None:

@@ -251,7 +251,7 @@ def test_more_wells_than_the_plate_or_the_protein_has(tmp_path: Path, command: s
 @pytest.mark.parametrize(
     ("command", "blocked", "line"),
     [
-        ("propose", "plans", "{}/plans/plate-02.csv: cannot be written (File exists)"),
+        ("propose", "plans", "{}/plans/offered/plate-02.csv: cannot be written (Not a directory)"),
         ("advise", "plans", "{}/plans/plate-02.csv: cannot be written (File exists)"),
         ("advise", "advice", "{}/advice/plate-02/r1: cannot be written (Not a directory)"),
     ],

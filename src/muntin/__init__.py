@@ -2,6 +2,7 @@
 
 from muntin.bench.plan import Plan, propose
 from muntin.record import Study, StudyFaults, new_study, open_study
+from muntin.rehearsal.rehearse import Rehearsal, rehearse
 from muntin.window.assessment import Assessment, assess
 from muntin.window.window import Window
 
@@ -10,6 +11,7 @@ __version__ = "0.1.0"
 __all__ = [
     "Assessment",
     "Plan",
+    "Rehearsal",
     "Study",
     "StudyFaults",
     "Window",
@@ -17,4 +19,5 @@ __all__ = [
     "new_study",
     "open_study",
     "propose",
+    "rehearse",
 ]

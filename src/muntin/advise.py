@@ -8,8 +8,8 @@ from datetime import UTC, datetime
 from pathlib import Path
 
 from muntin.bench.plan import Plan, propose
-from muntin.design.selection import Aim
-from muntin.record import open_study
+from muntin.design.weighing import Aim
+from muntin.record import keep_stop_rule, open_study
 from muntin.report.advice_files import (
     Place,
     find_place,
@@ -22,6 +22,7 @@ from muntin.report.advice_files import (
 from muntin.report.cautions import cautions
 from muntin.report.facts import Facts, plan_facts, standing_facts, study_facts
 from muntin.report.figures import FORMATS, draw, saved
+from muntin.report.forecast_figure import draw_forecast
 from muntin.report.plan_files import plan_table_text
 from muntin.window.assessment import Assessment, Surrogate, assess
 from muntin.window.engine import Engine
@@ -88,12 +89,15 @@ def advise(
         "inputs": hashes(inputs),
         "study": study_facts(study),
         **standing_facts(view, window),
-        "plan": plan_facts(plan),
+        "plan": plan_facts(study, plan),
         "cautions": list(cautions(view)),
         "files": place.facts(),
     }
-    figure = draw(view, window, plan.wells)
-    maps = {f"map.{form}": saved(figure, form) for form in FORMATS}
+    figures = {"map": draw(view, window, plan.wells)}
+    if not view.fresh:
+        figures["forecast"] = draw_forecast(study, plan)
+    drawn = {f"{n}.{form}": saved(f, form) for n, f in figures.items() for form in FORMATS}
     copies = {f"inputs/{name}": content for name, content in inputs.items()}
-    write_advice(place, plan_text, {"advice.json": json_text(facts), **maps, **copies})
+    write_advice(place, plan_text, {"advice.json": json_text(facts), **drawn, **copies})
+    keep_stop_rule(study)
     return Advice(view=view, window=window, plan=plan, facts=facts, place=place)

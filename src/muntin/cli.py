@@ -12,12 +12,14 @@ from muntin.commands.assess import assess
 from muntin.commands.check import check
 from muntin.commands.new import new
 from muntin.commands.propose import propose
+from muntin.commands.rehearse import rehearse
 
 _COMMANDS = {
     new: "where do I start?",
     check: "are my files sound?",
     assess: "where do I stand?",
     propose: "what do I run next?",
+    rehearse: "is another plate worth it?",
     advise: "all of it between two plates",
 }
 

@@ -2,7 +2,7 @@ from collections import Counter, defaultdict
 
 import numpy as np
 import pytest
-from hypothesis import assume, given
+from hypothesis import assume, given, settings
 from hypothesis import strategies as st
 
 from muntin.bench import default_controls, lay_out, perimeter, well_names
@@ -201,3 +201,44 @@ def test_controls_take_at_most_a_quarter_of_the_free_wells(plate, free):
 
 def test_the_first_controls_kept_are_a_load_and_a_blank():
     assert default_controls(96, 8) == {"blank": 1, "load": 1, "no_resin": 0}
+
+
+# Wells that rows have already.
+
+
+def test_fixed_wells_stay():
+    roles = ["test"] * 6 + ["blank"] * 2
+    fixed = ["C3", None, "a04", None, None, None, "H12", None]
+    wells = lay_out(roles, plate=96, rng=np.random.default_rng(1), fixed=fixed)
+    assert (wells[0], wells[2], wells[6]) == ("C3", "A4", "H12")
+    assert len(set(wells)) == 8
+
+
+@pytest.mark.parametrize(
+    ("fixed", "free"), [(["C3", "c03"], None), (["C3", None], "A1:B12"), (["C3"], None)]
+)
+def test_fixed_wells_that_cannot_be(fixed, free):
+    with pytest.raises(ValueError, match="fixed wells"):
+        lay_out(["test"] * 2, plate=96, rng=np.random.default_rng(1), fixed=fixed, free_wells=free)
+
+
+@settings(deadline=None, derandomize=True, max_examples=60)
+@given(
+    st.lists(st.integers(0, 3), min_size=1, max_size=24),
+    st.sampled_from(["row", "column"]),
+    st.integers(0, 9),
+    st.data(),
+)
+def test_lines_belong_to_one_stock_with_fixed_wells_too(stocks, by, seed, data):
+    # Fixed wells as an earlier layout had them, so that they agree with one another.
+    roles = ["test"] * len(stocks)
+    asked = {"plate": 96, "prepared_by": by, "stocks": stocks}
+    earlier = lay_out(roles, rng=np.random.default_rng(seed), **asked)
+    held = [well if data.draw(st.booleans()) else None for well in earlier]
+    wells = lay_out(roles, rng=np.random.default_rng(seed + 1), fixed=held, **asked)
+    assert len(set(wells)) == len(wells)
+    assert all(h is None or h == w for h, w in zip(held, wells, strict=True))
+    feeds = {}
+    for stock, well in zip(stocks, wells, strict=True):
+        line = well[0] if by == "row" else well[1:]
+        assert feeds.setdefault(line, stock) == stock

@@ -1,5 +1,8 @@
 """The next plate: conditions at final wells, each with a reason."""
 
+from dataclasses import replace
+from unittest import mock
+
 import numpy as np
 import pandas as pd
 import pytest
@@ -10,6 +13,8 @@ import muntin
 from muntin.bench import default_controls, well_range
 from muntin.bench.plan import next_plate
 from muntin.bench.protein import protein_left_mg
+from muntin.design.selection import select
+from muntin.design.stopping import Ruling
 from muntin.record import StudyFaults
 from tests.studies import (
     HCP,
@@ -30,6 +35,7 @@ from tests.studies import (
 FACTORS = [PH, SALT]
 EARLIER = [read(spread(FACTORS, 12, seed), seed, error) for seed, error in ((1, 0.02), (2, -0.03))]
 PROTEIN = {"available_mg": 40.0, "reserved_mg": 10.0, "per_well_mg": 0.25}
+EXPECTED = ["wrong_share", "set_point", "reached"]
 CONTROLS = {"blank": 2, "load": 4, "no_resin": 2}
 
 
@@ -96,19 +102,55 @@ def test_same_seed_same_plan(view):
 
 def test_forecast(view):
     plan = muntin.propose(view, wells=6)
-    assert list(plan.forecast.columns) == ["wells", "wrong_share"]
-    assert list(plan.forecast["wells"]) == list(range(7))
-    share = plan.forecast["wrong_share"]
-    assert share[0] == pytest.approx(view.window().wrong_share, abs=1e-12)
+    assert list(plan.forecast.columns) == ["wells", "plates", *EXPECTED]
+    assert list(plan.forecast["wells"]) == [0, 6, 12, 24, 48, 96]
+    assert list(plan.forecast["plates"]) == [0, 1, 1, 1, 1, 2]
+    share, best = plan.forecast["wrong_share"], plan.forecast["set_point"]
+    assert share[0] == view.window().wrong_share
+    assert best[0] == view.window().setpoint["probability"]
     assert (share.diff()[1:] < 0.0).all()
+    assert (best.diff()[1:] >= 0.0).all()
+
+
+def test_forecast_of_the_wells_asked_for(view):
+    plan = muntin.propose(view, wells=9)
+    assert list(plan.forecast["wells"]) == [0, 6, 9, 12, 24, 48, 96]
+    shares = plan.forecast.set_index("wells")["wrong_share"]
+    chosen = select(view, 9, "edge", 1).forecast
+    assert shares[[6, 9]].tolist() == pytest.approx([chosen[6], chosen[9]], rel=1e-8)
+
+
+def test_verdict_on_the_plan(view):
+    share = muntin.propose(view, wells=12).forecast.set_index("wells")["wrong_share"]
+    words = {
+        0: Ruling(word="stop", because="met", wells=0),
+        6: Ruling(word="go on with fewer", because="enough", wells=6),
+        12: Ruling(word="go on", because="enough", wells=12),
+        48: Ruling(word="go on", because="more are needed", wells=48),
+    }
+    for wells, ruling in words.items():
+        asked = changed(view, stop={"wrong_share": 1.0001 * share[wells]})
+        assert muntin.propose(asked, wells=12).ruling == ruling
+    assert muntin.propose(view, wells=12).ruling == Ruling(word="none", because="no rule")
+
+
+def test_no_verdict_on_a_window_that_the_data_do_not_support(view):
+    asked = changed(view, stop={"wrong_share": 0.5})
+    assert muntin.propose(asked, wells=2).ruling.because == "met"
+    unsupported = replace(asked.window(), unsupported=("The readings do not fit.",))
+    with mock.patch.object(type(asked), "window", return_value=unsupported):
+        plan = muntin.propose(asked, wells=2)
+    assert plan.ruling == Ruling(word="none", because="unsupported")
 
 
 def test_forecast_by_milligrams(view):
     # Bridging wells, loads and wells without resin are given protein; blanks are not.
     plan = muntin.propose(changed(view, protein=PROTEIN), wells=3)
-    assert list(plan.forecast.columns) == ["wells", "mg", "wrong_share"]
+    assert list(plan.forecast.columns) == ["wells", "plates", "mg", *EXPECTED]
     extra = 4 + 4 + 2
-    assert list(plan.forecast["mg"]) == [0.0] + [0.25 * (extra + k) for k in (1, 2, 3)]
+    # 24 mg are left after 24 wells; 96 more would take two plates and 29 mg.
+    assert list(plan.forecast["wells"]) == [0, 3, 6, 12, 24, 48]
+    assert list(plan.forecast["mg"]) == [0.0] + [0.25 * (extra + k) for k in (3, 6, 12, 24, 48)]
     assert plan.protein_mg == 0.25 * (extra + 3)
 
 
@@ -136,8 +178,10 @@ def test_next_plate_follows_the_last_with_wells(tmp_path):
 def test_awaited_response_makes_the_plan_provisional(tmp_path):
     plates = [plate.assign(hcp="") for plate in EARLIER]
     responses = [RECOVERY, {**HCP, "label": "Host cell protein"}]
-    study = written(tmp_path / "study", plates, responses=responses)
+    stop = {"wrong_share": 0.5}
+    study = written(tmp_path / "study", plates, responses=responses, stop=stop)
     plan = muntin.propose(muntin.assess(study, "quadratic"), wells=3)
+    assert plan.ruling == Ruling(word="none", because="awaited")
     said = "provisional: no reading yet of Host cell protein, which the plan does not weigh"
     assert said in plan.notices
 
@@ -168,9 +212,9 @@ def test_plan_without_bridging_wells_by_choice_says_nothing_of_them(view):
 def test_fewer_wells_that_would_do_are_told(view):
     plan = muntin.propose(view, wells=24)
     (said,) = (notice for notice in plan.notices if "would do" in notice)
-    share = plan.forecast["wrong_share"]
-    enough = int(np.argmax(share[0] - share >= 0.9 * (share[0] - share.iloc[-1])))
-    some, last = (f"{100 * value:.1f} %" for value in (share[enough], share.iloc[-1]))
+    share = np.array(select(view, 24, "edge", 1).forecast)
+    enough = int(np.argmax(share[0] - share >= 0.9 * (share[0] - share[-1])))
+    some, last = (f"{100 * value:.1f} %" for value in (share[enough], share[-1]))
     assert said == (
         f"{enough} test wells would do nearly as well: {some} still called wrongly, "
         + (f"against {last} with 24" if some != last else "as with 24")
@@ -282,10 +326,14 @@ def test_opening_plate(tmp_path):
     plan = muntin.propose(view, wells=8)
     assert plan.plate == "plate-01"
     assert roles(plan) == {"test": 8, **CONTROLS}
-    assert list(plan.forecast["wells"]) == list(range(9))
+    assert list(plan.forecast["wells"]) == [0, 6, 8, 12, 24, 48, 96]
     assert plan.forecast["wrong_share"][0] == pytest.approx(view.window().wrong_share, abs=1e-12)
     assert plan.forecast["wrong_share"][1:].isna().all()
-    assert plan.forecast["mg"][1] == 0.25 * (1 + 4 + 2)
+    assert plan.forecast[["set_point", "reached"]].isna().all(axis=None)
+    assert plan.ruling == Ruling(word="none", because="no rule")
+    assert plan.forecast["mg"][1] == 0.25 * (6 + 4 + 2)
+    # The second plate has bridging wells beside its controls.
+    assert plan.forecast["mg"][6] == 0.25 * (96 + 2 * (4 + 2) + 4)
     said = set(conditions(plan)["reason"])
     assert said == {
         "opening plate, spread to find where the target is met",

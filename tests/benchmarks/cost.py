@@ -16,10 +16,13 @@ from pathlib import Path
 
 import numpy as np
 import pandas as pd
+from scipy.stats.qmc import Sobol
 
 from muntin.bench.plan import propose
+from muntin.design.edge import EdgeCriterion, LazyGreedy
+from muntin.design.outlook import Outlook
 from muntin.record import open_study
-from muntin.window.assessment import assess
+from muntin.window.assessment import assess, target_of
 
 LETTERS = "ABCDEFGHIJKLMNOP"
 
@@ -116,6 +119,36 @@ def propose_row(root: Path) -> tuple[str, float, float, str]:
     return name, taken, 3.0, f"{taken / fit:.1f} x assess"
 
 
+def choose_many(folder: str) -> None:
+    """Print the seconds that 96 wells of 5,000 candidates judged at 3,000 points take."""
+    view = assess(open_study(Path(folder)))
+    definition = view.study.definition
+    X, P = (Sobol(3, rng=np.random.default_rng(s)).random_base2(13) for s in (1, 2))
+    candidates, judged = 2.0 * X[:5000] - 1.0, 2.0 * P[:3000] - 1.0
+    groups = np.zeros(len(candidates), dtype=np.intp)
+    start = time.perf_counter()
+    surface = view.surfaces["signal"].lightened(8)
+    outlook = Outlook(surface, judged, candidates, (), (groups,), np.arange(len(judged)))
+    target = target_of(definition.judged[0])
+    greedy = LazyGreedy(EdgeCriterion((outlook,), (target,)), len(candidates))
+    for _ in range(96):
+        outlook.pick(greedy.best(np.ones(len(candidates), dtype=bool)))
+    print(time.perf_counter() - start)
+
+
+def many_row(root: Path) -> tuple[str, float, float, str]:
+    """A whole plate of three factors, after 96 wells, in its own process."""
+    folder = root / "many"
+    write_study(folder, "fraction", plates=3, wells=32, factors=3, levels=12)
+    code = "import sys; from tests.benchmarks.cost import choose_many; choose_many(sys.argv[1])"
+    done = subprocess.run(
+        [sys.executable, "-c", code, str(folder)], check=True, capture_output=True, text=True
+    )
+    peak = resource.getrusage(resource.RUSAGE_CHILDREN).ru_maxrss / 1024**2
+    name = "choose 96 of 5,000 candidates, 3,000 points"
+    return name, float(done.stdout), 30.0, f"peak {peak:.2f} GiB (budget 1)"
+
+
 def large_row(root: Path) -> tuple[str, float, float, str]:
     """1,536 wells on four plates, 400 distinct conditions, three factors, in its own process."""
     folder = root / "large"
@@ -140,7 +173,7 @@ def main() -> None:
     with tempfile.TemporaryDirectory() as name:
         root = Path(name)
         rows = [import_row(), check_row(root), assess_row(root, "fraction")]
-        rows += [assess_row(root, "real"), propose_row(root)]
+        rows += [assess_row(root, "real"), propose_row(root), many_row(root)]
         if not given.skip_large:
             rows.append(large_row(root))
     print(f"{'work':<50}{'seconds':>9}{'budget':>9}  ratio")

@@ -3,17 +3,15 @@
 import numpy as np
 import pandas as pd
 import pytest
-from hypothesis import given, settings
-from hypothesis import strategies as st
 
 from muntin.design.candidates import (
-    Levels,
     RunCondition,
     candidate_frame,
     plannable,
     run_conditions,
 )
 from muntin.record.definition import Definition, definition_faults
+from muntin.window.grid import judged_grid
 from tests.studies import LOAD, PH, RESIN, SALT, TIME, read, spread, tables, written
 
 
@@ -149,6 +147,25 @@ def test_choices_keep_the_columns_apart():
     assert len(frame) == 14
 
 
+def test_forbidden_conditions_are_no_candidates_but_stay_judged():
+    precipitates = {"conditions": "salt >= 300 and ph < 6", "because": "it precipitates"}
+    made = definition(forbidden=[precipitates])
+    frame = candidate_frame(made, (run(5.0, 400.0), run(6.5, 400.0)))
+    assert not ((frame["salt"] >= 300) & (frame["ph"] < 6)).any()
+    assert len(frame) == 7 * 9 - 3 * 4
+    grid, _ = judged_grid(made)
+    assert len(grid) == 7 * 9
+
+
+def test_what_is_left_between_forbidden_conditions_is_found_on_every_step():
+    # Only pH 6.01 is left, which a thinned grid of 3 pH by 0.01 does not hold.
+    fine = [{**PH, "step": 0.01}, {**SALT, "step": 1}]
+    rules = [{"conditions": "ph < 6.005 or ph > 6.015", "because": "no other stock is left"}]
+    frame = candidate_frame(definition(factors=fine, forbidden=rules), ())
+    assert set(frame["ph"]) == {6.01}
+    assert frame["salt"].nunique() > 50
+
+
 def test_plannable_says_which_rows_may_be_run():
     made = definition(
         factors=[{**PH, "plan_high": 6.5}, {**RESIN, "plan_choices": ["Alpha", "Beta"]}],
@@ -161,42 +178,6 @@ def test_plannable_says_which_rows_may_be_run():
         }
     )
     assert plannable(made, frame).tolist() == [True, False, False, False, False, True, True]
-
-
-# Levels per plate.
-
-
-def test_levels_open_until_the_plate_has_its_most():
-    made = definition(factors=[{**PH, "per_plate": 2}, SALT])
-    frame = candidate_frame(made, (run(5.0, 100.0),))
-    levels = Levels(made, frame)
-    assert levels.open().all()
-    first, second = (int(np.flatnonzero(frame["ph"] == ph)[3]) for ph in (5.0, 7.0))
-    levels.use(first)
-    levels.use(first)
-    assert levels.open().all()
-    levels.use(second)
-    assert set(frame["ph"][levels.open()]) == {5.0, 7.0}
-    assert levels.open().sum() == 2 * 9
-
-
-def test_a_new_level_keeps_its_distance():
-    # Of 3 levels over 3 pH a new one lies a third of a pH from the others, or is one of them.
-    made = definition(factors=[{**PH, "step": 0.1, "per_plate": 3}, SALT])
-    frame = candidate_frame(made, (run(5.0, 100.0),))
-    levels = Levels(made, frame)
-    levels.use(int(np.flatnonzero(frame["ph"] == 5.5)[0]))
-    levels.use(int(np.flatnonzero(frame["ph"] == 6.0)[0]))
-    closed = set(frame["ph"]) - set(frame["ph"][levels.open()])
-    assert closed == {5.2, 5.3, 5.4, 5.6, 5.7, 5.8, 5.9, 6.1, 6.2, 6.3}
-
-
-def test_choices_keep_no_distance():
-    made = definition(factors=[PH, {**RESIN, "per_plate": 2}])
-    frame = candidate_frame(made, (run(5.0, "Alpha"),))
-    levels = Levels(made, frame)
-    levels.use(0)
-    assert levels.open().all()
 
 
 @pytest.mark.parametrize(
@@ -216,32 +197,3 @@ def test_an_opening_plate_has_few_levels_evenly_over_the_range(factor, levels):
     assert opening["salt"].nunique() == 9
     later = candidate_frame(made, (run(6.0, 100.0),))
     assert len(later) > len(opening) or len(levels) == 7
-
-
-@settings(deadline=None, derandomize=True, max_examples=60)
-@given(
-    st.integers(1, 4),
-    st.integers(1, 4),
-    st.lists(st.integers(0, 10_000), min_size=1, max_size=25),
-)
-def test_whatever_is_taken_from_the_open_ones_keeps_the_levels(ph, resin, choices):
-    made = definition(factors=[{**PH, "per_plate": ph}, SALT, {**RESIN, "per_plate": resin}])
-    frame = candidate_frame(made, (run(5.0, 100.0, "Alpha"),))
-    levels, taken = Levels(made, frame), []
-    for choice in choices:
-        still = np.flatnonzero(levels.open())
-        candidate = int(still[choice % len(still)])
-        levels.use(candidate)
-        taken.append(candidate)
-    plan = frame.iloc[taken]
-    assert plan["ph"].nunique() <= ph
-    assert plan["resin"].nunique() <= resin
-
-
-def test_factors_without_a_most_are_never_closed():
-    made = definition()
-    frame = candidate_frame(made, ())
-    levels = Levels(made, frame)
-    for candidate in range(0, len(frame), 5):
-        levels.use(candidate)
-    assert levels.open().all()

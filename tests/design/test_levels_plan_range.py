@@ -2,7 +2,8 @@
 
 import numpy as np
 
-from muntin.design.candidates import Levels, candidate_frame
+from muntin.design.candidates import candidate_frame
+from muntin.design.levels import Levels
 from tests.design.test_candidates import definition, run
 from tests.studies import PH, SALT
 

@@ -143,6 +143,18 @@ def test_looking_ahead_at_watched_points_only(posterior):
     np.testing.assert_allclose(part.after(wells), whole.after(wells)[:, watched], rtol=1e-6)
 
 
+def test_covariances_too_many_to_hold_are_computed_when_asked_for(posterior, monkeypatch):
+    held = outlook(posterior, picks=(3, 5)).after(np.array([0, 6, 3]))
+    monkeypatch.setattr("muntin.design.outlook._HELD", 10)
+    single = outlook(posterior, picks=(3, 5))
+    assert single._cross.dtype == np.float32
+    assert single.after(np.array([0, 6, 3])) == pytest.approx(held, rel=1e-5)
+    monkeypatch.setattr("muntin.design.outlook._HELD_SINGLE", 10)
+    free = outlook(posterior, picks=(3, 5))
+    assert free._cross is None
+    assert free.after(np.array([0, 6, 3])) == pytest.approx(held, rel=1e-12)
+
+
 def test_a_repeat_explains_less_than_the_first(posterior):
     first = outlook(posterior, [4]).explained
     second = outlook(posterior, [4, 4]).explained - first

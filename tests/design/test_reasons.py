@@ -7,6 +7,7 @@ import pytest
 from muntin.design.candidates import RunCondition
 from muntin.design.reasons import reasons
 from muntin.design.selection import Pick, Selection
+from muntin.design.terms import Terms, weighed
 from muntin.record.definition import Definition
 from tests.studies import PH, RESIN, SALT, tables
 
@@ -19,7 +20,8 @@ DEFINITION = Definition.model_validate(tables())
 
 
 def said(picks, p_mean, p_now=None, opening=False, definition=DEFINITION, candidates=CANDIDATES):
-    selection = Selection(candidates, tuple(picks), RUN, (0.1,))
+    offered = weighed(definition, candidates, Terms())
+    selection = Selection(offered, tuple(picks), RUN, (0.1,))
     now = p_mean if p_now is None else p_now
     return reasons(definition, selection, np.array(p_mean), np.array(now), opening)
 

@@ -8,7 +8,9 @@ import pytest
 
 import muntin
 from muntin.design.candidates import candidate_frame, run_conditions
-from muntin.design.selection import _future_groups, _Table, select
+from muntin.design.selection import select
+from muntin.design.terms import Terms, weighed
+from muntin.design.weighing import Weighing, future_groups
 from muntin.record.definition import Definition
 from muntin.window.coded import code
 from muntin.window.grid import judged_grid
@@ -142,7 +144,8 @@ def test_every_outlook_knows_every_well_taken(view):
     # The outlooks of the best aim are made when they are first needed, after other picks.
     definition = view.study.definition
     run = run_conditions(view.study)
-    table = _Table(view, candidate_frame(definition, run), run, 1)
+    offered = weighed(definition, candidate_frame(definition, run), Terms())
+    table = Weighing(view, offered, run, 1)
     none = np.zeros(0, dtype=np.intp)
     for well in (5, 40):
         table.take(well)
@@ -171,7 +174,7 @@ def test_wells_of_the_new_plate_share_what_they_will_share(by, groups):
     # Of a column that only run plates have, such as a bottle, the new plate has its own.
     definition = Definition.model_validate(tables())
     frame = pd.DataFrame({"ph": [5.0, 6.0, 5.0, 6.0], "salt": [50, 50, 100, 50], "plate": "new"})
-    assert _future_groups(definition, frame, by).tolist() == groups
+    assert future_groups(definition, frame, by).tolist() == groups
 
 
 def test_per_plate_holds_in_the_selection(view):

@@ -93,6 +93,13 @@ def test_only_the_errors_whose_size_changes_are_drawn_otherwise():
     assert changed == {"resin"}
 
 
+def test_plates_of_one_state_err_equally_whatever_stocks_feed_them():
+    few = ErrorSizes().draw(3, STAGES, np.random.default_rng(5), stocks=[0, 0, 0])
+    many = ErrorSizes().draw(9, STAGES, np.random.default_rng(5), stocks=list(range(9)))
+    assert few.load[0] == many.load[0] != 1.0
+    assert few.blank[0] == many.blank[0] != 0.0
+
+
 def test_a_read_scatters_by_its_floor_and_in_proportion():
     sizes = ErrorSizes(a280_floor=0.03, a280_cv=0.02)
     assert sizes.reading_sd(np.array([0.0, 2.0])) == pytest.approx([0.03, 0.05])

@@ -11,7 +11,7 @@ from muntin.record import StudyFaults, new_study, open_study
 from muntin.record.template import study_text, toml_value
 
 OPTIONAL = re.compile(r"#(\w+) = (.+)")
-CLASHING = {"choices", "plan_choices", "typical"}
+CLASHING = {"choices", "plan_choices", "typical", "load_factor", "resin_ul"}
 
 
 @pytest.mark.parametrize("factors", [1, 2, 6])

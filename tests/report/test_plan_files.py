@@ -9,6 +9,7 @@ import pandas as pd
 import pytest
 
 from muntin.bench.plan import Plan
+from muntin.design.stopping import Ruling
 from muntin.record import open_study
 from muntin.report.plan_files import plan_path, plan_table_text
 from tests.report.studies import small, write
@@ -42,6 +43,7 @@ def plan() -> Plan:
         seed=1,
         protein_mg=None,
         notices=(),
+        ruling=Ruling(word="none", because="no rule"),
     )
 
 

@@ -114,6 +114,7 @@ def test_nodes_about_draws(name):
     np.testing.assert_allclose(variance, few.latent(X).variance, rtol=1e-3, atol=1e-6)
     assert few.slopes(X).shape == (3, 2, 2)
     np.testing.assert_array_equal(few.errors.noise, part.errors.noise[some])
+    assert len(few.given) == len(set(part.node[some])) < len(part.given)
 
 
 def test_weights_within_a_node():

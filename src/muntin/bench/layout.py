@@ -6,7 +6,7 @@ and keep apart, repeats of a condition do not lie side by side.
 """
 
 from collections import Counter
-from collections.abc import Hashable, Iterable, Sequence
+from collections.abc import Hashable, Iterable, Mapping, Sequence
 from dataclasses import dataclass, field
 from typing import Literal
 
@@ -64,6 +64,7 @@ def lay_out(
     prepared_by: PreparedBy = "well",
     stocks: Sequence[Hashable] | None = None,
     conditions: Sequence[Hashable] | None = None,
+    fixed: Sequence[str | None] | None = None,
 ) -> tuple[str, ...]:
     """Give every row of a plan its final well.
 
@@ -92,6 +93,9 @@ def lay_out(
         Read only where `prepared_by` is `row` or `column`.
     conditions
         Key of the condition of each row; equal keys are repeats. None for a row without.
+    fixed
+        Well that a row has already, None for one that is to be found; the others keep to what
+        these leave.
 
     Returns
     -------
@@ -101,22 +105,25 @@ def lay_out(
     Raises
     ------
     ValueError
-        If there are more rows than free wells, if the stocks do not fit on separate lines, or
-        if `stocks` or `conditions` do not match `roles` in length.
+        If there are more rows than free wells, if the stocks do not fit on separate lines, if
+        fixed wells are not free or given twice, or if `stocks`, `conditions` or `fixed` do not
+        match `roles` in length.
     """
     free = _free_names(free_wells, plate)
     if len(roles) > len(free):
         raise ValueError(f"{len(roles)} rows need a well each, but only {len(free)} wells are free")
     needed_by = _per_row(stocks if prepared_by != "well" else None, len(roles), "stocks")
     places = well_indices(free, plate)
-    feeds, well_feeds = _feeds(needed_by, places, prepared_by, rng)
+    pinned = _pinned(_per_row(fixed, len(roles), "fixed wells"), free, plate)
+    feeds, well_feeds = _feeds(needed_by, places, prepared_by, pinned, rng)
     at_perimeter = np.isin(free, list(perimeter(plate)))
     keys = _repeat_keys(roles, _per_row(conditions, len(roles), "conditions"))
 
     best: list[int] = []
     fewest = len(roles) ** 2
     for _ in range(_ATTEMPTS):
-        wells = _Filling(places, at_perimeter, well_feeds, feeds, rng).fill(roles, keys)
+        filling = _Filling(places, at_perimeter, well_feeds, feeds, pinned, rng)
+        wells = filling.fill(roles, keys)
         crowding = _crowding(places[wells], roles, keys)
         if crowding < fewest or not best:
             best, fewest = wells.tolist(), crowding
@@ -142,10 +149,19 @@ def _per_row(values: Sequence[Hashable] | None, n: int, name: str) -> Sequence[H
     return values
 
 
+def _pinned(fixed: Sequence[Hashable], free: Sequence[str], plate: int) -> dict[int, int]:
+    """Return the well of each row that has one, as an index into the free wells."""
+    names = {row: normalise(str(name), plate) for row, name in enumerate(fixed) if name is not None}
+    if len(set(names.values())) < len(names) or not set(names.values()) <= set(free):
+        raise ValueError("fixed wells must be free, and each given once")
+    return {row: free.index(name) for row, name in names.items()}
+
+
 def _feeds(
     stocks: Sequence[Hashable],
     places: NDArray[np.int_],
     prepared_by: PreparedBy,
+    pinned: Mapping[int, int],
     rng: np.random.Generator,
 ) -> tuple[NDArray[np.int_], NDArray[np.int_]]:
     """Number the stocks and return the stock of each row and of each free well."""
@@ -153,11 +169,22 @@ def _feeds(
     number = {stock: k for k, stock in enumerate(demand)}
     of_rows = np.array([number.get(stock, _LOOSE) for stock in stocks], dtype=int)
     of_wells = np.full(len(places), _LOOSE)
-    if demand:
-        lines = places[:, 0 if prepared_by == "row" else 1]
-        free_on_line = np.bincount(lines).tolist()
-        for stock, own in share_lines(free_on_line, demand, rng).items():
-            of_wells[np.isin(lines, own)] = number[stock]
+    if not demand:
+        return of_rows, of_wells
+    lines = places[:, 0 if prepared_by == "row" else 1]
+    still_free = np.bincount(lines)
+    for row, well in pinned.items():
+        still_free[lines[well]] -= 1
+        if (stock := stocks[row]) is not None:
+            of_wells[lines == lines[well]] = number[stock]
+            demand[stock] -= 1
+    for line in np.unique(lines[of_wells != _LOOSE]).tolist():
+        owner = list(number)[int(of_wells[lines == line][0])]
+        demand[owner] -= int(still_free[line])
+        still_free[line] = 0
+    needs = {stock: count for stock, count in demand.items() if count > 0}
+    for stock, own in (share_lines(still_free.tolist(), needs, rng) if needs else {}).items():
+        of_wells[np.isin(lines, own)] = number[stock]
     return of_rows, of_wells
 
 
@@ -177,6 +204,7 @@ class _Filling:
     at_perimeter: NDArray[np.bool_]  # (wells,)
     well_feeds: NDArray[np.int_]  # (wells,)
     row_feeds: NDArray[np.int_]  # (rows,)
+    pinned: Mapping[int, int]  # well of each row that has one
     rng: np.random.Generator
     empty: NDArray[np.bool_] = field(init=False)
     waiting: NDArray[np.bool_] = field(init=False)
@@ -192,14 +220,18 @@ class _Filling:
 
         Returns the well of each row, shape (rows,).
         """
-        order = [int(row) for row in self.rng.permutation(len(roles))]
+        for row, well in self.pinned.items():
+            self._take(row, well)
+        order = [int(row) for row in self.rng.permutation(len(roles)) if self.waiting[row]]
         apart = [row for row in order if roles[row] != "test"]
         apart.sort(key=lambda row: self.row_feeds[row] == _LOOSE)  # stock-bound rows first
-        quota = int(self.at_perimeter.mean() * len(apart)) if apart else 0
-        for n, row in enumerate(apart):
-            inside = quota <= int(self.at_perimeter[self.well_of[apart[:n]]].sum())
-            weights = [1 if keys[other] == keys[row] else _APART_WEIGHT for other in apart[:n]]
-            self._take(row, self._farthest(self._open_to(row), apart[:n], weights, inside=inside))
+        placed = [row for row in self.pinned if roles[row] != "test"]
+        quota = int(self.at_perimeter.mean() * len(apart + placed)) if apart else 0
+        for row in apart:
+            inside = quota <= int(self.at_perimeter[self.well_of[placed]].sum())
+            weights = [1 if keys[other] == keys[row] else _APART_WEIGHT for other in placed]
+            self._take(row, self._farthest(self._open_to(row), placed, weights, inside=inside))
+            placed.append(row)
         count = Counter(key for key in keys if key is not None)
         tests = [row for row in order if roles[row] == "test"]
         tests.sort(key=lambda row: -count[keys[row]])

@@ -9,8 +9,11 @@ from muntin.commands.shared import Folder, Output, command
 def check(folder: Folder) -> Output:
     """Read a study and name every fault at once: file, row or well, column and the mend."""
     from muntin.record import open_study
+    from muntin.report.edit_record import plans_on_record
     from muntin.report.facts import study_facts
     from muntin.report.text import check_screen
 
     study = open_study(folder)
-    return Output({"command": "check", "study": study_facts(study)}, check_screen(study))
+    lines, plans = plans_on_record(study)
+    facts = {"command": "check", "study": study_facts(study), "plans": plans}
+    return Output(facts, check_screen(study, lines))

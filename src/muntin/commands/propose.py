@@ -2,6 +2,11 @@
 
 from __future__ import annotations
 
+from pathlib import Path
+from typing import TYPE_CHECKING, Annotated, Any
+
+import typer
+
 from muntin.commands.shared import (
     Aim,
     AimOption,
@@ -12,9 +17,31 @@ from muntin.commands.shared import (
     Surrogate,
     SurrogateOption,
     Tell,
-    Wells,
     command,
 )
+
+if TYPE_CHECKING:
+    from muntin.bench.plan import Plan
+    from muntin.record import Study
+
+_Wells = Annotated[
+    int | None,
+    typer.Option(
+        min=1,
+        help="test wells of the next plate, others come on top (24; with --keep those of the file)",
+    ),
+]
+_Keep = Annotated[
+    Path | None,
+    typer.Option(
+        metavar="FILE",
+        help="an edited plan: its rows stay, are scored again, and filled up to --wells",
+    ),
+]
+_By = Annotated[str | None, typer.Option(metavar="NAME", help="with --keep: who edited it")]
+_Because = Annotated[
+    str | None, typer.Option(metavar="TEXT", help="with --keep: why it was edited")
+]
 
 
 @command
@@ -22,37 +49,77 @@ def propose(
     folder: Folder,
     seed: int,
     tell: Tell,
-    wells: Wells = 24,
+    wells: _Wells = None,
+    keep: _Keep = None,
+    by: _By = None,
+    because: _Because = None,
     aim: AimOption = Aim.edge,
     surrogate: SurrogateOption = Surrogate.stacked,
     engine: EngineOption = Engine.fast,
 ) -> Output:
     """Plan the next plate: conditions at final wells, each with a reason; write it to plans/."""
     from muntin.bench.plan import propose as plan_next
-    from muntin.record import open_study
+    from muntin.record import keep_stop_rule, open_study
     from muntin.report.facts import plan_facts, study_facts
-    from muntin.report.plan_files import plan_table_text, write_plan
     from muntin.report.text import propose_screen
     from muntin.window.assessment import assess
 
+    _check_words(keep, by, because)
     tell("reading the study")
     study = open_study(folder)
     bar = tell.fitting(engine)
     view = assess(study, surrogate=surrogate.value, engine=engine.value, seed=seed, progress=bar)
     tell("planning the next plate")
-    plan = plan_next(view, wells=wells, aim=aim.value, seed=seed)
-    path, remark = write_plan(study.folder, plan.plate, plan_table_text(study.definition, plan))
+    plan = plan_next(view, wells=wells, aim=aim.value, seed=seed, keep=keep)
+    files = _written(study, plan, by, because)
+    keep_stop_rule(study)
     facts = {
         "command": "propose",
         "settings": {
-            "wells": wells,
+            "wells": int((plan.wells["role"] == "test").sum()),
             "aim": aim.value,
             "surrogate": surrogate.value,
             "engine": engine.value,
             "seed": seed,
         },
         "study": study_facts(study),
-        "plan": plan_facts(plan),
-        "files": {"plan": str(path), "remark": remark},
+        "plan": plan_facts(study, plan),
+        "files": files,
     }
-    return Output(facts, propose_screen(view, plan, path, remark))
+    screen = propose_screen(view, plan, Path(files["plan"]), files["remark"])
+    return Output(facts, screen)
+
+
+def _check_words(keep: Path | None, by: str | None, because: str | None) -> None:
+    """Raise StudyFaults where words on an edit are given, and no edited plan."""
+    from muntin.record import Fault, StudyFaults
+
+    given = {"--by": by, "--because": because}
+    problem = "tells of an edited plan; name it with --keep"
+    faults = [
+        Fault(file="muntin propose", value=name, problem=problem)
+        for name, value in given.items()
+        if value is not None and keep is None
+    ]
+    if faults:
+        raise StudyFaults(faults)
+
+
+def _written(study: Study, plan: Plan, by: str | None, because: str | None) -> dict[str, Any]:
+    """Write the plan, and the record of what was changed in it; return where, and a remark."""
+    from muntin.record.edits import record_path
+    from muntin.report.advice_files import hashes, read_inputs
+    from muntin.report.edit_record import edit_text
+    from muntin.report.plan_files import edited_path, plan_table_text, write_edited, write_plan
+
+    text = plan_table_text(study.definition, plan)
+    if plan.edit is None:
+        path, remark = write_plan(study.folder, plan.plate, text)
+        return {"plan": str(path), "remark": remark}
+    path = edited_path(study.folder, plan.plate)
+    inputs = hashes(read_inputs(study.folder))
+    record = edit_text(study, plan, plan.edit, path, text, by=by, because=because, inputs=inputs)
+    write_edited(path, text, record)
+    own = f"{plan.plate}.csv"
+    remark = "" if path.name == own else f"Rename it to {own} when you move it to plates/."
+    return {"plan": str(path), "record": str(record_path(path)), "remark": remark}

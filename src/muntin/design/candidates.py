@@ -3,13 +3,13 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
-from typing import Any
 
 import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
 from muntin.record.definition import Definition
+from muntin.record.limits import sample_conditions
 from muntin.record.readings import USED
 from muntin.record.study import Study
 from muntin.window.grid import judged_grid
@@ -37,7 +37,8 @@ def run_conditions(study: Study) -> tuple[RunCondition, ...]:
     for *values, plate, well, role in zip(
         *targets, frame["plate"], frame["well"], frame["role"], strict=True
     ):
-        found.setdefault(tuple(values), []).append((plate, well, role))
+        plain = tuple(round(v, 9) if isinstance(v, float) else v for v in values)
+        found.setdefault(plain, []).append((plate, well, role))
     return tuple(
         RunCondition(
             values, tuple((p, w) for p, w, _ in wells), any(r == "bridge" for *_, r in wells)
@@ -56,6 +57,8 @@ def candidate_frame(
     """
     names = list(definition.factor_names)
     grid, _ = judged_grid(definition, most, planned=True)
+    if definition.forbidden:
+        grid = _not_forbidden(definition, grid)
     if not run:
         grid = _spread(definition, grid)
     again = pd.DataFrame([r.values for r in run], columns=names)
@@ -63,6 +66,14 @@ def candidate_frame(
         again = again[plannable(definition, again)]
         grid = pd.concat([again.astype(grid.dtypes.to_dict()), grid], ignore_index=True)
     return grid.drop_duplicates(ignore_index=True)
+
+
+def _not_forbidden(definition: Definition, grid: pd.DataFrame) -> pd.DataFrame:
+    """The conditions that are not forbidden; where a coarse grid has none, those of every step."""
+    if definition.forbids(grid).all():
+        grid = sample_conditions(definition.factors, planned=True)
+        grid = grid[definition.allowed(grid)].drop_duplicates()
+    return grid[~definition.forbids(grid)].reset_index(drop=True)
 
 
 def _spread(definition: Definition, grid: pd.DataFrame) -> pd.DataFrame:
@@ -80,8 +91,10 @@ def _spread(definition: Definition, grid: pd.DataFrame) -> pd.DataFrame:
 
 
 def plannable(definition: Definition, frame: pd.DataFrame) -> NDArray[np.bool_]:
-    """Which rows of a frame (raw units) a new plan may run: on plan levels, inside the limits."""
-    keep = definition.allowed(frame)
+    """Which rows of a frame (raw units) a new plan may run: on plan levels, inside the limits, not
+    forbidden.
+    """
+    keep = definition.allowed(frame) & ~definition.forbids(frame)
     for factor in definition.factors:
         levels, values = factor.plan_levels(), frame[factor.name]
         if factor.continuous:
@@ -91,44 +104,3 @@ def plannable(definition: Definition, frame: pd.DataFrame) -> NDArray[np.bool_]:
         else:
             keep &= values.isin(levels).to_numpy()
     return np.asarray(keep, dtype=bool)
-
-
-@dataclass
-class Levels:
-    """The distinct levels that a plan uses of each factor with `per_plate`.
-
-    A new level keeps its distance from those in use, a third of what even spreading would give:
-    two stocks a bench step apart tell hardly more than one.
-    """
-
-    definition: Definition
-    frame: pd.DataFrame
-
-    def __post_init__(self) -> None:
-        """Start with no level in use."""
-        limited = [f for f in self.definition.factors if f.per_plate is not None]
-        self._most = {f.name: f.per_plate or 0 for f in limited}
-        self._used: dict[str, set[Any]] = {name: set() for name in self._most}
-
-    def use(self, candidate: int) -> None:
-        """Count the levels of a candidate in the plan."""
-        for name, used in self._used.items():
-            used.add(self.frame[name].iloc[candidate])
-
-    def open(self) -> NDArray[np.bool_]:
-        """Which candidates need no level more than the plate may have."""
-        keep = np.ones(len(self.frame), dtype=bool)
-        for factor in self.definition.factors:
-            used = self._used.get(factor.name)
-            if not used:
-                continue
-            again = self.frame[factor.name].isin(used).to_numpy()
-            if len(used) >= self._most[factor.name]:
-                keep &= again
-            elif factor.continuous:
-                levels = factor.plan_levels()
-                apart = (levels[-1] - levels[0]) / (3.0 * self._most[factor.name])
-                x = self.frame[factor.name].to_numpy(dtype=float)
-                away = np.abs(x[:, None] - np.array(sorted(used), dtype=float)).min(axis=1)
-                keep &= again | (away >= apart)
-        return keep

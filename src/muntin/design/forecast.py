@@ -55,11 +55,11 @@ def wrong_share(outlooks: Sequence[Outlook], today: Sequence[Tails]) -> float:
 
     rho = [_explained_share(o) for o in outlooks]
     if len(outlooks) == 1 and (today[0].above is None or today[0].below is None):
-        return float(expected_wrong(_score(today[0].meets), rho[0]).mean())
+        return float(expected_wrong(score(today[0].meets), rho[0]).mean())
     points = Sobol(len(outlooks), rng=np.random.default_rng(0)).random(_DRAWS)
     joint = np.ones((_DRAWS, len(outlooks[0].judged)))
     for r, tails in enumerate(today):
-        above, below = _score(tails.above), _score(tails.below)
+        above, below = score(tails.above), score(tails.below)
         shift = ndtri(np.clip(points[:, [r]], 1e-6, 1.0 - 1e-6)) * np.sqrt(rho[r])
         left = np.sqrt(1.0 - rho[r])
         both = ndtr((above + shift) / left) + ndtr((below - shift) / left) - 1.0
@@ -67,7 +67,7 @@ def wrong_share(outlooks: Sequence[Outlook], today: Sequence[Tails]) -> float:
     return float(np.minimum(joint, 1.0 - joint).mean())
 
 
-def _score(p: Array | None) -> Array:
+def score(p: Array | None) -> Array:
     """Standard normal score of a chance; infinite where there is no limit."""
     from scipy.special import ndtri
 

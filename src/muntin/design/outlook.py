@@ -7,6 +7,7 @@ plateau tells little of its logit, and what its setting errors make of f.
 
 from __future__ import annotations
 
+from copy import copy
 from dataclasses import dataclass, field
 
 import numpy as np
@@ -19,6 +20,10 @@ Array = NDArray[np.float64]
 Index = NDArray[np.intp]
 _Z, _W = np.polynomial.hermite_e.hermegauss(15)
 _W = _W / _W.sum()
+# Covariances of watched points and candidates up to so many are held, 240 MB; up to so many in
+# single precision, 600 MB; more are computed anew for the candidates that are asked for.
+_HELD, _HELD_SINGLE = 30_000_000, 150_000_000
+_CHUNK = 100
 
 
 @dataclass
@@ -27,7 +32,7 @@ class Outlook:
 
     surface: S nodes of the response. judged (P, D) and candidates (Q, D): coded. groups: for each
     inside error and each scale error the group number (Q,) a candidate would fall into on the new
-    plate. watched: numbers of the judged points whose covariance with every candidate is held.
+    plate. watched: numbers of the judged points over which a candidate is weighed.
     setting (Q, D): sd with which the bench sets each coded column of a candidate; None says 0.
     """
 
@@ -50,7 +55,8 @@ class Outlook:
         self._reading()
         self._up: list[Array] = []
         self._uq: list[Array] = []
-        self._cross = self.surface.covariance(self.judged[self.watched], self.candidates)
+        self._at_watched = np.zeros((*self.mean[:, self.watched].shape, 0))
+        self._cross = self._held()
         errors = self.surface.errors
         spread = self.well_variance + self.noise + (errors.inside**2).sum(1)[:, None]
         self.reading_variance = spread + self.lever**2 * (errors.scale**2).sum(1)[:, None]
@@ -71,12 +77,36 @@ class Outlook:
         if self.setting is not None and self.setting.any():
             self.noise = self.noise + self.surface.wander(self.candidates, self.setting)
 
+    def _held(self) -> NDArray[np.floating] | None:
+        """Covariances (Q, S, W) of f today, where they are few enough to hold."""
+        shape = (len(self.candidates), len(self.mean), len(self.watched))
+        size = np.prod(shape)
+        if size > _HELD_SINGLE:
+            return None
+        cross = np.empty(shape, dtype=float if size <= _HELD else np.float32)
+        for start in range(0, len(cross), _CHUNK):
+            wells = slice(start, start + _CHUNK)
+            cross[wells] = np.moveaxis(self._covariance(wells), -1, 0)
+        return cross
+
+    def _covariance(self, wells: Index | slice) -> Array:
+        """Covariance (S, W, k) of f today at the watched points and at candidates."""
+        return self.surface.covariance(self.judged[self.watched], self.candidates[wells])
+
+    def branch(self) -> Outlook:
+        """The same state; picks of either leave the other as it is."""
+        other = copy(self)
+        other._up, other._uq = [*self._up], [*self._uq]
+        return other
+
     def after(self, wells: Index) -> Array:
         """Variance (S, W, k) that would be explained at the watched points by one more well."""
-        c = self._cross[:, :, wells]
+        if self._cross is None:
+            c = self._covariance(wells)
+        else:
+            c = np.moveaxis(self._cross[wells].astype(float, copy=False), 0, -1)
         if self._up:
-            up = np.stack([u[:, self.watched] for u in self._up], axis=2)
-            c = c - up @ np.stack([u[:, wells] for u in self._uq], axis=1)
+            c = c - self._at_watched @ np.stack([u[:, wells] for u in self._uq], axis=1)
         gained = c**2 / self.reading_variance[:, None, wells]
         return self.explained[:, self.watched, None] + gained
 
@@ -109,6 +139,7 @@ class Outlook:
         self.reading_variance = np.maximum(self.reading_variance - uq**2, self.noise)
         self._up.append(up)
         self._uq.append(uq)
+        self._at_watched = np.stack([u[:, self.watched] for u in self._up], axis=2)
 
     def _shared(self, well: int) -> Array:
         """Covariance (S, Q) that candidates share with a well through the new plate's errors."""

@@ -158,8 +158,9 @@ class ErrorSizes:
             first, second = normal(2, places.max(initial=-1) + 1)
             return first[places], second[places]
 
-        stock_ph, stock_salt = shared(stocks)
+        # Plates come first, so that those of one state err equally whatever stocks feed them.
         load, blank = shared(plates)
+        stock_ph, stock_salt = shared(stocks)
         stock_factor = _factor(self.stock_salt_cv, stock_salt)
         return Errors(
             ph=self.stock_ph_sd * stock_ph + self.ph_sd * normal(wells),

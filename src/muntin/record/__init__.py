@@ -4,7 +4,7 @@ from muntin.record.definition import Definition
 from muntin.record.faults import Fault, StudyFaults
 from muntin.record.files import write_atomic
 from muntin.record.notes import Plate
-from muntin.record.study import Counts, Study, open_study
+from muntin.record.study import Counts, Study, keep_stop_rule, open_study
 from muntin.record.template import new_study
 
 __all__ = [
@@ -14,6 +14,7 @@ __all__ = [
     "Plate",
     "Study",
     "StudyFaults",
+    "keep_stop_rule",
     "new_study",
     "open_study",
     "write_atomic",

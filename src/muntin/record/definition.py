@@ -11,7 +11,8 @@ import pandas as pd
 from muntin.record.factors import Factor, factor_faults
 from muntin.record.faults import Fault, did_you_mean, number, quoted
 from muntin.record.keys import Keys, Number, NumberOrText, Text, Truths, Whole, key
-from muntin.record.limits import Limit, limit_faults
+from muntin.record.limits import Forbidden, Limit, forbidden_faults, limit_faults
+from muntin.record.protein import Protein, protein_faults
 from muntin.record.responses import Response, response_faults
 from muntin.record.wells import WellError, all_wells, last_well, wells_in
 
@@ -58,16 +59,6 @@ class SharedError(Keys):
     )
 
 
-class Protein(Keys):
-    """What there is to load."""
-
-    available_mg: Number = key(says="protein at hand", unit="mg", example=40.0, gt=0)
-    reserved_mg: Number = key(
-        0.0, says="kept back for column confirmation", unit="mg", example=10.0, ge=0
-    )
-    per_well_mg: Number = key(says="used by one well", unit="mg", example=0.25, gt=0)
-
-
 class PlanRules(Keys):
     """How new plates are planned."""
 
@@ -88,6 +79,28 @@ class PlanRules(Keys):
     prepared_by: Literal["row", "column", "well"] = key(
         "well", says='how stocks reach the plate: by "row", "column" or "well"', example="well"
     )
+    days_per_plate: Number | None = key(
+        None,
+        says="from pipetting a plate to its last plate read, assays that queue not counted",
+        unit="days",
+        example=2.0,
+        gt=0,
+    )
+    assays_per_well: Number | None = key(
+        None,
+        says="assay slots (chromatography runs, wells of an assay plate) that one test or bridging "
+        "well takes",
+        unit="slots",
+        example=1.0,
+        gt=0,
+    )
+    assays_per_day: Number | None = key(
+        None,
+        says="assay slots that are free a day, where results wait for them; needs assays_per_well",
+        unit="slots",
+        example=96.0,
+        gt=0,
+    )
 
 
 class StopRule(Keys):
@@ -103,6 +116,12 @@ class StopRule(Keys):
     best_probability: Number | None = key(
         None, says="stop when the set point reaches this probability", example=0.95, gt=0, lt=1
     )
+    changed_because: Text | None = key(
+        None,
+        says="why this rule differs from the one recorded before data; without a reason the "
+        "recorded rule holds",
+        example="the next step takes what a lower recovery leaves",
+    )
 
 
 class Definition(Keys):
@@ -112,6 +131,9 @@ class Definition(Keys):
     factors: tuple[Factor, ...] = key((), says="what is varied, 1 to 6")
     responses: tuple[Response, ...] = key((), says="what is measured, 1 to 6")
     limits: tuple[Limit, ...] = key((), says="combinations that may be run")
+    forbidden: tuple[Forbidden, ...] = key(
+        (), says="conditions that new plans never use, though they stay in the range that is judged"
+    )
     shared_errors: tuple[SharedError, ...] = key(
         (SharedError(by=("plate",), acts="scale"),),
         says='errors that several wells share; where absent, one: by = ["plate"], acts = "scale". '
@@ -157,6 +179,12 @@ class Definition(Keys):
         return tuple(factor.name for factor in self.factors)
 
     @property
+    def stock_factors(self) -> tuple[str, ...]:
+        """Factors that make a prepared stock: those with per_plate, else the first."""
+        limited = tuple(f.name for f in self.factors if f.per_plate is not None)
+        return limited or self.factor_names[:1]
+
+    @property
     def free_wells(self) -> tuple[str, ...]:
         """Wells that new plans may use, row by row."""
         if self.plan.free_wells is None:
@@ -170,6 +198,13 @@ class Definition(Keys):
             held &= limit.holds(frame)
         return held
 
+    def forbids(self, frame: pd.DataFrame) -> Truths:
+        """Return which rows of `frame` (a column a factor, raw units) no new plan may use."""
+        barred = np.zeros(len(frame), dtype=bool)
+        for forbidden in self.forbidden:
+            barred |= forbidden.covers(frame)
+        return barred
+
 
 def definition_faults(definition: Definition) -> list[Fault]:
     """Return everything that is wrong between the keys of a study definition."""
@@ -180,6 +215,7 @@ def definition_faults(definition: Definition) -> list[Fault]:
     faults += _judging_faults(definition)
     if definition.factors and not own:
         faults += limit_faults(definition.limits, definition.factors)
+        faults += forbidden_faults(definition.forbidden, definition.limits, definition.factors)
     return [*faults, *_shared_faults(definition), *_plan_faults(definition)]
 
 
@@ -266,14 +302,14 @@ def _touched_faults(definition: Definition, shared: SharedError, where: str) -> 
 
 
 def _plan_faults(definition: Definition) -> Iterator[Fault]:
-    protein = definition.protein
-    if protein is not None and protein.reserved_mg >= protein.available_mg:
+    if definition.protein is not None:
+        yield from protein_faults(definition.protein, definition.factors)
+    if definition.plan.assays_per_day is not None and definition.plan.assays_per_well is None:
         yield Fault(
             file=STUDY_FILE,
-            where="protein, reserved_mg",
-            value=number(protein.reserved_mg),
-            problem="must lie below available_mg, which is",
-            allowed=number(protein.available_mg),
+            where="plan, assays_per_day",
+            value=number(definition.plan.assays_per_day),
+            problem="needs assays_per_well beside it",
         )
     if definition.plan.free_wells is not None:
         try:

@@ -50,7 +50,7 @@ def read_levels(
     of_stock = stock_values(factor, targets, stocks, plate, found)
     _check_targets(table, factor, targets, needed, found)
     _check_measured(table, factor, measured, needed, found)
-    _check_stocks(factor, stocks, found)
+    check_stocks(factor, stocks, found)
     measured = np.where(np.isfinite(measured), measured, of_stock)
     found.notices.extend(_off_target(table, factor, targets, measured, needed))
     known = np.isfinite(measured)
@@ -100,7 +100,8 @@ def _check_measured(
         found.faults.append(_outside(table, row, column, _measured_text(factor), rule))
 
 
-def _check_stocks(factor: Factor, stocks: Sequence[Stock], found: Findings) -> None:
+def check_stocks(factor: Factor, stocks: Sequence[Stock], found: Findings) -> None:
+    """Report the stocks of a factor that measured more than a step outside its range."""
     low, high = _measured_range(factor)
     slack = 1e-9 * (high - low)
     for stock in stocks:

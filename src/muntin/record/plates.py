@@ -101,7 +101,7 @@ def read_plate(
     name: str, table: Table, definition: Definition, stocks: Sequence[Stock], found: Findings
 ) -> PlateRows:
     """Return the wells of one plate; `stocks` are those measured for it."""
-    roles = _roles(table, found)
+    roles = read_roles(table, found)
     excluded = reasons(table, "exclude", found.faults)
     needed = np.array(
         [role in INFORMING and not why for role, why in zip(roles, excluded, strict=True)], bool
@@ -125,7 +125,8 @@ def read_plate(
     return PlateRows(columns, readings, others, tuple(np.flatnonzero(needed).tolist()))
 
 
-def _roles(table: Table, found: Findings) -> list[str]:
+def read_roles(table: Table, found: Findings) -> list[str]:
+    """Return the role of each row of a table, `test` where none is given."""
     roles = []
     for row, cell in enumerate(table.cells("role")):
         role = cell.lower().replace(" ", "_").replace("-", "_") or "test"

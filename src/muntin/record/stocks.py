@@ -44,6 +44,19 @@ def read_stocks(
     return stocks
 
 
+def planned_stocks(
+    folder: Path, factors: Sequence[Factor], plate: str, found: Findings
+) -> tuple[Stock, ...]:
+    """Return the stocks measured for a plate that is planned, not run; none where no file is."""
+    by_name = {factor.name: factor for factor in factors}
+    passed_over = Findings()
+    for stem, path in table_files(folder / "stocks", passed_over):
+        table = read_table(path, f"stocks/{path.name}", COLUMNS, found) if stem == plate else None
+        if table is not None:
+            return tuple(_stocks(table, by_name, found))
+    return ()
+
+
 def _stocks(table: Table, factors: Mapping[str, Factor], found: Findings) -> list[Stock]:
     lacking = [name for name in COLUMNS[:3] if name not in table.columns]
     found.faults.extend(missing_column(table, name) for name in lacking)

@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
+from datetime import UTC, date, datetime
 from pathlib import Path
 
 import pandas as pd
@@ -17,6 +18,13 @@ from muntin.record.plates import PlateRows, open_plate, outside_limits, read_pla
 from muntin.record.readings import INFORMING, USED, Reading
 from muntin.record.results import Run, join_results
 from muntin.record.stocks import read_stocks
+from muntin.record.stop_rule import (
+    RecordedStop,
+    Standing,
+    read_stops,
+    record_stop,
+    standing_rule,
+)
 from muntin.record.tables import Table, table_files
 from muntin.record.toml_files import parse, read_toml
 from muntin.record.wells_table import (
@@ -54,7 +62,8 @@ class Study:
     `wells` has a row a well of every plate, void ones too: plate, well, role; each factor (the
     value the model uses, raw unit), its _target and whether it was _measured; each response in the
     user's unit (the limit of a censored reading) with its _sd, _state, _side (-1 below the limit, 1
-    above, else 0) and _exclude; exclude; then the columns that passed through.
+    above, else 0) and _exclude; exclude; then the columns that passed through. `stops` are the
+    stop rules on record, oldest first.
     """
 
     folder: Path
@@ -62,6 +71,14 @@ class Study:
     wells: pd.DataFrame
     plates: tuple[Plate, ...]
     notices: tuple[str, ...]
+    stops: tuple[RecordedStop, ...] = ()
+
+    @property
+    def stopping(self) -> Standing:
+        """The stop rule that holds, and what is to be recorded and said of it."""
+        states = [f"{response.name}_state" for response in self.definition.responses]
+        read = self.informing()[states].isin(USED).any(axis=1)
+        return standing_rule(self.definition.stop, self.stops, int(read.sum()))
 
     @property
     def void(self) -> tuple[Plate, ...]:
@@ -138,11 +155,28 @@ def open_study(path: str | Path) -> Study:
     if definition is None:
         raise StudyFaults(found.faults)
     wells = _read_wells(folder, definition, plates, tables, found)
+    stops = read_stops(folder, found)
     if found.faults:
         raise StudyFaults(found.faults)
-    notices = tuple(found.notices)
-    counted = tuple(plates.values())
-    return Study(folder=folder, definition=definition, wells=wells, plates=counted, notices=notices)
+    study = Study(
+        folder=folder,
+        definition=definition,
+        wells=wells,
+        plates=tuple(plates.values()),
+        notices=tuple(found.notices),
+        stops=stops,
+    )
+    told = study.stopping.notice
+    return replace(study, notices=(told, *study.notices)) if told else study
+
+
+def keep_stop_rule(study: Study, today: date | None = None) -> Path | None:
+    """Record the stop rule that holds where it is not on record yet; return the file written.
+
+    Raises StudyFaults where the folder cannot be written.
+    """
+    day = datetime.now(UTC).date() if today is None else today
+    return record_stop(study.folder, study.stopping, study.stops, day)
 
 
 def _check_folder(folder: Path) -> None:

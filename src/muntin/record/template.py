@@ -15,7 +15,6 @@ from muntin.record.definition import (
     STUDY_FILE,
     Definition,
     PlanRules,
-    Protein,
     SharedError,
     StopRule,
     StudyTable,
@@ -23,7 +22,8 @@ from muntin.record.definition import (
 from muntin.record.factors import Factor
 from muntin.record.faults import Fault, StudyFaults
 from muntin.record.files import write_atomic
-from muntin.record.limits import Limit
+from muntin.record.limits import Forbidden, Limit
+from muntin.record.protein import Protein
 from muntin.record.responses import Response
 from muntin.record.tables import SUFFIXES
 
@@ -90,6 +90,7 @@ def study_text(factors: int = 2) -> str:
         *(_bare("[[factors]]", given) for given in _FACTORS[1:factors]),
         _table("[[responses]]", "responses", Response, _RESPONSE),
         _table("[[limits]]", "limits", Limit),
+        _table("[[forbidden]]", "forbidden", Forbidden),
         _table("[[shared_errors]]", "shared_errors", SharedError),
         _table("[protein]", "protein", Protein),
         _table("[plan]", "plan", PlanRules),

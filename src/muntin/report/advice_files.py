@@ -17,6 +17,7 @@ from typing import Any
 from muntin.record.definition import STUDY_FILE
 from muntin.record.faults import Fault, StudyFaults
 from muntin.record.files import write_atomic
+from muntin.record.stop_rule import STOP_FILE
 from muntin.report.facts import plain
 from muntin.report.plan_files import ADVICE, PLAN_COPY, plan_path
 
@@ -26,8 +27,11 @@ _PACKAGES = ("muntin", "numpy", "scipy", "pandas")
 
 
 def input_paths(folder: Path) -> list[Path]:
-    """Return the input files of a study: study.toml, then plates, results and stocks."""
-    paths = [folder / STUDY_FILE]
+    """Return the input files of a study: study.toml, the stop rule on record, then plates, results
+    and stocks.
+    """
+    recorded = folder / STOP_FILE
+    paths = [folder / STUDY_FILE, *([recorded] if recorded.is_file() else [])]
     for name, endings in _INPUTS.items():
         here = sorted((folder / name).iterdir()) if (folder / name).is_dir() else []
         paths += [

@@ -11,12 +11,14 @@ import numpy as np
 import pandas as pd
 
 from muntin.record.study import Study
+from muntin.report.ruling_text import ruling_facts
 from muntin.report.words import WINDOW
 from muntin.window.assessment import Assessment
 from muntin.window.checks import Check
 from muntin.window.window import Window
 
 if TYPE_CHECKING:
+    from muntin.bench.edit import Edit
     from muntin.bench.plan import Plan
     from muntin.surrogate.convergence import Sampling
 
@@ -122,8 +124,10 @@ def _window(view: Assessment, window: Window) -> Facts:
     return facts
 
 
-def plan_facts(plan: Plan) -> Facts:
-    """Return the plan with its forecast."""
+def plan_facts(study: Study, plan: Plan) -> Facts:
+    """Return the plan with its forecast and the verdict on it, and what was changed in it where it
+    was edited.
+    """
     return {
         "plate": plan.plate,
         "aim": plan.aim,
@@ -132,6 +136,23 @@ def plan_facts(plan: Plan) -> Facts:
         "notices": list(plan.notices),
         "wells": records(plan.wells),
         "forecast": records(plan.forecast),
+        "verdict": ruling_facts(study, plan),
+        "edit": None if plan.edit is None else edit_facts(plan.edit),
+    }
+
+
+def edit_facts(edit: Edit) -> Facts:
+    """Return what was changed in an edited plan."""
+    offer = edit.offer
+    return {
+        "kept": edit.kept.file,
+        "offered": None if offer is None else offer.file,
+        "offered_wells": edit.offered_wells,
+        "offered_wrong_share": edit.offered_share,
+        "changes": [
+            asdict(scored.change) | {"p_was": scored.p_was, "p_now": scored.p_now}
+            for scored in edit.changes
+        ],
     }
 
 

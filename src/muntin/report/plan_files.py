@@ -5,18 +5,22 @@ from __future__ import annotations
 import csv
 import io
 import re
+from collections.abc import Mapping
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 import pandas as pd
 
 from muntin.record.definition import Definition
+from muntin.record.edits import record_path
+from muntin.record.faults import StudyFaults
 from muntin.record.files import write_atomic
+from muntin.record.offers import OFFERED, PLANS
 
 if TYPE_CHECKING:
     from muntin.bench.plan import Plan
 
-PLANS, ADVICE = "plans", "advice"
+ADVICE = "advice"
 PLAN_COPY = "plan.csv"
 
 
@@ -35,6 +39,7 @@ def plan_table_text(definition: Definition, plan: Plan) -> str:
     """Return the plan as a plate table (.csv), well by well along the rows of the plate."""
     stream = io.StringIO()
     columns = plan_columns(definition)
+    columns += [str(name) for name in plan.wells if name not in columns]
     writer = csv.DictWriter(stream, columns, restval="", lineterminator="\n")
     writer.writeheader()
     rows = plan.wells.to_dict("records")
@@ -50,7 +55,8 @@ def _position(well: str) -> tuple[int, str, int]:
 
 
 def _cells(definition: Definition, row: dict[Any, Any]) -> dict[str, str]:
-    cells = {"well": row["well"], "role": row["role"], "reason": row["reason"] or ""}
+    cells = {str(name): "" if pd.isna(value) else str(value) for name, value in row.items()}
+    cells |= {"well": row["well"], "role": row["role"], "reason": row["reason"] or ""}
     for factor in definition.factors:
         value = row[factor.name]
         empty = value is None or value == "" or pd.isna(value)
@@ -96,7 +102,45 @@ def _untouched(folder: Path, plate: str, path: Path, text: str) -> str | None:
 
 
 def write_plan(folder: Path, plate: str, text: str) -> tuple[Path, str]:
-    """Write a plan into plans/; return its path and a remark. Raises StudyFaults."""
+    """Write a plan into plans/, and a copy of it into plans/offered/, which is to stay as it is;
+    return its path and a remark. Raises StudyFaults.
+    """
     path, remark = plan_path(folder, plate, text)
-    write_atomic(path, text)
+    _write_together({offered_path(path): text, path: text})
     return path, remark
+
+
+def offered_path(plan: Path) -> Path:
+    """Where the copy of a plan lies that tells what was offered."""
+    return plan.parent / OFFERED / plan.name
+
+
+def edited_path(folder: Path, plate: str) -> Path:
+    """Return a name for an edited plan under which nothing lies yet: no plan, copy or record."""
+    path, number = folder / PLANS / f"{plate}.csv", 1
+    while any(p.exists() for p in (path, offered_path(path), record_path(path))):
+        number += 1
+        path = path.with_name(f"{plate}.r{number}.csv")
+    return path
+
+
+def write_edited(path: Path, text: str, record: str) -> None:
+    """Write an edited plan, its copy and its record; all of them or, with StudyFaults, none."""
+    _write_together({record_path(path): record, offered_path(path): text, path: text})
+
+
+def _write_together(files: Mapping[Path, str]) -> None:
+    """Write files, all of them or, with StudyFaults, none: what was there is put back."""
+    before: dict[Path, bytes | None] = {}
+    try:
+        for file, content in files.items():
+            there = file.read_bytes() if file.is_file() else None
+            write_atomic(file, content)
+            before[file] = there
+    except StudyFaults:
+        for file, there in before.items():
+            if there is None:
+                file.unlink(missing_ok=True)
+            else:
+                write_atomic(file, there)
+        raise

@@ -9,22 +9,36 @@ from collections import Counter
 from collections.abc import Sequence
 from typing import TYPE_CHECKING
 
-import numpy as np
 import pandas as pd
 from rich.console import Console, RenderableType
 from rich.table import Table
 from rich.text import Text
 
+from muntin.design.stopping import asked_of_set_point
 from muntin.record.definition import Definition
 from muntin.record.factors import Factor
 from muntin.record.faults import counted
-from muntin.report.words import amount_text, axis_label, condition_text, share_text
+from muntin.record.offers import without_measured
+from muntin.record.study import Study
+from muntin.report.words import (
+    amount_text,
+    axis_label,
+    condition_text,
+    likely_text,
+    per_cent,
+    share_text,
+)
 
 if TYPE_CHECKING:
     from muntin.bench.plan import Plan
 
 _ROLES = {"test": "test well", "bridge": "bridging well", "reference": "reference well"}
-_POINTS = 7
+_OUTLAY = {
+    "plates": "plates",
+    "mg": "protein, mg",
+    "assays": "assay slots",
+    "days": "days",
+}
 _TIES = ": ties plates"
 _NARROW, _WHY = 12, 20
 _WIDTH, _GAP = 90, 2
@@ -215,21 +229,30 @@ def _why(rows: pd.DataFrame, factors: Sequence[Factor]) -> str:
     openness = (rows["p_now"] - 0.5).abs().round(6)
     first = rows.assign(open=openness).sort_values(["open", "reason"])["reason"].iloc[0]
     setting = "|".join(re.escape(f.label) for f in factors)
-    return re.sub(rf"probability [0-9.]+, | at ({setting}) \S+$", "", str(first))
+    return re.sub(rf"probability [0-9.]+, | at ({setting}) \S+$", "", without_measured(str(first)))
 
 
-def forecast_table(plan: Plan) -> Table:
-    """Return the forecast at a few numbers of test wells: milligrams and share called wrongly."""
-    forecast = plan.forecast
-    rows = np.unique(np.linspace(0, len(forecast) - 1, _POINTS).round().astype(int))
+def forecast_table(study: Study, plan: Plan, full: bool = True) -> Table:
+    """Return the forecast: what so many test wells take, and what they are expected to bring.
+
+    In short plates are left out, and of the set point only that is said which the stop rule asks.
+    """
+    forecast, rule = plan.forecast, study.stopping.rule
     table = _plain_table()
     table.add_column("test wells")
-    for row in rows:
-        table.add_column(f"{int(forecast['wells'].iloc[row])}", justify="right")
-    if "mg" in forecast:
-        table.add_row("protein, mg", *(f"{mg:.3g}" for mg in forecast["mg"].iloc[rows]))
-    shares = forecast["wrong_share"].iloc[rows]
-    table.add_row("may be called wrongly", *map(share_text, shares))
+    for wells in forecast["wells"]:
+        table.add_column(f"{int(wells)}", justify="right")
+    for name, label in _OUTLAY.items():
+        if name in forecast and (name != "plates" or (full and forecast[name].max() > 1)):
+            digits = ".1f" if name == "days" else ".3g"
+            table.add_row(label, *(f"{value:{digits}}" for value in forecast[name]))
+    table.add_row("may be called wrongly", *map(share_text, forecast["wrong_share"]))
+    asked = rule is not None and rule.best_probability is not None
+    if full or not asked:
+        table.add_row("set point passes", *map(share_text, forecast["set_point"]))
+    if full or asked:
+        reaches = f"set point reaches {per_cent(asked_of_set_point(study))}"
+        table.add_row(reaches, *map(likely_text, forecast["reached"]))
     return table
 
 

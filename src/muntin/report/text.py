@@ -17,6 +17,7 @@ from muntin.record.faults import counted
 from muntin.record.study import Study
 from muntin.report.advice_files import Place
 from muntin.report.cautions import cautions
+from muntin.report.edit_record import edit_lines
 from muntin.report.plan_text import (
     bridging_line,
     first_conditions,
@@ -27,6 +28,7 @@ from muntin.report.plan_text import (
     plan_tables,
     usual_reason,
 )
+from muntin.report.ruling_text import ruling_line
 from muntin.report.sides_text import sides_line
 from muntin.report.words import (
     JUDGED_BY,
@@ -163,7 +165,7 @@ def _set_point(definition: Definition, window: Window) -> str:
 
 
 def _stop(view: Assessment, window: Window) -> list[str]:
-    stop = view.study.definition.stop
+    stop = view.study.stopping.rule
     if stop is None or view.awaited:
         return []
     met = []
@@ -181,13 +183,14 @@ def _capital(text: str) -> str:
     return text[:1].upper() + text[1:]
 
 
-def check_screen(study: Study) -> RenderableType:
-    """Return the screen of `check`."""
+def check_screen(study: Study, plans: Sequence[str] = ()) -> RenderableType:
+    """Return the screen of `check`; `plans` is what is on record of edited plans."""
     return sheet(
         study.definition.title,
         [
             ("Read", read_lines(study)),
             ("Noted", study.notices),
+            ("Plans", plans),
             ("Sound", ["No faults were found."]),
         ],
     )
@@ -234,7 +237,7 @@ def plan_sections(
     view: Assessment, plan: Plan, table: RenderableType, full: bool = True
 ) -> list[Section]:
     """Return the sections on the next plate, with the table of its test wells, and on its
-    forecast; its notices and bridging wells only in full.
+    forecast; its notices and bridging wells, and why there is no verdict, only in full.
     """
     told: list[RenderableType] = [plan_heading(plan)]
     if full:
@@ -243,8 +246,10 @@ def plan_sections(
     if view.fresh:
         told.append(f"{_capital(usual_reason(plan.wells))}.")
     early = "No forecast before the first readings."
-    forecast = early if view.fresh else forecast_table(plan)
-    return [("Next", [*told, table]), ("Forecast", [forecast])]
+    ahead: list[RenderableType] = [forecast_table(view.study, plan, full)]
+    if full or plan.ruling.word != "none":
+        ahead.append(ruling_line(view.study, plan))
+    return [("Next", [*told, table]), ("Forecast", [early] if view.fresh else ahead)]
 
 
 def _tables(view: Assessment, plan: Plan) -> tuple[list[RenderableType], list[RenderableType]]:
@@ -260,7 +265,10 @@ def propose_screen(view: Assessment, plan: Plan, path: Path, remark: str) -> Ren
     written = ("Written", _plan_lines(path, remark))
     whole, cut = _tables(view, plan)
     sections = plan_sections(view, plan, [*whole, *cut][0])
-    return sheet(view.study.definition.title, [*sections, written])
+    edited = ("Edited", [] if plan.edit is None else edit_lines(plan, plan.edit))
+    told = view.study.stopping.notice
+    noted = ("Noted", [told] if told else [])
+    return sheet(view.study.definition.title, [noted, edited, *sections, written])
 
 
 def _plan_lines(path: Path, remark: str) -> list[str]:

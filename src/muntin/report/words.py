@@ -49,6 +49,20 @@ def share_text(share: float) -> str:
     return f"{100 * share:.1f} %"
 
 
+def per_cent(share: float) -> str:
+    """Return a share of 1 that was given, in per cent with the digits it has: "95 %"."""
+    return f"{100 * share:.6g} %"
+
+
+def likely_text(chance: float) -> str:
+    """Return a chance that draws tell, in whole per cent, never rounded to a certainty."""
+    if 0 < chance < 0.005:
+        return "under 1 %"
+    if 0.995 <= chance < 1:
+        return "over 99 %"
+    return f"{100 * chance:.0f} %"
+
+
 def chance_text(probability: float) -> str:
     """Return a probability with two decimals, or more where it has more."""
     short = f"{probability:.2f}"

@@ -56,8 +56,9 @@ class _Drawn(ABC, Generic[Given]):
         return self.given.slopes(X)[self.node]
 
     def take(self, index: Index) -> Self:
-        """Some of the draws, in ascending order."""
-        return replace(self, node=self.node[index], drawn=self.drawn[index])
+        """Some of the draws, in ascending order, with the laws that they need."""
+        used, node = np.unique(self.node[index], return_inverse=True)
+        return replace(self, given=self.given.take(used), node=node, drawn=self.drawn[index])
 
 
 @dataclass(frozen=True)
@@ -81,6 +82,11 @@ class DrawnProcess(_Drawn[ProcessNodes]):
 
     inverse: Array
     V: Array
+
+    def take(self, index: Index) -> DrawnProcess:
+        """Some of the draws, in ascending order, with the laws that they need."""
+        used = np.unique(self.node[index])
+        return replace(super().take(index), inverse=self.inverse[used], V=self.V[used])
 
     def moments(self, X: Array) -> tuple[Array, Array]:
         """Mean and variance (N, n) of f at coded X (n, D)."""

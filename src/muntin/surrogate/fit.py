@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -99,17 +99,55 @@ def fit_surrogate(
     name: str, readings: Readings, kind: Kind, columns: Columns, priors: Priors, seed: int
 ) -> Fit:
     """Fit one surrogate; readings lie on the scale where noise is additive (ln y if positive)."""
-    model = Model(family_of(name, columns, priors), collapse(readings), _engine_link(kind))
-    return _fitted(name, model, link_of(kind), seed)
+    return _fitted(name, _model(name, readings, kind, columns, priors), link_of(kind), seed)
 
 
-def _fitted(name: str, model: Model, link: Link, seed: int, start: Array | None = None) -> Fit:
+def brief_stack(
+    names: Sequence[str],
+    readings: Readings,
+    kind: Kind,
+    columns: Columns,
+    priors: Priors,
+    seed: int,
+    nodes: int,
+    starts: Mapping[str, Array],
+) -> Stack:
+    """The stack by the fast engine in brief: so many hyperparameter nodes a round (a power of two),
+    no reading refitted, no cloud of draws. starts: where to search the mode, by surrogate, as
+    `starts_of` a fit to nearly the same readings gives them; empty where there is none.
+    """
+    models = [_model(n, readings, kind, columns, priors) for n in names]
+    fits = tuple(
+        _fitted(name, model, link_of(kind), seed, starts.get(name), nodes)
+        for name, model in zip(names, models, strict=True)
+    )
+    shares = stacking_shares(np.stack([fit.loo.log_density for fit in fits]))
+    return Stack(fits, shares, mixture([fit.surface for fit in fits], shares))
+
+
+def starts_of(stack: Stack) -> dict[str, Array]:
+    """Where (H,) to search the mode of fits to a few readings more or less, by surrogate."""
+    return {fit.name: start_of(fit.posterior) for fit in stack.fits}
+
+
+def _model(name: str, readings: Readings, kind: Kind, columns: Columns, priors: Priors) -> Model:
+    return Model(family_of(name, columns, priors), collapse(readings), _engine_link(kind))
+
+
+def _fitted(
+    name: str,
+    model: Model,
+    link: Link,
+    seed: int,
+    start: Array | None = None,
+    nodes: int | None = None,
+) -> Fit:
     with threads_for(len(model.cells.X)):
         model, start = settled_wander(model, start)
-        posterior = integrate(model, seed, start=start)
+        posterior = integrate(model, seed, nodes, start)
         evidence, weights = posterior.evidence, np.exp(posterior.log_weights)
         surface = _surface(model, evidence, weights, link)
-        loo = leave_one_out_of(model, posterior, seed)
+        loo = leave_one_out_of(model, posterior, seed, refit=nodes is None)
     return Fit(
         name=name,
         surface=surface,

@@ -189,11 +189,11 @@ def _spread(node: Surface, X: Array, anchors: Index, z: Array) -> Array:
     for start in range(0, len(X), _CHUNK):
         rows = slice(start, start + _CHUNK)
         C[rows] = node.covariance(X[rows], X[anchors])[0]
-    white = solve_triangular(_root(C[anchors]), z, lower=True, trans="T")
+    white = solve_triangular(covariance_root(C[anchors]), z, lower=True, trans="T")
     return (C @ white).T
 
 
-def _root(covariance: Array) -> Array:
+def covariance_root(covariance: Array) -> Array:
     """Cholesky factor of a covariance that rounding may leave short of positive definite."""
     scale = max(float(np.abs(covariance).max()), np.finfo(float).tiny)
     jitter, step = _JITTER * scale, np.eye(len(covariance))

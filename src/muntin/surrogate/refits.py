@@ -33,8 +33,12 @@ _NODES, _ENOUGH = 64, 50.0
 _NOTHING = 1e3
 
 
-def leave_one_out_of(model: Model, posterior: Posterior, seed: int) -> LeaveOneOut:
-    """Predictions (n,) of every reading from the others; seed: of the fits without one."""
+def leave_one_out_of(
+    model: Model, posterior: Posterior, seed: int, refit: bool = True
+) -> LeaveOneOut:
+    """Predictions (n,) of every reading from the others; seed: of the fits without one, which are
+    made only if `refit`.
+    """
     evidence, cells = posterior.evidence, model.cells
     approx, lik = evidence.approximation, model.likelihood(evidence.theta)
     law = node_laws(cells, lik, approx.cavity, approx.tilted)
@@ -43,7 +47,7 @@ def leave_one_out_of(model: Model, posterior: Posterior, seed: int) -> LeaveOneO
     loo = averaged(law, log_w)
     refitted = (
         _fewest(log_w, posterior.ess)
-        if len(cells.X) <= _MOST_LATENTS
+        if refit and len(cells.X) <= _MOST_LATENTS
         else np.zeros(0, dtype=np.intp)
     )
     if not len(refitted):

@@ -225,7 +225,11 @@ class Assessment:
         return influence_of(self.study, asked, surface, negligible, draws, seed)
 
     def window(self) -> Window:
-        """The predicted operating window (plate scale), on a grid of bench steps."""
+        """The predicted operating window (plate scale), on a grid of bench steps, made once."""
+        return self._window
+
+    @cached_property
+    def _window(self) -> Window:
         definition = self.study.definition
         grid, regular = judged_grid(definition)
         p_mean = self.judged(grid, "mean")

@@ -1,0 +1,104 @@
+"""What a plan must keep to beyond its study: wells that are held, conditions declined, stocks."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+import pandas as pd
+from numpy.typing import NDArray
+
+from muntin.record.definition import Definition
+from muntin.record.stocks import Stock, same_target
+
+Truths = NDArray[np.bool_]
+
+
+@dataclass(frozen=True, kw_only=True, eq=False)
+class Terms:
+    """What one plan must keep to.
+
+    held: rows that are in the plan already, in order (role, the factors as targets in raw units,
+    each factor's _measured or NaN); only test, bridge and reference wells. declined: conditions
+    (targets) that are not chosen. stocks: measured for this plate. budget_mg: protein for the
+    bridging and test wells that are still to be chosen. fill: whether bridging wells are chosen.
+    """
+
+    held: pd.DataFrame | None = None
+    declined: frozenset[tuple[object, ...]] = frozenset()
+    stocks: tuple[Stock, ...] = ()
+    budget_mg: float | None = None
+    fill: bool = True
+
+
+@dataclass(frozen=True, eq=False)
+class Weighed:
+    """Candidates under weighing, Q rows each.
+
+    targets: as they are set (raw units). actual: the values that the model uses. measured (Q,
+    factors): where those were measured. held: number of the candidate of each held row. barred
+    (Q,): candidates that may be held but not chosen.
+    """
+
+    targets: pd.DataFrame
+    actual: pd.DataFrame
+    measured: Truths
+    held: tuple[int, ...]
+    barred: Truths
+
+
+def weighed(definition: Definition, frame: pd.DataFrame, terms: Terms) -> Weighed:
+    """Return the candidates of a frame (targets, raw units) and of the held rows, at the values
+    that their stocks measured.
+    """
+    own = measured_by_stock(definition, frame, terms.stocks)
+    count, names = len(frame), list(definition.factor_names)
+    held: list[int] = []
+    barred = np.zeros(count, dtype=bool)
+    if terms.held is not None and len(terms.held):
+        targets = terms.held[names].astype(frame.dtypes.to_dict())
+        of_held = terms.held[[f"{n}_measured" for n in names]].to_numpy(dtype=float)
+        of_stock = measured_by_stock(definition, targets, terms.stocks)
+        frame = pd.concat([frame, targets], ignore_index=True)
+        own = np.vstack([own, of_held])
+        held = _first_alike(frame, own, count)
+        odd = ~np.isclose(of_held, of_stock, rtol=0.0, atol=1e-9, equal_nan=True).all(axis=1)
+        barred = np.r_[barred, odd | (np.array(held) != np.arange(count, len(frame)))]
+    known = np.isfinite(own)
+    actual = frame.copy()
+    for i, factor in enumerate(definition.factors):
+        if factor.continuous:
+            x = frame[factor.name].to_numpy(dtype=float)
+            actual[factor.name] = np.where(known[:, i], own[:, i], x)
+    if terms.declined:
+        rows = frame.itertuples(index=False, name=None)
+        barred |= np.array([row in terms.declined for row in rows], dtype=bool)
+    return Weighed(frame, actual, known, tuple(held), barred)
+
+
+def measured_by_stock(
+    definition: Definition, frame: pd.DataFrame, stocks: Sequence[Stock]
+) -> NDArray[np.float64]:
+    """What the stock of each candidate measured, shape (Q, factors), NaN where none is known."""
+    out = np.full((len(frame), len(definition.factors)), np.nan)
+    for i, factor in enumerate(definition.factors):
+        for stock in stocks:
+            if stock.factor == factor.name:
+                x = frame[factor.name].to_numpy(dtype=float)
+                used = [same_target(factor, value, stock.target) for value in x.tolist()]
+                out[np.array(used, dtype=bool), i] = stock.measured
+    return out
+
+
+def _first_alike(frame: pd.DataFrame, measured: NDArray[np.float64], count: int) -> list[int]:
+    """Number of the first candidate with the targets and measured values of each row from `count`
+    on, so that repeats are one candidate.
+    """
+    seen: dict[tuple[object, ...], int] = {}
+    rows = zip(frame.itertuples(index=False, name=None), measured.tolist(), strict=True)
+    numbers = []
+    for number, (targets, values) in enumerate(rows):
+        alike = (*targets, *(None if np.isnan(v) else round(v, 9) for v in values))
+        numbers.append(seen.setdefault(alike, number))
+    return numbers[count:]

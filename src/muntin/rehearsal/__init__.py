@@ -1,0 +1,1 @@
+"""Rehearsal: whole plate series played forward on drawn truths."""
