@@ -10,6 +10,8 @@ from scipy.special import expit, ndtr
 import muntin
 from muntin.design.outlook import Outlook
 from muntin.design.setpoint import Drawn, SetPoint, _around, _unknown, set_points
+from muntin.surrogate.assembly import nodes_of
+from muntin.surrogate.evidence import evaluate
 from muntin.surrogate.nodes import Surface
 from muntin.window.coded import code
 from tests.design.surfaces import surface
@@ -22,13 +24,18 @@ SHARED = [{"by": ["plate"], "acts": "inside"}]
 
 @pytest.fixture(scope="module")
 def one_node(tmp_path_factory):
-    """A real response on one Gaussian node, whose readings are linear in it."""
+    """A real response on one Gaussian node, at the prior medians of the hyperparameters, whose
+    readings are linear in it.
+    """
     plates = [read_shift(spread(FACTORS, 8, seed), seed) for seed in (1, 2)]
     study = written(tmp_path_factory.mktemp("one"), plates, responses=[SHIFT], shared_errors=SHARED)
     view = muntin.assess(study, "gp")
-    surface = view.surfaces["shift"]
-    heaviest = np.array([np.argmax(surface.weights)])
-    return replace(view, surfaces={"shift": surface.take(heaviest, np.ones(1))})
+    (fit,) = view.stacks["shift"].fits
+    evidence = evaluate(fit.model, fit.model.layout.theta(np.zeros((1, len(fit.model.layout)))))
+    approx = evidence.approximation
+    nodes = nodes_of(fit.model, evidence.theta, evidence.root, approx.mean, approx.V)
+    surface = Surface((nodes,), np.ones(1), fit.surface.link)
+    return replace(view, surfaces={"shift": surface})
 
 
 def judged(view, by, **target):
