@@ -7,18 +7,18 @@ from muntin.design.selection import select
 from muntin.window.assessment import assess
 from tests.benchmarks.best import CASES, NOISE_SD, empty, play
 
-SEEDS = range(4)
+SEEDS = range(8)
 
 
 def test_best_finds_more_of_branin_than_as_many_wells_at_random():
-    # After 12 + 6 + 6 wells each search comes within the noise of one well; a criterion upside
-    # down or idle leaves one of them further off, though it begins with the same opening plate.
+    # After 12 + 6 + 6 wells half of the searches come within half the noise of one well; with a
+    # criterion upside down or idle they do not, though they begin with the same opening plate.
     found, chance = (
         np.array([play("Branin", search, seed, "gp", (12, 6, 6))[-1] for seed in SEEDS])
         for search in ("best", "random")
     )
-    assert np.median(found) < 0.5 * np.median(chance)
-    assert found.max() < NOISE_SD
+    assert np.median(found) < 0.25 * np.median(chance)
+    assert np.median(found) < 0.5 * NOISE_SD
 
 
 @pytest.mark.parametrize("name", ["Branin", "Hartmann-3"])
