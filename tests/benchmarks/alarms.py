@@ -23,11 +23,12 @@ from muntin.design.selection import select
 from muntin.record.study import Study
 from muntin.window.assessment import Surrogate, assess
 from muntin.window.checks import Check
-from tests.benchmarks.processes import PH_LEVELS, SALT_LEVELS, DrawnProcess, draw, plate_errors
-from tests.benchmarks.series import KINDS, SERIES, TARGET, factorial, read_plate, study_of
+from tests.benchmarks.benches import KINDS, drawn, factorial, read_plate, study_of
+from tests.benchmarks.processes import PH_LEVELS, SALT_LEVELS, DrawnProcess, plate_errors
 from tests.benchmarks.trials import spread
 
 Array = NDArray[np.float64]
+SERIES = (12, 6, 6)
 PLATES, WELLS, BRIDGES = 3, 16, 4
 # Share of the studies that may be called not supported by the data.
 BUDGET = 0.03
@@ -49,9 +50,8 @@ class Alarms:
 
 def play(kind: str, seed: int, surrogate: Surrogate = "stacked") -> list[Alarms]:
     """Draw one process and check every study of it."""
-    near = kind == "near plateau"
     rng = np.random.default_rng((KINDS.index(kind), seed))
-    process = draw("mixed mode" if kind == "mixed mode" else "elution", rng, TARGET, near)
+    process = drawn(kind, rng)
     return [
         Alarms(kind, seed, design, assess(study, surrogate, seed=seed).checks())
         for design, study in studies(process, seed, rng, surrogate)

@@ -26,8 +26,8 @@ from muntin.design.further import Rooms, prospects
 from muntin.design.selection import select
 from muntin.record.study import Study
 from muntin.window.assessment import Assessment, Surrogate, assess
+from tests.benchmarks.benches import DEFINITION, TARGET, Truth, read_plate, study_of
 from tests.benchmarks.processes import PLATE_SD, DrawnProcess, draw, plate_errors
-from tests.benchmarks.series import DEFINITION, TARGET, Truth, read_plate, study_of
 
 Floats = NDArray[np.float64]
 OPENING, SECOND, WELLS = 12, 12, (6, 12, 24, 48)

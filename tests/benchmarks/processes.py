@@ -3,15 +3,18 @@
 A well is eluted in one to three equilibrium stages. Each adds `volume` to the hold-up left in
 the well, and the protein parts between liquid and resin by the coefficient Kp:
 
-    plain elution   Kp = A (salt / 100 mM)^-nu 10^(-b (pH - 6))
-    mixed mode      Kp + B 10^(k salt)
+    plain elution   Kp = A (salt / 100 mM)^-nu 10^(-b (pH - 6) - c additive)
+    mixed mode      Kp + B 10^(k salt - e additive)
 
 The power law in salt is that of stoichiometric displacement (Boardman & Partridge 1955,
 Biochem. J. 59:543; Kopaciewicz, Rounds, Fausnaugh & Regnier 1983, J. Chromatogr. 266:3). The
 rise of hydrophobic binding with the exponential of the salt concentration is that of Melander,
 El Rassi & Horvath 1989, J. Chromatogr. 469:3; they multiply the two influences on one site,
 here they act on sites of two kinds and add. The pH dependence is a plain straight line in
-log Kp. Ranges of the parameters are wide on purpose and describe no particular resin.
+log Kp. In an island the protein also leaves solution as it loses its charge: the share
+1 / (1 + 10^(d (pH - p))) stays, so that the conditions that pass are bounded on all sides. The
+additive, a third factor, weakens binding of either kind. Ranges of the parameters are wide on
+purpose and describe no particular resin.
 """
 
 from dataclasses import dataclass, replace
@@ -22,14 +25,15 @@ from numpy.typing import ArrayLike, NDArray
 from scipy.special import ndtr, ndtri
 from scipy.stats.qmc import Sobol
 
-Kind = Literal["elution", "mixed mode"]
+Kind = Literal["elution", "mixed mode", "island"]
 Floats = NDArray[np.float64]
 
 PH_LEVELS = np.round(np.arange(4.5, 7.55, 0.1), 1)
 SALT_LEVELS = np.arange(50.0, 505.0, 10.0)
+ADDITIVE_LEVELS = np.arange(0.0, 205.0, 10.0)
 
 PH_SD = 0.03  # setting error of pH
-SALT_SD = 0.02  # relative setting error of salt
+SALT_SD = 0.02  # relative setting error of salt, and of the additive
 PLATE_SD = 0.03  # relative error shared by the wells of a plate
 
 _LEAST_SHARE, _LARGEST_SHARE = 0.10, 0.60
@@ -37,10 +41,15 @@ _LEAST_HYDROPHOBIC_LOSS = 0.05
 _ROOM = 0.1  # three plate errors
 
 
-def truth_grid() -> Floats:
-    """Return all conditions the bench can set, shape (1426, 2): pH and salt in mM."""
-    ph, salt = np.meshgrid(PH_LEVELS, SALT_LEVELS, indexing="ij")
-    return np.column_stack([ph.ravel(), salt.ravel()])
+def truth_grid(factors: int = 2) -> Floats:
+    """Return all conditions the bench can set, shape (1426, 2): pH and salt in mM; of three
+    factors, with the additive in mM, every other step of each, shape (4048, 3).
+    """
+    if factors == 2:
+        levels = [PH_LEVELS, SALT_LEVELS]
+    else:
+        levels = [PH_LEVELS[::2], SALT_LEVELS[::2], ADDITIVE_LEVELS[::2]]
+    return np.column_stack([x.ravel() for x in np.meshgrid(*levels, indexing="ij")])
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -58,6 +67,11 @@ class DrawnProcess:
     hydrophobic, k
         B, the hydrophobic Kp extrapolated to no salt (0 for plain elution), and its decades
         gained for each mM.
+    c, e
+        Decades that electrostatic and hydrophobic Kp lose for each mM of the additive.
+    d, p
+        Decades of solubility lost for each pH unit, and the pH where half the protein is lost (0
+        and 6 where none is).
     noise_cv, noise_floor
         Standard deviation of a reading of recovery r: sqrt(noise_floor^2 + (noise_cv r)^2).
     """
@@ -71,33 +85,45 @@ class DrawnProcess:
     b: float
     hydrophobic: float = 0.0
     k: float = 0.0
+    c: float = 0.0
+    e: float = 0.0
+    d: float = 0.0
+    p: float = 6.0
     noise_cv: float
     noise_floor: float
 
     @property
     def kind(self) -> Kind:
-        """Tell plain elution from mixed mode."""
-        return "mixed mode" if self.hydrophobic > 0 else "elution"
+        """Tell plain elution, mixed mode and islands apart."""
+        if self.hydrophobic == 0:
+            return "elution"
+        return "island" if self.d > 0 else "mixed mode"
 
-    def partition(self, ph: ArrayLike, salt: ArrayLike) -> Floats:
-        """Return Kp, resin over liquid concentration, at pH and salt (mM); shapes broadcast."""
-        ph, salt = np.asarray(ph, dtype=float), np.asarray(salt, dtype=float)
-        electrostatic = self.a * (salt / 100) ** -self.nu * 10 ** (-self.b * (ph - 6))
-        return np.asarray(electrostatic + self.hydrophobic * 10 ** (self.k * salt))
+    def partition(self, ph: ArrayLike, salt: ArrayLike, additive: ArrayLike = 0.0) -> Floats:
+        """Return Kp, resin over liquid concentration, at pH, salt and additive (mM); shapes
+        broadcast.
+        """
+        ph, salt, z = (np.asarray(x, dtype=float) for x in (ph, salt, additive))
+        decades = -self.b * (ph - 6) - self.c * z
+        electrostatic = self.a * (salt / 100) ** -self.nu * 10**decades
+        return np.asarray(electrostatic + self.hydrophobic * 10 ** (self.k * salt - self.e * z))
 
-    def recovery(self, ph: ArrayLike, salt: ArrayLike) -> Floats:
+    def recovery(self, ph: ArrayLike, salt: ArrayLike, additive: ArrayLike = 0.0) -> Floats:
         """Return the share of bound protein collected over all stages; shapes broadcast.
 
-        A stage collects V / (V + V_h + Kp V_R) of what is left in the well.
+        A stage collects V / (V + V_h + Kp V_R) of what is left in the well and in solution.
         """
         collected = self.volume / (
-            self.volume + self.hold_up + self.partition(ph, salt) * self.resin
+            self.volume + self.hold_up + self.partition(ph, salt, additive) * self.resin
         )
-        return np.asarray(1 - (1 - collected) ** self.stages)
+        every = 1 - (1 - collected) ** self.stages
+        if self.d == 0:
+            return np.asarray(every)
+        return np.asarray(every / (1 + 10 ** (self.d * (np.asarray(ph, dtype=float) - self.p))))
 
-    def window_share(self, target: float) -> float:
+    def window_share(self, target: float, factors: int = 2) -> float:
         """Return the true share of all bench conditions that reach `target`."""
-        return float(np.mean(self.recovery(*truth_grid().T) >= target))
+        return float(np.mean(self.recovery(*truth_grid(factors).T) >= target))
 
     def read(
         self, conditions: ArrayLike, plate_effects: ArrayLike, rng: np.random.Generator
@@ -107,17 +133,18 @@ class DrawnProcess:
         Parameters
         ----------
         conditions
-            Target pH and salt (mM) of n wells, shape (n, 2). Each well is set with errors of
-            its own, normal with sd 0.03 pH and 2 % of the salt.
+            Target pH, salt and, where it is a factor, additive (mM) of n wells, shape (n, 2) or
+            (n, 3). Each well is set with errors of its own, normal with sd 0.03 pH and 2 % of
+            the salt and of the additive.
         plate_effects
             Relative error of each well's plate, shape (n,) or one number; see `plate_errors`.
         rng
             Draws setting errors and noise.
         """
-        ph, salt = np.asarray(conditions, dtype=float).reshape(-1, 2).T
+        ph, *others = np.atleast_2d(np.asarray(conditions, dtype=float)).T
         ph = ph + PH_SD * rng.standard_normal(ph.shape)
-        salt = salt * (1 + SALT_SD * rng.standard_normal(salt.shape))
-        expected = self.recovery(ph, salt) * (1 + np.asarray(plate_effects, dtype=float))
+        others = [x * (1 + SALT_SD * rng.standard_normal(x.shape)) for x in others]
+        expected = self.recovery(ph, *others) * (1 + np.asarray(plate_effects, dtype=float))
         sd = np.hypot(self.noise_floor, self.noise_cv * expected)
         return np.asarray(expected + sd * rng.standard_normal(sd.shape))
 
@@ -129,7 +156,7 @@ class DrawnProcess:
         Parameters
         ----------
         conditions
-            Target pH and salt (mM), shape (n, 2).
+            Target pH, salt and, where it is a factor, additive (mM), shape (n, 2) or (n, 3).
         target
             Recovery that the reading must reach.
         rng
@@ -139,10 +166,11 @@ class DrawnProcess:
             are set and their plates err on Sobol' points, the same at all conditions; the share of
             their readings that reach the target is summed over the noise, not drawn.
         """
-        ph, salt = np.asarray(conditions, dtype=float).reshape(-1, 2, 1).swapaxes(0, 1)
-        points = np.clip(Sobol(3, rng=rng).random(wells), 1e-9, 1 - 1e-9)
-        by_ph, by_salt, by_plate = ndtri(points).T
-        recovery = self.recovery(ph + PH_SD * by_ph, salt * (1 + SALT_SD * by_salt))
+        ph, *others = np.atleast_2d(np.asarray(conditions, dtype=float)).T[..., None]
+        points = np.clip(Sobol(2 + len(others), rng=rng).random(wells), 1e-9, 1 - 1e-9)
+        by_ph, *by_others, by_plate = ndtri(points).T
+        set_others = (x * (1 + SALT_SD * by) for x, by in zip(others, by_others, strict=True))
+        recovery = self.recovery(ph + PH_SD * by_ph, *set_others)
         expected = recovery * (1 + PLATE_SD * by_plate)
         sd = np.hypot(self.noise_floor, self.noise_cv * expected)
         return np.asarray(ndtr((expected - target) / sd).mean(axis=-1))
@@ -154,34 +182,51 @@ def plate_errors(n_plates: int, rng: np.random.Generator, sd: float = PLATE_SD) 
 
 
 def draw(
-    kind: Kind, rng: np.random.Generator, target: float = 0.8, near: bool = False
+    kind: Kind,
+    rng: np.random.Generator,
+    target: float = 0.8,
+    near: bool = False,
+    factors: int = 2,
 ) -> DrawnProcess:
     """Draw a process whose edge at `target` runs through the range.
 
     Draws are repeated until 10 to 60 % of the bench conditions reach the target and, in mixed
-    mode, until hydrophobic binding takes at least 5 % of them away. The best recovery in the
-    range lies at least 0.1 above the target; with `near`, less than that: hold-up caps it so
-    close to the target that the error of a plate decides over the whole plateau.
+    mode, until hydrophobic binding takes at least 5 % of them away. An island touches neither end
+    of pH or salt. The best recovery in the range lies at least 0.1 above the target; with `near`,
+    less than that: hold-up caps it so close to the target that the error of a plate decides over
+    the whole plateau.
     """
+    grid = truth_grid(factors)
+    outermost = ((grid[:, :2] == grid[:, :2].min(0)) | (grid[:, :2] == grid[:, :2].max(0))).any(1)
     while True:
-        process = _draw_any(kind, rng)
-        share = process.window_share(target)
-        capped = process.recovery(*truth_grid().T).max() < target + _ROOM
-        if _LEAST_SHARE <= share <= _LARGEST_SHARE and capped == near:
-            if kind == "elution":
-                return process
-            plain = replace(process, hydrophobic=0.0)
-            if plain.window_share(target) - share >= _LEAST_HYDROPHOBIC_LOSS:
-                return process
+        process = _draw_any(kind, rng, factors)
+        recovery = process.recovery(*grid.T)
+        share = float(np.mean(recovery >= target))
+        capped = recovery.max() < target + _ROOM
+        if not (_LEAST_SHARE <= share <= _LARGEST_SHARE and capped == near):
+            continue
+        if kind == "elution" or (kind == "island" and recovery[outermost].max() < target):
+            return process
+        plain = replace(process, hydrophobic=0.0)
+        if (
+            kind == "mixed mode"
+            and plain.window_share(target, factors) - share >= _LEAST_HYDROPHOBIC_LOSS
+        ):
+            return process
 
 
-def _draw_any(kind: Kind, rng: np.random.Generator) -> DrawnProcess:
+def _draw_any(kind: Kind, rng: np.random.Generator, factors: int) -> DrawnProcess:
     nu = rng.uniform(3, 8)
     salt_at_one = float(np.exp(rng.uniform(np.log(80), np.log(450))))  # mM where Kp = 1 at pH 6
-    hydrophobic = k = 0.0
-    if kind == "mixed mode":
+    hydrophobic = k = c = e = d = 0.0
+    p = 6.0
+    if kind != "elution":
         k = rng.uniform(0.002, 0.010)
         hydrophobic = 10 ** (-k * rng.uniform(200, 600))  # Kp = 1 at that salt, mM
+    if kind == "island":
+        d, p = rng.uniform(1.5, 4.0), rng.uniform(6.5, 7.5)
+    if factors == 3:
+        c, e = rng.uniform(0.0, 0.006, 2)
     return DrawnProcess(
         stages=int(rng.integers(1, 4)),
         hold_up=rng.uniform(20, 40),
@@ -191,6 +236,10 @@ def _draw_any(kind: Kind, rng: np.random.Generator) -> DrawnProcess:
         b=rng.uniform(0.3, 1.2),
         hydrophobic=hydrophobic,
         k=k,
+        c=c,
+        e=e,
+        d=d,
+        p=p,
         noise_cv=rng.uniform(0.02, 0.03),
         noise_floor=rng.uniform(0.005, 0.015),
     )

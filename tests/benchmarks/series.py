@@ -2,16 +2,18 @@
 wells, beside full factorials read with the same surrogate and an ordinary quadratic fit; and
 whether what is said to happen happens as often, for the process mean and for future wells.
 
-Run: python -m tests.benchmarks.series --processes 20
+Run: python -m tests.benchmarks.series --processes 20                # two factors
+     python -m tests.benchmarks.series --processes 20 --factors 3
 """
 
 from __future__ import annotations
 
 import argparse
 import sys
+from collections.abc import Sequence
 from concurrent.futures import ProcessPoolExecutor
-from dataclasses import dataclass
-from pathlib import Path
+from dataclasses import dataclass, field
+from itertools import repeat
 from typing import Literal
 
 import numpy as np
@@ -19,47 +21,25 @@ import pandas as pd
 from numpy.typing import NDArray
 
 from muntin.design.selection import select
-from muntin.record.definition import Definition
-from muntin.record.notes import Plate
-from muntin.record.study import Study
 from muntin.window.assessment import Assessment, Surrogate, assess
-from tests.benchmarks.processes import (
-    PH_LEVELS,
-    PH_SD,
-    SALT_LEVELS,
-    SALT_SD,
-    DrawnProcess,
-    draw,
-    plate_errors,
-    truth_grid,
+from tests.benchmarks.benches import (
+    FACTORS,
+    KINDS,
+    TARGET,
+    Truth,
+    drawn,
+    factorial,
+    read_plate,
+    study_of,
 )
+from tests.benchmarks.processes import DrawnProcess, plate_errors
 
 Array = NDArray[np.float64]
-TARGET = 0.8
-SERIES = (12, 6, 6)
-FACTORIALS = ((8, 6), (12, 8))
-KINDS = ("elution", "mixed mode", "near plateau")
+OWN: tuple[tuple[int, ...], ...] = ((12, 6, 6, 6, 6), (24, 24), (48,))
+FACTORIALS = {2: ((8, 6), (12, 8)), 3: ((4, 4, 3), (6, 4, 4))}
 By = Literal["mean", "well"]
 BY: tuple[By, ...] = ("mean", "well")
 CALIBRATION_BUDGET = 0.02
-
-DEFINITION = Definition.model_validate(
-    {
-        "study": {"title": "drawn process", "judged_by": "mean"},
-        "factors": [
-            {"name": "ph", "low": 4.5, "high": 7.5, "step": 0.1, "set_sd": PH_SD},
-            {
-                "name": "salt",
-                "low": 50,
-                "high": 500,
-                "step": 10,
-                "set_sd": f"{100.0 * SALT_SD:g} %",
-            },
-        ],
-        "responses": [{"name": "recovery", "kind": "fraction", "at_least": TARGET}],
-        "plan": {"bridging_wells": 0},
-    }
-)
 
 
 @dataclass(frozen=True)
@@ -69,154 +49,113 @@ class Outcome:
     """
 
     kind: str
-    wrong: dict[str, float]
-    bins: dict[By, dict[str, Array]]
+    wrong: dict[str, float] = field(default_factory=dict)
+    bins: dict[By, dict[str, Array]] = field(default_factory=lambda: {by: {} for by in BY})
+
+    def record(self, name: str, view: Assessment, truth: Truth) -> None:
+        """Hold what is said after a plate against the truth."""
+        for by, passes in (("mean", truth.mean), ("well", truth.well)):
+            p = view.judged(truth.frame, by)
+            place = np.minimum((p * 10).astype(int), 9)
+            weights = (np.ones(len(p)), p, passes)
+            counts = [np.bincount(place, w, minlength=10) for w in weights]
+            self.bins[by][name] = np.array(counts)
+            if by == "mean":
+                self.wrong[name] = 100.0 * float(np.mean((p >= 0.5) != truth.mean))
 
 
 @dataclass(frozen=True)
-class Truth:
-    """Bench conditions, whether the process mean meets the target there, and how often a new well
-    on a new plate does.
-    """
+class Game:
+    """A drawn process with its truth, and the errors (one for each plate) that all designs meet."""
 
-    frame: pd.DataFrame
-    mean: NDArray[np.bool_]
-    well: Array
+    process: DrawnProcess
+    truth: Truth
+    errors: Array
+    factors: int
+    seed: int
+    surrogate: Surrogate
 
-    @classmethod
-    def of(cls, process: DrawnProcess, rng: np.random.Generator) -> Truth:
-        """That of a drawn process at all conditions of the bench."""
-        grid = truth_grid()
-        mean = process.recovery(grid[:, 0], grid[:, 1]) >= TARGET
-        frame = pd.DataFrame(grid, columns=["ph", "salt"])
-        return cls(frame, mean, process.chances(grid, TARGET, rng))
+    def view(self, plates: list[pd.DataFrame]) -> Assessment:
+        """What the plates tell."""
+        return assess(study_of(plates, self.factors), self.surrogate, seed=self.seed)
+
+    def series(self, sizes: Sequence[int], rng: np.random.Generator, outcome: Outcome) -> None:
+        """Play plates that are planned one after the other."""
+        plates: list[pd.DataFrame] = []
+        view = self.view(plates)
+        for number, wells in enumerate(sizes):
+            selection = select(view, wells, "edge", self.seed)
+            chosen = selection.candidates.iloc[[p.candidate for p in selection.picks]]
+            conditions = chosen.to_numpy(dtype=float)
+            plates.append(read_plate(self.process, conditions, self.errors[number], rng))
+            view = self.view(plates)
+            outcome.record(title(sizes[: number + 1]), view, self.truth)
+
+    def factorial(self, counts: Sequence[int], rng: np.random.Generator, outcome: Outcome) -> None:
+        """Read a full factorial on one plate."""
+        plate = read_plate(self.process, factorial(*counts), self.errors[0], rng)
+        name = f"factorial {' x '.join(map(str, counts))}"
+        outcome.record(name, self.view([plate]), self.truth)
+        outcome.wrong[f"{name}, least squares"] = least_squares(plate, self.truth)
 
 
-def study_of(plates: list[pd.DataFrame]) -> Study:
-    """A study in memory from plates with columns ph, salt, recovery."""
-    frames = []
-    for number, plate in enumerate(plates, start=1):
-        count = len(plate)
-        frames.append(
-            plate.assign(
-                plate=f"plate-{number:02d}",
-                well=[f"{'ABCDEFGH'[i % 8]}{i // 8 + 1}" for i in range(count)],
-                role="test",
-                ph_target=plate["ph"],
-                salt_target=plate["salt"],
-                ph_measured=False,
-                salt_measured=False,
-                recovery_sd=np.nan,
-                recovery_state="read",
-                recovery_side=0,
-                exclude="",
-            )
-        )
-    columns = [
-        "plate",
-        "well",
-        "role",
-        "ph",
-        "salt",
-        "ph_target",
-        "salt_target",
-        "ph_measured",
-        "salt_measured",
-        "recovery",
-        "recovery_sd",
-        "recovery_state",
-        "recovery_side",
-        "exclude",
-    ]
-    wells = pd.concat(frames, ignore_index=True) if frames else pd.DataFrame(columns=columns)
-    names = [f"plate-{i:02d}" for i in range(1, len(plates) + 1)]
-    return Study(
-        folder=Path(),
-        definition=DEFINITION,
-        wells=wells,
-        plates=tuple(Plate(name=n, file=f"plates/{n}.csv") for n in names),
-        notices=(),
-    )
+def title(sizes: Sequence[int]) -> str:
+    """Name of a series of plates."""
+    return f"{' + '.join(map(str, sizes))} wells"
 
 
 def play(
-    kind: str, seed: int, surrogate: Surrogate = "stacked", factorials: bool = True
+    kind: str,
+    seed: int,
+    factors: int = 2,
+    surrogate: Surrogate = "stacked",
+    own: Sequence[Sequence[int]] = OWN,
+    factorials: bool = True,
 ) -> Outcome:
     """Draw one process and run every design on it."""
-    rng = np.random.default_rng((KINDS.index(kind), seed))
-    if kind == "near plateau":
-        process = draw("elution", rng, TARGET, near=True)
-    else:
-        process = draw("mixed mode" if kind == "mixed mode" else "elution", rng, TARGET)
-    errors = plate_errors(len(SERIES) + len(FACTORIALS), rng)
-    truth = Truth.of(process, np.random.default_rng((KINDS.index(kind), seed, 1)))
-    outcome = Outcome(kind, {}, {by: {} for by in BY})
-    plates: list[pd.DataFrame] = []
-    for number, wells in enumerate(SERIES):
-        view = assess(study_of(plates), surrogate, seed=seed)
-        selection = select(view, wells, "edge", seed)
-        chosen = selection.candidates.iloc[[p.candidate for p in selection.picks]]
-        plates.append(read_plate(process, chosen.to_numpy(dtype=float), errors[number], rng))
-        view = assess(study_of(plates), surrogate, seed=seed)
-        _record(outcome, f"{sum(SERIES[: number + 1])} wells", view, truth)
-    for number, (ph, salt) in enumerate(FACTORIALS if factorials else (), start=len(SERIES)):
-        plate = read_plate(process, factorial(ph, salt), errors[number], rng)
-        name = f"factorial {ph * salt}"
-        view = assess(study_of([plate]), surrogate, seed=seed)
-        _record(outcome, name, view, truth)
-        outcome.wrong[f"least squares {ph * salt}"] = _least_squares(plate, truth)
+    root = (KINDS.index(kind), seed, factors)
+    rng = np.random.default_rng(root)
+    process = drawn(kind, rng, factors)
+    errors = plate_errors(max(map(len, OWN)), rng)
+    truth = Truth.of(process, np.random.default_rng((*root, 1)), factors)
+    game = Game(process, truth, errors, factors, seed, surrogate)
+    outcome = Outcome(kind)
+    for number, sizes in enumerate(own):
+        game.series(sizes, np.random.default_rng((*root, 2, number)), outcome)
+    for number, counts in enumerate(FACTORIALS[factors] if factorials else ()):
+        game.factorial(counts, np.random.default_rng((*root, 3, number)), outcome)
     return outcome
 
 
-def read_plate(
-    process: DrawnProcess, conditions: Array, error: float, rng: np.random.Generator
-) -> pd.DataFrame:
-    """Read a plate at conditions (n, 2) with the relative error of the plate."""
-    y = process.read(conditions, error, rng)
-    return pd.DataFrame({"ph": conditions[:, 0], "salt": conditions[:, 1], "recovery": y})
-
-
-def factorial(ph: int, salt: int) -> Array:
-    """A full factorial on bench steps, from end to end of both ranges."""
-    a = PH_LEVELS[np.round(np.linspace(0, len(PH_LEVELS) - 1, ph)).astype(int)]
-    b = SALT_LEVELS[np.round(np.linspace(0, len(SALT_LEVELS) - 1, salt)).astype(int)]
-    return np.stack(np.meshgrid(a, b, indexing="ij"), axis=-1).reshape(-1, 2).astype(float)
-
-
-def _record(outcome: Outcome, name: str, view: Assessment, truth: Truth) -> None:
-    for by, passes in (("mean", truth.mean), ("well", truth.well)):
-        p = view.judged(truth.frame, by)
-        place = np.minimum((p * 10).astype(int), 9)
-        weights = (np.ones(len(p)), p, passes)
-        outcome.bins[by][name] = np.array([np.bincount(place, w, minlength=10) for w in weights])
-        if by == "mean":
-            outcome.wrong[name] = 100.0 * float(np.mean((p >= 0.5) != truth.mean))
-
-
-def _least_squares(plate: pd.DataFrame, truth: Truth) -> float:
-    """An ordinary quadratic fit of recovery, called by its fitted mean."""
-    grid = truth.frame.to_numpy()
+def least_squares(plate: pd.DataFrame, truth: Truth) -> float:
+    """Share (percent) that an ordinary quadratic fit of recovery calls wrongly by its mean."""
+    names = [name for name in FACTORS if name in plate]
+    grid = truth.frame[names].to_numpy()
     low, high = grid.min(axis=0), grid.max(axis=0)
 
     def terms(conditions: Array) -> Array:
-        x, z = ((2.0 * conditions - low - high) / (high - low)).T
-        return np.stack([np.ones_like(x), x, z, x * z, x * x, z * z], axis=1)
+        x = (2.0 * conditions - low - high) / (high - low)
+        both = [x[:, i] * x[:, j] for i in range(x.shape[1]) for j in range(i + 1)]
+        return np.column_stack([np.ones(len(x)), x, *both])
 
-    x = terms(plate[["ph", "salt"]].to_numpy(dtype=float))
-    coefficients, *_ = np.linalg.lstsq(x, plate["recovery"].to_numpy(dtype=float), rcond=None)
+    x, y = terms(plate[names].to_numpy(dtype=float)), plate["recovery"].to_numpy(dtype=float)
+    coefficients, *_ = np.linalg.lstsq(x, y, rcond=None)
     return 100.0 * float(np.mean((terms(grid) @ coefficients >= TARGET) != truth.mean))
 
 
 def wrong_calls(outcomes: list[Outcome]) -> None:
     """Print the table of misclassification."""
-    print(f"{'share of the range called wrongly, %':<38}{'mean':>8}{'median':>8}{'90 %':>8}")
+    heads = f"{'mean':>8}{'(se)':>7}{'median':>8}{'90 %':>8}"
+    print(f"{'share of the range called wrongly, %':<40}{heads}")
     for kind in dict.fromkeys(o.kind for o in outcomes):
         mine = [o for o in outcomes if o.kind == kind]
         print(f"{kind} ({len(mine)} drawn processes)")
         for name in mine[0].wrong:
             values = np.array([o.wrong[name] for o in mine])
-            figures = (values.mean(), np.median(values), np.quantile(values, 0.9))
-            print(f"  {name:<36}" + "".join(f"{v:8.2f}" for v in figures))
+            error = values.std(ddof=1) / np.sqrt(len(values)) if len(values) > 1 else np.nan
+            middle, most = np.quantile(values, (0.5, 0.9))
+            said = f"{f'({error:.2f})':>7}{middle:8.2f}{most:8.2f}"
+            print(f"  {name:<38}{values.mean():8.2f}{said}")
 
 
 def calibration(outcomes: list[Outcome], by: By) -> bool:
@@ -236,31 +175,28 @@ def calibration(outcomes: list[Outcome], by: By) -> bool:
             verdict = f"  budget {CALIBRATION_BUDGET}: {verdict}"
             met &= error <= CALIBRATION_BUDGET
         figures = "".join(f"{v:6.2f}" for v in observed)
-        print(f"  {name:<16}{figures}   error {error:.3f}{verdict}")
+        print(f"  {name:<26}{figures}   error {error:.3f}{verdict}")
     return met
 
 
-def main() -> None:
-    """Print the tables of misclassification and calibration; exit code 1 over budget."""
+def main(arguments: Sequence[str] | None = None) -> int:
+    """Print the tables of misclassification and calibration; return 1 over budget."""
     parser = argparse.ArgumentParser(description=__doc__)
     parser.add_argument("--processes", type=int, default=20, help="drawn processes of each kind")
+    parser.add_argument("--factors", type=int, default=2, choices=sorted(FACTORIALS))
     parser.add_argument("--workers", type=int, default=2)
     parser.add_argument("--surrogate", default="stacked")
     parser.add_argument("--kinds", nargs="+", default=KINDS, choices=KINDS)
     parser.add_argument("--no-factorials", action="store_true")
-    given = parser.parse_args()
-    factorials = not given.no_factorials
-    jobs = [
-        (kind, seed, given.surrogate, factorials)
-        for kind in given.kinds
-        for seed in range(given.processes)
-    ]
+    given = parser.parse_args(arguments)
+    jobs = [(kind, seed) for kind in given.kinds for seed in range(given.processes)]
+    alike = [given.factors, given.surrogate, OWN, not given.no_factorials]
     with ProcessPoolExecutor(given.workers) as pool:
-        outcomes = list(pool.map(play, *zip(*jobs, strict=True)))
+        outcomes = list(pool.map(play, *zip(*jobs, strict=True), *map(repeat, alike)))
     wrong_calls(outcomes)
     met = [calibration(outcomes, by) for by in BY]
-    sys.exit(int(not all(met)))
+    return int(not all(met))
 
 
 if __name__ == "__main__":
-    main()
+    sys.exit(main())

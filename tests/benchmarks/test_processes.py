@@ -14,7 +14,7 @@ from tests.benchmarks.processes import (
     truth_grid,
 )
 
-KINDS = st.sampled_from(["elution", "mixed mode"])
+KINDS = st.sampled_from(["elution", "mixed mode", "island"])
 SEEDS = st.integers(0, 2**32 - 1)
 
 
@@ -45,6 +45,8 @@ def test_recovery_is_the_mass_balance_of_the_stages(kind, seed):
     drawn = draw(kind, rng)
     ph, salt = rng.uniform(4.5, 7.5), rng.uniform(50, 500)
     expected = collected_stage_by_stage(drawn, float(drawn.partition(ph, salt)))
+    if kind == "island":
+        expected /= 1 + 10 ** (drawn.d * (ph - drawn.p))
     assert float(drawn.recovery(ph, salt)) == pytest.approx(expected, rel=1e-12)
 
 
@@ -64,6 +66,30 @@ def test_partition_at_the_reference_and_its_slopes():
     plain = process()
     assert float(plain.partition(6, 200) / plain.partition(6, 100)) == pytest.approx(2**-4)
     assert float(plain.partition(7, 150) / plain.partition(6, 150)) == pytest.approx(10**-0.6)
+
+
+def test_an_additive_takes_decades_of_either_binding():
+    plain = process(hydrophobic=0.0, c=0.005)
+    assert float(plain.partition(6, 100, 200) / plain.partition(6, 100)) == pytest.approx(0.1)
+    hydrophobic = process(a=0.0, hydrophobic=0.5, k=0.003, e=0.002)
+    taken = hydrophobic.partition(6, 300, 100) / hydrophobic.partition(6, 300)
+    assert float(taken) == pytest.approx(10**-0.2)
+
+
+def test_half_the_protein_is_lost_at_the_stated_ph():
+    lossy = process(d=2.0, p=6.5)
+    assert float(lossy.recovery(6.5, 300) / process().recovery(6.5, 300)) == pytest.approx(0.5)
+    assert float(lossy.recovery(7.0, 300) / process().recovery(7.0, 300)) == pytest.approx(1 / 11)
+
+
+@given(SEEDS, st.sampled_from([2, 3]))
+def test_an_island_is_bounded_on_all_sides_of_ph_and_salt(seed, factors):
+    grid = truth_grid(factors)
+    reached = draw("island", np.random.default_rng(seed), factors=factors).recovery(*grid.T) >= 0.8
+    assert reached.mean() >= 0.1
+    inside = grid[reached][:, :2]
+    assert (inside.min(axis=0) > grid[:, :2].min(axis=0)).all()
+    assert (inside.max(axis=0) < grid[:, :2].max(axis=0)).all()
 
 
 def test_conditions_broadcast():
@@ -103,6 +129,8 @@ def test_the_grid_holds_every_bench_step_once():
     assert len({tuple(row) for row in grid}) == len(grid)
     assert grid.min(axis=0).tolist() == [4.5, 50]
     assert grid.max(axis=0).tolist() == [7.5, 500]
+    thinned = truth_grid(3)
+    assert len({tuple(row) for row in thinned}) == len(thinned) == 16 * 23 * 11
 
 
 def test_readings_on_a_plateau_scatter_with_the_stated_noise():
@@ -151,16 +179,17 @@ def test_the_same_seed_draws_the_same_process_and_readings(kind, seed):
     assert one.read(wells, 0.02, first).tolist() == other.read(wells, 0.02, second).tolist()
 
 
-@pytest.mark.parametrize("kind", ["elution", "mixed mode"])
-def test_chances_are_the_share_of_wells_read_on_new_plates(kind):
+@pytest.mark.parametrize(("kind", "factors"), [("elution", 2), ("mixed mode", 2), ("island", 3)])
+def test_chances_are_the_share_of_wells_read_on_new_plates(kind, factors):
     """Against 40,000 wells read one by one, each on its own plate; four sds of that count."""
-    drawn = draw(kind, np.random.default_rng(3))
-    chances = drawn.chances(truth_grid(), 0.8, np.random.default_rng(4))
+    drawn = draw(kind, np.random.default_rng(3), factors=factors)
+    grid = truth_grid(factors)
+    chances = drawn.chances(grid, 0.8, np.random.default_rng(4))
     rng = np.random.default_rng(5)
     for level in (0.03, 0.3, 0.5, 0.8, 0.97):
         place = np.abs(chances - level).argmin()
         chance = chances[place]
-        wells = np.repeat(truth_grid()[[place]], 40_000, axis=0)
+        wells = np.repeat(grid[[place]], 40_000, axis=0)
         share = np.mean(drawn.read(wells, plate_errors(40_000, rng), rng) >= 0.8)
         assert share == pytest.approx(chance, abs=4 * np.sqrt(chance * (1 - chance) / 40_000))
 
