@@ -169,8 +169,8 @@ def large_row(root: Path) -> tuple[str, float, float, str]:
     return name, float(done.stdout), 30.0, f"peak {peak:.2f} GiB (budget 2)"
 
 
-def main() -> None:
-    """Print the table."""
+def main() -> int:
+    """Print the table; return 1 where a row is over its budget."""
     parser = argparse.ArgumentParser(description=__doc__)
     parser.add_argument("--skip-large", action="store_true")
     given = parser.parse_args()
@@ -184,7 +184,8 @@ def main() -> None:
     for work, taken, budget, ratio in rows:
         verdict = "" if taken <= budget else "  OVER"
         print(f"{work:<50}{taken:9.2f}{budget:9.2f}  {ratio}{verdict}")
+    return int(any(taken > budget for _, taken, budget, _ in rows))
 
 
 if __name__ == "__main__":
-    main()
+    sys.exit(main())

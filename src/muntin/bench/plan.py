@@ -94,6 +94,7 @@ def propose(
     if asked.kept is not None and found is not None:
         edit = scored(view, asked.kept, found, placed, terms, aim)
     forecast = _forecast(view, selection, rows)
+    ruling = _ruling(view, forecast, asked.wells)
     return Plan(
         plate=plate,
         wells=placed.drop(columns="kept"),
@@ -101,8 +102,8 @@ def propose(
         aim=aim,
         seed=seed,
         protein_mg=protein_needed_mg(view.study, placed),
-        notices=plan_notices(view, selection, asked, stocks, found),
-        ruling=_ruling(view, forecast, asked.wells),
+        notices=plan_notices(view, selection, asked, stocks, ruling, found),
+        ruling=ruling,
         edit=edit,
     )
 

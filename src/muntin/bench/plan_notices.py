@@ -11,6 +11,7 @@ from muntin.bench.edit import chosen_again
 from muntin.bench.layout import default_controls
 from muntin.bench.room import Asked
 from muntin.design.selection import Selection
+from muntin.design.stopping import Ruling
 from muntin.record.definition import Definition
 from muntin.record.faults import counted, number
 from muntin.record.offers import Change, Offer
@@ -24,9 +25,13 @@ def plan_notices(
     selection: Selection,
     asked: Asked,
     stocks: Sequence[Stock],
+    ruling: Ruling,
     found: tuple[Offer | None, list[Change]] | None = None,
 ) -> tuple[str, ...]:
-    """Return what the user should know of a plan, in sentences."""
+    """Return what the user should know of a plan, in sentences.
+
+    Whether fewer wells would do is told where there is no verdict that says so.
+    """
     notices = []
     if view.awaited:
         labels = {r.name: r.label for r in view.study.definition.responses}
@@ -50,7 +55,8 @@ def plan_notices(
     if asked.kept is not None:
         notices += _lacking(view, asked.kept, asked)
     notices += [] if found is None else _again(selection, found[1])
-    notices += _saving(selection.forecast) if not view.fresh else []
+    if not view.fresh and ruling.word == "none":
+        notices += _saving(selection.forecast)
     return tuple(notices)
 
 

@@ -304,7 +304,8 @@ def _advice_sheet(
     """The screen of `advise`; in short it leaves notes, bridging wells and what is fixed to the
     files.
     """
-    written = [*_plan_lines(place.plan, place.remark), f"{place.folder}: map, advice.json, inputs"]
+    kept = "map, advice.json, inputs" if view.fresh else "map, forecast, advice.json, inputs"
+    written = [*_plan_lines(place.plan, place.remark), f"{place.folder}: {kept}"]
     said = " ".join(cautions(view, fixed=full))
     return sheet(
         view.study.definition.title,
