@@ -1,5 +1,6 @@
-"""All tables on the choice of plates, one after the other: plate series of two and of three factors,
-the seconds that a choice takes, forecasts against what then happened, and the search for the best.
+"""All tables on the choice of plates, one after the other: plate series of two and of three
+factors, the seconds that a choice takes, forecasts against what then happened, and the search for
+the best.
 
 Run: python -m tests.benchmarks.next_plate                    # as in the README
      python -m tests.benchmarks.next_plate --processes 2 --seeds 3       # a look
