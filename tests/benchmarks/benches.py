@@ -9,9 +9,11 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
+from muntin.design.selection import select
 from muntin.record.definition import Definition
 from muntin.record.notes import Plate
 from muntin.record.study import Study
+from muntin.window.assessment import Assessment
 from tests.benchmarks.processes import (
     ADDITIVE_LEVELS,
     PH_LEVELS,
@@ -108,6 +110,13 @@ def study_of(plates: list[pd.DataFrame], factors: int = 2) -> Study:
         plates=tuple(Plate(name=n, file=f"plates/{n}.csv") for n in of_plates),
         notices=(),
     )
+
+
+def picked(view: Assessment, wells: int, seed: int) -> Array:
+    """Conditions (wells, factors) that are planned next."""
+    selection = select(view, wells, "edge", seed)
+    numbers = [pick.candidate for pick in selection.picks]
+    return selection.candidates.iloc[numbers].to_numpy(dtype=float)
 
 
 def read_plate(

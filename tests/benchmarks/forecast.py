@@ -26,7 +26,7 @@ from muntin.design.further import Rooms, prospects
 from muntin.design.selection import select
 from muntin.record.study import Study
 from muntin.window.assessment import Assessment, Surrogate, assess
-from tests.benchmarks.benches import DEFINITION, TARGET, Truth, read_plate, study_of
+from tests.benchmarks.benches import DEFINITION, TARGET, Truth, picked, read_plate, study_of
 from tests.benchmarks.processes import PLATE_SD, DrawnProcess, draw, plate_errors
 
 Floats = NDArray[np.float64]
@@ -118,13 +118,6 @@ def play(kind: str, seed: int, surrogate: Surrogate, wells: Sequence[int]) -> li
         plates.append(read_plate(process, conditions, plate_errors(1, rng, sd)[0], rng))
         cases += [*_next_plate(kind, process, truth, plates, wells, rng, sd, seed, surrogate)]
     return cases
-
-
-def picked(view: Assessment, wells: int, seed: int) -> Floats:
-    """Conditions (wells, 2) of the next plate."""
-    selection = select(view, wells, "edge", seed)
-    numbers = [pick.candidate for pick in selection.picks]
-    return selection.candidates.iloc[numbers].to_numpy(dtype=float)
 
 
 def _next_plate(
