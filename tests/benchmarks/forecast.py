@@ -25,7 +25,7 @@ from numpy.typing import ArrayLike, NDArray
 from muntin.design.further import Rooms, prospects
 from muntin.design.selection import select
 from muntin.record.study import Study
-from muntin.window.assessment import Assessment, Surrogate, assess
+from muntin.window.assessment import Surrogate, assess
 from tests.benchmarks.benches import DEFINITION, TARGET, Truth, picked, read_plate, study_of
 from tests.benchmarks.processes import PLATE_SD, DrawnProcess, draw, plate_errors
 
