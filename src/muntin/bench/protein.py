@@ -14,11 +14,6 @@ from muntin.record.study import Study
 LOADED = ("test", "bridge", "reference", "load", "no_resin")
 
 
-def wells_with_protein(roles: Iterable[str]) -> int:
-    """How many wells of these roles are given protein; loads and wells without resin are too."""
-    return sum(role in LOADED for role in roles)
-
-
 def wells_mg(definition: Definition, rows: pd.DataFrame) -> NDArray[np.float64]:
     """Protein (n,) in mg that each row of a plan or plate takes, 0 where the study does not say.
 

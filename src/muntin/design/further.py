@@ -21,10 +21,10 @@ from muntin.design.levels import Levels
 from muntin.design.outlook import Outlook
 from muntin.design.selection import Selection
 from muntin.design.setpoint import set_points
-from muntin.record.definition import Definition
+from muntin.design.weighing import future_groups
 from muntin.surrogate.nodes import Surface
 from muntin.window.assessment import Assessment, target_of
-from muntin.window.coded import SharedBy, code, group_numbers, setting_sd, shared_by
+from muntin.window.coded import SharedBy, code, setting_sd, shared_by
 from muntin.window.predicted import Predicted
 from muntin.window.probability import Target
 from muntin.window.window import Window
@@ -149,8 +149,8 @@ class _Coming:
             surface.lightened(_NODES),
             P,
             code(definition, self.frame),
-            tuple(_groups(definition, self.frame, by) for by in shared.inside),
-            tuple(_groups(definition, self.frame, by) for by in shared.scale),
+            tuple(future_groups(definition, self.frame, by) for by in shared.inside),
+            tuple(future_groups(definition, self.frame, by) for by in shared.scale),
             watched,
             setting_sd(definition, self.frame, self.measured),
         )
@@ -213,8 +213,3 @@ def _watched(p: Array) -> Index:
     few = np.linspace(0, len(points) - 1, min(len(points), _WATCHED))
     return np.asarray(points[few.round().astype(int)], dtype=np.intp)
 
-
-def _groups(definition: Definition, frame: pd.DataFrame, by: tuple[str, ...]) -> Index:
-    """Groups on the plates to come; a column that only the run plates know is each plate's own."""
-    known = tuple(name for name in by if name in frame)
-    return group_numbers(definition, frame, known or ("plate",))
