@@ -10,6 +10,7 @@ from muntin.record.definition import Definition
 from muntin.report.words import (
     amount_text,
     axis_label,
+    beside,
     chance_text,
     condition_text,
     joined,
@@ -51,6 +52,20 @@ def test_a_choice_that_begins_with_the_label_is_not_doubled() -> None:
 def test_ranges_name_a_single_level_once() -> None:
     ranges = {"ph": (5.0, 5.8), "salt": (100.0, 100.0), "resin": ("A", "A")}
     assert ranges_text(definition(), ranges) == "pH 5.0 to 5.8, salt 100 mM and resin A"
+
+
+@pytest.mark.parametrize(
+    ("share", "limit", "text"),
+    [
+        (0.025, 0.025, "2.5 %"),
+        (0.0249, 0.025, "2.49 %"),
+        (0.02502, 0.025, "2.502 %"),
+        (0.03, 0.025, "3.0 %"),
+        (0.0003, 0.025, "under 0.1 %"),
+    ],
+)
+def test_a_share_is_told_from_its_limit(share, limit, text) -> None:
+    assert beside(share, limit) == text
 
 
 @pytest.mark.parametrize(

@@ -212,4 +212,3 @@ def _watched(p: Array) -> Index:
     points = still_open if len(still_open) >= 10 else np.arange(len(p))
     few = np.linspace(0, len(points) - 1, min(len(points), _WATCHED))
     return np.asarray(points[few.round().astype(int)], dtype=np.intp)
-

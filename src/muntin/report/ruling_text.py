@@ -9,7 +9,7 @@ import pandas as pd
 from muntin.record.definition import StopRule
 from muntin.record.faults import counted
 from muntin.record.study import Study
-from muntin.report.words import likely_text, per_cent, share_text
+from muntin.report.words import beside, likely_text, per_cent, share_text
 
 if TYPE_CHECKING:
     from muntin.bench.plan import Plan
@@ -54,7 +54,8 @@ def _figures(forecast: pd.DataFrame, rule: StopRule, wells: int) -> str:
     row = forecast[forecast["wells"] == wells].iloc[0]
     parts = []
     if rule.wrong_share is not None:
-        share, limit = share_text(row["wrong_share"]), per_cent(rule.wrong_share)
+        limit = per_cent(rule.wrong_share)
+        share = beside(row["wrong_share"], rule.wrong_share)
         parts.append(f"{share} called wrongly, rule {limit}")
     if rule.best_probability is not None:
         limit = per_cent(rule.best_probability)

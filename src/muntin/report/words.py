@@ -49,6 +49,14 @@ def share_text(share: float) -> str:
     return f"{100 * share:.1f} %"
 
 
+def beside(share: float, limit: float) -> str:
+    """Return a share of 1 in per cent with the digits, up to four, that tell it from a limit."""
+    for digits in range(1, 5):
+        if abs(share - limit) < 1e-9 or round(100 * share, digits) != round(100 * limit, 6):
+            break
+    return share_text(share) if digits == 1 else f"{100 * share:.{digits}f} %"
+
+
 def per_cent(share: float) -> str:
     """Return a share of 1 that was given, in per cent with the digits it has: "95 %"."""
     return f"{100 * share:.6g} %"
