@@ -33,6 +33,13 @@ def said(picks, p_mean, p_now=None, opening=False, definition=DEFINITION, candid
         ("edge", 0.2, 0.11, "probability 0.11, on the edge at pH 5.6"),
         ("edge", 0.95, 0.89, "probability 0.89, on the edge at pH 5.6"),
         ("edge", 0.2, 0.09, "probability 0.09, outside the edge at pH 5.6"),
+        ("edge", 0.2, 0.02, "probability 0.02, outside the edge at pH 5.6"),
+        (
+            "edge",
+            0.2,
+            0.01,
+            "probability 0.01, far outside the edge at pH 5.6: bears on it from afar",
+        ),
         ("edge", 0.97, 0.9, "probability 0.90, inside the edge at pH 5.6"),
         (
             "edge",

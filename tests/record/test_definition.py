@@ -116,6 +116,33 @@ def test_a_range_of_broken_steps_is_noticed(make):
     )
 
 
+PURITY = """
+[[responses]]
+name = "purity"
+kind = "fraction"
+"""
+
+
+@pytest.mark.parametrize(
+    ("more", "noticed"),
+    [
+        ("", False),
+        (PURITY, True),
+        (PURITY.replace("fraction", "positive"), False),
+        (f'{PURITY}\n[[shared_errors]]\nby = ["plate"]\nresponses = ["recovery"]\n', False),
+    ],
+)
+def test_an_error_of_load_shared_by_a_ratio_is_noticed(make, more, noticed):
+    found = open_study(make({"study.toml": STUDY + more})).notices
+    said = (
+        "study.toml: wells of a plate are taken to share an error of load or blank in each of "
+        "recovery, purity; a ratio within one well, such as a purity, has none: list the responses "
+        "that have it under [[shared_errors]]"
+    )
+    assert (said in found) == noticed
+    assert sum("ratio within one well" in notice for notice in found) == noticed
+
+
 def test_values_are_shown_with_the_decimals_of_the_step():
     ph, salt = factor(low=4.5, high=7.5, step=0.1), factor(low=50, high=500, step=10)
     assert [ph.shown(v) for v in (6, 6.1, 6.08)] == ["6.0", "6.1", "6.08"]

@@ -105,6 +105,7 @@ def test_no_condition_inside(view: Assessment, window: Window) -> None:
     lines = window_lines(view, replace(window, share=0.0, setpoint=setpoint, ranges=None))
     assert "nothing of the range reaches a probability of 0.90" in lines[0]
     assert lines[1] == "The best so far: pH 6.5 and Salt 300 mM: 75.6 % of new wells pass."
+    assert not any("met least" in line for line in lines)
 
 
 def test_window_that_the_data_do_not_support_is_withheld(view: Assessment, window: Window) -> None:
@@ -159,8 +160,25 @@ def test_every_condition_has_a_row_where_all_fit(view: Assessment) -> None:
 def test_else_conditions_are_gathered_by_level(view: Assessment) -> None:
     assert tables(view, WELLS)[1] == [
         "wells pH Salt (mM) p now why",
-        "3 5.0 100, 200(×2) 0.20 to 0.45 reason of A3",
-        "2 6.0 150, 300 0.30 to 0.90 reason of A5",
+        "3 5.0 100, 200(×2) 0.20 to 0.45 reason of A3 (1); reason of A4 (1); others",
+        "2 6.0 150, 300 0.30 to 0.90 reason of A5 (1); reason of A1 (1)",
+    ]
+
+
+def test_reasons_of_a_level_are_counted_and_what_one_well_repeats_is_left_out(
+    view: Assessment,
+) -> None:
+    said = {
+        "A1": "probability 0.90, inside the edge at pH 6.0",
+        "A2": "repeats plate-01 B3: probability 0.20, on the edge at pH 5.0",
+        "A3": "probability 0.45, on the edge at pH 5.0",
+        "A4": "well 2 of this condition: averages the noise",
+        "A5": "probability 0.30, on the edge at pH 6.0",
+    }
+    found = tables(view, WELLS.assign(reason=[said[w] for w in WELLS["well"]]))[1]
+    assert found[1:] == [
+        "3 5.0 100, 200(×2) 0.20 to 0.45 on the edge",
+        "2 6.0 150, 300 0.30 to 0.90 on the edge (1); inside the edge (1)",
     ]
 
 

@@ -15,6 +15,7 @@ Array = NDArray[np.float64]
 _INSIDE = 0.9
 _LEVEL = 0.98
 _SURE = 0.95
+_FAR = 0.01
 
 
 def reasons(
@@ -50,6 +51,8 @@ def _reason(pick: Pick, p: float, now: float, at: str, place: str) -> str:
         return f"{chance}, may beat the best condition so far"
     if p >= _LEVEL and now >= _INSIDE:
         return f"{chance}, reads the new plate's own error where the target is met"
+    if now <= _FAR:
+        return f"{chance}, far outside the edge at {at}: bears on it from afar"
     where = "inside" if now >= _INSIDE else "outside" if now <= 1.0 - _INSIDE else "on"
     return f"{chance}, {where} the edge at {at}"
 

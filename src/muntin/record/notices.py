@@ -25,6 +25,14 @@ def definition_notices(definition: Definition) -> Iterator[str]:
                     f"study.toml, factors, {factor.name}: whole steps from low end at "
                     f"{number(last)}, short of high, which is {number(high)}"
                 )
+    fractions = [response for response in definition.responses if response.kind == "fraction"]
+    if len(fractions) > 1 and "shared_errors" not in definition.model_fields_set:
+        names = ", ".join(response.name for response in fractions)
+        yield (
+            f"study.toml: wells of a plate are taken to share an error of load or blank in each of "
+            f"{names}; a ratio within one well, such as a purity, has none: list the responses "
+            "that have it under [[shared_errors]]"
+        )
 
 
 def well_notices(

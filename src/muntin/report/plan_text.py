@@ -14,6 +14,8 @@ from rich.console import Console, RenderableType
 from rich.table import Table
 from rich.text import Text
 
+from muntin.bench.outlay import COUNTS
+from muntin.bench.protein import protein_left_mg
 from muntin.design.stopping import asked_of_set_point
 from muntin.record.definition import Definition
 from muntin.record.factors import Factor
@@ -24,6 +26,7 @@ from muntin.report.words import (
     amount_text,
     axis_label,
     condition_text,
+    joined,
     likely_text,
     per_cent,
     share_text,
@@ -40,9 +43,11 @@ _OUTLAY = {
     "days": "days",
 }
 _TIES = ": ties plates"
+_AGAIN = re.compile(r"well \d+ of this condition")
 _NARROW, _WHY = 12, 20
 _WIDTH, _GAP = 90, 2
 _MOST_LINES = 14
+_REASONS = 2
 
 
 def plan_heading(plan: Plan) -> str:
@@ -222,14 +227,25 @@ def _span(p: pd.Series) -> str:
 
 
 def _why(rows: pd.DataFrame, factors: Sequence[Factor]) -> str:
-    """Return the reason of the well whose outcome is most open, the first wording of it.
+    """Return the reasons of the wells, that of the wells whose outcome is most open first.
 
-    What the row's other cells say, probability and setting, is left out.
+    What the row's other cells say, probability and setting, is left out, and so is what
+    repeats the condition, where not all wells do; wells that average the noise have the reason
+    of their condition.
     """
     openness = (rows["p_now"] - 0.5).abs().round(6)
-    first = rows.assign(open=openness).sort_values(["open", "reason"])["reason"].iloc[0]
+    ordered = rows.assign(open=openness).sort_values(["open", "reason"])["reason"]
     setting = "|".join(re.escape(f.label) for f in factors)
-    return re.sub(rf"probability [0-9.]+, | at ({setting}) \S+$", "", without_measured(str(first)))
+    left_out = rf"probability [0-9.]+, | at ({setting}) \S+$"
+    said = [re.sub(left_out, "", without_measured(str(reason))) for reason in ordered]
+    alike = [text for text in said if not _AGAIN.match(text)] or said
+    if len(set(alike)) > 1:
+        alike = [re.sub(r"^repeats [^:]+: ", "", text) for text in alike]
+    count = Counter(alike)
+    if len(count) == 1:
+        return alike[0]
+    parts = [f"{text} ({n})" for text, n in count.items()]
+    return "; ".join([*parts[:_REASONS], *(["others"] if parts[_REASONS:] else [])])
 
 
 def forecast_table(study: Study, plan: Plan, full: bool = True) -> Table:
@@ -237,7 +253,7 @@ def forecast_table(study: Study, plan: Plan, full: bool = True) -> Table:
 
     In short plates are left out, and of the set point only that is said which the stop rule asks.
     """
-    forecast, rule = plan.forecast, study.stopping.rule
+    forecast, rule, left = plan.forecast, study.stopping.rule, protein_left_mg(study)
     table = _plain_table()
     table.add_column("test wells")
     for wells in forecast["wells"]:
@@ -245,15 +261,27 @@ def forecast_table(study: Study, plan: Plan, full: bool = True) -> Table:
     for name, label in _OUTLAY.items():
         if name in forecast and (name != "plates" or (full and forecast[name].max() > 1)):
             digits = ".1f" if name == "days" else ".3g"
-            table.add_row(label, *(f"{value:{digits}}" for value in forecast[name]))
+            of = f" of {left:.3g}" if name == "mg" and left is not None else ""
+            table.add_row(label + of, *(f"{value:{digits}}" for value in forecast[name]))
     table.add_row("may be called wrongly", *map(share_text, forecast["wrong_share"]))
     asked = rule is not None and rule.best_probability is not None
     if full or not asked:
         table.add_row("set point passes", *map(share_text, forecast["set_point"]))
     if full or asked:
         reaches = f"set point reaches {per_cent(asked_of_set_point(study))}"
-        table.add_row(reaches, *map(likely_text, forecast["reached"]))
+        today, *then = forecast["reached"]
+        table.add_row(f"chance that {reaches}", "yes" if today else "no", *map(likely_text, then))
     return table
+
+
+def not_forecast_line(study: Study, plan: Plan) -> list[str]:
+    """Return why larger numbers of wells are not forecast, where they are not."""
+    beyond = [str(k) for k in COUNTS if k > plan.forecast["wells"].max()]
+    if not beyond:
+        return []
+    short = protein_left_mg(study) is not None
+    why = "the protein left does not reach" if short else "they do not fit on the free wells"
+    return [f"Not forecast for {joined(beyond)}: {why}."]
 
 
 def known_table(definition: Definition, known: pd.DataFrame, most: int = 20) -> Table:

@@ -15,6 +15,8 @@ if TYPE_CHECKING:
 
 # A fall of the wrongly called share below this is hardly one.
 _HARDLY = 0.1
+# Fewer series than these have no tenth one.
+_TOLD = 10
 # Chance that a difference is called clear where there is none.
 _MISTAKEN = 0.05
 
@@ -36,7 +38,9 @@ def _own(own: pd.Series, after: pd.DataFrame) -> str:
         half = f"half within {_spent(own, 'half')}, "
         sooner = half if own["tests_half"] < own["tests_most"] else ""
         first = "Go on with fewer" if fewer else "Go on"
-        return f"{first}: {count}, {sooner}nine in ten within {_spent(own, 'most')}."
+        few = own["series"] < _TOLD
+        doubt = "; so few series hardly tell nine in ten" if few else ""
+        return f"{first}: {count}, {sooner}nine in ten within {_spent(own, 'most')}{doubt}."
     before, last = float(after["wrong"].iloc[0]), float(after["wrong"].iloc[-1])
     fall = f"what is called wrongly goes from {share_text(before)} to {share_text(last)}"
     if np.isfinite(own["tests_half"]):

@@ -27,8 +27,8 @@ def ruling_line(study: Study, plan: Plan) -> str:
     said = {
         "met": f": the stop rule is met today ({_figures(forecast, rule, 0)})",
         "out of reach": (
-            f", but up to {counted(most, 'test well')} are not expected to meet the stop rule "
-            f"({after})"
+            f", but do not count on stopping soon: up to {counted(most, 'test well')} are not "
+            f"expected to meet the stop rule ({after})"
         ),
         "nothing gained": f": {counted(most, 'test well')} would bring next to nothing ({after})",
     }

@@ -24,12 +24,13 @@ from muntin.report.plan_text import (
     forecast_table,
     height,
     known_table,
+    not_forecast_line,
     plan_heading,
     plan_tables,
     usual_reason,
 )
 from muntin.report.ruling_text import ruling_line
-from muntin.report.sides_text import sides_line
+from muntin.report.sides_text import least_line, sides_line
 from muntin.report.words import (
     JUDGED_BY,
     UNSUPPORTED,
@@ -153,6 +154,8 @@ def window_lines(view: Assessment, window: Window | None, most: int = _FEW) -> l
     if window.ranges is not None:
         lines.append(f"Ranges that hold together: {ranges_text(definition, window.ranges)}.")
         lines += sides_line(definition, window.sides)
+    elif not window.share:
+        lines += least_line(view, window.setpoint)
     lines.append(f"Share of the range we may still call wrongly: {share_text(window.wrong_share)}.")
     return lines + _stop(view, window)
 
@@ -247,6 +250,8 @@ def plan_sections(
         told.append(f"{_capital(usual_reason(plan.wells))}.")
     early = "No forecast before the first readings."
     ahead: list[RenderableType] = [forecast_table(view.study, plan, full)]
+    if full:
+        ahead += not_forecast_line(view.study, plan)
     if full or plan.ruling.word != "none":
         ahead.append(ruling_line(view.study, plan))
     return [("Next", [*told, table]), ("Forecast", [early] if view.fresh else ahead)]

@@ -36,8 +36,8 @@ def lack_of_fit(response: Response, stack: Stack) -> list[Check]:
     sizes = f"sd {_size(needed, unit)}; {repeats} {_size(found[0].sd, unit)}"
     if passed:
         sentence = (
-            f"{response.label}: conditions scatter about the surface no more than repeats do "
-            f"({sizes})."
+            f"{response.label}: conditions do not clearly scatter about the surface by more than "
+            f"repeats do ({sizes})."
         )
     else:
         sentence = (
