@@ -87,7 +87,8 @@ def test_two_factors_make_a_map(tmp_path: Path) -> None:
     verdict = verdicts(view.study)["verdict"]
     for name in ("passed", "failed"):
         assert points(axes, f"run, {name}") == (verdict == name).sum() > 0
-    assert points(axes, "proposed") == 2
+    assert [points(axes, f"proposed{more}") for more in ("", ", bridging")] == [1, 1]
+    assert lines(axes, "proposed, bridging")[0].get_xdata() == [5.0]
     assert window is not None
     (star,) = lines(axes, "set point" if window.share else "best so far")
     assert star.get_xdata() == [window.setpoint["ph"]]
@@ -97,11 +98,13 @@ def test_two_factors_make_a_map(tmp_path: Path) -> None:
 def test_markers_are_told_apart_without_colour(tmp_path: Path) -> None:
     figure, *_ = drawn(tmp_path, SMALL)
     (axes,) = panels(figure)
-    passed, failed, proposed = (
-        lines(axes, label)[0] for label in ("run, passed", "run, failed", "proposed")
+    passed, failed, proposed, bridging = (
+        lines(axes, label)[0]
+        for label in ("run, passed", "run, failed", "proposed", "proposed, bridging")
     )
     assert passed.get_markerfacecolor() != failed.get_markerfacecolor()
-    assert passed.get_marker() == failed.get_marker() != proposed.get_marker()
+    assert passed.get_marker() == failed.get_marker()
+    assert len({line.get_marker() for line in (passed, proposed, bridging)}) == 3
 
 
 def test_edge_follows_the_required_probability(tmp_path: Path) -> None:
@@ -129,7 +132,8 @@ def test_a_factor_with_choices_gets_a_panel_a_choice(tmp_path: Path) -> None:
     figure, view, _ = drawn(tmp_path, WITH_RESIN)
     every = panels(figure)
     assert [axes.get_title(loc="left") for axes in every] == ["Resin A", "Resin B"]
-    assert [points(axes, "proposed") for axes in every] == [1, 1]
+    assert [points(axes, "proposed") for axes in every] == [1, 0]
+    assert [points(axes, "proposed, bridging") for axes in every] == [0, 1]
     run = verdicts(view.study)
     for axes, choice in zip(every, ("A", "B"), strict=True):
         marks = sum(points(axes, f"run, {name}") for name in ("passed", "failed"))
@@ -263,7 +267,8 @@ def title(figure: Figure) -> str:
 def test_nothing_read_shows_the_plan_alone(tmp_path: Path) -> None:
     figure, *_ = drawn(tmp_path, {"study.toml": STUDY}, read=False)
     (axes,) = figure.axes
-    assert (len(axes.collections), points(axes, "proposed")) == (0, 2)
+    assert (len(axes.collections), points(axes, "proposed")) == (0, 1)
+    assert points(axes, "proposed, bridging") == 1
     assert title(figure).endswith("Nothing has been read yet: the opening plate")
 
 

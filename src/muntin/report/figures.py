@@ -40,12 +40,15 @@ def draw(view: Assessment, window: Window | None, wells: pd.DataFrame | None = N
 
 
 def proposed_conditions(view: Assessment, wells: pd.DataFrame | None) -> pd.DataFrame:
-    """Return the conditions of a plan to run, a row each, with the number of wells."""
+    """Return the conditions of a plan to run, a row each, with the number of wells, and whether
+    none of them is a test well.
+    """
     names = list(view.study.definition.factor_names)
     if wells is None:
-        return pd.DataFrame({name: [] for name in [*names, "wells"]})
+        return pd.DataFrame({name: [] for name in [*names, "wells", "bridging"]})
     run = wells[wells["role"].isin(["test", "bridge", "reference"])]
-    return run.groupby(names, sort=False).size().rename("wells").reset_index()
+    tying = run.assign(bridging=run["role"] != "test").groupby(names, sort=False)["bridging"]
+    return tying.agg(wells="size", bridging="all").reset_index()
 
 
 def _subtitle(view: Assessment, window: Window | None) -> str:

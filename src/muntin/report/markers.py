@@ -46,23 +46,26 @@ def mark_run(axes: Axes, table: pd.DataFrame, x: str, y: str) -> None:
 
 
 def mark_proposed(axes: Axes, table: pd.DataFrame, x: str, y: str) -> None:
-    """Mark conditions of the next plate by diamonds, whole ones at the border of the range too."""
-    if not len(table):
-        return
-    axes.plot(
-        table[x],
-        table[y],
-        linestyle="none",
-        marker="D",
-        markersize=9,
-        markerfacecolor="none",
-        markeredgecolor=ACCENT,
-        markeredgewidth=1.8,
-        path_effects=halo(3.4),
-        label="proposed",
-        clip_on=False,
-        zorder=5,
-    )
+    """Mark conditions of the next plate by diamonds, those that only tie plates by squares; whole
+    ones at the border of the range too.
+    """
+    for bridging, marker, label in ((False, "D", "proposed"), (True, "s", "proposed, bridging")):
+        here = table[table["bridging"] == bridging]
+        if len(here):
+            axes.plot(
+                here[x],
+                here[y],
+                linestyle="none",
+                marker=marker,
+                markersize=11 if bridging else 9,
+                markerfacecolor="none",
+                markeredgecolor=ACCENT,
+                markeredgewidth=1.8,
+                path_effects=halo(3.4),
+                label=label,
+                clip_on=False,
+                zorder=5,
+            )
 
 
 def mark_set_point(axes: Axes, window: Window, x: float, y: float) -> None:
