@@ -14,6 +14,7 @@ from muntin.record.keys import Keys, Number, NumberOrText, Text, Truths, Whole, 
 from muntin.record.limits import Forbidden, Limit, forbidden_faults, limit_faults
 from muntin.record.protein import Protein, protein_faults
 from muntin.record.responses import Response, response_faults
+from muntin.record.uptake_keys import UptakeKeys, uptake_faults
 from muntin.record.wells import WellError, all_wells, last_well, wells_in
 
 STUDY_FILE = "study.toml"
@@ -142,6 +143,9 @@ class Definition(Keys):
     protein: Protein | None = key(None, says="what there is to load")
     plan: PlanRules = key(PlanRules(), says="how new plates are planned")
     stop: StopRule | None = key(None, says="when to stop, fixed before data")
+    uptake: UptakeKeys = key(
+        UptakeKeys(), says="what uptake curves (uptake/*.csv) were run with, for the contact time"
+    )
     fixed: dict[str, NumberOrText] = key(
         {}, says="what the window is conditional on, repeated wherever it is stated"
     )
@@ -216,6 +220,7 @@ def definition_faults(definition: Definition) -> list[Fault]:
     if definition.factors and not own:
         faults += limit_faults(definition.limits, definition.factors)
         faults += forbidden_faults(definition.forbidden, definition.limits, definition.factors)
+    faults += uptake_faults(definition.uptake)
     return [*faults, *_shared_faults(definition), *_plan_faults(definition)]
 
 

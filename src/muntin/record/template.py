@@ -26,6 +26,7 @@ from muntin.record.limits import Forbidden, Limit
 from muntin.record.protein import Protein
 from muntin.record.responses import Response
 from muntin.record.tables import SUFFIXES
+from muntin.record.uptake_keys import UptakeKeys
 
 _STUDY = {"title": "Invented example: elution of a protein from a resin", "plate": 96}
 _STUDY |= {"required_probability": 0.90, "judged_by": "well"}
@@ -95,6 +96,7 @@ def study_text(factors: int = 2) -> str:
         _table("[protein]", "protein", Protein),
         _table("[plan]", "plan", PlanRules),
         _table("[stop]", "stop", StopRule),
+        _table("[uptake]", "uptake", UptakeKeys),
         _comment(_says("fixed")) + "#[fixed]\n#stages = 2\n",
     ]
     return "\n".join(parts)
