@@ -68,6 +68,15 @@ class Uptake:
         """Return the share of equilibrium after a time."""
         return interval(*self.over_laws(lambda grid: grid.share_at(minutes)))
 
+    def whole(self) -> float:
+        """Return the probability that all that is offered binds in the end, 0 where not known."""
+        offered = self.curve.offered
+        if offered is None:
+            return 0.0
+        # The node at the offer itself stands for what lies above it as much as below.
+        level, weights = self.over_laws(lambda grid: grid.equilibrium)
+        return float(weights[level >= offered * (1.0 - 1e-9)].sum())
+
     def noise(self) -> float:
         """Return the noise of one reading as a share of the load at equilibrium, over the laws."""
         return float(np.dot(self.law_weights, [grid.noise for grid in self.grids]))
@@ -110,3 +119,8 @@ def quantiles(values: Floats, weights: Floats, at: Sequence[float]) -> list[floa
         nearest = x[fresh][min(holds, len(together) - 1)]
         found.append(float(nearest if heavy else np.interp(p, middle, x[fresh])))
     return found
+
+
+def three_digits(value: float) -> str:
+    """Return a number with three digits that count, never in powers of ten."""
+    return np.format_float_positional(value, precision=3, unique=False, fractional=False, trim="-")

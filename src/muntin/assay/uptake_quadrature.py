@@ -105,7 +105,7 @@ class _Cell(NamedTuple):
     load: float
     sd: float
     side: float
-    count: int
+    repeats: int
     squares: float
 
     def log_density(self, expected: Floats, variance: Floats) -> Floats:
@@ -113,8 +113,8 @@ class _Cell(NamedTuple):
         beyond, whole = expected - self.load, variance + self.sd**2
         if self.side:
             return np.asarray(log_ndtr(self.side * beyond / np.sqrt(whole)))
-        squares = self.count * beyond**2 + self.squares
-        return np.asarray(-0.5 * (squares / whole + self.count * np.log(2.0 * np.pi * whole)))
+        squares = self.repeats * beyond**2 + self.squares
+        return np.asarray(-0.5 * (squares / whole + self.repeats * np.log(2.0 * np.pi * whole)))
 
 
 def _cells(curve: Curve) -> tuple[_Cell, ...]:

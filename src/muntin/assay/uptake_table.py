@@ -189,3 +189,18 @@ def _notices(table: Table, states: np.ndarray, out: np.ndarray) -> list[str]:
         told = "censored (< or >), used as such"
         notices.append(f"{table.file}: {counted(censored, 'reading')} {told}")
     return notices
+
+
+def planned_time(keys: UptakeKeys, asked: float | None) -> float | None:
+    """Return the planned contact time in min: the one asked for, else that of [uptake], or None.
+
+    Raises StudyFaults where the one asked for is not above 0.
+    """
+    if asked is None:
+        return keys.planned_min
+    if not 0 < asked < np.inf:
+        fault = Fault(
+            file="--at", value=number(asked), problem="must lie above", allowed=f"{number(0)} min"
+        )
+        raise StudyFaults([fault])
+    return asked
