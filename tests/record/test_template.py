@@ -67,7 +67,7 @@ def _optional_keys() -> list[tuple[str, str]]:
         heading = re.fullmatch(r"#?(\[.+\])", line)
         table = heading[1] if heading else table
         key = OPTIONAL.fullmatch(line)
-        if key and key[1] not in CLASHING:
+        if key and (key[1] not in CLASHING or table == "[fixed]"):
             keys.append((table, key[1]))
     return keys
 
