@@ -78,7 +78,7 @@ class Uptake:
         return float(weights[level >= offered * (1.0 - 1e-9)].sum())
 
     def noise(self) -> float:
-        """Return the noise of one reading as a share of the load at equilibrium, over the laws."""
+        """Return the noise of one reading as a share of the last load, over the laws."""
         return float(np.dot(self.law_weights, [grid.noise for grid in self.grids]))
 
 

@@ -20,13 +20,13 @@ from numpy.typing import ArrayLike
 
 from muntin.record.keys import Floats
 
-_TAKES = (-np.log(50.0), np.log(50.0), 321)
+_MOST, _ROWS = 50.0, 321
 _TIMES = (-9.0, 7.0, 641)
 _DEEP, _CELLS = 18.0, 1500
 
 
 class _Tables(NamedTuple):
-    """What is interpolated, over even steps of ln Lambda (takes,) and of ln t/t50 (times,).
+    """What is interpolated, over Lambda (takes,) and even steps of ln t/t50 (times,).
 
     `share` (takes, times) of equilibrium; `tau` (takes, cells + 1) at the depths `z` (cells + 1,),
     where the share of equilibrium is 1 - exp(-z).
@@ -68,16 +68,19 @@ def core_time(share: float, takes: ArrayLike) -> Floats:
 
 
 def _row(takes: ArrayLike) -> tuple[np.ndarray, Floats]:
-    low, high, count = _TAKES
-    bounded = np.clip(np.asarray(takes, dtype=float), np.exp(low), np.exp(high))
-    at = np.clip((np.log(bounded) - low) / (high - low) * (count - 1), 0.0, count - 1 - 1e-9)
+    """Return the row below and the part of the way to the next."""
+    bounded = np.clip(np.asarray(takes, dtype=float), 1.0 / _MOST, _MOST)
+    far = np.log(bounded) / np.log(_MOST)
+    at = 0.5 * (_ROWS - 1) * (1.0 + np.sign(far) * np.sqrt(np.abs(far)))
+    at = np.clip(at, 0.0, _ROWS - 1 - 1e-9)
     row = at.astype(np.intp)
     return row, at - row
 
 
 @lru_cache(maxsize=1)
 def _tables() -> _Tables:
-    takes = np.exp(np.linspace(*_TAKES))
+    even = np.linspace(-1.0, 1.0, _ROWS)
+    takes = _MOST ** (np.sign(even) * even**2)  # close where the law bends, at 1
     z = _DEEP * (np.arange(_CELLS + 1) / _CELLS) ** 3
     middle = 0.5 * (z[1:] + z[:-1])
     ends, between = _slope(z, takes), _slope(middle, takes)

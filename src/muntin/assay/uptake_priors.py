@@ -40,7 +40,7 @@ class LogNormal:
 @dataclass(frozen=True, kw_only=True)
 class Priors:
     """Laws of the capacity (mg/mL resin), the time to half of equilibrium (min), and the noise of
-    one reading as a share of the load at equilibrium.
+    one reading as a share of the load at the last time.
     """
 
     capacity: LogNormal

@@ -33,7 +33,7 @@ class Grid:
     """The posterior of one law: weighted nodes (nodes,), capacity in mg/mL resin, half time in min.
 
     `weights` add up to 1; `log_evidence` is that of the law; `noise` the posterior median of the
-    noise as a share of the load at equilibrium.
+    noise as a share of the load at the last time.
     """
 
     law: Law
@@ -177,8 +177,9 @@ class _Model:
         offered, capacity = self.offered, np.exp(x)
         takes = capacity / offered if offered else np.zeros_like(capacity)
         level = np.minimum(capacity, offered) if offered else capacity
-        variance = (level * np.exp(log_noise)[:, None, None]) ** 2
         rate = np.exp(-log_half)[..., None]
+        last = level * self.law.share(max(cell.time for cell in self.cells) * rate, takes)
+        variance = (last * np.exp(log_noise)[:, None, None]) ** 2
         total = (
             self.priors.half_time.log_density(log_half)[..., None]
             + self.priors.capacity.log_density(x)

@@ -14,7 +14,7 @@ from muntin.record.keys import Floats
 _USUAL, _BOUNDS = (20.0, 40.0), (4.0, 40.0)
 _TOLD = 0.9  # weight above which one law is told from the others
 _NEAR = 0.95  # share of equilibrium that counts as reached
-_NOISY = 0.10
+_NOISY, _USUAL_NOISE = 0.10, 0.05
 
 
 class Remark(NamedTuple):
@@ -185,7 +185,9 @@ def _falling(uptake: Uptake) -> Remark | None:
     means = np.array([_mean(uptake, t) for t in times])
     counts = np.array([((curve.times == t) & (curve.sides == 0)).sum() for t in times])
     top = int(np.argmax(means))
-    sd = uptake.noise() * uptake.equilibrium().median * np.sqrt(1 / counts[top] + 1 / counts[-1])
+    # A fall that no law follows counts as noise in the fit, so that its noise says too much here.
+    noise = min(uptake.noise(), _USUAL_NOISE) * uptake.load_at(times[-1]).median
+    sd = noise * np.sqrt(1 / counts[top] + 1 / counts[-1])
     if means[top] - means[-1] <= 3.0 * sd:
         return None
     high, low = three_digits(means[top]), three_digits(means[-1])
@@ -201,7 +203,7 @@ def _scatter(uptake: Uptake) -> Remark | None:
     if noise <= _NOISY:
         return None
     sentence = (
-        f"The readings scatter by {100 * noise:.0f} % of the load at equilibrium about the curve; "
+        f"The readings scatter by {100 * noise:.0f} % of the last load about the curve; "
         "2 to 5 % is usual between wells (common practice, no source)."
     )
     return Remark("scatter", False, sentence)
