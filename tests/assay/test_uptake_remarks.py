@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import replace
+from functools import cache
 
 import numpy as np
 import pytest
@@ -25,12 +26,17 @@ def told(
     return {remark.kind: remark for remark in found}
 
 
+@cache
+def told_of_a_whole_curve(planned: float) -> dict[str, Remark]:
+    return told(first_order(), phase_ratio=30.0, planned=planned)
+
+
 def first_order(noise: float = 0.01, times: tuple[float, ...] = LONG, seed: int = 1) -> Curve:
     return drawn(FirstOrder(), 45.0, 15.0, noise, np.random.default_rng(seed), times)
 
 
 def test_nothing_is_amiss_with_a_whole_curve() -> None:
-    assert told(first_order(), phase_ratio=30.0, planned=60.0) == {}
+    assert told_of_a_whole_curve(60.0) == {}
 
 
 @pytest.mark.parametrize(
@@ -73,7 +79,7 @@ def test_the_last_point_still_climbs() -> None:
     found = told(first_order(times=short))
     assert found["still climbing"].loud
     assert "at 20 min the resin holds" in found["still climbing"].sentence
-    assert "still climbing" not in told(first_order())
+    assert "still climbing" not in told_of_a_whole_curve(60.0)
 
 
 def test_laws_that_fit_alike_are_named_with_their_times() -> None:
@@ -84,12 +90,12 @@ def test_laws_that_fit_alike_are_named_with_their_times() -> None:
 
 def test_a_prior_that_weighs_in_is_said() -> None:
     assert "priors" in told(curve((5, 10), (4.0, 7.9)))
-    assert "priors" not in told(first_order())
+    assert "priors" not in told_of_a_whole_curve(60.0)
 
 
 def test_a_plan_beyond_the_readings_is_said() -> None:
-    assert "beyond the readings" not in told(first_order(), planned=240.0)
-    found = told(first_order(), planned=241.0)["beyond the readings"]
+    assert "beyond the readings" not in told_of_a_whole_curve(240.0)
+    found = told_of_a_whole_curve(241.0)["beyond the readings"]
     assert found.sentence == "The planned 241 min lie beyond the last reading, at 240 min."
 
 

@@ -66,7 +66,7 @@ def _no_table(folder: Path, wanted: str | None, names: Sequence[str]) -> Fault:
         problem = "holds no table of an uptake curve"
         hint = "write time_min,load or time_min,liquid to uptake/curve.csv"
         return Fault(file=str(folder / FOLDER), problem=problem, hint=hint)
-    close = nearest(wanted, names)
+    close = nearest(wanted, [*(Path(name).stem for name in names), *names])
     known = f"did you mean {close}?" if close else f"known: {listed(names)}" if names else ""
     return Fault(file=wanted, problem=f"is no table and none in {folder / FOLDER}", hint=known)
 
