@@ -75,11 +75,11 @@ def posterior(law: Law, curve: Curve, priors: Priors) -> Grid:
     for _ in range(2):
         log_noise = np.linspace(*ends, _FEW)
         log_half = model.half_times(log_noise, _COARSE)
-        mass = _mass(log_noise, log_half, *model.capacities(log_half, log_noise))
+        mass = _mass(log_noise, log_half, *model.capacities(log_half, log_noise, _CAPACITIES))
         ends = _kept(log_noise, logsumexp(mass, axis=(1, 2)))
     log_noise = np.linspace(*ends, _NOISES)
     log_half = model.half_times(log_noise, _FINE)
-    log_capacity, density = model.capacities(log_half, log_noise)
+    log_capacity, density = model.capacities(log_half, log_noise, _CAPACITIES)
     mass = _mass(log_noise, log_half, log_capacity, density)
     evidence = float(logsumexp(mass))
     weights = np.exp(mass - evidence)
@@ -150,9 +150,7 @@ class _Model:
         step = (highs - lows) / (count - 1)
         return np.linspace(lows + part * step, highs + part * step, count, axis=-1)
 
-    def capacities(
-        self, log_half: Floats, log_noise: Floats, count: int = _CAPACITIES
-    ) -> tuple[Floats, Floats]:
+    def capacities(self, log_half: Floats, log_noise: Floats, count: int) -> tuple[Floats, Floats]:
         """Return ln capacities that hold the posterior at each (noise, half time), and the log
         density there; both have shape (noises, halves, capacities).
         """
