@@ -57,18 +57,52 @@ class Optics:
 
 @dataclass(frozen=True, kw_only=True, slots=True, eq=False)
 class Blanks:
-    """Blanks of a plate, G of them: values and standard uncertainties in AU, shape (G, 3).
+    """Blanks of a plate: G that serve samples, means of K kinds that were read.
 
-    `names` says what each is of, `borrowed` whether another buffer's stands for it, `spread` the
-    range of its single reads of the protein's wavelength (AU), `count` their number.
+    Parameters
+    ----------
+    names
+        What each of the G is of.
+    value
+        AU, shape (G, 3).
+    kind_sd
+        Standard uncertainty of the mean of each kind, AU, shape (K, 3).
+    weights
+        Share of each kind in each blank, shape (G, K, 3): blanks of one kind err together.
+    other_sd
+        Standard uncertainty besides, where another buffer's stands for it, AU, shape (G, 3).
+    borrowed
+        Whether another buffer's stands for it.
+    spread
+        Range of the single reads of the protein's wavelength, AU, shape (G,).
+    count
+        Their number, shape (G,); 0 where the blank was entered.
     """
 
     names: tuple[str, ...]
     value: Floats
-    sd: Floats
+    kind_sd: Floats
+    weights: Floats
+    other_sd: Floats
     borrowed: tuple[bool, ...]
     spread: Floats
     count: NDArray[np.int_]
+
+    @property
+    def sd(self) -> Floats:
+        """Standard uncertainty of each of the G, AU, shape (G, 3)."""
+        return np.hypot(np.sqrt(((self.weights * self.kind_sd) ** 2).sum(axis=1)), self.other_sd)
+
+    def moved(self, shifts: Shifts) -> Array:
+        """Return the blanks as shifts of `blank` (..., K, 3) and `blank_other` (..., G, 3) have
+        them, shape (..., G, 3).
+        """
+        moved = self.value + self.other_sd * shifts.get("blank_other", 0.0)
+        if "blank" in shifts:
+            moved = moved + np.einsum(
+                "gkw,...kw->...gw", self.weights * self.kind_sd, shifts["blank"]
+            )
+        return np.asarray(moved)
 
 
 def net(optics: Optics, blanks: Blanks, shifts: Shifts, own: str = "") -> Array:
@@ -79,12 +113,12 @@ def net(optics: Optics, blanks: Blanks, shifts: Shifts, own: str = "") -> Array:
     optics, blanks
         Samples and blanks.
     shifts
-        What moves inputs from their values, in standard uncertainties: {own}read (..., n, 3) and
-        blank (..., G, 3); none where absent.
+        What moves inputs from their values, in standard uncertainties: {own}read (..., n, 3),
+        and those of `Blanks.moved`; none where absent.
     own
         Put before the names of shifts that single samples have.
     """
-    blank = blanks.value + blanks.sd * shifts.get("blank", 0.0)
+    blank = blanks.moved(shifts)
     read = optics.absorbance + optics.read_sd * shifts.get(f"{own}read", 0.0)
     return np.asarray(read - blank[..., optics.blank, :])
 

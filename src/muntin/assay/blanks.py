@@ -3,9 +3,9 @@
 from __future__ import annotations
 
 from collections import defaultdict
-from collections.abc import Mapping, Sequence
+from collections.abc import Mapping
 from dataclasses import dataclass, field
-from typing import Any
+from typing import Any, NamedTuple
 
 import numpy as np
 import pandas as pd
@@ -31,14 +31,21 @@ def _text(value: Any) -> str:
     return str(value or "").strip()
 
 
+class Served(NamedTuple):
+    """One blank that serves samples: its name, the kinds whose mean it is, whether borrowed."""
+
+    name: str
+    kinds: tuple[int, ...]
+    borrowed: bool
+
+
 @dataclass
 class BlankBook:
-    """Reads of blank wells by kind, and the blanks that have been asked for so far."""
+    """Reads of blank wells by kind, (m, 3) each, and the blanks that have been asked for so far."""
 
     assay: Assay
-    reads: Mapping[Kind, Sequence[Floats]]
-    rows: list[tuple[str, Floats, Floats, bool, float, int]] = field(default_factory=list)
-    asked: dict[tuple[str, tuple[str, ...] | None], int] = field(default_factory=dict)
+    reads: Mapping[Kind, Floats]
+    served: list[Served] = field(default_factory=list)
 
     @property
     def empty(self) -> bool:
@@ -51,56 +58,60 @@ class BlankBook:
         Where it has none, those of the same buffer at other values stand for it, then all of the
         plate, then the one entered.
         """
-        at = (liquid, by)
-        if at not in self.asked:
-            self.asked[at] = len(self.rows)
-            self.rows.append(self._row(liquid, by))
-        return self.asked[at]
-
-    def _row(
-        self, liquid: str, by: tuple[str, ...] | None
-    ) -> tuple[str, Floats, Floats, bool, float, int]:
+        every = [*enumerate(self.reads)]
+        same = tuple(k for k, kind in every if kind[0] == liquid)
+        exact = same if by is None else tuple(k for k, kind in every if kind == (liquid, by))
+        kinds = exact or same or tuple(k for k, _ in every)
         name = ", ".join([liquid, *(value for value in by or () if value)])
-        same = [read for kind, reads in self.reads.items() if kind[0] == liquid for read in reads]
-        exact = same if by is None else [*self.reads.get((liquid, by), ())]
-        every = [read for reads in self.reads.values() for read in reads]
-        here = exact or same or every
-        if not here:
-            entered = self.assay.blank_au or 0.0
-            sd = np.full(3, self.assay.blank_sd)
-            return name, np.full(3, entered), sd, False, 0.0, 0
-        value, sd, spread = _summary(np.array(here), self.assay.blank_sd)
-        if not exact:
-            sd = np.hypot(sd, self.assay.blank_between_sd)
-        return name, value, sd, not exact, spread, len(here)
+        one = Served(name, kinds, bool(kinds) and not exact)
+        if one not in self.served:
+            self.served.append(one)
+        return self.served.index(one)
 
     def blanks(self) -> Blanks:
         """Return all blanks that have been asked for."""
-        names, values, sds, borrowed, spread, count = zip(*self.rows, strict=True)
+        reads = [*self.reads.values()] or [np.full((1, 3), self.assay.blank_au or 0.0)]
+        kinds = [one.kinds or (0,) for one in self.served]
+        counts = np.array([np.isfinite(each).sum(axis=0) for each in reads])
+        taken = np.array([np.isin(np.arange(len(reads)), each) for each in kinds])
+        weights = taken[:, :, None] * counts
+        total = weights.sum(axis=1, keepdims=True)
+        weights = weights / np.maximum(total, 1)
+        means = np.array([_mean(each) for each in reads])
+        value = np.where(total[:, 0] > 0, (weights * np.nan_to_num(means)).sum(axis=1), np.nan)
+        borrowed = np.array([one.borrowed for one in self.served])
+        other = np.where(borrowed, self.assay.blank_between_sd, 0.0)
+        whole = [np.concatenate([reads[k] for k in each])[:, 0] for each in kinds]
         return Blanks(
-            names=names,
-            value=np.array(values),
-            sd=np.array(sds),
-            borrowed=borrowed,
-            spread=np.array(spread),
-            count=np.array(count),
+            names=tuple(one.name for one in self.served),
+            value=value,
+            kind_sd=np.array([_mean_sd(each, self.assay.blank_sd) for each in reads]),
+            weights=weights,
+            other_sd=np.where(total[:, 0] > 0, other[:, None], 0.0),
+            borrowed=tuple(borrowed.tolist()),
+            spread=np.array([float(np.ptp(each)) for each in whole]),
+            count=np.array([len(each) if self.reads else 0 for each in whole]),
         )
 
 
-def _summary(reads: Floats, single_sd: float) -> tuple[Floats, Floats, float]:
-    """Mean and its standard uncertainty (3,), and the range at the protein's wavelength.
+def _mean(reads: Floats) -> Floats:
+    known = np.isfinite(reads)
+    count = known.sum(axis=0)
+    sums = np.where(known, reads, 0.0).sum(axis=0)
+    return np.where(count > 0, sums / np.maximum(count, 1), np.nan)
+
+
+def _mean_sd(reads: Floats, single_sd: float) -> Floats:
+    """Standard uncertainty of the mean of reads (m, 3), shape (3,); 0 where there are none.
 
     Single blanks scatter by the entered sd, or by their own where three or more show more.
     """
     known = np.isfinite(reads)
     count = known.sum(axis=0)
-    some = np.maximum(count, 1)
-    mean = np.where(known, reads, 0.0).sum(axis=0) / some
-    off = np.where(known, reads - mean, 0.0)
+    off = np.where(known, reads - _mean(reads), 0.0)
     own = np.sqrt((off**2).sum(axis=0) / np.maximum(count - 1, 1))
-    sd = np.where(count >= 3, np.maximum(own, single_sd), single_sd) / np.sqrt(some)
-    value = np.where(count > 0, mean, np.nan)
-    return value, np.where(count > 0, sd, 0.0), float(np.ptp(reads[:, 0]))
+    single = np.where(count >= 3, np.maximum(own, single_sd), single_sd)
+    return np.where(count > 0, single / np.sqrt(np.maximum(count, 1)), 0.0)
 
 
 def blank_book(assay: Assay, wells: pd.DataFrame, found: Found) -> BlankBook:
@@ -116,4 +127,4 @@ def blank_book(assay: Assay, wells: pd.DataFrame, found: Found) -> BlankBook:
             if here[0].repeats:
                 values = np.array([chosen.absorbance for chosen in here])
                 reads[stage_kind(stage, {str(k): v for k, v in row.items()})].append(values)
-    return BlankBook(assay, reads)
+    return BlankBook(assay, {kind: np.array(rows) for kind, rows in reads.items()})

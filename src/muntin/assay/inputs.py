@@ -58,21 +58,37 @@ class Inputs:
         return wells, stages
 
 
-def sources(inputs: Inputs) -> dict[str, dict[str, tuple[int, ...]]]:
+def sources(inputs: Inputs, assay: Assay) -> dict[str, dict[str, tuple[int, ...]]]:
     """Return what errs, "own" to each well and "shared" by the plate, with the shape of each.
 
-    An own source of shape s has shifts (n, *s), a shared one s itself.
+    An own source of shape s has shifts (n, *s), a shared one s itself. What is sure, or was not
+    done, is no source.
     """
     stages = inputs.shape[1]
-    each = {"read": (stages, 3), "path": (stages,), "dilution": (stages,)}
-    each |= {"volume": (stages,), "weighing": (stages,), "hold_up": (), "resin": ()}
-    shared: dict[str, tuple[int, ...]] = {"blank": (len(inputs.blanks.names), 3)}
-    shared |= dict.fromkeys(("extinction", "path_shared", "load"), ())
-    shared |= dict.fromkeys(("hold_up_mean", "resin_mean"), ())
+    errs = {
+        "path": assay.path_cv > 0,
+        "dilution": assay.dilution_cv > 0 and bool((inputs.samples.dilution > 1).any()),
+        "volume": assay.volume_cv > 0,
+        "weighing": assay.weighing_cv > 0 and bool(np.isfinite(inputs.volumes.collected).any()),
+    }
+    own: dict[str, tuple[int, ...]] = {"read": (stages, 3)}
+    own |= {name: (stages,) for name, does in errs.items() if does}
+    own |= _given({"hold_up": assay.hold_up_well_cv, "resin": assay.resin_well_cv})
+    plate = {"extinction": assay.extinction_cv, "path_shared": assay.path_shared_cv}
+    plate |= {"load": assay.load_cv, "hold_up_mean": assay.hold_up_mean_cv}
+    plate |= {"resin_mean": assay.resin_mean_cv}
+    blanks = inputs.blanks
+    shared: dict[str, tuple[int, ...]] = {"blank": blanks.kind_sd.shape, **_given(plate)}
+    if any(blanks.borrowed):
+        shared["blank_other"] = blanks.other_sd.shape
     if inputs.load is not None:
         loads = len(inputs.load.dilution)
         shared |= {"load_read": (loads, 3), "load_path": (loads,), "load_dilution": (loads,)}
-    return {"own": each, "shared": shared}
+    return {"own": own, "shared": shared}
+
+
+def _given(sizes: dict[str, float]) -> dict[str, tuple[int, ...]]:
+    return {name: () for name, size in sizes.items() if size > 0}
 
 
 def load_of(inputs: Inputs, assay: Assay, shifts: Shifts) -> Array:

@@ -7,13 +7,14 @@ the arithmetic itself. By Monte Carlo (JCGM 101:2008) the same inputs are drawn,
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass
 from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
+from muntin.assay.absorbance import Shifts
 from muntin.assay.inputs import Inputs, results, sources
 from muntin.record.assay import Assay
 
@@ -78,9 +79,13 @@ class Shared:
 
 def first_order(inputs: Inputs, assay: Assay) -> dict[str, Uncertain]:
     """Return all quantities with their first-order uncertainties."""
-    value = {name: each.real for name, each in results(inputs, assay).items()}
-    own = [(source, at, _moved(inputs, assay, source, z)) for source, at, z in _own(inputs)]
-    shared = [(source, _moved(inputs, assay, source, z)) for source, z in _shared(inputs)]
+
+    def work(shifts: Shifts) -> dict[str, Array]:
+        return results(inputs, assay, shifts)
+
+    value = {name: each.real for name, each in work({}).items()}
+    own = [(source, at, effects(work, source, z)) for source, at, z in _own(inputs, assay)]
+    shared = [(source, effects(work, source, z)) for source, z in _shared(inputs, assay)]
     return {
         name: _uncertain(
             inputs,
@@ -92,30 +97,45 @@ def first_order(inputs: Inputs, assay: Assay) -> dict[str, Uncertain]:
     }
 
 
-def _own(inputs: Inputs) -> Iterator[tuple[str, tuple[int, ...], Array]]:
+def effects(
+    work: Callable[[Shifts], Mapping[str, Array]], source: str, which: Array
+) -> dict[str, Floats]:
+    """Return dy/dx u(x) of each result of `work` for one input.
+
+    Parameters
+    ----------
+    work
+        Takes shifts of its inputs in standard uncertainties, and lets complex ones pass.
+    source
+        Name of the input.
+    which
+        1 where it is moved, 0 elsewhere, in the shape of the input.
+    """
+    moved = work({source: 1j * _STEP * np.asarray(which)})
+    return {name: np.asarray(y).imag / _STEP for name, y in moved.items()}
+
+
+def _own(inputs: Inputs, assay: Assay) -> Iterator[tuple[str, tuple[int, ...], Floats]]:
     """All wells moved at once: their own errors touch no other well."""
     wells = inputs.shape[0]
-    for source, shape in sources(inputs)["own"].items():
+    for source, shape in sources(inputs, assay)["own"].items():
         for at in np.ndindex(shape):
-            z = np.zeros((wells, *shape), dtype=complex)
-            z[(slice(None), *at)] = 1j * _STEP
-            yield source, at, z
+            if source == "read" and not inputs.samples.read_sd[:, at[1]].any():
+                continue
+            which = np.zeros((wells, *shape))
+            which[(slice(None), *at)] = 1.0
+            yield source, at, which
 
 
-def _shared(inputs: Inputs) -> Iterator[tuple[str, Array]]:
-    for source, shape in sources(inputs)["shared"].items():
+def _shared(inputs: Inputs, assay: Assay) -> Iterator[tuple[str, Floats]]:
+    for source, shape in sources(inputs, assay)["shared"].items():
         for at in np.ndindex(shape):
-            z = np.zeros(shape, dtype=complex)
-            z[at] = 1j * _STEP
-            yield source, z
-
-
-def _moved(inputs: Inputs, assay: Assay, source: str, z: Array) -> dict[str, Floats]:
-    wells = inputs.shape[0]
-    return {
-        name: np.broadcast_to(y.imag / _STEP, (wells,))
-        for name, y in results(inputs, assay, {source: z}).items()
-    }
+            sure = {"blank": inputs.blanks.kind_sd, "blank_other": inputs.blanks.other_sd}
+            if source in sure and not sure[source][at]:
+                continue
+            which = np.zeros(shape)
+            which[at] = 1.0
+            yield source, which
 
 
 def _uncertain(
@@ -129,12 +149,14 @@ def _uncertain(
     parts: dict[str, Floats] = {}
     reads = np.zeros(inputs.shape)
     for source, at, effect in own:
-        each = np.where(known, np.nan_to_num(effect), np.nan)
+        each = np.where(known, np.nan_to_num(np.broadcast_to(effect, value.shape)), np.nan)
         parts[source] = parts.get(source, np.zeros(len(value))) + each**2
         if source == "read" and at[1] == 0:
             reads[:, at[0]] = each
     names = tuple(source for source, _ in shared)
-    by = np.array([np.where(known, np.nan_to_num(effect), np.nan) for _, effect in shared])
+    effect_of = [np.broadcast_to(effect, value.shape) for _, effect in shared]
+    by = np.array([np.where(known, np.nan_to_num(effect), np.nan) for effect in effect_of])
+    by = by.reshape(len(shared), len(value))
     return Uncertain(
         value=value,
         own=np.sqrt(sum(parts.values(), np.zeros(len(value)))),
@@ -190,15 +212,15 @@ def monte_carlo(
     rounds: list[dict[str, Array]] = []
     for start in range(0, draws, _TOGETHER):
         count = min(_TOGETHER, draws - start)
-        rounds.append(results(inputs, assay, _draw(inputs, count, rng, parts)))
+        rounds.append(results(inputs, assay, _draw(inputs, assay, count, rng, parts)))
     every = {name: np.concatenate([each[name] for each in rounds]) for name in rounds[0]}
     return {name: _summed_up(values) for name, values in every.items()}
 
 
 def _draw(
-    inputs: Inputs, count: int, rng: np.random.Generator, parts: tuple[str, ...]
+    inputs: Inputs, assay: Assay, count: int, rng: np.random.Generator, parts: tuple[str, ...]
 ) -> dict[str, Floats]:
-    wells, known = inputs.shape[0], sources(inputs)
+    wells, known = inputs.shape[0], sources(inputs, assay)
     drawn = {}
     for part in parts:
         axes = (count, wells) if part == "own" else (count,)

@@ -193,7 +193,7 @@ def _words(source: str) -> str:
     said = {"load": "drawing the load", "load_read": "reads of the load"}
     said |= {"load_path": "paths of the load", "load_dilution": "diluting the load"}
     said |= {"path_shared": "path reference", "hold_up_mean": "mean hold-up"}
-    said |= {"resin_mean": "mean resin", "blank": "blanks"}
+    said |= {"resin_mean": "mean resin", "blank": "blanks", "blank_other": "borrowed blanks"}
     return said.get(source, source)
 
 
