@@ -187,7 +187,7 @@ def _row(table: Table, row: int, asked: Asked, found: Findings) -> Read | None:
     if wavelength not in asked.wavelengths:
         known = [f"{nm:g}" for nm in asked.wavelengths]
         problem = "is none of the wavelengths of [assay]"
-        hint = did_you_mean(f"{wavelength:g}", known)
+        hint = f"known: {', '.join(known)} nm"
         found.faults.append(table.fault(row, "wavelength", problem, hint=hint))
         return None
     return Read(
