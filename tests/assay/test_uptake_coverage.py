@@ -72,7 +72,7 @@ def test_ranks_of_truths_are_even_under_every_law(law: Law) -> None:
 @pytest.mark.slow
 def test_over_the_laws_with_the_law_unknown() -> None:
     rng = np.random.default_rng(22)
-    count = 200
+    count = 120
     hits = dict.fromkeys(("equilibrium", "t90", "t95", "load"), 0)
     weight_of_truth = []
     for _ in range(count):

@@ -91,6 +91,12 @@ def test_diffusion_begins_with_the_root_of_time(law: Law) -> None:
     assert early[1] / early[0] == pytest.approx(np.sqrt(2.0), rel=0.01)
 
 
+def test_the_front_keeps_the_root_of_time_below_its_table() -> None:
+    """The table begins at 1.2e-4 half times."""
+    shares = core_share(np.array([1.3e-4, 1.3e-6, 1.3e-8]), 0.7)
+    assert shares[0] / shares[1:] == pytest.approx([10.0, 100.0], rel=0.01)
+
+
 def core_slope(filled: float, takes: float) -> float:
     """d tau / d F of the shrinking core, written with the shell's resistance 1/rho - 1.
 
