@@ -23,10 +23,12 @@ from muntin.assay.reads import Read
 from muntin.assay.reduction import PlateReduction, Reduction
 from muntin.record.assay import READ_COLUMNS, Assay
 from muntin.record.faults import number
+from muntin.record.readings import INFORMING
 from muntin.record.results import REDUCED
 from muntin.report.advice_files import hashes, json_text, read_inputs, versions
 
 REDUCTIONS = "reductions"
+_NOTHING = 1e-9
 _METHOD = (
     "First order (JCGM 100:2008): squares of dy/dx u(x) added up, by complex steps. Own: errors "
     "of one well alone. Shared: load, blanks, extinction, path reference, mean hold-up and mean "
@@ -176,21 +178,28 @@ def _blanks(plate: PlateReduction) -> list[dict[str, Any]]:
 
 
 def shared_facts(plate: PlateReduction, assay: Assay) -> dict[str, Any]:
-    """Return what the wells of a plate share in their recovery, and by what."""
+    """Return what the wells of a plate share in their recovery, and by what.
+
+    Parts are root mean squares over test, bridge and reference wells, in the recovery's unit.
+    """
     recovery = plate.quantities[assay.recovery]
-    by = {name: _rms(values) for name, values in recovery.shared_by().items()}
-    own = {name: _rms(values) for name, values in recovery.own_by.items()}
+    use = np.array([role in INFORMING for role in plate.inputs.roles])
     return {
         "scale_error": plate.shared.scale,
         "beyond_scale": plate.shared.rest,
-        "shared_by": {name: value for name, value in by.items() if value},
-        "own_by": {name: value for name, value in own.items() if value},
+        "shared_by": _parts(recovery.shared_by(), use),
+        "own_by": _parts(recovery.own_by, use),
     }
 
 
-def _rms(values: Any) -> float:
-    known = values[np.isfinite(values)]
-    return float(np.sqrt((known**2).mean())) if len(known) else float("nan")
+def _parts(by: Mapping[str, Any], use: Any) -> dict[str, float]:
+    parts = {}
+    for name, values in by.items():
+        known = values[use & np.isfinite(values)]
+        size = float(np.sqrt((known**2).mean())) if len(known) else float("nan")
+        if not size < _NOTHING:
+            parts[name] = size
+    return parts
 
 
 def flag_facts(plate: PlateReduction) -> list[dict[str, str]]:

@@ -18,7 +18,7 @@ from muntin.assay.inputs import load_of
 from muntin.assay.reduction import PlateReduction, Reduction
 from muntin.record.faults import counted, listed
 from muntin.record.readings import INFORMING
-from muntin.report.reduce_files import flag_facts, shared_facts
+from muntin.report.reduce_files import REDUCTIONS, flag_facts, shared_facts
 from muntin.report.text import few, sheet
 
 _NAMES = {
@@ -26,17 +26,19 @@ _NAMES = {
     "freed_of_bound": "set free while eluting, over bound after the load",
     "collected_of_bound": "eluates over bound after the load",
 }
+# What a flag says of several wells; the gravest first.
 _SAYS = {
-    "below_range": "below the linear range (as read; < where all eluates are)",
-    "above_range": "above the linear range at every dilution (kept as > or <)",
-    "not_read": "not read",
+    "closure": "closure further from 1 than its own uncertainty explains",
+    "recovery_high": "recovery higher than can be",
+    "above_range": "above the linear range at every dilution, kept as > or <",
+    "bound_small": "too little bound for a recovery of what is bound",
     "turbid": "turbid",
     "path_odd": "path by the water band far from that by volume",
     "hold_up_negative": "more weighed than the well held",
-    "closure": "closure further from 1 than its uncertainty explains",
-    "bound_small": "too little bound for a recovery of what is bound",
-    "recovery_high": "recovery too high",
+    "not_read": "not read",
+    "below_range": "below the linear range, used as read (< where all eluates are)",
 }
+_MOST_FLAGS, _OWN_WORDS, _NAMED = 12, 2, 6
 _CAUTION = (
     "Flags take nothing out. A recovery is that of the stages, volumes and hold-up entered; "
     "measure the hold-up and the height of the water band in your own buffer."
@@ -108,7 +110,7 @@ def reduce_screen(
             ("Flags", _flag_lines(flags) or ["None."]),
             ("Given", _given_lines(reduction, given)),
             ("Caution", [_CAUTION]),
-            ("Written", [_places(files)]),
+            ("Written", [_places(reduction, files)]),
         ],
     )
 
@@ -198,28 +200,45 @@ def _words(source: str) -> str:
 
 
 def _flag_lines(flags: Sequence[Flag]) -> list[str]:
-    """Flags of plates in words, then those of wells counted by kind and fraction."""
+    """Flags of plates in words, then those of wells counted by kind, the gravest first."""
     lines = [f"{flag.plate}: {flag.text}." for flag in flags if not flag.well]
-    groups: dict[tuple[str, str, str], list[Flag]] = defaultdict(list)
+    groups: dict[tuple[str, str], list[Flag]] = defaultdict(list)
     for flag in flags:
         if flag.well:
-            groups[flag.plate, flag.kind, flag.fraction].append(flag)
-    for (plate, kind, fraction), here in groups.items():
-        of = f" {fraction}" if fraction else ""
-        wells = listed([flag.well for flag in here], 6)
-        text = here[0].text if len(here) == 1 else _SAYS.get(kind, kind)
-        lines.append(f"{plate}{of}: {text} ({wells}).")
-    return few(lines, 12, "see --json")
+            groups[flag.plate, flag.kind].append(flag)
+    order = [*_SAYS]
+    for (plate, kind), here in sorted(groups.items(), key=lambda one: order.index(one[0][1])):
+        lines.append(f"{plate}: {_grouped(kind, here)}.")
+    return few(lines, _MOST_FLAGS, "see --json")
+
+
+def _grouped(kind: str, here: Sequence[Flag]) -> str:
+    """One kind of flag: its own words where few wells have it, else their names or number."""
+    if len(here) <= _OWN_WORDS:
+        return "; ".join(f"{f.well} {f.fraction}".strip() + f" {f.text}" for f in here)
+    places = []
+    for fraction in dict.fromkeys(flag.fraction for flag in here):
+        wells = [flag.well for flag in here if flag.fraction == fraction]
+        many = counted(len(wells), "well")
+        places.append(
+            f"{fraction} in {many}"
+            if len(wells) > _NAMED
+            else f"{fraction} {listed(wells)}".strip()
+        )
+    return f"{_SAYS[kind]}: {'; '.join(places)}"
 
 
 def _given_lines(reduction: Reduction, given: Sequence[Given]) -> list[str]:
     fresh = [one for one in given if not one.why and not one.agrees]
     agree = [one for one in given if one.agrees]
     censored = [one for one in fresh if one.value[:1] in "<>"]
-    lines = [
-        f"{counted(len(fresh), 'reading')} of {reduction.response.name} with a standard "
-        f"uncertainty of their own, {len(censored)} of them censored (< or >)."
-    ]
+    lines = []
+    if fresh:
+        rest = f", {len(censored)} of them censored (< or >)" if censored else ""
+        lines.append(
+            f"{counted(len(fresh), 'reading')} of {reduction.response.name}, each with its own "
+            f"standard uncertainty{rest}."
+        )
     if agree:
         lines.append(
             f"{counted(len(agree), 'well')} hold the same reading in their table already; they get "
@@ -237,5 +256,8 @@ def _left_out(given: Sequence[Given]) -> list[str]:
     return few(lines, 6, "see --json")
 
 
-def _places(files: Sequence[Path]) -> str:
-    return ", ".join(str(path) for path in files)
+def _places(reduction: Reduction, files: Sequence[Path]) -> str:
+    """Results by name; of what they were computed from only the folder."""
+    results = [str(path) for path in files if path.parent.name == "results"]
+    folder = reduction.study.folder / REDUCTIONS
+    return f"{listed(results)}; in {folder} masses, reads and record of each plate."
