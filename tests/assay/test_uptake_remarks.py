@@ -120,7 +120,10 @@ def test_a_load_that_falls_is_said() -> None:
 
 
 def test_readings_that_scatter_are_said() -> None:
-    assert "scatter" in told(first_order(noise=0.2, seed=4))
+    assert not told(first_order(noise=0.2, seed=4))["scatter"].loud
+    nothing_binds = told(curve((5, 20, 60, 120), (0.3, -0.2, 0.1, -0.1)))["scatter"]
+    assert nothing_binds.loud
+    assert "which then tells hardly anything" in nothing_binds.sentence
     assert "scatter" not in told(first_order(noise=0.03))
 
 

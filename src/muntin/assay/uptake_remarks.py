@@ -14,7 +14,7 @@ from muntin.record.keys import Floats
 _USUAL, _BOUNDS = (20.0, 40.0), (4.0, 40.0)
 _TOLD = 0.9  # weight above which one law is told from the others
 _NEAR = 0.95  # share of equilibrium that counts as reached
-_NOISY, _USUAL_NOISE = 0.10, 0.05
+_USUAL_NOISE, _NOISY, _LOST = 0.05, 0.10, 0.30
 
 
 class Remark(NamedTuple):
@@ -202,8 +202,10 @@ def _scatter(uptake: Uptake) -> Remark | None:
     noise = uptake.noise()
     if noise <= _NOISY:
         return None
+    lost = noise > _LOST
     sentence = (
-        f"The readings scatter by {100 * noise:.0f} % of the last load about the curve; "
-        "2 to 5 % is usual between wells (common practice, no source)."
+        f"The readings scatter by {100 * noise:.0f} % of the last load about the curve"
+        f"{', which then tells hardly anything' if lost else ''}; 2 to 5 % is usual between wells "
+        "(common practice, no source)."
     )
-    return Remark("scatter", False, sentence)
+    return Remark("scatter", lost, sentence)
