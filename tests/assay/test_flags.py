@@ -187,7 +187,8 @@ def test_a_target_that_hold_up_puts_out_of_reach(tmp_path):
         "the target 0.8 is out of reach: 200 µL over a hold-up of 60 µL collect at most 0.769 of "
         "what is bound, even where nothing binds any more"
     ]
-    assert "target_out_of_reach" not in plate_kinds(reduced(tmp_path))
+    just = {"resin_ul": 40.0, "hold_up_ul": 49.9}
+    assert "target_out_of_reach" not in plate_kinds(reduced(tmp_path, fixed=just))
     freed = reduced(tmp_path, fixed=fixed, recovery="freed_of_bound")
     assert "target_out_of_reach" not in plate_kinds(freed)
 
@@ -243,3 +244,20 @@ def test_per_cent(tmp_path):
     one = told(reduced(tmp_path, target={"unit": "%", "at_least": 80}))
     assert one.value == "33.33"
     assert float(one.sd) > 0.1
+
+
+def test_a_reading_in_place_of_a_censored_one_stands(tmp_path):
+    rows = list(ROWS)
+    rows[3] = "C3,test,7,200,0.017"
+    one = told(reduced(tmp_path, rows=rows), "C3")
+    assert (one.value, one.why) == ("", "its table holds 0.017, the reads give less than 0.0167")
+
+
+def test_a_standard_uncertainty_that_a_table_holds_stands(tmp_path):
+    rows = ["well,role,ph,salt,recovery,recovery_sd", *(f"{row}," for row in ROWS[1:])]
+    rows[1] = "A1,test,5,100,0.333,0.05"
+    one = told(reduced(tmp_path, rows=rows))
+    assert (one.value, one.why) == (
+        "",
+        "its table holds the same reading with a standard uncertainty of its own",
+    )

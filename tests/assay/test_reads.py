@@ -2,7 +2,10 @@
 
 from __future__ import annotations
 
+import numpy as np
 import pytest
+from hypothesis import HealthCheck, given, settings
+from hypothesis import strategies as st
 
 from muntin.assay.choice import choose
 from muntin.assay.grids import grid_name
@@ -297,3 +300,30 @@ def test_wells_that_were_not_run_are_noticed(tmp_path):
     assert reduction.notices == (
         "plate-01: reads of 1 well that its plate table does not name are passed over (G9)",
     )
+
+
+def test_a_read_that_stands_in_two_files_is_taken_once(tmp_path):
+    files = {
+        "all.csv": "\n".join((HEADING, *READS)),
+        "plate-01_e1_280.csv": grid({"A1": "1,050", "B2": "1,850"}),
+    }
+    reduction = reduced(tmp_path, reads=files)
+    assert len(reduction.reads) == len(READS)
+    assert reduction.notices == (
+        "plate-01_e1_280.csv: 2 reads stand in all.csv as well, and are taken once",
+    )
+
+
+@settings(
+    max_examples=10, deadline=None, suppress_health_check=[HealthCheck.function_scoped_fixture]
+)
+@given(order=st.permutations(range(len(READS))), cut=st.integers(1, len(READS) - 1))
+def test_neither_the_order_of_rows_nor_the_number_of_files_matters(tmp_path, order, cut):
+    (plain,) = reduced(tmp_path / "plain").plates
+    rows = [READS[index] for index in order]
+    files = {"a.csv": "\n".join((HEADING, *rows[:cut])), "b.csv": "\n".join((HEADING, *rows[cut:]))}
+    (mixed,) = reduced(tmp_path / "mixed", reads=files).plates
+    assert mixed.flags == plain.flags
+    for name, quantity in plain.quantities.items():
+        np.testing.assert_allclose(mixed.quantities[name].value, quantity.value, rtol=1e-12)
+        np.testing.assert_allclose(mixed.quantities[name].total, quantity.total, rtol=1e-12)

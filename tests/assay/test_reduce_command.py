@@ -3,11 +3,13 @@
 from __future__ import annotations
 
 import json
+import re
 from pathlib import Path
 
 import pytest
 
 from muntin.record import open_study
+from muntin.window.coded import priors_for
 from tests.assay.studies import HEADING, READS, ROWS, write
 from tests.test_cli import run
 
@@ -125,3 +127,23 @@ def test_the_screen_says_what_matters(tmp_path):
         "Flags take nothing out.",
     ):
         assert said in " ".join(screen.split()), said
+
+
+def test_the_line_that_tells_the_model_is_a_prior_of_the_study(tmp_path):
+    study = write(tmp_path)
+    screen = " ".join(run("reduce", study, "reads").output.split())
+    line = re.search(r"priors = .*? \} \}", screen)[0]
+    path = study / "study.toml"
+    path.write_text(path.read_text().replace("[[responses]]\n", f"[[responses]]\n{line}\n"))
+    facts = json.loads(run("reduce", study, "reads", "--json").stdout)
+    opened = open_study(study)
+    (response,) = opened.definition.responses
+    prior = priors_for(opened, response).scale_error
+    assert prior.median == pytest.approx(facts["scale_error"], abs=5e-4)
+    assert "compare it" in run("reduce", study, "reads").output
+
+
+def test_monte_carlo_is_compared_on_the_screen(tmp_path):
+    study = write(tmp_path)
+    assert "2000 Monte Carlo draws" in run("reduce", study, "reads", "--monte-carlo", 2000).output
+    assert "Monte Carlo" not in run("reduce", study, "reads").output

@@ -66,7 +66,11 @@ def _given(
     if state == "read":
         held = f"{row[name]:.10g}"
         if found.side[i] or round(unit * value, _places(held)) != float(held):
-            text = f"its table holds {held}, the reads give {unit * value:.{decimals}f}"
+            more = {-1: "less than ", 0: "", 1: "more than "}[int(found.side[i])]
+            text = f"its table holds {held}, the reads give {more}{unit * value:.{decimals}f}"
+            return Given(plate=at[0], well=at[1], why=text)
+        if np.isfinite(float(str(row[f"{name}_sd"]))):
+            text = "its table holds the same reading with a standard uncertainty of its own"
             return Given(plate=at[0], well=at[1], why=text)
         return Given(plate=at[0], well=at[1], value=held, sd=sd, agrees=True)
     sign = {-1: "<", 0: "", 1: ">"}[int(found.side[i])]

@@ -3,8 +3,9 @@
 from __future__ import annotations
 
 import re
+from collections import Counter
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import Path
 
 import numpy as np
@@ -13,7 +14,7 @@ from muntin.assay.grids import GridName, grid_name, read_grid
 from muntin.assay.mapping import mapped
 from muntin.record.assay import READ_COLUMNS, Assay
 from muntin.record.cells import CellError, parse_number
-from muntin.record.faults import Fault, Findings, did_you_mean, quoted
+from muntin.record.faults import Fault, Findings, counted, did_you_mean, quoted
 from muntin.record.tables import Table, missing_column, read_table, table_files
 from muntin.record.wells import WellError, last_well, well_name
 
@@ -263,24 +264,24 @@ def _check_stage(table: Table, row: int, fraction: str, asked: Asked, found: Fin
 
 
 def _once(reads: list[Read], found: Findings) -> list[Read]:
-    """Take out rows that are the same read twice, as where a file was saved twice."""
-    seen: dict[Read, None] = {}
-    first: dict[tuple[object, ...], Read] = {}
+    """Take out what stands in a second file again, as where a grid was pasted into a table too."""
+    first: dict[tuple[object, ...], str] = {}
+    kept, twice = [], Counter[tuple[str, str]]()
     for read in reads:
         at = (read.plate, read.well, read.fraction, read.wavelength, read.dilution, read.absorbance)
-        twin = first.setdefault(at, read)
-        if twin.file != read.file:
-            found.notices.append(
-                f"{read.file}, {read.where}: the same read stands in {twin.file}; taken once"
-            )
-            continue
-        seen[read] = None
-    return [*seen]
+        file = first.setdefault(at, read.file)
+        if file == read.file:
+            kept.append(read)
+        else:
+            twice[read.file, file] += 1
+    found.notices.extend(
+        f"{file}: {counted(count, 'read')} stand in {other} as well, and are taken once"
+        for (file, other), count in twice.items()
+    )
+    return kept
 
 
 def _weighed(reads: list[Read], volumes: Mapping[tuple[str, str, str], float]) -> list[Read]:
-    from dataclasses import replace
-
     return [
         replace(read, volume=volumes[at])
         if (at := (read.plate, read.well, read.fraction)) in volumes

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
+from dataclasses import replace
 from typing import Any
 
 import numpy as np
@@ -160,8 +161,6 @@ def _optics(
 
 
 def _with_noise(optics: Optics, repeats: NDArray[np.int_], blanks: Blanks, assay: Assay) -> Optics:
-    from dataclasses import replace
-
     single = np.hypot(assay.read_floor, assay.read_cv * net(optics, blanks, {}))
     return replace(optics, read_sd=np.nan_to_num(single / np.sqrt(np.maximum(repeats, 1))))
 

@@ -106,7 +106,9 @@ def reduce_screen(
             ("Read", _read(reduction)),
             ("Noted", few(reduction.notices, 4, "see --json")),
             ("Recovery", [_NAMES[reduction.assay.recovery] + ".", _table(reduction)]),
+            ("Bound", _bound(reduction)),
             ("Shared", _shared(reduction)),
+            ("Drawn", _drawn(reduction)),
             ("Flags", _flag_lines(flags) or ["None."]),
             ("Given", _given_lines(reduction, given)),
             ("Caution", [_CAUTION]),
@@ -153,6 +155,41 @@ def _table_row(reduction: Reduction, plate: PlateReduction) -> tuple[str, ...]:
         f"{100 * plate.shared.scale:.1f} %",
         _range(plate.quantities["closure"].value[told], "{:.2f}"),
     )
+
+
+def _bound(reduction: Reduction) -> list[str]:
+    """What was bound per volume of resin, at which concentration, and after which time."""
+    minutes = reduction.fixed.contact_minutes
+    after = "a contact time that [fixed] does not tell" if minutes is None else f"{minutes:g} min"
+    lines = []
+    for plate in reduction.plates:
+        use = np.array([role in INFORMING for role in plate.inputs.roles])
+        capacity = plate.quantities["capacity_mg_ml"].value[use]
+        kp = plate.quantities["log10_kp"].value[use]
+        lines.append(
+            f"{plate.inputs.plate}: {_range(capacity, '{:.3g}')} mg/mL resin after {after}; "
+            f"log10 Kp {_range(kp, '{:.2f}')}."
+        )
+    return lines
+
+
+def _drawn(reduction: Reduction) -> list[str]:
+    """How far Monte Carlo and the first order are apart."""
+    if not reduction.draws:
+        return []
+    ratios = [
+        plate.drawn["all"][reduction.assay.recovery].sd[i] / total - 1.0
+        for plate in reduction.plates
+        for i, total in enumerate(plate.quantities[reduction.assay.recovery].total)
+        if plate.inputs.roles[i] in INFORMING and np.isfinite(total)
+    ]
+    if not ratios:
+        return []
+    return [
+        f"{reduction.draws} Monte Carlo draws a plate: standard uncertainties of recoveries lie "
+        f"{100 * min(ratios):+.1f} to {100 * max(ratios):+.1f} % off those of first order, which "
+        "are given. The record has the intervals."
+    ]
 
 
 def _range(values: Any, form: str) -> str:
