@@ -12,11 +12,15 @@ from muntin.commands.assess import assess
 from muntin.commands.check import check
 from muntin.commands.new import new
 from muntin.commands.propose import propose
+from muntin.commands.reduce import reduce
 from muntin.commands.rehearse import rehearse
+from muntin.commands.uptake import uptake
 
 _COMMANDS = {
     new: "where do I start?",
     check: "are my files sound?",
+    reduce: "what did the wells do?",
+    uptake: "how long must they be in contact?",
     assess: "where do I stand?",
     propose: "what do I run next?",
     rehearse: "is another plate worth it?",

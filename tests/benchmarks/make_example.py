@@ -1,4 +1,4 @@
-"""Writes the plate tables of examples/fab-elution from a drawn process.
+"""Writes the plate tables of examples/fab-elution from a drawn process, and reads that fit them.
 
     python -m tests.benchmarks.make_example
 
@@ -17,6 +17,7 @@ from pathlib import Path
 import numpy as np
 
 from muntin.bench import default_controls, lay_out, well_names
+from tests.benchmarks import example_reads
 from tests.benchmarks.processes import DrawnProcess, draw, plate_errors
 
 EXAMPLE = Path(__file__).parents[2] / "examples" / "fab-elution"
@@ -114,3 +115,4 @@ def write(folder: Path) -> None:
 
 if __name__ == "__main__":
     write(EXAMPLE / "plates")
+    example_reads.write(EXAMPLE / "reads", tables())

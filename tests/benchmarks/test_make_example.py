@@ -2,8 +2,11 @@ from collections import Counter
 
 import pytest
 
+from muntin.assay.given import given
+from muntin.assay.reduction import reduce_reads
 from muntin.bench import well_names
 from muntin.record import open_study
+from tests.benchmarks import example_reads
 from tests.benchmarks.make_example import EXAMPLE, PLATES, TARGET, tables, true_process, write
 
 
@@ -14,6 +17,29 @@ def test_the_example_is_what_its_seeds_give(tmp_path):
     for name in names:
         kept = (EXAMPLE / "plates" / name).read_text(encoding="utf-8")
         assert (tmp_path / name).read_text(encoding="utf-8") == kept
+
+
+def test_the_reads_are_what_their_seed_gives(tmp_path):
+    example_reads.write(tmp_path, tables())
+    for name in PLATES:
+        kept = (EXAMPLE / "reads" / f"{name}.csv").read_text(encoding="utf-8")
+        assert (tmp_path / f"{name}.csv").read_text(encoding="utf-8") == kept
+
+
+def test_the_reads_reduce_to_the_recoveries_of_the_plate_tables():
+    reduction = reduce_reads(open_study(EXAMPLE, reducing=True), EXAMPLE / "reads")
+    found = given(reduction)
+    assert [one.agrees for one in found].count(True) == 43
+    assert [(one.plate, one.well, one.why) for one in found if not one.agrees] == [
+        ("plate-01", "G12", "left out in its plate table")
+    ]
+    flagged = [
+        (flag.plate, flag.well)
+        for plate in reduction.plates
+        for flag in plate.flags
+        if flag.kind != "below_range"
+    ]
+    assert flagged == [("plate-01", "G12")]
 
 
 def test_the_readme_tells_the_truth():

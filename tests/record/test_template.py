@@ -67,7 +67,7 @@ def _optional_keys() -> list[tuple[str, str]]:
         heading = re.fullmatch(r"#?(\[.+\])", line)
         table = heading[1] if heading else table
         key = OPTIONAL.fullmatch(line)
-        if key and key[1] not in CLASHING:
+        if key and (key[1] not in CLASHING or table == "[fixed]"):
             keys.append((table, key[1]))
     return keys
 
@@ -80,13 +80,14 @@ def test_every_optional_key_works_when_its_mark_is_taken_away(tmp_path):
     text = _with_optional(study_text(2), set(keys) | headings)
     (tmp_path / "study.toml").write_text(text)
     definition = open_study(tmp_path).definition
-    assert definition.fixed == {"stages": 2}
+    assert definition.fixed == {"resin_ul": 20.0, "hold_up_ul": 25.0, "contact_minutes": 60.0}
+    assert [stage.stage for stage in definition.assay.stages] == ["load", "elution"]
     assert definition.limits[0].allow == "salt <= 900 - 150 * (elution_ph - 5)"
     assert definition.factors[0].plan_low == 5.0
 
 
 def test_every_table_of_a_study_is_shown():
-    shown = {re.sub(r"[#\[\]]", "", table[0]) for table in _tables(study_text(2))}
+    shown = {re.sub(r"[#\[\]]|\..*", "", table[0]) for table in _tables(study_text(2))}
     from muntin.record.definition import Definition
 
     assert shown == set(Definition.model_fields)

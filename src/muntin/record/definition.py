@@ -8,12 +8,14 @@ from typing import Literal
 import numpy as np
 import pandas as pd
 
+from muntin.record.assay import Assay, FixedWell, assay_faults, known_fixed
 from muntin.record.factors import Factor, factor_faults
 from muntin.record.faults import Fault, did_you_mean, number, quoted
 from muntin.record.keys import Keys, Number, NumberOrText, Text, Truths, Whole, key
 from muntin.record.limits import Forbidden, Limit, forbidden_faults, limit_faults
 from muntin.record.protein import Protein, protein_faults
 from muntin.record.responses import Response, response_faults
+from muntin.record.uptake_keys import UptakeKeys, uptake_faults
 from muntin.record.wells import WellError, all_wells, last_well, wells_in
 
 STUDY_FILE = "study.toml"
@@ -142,9 +144,13 @@ class Definition(Keys):
     protein: Protein | None = key(None, says="what there is to load")
     plan: PlanRules = key(PlanRules(), says="how new plates are planned")
     stop: StopRule | None = key(None, says="when to stop, fixed before data")
+    uptake: UptakeKeys = key(
+        UptakeKeys(), says="what uptake curves (uptake/*.csv) were run with, for the contact time"
+    )
     fixed: dict[str, NumberOrText] = key(
         {}, says="what the window is conditional on, repeated wherever it is stated"
     )
+    assay: Assay | None = key(None, says="how plate reads become a recovery (muntin reduce)")
 
     @property
     def title(self) -> str:
@@ -177,6 +183,11 @@ class Definition(Keys):
     def factor_names(self) -> tuple[str, ...]:
         """Names of the factors, in order."""
         return tuple(factor.name for factor in self.factors)
+
+    @property
+    def fixed_well(self) -> FixedWell:
+        """What [fixed] tells of the wells; sound wherever there is an [assay]."""
+        return FixedWell.model_validate(known_fixed(self.fixed))
 
     @property
     def stock_factors(self) -> tuple[str, ...]:
@@ -213,9 +224,12 @@ def definition_faults(definition: Definition) -> list[Fault]:
     faults += own
     faults += [fault for response in definition.responses for fault in response_faults(response)]
     faults += _judging_faults(definition)
+    if definition.assay is not None:
+        faults += assay_faults(definition.assay, definition.responses, definition.fixed)
     if definition.factors and not own:
         faults += limit_faults(definition.limits, definition.factors)
         faults += forbidden_faults(definition.forbidden, definition.limits, definition.factors)
+    faults += uptake_faults(definition.uptake)
     return [*faults, *_shared_faults(definition), *_plan_faults(definition)]
 
 

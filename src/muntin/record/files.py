@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import os
 import secrets
+from collections.abc import Mapping
 from contextlib import suppress
 from pathlib import Path
 
@@ -57,3 +58,20 @@ def write_atomic(path: Path, content: str | bytes) -> None:
         why = error.strerror or str(error)
         fault = Fault(file=str(path), problem="cannot be written", hint=why)
         raise StudyFaults([fault]) from None
+
+
+def write_together(files: Mapping[Path, str]) -> None:
+    """Write files, all of them or, with StudyFaults, none: what was there is put back."""
+    before: dict[Path, bytes | None] = {}
+    try:
+        for file, content in files.items():
+            there = file.read_bytes() if file.is_file() else None
+            write_atomic(file, content)
+            before[file] = there
+    except StudyFaults:
+        for file, there in before.items():
+            if there is None:
+                file.unlink(missing_ok=True)
+            else:
+                write_atomic(file, there)
+        raise

@@ -16,6 +16,9 @@ from muntin.record.wells import WellError, last_well, well_name
 
 Readings = dict[str, list[Reading]]
 
+# What `muntin reduce` writes into results/ begins with this.
+REDUCED = "reduced-"
+
 
 class Run(NamedTuple):
     """What was run: the row of each plate and well, the role in each row, and the plates whose
@@ -32,10 +35,20 @@ class Run(NamedTuple):
 
 
 def join_results(
-    folder: Path, definition: Definition, run: Run, readings: Readings, found: Findings
+    folder: Path,
+    definition: Definition,
+    run: Run,
+    readings: Readings,
+    found: Findings,
+    passed: str = "",
 ) -> Readings:
-    """Return the readings completed by all tables in results/; each list has a row a well."""
-    for _, path in table_files(folder / "results", found):
+    """Return the readings completed by all tables in results/; each list has a row a well.
+
+    Tables whose names begin with `passed` are passed over.
+    """
+    for stem, path in table_files(folder / "results", found):
+        if passed and stem.startswith(passed):
+            continue
         file = f"results/{path.name}"
         known = ["plate", "well", *response_columns(definition.responses)]
         table = read_table(path, file, known, found)

@@ -16,7 +16,7 @@ from muntin.record.notes import Plate, read_notes
 from muntin.record.notices import column_notice, definition_notices, odd_notices, well_notices
 from muntin.record.plates import PlateRows, open_plate, outside_limits, read_plate
 from muntin.record.readings import INFORMING, USED, Reading
-from muntin.record.results import Run, join_results
+from muntin.record.results import REDUCED, Run, join_results
 from muntin.record.stocks import read_stocks
 from muntin.record.stop_rule import (
     RecordedStop,
@@ -137,9 +137,10 @@ class Study:
         )
 
 
-def open_study(path: str | Path) -> Study:
+def open_study(path: str | Path, *, reducing: bool = False) -> Study:
     """Read a study folder; nothing is written.
 
+    With `reducing` plates may have no reading yet, and what was reduced before is not read.
     Raises StudyFaults with every fault of its files.
     """
     folder = Path(path)
@@ -154,7 +155,7 @@ def open_study(path: str | Path) -> Study:
     }
     if definition is None:
         raise StudyFaults(found.faults)
-    wells = _read_wells(folder, definition, plates, tables, found)
+    wells = _read_wells(folder, definition, plates, tables, found, reducing)
     stops = read_stops(folder, found)
     if found.faults:
         raise StudyFaults(found.faults)
@@ -207,6 +208,7 @@ def _read_wells(
     plates: dict[str, Plate],
     tables: dict[str, Table | None],
     found: Findings,
+    reducing: bool,
 ) -> pd.DataFrame:
     stocks = read_stocks(folder, definition.factors, [*tables], found)
     parts = {
@@ -215,7 +217,8 @@ def _read_wells(
         if table is not None
     }
     rows = [*parts.values()]
-    readings = _read_results(folder, definition, rows, tables, found)
+    passed = REDUCED if reducing else ""
+    readings = _read_results(folder, definition, rows, tables, found, passed)
     frame = wells_table(definition, rows, readings)
     void = {name: plate.void for name, plate in plates.items() if plate.void}
     needed = {name: part.needed for name, part in parts.items() if name not in void}
@@ -223,7 +226,7 @@ def _read_wells(
     found.faults.extend(shared_column_faults(definition, tables, needed))
     found.faults.extend(copy_faults(plates, parts))
     if not found.faults:
-        _take_stock(folder, definition, frame, parts, void, found)
+        _take_stock(folder, definition, frame, parts, void, found, may_be_unread=reducing)
     return frame
 
 
@@ -233,6 +236,7 @@ def _read_results(
     rows: list[PlateRows],
     tables: dict[str, Table | None],
     found: Findings,
+    passed: str,
 ) -> dict[str, list[Reading]]:
     readings = {
         response.name: [reading for part in rows for reading in part.readings[response.name]]
@@ -246,7 +250,7 @@ def _read_results(
     wells = {place: row for row, place in enumerate(places)}
     roles = [role for part in rows for role in part.columns["role"]]
     unread = [name for name, table in tables.items() if table is None]
-    return join_results(folder, definition, Run(wells, roles, unread), readings, found)
+    return join_results(folder, definition, Run(wells, roles, unread), readings, found, passed)
 
 
 def _take_stock(
@@ -256,10 +260,12 @@ def _take_stock(
     parts: dict[str, PlateRows],
     void: dict[str, str],
     found: Findings,
+    *,
+    may_be_unread: bool,
 ) -> None:
     informing = frame[frame["role"].isin(INFORMING)]
     fault = no_reading_fault(definition, informing[~informing["plate"].isin([*void])])
-    if fault is not None:
+    if fault is not None and not may_be_unread:
         found.faults.append(fault)
     odd = odd_notices(definition, informing, void)
     found.notices[:0] = [*filled_plans(folder, definition, parts), *odd]

@@ -98,12 +98,38 @@ def read_table(path: Path, file: str, known: Sequence[str], found: Findings) -> 
     Headings that equal a known name but for capitals get the known one. Rows without any content
     are passed over; headings without a row below them are not judged.
     """
-    sheets: tuple[str, ...] = ()
+    told = _rows_of(path, file, known, found)
+    if told is None:
+        return None
+    rows, sheets, comma = told
+    filled = [(number, row) for number, row in rows if any(row)]
+    if filled:
+        return _table(file, filled, known, comma, sheets, found)
+    problem = "is empty; its first row must hold the headings"
+    found.faults.append(Fault(file=file, problem=problem, hint=_sheet_hint(sheets)))
+    return None
+
+
+def read_rows(path: Path, file: str, found: Findings) -> list[tuple[int, list[str]]] | None:
+    """Return the cells of a file without headings, each row with its number, empty rows too.
+
+    Semicolons or tabs part the cells where there are any, else commas. None where the file is no
+    table; faults join `found`.
+    """
+    told = _rows_of(path, file, None, found)
+    return None if told is None else told[0]
+
+
+_Rows = tuple[list[tuple[int, list[str]]], tuple[str, ...], bool]
+
+
+def _rows_of(path: Path, file: str, known: Sequence[str] | None, found: Findings) -> _Rows | None:
+    """Numbered rows, names of sheets, and whether commas part the cells; None with a fault."""
     try:
         if path.suffix.lower() == ".xlsx":
-            rows, sheets, comma = *_sheet_rows(path.read_bytes()), False
-        else:
-            rows, comma = _text_rows(decoded(path.read_bytes()), known)
+            return *_sheet_rows(path.read_bytes()), False
+        rows, comma = _text_rows(decoded(path.read_bytes()), known)
+        return rows, (), comma
     except NotTextError:
         found.faults.append(
             Fault(file=file, problem="is not a text table; save it as .csv or .xlsx")
@@ -115,12 +141,6 @@ def read_table(path: Path, file: str, known: Sequence[str], found: Findings) -> 
         found.faults.append(Fault(file=file, problem=problem))
     except OSError as error:
         found.faults.append(Fault(file=file, problem="cannot be read", hint=error.strerror or ""))
-    else:
-        filled = [(number, row) for number, row in rows if any(row)]
-        if filled:
-            return _table(file, filled, known, comma, sheets, found)
-        problem = "is empty; its first row must hold the headings"
-        found.faults.append(Fault(file=file, problem=problem, hint=_sheet_hint(sheets)))
     return None
 
 
@@ -181,11 +201,16 @@ def _width_faults(
             yield Fault(file=file, where=f"row {number}", problem=problem, hint=hint)
 
 
-def _text_rows(text: str, known: Sequence[str]) -> tuple[list[tuple[int, list[str]]], bool]:
+def _text_rows(text: str, known: Sequence[str] | None) -> tuple[list[tuple[int, list[str]]], bool]:
     lines = text.splitlines()
     first = next((line for line in lines if line.strip()), "")
     told = re.fullmatch(r"sep=(.)", first.strip(" \r\n"), re.IGNORECASE)
-    separator = told[1] if told else _separator(first, known)
+    if told:
+        separator = told[1]
+    elif known is None:
+        separator = next((sign for sign in (";", "\t") if sign in text), ",")
+    else:
+        separator = _separator(first, known)
     rows = csv.reader(io.StringIO(text, newline=""), delimiter=separator, strict=True)
     numbered = [
         (number, [_clean(cell) for cell in row]) for number, row in enumerate(rows, start=1)

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+import re
 from collections.abc import Mapping
 from pathlib import Path
 from typing import Any
@@ -10,6 +11,7 @@ from typing import Any
 from pydantic import BaseModel
 from pydantic.fields import FieldInfo
 
+from muntin.record.assay import Assay, AssayStage, FixedWell
 from muntin.record.definition import (
     MOST,
     STUDY_FILE,
@@ -26,7 +28,9 @@ from muntin.record.limits import Forbidden, Limit
 from muntin.record.protein import Protein
 from muntin.record.responses import Response
 from muntin.record.tables import SUFFIXES
+from muntin.record.uptake_keys import UptakeKeys
 
+_APART = "stages"
 _STUDY = {"title": "Invented example: elution of a protein from a resin", "plate": 96}
 _STUDY |= {"required_probability": 0.90, "judged_by": "well"}
 _FACTORS: tuple[dict[str, Any], ...] = (
@@ -95,7 +99,10 @@ def study_text(factors: int = 2) -> str:
         _table("[protein]", "protein", Protein),
         _table("[plan]", "plan", PlanRules),
         _table("[stop]", "stop", StopRule),
-        _comment(_says("fixed")) + "#[fixed]\n#stages = 2\n",
+        _table("[uptake]", "uptake", UptakeKeys),
+        _table("[fixed]", "fixed", FixedWell),
+        _table("[assay]", "assay", Assay),
+        _stages(),
     ]
     return "\n".join(parts)
 
@@ -110,11 +117,28 @@ def _table(
     """Return a table with all keys of its declaration; without `given`, all behind a #."""
     text = _comment(_says(section)) + ("" if given else "#") + heading + "\n"
     for name, info in model.model_fields.items():
+        if name == _APART:
+            continue
         mark = "" if given and name in given else "#"
-        extra = info.json_schema_extra if isinstance(info.json_schema_extra, dict) else {}
-        value = given[name] if given and name in given else extra.get("example")
+        value = given[name] if given and name in given else _example(info)
         text += _comment(_help(info)) + f"{mark}{info.alias or name} = {toml_value(value)}\n"
     return text
+
+
+def _stages() -> str:
+    """Return the stages of [assay]: a load with all keys and an elution, all behind a #."""
+    text = _comment(Assay.model_fields[_APART].description or "") + "#[[assay.stages]]\n"
+    for name, info in AssayStage.model_fields.items():
+        text += _comment(_help(info)) + f"#{name} = {toml_value(_example(info))}\n"
+    elution = {"fraction": "e1", "stage": "elution", "volume_ul": 200.0}
+    return text + "\n" + re.sub("(?m)^", "#", _bare("[[assay.stages]]", elution).strip()) + "\n"
+
+
+def _example(info: FieldInfo) -> Any:
+    """What stands behind a key: its example, else its default."""
+    extra = info.json_schema_extra if isinstance(info.json_schema_extra, dict) else {}
+    example = extra.get("example")
+    return info.default if example is None else example
 
 
 def _bare(heading: str, given: Mapping[str, Any]) -> str:

@@ -5,7 +5,6 @@ from __future__ import annotations
 import csv
 import io
 import re
-from collections.abc import Mapping
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -13,8 +12,7 @@ import pandas as pd
 
 from muntin.record.definition import Definition
 from muntin.record.edits import record_path
-from muntin.record.faults import StudyFaults
-from muntin.record.files import write_atomic
+from muntin.record.files import write_together
 from muntin.record.offers import OFFERED, PLANS
 
 if TYPE_CHECKING:
@@ -106,7 +104,7 @@ def write_plan(folder: Path, plate: str, text: str) -> tuple[Path, str]:
     return its path and a remark. Raises StudyFaults.
     """
     path, remark = plan_path(folder, plate, text)
-    _write_together({offered_path(path): text, path: text})
+    write_together({offered_path(path): text, path: text})
     return path, remark
 
 
@@ -126,21 +124,4 @@ def edited_path(folder: Path, plate: str) -> Path:
 
 def write_edited(path: Path, text: str, record: str) -> None:
     """Write an edited plan, its copy and its record; all of them or, with StudyFaults, none."""
-    _write_together({record_path(path): record, offered_path(path): text, path: text})
-
-
-def _write_together(files: Mapping[Path, str]) -> None:
-    """Write files, all of them or, with StudyFaults, none: what was there is put back."""
-    before: dict[Path, bytes | None] = {}
-    try:
-        for file, content in files.items():
-            there = file.read_bytes() if file.is_file() else None
-            write_atomic(file, content)
-            before[file] = there
-    except StudyFaults:
-        for file, there in before.items():
-            if there is None:
-                file.unlink(missing_ok=True)
-            else:
-                write_atomic(file, there)
-        raise
+    write_together({record_path(path): record, offered_path(path): text, path: text})

@@ -1,0 +1,1 @@
+"""What is read at the bench: plate reads to recovery, uptake curves to contact time."""
