@@ -8,6 +8,7 @@ from typing import Literal
 import numpy as np
 import pandas as pd
 
+from muntin.record.bench import Bench, bench_faults
 from muntin.record.factors import Factor, factor_faults
 from muntin.record.faults import Fault, did_you_mean, number, quoted
 from muntin.record.keys import Keys, Number, NumberOrText, Text, Truths, Whole, key
@@ -142,6 +143,9 @@ class Definition(Keys):
     protein: Protein | None = key(None, says="what there is to load")
     plan: PlanRules = key(PlanRules(), says="how new plates are planned")
     stop: StopRule | None = key(None, says="when to stop, fixed before data")
+    bench: Bench = key(
+        Bench(), says="what wells are mixed from and what the pipette can do, for muntin prepare"
+    )
     fixed: dict[str, NumberOrText] = key(
         {}, says="what the window is conditional on, repeated wherever it is stated"
     )
@@ -216,6 +220,7 @@ def definition_faults(definition: Definition) -> list[Fault]:
     if definition.factors and not own:
         faults += limit_faults(definition.limits, definition.factors)
         faults += forbidden_faults(definition.forbidden, definition.limits, definition.factors)
+        faults += bench_faults(definition.bench, definition.factors)
     return [*faults, *_shared_faults(definition), *_plan_faults(definition)]
 
 

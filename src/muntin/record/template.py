@@ -10,6 +10,7 @@ from typing import Any
 from pydantic import BaseModel
 from pydantic.fields import FieldInfo
 
+from muntin.record.bench import Bench, BenchStock
 from muntin.record.definition import (
     MOST,
     STUDY_FILE,
@@ -95,13 +96,16 @@ def study_text(factors: int = 2) -> str:
         _table("[protein]", "protein", Protein),
         _table("[plan]", "plan", PlanRules),
         _table("[stop]", "stop", StopRule),
+        _table("[bench]", "bench", Bench),
+        _table("[[bench.stocks]]", "stocks", BenchStock),
         _comment(_says("fixed")) + "#[fixed]\n#stages = 2\n",
     ]
     return "\n".join(parts)
 
 
 def _says(section: str) -> str:
-    return Definition.model_fields[section].description or ""
+    fields = {**Bench.model_fields, **Definition.model_fields}
+    return fields[section].description or ""
 
 
 def _table(
@@ -110,6 +114,8 @@ def _table(
     """Return a table with all keys of its declaration; without `given`, all behind a #."""
     text = _comment(_says(section)) + ("" if given else "#") + heading + "\n"
     for name, info in model.model_fields.items():
+        if info.default == ():  # tables of their own, shown below
+            continue
         mark = "" if given and name in given else "#"
         extra = info.json_schema_extra if isinstance(info.json_schema_extra, dict) else {}
         value = given[name] if given and name in given else extra.get("example")
@@ -125,7 +131,7 @@ def _bare(heading: str, given: Mapping[str, Any]) -> str:
 def _help(info: FieldInfo) -> str:
     extra = info.json_schema_extra if isinstance(info.json_schema_extra, dict) else {}
     unit = f"unit: {extra['unit']}" if extra.get("unit") else ""
-    plain = info.default is not None and not info.is_required() and info.default != ""
+    plain = info.default is not None and not info.is_required() and info.default not in ("", {})
     default = f"default: {toml_value(info.default)}" if plain else ""
     more = "; ".join(part for part in (unit, default) if part)
     return (info.description or "") + (f" ({more})" if more else "")
