@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Mapping, Sequence
+from collections.abc import Iterable, Iterator, Mapping, Sequence
 from decimal import Decimal
 
 from muntin.record.factors import Factor
@@ -24,7 +24,7 @@ class BenchStock(Keys):
     )
     holds: dict[str, NumberOrText] = key(
         {},
-        says="what it holds of which factor, in the factor's unit; of a factor not named, nothing",
+        says="what it holds of which factor, in the factor's unit; of one not named, nothing",
         example={"salt": 500},
     )
 
@@ -43,6 +43,12 @@ class Bench(Keys):
         None,
         says="factor that is a pH: bottles of two pH are never mixed",
         example="elution_ph",
+    )
+    every_mix: dict[str, Number] = key(
+        {},
+        says="what every mix holds besides the factors, such as the buffer in mM; stocks name it "
+        "in holds",
+        example={"buffer": 20.0},
     )
     stocks: tuple[BenchStock, ...] = key((), says="bottles that wells are mixed from")
     protein_mg_per_ml: Number | None = key(
@@ -66,7 +72,9 @@ class Bench(Keys):
     @property
     def held(self) -> frozenset[str]:
         """Factors that the stocks set; all others are set otherwise."""
-        named = {name for stock in self.stocks for name in stock.holds}
+        named = {
+            name for stock in self.stocks for name in stock.holds if name not in self.every_mix
+        }
         return frozenset(named | {stock.per for stock in self.stocks if stock.per is not None})
 
     def matched(self, factors: Sequence[Factor]) -> frozenset[str]:
@@ -104,7 +112,8 @@ def bench_faults(bench: Bench, factors: Sequence[Factor]) -> Iterator[Fault]:
             if stock.per in stock.holds:
                 problem = "is set by per already, a bottle for each level"
                 yield _fault(f"{where}, holds", quoted(stock.per), problem)
-        yield from _held_faults(f"{where}, holds", stock.holds, by_name)
+        yield from _held_faults(f"{where}, holds", stock.holds, by_name, bench.every_mix)
+    yield from _every_mix_faults(bench, by_name)
     if bench.control_condition is not None:
         where = "control_condition"
         yield from _held_faults(where, bench.control_condition, by_name)
@@ -128,6 +137,15 @@ def _volume_faults(bench: Bench) -> Iterator[Fault]:
             yield _fault(name, number(given), problem, "pipette_step_ul", number(float(close)))
 
 
+def _every_mix_faults(bench: Bench, factors: Mapping[str, Factor]) -> Iterator[Fault]:
+    for name, value in bench.every_mix.items():
+        where = f"every_mix, {name}"
+        if name in factors:
+            yield _fault(where, quoted(name), "is a factor; each mix holds its own")
+        elif value < 0:
+            yield _fault(where, number(value), "must be 0 or above")
+
+
 def _factor_faults(where: str, name: str, known: Sequence[str]) -> Iterator[Fault]:
     if known and name not in known:
         problem = "is not a factor" + (" with a range" if where == "ph_factor" else "")
@@ -135,16 +153,19 @@ def _factor_faults(where: str, name: str, known: Sequence[str]) -> Iterator[Faul
 
 
 def _held_faults(
-    where: str, holds: Mapping[str, float | str], factors: Mapping[str, Factor]
+    where: str,
+    holds: Mapping[str, float | str],
+    factors: Mapping[str, Factor],
+    more: Iterable[str] = (),
 ) -> Iterator[Fault]:
     for name, value in holds.items():
         factor = factors.get(name)
-        if factor is None:
-            yield from _factor_faults(where, name, [*factors])
-        elif factor.choices is not None and value not in factor.choices:
+        if factor is None and name not in more:
+            yield from _factor_faults(where, name, [*factors, *more])
+        elif factor is not None and factor.choices is not None and value not in factor.choices:
             hint = did_you_mean(str(value), factor.choices)
             yield _fault(f"{where}, {name}", quoted(value), "is not a choice", hint)
-        elif factor.continuous and (isinstance(value, str) or value < 0):
+        elif (factor is None or factor.continuous) and (isinstance(value, str) or value < 0):
             yield _fault(f"{where}, {name}", quoted(value), "is not a number of 0 or above")
 
 
