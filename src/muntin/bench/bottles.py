@@ -14,11 +14,14 @@ Value = float | str
 
 @dataclass(frozen=True, eq=False)
 class Bottle:
-    """One bottle: its name, what it holds of which factor (raw units), and whether it is one of
-    several that are made for the levels of a factor.
+    """One bottle.
+
+    name: what stands on it. stock: the name in study.toml. holds: what it holds of which factor
+    (raw units). by_level: whether it is one of several that are made for the levels of a factor.
     """
 
     name: str
+    stock: str
     holds: Mapping[str, Value]
     by_level: bool = False
 
@@ -40,7 +43,7 @@ def bottles_for(definition: Definition, condition: Condition) -> list[Bottle]:
             name = f"{name} {factor.unit}".rstrip()
         own = [n for n in matched if n in holds and n in condition]
         if all(alike(by_name[n], holds[n], condition[n]) for n in own):
-            bottles.append(Bottle(name, holds, stock.per is not None))
+            bottles.append(Bottle(name, stock.name, holds, stock.per is not None))
     return bottles
 
 
