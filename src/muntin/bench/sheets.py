@@ -10,6 +10,7 @@ from pathlib import Path
 import pandas as pd
 
 from muntin.bench.bottles import Bottle, Value
+from muntin.bench.fed import fed_lines, line_of
 from muntin.bench.load import Load, load_of
 from muntin.bench.mixing import Mix, Mixer
 from muntin.bench.nearby import nearest_that
@@ -121,10 +122,11 @@ def _mixes(
     bench, names = definition.bench, definition.factor_names
     if not bench.held:
         return (), []
+    fed = fed_lines(definition, rows)
     mixes: dict[int, tuple[Mix, list[str]]] = {}
     refused: dict[tuple[Value, ...], tuple[Refusal, list[str]]] = {}
     for row in rows.to_dict("records"):
-        condition = _liquid_of(definition, row)
+        condition = _liquid_of(definition, row, fed)
         if condition is None:
             continue
         mix = mixer.mix(condition)
@@ -140,11 +142,20 @@ def _mixes(
     return tuple(WellsMix(mix, tuple(wells)) for mix, wells in mixes.values()), faults
 
 
-def _liquid_of(definition: Definition, row: Mapping[str, Value]) -> Mapping[str, Value] | None:
-    """The condition whose liquid a well is given, None where the study does not say."""
+def _liquid_of(
+    definition: Definition, row: Mapping[str, Value], fed: Mapping[int, Mapping[str, Value]]
+) -> Mapping[str, Value] | None:
+    """The condition whose liquid a well is given, None where the study does not say.
+
+    A control on a line that a stock feeds is given the liquid of that stock.
+    """
     if row["role"] in INFORMING:
         return {name: row[name] for name in definition.factor_names}
-    return definition.bench.control_condition if row["role"] in _LIQUID_CONTROLS else None
+    usual = definition.bench.control_condition
+    if usual is None or row["role"] not in _LIQUID_CONTROLS:
+        return None
+    line = line_of(definition, str(row["well"]))
+    return usual if line is None else {**usual, **fed.get(line, {})}
 
 
 def _refused(
