@@ -39,8 +39,8 @@ def bottles_for(definition: Definition, condition: Condition) -> list[Bottle]:
         if stock.per is not None:
             factor = by_name[stock.per]
             holds[stock.per] = condition[stock.per]
-            name = f"{stock.name}, {factor.named(factor.shown(condition[stock.per]))}"
-            name = f"{name} {factor.unit}".rstrip()
+            level = factor.named(factor.shown(condition[stock.per]))
+            name = f"{stock.name} ({f'{level} {factor.unit}'.rstrip()})"
         own = [n for n in matched if n in holds and n in condition]
         if all(alike(by_name[n], holds[n], condition[n]) for n in own):
             bottles.append(Bottle(name, stock.name, holds, stock.per is not None))

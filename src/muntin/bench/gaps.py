@@ -36,8 +36,8 @@ def _of_volumes(sheets: Sheets) -> Iterator[str]:
         least = min(sheets.transfers, key=lambda t: t.steps)
         drawn = sheets.pipette.shown(least.steps)
         yield (
-            "No pipette_floor_ul is given (study.toml, [bench]): whether small draws can be made was "
-            f"not judged; the smallest is {drawn} µL of {least.stock} into {least.well}."
+            "No pipette_floor_ul is given (study.toml, [bench]): small draws were not judged; the "
+            f"smallest is {drawn} µL of {least.stock} into {least.well}."
         )
     if bench.dead_volume_ul is None:
         yield (

@@ -105,8 +105,8 @@ class Mixer:
                     reason=f"comes out as {name} {number(round(value, 6))}, more than half a step "
                     f"off, in pipette steps of {volume_text(self.pipette.step)} µL"
                 )
-        steps = {b.name: n for b, n in zip(bottles, parts, strict=True) if n}
-        return Mix(held, chosen, recipe, steps, made)
+        drawn = {b.name: n for b, n in zip(bottles, parts, strict=True) if n}
+        return Mix(held, chosen, recipe, drawn, made)
 
     def _too_little(self, bottle: Bottle, share: float) -> str:
         takes = number(round(share * float(self.pipette.ul(self.total or 0)), 2))

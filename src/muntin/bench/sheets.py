@@ -6,6 +6,7 @@ import hashlib
 from collections.abc import Iterable, Mapping
 from dataclasses import dataclass
 from pathlib import Path
+from typing import Any
 
 import pandas as pd
 
@@ -143,7 +144,7 @@ def _mixes(
 
 
 def _liquid_of(
-    definition: Definition, row: Mapping[str, Value], fed: Mapping[int, Mapping[str, Value]]
+    definition: Definition, row: Mapping[Any, Any], fed: Mapping[int, Mapping[str, Value]]
 ) -> Mapping[str, Value] | None:
     """The condition whose liquid a well is given, None where the study does not say.
 

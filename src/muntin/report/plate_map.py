@@ -29,8 +29,8 @@ _CONTROL = {"blank": "blank", "load": "load", "no_resin": "no\nresin", "water": 
 _SHORT = {"blank": "B", "load": "L", "no_resin": "N", "water": "W"}
 _ROLES = {
     "test": "test",
-    "bridge": "bridging (thick ring)",
-    "reference": "reference (dotted ring)",
+    "bridge": "bridging",
+    "reference": "reference",
     "blank": "blank",
     "load": "load",
     "no_resin": "no resin",
@@ -224,7 +224,11 @@ def _words(
     axes.text(0.5, 7.51, textwrap.shorten(titles[1], 100, placeholder=" ..."), fontsize=12, **style)
     axes.text(0.5, 7.27, titles[2], fontsize=10, **style)
     axes.text(0.5, 0.53, _legend(definition), fontsize=11, **style)
-    axes.text(0.5, 0.29, _roles(definition, rows), fontsize=11, **style)
+    rings = {"bridge": " Thick ring: bridging.", "reference": " Dotted ring: reference."}
+    there = {*rows["role"]}
+    roles = roles_text(rows, definition.plate != 96)
+    roles += "".join(said for role, said in rings.items() if role in there) + " Cut corner: A1."
+    axes.text(0.5, 0.29, roles, fontsize=11, **style)
     write = {**style, "ha": "right", "fontsize": 11}
     axes.text(A4[0] - 0.5, 7.84, "Run by ______________", **write)
     axes.text(A4[0] - 0.5, 7.42, "Date ______________", **write)
@@ -242,12 +246,12 @@ def _legend(definition: Definition) -> str:
     return said if by == "well" else f"{said} At the arrows: {', '.join(fed)} of each {by}."
 
 
-def _roles(definition: Definition, rows: pd.DataFrame) -> str:
+def roles_text(rows: pd.DataFrame, short: bool = False) -> str:
+    """Return how many wells have which role; `short` adds the letters that controls have on 384."""
     count = rows["role"].value_counts()
-    short = "" if definition.plate == 96 else " ({})"
     parts = [
-        f"{count[role]} {name}{short.format(_SHORT[role]) if role in _SHORT else ''}"
+        f"{count[role]} {name}{f' ({_SHORT[role]})' if short and role in _SHORT else ''}"
         for role, name in _ROLES.items()
         if role in count
     ]
-    return f"{len(rows)} wells: {', '.join(parts)}. The cut corner is at A1."
+    return f"{len(rows)} wells: {', '.join(parts)}."

@@ -1,0 +1,139 @@
+"""The bench checklist: what to do, box by box, with the cautions first."""
+
+from __future__ import annotations
+
+import textwrap
+from collections.abc import Iterable, Iterator
+
+from muntin.bench.gaps import gaps
+from muntin.bench.sheets import Sheets
+from muntin.bench.transfers import Total
+from muntin.record.bench import LOAD
+from muntin.record.faults import counted, number
+from muntin.report.cautions import bench_cautions
+from muntin.report.plate_map import roles_text
+from muntin.report.sheet_words import held_text, protein_line, volume_ml
+
+_WIDTH = 84
+_BOX = "[ ] "
+_FILES = {
+    "map.pdf, map.png": "the plate; wells lie as seen from above, A1 at the cut corner",
+    "conditions.csv": "condition, factors, count, wells: the distinct conditions",
+    "recipes.csv": "stocks of each liquid: mL per litre, and µL per well in pipette steps",
+    "transfers.csv": "stock, well, draw_ul: every draw in the order of work",
+    "totals.csv": "stock, wells, drawn_ul (sum of its draws), dead_ul, needed_ul",
+}
+
+
+def checklist_lines(sheets: Sheets, files: Iterable[str]) -> list[str]:
+    """Return the checklist as lines of plain text, at most 84 signs wide; files are those that are
+    written beside it.
+    """
+    parts = [
+        _head(sheets),
+        ("Cautions", [_item("- ", said) for said in bench_cautions(ph_levels(sheets))]),
+        ("Before the plate", [_item(_BOX, said) for said in _before(sheets)]),
+        ("Bottles", [_item(_BOX, said) for said in _bottles(sheets)]),
+        ("The plate", [_item(_BOX, said) for said in _plate(sheets)]),
+        ("Not in these sheets", [_item("- ", said) for said in gaps(sheets)]),
+        ("Files", [_item("- ", said) for said in _files(files)]),
+    ]
+    lines: list[str] = []
+    for heading, items in parts:
+        if items:
+            lines += [heading.upper(), "", *(line for item in items for line in item), ""]
+    return lines[:-1]
+
+
+def _item(mark: str, said: str) -> list[str]:
+    rest = " " * len(mark)
+    return textwrap.wrap(said, _WIDTH, initial_indent=mark, subsequent_indent=rest)
+
+
+def _head(sheets: Sheets) -> tuple[str, list[list[str]]]:
+    definition = sheets.study.definition
+    said = [
+        definition.title,
+        f"Plan {sheets.file}, fingerprint {sheets.digest[:8]} (SHA-256).",
+        roles_text(sheets.rows),
+    ]
+    head = [*(_item("", line) for line in said), ["", "Run by ____________________  Date ________"]]
+    return f"Bench checklist of {sheets.plate}", head
+
+
+def ph_levels(sheets: Sheets) -> list[float]:
+    """Return the pH of each well of a plan, none where [bench] names no pH."""
+    name = sheets.study.definition.bench.ph_factor
+    return [] if name is None else sheets.rows[name].dropna().astype(float).tolist()
+
+
+def _before(sheets: Sheets) -> Iterator[str]:
+    yield "Plan and map agree: the fingerprint of the map is that of this page."
+    yield "Site procedures read, cautions above gone through, eyes and hands protected."
+    if sheets.load is not None:
+        yield protein_line(sheets.load, sheets.study.definition)
+    kept = [
+        f"{name} {value if isinstance(value, str) else number(value)}"
+        for name, value in sheets.study.definition.fixed.items()
+    ]
+    if kept:
+        yield f"What the window is conditional on is as it was: {', '.join(kept)}."
+
+
+def _bottles(sheets: Sheets) -> Iterator[str]:
+    for total in sheets.totals:
+        yield f"{total.stock}: {_amount(total)}{_holds(sheets, total)}"
+    ph = sheets.study.definition.bench.ph_factor
+    levels = [bottle for bottle in sheets.bottles if bottle.by_level]
+    if levels:
+        yield (
+            f"Measure each bottle, and write {'pH and ' if ph else ''}what it measured to "
+            f"stocks/{sheets.plate}.csv (factor, target, measured): the model uses measured values."
+        )
+
+
+def _amount(total: Total) -> str:
+    drawn = f"{volume_ml(total.listed_ul)} drawn for {counted(total.wells, 'well')}"
+    if total.dead_ul is None:
+        return drawn
+    return f"have {volume_ml(total.needed_ul)} ({drawn}, {volume_ml(total.dead_ul)} stay behind)"
+
+
+def _holds(sheets: Sheets, total: Total) -> str:
+    strength = sheets.study.definition.bench.protein_mg_per_ml
+    if total.stock == LOAD:
+        return f"; {number(strength or 0.0)} mg/mL protein"
+    bottle = next(b for b in sheets.bottles if b.name == total.stock)
+    held = held_text(sheets.study.definition, bottle)
+    return f"; holds {held}" if held else ""
+
+
+def _plate(sheets: Sheets) -> Iterator[str]:
+    definition, draws = sheets.study.definition, sheets.transfers
+    by = definition.plan.prepared_by
+    if by != "well":
+        fed = [f.label for f in definition.factors if f.name in definition.stock_factors]
+        yield f"Each {by} is fed one {' and '.join(fed)}: the arrows on the map."
+    if any(of.mix.steps for of in sheets.mixes):
+        volume = number(definition.bench.well_ul or 0.0)
+        count = sum(t.stock != LOAD for t in draws)
+        yield (
+            f"Mix the liquids on a plate of their own, in the wells of the same names: "
+            f"{counted(count, 'draw')} of transfers.csv, {volume} µL in each well. Mix before use."
+        )
+    if sheets.load is not None and sheets.load.steps:
+        count = sum(t.stock == LOAD for t in draws)
+        yield f"Load the resin plate: the {counted(count, 'draw')} of {LOAD} in transfers.csv."
+    yield "Controls as on the map: no protein into blanks, no resin where the map says so."
+    yield "Balance the rotor before each spin."
+    yield (
+        f"Fill the readings into {sheets.file} (what differs from the plan too) and move it to "
+        f"plates/{sheets.plate}.csv."
+    )
+
+
+def _files(files: Iterable[str]) -> Iterator[str]:
+    there = {*files}
+    for names, said in _FILES.items():
+        if names.split(", ")[0] in there:
+            yield f"{names}: {said}"
