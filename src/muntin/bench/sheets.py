@@ -173,13 +173,13 @@ def _refused(
     shown = ", ".join(
         f"{f.name} {f.shown(whole[f.name])}" for f in definition.factors if f.name in whole
     )
-    close = None
+    hint = "study.toml, bench, control_condition"
     if len(whole) == len(definition.factors):
         bottled = bench.matched(definition.factors)
         close = nearest_that(mixer.works, definition, whole, bench.held, bottled)
-    hint = "no condition near it works"
-    if close is not None:
-        hint = f"nearest that works: {_shown(definition, close)}"
+        hint = "no condition near it works"
+        if close is not None:
+            hint = f"nearest that works: {_shown(definition, close)}"
     where = f"well{'s' if len(wells) > 1 else ''} {listed(wells)}"
     return Fault(file=file, where=where, value=shown, problem=why.reason, hint=hint)
 

@@ -99,28 +99,39 @@ def bench_faults(bench: Bench, factors: Sequence[Factor]) -> Iterator[Fault]:
     if bench.ph_factor is not None:
         ranged = [f.name for f in factors if f.continuous]
         yield from _factor_faults("ph_factor", bench.ph_factor, ranged)
+    yield from _stock_faults(bench, by_name)
+    yield from _every_mix_faults(bench, by_name)
+    if bench.control_condition is not None:
+        where = "control_condition"
+        yield from _held_faults(where, bench.control_condition, by_name)
+        lacking = sorted((bench.held & {*by_name}) - {*bench.control_condition})
+        if lacking:
+            problem = "lacks what the stocks set:"
+            yield _fault(where, "", problem, allowed=listed(lacking))
+
+
+def _stock_faults(bench: Bench, by_name: Mapping[str, Factor]) -> Iterator[Fault]:
     seen: set[str] = set()
     for stock in bench.stocks:
         where = f"stocks, {stock.name}"
-        name = stock.name.strip().casefold()
-        if not name or name == LOAD or name in seen:
-            said = "is there twice" if name in seen else "is no name for a stock"
-            yield _fault(f"{where}, name", quoted(stock.name), said, f'empty and "{LOAD}" are kept')
-        seen.add(name)
+        yield from _name_faults(stock.name, seen)
+        seen.add(stock.name.strip().casefold())
         if stock.per is not None:
             yield from _factor_faults(f"{where}, per", stock.per, [*by_name])
             if stock.per in stock.holds:
                 problem = "is set by per already, a bottle for each level"
                 yield _fault(f"{where}, holds", quoted(stock.per), problem)
         yield from _held_faults(f"{where}, holds", stock.holds, by_name, bench.every_mix)
-    yield from _every_mix_faults(bench, by_name)
-    if bench.control_condition is not None:
-        where = "control_condition"
-        yield from _held_faults(where, bench.control_condition, by_name)
-        lacking = sorted(bench.held - {*bench.control_condition})
-        if lacking:
-            problem = "lacks what the stocks set:"
-            yield _fault(where, "", problem, allowed=listed(lacking))
+
+
+def _name_faults(name: str, seen: set[str]) -> Iterator[Fault]:
+    plain, where = name.strip().casefold(), f"stocks, {name}, name"
+    if not plain:
+        yield _fault(where, quoted(name), "is empty")
+    elif plain == LOAD:
+        yield _fault(where, quoted(name), "is the name of the protein's solution")
+    elif plain in seen:
+        yield _fault(where, quoted(name), "is there twice")
 
 
 def _volume_faults(bench: Bench) -> Iterator[Fault]:
