@@ -33,7 +33,7 @@ def checklist_lines(sheets: Sheets, files: Iterable[str]) -> list[str]:
         _head(sheets),
         ("Cautions", [_item("- ", said) for said in bench_cautions(ph_levels(sheets))]),
         ("Before the plate", [_item(_BOX, said) for said in _before(sheets)]),
-        ("Bottles", [_item(_BOX, said) for said in _bottles(sheets)]),
+        ("Bottles", _bottles(sheets)),
         ("The plate", [_item(_BOX, said) for said in _plate(sheets)]),
         ("Not in these sheets", [_item("- ", said) for said in gaps(sheets)]),
         ("Files", [_item("- ", said) for said in _files(files)]),
@@ -80,9 +80,22 @@ def _before(sheets: Sheets) -> Iterator[str]:
         yield f"What the window is conditional on is as it was: {', '.join(kept)}."
 
 
-def _bottles(sheets: Sheets) -> Iterator[str]:
-    for total in sheets.totals:
-        yield f"{total.stock}: {_amount(total)}{_holds(sheets, total)}"
+def _bottles(sheets: Sheets) -> list[list[str]]:
+    """A line a bottle, in columns: name, volume to have, what it holds."""
+    totals, dead = sheets.totals, sheets.study.definition.bench.dead_volume_ul
+    if not totals:
+        return []
+    stays = "" if dead is None else f", and {number(dead / 1000)} mL that stay behind"
+    width = max(len(total.stock) for total in totals)
+    lines = [
+        f"{_BOX}{total.stock:<{width}} {volume_ml(total.needed_ul):>11}  {_holds(sheets, total)}"
+        for total in totals
+    ]
+    items = [_item("", f"Have what is drawn{stays}:"), *([line.rstrip()] for line in lines)]
+    return [*items, *(_item(_BOX, said) for said in _measured(sheets))]
+
+
+def _measured(sheets: Sheets) -> Iterator[str]:
     ph = sheets.study.definition.bench.ph_factor
     levels = [bottle for bottle in sheets.bottles if bottle.by_level]
     if levels:
@@ -92,20 +105,12 @@ def _bottles(sheets: Sheets) -> Iterator[str]:
         )
 
 
-def _amount(total: Total) -> str:
-    drawn = f"{volume_ml(total.listed_ul)} drawn for {counted(total.wells, 'well')}"
-    if total.dead_ul is None:
-        return drawn
-    return f"have {volume_ml(total.needed_ul)} ({drawn}, {volume_ml(total.dead_ul)} stay behind)"
-
-
 def _holds(sheets: Sheets, total: Total) -> str:
     strength = sheets.study.definition.bench.protein_mg_per_ml
     if total.stock == LOAD:
-        return f"; {number(strength or 0.0)} mg/mL protein"
+        return f"protein {number(strength or 0.0)} mg/mL"
     bottle = next(b for b in sheets.bottles if b.name == total.stock)
-    held = held_text(sheets.study.definition, bottle)
-    return f"; holds {held}" if held else ""
+    return held_text(sheets.study.definition, bottle)
 
 
 def _plate(sheets: Sheets) -> Iterator[str]:
@@ -113,7 +118,8 @@ def _plate(sheets: Sheets) -> Iterator[str]:
     by = definition.plan.prepared_by
     if by != "well":
         fed = [f.label for f in definition.factors if f.name in definition.stock_factors]
-        yield f"Each {by} is fed one {' and '.join(fed)}: the arrows on the map."
+        side = "beside the rows" if by == "row" else "below the columns"
+        yield f"Each {by} is fed one {' and '.join(fed)}: it stands {side} of the map."
     if any(of.mix.steps for of in sheets.mixes):
         volume = number(definition.bench.well_ul or 0.0)
         count = sum(t.stock != LOAD for t in draws)

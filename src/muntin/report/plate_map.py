@@ -3,30 +3,22 @@
 from __future__ import annotations
 
 import textwrap
-from collections.abc import Mapping, Sequence
 from typing import TYPE_CHECKING, Any
 
 import pandas as pd
 
 from muntin.bench.fed import fed_lines
-from muntin.bench.wells import geometry, well_index, well_name
+from muntin.bench.wells import well_name
 from muntin.record.definition import Definition
-from muntin.record.factors import Factor
-from muntin.record.readings import INFORMING
-from muntin.report.style import ACCENT, BARRED, INK, PAPER, QUIET
+from muntin.report.plate_wells import A4, SHORT, Place, by_number, draw_wells, ordered_factors
+from muntin.report.style import INK, PAPER
 from muntin.report.words import axis_label
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
     from matplotlib.figure import Figure
 
-A4 = (11.69, 8.27)  # inches, the long side across
 _DPI = 200
-_MOST_LINES, _LONGEST = 3, 7
-# Tints for the levels of a stock; ink stands out on all of them, also where they are printed grey.
-_TINTS = ("#fdf6e3", "#dcefdc", "#b7e0d6", "#93cbd6", "#86b4de", "#a9a6e0")
-_CONTROL = {"blank": "blank", "load": "load", "no_resin": "no\nresin", "water": "water"}
-_SHORT = {"blank": "B", "load": "L", "no_resin": "N", "water": "W"}
 _ROLES = {
     "test": "test",
     "bridge": "bridging",
@@ -36,26 +28,7 @@ _ROLES = {
     "no_resin": "no resin",
     "water": "water",
 }
-_RADIUS = 0.46
-_PITCH = 0.74  # inches between the wells of 96
-_TOP = 6.72  # the plate's upper side, inches from the foot of the page
-_SIZES = {1: (17.0,), 2: (16.5, 14.5), 3: (13.5, 12.5, 12.5)}  # points, at that pitch
-
-
-def conditions_of(definition: Definition, rows: pd.DataFrame) -> pd.DataFrame:
-    """Return the distinct conditions of a plan in plate order: condition (counted from 1), the
-    factors (raw units), count (wells) and wells.
-    """
-    names = list(definition.factor_names)
-    wells = rows[rows["role"].isin(INFORMING)].groupby(names, sort=False)["well"]
-    frame = pd.DataFrame({"count": wells.size(), "wells": wells.agg(" ".join)}).reset_index()
-    return frame.assign(condition=range(1, len(frame) + 1))[["condition", *names, "count", "wells"]]
-
-
-def by_number(definition: Definition) -> bool:
-    """Whether wells show the number of their condition, because its values do not fit in."""
-    longest = max(len(f.shown(v)) for f in definition.factors for v in f.plan_levels().tolist())
-    return definition.plate != 96 or len(definition.factors) > _MOST_LINES or longest > _LONGEST
+_RINGS = {"bridge": " Thick ring: bridging.", "reference": " Dotted ring: reference."}
 
 
 def draw_plate_map(
@@ -72,35 +45,26 @@ def draw_plate_map(
     axes = figure.add_axes((0.0, 0.0, 1.0, 1.0))
     axes.set_axis_off()
     axes.set(xlim=(0, A4[0]), ylim=(0, A4[1]), aspect="equal")
-    place = _Place(definition.plate)
+    place = Place(definition.plate)
     _frame(axes, place)
-    _empty_wells(axes, place, set(rows["well"]))
-    _wells(axes, place, definition, rows)
+    draw_wells(axes, place, definition, rows)
     _feeds(axes, place, definition, rows)
     _words(axes, definition, rows, titles)
     return figure
 
 
-class _Place:
-    """Where wells lie on the page, in inches from its lower left corner."""
-
-    def __init__(self, plate: int) -> None:
-        self.plate = plate
-        self.rows, self.columns = geometry(plate).rows, geometry(plate).columns
-        self.pitch = _PITCH * 8 / self.rows
-        self.scale = self.pitch / _PITCH
-
-    def of(self, row: int, column: int) -> tuple[float, float]:
-        """The centre of a well."""
-        left = (A4[0] - self.pitch * (self.columns - 1)) / 2
-        return left + self.pitch * column, _TOP - self.pitch * (row + 0.58)
-
-    def at(self, well: str) -> tuple[float, float]:
-        """The centre of a well by name."""
-        return self.of(*well_index(well, self.plate))
+def roles_text(rows: pd.DataFrame, short: bool = False) -> str:
+    """Return how many wells have which role; `short` adds the letters that controls have on 384."""
+    count = rows["role"].value_counts()
+    parts = [
+        f"{count[role]} {name}{f' ({SHORT[role]})' if short and role in SHORT else ''}"
+        for role, name in _ROLES.items()
+        if role in count
+    ]
+    return f"{len(rows)} wells: {', '.join(parts)}."
 
 
-def _frame(axes: Axes, place: _Place) -> None:
+def _frame(axes: Axes, place: Place) -> None:
     """The outline with the corner of A1 cut off, the letters and the numbers."""
     from matplotlib.patches import Polygon
 
@@ -117,102 +81,21 @@ def _frame(axes: Axes, place: _Place) -> None:
         axes.text(x0 - 0.1, place.of(row, 0)[1], well_name(row, 0)[0], ha="right", **style)
 
 
-def _empty_wells(axes: Axes, place: _Place, taken: set[str]) -> None:
-    from matplotlib.patches import Circle
-
-    for row in range(place.rows):
-        for column in range(place.columns):
-            if well_name(row, column) not in taken:
-                ring = Circle(place.of(row, column), 0.12 * place.pitch, fill=False)
-                ring.set(edgecolor=BARRED, linewidth=1.0)
-                axes.add_patch(ring)
-
-
-def _wells(axes: Axes, place: _Place, definition: Definition, rows: pd.DataFrame) -> None:
-    from matplotlib.patches import Circle
-
-    tints, stock = _level_tints(definition, rows), definition.stock_factors[0]
-    numbers = _numbers(definition, rows) if by_number(definition) else {}
-    for row in rows.to_dict("records"):
-        informing, ringed = row["role"] in INFORMING, row["role"] in ("bridge", "reference")
-        disc = Circle(place.at(row["well"]), (_RADIUS - 0.02 * ringed) * place.pitch)
-        disc.set(
-            facecolor=tints[row[stock]] if informing else BARRED,
-            edgecolor=ACCENT if ringed else INK if informing else QUIET,
-            linewidth=(3.4 if ringed else 1.0) * max(0.6, place.scale),
-            linestyle=(0, (1, 1)) if row["role"] == "reference" else "solid",
-        )
-        axes.add_patch(disc)
-        _label(axes, place, row["well"], _lines(place, definition, row, numbers), informing)
-
-
-def _lines(
-    place: _Place, definition: Definition, row: Mapping[Any, Any], numbers: Mapping[Any, int]
-) -> list[str]:
-    """What stands in a well: the stock's factor first."""
-    if row["role"] not in INFORMING:
-        role = str(row["role"])
-        return _CONTROL[role].split("\n") if place.plate == 96 else [_SHORT[role]]
-    if numbers:
-        return [str(numbers[tuple(row[name] for name in definition.factor_names)])]
-    return [f.shown(row[f.name]) for f in _ordered(definition)]
-
-
-def _ordered(definition: Definition) -> list[Factor]:
-    """The factors as a well shows them: that of the stocks first."""
-    first = definition.stock_factors[0]
-    return sorted(definition.factors, key=lambda f: f.name != first)
-
-
-def _label(axes: Axes, place: _Place, well: str, lines: Sequence[str], informing: bool) -> None:
-    sizes = _SIZES[len(lines)] if informing else (12.5,) * len(lines)
-    # On 384 wells type shrinks less than the wells do: a number of three digits still fits in.
-    scale = place.scale if place.plate == 96 else 0.62
-    shown = [
-        size * scale * min(1.0, 4.6 / len(text)) for text, size in zip(lines, sizes, strict=True)
-    ]
-    heights = [size * scale * 1.12 / 72 for size in sizes]
-    x, y = place.at(well)
-    y += sum(heights) / 2
-    for index, (text, size, height) in enumerate(zip(lines, shown, heights, strict=True)):
-        weight = "bold" if informing and index == 0 else "normal"
-        style: dict[str, Any] = {"ha": "center", "va": "center_baseline", "color": INK}
-        axes.text(x, y - height / 2, text, fontsize=size, fontweight=weight, **style)
-        y -= height
-
-
-def _level_tints(definition: Definition, rows: pd.DataFrame) -> dict[Any, str]:
-    """The tint of each level of the stocks' factor; beyond six they begin again."""
-    name = definition.stock_factors[0]
-    factor = next(f for f in definition.factors if f.name == name)
-    used = set(rows[rows["role"].isin(INFORMING)][name])
-    levels = [level for level in factor.levels().tolist() if level in used]
-    if len(levels) > len(_TINTS):
-        return {level: _TINTS[k % len(_TINTS)] for k, level in enumerate(levels)}
-    step = (len(_TINTS) - 1) / max(1, len(levels) - 1)
-    return {level: _TINTS[round(k * step)] for k, level in enumerate(levels)}
-
-
-def _numbers(definition: Definition, rows: pd.DataFrame) -> dict[Any, int]:
-    table = conditions_of(definition, rows)
-    keys = table[list(definition.factor_names)].itertuples(index=False, name=None)
-    return dict(zip(keys, table["condition"], strict=True))
-
-
-def _feeds(axes: Axes, place: _Place, definition: Definition, rows: pd.DataFrame) -> None:
+def _feeds(axes: Axes, place: Place, definition: Definition, rows: pd.DataFrame) -> None:
     """Beside each plate line that a stock feeds, the level of that stock."""
     by = definition.plan.prepared_by
     factors = [f for f in definition.factors if f.name in definition.stock_factors]
-    size = 13 * max(0.7, place.scale)
-    style: dict[str, Any] = {"va": "center", "fontsize": size, "fontweight": "bold", "color": INK}
+    room = 1.2 * 72 if by == "row" else 0.95 * place.pitch * 72
     for line, levels in fed_lines(definition, rows).items():
         text = ", ".join(f.shown(levels[f.name]) for f in factors)
+        style: dict[str, Any] = {"va": "center", "fontweight": "bold", "color": INK}
+        style |= {"fontsize": min(13.0, room / (0.7 * len(text)))}
         if by == "row":
             x, y = place.of(line, place.columns - 1)
-            axes.text(x + 0.68 * place.pitch, y, f"\u25c2 {text}", ha="left", **style)
+            axes.text(x + 0.58 * place.pitch + 0.1, y, text, ha="left", **style)
         else:
             x, y = place.of(place.rows - 1, line)
-            axes.text(x, y - 0.58 * place.pitch - 0.13, f"\u25b4 {text}", ha="center", **style)
+            axes.text(x, y - 0.58 * place.pitch - 0.12, text, ha="center", **style)
 
 
 def _words(
@@ -223,12 +106,11 @@ def _words(
     axes.text(0.5, 7.84, titles[0], fontsize=21, fontweight="bold", **style)
     axes.text(0.5, 7.51, textwrap.shorten(titles[1], 100, placeholder=" ..."), fontsize=12, **style)
     axes.text(0.5, 7.27, titles[2], fontsize=10, **style)
-    axes.text(0.5, 0.53, _legend(definition), fontsize=11, **style)
-    rings = {"bridge": " Thick ring: bridging.", "reference": " Dotted ring: reference."}
     there = {*rows["role"]}
-    roles = roles_text(rows, definition.plate != 96)
-    roles += "".join(said for role, said in rings.items() if role in there) + " Cut corner: A1."
-    axes.text(0.5, 0.29, roles, fontsize=11, **style)
+    rings = "".join(said for role, said in _RINGS.items() if role in there)
+    roles = f"{roles_text(rows, definition.plate != 96)} The cut corner is at A1."
+    for y, said in ((0.51, f"{_legend(definition)}{rings}"), (0.28, roles)):
+        axes.text(0.5, y, said, fontsize=min(11.0, 1380 / len(said)), **style)
     write = {**style, "ha": "right", "fontsize": 11}
     axes.text(A4[0] - 0.5, 7.84, "Run by ______________", **write)
     axes.text(A4[0] - 0.5, 7.42, "Date ______________", **write)
@@ -236,22 +118,13 @@ def _words(
 
 def _legend(definition: Definition) -> str:
     """What stands in the wells and beside the lines."""
-    ordered = [axis_label(f.label, f.unit) for f in _ordered(definition)]
+    ordered = [axis_label(f.label, f.unit) for f in ordered_factors(definition)]
     rest = f", below it {', '.join(ordered[1:])}" if ordered[1:] else ""
     said = f"In each well: {ordered[0]} in bold{rest}."
     if by_number(definition):
-        said = "In each well: the number of its condition, as listed on the pages after this."
+        said = "In each well: the number of its condition (next pages)."
     by = definition.plan.prepared_by
-    fed = [f.label for f in definition.factors if f.name in definition.stock_factors]
-    return said if by == "well" else f"{said} At the arrows: {', '.join(fed)} of each {by}."
-
-
-def roles_text(rows: pd.DataFrame, short: bool = False) -> str:
-    """Return how many wells have which role; `short` adds the letters that controls have on 384."""
-    count = rows["role"].value_counts()
-    parts = [
-        f"{count[role]} {name}{f' ({_SHORT[role]})' if short and role in _SHORT else ''}"
-        for role, name in _ROLES.items()
-        if role in count
-    ]
-    return f"{len(rows)} wells: {', '.join(parts)}."
+    if by == "well":
+        return said
+    fed = ", ".join(f.label for f in definition.factors if f.name in definition.stock_factors)
+    return f"{said} {'Beside each row' if by == 'row' else 'Below each column'}: {fed}."

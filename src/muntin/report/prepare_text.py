@@ -16,7 +16,8 @@ from muntin.record.faults import counted
 from muntin.report.cautions import bench_cautions
 from muntin.report.checklist import ph_levels
 from muntin.report.facts import records
-from muntin.report.plate_map import conditions_of, roles_text
+from muntin.report.plate_map import roles_text
+from muntin.report.plate_wells import conditions_of
 from muntin.report.sheet_words import protein_line, volume_ml
 
 _GAP = 2

@@ -14,7 +14,8 @@ from muntin.record.files import write_atomic
 from muntin.report.advice_files import new_folder
 from muntin.report.checklist import checklist_lines
 from muntin.report.figures import saved
-from muntin.report.plate_map import by_number, conditions_of, draw_plate_map
+from muntin.report.plate_map import draw_plate_map
+from muntin.report.plate_wells import by_number, conditions_of
 from muntin.report.sheet_tables import sheet_tables
 from muntin.report.text_pages import pdf_of, text_pages
 

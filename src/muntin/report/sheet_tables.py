@@ -10,7 +10,7 @@ from typing import Any
 from muntin.bench.sheets import Sheets, WellsMix
 from muntin.bench.volumes import volume_text
 from muntin.record.definition import Definition
-from muntin.report.plate_map import conditions_of
+from muntin.report.plate_wells import conditions_of
 
 _ML_PER_L = 1000.0
 
