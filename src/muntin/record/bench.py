@@ -4,7 +4,9 @@ from __future__ import annotations
 
 from collections.abc import Iterable, Iterator, Mapping, Sequence
 from decimal import Decimal
+from typing import Literal
 
+from muntin.record.buffers import Buffer, SaltKind, buffer_faults
 from muntin.record.factors import Factor
 from muntin.record.faults import Fault, did_you_mean, listed, number, quoted
 from muntin.record.keys import Keys, Number, NumberOrText, Text, key
@@ -51,6 +53,23 @@ class Bench(Keys):
         example={"buffer": 20.0},
     )
     stocks: tuple[BenchStock, ...] = key((), says="bottles that wells are mixed from")
+    buffers: tuple[Buffer, ...] = key((), says="buffers that set the pH of each liquid")
+    salt_factor: Text | None = key(None, says="factor that is the salt, in mM or M", example="salt")
+    salt_kind: SaltKind = key("NaCl", says='the salt: "NaCl", "KCl" or "Na2SO4"', example="NaCl")
+    salt_stock_mm: Number | None = key(
+        None, says="salt in its stock, for recipes of buffers", unit="mM", example=2000.0, gt=0
+    )
+    salt_stock: Text | None = key(
+        None, says="what stands on the stock of the salt", example="NaCl 2 M"
+    )
+    temperature_c: Number = key(
+        22.0, says="temperature at which the pH is meant", unit="°C", example=22.0, ge=0, le=50
+    )
+    exchanger: Literal["cation", "anion"] | None = key(
+        None,
+        says='what the charges of the resin bind: "cation" (negative ligands) or "anion"',
+        example="cation",
+    )
     protein_mg_per_ml: Number | None = key(
         None, says="protein in the load", unit="mg/mL", example=2.0, gt=0
     )
@@ -101,6 +120,7 @@ def bench_faults(bench: Bench, factors: Sequence[Factor]) -> Iterator[Fault]:
         yield from _factor_faults("ph_factor", bench.ph_factor, ranged)
     yield from _stock_faults(bench, by_name)
     yield from _every_mix_faults(bench, by_name)
+    yield from buffer_faults(bench, factors)
     if bench.control_condition is not None:
         where = "control_condition"
         yield from _held_faults(where, bench.control_condition, by_name)

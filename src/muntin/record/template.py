@@ -11,6 +11,7 @@ from pydantic import BaseModel
 from pydantic.fields import FieldInfo
 
 from muntin.record.bench import Bench, BenchStock
+from muntin.record.buffers import Buffer
 from muntin.record.definition import (
     MOST,
     STUDY_FILE,
@@ -98,6 +99,7 @@ def study_text(factors: int = 2) -> str:
         _table("[stop]", "stop", StopRule),
         _table("[bench]", "bench", Bench),
         _table("[[bench.stocks]]", "stocks", BenchStock),
+        _table("[[bench.buffers]]", "buffers", Buffer),
         _comment(_says("fixed")) + "#[fixed]\n#stages = 2\n",
     ]
     return "\n".join(parts)
