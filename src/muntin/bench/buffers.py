@@ -27,7 +27,7 @@ from muntin.record.buffers import WATER
 from muntin.record.definition import Definition
 from muntin.record.faults import listed, number
 
-REACH = 1.0
+_REACH = 1.0
 _NOTHING = 1e-9
 
 
@@ -63,7 +63,7 @@ def buffer_recipe(definition: Definition, condition: Condition) -> Recipe | Refu
     kept = {name: share for name, share in parts.items() if share > _NOTHING}
     whole = sum(kept.values())
     shares = {name: share / whole for name, share in kept.items()}
-    return Recipe(parts=shares, remarks=tuple(_remarks(definition, wanted, strength)))
+    return Recipe(parts=shares, remarks=tuple(_remarks(wanted, strength)))
 
 
 def buffer_made(definition: Definition, parts: Mapping[str, float]) -> Made:
@@ -127,31 +127,24 @@ def _too_full(parts: Mapping[str, float]) -> Refusal:
     return Refusal(reason=f"takes more than 1 L of stocks for 1 L: {takes}; stronger ones would do")
 
 
-def _remarks(definition: Definition, wanted: Wanted, strength: float) -> Iterator[str]:
-    ph = _shown_ph(definition, wanted.ph)
+def _remarks(wanted: Wanted, strength: float) -> Iterator[str]:
     if strength > HIGHEST_STRENGTH:
         yield (
-            f"titrate to pH {ph}: at an ionic strength of {strength:.2f} no pH is predicted, the "
-            "volumes are where to begin"
+            f"titrate to pH {wanted.shown}: at an ionic strength of {strength:.2f} no pH is "
+            "predicted, the volumes are where to begin"
         )
     else:
         at = f"{number(wanted.bench.temperature_c)} °C"
-        yield f"meant for pH {ph} at {at}; ionic strength {strength:.2f}"
-    far = pka_away(wanted, strength)
-    if abs(far) > REACH + 1e-6:
-        side = "above" if far > 0 else "below"
-        pka = f"{wanted.ph - far:.1f}"
+        yield f"meant for pH {wanted.shown} at {at}; ionic strength {strength:.2f}"
+    away = pka_away(wanted, strength)
+    if abs(away) > _REACH:
+        side = "above" if away > 0 else "below"
         yield (
-            f"pH {ph} lies {abs(far):.1f} {side} the nearest pKa of {wanted.names} "
-            f"({pka} at this ionic strength): it is hardly buffered"
+            f"pH {wanted.shown} lies {abs(away):.2f} {side} the nearest pKa of {wanted.names}, "
+            f"{wanted.ph - away:.2f} in this liquid: beyond 1 it hardly holds the pH"
         )
     if wanted.others:
-        yield f"{listed(wanted.others)} on top: not in the volumes, and not in the pH"
-
-
-def _shown_ph(definition: Definition, ph: float) -> str:
-    factor = next(f for f in definition.factors if f.name == definition.bench.ph_factor)
-    return factor.shown(ph)
+        yield f"{listed(wanted.others)} on top: neither in the volumes nor in the pH"
 
 
 def pka_away(wanted: Wanted, strength: float) -> float:

@@ -19,11 +19,12 @@ from muntin.record.faults import listed, number
 class Wanted:
     """What one liquid is to be.
 
-    ph: target. salt_mm: mM of the salt. buffers: those used at this pH, with what they are made of.
-    others: names of factors that it holds besides.
+    ph: target. shown: the target as the bench writes it. salt_mm: mM of the salt. buffers: those
+    used at this pH, with what they are made of. others: names of factors that it holds besides.
     """
 
     ph: float
+    shown: str
     salt_mm: float
     buffers: Mapping[Buffer, Couple]
     others: tuple[str, ...]
@@ -57,8 +58,10 @@ def wanted_of(definition: Definition, condition: Condition) -> Wanted | Refusal 
         spans = listed(f"{buffer.name} {_span(buffer)}" for buffer in bench.buffers)
         return Refusal(reason=f"lies where no buffer is used: {spans}")
     salt = float(condition.get(bench.salt_factor, 0.0)) if bench.salt_factor else 0.0
+    factor = next(factor for factor in definition.factors if factor.name == bench.ph_factor)
     return Wanted(
         ph=ph,
+        shown=factor.shown(ph),
         salt_mm=salt * salt_unit_mm(definition),
         buffers=used,
         others=tuple(n for n in condition if n not in (bench.ph_factor, bench.salt_factor)),
