@@ -63,5 +63,18 @@ def test_what_is_kept_constant_fixes_the_diluted_bottle() -> None:
     np.testing.assert_allclose(shares, [0.25, 0.25, 0.5])
 
 
+def test_fewer_bottles_come_before_larger_shares() -> None:
+    # (1, 1) from (10, 10) and water, a tenth of the former, or of three bottles in equal shares.
+    contents = np.array([[0.0, 10.0, 3.0, 0.0], [0.0, 10.0, 0.0, 3.0]])
+    found = blends(contents, np.array([1.0, 1.0]))
+    np.testing.assert_allclose(found[0], [0.9, 0.1, 0.0, 0.0])
+    np.testing.assert_allclose(found[1], [1 / 3, 0.0, 1 / 3, 1 / 3])
+
+
+def test_two_bottles_of_the_same_are_not_shared_out() -> None:
+    found = blends(np.array([[100.0, 100.0]]), np.array([100.0]))
+    np.testing.assert_allclose(found, [[1.0, 0.0], [0.0, 1.0]])
+
+
 def test_nothing_to_blend_takes_one_bottle() -> None:
     np.testing.assert_allclose(blends(np.zeros((0, 2)), np.zeros(0)), [[1, 0], [0, 1]])

@@ -179,6 +179,15 @@ def test_the_liquid_of_controls_is_judged_too(tmp_path: Path) -> None:
     ]
 
 
+@pytest.mark.parametrize(("by", "ph"), [("well", 6.0), ("row", 5.0), ("column", 4.5)])
+def test_controls_on_a_fed_line_get_its_liquid(tmp_path: Path, by: str, ph: float) -> None:
+    rows = [("A1", "test", 5.0, 100), ("B2", "test", 4.5, 100), ("A2", "blank", "", "")]
+    plan = f'[plan]\nprepared_by = "{by}"\n'
+    sheets = prepare(opened(tmp_path, rows=rows, plan=plan, control_condition=CONTROL))
+    stocks = {t.stock for t in sheets.transfers if t.well == "A2"}
+    assert stocks == {f"low salt (pH {ph})", f"high salt (pH {ph})"}
+
+
 def test_more_protein_than_there_is(tmp_path: Path) -> None:
     protein = "[protein]\navailable_mg = 14\nreserved_mg = 10\nper_well_mg = 0.25\n"
     # The plate that was run took 3 mg of the 4.
@@ -245,6 +254,10 @@ def test_what_is_not_known_is_said(
     tmp_path: Path, changed: dict[str, Any], said: list[str]
 ) -> None:
     told = gaps(prepare(opened(tmp_path, **changed)))
+    made = "No buffers are given (study.toml, [[bench.buffers]]): how the bottles are made is not "
+    bottles = "stocks" not in changed
+    assert [sentence for sentence in told if sentence.startswith(made)] == [told[0]] * bottles
+    told = told[bottles:]
     assert len(told) == len(said)
     for sentence, begin in zip(told, said, strict=True):
         assert sentence.startswith(begin)

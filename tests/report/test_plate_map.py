@@ -95,6 +95,7 @@ def test_wells_lie_as_on_the_plate(plate: int) -> None:
         ([PH, LOAD, RESIN], 96, "well", 85),
         ([PH, SALT], 384, "column", 200),
         ([RESIN, SALT], 384, "row", 300),
+        ([RESIN, SALT], 384, "column", 100),
         ([PH, SALT, LOAD, TIME], 96, "well", 80),
     ],
 )

@@ -22,7 +22,12 @@ def _of_liquids(sheets: Sheets) -> Iterator[str]:
         yield (
             "No stocks are given (study.toml, [[bench.stocks]]): no recipes, and no draws of them."
         )
-    elif bench.well_ul is None:
+    elif not bench.buffers and any(bench.ph_factor in b.holds for b in sheets.bottles):
+        yield (
+            "No buffers are given (study.toml, [[bench.buffers]]): how the bottles are made is not "
+            "in these sheets."
+        )
+    if bench.held and bench.well_ul is None:
         yield "No well_ul is given (study.toml, [bench]): recipes are shares, with no draws."
 
 

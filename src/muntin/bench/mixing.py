@@ -2,13 +2,15 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
 
 import numpy as np
 
 from muntin.bench.blending import blends
 from muntin.bench.bottles import Bottle, Value, bottles_for, held_part
+from muntin.bench.buffers import buffer_recipe
+from muntin.bench.making import forms_made, making_of
 from muntin.bench.recipe import Condition, Recipe, Refusal
 from muntin.bench.volumes import Pipette, apportioned, pipette_of, volume_text
 from muntin.record.definition import Definition
@@ -43,6 +45,7 @@ class Mixer:
         volume = definition.bench.well_ul
         self.total = None if volume is None else self.pipette.nearest(volume)
         self._by_name = {factor.name: factor for factor in definition.factors}
+        self._makings: dict[str, Recipe | Refusal | None] = {}
         self._known: dict[tuple[tuple[str, Value], ...], Mix | Refusal] = {}
 
     def mix(self, condition: Condition) -> Mix | Refusal:
@@ -59,7 +62,17 @@ class Mixer:
         """Whether a condition can be mixed."""
         return isinstance(self.mix(condition), Mix)
 
+    def making(self, bottle: Bottle) -> Recipe | Refusal | None:
+        """Return the recipe of what is in a bottle, where [[bench.buffers]] tells it."""
+        if bottle.name not in self._makings:
+            self._makings[bottle.name] = making_of(self.definition, bottle)
+        return self._makings[bottle.name]
+
     def _mixed(self, held: Mapping[str, Value]) -> Mix | Refusal:
+        return self._blended(held) if self.definition.bench.stocks else self._from_forms(held)
+
+    def _blended(self, held: Mapping[str, Value]) -> Mix | Refusal:
+        """The mix of bottles whose contents add up by volume."""
         bottles = bottles_for(self.definition, held)
         matched = self.definition.bench.matched(self.definition.factors)
         tied = [name for name in held if name in matched]
@@ -76,37 +89,65 @@ class Mixer:
         ]
         if not options:
             return self._out_of_reach(bottles, asked, contents)
-        tried = [self._measured_out(held, asked, bottles, contents, s) for s in options]
+
+        def made(parts: Sequence[float]) -> dict[str, float]:
+            mixed = contents @ np.array(parts, dtype=float) / sum(parts)
+            return dict(zip(asked, mixed.tolist(), strict=True))
+
+        tried = [self._measured_out(held, asked, bottles, s.tolist(), made) for s in options]
         return next((mix for mix in tried if isinstance(mix, Mix)), tried[0])
+
+    def _from_forms(self, held: Mapping[str, Value]) -> Mix | Refusal:
+        """The mix of the acid and base forms of the buffers, their salt and water."""
+        recipe = buffer_recipe(self.definition, held)
+        if not isinstance(recipe, Recipe):
+            return recipe or Refusal(reason="has no recipe")
+        bottles = [Bottle(name, name, {}) for name in recipe.parts]
+        names = [bottle.name for bottle in bottles]
+        asked = {name: float(value) for name, value in held.items()}
+
+        def made(parts: Sequence[float]) -> dict[str, float]:
+            return forms_made(self.definition, dict(zip(names, parts, strict=True)))
+
+        shares = [*recipe.parts.values()]
+        return self._measured_out(held, asked, bottles, shares, made, recipe.remarks)
 
     def _measured_out(
         self,
         held: Mapping[str, Value],
         asked: Mapping[str, float],
-        bottles: list[Bottle],
-        contents: Floats,
-        shares: Floats,
+        bottles: Sequence[Bottle],
+        shares: Sequence[float],
+        made_of: Callable[[Sequence[float]], dict[str, float]],
+        remarks: tuple[str, ...] = (),
     ) -> Mix | Refusal:
-        """The mix in whole steps, where the pipette can draw it and it makes what is asked."""
-        used = [(b, float(s)) for b, s in zip(bottles, shares, strict=True) if s > 0]
-        recipe = Recipe(parts={b.name: s for b, s in used})
-        chosen = tuple(b for b, _ in used)
+        """The mix in whole steps, where its bottles can be made, the pipette can draw it and it
+        makes what is asked.
+        """
+        used = {b: s for b, s in zip(bottles, shares, strict=True) if s > 0}
+        for bottle in used:
+            if isinstance(making := self.making(bottle), Refusal):
+                return Refusal(reason=f"needs {bottle.name}, which {making.reason}")
+        recipe = Recipe(parts={b.name: s for b, s in used.items()}, remarks=remarks)
         if self.total is None:
-            return Mix(held, chosen, recipe, None, dict(asked))
-        parts = apportioned([*map(float, shares)], self.total)
+            return Mix(held, tuple(used), recipe, None, made_of(shares))
+        parts = apportioned(shares, self.total)
         for bottle, share, steps in zip(bottles, shares, parts, strict=True):
             if share > 0 and steps < self.pipette.floor:
-                return Refusal(reason=self._too_little(bottle, float(share)))
-        made = dict(zip(asked, (contents @ np.array(parts) / self.total).tolist(), strict=True))
+                return Refusal(reason=self._too_little(bottle, share))
+        made = made_of(parts)
         for name, value in made.items():
-            factor = self._by_name.get(name)
-            if factor and abs(value - asked[name]) > _HALF * factor.span[2]:
+            if name in self._by_name and self._off(name, value, asked[name]):
                 return Refusal(
-                    reason=f"comes out as {name} {number(round(value, 6))}, more than half a step "
-                    f"off, in pipette steps of {volume_text(self.pipette.step)} µL"
+                    reason=f"comes out as {name} {number(float(f'{value:.4g}'))}, more than half a "
+                    f"step off, in pipette steps of {volume_text(self.pipette.step)} µL"
                 )
         drawn = {b.name: n for b, n in zip(bottles, parts, strict=True) if n}
-        return Mix(held, chosen, recipe, drawn, made)
+        return Mix(held, tuple(used), recipe, drawn, made)
+
+    def _off(self, name: str, made: float, asked: float) -> bool:
+        """Whether what is made is more than half a bench step off."""
+        return abs(made - asked) > _HALF * self._by_name[name].span[2]
 
     def _too_little(self, bottle: Bottle, share: float) -> str:
         takes = number(round(share * float(self.pipette.ul(self.total or 0)), 2))

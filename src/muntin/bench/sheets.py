@@ -11,12 +11,13 @@ from typing import Any
 import pandas as pd
 
 from muntin.bench.bottles import Bottle, Value
+from muntin.bench.buffer.stocks import stock_names
 from muntin.bench.fed import fed_lines, line_of
 from muntin.bench.load import Load, load_of
 from muntin.bench.mixing import Mix, Mixer
 from muntin.bench.nearby import nearest_that
 from muntin.bench.plan import next_plate
-from muntin.bench.recipe import Refusal
+from muntin.bench.recipe import Recipe, Refusal
 from muntin.bench.transfers import Total, Transfer, totals_of, transfers_of
 from muntin.bench.volumes import Pipette
 from muntin.bench.wells import well_index
@@ -46,8 +47,9 @@ class Sheets:
 
     plate and file: the plan. digest: SHA-256 of its file. rows: well, role and the factors (targets
     in raw units, empty for controls), in plate order. mixes: the distinct liquids. bottles: those
-    they are mixed from, in the order of work. transfers: every draw, the load first. totals: one a
-    stock, in that order. load: None where the study has no [protein].
+    they are mixed from, in the order of work. makings: what is in a bottle, by its name, as far as
+    the study tells. transfers: every draw, the load first. totals: one a stock, in that order.
+    load: None where the study has no [protein].
     """
 
     study: Study
@@ -58,6 +60,7 @@ class Sheets:
     pipette: Pipette
     mixes: tuple[WellsMix, ...]
     bottles: tuple[Bottle, ...]
+    makings: Mapping[str, Recipe]
     transfers: tuple[Transfer, ...]
     totals: tuple[Total, ...]
     load: Load | None
@@ -89,6 +92,7 @@ def prepare(study: Study, plan: str | Path | None = None) -> Sheets:
         pipette=mixer.pipette,
         mixes=mixes,
         bottles=bottles,
+        makings={b.name: r for b in bottles if isinstance(r := mixer.making(b), Recipe)},
         transfers=transfers,
         totals=totals_of(transfers, mixer.pipette, study.definition.bench.dead_volume_ul),
         load=load,
@@ -192,13 +196,14 @@ def _shown(definition: Definition, condition: Mapping[str, Value]) -> str:
 def _in_order(definition: Definition, mixes: Iterable[WellsMix]) -> tuple[Bottle, ...]:
     """The bottles that are used, in the order of work: all of one level, then those of the next."""
     names = [stock.name for stock in definition.bench.stocks]
+    names += stock_names(definition.bench)
     per = {stock.name: stock.per for stock in definition.bench.stocks}
     used = {bottle.name: bottle for of in mixes for bottle in of.mix.bottles}
     by_name = {factor.name: factor for factor in definition.factors}
 
     def place(bottle: Bottle) -> tuple[float, int]:
         number = names.index(bottle.stock)
-        level = bottle.holds.get(per[bottle.stock] or "", 0.0)
+        level = bottle.holds.get(per.get(bottle.stock) or "", 0.0)
         if isinstance(level, str):
             level = (by_name[str(per[bottle.stock])].choices or ()).index(level)
         return (level if bottle.by_level else float("-inf")), number

@@ -90,7 +90,10 @@ class Bench(Keys):
 
     @property
     def held(self) -> frozenset[str]:
-        """Factors that the stocks set; all others are set otherwise."""
+        """Factors that the stocks set, or without any the buffers; others are set otherwise."""
+        if not self.stocks and self.buffers:
+            own = (self.ph_factor, self.salt_factor)
+            return frozenset(name for name in own if name is not None)
         named = {
             name for stock in self.stocks for name in stock.holds if name not in self.every_mix
         }

@@ -20,6 +20,7 @@ _FILES = {
     "map.pdf, map.png": "the plate; wells lie as seen from above, A1 at the cut corner",
     "conditions.csv": "condition, factors, count, wells: the distinct conditions",
     "recipes.csv": "stocks of each liquid: mL per litre, and µL per well in pipette steps",
+    "bottles.csv": "bottle, stock, ml_per_l, ul: what bottles are made from, and for how much",
     "transfers.csv": "stock, well, draw_ul: every draw in the order of work",
     "totals.csv": "stock, wells, drawn_ul (sum of its draws), dead_ul, needed_ul",
 }
@@ -34,6 +35,7 @@ def checklist_lines(sheets: Sheets, files: Iterable[str]) -> list[str]:
         ("Cautions", [_item("- ", said) for said in bench_cautions(ph_levels(sheets))]),
         ("Before the plate", [_item(_BOX, said) for said in _before(sheets)]),
         ("Bottles", _bottles(sheets)),
+        ("Recipes", [_item("- ", said) for said in _recipes(sheets)]),
         ("The plate", [_item(_BOX, said) for said in _plate(sheets)]),
         ("Not in these sheets", [_item("- ", said) for said in gaps(sheets)]),
         ("Files", [_item("- ", said) for said in _files(files)]),
@@ -111,6 +113,18 @@ def _holds(sheets: Sheets, total: Total) -> str:
         return f"protein {number(strength or 0.0)} mg/mL"
     bottle = next(b for b in sheets.bottles if b.name == total.stock)
     return held_text(sheets.study.definition, bottle)
+
+
+def _recipes(sheets: Sheets) -> Iterator[str]:
+    """What bottles are made from, and what is remarked on them and on the liquids of wells."""
+    mixed = {remark: None for of in sheets.mixes for remark in of.mix.recipe.remarks}
+    if sheets.makings or mixed:
+        yield "Recipes are starting points: measure the pH, and titrate where it is off."
+    for name, recipe in sheets.makings.items():
+        parts = "; ".join(f"{stock} {1000 * share:.1f}" for stock, share in recipe.parts.items())
+        yield f"{name}, mL per litre: {parts}."
+    remarks = {remark: None for recipe in sheets.makings.values() for remark in recipe.remarks}
+    yield from {**remarks, **mixed}
 
 
 def _plate(sheets: Sheets) -> Iterator[str]:

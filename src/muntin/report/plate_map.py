@@ -10,7 +10,15 @@ import pandas as pd
 from muntin.bench.fed import fed_lines
 from muntin.bench.wells import well_name
 from muntin.record.definition import Definition
-from muntin.report.plate_wells import A4, SHORT, Place, by_number, draw_wells, ordered_factors
+from muntin.report.plate_wells import (
+    A4,
+    SHORT,
+    Place,
+    by_number,
+    draw_wells,
+    ordered_factors,
+    text_width,
+)
 from muntin.report.style import INK, PAPER
 from muntin.report.words import axis_label
 
@@ -89,7 +97,7 @@ def _feeds(axes: Axes, place: Place, definition: Definition, rows: pd.DataFrame)
     for line, levels in fed_lines(definition, rows).items():
         text = ", ".join(f.shown(levels[f.name]) for f in factors)
         style: dict[str, Any] = {"va": "center", "fontweight": "bold", "color": INK}
-        style |= {"fontsize": min(13.0, room / (0.7 * len(text)))}
+        style |= {"fontsize": min(13.0, room / text_width(text, "bold"))}
         if by == "row":
             x, y = place.of(line, place.columns - 1)
             axes.text(x + 0.58 * place.pitch + 0.1, y, text, ha="left", **style)

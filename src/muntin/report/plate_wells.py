@@ -142,7 +142,7 @@ def _label(axes: Axes, place: Place, well: str, lines: Sequence[str], informing:
         for middle, size in zip(middles, sizes, strict=True)
     ]
     fitting = [
-        min(size, room / _width(text, weight))
+        min(size, room / text_width(text, weight))
         for text, size, weight, room in zip(lines, sizes, weights, rooms, strict=True)
     ]
     if not informing:
@@ -154,8 +154,8 @@ def _label(axes: Axes, place: Place, well: str, lines: Sequence[str], informing:
 
 
 @lru_cache(maxsize=1024)
-def _width(text: str, weight: str) -> float:
-    """The width of a text, in sizes of its type."""
+def text_width(text: str, weight: str) -> float:
+    """Return the width of a text in "bold" or "normal", in sizes of its type."""
     from matplotlib.font_manager import FontProperties
     from matplotlib.textpath import TextPath
 

@@ -89,6 +89,14 @@ def sheets_facts(sheets: Sheets, folder: Path, files: list[str], remark: str) ->
             }
             for of in sheets.mixes
         ],
+        "bottles": [
+            {
+                "bottle": name,
+                "shares": dict(recipe.parts),
+                "remarks": list(recipe.remarks),
+            }
+            for name, recipe in sheets.makings.items()
+        ],
         "transfers": [
             {"stock": t.stock, "well": t.well, "draw_ul": float(sheets.pipette.ul(t.steps))}
             for t in sheets.transfers

@@ -4,11 +4,12 @@ from __future__ import annotations
 
 import csv
 import io
+import math
 from collections.abc import Iterable, Iterator, Mapping
 from typing import Any
 
 from muntin.bench.sheets import Sheets, WellsMix
-from muntin.bench.volumes import volume_text
+from muntin.bench.volumes import apportioned, volume_text
 from muntin.record.definition import Definition
 from muntin.report.plate_wells import conditions_of
 
@@ -20,6 +21,8 @@ def sheet_tables(sheets: Sheets) -> dict[str, str]:
 
     conditions.csv: number, factors, count of wells, wells. recipes.csv: a row a stock of a liquid:
     the factors it sets, stock, ml_per_l, ul_per_well (whole pipette steps), count of wells, wells.
+    bottles.csv: what bottles are made from, a row a stock: bottle, stock, ml_per_l, ul (for what
+    has to be there, in whole µL).
     transfers.csv: a row a draw, in the order of work: stock, well, draw_ul. totals.csv: a row a
     stock: stock, wells, drawn_ul (the sum of its draws), dead_ul, needed_ul.
     """
@@ -30,6 +33,9 @@ def sheet_tables(sheets: Sheets) -> dict[str, str]:
         held = [name for name in names if name in definition.bench.held]
         heading = [*held, "stock", "ml_per_l", "ul_per_well", "count", "wells"]
         tables["recipes.csv"] = _table(heading, _recipe_rows(sheets))
+    if sheets.makings:
+        heading = ["bottle", "stock", "ml_per_l", "ul"]
+        tables["bottles.csv"] = _table(heading, _making_rows(sheets))
     if sheets.transfers:
         draws = (
             {"stock": t.stock, "well": t.well, "draw_ul": sheets.pipette.shown(t.steps)}
@@ -72,6 +78,17 @@ def _recipe_rows(sheets: Sheets) -> Iterator[dict[str, Any]]:
                 "count": len(of.wells),
                 "wells": " ".join(of.wells),
             }
+
+
+def _making_rows(sheets: Sheets) -> Iterator[dict[str, Any]]:
+    needed = {total.stock: math.ceil(total.needed_ul) for total in sheets.totals}
+    for bottle, recipe in sheets.makings.items():
+        shares = [*recipe.parts.values()]
+        whole = needed.get(bottle)
+        parts = [""] * len(shares) if whole is None else map(str, apportioned(shares, whole))
+        for (stock, share), part in zip(recipe.parts.items(), parts, strict=True):
+            ml = f"{_ML_PER_L * share:.2f}"
+            yield {"bottle": bottle, "stock": stock, "ml_per_l": ml, "ul": part}
 
 
 def _per_well(sheets: Sheets, of: WellsMix, stock: str) -> str:
