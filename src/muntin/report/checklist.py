@@ -9,10 +9,10 @@ from muntin.bench.gaps import gaps
 from muntin.bench.sheets import Sheets
 from muntin.bench.transfers import Total
 from muntin.record.bench import LOAD
-from muntin.record.faults import counted, number
+from muntin.record.faults import counted, listed, number
 from muntin.report.cautions import bench_cautions
 from muntin.report.plate_map import roles_text
-from muntin.report.sheet_words import held_text, protein_line, volume_ml
+from muntin.report.sheet_words import condition_part, held_text, protein_line, volume_ml
 
 _WIDTH = 84
 _BOX = "[ ] "
@@ -117,14 +117,19 @@ def _holds(sheets: Sheets, total: Total) -> str:
 
 def _recipes(sheets: Sheets) -> Iterator[str]:
     """What bottles are made from, and what is remarked on them and on the liquids of wells."""
-    mixed = {remark: None for of in sheets.mixes for remark in of.mix.recipe.remarks}
-    if sheets.makings or mixed:
-        yield "Recipes are starting points: measure the pH, and titrate where it is off."
+    remarked = [of for of in sheets.mixes if of.mix.recipe.remarks]
+    if sheets.makings or remarked:
+        yield (
+            "Recipes are starting points: measure the pH, and titrate where it is off. Make as "
+            "much as that takes, and no less than stands above."
+        )
     for name, recipe in sheets.makings.items():
         parts = "; ".join(f"{stock} {1000 * share:.1f}" for stock, share in recipe.parts.items())
-        yield f"{name}, mL per litre: {parts}."
-    remarks = {remark: None for recipe in sheets.makings.values() for remark in recipe.remarks}
-    yield from {**remarks, **mixed}
+        yield "; ".join([f"{name}, mL per litre: {parts}", *recipe.remarks]) + "."
+    for of in remarked:
+        liquid = condition_part(sheets.study.definition, of.mix.condition)
+        said = "; ".join(of.mix.recipe.remarks)
+        yield f"{liquid} ({listed(of.wells)}): {said}."
 
 
 def _plate(sheets: Sheets) -> Iterator[str]:

@@ -2,7 +2,9 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from decimal import Decimal
+from typing import Any
 
 from muntin.bench.bottles import Bottle
 from muntin.bench.load import Load
@@ -14,6 +16,12 @@ from muntin.record.faults import number
 def volume_ml(volume_ul: Decimal) -> str:
     """Return a volume in mL with every digit that it has: "2.31 mL"."""
     return f"{volume_text(volume_ul / 1000)} mL"
+
+
+def condition_part(definition: Definition, condition: Mapping[str, Any]) -> str:
+    """Return the factors of a condition that are there: "Elution pH 5.4, Elution salt 280 mM"."""
+    named = [f for f in definition.factors if f.name in condition]
+    return ", ".join(f"{f.named(f.shown(condition[f.name]))} {f.unit}".rstrip() for f in named)
 
 
 def held_text(definition: Definition, bottle: Bottle) -> str:
