@@ -128,6 +128,10 @@ def test_the_checklist_shows_recipes_remarks_and_says_measure(tmp_path: Path) ->
     sheets = prepare(opened(tmp_path, rows=ROWS, **FORMS))
     flat = " ".join(" ".join(checklist_lines(sheets, [])).split())
     assert "Recipes are starting points: measure the pH" in flat
+    assert sheets.buffers[0].startswith("The buffer changes along the pH (acetate at pH 5.0; phos")
+    for sentence in sheets.buffers:
+        assert sentence.endswith(".")
+        assert sentence in flat
     for name, recipe in sheets.makings.items():
         assert f"- {name}, mL per litre: " in flat
         for remark in recipe.remarks:
@@ -135,6 +139,7 @@ def test_the_checklist_shows_recipes_remarks_and_says_measure(tmp_path: Path) ->
     direct = prepare(opened(tmp_path / "direct", rows=ROWS, **DIRECT))
     flat = " ".join(" ".join(checklist_lines(direct, [])).split())
     assert "- pH 5.0, Salt 100 mM (A1, C3): " in flat
+    assert direct.buffers[0] == sheets.buffers[0]
 
 
 def test_without_a_volume_bottles_have_shares(tmp_path: Path) -> None:

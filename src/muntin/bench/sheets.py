@@ -12,6 +12,7 @@ import pandas as pd
 
 from muntin.bench.bottles import Bottle, Value
 from muntin.bench.buffer.stocks import stock_names
+from muntin.bench.buffer_cautions import buffer_cautions
 from muntin.bench.fed import fed_lines, line_of
 from muntin.bench.load import Load, load_of
 from muntin.bench.mixing import Mix, Mixer
@@ -64,6 +65,15 @@ class Sheets:
     transfers: tuple[Transfer, ...]
     totals: tuple[Total, ...]
     load: Load | None
+
+    @property
+    def buffers(self) -> tuple[str, ...]:
+        """What is to be known of the buffers of the whole plan, in sentences."""
+        liquids = [bottle.holds for bottle in self.bottles if bottle.name in self.makings]
+        if not self.study.definition.bench.stocks:
+            liquids = [of.mix.condition for of in self.mixes]
+        said = buffer_cautions(self.study.definition, liquids)
+        return tuple(f"{sentence[:1].upper()}{sentence[1:]}." for sentence in said)
 
 
 def prepare(study: Study, plan: str | Path | None = None) -> Sheets:

@@ -123,6 +123,7 @@ def _recipes(sheets: Sheets) -> Iterator[str]:
             "Recipes are starting points: measure the pH, and titrate where it is off. Make as "
             "much as that takes, and no less than stands above."
         )
+    yield from sheets.buffers
     for name, recipe in sheets.makings.items():
         parts = "; ".join(f"{stock} {1000 * share:.1f}" for stock, share in recipe.parts.items())
         yield "; ".join([f"{name}, mL per litre: {parts}", *recipe.remarks]) + "."

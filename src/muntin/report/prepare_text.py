@@ -60,7 +60,7 @@ def _sentences(sheets: Sheets) -> list[str]:
         said.append(f"{counted(len(sheets.transfers), 'draw')}, the smallest {drawn} µL.")
     if sheets.load is not None:
         said.append(protein_line(sheets.load, sheets.study.definition))
-    return [*said, *gaps(sheets)]
+    return [*said, *sheets.buffers, *gaps(sheets)]
 
 
 def _cautions() -> list[RenderableType]:
@@ -119,6 +119,7 @@ def sheets_facts(sheets: Sheets, folder: Path, files: list[str], remark: str) ->
             "measured_mg": load.measured_mg,
             "dead_mg": load.dead_mg,
         },
+        "buffers": list(sheets.buffers),
         "not_in_the_sheets": list(gaps(sheets)),
         "cautions": list(bench_cautions(ph_levels(sheets))),
         "files": {"folder": str(folder), "names": files, "remark": remark},
