@@ -8,6 +8,7 @@ from pathlib import Path
 from typing import Any
 
 import numpy as np
+import pandas as pd
 import pytest
 from hypothesis import HealthCheck, given, settings
 from hypothesis import strategies as st
@@ -18,6 +19,7 @@ from muntin.bench.sheets import Sheets, prepare
 from muntin.bench.transfers import Transfer
 from muntin.record import StudyFaults
 from tests.bench.bottled import BENCH, HIGH, LOW, ROWS, bottled, opened, write_plan
+from tests.studies import LOAD, PH, read, spread, written
 
 QUICK = settings(
     deadline=None,
@@ -274,6 +276,28 @@ def test_without_protein_and_bench_the_wells_are_there(tmp_path: Path) -> None:
         "No stocks",
         "No [protein]",
     ]
+
+
+def test_the_load_follows_the_factor_that_holds_it(tmp_path: Path) -> None:
+    factors = [PH, LOAD]
+    plate = read(spread(factors, 8, 1))
+    rows = pd.DataFrame({"ph": [5.0, 5.5, None], "load": [10, 40, None]})
+    rows = rows.assign(well=["A1", "A2", "A3"], role=["test", "test", "load"])
+    protein = {"available_mg": 40, "load_factor": "load", "resin_ul": 20}
+    bench = {"protein_mg_per_ml": 2.0, "pipette_step_ul": 0.5}
+    study = written(tmp_path, [plate], factors=factors, protein=protein, bench=bench)
+    (tmp_path / "plans").mkdir()
+    rows.to_csv(tmp_path / "plans" / "plate-02.csv", index=False)
+    sheets = prepare(study)
+    # mg/mL times 20 µL of resin, at 2 mg/mL; a load well takes the most that a well can.
+    assert [(t.well, sheets.pipette.ul(t.steps)) for t in sheets.transfers] == [
+        ("A1", 100),
+        ("A2", 400),
+        ("A3", 400),
+    ]
+    assert sheets.load is not None
+    assert sheets.load.needed_mg == pytest.approx(1.8)
+    assert not any("by hand" in sentence for sentence in gaps(sheets))
 
 
 def test_plate_order_is_row_by_row(tmp_path: Path) -> None:

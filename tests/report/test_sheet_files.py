@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import csv
 import hashlib
+import re
 from collections import defaultdict
 from decimal import Decimal
 from pathlib import Path
@@ -112,7 +113,13 @@ def test_all_files_are_there_and_the_same_each_time(tmp_path: Path) -> None:
     assert sheet_files(sheets) == files
     assert sheets_folder(sheets) == tmp_path / "sheets" / "plate-02"
     assert bytes(files["map.png"]).startswith(b"\x89PNG")
-    assert bytes(files["map.pdf"]).startswith(b"%PDF")
+    boxes = re.findall(rb"/MediaBox \[ ([0-9. ]+) \]", bytes(files["map.pdf"]))
+    # A4 in points, the long side across, and one page: nothing is told by number.
+    assert [[round(float(side)) for side in box.split()] for box in boxes] == [[0, 0, 842, 595]]
+    lists = re.findall(rb"/MediaBox \[ ([0-9. ]+) \]", bytes(files["checklist.pdf"]))
+    assert {tuple(round(float(side)) for side in box.split()) for box in lists} == {
+        (0, 0, 595, 842)
+    }
 
 
 def test_the_fingerprint_is_that_of_the_plan(tmp_path: Path) -> None:

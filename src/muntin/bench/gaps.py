@@ -78,7 +78,10 @@ def _of_load(sheets: Sheets) -> Iterator[str]:
 
 def _by_hand(sheets: Sheets) -> Iterator[str]:
     definition, rows = sheets.study.definition, sheets.rows
-    others = [f.label for f in definition.factors if f.name not in definition.bench.held]
+    protein, load = definition.protein, sheets.load
+    loaded = protein.load_factor if protein is not None and load is not None and load.steps else ""
+    held = {*definition.bench.held, loaded}
+    others = [f.label for f in definition.factors if f.name not in held]
     if definition.bench.held and others:
         yield f"Not set by the stocks, see to it by hand: {listed(others)}."
     given = {well for mix in sheets.mixes for well in mix.wells}

@@ -10,7 +10,8 @@ from rich.table import Table
 from rich.text import Text
 
 from muntin.bench.gaps import gaps
-from muntin.bench.sheets import Sheets
+from muntin.bench.sheets import Sheets, WellsMix
+from muntin.bench.transfers import Total
 from muntin.bench.volumes import volume_text
 from muntin.record.faults import counted
 from muntin.report.cautions import bench_cautions
@@ -21,6 +22,7 @@ from muntin.report.plate_wells import conditions_of
 from muntin.report.sheet_words import protein_line, volume_ml
 
 _GAP = 2
+_PROTEIN = ("needed_mg", "left_mg", "measured_mg", "dead_mg")
 
 
 def sheets_screen(sheets: Sheets, folder: Path, files: list[str], remark: str) -> RenderableType:
@@ -69,58 +71,48 @@ def _cautions() -> list[RenderableType]:
 
 def sheets_facts(sheets: Sheets, folder: Path, files: list[str], remark: str) -> dict[str, Any]:
     """Return the sheets as plain values."""
-    load, definition = sheets.load, sheets.study.definition
+    load = sheets.load
     return {
         "command": "prepare",
         "plate": sheets.plate,
         "plan": {"file": sheets.file, "sha256": sheets.digest},
         "wells": records(sheets.rows),
-        "conditions": records(conditions_of(definition, sheets.rows)),
-        "recipes": [
-            {
-                "condition": dict(of.mix.condition),
-                "shares": dict(of.mix.recipe.parts),
-                "draw_ul": None
-                if of.mix.steps is None
-                else {s: float(sheets.pipette.ul(n)) for s, n in of.mix.steps.items()},
-                "made": dict(of.mix.made),
-                "remarks": list(of.mix.recipe.remarks),
-                "wells": list(of.wells),
-            }
-            for of in sheets.mixes
-        ],
+        "conditions": records(conditions_of(sheets.study.definition, sheets.rows)),
+        "recipes": [_mix_facts(sheets, of) for of in sheets.mixes],
         "bottles": [
-            {
-                "bottle": name,
-                "shares": dict(recipe.parts),
-                "remarks": list(recipe.remarks),
-            }
+            {"bottle": name, "shares": dict(recipe.parts), "remarks": list(recipe.remarks)}
             for name, recipe in sheets.makings.items()
         ],
         "transfers": [
             {"stock": t.stock, "well": t.well, "draw_ul": float(sheets.pipette.ul(t.steps))}
             for t in sheets.transfers
         ],
-        "totals": [
-            {
-                "stock": t.stock,
-                "wells": t.wells,
-                "drawn_ul": float(t.listed_ul),
-                "dead_ul": None if t.dead_ul is None else float(t.dead_ul),
-                "needed_ul": float(t.needed_ul),
-            }
-            for t in sheets.totals
-        ],
-        "protein": None
-        if load is None
-        else {
-            "needed_mg": load.needed_mg,
-            "left_mg": load.left_mg,
-            "measured_mg": load.measured_mg,
-            "dead_mg": load.dead_mg,
-        },
+        "totals": [_total_facts(total) for total in sheets.totals],
+        "protein": None if load is None else {name: getattr(load, name) for name in _PROTEIN},
         "buffers": list(sheets.buffers),
         "not_in_the_sheets": list(gaps(sheets)),
         "cautions": list(bench_cautions(ph_levels(sheets))),
         "files": {"folder": str(folder), "names": files, "remark": remark},
+    }
+
+
+def _mix_facts(sheets: Sheets, of: WellsMix) -> dict[str, Any]:
+    steps, ul = of.mix.steps, sheets.pipette.ul
+    return {
+        "condition": dict(of.mix.condition),
+        "shares": dict(of.mix.recipe.parts),
+        "draw_ul": None if steps is None else {s: float(ul(n)) for s, n in steps.items()},
+        "made": dict(of.mix.made),
+        "remarks": list(of.mix.recipe.remarks),
+        "wells": list(of.wells),
+    }
+
+
+def _total_facts(total: Total) -> dict[str, Any]:
+    return {
+        "stock": total.stock,
+        "wells": total.wells,
+        "drawn_ul": float(total.listed_ul),
+        "dead_ul": None if total.dead_ul is None else float(total.dead_ul),
+        "needed_ul": float(total.needed_ul),
     }
