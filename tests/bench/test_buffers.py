@@ -97,6 +97,18 @@ def test_the_names_on_the_bottles_are_the_users():
     assert {*at(own, 5.0, 50.0).parts} == {"HAc", "NaAc", "brine", "water"}
 
 
+def test_buffers_may_share_two_bottles():
+    names = {"acid_stock": "acid mix", "base_stock": "base mix"}
+    one = buffered(buffer("acetate", **names), buffer("MES", mm=10.0, stock_mm=100.0, **names))
+    apart = buffered(buffer("acetate"), buffer("MES", mm=10.0, stock_mm=100.0))
+    shared, each = at(one, 5.5, 100.0).parts, at(apart, 5.5, 100.0).parts
+    assert shared["acid mix"] == pytest.approx(each["acetic acid 200 mM"], abs=1e-12)
+    assert shared["base mix"] == pytest.approx(each["sodium MES 100 mM"], abs=1e-12)
+    assert shared["acid mix"] + shared["base mix"] == pytest.approx(0.1)
+    assert math.fsum(shared.values()) == pytest.approx(1.0)
+    assert buffer_made(one, shared).ph == pytest.approx(5.5, abs=1e-6)
+
+
 def test_a_buffer_of_the_users_own():
     # Imidazole (pK 6.993, -0.0215 per °C): at 37 °C its pK is some 0.25 lower.
     keys = {"pka": (6.993,), "charge": 1}

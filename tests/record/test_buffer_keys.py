@@ -79,6 +79,40 @@ def test_the_same_buffer_twice_at_one_ph(tmp_path):
     ]
 
 
+MIX = {"acid_stock": "acid mix", "base_stock": "base mix"}
+
+
+@pytest.mark.parametrize(
+    "buffers",
+    [
+        (buffer("MES", **MIX), buffer("acetate", mm=10, **{**MIX, "stock_mm": 100})),
+        (buffer("MES", below_ph=6, **MIX), buffer("MES", from_ph=6, **{**MIX, "mm": 50})),
+    ],
+)
+def test_buffers_may_share_their_bottles(tmp_path, buffers):
+    written(tmp_path, factors=(PH, SALT), bench=BENCH, **{"bench.buffers": buffers})
+
+
+@pytest.mark.parametrize(
+    ("second", "problem"),
+    [
+        (buffer("acetate", **{**MIX, "mm": 10}), "is one bottle: its buffers need one share, mm"),
+        (buffer("acetate", from_ph=5, **MIX), "is one bottle: its buffers need one share, mm"),
+        (
+            buffer("MES", from_ph=6, **{**MIX, "stock_mm": 100}),
+            "is one bottle: its buffers need one share, mm",
+        ),
+        (buffer("acetate", acid_stock="Acid mix"), '"Acid mix" is written "acid mix" elsewhere'),
+        (buffer("acetate", acid_stock="base mix"), "is the name of another bottle"),
+    ],
+)
+def test_a_bottle_serves_its_buffers_alike(tmp_path, second, problem):
+    below = {"below_ph": 6} if second["name"] == "MES" else {}
+    found = faults(tmp_path, buffer("MES", **below, **MIX), second)
+    assert found
+    assert all(problem in fault for fault in found)
+
+
 @pytest.mark.parametrize(
     ("bench", "fault"),
     [

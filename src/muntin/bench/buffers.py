@@ -78,7 +78,7 @@ def buffer_made(definition: Definition, parts: Mapping[str, float]) -> Made:
     salt_mm = parts.get(salt_name(bench), 0.0) / whole * (bench.salt_stock_mm or 0.0)
     ions = salt_ions(bench, salt_mm)
     acids = dict.fromkeys((couple_of(buffer).acid for buffer in bench.buffers), 0.0)
-    for name, (couple, charge, stock_mm) in _forms(definition).items():
+    for name, couple, charge, stock_mm in _forms(definition):
         m = parts.get(name, 0.0) / whole * stock_mm / 1000.0
         acids[couple.acid] += m
         if charge:
@@ -89,19 +89,22 @@ def buffer_made(definition: Definition, parts: Mapping[str, float]) -> Made:
     return Made(ph, state.strength, salt_mm / salt_unit_mm(definition))
 
 
-def _forms(definition: Definition) -> dict[str, tuple[Couple, int, float]]:
-    """By bottle: the buffer in it, its charge there, and mM."""
-    forms = {}
+def _forms(definition: Definition) -> Iterator[tuple[str, Couple, int, float]]:
+    """What is in the bottles: the bottle, a buffer in it, its charge there, and mM; each once."""
+    seen = set()
     for buffer in definition.bench.buffers:
         couple = couple_of(buffer)
         charges = (couple.acid_charge, couple.base_charge)
         for name, charge in zip(form_names(buffer), charges, strict=True):
-            forms[name] = (couple, charge, buffer.stock_mm)
-    return forms
+            if (name, couple) not in seen:
+                seen.add((name, couple))
+                yield name, couple, charge, buffer.stock_mm
 
 
 def _parts(wanted: Wanted, base: float) -> dict[str, float]:
-    """Shares of the volume by stock, some perhaps 0; water is what is left."""
+    """Shares of the volume by stock, some perhaps 0; water is what is left. Buffers that share a
+    bottle are dosed alike (record/buffers.py), so that its share counts once.
+    """
     parts: dict[str, float] = {}
     for buffer in wanted.buffers:
         share = buffer.mm / buffer.stock_mm

@@ -2,7 +2,9 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Iterator, Sequence
+from dataclasses import dataclass
 from typing import TYPE_CHECKING, Literal
 
 from muntin.record.factors import Factor
@@ -41,10 +43,14 @@ class Buffer(Keys):
     )
     below_ph: Number | None = key(None, says="used below this pH", example=9.0)
     acid_stock: Text | None = key(
-        None, says="what stands on the stock of the acid form", example="acetic acid 200 mM"
+        None,
+        says="what stands on the stock of the acid form; buffers that share a bottle give one name",
+        example="acid mix",
     )
     base_stock: Text | None = key(
-        None, says="what stands on the stock of the base form", example="sodium acetate 200 mM"
+        None,
+        says="what stands on the stock of the base form; buffers that share a bottle give one name",
+        example="base mix",
     )
     pka: tuple[Number, ...] | None = key(
         None,
@@ -82,11 +88,16 @@ class Buffer(Keys):
         """Charge with all protons on, of a buffer of the user's own."""
         return 0 if self.charge is None else self.charge
 
+    @property
+    def range(self) -> tuple[float, float]:
+        """The pH from which on and below which it is used; infinite where there is no bound."""
+        low = -math.inf if self.from_ph is None else self.from_ph
+        return low, math.inf if self.below_ph is None else self.below_ph
+
     def used_at(self, ph: float) -> bool:
         """Whether it is used at this pH."""
-        return (self.from_ph is None or ph >= self.from_ph - 1e-9) and (
-            self.below_ph is None or ph < self.below_ph - 1e-9
-        )
+        low, high = self.range
+        return low - 1e-9 <= ph < high - 1e-9
 
 
 def buffer_faults(bench: Bench, factors: Sequence[Factor]) -> Iterator[Fault]:
@@ -152,23 +163,55 @@ def _name_faults(bench: Bench) -> Iterator[Fault]:
             if other.name.strip().casefold() == name and _overlap(other, buffer):
                 problem = "is there twice, for the same pH"
                 yield _fault(f"{where}, name", quoted(buffer.name), problem)
-    seen: dict[str, str] = {WATER: WATER, "load": "load"}
+    yield from _bottle_faults(bench)
+
+
+@dataclass(frozen=True)
+class _Bottle:
+    """A name on a bottle, where it stands, and which form of which buffer is in it, if any."""
+
+    name: str
+    where: str = ""
+    form: str = ""
+    buffer: Buffer | None = None
+
+
+def _bottle_faults(bench: Bench) -> Iterator[Fault]:
+    """Names of bottles that stand on other bottles, or on one that serves buffers unalike."""
+    seen = {name: [_Bottle(name)] for name in (WATER, "load")}
+    for bottle in _bottles(bench):
+        before = seen.setdefault(bottle.name.strip().casefold(), [])
+        unlike = [said for other in before if (said := _unlike(bottle, other))]
+        if not bottle.name.strip():
+            unlike = ["is empty"]
+        before.append(bottle)
+        if unlike:
+            yield _fault(bottle.where, quoted(bottle.name), unlike[0])
+
+
+def _bottles(bench: Bench) -> Iterator[_Bottle]:
+    """The bottles that the user named."""
     if bench.salt_stock is not None:
-        yield from _bottle_faults("salt_stock", bench.salt_stock, "salt", seen)
+        yield _Bottle(bench.salt_stock, "salt_stock")
     for buffer in bench.buffers:
-        for form in ("acid", "base"):
-            name = getattr(buffer, f"{form}_stock")
+        for form, name in (("acid", buffer.acid_stock), ("base", buffer.base_stock)):
             if name is not None:
-                where = f"buffers, {buffer.name}, {form}_stock"
-                what = f"{buffer.name}, {form}, {number(buffer.stock_mm)} mM"
-                yield from _bottle_faults(where, name, what.casefold(), seen)
+                yield _Bottle(name, f"buffers, {buffer.name}, {form}_stock", form, buffer)
 
 
-def _bottle_faults(where: str, name: str, what: str, seen: dict[str, str]) -> Iterator[Fault]:
-    folded = name.strip().casefold()
-    if not folded or seen.setdefault(folded, what) != what:
-        problem = "is empty" if not folded else "is the name of another bottle, of water or of load"
-        yield _fault(where, quoted(name), problem)
+def _unlike(one: _Bottle, other: _Bottle) -> str:
+    """Why one bottle cannot be another of like name, empty where it can."""
+    if one.buffer is None or other.buffer is None or one.form != other.form:
+        return "is the name of another bottle, of water or of load"
+    if one.name != other.name:
+        return f"is written {quoted(other.name)} elsewhere"
+    mine, its = one.buffer, other.buffer
+    if mine.name.strip().casefold() == its.name.strip().casefold():
+        alike = mine.stock_mm == its.stock_mm
+    else:
+        alike = math.isclose(mine.mm / mine.stock_mm, its.mm / its.stock_mm)
+        alike = alike and mine.range == its.range
+    return "" if alike else "is one bottle: its buffers need one share, mm / stock_mm, and one pH"
 
 
 def _salt_faults(bench: Bench, factors: Sequence[Factor]) -> Iterator[Fault]:
@@ -191,9 +234,7 @@ def _salt_faults(bench: Bench, factors: Sequence[Factor]) -> Iterator[Fault]:
 
 def _overlap(one: Buffer, other: Buffer) -> bool:
     """Whether there is a pH at which both are used."""
-    low = max(b.from_ph if b.from_ph is not None else float("-inf") for b in (one, other))
-    high = min(b.below_ph if b.below_ph is not None else float("inf") for b in (one, other))
-    return low < high
+    return max(one.range[0], other.range[0]) < min(one.range[1], other.range[1])
 
 
 def _shown(values: Sequence[float]) -> str:

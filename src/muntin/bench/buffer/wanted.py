@@ -58,15 +58,20 @@ def wanted_of(definition: Definition, condition: Condition) -> Wanted | Refusal 
         spans = listed(f"{buffer.name} {_span(buffer)}" for buffer in bench.buffers)
         return Refusal(reason=f"lies where no buffer is used: {spans}")
     salt = float(condition.get(bench.salt_factor, 0.0)) if bench.salt_factor else 0.0
-    factor = next(factor for factor in definition.factors if factor.name == bench.ph_factor)
     return Wanted(
         ph=ph,
-        shown=factor.shown(ph),
+        shown=shown_ph(definition, ph),
         salt_mm=salt * salt_unit_mm(definition),
         buffers=used,
         others=tuple(n for n in condition if n not in (bench.ph_factor, bench.salt_factor)),
         bench=bench,
     )
+
+
+def shown_ph(definition: Definition, ph: float) -> str:
+    """A pH as the bench writes it."""
+    factors = (f for f in definition.factors if f.name == definition.bench.ph_factor)
+    return next(factors).shown(ph)
 
 
 def _span(buffer: Buffer) -> str:
