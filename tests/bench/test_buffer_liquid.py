@@ -7,7 +7,7 @@ from hypothesis import assume, given, settings
 from hypothesis import strategies as st
 
 from muntin.bench.buffer.acids import COUPLES, Acid, Couple, Step
-from muntin.bench.buffer.liquid import Liquid, forms, state_of
+from muntin.bench.buffer.liquid import Liquid, State, bracketed, forms, settled, state_of
 from muntin.bench.buffer.titration import Titration
 from muntin.bench.buffer.water import per_charge_squared, pkw
 
@@ -89,6 +89,23 @@ def test_more_base_form_raises_the_ph(titration, one, other):
     low, high = sorted((one, other))
     assume(high - low > 1e-6)
     assert titration.state(high).ph > titration.state(low).ph
+
+
+@settings(deadline=None, derandomize=True)
+@given(titrations(), BASE)
+def test_steps_and_bounds_find_the_same_state(titration, base):
+    liquid = titration.liquid(base)
+    bounds = bracketed(liquid, titration.t_c)
+    found = titration.state(base)
+    assert found.ph == pytest.approx(bounds.ph, abs=1e-8)
+    assert found.strength == pytest.approx(bounds.strength, rel=1e-8)
+
+
+def test_steps_that_do_not_come_to_rest_are_given_up():
+    # Far from its pH a liquid without buffer has no capacity to step by.
+    salt = Liquid({}, {1: 0.1, -1: 0.099})
+    assert settled(salt, State(7.0, 0.1), 25.0) is None
+    assert state_of(salt, 25.0).ph == pytest.approx(bracketed(salt, 25.0).ph, abs=1e-9)
 
 
 @settings(deadline=None, derandomize=True)

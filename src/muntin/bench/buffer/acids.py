@@ -8,7 +8,7 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
-from functools import lru_cache
+from functools import cached_property
 
 from muntin.bench.buffer.water import GAS, REFERENCE, pk_at
 
@@ -41,15 +41,20 @@ class Acid:
     charge: int
     steps: tuple[Step, ...]
 
-    @property
+    @cached_property
     def charges(self) -> tuple[int, ...]:
         """The charge of each form, all protons on first."""
         return tuple(self.charge - lost for lost in range(len(self.steps) + 1))
 
-    @lru_cache  # noqa: B019 - acids are few, frozen and live as long as the process
     def pks(self, t_c: float) -> tuple[float, ...]:
         """The pK of each step at a temperature in °C, at ionic strength 0."""
-        return tuple(step.at(t_c) for step in self.steps)
+        if t_c not in self._pks:
+            self._pks[t_c] = tuple(step.at(t_c) for step in self.steps)
+        return self._pks[t_c]
+
+    @cached_property
+    def _pks(self) -> dict[float, tuple[float, ...]]:
+        return {}
 
 
 @dataclass(frozen=True)

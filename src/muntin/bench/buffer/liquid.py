@@ -16,6 +16,7 @@ from muntin.bench.buffer.water import per_charge_squared, pkw
 
 _ACID_END, _BASE_END = -2.0, 16.0
 _PRECISE = 1e-12
+_MOST_STEPS = 30
 
 
 @dataclass(frozen=True, eq=False)
@@ -40,30 +41,70 @@ class State:
 def state_of(liquid: Liquid, t_c: float) -> State:
     """Return pH and ionic strength of a liquid at a temperature in °C.
 
+    The pH at the ionic strength of the strong ions is found between bounds; from there both are
+    brought to rest together, or, where that takes long, again between bounds.
+
     Raises ValueError where no pH from -2 to 16 makes its charges add up to 0.
     """
+    strength = 0.5 * sum(m * z * z for z, m in liquid.ions.items())
+    g = per_charge_squared(strength, t_c)
+    ends = [charge_of(liquid, end, g, t_c) for end in (_ACID_END, _BASE_END)]
+    if ends[0] < 0 or ends[1] > 0:
+        raise ValueError("no pH from -2 to 16 balances the charges")
+    ph = root(lambda at: charge_of(liquid, at, g, t_c), _ACID_END, _BASE_END)
+    return settled(liquid, State(ph, strength), t_c) or bracketed(liquid, t_c)
+
+
+def settled(liquid: Liquid, start: State, t_c: float) -> State | None:
+    """The state by Newton steps in the pH, whose slope is the buffer capacity, the ionic strength
+    taken over each time; None where that does not come to rest.
+    """
+    state = start
+    for _ in range(_MOST_STEPS):
+        g = per_charge_squared(state.strength, t_c)
+        charge, squares, capacity = _totals(liquid, state.ph, g, t_c)
+        moved = State(state.ph + charge / capacity, 0.5 * squares)
+        if abs(moved.ph - state.ph) + abs(moved.strength - state.strength) < _PRECISE:
+            return moved
+        if not _ACID_END <= moved.ph <= _BASE_END:
+            return None
+        state = moved
+    return None
+
+
+def bracketed(liquid: Liquid, t_c: float) -> State:
+    """The state by bounds alone: the root of the charge, each pH at its own ionic strength."""
 
     def excess(ph: float) -> float:
         g = per_charge_squared(strength_at(liquid, ph, t_c), t_c)
         return charge_of(liquid, ph, g, t_c)
 
-    if excess(_ACID_END) < 0 or excess(_BASE_END) > 0:
-        raise ValueError("no pH from -2 to 16 balances the charges")
     ph = root(excess, _ACID_END, _BASE_END)
     return State(ph, strength_at(liquid, ph, t_c))
 
 
+def _totals(liquid: Liquid, ph: float, g: float, t_c: float) -> tuple[float, float, float]:
+    """Sums of m z and of m z^2 over all ions, and the fall of the first with the pH."""
+    hydrogen, hydroxide = waters(ph, g, t_c)
+    charge, squares, spread = hydrogen - hydroxide, hydrogen + hydroxide, hydrogen + hydroxide
+    for z, m in liquid.ions.items():
+        charge += m * z
+        squares += m * z * z
+    for acid, m in liquid.acids.items():
+        mean, square = moments(acid, ph, g, t_c)
+        charge += m * mean
+        squares += m * square
+        spread += m * (square - mean * mean)
+    return charge, squares, math.log(10) * spread
+
+
 def strength_at(liquid: Liquid, ph: float, t_c: float) -> float:
     """The ionic strength (mol/kg) of a liquid that is held at a pH, charges balanced or not."""
-    fixed = 0.5 * sum(m * z * z for z, m in liquid.ions.items())
-
-    def excess(strength: float) -> float:
-        g = per_charge_squared(strength, t_c)
-        own = sum(waters(ph, g, t_c))
-        squares = sum(m * moments(acid, ph, g, t_c)[1] for acid, m in liquid.acids.items())
-        return fixed + 0.5 * (own + squares) - strength
-
-    return own_strength(excess)
+    return own_strength(
+        lambda strength: (
+            0.5 * _totals(liquid, ph, per_charge_squared(strength, t_c), t_c)[1] - strength
+        )
+    )
 
 
 def own_strength(excess: Callable[[float], float]) -> float:
@@ -76,9 +117,7 @@ def own_strength(excess: Callable[[float], float]) -> float:
 
 def charge_of(liquid: Liquid, ph: float, g: float, t_c: float) -> float:
     """Net charge (mol/kg) of a liquid at a pH and an activity constant g; 0 at its own pH."""
-    hydrogen, hydroxide = waters(ph, g, t_c)
-    held = sum(m * moments(acid, ph, g, t_c)[0] for acid, m in liquid.acids.items())
-    return sum(z * m for z, m in liquid.ions.items()) + held + hydrogen - hydroxide
+    return _totals(liquid, ph, g, t_c)[0]
 
 
 def waters(ph: float, g: float, t_c: float) -> tuple[float, float]:
@@ -88,20 +127,27 @@ def waters(ph: float, g: float, t_c: float) -> tuple[float, float]:
 
 def moments(acid: Acid, ph: float, g: float, t_c: float) -> tuple[float, float]:
     """Mean charge and mean squared charge of an acid over its forms."""
-    shares = forms(acid, ph, g, t_c)
-    mean = sum(s * z for s, z in zip(shares, acid.charges, strict=True))
-    return mean, sum(s * z * z for s, z in zip(shares, acid.charges, strict=True))
+    total = mean = square = 0.0
+    for weight, z in zip(_weights(acid, ph, g, t_c), acid.charges, strict=True):
+        total += weight
+        mean += weight * z
+        square += weight * z * z
+    return mean / total, square / total
 
 
 def forms(acid: Acid, ph: float, g: float, t_c: float) -> list[float]:
     """The share of each form, all protons on first; they add up to 1."""
-    logs = [0.0]
-    for z, pk in zip(acid.charges, acid.pks(t_c), strict=False):
-        logs.append(logs[-1] + ph - pk - g * (z * z - (z - 1) ** 2))
-    top = max(logs)
-    weights = [10.0 ** (value - top) for value in logs]
+    weights = _weights(acid, ph, g, t_c)
     total = math.fsum(weights)
     return [weight / total for weight in weights]
+
+
+def _weights(acid: Acid, ph: float, g: float, t_c: float) -> list[float]:
+    """Each form against that with all protons on; z^2 - (z - 1)^2 = 2 z - 1."""
+    weights = [1.0]
+    for z, pk in zip(acid.charges, acid.pks(t_c), strict=False):
+        weights.append(weights[-1] * 10.0 ** (ph - pk - g * (2 * z - 1)))
+    return weights
 
 
 def root(excess: Callable[[float], float], low: float, high: float) -> float:
