@@ -6,6 +6,7 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
+from muntin.bench.buffer.stocks import named_stocks
 from muntin.bench.buffers import buffer_made, buffer_recipe
 from muntin.bench.recipe import Recipe, Refusal
 from muntin.record.definition import Definition
@@ -107,6 +108,17 @@ def test_buffers_may_share_two_bottles():
     assert shared["acid mix"] + shared["base mix"] == pytest.approx(0.1)
     assert math.fsum(shared.values()) == pytest.approx(1.0)
     assert buffer_made(one, shared).ph == pytest.approx(5.5, abs=1e-6)
+
+
+def test_stocks_with_names_of_their_own_are_explained():
+    names = {"acid_stock": "acid mix", "base_stock": "base mix"}
+    own = buffered(buffer("acetate", **names), buffer("MES", **names), salt_stock="brine")
+    assert named_stocks(own.bench) == (
+        "acid mix: acetic acid 200 mM, MES 200 mM",
+        "base mix: sodium acetate 200 mM, sodium MES 200 mM",
+        "brine: NaCl 2000 mM",
+    )
+    assert named_stocks(BOTH.bench) == ()
 
 
 def test_a_buffer_of_the_users_own():

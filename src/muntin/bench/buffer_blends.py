@@ -11,6 +11,7 @@ from dataclasses import dataclass
 
 from muntin.bench.buffer.wanted import shown_ph
 from muntin.bench.buffers import buffer_made
+from muntin.bench.recipe import Recipe
 from muntin.record.definition import Definition
 
 _WORTH_IT = 0.02
@@ -24,15 +25,15 @@ class Blend:
     parts: Mapping[str, float]
 
 
-def blended(
-    shares: Mapping[str, float], makings: Mapping[str, Mapping[str, float]]
-) -> dict[str, float]:
-    """Parts by stock of a well, of its shares by bottle and each bottle's parts by stock."""
+def blend_of(ph: float, shares: Mapping[str, float], makings: Mapping[str, Recipe]) -> Blend | None:
+    """Return a well of its shares by bottle, None where a bottle has no recipe of its own."""
     parts: dict[str, float] = {}
     for bottle, share in shares.items():
-        for stock, part in makings[bottle].items():
+        if bottle not in makings:
+            return None
+        for stock, part in makings[bottle].parts.items():
             parts[stock] = parts.get(stock, 0.0) + share * part
-    return parts
+    return Blend(ph, parts)
 
 
 def blend_cautions(definition: Definition, blends: Iterable[Blend]) -> tuple[str, ...]:

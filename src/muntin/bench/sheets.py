@@ -11,7 +11,8 @@ from typing import Any
 import pandas as pd
 
 from muntin.bench.bottles import Bottle, Value
-from muntin.bench.buffer.stocks import stock_names
+from muntin.bench.buffer.stocks import named_stocks, stock_names
+from muntin.bench.buffer_blends import Blend, blend_cautions, blend_of
 from muntin.bench.buffer_cautions import buffer_cautions
 from muntin.bench.fed import fed_lines, line_of
 from muntin.bench.load import Load, load_of
@@ -69,11 +70,23 @@ class Sheets:
     @property
     def buffers(self) -> tuple[str, ...]:
         """What is to be known of the buffers of the whole plan, in sentences."""
+        definition = self.study.definition
         liquids = [bottle.holds for bottle in self.bottles if bottle.name in self.makings]
-        if not self.study.definition.bench.stocks:
+        if not definition.bench.stocks:
             liquids = [of.mix.condition for of in self.mixes]
-        said = buffer_cautions(self.study.definition, liquids)
-        return tuple(f"{sentence[:1].upper()}{sentence[1:]}." for sentence in said)
+        said = [*buffer_cautions(definition, liquids), *blend_cautions(definition, self._blends())]
+        own = named_stocks(definition.bench) if liquids else ()
+        return (*(f"{s[:1].upper()}{s[1:]}." for s in said), *(f"{held}." for held in own))
+
+    def _blends(self) -> list[Blend]:
+        """The wells as blends of bottles whose recipes are known."""
+        name = self.study.definition.bench.ph_factor or ""
+        blends = [
+            blend_of(float(of.mix.condition[name]), of.mix.recipe.parts, self.makings)
+            for of in self.mixes
+            if name in of.mix.condition
+        ]
+        return [blend for blend in blends if blend is not None]
 
 
 def prepare(study: Study, plan: str | Path | None = None) -> Sheets:

@@ -58,3 +58,21 @@ def salt_unit_mm(definition: Definition) -> float:
     name = definition.bench.salt_factor
     units = (f.unit for f in definition.factors if f.name == name)
     return SALT_UNITS.get(next(units, "mM"), 1.0)
+
+
+def named_stocks(bench: Bench) -> tuple[str, ...]:
+    """What is in the stocks that have names of the user's own: "acid mix: MES 200 mM, ..."."""
+    holds: dict[str, list[str]] = {}
+    for buffer in bench.buffers:
+        couple, strength = couple_of(buffer), f"{number(buffer.stock_mm)} mM"
+        plain = (f"{couple.acid_form} {strength}", f"{couple.base_form} {strength}")
+        for name, content in zip(form_names(buffer), plain, strict=True):
+            holds.setdefault(name, []).append(content)
+    if bench.salt_factor is not None:
+        content = f"{bench.salt_kind} {number(bench.salt_stock_mm or 0.0)} mM"
+        holds[salt_name(bench)] = [content]
+    return tuple(
+        f"{name}: {', '.join(dict.fromkeys(contents))}"
+        for name, contents in holds.items()
+        if contents != [name]
+    )
