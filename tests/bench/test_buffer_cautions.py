@@ -120,6 +120,12 @@ def test_liquids_of_which_no_ph_is_predicted_are_counted():
     )
 
 
+def test_one_liquid_of_which_no_ph_is_predicted():
+    (said,) = cautions(buffered(buffer("acetate")), (4.6, 300.0), (4.6, 600.0))
+    assert said.startswith("1 of 2 liquids lies above")
+    assert said.endswith("titrate it")
+
+
 def test_conditions_without_a_recipe_are_passed_over():
     gap = buffered(buffer("acetate", below_ph=5.6))
     assert cautions(gap, (7.0, 300.0), (4.6, 300.0)) == ()

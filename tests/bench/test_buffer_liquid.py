@@ -101,6 +101,15 @@ def test_steps_and_bounds_find_the_same_state(titration, base):
     assert found.strength == pytest.approx(bounds.strength, rel=1e-8)
 
 
+@pytest.mark.parametrize("name", COUPLES)
+def test_steps_bring_buffers_to_rest_without_bounds(name):
+    liquid = Titration({COUPLES[name]: 0.02}, {1: 0.1, -1: 0.1}, 25.0).liquid(0.4)
+    bounds = bracketed(liquid, 25.0)
+    found = settled(liquid, State(bounds.ph + 0.2, 0.1), 25.0)
+    assert found is not None
+    assert found.ph == pytest.approx(bounds.ph, abs=1e-9)
+
+
 def test_steps_that_do_not_come_to_rest_are_given_up():
     # Far from its pH a liquid without buffer has no capacity to step by.
     salt = Liquid({}, {1: 0.1, -1: 0.099})

@@ -158,9 +158,10 @@ def _strong(mixed: Sequence[_Mixed]) -> Iterator[str]:
     """Liquids of which no pH is predicted."""
     strong = sum(made.strength > HIGHEST_STRENGTH for made in mixed)
     if strong:
+        lie, them = ("lies", "it") if strong == 1 else ("lie", "them")
         yield (
-            f"{strong} of {len(mixed)} liquids lie above an ionic strength of 0.5, where no pH is "
-            "predicted: titrate them"
+            f"{strong} of {len(mixed)} liquids {lie} above an ionic strength of 0.5, where no pH "
+            f"is predicted: titrate {them}"
         )
 
 
