@@ -122,6 +122,9 @@ def test_bottles_are_made_from_forms(tmp_path: Path) -> None:
         own = [row for row in table if row["bottle"] == name]
         assert sum(int(row["ul"]) for row in own) == needed[name]
         assert sum(float(row["ml_per_l"]) for row in own) == pytest.approx(1000, abs=0.03)
+    water = sum(int(row["ul"]) for row in table if row["stock"] == "water")
+    flat = " ".join(" ".join(checklist_lines(sheets, [])).split())
+    assert f", {water / 1000:g} mL of water" in flat
 
 
 def test_the_checklist_shows_recipes_remarks_and_says_measure(tmp_path: Path) -> None:

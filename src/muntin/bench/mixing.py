@@ -76,9 +76,9 @@ class Mixer:
         bottles = bottles_for(self.definition, held)
         matched = self.definition.bench.matched(self.definition.factors)
         tied = [name for name in held if name in matched]
-        for name in tied:
-            if not any(name in bottle.holds for bottle in bottles):
-                return Refusal(reason=f"finds no bottle of {self._shown(name, held[name])}")
+        if not all(any(name in bottle.holds for bottle in bottles) for name in tied):
+            wanted = " and ".join(self._shown(name, held[name]) for name in tied)
+            return Refusal(reason=f"finds no bottle of {wanted}")
         asked = {n: float(v) for n, v in held.items() if n not in matched}
         asked |= self.definition.bench.every_mix
         contents = _contents(bottles, asked)

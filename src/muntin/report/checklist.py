@@ -3,7 +3,9 @@
 from __future__ import annotations
 
 import textwrap
+from collections import Counter
 from collections.abc import Iterable, Iterator
+from decimal import Decimal
 
 from muntin.bench.gaps import gaps
 from muntin.bench.sheets import Sheets
@@ -12,6 +14,7 @@ from muntin.record.bench import LOAD
 from muntin.record.faults import counted, listed, number
 from muntin.report.cautions import bench_cautions
 from muntin.report.plate_map import roles_text
+from muntin.report.sheet_tables import made_ul
 from muntin.report.sheet_words import condition_part, held_text, protein_line, volume_ml
 
 _WIDTH = 84
@@ -127,10 +130,20 @@ def _recipes(sheets: Sheets) -> Iterator[str]:
     for name, recipe in sheets.makings.items():
         parts = "; ".join(f"{stock} {1000 * share:.1f}" for stock, share in recipe.parts.items())
         yield "; ".join([f"{name}, mL per litre: {parts}", *recipe.remarks]) + "."
+    if taken := _taken(sheets):
+        yield f"In all, the bottles at the volumes above take {taken}."
     for of in remarked:
         liquid = condition_part(sheets.study.definition, of.mix.condition)
         said = "; ".join(of.mix.recipe.remarks)
         yield f"{liquid} ({listed(of.wells)}): {said}."
+
+
+def _taken(sheets: Sheets) -> str:
+    """What all bottles together take of the stocks that they are made from."""
+    sums: Counter[str] = Counter()
+    for parts in made_ul(sheets).values():
+        sums.update(parts)
+    return ", ".join(f"{volume_ml(Decimal(ul))} of {stock}" for stock, ul in sums.items())
 
 
 def _plate(sheets: Sheets) -> Iterator[str]:

@@ -80,15 +80,25 @@ def _recipe_rows(sheets: Sheets) -> Iterator[dict[str, Any]]:
             }
 
 
-def _making_rows(sheets: Sheets) -> Iterator[dict[str, Any]]:
+def made_ul(sheets: Sheets) -> dict[str, dict[str, int]]:
+    """Return what each bottle takes of each stock, in whole µL that add up to what has to be there;
+    empty where no volume is known.
+    """
     needed = {total.stock: math.ceil(total.needed_ul) for total in sheets.totals}
+    out = {}
     for bottle, recipe in sheets.makings.items():
-        shares = [*recipe.parts.values()]
-        whole = needed.get(bottle)
-        parts = [""] * len(shares) if whole is None else map(str, apportioned(shares, whole))
-        for (stock, share), part in zip(recipe.parts.items(), parts, strict=True):
-            ml = f"{_ML_PER_L * share:.2f}"
-            yield {"bottle": bottle, "stock": stock, "ml_per_l": ml, "ul": part}
+        if bottle in needed:
+            parts = apportioned([*recipe.parts.values()], needed[bottle])
+            out[bottle] = dict(zip(recipe.parts, parts, strict=True))
+    return out
+
+
+def _making_rows(sheets: Sheets) -> Iterator[dict[str, Any]]:
+    volumes = made_ul(sheets)
+    for bottle, recipe in sheets.makings.items():
+        for stock, share in recipe.parts.items():
+            ml, ul = f"{_ML_PER_L * share:.2f}", volumes.get(bottle, {}).get(stock, "")
+            yield {"bottle": bottle, "stock": stock, "ml_per_l": ml, "ul": ul}
 
 
 def _per_well(sheets: Sheets, of: WellsMix, stock: str) -> str:

@@ -13,7 +13,7 @@ if TYPE_CHECKING:
 
 _A4 = (8.27, 11.69)  # inches
 _LINES = 58
-_LEFT, _TOP, _LEADING, _SIZE = 0.85, 10.95, 0.174, 9.5
+_LEFT, _TOP, _LEADING, _SIZE = 0.85, 10.95, 0.174, 9.0
 
 
 def text_pages(lines: Sequence[str]) -> list[Figure]:
