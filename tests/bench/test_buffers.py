@@ -176,6 +176,8 @@ def test_factors_that_come_on_top_are_named():
     sugared = buffered(buffer("acetate"), factors=(PH, SALT, SUGAR))
     recipe = buffer_recipe(sugared, {"ph": 5.0, "salt": 50.0, "sugar": 100.0})
     assert recipe.remarks[-1] == "sugar on top: neither in the volumes nor in the pH"
+    without = buffer_recipe(sugared, {"ph": 5.0, "salt": 50.0, "sugar": 0})
+    assert without.remarks == recipe.remarks[:-1]
 
 
 # Why there is none.

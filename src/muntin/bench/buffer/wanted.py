@@ -20,7 +20,7 @@ class Wanted:
     """What one liquid is to be.
 
     ph: target. shown: the target as the bench writes it. salt_mm: mM of the salt. buffers: those
-    used at this pH, with what they are made of. others: names of factors that it holds besides.
+    used at this pH, with what they are made of. others: factors of which it holds something besides.
     """
 
     ph: float
@@ -58,12 +58,13 @@ def wanted_of(definition: Definition, condition: Condition) -> Wanted | Refusal 
         spans = listed(f"{buffer.name} {_span(buffer)}" for buffer in bench.buffers)
         return Refusal(reason=f"lies where no buffer is used: {spans}")
     salt = float(condition.get(bench.salt_factor, 0.0)) if bench.salt_factor else 0.0
+    set_here = (bench.ph_factor, bench.salt_factor)
     return Wanted(
         ph=ph,
         shown=shown_ph(definition, ph),
         salt_mm=salt * salt_unit_mm(definition),
         buffers=used,
-        others=tuple(n for n in condition if n not in (bench.ph_factor, bench.salt_factor)),
+        others=tuple(n for n, v in condition.items() if v != 0 and n not in set_here),
         bench=bench,
     )
 
