@@ -20,7 +20,7 @@ class Wanted:
     """What one liquid is to be.
 
     ph: target. shown: the target as the bench writes it. salt_mm: mM of the salt. buffers: those
-    used at this pH, with what they are made of. others: factors of which it holds something besides.
+    used at this pH, with what they are made of. others: what else it holds, by factor.
     """
 
     ph: float
