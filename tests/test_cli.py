@@ -48,7 +48,9 @@ def test_version() -> None:
     assert run("--version").stdout == f"muntin {version('muntin')}\n"
 
 
-@pytest.mark.parametrize("command", ["new", "check", "assess", "propose", "rehearse", "advise"])
+@pytest.mark.parametrize(
+    "command", ["new", "check", "assess", "propose", "prepare", "rehearse", "advise"]
+)
 def test_every_command_has_help_and_the_common_options(command: str) -> None:
     result = run(command, "--help")
     assert result.exit_code == 0

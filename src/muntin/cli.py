@@ -11,6 +11,7 @@ from muntin.commands.advise import advise
 from muntin.commands.assess import assess
 from muntin.commands.check import check
 from muntin.commands.new import new
+from muntin.commands.prepare import prepare
 from muntin.commands.propose import propose
 from muntin.commands.reduce import reduce
 from muntin.commands.rehearse import rehearse
@@ -23,6 +24,7 @@ _COMMANDS = {
     uptake: "how long must they be in contact?",
     assess: "where do I stand?",
     propose: "what do I run next?",
+    prepare: "how do I run it?",
     rehearse: "is another plate worth it?",
     advise: "all of it between two plates",
 }

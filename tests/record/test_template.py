@@ -12,6 +12,7 @@ from muntin.record.template import study_text, toml_value
 
 OPTIONAL = re.compile(r"#(\w+) = (.+)")
 CLASHING = {"choices", "plan_choices", "typical", "load_factor", "resin_ul"}
+CLASHING |= {"pka", "pka_per_c", "charge", "stock_charges"}  # of a buffer that is not known
 
 
 @pytest.mark.parametrize("factors", [1, 2, 6])

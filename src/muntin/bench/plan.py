@@ -11,6 +11,7 @@ import pandas as pd
 
 from muntin.bench.edit import Edit, declined, edited, scored
 from muntin.bench.layout import lay_out
+from muntin.bench.mixable import unmixable
 from muntin.bench.outlay import Outlay
 from muntin.bench.plan_notices import plan_notices
 from muntin.bench.plan_rows import plan_rows
@@ -102,7 +103,7 @@ def propose(
         aim=aim,
         seed=seed,
         protein_mg=protein_needed_mg(view.study, placed),
-        notices=plan_notices(view, selection, asked, stocks, ruling, found),
+        notices=plan_notices(view, selection, asked, terms, ruling, found),
         ruling=ruling,
         edit=edit,
     )
@@ -139,14 +140,16 @@ def _terms(study: Study, asked: Asked, stocks: tuple[Stock, ...]) -> Terms:
     kept: KeptPlan | None = asked.kept
     left = protein_left_mg(study)
     budget = None if left is None else left - given_mg(study.definition, asked)
+    unfit = unmixable(study.definition)
     if kept is None:
-        return Terms(stocks=stocks, budget_mg=budget)
+        return Terms(stocks=stocks, budget_mg=budget, unfit=unfit)
     return Terms(
         held=kept.held(),
         declined=declined(study.definition, kept),
         stocks=stocks,
         budget_mg=budget,
         fill=asked.fill,
+        unfit=unfit,
     )
 
 
@@ -158,6 +161,8 @@ def _selected(view: Assessment, asked: Asked, aim: Aim, seed: int, terms: Terms)
     except NoConditionLeftError:
         problem = "cannot be chosen: no condition is left that the plan may use;"
         allowed = "keep fewer levels, or take fewer conditions out"
+        if terms.unfit is not None:
+            allowed += "; are the stocks of study.toml, [bench] strong enough?"
         raise StudyFaults([too_many(asked.wells, problem, allowed)]) from None
 
 

@@ -12,6 +12,7 @@ from muntin.bench.layout import default_controls
 from muntin.bench.room import Asked
 from muntin.design.selection import Selection
 from muntin.design.stopping import Ruling
+from muntin.design.terms import Terms
 from muntin.record.definition import Definition
 from muntin.record.faults import counted, number
 from muntin.record.offers import Change, Offer
@@ -24,7 +25,7 @@ def plan_notices(
     view: Assessment,
     selection: Selection,
     asked: Asked,
-    stocks: Sequence[Stock],
+    terms: Terms,
     ruling: Ruling,
     found: tuple[Offer | None, list[Change]] | None = None,
 ) -> tuple[str, ...]:
@@ -51,7 +52,8 @@ def plan_notices(
     wanted = view.study.definition.plan.bridging_wells
     if wanted and asked.fill and not view.fresh and not bridged:
         notices.append("no bridging wells: no earlier condition lies in the plan's range")
-    notices += _of_stocks(view.study.definition, selection, stocks)
+    notices += _of_stocks(view.study.definition, selection, terms.stocks)
+    notices += _of_bottles(selection, terms)
     if asked.kept is not None:
         notices += _lacking(view, asked.kept, asked)
     notices += [] if found is None else _again(selection, found[1])
@@ -77,6 +79,27 @@ def _of_stocks(definition: Definition, selection: Selection, stocks: Sequence[St
                 f"{said} measured {number(stock.measured)} ({stock.file}): probabilities and "
                 f"forecast of {counted(wells, 'well')} are those of the measured value"
             )
+    return notices
+
+
+def _of_bottles(selection: Selection, terms: Terms) -> list[str]:
+    """Conditions that the stocks of [bench] cannot make."""
+    if terms.unfit is None:
+        return []
+    unfit = terms.unfit(selection.candidates)
+    held = {pick.candidate for pick in selection.picks if pick.held is not None}
+    kept = sum(bool(unfit[candidate]) for candidate in held)
+    notices = []
+    if unfit.any():
+        notices.append(
+            f"{int(unfit.sum())} of {counted(len(unfit), 'candidate')} cannot be mixed from the "
+            "stocks (study.toml, [bench]) and were not chosen"
+        )
+    if kept:
+        notices.append(
+            f"{counted(kept, 'kept condition')} cannot be mixed from the stocks: muntin prepare "
+            "says why, and names the nearest that can"
+        )
     return notices
 
 

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -23,6 +23,7 @@ class Terms:
     each factor's _measured or NaN); only test, bridge and reference wells. declined: conditions
     (targets) that are not chosen. stocks: measured for this plate. budget_mg: protein for the
     bridging and test wells that are still to be chosen. fill: whether bridging wells are chosen.
+    unfit: which rows of a frame of targets the stocks cannot make, and are therefore not chosen.
     """
 
     held: pd.DataFrame | None = None
@@ -30,6 +31,7 @@ class Terms:
     stocks: tuple[Stock, ...] = ()
     budget_mg: float | None = None
     fill: bool = True
+    unfit: Callable[[pd.DataFrame], Truths] | None = None
 
 
 @dataclass(frozen=True, eq=False)
@@ -74,6 +76,8 @@ def weighed(definition: Definition, frame: pd.DataFrame, terms: Terms) -> Weighe
     if terms.declined:
         rows = frame.itertuples(index=False, name=None)
         barred |= np.array([row in terms.declined for row in rows], dtype=bool)
+    if terms.unfit is not None:
+        barred |= terms.unfit(frame)
     return Weighed(frame, actual, known, tuple(held), barred)
 
 

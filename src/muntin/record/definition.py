@@ -9,6 +9,7 @@ import numpy as np
 import pandas as pd
 
 from muntin.record.assay import Assay, FixedWell, assay_faults, known_fixed
+from muntin.record.bench import Bench, bench_faults
 from muntin.record.factors import Factor, factor_faults
 from muntin.record.faults import Fault, did_you_mean, number, quoted
 from muntin.record.keys import Keys, Number, NumberOrText, Text, Truths, Whole, key
@@ -147,6 +148,9 @@ class Definition(Keys):
     uptake: UptakeKeys = key(
         UptakeKeys(), says="what uptake curves (uptake/*.csv) were run with, for the contact time"
     )
+    bench: Bench = key(
+        Bench(), says="what wells are mixed from and what the pipette can do, for muntin prepare"
+    )
     fixed: dict[str, NumberOrText] = key(
         {}, says="what the window is conditional on, repeated wherever it is stated"
     )
@@ -229,6 +233,7 @@ def definition_faults(definition: Definition) -> list[Fault]:
     if definition.factors and not own:
         faults += limit_faults(definition.limits, definition.factors)
         faults += forbidden_faults(definition.forbidden, definition.limits, definition.factors)
+        faults += bench_faults(definition.bench, definition.factors)
     faults += uptake_faults(definition.uptake)
     return [*faults, *_shared_faults(definition), *_plan_faults(definition)]
 

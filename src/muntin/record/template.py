@@ -12,6 +12,8 @@ from pydantic import BaseModel
 from pydantic.fields import FieldInfo
 
 from muntin.record.assay import Assay, AssayStage, FixedWell
+from muntin.record.bench import Bench, BenchStock
+from muntin.record.buffers import Buffer
 from muntin.record.definition import (
     MOST,
     STUDY_FILE,
@@ -100,6 +102,9 @@ def study_text(factors: int = 2) -> str:
         _table("[plan]", "plan", PlanRules),
         _table("[stop]", "stop", StopRule),
         _table("[uptake]", "uptake", UptakeKeys),
+        _table("[bench]", "bench", Bench),
+        _table("[[bench.stocks]]", "stocks", BenchStock),
+        _table("[[bench.buffers]]", "buffers", Buffer),
         _table("[fixed]", "fixed", FixedWell),
         _table("[assay]", "assay", Assay),
         _stages(),
@@ -108,7 +113,8 @@ def study_text(factors: int = 2) -> str:
 
 
 def _says(section: str) -> str:
-    return Definition.model_fields[section].description or ""
+    fields = {**Bench.model_fields, **Definition.model_fields}
+    return fields[section].description or ""
 
 
 def _table(
@@ -117,7 +123,7 @@ def _table(
     """Return a table with all keys of its declaration; without `given`, all behind a #."""
     text = _comment(_says(section)) + ("" if given else "#") + heading + "\n"
     for name, info in model.model_fields.items():
-        if name == _APART:
+        if name == _APART or info.default == ():  # tables of their own
             continue
         mark = "" if given and name in given else "#"
         value = given[name] if given and name in given else _example(info)
@@ -149,7 +155,7 @@ def _bare(heading: str, given: Mapping[str, Any]) -> str:
 def _help(info: FieldInfo) -> str:
     extra = info.json_schema_extra if isinstance(info.json_schema_extra, dict) else {}
     unit = f"unit: {extra['unit']}" if extra.get("unit") else ""
-    plain = info.default is not None and not info.is_required() and info.default != ""
+    plain = info.default is not None and not info.is_required() and info.default not in ("", {})
     default = f"default: {toml_value(info.default)}" if plain else ""
     more = "; ".join(part for part in (unit, default) if part)
     return (info.description or "") + (f" ({more})" if more else "")

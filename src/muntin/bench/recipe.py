@@ -1,0 +1,32 @@
+"""A recipe: what shares of which stocks make one liquid, or why none can."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from typing import Any
+
+Condition = Mapping[str, Any]
+
+
+@dataclass(frozen=True, kw_only=True)
+class Recipe:
+    """Shares of the volume by stock, water among them; they are above 0 and add up to 1.
+
+    remarks: plain sentences for the bench, such as "titrate to pH 5.4: above an ionic strength of
+    0.5 no pH is predicted".
+    """
+
+    parts: Mapping[str, float]
+    remarks: tuple[str, ...] = ()
+
+
+@dataclass(frozen=True, kw_only=True)
+class Refusal:
+    """Why no mix of the stocks makes a condition.
+
+    reason: the end of a sentence that begins with the condition, such as "needs 620 mM of salt, and
+    the strongest stock holds 500 mM".
+    """
+
+    reason: str

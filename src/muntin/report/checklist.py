@@ -1,0 +1,178 @@
+"""The bench checklist: what to do, box by box, with the cautions first."""
+
+from __future__ import annotations
+
+import textwrap
+from collections import Counter
+from collections.abc import Iterable, Iterator
+from decimal import Decimal
+
+from muntin.bench.gaps import gaps
+from muntin.bench.sheets import Sheets
+from muntin.bench.transfers import Total
+from muntin.record.bench import LOAD
+from muntin.record.faults import counted, listed, number
+from muntin.report.cautions import bench_cautions
+from muntin.report.plate_map import roles_text
+from muntin.report.sheet_tables import made_ul
+from muntin.report.sheet_words import condition_part, held_text, protein_line, volume_ml
+
+_WIDTH = 84
+_BOX = "[ ] "
+_FILES = {
+    "map.pdf, map.png": "the plate; wells lie as seen from above, A1 at the cut corner",
+    "conditions.csv": "condition, factors, count, wells: the distinct conditions",
+    "recipes.csv": "stocks of each liquid: mL per litre, and µL per well in pipette steps",
+    "bottles.csv": "bottle, stock, ml_per_l, ul: what bottles are made from, and for how much",
+    "transfers.csv": "stock, well, draw_ul: every draw in the order of work",
+    "totals.csv": "stock, wells, drawn_ul (sum of its draws), dead_ul, needed_ul",
+}
+
+
+def checklist_lines(sheets: Sheets, files: Iterable[str]) -> list[str]:
+    """Return the checklist as lines of plain text, at most 84 signs wide; files are those that are
+    written beside it.
+    """
+    parts = [
+        _head(sheets),
+        ("Cautions", [_item("- ", said) for said in bench_cautions(ph_levels(sheets))]),
+        ("Before the plate", [_item(_BOX, said) for said in _before(sheets)]),
+        ("Bottles", _bottles(sheets)),
+        ("Recipes", [_item("- ", said) for said in _recipes(sheets)]),
+        ("The plate", [_item(_BOX, said) for said in _plate(sheets)]),
+        ("Not in these sheets", [_item("- ", said) for said in gaps(sheets)]),
+        ("Files", [_item("- ", said) for said in _files(files)]),
+    ]
+    lines: list[str] = []
+    for heading, items in parts:
+        if items:
+            lines += [heading.upper(), "", *(line for item in items for line in item), ""]
+    return lines[:-1]
+
+
+def _item(mark: str, said: str) -> list[str]:
+    rest = " " * len(mark)
+    return textwrap.wrap(said, _WIDTH, initial_indent=mark, subsequent_indent=rest)
+
+
+def _head(sheets: Sheets) -> tuple[str, list[list[str]]]:
+    definition = sheets.study.definition
+    said = [
+        definition.title,
+        f"Plan {sheets.file}, fingerprint {sheets.digest[:8]} (SHA-256).",
+        roles_text(sheets.rows),
+    ]
+    head = [*(_item("", line) for line in said), ["", "Run by ____________________  Date ________"]]
+    return f"Bench checklist of {sheets.plate}", head
+
+
+def ph_levels(sheets: Sheets) -> list[float]:
+    """Return the pH of each well of a plan, none where [bench] names no pH."""
+    name = sheets.study.definition.bench.ph_factor
+    return [] if name is None else sheets.rows[name].dropna().astype(float).tolist()
+
+
+def _before(sheets: Sheets) -> Iterator[str]:
+    yield "Plan and map agree: the fingerprint of the map is that of this page."
+    yield "Site procedures read, cautions above gone through, eyes and hands protected."
+    if sheets.load is not None:
+        yield protein_line(sheets.load, sheets.study.definition)
+    kept = [
+        f"{name} {value if isinstance(value, str) else number(value)}"
+        for name, value in sheets.study.definition.fixed.items()
+    ]
+    if kept:
+        yield f"What the window is conditional on is as it was: {', '.join(kept)}."
+
+
+def _bottles(sheets: Sheets) -> list[list[str]]:
+    """A line a bottle, in columns: name, volume to have, what it holds."""
+    totals, dead = sheets.totals, sheets.study.definition.bench.dead_volume_ul
+    if not totals:
+        return []
+    stays = "" if dead is None else f", and {number(dead / 1000)} mL that stay behind"
+    width = max(len(total.stock) for total in totals)
+    lines = [
+        f"{_BOX}{total.stock:<{width}} {volume_ml(total.needed_ul):>11}  {_holds(sheets, total)}"
+        for total in totals
+    ]
+    items = [_item("", f"Have what is drawn{stays}:"), *([line.rstrip()] for line in lines)]
+    return [*items, *(_item(_BOX, said) for said in _measured(sheets))]
+
+
+def _measured(sheets: Sheets) -> Iterator[str]:
+    ph = sheets.study.definition.bench.ph_factor
+    levels = [bottle for bottle in sheets.bottles if bottle.by_level]
+    if levels:
+        yield (
+            f"Measure each bottle, and write {'pH and ' if ph else ''}what it measured to "
+            f"stocks/{sheets.plate}.csv (factor, target, measured): the model uses measured values."
+        )
+
+
+def _holds(sheets: Sheets, total: Total) -> str:
+    strength = sheets.study.definition.bench.protein_mg_per_ml
+    if total.stock == LOAD:
+        return f"protein {number(strength or 0.0)} mg/mL"
+    bottle = next(b for b in sheets.bottles if b.name == total.stock)
+    return held_text(sheets.study.definition, bottle)
+
+
+def _recipes(sheets: Sheets) -> Iterator[str]:
+    """What bottles are made from, and what is remarked on them and on the liquids of wells."""
+    remarked = [of for of in sheets.mixes if of.mix.recipe.remarks]
+    if sheets.makings or remarked:
+        yield (
+            "Recipes are starting points: measure the pH, and titrate where it is off. Make as "
+            "much as that takes, and no less than stands above."
+        )
+    yield from sheets.buffers
+    for name, recipe in sheets.makings.items():
+        parts = "; ".join(f"{stock} {1000 * share:.1f}" for stock, share in recipe.parts.items())
+        yield "; ".join([f"{name}, mL per litre: {parts}", *recipe.remarks]) + "."
+    if taken := _taken(sheets):
+        yield f"In all, the bottles at the volumes above take {taken}."
+    for of in remarked:
+        liquid = condition_part(sheets.study.definition, of.mix.condition)
+        said = "; ".join(of.mix.recipe.remarks)
+        yield f"{liquid} ({listed(of.wells)}): {said}."
+
+
+def _taken(sheets: Sheets) -> str:
+    """What all bottles together take of the stocks that they are made from."""
+    sums: Counter[str] = Counter()
+    for parts in made_ul(sheets).values():
+        sums.update(parts)
+    return ", ".join(f"{volume_ml(Decimal(ul))} of {stock}" for stock, ul in sums.items())
+
+
+def _plate(sheets: Sheets) -> Iterator[str]:
+    definition, draws = sheets.study.definition, sheets.transfers
+    by = definition.plan.prepared_by
+    if by != "well":
+        fed = [f.label for f in definition.factors if f.name in definition.stock_factors]
+        side = "beside the rows" if by == "row" else "below the columns"
+        yield f"Each {by} is fed one {' and '.join(fed)}: it stands {side} of the map."
+    if any(of.mix.steps for of in sheets.mixes):
+        volume = number(definition.bench.well_ul or 0.0)
+        count = sum(t.stock != LOAD for t in draws)
+        yield (
+            f"Mix the liquids on a plate of their own, in the wells of the same names: "
+            f"{counted(count, 'draw')} of transfers.csv, {volume} µL in each well. Mix before use."
+        )
+    if sheets.load is not None and sheets.load.steps:
+        count = sum(t.stock == LOAD for t in draws)
+        yield f"Load the resin plate: the {counted(count, 'draw')} of {LOAD} in transfers.csv."
+    yield "Controls as on the map: no protein into blanks, no resin where the map says so."
+    yield "Balance the rotor before each spin."
+    yield (
+        f"Fill the readings into {sheets.file} (what differs from the plan too) and move it to "
+        f"plates/{sheets.plate}.csv."
+    )
+
+
+def _files(files: Iterable[str]) -> Iterator[str]:
+    there = {*files}
+    for names, said in _FILES.items():
+        if names.split(", ")[0] in there:
+            yield f"{names}: {said}"

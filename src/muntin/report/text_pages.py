@@ -1,0 +1,58 @@
+"""Lines of text as pages in A4, and figures as one PDF."""
+
+from __future__ import annotations
+
+import io
+from collections.abc import Sequence
+from typing import TYPE_CHECKING, Any
+
+from muntin.report.style import INK, PAPER
+
+if TYPE_CHECKING:
+    from matplotlib.figure import Figure
+
+_A4 = (8.27, 11.69)  # inches
+_LINES = 58
+_LEFT, _TOP, _LEADING, _SIZE = 0.85, 10.95, 0.174, 9.0
+
+
+def text_pages(lines: Sequence[str]) -> list[Figure]:
+    """Return pages, the long side up, that show lines of at most 84 signs in type of one width."""
+    from matplotlib.figure import Figure
+
+    # A heading does not stand alone at the foot of a page.
+    pages: list[list[str]] = [[]]
+    for at, line in enumerate(lines):
+        room = _LINES - len(pages[-1])
+        if room < 1 or (room < 4 and line.isupper() and at):
+            pages.append([])
+        if line or pages[-1]:
+            pages[-1].append(line)
+    figures = []
+    for number, page in enumerate(pages, start=1):
+        figure = Figure(figsize=_A4, facecolor=PAPER)
+        for row, line in enumerate(page):
+            y = (_TOP - row * _LEADING) / _A4[1]
+            weight = "bold" if line.isupper() else "normal"
+            style: dict[str, Any] = {
+                "family": "monospace",
+                "fontsize": _SIZE,
+                "color": INK,
+                "fontweight": weight,
+            }
+            figure.text(_LEFT / _A4[0], y, line, va="top", parse_math=False, **style)
+        foot = f"page {number} of {len(pages)}"
+        figure.text(1 - _LEFT / _A4[0], 0.04, foot, ha="right", fontsize=8.5, color=INK)
+        figures.append(figure)
+    return figures
+
+
+def pdf_of(figures: Sequence[Figure]) -> bytes:
+    """Return figures as the pages of a PDF file, the same bytes whenever it is drawn."""
+    from matplotlib.backends.backend_pdf import PdfPages
+
+    stream = io.BytesIO()
+    with PdfPages(stream, metadata={"CreationDate": None}) as pages:
+        for figure in figures:
+            pages.savefig(figure)
+    return stream.getvalue()

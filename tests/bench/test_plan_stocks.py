@@ -1,0 +1,85 @@
+"""Plans leave out what the stocks of [bench] cannot make."""
+
+from __future__ import annotations
+
+from dataclasses import replace
+from pathlib import Path
+from typing import Any
+
+import pytest
+
+import muntin
+from muntin.bench.sheets import prepare
+from muntin.record import StudyFaults, open_study
+from muntin.report.plan_files import plan_table_text, write_plan
+from muntin.window.assessment import Assessment
+from tests.bench.bottled import HIGH, LOW, bottled
+
+WEAK = [LOW, {**HIGH, "holds": {"salt": 260}}]
+ROWS: list[Any] = []
+
+
+@pytest.fixture(scope="module")
+def light(tmp_path_factory: pytest.TempPathFactory) -> Assessment:
+    view = muntin.assess(open_study(bottled(tmp_path_factory.mktemp("a"), ROWS)), "quadratic")
+    surfaces = {name: surface.lightened(2) for name, surface in view.surfaces.items()}
+    return replace(view, surfaces=surfaces)
+
+
+def under(light: Assessment, folder: Path, **changed: Any) -> Assessment:
+    """The same posterior with another bench."""
+    return replace(light, study=open_study(bottled(folder, ROWS, **changed)))
+
+
+def told(plan: muntin.Plan) -> list[str]:
+    return [notice for notice in plan.notices if "mixed" in notice]
+
+
+def test_no_well_is_planned_that_cannot_be_mixed(light: Assessment, tmp_path: Path) -> None:
+    free = muntin.propose(light, wells=12)
+    assert (free.wells["salt"] > 250).any()
+    assert told(free) == []
+    view = under(light, tmp_path, stocks=WEAK)
+    plan = muntin.propose(view, wells=12)
+    assert plan.wells["salt"].max() <= 250
+    # 4 of 9 levels of salt, at each of 7 pH.
+    assert told(plan) == [
+        "28 of 63 candidates cannot be mixed from the stocks (study.toml, [bench]) and were not "
+        "chosen"
+    ]
+    write_plan(tmp_path, plan.plate, plan_table_text(view.study.definition, plan))
+    assert len(prepare(view.study).rows) == len(plan.wells)
+
+
+def test_bottles_that_make_all_change_nothing(light: Assessment, tmp_path: Path) -> None:
+    bare = under(light, tmp_path / "bare", stocks=None)
+    full = muntin.propose(light, wells=6)
+    plain = muntin.propose(bare, wells=6)
+    assert full.wells.equals(plain.wells)
+    assert full.notices == plain.notices
+
+
+def test_small_draws_are_avoided_too(light: Assessment, tmp_path: Path) -> None:
+    view = under(light, tmp_path, pipette_floor_ul=100)
+    salts = muntin.propose(view, wells=12).wells["salt"].dropna()
+    # 100 of 400 µL: from a quarter to three quarters of 500 mM.
+    assert salts.between(125, 375).all()
+
+
+def test_kept_rows_stay_and_are_pointed_out(light: Assessment, tmp_path: Path) -> None:
+    view = under(light, tmp_path, stocks=WEAK)
+    rows = [("A1", "test", 5.0, 400), ("A2", "test", 5.0, 200)]
+    bottled(tmp_path, rows, stocks=WEAK)
+    plan = muntin.propose(view, keep=tmp_path / "plans" / "plate-02.csv")
+    assert plan.wells["salt"].tolist() == [400, 200]
+    assert told(plan)[-1] == (
+        "1 kept condition cannot be mixed from the stocks: muntin prepare says why, and names the "
+        "nearest that can"
+    )
+
+
+def test_stocks_that_make_nothing(light: Assessment, tmp_path: Path) -> None:
+    view = under(light, tmp_path, stocks=[LOW])
+    with pytest.raises(StudyFaults) as raised:
+        muntin.propose(view, wells=4)
+    assert "are the stocks of study.toml, [bench] strong enough?" in str(raised.value)
