@@ -215,6 +215,65 @@ def test_a_plate_of_fractions_among_plates_of_per_cent_is_pointed_out(make):
     ]
 
 
+def per_cent_study(make, targets, readings):
+    toml = STUDY.replace("at_least = 0.8", f'{targets}\nunit = "%"')
+    rows = [f"A{n},5.5,{n}0,Beta,{reading}\n" for n, reading in enumerate(readings, start=1)]
+    return open_study(make({TOML: toml, CSV: "well,ph,salt,resin,recovery\n" + "".join(rows)}))
+
+
+@pytest.mark.parametrize(
+    ("targets", "readings", "odd"),
+    [
+        ("at_least = 0.8", ("83", "91"), {"at_least": ("0.8", "80")}),
+        ("at_least = 1", ("83", "91"), {"at_least": ("1", "100")}),
+        ("at_least = 1.01", ("83", "91"), {}),
+        ("at_most = 0.955", ("83", "91"), {"at_most": ("0.955", "95.5")}),
+        (
+            "at_least = 0.8\nat_most = 0.95",
+            ("83", "91"),
+            {"at_least": ("0.8", "80"), "at_most": ("0.95", "95")},
+        ),
+        # An impurity that must stay low, and does in one well.
+        ("at_most = 0.5", ("0.4", "7"), {}),
+        ("at_least = 80", ("83", "91"), {}),
+        # Before any plate was run.
+        ("at_least = 0.8", (), {"at_least": ("0.8", "80")}),
+    ],
+)
+def test_a_target_that_looks_like_a_fraction_in_a_study_in_per_cent(make, targets, readings, odd):
+    study = per_cent_study(make, targets, readings)
+    assert [notice for notice in study.notices if "is taken as" in notice] == [
+        f"study.toml, responses, recovery, {name}: {value} is taken as {value} %, as the unit is "
+        f"%; for {meant} % write {meant}"
+        for name, (value, meant) in odd.items()
+    ]
+
+
+@pytest.mark.parametrize(
+    ("readings", "told"),
+    [
+        (
+            ("80", "0.912", "97", "85"),
+            "1 reading of recovery at most 1.5 % (A2 0.912), all others at least 80 %; left in; "
+            "is it a fraction of 1?",
+        ),
+        (
+            ("80", "0.912", "97", "1.04"),
+            "2 readings of recovery at most 1.5 % (A2 0.912, A4 1.04), all others at least 80 %; "
+            "left in; are they fractions of 1?",
+        ),
+        # Low recoveries do occur: 4 % here, then a true zero, then what a hundredfold is too low.
+        (("80", "0.912", "97", "4"), ""),
+        (("80", "0.912", "97", "-0.1"), ""),
+        (("80", "0.3", "97", "85"), ""),
+    ],
+)
+def test_single_fractions_among_per_cent_are_pointed_out(make, readings, told):
+    notices = per_cent_study(make, "at_least = 80", readings).notices
+    odd = [notice for notice in notices if "of 1?" in notice]
+    assert odd == ([f"plate-01: {told}"] if told else [])
+
+
 @pytest.mark.parametrize(
     ("unit", "readings", "shown"),
     [("", ("-0.11", "-0.1"), "-0.1"), ("%", ("-10.5", "-10"), "-10 %")],

@@ -12,6 +12,8 @@ from muntin.record.faults import counted, listed, number, quoted
 from muntin.record.responses import Response
 
 _LIKE_FRACTIONS = 1.5
+_PLAIN_PER_CENT = 10.0
+_NEAR = 1.5
 
 
 def definition_notices(definition: Definition) -> Iterator[str]:
@@ -85,15 +87,61 @@ def _odd_fractions(response: Response, wells: pd.DataFrame) -> Iterator[str]:
             f"{'-10 %' if response.per_cent else '-0.1'} ({listed(names)}), left in; "
             "is the blank right?"
         )
-    if not response.per_cent or wells.empty:
-        return
-    question = f"are they fractions of 1? (study.toml, responses, {name}, unit)"
+    if response.per_cent:
+        yield from _odd_targets(response, wells)
+        if not wells.empty:
+            yield from _like_fractions(response, wells)
+
+
+def _odd_targets(response: Response, wells: pd.DataFrame) -> Iterator[str]:
+    """Yield targets of at most 1 %, which look like fractions.
+
+    An impurity may have to stay below 1 %: an upper target that a reading meets is not asked about.
+    """
+    met = (wells[response.name] <= 1).any()
+    for name, value in (("at_least", response.at_least), ("at_most", response.at_most)):
+        if value is not None and value <= 1 and not (name == "at_most" and met):
+            yield (
+                f"study.toml, responses, {response.name}, {name}: {number(value)} is taken as "
+                f"{number(value)} %, as the unit is %; for {number(100 * value)} % "
+                f"write {number(100 * value)}"
+            )
+
+
+def _like_fractions(response: Response, wells: pd.DataFrame) -> Iterator[str]:
+    """Yield plates and single wells whose readings look like fractions among per cent."""
+    name = response.name
+    question = f"fractions of 1? (study.toml, responses, {name}, unit)"
     highest = wells.groupby("plate", sort=False)[name].max()
     if (highest <= _LIKE_FRACTIONS).all():
-        yield f"{name}: no reading lies above 1.5 %; {question}"
+        yield f"{name}: no reading lies above 1.5 %; are they {question}"
         return
-    for plate in highest.index[highest <= _LIKE_FRACTIONS]:
-        yield f"{plate}: no reading of {name} lies above 1.5 %, as they do elsewhere; {question}"
+    whole = highest.index[highest <= _LIKE_FRACTIONS]
+    for plate in whole:
+        yield (
+            f"{plate}: no reading of {name} lies above 1.5 %, as they do elsewhere; "
+            f"are they {question}"
+        )
+    yield from _single_fractions(name, wells[~wells["plate"].isin(whole)])
+
+
+def _single_fractions(name: str, wells: pd.DataFrame) -> Iterator[str]:
+    """Yield single readings that would fit the others a hundredfold, where no other is so low."""
+    small = wells[name] <= _LIKE_FRACTIONS
+    others = wells[name][~small]
+    fits = (100 * wells[name][small]).between(others.min() / _NEAR, others.max() * _NEAR)
+    if others.min() < _PLAIN_PER_CENT or not fits.all():
+        return
+    for plate, group in wells[small].groupby("plate", sort=False):
+        shown = (
+            f"{well} {number(value)}"
+            for well, value in zip(group["well"], group[name], strict=True)
+        )
+        yield (
+            f"{plate}: {counted(len(group), 'reading')} of {name} at most 1.5 % "
+            f"({listed(shown)}), all others at least {number(others.min())} %; left in; "
+            f"{'is it a fraction' if len(group) == 1 else 'are they fractions'} of 1?"
+        )
 
 
 def _reasons(wells: pd.DataFrame, column: str, what: str) -> Iterator[str]:
