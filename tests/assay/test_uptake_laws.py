@@ -4,18 +4,21 @@ from __future__ import annotations
 
 import numpy as np
 import pytest
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 from scipy.integrate import quad
 
 from muntin.assay.uptake_core import core_share, core_time
 from muntin.assay.uptake_laws import LAWS, Core, FirstOrder, Law, Pores, laws_for
 
+STEADY = settings(deadline=None, derandomize=True)
+
 EVERY = pytest.mark.parametrize("law", LAWS, ids=lambda law: law.name)
 TAKES = st.floats(0.02, 50.0)
 
 
 @EVERY
+@STEADY
 @given(takes=TAKES, times=st.lists(st.floats(0.0, 200.0), min_size=2, max_size=8))
 def test_shares_rise_from_nothing_to_all(law: Law, takes: float, times: list[float]) -> None:
     shares = law.share(np.sort(times), takes)
@@ -25,6 +28,7 @@ def test_shares_rise_from_nothing_to_all(law: Law, takes: float, times: list[flo
 
 
 @EVERY
+@STEADY
 @given(takes=TAKES)
 def test_half_is_reached_after_the_half_time(law: Law, takes: float) -> None:
     assert float(law.share(1.0, takes)) == pytest.approx(0.5, abs=2e-4)
@@ -32,6 +36,7 @@ def test_half_is_reached_after_the_half_time(law: Law, takes: float) -> None:
 
 
 @EVERY
+@STEADY
 @given(takes=TAKES, share=st.floats(0.05, 0.97), half_time=st.floats(0.1, 1e4))
 def test_time_to_a_share_is_when_the_share_is_reached(
     law: Law, takes: float, share: float, half_time: float
@@ -41,6 +46,7 @@ def test_time_to_a_share_is_when_the_share_is_reached(
 
 
 @EVERY
+@STEADY
 @given(takes=TAKES, half_time=st.floats(0.1, 1e4))
 def test_rate_times_half_time_is_where_half_is_reached(
     law: Law, takes: float, half_time: float
@@ -79,6 +85,7 @@ def test_film_takes_all_that_arrives_until_the_resin_is_full() -> None:
     assert float(film.share(2.0 * full / half, takes)) == 1.0
 
 
+@STEADY
 @given(takes=st.floats(1.0, 50.0), time=st.floats(0.01, 20.0))
 def test_a_film_with_resin_to_spare_is_first_order(takes: float, time: float) -> None:
     expected = float(FirstOrder().share(time, 0.0))

@@ -4,12 +4,15 @@ from __future__ import annotations
 
 import numpy as np
 import pytest
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from muntin.assay.uptake_pairs import Pair, first_order_through, second_order_through
 
+STEADY = settings(deadline=None, derandomize=True)
 
+
+@STEADY
 @given(k=st.floats(1e-4, 0.3), level=st.floats(0.1, 300.0), t=st.floats(1.0, 60.0))
 def test_first_order_law_is_found_again(k: float, level: float, t: float) -> None:
     times = (t, 2.5 * t)
@@ -23,6 +26,7 @@ def test_first_order_law_is_found_again(k: float, level: float, t: float) -> Non
     assert found.t95 == pytest.approx(np.log(20.0) / k, rel=1e-4)
 
 
+@STEADY
 @given(k=st.floats(1e-6, 1e-2), level=st.floats(1.0, 300.0), t=st.floats(1.0, 60.0))
 def test_second_order_law_is_found_again(k: float, level: float, t: float) -> None:
     times = (t, 3.0 * t)

@@ -7,7 +7,7 @@ from functools import cache
 
 import numpy as np
 import pytest
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from muntin.assay.uptake import Uptake, judge_uptake
@@ -15,6 +15,8 @@ from muntin.assay.uptake_laws import FirstOrder
 from muntin.assay.uptake_remarks import Remark, phase_ratio_remark, uptake_remarks
 from muntin.assay.uptake_table import Curve
 from tests.assay.curves import PRIORS, curve, drawn
+
+STEADY = settings(deadline=None, derandomize=True)
 
 LONG = (3.0, 6.0, 12.0, 20.0, 35.0, 60.0, 120.0, 240.0)
 
@@ -51,6 +53,7 @@ def test_phase_ratios_at_their_bounds(ratio: float, loud: bool | None) -> None:
         assert f"{ratio:g}" in found.sentence
 
 
+@STEADY
 @given(ratio=st.floats(1e-6, 1e6))
 def test_no_phase_ratio_is_refused(ratio: float) -> None:
     found = phase_ratio_remark(ratio)
