@@ -80,8 +80,8 @@ def test_verdict_in_a_sentence(tmp_path, stop, said):
         ),
         (
             {"wrong_share": 0.01, "best_probability": 0.95},
-            "Go on, but up to 24 test wells are not expected to meet the stop rule (after 24: "
-            "2.0 % called wrongly, rule 1 %; chance of a set point at 95 %: under 1 %).",
+            "Go on, but do not count on stopping soon: up to 24 test wells are not expected to meet "
+            "the stop rule (after 24: 2.0 % called wrongly, rule 1 %; chance of a set point at 95 %: under 1 %).",
         ),
     ],
 )
@@ -162,7 +162,7 @@ WELLS = "test wells 0 6 12 24"
 OUTLAY = ["protein, mg 0 4 5.5 8.5", "days 0.0 2.0 2.1 4.2"]
 SHARES = "may be called wrongly 5.0 % 4.0 % 3.0 % 2.0 %"
 PASSES = "set point passes 80.0 % 81.0 % 82.0 % 83.0 %"
-REACHES = "set point reaches {} % 0 % 35 % 62 % 40 %"
+REACHES = "chance that set point reaches {} % no 35 % 62 % 40 %"
 
 
 @pytest.mark.parametrize(

@@ -302,7 +302,8 @@ def test_sizes_of_scatter_are_told_in_the_unit_of_the_readings(tmp_path):
     response = {**RECOVERY, "unit": "%", "at_least": 80}
     found, _ = checks(tmp_path, plates, "quadratic", responses=[response])
     said = found["lack of fit"].sentence
-    assert said.startswith("Recovery: conditions scatter about the surface no more than repeats do")
+    start = "Recovery: conditions do not clearly scatter about the surface by more than repeats do"
+    assert said.startswith(start)
     assert said.endswith("; 8 repeats 1.4 %).")
 
 
