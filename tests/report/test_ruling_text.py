@@ -80,8 +80,9 @@ def test_verdict_in_a_sentence(tmp_path, stop, said):
         ),
         (
             {"wrong_share": 0.01, "best_probability": 0.95},
-            "Go on, but do not count on stopping soon: up to 24 test wells are not expected to meet "
-            "the stop rule (after 24: 2.0 % called wrongly, rule 1 %; chance of a set point at 95 %: under 1 %).",
+            "Go on, but do not count on stopping soon: up to 24 test wells are not expected to "
+            "meet the stop rule (after 24: 2.0 % called wrongly, rule 1 %; chance of a set point "
+            "at 95 %: under 1 %).",
         ),
     ],
 )
