@@ -187,9 +187,10 @@ def test_words_on_an_edit_need_an_edited_plan(study: Path) -> None:
 def test_where_the_plan_cannot_be_written_nothing_is_left(
     study: Path, monkeypatch: pytest.MonkeyPatch
 ) -> None:
+    from muntin.record import files
     from muntin.record.faults import Fault, StudyFaults
-    from muntin.record.files import write_atomic
-    from muntin.report import plan_files
+
+    write_atomic = files.write_atomic
 
     def failing(path: Path, content: str) -> None:
         if path.parent.name == "plans" and path.suffix == ".csv":
@@ -198,7 +199,7 @@ def test_where_the_plan_cannot_be_written_nothing_is_left(
 
     path, _ = edited(study)
     before = tree(study)
-    monkeypatch.setattr(plan_files, "write_atomic", failing)
+    monkeypatch.setattr(files, "write_atomic", failing)
     result = run("propose", study, "--keep", path, *QUICK)
     assert result.exit_code == 2
     assert tree(study) == before

@@ -151,7 +151,7 @@ def test_every_condition_has_a_row_where_all_fit(view: Assessment) -> None:
     assert tables(view, WELLS)[0] == [
         "wells pH Salt (mM) p now why",
         "1 5.0 100 0.20 reason of A2",
-        "2 5.0 200 0.45 reason of A3",
+        "2 5.0 200 0.45 reason of A3 (1); reason of A4 (1)",
         "1 6.0 150 0.30 reason of A5",
         "1 6.0 300 0.90 reason of A1",
     ]
@@ -193,7 +193,7 @@ def test_else_the_first_conditions_are_shown(view: Assessment) -> None:
     assert plain(first_conditions(view.study.definition, WELLS, 1)) == [
         "wells pH Salt (mM) p now why",
         "1 5.0 100 0.20 reason of A2",
-        "4 3 more conditions: see the plan's table",
+        "4 3 more conditions",
     ]
 
 

@@ -146,7 +146,7 @@ def _conditions(
     ]
     table = _filled(["wells", *map(_heading, factors)], body, [], why)
     if more:
-        said = f"{counted(more, 'more condition')}: see the plan's table"
+        said = counted(more, "more condition")
         blanks = [""] * (len(table.columns) - 2)
         table.add_row(str(more_wells), *blanks, said)
     return table

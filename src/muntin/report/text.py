@@ -212,7 +212,7 @@ def standing(view: Assessment, window: Window | None, few_lines: int = _FEW) -> 
     return [
         ("Read", read_lines(study)),
         ("Noted", [*notes, *few(study.notices, few_lines)]),
-        ("Checks", few(checks, few_lines + _FEW, "see --json")),
+        ("Checks", few(checks, max(_FEW, 2 * few_lines), "see --json")),
         ("Window", window_lines(view, window, few_lines)),
     ]
 
