@@ -6,7 +6,7 @@ from collections.abc import Iterable, Iterator, Mapping, Sequence
 from decimal import Decimal
 from typing import Literal
 
-from muntin.record.buffers import Buffer, SaltKind, buffer_faults
+from muntin.record.buffers import Buffer, SaltKind, bench_fault, buffer_faults
 from muntin.record.factors import Factor
 from muntin.record.faults import Fault, did_you_mean, listed, number, quoted
 from muntin.record.keys import Keys, Number, NumberOrText, Text, key
@@ -130,7 +130,7 @@ def bench_faults(bench: Bench, factors: Sequence[Factor]) -> Iterator[Fault]:
         lacking = sorted((bench.held & {*by_name}) - {*bench.control_condition})
         if lacking:
             problem = "lacks what the stocks set:"
-            yield _fault(where, "", problem, allowed=listed(lacking))
+            yield bench_fault(where, "", problem, allowed=listed(lacking))
 
 
 def _stock_faults(bench: Bench, by_name: Mapping[str, Factor]) -> Iterator[Fault]:
@@ -143,47 +143,49 @@ def _stock_faults(bench: Bench, by_name: Mapping[str, Factor]) -> Iterator[Fault
             yield from _factor_faults(f"{where}, per", stock.per, [*by_name])
             if stock.per in stock.holds:
                 problem = "is set by per already, a bottle for each level"
-                yield _fault(f"{where}, holds", quoted(stock.per), problem)
+                yield bench_fault(f"{where}, holds", quoted(stock.per), problem)
         yield from _held_faults(f"{where}, holds", stock.holds, by_name, bench.every_mix)
 
 
 def _name_faults(name: str, seen: set[str]) -> Iterator[Fault]:
     plain, where = name.strip().casefold(), f"stocks, {name}, name"
     if not plain:
-        yield _fault(where, quoted(name), "is empty")
+        yield bench_fault(where, quoted(name), "is empty")
     elif plain == LOAD:
-        yield _fault(where, quoted(name), "is the name of the protein's solution")
+        yield bench_fault(where, quoted(name), "is the name of the protein's solution")
     elif plain in seen:
-        yield _fault(where, quoted(name), "is there twice")
+        yield bench_fault(where, quoted(name), "is there twice")
 
 
 def _volume_faults(bench: Bench) -> Iterator[Fault]:
     volume, floor, step = bench.well_ul, bench.pipette_floor_ul, bench.pipette_step_ul
     if floor is not None and volume is not None and floor > volume:
         problem = "lies above well_ul, which is"
-        yield _fault("pipette_floor_ul", number(floor), problem, allowed=number(volume))
+        yield bench_fault("pipette_floor_ul", number(floor), problem, allowed=number(volume))
     if step is None:
         return
     for name, given in (("well_ul", volume), ("pipette_floor_ul", floor)):
         if given is not None and whole_steps(given, step) is None:
             close = Decimal(str(step)) * max(1, round(given / step))
             problem = f"is not a whole number of steps of {number(step)} µL; nearest is"
-            yield _fault(name, number(given), problem, "pipette_step_ul", number(float(close)))
+            yield bench_fault(
+                name, number(given), problem, hint="pipette_step_ul", allowed=number(float(close))
+            )
 
 
 def _every_mix_faults(bench: Bench, factors: Mapping[str, Factor]) -> Iterator[Fault]:
     for name, value in bench.every_mix.items():
         where = f"every_mix, {name}"
         if name in factors:
-            yield _fault(where, quoted(name), "is a factor; each mix holds its own")
+            yield bench_fault(where, quoted(name), "is a factor; each mix holds its own")
         elif value < 0:
-            yield _fault(where, number(value), "must be 0 or above")
+            yield bench_fault(where, number(value), "must be 0 or above")
 
 
 def _factor_faults(where: str, name: str, known: Sequence[str]) -> Iterator[Fault]:
     if known and name not in known:
         problem = "is not a factor" + (" with a range" if where == "ph_factor" else "")
-        yield _fault(where, quoted(name), problem, did_you_mean(name, known))
+        yield bench_fault(where, quoted(name), problem, hint=did_you_mean(name, known))
 
 
 def _held_faults(
@@ -198,17 +200,6 @@ def _held_faults(
             yield from _factor_faults(where, name, [*factors, *more])
         elif factor is not None and factor.choices is not None and value not in factor.choices:
             hint = did_you_mean(str(value), factor.choices)
-            yield _fault(f"{where}, {name}", quoted(value), "is not a choice", hint)
+            yield bench_fault(f"{where}, {name}", quoted(value), "is not a choice", hint=hint)
         elif (factor is None or factor.continuous) and (isinstance(value, str) or value < 0):
-            yield _fault(f"{where}, {name}", quoted(value), "is not a number of 0 or above")
-
-
-def _fault(where: str, value: str, problem: str, hint: str = "", allowed: str = "") -> Fault:
-    return Fault(
-        file=_FILE,
-        where=f"bench, {where}",
-        value=value,
-        problem=problem,
-        allowed=allowed,
-        hint=hint,
-    )
+            yield bench_fault(f"{where}, {name}", quoted(value), "is not a number of 0 or above")

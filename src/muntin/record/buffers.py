@@ -105,20 +105,20 @@ def buffer_faults(bench: Bench, factors: Sequence[Factor]) -> Iterator[Fault]:
     yield from _salt_faults(bench, factors)
     if bench.buffers and bench.ph_factor is None:
         problem = "must name the factor that is the pH where there are [[bench.buffers]]"
-        yield _fault("ph_factor", "", problem)
+        yield bench_fault("ph_factor", "", problem)
     for buffer in bench.buffers:
         where = f"buffers, {buffer.name}"
         if buffer.mm > buffer.stock_mm:
             problem = "lies above stock_mm, which is"
-            yield _fault(f"{where}, mm", number(buffer.mm), problem, number(buffer.stock_mm))
+            yield bench_fault(f"{where}, mm", number(buffer.mm), problem, number(buffer.stock_mm))
         low, high = buffer.from_ph, buffer.below_ph
         if low is not None and high is not None and low >= high:
             problem = "must lie below below_ph, which is"
-            yield _fault(f"{where}, from_ph", number(low), problem, number(high))
+            yield bench_fault(f"{where}, from_ph", number(low), problem, number(high))
         own = [n for n in ("pka", "pka_per_c", "charge", "stock_charges") if _given(buffer, n)]
         if buffer.known is not None and own:
             problem = f"is known; {', '.join(own)} belong to a buffer of your own, by another name"
-            yield _fault(f"{where}, name", quoted(buffer.name), problem)
+            yield bench_fault(f"{where}, name", quoted(buffer.name), problem)
         elif buffer.known is None:
             yield from _own_faults(buffer, where)
     yield from _name_faults(bench)
@@ -133,23 +133,23 @@ def _own_faults(buffer: Buffer, where: str) -> Iterator[Fault]:
     if buffer.pka is None:
         hint = did_you_mean(buffer.name, KNOWN_BUFFERS)
         problem = "is not a known buffer, and has no pka"
-        yield _fault(f"{where}, name", quoted(buffer.name), problem, hint=hint)
+        yield bench_fault(f"{where}, name", quoted(buffer.name), problem, hint=hint)
         return
     pka, slopes = list(buffer.pka), buffer.pka_per_c
     if not 1 <= len(pka) <= _MOST_PKA or any(not -2 <= value <= 16 for value in pka):
         allowed = f"1 to {_MOST_PKA} numbers from -2 to 16"
-        yield _fault(f"{where}, pka", _shown(pka), "must be", allowed)
+        yield bench_fault(f"{where}, pka", _shown(pka), "must be", allowed)
     if pka != sorted(set(pka)):
-        yield _fault(f"{where}, pka", _shown(pka), "must rise")
+        yield bench_fault(f"{where}, pka", _shown(pka), "must rise")
     if slopes is not None and (len(slopes) != len(pka) or any(abs(d) > 0.1 for d in slopes)):
         allowed = f"one number a pKa ({len(pka)}), from -0.1 to 0.1"
-        yield _fault(f"{where}, pka_per_c", _shown(slopes), "must be", allowed)
+        yield bench_fault(f"{where}, pka_per_c", _shown(slopes), "must be", allowed)
     if buffer.stock_charges is not None:
         acid, base = buffer.stock_charges
         top, bottom = buffer.top_charge, buffer.top_charge - len(pka)
         if not top >= acid > base >= bottom:
             problem = "must be the charge of the acid form, then the lower one of the base form,"
-            yield _fault(
+            yield bench_fault(
                 f"{where}, stock_charges", _shown((acid, base)), problem, f"from {top} to {bottom}"
             )
 
@@ -162,7 +162,7 @@ def _name_faults(bench: Bench) -> Iterator[Fault]:
         for other in bench.buffers[:i]:
             if other.name.strip().casefold() == name and _overlap(other, buffer):
                 problem = "is there twice, for the same pH"
-                yield _fault(f"{where}, name", quoted(buffer.name), problem)
+                yield bench_fault(f"{where}, name", quoted(buffer.name), problem)
     yield from _bottle_faults(bench)
 
 
@@ -186,7 +186,7 @@ def _bottle_faults(bench: Bench) -> Iterator[Fault]:
             unlike = ["is empty"]
         before.append(bottle)
         if unlike:
-            yield _fault(bottle.where, quoted(bottle.name), unlike[0])
+            yield bench_fault(bottle.where, quoted(bottle.name), unlike[0])
 
 
 def _bottles(bench: Bench) -> Iterator[_Bottle]:
@@ -221,15 +221,15 @@ def _salt_faults(bench: Bench, factors: Sequence[Factor]) -> Iterator[Fault]:
     ranged = {factor.name: factor for factor in factors if factor.continuous}
     if ranged and name not in ranged:
         problem = "is not a factor with a range"
-        yield _fault("salt_factor", quoted(name), problem, hint=did_you_mean(name, [*ranged]))
+        yield bench_fault("salt_factor", quoted(name), problem, hint=did_you_mean(name, [*ranged]))
     elif name in ranged and bench.buffers and ranged[name].unit not in SALT_UNITS:
         problem = "is no unit in which buffers count the salt; it must be one of"
         where = f"salt_factor, {name}, unit"
-        yield _fault(where, quoted(ranged[name].unit), problem, ", ".join(SALT_UNITS))
+        yield bench_fault(where, quoted(ranged[name].unit), problem, ", ".join(SALT_UNITS))
     if name == bench.ph_factor:
-        yield _fault("salt_factor", quoted(name), "is the pH already")
+        yield bench_fault("salt_factor", quoted(name), "is the pH already")
     if bench.buffers and bench.salt_stock_mm is None:
-        yield _fault("salt_stock_mm", "", "is missing; salt_factor needs a stock of the salt")
+        yield bench_fault("salt_stock_mm", "", "is missing; salt_factor needs a stock of the salt")
 
 
 def _overlap(one: Buffer, other: Buffer) -> bool:
@@ -241,7 +241,8 @@ def _shown(values: Sequence[float]) -> str:
     return "[" + ", ".join(map(number, values)) + "]"
 
 
-def _fault(where: str, value: str, problem: str, allowed: str = "", hint: str = "") -> Fault:
+def bench_fault(where: str, value: str, problem: str, allowed: str = "", hint: str = "") -> Fault:
+    """Return a fault of [bench]."""
     return Fault(
         file=_FILE,
         where=f"bench, {where}",
