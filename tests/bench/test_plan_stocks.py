@@ -7,6 +7,8 @@ from pathlib import Path
 from typing import Any
 
 import pytest
+from hypothesis import Phase, given, settings
+from hypothesis import strategies as st
 
 import muntin
 from muntin.bench.sheets import prepare
@@ -17,6 +19,8 @@ from tests.bench.bottled import HIGH, LOW, bottled
 
 WEAK = [LOW, {**HIGH, "holds": {"salt": 260}}]
 ROWS: list[Any] = []
+# The small study, from its own statement: levels of salt (mM), number of levels of pH, a well (µL).
+SALTS, PH_LEVELS, WELL_UL = range(50, 451, 50), 7, 400
 
 
 @pytest.fixture(scope="module")
@@ -64,6 +68,41 @@ def test_small_draws_are_avoided_too(light: Assessment, tmp_path: Path) -> None:
     salts = muntin.propose(view, wells=12).wells["salt"].dropna()
     # 100 of 400 µL: from a quarter to three quarters of 500 mM.
     assert salts.between(125, 375).all()
+
+
+@settings(deadline=None, derandomize=True, max_examples=40, phases=[Phase.generate])
+@given(
+    st.integers(0, 200),
+    st.integers(210, 700),
+    st.sampled_from([2, 20, 60]),
+    st.integers(1, 16),
+    st.sampled_from(["edge", "best", "both"]),
+)
+def test_no_bottles_and_no_pipette_are_asked_for_more_than_they_can(
+    light: Assessment,
+    tmp_path_factory: pytest.TempPathFactory,
+    weak: int,
+    strong: int,
+    floor_ul: int,
+    wells: int,
+    aim: Any,
+) -> None:
+    stocks = [{**LOW, "holds": {"salt": weak}}, {**HIGH, "holds": {"salt": strong}}]
+    folder = tmp_path_factory.mktemp("drawn")
+    view = under(light, folder, stocks=stocks, pipette_floor_ul=floor_ul)
+
+    def works(salt: float) -> bool:
+        draw = WELL_UL * (salt - weak) / (strong - weak)
+        return all(abs(ul) < 0.05 or ul >= floor_ul - 0.05 for ul in (draw, WELL_UL - draw))
+
+    try:
+        plan = muntin.propose(view, wells=wells, aim=aim)
+    except StudyFaults:
+        assert sum(works(salt) for salt in SALTS) * PH_LEVELS < wells
+        return
+    salts = plan.wells.loc[plan.wells["role"].isin(["test", "bridge"]), "salt"]
+    assert (plan.wells["role"] == "test").sum() == wells
+    assert all(works(salt) for salt in salts)
 
 
 def test_kept_rows_stay_and_are_pointed_out(light: Assessment, tmp_path: Path) -> None:
