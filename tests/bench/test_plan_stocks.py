@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import replace
 from pathlib import Path
 from typing import Any
@@ -28,6 +29,12 @@ def light(tmp_path_factory: pytest.TempPathFactory) -> Assessment:
     view = muntin.assess(open_study(bottled(tmp_path_factory.mktemp("a"), ROWS)), "quadratic")
     surfaces = {name: surface.lightened(2) for name, surface in view.surfaces.items()}
     return replace(view, surfaces=surfaces)
+
+
+@pytest.fixture(scope="module")
+def hidden(light: Assessment) -> Callable[[], Assessment]:
+    """The same behind a function: too long to be shown where an example fails."""
+    return lambda: light
 
 
 def under(light: Assessment, folder: Path, **changed: Any) -> Assessment:
@@ -79,7 +86,7 @@ def test_small_draws_are_avoided_too(light: Assessment, tmp_path: Path) -> None:
     st.sampled_from(["edge", "best", "both"]),
 )
 def test_no_bottles_and_no_pipette_are_asked_for_more_than_they_can(
-    light: Assessment,
+    hidden: Callable[[], Assessment],
     tmp_path_factory: pytest.TempPathFactory,
     weak: int,
     strong: int,
@@ -89,7 +96,7 @@ def test_no_bottles_and_no_pipette_are_asked_for_more_than_they_can(
 ) -> None:
     stocks = [{**LOW, "holds": {"salt": weak}}, {**HIGH, "holds": {"salt": strong}}]
     folder = tmp_path_factory.mktemp("drawn")
-    view = under(light, folder, stocks=stocks, pipette_floor_ul=floor_ul)
+    view = under(hidden(), folder, stocks=stocks, pipette_floor_ul=floor_ul)
 
     def works(salt: float) -> bool:
         draw = WELL_UL * (salt - weak) / (strong - weak)
