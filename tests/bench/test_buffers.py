@@ -152,8 +152,7 @@ def test_below_half_molar_it_says_what_it_is_meant_for():
 def test_above_half_molar_no_ph_is_predicted():
     recipe = at(ACETATE, 5.0, 600.0)
     assert recipe.remarks == (
-        "titrate to pH 5.0: at an ionic strength of 0.61 no pH is predicted, the volumes are where "
-        "to begin",
+        "titrate to pH 5.0 from these volumes: ionic strength 0.61, no pH predicted",
     )
     assert buffer_made(ACETATE, recipe.parts).ph is None
     assert buffer_made(ACETATE, at(ACETATE, 5.0, 400.0).parts).ph == pytest.approx(5.0, abs=1e-6)

@@ -136,7 +136,7 @@ def test_the_checklist_shows_recipes_remarks_and_says_measure(tmp_path: Path) ->
         assert sentence.endswith(".")
         assert sentence in flat
     for name, recipe in sheets.makings.items():
-        assert f"- {name}, mL per litre: " in flat
+        assert f"[ ] {name} " in flat
         for remark in recipe.remarks:
             assert remark in flat
     direct = prepare(opened(tmp_path / "direct", rows=ROWS, **DIRECT))

@@ -14,6 +14,7 @@ from muntin.record.bench import LOAD
 from muntin.record.faults import counted, listed, number
 from muntin.report.cautions import bench_cautions
 from muntin.report.plate_map import roles_text
+from muntin.report.recipe_lines import recipe_lines
 from muntin.report.sheet_tables import made_ul
 from muntin.report.sheet_words import condition_part, held_text, protein_line, volume_ml
 
@@ -38,7 +39,7 @@ def checklist_lines(sheets: Sheets, files: Iterable[str]) -> list[str]:
         ("Cautions", [_item("- ", said) for said in bench_cautions(ph_levels(sheets))]),
         ("Before the plate", [_item(_BOX, said) for said in _before(sheets)]),
         ("Bottles", _bottles(sheets)),
-        ("Recipes", [_item("- ", said) for said in _recipes(sheets)]),
+        ("Recipes", _recipes(sheets)),
         ("The plate", [_item(_BOX, said) for said in _plate(sheets)]),
         ("Not in these sheets", [_item("- ", said) for said in gaps(sheets)]),
         ("Files", [_item("- ", said) for said in _files(files)]),
@@ -118,24 +119,24 @@ def _holds(sheets: Sheets, total: Total) -> str:
     return held_text(sheets.study.definition, bottle)
 
 
-def _recipes(sheets: Sheets) -> Iterator[str]:
+def _recipes(sheets: Sheets) -> list[list[str]]:
     """What bottles are made from, and what is remarked on them and on the liquids of wells."""
     remarked = [of for of in sheets.mixes if of.mix.recipe.remarks]
+    said = [*sheets.buffers]
     if sheets.makings or remarked:
-        yield (
+        first = (
             "Recipes are starting points: measure the pH, and titrate where it is off. Make as "
             "much as that takes, and no less than stands above."
         )
-    yield from sheets.buffers
-    for name, recipe in sheets.makings.items():
-        parts = "; ".join(f"{stock} {1000 * share:.1f}" for stock, share in recipe.parts.items())
-        yield "; ".join([f"{name}, mL per litre: {parts}", *recipe.remarks]) + "."
+        said.insert(0, first)
     if taken := _taken(sheets):
-        yield f"In all, the bottles at the volumes above take {taken}."
+        said.append(f"In all, the bottles at the volumes above take {taken}.")
     for of in remarked:
         liquid = condition_part(sheets.study.definition, of.mix.condition)
-        said = "; ".join(of.mix.recipe.remarks)
-        yield f"{liquid} ({listed(of.wells)}): {said}."
+        remarks = "; ".join(of.mix.recipe.remarks)
+        said.append(f"{liquid} ({listed(of.wells)}): {remarks}.")
+    table = recipe_lines(sheets.makings, _WIDTH)
+    return [*(_item("- ", line) for line in said), *([[""]] if table else []), *table]
 
 
 def _taken(sheets: Sheets) -> str:
