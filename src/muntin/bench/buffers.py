@@ -133,8 +133,8 @@ def _too_full(parts: Mapping[str, float]) -> Refusal:
 def _remarks(wanted: Wanted, strength: float) -> Iterator[str]:
     if strength > HIGHEST_STRENGTH:
         yield (
-            f"titrate to pH {wanted.shown} from these volumes: ionic strength {strength:.2f}, no pH "
-            "predicted"
+            f"titrate to pH {wanted.shown} from these volumes: ionic strength {strength:.2f}, "
+            "no pH predicted"
         )
     else:
         at = f"{number(wanted.bench.temperature_c)} °C"

@@ -13,8 +13,7 @@ Condition = Mapping[str, Any]
 class Recipe:
     """Shares of the volume by stock, water among them; they are above 0 and add up to 1.
 
-    remarks: plain sentences for the bench, such as "titrate to pH 5.4: above an ionic strength of
-    0.5 no pH is predicted".
+    remarks: what the bench has to know, such as "meant for pH 5.4 at 22 °C; ionic strength 0.07".
     """
 
     parts: Mapping[str, float]
