@@ -10,6 +10,7 @@ import typer
 from muntin.commands.advise import advise
 from muntin.commands.assess import assess
 from muntin.commands.check import check
+from muntin.commands.confirm import confirm
 from muntin.commands.help import help as tell_names
 from muntin.commands.new import new
 from muntin.commands.prepare import prepare
@@ -28,6 +29,7 @@ COMMANDS = {
     prepare: "how do I run it?",
     rehearse: "is another plate worth it?",
     advise: "all of it between two plates",
+    confirm: "do columns agree?",
     tell_names: "what does a name mean?",
 }
 

@@ -131,12 +131,21 @@ def _screen(done: Session, study: Path) -> None:
     done.run("prepare", study)
     _sheets(done, study)
     done.run("advise", study, "--wells", 4, *QUICK)
+    _columns(done, study)
     done.run("rehearse", study, "--plates", 4, "--series", 1, *QUICK, "--workers", 1)
     with pytest.MonkeyPatch.context() as patch:
         patch.setattr(nuts, "sample", stand_in)
         done.run("assess", study, *QUICK, "--engine", "nuts", "--draws", study / "draws")
     _run_otherwise(study)
     done.run("check", study)
+
+
+def _columns(done: Session, study: Path) -> None:
+    done.run("confirm", study, *QUICK)
+    done.table("columns/<plan>.csv", study / "columns" / "plan.csv")
+    rows = "run,recovery,hcp,exclude\n1,0.9,300,\n2,0.9,300,\n3,0.9,,the pump stopped\n"
+    (study / "columns" / "column-01.csv").write_text(rows, encoding="utf-8")
+    done.run("confirm", study)
 
 
 def _plate() -> str:

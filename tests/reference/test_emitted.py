@@ -13,7 +13,7 @@ DOCUMENTS = sorted({name for part in PARTS for name in part.documents})
 WRITTEN = {
     sheet.file: sheet
     for sheet in SHEETS
-    if sheet.file.startswith(("sheets", "plans", "reductions", "OUT", "READS"))
+    if sheet.file.startswith(("sheets", "plans", "columns/<plan>", "reductions", "OUT", "READS"))
 }
 
 

@@ -6,6 +6,7 @@ import pytest
 
 from muntin.assay.uptake_table import _KNOWN
 from muntin.record.assay import READ_COLUMNS
+from muntin.record.column_runs import run_columns
 from muntin.record.definition import Definition
 from muntin.record.plates import plate_columns
 from muntin.record.readings import response_columns
@@ -21,6 +22,7 @@ KNOWN = {
     "stocks/<plate>.csv": COLUMNS,
     "uptake/<curve>.csv": _KNOWN,
     "READS": READ_COLUMNS,
+    "columns/<column>.csv": run_columns(DEFINITION),
 }
 
 

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from muntin.reference.fields_columns import CONFIRM
 from muntin.reference.fields_plans import ADVISE, PLAN, PREPARE, PROPOSE
 from muntin.reference.fields_reads import REDUCE, REDUCTION, UPTAKE
 from muntin.reference.fields_rehearsal import REHEARSE
@@ -18,6 +19,7 @@ _COMMANDS = (
     "prepare",
     "rehearse",
     "advise",
+    "confirm",
     "help",
 )
 _EVERY = Part(_COMMANDS, {"command": "the command that was run"})
@@ -52,6 +54,7 @@ PARTS = (
     REDUCTION,
     UPTAKE,
     REHEARSE,
+    CONFIRM,
     _NEW,
     _HELP,
 )

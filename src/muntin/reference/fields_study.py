@@ -31,7 +31,7 @@ FAULT = Part(
 )
 
 STUDY = Part(
-    ("check", "assess", "propose", "rehearse", "advise"),
+    ("check", "assess", "propose", "rehearse", "advise", "confirm"),
     {
         "study": "what was read",
         "study.folder": "folder of the study, as given",

@@ -13,6 +13,7 @@ from pydantic import BaseModel
 from pydantic.fields import FieldInfo
 
 from muntin.record.assay import FixedWell
+from muntin.record.column_plan import ColumnPlan
 from muntin.record.definition import Definition
 from muntin.record.edits import EditRecord
 from muntin.record.keys import Amount
@@ -22,6 +23,7 @@ from muntin.reference.entry import Entry
 
 NOTES = "plates/<plate>.toml"
 RECORD = "plans/<plate>.edit.toml"
+COLUMN_PLAN = "columns/<plan>.toml"
 _WORDS: dict[Any, str] = {
     float: "number",
     int: "whole number",
@@ -31,6 +33,7 @@ _WORDS: dict[Any, str] = {
     Amount: 'number, or a share such as "5 %"',
 }
 _SEVERAL = {"number": "numbers", "text": "texts", "whole number": "whole numbers"}
+_SEVERAL |= {"list of numbers": "lists of numbers"}
 _FEW = 2
 _BOUNDS = {"gt": "above", "ge": "at least", "lt": "below", "le": "at most"}
 
@@ -47,6 +50,12 @@ def key_entries() -> Iterator[Entry]:
         says="what was changed in a plan against the one offered; written by propose --keep",
     )
     yield from _keys(EditRecord, RECORD)
+    yield Entry(
+        kind="section",
+        name=COLUMN_PLAN,
+        says="what was predicted of column runs before they were made; written by confirm",
+    )
+    yield from _keys(ColumnPlan, COLUMN_PLAN)
 
 
 def _section(path: str, info: FieldInfo) -> Iterator[Entry]:

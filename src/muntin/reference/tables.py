@@ -101,6 +101,20 @@ _INPUTS = (
         },
     ),
     Sheet(
+        file="columns/<column>.csv",
+        says="column runs that were made, a row a run; never pooled with wells",
+        columns={
+            "run": "number of the planned run",
+            "<factor>": "what it was run at, within half a step of the plan; may be absent",
+            "<response>": _READING,
+            "<response>_sd": _SD,
+            "exclude": "a reason in words leaves the run out and keeps it on record",
+            "<response>_exclude": _OWN_OUT,
+            "place": "from the plan; not read",
+            "protein_mg": "from the plan; not read",
+        },
+    ),
+    Sheet(
         file="CONDITIONS",
         says="conditions to judge (assess --at), a row a condition",
         columns={
@@ -149,6 +163,19 @@ _OUTPUTS = (
             "exclude": "with propose --keep: a reason keeps the condition from being chosen again",
             "p_now": "judged probability of the condition on the day of planning",
             "reason": "why the well is there, in one sentence",
+        },
+    ),
+    Sheet(
+        file="columns/<plan>.csv",
+        says="planned column runs, written by confirm; fill it in and save it as "
+        "columns/<column>.csv",
+        columns={
+            "run": "number of the run, over all plans",
+            "place": "set point, edge, or end of the range",
+            "<factor>": "what to run it at, in the factor's unit",
+            "protein_mg": "protein that it takes, mg",
+            "<response>": "empty, for the reading",
+            "exclude": "empty, for a reason to leave it out",
         },
     ),
     Sheet(
