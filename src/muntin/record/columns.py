@@ -38,7 +38,11 @@ class Columns(Keys):
         le=24,
     )
     residence_min: Number | None = key(
-        None, says="residence time while loading, told beside the plate's", unit="min", gt=0
+        None,
+        says="residence time while loading, told beside the contact time on plates",
+        unit="min",
+        example=4.0,
+        gt=0,
     )
 
     def run_mg(self, load: float | None) -> float:
