@@ -11,7 +11,7 @@ V_ii - 1 / (1' V^-1 1).
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Literal
 
 import numpy as np
@@ -174,51 +174,77 @@ def _shared(
     """The shift of the runs of a response that were read, and the runs with what is left of each
     beside it; none of fewer than two runs, where it could not be told from their own errors.
     """
-    from dataclasses import replace
-
     use = [i for i, one in enumerate(told) if one.difference is not None]
     if len(use) < 2:
         return None, [*told]
-    d, V, plate, ratio = _joint(response, plans, [told[i] for i in use])
-    shift, variance = shared_shift(d, V)
-    left = d - shift
-    spread = _WIDE * np.sqrt(np.maximum(np.diag(V) - variance, 0.0))
+    joint = _joint(response.name, plans, [told[i] for i in use])
+    shift, variance = shared_shift(joint.d, joint.V, joint.between)
+    alone = shared_shift(joint.d, joint.V)[1]
+    spread = _WIDE * np.sqrt(np.maximum(np.diag(joint.V) - alone, 0.0))
     beside = [*told]
-    for i, r, wide in zip(use, left, spread, strict=True):
+    for i, r, wide in zip(use, joint.d - shift, spread, strict=True):
         beside[i] = replace(
             told[i],
-            beside_shift=float(np.exp(r) if ratio else r),
+            beside_shift=float(np.exp(r) if joint.ratio else r),
             beside_off=bool(abs(r) > wide),
         )
-    return _shift(response.name, len(use), ratio, shift, variance, plate), beside
+    return _shift(response.name, len(use), joint, shift, variance), beside
 
 
-def shared_shift(d: Array, V: Array) -> tuple[float, float]:
-    """Estimate and variance of a shift that differences d (n,) of covariance V (n, n) share."""
+def shared_shift(d: Array, V: Array, between: Array | None = None) -> tuple[float, float]:
+    """Estimate and variance of a shift that differences d (n,) of covariance V (n, n) share.
+
+    between (n, n): what covariances V leaves out; it adds to the variance, not to the weights.
+    """
     ones = np.ones(len(d))
-    white = np.linalg.solve(V, np.stack([ones, d], axis=1))
-    precision = float(ones @ white[:, 0])
-    return float(ones @ white[:, 1]) / precision, 1.0 / precision
+    white = np.linalg.solve(V, ones)
+    weights = white / (ones @ white)
+    more = 0.0 if between is None else float(weights @ between @ weights)
+    return float(weights @ d), 1.0 / float(ones @ white) + max(0.0, more)
 
 
-def _joint(
-    response: Response, plans: Sequence[ColumnPlan], told: Sequence[Compared]
-) -> tuple[Array, Array, float, bool]:
-    """Differences, their covariance, the sd that a plate shares, and whether in logarithms."""
+@dataclass(frozen=True, eq=False)
+class _Joint:
+    """Differences (n,) of runs, their covariance, what it leaves out between plans, the sd that a
+    plate shares, and whether all of it is in logarithms.
+    """
+
+    d: Array
+    V: Array
+    between: Array
+    plate: float
+    ratio: bool
+
+
+def _joint(name: str, plans: Sequence[ColumnPlan], told: Sequence[Compared]) -> _Joint:
+    """The joint law of the differences of runs.
+
+    How the process means of two plans go together is not on record. They rest on much the same
+    wells, so for the variance of a shift they are taken to err all alike, the worst case.
+    """
     n = len(told)
-    d, V, plate, ratio = np.empty(n), np.zeros((n, n)), np.empty(n), False
-    places = [_place(response.name, plans, one.run.run) for one in told]
-    for i, (one, (prediction, row)) in enumerate(zip(told, places, strict=True)):
-        ratio = prediction.logarithm
-        value = np.log(one.reading) if ratio else one.reading
-        own = one.sd / one.reading if ratio else one.sd
-        d[i] = value - prediction.centre[row]
-        plate[i] = prediction.plate_sd[row]
+    V, between = np.zeros((n, n)), np.zeros((n, n))
+    places = [_place(name, plans, one.run.run) for one in told]
+    ratio = any(prediction.logarithm for prediction, _ in places)
+    spread = np.sqrt([prediction.covariance[row][row] for prediction, row in places])
+    for i, (prediction, row) in enumerate(places):
         for j, (other, column) in enumerate(places):
-            # Plans that lie apart in time are taken as independent.
-            V[i, j] = prediction.covariance[row][column] if other is prediction else 0.0
-        V[i, i] += prediction.own_sd[row] ** 2 + own**2
-    return d, V, float(np.sqrt((plate**2).mean())), ratio
+            if other is prediction:
+                V[i, j] = prediction.covariance[row][column]
+            else:
+                between[i, j] = spread[i] * spread[j]
+    read = np.array([one.reading for one in told])
+    stated = np.array([one.sd for one in told]) / (read if ratio else 1.0)
+    own = np.array([prediction.own_sd[row] for prediction, row in places])
+    centre = np.array([prediction.centre[row] for prediction, row in places])
+    plate = np.array([prediction.plate_sd[row] for prediction, row in places])
+    return _Joint(
+        d=(np.log(read) if ratio else read) - centre,
+        V=V + np.diag(own**2 + stated**2),
+        between=between,
+        plate=float(np.sqrt((plate**2).mean())),
+        ratio=ratio,
+    )
 
 
 def _place(name: str, plans: Sequence[ColumnPlan], number: int) -> tuple[Prediction, int]:
@@ -232,19 +258,19 @@ def _place(name: str, plans: Sequence[ColumnPlan], number: int) -> tuple[Predict
     )
 
 
-def _shift(name: str, runs: int, ratio: bool, shift: float, variance: float, plate: float) -> Shift:
-    half, reach = _WIDE * np.sqrt(variance), _WIDE * np.sqrt(variance + plate**2)
+def _shift(name: str, runs: int, joint: _Joint, shift: float, variance: float) -> Shift:
+    half, reach = _WIDE * np.sqrt(variance), _WIDE * np.sqrt(variance + joint.plate**2)
     verdict: ShiftVerdict = "more than plates differ"
     if abs(shift) <= half:
         verdict = "none to be told"
     elif abs(shift) <= reach:
         verdict = "no more than a new plate"
-    told = [shift, shift - half, shift + half, _WIDE * plate]
-    mean, low, high, by = (float(np.exp(v)) if ratio else float(v) for v in told)
+    told = [shift, shift - half, shift + half, _WIDE * joint.plate]
+    mean, low, high, by = (float(np.exp(v)) if joint.ratio else float(v) for v in told)
     return Shift(
         response=name,
         runs=runs,
-        ratio=ratio,
+        ratio=joint.ratio,
         mean=mean,
         low=low,
         high=high,

@@ -32,8 +32,8 @@ def spots(definition: Definition, window: Window) -> list[Spot]:
 
     Edges are conditions just inside: a neighbour on the grid, in one factor, lies in the tested
     range and outside the window. Of them the two that lie farthest apart in coded factors are
-    taken, the less probable first; where fewer than two differ from each other and from the set
-    point, the far end of the window in the tested range stands in. A column has one resin: edges
+    taken, the less probable first. Where the window has fewer than two besides the set point, the
+    far side of the window stands in. A column has one resin: edges
     keep the choices of the set point. Conditions that new plans must not use are passed over.
     """
     grid = window.grid
@@ -47,11 +47,13 @@ def spots(definition: Definition, window: Window) -> list[Spot]:
     X = code(definition, grid)
     edge = open_ & _at_edge(definition, window)
     chosen = _far_apart(X, np.flatnonzero(edge))
-    chosen += _ends(X, [centre, *chosen], np.flatnonzero(open_))[: 2 - len(chosen)]
+    if len(chosen) < 2:
+        open_[chosen] = False
+        chosen += _far_side(X, chosen, np.flatnonzero(open_))
     chosen.sort(key=lambda row: float(grid["probability"].iloc[row]))
     told = [_spot(definition, grid, "set point", centre)]
     return told + [
-        _spot(definition, grid, "edge" if edge[row] else "end of the range", row) for row in chosen
+        _spot(definition, grid, "edge" if edge[row] else "far side", row) for row in chosen
     ]
 
 
@@ -105,14 +107,10 @@ def _far_apart(X: Array, rows: NDArray[np.intp]) -> list[int]:
     return [int(rows[i]), int(rows[j])]
 
 
-def _ends(X: Array, taken: list[int], rows: NDArray[np.intp]) -> list[int]:
-    """Rows, the one farthest from all that are taken first, each then taken itself."""
-    found: list[int] = []
-    for _ in range(2):
-        left = [int(row) for row in rows if row not in taken and row not in found]
-        if not left:
-            break
-        others = X[[*taken, *found]]
-        away = ((X[left][:, None, :] - others[None, :, :]) ** 2).sum(-1).min(axis=1)
-        found.append(left[int(away.argmax())])
-    return found
+def _far_side(X: Array, edges: list[int], rows: NDArray[np.intp]) -> list[int]:
+    """Rows that make up for edges that are not there: the one farthest from the edge, or, where
+    there is none, the two that lie farthest apart.
+    """
+    if not edges or not len(rows):
+        return _far_apart(X, rows)
+    return [int(rows[int(((X[rows] - X[edges[0]]) ** 2).sum(-1).argmax())])]

@@ -21,7 +21,7 @@ from muntin.record.toml_files import parse, read_toml
 
 COLUMNS = "columns"
 PLAN = "plan"
-Place = Literal["set point", "edge", "end of the range"]
+Place = Literal["set point", "edge", "far side"]
 _HEAD = """\
 # What was predicted of column runs before they were made; written by muntin confirm. Do not edit:
 # the runs are compared with these figures.
@@ -33,7 +33,7 @@ class PlannedRun(Keys):
     """One column run."""
 
     run: Whole = key(says="its number, over all plans of the study", ge=1)
-    place: Place = key(says="what the run is for: the set point, an edge of the window, or an end")
+    place: Place = key(says="what for: the set point, an edge of the window, or its far side")
     condition: dict[str, NumberOrText] = key(says="value of each factor, in its unit")
     probability: Number = key(says="judged probability of the condition")
     protein_mg: Number | None = key(None, says="protein that it takes", unit="mg")

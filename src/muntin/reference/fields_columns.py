@@ -11,7 +11,7 @@ CONFIRM = Part(
         "plans[].<key>": "key of the record",
         "compared": "what came of the runs, an entry a response and run",
         "compared[].run": "number of the run",
-        "compared[].place": "set point, edge, or end of the range",
+        "compared[].place": "set point, edge, or far side of the window",
         "compared[].response": "the response; figures are in its unit",
         "compared[].predicted": "process mean that was predicted beforehand",
         "compared[].reading_low": "lower end of the predicted central 95 % of one reading, widened "

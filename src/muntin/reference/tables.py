@@ -171,7 +171,7 @@ _OUTPUTS = (
         "columns/<column>.csv",
         columns={
             "run": "number of the run, over all plans",
-            "place": "set point, edge, or end of the range",
+            "place": "set point, edge, or far side",
             "<factor>": "what to run it at, in the factor's unit",
             "protein_mg": "protein that it takes, mg",
             "<response>": "empty, for the reading",

@@ -21,7 +21,6 @@ from muntin.report.words import amount_text, joined
 _GAP = 2
 _WHOLE = ("run", "predicted", "column - plate")
 _OFF = {False: "agrees", True: "off"}
-_SHORT = {"end of the range": "end"}
 _SIGNS = {-1: "<", 0: "", 1: ">"}
 _ODDS = (
     "Off: by more than predicted (95 %), as one run in twenty is where columns read as plates do."
@@ -146,7 +145,7 @@ def _came_cells(one: Compared) -> list[str]:
     if one.difference is not None and one.low is not None and one.high is not None:
         difference = _spread(one.difference, one.low, one.high, plus=True)
     return [
-        f"{one.run.run} {_SHORT.get(one.run.place, one.run.place)}",
+        f"{one.run.run} {one.run.place}",
         _spread(one.predicted, one.reading_low, one.reading_high),
         f"{_SIGNS[one.side]}{figure(one.reading)}",
         difference,
