@@ -84,7 +84,7 @@ def _planned(study: Any, known: Any, asked: Any, bar: bool) -> Any:
 
 def _check_words(again: bool, because: str | None) -> None:
     from muntin.record.cells import CellError, parse_reason
-    from muntin.record.faults import Fault, StudyFaults
+    from muntin.record.faults import Fault, StudyFaults, quoted
 
     if because is not None and not again:
         problem = "is read only with --again"
@@ -95,6 +95,8 @@ def _check_words(again: bool, because: str | None) -> None:
         if parse_reason((because or "").strip()):
             return
         problem = "needs --because TEXT: why it is planned again"
+        fault = Fault(file="muntin confirm", value="--again", problem=problem)
     except CellError as error:
-        problem = f"--because {error}"
-    raise StudyFaults([Fault(file="muntin confirm", value="--again", problem=problem)])
+        given, hint = f"--because {quoted(because)}", "say in words why it is planned again"
+        fault = Fault(file="muntin confirm", value=given, problem=str(error), hint=hint)
+    raise StudyFaults([fault])

@@ -76,8 +76,9 @@ def _open(plans: Sequence[ColumnPlan], made: Sequence[ColumnRun]) -> list[str]:
     left = [str(run.run) for plan in plans for run in plan.runs if run.run not in numbers]
     if not left:
         return []
-    runs = "Run" if len(left) == 1 else "Runs"
-    return [f"{runs} {listed(left)} of earlier plans are open; no protein is kept back for them."]
+    if len(left) == 1:
+        return [f"Run {left[0]} of an earlier plan is open; no protein is kept back for it."]
+    return [f"Runs {listed(left)} of earlier plans are open; no protein is kept back for them."]
 
 
 def used(plans: Sequence[ColumnPlan], made: Sequence[ColumnRun]) -> float:

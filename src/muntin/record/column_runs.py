@@ -10,7 +10,7 @@ from muntin.record.cells import CellError, parse_number, reasons
 from muntin.record.column_plan import COLUMNS, PLAN, PlannedRun
 from muntin.record.definition import Definition
 from muntin.record.factors import Factor
-from muntin.record.faults import Fault, Findings, did_you_mean, listed, nearest
+from muntin.record.faults import Fault, Findings, listed, nearest
 from muntin.record.readings import (
     USED,
     Reading,
@@ -126,9 +126,9 @@ def _number(
     cell = table.cells("run")[row]
     number = int(cell) if cell.isascii() and cell.isdigit() and len(cell) < 7 else 0
     if number not in planned:
-        known = [str(n) for n in planned]
-        hint = f"planned: {listed(known)}" if cell else did_you_mean(cell, known)
-        found.faults.append(table.fault(row, "run", "is not a planned run", hint=hint))
+        problem = "is not a planned run" if cell else "every row needs its run"
+        hint = f"planned: {listed(map(str, planned))}"
+        found.faults.append(table.fault(row, "run", problem, hint=hint))
         return None
     if number in first:
         found.faults.append(table.fault(row, "run", f"is already in {first[number]}"))

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from math import floor, log10
 from pathlib import Path
 
 from rich.console import RenderableType
@@ -147,7 +148,7 @@ def _came_cells(one: Compared) -> list[str]:
     return [
         f"{one.run.run} {one.run.place}",
         _spread(one.predicted, one.reading_low, one.reading_high),
-        f"{_SIGNS[one.side]}{figure(one.reading)}",
+        f"{_SIGNS[one.side]}{figure(one.reading, 4)}",
         difference,
         "" if limit else _OFF[one.verdict == "off by more than predicted"],
     ]
@@ -168,12 +169,12 @@ def _shift_line(definition: Definition, shift: Shift) -> str:
     if shift.ratio:
         size = f"{figure(shift.mean)} times what was predicted"
         interval = f"95 % {figure(shift.low)} to {figure(shift.high)} times"
-        plate = f"by a factor of {shift.plate:.3g}"
+        plate = f"by a factor of {figure(shift.plate)}"
     else:
         unit = f" {response.unit}".rstrip()
         size = f"{shift.mean:+.2g}{unit} against what was predicted"
         interval = f"95 % {shift.low:+.2g} to {shift.high:+.2g}"
-        plate = f"by {shift.plate:.2g}{unit}"
+        plate = f"by {figure(shift.plate, 2)}{unit}"
     said = {
         "none to be told": "the runs tell of no shared shift",
         "no more than a new plate": f"a shared shift, but a new plate may be off {plate} as well",
@@ -259,11 +260,10 @@ def _spread(middle: float, low: float, high: float, plus: bool = False) -> str:
 
 
 def _digits(width: float) -> int:
-    from math import floor, log10
+    """Decimals that tell a fifth of a width."""
+    return max(0, -floor(log10(width / 5.0))) if width > 0 else 2
 
-    return max(0, 1 - floor(log10(width))) if width > 0 else 2
 
-
-def figure(value: float) -> str:
-    """Return a figure with three significant digits at most."""
-    return f"{value:.3g}"
+def figure(value: float, digits: int = 3) -> str:
+    """Return a figure with so many significant digits at most, and no exponent."""
+    return number(float(f"{value:.{digits}g}"))
