@@ -8,7 +8,7 @@ from pathlib import Path
 import pytest
 
 from muntin.record.column_plan import ColumnPlan, plan_text, read_plans
-from muntin.record.faults import Findings
+from muntin.record.faults import Findings, StudyFaults
 from muntin.record.study import open_study
 from tests.report.studies import STUDY, plate, small, tree
 from tests.test_cli import rows_of, run
@@ -321,22 +321,32 @@ def test_help_and_the_common_options() -> None:
     assert "do columns agree?" in run().stdout
 
 
-def test_a_plan_is_written_whole_or_not_at_all(
-    study: Path, monkeypatch: pytest.MonkeyPatch
-) -> None:
-    from muntin.record import files
-    from muntin.record.faults import Fault, StudyFaults
-
-    real = files.write_atomic
-
-    def failing(path: Path, content: str | bytes) -> None:
-        if path.suffix == ".toml":
-            raise StudyFaults([Fault(file=str(path), problem="cannot be written")])
-        real(path, content)
-
-    monkeypatch.setattr(files, "write_atomic", failing)
+def test_a_plan_is_written_whole_or_not_at_all(study: Path) -> None:
+    for name in ("plan.csv", "plan.toml"):
+        (study / "columns" / name).unlink()
+    (study / "columns" / "plan.csv").mkdir()
     before = tree(study)
-    assert run("confirm", study, *QUICK, *AGAIN).exit_code == 2
+    result = run("confirm", study, *QUICK)
+    place = study / "columns" / "plan.csv"
+    assert result.stderr == f"{place}: is already there and is not overwritten\n"
+    assert tree(study) == before
+    assert [path.name for path in (study / "columns").iterdir()] == ["plan.csv"]
+
+
+def test_of_two_that_plan_at_once_one_plan_stands(study: Path) -> None:
+    from muntin.report.column_files import write_columns
+
+    definition, plan = open_study(study).definition, plan_of(study)
+    (study / "columns" / "plan.csv").unlink()
+    (study / "columns" / "plan.toml").unlink()
+    paths = write_columns(study, definition, plan)[1]
+    before = tree(study)
+    with pytest.MonkeyPatch.context() as patch:
+        # The other process looked before these files were there.
+        patch.setattr("muntin.report.column_files.plan_paths", lambda folder: [])
+        with pytest.raises(StudyFaults) as caught:
+            write_columns(study, definition, plan.model_copy(update={"seed": 2}))
+    assert caught.value.lines() == [f"{paths[1]}: is already there and is not overwritten"]
     assert tree(study) == before
 
 

@@ -25,7 +25,8 @@ def test_the_reference_is_up_to_date(name: str) -> None:
 
 @given(st.sampled_from(ENTRIES), st.booleans())
 def test_every_entry_is_found_by_its_names(entry, capital) -> None:
-    for name in entry.names():
+    plain = {name for name in entry.names() if not name.startswith(("[", "--"))}
+    for name in plain or entry.names():
         assert entry in found(name.upper() if capital else name, ENTRIES)
 
 
@@ -35,6 +36,8 @@ def test_every_entry_is_found_by_its_names(entry, capital) -> None:
         ("kept_within", ("key", "kept_within", "[[factors]]")),
         ("factors.kept_within", ("key", "kept_within", "[[factors]]")),
         ("[bench]", ("section", "[bench]", "study.toml")),
+        ("[factors]", ("section", "[[factors]]", "study.toml")),
+        ("sides[].beyond", ("field", "window.sides[].beyond", "assess, advise")),
         ("bench.stocks", ("section", "[[bench.stocks]]", "study.toml")),
         ("assess", ("command", "assess", "")),
         ("muntin assess", ("command", "assess", "")),
@@ -49,6 +52,12 @@ def test_every_entry_is_found_by_its_names(entry, capital) -> None:
 def test_names_lead_to_entries(name: str, first: tuple[str, str, str]) -> None:
     entry = found(name, ENTRIES)[0]
     assert (entry.kind, entry.name, entry.of) == first
+
+
+def test_marks_ask_for_one_kind() -> None:
+    assert {entry.kind for entry in found("--plates", ENTRIES)} == {"option"}
+    assert {entry.kind for entry in found("plates", ENTRIES)} > {"option", "table"}
+    assert [entry.name for entry in found("[plan]", ENTRIES)] == ["[plan]"]
 
 
 def test_a_bare_place_fits_no_name() -> None:

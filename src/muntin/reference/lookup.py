@@ -23,10 +23,14 @@ def all_entries() -> tuple[Entry, ...]:
 def found(name: str, entries: Sequence[Entry]) -> list[Entry]:
     """Return the entries that bear a name, else those whose pattern it fits, in their order.
 
-    Capitals, brackets of sections, dashes of options and [] of fields make no difference.
+    Capitals and the [] of fields make no difference. The brackets of a section and the dashes of an
+    option may be left out; given, they ask for a section or an option alone, where there is one.
     """
     asked = _plain(name)
     exact = [entry for entry in entries if asked in entry.names()]
+    for mark, kind in (("[", "section"), ("--", "option")):
+        if name.strip().startswith(mark):
+            exact = [entry for entry in exact if entry.kind == kind] or exact
     return exact or [entry for entry in entries if entry.fits(asked)]
 
 

@@ -9,8 +9,8 @@ from pathlib import Path
 from muntin.record.column_plan import COLUMNS, PLAN, ColumnPlan, plan_paths, plan_text
 from muntin.record.definition import Definition
 from muntin.record.edits import sha256
-from muntin.record.faults import Fault, StudyFaults, listed
-from muntin.record.files import write_together
+from muntin.record.faults import StudyFaults, listed
+from muntin.record.files import write_new
 from muntin.report.advice_files import hashes, read_inputs
 
 
@@ -44,16 +44,18 @@ def write_columns(
 ) -> tuple[ColumnPlan, list[Path]]:
     """Write a plan under a name that is free; return it as on record, and the paths.
 
-    Both files are written or, with StudyFaults, none; what is there is never overwritten.
+    Both files are written or, with StudyFaults, none; what is there is never overwritten, also
+    where another process plans at the same time.
     """
     count = len(plan_paths(folder))
     stem = PLAN if not count else f"{PLAN}.r{count + 1}"
-    paths = [folder / COLUMNS / f"{stem}{ending}" for ending in (".csv", ".toml")]
-    taken = [path for path in paths if path.exists()]
-    if taken:
-        problem = "is already there and is not overwritten"
-        raise StudyFaults([Fault(file=str(path), problem=problem) for path in taken])
-    table = table_text(definition, plan)
-    plan = plan.model_copy(update={"table_sha256": sha256(table.encode("utf-8"))})
-    write_together(dict(zip(paths, (table, plan_text(plan)), strict=True)))
-    return plan, paths
+    table, record = (folder / COLUMNS / f"{stem}{ending}" for ending in (".csv", ".toml"))
+    text = table_text(definition, plan)
+    plan = plan.model_copy(update={"table_sha256": sha256(text.encode("utf-8"))})
+    write_new(record, plan_text(plan))
+    try:
+        write_new(table, text)
+    except StudyFaults:
+        record.unlink(missing_ok=True)
+        raise
+    return plan, [table, record]
