@@ -269,6 +269,7 @@ def test_what_changed_since_the_plan_is_said(study: Path) -> None:
         stream.write("\n")
     with (study / "columns" / "plan.csv").open("a") as stream:
         stream.write("9,edge,6,200,3,,\n")
+    (study / "stop-rule.jsonl").write_text("")
     screen = " ".join(run("confirm", study).stdout.split())
     assert "Changed since the runs were planned: plates/plate-01.csv; what was" in screen
     assert "columns/plan.csv was altered after it was written; the record holds" in screen
@@ -348,6 +349,18 @@ def test_of_two_that_plan_at_once_one_plan_stands(study: Path) -> None:
             write_columns(study, definition, plan.model_copy(update={"seed": 2}))
     assert caught.value.lines() == [f"{paths[1]}: is already there and is not overwritten"]
     assert tree(study) == before
+
+
+def test_check_reads_the_columns_too(study: Path) -> None:
+    column(study, "run,recovery\n1,0.9\n")
+    facts = json.loads(run("check", study, "--json").stdout)
+    assert facts["columns"] == {"planned": 3, "made": 1, "notices": []}
+    told = "columns/: 3 column runs planned, 1 made; muntin confirm compares them"
+    assert told in run("check", study).stdout
+    column(study, "run,recovery\n8,0.9\n")
+    result = run("check", study)
+    line = "columns/column-01.csv, row 2, column run: 8 is not a planned run (planned: 1, 2, 3)\n"
+    assert (result.exit_code, result.stderr) == (2, line)
 
 
 def test_contact_and_residence_time_are_told_side_by_side(study: Path) -> None:

@@ -42,9 +42,7 @@ def confirm(
     """
     from muntin.confirmation.comparison import compare
     from muntin.record import open_study
-    from muntin.record.column_plan import read_plans
-    from muntin.record.column_runs import read_runs
-    from muntin.record.faults import Findings, StudyFaults
+    from muntin.record.column_runs import read_columns
     from muntin.report.column_facts import column_facts
     from muntin.report.column_files import since_plan
     from muntin.report.column_text import column_screen
@@ -52,18 +50,13 @@ def confirm(
     _check_words(again, because)
     tell("reading the study")
     study = open_study(folder)
-    found = Findings()
-    plans = read_plans(study.folder, study.definition, found)
-    runs = {run.run: run for plan in plans for run in plan.runs}
-    made = read_runs(study.folder, study.definition, runs, found)
-    if found.faults:
-        raise StudyFaults(found.faults)
+    plans, made, found = read_columns(study.folder, study.definition)
     written: list[Any] = []
     if again or not plans:
         asked = (surrogate.value, engine.value, seed, because)
         plan, written = _planned(study, (plans, made), asked, tell.fitting(engine))
         plans = [*plans, plan]
-    notices = [*found.notices, *since_plan(study.folder, plans[-1])]
+    notices = [*found, *since_plan(study.folder, plans[-1])]
     comparison = compare(study.definition.responses, plans, made)
     told = (study, plans, comparison, written, notices)
     return Output(column_facts(*told), column_screen(*told))

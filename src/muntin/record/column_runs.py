@@ -7,10 +7,10 @@ from pathlib import Path
 from typing import NamedTuple
 
 from muntin.record.cells import CellError, parse_number, reasons
-from muntin.record.column_plan import COLUMNS, PLAN, PlannedRun
+from muntin.record.column_plan import COLUMNS, PLAN, ColumnPlan, PlannedRun, read_plans
 from muntin.record.definition import Definition
 from muntin.record.factors import Factor
-from muntin.record.faults import Fault, Findings, listed, nearest
+from muntin.record.faults import Fault, Findings, StudyFaults, listed, nearest
 from muntin.record.readings import (
     USED,
     Reading,
@@ -37,6 +37,25 @@ class ColumnRun(NamedTuple):
         reading = self.readings[name]
         whole = not self.excluded and not reading.reason
         return reading if whole and reading.state in USED else None
+
+
+class OnRecord(NamedTuple):
+    """All that columns/ holds: plans, oldest first, runs that were made, and notices."""
+
+    plans: list[ColumnPlan]
+    made: list[ColumnRun]
+    notices: list[str]
+
+
+def read_columns(folder: Path, definition: Definition) -> OnRecord:
+    """Return what columns/ of a study holds. Raises StudyFaults with every fault in it."""
+    found = Findings()
+    plans = read_plans(folder, definition, found)
+    runs = {run.run: run for plan in plans for run in plan.runs}
+    made = read_runs(folder, definition, runs, found)
+    if found.faults:
+        raise StudyFaults(found.faults)
+    return OnRecord(plans, made, found.notices)
 
 
 def read_runs(

@@ -63,6 +63,10 @@ CHECK = Part(
         "plans.run[].changes[].kind": "changed, moved, left out or added",
         "plans.run[].changes[].was": "well, role and condition as planned; null where added",
         "plans.run[].changes[].now": "the same as run; null where left out",
+        "columns": "column runs on record",
+        "columns.planned": "runs that were planned",
+        "columns.made": "runs that were made, left out ones too",
+        "columns.notices": "what was noticed of them",
     },
 )
 

@@ -11,6 +11,7 @@ from muntin.record.definition import Definition
 from muntin.record.edits import sha256
 from muntin.record.faults import StudyFaults, listed
 from muntin.record.files import write_new
+from muntin.record.stop_rule import STOP_FILE
 from muntin.report.advice_files import hashes, read_inputs
 
 
@@ -29,9 +30,12 @@ def table_text(definition: Definition, plan: ColumnPlan) -> str:
 
 
 def since_plan(folder: Path, plan: ColumnPlan) -> list[str]:
-    """Return a notice where input files of a study are no longer those that a plan rests on."""
+    """Return a notice where input files of a study are no longer those that a plan rests on; the
+    stop rule is none of them.
+    """
     now = hashes(read_inputs(folder))
-    changed = [name for name in {**plan.inputs, **now} if plan.inputs.get(name) != now.get(name)]
+    names = [name for name in {**plan.inputs, **now} if name != STOP_FILE]
+    changed = [name for name in names if plan.inputs.get(name) != now.get(name)]
     if not changed:
         return []
     return [

@@ -12,6 +12,7 @@ from rich.text import Text
 
 from muntin.confirmation.comparison import Compared, Comparison, Shift
 from muntin.record.column_plan import COLUMNS, ColumnPlan, PlannedRun
+from muntin.record.column_runs import OnRecord
 from muntin.record.definition import Definition
 from muntin.record.faults import counted, listed, number
 from muntin.record.responses import Response
@@ -49,6 +50,15 @@ def column_cautions(definition: Definition) -> tuple[str, ...]:
         f"{number(columns.residence_min)} min in the column while loading."
     )
     return (*_CAUTIONS[:3], times, *_CAUTIONS[3:])
+
+
+def columns_line(columns: OnRecord) -> list[str]:
+    """Return how many column runs were planned and made, and notices; nothing without a plan."""
+    if not columns.plans:
+        return []
+    planned = sum(len(plan.runs) for plan in columns.plans)
+    made = f"{len(columns.made)} made; muntin confirm compares them"
+    return [f"{COLUMNS}/: {counted(planned, 'column run')} planned, {made}", *columns.notices]
 
 
 def column_screen(
