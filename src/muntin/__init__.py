@@ -33,6 +33,8 @@ _HOMES = {
     "muntin.window.assessment": ("Assessment", "assess"),
     "muntin.window.window": ("Window",),
 }
+# Public modules, such as those of figures.
+_MODULES: tuple[str, ...] = ()
 
 
 def __getattr__(name: str) -> Any:
@@ -43,6 +45,8 @@ def __getattr__(name: str) -> Any:
         if name in names:
             globals()[name] = value = getattr(import_module(home), name)
             return value
+    if name in _MODULES:
+        return import_module(f"{__name__}.{name}")
     raise AttributeError(f"module {__name__!r} has no attribute {name!r}")
 
 
