@@ -127,7 +127,25 @@ def test_all_that_agree_are_said_so(study: Path) -> None:
     column(study, "run,recovery,exclude\n" + "".join(rows))
     screen = run("confirm", study).stdout
     assert "All 3 readings of columns agree with what plates predicted." in screen
+    assert "3 readings of columns meet their targets, none misses." in screen
+    assert "the runs tell of no shared shift." in " ".join(screen.split())
     assert "Planned" not in screen
+
+
+def test_a_shared_shift_is_told_apart(study: Path) -> None:
+    means = plan_of(study).predictions[0].mean
+    column(study, "run,recovery\n" + "".join(f"{i},{m - 0.3}\n" for i, m in enumerate(means, 1)))
+    screen = " ".join(run("confirm", study).stdout.split())
+    assert "Recovery: -0.3 against what was predicted over 3 runs" in screen
+    assert "a shared shift, more than a new plate explains" in screen
+    assert "Less that shift all runs agree." in screen
+    assert "3 of 3 readings off by more than predicted" in screen
+    assert "Columns shift Recovery: the window holds for plates, not for these columns." in screen
+    column(study, "run,recovery\n" + "".join(f"{i},{m}\n" for i, m in enumerate(means[:2], 1)))
+    column(study, f"run,recovery\n3,{means[2] - 0.5}\n", "column-02.csv")
+    screen = " ".join(run("confirm", study).stdout.split())
+    assert "Less that shift" in screen
+    assert "run 3" in screen.split("Less that shift")[1].split(" off by more")[0]
 
 
 def test_runs_left_out_stay_on_record(study: Path) -> None:

@@ -22,6 +22,7 @@ def test_intervals_have_the_digits_that_their_width_deserves(figures, text) -> N
 
 def test_differences_show_their_sign() -> None:
     assert _spread(0.04, -0.05, 0.13, plus=True) == "+0.04 (-0.05 to +0.13)"
+    assert _spread(-0.09, -0.18, -0.001, plus=True) == "-0.09 (-0.18 to 0.00)"
 
 
 @pytest.mark.parametrize(("value", "text"), [(2000.0, "2000"), (0.8612, "0.861"), (1234.6, "1230")])

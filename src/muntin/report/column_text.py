@@ -21,13 +21,11 @@ from muntin.report.text import few, sheet
 from muntin.report.words import amount_text, joined
 
 _GAP = 2
-_WHOLE = ("run", "predicted", "column - plate")
-_OFF = {False: "agrees", True: "off"}
+_WHOLE = ("predicted", "column", "column - plate", "verdict")
 _SIGNS = {-1: "<", 0: "", 1: ">"}
 _ODDS = (
     "Off: by more than predicted (95 %), as one run in twenty is where columns read as plates do."
 )
-_SHIFTED = "Shifted: the same once the shift that all runs share, told below, is taken off."
 _APART = "Columns are never pooled with wells: no probability rests on them."
 _CAUTIONS = (
     "The intervals are those of a new well on a new plate. A column has a residence time, a "
@@ -77,7 +75,7 @@ def column_screen(
             ("Noted", few([*notices, *plans[-1].notices], 5, "see --json")),
             ("Planned", _planned(definition, plans, awaited)),
             ("Column", _came(definition, comparison)),
-            ("Shift", [_shift_line(definition, shift) for shift in comparison.shifts]),
+            ("Shift", _shift_lines(definition, comparison)),
             ("Left out", _left_out(comparison)),
             ("Verdict", _verdict(definition, comparison)),
             ("Caution", column_cautions(definition)),
@@ -130,37 +128,27 @@ def _came(definition: Definition, comparison: Comparison) -> list[RenderableType
         if mine:
             lines.append(f"{_with_unit(response.label, response.unit)}{_target(response)}:")
             lines.append(_came_table(mine))
-    shifted = [_SHIFTED] if comparison.shifts else []
-    return [*lines, _ODDS, *shifted, _APART] if lines else []
+    return [*lines, _ODDS, _APART] if lines else []
 
 
 def _came_table(compared: Sequence[Compared]) -> Table:
-    """A row a run; the last columns only where a shift or a target is told."""
-    shifted = any(one.beside_off is not None for one in compared)
-    judged = any(one.meets is not None for one in compared)
-    more = [*(["shifted"] if shifted else []), *(["target"] if judged else [])]
-    table = _grid("run", "predicted", "column", "column - plate", "verdict", *more)
+    table = _grid("run", "predicted", "column", "column - plate", "verdict")
     for one in compared:
-        cells = _came_cells(one)
-        if shifted:
-            cells.append("" if one.beside_off is None else _OFF[one.beside_off])
-        if judged:
-            cells.append("" if one.meets is None else "met" if one.meets else "missed")
-        table.add_row(*map(Text, cells))
+        table.add_row(*map(Text, _came_cells(one)))
     return table
 
 
 def _came_cells(one: Compared) -> list[str]:
-    limit = one.side != 0
-    difference = "-"
+    difference, verdict = "-", ""
     if one.difference is not None and one.low is not None and one.high is not None:
         difference = _spread(one.difference, one.low, one.high, plus=True)
+        verdict = "off" if one.verdict == "off by more than predicted" else "agrees"
     return [
         f"{one.run.run} {one.run.place}",
         _spread(one.predicted, one.reading_low, one.reading_high),
         f"{_SIGNS[one.side]}{figure(one.reading, 4)}",
         difference,
-        "" if limit else _OFF[one.verdict == "off by more than predicted"],
+        verdict,
     ]
 
 
@@ -171,6 +159,23 @@ def _target(response: Response) -> str:
         if limit is not None
     ]
     return f", {joined(ends)}" if ends else ""
+
+
+def _shift_lines(definition: Definition, comparison: Comparison) -> list[str]:
+    """The shift of each response, and, where it is one, what the runs say beside it."""
+    lines = []
+    for shift in comparison.shifts:
+        lines.append(_shift_line(definition, shift))
+        if shift.verdict != "none to be told":
+            mine = [one for one in comparison.compared if one.response == shift.response]
+            off = [f"run {one.run.run}" for one in mine if one.beside_off]
+            more = "off by more than predicted"
+            lines.append(
+                f"Less that shift {joined(off)} {'is' if len(off) == 1 else 'are'} {more}."
+                if off
+                else "Less that shift all runs agree."
+            )
+    return lines
 
 
 def _shift_line(definition: Definition, shift: Shift) -> str:
@@ -208,6 +213,7 @@ def _verdict(definition: Definition, comparison: Comparison) -> list[str]:
     labels = {r.name: r.label for r in definition.responses}
     off = [one for one in compared if one.verdict == "off by more than predicted"]
     missed = [one for one in comparison.compared if one.meets is False]
+    met = [one for one in comparison.compared if one.meets]
     lines = [
         f"All {counted(len(compared), 'reading')} of columns agree with what plates predicted."
         if not off
@@ -216,6 +222,8 @@ def _verdict(definition: Definition, comparison: Comparison) -> list[str]:
     ]
     if missed:
         lines.append(f"The target is missed on columns: {_named(missed, labels)}.")
+    elif met:
+        lines.append(f"{counted(len(met), 'reading')} of columns meet their targets, none misses.")
     far = [shift for shift in comparison.shifts if shift.verdict == "more than plates differ"]
     if far:
         names = joined([labels[shift.response] for shift in far])
@@ -265,8 +273,9 @@ def _settings(definition: Definition, run: PlannedRun) -> list[str]:
 def _spread(middle: float, low: float, high: float, plus: bool = False) -> str:
     """Return "0.93 (0.85 to 0.98)", each with the digits that the width deserves."""
     digits = _digits(high - low)
-    sign = "+" if plus else ""
-    return f"{middle:{sign}.{digits}f} ({low:{sign}.{digits}f} to {high:{sign}.{digits}f})"
+    told = [round(value, digits) + 0.0 for value in (middle, low, high)]
+    shown = [f"{value:{'+' if plus and value else ''}.{digits}f}" for value in told]
+    return f"{shown[0]} ({shown[1]} to {shown[2]})"
 
 
 def _digits(width: float) -> int:
