@@ -10,6 +10,8 @@ import typer
 from muntin.commands.advise import advise
 from muntin.commands.assess import assess
 from muntin.commands.check import check
+from muntin.commands.confirm import confirm
+from muntin.commands.help import help as tell_names
 from muntin.commands.new import new
 from muntin.commands.prepare import prepare
 from muntin.commands.propose import propose
@@ -17,7 +19,7 @@ from muntin.commands.reduce import reduce
 from muntin.commands.rehearse import rehearse
 from muntin.commands.uptake import uptake
 
-_COMMANDS = {
+COMMANDS = {
     new: "where do I start?",
     check: "are my files sound?",
     reduce: "what did the wells do?",
@@ -27,6 +29,8 @@ _COMMANDS = {
     prepare: "how do I run it?",
     rehearse: "is another plate worth it?",
     advise: "all of it between two plates",
+    confirm: "do columns agree?",
+    tell_names: "what does a name mean?",
 }
 
 app = typer.Typer(
@@ -37,7 +41,7 @@ app = typer.Typer(
     rich_markup_mode=None,
     context_settings={"help_option_names": ["-h", "--help"]},
 )
-for _work, _question in _COMMANDS.items():
+for _work, _question in COMMANDS.items():
     app.command(short_help=_question)(_work)
 
 

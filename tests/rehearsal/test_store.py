@@ -106,6 +106,8 @@ def test_the_key_tells_contents_and_settings_apart_but_not_the_stop_rule(tmp_pat
     key = key_of(study, settings)
     assert key == key_of(small(tmp_path / "b"), settings)
     assert key == key_of(small(tmp_path / "c", stop={"wrong_share": 0.05}), settings)
+    columns = {"bed_ml": 1.0, "load_mg_per_ml": 5.0}
+    assert key == key_of(small(tmp_path / "f", columns=columns), settings)
     wells = study.wells.copy()
     wells.loc[3, "recovery"] += 1e-9
     others = [

@@ -125,8 +125,6 @@ def command(work: Callable[..., Output]) -> Callable[..., None]:
     own = inspect.signature(work, eval_str=True).parameters
 
     def run(**given: Any) -> None:
-        from muntin.record.faults import StudyFaults
-
         common = {name: given.pop(name, _DEFAULTS[name]) for name in _COMMON}
         if "seed" in own:
             given["seed"] = common["seed"]
@@ -135,8 +133,13 @@ def command(work: Callable[..., Output]) -> Callable[..., None]:
                 if "tell" in own:
                     given["tell"] = tell
                 output = work(**given)
-        except StudyFaults as faults:
-            _print_faults(faults, common["as_json"])
+        except Exception as error:
+            # Imported here, since `muntin help` would otherwise wait for it.
+            from muntin.record.faults import StudyFaults
+
+            if not isinstance(error, StudyFaults):
+                raise
+            _print_faults(error, common["as_json"])
             raise typer.Exit(2) from None
         _print(output, common["as_json"], common["quiet"])
 

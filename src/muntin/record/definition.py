@@ -10,6 +10,7 @@ import pandas as pd
 
 from muntin.record.assay import Assay, FixedWell, assay_faults, known_fixed
 from muntin.record.bench import Bench, bench_faults
+from muntin.record.columns import Columns, column_faults
 from muntin.record.factors import Factor, factor_faults
 from muntin.record.faults import Fault, did_you_mean, number, quoted
 from muntin.record.keys import Keys, Number, NumberOrText, Text, Truths, Whole, key
@@ -155,6 +156,7 @@ class Definition(Keys):
         {}, says="what the window is conditional on, repeated wherever it is stated"
     )
     assay: Assay | None = key(None, says="how plate reads become a recovery (muntin reduce)")
+    columns: Columns | None = key(None, says="what a column run takes, for muntin confirm")
 
     @property
     def title(self) -> str:
@@ -235,6 +237,8 @@ def definition_faults(definition: Definition) -> list[Fault]:
         faults += forbidden_faults(definition.forbidden, definition.limits, definition.factors)
         faults += bench_faults(definition.bench, definition.factors)
     faults += uptake_faults(definition.uptake)
+    if definition.columns is not None:
+        faults += column_faults(definition.columns, definition.protein)
     return [*faults, *_shared_faults(definition), *_plan_faults(definition)]
 
 

@@ -4,8 +4,8 @@ from __future__ import annotations
 
 import os
 import secrets
-from collections.abc import Mapping
-from contextlib import suppress
+from collections.abc import Iterator, Mapping
+from contextlib import contextmanager, suppress
 from pathlib import Path
 
 from muntin.record.faults import Fault, StudyFaults
@@ -42,6 +42,26 @@ def write_atomic(path: Path, content: str | bytes) -> None:
     Folders on the way are made. Raises StudyFaults where the place cannot be written; the earlier
     file, if there was one, is then untouched.
     """
+    with _beside(path, content) as part:
+        part.replace(path)
+
+
+def write_new(path: Path, content: str | bytes) -> None:
+    """Write a whole file at once under a name that is free, also if another process wants it too.
+
+    Raises StudyFaults where a file of that name is there, or the place cannot be written.
+    """
+    with _beside(path, content) as part:
+        try:
+            os.link(part, path)
+        except FileExistsError:
+            problem = "is already there and is not overwritten"
+            raise StudyFaults([Fault(file=str(path), problem=problem)]) from None
+
+
+@contextmanager
+def _beside(path: Path, content: str | bytes) -> Iterator[Path]:
+    """Give a temporary file beside a path that holds the content, flushed; it goes afterwards."""
     data = content.encode("utf-8") if isinstance(content, str) else content
     part = path.with_name(f".{path.name}.{secrets.token_hex(4)}.part")
     try:
@@ -51,7 +71,7 @@ def write_atomic(path: Path, content: str | bytes) -> None:
                 stream.write(data)
                 stream.flush()
                 os.fsync(stream.fileno())
-            part.replace(path)
+            yield part
         finally:
             part.unlink(missing_ok=True)
     except OSError as error:

@@ -14,6 +14,7 @@ from pydantic.fields import FieldInfo
 from muntin.record.assay import Assay, AssayStage, FixedWell
 from muntin.record.bench import Bench, BenchStock
 from muntin.record.buffers import Buffer
+from muntin.record.columns import Columns
 from muntin.record.definition import (
     MOST,
     STUDY_FILE,
@@ -99,6 +100,7 @@ def study_text(factors: int = 2) -> str:
         _table("[[forbidden]]", "forbidden", Forbidden),
         _table("[[shared_errors]]", "shared_errors", SharedError),
         _table("[protein]", "protein", Protein),
+        _table("[columns]", "columns", Columns),
         _table("[plan]", "plan", PlanRules),
         _table("[stop]", "stop", StopRule),
         _table("[uptake]", "uptake", UptakeKeys),

@@ -63,13 +63,14 @@ class Store:
 def key_of(study: Study, settings: Mapping[str, Any]) -> str:
     """Sixteen hexadecimal digits of what a series depends on.
 
-    The study's definition but for [stop], which is held against series after they were played; its
-    wells and plates; the settings; the versions of the packages that the numbers come from.
+    The study's definition but for [stop], which is held against series after they were played, and
+    [columns], of which they know nothing; its wells and plates; the settings; the versions of the
+    packages that the numbers come from.
     """
     plates = [plate.model_dump_json() for plate in study.plates]
     parts = {
         "form": _FORM,
-        "definition": study.definition.model_dump_json(exclude={"stop"}),
+        "definition": study.definition.model_dump_json(exclude={"stop", "columns"}),
         "wells": study.wells.to_json(orient="split", double_precision=15, default_handler=str),
         "plates": plates,
         "settings": dict(settings),

@@ -1,0 +1,1 @@
+"""Every command, option, key, column and JSON field, told from its one declaration."""
