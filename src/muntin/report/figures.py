@@ -63,12 +63,15 @@ def _subtitle(view: Assessment, window: Window | None) -> str:
     return f"{name}: {of}{reach_text(definition, window.share)}"
 
 
-def saved(figure: Figure, form: str) -> bytes:
-    """Return a figure as the bytes of a "png" or "svg" file, the same whenever it is drawn."""
+def saved(figure: Figure, form: str, dpi: float | None = None) -> bytes:
+    """Return a figure as the bytes of a "png" or "svg" file, the same whenever it is drawn.
+
+    dpi: dots an inch of a "png", those of the figure where None.
+    """
     import matplotlib as mpl
 
     stream = io.BytesIO()
     metadata = {"Software": None} if form == "png" else {"Date": None}
     with mpl.rc_context({"svg.hashsalt": "muntin", "svg.fonttype": "path"}):
-        figure.savefig(stream, format=form, metadata=metadata)
+        figure.savefig(stream, format=form, metadata=metadata, dpi=dpi or "figure")
     return stream.getvalue()
