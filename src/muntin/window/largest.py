@@ -1,0 +1,76 @@
+"""The largest box of a grid in which every node is inside."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from functools import reduce
+
+import numpy as np
+from numpy.typing import NDArray
+
+Array = NDArray[np.float64]
+Bools = NDArray[np.bool_]
+Index = NDArray[np.intp]
+Spans = tuple[tuple[int, int], ...]
+
+
+def largest_box(
+    inside: Bools, widths: Sequence[Array], holding: Sequence[int] | None = None
+) -> Spans | None:
+    """First and last node on each axis of the largest box, exactly; None where there is none.
+
+    inside (k_1, ..., k_F): whether a node may lie in it. widths (k_i,): what the nodes of an axis
+    count for; the size of a box is the product of its sums over the axes. holding: a node that
+    the box must hold. Of boxes of one size that which begins at the lowest nodes is taken.
+
+    Every box there is is looked at: per axis the AND over each of its k (k + 1) / 2 spans is that
+    over the span one node shorter and one node more, so N nodes make about N^2 / 2^F booleans.
+    """
+    good, spans, sizes = inside, [], []
+    for axis, width in enumerate(widths):
+        found = spans_of(len(width), None if holding is None else holding[axis])
+        good = over_spans(good, axis, found)
+        reached = np.concatenate([[0.0], np.cumsum(width)])
+        spans.append(found)
+        sizes.append(reached[found[1] + 1] - reached[found[0]])
+    if not good.any():
+        return None
+    size = np.where(good, reduce(np.multiply.outer, sizes, np.ones(())), -1.0)
+    # Sums that differ by rounding only are of one size.
+    best = np.flatnonzero(size.ravel() >= size.max() * (1.0 - 1e-9))[0]
+    picked = np.unravel_index(best, good.shape)
+    return tuple((int(s[0][i]), int(s[1][i])) for s, i in zip(spans, picked, strict=True))
+
+
+def spans_of(nodes: int, holding: int | None = None) -> tuple[Index, Index]:
+    """First and last nodes (m,) of every span of an axis, or of those that hold a node."""
+    first, last = np.triu_indices(nodes)
+    if holding is None:
+        return first, last
+    keep = (first <= holding) & (last >= holding)
+    return first[keep], last[keep]
+
+
+def over_spans(values: NDArray, axis: int, spans: tuple[Index, Index]) -> NDArray:
+    """The bitwise AND over each span of an axis, which then runs over the spans (m,)."""
+    moved = np.moveaxis(values, axis, 0)
+    first, last = spans
+    out = np.empty((len(first), *moved.shape[1:]), dtype=values.dtype)
+    # running[i] is the AND from node i over so many nodes.
+    running = moved
+    for length in range(len(moved)):
+        if length:
+            running = running[:-1] & moved[length:]
+        rows = np.flatnonzero(last - first == length)
+        out[rows] = running[first[rows]]
+    return np.moveaxis(out, 0, axis)
+
+
+def node_widths(positions: Array) -> Array:
+    """What nodes at ascending positions (k,) count for, (k,): half the way to each neighbour, the
+    first and the last as if the grid went on; 1 for a node alone.
+    """
+    if len(positions) < 2:
+        return np.ones(len(positions))
+    gaps = np.diff(positions)
+    return 0.5 * (np.concatenate([gaps[:1], gaps]) + np.concatenate([gaps, gaps[-1:]]))
