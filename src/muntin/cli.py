@@ -15,6 +15,7 @@ from muntin.commands.prepare import prepare
 from muntin.commands.propose import propose
 from muntin.commands.reduce import reduce
 from muntin.commands.rehearse import rehearse
+from muntin.commands.report import report
 from muntin.commands.uptake import uptake
 
 _COMMANDS = {
@@ -26,6 +27,7 @@ _COMMANDS = {
     propose: "what do I run next?",
     prepare: "how do I run it?",
     rehearse: "is another plate worth it?",
+    report: "can I hand it over?",
     advise: "all of it between two plates",
 }
 

@@ -60,7 +60,7 @@ def write_atomic(path: Path, content: str | bytes) -> None:
         raise StudyFaults([fault]) from None
 
 
-def write_together(files: Mapping[Path, str]) -> None:
+def write_together(files: Mapping[Path, str | bytes] | Mapping[Path, str]) -> None:
     """Write files, all of them or, with StudyFaults, none: what was there is put back."""
     before: dict[Path, bytes | None] = {}
     try:

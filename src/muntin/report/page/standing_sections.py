@@ -1,0 +1,177 @@
+"""Sections on what holds, what it holds for, and which response fails where."""
+
+from __future__ import annotations
+
+import itertools
+from collections.abc import Iterator
+from typing import TYPE_CHECKING
+
+import pandas as pd
+
+from muntin.record.factors import Factor
+from muntin.record.faults import number
+from muntin.report.page.basis import Basis
+from muntin.report.page.blocks import Section, Table
+from muntin.report.page.phrases import chance, heading, measure, settings, target_text
+from muntin.report.text import window_lines
+from muntin.report.words import JUDGED_BY, chance_text
+
+if TYPE_CHECKING:
+    from muntin.window.limiting import Side
+
+_ALL = 1000
+_CHANCES = {
+    "p_mean": "process mean passes",
+    "p_well": "new well passes",
+    "p_kept": "new well passes, kept within ±",
+}
+_FAILS = {"low": "too low", "high": "too high"}
+_ENDS = {"low": "lowest", "high": "highest"}
+
+
+def conditional(basis: Basis) -> Section:
+    """Return what was varied, what was asked, and what the window is conditional on."""
+    definition = basis.definition
+    required = chance_text(definition.required_probability)
+    targets = "; ".join(target_text(r) for r in definition.judged)
+    asked = (
+        f"Asked: {targets}. A condition lies in the window where the probability "
+        f"{JUDGED_BY[definition.judged_by]} reaches {required}."
+    )
+    tracked = [r.label for r in definition.responses if not r.judged]
+    said = [asked, *([f"Read but not judged: {', '.join(tracked)}."] if tracked else [])]
+    said += [f"Only conditions with {limit.allow} may be run." for limit in definition.limits]
+    said += [f"Never planned: {f.conditions} ({f.because})." for f in definition.forbidden]
+    tables = [_factors(definition.factors)]
+    if definition.fixed:
+        rows = tuple(
+            (name.replace("_", " "), value if isinstance(value, str) else number(value))
+            for name, value in definition.fixed.items()
+        )
+        caption = "Kept fixed: the window holds for these values only"
+        tables.append(Table(caption=caption, head=("fixed", "value"), rows=rows, numbers=(1,)))
+        notes: tuple[str, ...] = ()
+    else:
+        notes = ("The study names nothing under [fixed], so what was kept fixed is not on record.",)
+    return Section(
+        name="holds-for",
+        title="What this holds for",
+        says=tuple(said),
+        tables=tuple(tables),
+        notes=notes,
+    )
+
+
+def _factors(factors: tuple[Factor, ...]) -> Table:
+    rows = []
+    for factor in factors:
+        kept = "" if factor.kept_within is None else f"± {factor.kept_within}"
+        set_sd = "" if factor.set_sd is None else f"{factor.set_sd}"
+        step = number(factor.span[2]) if factor.continuous else ""
+        rows.append((factor.label, factor.range_text, step, kept, set_sd))
+    head = ("factor", "range", "bench step", "process keeps it within", "bench sets it with sd")
+    return Table(caption="What was varied", head=head, rows=tuple(rows))
+
+
+def window_section(basis: Basis) -> Section:
+    """Return the window: in words, as a map, at single conditions, and what bounds it."""
+    tables = []
+    if basis.standing is not None and not basis.view.awaited:
+        tables.append(_passes(basis))
+    if basis.standing is not None and basis.standing.sides:
+        tables.append(_sides(basis, basis.standing.sides))
+    return Section(
+        name="window",
+        title="The window",
+        says=tuple(window_lines(basis.view, basis.window, _ALL)),
+        figures=basis.figures("map", "joint", "sides"),
+        tables=tuple(tables),
+    )
+
+
+def _conditions(basis: Basis) -> Iterator[tuple[str, dict[str, object]]]:
+    """The set point, and the corners of the ranges where these are few."""
+    window, definition = basis.standing, basis.definition
+    if window is None:
+        return
+    names = list(definition.factor_names)
+    yield ("set point" if window.share else "best so far"), window.setpoint[names].to_dict()
+    if window.ranges is None:
+        return
+    ends = [tuple(dict.fromkeys(window.ranges[name])) for name in names]
+    corners = [*itertools.product(*ends)]
+    if 1 < len(corners) <= 8:
+        for corner in corners:
+            yield "corner of the ranges", dict(zip(names, corner, strict=True))
+
+
+def _passes(basis: Basis) -> Table:
+    """Joint passes, and those of each response alone."""
+    definition, view = basis.definition, basis.view
+    found = [*_conditions(basis)]
+    known = view.at(pd.DataFrame([condition for _, condition in found]))
+    read = [r for r in definition.responses if f"{r.name}_mean" in known]
+    several = [r for r in read if r.judged] if len(definition.judged) > 1 else []
+    together = [name for name in _CHANCES if name in known]
+    head = [
+        "condition",
+        *(heading(f) for f in definition.factors),
+        *(f"{heading(r)}, mean (95 %)" for r in read),
+        *(f"{r.label}: new well passes" for r in several),
+        *(f"{'all: ' if several else ''}{_CHANCES[name]}" for name in together),
+    ]
+    rows = []
+    for (what, condition), row in zip(found, known.to_dict("records"), strict=True):
+        means = [
+            f"{measure(row[f'{r.name}_mean'])} "
+            f"({measure(row[f'{r.name}_low'])} to {measure(row[f'{r.name}_high'])})"
+            for r in read
+        ]
+        alone = [chance(row[f"{r.name}_p_well"]) for r in several]
+        joint = [chance(row[name]) for name in together]
+        rows.append((what, *settings(definition, condition), *means, *alone, *joint))
+    caption = "Probabilities at single conditions" + (
+        ", by response and jointly" if several else ""
+    )
+    return Table(
+        caption=caption, head=tuple(head), rows=tuple(rows), numbers=tuple(range(1, len(head)))
+    )
+
+
+def _sides(basis: Basis, sides: tuple[Side, ...]) -> Table:
+    definition = basis.definition
+    factors = {f.name: f for f in definition.factors}
+    labels = {r.name: r.label for r in definition.responses}
+    rows = []
+    for side in sides:
+        factor = factors[side.factor]
+        at = f"{factor.shown(side.at)} {factor.unit}".rstrip()
+        if side.response is None or side.probability is None or side.beyond is None:
+            rows.append((factor.label, _ENDS[side.end], at, "the tested range ends", "", ""))
+            continue
+        beyond = f"{factor.shown(side.beyond)} {factor.unit}".rstrip()
+        fails = f"{labels[side.response]}, {_FAILS[str(side.fails)]}"
+        rows.append((factor.label, _ENDS[side.end], at, fails, beyond, chance(side.probability)))
+    return Table(
+        caption="What gives way first beyond each side of the ranges",
+        head=("factor", "end", "ranges reach to", "gives way", "at", "probability there, alone"),
+        rows=tuple(rows),
+        numbers=(2, 4, 5),
+    )
+
+
+def responses_section(basis: Basis) -> Section:
+    """Return the responses along each factor at the set point."""
+    window = basis.standing
+    figures = basis.figures("together", "factor-")
+    where = "the set point" if window is not None and window.share else "the best condition"
+    says = (
+        f"Each figure moves one factor; the others stay at {where}. Lines are process means, bands "
+        "their central 95 % intervals, dashes the targets.",
+    )
+    return Section(
+        name="factors",
+        title="Each factor, and the responses together",
+        says=says if figures else (),
+        figures=figures,
+    )
