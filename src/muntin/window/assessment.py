@@ -22,6 +22,7 @@ from muntin.window.checks import Check, study_checks
 from muntin.window.coded import code, coding_of, priors_for, readings_of, setting_sd, shared_by
 from muntin.window.engine import Engine, inference_data_of, save_draws, settings_of
 from muntin.window.grid import judged_grid
+from muntin.window.handover import HandOver, hand_over
 from muntin.window.influence import DRAWS, chosen_response, influence_of
 from muntin.window.joint import joint_meets
 from muntin.window.limiting import limiting, sides_of
@@ -227,6 +228,18 @@ class Assessment:
     def window(self) -> Window:
         """The predicted operating window (plate scale), on a grid of bench steps, made once."""
         return self._window
+
+    def handover(self) -> HandOver | None:
+        """What is handed over of the window: ranges, margins, edge, repeats; made once, when asked.
+
+        None before any judged response was read. `window.handover.hand_over` takes an assurance, a
+        number of draws and a seed of one's own.
+        """
+        return self._handover
+
+    @cached_property
+    def _handover(self) -> HandOver | None:
+        return hand_over(self)
 
     @cached_property
     def _window(self) -> Window:

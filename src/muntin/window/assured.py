@@ -40,8 +40,8 @@ def asked_levels(span: Span, at: Index | None) -> list[Index]:
 def holding_everywhere(
     everywhere: Everywhere, steps: Steps, levels: Sequence[Index]
 ) -> tuple[Bools, Bools]:
-    """Whether (N, k_1, ..., k_F) each drawn process holds at the levels: by what the study is judged
-    by, and by its mean.
+    """Whether (N, k_1, ..., k_F) each drawn process holds at the levels: by what the study is
+    judged by, and by its mean.
     """
     frame = steps.frame(grid_of(levels))
     shape = [len(n) for n in levels]
@@ -57,9 +57,9 @@ def assurance_of(ok: Bools) -> float:
 def assured_span(
     ok: Bools, steps: Steps, levels: Sequence[Index], asked: float, holding: Index | None
 ) -> Span | None:
-    """The largest span of the levels at all of which at once as large a share of the drawn processes
-    ok (N, k_1, ..., k_F) holds as is asked; None where there is none. holding (F,): steps that it
-    must hold. Every span there is is looked at.
+    """The largest span of the levels at all of which at once as large a share of the drawn
+    processes ok (N, k_1, ..., k_F) holds as is asked; None where there is none. holding (F,): steps
+    that it must hold. Every span there is is looked at.
     """
     draws = len(ok)
     packed = np.moveaxis(np.packbits(ok, axis=0), 0, -1)

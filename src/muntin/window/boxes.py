@@ -2,7 +2,7 @@
 
 Where the nodes of a grid are all bench steps, the largest box of the grid is it. Where they are
 fewer, that box is settled: judged at its corners, at the middles of its sides and at bench steps
-between the nodes, cut where one of these fails, and its sides moved out to the last step that holds.
+between the nodes, cut where one of these fails, its sides moved out to the last step that holds.
 """
 
 from __future__ import annotations
@@ -14,11 +14,10 @@ import numpy as np
 from numpy.typing import NDArray
 
 from muntin.window.largest import Bools, largest_box, node_widths
-from muntin.window.steps import Judged, Steps, corners, grid_of, whole
+from muntin.window.steps import Condition, Judged, Steps, corners, grid_of, whole
 
 Array = NDArray[np.float64]
 Index = NDArray[np.intp]
-Condition = dict[str, object]
 Ranges = dict[str, tuple[object, object]]
 # Of a box or a slab of so many bench steps every one is judged, else so many scattered ones.
 _EVERY, _SCATTER, _SLAB_EVERY, _SLAB_SCATTER = 1500, 256, 160, 48

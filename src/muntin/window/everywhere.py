@@ -109,8 +109,8 @@ def share_of_wells(draws: JointDraws, f: Array, target: Target, wander: Array) -
     inside = (errors.inside**2).sum(1)[:, None] + wander
     noise = errors.noise[:, None] ** 2
     if draws.link != "logit":
-        ends = (latent_of(draws.link, end) for end in (target.low, target.high))
-        return _between(f, *ends, np.sqrt(inside + noise))
+        low, high = (latent_of(draws.link, end) for end in (target.low, target.high))
+        return _between(f, low, high, np.sqrt(inside + noise))
     scale, ceiling = (errors.scale**2).sum(1)[:, None], errors.ceiling[:, None]
     sd, out = np.sqrt(inside), np.zeros(f.shape)
     for z, weight in zip(_Z, _W / _W.sum(), strict=True):

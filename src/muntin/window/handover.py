@@ -17,13 +17,13 @@ from numpy.typing import NDArray
 
 from muntin.record.factors import Factor
 from muntin.window.assured import asked_levels, assurance_of, assured_span, holding_everywhere
-from muntin.window.boxes import Box, Condition, Span, share_of
+from muntin.window.boxes import Box, Span, share_of
 from muntin.window.everywhere import Everywhere
 from muntin.window.largest import Bools
 from muntin.window.margins import Margin, edge_table, margins_of
 from muntin.window.ranges import Spans, spans_of_window
 from muntin.window.repeats import Optimism, Repeat, optimism_of
-from muntin.window.steps import Judged, Steps
+from muntin.window.steps import Condition, Judged, Steps, condition_of
 
 if TYPE_CHECKING:
     from muntin.window.assessment import Assessment
@@ -97,7 +97,7 @@ def hand_over(
     required, by = definition.required_probability, definition.judged_by
     asked, seed = required if assurance is None else assurance, view.seed if seed is None else seed
     there = window.setpoint[[*definition.factor_names]].to_frame().T.reset_index(drop=True)
-    setpoint = there.iloc[0].to_dict()
+    setpoint = condition_of(there)
     judged = Judged(Steps.at(definition, setpoint), lambda frame: view.judged(frame, by))
     judged.learn(window.grid)
     at = judged.steps.index(there)[0]
@@ -132,7 +132,11 @@ def corners_of(view: Assessment, setpoint: Condition) -> tuple[Corner, ...]:
     p_well, p_mean = view.judged(frame, "well"), view.judged(frame, "mean")
     order = np.argsort(p_mean if view.study.definition.judged_by == "mean" else p_well)
     return tuple(
-        Corner(condition=frame.iloc[i].to_dict(), p_well=float(p_well[i]), p_mean=float(p_mean[i]))
+        Corner(
+            condition=condition_of(frame.iloc[[i]]),
+            p_well=float(p_well[i]),
+            p_mean=float(p_mean[i]),
+        )
         for i in order
     )
 
@@ -178,12 +182,11 @@ def _boxes(
 def _box(judged: Judged, span: Span, ok: Bools, mean: Bools) -> Box:
     index, p = judged.within(span.low, span.high)
     worst = int(np.argmin(p))
-    ends = (judged.steps.frame(end[None]).iloc[0].to_dict() for end in (span.low, span.high))
-    low, high = ends
+    low, high = judged.steps.condition(span.low), judged.steps.condition(span.high)
     return Box(
         ranges={name: (low[name], high[name]) for name in low},
         least=float(p[worst]),
-        least_at=judged.steps.frame(index[[worst]]).iloc[0].to_dict(),
+        least_at=judged.steps.condition(index[worst]),
         assurance=assurance_of(ok),
         mean_everywhere=assurance_of(mean),
         share=share_of(judged.steps, span),

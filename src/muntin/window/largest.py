@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from functools import reduce
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -51,7 +52,7 @@ def spans_of(nodes: int, holding: int | None = None) -> tuple[Index, Index]:
     return first[keep], last[keep]
 
 
-def over_spans(values: NDArray, axis: int, spans: tuple[Index, Index]) -> NDArray:
+def over_spans(values: NDArray[Any], axis: int, spans: tuple[Index, Index]) -> NDArray[Any]:
     """The bitwise AND over each span of an axis, which then runs over the spans (m,)."""
     moved = np.moveaxis(values, axis, 0)
     first, last = spans

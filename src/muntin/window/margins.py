@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -55,6 +55,26 @@ class Line:
         out = np.repeat(self.at[None], len(moved), axis=0)
         out[:, self.axis] = moved
         return out
+
+
+@dataclass(frozen=True, eq=False)
+class Edge:
+    """One end of the window on a line: its place (raw unit), and the step in the middle of what is
+    inside there.
+    """
+
+    line: Line
+    end: End
+    place: float
+    middle: int
+
+    def asked(self, count: int) -> Index:
+        """Steps (k,) from the middle to the end of a factor of so many steps, where draws are
+        asked.
+        """
+        stop = 0 if self.end == "low" else count - 1
+        ticks = np.linspace(self.middle, stop, min(abs(stop - self.middle) + 1, _DRAWN))
+        return np.array([*dict.fromkeys(np.round(ticks).astype(int).tolist())], dtype=np.intp)
 
 
 @dataclass(frozen=True)
@@ -135,13 +155,12 @@ def edge_table(
     or past the middle of what is inside; found, the share of processes that have it on the line.
     """
     steps = judged.steps
+    found = [e for line in _lines(steps, at, span) for e in _edges(judged, required, line, at)]
     rows = []
-    for line in _lines(steps, at, span):
-        for end, found, middle in _ends(judged, required, line, at):
-            row = steps.frame(line.indices(line.steps[:1])).iloc[0].to_dict()
-            drawn = _drawn_crossings(everywhere, steps, line, middle, end)
-            row |= {steps.names[line.axis]: found, "factor": steps.names[line.axis], "end": end}
-            rows.append(row | _interval(drawn))
+    for edge, drawn in zip(found, _drawn_crossings(everywhere, steps, found), strict=True):
+        moved = steps.names[edge.line.axis]
+        row = steps.condition(edge.line.at) | {moved: edge.place, "factor": moved, "end": edge.end}
+        rows.append(row | _interval(drawn))
     columns = [*steps.definition.factor_names, "factor", "end", "low", "high", "found"]
     return pd.DataFrame(rows, columns=columns)
 
@@ -170,11 +189,9 @@ def _lines(steps: Steps, at: Index, span: Span | None) -> Iterator[Line]:
                 yield line_through(steps, place, moved)
 
 
-def _ends(
-    judged: Judged, required: float, line: Line, at: Index
-) -> Iterator[tuple[End, float, int]]:
-    """Ends of the run of steps inside the window on a line, where it crosses and the step in the
-    middle of the run: the run that holds the set point's step, else the longest.
+def _edges(judged: Judged, required: float, line: Line, at: Index) -> Iterator[Edge]:
+    """Where the run of steps inside the window on a line ends with a crossing: the run that holds
+    the set point's step, else the longest.
     """
     inside = judged(line.indices()) >= required
     runs = _runs(inside)
@@ -187,7 +204,7 @@ def _ends(
     for end in ENDS:
         found = crossing(judged, required, line, middle, end)
         if found is not None and not found.limited:
-            yield end, found.place, middle
+            yield Edge(line, end, found.place, middle)
 
 
 def _runs(inside: NDArray[np.bool_]) -> list[tuple[int, int]]:
@@ -197,22 +214,30 @@ def _runs(inside: NDArray[np.bool_]) -> list[tuple[int, int]]:
 
 
 def _drawn_crossings(
-    everywhere: Everywhere, steps: Steps, line: Line, middle: int, end: End
-) -> Array:
-    """The crossing (N,) of each drawn process, raw unit: the first from the middle step to the
-    end; infinite, away from the middle, where the line ends first, and toward it where the process
-    is outside at the middle already.
+    everywhere: Everywhere, steps: Steps, edges: Sequence[Edge]
+) -> Iterator[Array]:
+    """The place (N,) of each edge in each drawn process, raw unit: the first crossing from the
+    middle step to the end; infinite, away from the middle, where the line ends first, and toward
+    it where the process is outside at the middle already.
     """
-    stop = 0 if end == "low" else int(steps.counts[line.axis]) - 1
-    ticks = np.linspace(middle, stop, min(abs(stop - middle) + 1, _DRAWN))
-    some = np.array([*dict.fromkeys(np.round(ticks).astype(np.intp).tolist())], dtype=np.intp)
-    frame = steps.frame(line.indices(some))
-    height = everywhere.margin(frame)
-    sign = -1.0 if end == "low" else 1.0
-    place, levels = np.full(len(height), sign * np.inf), steps.levels[line.axis][some]
+    if not edges:
+        return
+    asked = [edge.asked(int(steps.counts[edge.line.axis])) for edge in edges]
+    parts = [edge.line.indices(some) for edge, some in zip(edges, asked, strict=True)]
+    heights = everywhere.margin(steps.frame(np.concatenate(parts)))
+    stops = np.cumsum([len(some) for some in asked])[:-1]
+    for edge, some, height in zip(edges, asked, np.split(heights, stops, axis=1), strict=True):
+        away = -np.inf if edge.end == "low" else np.inf
+        yield _first_below(height, steps.levels[edge.line.axis][some], away)
+
+
+def _first_below(height: Array, levels: Array, away: float) -> Array:
+    """Where heights (N, k) first fall below 0 along levels (k,): `away` where they never do, minus
+    that where the first is below 0 already.
+    """
     outside = height < 0.0
     first = np.where(outside.any(axis=1), outside.argmax(axis=1), -1)
-    place[first == 0] = -sign * np.inf
+    place = np.where(first == 0, -away, away)
     rows = np.flatnonzero(first > 0)
     j = first[rows]
     place[rows] = _between(levels[j - 1], levels[j], height[rows, j - 1], height[rows, j])

@@ -10,10 +10,10 @@ in already; it is conditional on the model, its priors and the data.
 
 The probability of a set point that was picked for having the highest one is not biased by the
 picking if the model is right: given the data it is an expectation already, whatever is chosen with
-them (Dawid 1994, Selection paradoxes of Bayesian inference, from memory). What it can hide is that the
-model is not right there, which is most likely where a surface looks best, and which no number from
-the same model can tell. Stated are therefore how far the share of new wells that pass may be from
-its mean, over joint draws of surface and errors, and a repeat that tests it.
+them (Dawid 1994, Selection paradoxes of Bayesian inference, from memory). What it can hide is that
+the model is not right there, which is most likely where a surface looks best, and which no number
+from the same model can tell. Stated are therefore how far the share of new wells that pass may be
+from its mean, over joint draws of surface and errors, and a repeat that tests it.
 """
 
 from __future__ import annotations
@@ -29,12 +29,12 @@ from muntin.record.responses import Response
 from muntin.window.everywhere import Everywhere
 from muntin.window.predicted import Predicted
 from muntin.window.probability import Target, process_mean
+from muntin.window.steps import Condition, condition_of
 
 if TYPE_CHECKING:
     from muntin.window.assessment import Assessment
 
 Array = NDArray[np.float64]
-Condition = dict[str, object]
 # Wells of the repeat that is proposed: so many that one which fails by chance is seen as chance.
 WELLS = 4
 _LEVELS = (0.025, 0.975)
@@ -116,7 +116,7 @@ def best_run(view: Assessment, response: Response) -> Repeat | None:
     if (at_least is None) == (at_most is None) or readings.empty:
         return None
     sign = 1.0 if at_most is None else -1.0
-    best = readings.loc[(sign * readings["y"]).idxmax()]
+    best = readings.iloc[int(np.argmax(sign * readings["y"].to_numpy(dtype=float)))]
     names = [*view.study.definition.factor_names]
     there = pd.DataFrame([best[names].to_dict()], columns=names)
     known = _new_well(view, response, there)
@@ -125,7 +125,7 @@ def best_run(view: Assessment, response: Response) -> Repeat | None:
         response=response.name,
         plate=str(best["plate"]),
         well=str(best["well"]),
-        condition=there.iloc[0].to_dict(),
+        condition=condition_of(there),
         read=read,
         expected=known["mean"],
         low=known["low"],

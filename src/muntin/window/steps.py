@@ -14,6 +14,7 @@ from muntin.record.definition import Definition
 
 Array = NDArray[np.float64]
 Index = NDArray[np.intp]
+Condition = dict[str, object]
 Judge = Callable[[pd.DataFrame], Array]
 
 
@@ -50,6 +51,10 @@ class Steps:
         for axis, name in enumerate(self.names):
             columns[name] = self.levels[axis][index[:, axis]]
         return pd.DataFrame(columns)[list(self.definition.factor_names)]
+
+    def condition(self, index: Index) -> Condition:
+        """The condition (raw units, all factors) of an index (F,)."""
+        return condition_of(self.frame(index[None]))
 
     def index(self, frame: pd.DataFrame) -> Index:
         """The nearest steps (n, F) to conditions in raw units."""
@@ -109,6 +114,11 @@ class Judged:
         every = np.array([*self.known], dtype=np.intp).reshape(len(self.known), -1)
         rows = ((every >= low) & (every <= high)).all(axis=1)
         return every[rows], np.array([*self.known.values()])[rows]
+
+
+def condition_of(frame: pd.DataFrame) -> Condition:
+    """The first row of a frame of conditions."""
+    return {str(name): value for name, value in frame.iloc[0].to_dict().items()}
 
 
 def corners(low: Index, high: Index) -> Index:
