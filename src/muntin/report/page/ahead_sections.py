@@ -13,7 +13,13 @@ from muntin.record.study import Study
 from muntin.report.page.basis import Basis
 from muntin.report.page.blocks import Section, Table
 from muntin.report.page.phrases import chance, heading, settings
-from muntin.report.plan_text import bridging_line, not_forecast_line, plan_heading, usual_reason
+from muntin.report.plan_text import (
+    bridging_line,
+    not_forecast_line,
+    plan_heading,
+    usual_reason,
+    why_text,
+)
 from muntin.report.ruling_text import ruling_line
 from muntin.report.words import amount_text, likely_text, per_cent, share_text
 
@@ -87,10 +93,10 @@ def _wells(basis: Basis, plan: Plan) -> Table:
         ["role", *names], sort=False
     ):
         first = here.iloc[0]
-        reasons = "; ".join(dict.fromkeys(str(reason) for reason in here["reason"]))
+        reasons = why_text(here, definition.factors)
         wells = ", ".join(here["well"])
         p_now = [] if fresh else [chance(float(first["p_now"]))]
-        rows.append((wells, first["role"], *settings(definition, first), *p_now, reasons))
+        rows.append((wells, first["role"], *settings(definition, first.to_dict()), *p_now, reasons))
     head = (
         "wells",
         "role",

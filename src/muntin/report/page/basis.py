@@ -12,6 +12,7 @@ from muntin.report.drawn import Drawn
 from muntin.report.facts import Facts
 from muntin.report.page.put_back import PutBack
 from muntin.window.assessment import Assessment
+from muntin.window.handover import HandOver
 from muntin.window.window import Window
 
 if TYPE_CHECKING:
@@ -23,15 +24,16 @@ class Basis:
     """All that the sections are written from.
 
     window is None while nothing was read; plan is None where no plate can be planned, and
-    `unplanned` says why. put_back: what the study says with everything that was left out, None
-    where nothing was. drawn: the figures by name. facts: the same as plain values, with settings,
-    versions and inputs.
+    `unplanned` says why. handed: the window in ranges, None where the data support none. put_back:
+    what the study says with everything that was left out, None where nothing was. drawn: the
+    figures by name. facts: the same as plain values, with settings, versions and inputs.
     """
 
     view: Assessment
     window: Window | None
     plan: Plan | None
     unplanned: tuple[str, ...]
+    handed: HandOver | None
     put_back: PutBack | None
     drawn: Mapping[str, Drawn]
     facts: Facts

@@ -20,6 +20,17 @@ class Table:
     rows: tuple[tuple[str, ...], ...]
     numbers: tuple[int, ...] = ()
 
+    @property
+    def full(self) -> Table:
+        """The table without the columns that are empty in every row."""
+        kept = [i for i in range(len(self.head)) if not i or any(row[i] for row in self.rows)]
+        return Table(
+            caption=self.caption,
+            head=tuple(self.head[i] for i in kept),
+            rows=tuple(tuple(row[i] for i in kept) for row in self.rows),
+            numbers=tuple(new for new, old in enumerate(kept) if old in self.numbers),
+        )
+
 
 @dataclass(frozen=True, kw_only=True)
 class Section:

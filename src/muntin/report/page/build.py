@@ -23,11 +23,13 @@ from muntin.report.page.evidence_sections import (
     plates_section,
     predicted_section,
 )
+from muntin.report.page.handover_section import handover_section
 from muntin.report.page.html import page_html
 from muntin.report.page.put_back import put_back
 from muntin.report.page.record_sections import cautions_section, data_section, provenance_section
 from muntin.report.page.standing_sections import conditional, responses_section, window_section
 from muntin.window.assessment import Assessment
+from muntin.window.handover import hand_over
 
 if TYPE_CHECKING:
     from muntin.bench.plan import Plan
@@ -36,6 +38,7 @@ if TYPE_CHECKING:
 _SECTIONS: tuple[Callable[[Basis], Section], ...] = (
     conditional,
     window_section,
+    handover_section,
     responses_section,
     next_section,
     predicted_section,
@@ -87,6 +90,7 @@ def build_page(
     the name of each step.
     """
     window = None if view.fresh else view.window()
+    handed = None if window is None or window.unsupported else hand_over(view)
     tell("putting back what was left out")
     back = put_back(view)
     tell("drawing the figures")
@@ -109,6 +113,7 @@ def build_page(
         window=window,
         plan=plan,
         unplanned=tuple(unplanned),
+        handed=handed,
         put_back=back,
         drawn=drawn,
         facts=facts,

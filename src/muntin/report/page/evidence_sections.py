@@ -137,7 +137,7 @@ def _left_out(basis: Basis, response: Response) -> list[tuple[str, ...]]:
     wells: pd.DataFrame = basis.study.informing()
     wells = wells[wells[f"{response.name}_state"] == "excluded"]
     values = {} if basis.put_back is None else basis.put_back.values
-    rows = []
+    rows: list[tuple[str, ...]] = []
     for row in wells.to_dict("records"):
         value = values.get((row["plate"], row["well"], response.name))
         shown = "" if value is None else measure(value)

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from datetime import datetime
 from importlib.resources import files
 
 from markupsafe import Markup
@@ -13,7 +14,7 @@ from muntin.report.page.blocks import Section, Table
 from muntin.report.page.pointing import pointed_at
 
 _DOUBTS = ("Not supported by the data", "Provisional")
-_HASH = "SHA-256"
+_HASH, _LONG, _BRIEF = "SHA-256", 32, 12
 
 
 def page_html(basis: Basis, sections: Sequence[Section]) -> str:
@@ -31,7 +32,7 @@ def page_html(basis: Basis, sections: Sequence[Section]) -> str:
     return environment.get_template("page.html").render(
         title=basis.definition.title,
         version=basis.facts["versions"]["muntin"],
-        written_at=basis.facts["written_at"],
+        written_at=_day_and_time(basis.facts["written_at"]),
         style=_own("page.css"),
         script=_own("pointing.js"),
         standing=standing,
@@ -41,6 +42,10 @@ def page_html(basis: Basis, sections: Sequence[Section]) -> str:
         pointing=pointed_at(basis.definition, basis.standing, maps[0]) if maps else {},
         cell_class=_cell_class,
     )
+
+
+def _day_and_time(written_at: str) -> str:
+    return f"{datetime.fromisoformat(written_at):%Y-%m-%d, %H:%M} UTC"
 
 
 def _own(name: str) -> Markup:
@@ -55,4 +60,6 @@ def _cell_class(table: Table, column: int, cell: str) -> str:
         return cell
     if heading == _HASH:
         return "hash"
-    return "figure" if column in table.numbers else "text"
+    if column in table.numbers:
+        return "figure"
+    return "long" if len(cell) > _LONG else "brief" if len(cell) <= _BRIEF else "text"

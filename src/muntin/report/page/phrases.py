@@ -38,12 +38,22 @@ def settings(definition: Definition, row: Mapping[Any, Any]) -> tuple[str, ...]:
 
 
 def chance(value: float) -> str:
-    """Return a probability with two decimals, never rounded to a certainty that it is not."""
-    if 0.0 < value < 0.005:
+    """Return a probability with two decimals, never one that sounds certain."""
+    if value < 0.005:
         return "< 0.01"
-    return "> 0.99" if 0.995 < value < 1.0 else f"{value:.2f}"
+    return "> 0.99" if value >= 0.995 else f"{value:.2f}"
 
 
 def measure(value: float) -> str:
-    """Return a reading or a mean with three significant digits."""
-    return f"{value:.3g}" if abs(value) < 1000 else f"{value:.0f}"
+    """Return a reading or a mean with three significant digits, "0.950" and "0.917" alike."""
+    return f"{value:#.3g}".removesuffix(".") if abs(value) < 1000 else f"{value:.0f}"
+
+
+def fixed_name(name: str) -> str:
+    """Return a key of [fixed] in words: "elution volume, µL" for elution_volume_ul."""
+    words = name.split("_")
+    unit = _UNITS.get(words[-1]) if len(words) > 1 else None
+    return f"{' '.join(words[:-1])}, {unit}" if unit else " ".join(words)
+
+
+_UNITS = {"ul": "µL", "ml": "mL", "mg": "mg", "minutes": "min", "mm": "mM"}

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import itertools
 from collections.abc import Iterator
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 import pandas as pd
 
@@ -12,7 +12,7 @@ from muntin.record.factors import Factor
 from muntin.record.faults import number
 from muntin.report.page.basis import Basis
 from muntin.report.page.blocks import Section, Table
-from muntin.report.page.phrases import chance, heading, measure, settings, target_text
+from muntin.report.page.phrases import chance, fixed_name, heading, measure, settings, target_text
 from muntin.report.text import window_lines
 from muntin.report.words import JUDGED_BY, chance_text
 
@@ -45,7 +45,7 @@ def conditional(basis: Basis) -> Section:
     tables = [_factors(definition.factors)]
     if definition.fixed:
         rows = tuple(
-            (name.replace("_", " "), value if isinstance(value, str) else number(value))
+            (fixed_name(name), value if isinstance(value, str) else number(value))
             for name, value in definition.fixed.items()
         )
         caption = "Kept fixed: the window holds for these values only"
@@ -89,7 +89,7 @@ def window_section(basis: Basis) -> Section:
     )
 
 
-def _conditions(basis: Basis) -> Iterator[tuple[str, dict[str, object]]]:
+def _conditions(basis: Basis) -> Iterator[tuple[str, dict[Any, Any]]]:
     """The set point, and the corners of the ranges where these are few."""
     window, definition = basis.standing, basis.definition
     if window is None:
