@@ -9,7 +9,7 @@ from numpy.typing import NDArray
 
 from muntin.window.boxes import Span
 from muntin.window.everywhere import Everywhere
-from muntin.window.largest import Bools, node_widths, over_spans, spans_of
+from muntin.window.largest import Bools, over_spans, spans_of
 from muntin.window.steps import Steps, grid_of
 
 Array = NDArray[np.float64]
@@ -69,8 +69,7 @@ def assured_span(
         held = None if holding is None else int(np.flatnonzero(at == holding[axis])[0])
         spans = spans_of(len(at), held)
         packed = over_spans(packed, axis, spans)
-        reached = np.concatenate([[0.0], np.cumsum(node_widths(steps.coded(axis)[at]))])
-        size = np.multiply.outer(size, reached[spans[1] + 1] - reached[spans[0]])
+        size = np.multiply.outer(size, steps.axis(axis, at).size(*spans))
         found.append(spans)
     held_by = np.bitwise_count(packed).sum(axis=-1, dtype=np.int64)
     size = np.where(held_by >= asked * draws - 1e-9, size, -1.0)

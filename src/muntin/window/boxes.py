@@ -13,7 +13,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from muntin.window.largest import Bools, largest_box, node_widths
+from muntin.window.largest import Bools, largest_box
 from muntin.window.steps import Condition, Judged, Steps, corners, grid_of, whole
 
 Array = NDArray[np.float64]
@@ -66,10 +66,16 @@ class Span:
 def share_of(steps: Steps, span: Span) -> float:
     """Share of the factors' ranges, on their scales, that a span takes up, by its steps."""
     parts = []
-    for axis in range(len(steps.levels)):
-        widths = node_widths(steps.coded(axis))
-        parts.append(widths[span.low[axis] : span.high[axis] + 1].sum() / widths.sum())
+    for axis, (low, high) in enumerate(zip(span.low, span.high, strict=True)):
+        whole_axis = steps.axis(axis)
+        parts.append(float(whole_axis.size(low, high) / (1.0 + whole_axis.step)))
     return float(np.prod(parts))
+
+
+def ranges_of(steps: Steps, span: Span) -> Ranges:
+    """The ranges of a span, raw units, in the order of the factors."""
+    low, high = steps.condition(span.low), steps.condition(span.high)
+    return {name: (low[name], high[name]) for name in low}
 
 
 def largest_span(
@@ -81,11 +87,11 @@ def largest_span(
     """
     index = grid_of(nodes)
     inside = np.array([judged.known.get(tuple(row), 0.0) >= required for row in index.tolist()])
-    widths = [node_widths(judged.steps.coded(axis)[n]) for axis, n in enumerate(nodes)]
+    axes = [judged.steps.axis(axis, n) for axis, n in enumerate(nodes)]
     held = None
     if holding is not None:
         held = [int(np.flatnonzero(n == at)[0]) for n, at in zip(nodes, holding, strict=True)]
-    found = largest_box(inside.reshape([len(n) for n in nodes]), widths, held)
+    found = largest_box(inside.reshape([len(n) for n in nodes]), axes, held)
     if found is None:
         return None
     ends = [(n[first], n[last]) for n, (first, last) in zip(nodes, found, strict=True)]

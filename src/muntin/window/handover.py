@@ -17,7 +17,7 @@ from numpy.typing import NDArray
 
 from muntin.record.factors import Factor
 from muntin.window.assured import asked_levels, assurance_of, assured_span, holding_everywhere
-from muntin.window.boxes import Box, Span, share_of
+from muntin.window.boxes import Box, Span, ranges_of, share_of
 from muntin.window.everywhere import Everywhere
 from muntin.window.largest import Bools
 from muntin.window.margins import Margin, edge_table, margins_of
@@ -182,9 +182,8 @@ def _boxes(
 def _box(judged: Judged, span: Span, ok: Bools, mean: Bools) -> Box:
     index, p = judged.within(span.low, span.high)
     worst = int(np.argmin(p))
-    low, high = judged.steps.condition(span.low), judged.steps.condition(span.high)
     return Box(
-        ranges={name: (low[name], high[name]) for name in low},
+        ranges=ranges_of(judged.steps, span),
         least=float(p[worst]),
         least_at=judged.steps.condition(index[worst]),
         assurance=assurance_of(ok),

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from dataclasses import dataclass
 from functools import reduce
 from typing import Any
 
@@ -15,25 +16,35 @@ Index = NDArray[np.intp]
 Spans = tuple[tuple[int, int], ...]
 
 
+@dataclass(frozen=True, eq=False)
+class Axis:
+    """Places of the nodes (k,), ascending, and the step that a node counts for by itself."""
+
+    nodes: Array
+    step: float
+
+    def size(self, first: Index, last: Index) -> Array:
+        """Size (m,) of spans from first to last nodes (m,): their width and one step."""
+        return np.asarray(self.nodes[last] - self.nodes[first] + self.step)
+
+
 def largest_box(
-    inside: Bools, widths: Sequence[Array], holding: Sequence[int] | None = None
+    inside: Bools, axes: Sequence[Axis], holding: Sequence[int] | None = None
 ) -> Spans | None:
     """First and last node on each axis of the largest box, exactly; None where there is none.
 
-    inside (k_1, ..., k_F): whether a node may lie in it. widths (k_i,): what the nodes of an axis
-    count for; the size of a box is the product of its sums over the axes. holding: a node that
-    the box must hold. Of boxes of one size that which begins at the lowest nodes is taken.
+    inside (k_1, ..., k_F): whether a node may lie in it. axes: where its nodes lie. holding: a node
+    that the box must hold. Of boxes of one size that which begins at the lowest nodes is taken.
 
     Every box there is is looked at: per axis the AND over each of its k (k + 1) / 2 spans is that
     over the span one node shorter and one node more, so N nodes make about N^2 / 2^F booleans.
     """
     good, spans, sizes = inside, [], []
-    for axis, width in enumerate(widths):
-        found = spans_of(len(width), None if holding is None else holding[axis])
+    for axis, at in enumerate(axes):
+        found = spans_of(len(at.nodes), None if holding is None else holding[axis])
         good = over_spans(good, axis, found)
-        reached = np.concatenate([[0.0], np.cumsum(width)])
         spans.append(found)
-        sizes.append(reached[found[1] + 1] - reached[found[0]])
+        sizes.append(at.size(*found))
     if not good.any():
         return None
     size = np.where(good, reduce(np.multiply.outer, sizes, np.ones(())), -1.0)
@@ -65,13 +76,3 @@ def over_spans(values: NDArray[Any], axis: int, spans: tuple[Index, Index]) -> N
         rows = np.flatnonzero(last - first == length)
         out[rows] = running[first[rows]]
     return np.moveaxis(out, 0, axis)
-
-
-def node_widths(positions: Array) -> Array:
-    """What nodes at ascending positions (k,) count for, (k,): half the way to each neighbour, the
-    first and the last as if the grid went on; 1 for a node alone.
-    """
-    if len(positions) < 2:
-        return np.ones(len(positions))
-    gaps = np.diff(positions)
-    return 0.5 * (np.concatenate([gaps[:1], gaps]) + np.concatenate([gaps, gaps[-1:]]))

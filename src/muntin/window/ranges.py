@@ -43,7 +43,7 @@ def spans_of_window(view: Assessment, window: Window, judged: Judged, at: Index)
     required = view.study.definition.required_probability
     if judged(at[None])[0] < required:
         return Spans(None, None)
-    nodes, seen = _grid_nodes(window, judged), judged
+    nodes, seen = judged.nodes(), judged
     whole = all(len(n) == k for n, k in zip(nodes, judged.steps.counts, strict=True))
     if not (window.regular and nodes):
         nodes = _sparse_nodes(judged.steps, at)
@@ -97,12 +97,6 @@ def _set_as_kept(definition: Definition) -> Definition:
     """The definition with the half-width of each tolerance for the sd of setting."""
     factors = [f.model_copy(update={"set_sd": f.kept_within}) for f in definition.factors]
     return definition.model_copy(update={"factors": tuple(factors)})
-
-
-def _grid_nodes(window: Window, judged: Judged) -> list[Index]:
-    """Steps of each factor that the window's grid has with the choices held."""
-    index = judged.steps.index(judged.steps.of_grid(window.grid))
-    return [np.unique(column) for column in index.T]
 
 
 def _sparse_nodes(steps: Steps, at: Index) -> list[Index]:

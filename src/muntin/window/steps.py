@@ -11,6 +11,7 @@ import pandas as pd
 from numpy.typing import NDArray
 
 from muntin.record.definition import Definition
+from muntin.window.largest import Axis
 
 Array = NDArray[np.float64]
 Index = NDArray[np.intp]
@@ -71,6 +72,12 @@ class Steps:
         at = np.log(levels) if factor.scale == "log" else levels
         return np.asarray((at - at[0]) / (at[-1] - at[0]) if len(at) > 1 else np.zeros(1))
 
+    def axis(self, axis: int, some: Index | None = None) -> Axis:
+        """Where all steps of a factor lie, or some of them; one counts for an even share."""
+        coded = self.coded(axis)
+        nodes = coded if some is None else coded[some]
+        return Axis(nodes, 1.0 / (len(coded) - 1) if len(coded) > 1 else 1.0)
+
     def of_grid(self, grid: pd.DataFrame) -> pd.DataFrame:
         """The rows of a grid that have the choices held."""
         rows = np.ones(len(grid), dtype=bool)
@@ -95,6 +102,11 @@ class Judged:
         rows = self.steps.of_grid(grid)
         for at, p in zip(self.steps.index(rows).tolist(), rows["probability"], strict=True):
             self.known[tuple(at)] = float(p)
+
+    def nodes(self) -> list[Index]:
+        """Steps of each factor at which anything is known."""
+        every = np.array([*self.known], dtype=np.intp).reshape(len(self.known), -1)
+        return [np.unique(column) for column in every.T]
 
     def __call__(self, index: Index) -> Array:
         """Probabilities (n,) at indices (n, F)."""
