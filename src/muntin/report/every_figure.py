@@ -2,9 +2,12 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterator
 from typing import TYPE_CHECKING
 
-from muntin.report.drawn import Drawn
+from muntin.report.drawn import Drawn, drawn
+from muntin.report.forecast_figure import draw_forecast
+from muntin.report.window_map import map_figure
 from muntin.window.assessment import Assessment
 
 if TYPE_CHECKING:
@@ -18,4 +21,11 @@ def report_figures(view: Assessment, plan: Plan | None = None) -> tuple[Drawn, .
     "plates-<response>", "errors", "joint", "forecast", "protein"; what has nothing to show is left
     out, all of the model's where nothing was read or the data do not support the window.
     """
-    raise NotImplementedError
+    return tuple(_every(view, plan))
+
+
+def _every(view: Assessment, plan: Plan | None) -> Iterator[Drawn]:
+    figure, frames = map_figure(view, plan)
+    yield drawn(figure, "map", "Map of the judged probability.", frames)
+    if plan is not None and not view.fresh and len(plan.forecast) > 1:
+        yield drawn(draw_forecast(view.study, plan), "forecast", "Forecast against test wells.")

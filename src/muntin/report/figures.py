@@ -30,7 +30,7 @@ def draw(view: Assessment, window: Window | None, wells: pd.DataFrame | None = N
     """
     definition = view.study.definition
     run, proposed = verdicts(view.study), proposed_conditions(view, wells)
-    titles = definition.title, _subtitle(view, window)
+    titles = figure_titles(view, window)
     window = None if window is None or window.unsupported else window
     if map_factors(definition) is not None:
         return draw_map(definition, window, run, proposed, titles)
@@ -49,6 +49,11 @@ def proposed_conditions(view: Assessment, wells: pd.DataFrame | None) -> pd.Data
     run = wells[wells["role"].isin(["test", "bridge", "reference"])]
     tying = run.assign(bridging=run["role"] != "test").groupby(names, sort=False)["bridging"]
     return tying.agg(wells="size", bridging="all").reset_index()
+
+
+def figure_titles(view: Assessment, window: Window | None) -> tuple[str, str]:
+    """Return the study's title, and what of its range the window takes."""
+    return view.study.definition.title, _subtitle(view, window)
 
 
 def _subtitle(view: Assessment, window: Window | None) -> str:

@@ -12,7 +12,7 @@ from muntin.record.definition import StopRule
 from muntin.record.study import Study
 from muntin.report.markers import figure_legend
 from muntin.report.ruling_text import ruling_line
-from muntin.report.style import ACCENT, INK, PAPER, dress, new_figure
+from muntin.report.style import ACCENT, INK, LINE, PAPER, dress, new_figure
 from muntin.report.words import per_cent
 
 if TYPE_CHECKING:
@@ -21,7 +21,6 @@ if TYPE_CHECKING:
 
     from muntin.bench.plan import Plan
 
-_LINE = "#1c5a80"
 _HEIGHT = 3.6
 
 
@@ -38,9 +37,9 @@ def draw_forecast(study: Study, plan: Plan) -> Figure:
     figure = new_figure(_HEIGHT, study.definition.title, verdict)
     left, right = figure.subplots(1, 2)
     at = int(np.flatnonzero(forecast["wells"] == (plan.wells["role"] == "test").sum())[0])
-    _curve(left, forecast["wrong_share"], at, _LINE, "o")
+    _curve(left, forecast["wrong_share"], at, LINE, "o")
     left.set_ylabel("May be called wrongly, %")
-    _curve(right, forecast["set_point"], at, _LINE, "o", "set point, expected probability")
+    _curve(right, forecast["set_point"], at, LINE, "o", "set point, expected probability")
     asked = f"chance that it reaches {per_cent(asked_of_set_point(study))}"
     _curve(right, forecast["reached"], at, INK, "s", asked)
     right.set(ylabel="Set point, probability in %", ylim=(-4.0, 104.0))
