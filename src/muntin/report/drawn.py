@@ -84,10 +84,10 @@ def frame_of(axes: Axes, x: str, y: str, held: dict[str, object]) -> Frame:
     left, right = axes.get_xlim()
     low, high = axes.get_ylim()
     return Frame(
-        left=box.x0,
-        top=1.0 - box.y1,
-        width=box.width,
-        height=box.height,
+        left=float(box.x0),
+        top=float(1.0 - box.y1),
+        width=float(box.width),
+        height=float(box.height),
         x=x,
         y=y,
         x_ends=(float(left), float(right)),

@@ -1,0 +1,152 @@
+"""Observed against predicted: each reading beside what the others, or earlier plates, say of it."""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING, Literal
+
+import numpy as np
+import pandas as pd
+
+from muntin.record.responses import Response
+from muntin.report.canvas import blank, finish, one_panel
+from muntin.report.markers import figure_legend
+from muntin.report.sections import response_named
+from muntin.report.style import ACCENT, INK, PAPER, QUIET, SERIES, dress, plain_ticks
+from muntin.report.words import axis_label
+from muntin.window.assessment import Assessment
+from muntin.window.left_out import beforehand, left_out
+
+if TYPE_CHECKING:
+    from matplotlib.axes import Axes
+    from matplotlib.figure import Figure
+
+By = Literal["others", "plates before"]
+_SAYS = {
+    "others": "Predicted from all other readings",
+    "plates before": "Predicted from the plates before",
+}
+_MARKERS = "osD^vP"
+
+
+def predicted(
+    view: Assessment,
+    response: str | None = None,
+    by: By = "others",
+    axes: Axes | None = None,
+) -> Axes:
+    """Draw the readings of a response against what is predicted for them, with 95 % intervals.
+
+    by: "others", all other readings, or "plates before", the plates before the reading's own (fits
+    made anew, a second or two each). Readings outside their interval have a red rim. response: the
+    first judged one read where None. Raises ValueError for other names, and where no plate has one
+    before it.
+    """
+    read = response_named(view, response)
+    table = predictions(view, read, by)
+    if table.empty:
+        raise ValueError("there are no plates before the first one: read a second plate")
+    title = f"{read.label}: observed against predicted"
+    axes, new = one_panel(axes, title, inside_text(table))
+    _draw(axes, read, table, by)
+    return finish(axes, new)
+
+
+def predictions(view: Assessment, response: Response, by: By) -> pd.DataFrame:
+    """Return the readings of a response with what is predicted for them. Raises ValueError."""
+    if by not in _SAYS:
+        raise ValueError(f"by {by!r} is none of {', '.join(_SAYS)}")
+    return (left_out if by == "others" else beforehand)(view, response)
+
+
+def predicted_figure(view: Assessment, response: Response) -> tuple[Figure, str]:
+    """Return the figure of one response, by all others and, where there are later plates, by the
+    plates before; and what it says.
+    """
+    tables: dict[By, pd.DataFrame] = {"others": left_out(view, response)}
+    later = beforehand(view, response)
+    if not later.empty:
+        tables["plates before"] = later
+    said = " ".join(f"{_SAYS[by]}: {inside_text(table)}." for by, table in tables.items())
+    title = f"{response.label}: observed against predicted"
+    figure, panels = blank(title, said, columns=len(tables), shared=False)
+    plates = [*dict.fromkeys(tables["others"]["plate"])]
+    for axes, (by, table) in zip(panels, tables.items(), strict=True):
+        _draw(axes, response, table, by, plates)
+    figure_legend(figure, panels)
+    return figure, said
+
+
+def inside_text(table: pd.DataFrame) -> str:
+    """Return how many readings lie in their interval, as "19 of 20 readings in their 95 % ..."."""
+    known = table[table["censored"] == 0]
+    inside = int((~_outside(known)).sum())
+    return f"{inside} of {len(known)} readings in their 95 % interval"
+
+
+def _outside(table: pd.DataFrame) -> pd.Series[bool]:
+    return (table["observed"] < table["low"]) | (table["observed"] > table["high"])
+
+
+def _draw(
+    axes: Axes, response: Response, table: pd.DataFrame, by: By, plates: list[str] | None = None
+) -> None:
+    _diagonal(axes, response, table)
+    plates = plates or [*dict.fromkeys(table["plate"])]
+    for number, plate in enumerate(plates):
+        here = table[table["plate"] == plate]
+        if here.empty:
+            continue
+        colour = SERIES[number % len(SERIES)][0]
+        axes.hlines(here["observed"], here["low"], here["high"], color=colour, alpha=0.4, zorder=2)
+        marker = _MARKERS[number % len(_MARKERS)]
+        for side, fill in ((0, colour), (-1, PAPER), (1, PAPER)):
+            one = here[here["censored"] == side]
+            label = plate if side == 0 else "only a limit was read"
+            if len(one):
+                axes.plot(
+                    one["predicted"],
+                    one["observed"],
+                    linestyle="none",
+                    marker=marker if side == 0 else "v" if side < 0 else "^",
+                    markersize=5.5,
+                    markerfacecolor=fill,
+                    markeredgecolor=PAPER if side == 0 else INK,
+                    markeredgewidth=0.6,
+                    label=label,
+                    zorder=3,
+                )
+    out = table[_outside(table) & (table["censored"] == 0)]
+    if len(out):
+        axes.plot(
+            out["predicted"],
+            out["observed"],
+            "o",
+            markersize=11,
+            markerfacecolor="none",
+            markeredgecolor=ACCENT,
+            markeredgewidth=1.6,
+            label="outside its 95 %",
+            zorder=4,
+        )
+    unit = axis_label("", response.unit).strip()
+    axes.set(xlabel=f"{_SAYS[by]} {unit}".strip(), ylabel=f"{response.label}, read {unit}".strip())
+    dress(axes)
+
+
+def _diagonal(axes: Axes, response: Response, table: pd.DataFrame) -> None:
+    """Set both axes to one range, the diagonal and the limits of the target drawn."""
+    values = table[["observed", "predicted"]].to_numpy(dtype=float)
+    low, high = float(np.nanmin(values)), float(np.nanmax(values))
+    if response.kind == "positive":
+        axes.set(xscale="log", yscale="log")
+        ends = low / (high / low) ** 0.08 / 1.02, high * (high / low) ** 0.08 * 1.02
+        for axis in (axes.xaxis, axes.yaxis):
+            plain_ticks(axis)
+    else:
+        more = 0.08 * (high - low) or 0.5
+        ends = low - more, high + more
+    axes.set(xlim=ends, ylim=ends)
+    axes.plot(ends, ends, color=QUIET, linewidth=1, zorder=1)
+    for limit in (response.at_least, response.at_most):
+        if limit is not None and ends[0] < limit < ends[1]:
+            axes.axhline(limit, color=INK, linewidth=1, linestyle=(0, (4, 3)), label="target")

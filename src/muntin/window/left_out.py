@@ -1,0 +1,105 @@
+"""Readings beside what others predict for them: all the others, or the plates before."""
+
+from __future__ import annotations
+
+from dataclasses import replace
+from typing import TYPE_CHECKING
+
+import numpy as np
+import pandas as pd
+from numpy.typing import NDArray
+
+from muntin.record.responses import Response
+from muntin.record.study import Study
+from muntin.window.coded import code, setting_sd
+from muntin.window.new_wells import reading_quantiles
+from muntin.window.predicted import Predicted
+from muntin.window.probability import Target
+
+if TYPE_CHECKING:
+    from muntin.window.assessment import Assessment
+
+Array = NDArray[np.float64]
+_LEVELS = (0.025, 0.5, 0.975)
+# Two-sided 95 % of a normal law.
+_WIDTH = 1.959964
+
+
+def left_out(view: Assessment, response: Response) -> pd.DataFrame:
+    """Every reading of a response beside what all other readings predict for it.
+
+    Columns: plate, well, role, observed, censored (-1 read below, 1 above, else 0), predicted, low
+    and high in the user's unit; the range is that of a normal law of the prediction's mean and sd
+    on the scale where noise is additive (ln of a positive response), central 95 %.
+    """
+    stack = view.stacks[response.name]
+    loos = [fit.loo for fit in stack.fits]
+    mean = stack.shares @ np.stack([loo.mean for loo in loos])
+    square = stack.shares @ np.stack([loo.sd**2 + (loo.mean - mean) ** 2 for loo in loos])
+    sd = np.sqrt(square)
+    three = np.stack([mean - _WIDTH * sd, mean, mean + _WIDTH * sd])
+    return _beside(view.study, response, np.exp(three) if response.kind == "positive" else three)
+
+
+def beforehand(view: Assessment, response: Response) -> pd.DataFrame:
+    """The readings of every later plate beside what the plates before it predict for a new plate.
+
+    Columns as those of `left_out`; predicted is the median. The fits are made anew, with the same
+    surrogate and seed, on the plates before in the order of the study. No rows where there is one
+    plate, or where the plates before have no reading of the response.
+    """
+    counting = [p.name for p in view.study.plates if not p.void]
+    found = [_next(view, response, counting[:at], counting[at]) for at in range(1, len(counting))]
+    rows = [table for table in found if table is not None]
+    if not rows:
+        return _beside(view.study, response, np.zeros((3, 0)), [])
+    return pd.concat(rows, ignore_index=True)
+
+
+def only(study: Study, plates: list[str]) -> Study:
+    """The study as if no other plates had been run."""
+    return replace(
+        study,
+        wells=study.wells[study.wells["plate"].isin(plates)],
+        plates=tuple(p for p in study.plates if p.name in plates),
+    )
+
+
+def _next(
+    view: Assessment, response: Response, before: list[str], plate: str
+) -> pd.DataFrame | None:
+    from muntin.window.assessment import assess
+
+    study = view.study
+    readings = study.readings(response.name)
+    readings = readings[readings["plate"] == plate]
+    earlier = only(study, before)
+    if readings.empty or earlier.readings(response.name).empty:
+        return None
+    alone = study.definition.model_copy(update={"responses": (response,)})
+    then = assess(replace(earlier, definition=alone), view.surrogate, "fast", view.seed)
+    surface = replace(then.surfaces[response.name], cloud=None)
+    measured = readings[[f"{n}_measured" for n in study.definition.factor_names]]
+    setting = setting_sd(study.definition, readings, measured.to_numpy(dtype=bool))
+    X = code(study.definition, readings)
+    law = Predicted.of(surface, X, Target(), setting)
+    return _beside(study, response, reading_quantiles(law, _LEVELS), [plate])
+
+
+def _beside(
+    study: Study, response: Response, three: Array, plates: list[str] | None = None
+) -> pd.DataFrame:
+    readings = study.readings(response.name)
+    if plates is not None:
+        readings = readings[readings["plate"].isin(plates)]
+    low, middle, high = three * response.unit_size
+    table = pd.DataFrame(
+        {
+            "plate": readings["plate"].to_numpy(),
+            "well": readings["well"].to_numpy(),
+            "role": readings["role"].to_numpy(),
+            "observed": readings["y"].to_numpy(dtype=float) * response.unit_size,
+            "censored": readings["censored"].to_numpy(dtype=int),
+        }
+    )
+    return table.assign(predicted=middle, low=low, high=high)
