@@ -12,6 +12,7 @@ from muntin.record.responses import Response
 from muntin.report.canvas import blank, finish, one_panel
 from muntin.report.markers import figure_legend
 from muntin.report.sections import (
+    best_word,
     factor_named,
     held_text,
     place,
@@ -38,7 +39,7 @@ if TYPE_CHECKING:
     from matplotlib.figure import Figure
 
 # Bands of new wells and of the process mean, the second on top of the first.
-_NEW, _MEAN = "#e6eff4", "#a5c6d9"
+_NEW, _MEAN = "#d6e5ed", "#94bbd2"
 _TARGET: dict[str, Any] = {
     "color": INK,
     "linewidth": 1.3,
@@ -91,9 +92,7 @@ def response_panel(
     low, mean, high = (table[f"{r}_{name}"] for name in ("low", "mean", "high"))
     least, most = (table[f"{r}_{name}"] for name in ("new_low", "new_high"))
     if along.continuous:
-        axes.fill_between(
-            at, least, most, color=BAND, alpha=0.45, linewidth=0, label="new wells, 95 %"
-        )
+        axes.fill_between(at, least, most, color=_NEW, linewidth=0, label="new wells, 95 %")
         axes.fill_between(at, low, high, color=_MEAN, linewidth=0, label="mean, 95 %")
         axes.plot(at, mean, color=LINE, linewidth=2.2, label="process mean", zorder=3)
     else:
@@ -122,15 +121,15 @@ def name_axis(axes: Axes, along: Factor) -> None:
 
 def set_point_line(axes: Axes, view: Assessment, along: Factor) -> None:
     """Mark where the set point, or the best condition so far, lies on the factor."""
-    window = view.window()
-    at = float(place(along, [window.setpoint[along.name]])[0])
-    label = "set point" if window.share else "best so far"
-    axes.axvline(at, color=INK, linewidth=1.1, linestyle=(0, (1, 2)), zorder=2, label=label)
+    at = float(place(along, [view.window().setpoint[along.name]])[0])
+    axes.axvline(
+        at, color=INK, linewidth=1.1, linestyle=(0, (1, 2)), zorder=2, label=best_word(view)
+    )
 
 
 def _held(view: Assessment, along: Factor) -> str:
     held = held_text(view, along)
-    return f"At the set point otherwise: {held}" if held else ""
+    return f"Held at the {best_word(view)}: {held}" if held else ""
 
 
 def _targets(axes: Axes, response: Response) -> None:

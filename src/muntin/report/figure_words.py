@@ -24,6 +24,7 @@ from muntin.report.words import (
     chance_text,
     condition_text,
     joined,
+    odds_text,
     ranges_text,
     setting_text,
     success_text,
@@ -64,10 +65,15 @@ def joint_words(view: Assessment) -> str:
     parts = []
     for row in joint_passes(view).to_dict("records"):
         known = {kinds[k]: row[k] for k in kinds if k in row and not pd.isna(row[k])}
-        told = ", ".join(f"{kind} {p:.2f}" for kind, p in known.items())
+        told = ", ".join(f"{kind} {odds_text(p)}" for kind, p in known.items())
         parts.append(f"{row['what']}: {told}")
     required = chance_text(view.study.definition.required_probability)
-    return f"Probability to pass at the set point. {'; '.join(parts)}. Required: {required}."
+    place = _best(view)
+    return f"Probability to pass at the {place}. {'; '.join(parts)}. Required: {required}."
+
+
+def _best(view: Assessment) -> str:
+    return "set point" if view.window().share else "best condition so far"
 
 
 def sides_words(view: Assessment) -> str:
@@ -83,9 +89,8 @@ def sides_words(view: Assessment) -> str:
             parts.append(f"{where}: not tested further")
         else:
             fails = _FAILS[str(side.fails)]
-            parts.append(
-                f"{where}: {labels[side.response]} {fails}, passes with {side.probability:.2f}"
-            )
+            chance = odds_text(side.probability)
+            parts.append(f"{where}: {labels[side.response]} {fails}, chance to pass {chance}")
     return f"What fails first beyond the ranges that hold together. {'; '.join(parts)}."
 
 
@@ -101,8 +106,8 @@ def together_words(view: Assessment) -> str:
     elif len(inside):
         told = f"with {joined([str(v) for v in inside[along.name]])}"
     return (
-        f"Along {along.label}, other factors at the set point, the required probability is reached "
-        f"{told}."
+        f"Along {along.label}, other factors at the {_best(view)}, the required probability is "
+        f"reached {told}."
     )
 
 
@@ -125,8 +130,8 @@ def plates_words(view: Assessment, response: Response) -> str:
     """Say how the plates read beside each other."""
     table, again = group_errors(view, response), repeated(view, response)
     parts = [
-        f"{row['group']} {row['error']:+.1f} {row['unit']} "
-        f"({row['low']:+.1f} to {row['high']:+.1f})"
+        f"{row['group']} {row['error']:+.2g} {row['unit']}".rstrip()
+        + f" ({row['low']:+.2g} to {row['high']:+.2g})"
         for row in table.to_dict("records")[:12]
     ]
     told = f"Errors that wells share, with 95 % intervals: {'; '.join(parts)}." if parts else ""

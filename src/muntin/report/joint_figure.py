@@ -7,8 +7,9 @@ from typing import TYPE_CHECKING
 import pandas as pd
 
 from muntin.report.canvas import finish, one_panel
+from muntin.report.sections import best_word
 from muntin.report.style import ACCENT, INK, LINE, PAPER, QUIET, dress
-from muntin.report.words import chance_text, condition_text
+from muntin.report.words import chance_text, condition_text, odds_text
 from muntin.window.assessment import Assessment
 
 if TYPE_CHECKING:
@@ -16,9 +17,9 @@ if TYPE_CHECKING:
 
 ALL = "all targets at once"
 _LOOKS = (
-    ("p_mean", "process mean passes", "o", PAPER),
-    ("p_well", "new well passes", "o", LINE),
-    ("p_kept", "new well passes, factors kept within ±", "D", ACCENT),
+    ("p_mean", "process mean passes", "o", PAPER, 0.13),
+    ("p_well", "new well passes", "o", LINE, 0.0),
+    ("p_kept", "new well passes, factors kept within ±", "D", ACCENT, -0.13),
 )
 
 
@@ -55,15 +56,17 @@ def joint(
     table = joint_passes(view, condition)
     definition = view.study.definition
     where = condition_text(definition, _there(view, condition).iloc[0].to_dict())
-    axes, new = one_panel(axes, "Chance to pass, by response", f"At {where}")
+    axes, new = one_panel(
+        axes, "Chance to pass, by response", f"{_place(view, condition)}: {where}"
+    )
     for row, one in table.iterrows():
         at = -float(row)  # type: ignore[arg-type]
         axes.axhline(at, color="#dfe4e6", linewidth=1, zorder=0)
-        for kind, label, marker, fill in _LOOKS:
+        for kind, label, marker, fill, above in _LOOKS:
             if kind in table and pd.notna(one[kind]):
                 axes.plot(
                     [one[kind]],
-                    [at],
+                    [at + above],
                     linestyle="none",
                     marker=marker,
                     markersize=9,
@@ -74,8 +77,8 @@ def joint(
                     clip_on=False,
                     zorder=3,
                 )
-        told = _judged(definition.judged_by, one)
-        axes.text(1.035, at, f"{told:.2f}", va="center", fontsize=9.5, color=INK)
+        p = _judged(definition.judged_by, one)
+        axes.text(1.035, at, odds_text(p), va="center", fontsize=9.5, color=INK)
     required = definition.required_probability
     axes.axvline(required, color=INK, linewidth=1, linestyle=(0, (4, 3)), zorder=1)
     axes.text(
@@ -94,6 +97,13 @@ def _there(view: Assessment, condition: pd.DataFrame | None) -> pd.DataFrame:
     if condition is None:
         return pd.DataFrame([view.window().setpoint[names].to_dict()])
     return condition[names].iloc[[0]]
+
+
+def _place(view: Assessment, condition: pd.DataFrame | None) -> str:
+    if condition is not None:
+        return "At"
+    word = best_word(view)
+    return word[:1].upper() + word[1:]
 
 
 def _first(table: pd.DataFrame, kind: str) -> object:

@@ -16,6 +16,8 @@ if TYPE_CHECKING:
     from matplotlib.figure import Figure
 
 _ONE_ROW = 5
+# Letters that a row of a legend takes, and what a handle takes of them.
+_ROW, _HANDLE = 112, 8
 _RUN: dict[str, dict[str, Any]] = {
     "passed": {"marker": "o", "markerfacecolor": INK},
     "failed": {"marker": "o", "markerfacecolor": PAPER},
@@ -114,8 +116,20 @@ def figure_legend(figure: Figure, every: Iterable[Axes]) -> None:
             found.values(),
             found.keys(),
             loc="outside lower left",
-            ncols=len(found) if len(found) <= _ONE_ROW else 4,
+            ncols=_columns([*found]),
             frameon=False,
             fontsize=9,
             labelcolor=INK,
         )
+
+
+def _columns(labels: list[str]) -> int:
+    """Return how many columns of a legend, which is filled column by column, fit below a figure."""
+    for columns in range(len(labels) if len(labels) <= _ONE_ROW else 4, 1, -1):
+        rows = -(-len(labels) // columns)
+        widths = [
+            _HANDLE + max(map(len, labels[i : i + rows])) for i in range(0, len(labels), rows)
+        ]
+        if sum(widths) <= _ROW:
+            return columns
+    return 1

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 import pandas as pd
@@ -20,7 +20,8 @@ if TYPE_CHECKING:
     from matplotlib.axes import Axes
     from matplotlib.figure import Figure
 
-_MOST, _MOST_GROUPS = 6, 24
+_MOST, _MOST_GROUPS, _CROWDED = 6, 24, 10
+_HEAD: dict[str, Any] = {"loc": "left", "fontsize": 9, "color": INK}
 
 
 def repeated(view: Assessment, response: Response) -> pd.DataFrame:
@@ -61,35 +62,52 @@ def controls(view: Assessment, response: str | None = None, axes: Axes | None = 
     return finish(axes, new)
 
 
-def errors(view: Assessment, response: str | None = None, axes: Axes | None = None) -> Axes:
+def errors(
+    view: Assessment,
+    response: str | None = None,
+    by: str | None = None,
+    axes: Axes | None = None,
+) -> Axes:
     """Draw the errors that wells share, one row a plate, bottle or day, with 95 % intervals, and
     the range in which the error of one to come is expected.
 
-    At most 24 rows, those with most readings. Raises ValueError where the response has none.
+    by: which of several shared errors, such as "plate and salt"; the first where None. At most 24
+    rows, those with most readings. Raises ValueError where the response has none, or not that one.
     """
     read = response_named(view, response)
-    table = group_errors(view, read)
-    if table.empty:
+    every = {str(name): part for name, part in group_errors(view, read).groupby("by", sort=False)}
+    if not every:
         raise ValueError(f"the study names no shared error that touches {read.label}")
-    axes, new = one_panel(axes, f"{read.label}: errors that wells share")
+    if by is not None and by not in every:
+        raise ValueError(f"{by!r} is no shared error of {read.label}; there are {', '.join(every)}")
+    table = every[by] if by is not None else next(iter(every.values()))
+    axes, new = one_panel(axes, f"{read.label}: errors that wells share", _shared_by(table))
     _errors(axes, table)
     return finish(axes, new)
 
 
 def plates_figure(view: Assessment, response: Response) -> Figure | None:
-    """Return both panels of one response, or the one there is something for, or None."""
-    again, shared = repeated(view, response), group_errors(view, response)
-    panels = [not again.empty, not shared.empty]
-    if not any(panels):
+    """Return the panels of one response that there is something for: conditions that several
+    plates read, and each shared error; None where there is nothing.
+    """
+    again = repeated(view, response)
+    shared = [part for _, part in group_errors(view, response).groupby("by", sort=False)]
+    if again.empty and not shared:
         return None
     title = f"{response.label}: plates beside each other"
-    figure, every = blank(title, columns=sum(panels))
+    figure, panels = blank(title, columns=len(shared) + (not again.empty))
     if not again.empty:
-        _controls(every[0], view, response, again)
-    if not shared.empty:
-        _errors(every[-1], shared)
-    figure_legend(figure, every)
+        _controls(panels[0], view, response, again)
+        panels[0].set_title("conditions read on several plates", **_HEAD)
+    for axes, table in zip(panels[len(panels) - len(shared) :], shared, strict=True):
+        _errors(axes, table)
+        axes.set_title(_shared_by(table), **_HEAD)
+    figure_legend(figure, panels)
     return figure
+
+
+def _shared_by(table: pd.DataFrame) -> str:
+    return f"errors shared by {table['by'].iloc[0]}"
 
 
 def _controls(axes: Axes, view: Assessment, response: Response, table: pd.DataFrame) -> None:
@@ -124,30 +142,17 @@ def _controls(axes: Axes, view: Assessment, response: Response, table: pd.DataFr
 
 def _errors(axes: Axes, table: pd.DataFrame) -> None:
     shown = table.nlargest(_MOST_GROUPS, "readings", keep="first").sort_index()
+    first = shown.iloc[0]
     rows = -np.arange(len(shown), dtype=float)
-    several = shown["unit"].nunique() > 1 or shown["by"].nunique() > 1
-    for (by, unit), part in shown.groupby(["by", "unit"], sort=False):
-        at = rows[shown.index.get_indexer(part.index)]
-        ends = part["size_low"].iloc[0], part["size_high"].iloc[0]
-        axes.fill_betweenx(
-            [at.min() - 0.45, at.max() + 0.45],
-            np.full(2, ends[0]),
-            np.full(2, ends[1]),
-            color=BAND,
-            linewidth=0,
-            label="expected of one to come, 95 %",
-            zorder=0,
-        )
-        axes.hlines(at, part["low"], part["high"], color=LINE, linewidth=2, zorder=2)
-        axes.plot(part["error"], at, "o", color=LINE, markersize=7, label="error, 95 %", zorder=3)
-        if several:
-            text = f"by {by} ({unit})"
-            axes.text(ends[1], at.max() + 0.47, text, ha="right", fontsize=8.5, color=INK)
+    expected = "expected of one to come, 95 %"
+    axes.axvspan(first["size_low"], first["size_high"], color=BAND, label=expected, zorder=0)
+    axes.hlines(rows, shown["low"], shown["high"], color=LINE, linewidth=2, zorder=2)
+    axes.plot(shown["error"], rows, "o", color=LINE, markersize=6, label="error, 95 %", zorder=3)
     axes.axvline(0.0, color=QUIET, linewidth=1, zorder=1)
-    units = shown["unit"].unique()
-    axes.set_xlabel(axis_label("Error", units[0]) if len(units) == 1 else "Error")
+    unit = "% of the reading" if first["unit"] == "%" else str(first["unit"])
+    axes.set_xlabel(axis_label("Error", unit))
     axes.set_yticks(rows, [*shown["group"]])
-    axes.set_ylim(-len(shown) + 0.4, 0.75 if several else 0.6)
+    axes.set_ylim(-len(shown) + 0.4, 0.6)
     dress(axes)
-    if len(shown) > 12:
-        axes.tick_params(axis="y", labelsize=7.5)
+    if len(shown) > _CROWDED:
+        axes.tick_params(axis="y", labelsize=7)

@@ -6,6 +6,7 @@ from typing import TYPE_CHECKING, Literal
 
 import numpy as np
 import pandas as pd
+from numpy.typing import NDArray
 
 from muntin.record.responses import Response
 from muntin.report.canvas import blank, finish, one_panel
@@ -20,6 +21,7 @@ if TYPE_CHECKING:
     from matplotlib.axes import Axes
     from matplotlib.figure import Figure
 
+Array = NDArray[np.float64]
 By = Literal["others", "plates before"]
 _SAYS = {
     "others": "Predicted from all other readings",
@@ -134,19 +136,27 @@ def _draw(
 
 
 def _diagonal(axes: Axes, response: Response, table: pd.DataFrame) -> None:
-    """Set both axes to one range, the diagonal and the limits of the target drawn."""
-    values = table[["observed", "predicted"]].to_numpy(dtype=float)
-    low, high = float(np.nanmin(values)), float(np.nanmax(values))
-    if response.kind == "positive":
+    """Set the axes so that all intervals show; draw the diagonal and the limits of the target."""
+    read = table["observed"].to_numpy(dtype=float)
+    every = table[["observed", "predicted", "low", "high"]].to_numpy(dtype=float)
+    log = response.kind == "positive"
+    across, up = (_ends(values, log) for values in (every, read))
+    if log:
         axes.set(xscale="log", yscale="log")
-        ends = low / (high / low) ** 0.08 / 1.02, high * (high / low) ** 0.08 * 1.02
         for axis in (axes.xaxis, axes.yaxis):
             plain_ticks(axis)
-    else:
-        more = 0.08 * (high - low) or 0.5
-        ends = low - more, high + more
-    axes.set(xlim=ends, ylim=ends)
-    axes.plot(ends, ends, color=QUIET, linewidth=1, zorder=1)
+    axes.set(xlim=across, ylim=up)
+    axes.plot(across, across, color=QUIET, linewidth=1, zorder=1)
     for limit in (response.at_least, response.at_most):
-        if limit is not None and ends[0] < limit < ends[1]:
+        if limit is not None and up[0] < limit < up[1]:
             axes.axhline(limit, color=INK, linewidth=1, linestyle=(0, (4, 3)), label="target")
+
+
+def _ends(values: Array, log: bool) -> tuple[float, float]:
+    """Return the ends of an axis a little beyond the values."""
+    low, high = float(np.nanmin(values)), float(np.nanmax(values))
+    if log:
+        more = max((high / low) ** 0.06, 1.05)
+        return low / more, high * more
+    more = 0.06 * (high - low) or 0.5
+    return low - more, high + more

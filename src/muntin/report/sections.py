@@ -76,6 +76,11 @@ def held_text(view: Assessment, factor: Factor) -> str:
     return joined([setting_text(f, set_point[f.name]) for f in others])
 
 
+def best_word(view: Assessment) -> str:
+    """Return what the window's best condition is: "set point", or "best so far" outside it."""
+    return "set point" if view.window().share else "best so far"
+
+
 def place(factor: Factor, values: Any) -> Any:
     """Return where values of a factor stand on its axis: themselves, or the numbers of choices."""
     if factor.continuous:

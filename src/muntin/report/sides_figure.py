@@ -9,7 +9,7 @@ import numpy as np
 from muntin.record.factors import Factor
 from muntin.report.canvas import finish, one_panel
 from muntin.report.style import INK, LINE, PAPER, QUIET
-from muntin.report.words import axis_label, setting_text
+from muntin.report.words import axis_label, odds_text, setting_text
 from muntin.window.assessment import Assessment
 from muntin.window.limiting import Side
 from muntin.window.window import Window
@@ -20,7 +20,7 @@ if TYPE_CHECKING:
 _FAILS = {"low": "too low", "high": "too high"}
 _TESTED = "#dfe4e6"
 # The bars take the middle of the panel; words stand to either side of them.
-_ENDS = (-0.72, 1.72)
+_ENDS = (-0.58, 1.58)
 
 
 def sides(view: Assessment, axes: Axes | None = None) -> Axes:
@@ -60,8 +60,8 @@ def _factor(axes: Axes, view: Assessment, window: Window, factor: Factor, row: f
     low, high = (position(factor, float(np.asarray(v, dtype=float))) for v in ranges[factor.name])
     tested = "tested range" if row == 0 else None
     inside = "ranges that hold together" if row == 0 else None
-    axes.barh(row, 1.0, height=0.20, color=_TESTED, label=tested, zorder=1)
-    axes.barh(row, high - low, left=low, height=0.30, color=LINE, label=inside, zorder=2)
+    axes.barh(row, 1.0, height=0.22, color=_TESTED, label=tested, zorder=1)
+    axes.barh(row, high - low, left=low, height=0.34, color=LINE, label=inside, zorder=2)
     at = position(factor, float(window.setpoint[factor.name]))
     axes.plot(
         [at],
@@ -77,9 +77,9 @@ def _factor(axes: Axes, view: Assessment, window: Window, factor: Factor, row: f
     for value, x, align in zip(ranges[factor.name], (low, high), ("left", "right"), strict=True):
         if high - low < 0.16:
             align = "right" if align == "left" else "left"
-        axes.text(x, row + 0.20, factor.shown(value), ha=align, va="bottom", color=INK, fontsize=9)
+        axes.text(x, row + 0.21, factor.shown(value), ha=align, va="bottom", color=INK, fontsize=9)
     for end, x in ((factor.span[0], 0.0), (factor.span[1], 1.0)):
-        axes.text(x, row - 0.15, factor.shown(end), ha="center", va="top", color=QUIET, fontsize=8)
+        axes.text(x, row - 0.19, factor.shown(end), ha="center", va="top", color=QUIET, fontsize=8)
     for side in window.sides:
         if side.factor == factor.name:
             _words(axes, view, side, row)
@@ -96,7 +96,7 @@ def side_text(view: Assessment, side: Side) -> tuple[str, str]:
     if side.response is None or side.probability is None:
         return "passes as far\nas it was tested", QUIET
     (label,) = (r.label for r in view.study.definition.judged if r.name == side.response)
-    return f"{label} {_FAILS[str(side.fails)]}\npasses with {side.probability:.2f}", INK
+    return f"{label} {_FAILS[str(side.fails)]}\nchance to pass {odds_text(side.probability)}", INK
 
 
 def position(factor: Factor, value: float) -> float:

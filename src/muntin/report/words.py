@@ -77,6 +77,15 @@ def chance_text(probability: float) -> str:
     return short if abs(float(short) - probability) < 1e-9 else f"{probability:g}"
 
 
+def odds_text(probability: float) -> str:
+    """Return a probability that was computed, with two decimals, never rounded to a certainty."""
+    if 0.0 < probability < 0.005:
+        return "under 0.01"
+    if 0.995 <= probability < 1.0:
+        return "over 0.99"
+    return f"{probability:.2f}"
+
+
 def reach_text(definition: Definition, share: float) -> str:
     """Return "32.2 % of the range reaches a probability of 0.90"."""
     required = chance_text(definition.required_probability)
