@@ -1,5 +1,6 @@
 """Plans and judges plate screens of chromatography conditions."""
 
+from muntin import plots
 from muntin.bench.plan import Plan, propose
 from muntin.record import Study, StudyFaults, new_study, open_study
 from muntin.rehearsal.rehearse import Rehearsal, rehearse
@@ -18,6 +19,7 @@ __all__ = [
     "assess",
     "new_study",
     "open_study",
+    "plots",
     "propose",
     "rehearse",
 ]

@@ -21,7 +21,6 @@ from muntin.report.sections import (
     wells_near,
 )
 from muntin.report.style import (
-    BAND,
     INK,
     LINE,
     PAPER,

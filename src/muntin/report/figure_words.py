@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING
 import pandas as pd
 
 from muntin.record.factors import Factor
-from muntin.record.faults import number
+from muntin.record.faults import counted, number
 from muntin.record.responses import Response
 from muntin.record.study import Study
 from muntin.report.figures import figure_titles
@@ -136,7 +136,7 @@ def plates_words(view: Assessment, response: Response) -> str:
     ]
     told = f"Errors that wells share, with 95 % intervals: {'; '.join(parts)}." if parts else ""
     count = int(again["number"].nunique())
-    more = f" {count} conditions were read on several plates." if count else ""
+    more = f" Read on several plates: {counted(count, 'condition')}." if count else ""
     return f"{response.label}. {told}{more}".strip()
 
 

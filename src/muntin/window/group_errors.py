@@ -24,8 +24,8 @@ def group_errors(view: Assessment, response: Response) -> pd.DataFrame:
 
     Columns: by (the columns shared, as "plate and salt"), group (their values), acts ("scale" or
     "inside"), readings (how many share it), error, low, high (posterior median and central 95 %),
-    size_low, size_high (central 95 % of a group to come, from the sd of such errors) and unit: "%"
-    of the reading; of an inside error "logits" for a fraction, else the response's own unit. Of the
+    size_low, size_high (central 95 % of a group to come, from the sd of such errors) and unit:
+    "% of the reading"; of an inside error "logits" for a fraction, else the response's own. Of the
     engine nuts the fast fit answers, from which it started.
     """
     readings, by = view.study.readings(response.name), shared_by(view.study.definition, response)
@@ -60,7 +60,13 @@ def _rows(
             return 100.0 * values
         return 100.0 * np.expm1(values) if relative else values
 
-    unit = "%" if relative else "logits" if response.kind == "fraction" else response.unit
+    unit = (
+        "% of the reading"
+        if relative
+        else "logits"
+        if response.kind == "fraction"
+        else response.unit
+    )
     return pd.DataFrame(
         {
             "by": " and ".join(names),
