@@ -1,8 +1,9 @@
 """The largest box of factor ranges in which every bench step reaches the required probability.
 
 Where the nodes of a grid are all bench steps, the largest box of the grid is it. Where they are
-fewer, that box is settled: judged at its corners, at the middles of its sides and at bench steps
-between the nodes, cut where one of these fails, its sides moved out to the last step that holds.
+fewer, that box is settled: judged at its corners, at the middles of its sides, at bench steps
+between the nodes and down the slope from the weakest of them, cut where one of these fails, and its
+sides moved out to the last step that holds.
 """
 
 from __future__ import annotations
@@ -22,6 +23,8 @@ Ranges = dict[str, tuple[object, object]]
 # Of a box or a slab of so many bench steps every one is judged, else so many scattered ones.
 _EVERY, _SCATTER, _SLAB_EVERY, _SLAB_SCATTER = 1500, 256, 160, 48
 _ROUNDS = 40
+# Weakest steps of a box from which the surface is followed down.
+_WAYS = 6
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -134,6 +137,7 @@ def _cut(judged: Judged, required: float, span: Span, holding: Index | None) -> 
     """The span less what fails at its probes; each cut leaves as much of it as can be."""
     for _ in range(_ROUNDS):
         judged(probes(span))
+        _descend(judged, span)
         index, p = judged.within(span.low, span.high)
         bad = index[p < required][np.argsort(p[p < required], kind="stable")]
         if not len(bad):
@@ -145,6 +149,23 @@ def _cut(judged: Judged, required: float, span: Span, holding: Index | None) -> 
             span = max(cuts, key=lambda cut: share_of(judged.steps, cut))
             bad = bad[span.holds(bad)]
     return None
+
+
+def _descend(judged: Judged, span: Span) -> None:
+    """Judge the way down from the weakest steps of a span, one step at a time, to where no
+    neighbour is weaker: a smooth surface that fails between what was judged fails there.
+    """
+    ways = np.eye(len(span.low), dtype=np.intp)
+    ways = np.concatenate([ways, -ways])
+    index, p = judged.within(span.low, span.high)
+    at, height = index[np.argsort(p, kind="stable")[:_WAYS]], np.sort(p)[:_WAYS]
+    for _ in range(_ROUNDS):
+        near = np.clip(at[:, None] + ways, span.low, span.high)
+        around = judged(near.reshape(-1, len(span.low))).reshape(near.shape[:2])
+        lower = around.min(axis=1, initial=np.inf) < height
+        if not lower.any():
+            return
+        at, height = near[lower, around[lower].argmin(axis=1)], around[lower].min(axis=1)
 
 
 def _cuts(span: Span, bad: Index, holding: Index | None) -> list[Span]:
