@@ -17,7 +17,6 @@ if TYPE_CHECKING:
 
 _HEAD = 'style="text-align: left; vertical-align: top; padding-right: 1em"'
 _CELL = 'style="text-align: left"'
-_DIGITS = 4
 
 
 def card(title: str, rows: Iterable[tuple[str, str | Iterable[str]]], *tables: pd.DataFrame) -> str:
@@ -37,10 +36,13 @@ def card(title: str, rows: Iterable[tuple[str, str | Iterable[str]]], *tables: p
 
 
 def _table(table: pd.DataFrame) -> str:
-    html: str = table.to_html(
-        index=False, escape=True, na_rep="", border=0, float_format=lambda v: f"{v:.{_DIGITS}g}"
-    )
+    html: str = table.to_html(index=False, escape=True, na_rep="", border=0, float_format=_short)
     return html
+
+
+def _short(value: float) -> str:
+    """Return a number with four digits; of a small probability no more than four decimals."""
+    return f"{value:.4f}" if 0 < abs(value) < 1e-3 else f"{value:.4g}"
 
 
 def study_card(study: Study) -> str:

@@ -27,7 +27,7 @@ _HEAD: dict[str, Any] = {"loc": "left", "fontsize": 9, "color": INK}
 def repeated(view: Assessment, response: Response) -> pd.DataFrame:
     """Return the readings of conditions that several plates read, a row a reading.
 
-    Columns: number (of the condition, most plates first), condition (in words, by its targets),
+    Columns: number (of the condition, most plates and wells first), condition (in words, targets),
     plate, well and y in the user's unit. Censored readings are left out.
     """
     definition, names = view.study.definition, list(view.study.definition.factor_names)
@@ -35,8 +35,9 @@ def repeated(view: Assessment, response: Response) -> pd.DataFrame:
     readings = readings[readings["censored"] == 0]
     targets = readings[[f"{n}_target" for n in names]].set_axis(names, axis=1)
     group = targets.groupby(names, sort=False).ngroup()
-    plates = readings.groupby(group)["plate"].nunique()
-    several = plates[plates > 1].sort_values(ascending=False, kind="stable").index
+    counts = readings.groupby(group)["plate"].agg(["nunique", "size"])
+    counts = counts[counts["nunique"] > 1]
+    several = counts.sort_values(["nunique", "size"], ascending=False, kind="stable").index
     rows = []
     for number, one in enumerate(several):
         here = readings[group == one]
