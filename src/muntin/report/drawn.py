@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import re
+from collections.abc import Callable
 from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
@@ -56,16 +57,23 @@ class Drawn:
     frames: tuple[Frame, ...] = ()
 
 
-def drawn(figure: Figure, name: str, says: str, frames: tuple[Frame, ...] = ()) -> Drawn:
-    """Return a figure as text and bytes, the same whenever it is drawn."""
+def drawn(
+    figure: Figure, name: str, says: str, frames: Callable[[], tuple[Frame, ...]] = tuple
+) -> Drawn:
+    """Return a figure as text and bytes, the same whenever it is drawn.
+
+    frames: gives the panels' places; asked once the SVG is drawn, which lays them out.
+    """
     title = figure.get_suptitle().splitlines()[:1]
+    svg = inline_svg(saved(figure, "svg").decode(), name)
+    placed = frames()
     return Drawn(
         name=name,
         title=title[0] if title else "",
         says=says,
-        svg=inline_svg(saved(figure, "svg").decode(), name),
+        svg=svg,
         png=saved(figure, "png", dpi=_SLIDE_DPI),
-        frames=frames,
+        frames=placed,
     )
 
 

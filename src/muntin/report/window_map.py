@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from itertools import combinations
 from typing import TYPE_CHECKING, Any
 
@@ -26,6 +27,7 @@ if TYPE_CHECKING:
     from muntin.bench.plan import Plan
 
 _PAIRED = 3
+Placed = Callable[[], tuple[Frame, ...]]
 
 
 def window_map(
@@ -56,9 +58,10 @@ def window_map(
     return finish(axes, new)
 
 
-def map_figure(view: Assessment, plan: Plan | None) -> tuple[Figure, tuple[Frame, ...]]:
-    """Return the map of a report with the places of its panels: a panel a choice, or one for every
-    two of three factors; panels of single factors, which have no place, for all other studies.
+def map_figure(view: Assessment, plan: Plan | None) -> tuple[Figure, Placed]:
+    """Return the map of a report and what gives the places of its panels once it was drawn: a panel
+    a choice, or one for every two of three factors; panels of single factors, which have no place,
+    for all other studies.
     """
     window = None if view.fresh or view.window().unsupported else view.window()
     definition = view.study.definition
@@ -74,15 +77,16 @@ def map_figure(view: Assessment, plan: Plan | None) -> tuple[Figure, tuple[Frame
         choices: list[dict[str, Any]] = [{}]
         if panel is not None:
             choices = [{panel.name: choice} for choice in panel.choices or ()]
-        return figure, _frames(figure, [(x, y, held) for held in choices])
+        placed = [(x, y, held) for held in choices]
+        return figure, lambda: _frames(figure, placed)
     if window is not None and len(ranged) == len(definition.factors) == _PAIRED:
         return _pairs(view, window, plan, ranged)
-    return draw(view, view.window() if not view.fresh else None, wells), ()
+    return draw(view, view.window() if not view.fresh else None, wells), tuple
 
 
 def _pairs(
     view: Assessment, window: Window, plan: Plan | None, ranged: list[Factor]
-) -> tuple[Figure, tuple[Frame, ...]]:
+) -> tuple[Figure, Placed]:
     """A panel for every two factors, the third held at the set point."""
     pairs = [*combinations(ranged, 2)]
     title, says = figure_titles(view, window)
@@ -97,13 +101,12 @@ def _pairs(
     if shade is not None:
         colour_bar(figure, shade, panels, view.study.definition)
     figure_legend(figure, panels)
-    return figure, _frames(figure, placed)
+    return figure, lambda: _frames(figure, placed)
 
 
 def _frames(
     figure: Figure, placed: list[tuple[Factor, Factor, dict[str, Any]]]
 ) -> tuple[Frame, ...]:
-    figure.draw_without_rendering()
     panels = [axes for axes in figure.axes if axes.get_label() != "<colorbar>"]
     return tuple(
         frame_of(axes, x.name, y.name, held)
