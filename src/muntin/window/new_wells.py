@@ -22,22 +22,25 @@ Array = NDArray[np.float64]
 # Limits at which the law is asked, and nodes that answer.
 _LIMITS, _NODES = 120, 64
 _SDS = 6.0
+_LEAST = 1e-9
 
 
 def reading_quantiles(predicted: Predicted, levels: Sequence[float]) -> Array:
     """Quantiles (L, n) of a new well's reading at n conditions, natural unit.
 
     The law is asked at limits over its whole reach, evenly spaced (of a positive response on the
-    logarithm), and interpolated between them. Shared errors, noise and setting errors count.
+    logarithm), and interpolated between them in normal scores. Shared errors, noise and setting
+    errors count.
     """
+    from scipy.special import ndtri
+
     limits = _limits(predicted)
     below = np.stack([predicted.met(Target(high=float(limit))) for limit in limits])
     scale = np.log(limits) if predicted.surface.link == "log" else limits
-    out = np.empty((len(levels), below.shape[1]))
-    for column, p in enumerate(below.T):
-        # A law has no flat steps but at its ends, where none of the levels lies.
-        rising = np.maximum.accumulate(p) + 1e-12 * np.arange(len(p))
-        out[:, column] = np.interp(levels, rising, scale)
+    out, asked = np.empty((len(levels), below.shape[1])), ndtri(np.asarray(levels))
+    for column, p in enumerate(np.clip(below.T, _LEAST, 1.0 - _LEAST)):
+        # On the scale of normal scores a law is nearly straight between two limits.
+        out[:, column] = np.interp(asked, np.maximum.accumulate(ndtri(p)), scale)
     return np.exp(out) if predicted.surface.link == "log" else out
 
 
