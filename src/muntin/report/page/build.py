@@ -29,7 +29,6 @@ from muntin.report.page.put_back import put_back
 from muntin.report.page.record_sections import cautions_section, data_section, provenance_section
 from muntin.report.page.standing_sections import conditional, responses_section, window_section
 from muntin.window.assessment import Assessment
-from muntin.window.handover import hand_over
 
 if TYPE_CHECKING:
     from muntin.bench.plan import Plan
@@ -90,7 +89,7 @@ def build_page(
     the name of each step.
     """
     window = None if view.fresh else view.window()
-    handed = None if window is None or window.unsupported else hand_over(view)
+    handed = None if window is None or window.unsupported else view.handover()
     tell("putting back what was left out")
     back = put_back(view)
     tell("drawing the figures")

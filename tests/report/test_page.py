@@ -1,0 +1,415 @@
+"""The page: it stands alone, reads well without eyes, and says what the screens say."""
+
+from __future__ import annotations
+
+import itertools
+import json
+import re
+from importlib.resources import files
+from pathlib import Path
+
+import pytest
+
+from muntin.record import open_study
+from muntin.report.advice_files import json_text, read_inputs
+from muntin.report.page.answer import answer, standing_word
+from muntin.report.page.build import Page, build_page, plan_or_reasons
+from muntin.report.page.phrases import chance, fixed_name, measure
+from muntin.report.text import window_lines
+from muntin.report.words import share_text
+from muntin.window.assessment import assess
+from tests.report.parsed import Element, parsed, table_of
+from tests.report.studies import LOAD, ONE_FACTOR, RESIN, STUDY, one_factor_plate, plate, write
+
+HOSTILE = """<script>alert("x")</script> & 'so'"""
+FIXED = '\n[fixed]\nelution_volume_ul = 200\nresin = "HOSTILE"\n'
+STOP = "\n[stop]\nwrong_share = 0.02\n"
+
+
+def page_of(folder: Path, wells: int = 6, seed: int = 1) -> Page:
+    study = open_study(folder)
+    view = assess(study, surrogate="quadratic", seed=seed)
+    plan, unplanned = plan_or_reasons(view, wells, "edge", seed)
+    settings = {"wells": wells, "surrogate": "quadratic", "seed": seed}
+    inputs = read_inputs(folder)
+    return build_page(view, plan, unplanned=unplanned, settings=settings, inputs=inputs)
+
+
+def with_one_left_out() -> str:
+    """A plate on which one reading is wrong, and left out with a hostile reason."""
+    lines = plate(12).splitlines()
+    well, role, ph, salt, *_ = lines[5].split(",")
+    reason = HOSTILE.replace('"', '""')
+    lines[5] = f'{well},{role},{ph},{salt},0.5,"{reason}"'
+    return "\n".join(lines) + "\n"
+
+
+@pytest.fixture(scope="module")
+def page(tmp_path_factory: pytest.TempPathFactory) -> Page:
+    """Two factors kept within tolerances, one response, a plate of twelve and one of six."""
+    quoted = HOSTILE.replace('"', '\\"')
+    toml = STUDY.replace("Small invented study", quoted) + FIXED.replace("HOSTILE", quoted) + STOP
+    folder = tmp_path_factory.mktemp("page") / "study"
+    second = "\n".join([plate(12).splitlines()[0], *plate(12).splitlines()[7:]]) + "\n"
+    tables = {"plates/plate-01.csv": with_one_left_out(), "plates/plate-02.csv": second}
+    write(folder, {"study.toml": toml, **tables, "plates/plate-01.toml": 'by = "lab <2>"\n'})
+    (folder / "plates/plate-02.toml").write_text('repeats = "plate-01"\n')
+    return page_of(folder)
+
+
+@pytest.fixture(scope="module")
+def read(page: Page) -> Element:
+    return parsed(page.html)
+
+
+def test_headings_come_in_order(read: Element) -> None:
+    levels = [int(h.tag[1]) for h in read.every("h1", "h2", "h3", "h4", "h5", "h6")]
+    assert levels[0] == 1
+    assert levels.count(1) == 1
+    assert len(levels) > 8
+    assert all(below <= above + 1 for above, below in itertools.pairwise(levels))
+
+
+def test_language_and_title_are_given(read: Element) -> None:
+    assert read.one("html").attributes["lang"] == "en"
+    assert read.one("title").text == read.one("h1").text == HOSTILE
+
+
+def test_everything_from_the_study_is_escaped(page: Page, read: Element) -> None:
+    assert "<script>alert" not in page.html
+    assert "lab <2>" not in page.html
+    assert {"application/json", ""} >= {s.attributes.get("type", "") for s in read.every("script")}
+    left_out = table_of(read, "Left out of the calculation")
+    assert [row["because"] for row in left_out] == [HOSTILE]
+    assert [row["value"] for row in table_of(read, "Kept fixed")] == ["200", HOSTILE]
+    assert table_of(read, "Plates that were run")[0]["by"] == "lab <2>"
+
+
+def test_the_page_needs_no_other_file(page: Page, read: Element) -> None:
+    for element in read.every():
+        for name in ("src", "href", "xlink:href", "action", "data", "srcset", "poster"):
+            address = element.attributes.get(name, "#")
+            assert address.startswith("#"), f"{element.tag} {name}={address}"
+    assert not read.every("link", "iframe", "object", "embed", "img", "base")
+    style = read.one("head").one("style").text
+    assert "@import" not in style
+    assert "url(" not in style
+    used = re.findall(r"url\(([^)]*)\)", page.html)
+    assert all(address.startswith("#") for address in used)
+
+
+def test_ids_are_unique_and_what_points_at_them_finds_them(read: Element) -> None:
+    ids = [e.attributes["id"] for e in read.every() if "id" in e.attributes]
+    assert len(ids) == len(set(ids))
+    for element in read.every():
+        for name in ("aria-labelledby", "href", "xlink:href"):
+            target = element.attributes.get(name, "").removeprefix("#")
+            assert not target or target in ids, f"{name}={target}"
+
+
+def test_every_figure_has_a_text_in_its_place(page: Page, read: Element) -> None:
+    assert "map" in [figure.name for figure in page.figures]
+    drawings = [e for e in read.every("div") if e.attributes.get("role") == "img"]
+    assert len(drawings) == len(page.figures) == len(read.every("figure"))
+    for drawing, shown in zip(drawings, read.every("figure"), strict=True):
+        (caption,) = shown.every("figcaption")
+        assert drawing.attributes["aria-labelledby"] == caption.attributes["id"]
+        assert len(caption.text.split()) > 5
+
+
+def test_tables_have_captions_and_headings_with_scope(read: Element) -> None:
+    tables = read.every("table")
+    assert len(tables) > 8
+    for table in tables:
+        assert table.one("caption").text
+        assert all(c.attributes["scope"] == "col" for c in table.one("thead").every("th"))
+        for row in table.one("tbody").every("tr"):
+            first, *others = row.every("th", "td")
+            assert (first.tag, first.attributes["scope"]) == ("th", "row")
+            assert all(cell.tag == "td" for cell in others)
+            assert len(others) + 1 == len(table.one("thead").every("th"))
+
+
+def _luminance(colour: str) -> float:
+    """Relative luminance of #rrggbb (WCAG 2.1, definition)."""
+    shares = [int(colour[i : i + 2], 16) / 255 for i in (1, 3, 5)]
+    linear = [s / 12.92 if s <= 0.04045 else ((s + 0.055) / 1.055) ** 2.4 for s in shares]
+    return sum(w * s for w, s in zip((0.2126, 0.7152, 0.0722), linear, strict=True))
+
+
+def contrast(one: str, other: str) -> float:
+    """Contrast ratio of two colours (WCAG 2.1, definition)."""
+    high, low = sorted((_luminance(one), _luminance(other)), reverse=True)
+    return (high + 0.05) / (low + 0.05)
+
+
+def test_contrast_of_known_pairs() -> None:
+    # WCAG 2.1: black on white is 21:1; #767676 is the palest grey that passes on white, as 4.54.
+    assert contrast("#000000", "#ffffff") == pytest.approx(21.0)
+    assert contrast("#767676", "#ffffff") == pytest.approx(4.54, abs=0.005)
+
+
+def test_letters_stand_out_from_the_paper() -> None:
+    style = files("muntin.report.page").joinpath("page.css").read_text(encoding="utf-8")
+    colours = dict(re.findall(r"--(\w+): (#[0-9a-f]{6});", style))
+    letters = set(re.findall(r"[^-]color: var\(--(\w+)\)", style))
+    assert letters >= {"ink", "quiet", "blue", "good", "note", "bad"}
+    for name in letters:
+        for paper in ("paper", "tint"):
+            assert contrast(colours[name], colours[paper]) >= 4.5, (name, paper)
+    outside = re.sub(r":root \{[^}]*\}", "", style)
+    assert not re.findall(r"#[0-9a-f]{3,6}\b", outside), "colours are named in :root"
+
+
+def test_the_answer_is_three_sentences_with_the_numbers_of_the_facts(
+    page: Page, read: Element
+) -> None:
+    told = [item.text for item in read.one("section", id="answer").one("ol").every("li")]
+    assert told == page.facts["answer"] == list(answer(page.basis))
+    assert len(told) == 3
+    window = page.facts["window"]
+    passes = share_text(window["set_point"]["probability"])
+    assert f"{passes} of new wells pass" in told[0]
+    assert f"{share_text(window['share'])} of the range reaches" in told[1]
+    assert f"{share_text(window['wrong_share'])} of the range may still" in told[1]
+    assert told[2] == page.facts["plan"]["verdict"]["sentence"]
+
+
+def test_the_window_is_told_as_on_the_screen(page: Page, read: Element) -> None:
+    said = [p.text for p in read.one("section", id="window").every("p")]
+    for line in window_lines(page.basis.view, page.basis.window, 99):
+        assert line in said
+
+
+def test_the_plan_is_that_of_the_facts(page: Page, read: Element) -> None:
+    rows = table_of(read, "Conditions of plate-03")
+    run = [w for w in page.facts["plan"]["wells"] if w["role"] in ("test", "bridge", "reference")]
+    told = {
+        (well, row["role"], float(row["pH"]), float(row["Salt (mM)"]))
+        for row in rows
+        for well in row["wells"].split(", ")
+    }
+    assert told == {(w["well"], w["role"], w["ph"], w["salt"]) for w in run}
+    forecast = table_of(read, "What more test wells")
+    assert [int(row["test wells"].split()[0]) for row in forecast] == [
+        row["wells"] for row in page.facts["plan"]["forecast"]
+    ]
+
+
+def test_every_check_has_its_verdict_in_words(page: Page, read: Element) -> None:
+    rows = table_of(read, "What was checked")
+    words = {(True, False): "passed", (True, True): "passed", (False, False): "note"}
+    expected = {
+        (c["name"], words.get((c["passed"], c["serious"]), "FAILED"), c["sentence"])
+        for c in page.facts["checks"]
+    }
+    assert {tuple(row.values()) for row in rows} == expected
+
+
+def test_what_was_left_out_is_told_with_its_reading_and_what_it_would_change(
+    page: Page, read: Element
+) -> None:
+    (row,) = table_of(read, "Left out of the calculation")
+    assert (row["plate"], row["well"], row["reading"]) == ("plate-01", "A5", "0.500")
+    said = [p.text for p in read.one("section", id="left-out").every("p")]
+    put_back = page.facts["put_back"]
+    assert put_back["readings"] == 1
+    assert f"{100 * page.facts['window']['share']:.1f} % of the range" in said[0]
+    assert f"{100 * put_back['share']:.1f} % of the range" in said[1]
+    assert said[0].split(":")[1] != said[1].split(":")[1]
+
+
+def test_putting_back_equals_a_study_in_which_nothing_was_left_out(
+    page: Page, tmp_path: Path
+) -> None:
+    folder = tmp_path / "whole"
+    for name, content in read_inputs(page.basis.study.folder).items():
+        path = folder / name
+        path.parent.mkdir(parents=True, exist_ok=True)
+        path.write_bytes(content)
+    table = folder / "plates/plate-01.csv"
+    lines = [
+        line.split(",0.5,")[0] + ",0.5," if ",0.5," in line else line
+        for line in table.read_text().splitlines()
+    ]
+    table.write_text("\n".join(lines) + "\n")
+    window = assess(open_study(folder), surrogate="quadratic").window()
+    assert page.facts["put_back"]["share"] == window.share
+    assert page.facts["put_back"]["set_point"] == window.setpoint.to_dict()
+
+
+def test_the_protein_adds_up(page: Page, read: Element) -> None:
+    rows = table_of(read, "Protein, mg")
+    left = 0.0
+    for row in rows:
+        left += float(row["mg"])
+        assert float(row["left, mg"]) == pytest.approx(left)
+    # 40 mg at hand; 12 and 6 wells of 0.25 mg; 10 mg kept back; then the plan.
+    assert [row["left, mg"] for row in rows[:-1]] == ["40", "37", "35.5", "25.5"]
+    assert float(rows[-1]["mg"]) == -page.facts["plan"]["protein_mg"]
+
+
+def test_inputs_versions_and_seed_are_told(page: Page, read: Element) -> None:
+    hashed = table_of(read, "Files that were read")
+    assert {row["file"]: row["SHA-256"] for row in hashed} == page.facts["inputs"]
+    made = {row["what"]: row["value"] for row in table_of(read, "How it was made")}
+    assert made["seed"] == "1"
+    assert made["version of numpy"] == page.facts["versions"]["numpy"]
+    assert {row["whose"] for row in table_of(read, "Priors of Recovery")} == {"built in"}
+
+
+def test_pointing_at_the_map_tells_the_probabilities_of_the_window(
+    page: Page, read: Element
+) -> None:
+    told = json.loads(read.one("script", id="pointing-data").text)
+    window = page.basis.window
+    assert window is not None
+    grid = window.grid.set_index(["ph", "salt"])["probability"]
+    (panel,) = told["panels"]
+    assert len(panel["p"]) == len(panel["y"]["levels"]) == 9
+    for j, salt in enumerate(panel["y"]["levels"]):
+        for i, ph in enumerate(panel["x"]["levels"]):
+            assert panel["p"][j][i] == round(1000 * grid[ph, salt])
+    assert panel["x"]["texts"][0] == "pH 4.5"
+    assert panel["y"]["texts"][-1] == "Salt 450 mM"
+
+
+def test_the_facts_are_plain_json(page: Page) -> None:
+    again = json.loads(json_text(page.facts))
+    assert again["command"] == "report"
+    assert again["standing"] == standing_word(page.basis)
+
+
+def _said(folder: Path, files_: dict[str, str | bytes], wells: int = 6) -> tuple[Page, Element]:
+    page = page_of(write(folder, files_), wells)
+    return page, parsed(page.html)
+
+
+def test_a_study_without_readings_says_so(tmp_path: Path) -> None:
+    header = "well,role,ph,salt,recovery,exclude\n"
+    page, read = _said(tmp_path / "s", {"study.toml": STUDY, "plates/plate-01.csv": header})
+    assert page.facts["standing"] == "Nothing read yet"
+    told = page.facts["answer"]
+    assert told[0] == "Nothing has been read yet, so there is no window."
+    assert told[1].startswith("The study asks for Recovery at least 0.8, with a probability of")
+    assert told[2].startswith("Next comes an opening plate, plate-01")
+    assert len(table_of(read, "Conditions of plate-01")) > 1
+    assert not [t for t in read.every("table") if "Ranges" in t.one("caption").text]
+
+
+def test_a_response_awaited_makes_it_provisional(tmp_path: Path) -> None:
+    tables = {"study.toml": ONE_FACTOR, "plates/plate-01.csv": one_factor_plate(hcp=False)}
+    page, read = _said(tmp_path / "s", tables)
+    assert page.facts["standing"] == "Provisional"
+    assert page.facts["answer"][0].startswith("Provisional, as HCP is not read yet: Salt ")
+    assert "(Recovery at least 0.8)" in page.facts["answer"][0]
+    assert "HCP at most 100 ng/mL" in read.one("section", id="holds-for").text
+
+
+def test_several_responses_are_told_alone_and_jointly(tmp_path: Path) -> None:
+    tables = {"study.toml": ONE_FACTOR, "plates/plate-01.csv": one_factor_plate()}
+    page, read = _said(tmp_path / "s", tables)
+    first = table_of(read, "Probabilities at single conditions, by response and jointly")[0]
+    known = page.basis.view.at(page.basis.window.setpoint.to_frame().T.astype(float))  # type: ignore[union-attr]
+    assert first["Recovery: new well passes"] == chance(known["recovery_p_well"].iloc[0])
+    assert first["HCP: new well passes"] == chance(known["hcp_p_well"].iloc[0])
+    assert first["all: new well passes"] == chance(known["p_well"].iloc[0])
+    sides = table_of(read, "What gives way first")
+    assert {row["gives way"] for row in sides} <= {
+        "Recovery, too low",
+        "HCP, too high",
+        "the tested range ends",
+    }
+
+
+def test_no_condition_in_the_window(tmp_path: Path) -> None:
+    toml = STUDY.replace("at_least = 0.8", "at_least = 0.99")
+    page, read = _said(tmp_path / "s", {"study.toml": toml, "plates/plate-01.csv": plate()})
+    assert page.facts["standing"] == "No window yet"
+    assert page.facts["answer"][0].startswith(
+        "No condition reaches the required probability of 0.90 (Recovery at least 0.99); the best "
+        "so far is pH "
+    )
+    assert not [s for s in read.every("section") if s.attributes["id"] == "ranges"]
+
+
+def test_a_window_that_the_data_do_not_support_gives_no_set_point(tmp_path: Path) -> None:
+    noisy = plate(24).splitlines()
+    rows = [
+        f"{','.join(line.split(',')[:4])},{0.05 if i % 2 else 0.95}," if i else line
+        for i, line in enumerate(noisy)
+    ]
+    second = [
+        noisy[0],
+        *(f"{','.join(r.split(',')[:4])},0.9{i % 10}," for i, r in enumerate(rows[1:])),
+    ]
+    tables = {"plates/plate-01.csv": "\n".join(rows), "plates/plate-02.csv": "\n".join(second)}
+    page, read = _said(tmp_path / "s", {"study.toml": STUDY, **tables})
+    assert page.facts["standing"] == "Not supported by the data"
+    assert page.facts["answer"][0].endswith("so no set point is given.")
+    assert page.facts["answer"][1].startswith(page.facts["window"]["unsupported"][0])
+    assert "set point" not in read.one("section", id="window").text.lower()
+    assert not [s for s in read.every("script") if s.attributes.get("id") == "pointing-data"]
+
+
+def test_three_factors_one_with_choices_and_per_cent(tmp_path: Path) -> None:
+    toml = STUDY.replace("at_least = 0.8", 'at_least = 80\nunit = "%"') + RESIN
+    rows = plate(16, "resin", "A|B|B").splitlines()
+    scaled = [rows[0]]
+    for row in rows[1:]:
+        *front, value, _ = row.split(",")
+        scaled.append(",".join([*front, f"{100 * float(value):.1f}", ""]))
+    tables: dict[str, str | bytes] = {"plates/plate-01.csv": "\n".join(scaled)}
+    page, read = _said(tmp_path / "s", {"study.toml": toml, **tables})
+    assert "Recovery at least 80 %" in page.facts["answer"][0]
+    panels = json.loads(read.one("script", id="pointing-data").text)["panels"]
+    assert [panel["held"] for panel in panels] == [["Resin A"], ["Resin B"]]
+
+
+def test_a_log_factor_is_pointed_at_on_its_scale(tmp_path: Path) -> None:
+    toml = (
+        STUDY[: STUDY.index('[[factors]]\nname = "salt"')]
+        + LOAD.lstrip()
+        + STUDY[STUDY.index("[[responses]]") :]
+    )
+    lines = ["well,ph,load,recovery"]
+    for i, well in enumerate(plate(12).splitlines()[1:]):
+        name, _, ph, _salt, value, _ = well.split(",")
+        lines.append(f"{name},{ph},{5 * (1 + i % 4)},{value}")
+    _page, read = _said(
+        tmp_path / "s", {"study.toml": toml, "plates/plate-01.csv": "\n".join(lines)}
+    )
+    (panel,) = json.loads(read.one("script", id="pointing-data").text)["panels"]
+    assert (panel["x"]["log"], panel["y"]["log"]) == (False, True)
+
+
+def test_without_protein_for_a_plate_the_page_is_made_all_the_same(tmp_path: Path) -> None:
+    toml = STUDY.replace("available_mg = 40", "available_mg = 13")
+    page, read = _said(tmp_path / "s", {"study.toml": toml, "plates/plate-01.csv": plate()})
+    assert page.basis.plan is None
+    assert page.facts["answer"][2].startswith("No next plate is planned: ")
+    assert page.facts["unplanned"][0] in read.one("section", id="next").text
+
+
+def test_numbers_in_words() -> None:
+    assert [chance(p) for p in (0.0, 0.004, 0.5, 0.994, 0.996, 1.0)] == [
+        "< 0.01",
+        "< 0.01",
+        "0.50",
+        "0.99",
+        "> 0.99",
+        "> 0.99",
+    ]
+    assert [measure(v) for v in (0.95, 0.9168, 12.0, 123.4, 1234.5)] == [
+        "0.950",
+        "0.917",
+        "12.0",
+        "123",
+        "1234",
+    ]
+    assert [fixed_name(n) for n in ("elution_volume_ul", "resin", "stages", "ul")] == [
+        "elution volume, µL",
+        "resin",
+        "stages",
+        "ul",
+    ]
