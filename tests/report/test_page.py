@@ -5,31 +5,53 @@ from __future__ import annotations
 import itertools
 import json
 import re
+from dataclasses import replace
 from importlib.resources import files
 from pathlib import Path
 
+import numpy as np
+import pandas as pd
 import pytest
 
+from muntin.bench.plan import Plan
 from muntin.record import open_study
+from muntin.record.definition import Definition
 from muntin.report.advice_files import json_text, read_inputs
+from muntin.report.drawn import Drawn, Frame, drawn
 from muntin.report.page.answer import answer, standing_word
 from muntin.report.page.build import Page, build_page, plan_or_reasons
 from muntin.report.page.phrases import chance, fixed_name, measure
+from muntin.report.page.pointing import pointed_at
 from muntin.report.text import window_lines
+from muntin.report.window_map import map_figure
 from muntin.report.words import share_text
-from muntin.window.assessment import assess
+from muntin.window.assessment import Assessment, assess
+from muntin.window.window import Window
 from tests.report.parsed import Element, parsed, table_of
-from tests.report.studies import LOAD, ONE_FACTOR, RESIN, STUDY, one_factor_plate, plate, write
+from tests.report.studies import ONE_FACTOR, RESIN, STUDY, one_factor_plate, plate, write
+from tests.studies import LOAD as LOAD_KEYS
+from tests.studies import PH, tables
+from tests.studies import RESIN as RESIN_KEYS
 
+NO_WINDOW = Window(
+    grid=pd.DataFrame(),
+    regular=True,
+    share=0.0,
+    wrong_share=0.0,
+    setpoint=pd.Series(dtype=float),
+    ranges=None,
+    unsupported=(),
+)
 HOSTILE = """<script>alert("x")</script> & 'so'"""
 FIXED = '\n[fixed]\nelution_volume_ul = 200\nresin = "HOSTILE"\n'
+PLAIN = STUDY.replace("kept_within = 0.1\n", "")
 STOP = "\n[stop]\nwrong_share = 0.02\n"
 
 
 def page_of(folder: Path, wells: int = 6, seed: int = 1) -> Page:
     study = open_study(folder)
     view = assess(study, surrogate="quadratic", seed=seed)
-    plan, unplanned = plan_or_reasons(view, wells, "edge", seed)
+    plan, unplanned = plan_or_reasons(view, wells, "edge", seed) if wells else (None, ("so asked",))
     settings = {"wells": wells, "surrogate": "quadratic", "seed": seed}
     inputs = read_inputs(folder)
     return build_page(view, plan, unplanned=unplanned, settings=settings, inputs=inputs)
@@ -46,9 +68,9 @@ def with_one_left_out() -> str:
 
 @pytest.fixture(scope="module")
 def page(tmp_path_factory: pytest.TempPathFactory) -> Page:
-    """Two factors kept within tolerances, one response, a plate of twelve and one of six."""
+    """Two factors, one response, a plate of twelve and one of six."""
     quoted = HOSTILE.replace('"', '\\"')
-    toml = STUDY.replace("Small invented study", quoted) + FIXED.replace("HOSTILE", quoted) + STOP
+    toml = PLAIN.replace("Small invented study", quoted) + FIXED.replace("HOSTILE", quoted) + STOP
     folder = tmp_path_factory.mktemp("page") / "study"
     second = "\n".join([plate(12).splitlines()[0], *plate(12).splitlines()[7:]]) + "\n"
     tables = {"plates/plate-01.csv": with_one_left_out(), "plates/plate-02.csv": second}
@@ -177,7 +199,7 @@ def test_the_answer_is_three_sentences_with_the_numbers_of_the_facts(
 
 def test_the_window_is_told_as_on_the_screen(page: Page, read: Element) -> None:
     said = [p.text for p in read.one("section", id="window").every("p")]
-    for line in window_lines(page.basis.view, page.basis.window, 99):
+    for line in window_lines(page.basis.view, page.basis.window, 99, page.basis.handed):
         assert line in said
 
 
@@ -214,9 +236,10 @@ def test_what_was_left_out_is_told_with_its_reading_and_what_it_would_change(
     said = [p.text for p in read.one("section", id="left-out").every("p")]
     put_back = page.facts["put_back"]
     assert put_back["readings"] == 1
-    assert f"{100 * page.facts['window']['share']:.1f} % of the range" in said[0]
-    assert f"{100 * put_back['share']:.1f} % of the range" in said[1]
-    assert said[0].split(":")[1] != said[1].split(":")[1]
+    for told, facts in ((said[0], page.facts["window"]), (said[1], put_back)):
+        assert f"{share_text(facts['wrong_share'])} may be called wrongly" in told
+        assert share_text(facts["set_point"]["probability"]) in told
+    assert put_back["share"] < page.facts["window"]["share"]
 
 
 def test_putting_back_equals_a_study_in_which_nothing_was_left_out(
@@ -280,14 +303,28 @@ def test_the_facts_are_plain_json(page: Page) -> None:
     assert again["standing"] == standing_word(page.basis)
 
 
-def _said(folder: Path, files_: dict[str, str | bytes], wells: int = 6) -> tuple[Page, Element]:
+def only_the_map(view: Assessment, plan: Plan | None = None) -> tuple[Drawn, ...]:
+    """The map alone; the other figures have tests of their own."""
+    figure, frames = map_figure(view, plan)
+    return (drawn(figure, "map", "The map of this small study.", frames),)
+
+
+@pytest.fixture
+def _one_figure(monkeypatch: pytest.MonkeyPatch) -> None:
+    monkeypatch.setattr("muntin.report.page.build.report_figures", only_the_map)
+
+
+def _said(folder: Path, files_: dict[str, str | bytes], wells: int = 0) -> tuple[Page, Element]:
     page = page_of(write(folder, files_), wells)
     return page, parsed(page.html)
 
 
+@pytest.mark.usefixtures("_one_figure")
 def test_a_study_without_readings_says_so(tmp_path: Path) -> None:
     header = "well,role,ph,salt,recovery,exclude\n"
-    page, read = _said(tmp_path / "s", {"study.toml": STUDY, "plates/plate-01.csv": header})
+    page, read = _said(
+        tmp_path / "s", {"study.toml": STUDY, "plates/plate-01.csv": header}, wells=6
+    )
     assert page.facts["standing"] == "Nothing read yet"
     told = page.facts["answer"]
     assert told[0] == "Nothing has been read yet, so there is no window."
@@ -297,6 +334,7 @@ def test_a_study_without_readings_says_so(tmp_path: Path) -> None:
     assert not [t for t in read.every("table") if "Ranges" in t.one("caption").text]
 
 
+@pytest.mark.usefixtures("_one_figure")
 def test_a_response_awaited_makes_it_provisional(tmp_path: Path) -> None:
     tables = {"study.toml": ONE_FACTOR, "plates/plate-01.csv": one_factor_plate(hcp=False)}
     page, read = _said(tmp_path / "s", tables)
@@ -306,6 +344,7 @@ def test_a_response_awaited_makes_it_provisional(tmp_path: Path) -> None:
     assert "HCP at most 100 ng/mL" in read.one("section", id="holds-for").text
 
 
+@pytest.mark.usefixtures("_one_figure")
 def test_several_responses_are_told_alone_and_jointly(tmp_path: Path) -> None:
     tables = {"study.toml": ONE_FACTOR, "plates/plate-01.csv": one_factor_plate()}
     page, read = _said(tmp_path / "s", tables)
@@ -322,6 +361,7 @@ def test_several_responses_are_told_alone_and_jointly(tmp_path: Path) -> None:
     }
 
 
+@pytest.mark.usefixtures("_one_figure")
 def test_no_condition_in_the_window(tmp_path: Path) -> None:
     toml = STUDY.replace("at_least = 0.8", "at_least = 0.99")
     page, read = _said(tmp_path / "s", {"study.toml": toml, "plates/plate-01.csv": plate()})
@@ -333,8 +373,9 @@ def test_no_condition_in_the_window(tmp_path: Path) -> None:
     assert not [s for s in read.every("section") if s.attributes["id"] == "ranges"]
 
 
+@pytest.mark.usefixtures("_one_figure")
 def test_a_window_that_the_data_do_not_support_gives_no_set_point(tmp_path: Path) -> None:
-    noisy = plate(24).splitlines()
+    noisy = plate(12).splitlines()
     rows = [
         f"{','.join(line.split(',')[:4])},{0.05 if i % 2 else 0.95}," if i else line
         for i, line in enumerate(noisy)
@@ -344,7 +385,7 @@ def test_a_window_that_the_data_do_not_support_gives_no_set_point(tmp_path: Path
         *(f"{','.join(r.split(',')[:4])},0.9{i % 10}," for i, r in enumerate(rows[1:])),
     ]
     tables = {"plates/plate-01.csv": "\n".join(rows), "plates/plate-02.csv": "\n".join(second)}
-    page, read = _said(tmp_path / "s", {"study.toml": STUDY, **tables})
+    page, read = _said(tmp_path / "s", {"study.toml": PLAIN, **tables})
     assert page.facts["standing"] == "Not supported by the data"
     assert page.facts["answer"][0].endswith("so no set point is given.")
     assert page.facts["answer"][1].startswith(page.facts["window"]["unsupported"][0])
@@ -352,8 +393,9 @@ def test_a_window_that_the_data_do_not_support_gives_no_set_point(tmp_path: Path
     assert not [s for s in read.every("script") if s.attributes.get("id") == "pointing-data"]
 
 
+@pytest.mark.usefixtures("_one_figure")
 def test_three_factors_one_with_choices_and_per_cent(tmp_path: Path) -> None:
-    toml = STUDY.replace("at_least = 0.8", 'at_least = 80\nunit = "%"') + RESIN
+    toml = PLAIN.replace("at_least = 0.8", 'at_least = 80\nunit = "%"') + RESIN
     rows = plate(16, "resin", "A|B|B").splitlines()
     scaled = [rows[0]]
     for row in rows[1:]:
@@ -366,26 +408,32 @@ def test_three_factors_one_with_choices_and_per_cent(tmp_path: Path) -> None:
     assert [panel["held"] for panel in panels] == [["Resin A"], ["Resin B"]]
 
 
-def test_a_log_factor_is_pointed_at_on_its_scale(tmp_path: Path) -> None:
-    toml = (
-        STUDY[: STUDY.index('[[factors]]\nname = "salt"')]
-        + LOAD.lstrip()
-        + STUDY[STUDY.index("[[responses]]") :]
-    )
-    lines = ["well,ph,load,recovery"]
-    for i, well in enumerate(plate(12).splitlines()[1:]):
-        name, _, ph, _salt, value, _ = well.split(",")
-        lines.append(f"{name},{ph},{5 * (1 + i % 4)},{value}")
-    _page, read = _said(
-        tmp_path / "s", {"study.toml": toml, "plates/plate-01.csv": "\n".join(lines)}
-    )
-    (panel,) = json.loads(read.one("script", id="pointing-data").text)["panels"]
+def test_pointing_keeps_to_what_a_panel_shows() -> None:
+    definition = Definition.model_validate(tables(factors=[PH, LOAD_KEYS, RESIN_KEYS]))
+    rows = [(p, q, r) for p in (4.5, 5.0) for q in (5.0, 10.0, 40.0) for r in ("Alpha", "Beta")]
+    grid = pd.DataFrame(rows, columns=["ph", "load", "resin"])
+    grid["probability"] = np.linspace(0.0, 1.0, len(grid))
+    left = {"x": "ph", "y": "load", "x_ends": (4.4, 5.1), "y_ends": (4.0, 50.0), "x_log": False}
+    box = {"left": 0.1, "top": 0.2, "width": 0.5, "height": 0.6}
+    frame = Frame(**left, **box, y_log=True, held={"resin": "Beta"})  # type: ignore[arg-type]
+    shown = Drawn(name="map", title="", says="", svg="", png=b"", frames=(frame,))
+    window = replace(NO_WINDOW, grid=grid[(grid["ph"] < 5.0) | (grid["load"] < 40.0)])
+    (panel,) = pointed_at(definition, window, shown)["panels"]
+    assert panel["box"] == [0.1, 0.2, 0.5, 0.6]
     assert (panel["x"]["log"], panel["y"]["log"]) == (False, True)
+    assert panel["held"] == ["resin Beta"]
+    assert panel["y"]["texts"] == ["load 5", "load 10", "load 40"]
+    # Rows of load, columns of pH; the condition that no limit allows is not among the grid's.
+    assert panel["p"] == [[91, 636], [273, 818], [455, None]]
+    assert pointed_at(definition, None, shown) == {}
 
 
+@pytest.mark.usefixtures("_one_figure")
 def test_without_protein_for_a_plate_the_page_is_made_all_the_same(tmp_path: Path) -> None:
-    toml = STUDY.replace("available_mg = 40", "available_mg = 13")
-    page, read = _said(tmp_path / "s", {"study.toml": toml, "plates/plate-01.csv": plate()})
+    toml = PLAIN.replace("available_mg = 40", "available_mg = 13")
+    page, read = _said(
+        tmp_path / "s", {"study.toml": toml, "plates/plate-01.csv": plate()}, wells=6
+    )
     assert page.basis.plan is None
     assert page.facts["answer"][2].startswith("No next plate is planned: ")
     assert page.facts["unplanned"][0] in read.one("section", id="next").text

@@ -88,8 +88,8 @@ def _sure(basis: Basis, window: Window) -> str:
     required = chance_text(definition.required_probability)
     reach = f"{share_text(window.share)} of the range reaches the required {required}"
     together = ""
-    if window.ranges is not None:
-        together = f", {ranges_text(definition, window.ranges)} together"
+    if basis.ranges is not None:
+        together = f", {ranges_text(definition, basis.ranges)} together"
     return f"{reach}{together}; {wrong}."
 
 

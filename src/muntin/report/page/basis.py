@@ -53,6 +53,13 @@ class Basis:
         """The window where the data support it, else None."""
         return None if self.window is None or self.window.unsupported else self.window
 
+    @property
+    def ranges(self) -> dict[str, tuple[object, object]] | None:
+        """The ranges around the set point that hold together, if there are some."""
+        if self.handed is not None:
+            return None if self.handed.box is None else self.handed.box.ranges
+        return None if self.standing is None else self.standing.ranges
+
     def figures(self, *names: str) -> tuple[Drawn, ...]:
         """Return those of the named figures that were drawn; "factor-" names all that begin so."""
         return tuple(

@@ -13,6 +13,7 @@ from muntin.report.cautions import cautions
 from muntin.report.drawn import Drawn
 from muntin.report.every_figure import report_figures
 from muntin.report.facts import Facts, plan_facts, standing_facts, study_facts
+from muntin.report.handover_text import handover_facts
 from muntin.report.page.ahead_sections import next_section, protein_section
 from muntin.report.page.answer import answer, standing_word
 from muntin.report.page.basis import Basis
@@ -89,6 +90,7 @@ def build_page(
     the name of each step.
     """
     window = None if view.fresh else view.window()
+    tell("judging the ranges to hand over")
     handed = None if window is None or window.unsupported else view.handover()
     tell("putting back what was left out")
     back = put_back(view)
@@ -104,6 +106,7 @@ def build_page(
         **standing_facts(view, window),
         "plan": None if plan is None else plan_facts(view.study, plan),
         "unplanned": list(unplanned),
+        **({} if handed is None else {"handover": handover_facts(view.study.definition, handed)}),
         "put_back": None if back is None else back.facts(),
         "cautions": list(cautions(view)),
     }
@@ -120,4 +123,5 @@ def build_page(
     facts |= {"standing": standing_word(basis), "answer": list(answer(basis))}
     sections = [section for make in _SECTIONS if not (section := make(basis)).empty]
     html = page_html(basis, sections)
-    return Page(html=html, figures=tuple(drawn.values()), facts=facts, basis=basis)
+    shown = tuple(figure for section in sections for figure in section.figures)
+    return Page(html=html, figures=shown, facts=facts, basis=basis)

@@ -8,6 +8,7 @@ import numpy as np
 
 from muntin.record.definition import Definition
 from muntin.record.factors import Factor
+from muntin.report.handover_text import at_once_text
 from muntin.report.page.basis import Basis
 from muntin.report.page.blocks import Section, Table
 from muntin.report.page.phrases import chance, heading, measure, settings
@@ -31,10 +32,10 @@ def handover_section(basis: Basis) -> Section:
     ]
     says = (
         "Ranges hold together where every condition in them reaches the required probability. "
-        "Surer still are ranges that hold at all their conditions at once.",
+        f'"All at once" is a stronger claim: {at_once_text(handed)[5:]}.',
     )
     notes = (
-        f"What holds at once was counted over {handed.draws} surfaces drawn from the model (seed "
+        f"What holds at once was counted over {handed.draws} draws from the model (seed "
         f"{handed.seed}).",
     )
     return Section(

@@ -75,7 +75,7 @@ def _factors(factors: tuple[Factor, ...]) -> Table:
 
 def window_section(basis: Basis) -> Section:
     """Return the window: in words, as a map, at single conditions, and what bounds it."""
-    tables = []
+    tables, several = [], len(basis.definition.judged) > 1
     if basis.standing is not None and not basis.view.awaited:
         tables.append(_passes(basis))
     if basis.standing is not None and basis.standing.sides:
@@ -83,8 +83,8 @@ def window_section(basis: Basis) -> Section:
     return Section(
         name="window",
         title="The window",
-        says=tuple(window_lines(basis.view, basis.window, _ALL)),
-        figures=basis.figures("map", "joint", "sides"),
+        says=tuple(window_lines(basis.view, basis.window, _ALL, basis.handed)),
+        figures=basis.figures("map", *(["joint"] if several else []), "sides"),
         tables=tuple(tables),
     )
 
@@ -96,9 +96,9 @@ def _conditions(basis: Basis) -> Iterator[tuple[str, dict[Any, Any]]]:
         return
     names = list(definition.factor_names)
     yield ("set point" if window.share else "best so far"), window.setpoint[names].to_dict()
-    if window.ranges is None:
+    if basis.ranges is None:
         return
-    ends = [tuple(dict.fromkeys(window.ranges[name])) for name in names]
+    ends = [tuple(dict.fromkeys(basis.ranges[name])) for name in names]
     corners = [*itertools.product(*ends)]
     if 1 < len(corners) <= 8:
         for corner in corners:
@@ -166,8 +166,8 @@ def responses_section(basis: Basis) -> Section:
     figures = basis.figures("together", "factor-")
     where = "the set point" if window is not None and window.share else "the best condition"
     says = (
-        f"Each figure moves one factor; the others stay at {where}. Lines are process means, bands "
-        "their central 95 % intervals, dashes the targets.",
+        f"Each figure moves one factor; the others stay at {where}. Lines are process means. Dark "
+        "bands are the central 95 % of what the means may be, pale ones that of new wells.",
     )
     return Section(
         name="factors",
