@@ -147,7 +147,7 @@ def test_window_that_is_not_supported_leaves_the_evidence(tmp_path: Path) -> Non
     window = replace(view.window(), unsupported=("The model fails.",))
     view.__dict__["_window"] = window
     names = [figure.name for figure in report_figures(view)]
-    assert names == ["map", "predicted-recovery", "plates-recovery", "protein"]
+    assert names == ["map", "predicted-recovery", "protein"]
 
 
 def test_ids_and_references_are_renamed_together() -> None:

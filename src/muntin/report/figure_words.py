@@ -16,6 +16,7 @@ from muntin.report.plates_figure import repeated
 from muntin.report.protein_figure import protein_ledger
 from muntin.report.ruling_text import ruling_line
 from muntin.report.sections import section
+from muntin.report.sides_figure import side_text
 from muntin.report.together_figure import tightest
 from muntin.report.verdicts import verdicts
 from muntin.report.words import (
@@ -34,8 +35,6 @@ from muntin.window.group_errors import group_errors
 
 if TYPE_CHECKING:
     from muntin.bench.plan import Plan
-
-_FAILS = {"low": "too low", "high": "too high"}
 
 
 def map_words(view: Assessment) -> str:
@@ -79,18 +78,13 @@ def _best(view: Assessment) -> str:
 def sides_words(view: Assessment) -> str:
     """Say which response fails first on each side."""
     definition = view.study.definition
-    labels = {r.name: r.label for r in definition.judged}
     factors = {f.name: f for f in definition.factors}
     parts = []
     for side in view.window().sides:
         word = "below" if side.end == "low" else "above"
         where = f"{word} {setting_text(factors[side.factor], side.at)}"
-        if side.response is None or side.probability is None:
-            parts.append(f"{where}: not tested further")
-        else:
-            fails = _FAILS[str(side.fails)]
-            chance = odds_text(side.probability)
-            parts.append(f"{where}: {labels[side.response]} {fails}, chance to pass {chance}")
+        split = ", " if side.response is not None else " "
+        parts.append(f"{where}: {split.join(side_text(view, side))}")
     return f"What fails first beyond the ranges that hold together. {'; '.join(parts)}."
 
 

@@ -59,6 +59,7 @@ def joint(
     axes, new = one_panel(
         axes, "Chance to pass, by response", f"{_place(view, condition)}: {where}"
     )
+    required = definition.required_probability
     for row, one in table.iterrows():
         at = -float(row)  # type: ignore[arg-type]
         axes.axhline(at, color="#dfe4e6", linewidth=1, zorder=0)
@@ -78,7 +79,14 @@ def joint(
                     zorder=3,
                 )
         p = _judged(definition.judged_by, one)
-        axes.text(1.035, at, odds_text(p), va="center", fontsize=9.5, color=INK)
+        axes.text(
+            1.035,
+            at,
+            odds_text(p, definition.required_probability),
+            va="center",
+            fontsize=9.5,
+            color=INK,
+        )
     required = definition.required_probability
     axes.axvline(required, color=INK, linewidth=1, linestyle=(0, (4, 3)), zorder=1)
     axes.text(

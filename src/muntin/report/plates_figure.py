@@ -89,10 +89,11 @@ def errors(
 
 def plates_figure(view: Assessment, response: Response) -> Figure | None:
     """Return the panels of one response that there is something for: conditions that several
-    plates read, and each shared error; None where there is nothing.
+    plates read, and each error that several groups have; None where there is nothing.
     """
     again = repeated(view, response)
-    shared = [part for _, part in group_errors(view, response).groupby("by", sort=False)]
+    every = [part for _, part in group_errors(view, response).groupby("by", sort=False)]
+    shared = [part for part in every if len(part) > 1]
     if again.empty and not shared:
         return None
     title = f"{response.label}: plates beside each other"

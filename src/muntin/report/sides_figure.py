@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
@@ -19,6 +19,7 @@ if TYPE_CHECKING:
 
 _FAILS = {"low": "too low", "high": "too high"}
 _TESTED = "#dfe4e6"
+_THIN, _NARROW = 0.012, 0.16
 # The bars take the middle of the panel; words stand to either side of them.
 _ENDS = (-0.58, 1.58)
 
@@ -61,7 +62,10 @@ def _factor(axes: Axes, view: Assessment, window: Window, factor: Factor, row: f
     tested = "tested range" if row == 0 else None
     inside = "ranges that hold together" if row == 0 else None
     axes.barh(row, 1.0, height=0.22, color=_TESTED, label=tested, zorder=1)
-    axes.barh(row, high - low, left=low, height=0.34, color=LINE, label=inside, zorder=2)
+    width = max(high - low, _THIN)
+    axes.barh(
+        row, width, left=0.5 * (low + high - width), height=0.34, color=LINE, label=inside, zorder=2
+    )
     at = position(factor, float(window.setpoint[factor.name]))
     axes.plot(
         [at],
@@ -74,10 +78,7 @@ def _factor(axes: Axes, view: Assessment, window: Window, factor: Factor, row: f
         label="set point" if row == 0 else None,
         zorder=4,
     )
-    for value, x, align in zip(ranges[factor.name], (low, high), ("left", "right"), strict=True):
-        if high - low < 0.16:
-            align = "right" if align == "left" else "left"
-        axes.text(x, row + 0.21, factor.shown(value), ha=align, va="bottom", color=INK, fontsize=9)
+    _ends_of_ranges(axes, factor, ranges[factor.name], row)
     for end, x in ((factor.span[0], 0.0), (factor.span[1], 1.0)):
         axes.text(x, row - 0.19, factor.shown(end), ha="center", va="top", color=QUIET, fontsize=8)
     for side in window.sides:
@@ -85,18 +86,40 @@ def _factor(axes: Axes, view: Assessment, window: Window, factor: Factor, row: f
             _words(axes, view, side, row)
 
 
+def _ends_of_ranges(axes: Axes, factor: Factor, ends: tuple[object, object], row: float) -> None:
+    """Write the ends of the ranges above their bar, outward where it is narrow, once where it is
+    one level.
+    """
+    low, high = (position(factor, float(np.asarray(end, dtype=float))) for end in ends)
+    style: dict[str, Any] = {"va": "bottom", "color": INK, "fontsize": 9}
+    if ends[0] == ends[1]:
+        axes.text(low, row + 0.21, factor.shown(ends[0]), ha="center", **style)
+        return
+    sides = ("right", "left") if high - low < _NARROW else ("left", "right")
+    for end, x, align in zip(ends, (low, high), sides, strict=True):
+        axes.text(x, row + 0.21, factor.shown(end), ha=align, **style)
+
+
 def _words(axes: Axes, view: Assessment, side: Side, row: float) -> None:
     x, align = (-0.05, "right") if side.end == "low" else (1.05, "left")
-    text, colour = side_text(view, side)
+    told = side_text(view, side)
+    colour = INK if side.response is not None else QUIET
+    text = "\n".join(told)
     axes.text(x, row, text, ha=align, va="center", color=colour, fontsize=9, linespacing=1.25)
 
 
 def side_text(view: Assessment, side: Side) -> tuple[str, str]:
-    """Return what stands beyond a side, in two lines, and its colour."""
+    """Return what stands beyond a side, in two parts."""
+    definition = view.study.definition
     if side.response is None or side.probability is None:
-        return "passes as far\nas it was tested", QUIET
-    (label,) = (r.label for r in view.study.definition.judged if r.name == side.response)
-    return f"{label} {_FAILS[str(side.fails)]}\nchance to pass {odds_text(side.probability)}", INK
+        (factor,) = (f for f in definition.factors if f.name == side.factor)
+        last = factor.span[0 if side.end == "low" else 1]
+        if abs(side.at - last) < 0.5 * factor.span[2]:
+            return "passes as far", "as it was tested"
+        return "passes as far", "as limits allow"
+    (label,) = (r.label for r in definition.judged if r.name == side.response)
+    chance = odds_text(side.probability, definition.required_probability)
+    return f"{label} {_FAILS[str(side.fails)]}", f"chance to pass {chance}"
 
 
 def position(factor: Factor, value: float) -> float:

@@ -77,13 +77,18 @@ def chance_text(probability: float) -> str:
     return short if abs(float(short) - probability) < 1e-9 else f"{probability:g}"
 
 
-def odds_text(probability: float) -> str:
-    """Return a probability that was computed, with two decimals, never rounded to a certainty."""
-    if 0.0 < probability < 0.005:
+def odds_text(probability: float, limit: float | None = None) -> str:
+    """Return a probability that was computed, with two decimals, never rounded to a certainty, and
+    with as many more, up to four, as tell it from a limit.
+    """
+    if probability < 0.005:
         return "under 0.01"
-    if 0.995 <= probability < 1.0:
+    if probability >= 0.995:
         return "over 0.99"
-    return f"{probability:.2f}"
+    for digits in (2, 3, 4):
+        if limit is None or abs(round(probability, digits) - limit) > 1e-9:
+            break
+    return f"{probability:.{digits}f}"
 
 
 def reach_text(definition: Definition, share: float) -> str:
