@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 from muntin.window.boxes import Span
 from muntin.window.everywhere import Everywhere
 from muntin.window.largest import Bools, over_spans, spans_of
-from muntin.window.steps import Steps, grid_of
+from muntin.window.steps import Steps, evenly, grid_of
 
 Array = NDArray[np.float64]
 Index = NDArray[np.intp]
@@ -23,18 +23,9 @@ def asked_levels(span: Span, at: Index | None) -> list[Index]:
     others evenly between.
     """
     most = _LEVELS[len(span.low)]
-    out = []
-    for axis, (low, high) in enumerate(zip(span.low, span.high, strict=True)):
-        count = int(min(most, high - low + 1))
-        levels = np.round(np.linspace(low, high, count)).astype(np.intp)
-        if at is not None and low <= at[axis] <= high:
-            inner = np.abs(levels - at[axis]).argmin()
-            if count > 2 and 0 < inner < count - 1:
-                levels[inner] = at[axis]
-            else:
-                levels = np.append(levels, at[axis])
-        out.append(np.unique(levels))
-    return out
+    held = [None] * len(span.low) if at is None else at.tolist()
+    ends = zip(span.low.tolist(), span.high.tolist(), held, strict=True)
+    return [evenly(low, high, most, here) for low, high, here in ends]
 
 
 def holding_everywhere(

@@ -21,7 +21,7 @@ Array = NDArray[np.float64]
 Index = NDArray[np.intp]
 Ranges = dict[str, tuple[object, object]]
 # Of a box or a slab of so many bench steps every one is judged, else so many scattered ones.
-_EVERY, _SCATTER, _SLAB_EVERY, _SLAB_SCATTER = 1500, 256, 160, 48
+_EVERY, _SCATTER, _SLAB_EVERY, _SLAB_SCATTER = 1500, 256, 160, 16
 _ROUNDS = 40
 # Weakest steps of a box from which the surface is followed down.
 _WAYS = 6

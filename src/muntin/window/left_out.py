@@ -9,10 +9,11 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
+from muntin.record.predictions import recorded_predictions
 from muntin.record.responses import Response
 from muntin.record.study import Study
 from muntin.window.coded import code, setting_sd
-from muntin.window.new_wells import reading_quantiles
+from muntin.window.new_wells import LEVELS, reading_quantiles
 from muntin.window.predicted import Predicted
 from muntin.window.probability import Target
 
@@ -20,7 +21,6 @@ if TYPE_CHECKING:
     from muntin.window.assessment import Assessment
 
 Array = NDArray[np.float64]
-_LEVELS = (0.025, 0.5, 0.975)
 # Two-sided 95 % of a normal law.
 _WIDTH = 1.959964
 
@@ -44,16 +44,45 @@ def left_out(view: Assessment, response: Response) -> pd.DataFrame:
 def beforehand(view: Assessment, response: Response) -> pd.DataFrame:
     """The readings of every later plate beside what the plates before it predict for a new plate.
 
-    Columns as those of `left_out`; predicted is the median. The fits are made anew, with the same
-    surrogate and seed, on the plates before in the order of the study. No rows where there is one
-    plate, or where the plates before have no reading of the response.
+    Columns as those of `left_out`, and recorded; predicted is the median. Where the advice of the
+    time has recorded it for all of a plate's readings, at the conditions at which they were run,
+    that is told; else the fits are made anew, with the same surrogate and seed, on the plates
+    before in the order of the study. No rows where there is one plate, or where the plates before
+    have no reading of the response.
     """
-    counting = [p.name for p in view.study.plates if not p.void]
-    found = [_next(view, response, counting[:at], counting[at]) for at in range(1, len(counting))]
+    study = view.study
+    counting = [p.name for p in study.plates if not p.void]
+    then = recorded_predictions(study.folder, study.definition.factor_names)
+    then = then[then["response"] == response.name]
+    found = []
+    for at in range(1, len(counting)):
+        kept = _recorded(study, response, then[then["plate"] == counting[at]], counting[at])
+        found.append(_next(view, response, counting[:at], counting[at]) if kept is None else kept)
     rows = [table for table in found if table is not None]
     if not rows:
-        return _beside(view.study, response, np.zeros((3, 0)), [])
+        return _beside(study, response, np.zeros((3, 0)), []).assign(recorded=[])
     return pd.concat(rows, ignore_index=True)
+
+
+def _recorded(
+    study: Study, response: Response, then: pd.DataFrame, plate: str
+) -> pd.DataFrame | None:
+    """The readings of a plate beside what was recorded for them; None unless it was for all."""
+    readings = study.readings(response.name)
+    readings = readings[readings["plate"] == plate]
+    if readings.empty or then.empty:
+        return None
+    last: dict[tuple[object, ...], Array] = {}
+    names = study.definition.factor_names
+    for row in then.to_dict("records"):
+        ends = [row[name] for name in ("low", "predicted", "high")]
+        last[(row["well"], *(row[name] for name in names))] = np.array(ends, dtype=float)
+    targets = [f"{name}_target" for name in names]
+    keys = [tuple(row) for row in readings[["well", *targets]].itertuples(index=False)]
+    if any(key not in last for key in keys):
+        return None
+    three = np.stack([last[key] for key in keys], axis=1) / response.unit_size
+    return _beside(study, response, three, [plate]).assign(recorded=True)
 
 
 def only(study: Study, plates: list[str]) -> Study:
@@ -83,7 +112,8 @@ def _next(
     setting = setting_sd(study.definition, readings, measured.to_numpy(dtype=bool))
     X = code(study.definition, readings)
     law = Predicted.of(surface, X, Target(), setting)
-    return _beside(study, response, reading_quantiles(law, _LEVELS), [plate])
+    three = reading_quantiles(law, LEVELS)
+    return _beside(study, response, three, [plate]).assign(recorded=False)
 
 
 def _beside(

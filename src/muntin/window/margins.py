@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 from muntin.window.boxes import Span
 from muntin.window.everywhere import Everywhere
 from muntin.window.limiting import ENDS, End
-from muntin.window.steps import Judged, Steps
+from muntin.window.steps import Judged, Steps, evenly
 
 Array = NDArray[np.float64]
 Index = NDArray[np.intp]
@@ -88,10 +88,8 @@ class Crossing:
 
 
 def line_through(steps: Steps, at: Index, axis: int) -> Line:
-    """The line through an index (F,) along one factor: all its steps, or 61 evenly and its own."""
-    count = int(steps.counts[axis])
-    levels = np.round(np.linspace(0, count - 1, min(count, _JUDGED))).astype(np.intp)
-    return Line(axis, at, np.union1d(levels, at[axis]))
+    """The line through an index (F,) along one factor: all its steps, or 61 evenly with its own."""
+    return Line(axis, at, evenly(0, int(steps.counts[axis]) - 1, _JUDGED, int(at[axis])))
 
 
 def crossing(judged: Judged, required: float, line: Line, start: int, end: End) -> Crossing | None:
@@ -172,8 +170,7 @@ def _lines(steps: Steps, at: Index, span: Span | None) -> Iterator[Line]:
     moved = int(np.argmax(steps.counts))
     if count == 2:
         other = 1 - moved
-        most = int(steps.counts[other])
-        for level in np.unique(np.round(np.linspace(0, most - 1, min(most, _LINES))).astype(int)):
+        for level in evenly(0, int(steps.counts[other]) - 1, _LINES):
             place = at.copy()
             place[other] = level
             yield line_through(steps, place, moved)

@@ -10,6 +10,7 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
+from muntin.record.readings import INFORMING
 from muntin.record.responses import Response
 from muntin.window.coded import code, setting_sd
 from muntin.window.predicted import Predicted
@@ -23,6 +24,7 @@ Array = NDArray[np.float64]
 _LIMITS, _NODES = 120, 64
 _SDS = 6.0
 _LEAST = 1e-9
+LEVELS = (0.025, 0.5, 0.975)
 
 
 def reading_quantiles(predicted: Predicted, levels: Sequence[float]) -> Array:
@@ -76,3 +78,22 @@ def new_wells(
         setting_sd(definition, frame),
     )
     return reading_quantiles(law, levels) * response.unit_size
+
+
+def planned_readings(view: Assessment, wells: pd.DataFrame) -> pd.DataFrame:
+    """What the wells of a plan are expected to read, a row a well to run and response read so far.
+
+    wells: well, role and the factors (raw units). Columns: well, response, low, predicted and high:
+    median and central 95 % of a new well on a new plate, in the user's unit.
+    """
+    run = wells[wells["role"].isin(INFORMING)]
+    names = [*view.study.definition.factor_names]
+    parts = []
+    for response in view.study.definition.responses:
+        if response.name in view.stacks and len(run):
+            frame = run[names].reset_index(drop=True)
+            low, middle, high = new_wells(view, response, frame.infer_objects(), LEVELS)
+            table = pd.DataFrame({"well": run["well"].to_numpy(), "response": response.name})
+            parts.append(table.assign(low=low, predicted=middle, high=high))
+    columns = ["well", "response", "low", "predicted", "high"]
+    return pd.concat(parts, ignore_index=True) if parts else pd.DataFrame(columns=columns)

@@ -13,7 +13,7 @@ from muntin.record.definition import Definition
 from muntin.window.boxes import Span, largest_span, settled, share_of
 from muntin.window.coded import code, setting_sd
 from muntin.window.predicted import Predicted
-from muntin.window.steps import Judged, Steps, grid_of
+from muntin.window.steps import Judged, Steps, evenly, grid_of
 
 if TYPE_CHECKING:
     from muntin.window.assessment import Assessment
@@ -22,7 +22,7 @@ if TYPE_CHECKING:
 Array = NDArray[np.float64]
 Index = NDArray[np.intp]
 # Nodes a factor where there is no grid, by the number of factors with a range.
-_NODES = (0, 61, 31, 14, 8, 6, 5)
+_NODES = (0, 61, 31, 14, 8, 5, 4)
 _SCOUTS = 32
 # Ranges elsewhere are worth a word where they are larger by this.
 _LARGER = 1.02
@@ -100,8 +100,7 @@ def _set_as_kept(definition: Definition) -> Definition:
 
 
 def _sparse_nodes(steps: Steps, at: Index) -> list[Index]:
+    """Few steps of each factor, evenly, the first and the last among them, and those of `at`."""
     most = _NODES[len(steps.names)]
-    return [
-        np.union1d(np.round(np.linspace(0, k - 1, min(k, most))).astype(np.intp), here)
-        for k, here in zip(steps.counts.tolist(), at.tolist(), strict=True)
-    ]
+    counts = steps.counts.tolist()
+    return [evenly(0, k - 1, most, here) for k, here in zip(counts, at.tolist(), strict=True)]

@@ -133,6 +133,19 @@ def condition_of(frame: pd.DataFrame) -> Condition:
     return {str(name): value for name, value in frame.iloc[0].to_dict().items()}
 
 
+def evenly(low: int, high: int, most: int, holding: int | None = None) -> Index:
+    """At most so many steps (k,) from low to high, evenly, both among them; and `holding`, in place
+    of the nearest where that is no end.
+    """
+    steps = np.round(np.linspace(low, high, min(most, high - low + 1))).astype(np.intp)
+    if holding is None or not low <= holding <= high:
+        return steps
+    nearest = int(np.abs(steps - holding).argmin())
+    if 0 < nearest < len(steps) - 1:
+        steps[nearest] = holding
+    return np.union1d(steps, holding)
+
+
 def corners(low: Index, high: Index) -> Index:
     """The corners (2^F, F) of a box from low to high (F,)."""
     return np.array([*product(*zip(low, high, strict=True))], dtype=np.intp)
