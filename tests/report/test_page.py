@@ -5,78 +5,27 @@ from __future__ import annotations
 import itertools
 import json
 import re
-from dataclasses import replace
 from importlib.resources import files
 from pathlib import Path
 
-import numpy as np
-import pandas as pd
 import pytest
 
-from muntin.bench.plan import Plan
 from muntin.record import open_study
-from muntin.record.definition import Definition
 from muntin.report.advice_files import json_text, read_inputs
-from muntin.report.drawn import Drawn, Frame, drawn
 from muntin.report.page.answer import answer, standing_word
-from muntin.report.page.build import Page, build_page, plan_or_reasons
+from muntin.report.page.build import Page
 from muntin.report.page.phrases import chance, fixed_name, measure
-from muntin.report.page.pointing import pointed_at
 from muntin.report.text import window_lines
-from muntin.report.window_map import map_figure
 from muntin.report.words import share_text
-from muntin.window.assessment import Assessment, assess
-from muntin.window.window import Window
+from muntin.window.assessment import assess
+from tests.report.browser import needs_browser, printed, probed
+from tests.report.pages import HOSTILE, hostile_page
 from tests.report.parsed import Element, parsed, table_of
-from tests.report.studies import ONE_FACTOR, RESIN, STUDY, one_factor_plate, plate, write
-from tests.studies import LOAD as LOAD_KEYS
-from tests.studies import PH, tables
-from tests.studies import RESIN as RESIN_KEYS
-
-NO_WINDOW = Window(
-    grid=pd.DataFrame(),
-    regular=True,
-    share=0.0,
-    wrong_share=0.0,
-    setpoint=pd.Series(dtype=float),
-    ranges=None,
-    unsupported=(),
-)
-HOSTILE = """<script>alert("x")</script> & 'so'"""
-FIXED = '\n[fixed]\nelution_volume_ul = 200\nresin = "HOSTILE"\n'
-PLAIN = STUDY.replace("kept_within = 0.1\n", "")
-STOP = "\n[stop]\nwrong_share = 0.02\n"
-
-
-def page_of(folder: Path, wells: int = 6, seed: int = 1) -> Page:
-    study = open_study(folder)
-    view = assess(study, surrogate="quadratic", seed=seed)
-    plan, unplanned = plan_or_reasons(view, wells, "edge", seed) if wells else (None, ("so asked",))
-    settings = {"wells": wells, "surrogate": "quadratic", "seed": seed}
-    inputs = read_inputs(folder)
-    return build_page(view, plan, unplanned=unplanned, settings=settings, inputs=inputs)
-
-
-def with_one_left_out() -> str:
-    """A plate on which one reading is wrong, and left out with a hostile reason."""
-    lines = plate(12).splitlines()
-    well, role, ph, salt, *_ = lines[5].split(",")
-    reason = HOSTILE.replace('"', '""')
-    lines[5] = f'{well},{role},{ph},{salt},0.5,"{reason}"'
-    return "\n".join(lines) + "\n"
 
 
 @pytest.fixture(scope="module")
 def page(tmp_path_factory: pytest.TempPathFactory) -> Page:
-    """Two factors, one response, a plate of twelve and one of six."""
-    quoted = HOSTILE.replace('"', '\\"')
-    toml = PLAIN.replace("Small invented study", quoted) + FIXED.replace("HOSTILE", quoted) + STOP
-    folder = tmp_path_factory.mktemp("page") / "study"
-    second = "\n".join([plate(12).splitlines()[0], *plate(12).splitlines()[7:]]) + "\n"
-    tables = {"plates/plate-01.csv": with_one_left_out(), "plates/plate-02.csv": second}
-    write(folder, {"study.toml": toml, **tables, "plates/plate-01.toml": 'by = "lab <2>"\n'})
-    (folder / "plates/plate-02.toml").write_text('repeats = "plate-01"\n')
-    return page_of(folder)
+    return hostile_page(tmp_path_factory.mktemp("page") / "study")
 
 
 @pytest.fixture(scope="module")
@@ -303,142 +252,6 @@ def test_the_facts_are_plain_json(page: Page) -> None:
     assert again["standing"] == standing_word(page.basis)
 
 
-def only_the_map(view: Assessment, plan: Plan | None = None) -> tuple[Drawn, ...]:
-    """The map alone; the other figures have tests of their own."""
-    figure, frames = map_figure(view, plan)
-    return (drawn(figure, "map", "The map of this small study.", frames),)
-
-
-@pytest.fixture
-def _one_figure(monkeypatch: pytest.MonkeyPatch) -> None:
-    monkeypatch.setattr("muntin.report.page.build.report_figures", only_the_map)
-
-
-def _said(folder: Path, files_: dict[str, str | bytes], wells: int = 0) -> tuple[Page, Element]:
-    page = page_of(write(folder, files_), wells)
-    return page, parsed(page.html)
-
-
-@pytest.mark.usefixtures("_one_figure")
-def test_a_study_without_readings_says_so(tmp_path: Path) -> None:
-    header = "well,role,ph,salt,recovery,exclude\n"
-    page, read = _said(
-        tmp_path / "s", {"study.toml": STUDY, "plates/plate-01.csv": header}, wells=6
-    )
-    assert page.facts["standing"] == "Nothing read yet"
-    told = page.facts["answer"]
-    assert told[0] == "Nothing has been read yet, so there is no window."
-    assert told[1].startswith("The study asks for Recovery at least 0.8, with a probability of")
-    assert told[2].startswith("Next comes an opening plate, plate-01")
-    assert len(table_of(read, "Conditions of plate-01")) > 1
-    assert not [t for t in read.every("table") if "Ranges" in t.one("caption").text]
-
-
-@pytest.mark.usefixtures("_one_figure")
-def test_a_response_awaited_makes_it_provisional(tmp_path: Path) -> None:
-    tables = {"study.toml": ONE_FACTOR, "plates/plate-01.csv": one_factor_plate(hcp=False)}
-    page, read = _said(tmp_path / "s", tables)
-    assert page.facts["standing"] == "Provisional"
-    assert page.facts["answer"][0].startswith("Provisional, as HCP is not read yet: Salt ")
-    assert "(Recovery at least 0.8)" in page.facts["answer"][0]
-    assert "HCP at most 100 ng/mL" in read.one("section", id="holds-for").text
-
-
-@pytest.mark.usefixtures("_one_figure")
-def test_several_responses_are_told_alone_and_jointly(tmp_path: Path) -> None:
-    tables = {"study.toml": ONE_FACTOR, "plates/plate-01.csv": one_factor_plate()}
-    page, read = _said(tmp_path / "s", tables)
-    first = table_of(read, "Probabilities at single conditions, by response and jointly")[0]
-    known = page.basis.view.at(page.basis.window.setpoint.to_frame().T.astype(float))  # type: ignore[union-attr]
-    assert first["Recovery: new well passes"] == chance(known["recovery_p_well"].iloc[0])
-    assert first["HCP: new well passes"] == chance(known["hcp_p_well"].iloc[0])
-    assert first["all: new well passes"] == chance(known["p_well"].iloc[0])
-    sides = table_of(read, "What gives way first")
-    assert {row["gives way"] for row in sides} <= {
-        "Recovery, too low",
-        "HCP, too high",
-        "the tested range ends",
-    }
-
-
-@pytest.mark.usefixtures("_one_figure")
-def test_no_condition_in_the_window(tmp_path: Path) -> None:
-    toml = STUDY.replace("at_least = 0.8", "at_least = 0.99")
-    page, read = _said(tmp_path / "s", {"study.toml": toml, "plates/plate-01.csv": plate()})
-    assert page.facts["standing"] == "No window yet"
-    assert page.facts["answer"][0].startswith(
-        "No condition reaches the required probability of 0.90 (Recovery at least 0.99); the best "
-        "so far is pH "
-    )
-    assert not [s for s in read.every("section") if s.attributes["id"] == "ranges"]
-
-
-@pytest.mark.usefixtures("_one_figure")
-def test_a_window_that_the_data_do_not_support_gives_no_set_point(tmp_path: Path) -> None:
-    noisy = plate(12).splitlines()
-    rows = [
-        f"{','.join(line.split(',')[:4])},{0.05 if i % 2 else 0.95}," if i else line
-        for i, line in enumerate(noisy)
-    ]
-    second = [
-        noisy[0],
-        *(f"{','.join(r.split(',')[:4])},0.9{i % 10}," for i, r in enumerate(rows[1:])),
-    ]
-    tables = {"plates/plate-01.csv": "\n".join(rows), "plates/plate-02.csv": "\n".join(second)}
-    page, read = _said(tmp_path / "s", {"study.toml": PLAIN, **tables})
-    assert page.facts["standing"] == "Not supported by the data"
-    assert page.facts["answer"][0].endswith("so no set point is given.")
-    assert page.facts["answer"][1].startswith(page.facts["window"]["unsupported"][0])
-    assert "set point" not in read.one("section", id="window").text.lower()
-    assert not [s for s in read.every("script") if s.attributes.get("id") == "pointing-data"]
-
-
-@pytest.mark.usefixtures("_one_figure")
-def test_three_factors_one_with_choices_and_per_cent(tmp_path: Path) -> None:
-    toml = PLAIN.replace("at_least = 0.8", 'at_least = 80\nunit = "%"') + RESIN
-    rows = plate(16, "resin", "A|B|B").splitlines()
-    scaled = [rows[0]]
-    for row in rows[1:]:
-        *front, value, _ = row.split(",")
-        scaled.append(",".join([*front, f"{100 * float(value):.1f}", ""]))
-    tables: dict[str, str | bytes] = {"plates/plate-01.csv": "\n".join(scaled)}
-    page, read = _said(tmp_path / "s", {"study.toml": toml, **tables})
-    assert "Recovery at least 80 %" in page.facts["answer"][0]
-    panels = json.loads(read.one("script", id="pointing-data").text)["panels"]
-    assert [panel["held"] for panel in panels] == [["Resin A"], ["Resin B"]]
-
-
-def test_pointing_keeps_to_what_a_panel_shows() -> None:
-    definition = Definition.model_validate(tables(factors=[PH, LOAD_KEYS, RESIN_KEYS]))
-    rows = [(p, q, r) for p in (4.5, 5.0) for q in (5.0, 10.0, 40.0) for r in ("Alpha", "Beta")]
-    grid = pd.DataFrame(rows, columns=["ph", "load", "resin"])
-    grid["probability"] = np.linspace(0.0, 1.0, len(grid))
-    left = {"x": "ph", "y": "load", "x_ends": (4.4, 5.1), "y_ends": (4.0, 50.0), "x_log": False}
-    box = {"left": 0.1, "top": 0.2, "width": 0.5, "height": 0.6}
-    frame = Frame(**left, **box, y_log=True, held={"resin": "Beta"})  # type: ignore[arg-type]
-    shown = Drawn(name="map", title="", says="", svg="", png=b"", frames=(frame,))
-    window = replace(NO_WINDOW, grid=grid[(grid["ph"] < 5.0) | (grid["load"] < 40.0)])
-    (panel,) = pointed_at(definition, window, shown)["panels"]
-    assert panel["box"] == [0.1, 0.2, 0.5, 0.6]
-    assert (panel["x"]["log"], panel["y"]["log"]) == (False, True)
-    assert panel["held"] == ["resin Beta"]
-    assert panel["y"]["texts"] == ["load 5", "load 10", "load 40"]
-    # Rows of load, columns of pH; the condition that no limit allows is not among the grid's.
-    assert panel["p"] == [[91, 636], [273, 818], [455, None]]
-    assert pointed_at(definition, None, shown) == {}
-
-
-@pytest.mark.usefixtures("_one_figure")
-def test_without_protein_for_a_plate_the_page_is_made_all_the_same(tmp_path: Path) -> None:
-    toml = PLAIN.replace("available_mg = 40", "available_mg = 13")
-    page, read = _said(
-        tmp_path / "s", {"study.toml": toml, "plates/plate-01.csv": plate()}, wells=6
-    )
-    assert page.basis.plan is None
-    assert page.facts["answer"][2].startswith("No next plate is planned: ")
-    assert page.facts["unplanned"][0] in read.one("section", id="next").text
-
-
 def test_numbers_in_words() -> None:
     assert [chance(p) for p in (0.0, 0.004, 0.5, 0.994, 0.996, 1.0)] == [
         "< 0.01",
@@ -461,3 +274,40 @@ def test_numbers_in_words() -> None:
         "stages",
         "ul",
     ]
+
+
+@needs_browser
+@pytest.mark.parametrize("width", [500, 1280])
+def test_in_a_browser_it_runs_without_an_error_and_text_fits(
+    page: Page, tmp_path: Path, width: int
+) -> None:
+    found, console = probed(page.html, tmp_path, width)
+    assert found["errors"] == []
+    assert console == []
+    assert found["sideways"] <= 0, "the page can be scrolled sideways"
+    assert found["cut"] == []
+    assert found["covered"] == []
+
+
+@needs_browser
+def test_in_a_browser_the_map_tells_what_is_pointed_at(page: Page, tmp_path: Path) -> None:
+    found, _ = probed(page.html, tmp_path, 1280)
+    window = page.basis.window
+    assert window is not None
+    grid = window.grid.set_index(["ph", "salt"])["probability"]
+    # The middle of the range, then a step up along pH.
+    for told, ph in ((found["pointed"], 6.0), (found["stepped"], 6.5)):
+        p = grid[ph, 250.0]
+        assert told == f"pH {ph}, Salt 250 mM: {share_text(round(p, 3))} of new wells pass"
+    assert found["unpointed"] == "Point at the map, or move over it with the arrow keys."
+
+
+@needs_browser
+def test_in_a_browser_it_prints(page: Page, tmp_path: Path) -> None:
+    pdf = printed(page.html, tmp_path)
+    assert pdf.startswith(b"%PDF")
+    # A4 in points.
+    boxes = {tuple(map(float, b.split())) for b in re.findall(rb"/MediaBox \[([^\]]+)\]", pdf)}
+    assert boxes
+    for _, _, width, height in boxes:
+        assert (width, height) == pytest.approx((595.3, 841.9), abs=1.0)
