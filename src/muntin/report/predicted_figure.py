@@ -13,7 +13,7 @@ from muntin.report.canvas import blank, finish, one_panel
 from muntin.report.markers import figure_legend
 from muntin.report.sections import response_named
 from muntin.report.style import ACCENT, INK, PAPER, QUIET, SERIES, dress, plain_ticks
-from muntin.report.words import axis_label
+from muntin.report.words import axis_label, joined
 from muntin.window.assessment import Assessment
 from muntin.window.left_out import beforehand, left_out
 
@@ -69,6 +69,7 @@ def predicted_figure(view: Assessment, response: Response) -> tuple[Figure, str]
     if not later.empty:
         tables["plates before"] = later
     said = " ".join(f"{_SAYS[by]}: {inside_text(table)}." for by, table in tables.items())
+    said += recorded_text(later)
     title = f"{response.label}: observed against predicted"
     figure, panels = blank(title, said, columns=len(tables), shared=False)
     plates = [*dict.fromkeys(tables["others"]["plate"])]
@@ -76,6 +77,15 @@ def predicted_figure(view: Assessment, response: Response) -> tuple[Figure, str]
         _draw(axes, response, table, by, plates)
     figure_legend(figure, panels)
     return figure, said
+
+
+def recorded_text(later: pd.DataFrame) -> str:
+    """Return which later plates were predicted then, and which are now; "" without later plates."""
+    then = [*dict.fromkeys(later["plate"][later["recorded"].astype(bool)])]
+    now = [*dict.fromkeys(later["plate"][~later["recorded"].astype(bool)])]
+    parts = [f"{joined(then)} as recorded beforehand"] if then else []
+    parts += [f"{joined(now)} computed now"] if now else []
+    return f" ({', '.join(parts)}.)" if parts else ""
 
 
 def inside_text(table: pd.DataFrame) -> str:

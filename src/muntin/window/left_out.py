@@ -2,8 +2,9 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterable
 from dataclasses import replace
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 import pandas as pd
@@ -76,13 +77,18 @@ def _recorded(
     names = study.definition.factor_names
     for row in then.to_dict("records"):
         ends = [row[name] for name in ("low", "predicted", "high")]
-        last[(row["well"], *(row[name] for name in names))] = np.array(ends, dtype=float)
+        last[_key(row[name] for name in ("well", *names))] = np.array(ends, dtype=float)
     targets = [f"{name}_target" for name in names]
-    keys = [tuple(row) for row in readings[["well", *targets]].itertuples(index=False)]
+    keys = [_key(row) for row in readings[["well", *targets]].itertuples(index=False)]
     if any(key not in last for key in keys):
         return None
     three = np.stack([last[key] for key in keys], axis=1) / response.unit_size
     return _beside(study, response, three, [plate]).assign(recorded=True)
+
+
+def _key(values: Iterable[Any]) -> tuple[object, ...]:
+    """Well and condition; numbers as they were before they went through a table."""
+    return tuple(v if isinstance(v, str) else float(f"{v:.9g}") for v in values)
 
 
 def only(study: Study, plates: list[str]) -> Study:
