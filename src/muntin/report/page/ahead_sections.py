@@ -101,7 +101,7 @@ def _wells(basis: Basis, plan: Plan) -> Table:
         "wells",
         "role",
         *map(heading, definition.factors),
-        *([] if fresh else ["p now"]),
+        *([] if fresh else ["probability today"]),
         "why",
     )
     figures = range(2, len(head) - 1)

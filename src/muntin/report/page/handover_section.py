@@ -50,7 +50,11 @@ def _boxes(basis: Basis, handed: HandOver) -> list[Table]:
         (f"holding at once with {asked}", handed.assured),
         ("larger, without the set point", handed.larger),
     )
-    rows = tuple(_box(basis.definition, name, box) for name, box in named if box is not None)
+    rows = tuple(
+        _box(basis.definition, name, box)
+        for name, box in named
+        if box is not None and (box is handed.box or box != handed.box)
+    )
     if not rows:
         return []
     head = (

@@ -14,7 +14,7 @@ from muntin.report.page.blocks import Section, Table
 from muntin.report.page.pointing import pointed_at
 
 _DOUBTS = ("Not supported by the data", "Provisional")
-_HASH, _LONG, _BRIEF = "SHA-256", 32, 12
+_HASH, _LONG, _BRIEF = "SHA-256", 32, 16
 
 
 def page_html(basis: Basis, sections: Sequence[Section]) -> str:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import itertools
-from collections.abc import Iterator
+from collections.abc import Iterator, Mapping
 from typing import TYPE_CHECKING, Any
 
 import pandas as pd
@@ -77,7 +77,7 @@ def window_section(basis: Basis) -> Section:
     """Return the window: in words, as a map, at single conditions, and what bounds it."""
     tables, several = [], len(basis.definition.judged) > 1
     if basis.standing is not None and not basis.view.awaited:
-        tables.append(_passes(basis))
+        tables += _known(basis)
     if basis.standing is not None and basis.standing.sides:
         tables.append(_sides(basis, basis.standing.sides))
     return Section(
@@ -102,40 +102,43 @@ def _conditions(basis: Basis) -> Iterator[tuple[str, dict[Any, Any]]]:
     corners = [*itertools.product(*ends)]
     if 1 < len(corners) <= 8:
         for corner in corners:
-            yield "corner of the ranges", dict(zip(names, corner, strict=True))
+            yield "corner of ranges", dict(zip(names, corner, strict=True))
 
 
-def _passes(basis: Basis) -> Table:
-    """Joint passes, and those of each response alone."""
+def _known(basis: Basis) -> list[Table]:
+    """Joint passes and those of each response alone at single conditions, and the means there."""
     definition, view = basis.definition, basis.view
     found = [*_conditions(basis)]
     known = view.at(pd.DataFrame([condition for _, condition in found]))
+    rows = known.to_dict("records")
+    first = [(what, *settings(definition, condition)) for what, condition in found]
+    head = ("condition", *map(heading, definition.factors))
     read = [r for r in definition.responses if f"{r.name}_mean" in known]
     several = [r for r in read if r.judged] if len(definition.judged) > 1 else []
-    together = [name for name in _CHANCES if name in known]
-    head = [
-        "condition",
-        *(heading(f) for f in definition.factors),
-        *(f"{heading(r)}, mean (95 %)" for r in read),
-        *(f"{r.label}: new well passes" for r in several),
-        *(f"{'all: ' if several else ''}{_CHANCES[name]}" for name in together),
+    passes = {f"{r.name}_p_well": f"{r.label}: new well passes" for r in several}
+    every = "all: " if several else ""
+    passes |= {name: f"{every}{says}" for name, says in _CHANCES.items() if name in known}
+    chances = [tuple(chance(row[name]) for name in passes) for row in rows]
+    means = [tuple(_interval(row, r.name) for r in read) for row in rows]
+    jointly = ", by response and jointly" if several else ""
+    named = (
+        (f"Probabilities at single conditions{jointly}", tuple(passes.values()), chances),
+        ("Process means there, with 95 % intervals", tuple(map(heading, read)), means),
+    )
+    return [
+        Table(
+            caption=caption,
+            head=(*head, *own),
+            rows=tuple((*start, *cells) for start, cells in zip(first, found_cells, strict=True)),
+            numbers=tuple(range(1, len(head) + len(own))),
+        )
+        for caption, own, found_cells in named
     ]
-    rows = []
-    for (what, condition), row in zip(found, known.to_dict("records"), strict=True):
-        means = [
-            f"{measure(row[f'{r.name}_mean'])} "
-            f"({measure(row[f'{r.name}_low'])} to {measure(row[f'{r.name}_high'])})"
-            for r in read
-        ]
-        alone = [chance(row[f"{r.name}_p_well"]) for r in several]
-        joint = [chance(row[name]) for name in together]
-        rows.append((what, *settings(definition, condition), *means, *alone, *joint))
-    caption = "Probabilities at single conditions" + (
-        ", by response and jointly" if several else ""
-    )
-    return Table(
-        caption=caption, head=tuple(head), rows=tuple(rows), numbers=tuple(range(1, len(head)))
-    )
+
+
+def _interval(row: Mapping[Any, Any], name: str) -> str:
+    mean, low, high = (measure(row[f"{name}_{end}"]) for end in ("mean", "low", "high"))
+    return f"{mean} ({low} to {high})"
 
 
 def _sides(basis: Basis, sides: tuple[Side, ...]) -> Table:
@@ -163,7 +166,7 @@ def _sides(basis: Basis, sides: tuple[Side, ...]) -> Table:
 def responses_section(basis: Basis) -> Section:
     """Return the responses along each factor at the set point."""
     window = basis.standing
-    figures = basis.figures("together", "factor-")
+    figures, several = basis.figures("together", "factor-"), len(basis.view.stacks) > 1
     where = "the set point" if window is not None and window.share else "the best condition"
     says = (
         f"Each figure moves one factor; the others stay at {where}. Lines are process means. Dark "
@@ -171,7 +174,7 @@ def responses_section(basis: Basis) -> Section:
     )
     return Section(
         name="factors",
-        title="Each factor, and the responses together",
+        title="Each factor" + (", and the responses together" if several else ""),
         says=says if figures else (),
         figures=figures,
     )
