@@ -77,6 +77,20 @@ def test_errors_belong_to_their_draws(surface):
     np.testing.assert_allclose(wander.mean(0), expected, rtol=0.1)
 
 
+def test_a_draw_keeps_the_errors_of_its_node(surface):
+    plain = replace(surface, cloud=None)
+    mean = plain.moments(ASKED)[0][:, 0]
+    ends = np.sort([mean.argmin(), mean.argmax()])
+    two = plain.take(ends, np.array([0.5, 0.5]))
+    draws = draw_jointly(two, GRID, 2000, np.random.default_rng(6))
+    f, noise = draws.at(ASKED)[:, 0], draws.errors.noise
+    sd = np.sqrt(two.moments(ASKED)[1][:, 0])
+    for k, (middle, own) in enumerate(zip(mean[ends], two.errors.noise, strict=True)):
+        mine = f[noise == own]
+        assert len(mine) == 1000
+        assert mine.mean() == pytest.approx(middle, abs=4.0 * sd[k] / np.sqrt(1000))
+
+
 def test_the_same_generator_gives_the_same_draws(surface):
     one, other = (
         draw_jointly(surface, GRID, 30, np.random.default_rng(4)).at(ASKED) for _ in range(2)

@@ -76,12 +76,12 @@ def _through(place):
 def test_a_dip_between_the_nodes_is_cut_out(seed):
     made = definition(2)
     rng = np.random.default_rng(seed)
-    # Nodes lie at every fifth step; only a few steps in the middle of four of them fail.
+    # Nodes lie at every fifth step; only five steps in the middle of four of them fail.
     dip = 5 * rng.integers(1, 8, 2) + 2
 
     def p(frame):
         away = ((frame.to_numpy(dtype=float) / 0.02 - dip) ** 2).sum(axis=1)
-        return 0.97 - 0.1 * np.exp(-away / 18.0)
+        return 0.97 - 0.075 * np.exp(-away / 18.0)
 
     judged = Judged(Steps.at(made, {}), p)
     nodes = [np.arange(0, 51, 5)] * 2

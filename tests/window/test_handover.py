@@ -8,7 +8,7 @@ from scipy.special import ndtr, ndtri
 import muntin
 from muntin.record.definition import Definition
 from muntin.window.handover import hand_over
-from muntin.window.margins import crossing, line_through, margins_of
+from muntin.window.margins import _first_below, crossing, line_through, margins_of
 from muntin.window.predicted import Predicted
 from muntin.window.probability import Target
 from muntin.window.ranges import scouted
@@ -237,6 +237,20 @@ def test_a_limit_ends_a_margin_where_it_stands():
     assert (low.edge, low.limited, low.end_of_range) == (None, False, 0.0)
     line = line_through(judged.steps, np.array([4]), 0)
     assert crossing(judged, 0.9, line, 4, "low") is None
+
+
+def test_a_drawn_edge_is_the_first_crossing_from_the_middle():
+    levels = np.array([5.0, 4.0, 3.0, 2.0])
+    heights = np.array(
+        [
+            [1.0, 0.5, -0.5, 3.0],  # crosses between 4 and 3, and comes back
+            [1.0, 0.5, 0.5, 0.2],  # never
+            [-0.1, 0.5, 0.5, -3.0],  # outside in the middle already
+            [1.0, 0.0, 0.1, -0.3],
+        ]
+    )
+    place = _first_below(heights, levels, -np.inf)
+    np.testing.assert_allclose(place, [3.5, -np.inf, np.inf, 2.75])
 
 
 # More factors, choices.
