@@ -227,6 +227,19 @@ def test_map_marks_set_point_wells_and_plan(view: Assessment, plan: Plan) -> Non
         plots.window_map(view, x="resin")
 
 
+def test_edge_has_the_interval_of_the_hand_over(view: Assessment) -> None:
+    axes = plots.window_map(view, own(), edge=True)
+    handed = view.handover()
+    assert handed is not None
+    drawn = [mark for mark in axes.get_lines() if mark.get_marker() in "|_"]
+    assert len(drawn) == len(handed.edge) > 2
+    for mark, (_, row) in zip(drawn, handed.edge.iterrows(), strict=True):
+        ends = [row[row["factor"]] if np.isnan(row[end]) else row[end] for end in ("low", "high")]
+        x, y = values(mark)
+        assert (x if row["factor"] == "ph" else y).tolist() == pytest.approx(ends)
+    assert not [mark for mark in plots.window_map(view).get_lines() if mark.get_marker() in "|_"]
+
+
 def test_forecast_has_the_plan_s_shares(view: Assessment, plan: Plan) -> None:
     left, right = plots.forecast(view, plan)
     shares = 100 * plan.forecast["wrong_share"]

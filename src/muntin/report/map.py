@@ -13,7 +13,7 @@ from numpy.typing import NDArray
 from muntin.record.definition import Definition
 from muntin.record.factors import Factor
 from muntin.report.canvas import blank
-from muntin.report.markers import figure_legend, mark_proposed, mark_run, mark_set_point
+from muntin.report.markers import figure_legend, mark_edge, mark_proposed, mark_run, mark_set_point
 from muntin.report.style import (
     BARRED,
     INK,
@@ -52,9 +52,11 @@ def draw_map(
     proposed: pd.DataFrame,
     titles: tuple[str, str],
     height: float | None = None,
+    edge: pd.DataFrame | None = None,
 ) -> Figure:
     """Draw one panel a choice. `run` and `proposed` have a row a condition, factors in columns.
-    height: of the figure, in inches; what suits the panels where None.
+    height: of the figure, in inches; what suits the panels where None. edge: conditions on the
+    edge with its interval (`HandOver.edge`), drawn where given.
 
     Without a window there is no probability to show, only the plan. Raises ValueError where the
     study does not have two factors with a range and at most one with few choices.
@@ -72,7 +74,8 @@ def draw_map(
     shade = None
     for axes, choice in zip(panels, choices, strict=True):
         held = {} if panel is None else {panel.name: choice}
-        tables = Conditions(_of(run, held), _of(proposed, held))
+        on_edge = None if edge is None else _of(edge, held)
+        tables = Conditions(_of(run, held), _of(proposed, held), on_edge)
         shade = map_panel(axes, definition, window, tables, (x, y), held, columns > 2) or shade
         axes.label_outer()
         if panel is not None:
@@ -87,10 +90,13 @@ def draw_map(
 
 @dataclass(frozen=True)
 class Conditions:
-    """What a panel marks: conditions that were run, with their verdict, and those of a plan."""
+    """What a panel marks: conditions that were run, with their verdict, those of a plan, and those
+    on the edge with its interval (`HandOver.edge`), or None.
+    """
 
     run: pd.DataFrame
     proposed: pd.DataFrame
+    edge: pd.DataFrame | None = None
 
 
 def map_panel(
@@ -114,6 +120,8 @@ def map_panel(
         if all(set_point[name] == value for name, value in held.items()):
             _box(axes, window, x, y)
             mark_set_point(axes, window, float(set_point[x.name]), float(set_point[y.name]))
+        if marked.edge is not None:
+            mark_edge(axes, marked.edge, x.name, y.name)
     mark_run(axes, marked.run, x.name, y.name)
     mark_proposed(axes, marked.proposed, x.name, y.name)
     return shade

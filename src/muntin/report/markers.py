@@ -87,6 +87,33 @@ def mark_set_point(axes: Axes, window: Window, x: float, y: float) -> None:
     )
 
 
+def mark_edge(axes: Axes, edge: pd.DataFrame, x: str, y: str) -> None:
+    """Draw the interval of the edge at each of its conditions, along the factor that is moved; an
+    end that lies outside the range is left open at the edge itself.
+    """
+    label: str | None = "edge, 95 %"
+    for row in edge.to_dict("records"):
+        moved = str(row["factor"])
+        if moved not in (x, y):
+            continue
+        here = float(row[moved])
+        ends = [here if pd.isna(row[end]) else float(row[end]) for end in ("low", "high")]
+        still = [float(row[y if moved == x else x])] * 2
+        across, up = (ends, still) if moved == x else (still, ends)
+        axes.plot(
+            across,
+            up,
+            color=INK,
+            linewidth=1.1,
+            marker="|" if moved == x else "_",
+            markersize=7,
+            markeredgewidth=1.1,
+            label=label,
+            zorder=3,
+        )
+        label = None
+
+
 def required_line(axes: Axes, required: float) -> None:
     """Draw the required probability across a panel whose y axis is probability.
 

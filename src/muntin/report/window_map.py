@@ -38,19 +38,22 @@ def window_map(
     x: str | None = None,
     y: str | None = None,
     choice: str | None = None,
+    edge: bool = False,
 ) -> Axes:
     """Draw the judged probability over two factors, with the edge, the wells run and the set point.
 
     x, y: names of two factors with a range, the first two where None; other factors are held at the
-    set point, one with choices at `choice` where given. plan: whose conditions are marked. Raises
-    ValueError where there are no two such factors, or too many factors for a grid.
+    set point, one with choices at `choice` where given. plan: whose conditions are marked. edge:
+    whether to draw the edge's 95 % interval, from `Assessment.handover`, which takes some seconds.
+    Raises ValueError where there are no two such factors, or too many factors for a grid.
     """
     window = None if view.fresh or view.window().unsupported else view.window()
     across, up = _two(view, x, y)
     held = _held(view, window, (across, up), choice)
     title = figure_titles(view, window)
     axes, new = one_panel(axes, _held_title(view, held) or title[0], title[1])
-    shade = _panel(axes, view, window, plan, (across, up), held)
+    on_edge = _edge(view, window) if edge else None
+    shade = _panel(axes, view, window, plan, (across, up), held, on_edge)
     if shade is not None and new:
         figure = axes.get_figure(root=True)
         assert figure is not None
@@ -73,7 +76,7 @@ def map_figure(view: Assessment, plan: Plan | None) -> tuple[Figure, Placed]:
         run, proposed = verdicts(view.study), proposed_conditions(view, wells)
         height = SLIDE if panel is None or len(panel.choices or ()) in (2, 3) else None
         titles = figure_titles(view, window)
-        figure = draw_map(definition, window, run, proposed, titles, height)
+        figure = draw_map(definition, window, run, proposed, titles, height, _edge(view, window))
         choices: list[dict[str, Any]] = [{}]
         if panel is not None:
             choices = [{panel.name: choice} for choice in panel.choices or ()]
@@ -95,7 +98,7 @@ def _pairs(
     placed, shade = [], None
     for axes, pair in zip(panels, pairs, strict=True):
         held = _held(view, window, pair, None)
-        shade = _panel(axes, view, window, plan, pair, held, narrow=True) or shade
+        shade = _panel(axes, view, window, plan, pair, held, None, narrow=True) or shade
         axes.set_title(_held_title(view, held), loc="left", fontsize=9, color=INK)
         placed.append((*pair, held))
     if shade is not None:
@@ -158,13 +161,21 @@ def _panel(
     plan: Plan | None,
     pair: tuple[Factor, Factor],
     held: dict[str, Any],
+    edge: pd.DataFrame | None,
     narrow: bool = False,
 ) -> Any:
     run = _there(view, verdicts(view.study), held)
     wells = None if plan is None else plan.wells
     proposed = _there(view, proposed_conditions(view, wells), held)
-    marked = Conditions(run, proposed)
+    on_edge = None if edge is None else _there(view, edge, held)
+    marked = Conditions(run, proposed, on_edge)
     return map_panel(axes, view.study.definition, window, marked, pair, held, narrow)
+
+
+def _edge(view: Assessment, window: Window | None) -> pd.DataFrame | None:
+    """Return the conditions on the edge with its interval; None where the window has none."""
+    handed = None if window is None or not window.share else view.handover()
+    return None if handed is None or handed.edge.empty else handed.edge
 
 
 def _there(view: Assessment, table: pd.DataFrame, held: dict[str, Any]) -> pd.DataFrame:
