@@ -8,7 +8,8 @@ from hypothesis import strategies as st
 
 from muntin.record.definition import Definition
 from muntin.window.boxes import Span, largest_span, probes, settled, share_of
-from muntin.window.ranges import settled_spans
+from muntin.window.largest import largest_box
+from muntin.window.ranges import exact_span, filled_in, settled_spans
 from muntin.window.steps import Judged, Steps, grid_of, whole
 from tests.studies import RESIN, tables
 
@@ -133,6 +134,31 @@ def test_exact_on_every_bench_step_against_brute_force():
                         if inside[a : b + 1, c : d + 1].all():
                             best = max(best, (b - a + 1) * (d - c + 1))
         assert span.size == best > 1
+
+
+@pytest.mark.parametrize("seed", range(6))
+def test_exact_between_the_nodes_of_two_factors(seed):
+    made = definition(2, step=0.02)
+    centre, p = surface(2, seed)
+    judged, at = start(made, centre, p)
+    nodes = coarse(judged.steps, 9, at)
+    judged(grid_of(nodes))
+    every = [np.arange(k) for k in judged.steps.counts]
+    filled = filled_in(judged, REQUIRED, nodes)
+    asked = len(judged.known)
+    assert asked < 0.6 * 51 * 51
+    inside = (p(judged.steps.frame(grid_of(every))) >= REQUIRED).reshape(51, 51)
+    found = np.array([filled.known[tuple(i)] >= REQUIRED for i in grid_of(every).tolist()])
+    np.testing.assert_array_equal(found.reshape(51, 51), inside)
+    box = exact_span(judged, filled, REQUIRED, every, at)
+    axes = [judged.steps.axis(axis) for axis in range(2)]
+    (a, b), (c, d) = largest_box(inside, axes, at.tolist())
+    assert share_of(judged.steps, box) == pytest.approx(
+        share_of(judged.steps, Span(np.array([a, c]), np.array([b, d])))
+    )
+    # From the nodes alone it is smaller, or as large.
+    coarsely = settled_spans(judged, judged, REQUIRED, nodes, at, False).held
+    assert share_of(judged.steps, coarsely) <= share_of(judged.steps, box) + 1e-12
 
 
 def test_larger_ranges_elsewhere_are_named():

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 from functools import reduce
 from typing import Any
@@ -14,6 +14,8 @@ Array = NDArray[np.float64]
 Bools = NDArray[np.bool_]
 Index = NDArray[np.intp]
 Spans = tuple[tuple[int, int], ...]
+_TIE = 1e-9
+_CHUNK = 4_000_000
 
 
 @dataclass(frozen=True, eq=False)
@@ -45,13 +47,31 @@ def largest_box(
         good = over_spans(good, axis, found)
         spans.append(found)
         sizes.append(at.size(*found))
-    if not good.any():
+    largest, place = 0.0, -1
+    for start, size in _sizes(good, sizes):
+        # Sums that differ by rounding only are of one size.
+        if size.max() > largest * (1.0 + _TIE):
+            largest = float(size.max())
+            place = start + int(np.flatnonzero(size >= largest * (1.0 - _TIE))[0])
+    if place < 0:
         return None
-    size = np.where(good, reduce(np.multiply.outer, sizes, np.ones(())), -1.0)
-    # Sums that differ by rounding only are of one size.
-    best = np.flatnonzero(size.ravel() >= size.max() * (1.0 - 1e-9))[0]
-    picked = np.unravel_index(best, good.shape)
+    picked = np.unravel_index(place, good.shape)
     return tuple((int(s[0][i]), int(s[1][i])) for s, i in zip(spans, picked, strict=True))
+
+
+def _sizes(good: Bools, sizes: Sequence[Array]) -> Iterator[tuple[int, Array]]:
+    """Sizes of the boxes, -1 where one may not be, in order, some of them at a time, with the place
+    of the first among all.
+    """
+    if not sizes:
+        yield 0, np.where(good.ravel(), 1.0, -1.0)
+        return
+    rest = reduce(np.multiply.outer, sizes[1:], np.ones(()))
+    rows = max(1, _CHUNK // rest.size)
+    for start in range(0, len(good), rows):
+        some = slice(start, start + rows)
+        size = np.where(good[some], np.multiply.outer(sizes[0][some], rest), -1.0)
+        yield start * rest.size, size.ravel()
 
 
 def spans_of(nodes: int, holding: int | None = None) -> tuple[Index, Index]:

@@ -24,6 +24,9 @@ Index = NDArray[np.intp]
 # Nodes a factor where there is no grid, by the number of factors with a range.
 _NODES = (0, 61, 31, 14, 8, 5, 4)
 _SCOUTS = 32
+# Factors in which the ranges are exact, how near the edge steps are judged, how many at most.
+_EXACT, _BAND, _MOST_FILLED = 2, 0.02, 4000
+_TWO = (0, 1)
 # Ranges elsewhere are worth a word where they are larger by this.
 _LARGER = 1.02
 
@@ -38,19 +41,56 @@ class Spans:
 
 def spans_of_window(view: Assessment, window: Window, judged: Judged, at: Index) -> Spans:
     """The spans of a window whose set point has index (F,) among the steps of `judged`, which knows
-    the window's grid. Exact where the grid has every bench step.
+    the window's grid. Exact where the grid has every bench step, and in two factors.
     """
     required = view.study.definition.required_probability
     if judged(at[None])[0] < required:
         return Spans(None, None)
     nodes, seen = judged.nodes(), judged
-    whole = all(len(n) == k for n, k in zip(nodes, judged.steps.counts, strict=True))
+    every = [np.arange(k) for k in judged.steps.counts]
+    whole = window.regular and all(map(np.array_equal, nodes, every))
     if not (window.regular and nodes):
         nodes = _sparse_nodes(judged.steps, at)
         seen = Judged(judged.steps, lambda frame: scouted(view, frame))
         seen(grid_of(nodes))
         seen.known[tuple(at.tolist())] = 1.0
-    return settled_spans(judged, seen, required, nodes, at, whole and window.regular)
+    elif not whole and len(nodes) == _EXACT:
+        filled = filled_in(judged, required, nodes)
+        if filled is not None:
+            held = exact_span(judged, filled, required, every, at)
+            return Spans(held, _larger(judged, judged, required, nodes, at, False, held))
+    return settled_spans(judged, seen, required, nodes, at, whole)
+
+
+def exact_span(
+    judged: Judged, filled: Judged, required: float, every: list[Index], at: Index
+) -> Span | None:
+    """The largest span that holds the set point among all bench steps, and is settled."""
+    span = largest_span(filled, required, every, at)
+    return None if span is None else settled(judged, required, span, every, at)
+
+
+def filled_in(judged: Judged, required: float, nodes: list[Index]) -> Judged | None:
+    """All bench steps of two factors, from nodes that are known: those of every cell whose corners
+    lie on both sides of the required probability, or near it, are judged, others are taken to lie
+    on the side of their corners. None where these would be many.
+    """
+    if min(len(n) for n in nodes) < 2:
+        return None
+    p = judged(grid_of(nodes)).reshape([len(n) for n in nodes])
+    corners = np.stack([p[i : len(p) - 1 + i, j : p.shape[1] - 1 + j] for i in _TWO for j in _TWO])
+    near = (corners.min(axis=0) < required + _BAND) & (corners.max(axis=0) > required - _BAND)
+    every = grid_of([np.arange(k) for k in judged.steps.counts])
+    places = zip(nodes, every.T, strict=True)
+    cell = tuple(np.searchsorted(n[1:-1], column, side="right") for n, column in places)
+    asked = near[cell]
+    if asked.sum() > _MOST_FILLED:
+        return None
+    allowed = np.asarray(judged.steps.definition.allowed(judged.steps.frame(every)), dtype=float)
+    inside = (corners.min(axis=0) >= required)[cell] * allowed
+    inside[asked] = judged(every[asked])
+    filled = dict(zip(map(tuple, every.tolist()), inside.tolist(), strict=True))
+    return Judged(judged.steps, judged.ask, filled | judged.known)
 
 
 def settled_spans(
@@ -60,16 +100,30 @@ def settled_spans(
     bench steps, so that nothing lies between them.
     """
     held = largest_span(seen, required, nodes, at)
+    if held is not None and not whole:
+        held = settled(judged, required, held, nodes, at)
+    return Spans(held, _larger(judged, seen, required, nodes, at, whole, held))
+
+
+def _larger(
+    judged: Judged,
+    seen: Judged,
+    required: float,
+    nodes: list[Index],
+    at: Index,
+    whole: bool,
+    held: Span | None,
+) -> Span | None:
+    """The largest span of all, where it leaves the set point out and is larger than that held."""
     larger = largest_span(seen, required, nodes)
-    if not whole:
-        if held is not None:
-            held = settled(judged, required, held, nodes, at)
-        if larger is not None and not larger.holds(at):
-            larger = settled(judged, required, larger, nodes, None)
     if larger is None or larger.holds(at):
-        return Spans(held, None)
+        return None
+    if not whole:
+        larger = settled(judged, required, larger, nodes, None)
     least = 0.0 if held is None else _LARGER * share_of(judged.steps, held)
-    return Spans(held, larger if share_of(judged.steps, larger) > least else None)
+    if larger is None or larger.holds(at) or share_of(judged.steps, larger) <= least:
+        return None
+    return larger
 
 
 def scouted(view: Assessment, frame: pd.DataFrame) -> Array:
