@@ -299,6 +299,16 @@ def test_in_a_browser_the_map_tells_what_is_pointed_at(page: Page, tmp_path: Pat
     for told, ph in ((found["pointed"], 6.0), (found["stepped"], 6.5)):
         p = grid[ph, 250.0]
         assert told == f"pH {ph}, Salt 250 mM: {share_text(round(p, 3))} of new wells pass"
+    ((frame,),) = [figure.frames for figure in page.figures if figure.name == "map"]
+    low, high = frame.y_ends
+    assert found["marked"] == pytest.approx(
+        [
+            frame.left
+            + frame.width * (6.0 - frame.x_ends[0]) / (frame.x_ends[1] - frame.x_ends[0]),
+            frame.top + frame.height * (high - 250.0) / (high - low),
+        ],
+        abs=0.002,
+    )
     assert found["unpointed"] == "Point at the map, or move over it with the arrow keys."
 
 

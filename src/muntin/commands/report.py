@@ -56,7 +56,7 @@ def report(
     tell("reading the study")
     study = open_study(folder)
     inputs = read_inputs(study.folder)
-    check_place(place, study.folder)
+    check_place(place)
     bar = tell.fitting(engine)
     view = assess(study, surrogate.value, engine.value, seed, progress=bar)
     tell("planning the next plate")
@@ -69,6 +69,6 @@ def report(
         "seed": seed,
     }
     page = build_page(view, plan, unplanned=unplanned, settings=settings, inputs=inputs, tell=tell)
-    written = write_page(place, page, study.folder)
+    written = write_page(place, page)
     facts = {**page.facts, "files": [str(path) for path in written]}
     return Output(facts, page_screen(page, written))

@@ -11,7 +11,7 @@ from typing import Any
 from muntin.record.edits import sha256
 from muntin.record.faults import Fault, StudyFaults
 from muntin.record.files import write_together
-from muntin.report.advice_files import input_paths, json_text
+from muntin.report.advice_files import json_text
 from muntin.report.page.build import Page
 
 REPORT = "report"
@@ -49,13 +49,12 @@ def page_files(place: PagePlace, page: Page) -> dict[Path, str | bytes]:
     return {place.page: page.html, **figures}
 
 
-def check_place(place: PagePlace, folder: Path) -> None:
+def check_place(place: PagePlace) -> None:
     """Raise StudyFaults where writing would replace a file that muntin did not write, or that was
-    changed since, or that the study is read from.
+    changed since.
     """
     there = [p for p in (place.page, place.record) if p.exists()]
     there += sorted(place.figures.glob("*.png")) if place.figures.is_dir() else []
-    read = {path.resolve() for path in input_paths(folder)}
     own = _own(place)
     faults = [
         Fault(
@@ -64,19 +63,19 @@ def check_place(place: PagePlace, folder: Path) -> None:
             hint="move it away, or name another place with --out",
         )
         for path in there
-        if path.resolve() in read or not _untouched(path, own)
+        if not _untouched(path, own)
     ]
     if faults:
         raise StudyFaults(faults)
 
 
-def write_page(place: PagePlace, page: Page, folder: Path) -> tuple[Path, ...]:
+def write_page(place: PagePlace, page: Page) -> tuple[Path, ...]:
     """Write page, figures and record, all of them or none, and return the paths.
 
     Figures of an earlier page that are drawn no more are removed. Raises StudyFaults as
     `check_place` does, and where a place cannot be written.
     """
-    check_place(place, folder)
+    check_place(place)
     files, before = page_files(place, page), _own(place)
     # The record goes first: whenever writing is cut off, every file there is one that it knows.
     write_together({place.record: _record(place, page, files, before), **files})
