@@ -300,7 +300,7 @@ def test_in_a_browser_the_map_tells_what_is_pointed_at(page: Page, tmp_path: Pat
         p = grid[ph, 250.0]
         assert told == f"pH {ph}, Salt 250 mM: {share_text(round(p, 3))} of new wells pass"
     ((frame,),) = [figure.frames for figure in page.figures if figure.name == "map"]
-    low, high = frame.y_ends
+    (left, right), (low, high) = frame.x_ends, frame.y_ends
     assert found["marked"] == pytest.approx(
         [
             frame.left
