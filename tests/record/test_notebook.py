@@ -102,6 +102,18 @@ def test_plan_shows_its_first_wells_and_the_forecast(view: Assessment) -> None:
     assert f"{plan.forecast['wrong_share'].iloc[0]:.4g}" in said
 
 
+def test_in_a_console_each_is_a_line(view: Assessment) -> None:
+    folder = str(view.study.folder)
+    assert repr(view.study) == f"Study('Small invented study', 1 plate, 12 wells, {folder!r})"
+    said = "Assessment('Small invented study', quadratic, engine fast, seed 1: recovery)"
+    assert repr(view) == said
+    window = view.window()
+    point = f"ph {window.setpoint['ph']:g}, salt {window.setpoint['salt']:g}"
+    best = "set point" if window.share else "best so far"
+    assert repr(window) == f"Window({100 * window.share:.1f} % of the range; {best}: {point})"
+    assert repr(propose(view, wells=5)).startswith("Plan('plate-02', ")
+
+
 EVIL = '<script>alert("x")</script> & <b>'
 
 

@@ -69,6 +69,13 @@ def study_card(study: Study) -> str:
     )
 
 
+def study_line(study: Study) -> str:
+    """Return a study as it shows itself in a console, in a line."""
+    counts = study.counts()
+    held = f"{counted(counts.plates, 'plate')}, {counted(counts.wells, 'well')}"
+    return f"Study({study.definition.title!r}, {held}, {str(study.folder)!r})"
+
+
 def _factor(factor: Factor) -> str:
     if factor.choices is not None:
         return f"{factor.label}: {', '.join(factor.choices)}"

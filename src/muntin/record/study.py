@@ -12,7 +12,7 @@ from muntin.record.copies import copy_faults
 from muntin.record.definition import STUDY_FILE, Definition, definition_faults, sound_part
 from muntin.record.faults import Fault, Findings, StudyFaults
 from muntin.record.filled_plans import filled_plans
-from muntin.record.notebook import study_card
+from muntin.record.notebook import study_card, study_line
 from muntin.record.notes import Plate, read_notes
 from muntin.record.notices import column_notice, definition_notices, odd_notices, well_notices
 from muntin.record.plates import PlateRows, open_plate, outside_limits, read_plate
@@ -73,6 +73,9 @@ class Study:
     plates: tuple[Plate, ...]
     notices: tuple[str, ...]
     stops: tuple[RecordedStop, ...] = ()
+
+    def __repr__(self) -> str:
+        return study_line(self)
 
     def _repr_html_(self) -> str:
         return study_card(self)

@@ -26,7 +26,7 @@ from muntin.window.handover import HandOver, hand_over
 from muntin.window.influence import DRAWS, chosen_response, influence_of
 from muntin.window.joint import joint_meets
 from muntin.window.limiting import limiting, sides_of
-from muntin.window.notebook import assessment_card
+from muntin.window.notebook import assessment_card, assessment_line
 from muntin.window.predicted import Predicted
 from muntin.window.probability import Target, process_mean, process_quantile
 from muntin.window.residuals import Together, correlation_matrix, residual_correlations
@@ -58,6 +58,9 @@ class Assessment:
     surfaces: Mapping[str, Surface]
     engine: Engine = "fast"
     together: tuple[Together, ...] = ()
+
+    def __repr__(self) -> str:
+        return assessment_line(self)
 
     def _repr_html_(self) -> str:
         return assessment_card(self)

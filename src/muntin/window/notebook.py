@@ -67,6 +67,26 @@ def window_card(window: Window) -> str:
     return card(_TITLE, rows, table)
 
 
+def assessment_line(view: Assessment) -> str:
+    """Return an assessment as it shows itself in a console, in a line."""
+    read = ", ".join(view.stacks) or "nothing read"
+    title = view.study.definition.title
+    return (
+        f"Assessment({title!r}, {view.surrogate}, engine {view.engine}, seed {view.seed}: {read})"
+    )
+
+
+def window_line(window: Window) -> str:
+    """Return a window as it shows itself in a console, in a line."""
+    point = ", ".join(
+        f"{name} {_shown(value)}"
+        for name, value in window.setpoint.items()
+        if name != "probability"
+    )
+    best = "set point" if window.share else "best so far"
+    return f"Window({_standing(window)}; {best}: {point})"
+
+
 def _standing(window: Window) -> str:
     if window.unsupported:
         return "not supported by the data"

@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 from muntin.record.definition import Definition
 from muntin.window.boxes import largest_span, ranges_of
 from muntin.window.limiting import Side
-from muntin.window.notebook import window_card
+from muntin.window.notebook import window_card, window_line
 from muntin.window.steps import Judged, Steps, condition_of
 
 Array = NDArray[np.float64]
@@ -39,6 +39,9 @@ class Window:
     ranges: dict[str, tuple[object, object]] | None
     unsupported: tuple[str, ...]
     sides: tuple[Side, ...] = ()
+
+    def __repr__(self) -> str:
+        return window_line(self)
 
     def _repr_html_(self) -> str:
         return window_card(self)
