@@ -89,10 +89,10 @@ def probed(page: str, folder: Path, width: int) -> tuple[dict[str, Any], list[st
     """What a page does in a window so wide, and the lines of the console.
 
     errors: of scripts. sideways: pixels by which the page is wider than the window. cut: texts
-    wider than their place. marked: where the mark of the place pointed at lies, in shares of
-    the map from its upper left corner. covered: parts that begin before the one above has ended. unpointed,
+    wider than their place. covered: parts that begin before the one above has ended. unpointed,
     pointed, stepped: what stands below the map before it is pointed at, with its middle pointed at,
-    and a key further to the right.
+    and a key further to the right. marked: where the mark of the place pointed at lies, in shares
+    of the map from its upper left corner.
     """
     whole = page.replace("<head>", f"<head>{_BEFORE}", 1).replace("</body>", f"{_AFTER}</body>")
     shown, console = _run(folder, whole, f"--window-size={width},2000", "--dump-dom")

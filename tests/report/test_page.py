@@ -303,8 +303,7 @@ def test_in_a_browser_the_map_tells_what_is_pointed_at(page: Page, tmp_path: Pat
     (left, right), (low, high) = frame.x_ends, frame.y_ends
     assert found["marked"] == pytest.approx(
         [
-            frame.left
-            + frame.width * (6.0 - frame.x_ends[0]) / (frame.x_ends[1] - frame.x_ends[0]),
+            frame.left + frame.width * (6.0 - left) / (right - left),
             frame.top + frame.height * (high - 250.0) / (high - low),
         ],
         abs=0.002,
