@@ -14,7 +14,7 @@ from muntin.record import open_study
 from muntin.report.advice_files import json_text, read_inputs
 from muntin.report.page.answer import answer, standing_word
 from muntin.report.page.build import Page
-from muntin.report.page.phrases import chance, fixed_name, measure
+from muntin.report.page.phrases import fixed_name, measure
 from muntin.report.text import window_lines
 from muntin.report.words import share_text
 from muntin.window.assessment import assess
@@ -253,14 +253,6 @@ def test_the_facts_are_plain_json(page: Page) -> None:
 
 
 def test_numbers_in_words() -> None:
-    assert [chance(p) for p in (0.0, 0.004, 0.5, 0.994, 0.996, 1.0)] == [
-        "< 0.01",
-        "< 0.01",
-        "0.50",
-        "0.99",
-        "> 0.99",
-        "> 0.99",
-    ]
     assert [measure(v) for v in (0.95, 0.9168, 12.0, 123.4, 1234.5)] == [
         "0.950",
         "0.917",

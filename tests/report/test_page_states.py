@@ -14,9 +14,9 @@ from muntin.bench.plan import Plan
 from muntin.record.definition import Definition
 from muntin.report.drawn import Drawn, Frame, drawn
 from muntin.report.page.build import Page
-from muntin.report.page.phrases import chance
 from muntin.report.page.pointing import pointed_at
 from muntin.report.window_map import map_figure
+from muntin.report.words import odds_text
 from muntin.window.assessment import Assessment
 from muntin.window.window import Window
 from tests.report.pages import PLAIN, page_of
@@ -84,14 +84,14 @@ def test_several_responses_are_told_alone_and_jointly(tmp_path: Path) -> None:
     page, read = _said(tmp_path / "s", tables)
     first = table_of(read, "Probabilities at single conditions, by response and jointly")[0]
     known = page.basis.view.at(page.basis.window.setpoint.to_frame().T.astype(float))  # type: ignore[union-attr]
-    assert first["Recovery: new well passes"] == chance(known["recovery_p_well"].iloc[0])
-    assert first["HCP: new well passes"] == chance(known["hcp_p_well"].iloc[0])
-    assert first["all: new well passes"] == chance(known["p_well"].iloc[0])
+    assert first["Recovery: new well passes"] == odds_text(known["recovery_p_well"].iloc[0], 0.9)
+    assert first["HCP: new well passes"] == odds_text(known["hcp_p_well"].iloc[0], 0.9)
+    assert first["all: new well passes"] == odds_text(known["p_well"].iloc[0], 0.9)
     sides = table_of(read, "What gives way first")
     assert {row["gives way"] for row in sides} <= {
-        "Recovery, too low",
-        "HCP, too high",
-        "the tested range ends",
+        "Recovery too low",
+        "HCP too high",
+        "passes as far as it was tested",
     }
 
 

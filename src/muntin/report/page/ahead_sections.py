@@ -12,7 +12,7 @@ from muntin.design.stopping import asked_of_set_point
 from muntin.record.study import Study
 from muntin.report.page.basis import Basis
 from muntin.report.page.blocks import Section, Table
-from muntin.report.page.phrases import chance, heading, settings
+from muntin.report.page.phrases import heading, settings
 from muntin.report.plan_text import (
     bridging_line,
     not_forecast_line,
@@ -21,7 +21,7 @@ from muntin.report.plan_text import (
     why_text,
 )
 from muntin.report.ruling_text import ruling_line
-from muntin.report.words import amount_text, likely_text, per_cent, share_text
+from muntin.report.words import amount_text, likely_text, odds_text, per_cent, share_text
 
 if TYPE_CHECKING:
     from muntin.bench.plan import Plan
@@ -95,7 +95,7 @@ def _wells(basis: Basis, plan: Plan) -> Table:
         first = here.iloc[0]
         reasons = why_text(here, definition.factors)
         wells = ", ".join(here["well"])
-        p_now = [] if fresh else [chance(float(first["p_now"]))]
+        p_now = [] if fresh else [odds_text(float(first["p_now"]), definition.required_probability)]
         rows.append((wells, first["role"], *settings(definition, first.to_dict()), *p_now, reasons))
     head = (
         "wells",

@@ -11,8 +11,15 @@ from muntin.record.factors import Factor
 from muntin.report.handover_text import at_once_text
 from muntin.report.page.basis import Basis
 from muntin.report.page.blocks import Section, Table
-from muntin.report.page.phrases import chance, heading, measure, settings
-from muntin.report.words import chance_text, condition_text, likely_text, ranges_text, share_text
+from muntin.report.page.phrases import heading, measure, settings
+from muntin.report.words import (
+    chance_text,
+    condition_text,
+    likely_text,
+    odds_text,
+    ranges_text,
+    share_text,
+)
 from muntin.window.handover import Box, HandOver
 
 _ENDS = {"low": "down", "high": "up"}
@@ -73,7 +80,7 @@ def _box(definition: Definition, name: str, box: Box) -> tuple[str, ...]:
         name,
         ranges_text(definition, box.ranges),
         share_text(box.share),
-        chance(box.least),
+        odds_text(box.least, definition.required_probability),
         condition_text(definition, box.least_at),
         likely_text(box.assurance),
     )
@@ -86,23 +93,26 @@ def _margins(definition: Definition, handed: HandOver) -> list[Table]:
         factor = factors[margin.factor]
         direction = f"{factor.label}, {_ENDS[margin.end]}"
         if margin.edge is None or margin.distance is None:
-            what = "a limit of the study" if margin.limited else "the tested range"
             end = _with_unit(factor, margin.end_of_range)
-            rows.append((direction, "none reached", "", f"{what} ends at {end}"))
+            rows.append((direction, "none reached", "", f"the tested range ends at {end}"))
             continue
         edge = f"{_level(factor, margin.edge)} {factor.unit}".rstrip()
         away = f"{_level(factor, margin.distance)} {factor.unit}".rstrip()
-        rows.append((direction, edge, away, ""))
+        rows.append((direction, edge, away, "a limit of the study" if margin.limited else ""))
     if not rows:
         return []
-    head = ("from the set point", "edge at", "away by", "or")
+    head = ("from the set point", "edge at", "away by", "what ends it")
     caption = "How far the edge is, one factor moved at a time"
     return [Table(caption=caption, head=head, rows=tuple(rows), numbers=(1, 2))]
 
 
 def _corners(definition: Definition, handed: HandOver) -> list[Table]:
     rows = tuple(
-        (*settings(definition, corner.condition), chance(corner.p_mean), chance(corner.p_well))
+        (
+            *settings(definition, corner.condition),
+            odds_text(corner.p_mean, handed.required),
+            odds_text(corner.p_well, handed.required),
+        )
         for corner in handed.corners
     )
     if not rows:

@@ -37,13 +37,6 @@ def settings(definition: Definition, row: Mapping[Any, Any]) -> tuple[str, ...]:
     return tuple(f.shown(row[f.name]) for f in definition.factors)
 
 
-def chance(value: float) -> str:
-    """Return a probability with two decimals, never one that sounds certain."""
-    if value < 0.005:
-        return "< 0.01"
-    return "> 0.99" if value >= 0.995 else f"{value:.2f}"
-
-
 def measure(value: float) -> str:
     """Return a reading or a mean with three significant digits, "0.950" and "0.917" alike."""
     return f"{value:#.3g}".removesuffix(".") if abs(value) < 1000 else f"{value:.0f}"

@@ -12,9 +12,10 @@ from muntin.record.factors import Factor
 from muntin.record.faults import number
 from muntin.report.page.basis import Basis
 from muntin.report.page.blocks import Section, Table
-from muntin.report.page.phrases import chance, fixed_name, heading, measure, settings, target_text
+from muntin.report.page.phrases import fixed_name, heading, measure, settings, target_text
+from muntin.report.sides_figure import side_text
 from muntin.report.text import window_lines
-from muntin.report.words import JUDGED_BY, chance_text
+from muntin.report.words import JUDGED_BY, chance_text, odds_text
 
 if TYPE_CHECKING:
     from muntin.window.limiting import Side
@@ -25,7 +26,6 @@ _CHANCES = {
     "p_well": "new well passes",
     "p_kept": "new well passes, kept within ±",
 }
-_FAILS = {"low": "too low", "high": "too high"}
 _ENDS = {"low": "lowest", "high": "highest"}
 
 
@@ -108,6 +108,7 @@ def _conditions(basis: Basis) -> Iterator[tuple[str, dict[Any, Any]]]:
 def _known(basis: Basis) -> list[Table]:
     """Joint passes and those of each response alone at single conditions, and the means there."""
     definition, view = basis.definition, basis.view
+    required = definition.required_probability
     found = [*_conditions(basis)]
     known = view.at(pd.DataFrame([condition for _, condition in found]))
     rows = known.to_dict("records")
@@ -118,7 +119,7 @@ def _known(basis: Basis) -> list[Table]:
     passes = {f"{r.name}_p_well": f"{r.label}: new well passes" for r in several}
     every = "all: " if several else ""
     passes |= {name: f"{every}{says}" for name, says in _CHANCES.items() if name in known}
-    chances = [tuple(chance(row[name]) for name in passes) for row in rows]
+    chances = [tuple(odds_text(row[name], required) for name in passes) for row in rows]
     means = [tuple(_interval(row, r.name) for r in read) for row in rows]
     jointly = ", by response and jointly" if several else ""
     named = (
@@ -144,17 +145,16 @@ def _interval(row: Mapping[Any, Any], name: str) -> str:
 def _sides(basis: Basis, sides: tuple[Side, ...]) -> Table:
     definition = basis.definition
     factors = {f.name: f for f in definition.factors}
-    labels = {r.name: r.label for r in definition.responses}
     rows = []
     for side in sides:
         factor = factors[side.factor]
-        at = f"{factor.shown(side.at)} {factor.unit}".rstrip()
+        at, told = f"{factor.shown(side.at)} {factor.unit}".rstrip(), side_text(basis.view, side)
         if side.response is None or side.probability is None or side.beyond is None:
-            rows.append((factor.label, _ENDS[side.end], at, "the tested range ends", "", ""))
+            rows.append((factor.label, _ENDS[side.end], at, " ".join(told), "", ""))
             continue
         beyond = f"{factor.shown(side.beyond)} {factor.unit}".rstrip()
-        fails = f"{labels[side.response]}, {_FAILS[str(side.fails)]}"
-        rows.append((factor.label, _ENDS[side.end], at, fails, beyond, chance(side.probability)))
+        p = odds_text(side.probability, definition.required_probability)
+        rows.append((factor.label, _ENDS[side.end], at, told[0], beyond, p))
     return Table(
         caption="What gives way first beyond each side of the ranges",
         head=("factor", "end", "ranges reach to", "gives way", "at", "probability there, alone"),
