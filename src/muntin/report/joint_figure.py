@@ -2,8 +2,10 @@
 
 from __future__ import annotations
 
-from typing import TYPE_CHECKING
+from collections.abc import Hashable, Mapping
+from typing import TYPE_CHECKING, Any
 
+import numpy as np
 import pandas as pd
 
 from muntin.report.canvas import finish, one_panel
@@ -56,48 +58,43 @@ def joint(
     table = joint_passes(view, condition)
     definition = view.study.definition
     where = condition_text(definition, _there(view, condition).iloc[0].to_dict())
-    axes, new = one_panel(
-        axes, "Chance to pass, by response", f"{_place(view, condition)}: {where}"
-    )
+    told = f"{_place(view, condition)}: {where}"
+    axes, new = one_panel(axes, "Chance to pass, by response", told)
     required = definition.required_probability
-    for row, one in table.iterrows():
-        at = -float(row)  # type: ignore[arg-type]
-        axes.axhline(at, color="#dfe4e6", linewidth=1, zorder=0)
-        for kind, label, marker, fill, above in _LOOKS:
-            if kind in table and pd.notna(one[kind]):
-                axes.plot(
-                    [one[kind]],
-                    [at + above],
-                    linestyle="none",
-                    marker=marker,
-                    markersize=9,
-                    markerfacecolor=fill,
-                    markeredgecolor=LINE if marker == "o" else INK,
-                    markeredgewidth=1.5,
-                    label=label if _first(table, kind) == row else None,
-                    clip_on=False,
-                    zorder=3,
-                )
-        p = _judged(definition.judged_by, one)
-        axes.text(
-            1.035,
-            at,
-            odds_text(p, definition.required_probability),
-            va="center",
-            fontsize=9.5,
-            color=INK,
-        )
-    required = definition.required_probability
+    for row, one in enumerate(table.to_dict("records")):
+        axes.axhline(-row, color="#dfe4e6", linewidth=1, zorder=0)
+        _points(axes, table, row)
+        text = odds_text(_judged(definition.judged_by, one), required)
+        axes.text(1.035, -row, text, va="center", fontsize=9.5, color=INK)
     axes.axvline(required, color=INK, linewidth=1, linestyle=(0, (4, 3)), zorder=1)
-    axes.text(
-        required, 0.62, f"required {chance_text(required)}", ha="center", fontsize=8.5, color=INK
-    )
+    name = f"required {chance_text(required)}"
+    axes.text(required, 0.62, name, ha="center", fontsize=8.5, color=INK)
     axes.set(xlim=(-0.02, 1.0), ylim=(-len(table) + 0.4, 0.6), xlabel="Probability")
-    axes.set_yticks([-float(i) for i in range(len(table))], [*table["what"]])
+    axes.set_yticks(-np.arange(len(table)), [*table["what"]])
     dress(axes)
     axes.spines["left"].set_visible(False)
     axes.tick_params(axis="y", length=0, labelcolor=INK, colors=QUIET)
     return finish(axes, new)
+
+
+def _points(axes: Axes, table: pd.DataFrame, row: int) -> None:
+    """Mark the chances of one row of the table, each kind once in the legend."""
+    for kind, label, marker, fill, above in _LOOKS:
+        known = np.flatnonzero(table[kind].notna()) if kind in table else np.zeros(0)
+        if row in known:
+            axes.plot(
+                [float(table[kind].iloc[row])],
+                [above - row],
+                linestyle="none",
+                marker=marker,
+                markersize=9,
+                markerfacecolor=fill,
+                markeredgecolor=LINE if marker == "o" else INK,
+                markeredgewidth=1.5,
+                label=label if row == known[0] else None,
+                clip_on=False,
+                zorder=3,
+            )
 
 
 def _there(view: Assessment, condition: pd.DataFrame | None) -> pd.DataFrame:
@@ -114,11 +111,7 @@ def _place(view: Assessment, condition: pd.DataFrame | None) -> str:
     return word[:1].upper() + word[1:]
 
 
-def _first(table: pd.DataFrame, kind: str) -> object:
-    return table[kind].first_valid_index()
-
-
-def _judged(by: str, row: pd.Series) -> float:
+def _judged(by: str, row: Mapping[Hashable, Any]) -> float:
     """Return the chance that is judged; of one response, which has no p_kept, that of a well."""
     if by == "kept" and "p_kept" in row and pd.notna(row["p_kept"]):
         return float(row["p_kept"])

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from typing import TYPE_CHECKING, Literal
+from typing import TYPE_CHECKING, Any, Literal
 
 import numpy as np
 import pandas as pd
@@ -27,7 +27,16 @@ _SAYS = {
     "others": "Predicted from all other readings",
     "plates before": "Predicted from the plates before",
 }
-_MARKERS = "osD^vP"
+_MARKERS = "osDP*X"
+_RING: dict[str, Any] = {
+    "linestyle": "none",
+    "marker": "o",
+    "markersize": 11,
+    "markerfacecolor": "none",
+    "markeredgecolor": ACCENT,
+    "markeredgewidth": 1.6,
+    "zorder": 4,
+}
 
 
 def predicted(
@@ -106,43 +115,36 @@ def _draw(
     plates = plates or [*dict.fromkeys(table["plate"])]
     for number, plate in enumerate(plates):
         here = table[table["plate"] == plate]
-        if here.empty:
-            continue
-        colour = SERIES[number % len(SERIES)][0]
-        axes.hlines(here["observed"], here["low"], here["high"], color=colour, alpha=0.4, zorder=2)
-        marker = _MARKERS[number % len(_MARKERS)]
-        for side, fill in ((0, colour), (-1, PAPER), (1, PAPER)):
-            one = here[here["censored"] == side]
-            label = plate if side == 0 else "only a limit was read"
-            if len(one):
-                axes.plot(
-                    one["predicted"],
-                    one["observed"],
-                    linestyle="none",
-                    marker=marker if side == 0 else "v" if side < 0 else "^",
-                    markersize=5.5,
-                    markerfacecolor=fill,
-                    markeredgecolor=PAPER if side == 0 else INK,
-                    markeredgewidth=0.6,
-                    label=label,
-                    zorder=3,
-                )
+        if len(here):
+            _plate(axes, here, plate, number)
     out = table[_outside(table) & (table["censored"] == 0)]
     if len(out):
-        axes.plot(
-            out["predicted"],
-            out["observed"],
-            "o",
-            markersize=11,
-            markerfacecolor="none",
-            markeredgecolor=ACCENT,
-            markeredgewidth=1.6,
-            label="outside its 95 %",
-            zorder=4,
-        )
+        axes.plot(out["predicted"], out["observed"], label="outside its 95 %", **_RING)
     unit = axis_label("", response.unit).strip()
     axes.set(xlabel=f"{_SAYS[by]} {unit}".strip(), ylabel=f"{response.label}, read {unit}".strip())
     dress(axes)
+
+
+def _plate(axes: Axes, here: pd.DataFrame, plate: str, number: int) -> None:
+    """Mark the readings of one plate with their intervals; triangles where a limit was read."""
+    colour = SERIES[number % len(SERIES)][0]
+    axes.hlines(here["observed"], here["low"], here["high"], color=colour, alpha=0.4, zorder=2)
+    own = _MARKERS[number % len(_MARKERS)]
+    for side, marker in ((0, own), (-1, "v"), (1, "^")):
+        one = here[here["censored"] == side]
+        if len(one):
+            axes.plot(
+                one["predicted"],
+                one["observed"],
+                linestyle="none",
+                marker=marker,
+                markersize=5.5,
+                markerfacecolor=colour if side == 0 else PAPER,
+                markeredgecolor=PAPER if side == 0 else INK,
+                markeredgewidth=0.6,
+                label=plate if side == 0 else "only a limit was read",
+                zorder=3,
+            )
 
 
 def _diagonal(axes: Axes, response: Response, table: pd.DataFrame) -> None:

@@ -2,8 +2,10 @@
 
 from __future__ import annotations
 
-from typing import TYPE_CHECKING
+from collections.abc import Hashable, Mapping
+from typing import TYPE_CHECKING, Any
 
+import numpy as np
 import pandas as pd
 
 from muntin.bench.protein import wells_mg
@@ -17,6 +19,7 @@ if TYPE_CHECKING:
 
     from muntin.bench.plan import Plan
 
+_NAMES = {"plate": "used", "planned": "next plate, planned", "reserved": "reserved"}
 _LOOKS = {"available": "#c9d3d8", "plate": LINE, "planned": ACCENT, "reserved": BARRED}
 
 
@@ -56,36 +59,39 @@ def protein(study: Study, plan: Plan | None = None, axes: Axes | None = None) ->
     left = float(table["mg"].iloc[-1])
     told = f"{amount_text(left)} left" if left >= 0 else f"{amount_text(-left)} too little"
     axes, new = one_panel(axes, "Protein", told)
-    seen: set[str] = set()
-    names = {"plate": "used", "planned": "next plate, planned", "reserved": "reserved"}
+    first = table.groupby("kind")["mg"].head(1).index
     for row, one in enumerate(table.to_dict("records")):
-        kind, at = str(one["kind"]), -float(row)
-        whole = kind in ("available", "left")
-        start = min(0.0, one["after"]) if whole else one["after"]
-        axes.barh(
-            at,
-            abs(one["mg"]),
-            left=start,
-            height=0.62,
-            color=_LOOKS.get(kind, _LOOKS["available"]),
-            hatch="////" if kind == "planned" else None,
-            edgecolor="white",
-            linewidth=0,
-            label=names.get(kind) if kind not in seen else None,
-            zorder=2,
-        )
-        seen.add(kind)
-        sign = "" if whole else "\N{MINUS SIGN}"
-        text = f"  {sign}{amount_text(abs(one['mg']))}"
-        axes.text(start + abs(one["mg"]), at, text, va="center", fontsize=9, color=INK)
+        _bar(axes, one, row, named=row in first)
     axes.axvline(0.0, color=QUIET, linewidth=1)
-    axes.set_yticks([-float(i) for i in range(len(table))], [*table["entry"]])
+    axes.set_yticks(-np.arange(len(table)), [*table["entry"]])
     axes.set(xlabel="Protein (mg)", ylim=(-len(table) + 0.4, 0.6))
     axes.margins(x=0.14)
     axes.set_xlim(left=min(0.0, 1.1 * float(table["after"].min())))
     dress(axes)
     axes.tick_params(axis="y", length=0)
     return finish(axes, new)
+
+
+def _bar(axes: Axes, entry: Mapping[Hashable, Any], row: int, named: bool) -> None:
+    """Draw one entry: from nothing where it is an amount there is, else down to what is left."""
+    kind, mg = str(entry["kind"]), float(entry["mg"])
+    whole = kind in ("available", "left")
+    start = min(0.0, entry["after"]) if whole else entry["after"]
+    axes.barh(
+        -row,
+        abs(mg),
+        left=start,
+        height=0.62,
+        color=_LOOKS.get(kind, _LOOKS["available"]),
+        hatch="////" if kind == "planned" else None,
+        edgecolor="white",
+        linewidth=0,
+        label=_NAMES.get(kind) if named else None,
+        zorder=2,
+    )
+    sign = "" if whole and mg >= 0 else "\N{MINUS SIGN}"
+    text = f"  {sign}{amount_text(abs(mg))}"
+    axes.text(start + abs(mg), -row, text, va="center", fontsize=9, color=INK)
 
 
 def _mg(study: Study, rows: pd.DataFrame) -> float:
