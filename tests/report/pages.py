@@ -13,6 +13,9 @@ from tests.report.studies import STUDY, plate, write
 HOSTILE = """<script>alert("x")</script> & 'so'"""
 PLAIN = STUDY.replace("kept_within = 0.1\n", "")
 _FIXED = '\n[fixed]\nelution_volume_ul = 200\nresin = "HOSTILE"\n'
+_RECORDED = (
+    '{"date":"2026-05-04","wrong_share":0.02,"best_probability":null,"wells_read":0,"reason":""}\n'
+)
 _STOP = "\n[stop]\nwrong_share = 0.02\n"
 
 
@@ -44,5 +47,6 @@ def hostile_page(folder: Path) -> Page:
     second = "\n".join([plate(12).splitlines()[0], *plate(12).splitlines()[7:]]) + "\n"
     tables = {"plates/plate-01.csv": _with_one_left_out(), "plates/plate-02.csv": second}
     write(folder, {"study.toml": toml, **tables, "plates/plate-01.toml": 'by = "lab <2>"\n'})
+    (folder / "stop-rule.jsonl").write_text(_RECORDED)
     (folder / "plates/plate-02.toml").write_text('repeats = "plate-01"\n')
     return page_of(folder)

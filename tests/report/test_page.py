@@ -146,6 +146,18 @@ def test_the_answer_is_three_sentences_with_the_numbers_of_the_facts(
     assert told[2] == page.facts["plan"]["verdict"]["sentence"]
 
 
+def test_what_was_asked_beforehand_is_told(read: Element) -> None:
+    said = [p.text for p in read.one("section", id="holds-for").every("p")]
+    assert said[0] == (
+        "Asked: Recovery at least 0.8. A condition lies in the window where the probability that a "
+        "new well on a new plate passes reaches 0.90."
+    )
+    assert said[1] == (
+        "The series stops once 2 % of the range or less may be called wrongly (on record since "
+        "2026-05-04, before any reading)."
+    )
+
+
 def test_the_window_is_told_as_on_the_screen(page: Page, read: Element) -> None:
     said = [p.text for p in read.one("section", id="window").every("p")]
     for line in window_lines(page.basis.view, page.basis.window, 99, page.basis.handed):

@@ -9,13 +9,13 @@ from typing import TYPE_CHECKING, Any
 import pandas as pd
 
 from muntin.record.factors import Factor
-from muntin.record.faults import number
+from muntin.record.faults import counted, number
 from muntin.report.page.basis import Basis
 from muntin.report.page.blocks import Section, Table
 from muntin.report.page.phrases import fixed_name, heading, measure, settings, target_text
 from muntin.report.sides_figure import side_text
 from muntin.report.text import window_lines
-from muntin.report.words import JUDGED_BY, chance_text, odds_text
+from muntin.report.words import JUDGED_BY, chance_text, odds_text, per_cent
 
 if TYPE_CHECKING:
     from muntin.window.limiting import Side
@@ -42,6 +42,7 @@ def conditional(basis: Basis) -> Section:
     said = [asked, *([f"Read but not judged: {', '.join(tracked)}."] if tracked else [])]
     said += [f"Only conditions with {limit.allow} may be run." for limit in definition.limits]
     said += [f"Never planned: {f.conditions} ({f.because})." for f in definition.forbidden]
+    said += _stop(basis)
     tables = [_factors(definition.factors)]
     if definition.fixed:
         rows = tuple(
@@ -60,6 +61,24 @@ def conditional(basis: Basis) -> Section:
         tables=tuple(tables),
         notes=notes,
     )
+
+
+def _stop(basis: Basis) -> list[str]:
+    """When the series stops, and since when that is fixed."""
+    rule, stops = basis.study.stopping.rule, basis.study.stops
+    if rule is None:
+        return []
+    parts = []
+    if rule.wrong_share is not None:
+        parts.append(f"{per_cent(rule.wrong_share)} of the range or less may be called wrongly")
+    if rule.best_probability is not None:
+        parts.append(f"the set point reaches {per_cent(rule.best_probability)}")
+    since = ""
+    if stops and stops[-1].rule is not None:
+        read = counted(stops[-1].wells_read, "well")
+        when = f"after {read} had been read" if stops[-1].wells_read else "before any reading"
+        since = f" (on record since {stops[-1].date}, {when})"
+    return [f"The series stops once {' or '.join(parts)}{since}."]
 
 
 def _factors(factors: tuple[Factor, ...]) -> Table:
