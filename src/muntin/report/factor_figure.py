@@ -14,7 +14,7 @@ from muntin.report.markers import figure_legend
 from muntin.report.sections import (
     best_word,
     factor_named,
-    held_text,
+    held_line,
     place,
     response_named,
     section,
@@ -57,7 +57,7 @@ def factor(
     response: one that has been read, the first judged one where None. Raises ValueError for others.
     """
     along, read = factor_named(view, name), response_named(view, response)
-    axes, new = one_panel(axes, f"{read.label} along {along.label}", _held(view, along))
+    axes, new = one_panel(axes, f"{read.label} along {along.label}", held_line(view, along))
     response_panel(axes, view, read, along, section(view, along))
     name_axis(axes, along)
     return finish(axes, new)
@@ -69,7 +69,7 @@ def factor_figure(view: Assessment, along: Factor) -> Figure:
     columns = min(3, len(read))
     rows = -(-len(read) // columns)
     height = SLIDE if rows == 1 else 1.3 + 2.6 * rows
-    says = _held(view, along)
+    says = held_line(view, along)
     title = f"Responses along {along.label}" if len(read) > 1 else f"{read[0].label} along "
     title = title if len(read) > 1 else title + along.label
     figure, panels = blank(title, says, height, rows=rows, columns=columns)
@@ -124,11 +124,6 @@ def set_point_line(axes: Axes, view: Assessment, along: Factor) -> None:
     axes.axvline(
         at, color=INK, linewidth=1.1, linestyle=(0, (1, 2)), zorder=2, label=best_word(view)
     )
-
-
-def _held(view: Assessment, along: Factor) -> str:
-    held = held_text(view, along)
-    return f"Held at the {best_word(view)}: {held}" if held else ""
 
 
 def _targets(axes: Axes, response: Response) -> None:

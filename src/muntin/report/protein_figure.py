@@ -12,7 +12,7 @@ from muntin.bench.protein import wells_mg
 from muntin.record.study import Study
 from muntin.report.canvas import finish, one_panel
 from muntin.report.style import ACCENT, BARRED, INK, LINE, QUIET, dress
-from muntin.report.words import amount_text
+from muntin.report.words import amount_text, joined
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
@@ -58,6 +58,9 @@ def protein(study: Study, plan: Plan | None = None, axes: Axes | None = None) ->
     table = protein_ledger(study, plan)
     left = float(table["mg"].iloc[-1])
     told = f"{amount_text(left)} left" if left >= 0 else f"{amount_text(-left)} too little"
+    taken = {"planned": "the next plate", "reserved": "what is reserved"}
+    after = [word for kind, word in taken.items() if kind in set(table["kind"])]
+    told += f" after {joined(after)}" if after else ""
     axes, new = one_panel(axes, "Protein", told)
     first = table.groupby("kind")["mg"].head(1).index
     for row, one in enumerate(table.to_dict("records")):

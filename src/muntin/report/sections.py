@@ -81,6 +81,13 @@ def best_word(view: Assessment) -> str:
     return "set point" if view.window().share else "best so far"
 
 
+def held_line(view: Assessment, factor: Factor) -> str:
+    """Return "Held at the set point: Salt 250 mM", or "" where nothing else is varied."""
+    best = "set point" if view.window().share else "best condition so far"
+    held = held_text(view, factor)
+    return f"Held at the {best}: {held}" if held else ""
+
+
 def place(factor: Factor, values: Any) -> Any:
     """Return where values of a factor stand on its axis: themselves, or the numbers of choices."""
     if factor.continuous:

@@ -13,7 +13,7 @@ from muntin.record.responses import Response
 from muntin.report.canvas import Panels, blank, given_panels
 from muntin.report.factor_figure import name_axis, response_panel, set_point_line
 from muntin.report.markers import figure_legend, required_line
-from muntin.report.sections import best_word, factor_named, held_text, place, section
+from muntin.report.sections import factor_named, held_line, place, section
 from muntin.report.style import INK, SERIES, dress
 from muntin.window.assessment import Assessment
 
@@ -77,10 +77,9 @@ def tightest(view: Assessment) -> Factor:
 def _new(view: Assessment, along: Factor, count: int) -> Panels:
     columns = count if count <= 3 else -(-count // 2)
     rows = -(-count // columns)
-    held = held_text(view, along)
     figure, panels = blank(
         f"All responses along {along.label}",
-        f"Held at the {best_word(view)}: {held}" if held else "",
+        held_line(view, along),
         4.5 if rows == 1 else 5.2,
         rows=rows,
         columns=columns,
