@@ -1,6 +1,7 @@
 """The hand-over in sentences, by what the study is judged by, and as facts."""
 
 import json
+from dataclasses import replace
 
 import numpy as np
 import pandas as pd
@@ -14,6 +15,7 @@ from muntin.report.handover_text import (
     margins_line,
     ranges_lines,
     setpoint_sentence,
+    spread_text,
 )
 from muntin.window.handover import Box, Corner, HandOver, Margin, Optimism, Repeat
 from tests.studies import PH, SALT, tables
@@ -135,6 +137,15 @@ def test_ranges_that_are_sure_enough_are_said_once():
 def test_without_a_window_only_the_repeat_is_said():
     (line,) = handover_lines(DEFINITION, handed(box=None, assured=None, margins=()))
     assert "Repeat the best so far before believing it" in line
+
+
+def test_spread_of_the_share_says_what_it_rests_on():
+    assert spread_text(handed()) == (
+        "The share of new wells that pass at the set point lies between 85.0 % and 99.0 % (95 %) "
+        "if the model is right; whether it is right where things look best, only a repeat can tell."
+    )
+    by_mean = replace(handed().optimism, low=None, high=None)
+    assert spread_text(handed(optimism=by_mean)) == ""
 
 
 def test_a_factor_without_margins_is_left_out():

@@ -17,6 +17,7 @@ from muntin.report.words import (
     likely_text,
     per_cent,
     ranges_text,
+    share_text,
     success_text,
 )
 from muntin.window.handover import HandOver, Margin, Repeat
@@ -101,11 +102,30 @@ def repeat_line(definition: Definition, handed: HandOver) -> str:
     """Return what repeating the best wells is expected to bring, and the repeat proposed."""
     labels = {r.name: r.label for r in definition.responses}
     told = [_repeat(labels[repeat.response], repeat) for repeat in handed.optimism.best_run]
+    before = f"Best wells so far: {'; '.join(told)}. " if told else ""
+    return before + proposal_text(handed)
+
+
+def proposal_text(handed: HandOver) -> str:
+    """Return the repeat that is proposed, and how many of its wells are expected to pass."""
     what = "the set point" if handed.box is not None else "the best so far"
     wells, passes = handed.optimism.wells, handed.optimism.expected_passes
     asked = f"Repeat {what} before believing it: {counted(wells, 'well')} of a new plate"
-    before = f"Best wells so far: {'; '.join(told)}. " if told else ""
-    return f"{before}{asked}, {passes:.1f} of them expected to pass."
+    return f"{asked}, {passes:.1f} of them expected to pass."
+
+
+def spread_text(handed: HandOver) -> str:
+    """Return between which shares of new wells may pass at the set point, and what that leaves out;
+    nothing where the process mean is judged.
+    """
+    low, high = handed.optimism.low, handed.optimism.high
+    if low is None or high is None:
+        return ""
+    shares = f"between {share_text(low)} and {share_text(high)}"
+    return (
+        f"The share of new wells that pass at the set point lies {shares} (95 %) if the model is "
+        "right; whether it is right where things look best, only a repeat can tell."
+    )
 
 
 def _repeat(label: str, repeat: Repeat) -> str:

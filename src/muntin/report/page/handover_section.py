@@ -8,7 +8,7 @@ import numpy as np
 
 from muntin.record.definition import Definition
 from muntin.record.factors import Factor
-from muntin.report.handover_text import at_once_text
+from muntin.report.handover_text import at_once_text, proposal_text, spread_text
 from muntin.report.page.basis import Basis
 from muntin.report.page.blocks import Section, Table
 from muntin.report.page.phrases import heading, measure, settings
@@ -40,6 +40,7 @@ def handover_section(basis: Basis) -> Section:
     says = (
         "Ranges hold together where every condition in them reaches the required probability. "
         f'"All at once" is a stronger claim: {at_once_text(handed)[5:]}.',
+        " ".join(filter(None, (proposal_text(handed), spread_text(handed)))),
     )
     notes = (
         f"What holds at once was counted over {handed.draws} draws from the model (seed "
