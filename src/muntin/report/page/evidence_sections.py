@@ -155,4 +155,5 @@ def _with_and_without(basis: Basis) -> tuple[str, ...]:
     count = len(back.values)
     what = "1 reading" if count == 1 else f"{count} readings"
     now = () if window is None else (f"As used, without: {standing_text(basis.view, window)}.",)
-    return (*now, f"With {what} put back: {standing_text(basis.view, back.window)}.")
+    by = "" if basis.view.engine == "fast" else ", by the engine fast"
+    return (*now, f"With {what} put back{by}: {standing_text(basis.view, back.window)}.")
