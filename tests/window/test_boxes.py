@@ -9,7 +9,7 @@ from hypothesis import strategies as st
 from muntin.record.definition import Definition
 from muntin.window.boxes import Span, largest_span, probes, settled, share_of
 from muntin.window.largest import largest_box
-from muntin.window.ranges import exact_span, filled_in, settled_spans
+from muntin.window.ranges import Start, filled_in, settled_spans
 from muntin.window.steps import Judged, Steps, grid_of, whole
 from tests.studies import RESIN, tables
 
@@ -105,7 +105,7 @@ def test_many_factors_hold_at_steps_that_were_not_asked(factors):
     judged, at = start(made, centre, p)
     nodes = coarse(judged.steps, 4, at)
     judged(grid_of(nodes))
-    box = settled_spans(judged, judged, REQUIRED, nodes, at, False).held
+    box = settled_spans(judged, REQUIRED, at, Start(judged, nodes)).held
     rng = np.random.default_rng(9)
     some = rng.integers(box.low, box.high + 1, (4000, factors))
     assert (p(judged.steps.frame(some)) >= REQUIRED).all()
@@ -125,7 +125,7 @@ def test_exact_on_every_bench_step_against_brute_force():
         judged, at = start(made, centre, p)
         nodes = [np.arange(11)] * 2
         inside = (judged(grid_of(nodes)) >= REQUIRED).reshape(11, 11)
-        span = settled_spans(judged, judged, REQUIRED, nodes, at, True).held
+        span = settled_spans(judged, REQUIRED, at, Start(judged, nodes, whole=True)).held
         best = 0
         for a in range(at[0] + 1):
             for b in range(at[0], 11):
@@ -144,20 +144,20 @@ def test_exact_between_the_nodes_of_two_factors(seed):
     nodes = coarse(judged.steps, 9, at)
     judged(grid_of(nodes))
     every = [np.arange(k) for k in judged.steps.counts]
-    filled = filled_in(judged, REQUIRED, nodes)
+    filled = filled_in(judged, REQUIRED, nodes, at)
     asked = len(judged.known)
     assert asked < 0.6 * 51 * 51
     inside = (p(judged.steps.frame(grid_of(every))) >= REQUIRED).reshape(51, 51)
     found = np.array([filled.known[tuple(i)] >= REQUIRED for i in grid_of(every).tolist()])
     np.testing.assert_array_equal(found.reshape(51, 51), inside)
-    box = exact_span(judged, filled, REQUIRED, every, at)
+    box = settled_spans(judged, REQUIRED, at, Start(judged, nodes), Start(filled, every)).held
     axes = [judged.steps.axis(axis) for axis in range(2)]
     (a, b), (c, d) = largest_box(inside, axes, at.tolist())
     assert share_of(judged.steps, box) == pytest.approx(
         share_of(judged.steps, Span(np.array([a, c]), np.array([b, d])))
     )
     # From the nodes alone it is smaller, or as large.
-    coarsely = settled_spans(judged, judged, REQUIRED, nodes, at, False).held
+    coarsely = settled_spans(judged, REQUIRED, at, Start(judged, nodes)).held
     assert share_of(judged.steps, coarsely) <= share_of(judged.steps, box) + 1e-12
 
 
@@ -173,11 +173,11 @@ def test_larger_ranges_elsewhere_are_named():
     nodes = [np.arange(11)] * 2
     judged(grid_of(nodes))
     at = np.array([1, 1])
-    found = settled_spans(judged, judged, REQUIRED, nodes, at, True)
+    found = settled_spans(judged, REQUIRED, at, Start(judged, nodes, whole=True))
     assert (found.held.high == 2).all()
     assert found.larger.low.tolist() == [5, 0]
     assert found.larger.high.tolist() == [10, 10]
-    there = settled_spans(judged, judged, REQUIRED, nodes, np.array([8, 8]), True)
+    there = settled_spans(judged, REQUIRED, np.array([8, 8]), Start(judged, nodes, whole=True))
     assert there.larger is None
 
 

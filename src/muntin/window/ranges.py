@@ -25,7 +25,7 @@ Index = NDArray[np.intp]
 _NODES = (0, 61, 31, 14, 8, 5, 4)
 _SCOUTS = 32
 # Factors in which the ranges are exact, how near the edge steps are judged, how many at most.
-_EXACT, _BAND, _MOST_FILLED = 2, 0.02, 4000
+_EXACT, _BAND, _MOST_FILLED, _MOST_BOXES = 2, 0.02, 4000, 1e8
 _TWO = (0, 1)
 # Ranges elsewhere are worth a word where they are larger by this.
 _LARGER = 1.02
@@ -39,6 +39,18 @@ class Spans:
     larger: Span | None
 
 
+@dataclass(frozen=True, eq=False)
+class Start:
+    """Where ranges are looked for: nodes, a list of steps a factor, and what is known at them.
+
+    whole: whether the nodes are all bench steps, each judged, so that nothing lies between them.
+    """
+
+    seen: Judged
+    nodes: list[Index]
+    whole: bool = False
+
+
 def spans_of_window(view: Assessment, window: Window, judged: Judged, at: Index) -> Spans:
     """The spans of a window whose set point has index (F,) among the steps of `judged`, which knows
     the window's grid. Exact where the grid has every bench step, and in two factors.
@@ -46,36 +58,52 @@ def spans_of_window(view: Assessment, window: Window, judged: Judged, at: Index)
     required = view.study.definition.required_probability
     if judged(at[None])[0] < required:
         return Spans(None, None)
-    nodes, seen = judged.nodes(), judged
-    every = [np.arange(k) for k in judged.steps.counts]
-    whole = window.regular and all(map(np.array_equal, nodes, every))
+    nodes = judged.nodes()
     if not (window.regular and nodes):
         nodes = _sparse_nodes(judged.steps, at)
         seen = Judged(judged.steps, lambda frame: scouted(view, frame))
         seen(grid_of(nodes))
         seen.known[tuple(at.tolist())] = 1.0
-    elif not whole and len(nodes) == _EXACT:
-        filled = filled_in(judged, required, nodes)
-        if filled is not None:
-            held = exact_span(judged, filled, required, every, at)
-            return Spans(held, _larger(judged, judged, required, nodes, at, False, held))
-    return settled_spans(judged, seen, required, nodes, at, whole)
+        return settled_spans(judged, required, at, Start(seen, nodes))
+    every = [np.arange(k) for k in judged.steps.counts]
+    if all(map(np.array_equal, nodes, every)):
+        return settled_spans(judged, required, at, Start(judged, nodes, whole=True))
+    filled = filled_in(judged, required, nodes, at) if len(nodes) == _EXACT else None
+    finer = None if filled is None else Start(filled, every)
+    return settled_spans(judged, required, at, Start(judged, nodes), finer)
 
 
-def exact_span(
-    judged: Judged, filled: Judged, required: float, every: list[Index], at: Index
-) -> Span | None:
-    """The largest span that holds the set point among all bench steps, and is settled."""
-    span = largest_span(filled, required, every, at)
-    return None if span is None else settled(judged, required, span, every, at)
+def settled_spans(
+    judged: Judged, required: float, at: Index, start: Start, finer: Start | None = None
+) -> Spans:
+    """The spans from a start, settled by what is judged; that which holds the set point from a
+    finer one where there is one.
+    """
+    held = _settled(judged, required, finer or start, at)
+    larger = largest_span(start.seen, required, start.nodes)
+    if larger is None or larger.holds(at):
+        return Spans(held, None)
+    larger = _settled(judged, required, start, None)
+    least = 0.0 if held is None else _LARGER * share_of(judged.steps, held)
+    if larger is None or larger.holds(at) or share_of(judged.steps, larger) <= least:
+        return Spans(held, None)
+    return Spans(held, larger)
 
 
-def filled_in(judged: Judged, required: float, nodes: list[Index]) -> Judged | None:
+def _settled(judged: Judged, required: float, start: Start, holding: Index | None) -> Span | None:
+    span = largest_span(start.seen, required, start.nodes, holding)
+    if span is None or start.whole:
+        return span
+    return settled(judged, required, span, start.nodes, holding)
+
+
+def filled_in(judged: Judged, required: float, nodes: list[Index], at: Index) -> Judged | None:
     """All bench steps of two factors, from nodes that are known: those of every cell whose corners
     lie on both sides of the required probability, or near it, are judged, others are taken to lie
-    on the side of their corners. None where these would be many.
+    on the side of their corners. None where these, or the boxes about index (F,), would be many.
     """
-    if min(len(n) for n in nodes) < 2:
+    counts = judged.steps.counts.astype(float)
+    if min(len(n) for n in nodes) < 2 or np.prod((at + 1) * (counts - at)) > _MOST_BOXES:
         return None
     p = judged(grid_of(nodes)).reshape([len(n) for n in nodes])
     corners = np.stack([p[i : len(p) - 1 + i, j : p.shape[1] - 1 + j] for i in _TWO for j in _TWO])
@@ -91,39 +119,6 @@ def filled_in(judged: Judged, required: float, nodes: list[Index]) -> Judged | N
     inside[asked] = judged(every[asked])
     filled = dict(zip(map(tuple, every.tolist()), inside.tolist(), strict=True))
     return Judged(judged.steps, judged.ask, filled | judged.known)
-
-
-def settled_spans(
-    judged: Judged, seen: Judged, required: float, nodes: list[Index], at: Index, whole: bool
-) -> Spans:
-    """The spans from nodes that `seen` knows, settled by what is judged; whole: the nodes are all
-    bench steps, so that nothing lies between them.
-    """
-    held = largest_span(seen, required, nodes, at)
-    if held is not None and not whole:
-        held = settled(judged, required, held, nodes, at)
-    return Spans(held, _larger(judged, seen, required, nodes, at, whole, held))
-
-
-def _larger(
-    judged: Judged,
-    seen: Judged,
-    required: float,
-    nodes: list[Index],
-    at: Index,
-    whole: bool,
-    held: Span | None,
-) -> Span | None:
-    """The largest span of all, where it leaves the set point out and is larger than that held."""
-    larger = largest_span(seen, required, nodes)
-    if larger is None or larger.holds(at):
-        return None
-    if not whole:
-        larger = settled(judged, required, larger, nodes, None)
-    least = 0.0 if held is None else _LARGER * share_of(judged.steps, held)
-    if larger is None or larger.holds(at) or share_of(judged.steps, larger) <= least:
-        return None
-    return larger
 
 
 def scouted(view: Assessment, frame: pd.DataFrame) -> Array:
