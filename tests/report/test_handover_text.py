@@ -146,6 +146,9 @@ def test_spread_of_the_share_says_what_it_rests_on():
     )
     by_mean = replace(handed().optimism, low=None, high=None)
     assert spread_text(handed(optimism=by_mean)) == ""
+    sure = replace(handed().optimism, low=0.9997, high=1.0)
+    told = spread_text(handed(optimism=sure))
+    assert "pass at the set point lies above 99.9 % (95 %) if the model is right" in told
 
 
 def test_a_factor_without_margins_is_left_out():

@@ -22,6 +22,7 @@ from muntin.report.words import (
 )
 from muntin.window.handover import HandOver, Margin, Repeat
 
+_ALL = 0.9995
 _WAYS = {"low": "down", "high": "up"}
 
 
@@ -121,7 +122,8 @@ def spread_text(handed: HandOver) -> str:
     low, high = handed.optimism.low, handed.optimism.high
     if low is None or high is None:
         return ""
-    shares = f"between {share_text(low)} and {share_text(high)}"
+    sure = low >= _ALL
+    shares = "above 99.9 %" if sure else f"between {share_text(low)} and {share_text(high)}"
     return (
         f"The share of new wells that pass at the set point lies {shares} (95 %) if the model is "
         "right; whether it is right where things look best, only a repeat can tell."
