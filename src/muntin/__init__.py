@@ -5,6 +5,7 @@ from __future__ import annotations
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
+    from muntin import plots as plots
     from muntin.bench.plan import Plan, propose
     from muntin.record import Study, StudyFaults, new_study, open_study
     from muntin.rehearsal.rehearse import Rehearsal, rehearse
@@ -23,6 +24,7 @@ __all__ = [
     "assess",
     "new_study",
     "open_study",
+    "plots",
     "propose",
     "rehearse",
 ]
@@ -34,7 +36,7 @@ _HOMES = {
     "muntin.window.window": ("Window",),
 }
 # Public modules, such as those of figures.
-_MODULES: tuple[str, ...] = ()
+_MODULES = ("plots",)
 
 
 def __getattr__(name: str) -> Any:

@@ -20,12 +20,13 @@ from muntin.report.advice_files import (
     write_advice,
 )
 from muntin.report.cautions import cautions
-from muntin.report.facts import Facts, plan_facts, standing_facts, study_facts
+from muntin.report.facts import Facts, plan_facts, records, standing_facts, study_facts
 from muntin.report.figures import FORMATS, draw, saved
 from muntin.report.forecast_figure import draw_forecast
 from muntin.report.plan_files import plan_table_text
 from muntin.window.assessment import Assessment, Surrogate, assess
 from muntin.window.engine import Engine
+from muntin.window.new_wells import planned_readings
 from muntin.window.window import Window
 
 
@@ -90,6 +91,7 @@ def advise(
         "study": study_facts(study),
         **standing_facts(view, window),
         "plan": plan_facts(study, plan),
+        "predicted": records(planned_readings(view, plan.wells)),
         "cautions": list(cautions(view)),
         "files": place.facts(),
     }

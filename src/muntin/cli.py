@@ -17,6 +17,7 @@ from muntin.commands.prepare import prepare
 from muntin.commands.propose import propose
 from muntin.commands.reduce import reduce
 from muntin.commands.rehearse import rehearse
+from muntin.commands.report import report
 from muntin.commands.uptake import uptake
 
 COMMANDS = {
@@ -28,8 +29,9 @@ COMMANDS = {
     propose: "what do I run next?",
     prepare: "how do I run it?",
     rehearse: "is another plate worth it?",
-    advise: "all of it between two plates",
     confirm: "do columns agree?",
+    report: "can I hand it over?",
+    advise: "all of it between two plates",
     tell_names: "what does a name mean?",
 }
 

@@ -12,6 +12,7 @@ import pandas as pd
 from muntin.bench.edit import Edit, declined, edited, scored
 from muntin.bench.layout import lay_out
 from muntin.bench.mixable import unmixable
+from muntin.bench.notebook import plan_card, plan_line
 from muntin.bench.outlay import Outlay
 from muntin.bench.plan_notices import plan_notices
 from muntin.bench.plan_rows import plan_rows
@@ -59,6 +60,12 @@ class Plan:
     notices: tuple[str, ...]
     ruling: Ruling
     edit: Edit | None = None
+
+    def __repr__(self) -> str:
+        return plan_line(self)
+
+    def _repr_html_(self) -> str:
+        return plan_card(self)
 
     @property
     def wrong_share(self) -> float:

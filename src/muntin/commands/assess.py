@@ -67,6 +67,7 @@ def assess(
     )
     from muntin.record import open_study
     from muntin.report.facts import records, standing_facts, study_facts
+    from muntin.report.handover_text import handover_facts
     from muntin.report.influence_text import influence_facts, influence_lines
     from muntin.report.text import assess_screen
     from muntin.window.assessment import assess as judge
@@ -83,6 +84,10 @@ def assess(
     bar = tell.fitting(engine)
     view = judge(study, surrogate.value, sampler(engine, noise), seed, progress=bar)
     window = None if view.fresh else view.window()
+    handed = None
+    if window is not None and not window.unsupported:
+        tell("judging the ranges to hand over")
+        handed = view.handover()
     facts: dict[str, Any] = {
         "command": "assess",
         "settings": {
@@ -93,6 +98,8 @@ def assess(
         },
     }
     facts |= {"study": study_facts(study), **standing_facts(view, window)}
+    if handed is not None:
+        facts["handover"] = handover_facts(study.definition, handed)
     known = None if conditions is None else known_at(view, conditions)
     if known is not None:
         facts["at"] = records(known)
@@ -109,4 +116,4 @@ def assess(
     kept = () if draws is None else view.save_draws(draws)
     if kept:
         facts["draws"] = [str(path) for path in kept]
-    return Output(facts, assess_screen(view, window, known, out, moved, kept))
+    return Output(facts, assess_screen(view, window, known, out, moved, kept, handed))

@@ -80,7 +80,7 @@ def _beside(path: Path, content: str | bytes) -> Iterator[Path]:
         raise StudyFaults([fault]) from None
 
 
-def write_together(files: Mapping[Path, str]) -> None:
+def write_together(files: Mapping[Path, str | bytes] | Mapping[Path, str]) -> None:
     """Write files, all of them or, with StudyFaults, none: what was there is put back."""
     before: dict[Path, bytes | None] = {}
     try:

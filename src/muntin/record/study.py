@@ -12,6 +12,7 @@ from muntin.record.copies import copy_faults
 from muntin.record.definition import STUDY_FILE, Definition, definition_faults, sound_part
 from muntin.record.faults import Fault, Findings, StudyFaults
 from muntin.record.filled_plans import filled_plans
+from muntin.record.notebook import study_card, study_line
 from muntin.record.notes import Plate, read_notes
 from muntin.record.notices import column_notice, definition_notices, odd_notices, well_notices
 from muntin.record.plates import PlateRows, open_plate, outside_limits, read_plate
@@ -72,6 +73,12 @@ class Study:
     plates: tuple[Plate, ...]
     notices: tuple[str, ...]
     stops: tuple[RecordedStop, ...] = ()
+
+    def __repr__(self) -> str:
+        return study_line(self)
+
+    def _repr_html_(self) -> str:
+        return study_card(self)
 
     @property
     def stopping(self) -> Standing:
@@ -137,10 +144,11 @@ class Study:
         )
 
 
-def open_study(path: str | Path, *, reducing: bool = False) -> Study:
+def open_study(path: str | Path, *, reducing: bool = False, excluding: bool = True) -> Study:
     """Read a study folder; nothing is written.
 
-    With `reducing` plates may have no reading yet, and what was reduced before is not read.
+    With `reducing` plates may have no reading yet, and what was reduced before is not read. Without
+    `excluding` wells and readings that were left out count as if they had not been.
     Raises StudyFaults with every fault of its files.
     """
     folder = Path(path)
@@ -155,7 +163,7 @@ def open_study(path: str | Path, *, reducing: bool = False) -> Study:
     }
     if definition is None:
         raise StudyFaults(found.faults)
-    wells = _read_wells(folder, definition, plates, tables, found, reducing)
+    wells = _read_wells(folder, definition, plates, tables, found, reducing, excluding)
     stops = read_stops(folder, found)
     if found.faults:
         raise StudyFaults(found.faults)
@@ -209,6 +217,7 @@ def _read_wells(
     tables: dict[str, Table | None],
     found: Findings,
     reducing: bool,
+    excluding: bool,
 ) -> pd.DataFrame:
     stocks = read_stocks(folder, definition.factors, [*tables], found)
     parts = {
@@ -219,7 +228,7 @@ def _read_wells(
     rows = [*parts.values()]
     passed = REDUCED if reducing else ""
     readings = _read_results(folder, definition, rows, tables, found, passed)
-    frame = wells_table(definition, rows, readings)
+    frame = wells_table(definition, rows, readings, excluding)
     void = {name: plate.void for name, plate in plates.items() if plate.void}
     needed = {name: part.needed for name, part in parts.items() if name not in void}
     found.faults.extend(late_faults(definition, frame, readings))

@@ -19,8 +19,12 @@ def wells_table(
     definition: Definition,
     rows: Sequence[PlateRows],
     readings: Mapping[str, Sequence[Reading]],
+    excluding: bool = True,
 ) -> pd.DataFrame:
-    """Return one row a well of every plate; columns as in Study.wells."""
+    """Return one row a well of every plate; columns as in Study.wells.
+
+    Without `excluding` readings that were left out come back, their reasons beside them.
+    """
     roles, excluded = _stacked(rows, "role"), _stacked(rows, "exclude")
     data: dict[str, Any] = {name: _stacked(rows, name) for name in ("plate", "well", "role")}
     for name in definition.factor_names:
@@ -28,7 +32,7 @@ def wells_table(
         data |= {column: _stacked(rows, column) for column in columns}
     for name, given in readings.items():
         states = [
-            state_of(reading, role, why)
+            state_of(reading, role, why, excluding)
             for reading, role, why in zip(given, roles, excluded, strict=True)
         ]
         read = np.array([state in USED for state in states], dtype=bool)
@@ -61,11 +65,14 @@ def _typed(frame: pd.DataFrame, definition: Definition) -> pd.DataFrame:
     return frame.astype(types)
 
 
-def state_of(reading: Reading, role: str, excluded: str) -> str:
-    """Return "read", "awaited", "censored", "excluded", or "none" for a control not read."""
+def state_of(reading: Reading, role: str, excluded: str, excluding: bool = True) -> str:
+    """Return "read", "awaited", "censored", "excluded" if `excluding`, or "none" for a control not
+    read.
+    """
     if role not in INFORMING and not reading.text:
         return "none"
-    return "excluded" if excluded or reading.reason else reading.state
+    left_out = excluding and bool(excluded or reading.reason)
+    return "excluded" if left_out else reading.state
 
 
 def late_faults(

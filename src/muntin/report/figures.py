@@ -30,7 +30,7 @@ def draw(view: Assessment, window: Window | None, wells: pd.DataFrame | None = N
     """
     definition = view.study.definition
     run, proposed = verdicts(view.study), proposed_conditions(view, wells)
-    titles = definition.title, _subtitle(view, window)
+    titles = figure_titles(view, window)
     window = None if window is None or window.unsupported else window
     if map_factors(definition) is not None:
         return draw_map(definition, window, run, proposed, titles)
@@ -51,6 +51,11 @@ def proposed_conditions(view: Assessment, wells: pd.DataFrame | None) -> pd.Data
     return tying.agg(wells="size", bridging="all").reset_index()
 
 
+def figure_titles(view: Assessment, window: Window | None) -> tuple[str, str]:
+    """Return the study's title, and what of its range the window takes."""
+    return view.study.definition.title, _subtitle(view, window)
+
+
 def _subtitle(view: Assessment, window: Window | None) -> str:
     definition = view.study.definition
     if window is None:
@@ -63,12 +68,15 @@ def _subtitle(view: Assessment, window: Window | None) -> str:
     return f"{name}: {of}{reach_text(definition, window.share)}"
 
 
-def saved(figure: Figure, form: str) -> bytes:
-    """Return a figure as the bytes of a "png" or "svg" file, the same whenever it is drawn."""
+def saved(figure: Figure, form: str, dpi: float | None = None) -> bytes:
+    """Return a figure as the bytes of a "png" or "svg" file, the same whenever it is drawn.
+
+    dpi: dots an inch of a "png", those of the figure where None.
+    """
     import matplotlib as mpl
 
     stream = io.BytesIO()
     metadata = {"Software": None} if form == "png" else {"Date": None}
     with mpl.rc_context({"svg.hashsalt": "muntin", "svg.fonttype": "path"}):
-        figure.savefig(stream, format=form, metadata=metadata)
+        figure.savefig(stream, format=form, metadata=metadata, dpi=dpi or "figure")
     return stream.getvalue()

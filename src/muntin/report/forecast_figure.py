@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -10,10 +11,12 @@ import pandas as pd
 from muntin.design.stopping import asked_of_set_point
 from muntin.record.definition import StopRule
 from muntin.record.study import Study
+from muntin.report.canvas import Panels, blank, given_panels
 from muntin.report.markers import figure_legend
 from muntin.report.ruling_text import ruling_line
-from muntin.report.style import ACCENT, INK, PAPER, dress, new_figure
+from muntin.report.style import ACCENT, INK, LINE, PAPER, SLIDE, dress
 from muntin.report.words import per_cent
+from muntin.window.assessment import Assessment
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
@@ -21,26 +24,45 @@ if TYPE_CHECKING:
 
     from muntin.bench.plan import Plan
 
-_LINE = "#1c5a80"
 _HEIGHT = 3.6
 
 
-def draw_forecast(study: Study, plan: Plan) -> Figure:
+def forecast(view: Assessment, plan: Plan, axes: Sequence[Axes] | None = None) -> Panels:
+    """Draw the forecast of a plan in two panels, as `draw_forecast` does.
+
+    axes: two. Raises ValueError where there are not two, or where nothing was read.
+    """
+    if view.fresh:
+        raise ValueError("before any reading nothing is forecast")
+    if axes is None:
+        return Panels(draw_forecast(view.study, plan, SLIDE).axes)
+    panels = given_panels(axes, 2)
+    _draw(view.study, plan, panels)
+    return panels
+
+
+def draw_forecast(study: Study, plan: Plan, height: float = _HEIGHT) -> Figure:
     """Draw the forecast against test wells, with the limits of the stop rule that holds: the
     expected share called wrongly; the expected probability of the set point and the chance that
-    it is as probable as asked.
+    it is as probable as asked. height: of the figure, in inches.
 
     The plan must have a forecast beyond 0 wells.
     """
-    rule, forecast = study.stopping.rule or StopRule(), plan.forecast
     # A number and its per cent sign stay on one line.
     verdict = ruling_line(study, plan).replace(" %", "\N{NO-BREAK SPACE}%")
-    figure = new_figure(_HEIGHT, study.definition.title, verdict)
-    left, right = figure.subplots(1, 2)
+    figure, panels = blank(study.definition.title, verdict, height, columns=2)
+    _draw(study, plan, panels)
+    figure_legend(figure, panels)
+    return figure
+
+
+def _draw(study: Study, plan: Plan, panels: Sequence[Axes]) -> None:
+    rule, forecast = study.stopping.rule or StopRule(), plan.forecast
+    left, right = panels
     at = int(np.flatnonzero(forecast["wells"] == (plan.wells["role"] == "test").sum())[0])
-    _curve(left, forecast["wrong_share"], at, _LINE, "o")
+    _curve(left, forecast["wrong_share"], at, LINE, "o")
     left.set_ylabel("May be called wrongly, %")
-    _curve(right, forecast["set_point"], at, _LINE, "o", "set point, expected probability")
+    _curve(right, forecast["set_point"], at, LINE, "o", "set point, expected probability")
     asked = f"chance that it reaches {per_cent(asked_of_set_point(study))}"
     _curve(right, forecast["reached"], at, INK, "s", asked)
     right.set(ylabel="Set point, probability in %", ylim=(-4.0, 104.0))
@@ -51,8 +73,6 @@ def draw_forecast(study: Study, plan: Plan) -> Figure:
         _stop_line(axes, limit)
         dress(axes)
     left.set_ylim(bottom=0.0)
-    figure_legend(figure, (left, right))
-    return figure
 
 
 def _curve(

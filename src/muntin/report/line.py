@@ -17,7 +17,7 @@ from muntin.report.markers import (
     required_line,
 )
 from muntin.report.slices import few_levels
-from muntin.report.style import INK, QUIET, dress, factor_axis, new_figure, plain_ticks
+from muntin.report.style import BAND, INK, LINE, QUIET, dress, factor_axis, new_figure, plain_ticks
 from muntin.report.verdicts import meets
 from muntin.report.words import axis_label
 from muntin.window.assessment import Assessment
@@ -26,8 +26,6 @@ from muntin.window.window import Window
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
     from matplotlib.figure import Figure
-
-_LINE, _BAND = "#1c5a80", "#d3e3ec"
 
 
 def draw_line(
@@ -64,7 +62,7 @@ def _probability(
 ) -> None:
     grid = window.grid
     required_line(axes, required)
-    axes.plot(grid[factor.name], grid["probability"], color=_LINE, linewidth=2.2)
+    axes.plot(grid[factor.name], grid["probability"], color=LINE, linewidth=2.2)
     mark_proposed(axes, proposed.assign(height=1.06), factor.name, "height")
     set_point = window.setpoint
     mark_set_point(axes, window, float(set_point[factor.name]), float(set_point["probability"]))
@@ -76,9 +74,9 @@ def _response(
 ) -> None:
     name, factor = response.name, view.study.definition.factors[0]
     axes.fill_between(
-        levels, at[f"{name}_low"], at[f"{name}_high"], color=_BAND, label="mean, 95 % interval"
+        levels, at[f"{name}_low"], at[f"{name}_high"], color=BAND, label="mean, 95 % interval"
     )
-    axes.plot(levels, at[f"{name}_mean"], color=_LINE, linewidth=2.2)
+    axes.plot(levels, at[f"{name}_mean"], color=LINE, linewidth=2.2)
     readings = view.study.readings(name)
     values = readings["y"].to_numpy(dtype=float) * response.unit_size
     verdict = np.where(meets(response, values), "passed", "failed")

@@ -2,7 +2,9 @@
 
 from __future__ import annotations
 
-from typing import TYPE_CHECKING
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 import pandas as pd
@@ -10,7 +12,8 @@ from numpy.typing import NDArray
 
 from muntin.record.definition import Definition
 from muntin.record.factors import Factor
-from muntin.report.markers import figure_legend, mark_proposed, mark_run, mark_set_point
+from muntin.report.canvas import blank
+from muntin.report.markers import figure_legend, mark_edge, mark_proposed, mark_run, mark_set_point
 from muntin.report.style import (
     BARRED,
     INK,
@@ -18,7 +21,6 @@ from muntin.report.style import (
     dress,
     factor_axis,
     halo,
-    new_figure,
     probability_colours,
 )
 from muntin.report.words import chance_text
@@ -49,8 +51,12 @@ def draw_map(
     run: pd.DataFrame,
     proposed: pd.DataFrame,
     titles: tuple[str, str],
+    height: float | None = None,
+    edge: pd.DataFrame | None = None,
 ) -> Figure:
     """Draw one panel a choice. `run` and `proposed` have a row a condition, factors in columns.
+    height: of the figure, in inches; what suits the panels where None. edge: conditions on the
+    edge with its interval (`HandOver.edge`), drawn where given.
 
     Without a window there is no probability to show, only the plan. Raises ValueError where the
     study does not have two factors with a range and at most one with few choices.
@@ -62,36 +68,70 @@ def draw_map(
     choices: list[str | None] = [None] if panel is None else list(panel.choices or ())
     columns = min(2, len(choices)) if len(choices) != 3 else 3
     rows = -(-len(choices) // columns)
-    height = 6.2 if columns == 1 else 0.9 + rows * (8.0 / columns + 0.6)
-    figure = new_figure(height, *titles)
-    grid = figure.subplots(rows, columns, squeeze=False, sharex=True, sharey=True)
-    panels: list[Axes] = list(grid.flat)
+    if height is None:
+        height = 6.2 if columns == 1 else 0.9 + rows * (8.0 / columns + 0.6)
+    figure, panels = blank(*titles, height, rows=rows, columns=columns, shared=True)
     shade = None
     for axes, choice in zip(panels, choices, strict=True):
-        for factor, which in ((x, "x"), (y, "y")):
-            factor_axis(axes, factor, which, 0.06 if columns > 2 else 0.03)
-        dress(axes)
+        held = {} if panel is None else {panel.name: choice}
+        on_edge = None if edge is None else _of(edge, held)
+        tables = Conditions(_of(run, held), _of(proposed, held), on_edge)
+        shade = map_panel(axes, definition, window, tables, (x, y), held, columns > 2) or shade
         axes.label_outer()
         if panel is not None:
             axes.set_title(panel.named(str(choice)), loc="left", fontsize=10, color=INK)
-        if window is not None:
-            shade = _shade(axes, definition, _of(window.grid, panel, choice), x, y)
-            set_point = window.setpoint
-            if panel is None or set_point[panel.name] == choice:
-                _box(axes, window, x, y)
-                mark_set_point(axes, window, float(set_point[x.name]), float(set_point[y.name]))
-        mark_run(axes, _of(run, panel, choice), x.name, y.name)
-        mark_proposed(axes, _of(proposed, panel, choice), x.name, y.name)
-        if window is not None and panel is None:
+        elif window is not None:
             _name_edge(axes, definition.required_probability)
     if shade is not None:
-        _colour_bar(figure, shade, panels, definition)
+        colour_bar(figure, shade, panels, definition)
     figure_legend(figure, panels)
     return figure
 
 
-def _of(table: pd.DataFrame, panel: Factor | None, choice: str | None) -> pd.DataFrame:
-    return table if panel is None else table[table[panel.name] == choice]
+@dataclass(frozen=True)
+class Conditions:
+    """What a panel marks: conditions that were run, with their verdict, those of a plan, and those
+    on the edge with its interval (`HandOver.edge`), or None.
+    """
+
+    run: pd.DataFrame
+    proposed: pd.DataFrame
+    edge: pd.DataFrame | None = None
+
+
+def map_panel(
+    axes: Axes,
+    definition: Definition,
+    window: Window | None,
+    marked: Conditions,
+    factors: tuple[Factor, Factor],
+    held: Mapping[str, Any],
+    narrow: bool = False,
+) -> QuadContourSet | None:
+    """Draw probability over two factors, the others held; return the shades, if there are any."""
+    x, y = factors
+    for factor, which in ((x, "x"), (y, "y")):
+        factor_axis(axes, factor, which, 0.06 if narrow else 0.03)
+    dress(axes)
+    shade = None
+    if window is not None:
+        shade = _shade(axes, definition, _of(window.grid, held), x, y)
+        set_point = window.setpoint
+        if all(set_point[name] == value for name, value in held.items()):
+            _box(axes, window, x, y)
+            mark_set_point(axes, window, float(set_point[x.name]), float(set_point[y.name]))
+        if marked.edge is not None:
+            mark_edge(axes, marked.edge, x.name, y.name)
+    mark_run(axes, marked.run, x.name, y.name)
+    mark_proposed(axes, marked.proposed, x.name, y.name)
+    return shade
+
+
+def _of(table: pd.DataFrame, held: Mapping[str, Any]) -> pd.DataFrame:
+    """Return the rows at the values that are held."""
+    for name, value in held.items():
+        table = table[table[name] == value]
+    return table
 
 
 def _shade(
@@ -184,15 +224,16 @@ def _box(axes: Axes, window: Window, x: Factor, y: Factor) -> None:
     )
 
 
-def _colour_bar(
-    figure: Figure, shade: QuadContourSet, every: list[Axes], definition: Definition
+def colour_bar(
+    figure: Figure, shade: QuadContourSet, every: Sequence[Axes], definition: Definition
 ) -> None:
+    """Put the scale of the shades beside the panels, with the required probability on it."""
     says = {
         "mean": "Probability that the process mean passes",
         "well": "Probability that a new well passes",
         "kept": "Probability that a new well passes,\nfactors kept within ±",
     }
-    bar = figure.colorbar(shade, ax=every, pad=0.02, shrink=0.9, aspect=30)
+    bar = figure.colorbar(shade, ax=list(every), pad=0.02, shrink=0.9, aspect=30)
     bar.set_label(says[definition.judged_by], color=INK, fontsize=9)
     bar.ax.axhline(definition.required_probability, color=INK, linewidth=1.8)
     bar.ax.tick_params(labelsize=9, colors=QUIET, labelcolor=INK)

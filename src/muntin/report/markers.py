@@ -16,6 +16,8 @@ if TYPE_CHECKING:
     from matplotlib.figure import Figure
 
 _ONE_ROW = 5
+# Letters that a row of a legend takes, and what a handle takes of them.
+_ROW, _HANDLE = 112, 8
 _RUN: dict[str, dict[str, Any]] = {
     "passed": {"marker": "o", "markerfacecolor": INK},
     "failed": {"marker": "o", "markerfacecolor": PAPER},
@@ -85,6 +87,33 @@ def mark_set_point(axes: Axes, window: Window, x: float, y: float) -> None:
     )
 
 
+def mark_edge(axes: Axes, edge: pd.DataFrame, x: str, y: str) -> None:
+    """Draw the interval of the edge at each of its conditions, along the factor that is moved; an
+    end that lies outside the range is left open at the edge itself.
+    """
+    label: str | None = "edge, 95 %"
+    for row in edge.to_dict("records"):
+        moved = str(row["factor"])
+        if moved not in (x, y):
+            continue
+        here = float(row[moved])
+        ends = [here if pd.isna(row[end]) else float(row[end]) for end in ("low", "high")]
+        still = [float(row[y if moved == x else x])] * 2
+        across, up = (ends, still) if moved == x else (still, ends)
+        axes.plot(
+            across,
+            up,
+            color=INK,
+            linewidth=1.1,
+            marker="|" if moved == x else "_",
+            markersize=7,
+            markeredgewidth=1.1,
+            label=label,
+            zorder=3,
+        )
+        label = None
+
+
 def required_line(axes: Axes, required: float) -> None:
     """Draw the required probability across a panel whose y axis is probability.
 
@@ -114,8 +143,20 @@ def figure_legend(figure: Figure, every: Iterable[Axes]) -> None:
             found.values(),
             found.keys(),
             loc="outside lower left",
-            ncols=len(found) if len(found) <= _ONE_ROW else 4,
+            ncols=_columns([*found]),
             frameon=False,
             fontsize=9,
             labelcolor=INK,
         )
+
+
+def _columns(labels: list[str]) -> int:
+    """Return how many columns of a legend, which is filled column by column, fit below a figure."""
+    for columns in range(len(labels) if len(labels) <= _ONE_ROW else 4, 1, -1):
+        rows = -(-len(labels) // columns)
+        widths = [
+            _HANDLE + max(map(len, labels[i : i + rows])) for i in range(0, len(labels), rows)
+        ]
+        if sum(widths) <= _ROW:
+            return columns
+    return 1

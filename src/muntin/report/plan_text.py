@@ -210,7 +210,7 @@ def _heading(factor: Factor) -> str:
 
 
 def _said(rows: pd.DataFrame, factors: Sequence[Factor], why: bool) -> list[str]:
-    return [_span(rows["p_now"]), _why(rows, factors)] if why else []
+    return [_span(rows["p_now"]), why_text(rows, factors)] if why else []
 
 
 def _settings(factors: Sequence[Factor], rows: pd.DataFrame) -> str:
@@ -226,7 +226,7 @@ def _span(p: pd.Series) -> str:
     return low if low == high else f"{low} to {high}"
 
 
-def _why(rows: pd.DataFrame, factors: Sequence[Factor]) -> str:
+def why_text(rows: pd.DataFrame, factors: Sequence[Factor]) -> str:
     """Return the reasons of the wells, that of the wells whose outcome is most open first.
 
     What the row's other cells say, probability and setting, is left out, and so is what

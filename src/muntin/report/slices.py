@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 
 from muntin.record.factors import Factor
 from muntin.report.markers import figure_legend, mark_set_point, required_line
-from muntin.report.style import ACCENT, BARRED, INK, dress, factor_axis, new_figure
+from muntin.report.style import ACCENT, BARRED, INK, LINE, dress, factor_axis, new_figure
 from muntin.report.words import setting_text
 from muntin.window.assessment import Assessment
 from muntin.window.window import Window
@@ -19,7 +19,6 @@ if TYPE_CHECKING:
     from matplotlib.axes import Axes
     from matplotlib.figure import Figure
 
-_LINE = "#1c5a80"
 _MOST_POINTS = 121
 
 
@@ -82,14 +81,14 @@ def _probability(axes: Axes, view: Assessment, factor: Factor, window: Window) -
     required_line(axes, definition.required_probability)
     at = set_point[factor.name]
     if factor.continuous:
-        axes.plot(table[factor.name], table["probability"], color=_LINE, linewidth=2.2)
+        axes.plot(table[factor.name], table["probability"], color=LINE, linewidth=2.2)
         if factor.kept_within is not None:
             width = float(factor.kept_within.at(float(at)))
             axes.axvspan(at - width, at + width, color=BARRED, zorder=0, label="kept within ±")
         where = float(at)
     else:
         p = table["probability"].to_numpy(dtype=float)
-        axes.bar(np.arange(len(p)), np.nan_to_num(p), width=0.6, color="#a5c6d9", edgecolor=_LINE)
+        axes.bar(np.arange(len(p)), np.nan_to_num(p), width=0.6, color="#a5c6d9", edgecolor=LINE)
         where = float(list(factor.choices or ()).index(at))
     mark_set_point(axes, window, where, float(set_point["probability"]))
     axes.set_title(setting_text(factor, at), loc="left", fontsize=9.5, color=INK)

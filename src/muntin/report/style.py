@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import textwrap
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 from muntin.record.factors import Factor
 from muntin.report.words import axis_label
@@ -18,7 +18,18 @@ if TYPE_CHECKING:
 INK, QUIET, PAPER = "#1f2a30", "#66727a", "#ffffff"
 ACCENT = "#d5521a"
 BARRED = "#e7e4de"
+LINE, BAND = "#1c5a80", "#d3e3ec"
 WIDTH, DPI = 8.0, 150
+SLIDE = 4.5
+# Dark enough for lines on white, apart for the colour-blind and, by lightness and dash, in grey.
+SERIES: tuple[tuple[str, Any], ...] = (
+    (LINE, "-"),
+    ("#b3460f", (0, (5, 2))),
+    ("#3d7d5a", (0, (1, 1.3))),
+    ("#8a4f9a", (0, (6, 2, 1, 2))),
+    ("#8f6a00", (0, (3, 1, 1, 1, 1, 1))),
+    ("#56636b", (0, (8, 2))),
+)
 # From almost white to blue: one hue, lightness falls evenly, so it reads in grey too; ink still
 # stands out on its dark end.
 _HUE = ("#f6fafc", "#dbe9f1", "#bad5e4", "#94bdd4", "#6ba3c2", "#4288b0", "#2a719c")

@@ -18,6 +18,7 @@ from muntin.record.study import Study
 from muntin.report.advice_files import Place
 from muntin.report.cautions import cautions
 from muntin.report.edit_record import edit_lines
+from muntin.report.handover_text import handover_lines
 from muntin.report.plan_text import (
     bridging_line,
     first_conditions,
@@ -44,6 +45,7 @@ from muntin.report.words import (
 )
 from muntin.window.assessment import Assessment
 from muntin.window.checks import Check
+from muntin.window.handover import HandOver
 from muntin.window.window import Window
 
 if TYPE_CHECKING:
@@ -136,8 +138,10 @@ def _named(some: Sequence[Check], checks: Sequence[Check], labels: Mapping[str, 
     return ", ".join(texts)
 
 
-def window_lines(view: Assessment, window: Window | None, most: int = _FEW) -> list[str]:
-    """Return where the window stands."""
+def window_lines(
+    view: Assessment, window: Window | None, most: int = _FEW, handed: HandOver | None = None
+) -> list[str]:
+    """Return where the window stands, with the hand-over where it was made."""
     definition = view.study.definition
     if window is None:
         return ["Nothing has been read yet, so there is no window; an opening plate comes first."]
@@ -151,8 +155,11 @@ def window_lines(view: Assessment, window: Window | None, most: int = _FEW) -> l
         f"{JUDGED_BY[definition.judged_by]}.",
         _set_point(definition, window),
     ]
-    if window.ranges is not None:
+    if handed is not None:
+        lines += handover_lines(definition, handed)
+    elif window.ranges is not None:
         lines.append(f"Ranges that hold together: {ranges_text(definition, window.ranges)}.")
+    if window.ranges is not None:
         lines += sides_line(definition, window.sides)
     elif not window.share:
         lines += least_line(view, window.setpoint)
@@ -199,9 +206,14 @@ def check_screen(study: Study, plans: Sequence[str] = ()) -> RenderableType:
     )
 
 
-def standing(view: Assessment, window: Window | None, few_lines: int = _FEW) -> list[Section]:
-    """Return the sections on what was read, the checks and the window; at most so many lines of
-    notes and of failed checks.
+def standing(
+    view: Assessment,
+    window: Window | None,
+    few_lines: int = _FEW,
+    handed: HandOver | None = None,
+) -> list[Section]:
+    """Return the sections on what was read, the checks and the window, with the hand-over where it
+    was made; at most so many lines of notes and of failed checks.
     """
     study = view.study
     awaited = labels(study.definition, view.awaited)
@@ -213,7 +225,7 @@ def standing(view: Assessment, window: Window | None, few_lines: int = _FEW) -> 
         ("Read", read_lines(study)),
         ("Noted", [*notes, *few(study.notices, few_lines)]),
         ("Checks", few(checks, max(_FEW, 2 * few_lines), "see --json")),
-        ("Window", window_lines(view, window, few_lines)),
+        ("Window", window_lines(view, window, few_lines, handed)),
     ]
 
 
@@ -224,11 +236,12 @@ def assess_screen(
     out: Path | None,
     influence: Sequence[RenderableType] = (),
     draws: Sequence[Path] = (),
+    handed: HandOver | None = None,
 ) -> RenderableType:
     """Return the screen of `assess`; `known` is the table of the conditions asked for, `influence`
     what each factor does, where asked, and `draws` the files of draws.
     """
-    sections = [*standing(view, window), ("Factors", influence)]
+    sections = [*standing(view, window, handed=handed), ("Factors", influence)]
     if known is not None and out is None:
         sections.append(("There", [known_table(view.study.definition, known)]))
     written = [str(path) for path in (out, *draws) if path is not None]

@@ -8,13 +8,12 @@ import numpy as np
 
 from muntin.assay.uptake import Uptake, interval, three_digits
 from muntin.report.markers import figure_legend
-from muntin.report.style import ACCENT, INK, PAPER, QUIET, dress, halo, new_figure
+from muntin.report.style import ACCENT, BAND, INK, LINE, PAPER, QUIET, dress, halo, new_figure
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
     from matplotlib.figure import Figure
 
-_LINE, _BAND = "#1c5a80", "#d3e3ec"
 _HEIGHT = 5.0
 _POINTS = 48
 _PLANNED: dict[str, Any] = {"color": ACCENT, "linewidth": 1.6, "linestyle": (0, (5, 3))}
@@ -55,8 +54,8 @@ def _curve(axes: Axes, uptake: Uptake, end: float) -> float:
     low, mean, high = (
         np.array([0.0, *(getattr(row, name) for row in rows)]) for name in ("low", "mean", "high")
     )
-    axes.fill_between(times, low, high, color=_BAND, label="95 % interval")
-    axes.plot(times, mean, color=_LINE, linewidth=2.2, label="expected load", zorder=3)
+    axes.fill_between(times, low, high, color=BAND, label="95 % interval")
+    axes.plot(times, mean, color=LINE, linewidth=2.2, label="expected load", zorder=3)
     ranked = sorted(zip(uptake.law_weights, uptake.grids, strict=True), key=lambda p: -p[0])
     shown = [(weight, grid) for weight, grid in ranked if weight >= _SHOWN]
     for dash, (weight, grid) in zip(_DASHES, shown if len(shown) > 1 else [], strict=False):
@@ -125,10 +124,10 @@ def _reached(axes: Axes, uptake: Uptake, end: float) -> None:
     shares = (0.90, 0.95)
     for row, share in enumerate(shares):
         found = uptake.time_to(share)
-        axes.plot([found.low, min(found.high, end)], [row, row], color=_LINE, linewidth=1.6)
+        axes.plot([found.low, min(found.high, end)], [row, row], color=LINE, linewidth=1.6)
         for time, marker in ((found.median, "s"), (found.high, ">")):
             if (time > end) == (marker == ">"):
-                axes.plot([min(time, end)], [row], marker, color=_LINE, clip_on=False, **_MARK)
+                axes.plot([min(time, end)], [row], marker, color=LINE, clip_on=False, **_MARK)
     labels = [f"{100 * share:.0f} % after" for share in shares]
     axes.set(ylim=(-0.7, 1.7), yticks=[0, 1], yticklabels=labels)
     dress(axes)

@@ -77,6 +77,20 @@ def chance_text(probability: float) -> str:
     return short if abs(float(short) - probability) < 1e-9 else f"{probability:g}"
 
 
+def odds_text(probability: float, limit: float | None = None) -> str:
+    """Return a probability that was computed, with two decimals, never rounded to a certainty, and
+    with as many more, up to four, as tell it from a limit.
+    """
+    if probability < 0.005:
+        return "under 0.01"
+    if probability >= 0.995:
+        return "over 0.99"
+    for digits in (2, 3, 4):
+        if limit is None or abs(round(probability, digits) - limit) > 1e-9:
+            break
+    return f"{probability:.{digits}f}"
+
+
 def reach_text(definition: Definition, share: float) -> str:
     """Return "32.2 % of the range reaches a probability of 0.90"."""
     required = chance_text(definition.required_probability)

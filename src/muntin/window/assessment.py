@@ -22,9 +22,11 @@ from muntin.window.checks import Check, study_checks
 from muntin.window.coded import code, coding_of, priors_for, readings_of, setting_sd, shared_by
 from muntin.window.engine import Engine, inference_data_of, save_draws, settings_of
 from muntin.window.grid import judged_grid
+from muntin.window.handover import HandOver, hand_over
 from muntin.window.influence import DRAWS, chosen_response, influence_of
 from muntin.window.joint import joint_meets
 from muntin.window.limiting import limiting, sides_of
+from muntin.window.notebook import assessment_card, assessment_line
 from muntin.window.predicted import Predicted
 from muntin.window.probability import Target, process_mean, process_quantile
 from muntin.window.residuals import Together, correlation_matrix, residual_correlations
@@ -56,6 +58,12 @@ class Assessment:
     surfaces: Mapping[str, Surface]
     engine: Engine = "fast"
     together: tuple[Together, ...] = ()
+
+    def __repr__(self) -> str:
+        return assessment_line(self)
+
+    def _repr_html_(self) -> str:
+        return assessment_card(self)
 
     @property
     def awaited(self) -> tuple[str, ...]:
@@ -227,6 +235,18 @@ class Assessment:
     def window(self) -> Window:
         """The predicted operating window (plate scale), on a grid of bench steps, made once."""
         return self._window
+
+    def handover(self) -> HandOver | None:
+        """What is handed over of the window: ranges, margins, edge, repeats; made once, when asked.
+
+        None before any judged response was read. `window.handover.hand_over` takes an assurance, a
+        number of draws and a seed of one's own.
+        """
+        return self._handover
+
+    @cached_property
+    def _handover(self) -> HandOver | None:
+        return hand_over(self)
 
     @cached_property
     def _window(self) -> Window:

@@ -14,11 +14,14 @@ Array = NDArray[np.float64]
 
 
 def settings_around(
-    definition: Definition, frame: pd.DataFrame
+    definition: Definition, frame: pd.DataFrame, rule: int | None = None
 ) -> Iterator[tuple[float, pd.DataFrame]]:
-    """Weights and settings (raw units) around conditions, spread evenly within kept_within."""
+    """Weights and settings (raw units) around conditions, spread evenly within kept_within.
+
+    rule: points a factor, in place of the usual ones.
+    """
     factors = [f for f in definition.factors if f.kept_within is not None]
-    points, weights = _even_spread(len(factors))
+    points, weights = _even_spread(len(factors), rule)
     for point, weight in zip(points, weights, strict=True):
         moved = frame.copy()
         for factor, u in zip(factors, point, strict=True):
@@ -28,12 +31,13 @@ def settings_around(
         yield float(weight), moved
 
 
-def _even_spread(factors: int) -> tuple[Array, Array]:
+def _even_spread(factors: int, rule: int | None = None) -> tuple[Array, Array]:
     """Points (n, factors) of [-1, 1] and weights (n,).
 
-    Products of Gauss-Legendre rules, of three points to three factors and of two beyond.
+    Products of Gauss-Legendre rules, of three points to three factors and of two beyond, or of
+    `rule` points.
     """
-    x, w = np.polynomial.legendre.leggauss(3 if factors <= 3 else 2)
+    x, w = np.polynomial.legendre.leggauss(rule or (3 if factors <= 3 else 2))
     grids = np.meshgrid(*[x] * factors, indexing="ij")
     weights = np.prod(np.meshgrid(*[w / 2.0] * factors, indexing="ij"), axis=0)
     return np.stack([g.ravel() for g in grids], axis=1), weights.ravel()

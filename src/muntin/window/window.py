@@ -3,14 +3,16 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
-from typing import Any
 
 import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
 from muntin.record.definition import Definition
+from muntin.window.boxes import largest_span, ranges_of
 from muntin.window.limiting import Side
+from muntin.window.notebook import window_card, window_line
+from muntin.window.steps import Judged, Steps, condition_of
 
 Array = NDArray[np.float64]
 
@@ -22,9 +24,11 @@ class Window:
     grid: conditions (raw units) with p_mean, probability (the judged one) and inside. regular:
     whether they form a grid. share: of the range inside. wrong_share: expected share of the range
     that is called wrongly, mean of min(p, 1 - p) of p_mean. setpoint: the condition of highest
-    probability, with it. ranges: factor ranges that hold together, all inside; None without a
-    grid or a window. unsupported: reasons why the data do not support the window; empty if none.
-    sides: which response gives way first beyond each side of the ranges.
+    probability, with it. ranges: the largest factor ranges that hold the set point and have all
+    conditions of the grid in them inside; None without a grid or a window. What lies between the
+    nodes of a grid that leaves bench steps out, `Assessment.handover` judges. unsupported: reasons
+    why the data do not support the window; empty if none. sides: which response gives way first
+    beyond each side of the ranges.
     """
 
     grid: pd.DataFrame
@@ -35,6 +39,12 @@ class Window:
     ranges: dict[str, tuple[object, object]] | None
     unsupported: tuple[str, ...]
     sides: tuple[Side, ...] = ()
+
+    def __repr__(self) -> str:
+        return window_line(self)
+
+    def _repr_html_(self) -> str:
+        return window_card(self)
 
 
 def judge_window(
@@ -51,7 +61,7 @@ def judge_window(
     best = _best(definition, grid, np.where(inside, judged, -1.0) if inside.any() else judged)
     ranges = None
     if regular and inside[best]:
-        ranges = _ranges(definition, grid, inside, best)
+        ranges = _ranges(definition, table, best)
     return Window(
         grid=table,
         regular=regular,
@@ -78,63 +88,19 @@ def _best(definition: Definition, grid: pd.DataFrame, judged: Array) -> int:
 
 
 def _ranges(
-    definition: Definition, grid: pd.DataFrame, inside: NDArray[np.bool_], best: int
-) -> dict[str, tuple[object, object]]:
-    """A box around row `best` grown one level at a time while every condition in it is inside."""
-    names = definition.factor_names
-    levels = [_levels(f.choices, grid[f.name]) for f in definition.factors]
-    codes = np.stack(
-        [
-            grid[n].map({v: i for i, v in enumerate(ls)})
-            for n, ls in zip(names, levels, strict=True)
-        ],
-        axis=1,
-    ).astype(np.intp)
-    low, high = codes[best].copy(), codes[best].copy()
-    movable = [
-        (i, side) for i, f in enumerate(definition.factors) if f.continuous for side in (-1, 1)
-    ]
-    while movable:
-        grown = [
-            (gain, move)
-            for move in movable
-            if (gain := _gain(codes, inside, low, high, move, len(levels[move[0]]))) > 0.0
-        ]
-        if not grown:
-            break
-        _, (i, side) = max(grown)
-        if side < 0:
-            low[i] -= 1
-        else:
-            high[i] += 1
-        movable = [move for _, move in grown]
-    return {n: (levels[i][low[i]], levels[i][high[i]]) for i, n in enumerate(names)}
+    definition: Definition, table: pd.DataFrame, best: int
+) -> dict[str, tuple[object, object]] | None:
+    """The largest box that holds row `best` and in which every condition of the grid is inside; the
+    choices of that row are held.
+    """
+    condition = condition_of(table[[*definition.factor_names]].iloc[[best]])
+    judged = Judged(Steps.at(definition, condition), _not_asked)
+    judged.learn(table)
+    at = judged.steps.index(table.iloc[[best]])[0]
+    nodes = judged.nodes()
+    span = largest_span(judged, definition.required_probability, nodes, at)
+    return None if span is None else ranges_of(judged.steps, span)
 
 
-def _levels(choices: tuple[str, ...] | None, column: pd.Series[Any]) -> list[object]:
-    """The levels of a grid's factor in order: of the range, or of the choices as given."""
-    found = set(column)
-    return sorted(found) if choices is None else [c for c in choices if c in found]
-
-
-def _gain(
-    codes: NDArray[np.intp],
-    inside: NDArray[np.bool_],
-    low: NDArray[np.intp],
-    high: NDArray[np.intp],
-    move: tuple[int, int],
-    levels: int,
-) -> float:
-    """How much of its side the box gains by one level there, as a share; 0 if it may not."""
-    i, side = move
-    new = low[i] - 1 if side < 0 else high[i] + 1
-    if not 0 <= new < levels:
-        return 0.0
-    slab = np.ones(len(codes), dtype=bool)
-    for j in range(codes.shape[1]):
-        slab &= codes[:, j] == new if j == i else (codes[:, j] >= low[j]) & (codes[:, j] <= high[j])
-    wanted = np.prod([high[j] - low[j] + 1 for j in range(codes.shape[1]) if j != i])
-    if slab.sum() < wanted or not inside[slab].all():
-        return 0.0
-    # Widths in shares of the range, so that growth is balanced between the factors.
-    return 1.0 / (high[i] - low[i] + 1) + 1e-3 / levels
+def _not_asked(frame: pd.DataFrame) -> Array:
+    raise ValueError(f"{len(frame)} conditions off the grid")

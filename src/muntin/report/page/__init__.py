@@ -1,0 +1,1 @@
+"""The report: one self-contained page, its sections as plain records, and how they are shown."""
