@@ -24,6 +24,11 @@ Folder = Annotated[Path, typer.Argument(metavar="DIR", help="the study's folder"
 Wells = Annotated[int, typer.Option(min=1, help="test wells of the next plate; others come on top")]
 
 
+By = Annotated[
+    str | None, typer.Option(metavar="NAME", help="who does this, for the ledger; not guessed")
+]
+
+
 class Aim(StrEnum):
     """What the next plate is for."""
 
