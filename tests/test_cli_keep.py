@@ -188,21 +188,19 @@ def test_words_on_an_edit_need_an_edited_plan(study: Path) -> None:
 def test_where_the_plan_cannot_be_written_nothing_is_left(
     study: Path, monkeypatch: pytest.MonkeyPatch
 ) -> None:
-    from muntin.record import files
-    from muntin.record.faults import Fault, StudyFaults
+    replace = Path.replace
 
-    write_atomic = files.write_atomic
-
-    def failing(path: Path, content: str) -> None:
-        if path.parent.name == "plans" and path.suffix == ".csv":
-            raise StudyFaults([Fault(file=str(path), problem="cannot be written")])
-        write_atomic(path, content)
+    def refused(path: Path, target: Path) -> Path:
+        if target.parent == study / "plans" and target.suffix == ".csv":
+            raise PermissionError(13, "Permission denied", str(target))
+        return replace(path, target)
 
     path, _ = edited(study)
     before = tree(study)
-    monkeypatch.setattr(files, "write_atomic", failing)
+    monkeypatch.setattr(Path, "replace", refused)
     result = run("propose", study, "--keep", path, *QUICK)
     assert result.exit_code == 2
+    assert "plans/plate-02.r2.csv: cannot be written (Permission denied)" in result.stderr
     assert tree(study) == before
 
 

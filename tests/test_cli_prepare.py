@@ -7,6 +7,7 @@ from pathlib import Path
 
 import pytest
 
+from muntin.record.ledger import LEDGER
 from tests.bench.bottled import HIGH, LOW, ROWS, bottled, write_plan
 from tests.report.studies import tree
 from tests.test_cli import rows_of, run
@@ -54,7 +55,7 @@ def test_the_screen_and_the_files(study: Path) -> None:
     assert result.exit_code == 0, result.stderr
     assert result.stdout.startswith(SCREEN)
     after = tree(study)
-    assert sorted(set(after) - set(before)) == FILES
+    assert sorted(set(after) - set(before)) == [LEDGER, *FILES]
     assert {name: after[name] for name in before} == before
     assert "Replaces" not in result.stdout
     assert "Replaces the sheets that were there." in run("prepare", study).stdout

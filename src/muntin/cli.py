@@ -16,6 +16,7 @@ from muntin.commands.propose import propose
 from muntin.commands.reduce import reduce
 from muntin.commands.rehearse import rehearse
 from muntin.commands.uptake import uptake
+from muntin.commands.verify import verify
 
 _COMMANDS = {
     new: "where do I start?",
@@ -26,6 +27,7 @@ _COMMANDS = {
     propose: "what do I run next?",
     prepare: "how do I run it?",
     rehearse: "is another plate worth it?",
+    verify: "can I reproduce it?",
     advise: "all of it between two plates",
 }
 

@@ -116,10 +116,11 @@ def sampler(engine: Engine, noise: Noise) -> Any:
 
 @dataclass(frozen=True)
 class Output:
-    """What a command found: plain values for --json, and the screen."""
+    """What a command found: plain values for --json, the screen, and the exit code."""
 
     facts: dict[str, Any]
     screen: RenderableType
+    code: int = 0
 
 
 def command(work: Callable[..., Output]) -> Callable[..., None]:
@@ -144,6 +145,8 @@ def command(work: Callable[..., Output]) -> Callable[..., None]:
             _print_faults(faults, common["as_json"])
             raise typer.Exit(2) from None
         _print(output, common["as_json"], common["quiet"])
+        if output.code:
+            raise typer.Exit(output.code)
 
     keyword = inspect.Parameter.KEYWORD_ONLY
     shown = [p for name, p in own.items() if name not in ("seed", "tell")]
