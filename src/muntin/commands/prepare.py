@@ -41,6 +41,5 @@ def prepare(folder: Folder, tell: Tell, plan: _Plan = None, by: By = None) -> Ou
         removed, remark = sheets_replaced(place, files)
         pen.commit({place / name: content for name, content in files.items()}, entry, removed)
     names = [*files]
-    return Output(
-        sheets_facts(sheets, place, names, remark), sheets_screen(sheets, place, names, remark)
-    )
+    screen = sheets_screen(sheets, place, names, remark)
+    return Output(sheets_facts(sheets, place, names, remark), screen, remarks=pen.remarks)

@@ -49,4 +49,5 @@ def reduce(
     with writing(study.folder) as pen:
         pen.commit(files, entry)
     paths = [*files]
-    return Output(reduce_facts(reduction, found, paths), reduce_screen(reduction, found, paths))
+    screen = reduce_screen(reduction, found, paths)
+    return Output(reduce_facts(reduction, found, paths), screen, remarks=pen.remarks)

@@ -103,7 +103,7 @@ def rehearse(
     entry = entry_for(study, "rehearse", plain(asked), seed=seed, by=by, results=told.kept)
     with writing(study.folder) as pen:
         pen.commit({}, entry)
-    return Output(rehearse_facts(told), rehearse_screen(told))
+    return Output(rehearse_facts(told), rehearse_screen(told), remarks=pen.remarks)
 
 
 def plate_sizes(text: str) -> tuple[int, ...]:

@@ -5,7 +5,7 @@ from __future__ import annotations
 import inspect
 import json
 import sys
-from collections.abc import Callable, Iterator
+from collections.abc import Callable, Iterator, Sequence
 from contextlib import contextmanager
 from dataclasses import dataclass
 from enum import StrEnum
@@ -116,11 +116,14 @@ def sampler(engine: Engine, noise: Noise) -> Any:
 
 @dataclass(frozen=True)
 class Output:
-    """What a command found: plain values for --json, the screen, and the exit code."""
+    """What a command found: plain values for --json, the screen, the exit code, and remarks of
+    the ledger, below both.
+    """
 
     facts: dict[str, Any]
     screen: RenderableType
     code: int = 0
+    remarks: Sequence[str] = ()
 
 
 def command(work: Callable[..., Output]) -> Callable[..., None]:
@@ -165,9 +168,11 @@ def _print(output: Output, as_json: bool, quiet: bool) -> None:
     if as_json:
         from muntin.report.advice_files import json_text
 
-        sys.stdout.write(json_text(output.facts))
+        more = {"remarks": [*output.remarks]} if output.remarks else {}
+        sys.stdout.write(json_text({**output.facts, **more}))
     elif not quiet:
         sys.stdout.write(_shown(output.screen))
+        sys.stdout.write("".join(f"{remark}\n" for remark in output.remarks))
 
 
 def _shown(screen: RenderableType) -> str:

@@ -65,4 +65,4 @@ def uptake(
         "curves": [uptake_facts(known, remarks, planned) for known, remarks in judged],
         "files": [str(path) for path in files],
     }
-    return Output(facts, uptake_screen(title, judged, planned, [*files]))
+    return Output(facts, uptake_screen(title, judged, planned, [*files]), remarks=pen.remarks)
