@@ -206,6 +206,6 @@ def test_sheets_make_way_for_new_ones_and_what_is_not_theirs_stays(tmp_path: Pat
 
 def test_a_file_in_the_way(tmp_path: Path) -> None:
     (tmp_path / "sheets").write_text("mine")
-    with pytest.raises(StudyFaults, match="cannot be written"):
+    with pytest.raises(StudyFaults, match="is a file where a folder belongs"):
         put(tmp_path / "sheets" / "plate-02", {"map.png": b"one"})
     assert tree(tmp_path) == {"sheets": b"mine"}

@@ -13,7 +13,7 @@ from muntin.record.edits import ENDING, sha256
 from muntin.record.ledger import LEDGER, Ledger, Line
 from muntin.record.offers import OFFERED, PLANS
 from muntin.record.tables import natural_order
-from muntin.record.writing import unfinished
+from muntin.record.writing import topmost_missing, unfinished
 
 ADVICE_FILE = "advice.json"
 # Their files are worked on: filled in, moved, edited.
@@ -52,13 +52,11 @@ def _gone_or_altered(folder: Path, latest: Mapping[str, tuple[Line, str]]) -> It
     gone: set[str] = set()
     for name, (line, of) in latest.items():
         path, since = folder / name, f"line {line.number}, {line.time[:10]}"
-        advice = line.advice
-        if advice is not None and name.startswith(f"{advice}/") and not (folder / advice).exists():
-            if advice not in gone:
-                yield f"{advice} was deleted (written with {since})"
-            gone.add(advice)
-        elif not path.is_file():
-            yield f"{name} was deleted (written with {since})"
+        if not path.is_file():
+            missing = topmost_missing(folder, name)
+            if missing not in gone:
+                yield f"{missing} was deleted (written with {since})"
+            gone.add(missing)
         elif sha256(path.read_bytes()) != of:
             yield f"{name} was altered after it was written ({since})"
 

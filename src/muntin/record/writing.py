@@ -180,6 +180,7 @@ def _write_all(folder: Path, data: Mapping[str, bytes], removed: Iterable[str]) 
 def _prepared(folder: Path, data: Mapping[str, bytes], removed: Iterable[str]) -> _List:
     """Write all that is new, and copies of what it replaces, into the stage; then the list."""
     stage = folder / STAGE
+    _check_ways(folder, data)
     for name, content in data.items():
         _put(stage / _NEW / name, content)
     gone = tuple(name for name in removed if (folder / name).is_file())
@@ -188,7 +189,7 @@ def _prepared(folder: Path, data: Mapping[str, bytes], removed: Iterable[str]) -
             _put(stage / _OLD / name, (folder / name).read_bytes())
     # The ledger comes last, so that a reader finds no line of files that are not there yet.
     names = sorted(data, key=lambda name: name == LEDGER)
-    moves = tuple(dict.fromkeys(_topmost(folder, name) for name in names))
+    moves = tuple(dict.fromkeys(topmost_missing(folder, name) for name in names))
     listed = _List(moves=moves, removes=gone)
     text = json.dumps({"moves": moves, "removes": gone})
     _put(stage / f"{_READY}.part", text.encode("utf-8"))
@@ -198,13 +199,23 @@ def _prepared(folder: Path, data: Mapping[str, bytes], removed: Iterable[str]) -
     return listed
 
 
-def _topmost(folder: Path, name: str) -> str:
-    """The first part of a path that is not there yet, or the whole path: what is moved at once."""
+def topmost_missing(folder: Path, name: str) -> str:
+    """Return the first part of a path that is not there, or the whole path: what moves at once."""
     parts = name.split("/")
     for count in range(1, len(parts)):
         if not (folder / "/".join(parts[:count])).exists():
             return "/".join(parts[:count])
     return name
+
+
+def _check_ways(folder: Path, names: Iterable[str]) -> None:
+    """Raise StudyFaults where a file lies on the way to a place."""
+    ways = {parent for name in names for parent in (folder / name).parents}
+    blocked = sorted(way for way in ways if way.is_relative_to(folder) and way.is_file())
+    problem = "is a file where a folder belongs"
+    faults = [Fault(file=str(way), problem=problem, hint="move it away") for way in blocked]
+    if faults:
+        raise StudyFaults(faults)
 
 
 def _put(path: Path, content: bytes) -> None:
@@ -277,6 +288,9 @@ def _read_list(path: Path) -> _List | None:
         values = json.loads(path.read_bytes())
     except (FileNotFoundError, NotADirectoryError):
         return None
+    except ValueError:
+        hint = f"what a killed command wrote lies in {path.parent}; move it away"
+        raise StudyFaults([Fault(file=str(path), problem="is spoilt", hint=hint)]) from None
     return _List(moves=tuple(values["moves"]), removes=tuple(values["removes"]))
 
 
