@@ -49,7 +49,7 @@ def test_version() -> None:
 
 
 @pytest.mark.parametrize(
-    "command", ["new", "check", "assess", "propose", "prepare", "rehearse", "advise"]
+    "command", ["new", "check", "assess", "propose", "prepare", "rehearse", "verify", "advise"]
 )
 def test_every_command_has_help_and_the_common_options(command: str) -> None:
     result = run(command, "--help")

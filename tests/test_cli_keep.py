@@ -9,6 +9,7 @@ from pathlib import Path
 import pytest
 
 from muntin.record.edits import recorded_edits
+from muntin.record.ledger import LEDGER
 from tests.report.studies import small, tree
 from tests.test_cli import rows_of, run
 
@@ -62,6 +63,7 @@ def test_an_edited_plan_is_written_beside_the_others(study: Path) -> None:
     result = run("propose", study, "--keep", path, *said, *QUICK)
     assert result.exit_code == 0, result.stderr
     after = tree(study)
+    assert after.pop(LEDGER).startswith(before.pop(LEDGER))
     # Nothing that was there is changed; the plan, its copy and its record are new.
     assert {name: after[name] for name in before} == before
     new = sorted(set(after) - set(before))
@@ -178,7 +180,6 @@ def test_words_on_an_edit_need_an_edited_plan(study: Path) -> None:
     result = run("propose", study, "--by", "lab 2", "--because", "so", *QUICK)
     assert result.exit_code == 2
     assert result.stderr.splitlines() == [
-        "muntin propose: --by tells of an edited plan; name it with --keep",
         "muntin propose: --because tells of an edited plan; name it with --keep",
     ]
     assert tree(study) == before
@@ -187,21 +188,19 @@ def test_words_on_an_edit_need_an_edited_plan(study: Path) -> None:
 def test_where_the_plan_cannot_be_written_nothing_is_left(
     study: Path, monkeypatch: pytest.MonkeyPatch
 ) -> None:
-    from muntin.record import files
-    from muntin.record.faults import Fault, StudyFaults
+    replace = Path.replace
 
-    write_atomic = files.write_atomic
-
-    def failing(path: Path, content: str) -> None:
-        if path.parent.name == "plans" and path.suffix == ".csv":
-            raise StudyFaults([Fault(file=str(path), problem="cannot be written")])
-        write_atomic(path, content)
+    def refused(path: Path, target: Path) -> Path:
+        if target.parent == study / "plans" and target.suffix == ".csv":
+            raise PermissionError(13, "Permission denied", str(target))
+        return replace(path, target)
 
     path, _ = edited(study)
     before = tree(study)
-    monkeypatch.setattr(files, "write_atomic", failing)
+    monkeypatch.setattr(Path, "replace", refused)
     result = run("propose", study, "--keep", path, *QUICK)
     assert result.exit_code == 2
+    assert "plans/plate-02.r2.csv: cannot be written (Permission denied)" in result.stderr
     assert tree(study) == before
 
 

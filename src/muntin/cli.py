@@ -19,6 +19,7 @@ from muntin.commands.reduce import reduce
 from muntin.commands.rehearse import rehearse
 from muntin.commands.report import report
 from muntin.commands.uptake import uptake
+from muntin.commands.verify import verify
 
 COMMANDS = {
     new: "where do I start?",
@@ -31,6 +32,7 @@ COMMANDS = {
     rehearse: "is another plate worth it?",
     confirm: "do columns agree?",
     report: "can I hand it over?",
+    verify: "can I reproduce it?",
     advise: "all of it between two plates",
     tell_names: "what does a name mean?",
 }

@@ -30,6 +30,7 @@ def test_what_is_written(tmp_path):
     after = files(study)
     assert {name: after[name] for name in before} == before
     assert sorted(set(after) - set(before)) == [
+        "ledger.jsonl",
         "reductions/plate-01-masses.csv",
         "reductions/plate-01-reads.csv",
         "reductions/plate-01.json",
@@ -66,6 +67,7 @@ def test_the_study_reads_what_was_written_and_a_second_run_changes_nothing(tmp_p
     once = files(study)
     assert run("reduce", study, "reads", "--quiet").output == ""
     again = files(study)
+    assert again["ledger.jsonl"].startswith(once.pop("ledger.jsonl"))
     assert {name for name in once if once[name] != again.get(name)} <= {"reductions/plate-01.json"}
     assert again["results/reduced-plate-01.csv"] == once["results/reduced-plate-01.csv"]
 

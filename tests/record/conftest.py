@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import os
 from collections.abc import Callable, Mapping
 from pathlib import Path
 
@@ -70,3 +71,9 @@ def make(tmp_path: Path) -> Callable[[Files], Path]:
         return folder
 
     return write
+
+
+@pytest.fixture
+def quick_disk(monkeypatch: pytest.MonkeyPatch) -> None:
+    """Flush nothing to the disk, which is only needed where the power may go."""
+    monkeypatch.setattr(os, "fsync", lambda _: None)

@@ -13,6 +13,7 @@ from typer.testing import CliRunner, Result
 
 from muntin.cli import app
 from muntin.commands.rehearse import time_left
+from muntin.record.ledger import LEDGER, read_ledger
 from muntin.rehearsal import workers
 from tests.report.studies import STUDY, small, tree, write
 
@@ -95,10 +96,12 @@ def test_the_studys_files_stay_and_series_are_kept_beside_them(study: Path) -> N
     run(study)
     after = tree(study)
     assert {name: after[name] for name in before} == before
-    new = sorted(set(after) - set(before))
+    new = sorted(set(after) - set(before) - {LEDGER})
     kept = [Path(name) for name in new]
     assert {path.parent.parent.as_posix() for path in kept} == {"rehearsals"}
     assert [path.name for path in kept] == ["series-0001.json", "series-0002.json"]
+    (line,) = read_ledger(study).sound
+    assert (line.entry.command, [*line.entry.results]) == ("rehearse", new)
 
 
 def test_a_spoilt_file_is_told(study: Path) -> None:

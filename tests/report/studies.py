@@ -100,6 +100,14 @@ def plate(count: int = 12, column: str = "", value: str = "") -> str:
     return "\n".join(lines) + "\n"
 
 
+def second_plate(share: float = 0.98) -> str:
+    """The same conditions on another plate, which reads a little low."""
+    heading, *rows = plate().splitlines()
+    read = [row.split(",") for row in rows]
+    again = [",".join([*row[:4], f"{share * float(row[4]):.3f}", ""]) for row in read]
+    return "\n".join([heading, *again]) + "\n"
+
+
 def one_factor_plate(hcp: bool = True) -> str:
     """A plate table over salt alone, twice each; without `hcp` that response is awaited."""
     lines = ["well,salt,recovery,hcp"]

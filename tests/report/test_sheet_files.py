@@ -14,10 +14,11 @@ import pytest
 
 from muntin.bench.sheets import Sheets, prepare
 from muntin.record import StudyFaults, open_study
-from muntin.report import sheet_files as on_disk
+from muntin.record.ledger import LEDGER, Entry
+from muntin.record.writing import writing
 from muntin.report.cautions import bench_cautions
 from muntin.report.checklist import checklist_lines
-from muntin.report.sheet_files import sheet_files, sheets_folder, write_sheets
+from muntin.report.sheet_files import sheet_files, sheets_folder, sheets_replaced
 from muntin.report.sheet_tables import sheet_tables
 from muntin.report.text_pages import text_pages
 from tests.bench.bottled import BENCH, bottled, opened
@@ -179,13 +180,23 @@ def test_pages_hold_every_line_once() -> None:
         assert not any(t.get_text().startswith("HEAD") for t in page.texts[-4:-1])
 
 
+def put(folder: Path, files: dict[str, str | bytes]) -> str:
+    """Write sheets as `prepare` does; return the remark."""
+    with writing(folder.parents[1]) as pen:
+        removed, remark = sheets_replaced(folder, files)
+        own = {folder / name: content for name, content in files.items()}
+        pen.commit(own, Entry(command="prepare"), removed)
+    (folder.parents[1] / LEDGER).unlink()
+    return remark
+
+
 def test_sheets_make_way_for_new_ones_and_what_is_not_theirs_stays(tmp_path: Path) -> None:
     folder = tmp_path / "sheets" / "plate-02"
-    assert write_sheets(folder, {"map.png": b"one", "totals.csv": "old"}) == ""
+    assert put(folder, {"map.png": b"one", "totals.csv": "old"}) == ""
     (folder / "scan.jpg").write_bytes(b"mine")
     (folder / "photos").mkdir()
     (folder / "photos" / "a.jpg").write_bytes(b"too")
-    assert write_sheets(folder, {"map.png": b"two"}) == "Replaces the sheets that were there."
+    assert put(folder, {"map.png": b"two"}) == "Replaces the sheets that were there."
     assert tree(folder.parent) == {
         "plate-02/map.png": b"two",
         "plate-02/scan.jpg": b"mine",
@@ -193,49 +204,8 @@ def test_sheets_make_way_for_new_ones_and_what_is_not_theirs_stays(tmp_path: Pat
     }
 
 
-@pytest.mark.parametrize("there", [False, True])
-def test_a_failure_leaves_what_was_there(
-    tmp_path: Path, there: bool, monkeypatch: pytest.MonkeyPatch
-) -> None:
-    folder = tmp_path / "sheets" / "plate-02"
-    if there:
-        write_sheets(folder, {"map.png": b"one"})
-    before = tree(tmp_path)
-    whole = on_disk.write_atomic
-
-    def full(path: Path, content: str | bytes) -> None:
-        if path.name == "totals.csv":
-            raise OSError(28, "No space left on device")
-        whole(path, content)
-
-    monkeypatch.setattr(on_disk, "write_atomic", full)
-    with pytest.raises(StudyFaults, match="cannot be written"):
-        write_sheets(folder, {"map.png": b"two", "totals.csv": "new"})
-    assert tree(tmp_path) == before
-    assert there or not (tmp_path / "sheets").exists()
-
-
-def test_earlier_sheets_come_back_where_the_new_ones_cannot_take_their_name(
-    tmp_path: Path, monkeypatch: pytest.MonkeyPatch
-) -> None:
-    folder = tmp_path / "sheets" / "plate-02"
-    write_sheets(folder, {"map.png": b"one"})
-    before = tree(tmp_path)
-    rename = Path.rename
-
-    def refused(path: Path, target: Path) -> Path:
-        if path.name.endswith(".part"):
-            raise OSError(13, "Permission denied")
-        return rename(path, target)
-
-    monkeypatch.setattr(Path, "rename", refused)
-    with pytest.raises(StudyFaults, match="cannot be written"):
-        write_sheets(folder, {"map.png": b"two"})
-    assert tree(tmp_path) == before
-
-
 def test_a_file_in_the_way(tmp_path: Path) -> None:
     (tmp_path / "sheets").write_text("mine")
-    with pytest.raises(StudyFaults, match="cannot be written"):
-        write_sheets(tmp_path / "sheets" / "plate-02", {"map.png": b"one"})
+    with pytest.raises(StudyFaults, match="is a file where a folder belongs"):
+        put(tmp_path / "sheets" / "plate-02", {"map.png": b"one"})
     assert tree(tmp_path) == {"sheets": b"mine"}

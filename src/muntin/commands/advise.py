@@ -2,9 +2,14 @@
 
 from __future__ import annotations
 
+from typing import Annotated
+
+import typer
+
 from muntin.commands.shared import (
     Aim,
     AimOption,
+    By,
     Engine,
     EngineOption,
     Folder,
@@ -16,6 +21,11 @@ from muntin.commands.shared import (
     command,
 )
 
+Because = Annotated[
+    str | None,
+    typer.Option(metavar="TEXT", help="why what earlier advice rested on was changed; with --by"),
+]
+
 
 @command
 def advise(
@@ -26,6 +36,8 @@ def advise(
     aim: AimOption = Aim.edge,
     surrogate: SurrogateOption = Surrogate.stacked,
     engine: EngineOption = Engine.fast,
+    by: By = None,
+    because: Because = None,
 ) -> Output:
     """Check, assess and plan; write the plan to plans/ and all of it to advice/."""
     from muntin.advise import advise as advise_on
@@ -38,6 +50,8 @@ def advise(
         surrogate=surrogate.value,
         engine=engine.value,
         seed=seed,
+        by=by,
+        because=because,
         tell=tell,
         progress=tell.bar,
     )

@@ -10,9 +10,9 @@ import pandas as pd
 from muntin.record.definition import Definition
 from muntin.record.faults import Fault, Findings, StudyFaults
 from muntin.record.files import write_atomic
+from muntin.record.inputs import input_paths
 from muntin.record.levels import read_choices, read_levels
 from muntin.record.tables import Table, missing_column, read_table
-from muntin.report.advice_files import input_paths
 from muntin.window.assessment import Assessment
 
 

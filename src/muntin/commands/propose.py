@@ -10,6 +10,7 @@ import typer
 from muntin.commands.shared import (
     Aim,
     AimOption,
+    By,
     Engine,
     EngineOption,
     Folder,
@@ -38,7 +39,6 @@ _Keep = Annotated[
         help="an edited plan: its rows stay, are scored again, and filled up to --wells",
     ),
 ]
-_By = Annotated[str | None, typer.Option(metavar="NAME", help="with --keep: who edited it")]
 _Because = Annotated[
     str | None, typer.Option(metavar="TEXT", help="with --keep: why it was edited")
 ]
@@ -51,7 +51,7 @@ def propose(
     tell: Tell,
     wells: _Wells = None,
     keep: _Keep = None,
-    by: _By = None,
+    by: By = None,
     because: _Because = None,
     aim: AimOption = Aim.edge,
     surrogate: SurrogateOption = Surrogate.stacked,
@@ -59,29 +59,29 @@ def propose(
 ) -> Output:
     """Plan the next plate: conditions at final wells, each with a reason; write it to plans/."""
     from muntin.bench.plan import propose as plan_next
-    from muntin.record import keep_stop_rule, open_study
+    from muntin.record import open_study
     from muntin.report.facts import plan_facts, study_facts
     from muntin.report.text import propose_screen
     from muntin.window.assessment import assess
 
-    _check_words(keep, by, because)
+    _check_words(keep, because)
     tell("reading the study")
     study = open_study(folder)
     bar = tell.fitting(engine)
     view = assess(study, surrogate=surrogate.value, engine=engine.value, seed=seed, progress=bar)
     tell("planning the next plate")
     plan = plan_next(view, wells=wells, aim=aim.value, seed=seed, keep=keep)
-    files = _written(study, plan, by, because)
-    keep_stop_rule(study)
+    settings = {
+        "wells": int((plan.wells["role"] == "test").sum()),
+        "aim": aim.value,
+        "surrogate": surrogate.value,
+        "engine": engine.value,
+        "seed": seed,
+    }
+    files = _written(study, plan, settings, by, because)
     facts = {
         "command": "propose",
-        "settings": {
-            "wells": int((plan.wells["role"] == "test").sum()),
-            "aim": aim.value,
-            "surrogate": surrogate.value,
-            "engine": engine.value,
-            "seed": seed,
-        },
+        "settings": settings,
         "study": study_facts(study),
         "plan": plan_facts(study, plan),
         "files": files,
@@ -90,36 +90,47 @@ def propose(
     return Output(facts, screen)
 
 
-def _check_words(keep: Path | None, by: str | None, because: str | None) -> None:
+def _check_words(keep: Path | None, because: str | None) -> None:
     """Raise StudyFaults where words on an edit are given, and no edited plan."""
     from muntin.record import Fault, StudyFaults
 
-    given = {"--by": by, "--because": because}
-    problem = "tells of an edited plan; name it with --keep"
-    faults = [
-        Fault(file="muntin propose", value=name, problem=problem)
-        for name, value in given.items()
-        if value is not None and keep is None
-    ]
-    if faults:
-        raise StudyFaults(faults)
+    if because is not None and keep is None:
+        problem = "tells of an edited plan; name it with --keep"
+        raise StudyFaults([Fault(file="muntin propose", value="--because", problem=problem)])
 
 
-def _written(study: Study, plan: Plan, by: str | None, because: str | None) -> dict[str, Any]:
+def _written(
+    study: Study, plan: Plan, settings: dict[str, Any], by: str | None, because: str | None
+) -> dict[str, Any]:
     """Write the plan, and the record of what was changed in it; return where, and a remark."""
     from muntin.record.edits import record_path
-    from muntin.report.advice_files import hashes, read_inputs
+    from muntin.record.entries import entry_for
+    from muntin.record.inputs import hashes, read_inputs
+    from muntin.record.study import stop_file
+    from muntin.record.writing import writing
     from muntin.report.edit_record import edit_text
-    from muntin.report.plan_files import edited_path, plan_table_text, write_edited, write_plan
+    from muntin.report.plan_files import edited_path, plan_files, plan_path, plan_table_text
+    from muntin.report.ruling_text import decision_facts
 
     text = plan_table_text(study.definition, plan)
-    if plan.edit is None:
-        path, remark = write_plan(study.folder, plan.plate, text)
-        return {"plan": str(path), "remark": remark}
-    path = edited_path(study.folder, plan.plate)
     inputs = hashes(read_inputs(study.folder))
-    record = edit_text(study, plan, plan.edit, path, text, by=by, because=because, inputs=inputs)
-    write_edited(path, text, record)
+    decision = decision_facts(plan)
+    if plan.edit is not None:
+        decision |= {"edited": plan.edit.kept.file, "because": because}
+    entry = entry_for(
+        study, "propose", settings, seed=plan.seed, by=by, inputs=inputs, decision=decision
+    )
+    with writing(study.folder) as pen:
+        if plan.edit is None:
+            path, remark = plan_path(study.folder, plan.plate, text)
+            pen.commit({**plan_files(path, text), **stop_file(study)}, entry)
+            return {"plan": str(path), "remark": " ".join([*pen.remarks, remark]).strip()}
+        path = edited_path(study.folder, plan.plate)
+        told = edit_text(study, plan, plan.edit, path, text, by=by, because=because, inputs=inputs)
+        record = record_path(path)
+        pen.commit({record: told, **plan_files(path, text), **stop_file(study)}, entry)
     own = f"{plan.plate}.csv"
-    remark = "" if path.name == own else f"Rename it to {own} when you move it to plates/."
-    return {"plan": str(path), "record": str(record_path(path)), "remark": remark}
+    remarks = [*pen.remarks]
+    if path.name != own:
+        remarks.append(f"Rename it to {own} when you move it to plates/.")
+    return {"plan": str(path), "record": str(record), "remark": " ".join(remarks)}

@@ -7,7 +7,7 @@ from typing import Annotated
 
 import typer
 
-from muntin.commands.shared import Folder, Output, Tell, command
+from muntin.commands.shared import By, Folder, Output, Tell, command
 
 _Reads = Annotated[
     Path,
@@ -22,13 +22,17 @@ _Draws = Annotated[
 
 
 @command
-def reduce(folder: Folder, reads: _Reads, seed: int, tell: Tell, draws: _Draws = 0) -> Output:
+def reduce(
+    folder: Folder, reads: _Reads, seed: int, tell: Tell, draws: _Draws = 0, by: By = None
+) -> Output:
     """Reduce plate reads to masses, recoveries and their uncertainties; write them to results/."""
     from muntin.assay.given import given
     from muntin.assay.reduction import reduce_reads
     from muntin.record import open_study
-    from muntin.record.files import write_together
-    from muntin.report.reduce_files import reduction_files
+    from muntin.record.entries import entry_for
+    from muntin.record.inputs import hashes, read_inputs
+    from muntin.record.writing import writing
+    from muntin.report.reduce_files import hashes_of_reads, reduction_files
     from muntin.report.reduce_text import reduce_facts, reduce_screen
 
     tell("reading the study and its reads")
@@ -38,6 +42,12 @@ def reduce(folder: Folder, reads: _Reads, seed: int, tell: Tell, draws: _Draws =
     reduction = reduce_reads(study, reads, draws=draws, seed=seed)
     found = given(reduction)
     files = reduction_files(reduction, found, reads)
-    write_together(files)
+    read = {f"reads: {name}": of for name, of in hashes_of_reads(reads).items()}
+    inputs = hashes(read_inputs(study.folder)) | read
+    settings = {"reads": str(reads), "monte_carlo": draws}
+    entry = entry_for(study, "reduce", settings, seed=seed, by=by, inputs=inputs, judges=False)
+    with writing(study.folder) as pen:
+        pen.commit(files, entry)
     paths = [*files]
-    return Output(reduce_facts(reduction, found, paths), reduce_screen(reduction, found, paths))
+    screen = reduce_screen(reduction, found, paths)
+    return Output(reduce_facts(reduction, found, paths), screen, remarks=pen.remarks)

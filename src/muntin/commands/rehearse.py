@@ -6,6 +6,7 @@ import re
 import time
 from collections.abc import Callable, Iterator
 from contextlib import contextmanager
+from dataclasses import asdict
 from enum import StrEnum
 from pathlib import Path
 from typing import Annotated
@@ -15,6 +16,7 @@ import typer
 from muntin.commands.shared import (
     Aim,
     AimOption,
+    By,
     Folder,
     Output,
     Surrogate,
@@ -64,14 +66,18 @@ def rehearse(
     truths: TruthsOption = None,
     workers: Workers = None,
     cluster: Cluster = None,
+    by: By = None,
 ) -> Output:
     """Play the plates to come on drawn truths, beside rival designs: what they take to stop.
 
     Finished series are kept in rehearsals/; the same command takes them up again.
     """
     from muntin.record import open_study
+    from muntin.record.entries import entry_for
+    from muntin.record.writing import writing
     from muntin.rehearsal.rehearse import rehearse as play
     from muntin.rehearsal.store import FOLDER
+    from muntin.report.facts import plain
     from muntin.report.rehearse_text import rehearse_facts, rehearse_screen
 
     sizes = plate_sizes(plates)
@@ -93,7 +99,11 @@ def rehearse(
             store=store,
             heard=heard,
         )
-    return Output(rehearse_facts(told), rehearse_screen(told))
+    asked = asdict(told.settings)
+    entry = entry_for(study, "rehearse", plain(asked), seed=seed, by=by, results=told.kept)
+    with writing(study.folder) as pen:
+        pen.commit({}, entry)
+    return Output(rehearse_facts(told), rehearse_screen(told), remarks=pen.remarks)
 
 
 def plate_sizes(text: str) -> tuple[int, ...]:

@@ -5,7 +5,7 @@ from __future__ import annotations
 import inspect
 import json
 import sys
-from collections.abc import Callable, Iterator
+from collections.abc import Callable, Iterator, Sequence
 from contextlib import contextmanager
 from dataclasses import dataclass
 from enum import StrEnum
@@ -22,6 +22,11 @@ _WIDTH = 100
 
 Folder = Annotated[Path, typer.Argument(metavar="DIR", help="the study's folder")]
 Wells = Annotated[int, typer.Option(min=1, help="test wells of the next plate; others come on top")]
+
+
+By = Annotated[
+    str | None, typer.Option(metavar="NAME", help="who does this, for the ledger; not guessed")
+]
 
 
 class Aim(StrEnum):
@@ -111,10 +116,14 @@ def sampler(engine: Engine, noise: Noise) -> Any:
 
 @dataclass(frozen=True)
 class Output:
-    """What a command found: plain values for --json, and the screen."""
+    """What a command found: plain values for --json, the screen, the exit code, and remarks of
+    the ledger, below both.
+    """
 
     facts: dict[str, Any]
     screen: RenderableType
+    code: int = 0
+    remarks: Sequence[str] = ()
 
 
 def command(work: Callable[..., Output]) -> Callable[..., None]:
@@ -142,6 +151,8 @@ def command(work: Callable[..., Output]) -> Callable[..., None]:
             _print_faults(error, common["as_json"])
             raise typer.Exit(2) from None
         _print(output, common["as_json"], common["quiet"])
+        if output.code:
+            raise typer.Exit(output.code)
 
     keyword = inspect.Parameter.KEYWORD_ONLY
     shown = [p for name, p in own.items() if name not in ("seed", "tell")]
@@ -160,9 +171,11 @@ def _print(output: Output, as_json: bool, quiet: bool) -> None:
     if as_json:
         from muntin.report.advice_files import json_text
 
-        sys.stdout.write(json_text(output.facts))
+        more = {"remarks": [*output.remarks]} if output.remarks else {}
+        sys.stdout.write(json_text({**output.facts, **more}))
     elif not quiet:
         sys.stdout.write(_shown(output.screen))
+        sys.stdout.write("".join(f"{remark}\n" for remark in output.remarks))
 
 
 def _shown(screen: RenderableType) -> str:

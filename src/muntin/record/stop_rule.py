@@ -17,7 +17,7 @@ from pydantic import ValidationError
 
 from muntin.record.definition import STUDY_FILE, StopRule
 from muntin.record.faults import Fault, Findings, counted, number, quoted
-from muntin.record.files import NotTextError, decoded, write_atomic
+from muntin.record.files import NotTextError, decoded
 from muntin.record.keys import Keys
 
 STOP_FILE = "stop-rule.jsonl"
@@ -122,13 +122,10 @@ def read_stops(folder: Path, found: Findings) -> tuple[RecordedStop, ...]:
     return tuple(stops)
 
 
-def record_stop(
-    folder: Path, standing: Standing, recorded: Sequence[RecordedStop], today: datetime.date
-) -> Path | None:
-    """Add the rule that holds to the record where it is not there yet; return the file written.
-
-    Raises StudyFaults where the folder cannot be written.
-    """
+def stop_text(
+    standing: Standing, recorded: Sequence[RecordedStop], today: datetime.date
+) -> str | None:
+    """Return the record with the rule that holds added to it, or None where it is there already."""
     if not standing.unrecorded:
         return None
     wrong_share, best_probability = _limits(standing.rule)
@@ -139,6 +136,4 @@ def record_stop(
         wells_read=standing.wells_read,
         reason=standing.reason,
     )
-    lines = [stop.model_dump_json() for stop in (*recorded, new)]
-    write_atomic(folder / STOP_FILE, "".join(f"{line}\n" for line in lines))
-    return folder / STOP_FILE
+    return "".join(f"{stop.model_dump_json()}\n" for stop in (*recorded, new))

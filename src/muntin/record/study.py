@@ -8,10 +8,13 @@ from pathlib import Path
 
 import pandas as pd
 
+from muntin.record.changes import NO_CHANGES, Changes, changes_of
 from muntin.record.copies import copy_faults
 from muntin.record.definition import STUDY_FILE, Definition, definition_faults, sound_part
 from muntin.record.faults import Fault, Findings, StudyFaults
+from muntin.record.files import write_atomic
 from muntin.record.filled_plans import filled_plans
+from muntin.record.ledger import read_ledger
 from muntin.record.notebook import study_card, study_line
 from muntin.record.notes import Plate, read_notes
 from muntin.record.notices import column_notice, definition_notices, odd_notices, well_notices
@@ -20,11 +23,12 @@ from muntin.record.readings import INFORMING, USED, Reading
 from muntin.record.results import REDUCED, Run, join_results
 from muntin.record.stocks import read_stocks
 from muntin.record.stop_rule import (
+    STOP_FILE,
     RecordedStop,
     Standing,
     read_stops,
-    record_stop,
     standing_rule,
+    stop_text,
 )
 from muntin.record.tables import Table, table_files
 from muntin.record.toml_files import parse, read_toml
@@ -34,6 +38,7 @@ from muntin.record.wells_table import (
     shared_column_faults,
     wells_table,
 )
+from muntin.record.writing import unfinished_notice
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -64,7 +69,7 @@ class Study:
     value the model uses, raw unit), its _target and whether it was _measured; each response in the
     user's unit (the limit of a censored reading) with its _sd, _state, _side (-1 below the limit, 1
     above, else 0) and _exclude; exclude; then the columns that passed through. `stops` are the
-    stop rules on record, oldest first.
+    stop rules on record, oldest first; `changes` what differs from what earlier advice rested on.
     """
 
     folder: Path
@@ -73,6 +78,7 @@ class Study:
     plates: tuple[Plate, ...]
     notices: tuple[str, ...]
     stops: tuple[RecordedStop, ...] = ()
+    changes: Changes = NO_CHANGES
 
     def __repr__(self) -> str:
         return study_line(self)
@@ -151,7 +157,16 @@ def open_study(path: str | Path, *, reducing: bool = False, excluding: bool = Tr
     `excluding` wells and readings that were left out count as if they had not been.
     Raises StudyFaults with every fault of its files.
     """
-    folder = Path(path)
+    study = _read(Path(path), reducing=reducing, excluding=excluding)
+    ledger = read_ledger(study.folder)
+    changes = changes_of(study, ledger, _read) if excluding and not reducing else Changes()
+    told = [changes.notice, *ledger.problems[:1], unfinished_notice(study.folder)]
+    notices = (*filter(None, told), *study.notices)
+    return replace(study, notices=notices, changes=changes)
+
+
+def _read(folder: Path, reducing: bool = False, excluding: bool = True) -> Study:
+    """Read a study folder by itself, without its ledger."""
     _check_folder(folder)
     found = Findings()
     definition = _read_definition(folder, found)
@@ -179,13 +194,22 @@ def open_study(path: str | Path, *, reducing: bool = False, excluding: bool = Tr
     return replace(study, notices=(told, *study.notices)) if told else study
 
 
+def stop_file(study: Study, today: date | None = None) -> dict[Path, str]:
+    """Return the record of stop rules as it is to be written; nothing where all is on record."""
+    day = datetime.now(UTC).date() if today is None else today
+    text = stop_text(study.stopping, study.stops, day)
+    return {} if text is None else {study.folder / STOP_FILE: text}
+
+
 def keep_stop_rule(study: Study, today: date | None = None) -> Path | None:
     """Record the stop rule that holds where it is not on record yet; return the file written.
 
     Raises StudyFaults where the folder cannot be written.
     """
-    day = datetime.now(UTC).date() if today is None else today
-    return record_stop(study.folder, study.stopping, study.stops, day)
+    written = stop_file(study, today)
+    for path, text in written.items():
+        write_atomic(path, text)
+    return next(iter(written), None)
 
 
 def _check_folder(folder: Path) -> None:

@@ -2,8 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterator, Sequence
-from dataclasses import asdict, dataclass
+from collections.abc import Callable, Iterator, Mapping, Sequence
+from dataclasses import asdict, dataclass, field, replace
 from pathlib import Path
 from typing import Any, Literal, get_args
 
@@ -59,7 +59,8 @@ class Rehearsal:
     example stands in. table: a row a series, design and plate (see `table_of`). to_stop: what each
     design takes to reach the rule. after: what each still calls wrongly after each plate. against:
     the rivals' wrong share less that of the plates chosen by muntin. taken_up: series that an
-    earlier start had played. notices: what else the user should know.
+    earlier start had played. notices: what else the user should know. kept: SHA-256 of the
+    series on disk, by path in the study.
     """
 
     study: Study
@@ -72,6 +73,7 @@ class Rehearsal:
     against: pd.DataFrame
     taken_up: int
     notices: tuple[str, ...]
+    kept: Mapping[str, str] = field(default_factory=dict)
 
 
 def rehearse(
@@ -133,7 +135,8 @@ def rehearse(
             kept.write(one)
         done.append(one)
         heard(len(done), series)
-    return _told(study, settings, done, len(found), tuple(notices))
+    told = _told(study, settings, done, len(found), tuple(notices))
+    return told if kept is None else replace(told, kept=kept.digests(series, study.folder))
 
 
 def origin_of(study: Study, asked: Origin | None) -> Origin:

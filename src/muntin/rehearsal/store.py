@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import hashlib
 import json
+import os
 from collections.abc import Mapping
 from dataclasses import dataclass
 from importlib.metadata import version
@@ -41,6 +42,16 @@ class Store:
         plain = series.to_dict()
         text = json.dumps({"series": plain, "sha256": _sum(plain)}, indent=1) + "\n"
         write_atomic(self.path(series.number), text)
+
+    def digests(self, count: int, base: Path) -> dict[str, str]:
+        """The SHA-256 of the first `count` series that are there, by path below `base`."""
+        paths = [path for path in map(self.path, range(count)) if path.is_file()]
+        return {
+            os.path.relpath(path, base).replace(os.sep, "/"): hashlib.sha256(
+                path.read_bytes()
+            ).hexdigest()
+            for path in paths
+        }
 
     def take_up(self, count: int, names: tuple[str, ...]) -> tuple[list[Series], list[str]]:
         """The first `count` series as far as they are there, and the files that are spoilt.

@@ -1,63 +1,19 @@
-"""Advice on disk: one folder a revision, made whole or not at all."""
+"""Advice on disk: one folder a revision."""
 
 from __future__ import annotations
 
-import hashlib
 import json
-import platform
-import secrets
-import shutil
-from collections.abc import Iterator, Mapping
-from contextlib import contextmanager
+from collections.abc import Mapping
 from dataclasses import dataclass
-from importlib.metadata import version
 from pathlib import Path
 from typing import Any
 
-from muntin.record.definition import STUDY_FILE
-from muntin.record.faults import Fault, StudyFaults
-from muntin.record.files import write_atomic
-from muntin.record.stop_rule import STOP_FILE
+from muntin.record.inputs import hashes as hashes
+from muntin.record.inputs import input_paths as input_paths
+from muntin.record.inputs import read_inputs as read_inputs
+from muntin.record.inputs import versions as versions
 from muntin.report.facts import plain
 from muntin.report.plan_files import ADVICE, PLAN_COPY, plan_path
-
-_TABLES = (".csv", ".xlsx")
-_INPUTS = {"plates": (*_TABLES, ".toml"), "results": _TABLES, "stocks": _TABLES}
-_PACKAGES = ("muntin", "numpy", "scipy", "pandas")
-
-
-def input_paths(folder: Path) -> list[Path]:
-    """Return the input files of a study: study.toml, the stop rule on record, then plates, results
-    and stocks.
-    """
-    recorded = folder / STOP_FILE
-    paths = [folder / STUDY_FILE, *([recorded] if recorded.is_file() else [])]
-    for name, endings in _INPUTS.items():
-        here = sorted((folder / name).iterdir()) if (folder / name).is_dir() else []
-        paths += [
-            path
-            for path in here
-            if path.suffix.lower() in endings and path.is_file() and path.name[0] not in ".~"
-        ]
-    return paths
-
-
-def read_inputs(folder: Path) -> dict[str, bytes]:
-    """Return the content of a study's input files by their path in it. Raises StudyFaults."""
-    try:
-        return {p.relative_to(folder).as_posix(): p.read_bytes() for p in input_paths(folder)}
-    except OSError as error:
-        raise _fault(folder, "cannot be read", error) from None
-
-
-def hashes(inputs: Mapping[str, bytes]) -> dict[str, str]:
-    """Return the SHA-256 of each input file."""
-    return {name: hashlib.sha256(content).hexdigest() for name, content in inputs.items()}
-
-
-def versions() -> dict[str, str]:
-    """Return the versions that the numbers depend on."""
-    return {"python": platform.python_version()} | {name: version(name) for name in _PACKAGES}
 
 
 def json_text(facts: Mapping[str, Any]) -> str:
@@ -87,38 +43,11 @@ def find_place(folder: Path, plate: str, plan_text: str) -> Place:
     return Place(plan=plan, folder=revision, remark=remark)
 
 
-def write_advice(place: Place, plan_text: str, files: Mapping[str, str | bytes]) -> None:
-    """Write the files of a revision (by path in it), a copy of the plan, and the plan itself.
-
-    Raises StudyFaults where a place cannot be written; the revision is then not there.
+def advice_files(
+    place: Place, plan_text: str, files: Mapping[str, str | bytes]
+) -> dict[Path, str | bytes]:
+    """Return all files of a revision by their paths: those given (by path in it), a copy of the
+    plan, and the plan itself.
     """
-    with new_folder(place.folder) as part:
-        for name, content in {**files, PLAN_COPY: plan_text}.items():
-            write_atomic(part / name, content)
-        write_atomic(place.plan, plan_text)
-
-
-@contextmanager
-def new_folder(target: Path) -> Iterator[Path]:
-    """Give a temporary folder beside `target` that takes its name once the block has ended well.
-
-    Where the block fails nothing is left behind. Raises StudyFaults where it cannot be written.
-    """
-    part = target.with_name(f".{target.name}.{secrets.token_hex(4)}.part")
-    missing = [p for p in (target.parent, *target.parent.parents) if not p.exists()]
-    try:
-        part.mkdir(parents=True)
-        yield part
-        part.rename(target)
-    except OSError as error:
-        raise _fault(target, "cannot be written", error) from None
-    finally:
-        if part.exists():
-            shutil.rmtree(part, ignore_errors=True)
-        for made in missing:
-            if made.is_dir() and not any(made.iterdir()):
-                made.rmdir()
-
-
-def _fault(path: Path, problem: str, error: OSError) -> StudyFaults:
-    return StudyFaults([Fault(file=str(path), problem=problem, hint=error.strerror or str(error))])
+    kept = {place.folder / name: content for name, content in files.items()}
+    return {**kept, place.folder / PLAN_COPY: plan_text, place.plan: plan_text}

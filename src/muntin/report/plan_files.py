@@ -99,12 +99,18 @@ def _untouched(folder: Path, plate: str, path: Path, text: str) -> str | None:
     return same[-1].relative_to(folder).as_posix() if same else None
 
 
+def plan_files(path: Path, text: str) -> dict[Path, str]:
+    """Return the files of a plan: itself, and a copy in plans/offered/ that is to stay as it is."""
+    return {offered_path(path): text, path: text}
+
+
 def write_plan(folder: Path, plate: str, text: str) -> tuple[Path, str]:
-    """Write a plan into plans/, and a copy of it into plans/offered/, which is to stay as it is;
-    return its path and a remark. Raises StudyFaults.
+    """Write a plan and its copy, without a line in the ledger; return its path and a remark.
+
+    Raises StudyFaults.
     """
     path, remark = plan_path(folder, plate, text)
-    write_together({offered_path(path): text, path: text})
+    write_together(plan_files(path, text))
     return path, remark
 
 
@@ -120,8 +126,3 @@ def edited_path(folder: Path, plate: str) -> Path:
         number += 1
         path = path.with_name(f"{plate}.r{number}.csv")
     return path
-
-
-def write_edited(path: Path, text: str, record: str) -> None:
-    """Write an edited plan, its copy and its record; all of them or, with StudyFaults, none."""
-    write_together({record_path(path): record, offered_path(path): text, path: text})

@@ -23,9 +23,10 @@ from muntin.assay.reads import Read
 from muntin.assay.reduction import PlateReduction, Reduction
 from muntin.record.assay import READ_COLUMNS, Assay
 from muntin.record.faults import number
+from muntin.record.inputs import hashes, read_inputs, versions
 from muntin.record.readings import INFORMING
 from muntin.record.results import REDUCED
-from muntin.report.advice_files import hashes, json_text, read_inputs, versions
+from muntin.report.advice_files import json_text
 
 REDUCTIONS = "reductions"
 _NOTHING = 1e-9
@@ -39,7 +40,7 @@ _METHOD = (
 def reduction_files(reduction: Reduction, given: Sequence[Given], source: Path) -> dict[Path, str]:
     """Return the text of each file by its path."""
     folder, files = reduction.study.folder, {}
-    read = _hashed(source)
+    read = hashes_of_reads(source)
     for plate in reduction.plates:
         name = plate.inputs.plate
         mine = [one for one in given if one.plate == name]
@@ -52,8 +53,8 @@ def reduction_files(reduction: Reduction, given: Sequence[Given], source: Path) 
     return files
 
 
-def _hashed(source: Path) -> dict[str, str]:
-    """SHA-256 of each file of reads."""
+def hashes_of_reads(source: Path) -> dict[str, str]:
+    """Return the SHA-256 of each file of reads."""
     files = sorted(source.iterdir()) if source.is_dir() else [source]
     kept = {p.name: p.read_bytes() for p in files if p.is_file() and p.name[0] not in ".~"}
     return hashes(kept)

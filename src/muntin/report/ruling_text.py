@@ -65,6 +65,17 @@ def _figures(forecast: pd.DataFrame, rule: StopRule, wells: int) -> str:
     return "; ".join(parts)
 
 
+def decision_facts(plan: Plan) -> dict[str, Any]:
+    """Return the verdict on another plate as the ledger keeps it."""
+    ruling = plan.ruling
+    return {
+        "plate": plan.plate,
+        "verdict": ruling.word,
+        "of": ruling.because,
+        "wells": ruling.wells,
+    }
+
+
 def ruling_facts(study: Study, plan: Plan) -> dict[str, Any]:
     """Return the verdict with its sentence, and the stop rule that holds with its record."""
     standing, rule = study.stopping, study.stopping.rule or StopRule()

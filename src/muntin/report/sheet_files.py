@@ -1,17 +1,12 @@
-"""The sheets of a plan on disk: one folder a plan, made whole or not at all."""
+"""The sheets of a plan: one folder a plan."""
 
 from __future__ import annotations
 
-import secrets
-import shutil
 import textwrap
 from collections.abc import Mapping
 from pathlib import Path
 
 from muntin.bench.sheets import Sheets
-from muntin.record.faults import StudyFaults
-from muntin.record.files import write_atomic
-from muntin.report.advice_files import new_folder
 from muntin.report.checklist import checklist_lines
 from muntin.report.figures import saved
 from muntin.report.plate_map import draw_plate_map
@@ -62,41 +57,12 @@ def _condition_lines(sheets: Sheets) -> list[str]:
     return lines
 
 
-def write_sheets(folder: Path, files: Mapping[str, str | bytes]) -> str:
-    """Write the files of the sheets, and return a remark on what they replace.
+def sheets_replaced(folder: Path, files: Mapping[str, str | bytes]) -> tuple[list[Path], str]:
+    """Return which earlier sheets have to go, as the new ones are not called so, and a remark.
 
-    Earlier sheets in the folder make way all at once, files of others in it stay. Raises
-    StudyFaults where it cannot be written; what was there is then untouched.
+    Files of others in the folder stay.
     """
     if not folder.is_dir():
-        _write(folder, files, {})
-        return ""
-    there = {p.name: p for p in folder.iterdir()}
-    kept = {name: path for name, path in there.items() if name not in (*_OWN, *_OWN_TABLES)}
-    old = folder.with_name(f".{folder.name}.{secrets.token_hex(4)}.old")
-    try:
-        _write(folder, files, kept, old)
-    except StudyFaults:
-        if old.exists() and not folder.exists():
-            old.rename(folder)
-        raise
-    shutil.rmtree(old, ignore_errors=True)
-    return "Replaces the sheets that were there."
-
-
-def _write(
-    folder: Path,
-    files: Mapping[str, str | bytes],
-    kept: Mapping[str, Path],
-    old: Path | None = None,
-) -> None:
-    with new_folder(folder) as part:
-        for name, content in files.items():
-            write_atomic(part / name, content)
-        for name, path in kept.items():
-            if path.is_dir():
-                shutil.copytree(path, part / name)
-            else:
-                shutil.copy2(path, part / name)
-        if old is not None:
-            folder.rename(old)
+        return [], ""
+    old = [folder / name for name in (*_OWN, *_OWN_TABLES) if name not in files]
+    return [path for path in old if path.is_file()], "Replaces the sheets that were there."

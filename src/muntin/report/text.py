@@ -284,8 +284,8 @@ def propose_screen(view: Assessment, plan: Plan, path: Path, remark: str) -> Ren
     whole, cut = _tables(view, plan)
     sections = plan_sections(view, plan, [*whole, *cut][0])
     edited = ("Edited", [] if plan.edit is None else edit_lines(plan, plan.edit))
-    told = view.study.stopping.notice
-    noted = ("Noted", [told] if told else [])
+    told = (view.study.changes.notice, view.study.stopping.notice)
+    noted = ("Noted", [line for line in told if line])
     return sheet(view.study.definition.title, [noted, edited, *sections, written])
 
 
