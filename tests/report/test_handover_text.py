@@ -98,7 +98,7 @@ def test_whole_text():
         "To the edge, one factor moved at a time: pH 0.47 down, none up (the range ends at 7.5); "
         "Salt 70 mM down, 50 mM up (a limit of the study).",
         "Worst corner of the tolerance: pH 5.5 and Salt 238 mM: 88.0 % of new wells pass.",
-        "Best wells so far: Recovery 0.969 in plate-01 D7, of which a repeat is expected to read "
+        "Best well so far: Recovery 0.969 in plate-01 D7, of which a repeat is expected to read "
         "0.914 (0.833 to 0.993). Repeat the set point before believing it: 4 wells of a new plate, "
         "3.7 of them expected to pass.",
     ]

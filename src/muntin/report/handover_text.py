@@ -103,7 +103,8 @@ def repeat_line(definition: Definition, handed: HandOver) -> str:
     """Return what repeating the best wells is expected to bring, and the repeat proposed."""
     labels = {r.name: r.label for r in definition.responses}
     told = [_repeat(labels[repeat.response], repeat) for repeat in handed.optimism.best_run]
-    before = f"Best wells so far: {'; '.join(told)}. " if told else ""
+    best = "Best well so far" if len(told) == 1 else "Best wells so far"
+    before = f"{best}: {'; '.join(told)}. " if told else ""
     return before + proposal_text(handed)
 
 
