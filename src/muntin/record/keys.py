@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import re
+import typing
 from typing import Annotated, Any
 
 import numpy as np
@@ -36,6 +37,19 @@ def key(default: Any = ..., *, says: str, unit: str = "", example: Any = None, *
     return Field(
         default, description=says, json_schema_extra={"unit": unit, "example": example}, **rules
     )
+
+
+def inner_model(annotation: Any) -> type[BaseModel] | None:
+    """Return the table of keys that an annotation holds, alone or in a tuple; None for a value."""
+    if isinstance(annotation, type) and issubclass(annotation, BaseModel):
+        return annotation
+    inner = (inner_model(part) for part in typing.get_args(annotation))
+    return next((model for model in inner if model is not None), None)
+
+
+def is_list(annotation: Any) -> bool:
+    """Whether an annotation is that of several tables of keys, each headed [[name]]."""
+    return typing.get_origin(annotation) is tuple and inner_model(annotation) is not None
 
 
 def _column_name(text: str) -> str:
