@@ -8,10 +8,8 @@ from pydantic import BaseModel
 
 from muntin.record import open_study
 from muntin.record.definition import Definition
-from muntin.record.keys import inner_model
 from muntin.record.factors import Factor
-from muntin.record.keys import Amount
-
+from muntin.record.keys import Amount, inner_model
 from tests.record.conftest import STUDY
 
 

@@ -152,8 +152,14 @@ def _fault(file: str, model: type[BaseModel], data: dict[str, Any], detail: Any)
     if detail["type"] == "tuple_type" and isinstance(detail["input"], dict):
         problem = f"must be one or more tables, each headed [[{last}]]"
     shown = quoted(detail["input"]) if isinstance(detail["input"], str | int | float) else ""
+    day = iso_day(shown.strip('"')) if detail["type"].startswith("date_") else None
     return Fault(
-        file=file, where=", ".join([*table, last]), value=shown, problem=problem, allowed=allowed
+        file=file,
+        where=", ".join([*table, last]),
+        value=shown,
+        problem=problem,
+        allowed=allowed,
+        hint=f"write {day}" if day else "",
     )
 
 

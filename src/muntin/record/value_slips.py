@@ -16,7 +16,7 @@ _WITH_UNIT = re.compile(rf"({_DIGITS})\s*(%|°|[^\W\d_]).*")
 _DAY = re.compile(r"([0-9]{1,4})([./-])\s?([0-9]{1,2})\2\s?([0-9]{1,4})")
 _BARE_LIST = re.compile(r"\[([^\[\]\"'{}=]+)\]")
 _TEXTS = re.compile(r'"[^"]*"(?:\s*,\s*"[^"]*")+')
-_QUOTES = "\"'“”„«»‘’"  # noqa: RUF001 - a word processor's quotation marks
+_QUOTES = "\"'“”„«»‘’"
 
 Takes = Callable[[str], bool]
 
@@ -37,11 +37,11 @@ def mended(value: str, takes: Takes) -> Mended | None:
 
     takes: whether the value's key takes a text.
     """
-    for slip in (_unquoted_end, _curly, _number, _day, _with_unit, _list, _texts):
-        found = slip(value, takes)
+    for slip in (_unquoted_end, _curly, _number, _day, _list, _texts):
+        found = slip(value)
         if found is not None and (not found.value or readable(found.value)):
             return found
-    return _text(value, takes)
+    return _with_unit(value, takes) or _text(value, takes)
 
 
 def readable(value: str) -> bool:
@@ -71,7 +71,7 @@ def iso_day(text: str) -> str | None:
     return None
 
 
-def _unquoted_end(value: str, takes: Takes) -> Mended | None:
+def _unquoted_end(value: str) -> Mended | None:
     sign = value[:1]
     if sign in ('"', "'") and sign not in value[1:]:
         return Mended("has no closing quotation mark:", json.dumps(value[1:], ensure_ascii=False))
@@ -80,14 +80,14 @@ def _unquoted_end(value: str, takes: Takes) -> Mended | None:
     return None
 
 
-def _curly(value: str, takes: Takes) -> Mended | None:
+def _curly(value: str) -> Mended | None:
     if value[:1] in _QUOTES[2:] and value[1:] and value[-1] in _QUOTES:
         text = json.dumps(value.strip(_QUOTES), ensure_ascii=False)
         return Mended("needs straight quotation marks:", text)
     return None
 
 
-def _number(value: str, takes: Takes) -> Mended | None:
+def _number(value: str) -> Mended | None:
     if not _NUMBER.fullmatch(value):
         return None
     problem = "needs a decimal point, not a comma:" if "," in value else "must be written"
@@ -101,7 +101,7 @@ def _plain_number(text: str) -> str:
     return sign + (whole.lstrip("0") or "0") + (point and point + (decimals or "0"))
 
 
-def _day(value: str, takes: Takes) -> Mended | None:
+def _day(value: str) -> Mended | None:
     if not _DAY.fullmatch(value):
         return None
     day = iso_day(value)
@@ -120,7 +120,7 @@ def _with_unit(value: str, takes: Takes) -> Mended | None:
     return Mended(f"must stand without {what}:", _plain_number(found[1]))
 
 
-def _list(value: str, takes: Takes) -> Mended | None:
+def _list(value: str) -> Mended | None:
     found = _BARE_LIST.fullmatch(value)
     if found is None:
         return None
@@ -129,7 +129,7 @@ def _list(value: str, takes: Takes) -> Mended | None:
     return Mended("needs quotation marks:", f"[{', '.join(shown)}]")
 
 
-def _texts(value: str, takes: Takes) -> Mended | None:
+def _texts(value: str) -> Mended | None:
     return Mended("needs brackets:", f"[{value}]") if _TEXTS.fullmatch(value) else None
 
 
