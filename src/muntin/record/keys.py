@@ -113,4 +113,19 @@ def _amount(value: object) -> Amount:
     return Amount(value=float(value))
 
 
+def _share(value: object) -> object:
+    """Return the share that "5 %" stands for; any other value as it is."""
+    if isinstance(value, str) and (found := _PER_CENT.fullmatch(value)):
+        share = float(found[1].replace(",", ".")) / 100
+        if not 0 < share < 1:
+            raise ValueError("must lie above 0 % and below 100 %")
+        return share
+    if isinstance(value, bool) or not isinstance(value, int | float):
+        raise ValueError('is neither a number from 0 to 1 nor a share such as "5 %"')
+    if 1 < value <= 100:
+        raise ValueError(f'must lie below 1 (for per cent write "{value:g} %")')
+    return value
+
+
+ShareKey = Annotated[Number, BeforeValidator(_share)]
 AmountKey = Annotated[Amount, BeforeValidator(_amount)]

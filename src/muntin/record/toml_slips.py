@@ -11,22 +11,67 @@ from pydantic import BaseModel, ValidationError
 
 from muntin.record.faults import Fault
 from muntin.record.keys import inner_model, is_list
-from muntin.record.value_slips import mended, readable
+from muntin.record.value_slips import Wanted, mended, readable
 
 _PLACE = re.compile(r" \(at (?:line (\d+), column \d+|(end of document))\)$")
-_HEADING = re.compile(r"\s*(\[{1,2}\s*([A-Za-z_][\w.]*)\s*\]{0,2})\s*(?:#.*)?")
+_HEADING = re.compile(r"\s*(\[{0,2}\s*([A-Za-z_][\w.]*)\s*(\]{0,2}))\s*(?:#.*)?")
 _PAIR = re.compile(r"\s*([A-Za-z_]\w*)\s*=\s*(.*?)\s*")
-_NO_EQUALS = re.compile(r"\s*([A-Za-z_]\w*)\s*[:\s]\s*([^=\s].*?)\s*")
+_COMMENT = re.compile(r"\s+#.*")
+_ODD_BLANK = re.compile("[\u00a0\u2007\u202f\u200b]")
+_OF_SHARES = re.compile(r"\s*kind\s*=\s*\"?fraction\b")
+_IN_PER_CENT = re.compile(r"\s*unit\s*=\s*\"%\"")
 
 
 class _Slip(NamedTuple):
-    """A line with a slip: its index, its fault (None: found when the key is read), the line as it
-    was meant (None: it cannot be told).
+    """Lines with a slip: the index of the first, the fault (None: found when the key is read), the
+    line that was meant (None: it cannot be told), and how many lines it stands for.
     """
 
     row: int
     fault: Fault | None
     line: str | None
+    lines: int = 1
+
+
+class _Text(NamedTuple):
+    """The lines of a file, what it describes, and its path in messages."""
+
+    lines: list[str]
+    model: type[BaseModel]
+    file: str
+
+    def fault(self, row: int, name: str, value: str, problem: str, allowed: str = "") -> Fault:
+        shown = value if len(value) <= 60 else f"{value[:57]}..."
+        where = f"line {row + 1}" + (f", {name}" if name else "")
+        return Fault(file=self.file, where=where, value=shown, problem=problem, allowed=allowed)
+
+    def table(self, row: int) -> str:
+        """Return the name of the table that a line belongs to, "" above the first heading."""
+        headings = (_headed(line) for line in reversed(self.lines[:row]))
+        return next((found for found in headings if found), "")
+
+    def block(self, row: int) -> list[str]:
+        """Return the lines of the table that a line belongs to."""
+        starts = [at for at, line in enumerate(self.lines) if _headed(line)]
+        first = max((at for at in starts if at <= row), default=0)
+        last = min((at for at in starts if at > row), default=len(self.lines))
+        return self.lines[first:last]
+
+    def owner(self, row: int) -> type[BaseModel] | None:
+        """Return the table of keys that a line belongs to; None where any key may stand."""
+        owner: type[BaseModel] | None = self.model
+        for step in filter(None, self.table(row).split(".")):
+            fields = {} if owner is None else owner.model_fields
+            known = {info.alias or name: info.annotation for name, info in fields.items()}
+            owner = inner_model(known.get(step))
+        return owner
+
+    def wanted(self, row: int, name: str) -> Wanted:
+        """Return what the key of a line takes."""
+        owner, block = self.owner(row), self.block(row)
+        of_shares = any(_OF_SHARES.match(line) for line in block)
+        share = of_shares and not any(_IN_PER_CENT.match(line) for line in block)
+        return Wanted(lambda value: owner is None or _takes(owner, name, value), share)
 
 
 def toml_content(
@@ -37,26 +82,28 @@ def toml_content(
     Each slip is a fault, so that nothing is used, but all else can still be judged. None where
     something is left that is not TOML. Raises RecursionError where it is nested too deeply.
     """
-    lines = text.replace("\r\n", "\n").rstrip("\n").split("\n")
+    given = _Text(
+        text.replace("\r\n", "\n").replace("\r", "\n").rstrip("\n").split("\n"), model, file
+    )
     touched: set[int] = set()
     while True:
         try:
-            data = tomllib.loads("\n".join(lines) + "\n")
+            data = tomllib.loads("\n".join(given.lines) + "\n")
         except tomllib.TOMLDecodeError as error:
-            slips = list(_line_slips(lines, str(error), model, file))
+            slips = list(_line_slips(given, str(error)))
             if not slips or any(slip.row in touched for slip in slips):
                 faults.append(_plain_fault(str(error), file))
                 return None
         else:
             wrong = (name for name in model.model_fields if _misheaded(model, name, data))
-            slips = [slip for name in wrong for slip in _heading_slips(lines, name, model, file)]
+            slips = [slip for name in wrong for slip in _heading_slips(given, name)]
             if not slips:
                 return data
+        faults.extend(slip.fault for slip in slips if slip.fault)
         for slip in slips:
-            faults.extend([slip.fault] if slip.fault else [])
             if slip.line is None:
                 return None
-            lines[slip.row] = slip.line
+            given.lines[slip.row : slip.row + slip.lines] = [slip.line, *[""] * (slip.lines - 1)]
             touched.add(slip.row)
 
 
@@ -67,21 +114,40 @@ def _plain_fault(said: str, file: str) -> Fault:
     return Fault(file=file, where=where, problem=f"is not valid TOML: {said[:1].lower()}{said[1:]}")
 
 
-def _line_slips(lines: list[str], said: str, model: type[BaseModel], file: str) -> Iterator[_Slip]:
+def _line_slips(given: _Text, said: str) -> Iterator[_Slip]:
     """Yield the slips behind what the parser said, most often one in the line that it names."""
     place = _PLACE.search(said)
-    if place is None or not place[1]:
+    if place is None:
         return
-    row = int(place[1]) - 1
-    heading, pair = _HEADING.fullmatch(lines[row]), _PAIR.fullmatch(lines[row])
-    if heading:
-        yield from _heading_slips(lines, heading[2], model, file)
-    elif pair and said.startswith("Cannot overwrite"):
-        yield _Slip(row, _twice(lines, row, pair[1], model, file), None)
-    elif pair:
-        yield from _value_slip(lines, row, pair[1], pair[2], model, file)
-    elif bare := _NO_EQUALS.fullmatch(lines[row]):
-        yield from _missing_equals(lines, row, bare[1], bare[2], model, file)
+    row = int(place[1]) - 1 if place[1] else len(given.lines) - 1
+    line = given.lines[row]
+    pair = _PAIR.fullmatch(line)
+    if _ODD_BLANK.search(line):
+        plain = _ODD_BLANK.sub(" ", line)
+        problem = "has a blank of another kind, as word processors make; type it anew:"
+        yield _Slip(row, given.fault(row, "", line.strip(), problem, plain.strip()), plain)
+    elif headings := [*_broken_headings(given, row)]:
+        yield from headings
+    elif said.startswith("Cannot"):
+        yield _Slip(row, _twice(given, row), None)
+    elif values := [*_open_value(given, row)]:
+        yield from values
+    elif pair and not pair[2]:
+        problem = "has no value; give one, or write # before the key"
+        yield _Slip(row, given.fault(row, pair[1], "", problem), "")
+    elif not (pair and place[1] and readable(pair[2])):
+        yield from _loose_pair(given, row)
+
+
+def _headed(line: str) -> str:
+    """Return the name of the table that a line is the heading of, "" where it is none."""
+    found = _HEADING.fullmatch(line)
+    return found[2] if found and ("[" in found[1] or found[3]) else ""
+
+
+def _broken_headings(given: _Text, row: int) -> Iterator[_Slip]:
+    if name := _headed(given.lines[row]):
+        yield from _heading_slips(given, name)
 
 
 def _misheaded(model: type[BaseModel], name: str, data: dict[str, Any]) -> bool:
@@ -94,93 +160,94 @@ def _misheaded(model: type[BaseModel], name: str, data: dict[str, Any]) -> bool:
     return isinstance(given, dict) if is_list(annotation) else tables
 
 
-def _heading_slips(
-    lines: list[str], name: str, model: type[BaseModel], file: str
-) -> Iterator[_Slip]:
+def _heading_slips(given: _Text, name: str) -> Iterator[_Slip]:
     """Yield all headings of one table of the model that have other brackets than they must."""
-    info = model.model_fields.get(name)
+    info = given.model.model_fields.get(name)
     if info is None:
         return
     many = is_list(info.annotation)
     right = f"[[{name}]]" if many else f"[{name}]"
-    for row, line in enumerate(lines):
+    for row, line in enumerate(given.lines):
         found = _HEADING.fullmatch(line)
-        if found and found[2] == name and "".join(found[1].split()) != right:
+        if found and _headed(line) == name and "".join(found[1].split()) != right:
             problem = f"needs {'double' if many else 'single'} brackets:"
-            where = f"line {row + 1}"
-            fault = Fault(file=file, where=where, value=found[1], problem=problem, allowed=right)
-            yield _Slip(row, fault, right)
+            yield _Slip(row, given.fault(row, "", found[1], problem, right), right)
 
 
-def _twice(lines: list[str], row: int, name: str, model: type[BaseModel], file: str) -> Fault:
-    table = _table(lines, row)
-    info = model.model_fields.get(table)
+def _twice(given: _Text, row: int) -> Fault:
+    line = given.lines[row]
+    if name := _headed(line):
+        return given.fault(row, "", line.strip(), "is there twice; keep one")
+    table, name = given.table(row), line.partition("=")[0].strip()
+    info = given.model.model_fields.get(table)
     several = info is not None and is_list(info.annotation)
-    return Fault(
-        file=file,
-        where=f"line {row + 1}",
-        value=f'"{name}"',
-        problem="is there twice in one table",
-        hint=f"each of the {table} has its own [[{table}]] above it" if several else "keep one",
-    )
+    mend = f"each of the {table} has its own [[{table}]] above it" if several else "keep one"
+    return given.fault(row, "", f'"{name}"', f"is there twice in one table; {mend}")
 
 
-def _value_slip(
-    lines: list[str], row: int, name: str, value: str, model: type[BaseModel], file: str
-) -> Iterator[_Slip]:
-    if not any(sign in value for sign in "\"'"):
-        value = re.sub(r"\s*#.*", "", value)
-    where = f"line {row + 1}, {name}"
-    if not value:
-        problem = "has no value; give one, or write # before the key"
-        yield _Slip(row, Fault(file=file, where=where, problem=problem), "")
+def _open_value(given: _Text, row: int) -> Iterator[_Slip]:
+    """Yield the slip of the first value up to a line that TOML does not read, lists joined."""
+    for at, line in enumerate(given.lines[: row + 1]):
+        pair = _PAIR.fullmatch(line)
+        if pair is None or pair[2][:1] in ("", "=", ":"):
+            continue
+        value, count = _joined(given.lines, at, pair[2])
+        if readable(value):
+            continue
+        if slip := mended(value, given.wanted(at, pair[1])):
+            fault = given.fault(at, pair[1], value, slip.problem, slip.value)
+            meant = f"{pair[1]} = {slip.value}" if slip.value else None
+            yield _Slip(at, fault if slip.problem else None, meant, count)
         return
-    owner = _owner(lines, row, model)
-    slip = mended(value, lambda text: owner is None or _takes(owner, name, text))
-    if slip is None:
+
+
+def _joined(lines: list[str], row: int, value: str) -> tuple[str, int]:
+    """Return a value without its comment, a list over several lines as one, and how many lines."""
+    parts = [_uncommented(value)]
+    if value.startswith("["):
+        for line in lines[row + 1 :]:
+            if "]" in parts[-1] or _headed(line) or _PAIR.fullmatch(line):
+                break
+            parts.append(_uncommented(line))
+    return " ".join(part for part in parts if part), len(parts)
+
+
+def _uncommented(value: str) -> str:
+    if readable(value):
+        return value
+    bare = _COMMENT.sub("", f" {value}").strip()
+    return bare if readable(bare) or not any(sign in value for sign in "\"'") else value.strip()
+
+
+def _loose_pair(given: _Text, row: int) -> Iterator[_Slip]:
+    """Yield the slip of a line that is meant as a key and its value, or as a note."""
+    line, owner = given.lines[row].strip(), given.owner(row)
+    found = _loose(line, owner)
+    if found is None:
+        problem = "is neither a key = value nor a [table]; a note begins with #"
+        yield _Slip(row, given.fault(row, "", f'"{line}"', problem), "")
         return
-    shown = value if len(value) <= 60 else f"{value[:57]}..."
-    fault = Fault(file=file, where=where, value=shown, problem=slip.problem, allowed=slip.value)
-    line = f"{name} = {slip.value}" if slip.value else None
-    yield _Slip(row, fault if slip.problem else None, line)
+    name, value = found
+    slip = None if readable(value) else mended(value, given.wanted(row, name))
+    if readable(value) or (slip and slip.value):
+        meant = f"{name} = {slip.value if slip else value}"
+        yield _Slip(row, given.fault(row, "", line, "must be written", meant), meant)
 
 
-def _missing_equals(
-    lines: list[str], row: int, name: str, value: str, model: type[BaseModel], file: str
-) -> Iterator[_Slip]:
-    owner = _owner(lines, row, model)
-    if readable(value) and owner is not None and name in owner.model_fields:
-        line = f"{name} = {value}"
-        fault = Fault(
-            file=file,
-            where=f"line {row + 1}",
-            value=f'"{name}"',
-            problem="needs a = before its value:",
-            allowed=line,
-        )
-        yield _Slip(row, fault, line)
+def _loose(line: str, owner: type[BaseModel] | None) -> tuple[str, str] | None:
+    """Return the known key and the value that stand in a line, whatever is between them."""
+    for pattern in (r"\s*[:=<>≤≥]+\s*", r"\s+"):
+        name, *rest = re.split(pattern, line, maxsplit=1)
+        name = re.sub(r"[ -]+", "_", name)
+        if rest and rest[0] and owner is not None and name in owner.model_fields:
+            return name, _uncommented(rest[0])
+    return None
 
 
-def _table(lines: list[str], row: int) -> str:
-    """Return the name of the table that a line belongs to, "" above the first heading."""
-    headings = (_HEADING.fullmatch(line) for line in reversed(lines[:row]))
-    return next((found[2] for found in headings if found), "")
-
-
-def _owner(lines: list[str], row: int, model: type[BaseModel]) -> type[BaseModel] | None:
-    """Return the table of keys that a line belongs to; None where any key may stand."""
-    owner: type[BaseModel] | None = model
-    for step in filter(None, _table(lines, row).split(".")):
-        fields = {} if owner is None else owner.model_fields
-        known = {info.alias or name: info.annotation for name, info in fields.items()}
-        owner = inner_model(known.get(step))
-    return owner
-
-
-def _takes(model: type[BaseModel], name: str, text: str) -> bool:
-    """Whether a key takes a text."""
+def _takes(model: type[BaseModel], name: str, value: Any) -> bool:
+    """Whether a key takes a value."""
     try:
-        model.model_validate({name: text})
+        model.model_validate({name: value})
     except ValidationError as error:
         return not any(detail["loc"][:1] == (name,) for detail in error.errors())
     return True
