@@ -261,7 +261,8 @@ KEYS = {
         study("at_most = 100", "at_most = 100\npriors = { noise = { median = 1, log_sd = 1 } }"),
         [
             'study.toml, responses, hcp, priors: "noise" is not a key of [responses.priors] '
-            '(did you mean "noise_sd"?)'
+            '(did you mean "noise_sd"? known: mean_sd, process_sd, curvature_sd, length_scale, '
+            "noise_sd, scale_error, inside_error, ceiling_gap)"
         ],
     ),
     "ceiling_of_a_positive_response": (

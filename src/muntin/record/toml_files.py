@@ -91,7 +91,7 @@ def _known_keys(
                     where=", ".join(at),
                     value=quoted(name),
                     problem="is not a key" + (f" of {_heading(at)}" if at else ""),
-                    hint=_meant(name, [*fields], top),
+                    hint=_meant(name, [*fields], top, at),
                 )
             )
             continue
@@ -109,10 +109,12 @@ def _known_keys(
     return kept
 
 
-def _meant(name: str, fields: Sequence[str], top: Sequence[str]) -> str:
+def _meant(name: str, fields: Sequence[str], top: Sequence[str], at: Sequence[str]) -> str:
     if name in top and name not in fields:
         return "it is no part of a table: write it above the first [table]"
-    return did_you_mean(name, fields)
+    close = did_you_mean(name, fields)
+    asked = close.startswith("did you mean") and at[-1:] == ("priors",)
+    return f"{close} known: {', '.join(fields)}" if asked else close
 
 
 def _item(table: str, index: int, item: object) -> str:
