@@ -273,13 +273,19 @@ def test_protein_that_is_used_up(view):
     ]
 
 
-def test_both_reasons_in_one_report(view):
-    scarce = {"available_mg": 10.0, "per_well_mg": 0.25}
-    lines = faults(changed(view, protein=scarce), wells=200)
-    assert [line.split(";")[0] for line in lines] == [
-        "wells: 200 is more than the plate has room for",
-        "wells: 200 is more than the protein allows",
-    ]
+@pytest.mark.parametrize("available", [10.0, 40.0])
+def test_plate_and_protein_in_one_fault_with_one_number(view, available):
+    scarce = changed(view, protein={"available_mg": available, "per_well_mg": 0.25})
+    (line,) = faults(scarce, wells=200)
+    assert line.startswith("wells: 200 is more than plate and protein allow; ask for ")
+    assert line.endswith(
+        " mg left beyond the reserve; 4 bridging wells and 8 controls come on top)"
+    )
+    most = int(line.split("ask for ")[1].split(" (")[0])
+    assert len(muntin.propose(scarce, wells=most, seed=1).wells.query("role == 'test'")) == most
+    (more,) = faults(scarce, wells=most + 1)
+    binding = "the protein allows" if available == 10.0 else "the plate has room for"
+    assert more.startswith(f"wells: {most + 1} is more than {binding}; ask for {most} (")
 
 
 def test_an_opening_plate_needs_no_room_for_bridging_wells(tmp_path):

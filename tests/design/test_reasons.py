@@ -30,8 +30,12 @@ def said(picks, p_mean, p_now=None, opening=False, definition=DEFINITION, candid
     ("purpose", "p", "now", "sentence"),
     [
         ("edge", 0.5, 0.468, "probability 0.47, on the edge at pH 5.6"),
-        ("edge", 0.2, 0.11, "probability 0.11, on the edge at pH 5.6"),
-        ("edge", 0.95, 0.89, "probability 0.89, on the edge at pH 5.6"),
+        ("edge", 0.2, 0.11, "probability 0.11, just outside the edge at pH 5.6"),
+        ("edge", 0.95, 0.89, "probability 0.89, just inside the edge at pH 5.6"),
+        ("edge", 0.2, 0.29, "probability 0.29, just outside the edge at pH 5.6"),
+        ("edge", 0.2, 0.31, "probability 0.31, on the edge at pH 5.6"),
+        ("edge", 0.8, 0.69, "probability 0.69, on the edge at pH 5.6"),
+        ("edge", 0.8, 0.71, "probability 0.71, just inside the edge at pH 5.6"),
         ("edge", 0.2, 0.09, "probability 0.09, outside the edge at pH 5.6"),
         ("edge", 0.2, 0.02, "probability 0.02, outside the edge at pH 5.6"),
         (
@@ -48,7 +52,7 @@ def said(picks, p_mean, p_now=None, opening=False, definition=DEFINITION, candid
             "probability 0.93, reads the new plate's own error where the target is met",
         ),
         ("edge", 0.99, 0.6, "probability 0.60, on the edge at pH 5.6"),
-        ("best", 0.99, 0.97, "probability 0.97, may beat the best condition so far"),
+        ("best", 0.99, 0.97, "probability 0.97, the best condition or one that may beat it"),
     ],
 )
 def test_a_condition_that_was_not_run(purpose, p, now, sentence):
@@ -60,7 +64,7 @@ def test_a_condition_that_was_run_names_its_last_well():
     picks = [Pick(1, "test", "edge")]
     assert said(picks, [0.6]) == ["repeats plate-02 A1: probability 0.60, on the edge at pH 6.0"]
     picks = [Pick(1, "test", "best")]
-    sentence = "repeats plate-02 A1: probability 0.60, may beat the best condition so far"
+    sentence = "repeats plate-02 A1: probability 0.60, the best condition or one that may beat it"
     assert said(picks, [0.6]) == [sentence]
 
 

@@ -27,7 +27,7 @@ def limit(text: str) -> dict[str, str]:
 KEYS = {
     "broken_toml": (
         study('title = "Small invented study"', 'title = "Small'),
-        ["study.toml, line 2: is not valid TOML: illegal character '\\n'"],
+        ['study.toml, line 2, title: "Small has no closing quotation mark: "Small"'],
     ),
     "not_text": ({TOML: b"\x00\x01\x02"}, ["study.toml: is not a text file"]),
     "no_study_table": (
@@ -62,10 +62,9 @@ KEYS = {
     ),
     "factors_as_one_table": (
         {
-            TOML: '[study]\ntitle = "x"\n[factors]\nname = "ph"\n'
-            '[[responses]]\nname = "y1"\nkind = "real"'
+            TOML: STUDY.replace("[[factors]]", "[factors]", 1),
         },
-        ["study.toml, factors: must be one or more tables, each headed [[factors]]"],
+        ["study.toml, line 4: [factors] needs double brackets: [[factors]]"],
     ),
     "low_above_high": (
         study("low = 4.5", "low = 8"),
@@ -262,7 +261,8 @@ KEYS = {
         study("at_most = 100", "at_most = 100\npriors = { noise = { median = 1, log_sd = 1 } }"),
         [
             'study.toml, responses, hcp, priors: "noise" is not a key of [responses.priors] '
-            '(did you mean "noise_sd"?)'
+            '(did you mean "noise_sd"? known: mean_sd, process_sd, curvature_sd, length_scale, '
+            "noise_sd, scale_error, inside_error, ceiling_gap)"
         ],
     ),
     "ceiling_of_a_positive_response": (
@@ -292,7 +292,10 @@ KEYS = {
     ),
     "probability": (
         study("title", "required_probability = 90\ntitle"),
-        ["study.toml, study, required_probability: 90 must lie below 1"],
+        [
+            "study.toml, study, required_probability: 90 must lie below 1 "
+            '(for per cent write "90 %")'
+        ],
     ),
     "limit_not_arithmetic": (
         limit("__import__('os').getcwd() < 3"),
@@ -376,7 +379,7 @@ KEYS = {
     ),
     "stop": (
         {TOML: STUDY + "[stop]\nwrong_share = 2\n"},
-        ["study.toml, stop, wrong_share: 2 must lie below 1"],
+        ['study.toml, stop, wrong_share: 2 must lie below 1 (for per cent write "2 %")'],
     ),
     "fixed_value": (
         {TOML: STUDY + "[fixed]\nstages = true\n"},
@@ -787,7 +790,7 @@ def test_tables_are_judged_though_a_factor_is_at_fault(make):
 
 def test_wells_are_judged_though_study_toml_cannot_be_read(make):
     with pytest.raises(StudyFaults) as raised:
-        open_study(make({TOML: "[study\n", **plate("A02", "A1")}))
+        open_study(make({TOML: "[study]\ntitle = {\n", **plate("A02", "A1")}))
     assert [fault.file for fault in raised.value.faults] == [TOML, CSV]
 
 

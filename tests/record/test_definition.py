@@ -9,8 +9,7 @@ from pydantic import BaseModel
 from muntin.record import open_study
 from muntin.record.definition import Definition
 from muntin.record.factors import Factor
-from muntin.record.keys import Amount
-from muntin.record.toml_files import _inner_model
+from muntin.record.keys import Amount, inner_model
 from tests.record.conftest import STUDY
 
 
@@ -177,7 +176,7 @@ def test_amounts_absolute_and_relative():
 
 
 def _models(model: type[BaseModel]) -> list[type[BaseModel]]:
-    inner = [_inner_model(info.annotation) for info in model.model_fields.values()]
+    inner = [inner_model(info.annotation) for info in model.model_fields.values()]
     found = [one for one in inner if one is not None and one is not Amount]
     return [model, *(deep for one in found for deep in _models(one))]
 

@@ -130,3 +130,8 @@ def test_the_number_of_factors_is_bounded(tmp_path, factors):
 )
 def test_values_survive_toml(value):
     assert tomllib.loads(f"key = {toml_value(value)}")["key"] == value
+
+
+def test_names_of_priors_are_listed():
+    said = " ".join(study_text().replace("\n#", " ").split())
+    assert "noise_sd, scale_error, inside_error, ceiling_gap" in said

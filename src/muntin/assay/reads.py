@@ -133,7 +133,7 @@ def _absorbance(cell: str, file: str, where: str, found: Findings) -> tuple[floa
     try:
         return parse_number(text), over is not None
     except CellError as error:
-        hint = 'write ">" and the limit, or "over", where the reader could not tell'
+        hint = error.hint or 'write ">" and the limit, or "over", where the reader could not tell'
         found.faults.append(
             Fault(file=file, where=where, value=quoted(cell), problem=str(error), hint=hint)
         )
@@ -244,7 +244,7 @@ def _dilution(table: Table, row: int, found: Findings) -> float:
     try:
         factor = parse_number(part[1] if part else cell, table.comma)
     except CellError as error:
-        hint = "write the factor, 5, or one part in so many, 1:5"
+        hint = error.hint or "write the factor, 5, or one part in so many, 1:5"
         found.faults.append(table.fault(row, "dilution", str(error), hint=hint))
         return float("nan")
     if factor < 1:

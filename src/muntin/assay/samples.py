@@ -221,12 +221,19 @@ def _added(plate: str, row: Row, fraction: str, usual: float, found: Findings) -
         volume = parse_number(text)
         if volume > 0:
             return volume
-        problem = "must lie above 0"
+        problem, hint = "must lie above 0", ""
     except CellError as error:
-        problem = str(error)
+        problem, hint = str(error), error.hint
     where = f"well {row['well']}"
     found.faults.append(
-        Fault(file=f"plates/{plate}", where=where, column=column, value=text, problem=problem)
+        Fault(
+            file=f"plates/{plate}",
+            where=where,
+            column=column,
+            value=text,
+            problem=problem,
+            hint=hint,
+        )
     )
     return usual
 

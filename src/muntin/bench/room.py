@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import pandas as pd
 
@@ -72,13 +72,21 @@ def room_faults(study: Study, asked: Asked) -> list[Fault]:
         allowed = f"ask for {asked.tests}, or take rows out"
         faults.append(too_many(asked.wells, problem, allowed))
     free = len(study.definition.free_wells)
-    room = free - sum(asked.others())
-    if asked.wells > room:
-        problem, allowed = "is more than the plate has room for;", f"ask for {max(room, 0)}"
-        faults.append(
-            too_many(asked.wells, problem, allowed, f"{free} wells are free; {_top(asked)}")
-        )
-    return faults + _protein_faults(study, asked)
+    room = max(0, free - sum(asked.others()))
+    scarce = _protein_faults(study, asked)
+    if asked.wells <= room:
+        return faults + scarce
+    problem, allowed = "is more than the plate has room for;", f"ask for {room}"
+    hint = f"{free} wells are free; {_top(asked)}"
+    if not scarce or scarce[0].file != "wells":
+        return [*faults, too_many(asked.wells, problem, allowed, hint), *scarce]
+    if _protein_faults(study, replace(asked, wells=room)):
+        allowed = scarce[0].allowed
+    problem = "is more than plate and protein allow;"
+    return [
+        *faults,
+        too_many(asked.wells, problem, allowed, f"{free} wells are free; {scarce[0].hint}"),
+    ]
 
 
 def _top(asked: Asked) -> str:

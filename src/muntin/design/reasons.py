@@ -16,6 +16,7 @@ _INSIDE = 0.9
 _LEVEL = 0.98
 _SURE = 0.95
 _FAR = 0.01
+_OPEN = 0.2
 
 
 def reasons(
@@ -48,13 +49,23 @@ def _reason(pick: Pick, p: float, now: float, at: str, place: str) -> str:
     again = f"repeats {place}: " if place else ""
     chance = f"{again}probability {now:.2f}"
     if pick.purpose == "best":
-        return f"{chance}, may beat the best condition so far"
+        return f"{chance}, the best condition or one that may beat it"
     if p >= _LEVEL and now >= _INSIDE:
         return f"{chance}, reads the new plate's own error where the target is met"
     if now <= _FAR:
         return f"{chance}, far outside the edge at {at}: bears on it from afar"
-    where = "inside" if now >= _INSIDE else "outside" if now <= 1.0 - _INSIDE else "on"
-    return f"{chance}, {where} the edge at {at}"
+    return f"{chance}, {_where(now)} the edge at {at}"
+
+
+def _where(now: float) -> str:
+    """Where a condition of such a probability lies, as seen from the edge."""
+    if now >= _INSIDE:
+        return "inside"
+    if now <= 1.0 - _INSIDE:
+        return "outside"
+    if abs(now - 0.5) <= _OPEN:
+        return "on"
+    return "just inside" if now > 0.5 else "just outside"
 
 
 def _place(wells: tuple[tuple[str, str], ...]) -> str:

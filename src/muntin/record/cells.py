@@ -9,6 +9,7 @@ import numpy as np
 
 from muntin.record.faults import Fault
 from muntin.record.keys import Floats
+from muntin.record.number_slips import number_hint
 from muntin.record.tables import NUMBER, Table
 
 _THOUSANDS = re.compile(r"[+-]?[1-9][0-9]{0,2},[0-9]{3}")
@@ -28,15 +29,16 @@ class CellError(ValueError):
         super().__init__(problem)
 
 
-def parse_number(text: str, comma: bool = False) -> float:
+def parse_number(text: str, comma: bool = False, share: bool = False) -> float:
     """Return the number in a cell; point or comma marks the decimals.
 
-    `comma` tells that commas separate the cells of the file. Raises CellError.
+    `comma` tells that commas separate the cells of the file, `share` that the number is one of 0
+    to 1, which the hint on a per cent sign needs. Raises CellError.
     """
     if text.lower().lstrip("+-") in ("inf", "infinity", "∞"):
         raise CellError("is not a finite number")
     if not NUMBER.fullmatch(text):
-        raise CellError("is not a number")
+        raise CellError("is not a number", number_hint(text, share))
     if comma and _THOUSANDS.fullmatch(text):
         raise CellError("may mean thousands or decimals", "write it without the comma")
     value = float(text.replace(",", "."))
@@ -45,10 +47,10 @@ def parse_number(text: str, comma: bool = False) -> float:
     return value
 
 
-def parse_reading(text: str, comma: bool = False) -> tuple[str, float]:
+def parse_reading(text: str, comma: bool = False, share: bool = False) -> tuple[str, float]:
     """Return the state of a reading ("awaited", "censored", "read") and its value, NaN if awaited.
 
-    The value of a censored reading is its limit.
+    The value of a censored reading is its limit; `comma` and `share` as in parse_number.
 
     Raises CellError.
     """
@@ -56,8 +58,8 @@ def parse_reading(text: str, comma: bool = False) -> tuple[str, float]:
         return "awaited", math.nan
     censored = _CENSORED.fullmatch(text)
     if censored:
-        return "censored", parse_number(censored[2], comma)
-    return "read", parse_number(text, comma)
+        return "censored", parse_number(censored[2], comma, share)
+    return "read", parse_number(text, comma, share)
 
 
 def parse_reason(text: str) -> str:
@@ -70,13 +72,16 @@ def parse_reason(text: str) -> str:
     return text
 
 
-def numbers(table: Table, column: str, faults: list[Fault]) -> Floats:
-    """Return the numbers in a column, shape (rows,), NaN where empty or at fault."""
+def numbers(table: Table, column: str, faults: list[Fault], share: bool = False) -> Floats:
+    """Return the numbers in a column, shape (rows,), NaN where empty or at fault.
+
+    `share` as in parse_number.
+    """
     values = np.full(len(table), np.nan)
     for row, cell in enumerate(table.cells(column)):
         if cell:
             try:
-                values[row] = parse_number(cell, table.comma)
+                values[row] = parse_number(cell, table.comma, share)
             except CellError as error:
                 faults.append(table.fault(row, column, str(error), hint=error.hint))
     return values

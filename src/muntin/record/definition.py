@@ -13,7 +13,7 @@ from muntin.record.bench import Bench, bench_faults
 from muntin.record.columns import Columns, column_faults
 from muntin.record.factors import Factor, factor_faults
 from muntin.record.faults import Fault, did_you_mean, number, quoted
-from muntin.record.keys import Keys, Number, NumberOrText, Text, Truths, Whole, key
+from muntin.record.keys import Keys, Number, NumberOrText, ShareKey, Text, Truths, Whole, key
 from muntin.record.limits import Forbidden, Limit, forbidden_faults, limit_faults
 from muntin.record.protein import Protein, protein_faults
 from muntin.record.responses import Response, response_faults
@@ -29,9 +29,10 @@ class StudyTable(Keys):
 
     title: Text = key(says="one line that names the study", example="Elution from a resin")
     plate: Literal[96, 384] = key(96, says="wells of a plate: 96 or 384", unit="wells", example=96)
-    required_probability: Number = key(
+    required_probability: ShareKey = key(
         0.90,
-        says="a condition must reach this probability to lie in the window; fixed before data",
+        says="a condition must reach this probability to lie in the window; fixed before data; "
+        'a number from 0 to 1, or a share such as "90 %"',
         example=0.90,
         gt=0,
         lt=1,
@@ -110,14 +111,15 @@ class PlanRules(Keys):
 class StopRule(Keys):
     """When to stop, fixed before data: when either holds."""
 
-    wrong_share: Number | None = key(
+    wrong_share: ShareKey | None = key(
         None,
-        says="stop when no more than this share of the range may still be called wrongly",
+        says="stop when no more than this share of the range may still be called wrongly; a "
+        'number from 0 to 1, or a share such as "2 %"',
         example=0.02,
         gt=0,
         lt=1,
     )
-    best_probability: Number | None = key(
+    best_probability: ShareKey | None = key(
         None, says="stop when the set point reaches this probability", example=0.95, gt=0, lt=1
     )
     changed_because: Text | None = key(

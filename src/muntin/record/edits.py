@@ -97,7 +97,7 @@ def recorded_edits(folder: Path) -> Iterator[RecordedEdit]:
     for path in sorted((folder / PLANS).glob(f"*{ENDING}"), key=lambda p: natural_order(p.name)):
         file = f"{PLANS}/{path.name}"
         found = Findings()
-        data = read_toml(path, file, found.faults)
+        data = read_toml(path, file, EditRecord, found.faults)
         record = None if data is None else parse(EditRecord, data, file, found.faults)
         notices = [fault.text for fault in found.faults]
         if record is not None:

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import re
+import typing
 from typing import Annotated, Any
 
 import numpy as np
@@ -36,6 +37,19 @@ def key(default: Any = ..., *, says: str, unit: str = "", example: Any = None, *
     return Field(
         default, description=says, json_schema_extra={"unit": unit, "example": example}, **rules
     )
+
+
+def inner_model(annotation: Any) -> type[BaseModel] | None:
+    """Return the table of keys that an annotation holds, alone or in a tuple; None for a value."""
+    if isinstance(annotation, type) and issubclass(annotation, BaseModel):
+        return annotation
+    inner = (inner_model(part) for part in typing.get_args(annotation))
+    return next((model for model in inner if model is not None), None)
+
+
+def is_list(annotation: Any) -> bool:
+    """Whether an annotation is that of several tables of keys, each headed [[name]]."""
+    return typing.get_origin(annotation) is tuple and inner_model(annotation) is not None
 
 
 def _column_name(text: str) -> str:
@@ -99,4 +113,19 @@ def _amount(value: object) -> Amount:
     return Amount(value=float(value))
 
 
+def _share(value: object) -> object:
+    """Return the share that "5 %" stands for; any other value as it is."""
+    if isinstance(value, str) and (found := _PER_CENT.fullmatch(value)):
+        share = float(found[1].replace(",", ".")) / 100
+        if not 0 < share < 1:
+            raise ValueError("must lie above 0 % and below 100 %")
+        return share
+    if isinstance(value, bool) or not isinstance(value, int | float):
+        raise ValueError('is neither a number from 0 to 1 nor a share such as "5 %"')
+    if 1 < value <= 100:
+        raise ValueError(f'must lie below 1 (for per cent write "{value:g} %")')
+    return value
+
+
+ShareKey = Annotated[Number, BeforeValidator(_share)]
 AmountKey = Annotated[Amount, BeforeValidator(_amount)]

@@ -51,7 +51,7 @@ def read_notes(folder: Path, tables: dict[str, str], found: Findings) -> dict[st
     plates = {name: Plate(name=name, file=file) for name, file in tables.items()}
     for path in sorted((folder / "plates").glob("*.toml")):
         file = f"plates/{path.name}"
-        data = read_toml(path, file, found.faults)
+        data = read_toml(path, file, PlateNotes, found.faults)
         notes = None if data is None else parse(PlateNotes, data, file, found.faults)
         if path.stem not in tables:
             not_run(folder, path.stem, file, [*tables], found)

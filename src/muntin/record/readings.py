@@ -46,13 +46,14 @@ def response_columns(responses: Iterable[Response]) -> list[str]:
 def read_readings(table: Table, response: Response, faults: list[Fault]) -> list[Reading]:
     """Return the readings of one response in a table, one a row."""
     name = response.name
-    deviations = numbers(table, f"{name}_sd", faults)
+    share = response.kind == "fraction" and not response.per_cent
+    deviations = numbers(table, f"{name}_sd", faults, share)
     why = reasons(table, f"{name}_exclude", faults)
     readings = []
     for row, cell in enumerate(table.cells(name)):
         state, value = "awaited", math.nan
         try:
-            state, value = parse_reading(cell, table.comma)
+            state, value = parse_reading(cell, table.comma, share)
         except CellError as error:
             hint = error.hint or "leave the cell empty while its reading is awaited"
             faults.append(table.fault(row, name, str(error), hint=hint))

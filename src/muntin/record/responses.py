@@ -37,6 +37,13 @@ class PriorTable(Keys):
     )
 
 
+_PRIOR_NAMES = (
+    "priors that replace the built-in ones, by name: "
+    + ", ".join(PriorTable.model_fields)
+    + "; each a { median, log_sd }, mean_sd a number"
+)
+
+
 class Response(Keys):
     """One thing that is read in the wells, judged against a target or only tracked."""
 
@@ -68,7 +75,7 @@ class Response(Keys):
     prior_table: PriorTable | None = Field(
         default=None,
         alias="priors",
-        description="priors that replace the built-in ones, by name",
+        description=_PRIOR_NAMES,
         json_schema_extra={"unit": "", "example": {"noise_sd": {"median": 0.03, "log_sd": 0.5}}},
     )
 

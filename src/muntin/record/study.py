@@ -225,7 +225,7 @@ def _check_folder(folder: Path) -> None:
 
 
 def _read_definition(folder: Path, found: Findings) -> Definition | None:
-    data = read_toml(folder / STUDY_FILE, STUDY_FILE, found.faults)
+    data = read_toml(folder / STUDY_FILE, STUDY_FILE, Definition, found.faults)
     definition = None if data is None else parse(Definition, data, STUDY_FILE, found.faults)
     if definition is None:
         return None

@@ -3,8 +3,6 @@
 from __future__ import annotations
 
 import re
-import tomllib
-import typing
 from collections.abc import Iterator, Mapping, Sequence
 from pathlib import Path
 from typing import Any, TypeVar
@@ -13,9 +11,11 @@ from pydantic import BaseModel, ValidationError
 
 from muntin.record.faults import Fault, did_you_mean, number, quoted
 from muntin.record.files import NotTextError, decoded
+from muntin.record.keys import inner_model
+from muntin.record.toml_slips import toml_content
+from muntin.record.value_slips import iso_day
 
 Model = TypeVar("Model", bound=BaseModel)
-_PLACE = re.compile(r" \(at (?:line (\d+), column \d+|(end of document))\)$")
 _PROBLEMS = {
     "float_type": "is not a number",
     "float_parsing": "is not a number",
@@ -41,20 +41,19 @@ _BOUNDS = {
 }
 
 
-def read_toml(path: Path, file: str, faults: list[Fault]) -> dict[str, Any] | None:
-    """Return the content of a TOML file, or None and a fault; `file` is the path in messages."""
+def read_toml(
+    path: Path, file: str, model: type[BaseModel], faults: list[Fault]
+) -> dict[str, Any] | None:
+    """Return the content of a TOML file that describes a `model`, or None; faults join `faults`.
+
+    `file` is the path in messages. Content with faults is there to be judged, not used.
+    """
     try:
-        return tomllib.loads(decoded(path.read_bytes()))
+        return toml_content(decoded(path.read_bytes()), model, file, faults)
     except NotTextError:
         faults.append(Fault(file=file, problem="is not a text file"))
     except OSError as error:
         faults.append(Fault(file=file, problem="cannot be read", hint=error.strerror or ""))
-    except tomllib.TOMLDecodeError as error:
-        place = _PLACE.search(str(error))
-        where = "" if place is None else f"line {place[1]}" if place[1] else "last line"
-        said = _PLACE.sub("", str(error))
-        problem = f"is not valid TOML: {said[:1].lower()}{said[1:]}"
-        faults.append(Fault(file=file, where=where, problem=problem))
     except RecursionError:
         faults.append(Fault(file=file, problem="is nested too deeply"))
     return None
@@ -92,11 +91,11 @@ def _known_keys(
                     where=", ".join(at),
                     value=quoted(name),
                     problem="is not a key" + (f" of {_heading(at)}" if at else ""),
-                    hint=_meant(name, [*fields], top),
+                    hint=_meant(name, [*fields], top, at),
                 )
             )
             continue
-        inner = _inner_model(fields[name])
+        inner = inner_model(fields[name])
         if inner is not None and isinstance(value, dict):
             value = _known_keys(inner, value, (*at, name), file, faults, top)
         elif inner is not None and isinstance(value, list):
@@ -110,17 +109,12 @@ def _known_keys(
     return kept
 
 
-def _meant(name: str, fields: Sequence[str], top: Sequence[str]) -> str:
+def _meant(name: str, fields: Sequence[str], top: Sequence[str], at: Sequence[str]) -> str:
     if name in top and name not in fields:
         return "it is no part of a table: write it above the first [table]"
-    return did_you_mean(name, fields)
-
-
-def _inner_model(annotation: Any) -> type[BaseModel] | None:
-    if isinstance(annotation, type) and issubclass(annotation, BaseModel):
-        return annotation
-    inner = (_inner_model(part) for part in typing.get_args(annotation))
-    return next((model for model in inner if model is not None), None)
+    close = did_you_mean(name, fields)
+    asked = close.startswith("did you mean") and at[-1:] == ("priors",)
+    return f"{close} known: {', '.join(fields)}" if asked else close
 
 
 def _item(table: str, index: int, item: object) -> str:
@@ -160,8 +154,14 @@ def _fault(file: str, model: type[BaseModel], data: dict[str, Any], detail: Any)
     if detail["type"] == "tuple_type" and isinstance(detail["input"], dict):
         problem = f"must be one or more tables, each headed [[{last}]]"
     shown = quoted(detail["input"]) if isinstance(detail["input"], str | int | float) else ""
+    day = iso_day(shown.strip('"')) if detail["type"].startswith("date_") else None
     return Fault(
-        file=file, where=", ".join([*table, last]), value=shown, problem=problem, allowed=allowed
+        file=file,
+        where=", ".join([*table, last]),
+        value=shown,
+        problem=problem,
+        allowed=allowed,
+        hint=f"write {day}" if day else "",
     )
 
 
@@ -183,5 +183,5 @@ def _description(model: type[BaseModel], loc: tuple[int | str, ...]) -> str:
     for name in loc:
         if isinstance(name, str) and current is not None and name in current.model_fields:
             info = current.model_fields[name]
-            says, current = info.description or "", _inner_model(info.annotation)
+            says, current = info.description or "", inner_model(info.annotation)
     return says
