@@ -106,7 +106,7 @@ def read_plans(folder: Path, definition: Definition, found: Findings) -> list[Co
     plans = []
     for path in plan_paths(folder):
         file = f"{COLUMNS}/{path.name}"
-        data = read_toml(path, file, found.faults)
+        data = read_toml(path, file, ColumnPlan, found.faults)
         plan = None if data is None else parse(ColumnPlan, data, file, found.faults)
         if plan is not None:
             found.faults.extend(_record_faults(plan, definition, file))

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from muntin.reference.fields_columns import CONFIRM
+from muntin.reference.fields_handover import HANDOVER, RECORD
 from muntin.reference.fields_plans import ADVISE, PLAN, PREPARE, PROPOSE
 from muntin.reference.fields_reads import REDUCE, REDUCTION, UPTAKE
 from muntin.reference.fields_rehearsal import REHEARSE
@@ -46,9 +47,11 @@ PARTS = (
     CHECK,
     STANDING,
     ASSESS,
+    HANDOVER,
     PLAN,
     PROPOSE,
     ADVISE,
+    RECORD,
     PREPARE,
     REDUCE,
     REDUCTION,
