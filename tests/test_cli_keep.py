@@ -160,7 +160,13 @@ def test_all_faults_are_told_at_once_and_nothing_is_written(study: Path) -> None
     result = run("propose", study, "--keep", path, "--wells", 200, *QUICK)
     assert (result.exit_code, result.stdout) == (2, "")
     lines = result.stderr.splitlines()
-    for said in ("5.13 is not on", '"K99"', '"tset"', "is a reading", "200 is more than the plate"):
+    for said in (
+        "5.13 is not on",
+        '"K99"',
+        '"tset"',
+        "is a reading",
+        "200 is more than plate and protein",
+    ):
         assert sum(said in line for line in lines) == 1
     assert "Traceback" not in result.stderr
     assert tree(study) == before

@@ -484,6 +484,8 @@ def may_be_refused(asked, text, wells):
     room = free - bridging - sum(controls.values())
     loaded = wells + bridging + controls["load"] + controls["no_resin"]
     short = 0.25 * loaded > protein_left_mg(asked.study) + 1e-9
+    if "plate and protein allow;" in text:
+        return wells > room and short
     if "room for" in text or "protein allows" in text:
         return ("room for" in text) == (wells > room) and ("protein allows" in text) == short
     return text.startswith("study.toml, plan: ") and definition.plan.prepared_by != "well"

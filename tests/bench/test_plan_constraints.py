@@ -229,7 +229,7 @@ def known_to_run(given, view):
     }
 
 
-SHORT = ("room for", "protein allows", "no condition is left")
+SHORT = ("room for", "protein allows", "plate and protein allow", "no condition is left")
 
 
 @QUICK
