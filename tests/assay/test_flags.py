@@ -261,3 +261,26 @@ def test_a_standard_uncertainty_that_a_table_holds_stands(tmp_path):
         "",
         "its table holds the same reading with a standard uncertainty of its own",
     )
+
+
+def test_a_bound_of_closure_is_not_flagged_on_the_side_on_which_it_says_nothing(tmp_path):
+    below = reduced(tmp_path, reads=with_reads("A1,e1,280,>0.9,"))
+    assert of(below, "closure") < 0.9
+    assert {("above_range", "e1")} == {
+        k for k in kinds(below) if k[0] in ("above_range", "closure")
+    }
+    above = with_reads("B2,e1,280,1.99,", "E1,load,280,0.25,5")
+    assert ("closure", "") in kinds(reduced(tmp_path, reads=above), "B2")
+    load_over = with_reads("B2,e1,280,1.99,", "E1,load,280,>0.25,5")
+    unknown = reduced(tmp_path, reads=load_over)
+    assert of(unknown, "closure", "B2") > 1.5
+    assert not {("closure", ""), ("recovery_high", "")} & kinds(unknown, "B2")
+
+
+def test_a_read_far_below_its_blank_is_pointed_out_and_used(tmp_path):
+    reduction = reduced(tmp_path, reads=with_reads("A1,e1,280,0,"))
+    assert ("below_blank", "e1") in kinds(reduction)
+    assert of(reduction, "collected_of_load") < 0
+    near = reduced(tmp_path, reads=with_reads("A1,e1,280,0.048,"))
+    assert ("below_range", "e1") in kinds(near)
+    assert ("below_blank", "e1") not in kinds(near)

@@ -9,7 +9,9 @@ import numpy as np
 import pandas as pd
 import pytest
 from matplotlib.backends.backend_agg import FigureCanvasAgg
+from matplotlib.colors import to_hex
 from matplotlib.figure import Figure
+from matplotlib.patches import Circle
 from matplotlib.text import Text
 
 from muntin.bench import centre, lay_out
@@ -194,3 +196,23 @@ def test_roles_are_counted() -> None:
     assert roles_text(rows, short=True) == (
         "5 wells: 2 test, 1 bridging, 1 load (L), 1 no resin (N)."
     )
+
+
+@pytest.mark.parametrize("step", [1.0, 0.5, 0.25])
+def test_no_two_levels_have_one_colour_and_the_page_says_what_colour_is(step: float) -> None:
+    ph = {**PH, "step": step}
+    definition = definition_of([ph, SALT])
+    levels = np.arange(4.5, 7.51, step)
+    rows = pd.DataFrame({"ph": levels, "salt": 100.0}).assign(
+        role="test", well=[f"A{1 + i}" if i < 12 else f"B{i}" for i in range(len(levels))]
+    )
+    figure = draw_plate_map(definition, rows, TITLES)
+    radius = 0.3 * Place(96).pitch
+    fills = [
+        p.get_facecolor()
+        for p in figure.axes[0].patches
+        if isinstance(p, Circle) and p.get_radius() > radius
+    ]
+    assert len(fills) == len(levels)
+    assert len({to_hex(fill) for fill in fills}) == len(levels)
+    assert any("Colour: pH." in text.get_text() for text in texts(figure))

@@ -23,6 +23,8 @@ Floats = NDArray[np.float64]
 _BLANK_RANGE = 4.5
 _PATH_OFF = 0.2
 _FEWEST = 6
+# A read so many sds of a single blank below its own blank is hardly noise.
+_FAR_BELOW = 5.0
 _PERIMETER_T = 3.0
 
 
@@ -116,8 +118,11 @@ def _reads(judged: Judged) -> Iterator[Flag]:
         "high": ("above_range", f"above {high} AU, the linear range, at every dilution"),
         "missing": ("not_read", "not read"),
     }
+    above = net(inputs.samples, inputs.blanks, {})[:, 0].reshape(inputs.shape)
     for i, j in np.argwhere(inputs.states != "read").tolist():
         kind, text = said[str(inputs.states[i, j])]
+        if kind == "below_range" and above[i, j] < -_FAR_BELOW * assay.blank_sd:
+            kind, text = "below_blank", f"{-above[i, j]:.3f} AU below its blank: was it read?"
         yield judged.flag(kind, text, i, assay.fractions[j])
 
 
@@ -147,6 +152,8 @@ def _wells(judged: Judged) -> Iterator[Flag]:
     with np.errstate(invalid="ignore"):
         unsure = bound.total > assay.bound_cv_most * bound.value
         high = recovery.value > assay.recovery_most
+    if (judged.inputs.load_states == "high").any():
+        high[:] = False
     for i in np.flatnonzero(unsure & resin).tolist():
         text = (
             f"{bound.value[i]:.3g} ± {bound.total[i]:.2g} µg bound: too little for a recovery of "
@@ -163,6 +170,10 @@ def _closure(judged: Judged) -> Iterator[Flag]:
     closure = judged.quantities["closure"]
     whole = (inputs.states != "missing").all(axis=1)
     score = (closure.value - 1.0) / closure.total
+    # Of a read above the range only the limit is known: closure is at least its value; where the
+    # load is above it, at most.
+    over, load_over = inputs.states == "high", inputs.load_states == "high"
+    whole &= ~(over.any(axis=1) & (score < 0)) & ~(load_over.any() & (score > 0))
     recovery = judged.quantities["collected_of_load"].value
     for i in np.flatnonzero(whole & (np.abs(score) > assay.closure_k)).tolist():
         text = (

@@ -72,7 +72,10 @@ def _of_stocks(definition: Definition, selection: Selection, stocks: Sequence[St
         wells = sum(same_target(factor, v, stock.target) for v in rows[factor.name].tolist())
         if not wells:
             target = factor.named(factor.shown(stock.target))
-            notices.append(f"{stock.file}: no well of the plan has {target}; its stock is not used")
+            notices.append(
+                f"{stock.file}: no well of the plan has {target} for its target; what was measured "
+                "is not used, also for wells that are blended from that bottle"
+            )
         elif not same_target(factor, stock.measured, stock.target):
             said = factor.named(factor.shown(stock.target))
             notices.append(

@@ -105,9 +105,21 @@ def _measured(sheets: Sheets) -> Iterator[str]:
     ph = sheets.study.definition.bench.ph_factor
     levels = [bottle for bottle in sheets.bottles if bottle.by_level]
     if levels:
+        what = "the pH of" if ph else "the level of"
         yield (
-            f"Measure each bottle, and write {'pH and ' if ph else ''}what it measured to "
-            f"stocks/{sheets.plate}.csv (factor, target, measured): the model uses measured values."
+            f"Measure {what} each bottle and write it to stocks/{sheets.plate}.csv (factor, "
+            "target, measured): the model uses measured values."
+        )
+    definition = sheets.study.definition
+    matched = definition.bench.matched(definition.factors)
+    held = {name for bottle in sheets.bottles for name in bottle.holds} - matched
+    blended = [factor for factor in definition.factors if factor.name in held]
+    if blended:
+        names = " or ".join(factor.label for factor in blended)
+        columns = " or ".join(f"{factor.name}_measured" for factor in blended)
+        yield (
+            f"What a bottle's {names} measured reaches no well that is blended from it: measure "
+            f"such wells, and write it to {columns} of the plate table."
         )
 
 

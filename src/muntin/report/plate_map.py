@@ -131,6 +131,7 @@ def _legend(definition: Definition) -> str:
     said = f"In each well: {ordered[0]} in bold{rest}."
     if by_number(definition):
         said = "In each well: the number of its condition (next pages)."
+    said += f" Colour: {ordered[0]}."
     by = definition.plan.prepared_by
     if by == "well":
         return said

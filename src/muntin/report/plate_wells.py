@@ -170,13 +170,17 @@ def _room(place: Place, lines: int, off: float) -> float:
 
 
 def _level_tints(definition: Definition, rows: pd.DataFrame) -> dict[Any, str]:
-    """The tint of each level of the stocks' factor; beyond six they begin again."""
+    """The tint of each level of the stocks' factor, from pale to dark in their order."""
+    from matplotlib.colors import LinearSegmentedColormap, to_hex
+
     name = definition.stock_factors[0]
     factor = next(f for f in definition.factors if f.name == name)
     used = set(rows[rows["role"].isin(INFORMING)][name])
     levels = [level for level in factor.levels().tolist() if level in used]
     if len(levels) > len(_TINTS):
-        return {level: _TINTS[k % len(_TINTS)] for k, level in enumerate(levels)}
+        between = LinearSegmentedColormap.from_list("tints", list(_TINTS))
+        ends = max(1, len(levels) - 1)
+        return {level: to_hex(between(k / ends)) for k, level in enumerate(levels)}
     step = (len(_TINTS) - 1) / max(1, len(levels) - 1)
     return {level: _TINTS[round(k * step)] for k, level in enumerate(levels)}
 

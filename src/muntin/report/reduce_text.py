@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections import defaultdict
 from collections.abc import Mapping, Sequence
 from pathlib import Path
-from typing import Any
+from typing import Any, Literal
 
 import numpy as np
 from rich.console import RenderableType
@@ -28,6 +28,7 @@ _NAMES = {
 }
 # What a flag says of several wells; the gravest first.
 _SAYS = {
+    "below_blank": "far below the blank, used as read: were they read?",
     "closure": "closure further from 1 than its own uncertainty explains",
     "recovery_high": "recovery higher than can be",
     "above_range": "above the linear range at every dilution, kept as > or <",
@@ -136,7 +137,8 @@ def _table(reduction: Reduction) -> Table:
     for index, heading in enumerate(
         ("plate", "wells", "load, mg/mL", "bound, µg", "recovery", "own sd", "shared", "closure")
     ):
-        table.add_column(heading, justify="right" if index else "left", no_wrap=True)
+        justify: Literal["left", "right"] = "right" if index else "left"
+        table.add_column(heading, justify=justify, overflow="fold", no_wrap=not index)
     for plate in reduction.plates:
         table.add_row(*map(Text, _table_row(reduction, plate)))
     return table
@@ -145,15 +147,17 @@ def _table(reduction: Reduction) -> Table:
 def _table_row(reduction: Reduction, plate: PlateReduction) -> tuple[str, ...]:
     recovery = plate.quantities[reduction.assay.recovery]
     told = np.array([role in INFORMING for role in plate.inputs.roles])
+    # Of a read above the range only a bound is known, which is no end of a range.
+    known = told & (plate.inputs.states != "high").all(axis=1)
     return (
         plate.inputs.plate,
         str(int(told.sum())),
         f"{float(load_of(plate.inputs, reduction.assay, {})):.3g}",
         _range(plate.quantities["bound_ug"].value[told], "{:.3g}"),
-        _range(recovery.value[told], "{:.2f}"),
+        _range(recovery.value[known], "{:.2f}"),
         _middle(recovery.own[told], "{:.3f}"),
         f"{100 * plate.shared.scale:.1f} %",
-        _range(plate.quantities["closure"].value[told], "{:.2f}"),
+        _range(plate.quantities["closure"].value[known], "{:.2f}"),
     )
 
 

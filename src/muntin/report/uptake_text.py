@@ -90,7 +90,7 @@ def _laws(uptake: Uptake, planned: float | None) -> Table:
     table = Table(box=None, padding=(0, 2, 0, 0), pad_edge=False)
     at = [] if planned is None else [f"at {number(planned)} min"]
     for heading in ("law", "weight", "equilibrium", *at, "95 % after, min", "rate, 1/min"):
-        table.add_column(heading, no_wrap=True)
+        table.add_column(heading, overflow="fold")
     ranked = sorted(zip(uptake.law_weights, uptake.grids, strict=True), key=lambda p: -p[0])
     for weight, grid in ranked:
         columns = [grid.equilibrium, *([] if planned is None else [grid.load_at(planned)])]
