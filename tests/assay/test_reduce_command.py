@@ -72,6 +72,22 @@ def test_the_study_reads_what_was_written_and_a_second_run_changes_nothing(tmp_p
     assert again["results/reduced-plate-01.csv"] == once["results/reduced-plate-01.csv"]
 
 
+def test_results_of_another_recovery_are_told_until_they_are_reduced_again(tmp_path):
+    study = write(tmp_path)
+    run("reduce", study, "reads", "--quiet")
+    told = "results of plate-01 were reduced as collected_of_load; study.toml, [assay] now says"
+    assert not any(told in notice for notice in open_study(study).notices)
+    settings = study / "study.toml"
+    settings.write_text(
+        settings.read_text().replace("[assay]\n", '[assay]\nrecovery = "freed_of_bound"\n')
+    )
+    assert sum(told in notice for notice in open_study(study).notices) == 1
+    again = run("reduce", study, "reads")
+    assert again.exit_code == 0, again.output
+    assert told not in again.output
+    assert not any(told in notice for notice in open_study(study).notices)
+
+
 def test_the_record_reduces_again_to_the_same(tmp_path):
     study = write(tmp_path)
     run("reduce", study, "reads", "--quiet")

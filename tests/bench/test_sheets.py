@@ -255,7 +255,8 @@ def test_the_named_plan_is_taken(tmp_path: Path) -> None:
 def test_what_is_not_known_is_said(
     tmp_path: Path, changed: dict[str, Any], said: list[str]
 ) -> None:
-    told = gaps(prepare(opened(tmp_path, **changed)))
+    *told, procedure = gaps(prepare(opened(tmp_path, **changed)))
+    assert procedure.startswith("Binding, wash and strip buffers")
     made = "No buffers are given (study.toml, [[bench.buffers]]): how the bottles are made is not "
     bottles = "stocks" not in changed
     assert [sentence for sentence in told if sentence.startswith(made)] == [told[0]] * bottles
@@ -275,6 +276,8 @@ def test_without_protein_and_bench_the_wells_are_there(tmp_path: Path) -> None:
     assert [s.split(" is")[0].split(" are")[0] for s in gaps(sheets)] == [
         "No stocks",
         "No [protein]",
+        "Binding, wash and strip buffers, what blanks get in place of the load, and the steps on "
+        "the resin plate (equilibrate, wash, elute from the mixing plate, strip)",
     ]
 
 

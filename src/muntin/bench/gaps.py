@@ -9,11 +9,17 @@ from muntin.record.bench import LOAD
 from muntin.record.faults import listed, number
 
 _SLACK = 1e-6
+_STEPS = (
+    "Binding, wash and strip buffers, what blanks get in place of the load, and the steps on the "
+    "resin plate (equilibrate, wash, elute from the mixing plate, strip) are those of your "
+    "procedure."
+)
 
 
 def gaps(sheets: Sheets) -> tuple[str, ...]:
     """Return what could not be computed, and what is to be seen to by hand."""
-    return (*_of_liquids(sheets), *_of_volumes(sheets), *_of_load(sheets), *_by_hand(sheets))
+    found = (*_of_liquids(sheets), *_of_volumes(sheets), *_of_load(sheets), *_by_hand(sheets))
+    return (*found, _STEPS)
 
 
 def _of_liquids(sheets: Sheets) -> Iterator[str]:

@@ -20,6 +20,7 @@ from muntin.record.notes import Plate, read_notes
 from muntin.record.notices import column_notice, definition_notices, odd_notices, well_notices
 from muntin.record.plates import PlateRows, open_plate, outside_limits, read_plate
 from muntin.record.readings import INFORMING, USED, Reading
+from muntin.record.reduced import reduced_notices
 from muntin.record.results import REDUCED, Run, join_results
 from muntin.record.stocks import read_stocks
 from muntin.record.stop_rule import (
@@ -180,6 +181,8 @@ def _read(folder: Path, reducing: bool = False, excluding: bool = True) -> Study
         raise StudyFaults(found.faults)
     wells = _read_wells(folder, definition, plates, tables, found, reducing, excluding)
     stops = read_stops(folder, found)
+    if not reducing:
+        found.notices.extend(reduced_notices(folder, definition))
     if found.faults:
         raise StudyFaults(found.faults)
     study = Study(

@@ -175,8 +175,14 @@ def _plate(sheets: Sheets) -> Iterator[str]:
         )
     if sheets.load is not None and sheets.load.steps:
         count = sum(t.stock == LOAD for t in draws)
-        yield f"Load the resin plate: the {counted(count, 'draw')} of {LOAD} in transfers.csv."
-    yield "Controls as on the map: no protein into blanks, no resin where the map says so."
+        yield (
+            f"Load the plate: the {counted(count, 'draw')} of {LOAD} in transfers.csv, wells of "
+            "load among them."
+        )
+    yield (
+        "Controls as on the map: no protein into blanks; no resin where the map says so, nor in "
+        "wells of load, which are the load itself as it is read."
+    )
     yield "Balance the rotor before each spin."
     yield (
         f"Fill the readings into {sheets.file} (what differs from the plan too) and move it to "

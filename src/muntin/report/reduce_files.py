@@ -25,10 +25,10 @@ from muntin.record.assay import READ_COLUMNS, Assay
 from muntin.record.faults import number
 from muntin.record.inputs import hashes, read_inputs, versions
 from muntin.record.readings import INFORMING
+from muntin.record.reduced import REDUCTIONS
 from muntin.record.results import REDUCED
 from muntin.report.advice_files import json_text
 
-REDUCTIONS = "reductions"
 _NOTHING = 1e-9
 _METHOD = (
     "First order (JCGM 100:2008): squares of dy/dx u(x) added up, by complex steps. Own: errors "

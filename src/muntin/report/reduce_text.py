@@ -18,7 +18,8 @@ from muntin.assay.inputs import load_of
 from muntin.assay.reduction import PlateReduction, Reduction
 from muntin.record.faults import counted, listed
 from muntin.record.readings import INFORMING
-from muntin.report.reduce_files import REDUCTIONS, flag_facts, shared_facts
+from muntin.record.reduced import REDUCTIONS
+from muntin.report.reduce_files import flag_facts, shared_facts
 from muntin.report.text import few, sheet
 
 _NAMES = {
