@@ -23,11 +23,14 @@ low salt (pH 5.0)       3        720          1 mL        1.72 mL
 high salt (pH 5.0)      3        480          1 mL        1.48 mL
 
 14 draws, the smallest 40 µL.
-Protein: the wells take 1.5 mg, 2 mg stay in the trough; 27 mg are left beyond the reserve of 10 mg.
+Protein: the wells take 1.5 mg, 2 mg stay in the trough; before it 27 mg are left beyond the reserve
+of 10 mg.
 No buffers are given (study.toml, [[bench.buffers]]): how the bottles are made is not in these
 sheets.
 No control_condition is given (study.toml, [bench]): what blanks and wells without resin get besides
 the load is not in these sheets (D5, F7).
+Binding, wash and strip buffers, what blanks get in place of the load, and the steps on the resin
+plate (equilibrate, wash, elute from the mixing plate, strip) are those of your procedure.
 Development aid, not for release decisions. Site procedures and licensed practice come first; this
 list replaces neither, nor the safety data sheets.
 All cautions stand on the checklist.

@@ -41,18 +41,30 @@ def test_one_mix_over_the_whole_range_is_not_confounded():
 def test_ions_of_the_buffer_beside_little_salt():
     # At pH 5.756 - g nine in ten of the acetate are ions: 18 mM of sodium beside 50 of NaCl.
     phs = buffered(buffer("acetate"), temperature_c=25.0)
-    (said,) = cautions(phs, (4.7, 300.0), (5.6, 50.0))
+    (said,) = those_about(cautions(phs, (4.7, 300.0), (5.6, 50.0)), "of its own")
     assert said == (
         "the buffer brings 11 to 18 mM of ions of its own, which are not counted as salt and "
         "change with the pH: at pH 5.6 and 50 mM of salt they are 36 % more"
     )
 
 
+def test_a_buffer_that_holds_the_ph_weakly():
+    # pKa 4.756 at 25 °C; Davies at 0.068 mol/L (50 mM of NaCl, 18 of sodium acetate): 0.100 lower.
+    phs = buffered(buffer("acetate"), temperature_c=25.0)
+    (said,) = those_about(cautions(phs, (4.7, 300.0), (5.6, 50.0)), "weakly")
+    assert said == (
+        "1 of 2 liquids lies 0.8 to 1 from the nearest pKa of their buffers (pH 5.6: 0.94), where "
+        "they hold the pH weakly: measure it in an eluate, too"
+    )
+    # Within 0.8 it holds it well; what lies beyond 1 is told with its recipe.
+    assert not those_about(cautions(phs, (5.4, 50.0), (5.8, 50.0)), "weakly")
+
+
 def test_ions_of_the_buffer_without_salt():
     (said,) = cautions(buffered(buffer("acetate")), (5.0, 0.0))
     assert said == (
-        "the buffer brings 13 mM of ions of its own, which are not counted as salt; no salt is "
-        "beside them"
+        "the buffer brings 13 mM of ions of its own, which are not counted as salt, in "
+        "liquids without salt"
     )
 
 

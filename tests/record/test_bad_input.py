@@ -714,7 +714,8 @@ LATER = {
         {"stocks/plate-01.csv": "factor,target,measured\nsalt,100,911\n"},
         [
             "stocks/plate-01.csv, row 2, column measured: 911 lies outside -10 to 910 mM, "
-            "the range and a step (study.toml, factors, salt)"
+            "the range and a step (study.toml, factors, salt; what wells measured, such as those "
+            "blended from a bottle, goes to salt_measured of the plate table)"
         ],
     ),
     "two_stocks_of_one_target": (

@@ -333,6 +333,17 @@ def test_stocks_and_notes_of_a_planned_plate_wait(make):
     )
 
 
+def test_stocks_of_a_planned_plate_are_checked(make):
+    folder = make(
+        {"plans/plate-02.csv": "well\n", "stocks/plate-02.csv": "factor,target\npH,5.5\n"}
+    )
+    with pytest.raises(StudyFaults) as raised:
+        open_study(folder)
+    (line,) = raised.value.lines()
+    assert line.startswith("stocks/plate-02.csv: ")
+    assert "measured" in line
+
+
 def test_results_fill_awaited_cells_by_plate_and_well(make):
     results = "plate;well;hcp;hcp_sd;recovery_exclude;batch\n"
     results += (

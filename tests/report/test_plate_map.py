@@ -18,8 +18,10 @@ from muntin.bench import centre, lay_out
 from muntin.record.definition import Definition
 from muntin.report.plate_map import draw_plate_map, roles_text
 from muntin.report.plate_wells import Place, by_number, conditions_of
+from muntin.report.sheet_words import condition_part
 from tests.studies import LOAD, PH, RESIN, SALT, TIME, spread, tables
 
+ENDS = {"low salt": 0, "high salt": 500}
 TITLES = ("plate-02", "Small invented study", "plans/plate-02.csv")
 CONTROLS = ["load", "load", "blank", "no_resin", "water"]
 
@@ -173,6 +175,29 @@ def test_lines_say_what_feeds_them(by: str) -> None:
         below = (x, edge[1] - 0.58 * place.pitch - 0.12)
         (shown,) = at(figure, *(side if by == "row" else below), 0.01)
         assert shown == f"{row['ph']:.1f}"
+
+
+@pytest.mark.parametrize(("by", "fed"), [("well", ""), ("row", ", or what their row is fed")])
+def test_what_controls_are_given_stands_below_the_map(by: str, fed: str) -> None:
+    definition = definition_of(by=by)
+    control = {"ph": 6.0, "salt": 280.0}
+    stocks = [{"name": end, "per": "ph", "holds": {"salt": held}} for end, held in ENDS.items()]
+    given = Definition.model_validate(
+        tables(
+            factors=[PH, SALT],
+            plan={"prepared_by": by},
+            bench={"ph_factor": "ph", "control_condition": control, "stocks": stocks},
+        )
+    )
+    rows = plan(definition, 30)
+    said = f"Blank and no resin: {condition_part(given, control)}{fed}."
+    assert any(said in t.get_text() for t in texts(draw_plate_map(given, rows, TITLES)))
+    informing = rows[~rows["role"].isin(CONTROLS)]
+    for figure in (
+        draw_plate_map(given, informing, TITLES),
+        draw_plate_map(definition, rows, TITLES),
+    ):
+        assert not any("no resin:" in t.get_text() for t in texts(figure))
 
 
 def test_rings_tell_bridging_and_reference_wells() -> None:

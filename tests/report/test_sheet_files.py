@@ -149,7 +149,7 @@ def test_the_checklist_names_every_hazard_and_stock(tmp_path: Path) -> None:
         assert f"[ ] {total.stock}" in text
     for name in ["map.png", "map.pdf", *TABLES]:
         assert name in flat
-    assert "the wells take 1.5 mg, 2 mg stay in the trough; 27 mg are left beyond" in flat
+    assert "the wells take 1.5 mg, 2 mg stay in the trough; before it 27 mg are left beyond" in flat
     assert all(len(line) <= 84 for line in text.splitlines())
 
 

@@ -9,12 +9,16 @@ from muntin.bench.buffer.acids import Couple
 from muntin.bench.buffer.liquid import forms
 from muntin.bench.buffer.wanted import Wanted, wanted_of
 from muntin.bench.buffer.water import HIGHEST_STRENGTH, per_charge_squared
+from muntin.bench.buffers import REACH, pka_away
 from muntin.bench.recipe import Condition
 from muntin.record.definition import Definition
 from muntin.record.faults import number
 
 # Beside more than a tenth of the salt, what the buffer brings is as large as a wide tolerance.
 _OWN_SHARE = 0.10
+# So far from the pKa a buffer has less than half of its capacity at the pKa: 4 h / (1 + h)^2 of it,
+# h = 10^0.8.
+_WEAK = 0.8
 # A form that makes up a twentieth of a buffer, and a pH that moves by 0.05 over five degrees.
 _PRESENT, _PER_C = 0.05, 0.01
 
@@ -60,7 +64,7 @@ def buffer_cautions(definition: Definition, conditions: Iterable[Condition]) -> 
     mixed = [made for condition in conditions if (made := _made(definition, condition))]
     if not mixed:
         return ()
-    found = (_confounded, _salt_spent, _bound, _warm, _strong)
+    found = (_confounded, _weak, _salt_spent, _bound, _warm, _strong)
     return tuple(said for caution in found for said in caution(mixed))
 
 
@@ -87,6 +91,20 @@ def _confounded(mixed: Sequence[_Mixed]) -> Iterator[str]:
     )
 
 
+def _weak(mixed: Sequence[_Mixed]) -> Iterator[str]:
+    """Liquids that the load and the resin move, although the pH lies within 1 of a pKa."""
+    away = [(abs(pka_away(made.wanted, made.strength)), made.wanted) for made in mixed]
+    weak = [one for one in away if _WEAK < one[0] <= REACH]
+    if weak:
+        most, wanted = max(weak, key=lambda one: one[0])
+        lie = "lies" if len(weak) == 1 else "lie"
+        yield (
+            f"{len(weak)} of {len(mixed)} liquids {lie} {number(_WEAK)} to {number(REACH)} from "
+            f"the nearest pKa of their buffers (pH {wanted.shown}: {most:.2f}), where they hold "
+            "the pH weakly: measure it in an eluate, too"
+        )
+
+
 def _salt_spent(mixed: Sequence[_Mixed]) -> Iterator[str]:
     """Ions of the buffer beside the salt."""
     heavy = [made for made in mixed if made.own_mm > _OWN_SHARE * made.salt_mm]
@@ -95,7 +113,7 @@ def _salt_spent(mixed: Sequence[_Mixed]) -> Iterator[str]:
     low, high = (f"{end(made.own_mm for made in mixed):.0f}" for end in (min, max))
     brought = low if low == high else f"{low} to {high}"
     salted = [made for made in heavy if made.salt_mm > 0]
-    beside = "; no salt is beside them"
+    beside = ", in liquids without salt"
     if salted:
         most = max(salted, key=lambda made: made.own_mm / made.salt_mm)
         more = f"{100 * most.own_mm / most.salt_mm:.0f} %"

@@ -6,6 +6,7 @@ a pH, bottles and balances leave more. The pH has to be measured.
 
 from __future__ import annotations
 
+import math
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass
 
@@ -27,7 +28,7 @@ from muntin.record.buffers import WATER
 from muntin.record.definition import Definition
 from muntin.record.faults import listed, number
 
-_REACH = 1.0
+REACH = 1.0
 _NOTHING = 1e-9
 
 
@@ -59,7 +60,7 @@ def buffer_recipe(definition: Definition, condition: Condition) -> Recipe | Refu
         return _beyond_reach(wanted, titration)
     parts = _parts(wanted, min(1.0, max(0.0, base)))
     if parts[WATER] < -_NOTHING:
-        return _too_full(parts)
+        return _too_full(wanted, parts)
     kept = {name: share for name, share in parts.items() if share > _NOTHING}
     whole = sum(kept.values())
     shares = {name: share / whole for name, share in kept.items()}
@@ -123,11 +124,24 @@ def _beyond_reach(wanted: Wanted, titration: Titration) -> Refusal:
     return Refusal(reason=reason)
 
 
-def _too_full(parts: Mapping[str, float]) -> Refusal:
+def _too_full(wanted: Wanted, parts: Mapping[str, float]) -> Refusal:
     takes = listed(
         f"{1000 * share:.0f} mL of {name}" for name, share in parts.items() if share > _NOTHING
     )
-    return Refusal(reason=f"takes more than 1 L of stocks for 1 L: {takes}; stronger ones would do")
+    too_much = "more than 1 L of stocks for 1 L"
+    salt = parts.get(salt_name(wanted.bench), 0.0)
+    room = parts[WATER] + salt
+    if salt <= _NOTHING or room <= _NOTHING:
+        return Refusal(
+            reason=f"takes {too_much}: {takes}; stronger ones would do",
+            cause=f"their buffers take {too_much}; stronger stock_mm would do",
+        )
+    enough = 10.0 * math.ceil(wanted.salt_mm / room / 10.0 - _NOTHING)
+    return Refusal(
+        reason=f"takes {too_much}: {takes}; a salt stock of {number(enough)} mM would do",
+        cause=f"they take {too_much}, since {salt_name(wanted.bench)} is too weak",
+        salt_stock_mm=enough,
+    )
 
 
 def _remarks(wanted: Wanted, strength: float) -> Iterator[str]:
@@ -138,9 +152,10 @@ def _remarks(wanted: Wanted, strength: float) -> Iterator[str]:
         )
     else:
         at = f"{number(wanted.bench.temperature_c)} °C"
-        yield f"meant for pH {wanted.shown} at {at}; ionic strength {strength:.2f}"
+        shown = f"{strength:.2f}" if strength >= 0.01 else f"{strength:.4f}"
+        yield f"meant for pH {wanted.shown} at {at}; ionic strength {shown}"
     away = pka_away(wanted, strength)
-    if abs(away) > _REACH:
+    if abs(away) > REACH:
         side = "above" if away > 0 else "below"
         yield (
             f"pH {wanted.shown} lies {abs(away):.2f} {side} the nearest pKa of {wanted.names}, "

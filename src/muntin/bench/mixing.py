@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -78,7 +78,7 @@ class Mixer:
         tied = [name for name in held if name in matched]
         if not all(any(name in bottle.holds for bottle in bottles) for name in tied):
             wanted = " and ".join(self._shown(name, held[name]) for name in tied)
-            return Refusal(reason=f"finds no bottle of {wanted}")
+            return Refusal(reason=f"finds no bottle of {wanted}", cause="there is no bottle of it")
         asked = {n: float(v) for n, v in held.items() if n not in matched}
         asked |= self.definition.bench.every_mix
         contents = _contents(bottles, asked)
@@ -127,14 +127,15 @@ class Mixer:
         used = {b: s for b, s in zip(bottles, shares, strict=True) if s > 0}
         for bottle in used:
             if isinstance(making := self.making(bottle), Refusal):
-                return Refusal(reason=f"needs {bottle.name}, which {making.reason}")
+                reason = f"needs {bottle.name}, which {making.reason}"
+                return replace(making, reason=reason)
         recipe = Recipe(parts={b.name: s for b, s in used.items()}, remarks=remarks)
         if self.total is None:
             return Mix(held, tuple(used), recipe, None, made_of(shares))
         parts = apportioned(shares, self.total)
         for bottle, share, steps in zip(bottles, shares, parts, strict=True):
             if share > 0 and steps < self.pipette.floor:
-                return Refusal(reason=self._too_little(bottle, share))
+                return self._too_little(bottle, share)
         made = made_of(parts)
         for name, value in made.items():
             if name in self._by_name and self._off(name, value, asked[name]):
@@ -149,10 +150,13 @@ class Mixer:
         """Whether what is made is more than half a bench step off."""
         return abs(made - asked) > _HALF * self._by_name[name].span[2]
 
-    def _too_little(self, bottle: Bottle, share: float) -> str:
+    def _too_little(self, bottle: Bottle, share: float) -> Refusal:
         takes = number(round(share * float(self.pipette.ul(self.total or 0)), 2))
-        floor = self.pipette.shown(self.pipette.floor)
-        return f"takes {takes} µL of {bottle.name}; the pipette draws no less than {floor} µL"
+        floor = f"the pipette draws no less than {self.pipette.shown(self.pipette.floor)} µL"
+        return Refusal(
+            reason=f"takes {takes} µL of {bottle.name}; {floor}",
+            cause=f"they take less of a bottle than can be drawn: {floor}",
+        )
 
     def _out_of_reach(
         self, bottles: list[Bottle], asked: Mapping[str, float], contents: Floats
@@ -161,8 +165,11 @@ class Mixer:
             slack = 1e-9 * max(1.0, abs(value))
             if not row.min() - slack <= value <= row.max() + slack:
                 span = f"{number(row.min())} to {number(row.max())}"
-                reason = f"is out of reach: the bottles for it hold {name} {span}"
-                return Refusal(reason=reason)
+                holds = f"the bottles for it hold {name} {span}"
+                return Refusal(
+                    reason=f"is out of reach: {holds}",
+                    cause=f"they are out of reach: {holds.replace('for it', 'for them')}",
+                )
         names = listed(bottle.name for bottle in bottles)
         return Refusal(reason=f"is out of reach: no mix of {names} makes all of it at once")
 

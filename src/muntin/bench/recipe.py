@@ -25,7 +25,10 @@ class Refusal:
     """Why no mix of the stocks makes a condition.
 
     reason: the end of a sentence that begins with the condition, such as "needs 620 mM of salt, and
-    the strongest stock holds 500 mM".
+    the strongest stock holds 500 mM". cause: what it shares with other conditions, as the end of
+    "these cannot be made:". salt_stock_mm: the weakest salt stock that would do, where that is it.
     """
 
     reason: str
+    cause: str = ""
+    salt_stock_mm: float | None = None

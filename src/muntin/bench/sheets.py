@@ -17,15 +17,15 @@ from muntin.bench.buffer_cautions import buffer_cautions
 from muntin.bench.fed import fed_lines, line_of
 from muntin.bench.load import Load, load_of
 from muntin.bench.mixing import Mix, Mixer
-from muntin.bench.nearby import nearest_that
 from muntin.bench.plan import next_plate
 from muntin.bench.recipe import Recipe, Refusal
+from muntin.bench.refused import Refused, faults_of
 from muntin.bench.transfers import Total, Transfer, totals_of, transfers_of
 from muntin.bench.volumes import Pipette
 from muntin.bench.wells import well_index
 from muntin.record.bench import LOAD
 from muntin.record.definition import Definition
-from muntin.record.faults import Fault, Findings, StudyFaults, counted, listed
+from muntin.record.faults import Fault, Findings, StudyFaults, counted
 from muntin.record.plan_choice import chosen_plan
 from muntin.record.plan_table import read_plan
 from muntin.record.readings import INFORMING
@@ -146,7 +146,7 @@ def _read(study: Study, plate: str, path: Path) -> tuple[str, pd.DataFrame]:
 def _mixes(
     definition: Definition, mixer: Mixer, rows: pd.DataFrame, file: str
 ) -> tuple[tuple[WellsMix, ...], list[Fault]]:
-    """The distinct liquids with their wells, and a fault of each condition that cannot be mixed."""
+    """The distinct liquids with their wells, and faults of what cannot be mixed."""
     bench, names = definition.bench, definition.factor_names
     if not bench.held:
         return (), []
@@ -163,11 +163,12 @@ def _mixes(
             refused.setdefault(key, (mix, []))[1].append(row["well"])
         else:
             mixes.setdefault(id(mix), (mix, []))[1].append(row["well"])
-    faults = [
-        _refused(definition, mixer, dict(zip(names, key, strict=True)), why, wells, file)
+    failed = [
+        Refused(condition=dict(zip(names, key, strict=True)), why=why, wells=wells)
         for key, (why, wells) in refused.items()
     ]
-    return tuple(WellsMix(mix, tuple(wells)) for mix, wells in mixes.values()), faults
+    found = tuple(WellsMix(mix, tuple(wells)) for mix, wells in mixes.values())
+    return found, faults_of(mixer, failed, file)
 
 
 def _liquid_of(
@@ -184,36 +185,6 @@ def _liquid_of(
         return None
     line = line_of(definition, str(row["well"]))
     return usual if line is None else {**usual, **fed.get(line, {})}
-
-
-def _refused(
-    definition: Definition,
-    mixer: Mixer,
-    condition: Mapping[str, Value],
-    why: Refusal,
-    wells: list[str],
-    file: str,
-) -> Fault:
-    """The fault of a condition that cannot be mixed, with the nearest one that can."""
-    bench = definition.bench
-    whole = {name: value for name, value in condition.items() if value != ""}
-    shown = ", ".join(
-        f"{f.name} {f.shown(whole[f.name])}" for f in definition.factors if f.name in whole
-    )
-    hint = "study.toml, bench, control_condition"
-    if len(whole) == len(definition.factors):
-        bottled = bench.matched(definition.factors)
-        close = nearest_that(mixer.works, definition, whole, bench.held, bottled)
-        hint = "no condition near it works"
-        if close is not None:
-            hint = f"nearest that works: {_shown(definition, close)}"
-    where = f"well{'s' if len(wells) > 1 else ''} {listed(wells)}"
-    return Fault(file=file, where=where, value=shown, problem=why.reason, hint=hint)
-
-
-def _shown(definition: Definition, condition: Mapping[str, Value]) -> str:
-    named = [f for f in definition.factors if f.name in condition]
-    return ", ".join(f"{f.name} {f.shown(condition[f.name])}" for f in named)
 
 
 def _in_order(definition: Definition, mixes: Iterable[WellsMix]) -> tuple[Bottle, ...]:

@@ -8,6 +8,7 @@ from muntin.commands.shared import Folder, Output, command
 @command
 def check(folder: Folder) -> Output:
     """Read a study and name every fault at once: file, row or well, column and the mend."""
+    from muntin.bench.reach import reach_notice
     from muntin.record import open_study
     from muntin.record.column_runs import read_columns
     from muntin.report.column_text import columns_line
@@ -18,9 +19,11 @@ def check(folder: Folder) -> Output:
     study = open_study(folder)
     lines, plans = plans_on_record(study)
     columns = read_columns(study.folder, study.definition)
+    reach = reach_notice(study.definition)
     facts = {
         "command": "check",
         "study": study_facts(study),
+        "stocks": reach,
         "plans": plans,
         "columns": {
             "planned": sum(len(plan.runs) for plan in columns.plans),
@@ -28,4 +31,4 @@ def check(folder: Folder) -> Output:
             "notices": columns.notices,
         },
     }
-    return Output(facts, check_screen(study, [*lines, *columns_line(columns)]))
+    return Output(facts, check_screen(study, [*lines, *columns_line(columns)], reach))

@@ -114,7 +114,8 @@ def check_stocks(factor: Factor, stocks: Sequence[Stock], found: Findings) -> No
                     value=number(stock.measured),
                     problem="lies outside",
                     allowed=_measured_text(factor),
-                    hint=f"study.toml, factors, {factor.name}",
+                    hint=f"study.toml, factors, {factor.name}; what wells measured, such as those "
+                    f"blended from a bottle, goes to {factor.name}_measured of the plate table",
                 )
             )
 

@@ -31,7 +31,7 @@ class Stock(NamedTuple):
 def read_stocks(
     folder: Path, factors: Sequence[Factor], plates: Sequence[str], found: Findings
 ) -> dict[str, list[Stock]]:
-    """Return the measured stocks of each plate."""
+    """Return the measured stocks of each plate; those of planned ones are checked, too."""
     by_name = {factor.name: factor for factor in factors}
     stocks = {}
     for plate, path in table_files(folder / "stocks", found):
@@ -39,6 +39,8 @@ def read_stocks(
         table = read_table(path, file, COLUMNS, found)
         if plate not in plates:
             not_run(folder, plate, file, list(plates), found)
+            if table is not None:
+                _stocks(table, by_name, found)
         elif table is not None:
             stocks[plate] = _stocks(table, by_name, found)
     return stocks

@@ -151,6 +151,7 @@ PREPARE = Part(
         "protein.left_mg": "what may still be used before it is run, the reserve kept back, mg",
         "protein.measured_mg": "what the draws hold, mg; null without protein_mg_per_ml",
         "protein.dead_mg": "what stays in the trough, mg",
+        "controls": "levels of bottles that only controls ask for, in sentences",
         "buffers": "what to know of the buffers, in sentences",
         "not_in_the_sheets": "what cannot be told, and the key that it needs",
         "cautions": "what to keep in mind",

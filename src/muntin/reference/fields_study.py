@@ -53,6 +53,7 @@ STUDY = Part(
 CHECK = Part(
     ("check",),
     {
+        "stocks": "which part of the range the stocks of [bench] cannot make; empty where none",
         "plans": "what is on record of plans and of how they were run",
         "plans.edits": "records of edited plans, as in plans/<plate>.edit.toml",
         "plans.edits[].<key>": "key of the record; those without a value are left out",

@@ -7,10 +7,12 @@ from collections import Counter
 from collections.abc import Iterable, Iterator
 from decimal import Decimal
 
+from muntin.bench.control_levels import control_levels
 from muntin.bench.gaps import gaps
 from muntin.bench.sheets import Sheets
 from muntin.bench.transfers import Total
 from muntin.record.bench import LOAD
+from muntin.record.buffers import WATER
 from muntin.record.faults import counted, listed, number
 from muntin.report.cautions import bench_cautions
 from muntin.report.plate_map import roles_text
@@ -98,7 +100,8 @@ def _bottles(sheets: Sheets) -> list[list[str]]:
         for total in totals
     ]
     items = [_item("", f"Have what is drawn{stays}:"), *([line.rstrip()] for line in lines)]
-    return [*items, *(_item(_BOX, said) for said in _measured(sheets))]
+    said = [_item("", line) for line in control_levels(sheets)]
+    return [*items, *said, *(_item(_BOX, line) for line in _measured(sheets))]
 
 
 def _measured(sheets: Sheets) -> Iterator[str]:
@@ -156,7 +159,8 @@ def _taken(sheets: Sheets) -> str:
     sums: Counter[str] = Counter()
     for parts in made_ul(sheets).values():
         sums.update(parts)
-    return ", ".join(f"{volume_ml(Decimal(ul))} of {stock}" for stock, ul in sums.items())
+    stocks = sorted(sums, key=lambda stock: stock == WATER)
+    return ", ".join(f"{volume_ml(Decimal(sums[stock]))} of {stock}" for stock in stocks)
 
 
 def _plate(sheets: Sheets) -> Iterator[str]:

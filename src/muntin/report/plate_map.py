@@ -19,6 +19,7 @@ from muntin.report.plate_wells import (
     ordered_factors,
     text_width,
 )
+from muntin.report.sheet_words import condition_part
 from muntin.report.style import INK, PAPER
 from muntin.report.words import axis_label
 
@@ -117,11 +118,24 @@ def _words(
     there = {*rows["role"]}
     rings = "".join(said for role, said in _RINGS.items() if role in there)
     roles = f"{roles_text(rows, definition.plate != 96)} The cut corner is at A1."
+    roles += _controls(definition, there)
     for y, said in ((0.51, f"{_legend(definition)}{rings}"), (0.28, roles)):
         axes.text(0.5, y, said, fontsize=min(11.0, 1380 / len(said)), **style)
     write = {**style, "ha": "right", "fontsize": 11}
     axes.text(A4[0] - 0.5, 7.84, "Run by ______________", **write)
     axes.text(A4[0] - 0.5, 7.42, "Date ______________", **write)
+
+
+def _controls(definition: Definition, there: set[str]) -> str:
+    """What controls are given besides the load, where the study says it."""
+    given = definition.bench.control_condition
+    roles = [_ROLES[role] for role in ("blank", "no_resin") if role in there]
+    if given is None or not definition.bench.held or not roles:
+        return ""
+    by = definition.plan.prepared_by
+    fed = "" if by == "well" else f", or what their {by} is fed"
+    said = f"{' and '.join(roles)}: {condition_part(definition, given)}{fed}."
+    return f" {said[:1].upper()}{said[1:]}"
 
 
 def _legend(definition: Definition) -> str:

@@ -9,6 +9,7 @@ from rich.console import Group, RenderableType
 from rich.table import Table
 from rich.text import Text
 
+from muntin.bench.control_levels import control_levels
 from muntin.bench.gaps import gaps
 from muntin.bench.sheets import Sheets, WellsMix
 from muntin.bench.transfers import Total
@@ -62,7 +63,7 @@ def _sentences(sheets: Sheets) -> list[str]:
         said.append(f"{counted(len(sheets.transfers), 'draw')}, the smallest {drawn} µL.")
     if sheets.load is not None:
         said.append(protein_line(sheets.load, sheets.study.definition))
-    return [*said, *sheets.buffers, *gaps(sheets)]
+    return [*said, *control_levels(sheets), *sheets.buffers, *gaps(sheets)]
 
 
 def _cautions() -> list[RenderableType]:
@@ -89,6 +90,7 @@ def sheets_facts(sheets: Sheets, folder: Path, files: list[str], remark: str) ->
         ],
         "totals": [_total_facts(total) for total in sheets.totals],
         "protein": None if load is None else {name: getattr(load, name) for name in _PROTEIN},
+        "controls": list(control_levels(sheets)),
         "buffers": list(sheets.buffers),
         "not_in_the_sheets": list(gaps(sheets)),
         "cautions": list(bench_cautions(ph_levels(sheets))),

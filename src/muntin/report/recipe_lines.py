@@ -6,6 +6,7 @@ import textwrap
 from collections.abc import Mapping
 
 from muntin.bench.recipe import Recipe
+from muntin.record.buffers import WATER
 
 _HEAD = "mL per litre"
 
@@ -14,7 +15,8 @@ def recipe_lines(makings: Mapping[str, Recipe], width: int) -> list[list[str]]:
     """Return the recipes by bottle, each as its lines, at most so many signs wide; first the
     heading of the table, where there is one. What is remarked on a bottle stands below it.
     """
-    stocks = list(dict.fromkeys(stock for recipe in makings.values() for stock in recipe.parts))
+    named = dict.fromkeys(stock for recipe in makings.values() for stock in recipe.parts)
+    stocks = sorted(named, key=lambda stock: stock == WATER)
     columns = [max(len(stock), 6) + 2 for stock in stocks]
     first = max(len(_HEAD), *(len(name) + 4 for name in makings), 0) if makings else 0
     if first + sum(columns) > width:

@@ -39,7 +39,7 @@ def held_text(definition: Definition, bottle: Bottle) -> str:
 
 def protein_line(load: Load, definition: Definition) -> str:
     """Return what protein the plan takes of what there is, in one sentence."""
-    left = f"{number(round(load.left_mg, 6))} mg are left"
+    left = f"before it {number(round(load.left_mg, 6))} mg are left"
     protein = definition.protein
     if protein is not None and protein.reserved_mg:
         left += f" beyond the reserve of {number(protein.reserved_mg)} mg"

@@ -193,14 +193,17 @@ def _capital(text: str) -> str:
     return text[:1].upper() + text[1:]
 
 
-def check_screen(study: Study, plans: Sequence[str] = ()) -> RenderableType:
-    """Return the screen of `check`; `plans` is what is on record of edited plans."""
+def check_screen(study: Study, plans: Sequence[str] = (), reach: str = "") -> RenderableType:
+    """Return the screen of `check`; `plans` is what is on record of edited plans, `reach` what the
+    stocks do not make.
+    """
     return sheet(
         study.definition.title,
         [
             ("Read", read_lines(study)),
             ("Noted", study.notices),
             ("Plans", plans),
+            ("Stocks", [reach] if reach else []),
             ("Sound", ["No faults were found."]),
         ],
     )
