@@ -33,9 +33,9 @@ def lines(folder: Path, **changed: Any) -> list[str]:
 def test_bottles_too_weak_for_many_conditions_are_one_fault(tmp_path: Path) -> None:
     stocks = [LOW, {**HIGH, "holds": {"salt": 200}}]
     assert lines(tmp_path, rows=WELLS, stocks=stocks) == [
-        "plans/plate-02.csv, wells A5, A6, A7, A8, A9: 5 conditions cannot be made: they are out of "
-        "reach: the bottles for them hold salt 0 to 200 (such as ph 5.0, salt 250, which is out of "
-        "reach: the bottles for it hold salt 0 to 200; nearest that works: ph 5.0, salt 200)"
+        "plans/plate-02.csv, wells A5, A6, A7, A8, A9: 5 conditions cannot be made: they are out "
+        "of reach: the bottles for them hold salt 0 to 200 (such as ph 5.0, salt 250; nearest that "
+        "works: ph 5.0, salt 200)"
     ]
 
 

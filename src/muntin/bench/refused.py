@@ -53,10 +53,7 @@ def _of_many(mixer: Mixer, alike: Sequence[Refused], cause: str, file: str) -> F
     """The fault of what is wrong with the stocks rather than with one condition."""
     strengths = [one.why.salt_stock_mm for one in alike if one.why.salt_stock_mm is not None]
     first = alike[0]
-    hint = (
-        f"such as {_shown(mixer, first.condition)}, which {first.why.reason}; "
-        f"{_nearest(mixer, first.condition)}"
-    )
+    hint = f"such as {_shown(mixer, first.condition)}; {_nearest(mixer, first.condition)}"
     if strengths:
         enough = number(max(strengths))
         hint = f"study.toml, bench, salt_stock_mm: {enough} and more would do for all of them"
