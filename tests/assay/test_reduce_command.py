@@ -165,3 +165,37 @@ def test_monte_carlo_is_compared_on_the_screen(tmp_path):
     study = write(tmp_path)
     assert "2000 Monte Carlo draws" in run("reduce", study, "reads", "--monte-carlo", 2000).output
     assert "Monte Carlo" not in run("reduce", study, "reads").output
+
+
+def test_before_the_reads_are_reduced_check_says_what_is_next(tmp_path):
+    study = write(tmp_path)
+    checked = run("check", study)
+    assert checked.exit_code == 0, checked.output
+    assert (
+        "recovery is awaited in 3 of 3 wells, in all of plate-01: muntin reduce DIR READS is next"
+    ) in " ".join(checked.output.split())
+    assessed = run("assess", study)
+    assert assessed.exit_code == 2
+    assert "(run muntin reduce DIR READS, fill in recovery, or keep a table" in assessed.output
+    run("reduce", study, "reads", "--quiet")
+    assert "is next" not in run("check", study).output
+
+
+def test_the_plates_that_are_still_to_be_reduced_are_named(tmp_path):
+    study = write(tmp_path)
+    run("reduce", study, "reads", "--quiet")
+    rows = [ROWS[0] + ",exclude", ROWS[1] + ",", ROWS[2] + ",dropped"]
+    (study / "plates" / "plate-02.csv").write_text("\n".join(rows) + "\n")
+    (told,) = (n for n in open_study(study).notices if "awaited" in n)
+    assert told == (
+        "recovery is awaited in 1 of 5 wells, in all of plate-02: muntin reduce DIR READS is next"
+    )
+
+
+def test_a_study_without_an_assay_needs_a_reading(tmp_path):
+    study = write(tmp_path)
+    settings = study / "study.toml"
+    settings.write_text(settings.read_text().split("[assay]")[0])
+    checked = run("check", study)
+    assert checked.exit_code == 2
+    assert "(fill in recovery, or keep a table in plans/ until it was run)" in checked.output

@@ -657,6 +657,20 @@ LATER = {
             '(did you mean "plate-01"?)'
         ],
     ),
+    "results_of_a_plate_not_run": (
+        {
+            "results/hcp.csv": "plate,well,hcp\nplate-2,A1,12\nplate-01,A1,40\n"
+            + "".join(f"Plate-2,A{n},12\nplate-3,A{n},9\n" for n in range(2, 9))
+        },
+        [
+            'results/hcp.csv, row 2, column plate: "plate-2" is not a plate that was run '
+            '(did you mean "plate-01"?)',
+            'results/hcp.csv, row 4, column plate: "Plate-2" is not a plate that was run '
+            '(in 7 rows; did you mean "plate-01"?)',
+            'results/hcp.csv, row 5, column plate: "plate-3" is not a plate that was run '
+            '(in 7 rows; did you mean "plate-01"?)',
+        ],
+    ),
     "result_of_one_of_two_plates": (
         {"plates/day2-1.csv": PLATE, "results/hcp.csv": "plate,well,hcp\n1,A1,40\n"},
         [

@@ -163,7 +163,7 @@ WELLS = "test wells 0 6 12 24"
 OUTLAY = ["protein, mg 0 4 5.5 8.5", "days 0.0 2.0 2.1 4.2"]
 SHARES = "may be called wrongly 5.0 % 4.0 % 3.0 % 2.0 %"
 PASSES = "set point passes 80.0 % 81.0 % 82.0 % 83.0 %"
-REACHES = "chance that set point reaches {} % no 35 % 62 % 40 %"
+REACHES = "chance set point reaches {} % no 35 % 62 % 40 %"
 
 
 @pytest.mark.parametrize(

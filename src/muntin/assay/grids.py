@@ -16,7 +16,7 @@ from collections.abc import Sequence
 from pathlib import Path
 from typing import NamedTuple
 
-from muntin.record.faults import Fault, Findings, number
+from muntin.record.faults import Fault, Findings, listed, nearest, number, quoted
 from muntin.record.tables import read_rows
 from muntin.record.wells import ROWS_COLUMNS
 
@@ -59,6 +59,61 @@ def grid_name(stem: str, plates: Sequence[str], fractions: Sequence[str]) -> Gri
     return None
 
 
+def name_fault(file: Path, plates: Sequence[str], fractions: Sequence[str]) -> Fault | None:
+    """Return what is not understood in the name of a file that holds a grid; None for others."""
+    rows = read_rows(file, file.name, Findings())
+    if rows is None or not _like_grid(rows):
+        return None
+    value, problem = _not_understood(file.stem.strip(), plates, fractions)
+    hint = (
+        f"a grid is named PLATE_FRACTION_WAVELENGTH, such as {plates[0] if plates else 'plate-01'}"
+        f"_{fractions[-1]}_280.csv; plates: {listed(plates)}; fractions: "
+        f"{listed(fractions)}"
+    )
+    return Fault(
+        file=file.name,
+        where="a grid by its content",
+        value=quoted(value),
+        problem=f"in its name {problem}",
+        hint=hint,
+    )
+
+
+def _like_grid(rows: Rows) -> bool:
+    """Whether cells lie under column numbers or beside row letters, as in no tidy table."""
+    filled = [[cell for cell in cells if cell] for _, cells in rows if any(cells)]
+    sizes = ROWS_COLUMNS.values()
+    counts = any(_counts(cells, wide) for cells in filled for _, wide in sizes)
+    first = [cells[0].upper() for cells in filled]
+    return counts or any(first[-high:] == _letters(high) for high, _ in sizes)
+
+
+def _not_understood(stem: str, plates: Sequence[str], fractions: Sequence[str]) -> tuple[str, str]:
+    """The part of a name that is not understood, and why, with the nearest name."""
+    found = _NAME.fullmatch(stem)
+    if found is None:
+        problem = 'is neither a wavelength (280) nor "volume", nor a dilution behind them (x5)'
+        return stem.rpartition("_")[2], problem
+    rest = found["rest"]
+    for plate in plates:
+        if rest.casefold().startswith(f"{plate}_".casefold()):
+            return _unknown(rest[len(plate) + 1 :], "fraction of [assay]", fractions)
+    for fraction in sorted(fractions, key=len, reverse=True):
+        if rest.casefold().endswith(f"_{fraction}".casefold()):
+            return _unknown(rest[: -len(fraction) - 1], "plate that was run", plates)
+    if rest.casefold() in [fraction.casefold() for fraction in fractions]:
+        return rest, "stands without its plate, of which there are several"
+    if "_" not in rest and len(plates) == 1:
+        return _unknown(rest, "fraction of [assay]", fractions)
+    return rest, "is no plate that was run and a fraction of [assay], parted by _"
+
+
+def _unknown(part: str, what: str, known: Sequence[str]) -> tuple[str, str]:
+    close = nearest(part, known)
+    meant = "" if close is None else f"; did you mean {quoted(close)}?"
+    return part, f"is not a {what}{meant}"
+
+
 def read_grid(path: Path, size: int, found: Findings) -> dict[str, tuple[str, str]]:
     """Return content and address of each cell that is not empty, by well; faults join `found`."""
     rows = read_rows(path, path.name, found)
@@ -97,9 +152,13 @@ def _without_headings(rows: Rows, wide: int) -> Rows:
     if rows and _counts(rows[0][1], wide):
         rows = rows[1:]
     letters = [cells[0].upper() if cells else "" for _, cells in rows]
-    if letters == [chr(ord("A") + r) for r in range(len(rows))]:
+    if letters == _letters(len(rows)):
         rows = [(line, cells[1:]) for line, cells in rows]
     return [(line, _trimmed(cells)) for line, cells in rows]
+
+
+def _letters(high: int) -> list[str]:
+    return [chr(ord("A") + r) for r in range(high)]
 
 
 def _counts(cells: Sequence[str], wide: int) -> bool:

@@ -10,7 +10,7 @@ from pathlib import Path
 
 import numpy as np
 
-from muntin.assay.grids import GridName, grid_name, read_grid
+from muntin.assay.grids import GridName, grid_name, name_fault, read_grid
 from muntin.assay.mapping import mapped
 from muntin.record.assay import READ_COLUMNS, Assay
 from muntin.record.cells import CellError, parse_number
@@ -76,10 +76,14 @@ def read_reads(path: Path, asked: Asked, found: Findings) -> list[Read]:
     volumes: dict[tuple[str, str, str], float] = {}
     for file in files:
         name = grid_name(file.stem, asked.plates, asked.fractions)
-        if name is None:
+        if name is not None:
+            _grid(file, name, asked, reads, volumes, found)
+            continue
+        fault = name_fault(file, asked.plates, asked.fractions)
+        if fault is None:
             reads += _tidy(file, asked, found)
         else:
-            _grid(file, name, asked, reads, volumes, found)
+            found.faults.append(fault)
     return _weighed(_once(reads, found), volumes)
 
 

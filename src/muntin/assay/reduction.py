@@ -21,8 +21,9 @@ from muntin.assay.uncertainty import (
     monte_carlo,
     shared_scale,
 )
+from muntin.assay.unread_wells import well_notices
 from muntin.record.assay import Assay, FixedWell
-from muntin.record.faults import Fault, Findings, StudyFaults, counted, did_you_mean, listed
+from muntin.record.faults import Fault, Findings, StudyFaults, did_you_mean
 from muntin.record.readings import INFORMING
 from muntin.record.responses import Response
 from muntin.record.study import Study
@@ -99,9 +100,10 @@ def reduce_reads(study: Study, path: Path, draws: int = 0, seed: int = 1) -> Red
     found = Findings()
     _check_columns(study, assay, found)
     names = tuple(plate.name for plate in study.plates)
-    asked = Asked(plates=names, size=study.definition.plate, assay=assay)
+    size = study.definition.plate
+    asked = Asked(plates=names, size=size, assay=assay)
     reads = read_reads(path, asked, found)
-    _strangers(study, reads, found)
+    found.notices[:0] = well_notices(study.wells, reads, assay, size)
     plates = [] if found.faults else _reduced(study, assay, reads, draws, seed, found)
     if not plates and not found.faults:
         problem = "hold no read of the protein's wavelength"
@@ -134,20 +136,6 @@ def _check_columns(study: Study, assay: Assay, found: Findings) -> None:
                 problem = f"{name} is no column of the plate tables"
                 hint = did_you_mean(name, known)
                 found.faults.append(Fault(file=_STUDY, where=where, problem=problem, hint=hint))
-
-
-def _strangers(study: Study, reads: list[Read], found: Findings) -> None:
-    """Notice reads of wells that no plate table names."""
-    run = set(zip(study.wells["plate"], study.wells["well"], strict=True))
-    for plate in dict.fromkeys(read.plate for read in reads):
-        others = dict.fromkeys(
-            read.well for read in reads if read.plate == plate and (plate, read.well) not in run
-        )
-        if others:
-            found.notices.append(
-                f"{plate}: reads of {counted(len(others), 'well')} that its plate table does not "
-                f"name are passed over ({listed(others)})"
-            )
 
 
 def _reduced(

@@ -16,7 +16,7 @@ def check(folder: Folder) -> Output:
     from muntin.report.facts import study_facts
     from muntin.report.text import check_screen
 
-    study = open_study(folder)
+    study = open_study(folder, checking=True)
     lines, plans = plans_on_record(study)
     columns = read_columns(study.folder, study.definition)
     reach = reach_notice(study.definition)

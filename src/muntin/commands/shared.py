@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import inspect
 import json
+import os
 import sys
 from collections.abc import Callable, Iterator, Sequence
 from contextlib import contextmanager
@@ -18,7 +19,7 @@ if TYPE_CHECKING:
     from rich.console import RenderableType
     from rich.status import Status
 
-_WIDTH = 100
+_WIDTH, _NARROWEST = 100, 40
 
 Folder = Annotated[Path, typer.Argument(metavar="DIR", help="the study's folder")]
 Wells = Annotated[int, typer.Option(min=1, help="test wells of the next plate; others come on top")]
@@ -179,11 +180,14 @@ def _print(output: Output, as_json: bool, quiet: bool) -> None:
 
 
 def _shown(screen: RenderableType) -> str:
-    """Return a screen as text, at most 100 columns wide, without blanks at the ends of lines."""
+    """Return a screen as text, as wide as the terminal or COLUMNS but at most 100 columns, without
+    blanks at the ends of lines.
+    """
     from rich.console import Console
 
     console = Console(highlight=False, markup=False, emoji=False)
-    console.width = min(_WIDTH, console.width) if console.is_terminal else _WIDTH
+    told = console.is_terminal or os.environ.get("COLUMNS", "").isdigit()
+    console.width = min(_WIDTH, max(_NARROWEST, console.width)) if told else _WIDTH
     with console.capture() as capture:
         console.print(screen)
     return "".join(f"{line.rstrip()}\n" for line in capture.get().splitlines())

@@ -62,7 +62,19 @@ def well_notices(
             )
         awaited = int((states == "awaited").sum())
         if awaited:
-            yield f"{name} is awaited in {awaited} of {counted(len(counting), 'well')}"
+            line = f"{name} is awaited in {awaited} of {counted(len(counting), 'well')}"
+            yield line + _reduce_next(definition, response, counting)
+
+
+def _reduce_next(definition: Definition, response: Response, wells: pd.DataFrame) -> str:
+    """What is next where plate reads give a response, and whole plates lack it."""
+    if definition.assay is None or definition.assay.response != response.name:
+        return ""
+    kept = wells[wells[f"{response.name}_state"] != "excluded"]
+    awaited = kept[f"{response.name}_state"] == "awaited"
+    whole = awaited.groupby(kept["plate"], sort=False).all()
+    plates = [str(plate) for plate in whole.index[whole]]
+    return f", in all of {listed(plates)}: muntin reduce DIR READS is next" if plates else ""
 
 
 def odd_notices(

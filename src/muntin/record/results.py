@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import re
+from collections import Counter
 from collections.abc import Collection, Mapping, Sequence
 from dataclasses import replace
 from pathlib import Path
@@ -84,8 +85,9 @@ def _has_columns(
 def _rows(table: Table, size: int, run: Run, found: Findings) -> list[int | None]:
     rows: list[int | None] = []
     first: dict[tuple[str, str], str] = {}
+    plates = _plates(table, run, found)
     for row, cell in enumerate(table.cells("well")):
-        plate = _plate(table, row, run, found)
+        plate = plates[table.cells("plate")[row]]
         well = None if plate is None else _well(table, row, plate, cell, size, run, found)
         if plate is None or well is None:
             rows.append(None)
@@ -98,19 +100,30 @@ def _rows(table: Table, size: int, run: Run, found: Findings) -> list[int | None
     return rows
 
 
-def _plate(table: Table, row: int, run: Run, found: Findings) -> str | None:
-    """The plate that a row names, None where there is no such plate or its table is at fault."""
-    cell, plates = table.cells("plate")[row], run.plates()
+def _plates(table: Table, run: Run, found: Findings) -> dict[str, str | None]:
+    """The plate that each cell names, None where there is no such plate or its table is at fault;
+    one fault a cell that names none, with the number of its rows.
+    """
+    cells, meant = table.cells("plate"), {}
+    for cell, count in Counter(cells).items():
+        meant[cell], problem, hint = _plate(cell, run)
+        if problem:
+            told = "; ".join(filter(None, (f"in {count} rows" if count > 1 else "", hint)))
+            found.faults.append(table.fault(cells.index(cell), "plate", problem, hint=told))
+    return meant
+
+
+def _plate(cell: str, run: Run) -> tuple[str | None, str, str]:
+    """The plate that a cell names, or the problem with it and how to mend it."""
+    plates = run.plates()
     same = [name for name in plates if name.casefold() == cell.casefold()]
     same = same or [name for name in plates if _names(cell, name)]
     if len(same) == 1:
-        return None if same[0] in run.unread else same[0]
-    problem = "is not a plate that was run"
-    hint = did_you_mean(cell, plates) if cell and plates else ""
+        return (None if same[0] in run.unread else same[0]), "", ""
     if same:
-        problem, hint = f"may be {' or '.join(same)}", "write the plate's whole name"
-    found.faults.append(table.fault(row, "plate", problem, hint=hint))
-    return None
+        return None, f"may be {' or '.join(same)}", "write the plate's whole name"
+    hint = did_you_mean(cell, plates) if cell and plates else ""
+    return None, "is not a plate that was run", hint
 
 
 def _names(cell: str, plate: str) -> bool:

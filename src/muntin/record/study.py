@@ -151,14 +151,17 @@ class Study:
         )
 
 
-def open_study(path: str | Path, *, reducing: bool = False, excluding: bool = True) -> Study:
+def open_study(
+    path: str | Path, *, reducing: bool = False, excluding: bool = True, checking: bool = False
+) -> Study:
     """Read a study folder; nothing is written.
 
-    With `reducing` plates may have no reading yet, and what was reduced before is not read. Without
-    `excluding` wells and readings that were left out count as if they had not been.
+    With `reducing` plates may have no reading yet, and what was reduced before is not read; with
+    `checking` they may have none where [assay] tells how reads give one. Without `excluding` wells
+    and readings that were left out count as if they had not been.
     Raises StudyFaults with every fault of its files.
     """
-    study = _read(Path(path), reducing=reducing, excluding=excluding)
+    study = _read(Path(path), reducing, excluding, checking)
     ledger = read_ledger(study.folder)
     changes = changes_of(study, ledger, _read) if excluding and not reducing else Changes()
     told = [changes.notice, *ledger.problems[:1], unfinished_notice(study.folder)]
@@ -166,7 +169,9 @@ def open_study(path: str | Path, *, reducing: bool = False, excluding: bool = Tr
     return replace(study, notices=notices, changes=changes)
 
 
-def _read(folder: Path, reducing: bool = False, excluding: bool = True) -> Study:
+def _read(
+    folder: Path, reducing: bool = False, excluding: bool = True, checking: bool = False
+) -> Study:
     """Read a study folder by itself, without its ledger."""
     _check_folder(folder)
     found = Findings()
@@ -179,7 +184,8 @@ def _read(folder: Path, reducing: bool = False, excluding: bool = True) -> Study
     }
     if definition is None:
         raise StudyFaults(found.faults)
-    wells = _read_wells(folder, definition, plates, tables, found, reducing, excluding)
+    unread = reducing or (checking and definition.assay is not None)
+    wells = _read_wells(folder, definition, plates, tables, found, reducing, excluding, unread)
     stops = read_stops(folder, found)
     if not reducing:
         found.notices.extend(reduced_notices(folder, definition))
@@ -245,6 +251,7 @@ def _read_wells(
     found: Findings,
     reducing: bool,
     excluding: bool,
+    may_be_unread: bool,
 ) -> pd.DataFrame:
     stocks = read_stocks(folder, definition.factors, [*tables], found)
     parts = {
@@ -262,7 +269,7 @@ def _read_wells(
     found.faults.extend(shared_column_faults(definition, tables, needed))
     found.faults.extend(copy_faults(plates, parts))
     if not found.faults:
-        _take_stock(folder, definition, frame, parts, void, found, may_be_unread=reducing)
+        _take_stock(folder, definition, frame, parts, void, found, may_be_unread)
     return frame
 
 
@@ -296,7 +303,6 @@ def _take_stock(
     parts: dict[str, PlateRows],
     void: dict[str, str],
     found: Findings,
-    *,
     may_be_unread: bool,
 ) -> None:
     informing = frame[frame["role"].isin(INFORMING)]

@@ -94,11 +94,13 @@ def no_reading_fault(definition: Definition, counting: pd.DataFrame) -> Fault | 
     if counting.empty or any(counting[f"{name}_state"].isin(USED).any() for name in names):
         return None
     plates = counting["plate"].nunique()
+    reads = definition.assay is not None
+    reduce = "run muntin reduce DIR READS, " if reads else ""
     return Fault(
         file="plates",
         problem=f"hold no reading of any response in {counted(len(counting), 'well')} "
         f"on {counted(plates, 'plate')}",
-        hint=f"fill in {', '.join(names)}, or keep a table in plans/ until it was run",
+        hint=f"{reduce}fill in {', '.join(names)}, or keep a table in plans/ until it was run",
     )
 
 

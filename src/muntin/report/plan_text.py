@@ -27,7 +27,7 @@ from muntin.report.words import (
     axis_label,
     condition_text,
     joined,
-    likely_text,
+    narrow_chance,
     per_cent,
     share_text,
 )
@@ -257,7 +257,7 @@ def forecast_table(study: Study, plan: Plan, full: bool = True) -> Table:
     table = _plain_table()
     table.add_column("test wells")
     for wells in forecast["wells"]:
-        table.add_column(f"{int(wells)}", justify="right")
+        table.add_column(f"{int(wells)}", justify="right", no_wrap=True)
     for name, label in _OUTLAY.items():
         if name in forecast and (name != "plates" or (full and forecast[name].max() > 1)):
             digits = ".1f" if name == "days" else ".3g"
@@ -268,9 +268,9 @@ def forecast_table(study: Study, plan: Plan, full: bool = True) -> Table:
     if full or not asked:
         table.add_row("set point passes", *map(share_text, forecast["set_point"]))
     if full or asked:
-        reaches = f"set point reaches {per_cent(asked_of_set_point(study))}"
+        reaches = f"chance set point reaches {per_cent(asked_of_set_point(study))}"
         today, *then = forecast["reached"]
-        table.add_row(f"chance that {reaches}", "yes" if today else "no", *map(likely_text, then))
+        table.add_row(reaches, "yes" if today else "no", *map(narrow_chance, then))
     return table
 
 
@@ -293,7 +293,9 @@ def known_table(definition: Definition, known: pd.DataFrame, most: int = 20) -> 
         table.add_column(axis_label(factor.label, factor.unit), justify="right")
     shown = [r for r in definition.responses if f"{r.name}_mean" in known]
     for response in shown:
-        table.add_column(axis_label(response.label, response.unit) + ", mean (95 %)")
+        table.add_column(
+            axis_label(response.label, response.unit) + ", mean (95 %)", no_wrap=not shown[1:]
+        )
     chances = [name for name in ("p_mean", "p_well", "p_kept") if name in known]
     for name in chances:
         table.add_column(name, justify="right")

@@ -136,7 +136,7 @@ def _read(reduction: Reduction) -> list[str]:
 def _table(reduction: Reduction) -> Table:
     table = Table(box=None, pad_edge=False, padding=(0, 2, 0, 0), header_style="dim")
     for index, heading in enumerate(
-        ("plate", "wells", "load, mg/mL", "bound, µg", "recovery", "own sd", "shared", "closure")
+        ("plate", "wells", "load,\nmg/mL", "recovery", "own sd", "shared", "closure")
     ):
         justify: Literal["left", "right"] = "right" if index else "left"
         table.add_column(heading, justify=justify, overflow="fold", no_wrap=not index)
@@ -154,7 +154,6 @@ def _table_row(reduction: Reduction, plate: PlateReduction) -> tuple[str, ...]:
         plate.inputs.plate,
         str(int(told.sum())),
         f"{float(load_of(plate.inputs, reduction.assay, {})):.3g}",
-        _range(plate.quantities["bound_ug"].value[told], "{:.3g}"),
         _range(recovery.value[known], "{:.2f}"),
         _middle(recovery.own[told], "{:.3f}"),
         f"{100 * plate.shared.scale:.1f} %",
@@ -163,17 +162,18 @@ def _table_row(reduction: Reduction, plate: PlateReduction) -> tuple[str, ...]:
 
 
 def _bound(reduction: Reduction) -> list[str]:
-    """What was bound per volume of resin, at which concentration, and after which time."""
+    """What was bound in all and per volume of resin, at which concentration, after which time."""
     minutes = reduction.fixed.contact_minutes
     after = "a contact time that [fixed] does not tell" if minutes is None else f"{minutes:g} min"
     lines = []
     for plate in reduction.plates:
         use = np.array([role in INFORMING for role in plate.inputs.roles])
-        capacity = plate.quantities["capacity_mg_ml"].value[use]
+        bound = _range(plate.quantities["bound_ug"].value[use], "{:.3g}")
+        capacity = _range(plate.quantities["capacity_mg_ml"].value[use], "{:.3g}")
         kp = plate.quantities["log10_kp"].value[use]
         lines.append(
-            f"{plate.inputs.plate}: {_range(capacity, '{:.3g}')} mg/mL resin after {after}; "
-            f"log10 Kp {_range(kp, '{:.2f}')}."
+            f"{plate.inputs.plate}: {bound} µg, {capacity} mg/mL resin "
+            f"after {after}; log10 Kp {_range(kp, '{:.2f}')}."
         )
     return lines
 

@@ -16,7 +16,7 @@ from muntin.assay.uptake_remarks import Remark
 from muntin.record.faults import counted, number
 from muntin.report.text import Section, sheet
 from muntin.report.uptake_facts import gain_of_longer, within
-from muntin.report.words import likely_text
+from muntin.report.words import narrow_chance
 
 _LOAD = "mg/mL resin"
 _HINT = "No contact time is planned: --at MIN, or planned_min in [uptake] of study.toml."
@@ -36,7 +36,7 @@ def uptake_screen(
         parts.append(Text(""))
     files = [str(path) for path in written]
     notes = [("Means", [_means(uptake.priors) for uptake, _ in judged[:1]]), ("Written", files)]
-    return Group(*parts, sheet("All curves" if judged[1:] else "The curve", notes))
+    return Group(*parts, sheet("How to read the figures", notes))
 
 
 def interval_text(found: Interval, centre: float, unit: str) -> str:
@@ -88,9 +88,9 @@ def _planned(uptake: Uptake, planned: float) -> str:
 
 def _laws(uptake: Uptake, planned: float | None) -> Table:
     table = Table(box=None, padding=(0, 2, 0, 0), pad_edge=False)
-    at = [] if planned is None else [f"at {number(planned)} min"]
-    for heading in ("law", "weight", "equilibrium", *at, "95 % after, min", "rate, 1/min"):
-        table.add_column(heading, overflow="fold")
+    at = [] if planned is None else [f"at\n{number(planned)} min"]
+    for heading in ("law", "weight", "at equi-\nlibrium", *at, "95 % after,\nmin", "rate,\n1/min"):
+        table.add_column(heading, overflow="fold", no_wrap=heading in ("law", "weight"))
     ranked = sorted(zip(uptake.law_weights, uptake.grids, strict=True), key=lambda p: -p[0])
     for weight, grid in ranked:
         columns = [grid.equilibrium, *([] if planned is None else [grid.load_at(planned)])]
@@ -100,7 +100,7 @@ def _laws(uptake: Uptake, planned: float | None) -> Table:
         rate = within(grid, grid.law.rates(grid.half_time, grid.takes)).median
         table.add_row(
             grid.law.name,
-            likely_text(weight),
+            narrow_chance(weight),
             *loads,
             f"{three_digits(time.median)} ({span})",
             three_digits(rate),

@@ -71,6 +71,11 @@ def likely_text(chance: float) -> str:
     return f"{100 * chance:.0f} %"
 
 
+def narrow_chance(chance: float) -> str:
+    """Return the same as short as a narrow column needs it: ">99 %"."""
+    return likely_text(chance).replace("over ", ">").replace("under ", "<")
+
+
 def chance_text(probability: float) -> str:
     """Return a probability with two decimals, or more where it has more."""
     short = f"{probability:.2f}"

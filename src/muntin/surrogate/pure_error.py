@@ -19,6 +19,8 @@ from muntin.surrogate.hyperparameters import Posterior
 from muntin.surrogate.weights import tempered
 
 Array = NDArray[np.float64]
+# Levels of the prior, in its sds, at which the tail of repeats is averaged over it.
+_LEVELS = np.linspace(-5.0, 5.0, 201)
 
 
 @dataclass(frozen=True)
@@ -53,3 +55,22 @@ def pure_error(model: Model, posterior: Posterior) -> PureError:
     needed = np.exp(w @ np.log((extra * variance).sum(1) / degrees) / 2.0)
     tail = float(w @ gammainc(degrees / 2.0, square / 2.0))
     return PureError(degrees, float(np.sqrt(within.sum() / degrees)), float(needed), tail)
+
+
+def agreement(model: Model) -> float:
+    """Probability that repeats agree as well or better under the prior of the noise alone, with the
+    uncertainties that the readings state; 1 without repeats.
+    """
+    from scipy.special import gammainc
+
+    cells, prior = model.cells, model.family.priors.noise_sd
+    repeated = np.flatnonzero(cells.count > 1.0)
+    degrees = (cells.count[repeated] - 1.0).sum()
+    noise = prior.median * np.exp(prior.log_sd * _LEVELS)
+    variance = noise[:, None] ** 2 + cells.variance[repeated]
+    square = (cells.within[repeated] / variance).sum(1)
+    weights = np.exp(-0.5 * _LEVELS**2)
+    if not degrees:
+        return 1.0
+    tail = gammainc(degrees / 2.0, square / 2.0)
+    return float(weights @ tail / weights.sum())

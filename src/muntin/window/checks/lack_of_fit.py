@@ -7,11 +7,13 @@ import numpy as np
 from muntin.record.faults import counted
 from muntin.record.responses import Response
 from muntin.surrogate.fit import Stack
-from muntin.surrogate.pure_error import pure_error
+from muntin.surrogate.pure_error import agreement, pure_error
 from muntin.window.checks.check import Check
 
 _LEVEL = 0.002
 _FEWEST = 3
+# Repeats that the prior of the noise lets agree so well less often are asked about.
+_TOO_WELL = 0.005
 
 
 def lack_of_fit(response: Response, stack: Stack) -> list[Check]:
@@ -38,6 +40,14 @@ def lack_of_fit(response: Response, stack: Stack) -> list[Check]:
         sentence = (
             f"{response.label}: conditions do not clearly scatter about the surface by more than "
             f"repeats do ({sizes})."
+        )
+    elif agreement(stack.fits[0].model) < _TOO_WELL:
+        sentence = (
+            f"{response.label}: repeats agree suspiciously well ({repeats} of sd "
+            f"{_size(found[0].sd, unit)}, while the other readings ask for {_size(needed, unit)}): "
+            "are they wells of their own from the load to the read, or reads of one eluate? Of "
+            "reads of one eluate leave out all but one (exclude); if they are wells of their own "
+            'and each condition has its own stock, add a shared error by it that acts "inside".'
         )
     else:
         sentence = (
