@@ -9,7 +9,9 @@ import pytest
 
 from muntin.record.column_plan import ColumnPlan, plan_text, read_plans
 from muntin.record.faults import Findings, StudyFaults
+from muntin.record.ledger import LEDGER, Entry, read_ledger
 from muntin.record.study import open_study
+from muntin.verify import verify
 from tests.report.studies import STUDY, plate, small, tree
 from tests.test_cli import rows_of, run
 
@@ -253,8 +255,10 @@ def test_planning_again_keeps_what_is_there_and_numbers_on(study: Path) -> None:
     result = run("confirm", study, *QUICK, *AGAIN, "--json")
     assert result.exit_code == 0, result.output
     after = tree(study)
+    assert after[LEDGER].startswith(before.pop(LEDGER))
     assert {name: after[name] for name in before} == before
-    assert sorted(set(after) - set(before)) == ["columns/plan.r2.csv", "columns/plan.r2.toml"]
+    new = set(after) - {*before, LEDGER}
+    assert sorted(new) == ["columns/plan.r2.csv", "columns/plan.r2.toml"]
     last = json.loads(result.stdout)["plans"][-1]
     # 10 mg are reserved, 6 mg of them were used.
     assert [one["run"] for one in last["runs"]] == [4]
@@ -359,15 +363,53 @@ def test_of_two_that_plan_at_once_one_plan_stands(study: Path) -> None:
     definition, plan = open_study(study).definition, plan_of(study)
     (study / "columns" / "plan.csv").unlink()
     (study / "columns" / "plan.toml").unlink()
-    paths = write_columns(study, definition, plan)[1]
+    entry = Entry(command="confirm")
+    paths = write_columns(study, definition, plan, 0, entry)[1]
     before = tree(study)
-    with pytest.MonkeyPatch.context() as patch:
-        # The other process looked before these files were there.
-        patch.setattr("muntin.report.column_files.plan_paths", lambda folder: [])
-        with pytest.raises(StudyFaults) as caught:
-            write_columns(study, definition, plan.model_copy(update={"seed": 2}))
-    assert caught.value.lines() == [f"{paths[1]}: is already there and is not overwritten"]
+    # The other process looked before these files were there.
+    with pytest.raises(StudyFaults) as caught:
+        write_columns(study, definition, plan.model_copy(update={"seed": 2}), 0, entry)
+    assert caught.value.lines() == [f"{p}: is already there and is not overwritten" for p in paths]
     assert tree(study) == before
+
+
+def test_a_plan_has_its_line_in_the_ledger(study: Path) -> None:
+    (line,) = read_ledger(study).sound
+    entry, plan = line.entry, plan_of(study)
+    assert (entry.command, entry.seed, entry.by) == ("confirm", 1, None)
+    assert entry.inputs == plan.inputs
+    assert set(entry.results) == {"columns/plan.csv", "columns/plan.toml"}
+    assert entry.settings["surrogate"] == "quadratic"
+    assert run("confirm", study, *QUICK, *AGAIN, "--by", "lab 2").exit_code == 0
+    entry = read_ledger(study).sound[-1].entry
+    assert (entry.by, entry.settings["because"]) == ("lab 2", AGAIN[2])
+    assert set(entry.results) == {"columns/plan.r2.csv", "columns/plan.r2.toml"}
+
+
+def test_the_table_is_filled_in_and_the_predictions_stay(study: Path) -> None:
+    rows = (study / "columns" / "plan.csv").read_text()
+    (study / "columns" / "plan.csv").write_text(rows.replace(",\n", ",mine\n"))
+    assert (verify(study).differs, verify(study).notes) == ((), ())
+    (study / "columns" / "plan.csv").rename(study / "columns" / "column-01.csv")
+    assert (verify(study).differs, verify(study).notes) == ((), ())
+    record = study / "columns" / "plan.toml"
+    record.write_text(record.read_text().replace("probability = 0.9", "probability = 0.8", 1))
+    (said,) = verify(study).differs
+    assert said.startswith("columns/plan.toml was altered after it was written (line 1, ")
+    record.unlink()
+    (said,) = verify(study).differs
+    assert said.startswith("columns/plan.toml was deleted (written with line 1, ")
+
+
+def test_a_reason_to_plan_again_explains_no_change(study: Path) -> None:
+    path = study / "study.toml"
+    path.write_text(path.read_text().replace("at_least = 0.8", "at_least = 0.78"))
+    said = open_study(study).changes.sentences
+    assert said == ("study.toml, responses, recovery, at_least: 0.8, now 0.78",)
+    assert run("confirm", study, *QUICK, *AGAIN, "--by", "lab 2").exit_code == 0
+    assert open_study(study).changes.sentences == said
+    assert read_ledger(study).sound[-1].open
+    assert not verify(study).clean
 
 
 def test_check_reads_the_columns_too(study: Path) -> None:

@@ -84,6 +84,11 @@ def rewritten(folder: Path) -> None:
     (folder / LEDGER).write_bytes(raw)
 
 
+def left_out_by_response(folder: Path) -> None:
+    edit("plates/plate-01.csv", ",exclude$", ",recovery_exclude")(folder)
+    PLANTED["a reading left out"][0](folder)
+
+
 PLANTED: dict[str, tuple[Callable[[Path], None], str]] = {
     "a reading": (
         edit("plates/plate-01.csv", "^A1,test,4.5,50,0.021,", "A1,test,4.5,50,0.031,"),
@@ -104,6 +109,14 @@ PLANTED: dict[str, tuple[Callable[[Path], None], str]] = {
     "a prior": (
         edit("study.toml", "at_least = 0.8", "at_least = 0.8\npriors = {mean_sd = 2}"),
         r"study.toml, responses, recovery, priors: none, now \(mean_sd 2\)",
+    ),
+    "a reading left out": (
+        edit("plates/plate-01.csv", "^A1,test,4.5,50,0.021,$", "A1,test,4.5,50,0.021,it dripped"),
+        rf"since {R2}: plate-01, recovery: left out A1 0.021: it dripped",
+    ),
+    "a reading left out in its own column": (
+        left_out_by_response,
+        rf"since {R2}: plate-01, recovery: left out A1 0.021: it dripped",
     ),
     "a deleted plate": (deleted("plates/plate-02.csv"), r"plate-02 was deleted \(12 wells\)"),
     "an edited line": (

@@ -14,11 +14,11 @@ from typing import Any
 from muntin.advise import AdviceSettings, find
 from muntin.record import StudyFaults, open_study
 from muntin.record.asked import asked_changes, asked_of
-from muntin.record.changes import well_changes
+from muntin.record.changes import Explained, explained_changes, well_changes
 from muntin.record.faults import counted, number, quoted
 from muntin.record.inputs import hashes, read_inputs, versions
 from muntin.record.kept import ADVICE_FILE, advice_folders, kept_files, read_advice
-from muntin.record.ledger import Line, read_ledger
+from muntin.record.ledger import read_ledger
 from muntin.record.offers import PLANS
 from muntin.record.writing import unfinished_notice
 from muntin.report.advice_files import json_text
@@ -92,7 +92,7 @@ def verify(
         differs=(*ledger.problems, *kept.differs, *(d for a in advice for d in a.differs), *now),
         notes=(
             *([left] if left else []),
-            *(said for line in ledger.sound for said in _explained(line)),
+            *map(_explained, explained_changes(ledger)),
             *kept.notes,
             *(note for a in advice for note in a.notes),
             *remarks,
@@ -106,16 +106,16 @@ def _as_it_is(folder: Path) -> tuple[str, list[str], list[str]]:
         study = open_study(folder)
     except StudyFaults as faults:
         return str(folder), [f"the study cannot be read now: {faults.lines()[0]}"], []
-    told = [f"since {study.changes.since}: {said}" for said in study.changes.sentences]
+    changes = study.changes
+    said = (*changes.sentences, *changes.left_out)
+    told = [f"since {changes.since}: {one}" for one in said]
     aside = [path.name for path in sorted(folder.glob("ledger-torn-*.txt"))]
     return study.definition.title, told, [f"{name}: a torn line, set aside" for name in aside]
 
 
-def _explained(line: Line) -> Iterator[str]:
-    if line.entry.changes and line.entry.because:
-        who = line.entry.by or "nobody"
-        why = f"{who}, {line.time[:10]}: {quoted(line.entry.because)}"
-        yield f"line {line.number} explains {'; '.join(line.entry.changes)} ({why})"
+def _explained(one: Explained) -> str:
+    why = f"{one.by}, {one.time[:10]}: {quoted(one.because)}"
+    return f"line {one.line} explains {'; '.join(one.said)} ({why})"
 
 
 def _rechecked(base: Path, shown: str, recompute: bool) -> Rechecked:

@@ -126,6 +126,35 @@ def test_new_plates_void_ones_and_readings_that_were_awaited(study: Path) -> Non
     assert open_study(study).changes.sentences == (said,)
 
 
+LATER = r"^A2,test,5.0,250,0.389,$"
+
+
+@pytest.mark.parametrize("own", [True, False])
+def test_what_was_left_out_is_told_apart(study: Path, own: bool) -> None:
+    text = (study / PLATE).read_text()
+    if own:
+        text = text.replace(",exclude\n", ",recovery_exclude\n")
+    said = re.sub(FIRST, r"A1,test,4.5,50,0.021,the pipette dripped", text, flags=re.M)
+    said, count = re.subn(LATER, r"A2,test,5.0,250,0.389,the pipette dripped", said, flags=re.M)
+    assert count == 1
+    (study / PLATE).write_text(said)
+    changes = open_study(study).changes
+    assert changes.sentences == ()
+    assert changes.since == "advice/plate-03/r1"
+    assert changes.left_out == (
+        "plate-01, recovery: left out A1 0.021, A2 0.389: the pipette dripped",
+    )
+    advised(study, 2)
+    assert open_study(study).changes.left_out == ()
+
+
+def test_a_plate_made_void_is_told_apart(study: Path) -> None:
+    write(study, {"plates/plate-02.toml": 'void = "feed was warm"\n'})
+    changes = open_study(study).changes
+    assert (changes.sentences, changes.notice) == ((), "")
+    assert changes.left_out == ("plate-02 was made void: feed was warm",)
+
+
 def test_a_deleted_plate(study: Path) -> None:
     (study / "plates" / "plate-02.csv").unlink()
     assert open_study(study).changes.sentences == ("plate-02 was deleted (12 wells)",)

@@ -8,12 +8,14 @@ import subprocess
 import sys
 import threading
 from collections.abc import Callable
+from contextlib import ExitStack
 from pathlib import Path
 
 import pytest
 
 from muntin.record import StudyFaults
 from muntin.record import lock as locks
+from muntin.record.edits import sha256
 from muntin.record.ledger import LEDGER, Entry, read_ledger
 from muntin.record.lock import HELD, LOCK, locked
 from muntin.record.writing import STAGE, unfinished_notice, writing
@@ -49,6 +51,16 @@ def without_ledger(folder: Path) -> dict[str, bytes]:
     return {name: content for name, content in tree(folder).items() if name != LEDGER}
 
 
+def without_file(folder: Path) -> list[str]:
+    """What the ledger tells of that is not there, or not so."""
+    return [
+        name
+        for line in read_ledger(folder).sound
+        for name, of in line.entry.results.items()
+        if not (folder / name).is_file() or sha256((folder / name).read_bytes()) != of
+    ]
+
+
 def as_new() -> dict[str, bytes]:
     given = {name: of for name, of in {**OLD, **NEW}.items() if name != GONE}
     return {name: of.encode() if isinstance(of, str) else of for name, of in given.items()}
@@ -73,6 +85,7 @@ def test_a_process_killed_at_any_step_leaves_all_or_nothing(tmp_path: Path) -> N
         if not dies_at(step, lambda folder=folder: put(folder)):
             break
         told = unfinished_notice(folder)
+        assert without_file(folder) == []
         with writing(folder) as pen:
             remarks = pen.remarks
         after = without_ledger(folder)
@@ -216,6 +229,27 @@ def test_a_second_writer_waits_and_is_told_in_the_end(tmp_path: Path) -> None:
     assert told == [f"{tmp_path}: is being written by another (wait until it is done)"]
     with locked(tmp_path, seconds=0.1):
         assert (tmp_path / LOCK).exists()
+    assert [*tmp_path.iterdir()] == []
+
+
+@pytest.mark.skipif(sys.platform == "win32", reason="an open file cannot be replaced there")
+@pytest.mark.parametrize("again", [True, False])
+def test_a_lock_given_up_between_opening_and_taking_it_is_another_one(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch, again: bool
+) -> None:
+    first, third, taken = ExitStack(), ExitStack(), locks._taken
+
+    def late(descriptor: int) -> bool:
+        monkeypatch.setattr(locks, "_taken", taken)
+        first.close()
+        if again:
+            third.enter_context(locked(tmp_path))
+        return taken(descriptor)
+
+    first.enter_context(locked(tmp_path))
+    monkeypatch.setattr(locks, "_taken", late)
+    with third:
+        assert ("is being written by another" in fault_of(lambda: held_for(tmp_path))) == again
     assert [*tmp_path.iterdir()] == []
 
 

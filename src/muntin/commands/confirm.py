@@ -2,11 +2,13 @@
 
 from __future__ import annotations
 
-from typing import Annotated, Any
+from pathlib import Path
+from typing import TYPE_CHECKING, Annotated, Any
 
 import typer
 
 from muntin.commands.shared import (
+    By,
     Engine,
     EngineOption,
     Folder,
@@ -16,6 +18,15 @@ from muntin.commands.shared import (
     Tell,
     command,
 )
+
+if TYPE_CHECKING:
+    from collections.abc import Sequence
+
+    from muntin.record import Study
+    from muntin.record.column_plan import ColumnPlan
+    from muntin.record.column_runs import ColumnRun
+
+    Known = tuple[Sequence[ColumnPlan], Sequence[ColumnRun]]
 
 _Again = Annotated[
     bool,
@@ -35,6 +46,7 @@ def confirm(
     because: _Because = None,
     surrogate: SurrogateOption = Surrogate.stacked,
     engine: EngineOption = Engine.fast,
+    by: By = None,
 ) -> Output:
     """Offer column runs at the set point and two edges of the window, and compare what they read.
 
@@ -51,28 +63,43 @@ def confirm(
     tell("reading the study")
     study = open_study(folder)
     plans, made, found = read_columns(study.folder, study.definition)
-    written: list[Any] = []
+    written: list[Path] = []
+    remarks: list[str] = []
     if again or not plans:
-        asked = (surrogate.value, engine.value, seed, because)
-        plan, written = _planned(study, (plans, made), asked, tell.fitting(engine))
+        settings = {
+            "again": again,
+            "because": because,
+            "surrogate": surrogate.value,
+            "engine": engine.value,
+            "seed": seed,
+        }
+        bar = tell.fitting(engine)
+        plan, written, remarks = _planned(study, (plans, made), settings, by, bar)
         plans = [*plans, plan]
     notices = [*found, *since_plan(study.folder, plans[-1])]
     comparison = compare(study.definition.responses, plans, made)
     told = (study, plans, comparison, written, notices)
-    return Output(column_facts(*told), column_screen(*told))
+    return Output(column_facts(*told), column_screen(*told), remarks=remarks)
 
 
-def _planned(study: Any, known: Any, asked: Any, bar: bool) -> Any:
+def _planned(
+    study: Study, known: Known, settings: dict[str, Any], by: str | None, bar: bool
+) -> tuple[ColumnPlan, list[Path], list[str]]:
+    """Plan column runs and write them; return the plan, the paths, and remarks."""
     from muntin.confirmation.planning import Basis, plan_columns
-    from muntin.report.advice_files import hashes, read_inputs, versions
+    from muntin.record.entries import entry_for
+    from muntin.record.inputs import hashes, read_inputs, versions
     from muntin.report.column_files import write_columns
     from muntin.window.assessment import assess
 
-    surrogate, engine, seed, because = asked
-    basis = Basis(inputs=hashes(read_inputs(study.folder)), versions=versions(), because=because)
-    view, (plans, made) = assess(study, surrogate, engine, seed, progress=bar), known
-    plan = plan_columns(view, plans, made, basis)
-    return write_columns(study.folder, study.definition, plan)
+    plans, made = known
+    inputs = hashes(read_inputs(study.folder))
+    basis = Basis(inputs=inputs, versions=versions(), because=settings["because"])
+    asked = settings["surrogate"], settings["engine"], settings["seed"]
+    plan = plan_columns(assess(study, *asked, progress=bar), plans, made, basis)
+    # The reason for planning again explains no change, so it stands among the settings.
+    entry = entry_for(study, "confirm", settings, seed=settings["seed"], by=by, inputs=inputs)
+    return write_columns(study.folder, study.definition, plan, len(plans), entry)
 
 
 def _check_words(again: bool, because: str | None) -> None:

@@ -10,6 +10,7 @@ import typer
 from muntin.commands.shared import (
     Aim,
     AimOption,
+    By,
     Engine,
     EngineOption,
     Folder,
@@ -39,6 +40,7 @@ def report(
     aim: AimOption = Aim.edge,
     surrogate: SurrogateOption = Surrogate.stacked,
     engine: EngineOption = Engine.fast,
+    by: By = None,
 ) -> Output:
     """Write one page to hand over: window, next plate, checks and where the numbers come from.
 
@@ -46,17 +48,19 @@ def report(
     numbers as JSON. The next plate is the one that propose gives for the same options.
     """
     from muntin.record import open_study
+    from muntin.record.entries import entry_for
     from muntin.report.advice_files import read_inputs
     from muntin.report.page.build import build_page, plan_or_reasons
     from muntin.report.page_files import check_place, page_place, write_page
     from muntin.report.page_text import page_screen
+    from muntin.report.ruling_text import decision_facts
     from muntin.window.assessment import assess
 
     place = page_place(folder, out)
     tell("reading the study")
     study = open_study(folder)
     inputs = read_inputs(study.folder)
-    check_place(place)
+    check_place(folder, place)
     bar = tell.fitting(engine)
     view = assess(study, surrogate.value, engine.value, seed, progress=bar)
     tell("planning the next plate")
@@ -68,7 +72,19 @@ def report(
         "engine": engine.value,
         "seed": seed,
     }
-    page = build_page(view, plan, unplanned=unplanned, settings=settings, inputs=inputs, tell=tell)
-    written = write_page(place, page)
-    facts = {**page.facts, "files": [str(path) for path in written]}
-    return Output(facts, page_screen(page, written))
+    page = build_page(
+        view, plan, unplanned=unplanned, settings=settings, inputs=inputs, by=by, tell=tell
+    )
+    entry = entry_for(
+        study,
+        "report",
+        {**settings, "out": None if out is None else str(out)},
+        seed=seed,
+        by=by,
+        inputs=page.facts["inputs"],
+        decision=None if plan is None else decision_facts(plan),
+    )
+    written = write_page(study.folder, place, page, entry)
+    files = [str(path) for path in written.paths]
+    facts = {**page.facts, "ledger": written.ledger, "files": files}
+    return Output(facts, page_screen(page, written.paths), remarks=written.remarks)

@@ -1,7 +1,8 @@
 """Changes: what earlier advice rested on and is now otherwise, until somebody says why.
 
 The study is held against the last advice whose changes were all explained. New plates, readings
-that were awaited, and wells left out with a reason in words are no changes.
+that were awaited, and wells left out with a reason in words are no changes; what was left out is
+told apart.
 """
 
 from __future__ import annotations
@@ -28,10 +29,13 @@ _LIKE_IT = 3
 
 @dataclass(frozen=True, kw_only=True)
 class Changes:
-    """What differs from earlier advice, one sentence each, and what that was."""
+    """What differs from earlier advice, one sentence each, and what that was; left_out: what that
+    advice rested on and was left out since, with the reason in the tables.
+    """
 
     since: str = ""
     sentences: tuple[str, ...] = ()
+    left_out: tuple[str, ...] = ()
 
     @property
     def notice(self) -> str:
@@ -50,6 +54,32 @@ class Changes:
 NO_CHANGES = Changes()
 
 
+@dataclass(frozen=True, kw_only=True)
+class Explained:
+    """Changes for which a reason was given: when (UTC), who, why, and what, one sentence each."""
+
+    line: int
+    time: str
+    by: str
+    because: str
+    said: tuple[str, ...]
+
+
+def explained_changes(ledger: Ledger) -> list[Explained]:
+    """Return the changes that were explained, oldest first."""
+    return [
+        Explained(
+            line=line.number,
+            time=line.time,
+            by=line.entry.by or "nobody",
+            because=line.entry.because,
+            said=line.entry.changes,
+        )
+        for line in ledger.sound
+        if line.entry.changes and line.entry.because
+    ]
+
+
 def changes_of(study: Study, ledger: Ledger, reopen: Callable[[Path], Study]) -> Changes:
     """Return what differs between a study and what its explained advice rested on.
 
@@ -58,15 +88,16 @@ def changes_of(study: Study, ledger: Ledger, reopen: Callable[[Path], Study]) ->
     lines = [line for line in ledger.sound if line.entry.asked and not line.open]
     advice = [line for line in lines if line.advice is not None]
     sentences: list[str] = []
+    left_out: list[str] = []
     since = ""
     if lines and _has_data(study):
         since = _named(lines[-1])
         sentences += asked_changes(lines[-1].entry.asked, asked_of(study.definition))
     if advice:
-        found = input_changes(study, advice[-1], reopen)
-        since = since if sentences or not found else _named(advice[-1])
+        found, left_out = input_changes(study, advice[-1], reopen)
+        since = since if sentences or not (found or left_out) else _named(advice[-1])
         sentences += found
-    return Changes(since=since, sentences=tuple(sentences))
+    return Changes(since=since, sentences=tuple(sentences), left_out=tuple(left_out))
 
 
 def _named(line: Line) -> str:
@@ -78,19 +109,24 @@ def _has_data(study: Study) -> bool:
     return any(wells[f"{r.name}_state"].isin(USED).any() for r in study.definition.responses)
 
 
-def input_changes(study: Study, line: Line, reopen: Callable[[Path], Study]) -> list[str]:
-    """Return how the tables of a study differ from those that an advice rested on."""
-    now = hashes(read_inputs(study.folder))
+def input_changes(
+    study: Study, line: Line, reopen: Callable[[Path], Study]
+) -> tuple[list[str], list[str]]:
+    """Return how the tables of a study differ from those that an advice rested on, and what of
+    them was left out since.
+    """
+    now = {n: h for n, h in hashes(read_inputs(study.folder)).items() if "/" in n}
     recorded = {n: h for n, h in line.entry.inputs.items() if "/" in n}
+    if now == recorded:
+        return [], []
     other = [name for name, of in recorded.items() if now.get(name) != of]
-    if not other:
-        return []
     copy = study.folder / str(line.advice) / "inputs"
     try:
         was = reopen(copy)
     except StudyFaults:
-        return [f"{name} {'reads otherwise' if name in now else 'was deleted'}" for name in other]
-    return well_changes(was, study)
+        verb = {True: "reads otherwise", False: "was deleted"}
+        return [f"{name} {verb[name in now]}" for name in other], []
+    return well_changes(was, study), left_out_since(was, study)
 
 
 def well_changes(was: Study, now: Study) -> list[str]:
@@ -121,6 +157,35 @@ def _plate_changes(was: Study, now: Study, plate: str) -> Iterator[str]:
             found[what].append(f"{well} {said}")
     for what, wells in found.items():
         yield f"{plate}, {what}: {listed(wells, most=4)}"
+
+
+def left_out_since(was: Study, now: Study) -> list[str]:
+    """Return what counted in one study and is left out of the other with a reason, one sentence a
+    plate, response and reason.
+    """
+    sentences = []
+    here = {plate.name: plate for plate in now.plates}
+    for plate in was.plates:
+        if plate.void or plate.name not in here:
+            continue
+        if why := here[plate.name].void:
+            sentences.append(f"{plate.name} was made void: {why}")
+        else:
+            sentences += _left_out(was, now, plate.name)
+    return sentences
+
+
+def _left_out(was: Study, now: Study, plate: str) -> Iterator[str]:
+    found: dict[tuple[str, str], list[str]] = defaultdict(list)
+    there = _rows(now, plate)
+    for well, row in _rows(was, plate).items():
+        for name in (response.name for response in now.definition.responses):
+            state = f"{name}_state"
+            if row.get(state) in USED and there.get(well, {}).get(state) == "excluded":
+                why = there[well]["exclude"] or there[well][f"{name}_exclude"]
+                found[name, why].append(f"{well} {_reading(name, row)}")
+    for (name, why), wells in found.items():
+        yield f"{plate}, {name}: left out {listed(wells, most=4)}: {why}"
 
 
 def _rows(study: Study, plate: str) -> dict[str, dict[str, Any]]:

@@ -42,26 +42,6 @@ def write_atomic(path: Path, content: str | bytes) -> None:
     Folders on the way are made. Raises StudyFaults where the place cannot be written; the earlier
     file, if there was one, is then untouched.
     """
-    with _beside(path, content) as part:
-        part.replace(path)
-
-
-def write_new(path: Path, content: str | bytes) -> None:
-    """Write a whole file at once under a name that is free, also if another process wants it too.
-
-    Raises StudyFaults where a file of that name is there, or the place cannot be written.
-    """
-    with _beside(path, content) as part:
-        try:
-            os.link(part, path)
-        except FileExistsError:
-            problem = "is already there and is not overwritten"
-            raise StudyFaults([Fault(file=str(path), problem=problem)]) from None
-
-
-@contextmanager
-def _beside(path: Path, content: str | bytes) -> Iterator[Path]:
-    """Give a temporary file beside a path that holds the content, flushed; it goes afterwards."""
     data = content.encode("utf-8") if isinstance(content, str) else content
     part = path.with_name(f".{path.name}.{secrets.token_hex(4)}.part")
     try:
@@ -71,7 +51,7 @@ def _beside(path: Path, content: str | bytes) -> Iterator[Path]:
                 stream.write(data)
                 stream.flush()
                 os.fsync(stream.fileno())
-            yield part
+            part.replace(path)
         finally:
             part.unlink(missing_ok=True)
     except OSError as error:
@@ -82,12 +62,20 @@ def _beside(path: Path, content: str | bytes) -> Iterator[Path]:
 
 def write_together(files: Mapping[Path, str | bytes] | Mapping[Path, str]) -> None:
     """Write files, all of them or, with StudyFaults, none: what was there is put back."""
+    with written_together(files):
+        pass
+
+
+@contextmanager
+def written_together(files: Mapping[Path, str | bytes] | Mapping[Path, str]) -> Iterator[None]:
+    """Write files before the block; what was there is put back where either ends in StudyFaults."""
     before: dict[Path, bytes | None] = {}
     try:
         for file, content in files.items():
             there = file.read_bytes() if file.is_file() else None
             write_atomic(file, content)
             before[file] = there
+        yield
     except StudyFaults:
         for file, there in before.items():
             if there is None:

@@ -24,9 +24,9 @@ class Entry:
     """What a command tells of itself.
 
     by: who, as given. settings: its options, seed among them. inputs, results: SHA-256 by path in
-    the study, of what it read and of what it wrote. asked: what study.toml asks for. decision: what
-    was decided, such as the verdict. changes: what differs from earlier advice, one sentence each;
-    because: the reason given for them.
+    the study, of what it read and of what it wrote; removed: what it took away. asked: what
+    study.toml asks for. decision: what was decided, such as the verdict. changes: what differs from
+    earlier advice, one sentence each; because: the reason given for them.
     """
 
     command: str
@@ -37,6 +37,7 @@ class Entry:
     versions: Mapping[str, str] = field(default_factory=dict)
     asked: Mapping[str, Any] = field(default_factory=dict)
     results: Mapping[str, str] = field(default_factory=dict)
+    removed: tuple[str, ...] = ()
     decision: Mapping[str, Any] | None = None
     changes: tuple[str, ...] = ()
     because: str | None = None
@@ -62,7 +63,9 @@ class Line:
     @property
     def advice(self) -> str | None:
         """The folder of the advice that it tells of, in the study; None where it tells of none."""
-        kept = [name for name in self.entry.results if name.endswith("/advice.json")]
+        # A page may bear any name, also that of a file of an advice.
+        names = self.entry.results if self.entry.command == "advise" else ()
+        kept = [name for name in names if name.endswith("/advice.json")]
         return kept[0].removesuffix("/advice.json") if kept else None
 
 
@@ -152,7 +155,7 @@ def _parsed(text: str) -> Line | None:
             return None
         known = {one.name for one in fields(Entry)}
         told = {name: value for name, value in values.items() if name in known}
-        told["changes"] = tuple(told.get("changes", ()))
+        told |= {name: tuple(told.get(name, ())) for name in ("changes", "removed")}
         return Line(
             number=int(values["number"]),
             time=str(values["time"]),

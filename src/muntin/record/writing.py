@@ -60,20 +60,17 @@ class Writing:
     ) -> Line:
         """Write files (paths below the study's folder) and their line; take others away.
 
-        The hashes of the files join the results of the entry. Raises StudyFaults where something
-        cannot be written; all is then as it was.
+        The hashes of the files join the results of the entry, and it names what was taken away.
+        Raises StudyFaults where something cannot be written; all is then as it was.
         """
         data = {_inside(self.folder, path): _bytes(content) for path, content in files.items()}
-        results = {name: sha256(content).hexdigest() for name, content in data.items()}
         aside = self._torn_aside()
-        line = line_after(
-            self._ledger,
-            replace(entry, results={**entry.results, **results, **_hashed(aside)}),
-            self.moment,
-        )
+        gone = [_inside(self.folder, path) for path in removed]
+        results = {**entry.results, **_hashed(data), **_hashed(aside)}
+        entry = replace(entry, results=results, removed=(*entry.removed, *gone))
+        line = line_after(self._ledger, entry, self.moment)
         texts = (*self._ledger.texts, line.text)
         ledger = "".join(f"{text}\n" for text in texts).encode("utf-8", "surrogateescape")
-        gone = [_inside(self.folder, path) for path in removed]
         _write_all(self.folder, {**data, **aside, LEDGER: ledger}, gone)
         self.remarks += [_torn_remark(name) for name in aside]
         self._ledger = read_ledger(self.folder)

@@ -6,12 +6,13 @@ import csv
 import io
 from pathlib import Path
 
-from muntin.record.column_plan import COLUMNS, PLAN, ColumnPlan, plan_paths, plan_text
+from muntin.record.column_plan import COLUMNS, PLAN, ColumnPlan, plan_text
 from muntin.record.definition import Definition
 from muntin.record.edits import sha256
-from muntin.record.faults import StudyFaults, listed
-from muntin.record.files import write_new
+from muntin.record.faults import Fault, StudyFaults, listed
+from muntin.record.ledger import Entry
 from muntin.record.stop_rule import STOP_FILE
+from muntin.record.writing import writing
 from muntin.report.advice_files import hashes, read_inputs
 
 
@@ -44,22 +45,22 @@ def since_plan(folder: Path, plan: ColumnPlan) -> list[str]:
 
 
 def write_columns(
-    folder: Path, definition: Definition, plan: ColumnPlan
-) -> tuple[ColumnPlan, list[Path]]:
-    """Write a plan under a name that is free; return it as on record, and the paths.
+    folder: Path, definition: Definition, plan: ColumnPlan, earlier: int, entry: Entry
+) -> tuple[ColumnPlan, list[Path], list[str]]:
+    """Write a plan beside the `earlier` ones with its line in the ledger, all or none; return it as
+    on record, the paths of table and record, and remarks for the user.
 
-    Both files are written or, with StudyFaults, none; what is there is never overwritten, also
-    where another process plans at the same time.
+    Raises StudyFaults where something of its name is there, as another process that planned
+    meanwhile leaves it, and where the folder cannot be written.
     """
-    count = len(plan_paths(folder))
-    stem = PLAN if not count else f"{PLAN}.r{count + 1}"
-    table, record = (folder / COLUMNS / f"{stem}{ending}" for ending in (".csv", ".toml"))
+    stem = PLAN if not earlier else f"{PLAN}.r{earlier + 1}"
+    table, record = paths = [folder / COLUMNS / f"{stem}{ending}" for ending in (".csv", ".toml")]
     text = table_text(definition, plan)
     plan = plan.model_copy(update={"table_sha256": sha256(text.encode("utf-8"))})
-    write_new(record, plan_text(plan))
-    try:
-        write_new(table, text)
-    except StudyFaults:
-        record.unlink(missing_ok=True)
-        raise
-    return plan, [table, record]
+    with writing(folder) as pen:
+        problem = "is already there and is not overwritten"
+        there = [Fault(file=str(path), problem=problem) for path in paths if path.exists()]
+        if there:
+            raise StudyFaults(there)
+        pen.commit({record: plan_text(plan), table: text}, entry)
+        return plan, paths, pen.remarks

@@ -3,14 +3,17 @@
 from __future__ import annotations
 
 import json
-from collections.abc import Mapping
-from dataclasses import dataclass
+import os
+from collections.abc import Iterable, Mapping
+from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import Any
 
 from muntin.record.edits import sha256
 from muntin.record.faults import Fault, StudyFaults
-from muntin.record.files import write_together
+from muntin.record.files import write_together, written_together
+from muntin.record.ledger import LEDGER, Entry
+from muntin.record.writing import writing
 from muntin.report.advice_files import json_text
 from muntin.report.page.build import Page
 
@@ -25,6 +28,10 @@ class PagePlace:
     page: Path
     record: Path
     figures: Path
+
+    def inside(self, folder: Path) -> bool:
+        """Whether the page lies in a study's folder."""
+        return self.page.parent.resolve().is_relative_to(folder.resolve())
 
 
 def page_place(folder: Path, out: Path | None = None) -> PagePlace:
@@ -49,10 +56,13 @@ def page_files(place: PagePlace, page: Page) -> dict[Path, str | bytes]:
     return {place.page: page.html, **figures}
 
 
-def check_place(place: PagePlace) -> None:
+def check_place(folder: Path, place: PagePlace) -> None:
     """Raise StudyFaults where writing would replace a file that muntin did not write, or that was
-    changed since.
+    changed since, and where the page of a study belongs into a folder that cannot be written.
     """
+    if not os.access(folder, os.W_OK) and place.inside(folder):
+        hint = "name a place elsewhere with --out"
+        raise StudyFaults([Fault(file=str(folder), problem="cannot be written", hint=hint)])
     there = [p for p in (place.page, place.record) if p.exists()]
     there += sorted(place.figures.glob("*.png")) if place.figures.is_dir() else []
     own = _own(place)
@@ -69,20 +79,78 @@ def check_place(place: PagePlace) -> None:
         raise StudyFaults(faults)
 
 
-def write_page(place: PagePlace, page: Page) -> tuple[Path, ...]:
-    """Write page, figures and record, all of them or none, and return the paths.
+@dataclass(frozen=True, kw_only=True)
+class WrittenPage:
+    """What was written: page, record and figures by path; the line of the ledger that tells of it,
+    as its number and the hash of the line before (None: there is none); remarks for the user.
+    """
 
-    Figures of an earlier page that are drawn no more are removed. Raises StudyFaults as
+    paths: tuple[Path, ...]
+    ledger: Mapping[str, Any] | None
+    remarks: tuple[str, ...]
+
+
+def write_page(folder: Path, place: PagePlace, page: Page, entry: Entry) -> WrittenPage:
+    """Write page, figures and record with their line in the ledger of the study, all or none.
+
+    Figures of an earlier page that are drawn no more are removed. A page that goes elsewhere is
+    written also where the study's folder cannot be, without a line. Raises StudyFaults as
     `check_place` does, and where a place cannot be written.
     """
-    check_place(place)
+    if not os.access(folder, os.W_OK):
+        check_place(folder, place)
+        files, stale = _files(place, page, None)
+        write_together(files)
+        _remove(stale)
+        remark = f"{folder} cannot be written: {LEDGER} has no line about this page."
+        return _written(place, files, None, (remark,))
+    with writing(folder) as pen:
+        check_place(folder, place)
+        ledger = {"line": pen.ledger.next_number, "before": pen.ledger.last_hash}
+        files, stale = _files(place, page, ledger)
+        if place.inside(folder):
+            # Below the folder as it is given, whatever way --out came there.
+            near = place.page.parent
+            base = folder / near.resolve().relative_to(folder.resolve())
+            kept = {base / path.relative_to(near): content for path, content in files.items()}
+            pen.commit(kept, entry, [base / path.relative_to(near) for path in stale])
+        else:
+            digests = {path.absolute().as_posix(): _digest(of) for path, of in files.items()}
+            with written_together(files):
+                pen.commit({}, replace(entry, results=digests))
+            _remove(stale)
+        return _written(place, files, ledger, tuple(pen.remarks))
+
+
+def _files(
+    place: PagePlace, page: Page, ledger: Mapping[str, Any] | None
+) -> tuple[dict[Path, str | bytes], list[Path]]:
+    """What is to be written, and which figures of an earlier page are to go."""
     files, before = page_files(place, page), _own(place)
+    stale = [
+        path
+        for path in before
+        if path.parent == place.figures and path not in files and path.is_file()
+    ]
+    gone = [path for path in stale if _untouched(path, before)]
     # The record goes first: whenever writing is cut off, every file there is one that it knows.
-    write_together({place.record: _record(place, page, files, before), **files})
-    for path in before:
-        if path.parent == place.figures and path not in files and _untouched(path, before):
-            path.unlink(missing_ok=True)
-    return (place.page, place.record, *(path for path in files if path != place.page))
+    return {place.record: _record(place, page, files, before, ledger), **files}, gone
+
+
+def _remove(paths: Iterable[Path]) -> None:
+    for path in paths:
+        path.unlink(missing_ok=True)
+
+
+def _written(
+    place: PagePlace,
+    files: Iterable[Path],
+    ledger: Mapping[str, Any] | None,
+    remarks: tuple[str, ...],
+) -> WrittenPage:
+    own = (place.page, place.record)
+    paths = (*own, *(path for path in files if path not in own))
+    return WrittenPage(paths=paths, ledger=ledger, remarks=remarks)
 
 
 def _record(
@@ -90,6 +158,7 @@ def _record(
     page: Page,
     files: Mapping[Path, str | bytes],
     before: Mapping[Path, tuple[str, ...]],
+    ledger: Mapping[str, Any] | None,
 ) -> str:
     def name(path: Path) -> str:
         return path.relative_to(place.page.parent).as_posix()
@@ -97,7 +166,7 @@ def _record(
     written = {name(path): _digest(content) for path, content in files.items()}
     own = [path for path in before if path != place.record and path.is_file()]
     replaced = {name(path): _digest(path.read_bytes()) for path in own}
-    return json_text({**page.facts, "written": written, "replaced": replaced})
+    return json_text({**page.facts, "ledger": ledger, "written": written, "replaced": replaced})
 
 
 def _digest(content: str | bytes) -> str:

@@ -81,13 +81,14 @@ def build_page(
     unplanned: Iterable[str] = (),
     settings: Facts | None = None,
     inputs: dict[str, bytes] | None = None,
+    by: str | None = None,
     tell: Callable[[str], None] = lambda _: None,
 ) -> Page:
     """Return the page of a study.
 
     plan: its next plate, or None with `unplanned`, the reasons. settings: what the command was
-    given; inputs: the study's files as they were read, whose hashes the page shows. `tell` hears
-    the name of each step.
+    given, and by whom; inputs: the study's files as they were read, whose hashes the page shows.
+    `tell` hears the name of each step.
     """
     window = None if view.fresh else view.window()
     tell("judging the ranges to hand over")
@@ -99,6 +100,7 @@ def build_page(
     facts: Facts = {
         "command": "report",
         "written_at": datetime.now(UTC).isoformat(timespec="seconds"),
+        "by": by,
         "versions": versions(),
         "settings": settings or {},
         "inputs": hashes(inputs or {}),
