@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import sys
 from pathlib import Path
+from typing import Literal
 
 import matplotlib as mpl
 import numpy as np
@@ -268,6 +269,28 @@ def test_given_axes_are_the_ones_returned(view: Assessment, name: str) -> None:
     assert getattr(plots, name)(view, axes=axes) is axes
     assert axes.has_data()
     assert axes.get_title(loc="left")
+
+
+@pytest.mark.parametrize("name", ["controls", "errors", "joint", "window_map"])
+@pytest.mark.parametrize("layout", ["constrained", None])
+def test_legend_of_given_axes_is_on_the_page_and_covers_no_text(
+    view: Assessment, name: str, layout: Literal["constrained"] | None
+) -> None:
+    figure = Figure(figsize=(3.6, 6.0), layout=layout)
+    axes = figure.subplots()
+    getattr(plots, name)(view, axes=axes)
+    figure.draw_without_rendering()
+    legend = axes.get_legend()
+    assert legend is not None
+    around, given, page = legend.get_window_extent(), axes.get_window_extent(), figure.bbox
+    assert page.x0 <= around.x0 < around.x1 <= page.x1
+    if layout is None:
+        assert given.x0 <= around.x0 < around.x1 <= given.x1
+        assert given.y0 <= around.y0 < around.y1 <= given.y1
+        assert legend.get_frame_on()
+    else:
+        label = axes.xaxis.label.get_window_extent()
+        assert page.y0 <= around.y0 < around.y1 <= label.y0
 
 
 def test_new_axes_show_their_figure_and_pyplot_knows_none(view: Assessment, plan: Plan) -> None:

@@ -3,18 +3,22 @@
 from __future__ import annotations
 
 import io
+import textwrap
 from collections.abc import Sequence
 from functools import cache
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 from muntin.report.markers import figure_legend
-from muntin.report.style import INK, SLIDE, new_figure
+from muntin.report.style import INK, PAPER, SLIDE, new_figure
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
     from matplotlib.figure import Figure
+    from matplotlib.transforms import Transform
 
 _SHOWN_DPI = 110
+# Inches that a letter takes of a title and of a legend, and a legend's handle; points below axes.
+_TITLE, _LETTER, _HANDLE, _BELOW = 0.08, 0.064, 0.6, 4
 
 
 class Panels(tuple["Axes", ...]):
@@ -53,19 +57,58 @@ def one_panel(axes: Axes | None, title: str, subtitle: str = "") -> tuple[Axes, 
     """
     if axes is None:
         return blank(title, subtitle)[1][0], True
-    axes.set_title(title, loc="left", fontsize=10, color=INK)
+    axes.set_title(_within(title, _width(axes) / _TITLE), loc="left", fontsize=10, color=INK)
     return axes, False
 
 
 def finish(axes: Axes, new: bool) -> Axes:
-    """Put the legend below a new figure, or into the axes that were given; return the axes."""
+    """Put the legend below a new figure, or with the axes that were given; return the axes.
+
+    Where the figure makes room for what lies outside its axes the legend lies below them, else
+    within them. Its lines are broken so that it is no wider than they are before the layout.
+    """
     if new:
         figure_legend(_figure(axes), [axes])
+        return axes
+    handles, labels = axes.get_legend_handles_labels()
+    if not handles:
+        return axes
+    if _figure(axes).get_layout_engine() is None:
+        place: dict[str, Any] = {"loc": "best", "frameon": True, "facecolor": PAPER}
+        place |= {"edgecolor": "none", "framealpha": 0.85}
     else:
-        found = axes.get_legend_handles_labels()
-        if found[0]:
-            axes.legend(*found, loc="best", frameon=False, fontsize=8, labelcolor=INK)
+        place = {"loc": "upper left", "frameon": False, "borderaxespad": 0.0, "borderpad": 0.0}
+        place |= {"bbox_to_anchor": (0.0, 0.0), "bbox_transform": _below(axes)}
+    width = _width(axes)
+    room = width / _LETTER - _HANDLE / _LETTER
+    labels = [_within(str(label), room) for label in labels]
+    longest = max(len(line) for label in labels for line in label.splitlines())
+    columns = 1
+    if "bbox_to_anchor" in place:
+        columns = max(1, int(width // (_HANDLE + _LETTER * longest)))
+    axes.legend(handles, labels, fontsize=8, labelcolor=INK, ncols=columns, **place)
     return axes
+
+
+def _below(axes: Axes) -> Transform:
+    """Coordinates of the axes, moved below their ticks and the label of x."""
+    from matplotlib.transforms import ScaledTranslation
+
+    figure = _figure(axes)
+    shown = axes.get_tightbbox()
+    deep = 0.0 if shown is None else (axes.get_window_extent().y0 - shown.y0) / figure.dpi
+    down = ScaledTranslation(0.0, -deep - _BELOW / 72.0, figure.dpi_scale_trans)
+    return axes.transAxes + down
+
+
+def _width(axes: Axes) -> float:
+    """Width of the axes in inches, as they lie before the figure is laid out."""
+    return float(axes.get_window_extent().width / _figure(axes).dpi)
+
+
+def _within(text: str, letters: float) -> str:
+    """The text broken into lines of so many letters, 16 at least."""
+    return textwrap.fill(text, max(16, int(letters)))
 
 
 def given_panels(axes: Sequence[Axes], wanted: int) -> Panels:
