@@ -141,6 +141,8 @@ def test_no_verdict_on_a_window_that_the_data_do_not_support(view):
     with mock.patch.object(type(asked), "window", return_value=unsupported):
         plan = muntin.propose(asked, wells=2)
     assert plan.ruling == Ruling(word="none", because="unsupported")
+    assert plan.forecast[["set_point", "reached"]].isna().all(axis=None)
+    assert plan.forecast["wrong_share"].notna().all()
 
 
 def test_forecast_by_milligrams(view):

@@ -119,11 +119,14 @@ def test_a_window_that_the_data_do_not_support_gives_no_set_point(tmp_path: Path
         *(f"{','.join(r.split(',')[:4])},0.9{i % 10}," for i, r in enumerate(rows[1:])),
     ]
     tables = {"plates/plate-01.csv": "\n".join(rows), "plates/plate-02.csv": "\n".join(second)}
-    page, read = _said(tmp_path / "s", {"study.toml": PLAIN, **tables})
+    page, read = _said(tmp_path / "s", {"study.toml": PLAIN, **tables}, wells=6)
     assert page.facts["standing"] == "Not supported by the data"
     assert page.facts["answer"][0].endswith("so no set point is given.")
     assert page.facts["answer"][1].startswith(page.facts["window"]["unsupported"][0])
     assert "set point" not in read.one("section", id="window").text.lower()
+    ahead = read.one("section", id="next").text
+    assert "No set point is forecast: " in ahead
+    assert "set point passes" not in ahead
     assert not [s for s in read.every("script") if s.attributes.get("id") == "pointing-data"]
 
 

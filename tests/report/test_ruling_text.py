@@ -10,7 +10,7 @@ from muntin.bench.plan import Plan
 from muntin.design.stopping import Ruling, rule_on
 from muntin.record.definition import StopRule
 from muntin.report.forecast_figure import draw_forecast
-from muntin.report.plan_text import forecast_table
+from muntin.report.plan_text import forecast_table, no_set_point_line
 from muntin.report.ruling_text import ruling_facts, ruling_line
 from muntin.report.words import likely_text
 from tests.report.shown import shown
@@ -157,6 +157,28 @@ def test_figure_without_protein_counts_wells_only(tmp_path):
     ).axes
     assert [t.get_text() for t in left.get_xticklabels()] == ["0", "6", "12", "24"]
     assert left.get_xlabel() == "Test wells"
+
+
+UNSAID = FORECAST.assign(set_point=np.nan, reached=np.nan)
+
+
+def test_without_a_supported_window_no_set_point_is_forecast(tmp_path):
+    study = written(tmp_path, stop={"best_probability": 0.95})
+    plan = plan_of(Ruling(word="none", because="unsupported"), forecast=UNSAID)
+    table = [" ".join(line.split()) for line in shown(forecast_table(study, plan))]
+    assert table == [WELLS, OUTLAY[0], SHARES]
+    assert no_set_point_line(plan, " (why)") == [
+        "No set point is forecast: the predicted operating window (plate scale) is not supported "
+        "by the data (why). What may be called wrongly holds only as far as the model does."
+    ]
+    assert no_set_point_line(plan_of(plan.ruling)) == []
+    left, right = draw_forecast(study, plan).axes
+    assert [text.get_text() for text in right.texts] == [
+        "no set point: the window\nis not supported by the data",
+        "stop rule\n95 %",
+    ]
+    assert len(right.lines) == 1
+    np.testing.assert_allclose(left.lines[0].get_ydata(), [5.0, 4.0, 3.0, 2.0])
 
 
 WELLS = "test wells 0 6 12 24"

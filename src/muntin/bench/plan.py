@@ -46,9 +46,9 @@ class Plan:
     (slots) and days where the study says what they take, wrong_share (expected share of the range
     still called wrongly), set_point (expected probability of the set point) and reached (chance
     that it reaches what the stop rule asks, else what the window requires); the last three are NaN
-    before anything was read, but for the share at 0. ruling: the forecast against the stop rule.
-    seed: of the choice and of the layout. edit: what was changed in a plan that was kept, None
-    where none was.
+    before anything was read, but for the share at 0, and the last two where the data do not support
+    the window. ruling: the forecast against the stop rule. seed: of the choice and of the layout.
+    edit: what was changed in a plan that was kept, None where none was.
     """
 
     plate: str
@@ -215,10 +215,12 @@ def _forecast(view: Assessment, selection: Selection, rows: pd.DataFrame) -> pd.
         return table.assign(wrong_share=shares, set_point=np.nan, reached=np.nan)
     limit = asked_of_set_point(view.study)
     ahead = prospects(view, view.window(), selection, counts, outlay.rooms, limit)
+    # A window that the data do not support has no set point either.
+    told = not view.window().unsupported
     return table.assign(
         wrong_share=[p.wrong_share for p in ahead],
-        set_point=[p.set_point for p in ahead],
-        reached=[p.reached for p in ahead],
+        set_point=[p.set_point if told else np.nan for p in ahead],
+        reached=[p.reached if told else np.nan for p in ahead],
     )
 
 

@@ -250,7 +250,8 @@ class FixedWell(Keys):
 
     resin_ul: Number = key(says="settled resin in a well", unit="µL", example=20.0, gt=0, le=2000)
     hold_up_ul: Number = key(
-        says="liquid that stays in a well between stages; measure it, by weight or a tracer",
+        says="liquid that stays in the bed after the spin and goes with the next stage; measure "
+        "it, by weight or a tracer",
         unit="µL",
         example=25.0,
         ge=0,

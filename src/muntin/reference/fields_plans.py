@@ -69,8 +69,10 @@ PLAN = Part(
                 "forecast[].assays": "assay slots that they take, where [plan] tells",
                 "forecast[].days": "days that they take, where [plan] tells",
                 "forecast[].wrong_share": "share of the range that may still be called wrongly",
-                "forecast[].set_point": "expected probability of the set point",
-                "forecast[].reached": "chance that the set point reaches what is asked of it",
+                "forecast[].set_point": "expected probability of the set point; null where the "
+                "data do not support the window",
+                "forecast[].reached": "chance that the set point reaches what is asked of it; "
+                "null likewise",
                 **_VERDICT,
                 **_EDIT,
             },

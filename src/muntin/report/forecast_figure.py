@@ -15,7 +15,7 @@ from muntin.report.canvas import Panels, blank, given_panels
 from muntin.report.markers import figure_legend
 from muntin.report.ruling_text import ruling_line
 from muntin.report.style import ACCENT, INK, LINE, PAPER, SLIDE, dress
-from muntin.report.words import per_cent
+from muntin.report.words import UNSUPPORTED, per_cent
 from muntin.window.assessment import Assessment
 
 if TYPE_CHECKING:
@@ -62,9 +62,15 @@ def _draw(study: Study, plan: Plan, panels: Sequence[Axes]) -> None:
     at = int(np.flatnonzero(forecast["wells"] == (plan.wells["role"] == "test").sum())[0])
     _curve(left, forecast["wrong_share"], at, LINE, "o")
     left.set_ylabel("May be called wrongly, %")
-    _curve(right, forecast["set_point"], at, LINE, "o", "set point, expected probability")
-    asked = f"chance that it reaches {per_cent(asked_of_set_point(study))}"
-    _curve(right, forecast["reached"], at, INK, "s", asked)
+    if forecast["set_point"].notna().any():
+        _curve(right, forecast["set_point"], at, LINE, "o", "set point, expected probability")
+        asked = f"chance that it reaches {per_cent(asked_of_set_point(study))}"
+        _curve(right, forecast["reached"], at, INK, "s", asked)
+    else:
+        said = f"no set point: the window\nis {UNSUPPORTED}"
+        right.annotate(
+            said, (0.5, 0.5), xycoords="axes fraction", ha="center", va="center", color=INK
+        )
     right.set(ylabel="Set point, probability in %", ylim=(-4.0, 104.0))
     for axes, limit in ((left, rule.wrong_share), (right, rule.best_probability)):
         axes.set_xticks(np.arange(len(forecast)), _ticks(forecast))

@@ -23,6 +23,8 @@ from muntin.record.faults import counted
 from muntin.record.offers import without_measured
 from muntin.record.study import Study
 from muntin.report.words import (
+    UNSUPPORTED,
+    WINDOW,
     amount_text,
     axis_label,
     condition_text,
@@ -251,7 +253,8 @@ def why_text(rows: pd.DataFrame, factors: Sequence[Factor]) -> str:
 def forecast_table(study: Study, plan: Plan, full: bool = True) -> Table:
     """Return the forecast: what so many test wells take, and what they are expected to bring.
 
-    In short plates are left out, and of the set point only that is said which the stop rule asks.
+    In short plates are left out, and of the set point only that is said which the stop rule asks;
+    nothing is where the data do not support the window.
     """
     forecast, rule, left = plan.forecast, study.stopping.rule, protein_left_mg(study)
     table = _plain_table()
@@ -264,6 +267,8 @@ def forecast_table(study: Study, plan: Plan, full: bool = True) -> Table:
             of = f" of {left:.3g}" if name == "mg" and left is not None else ""
             table.add_row(label + of, *(f"{value:{digits}}" for value in forecast[name]))
     table.add_row("may be called wrongly", *map(share_text, forecast["wrong_share"]))
+    if forecast["set_point"].isna().all():
+        return table
     asked = rule is not None and rule.best_probability is not None
     if full or not asked:
         table.add_row("set point passes", *map(share_text, forecast["set_point"]))
@@ -272,6 +277,16 @@ def forecast_table(study: Study, plan: Plan, full: bool = True) -> Table:
         today, *then = forecast["reached"]
         table.add_row(reaches, "yes" if today else "no", *map(narrow_chance, then))
     return table
+
+
+def no_set_point_line(plan: Plan, where: str = "") -> list[str]:
+    """Return why a forecast has no set point, where it has none; `where` tells of more."""
+    if plan.forecast["set_point"].notna().any():
+        return []
+    return [
+        f"No set point is forecast: the {WINDOW} is {UNSUPPORTED}{where}. What "
+        "may be called wrongly holds only as far as the model does."
+    ]
 
 
 def not_forecast_line(study: Study, plan: Plan) -> list[str]:

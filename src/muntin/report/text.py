@@ -25,6 +25,7 @@ from muntin.report.plan_text import (
     forecast_table,
     height,
     known_table,
+    no_set_point_line,
     not_forecast_line,
     plan_heading,
     plan_tables,
@@ -265,7 +266,10 @@ def plan_sections(
     if view.fresh:
         told.append(f"{_capital(usual_reason(plan.wells))}.")
     early = "No forecast before the first readings."
-    ahead: list[RenderableType] = [forecast_table(view.study, plan, full)]
+    ahead: list[RenderableType] = [
+        forecast_table(view.study, plan, full),
+        *no_set_point_line(plan, " (muntin assess says why)"),
+    ]
     if full:
         ahead += not_forecast_line(view.study, plan)
     if full or plan.ruling.word != "none":

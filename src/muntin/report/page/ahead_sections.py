@@ -15,6 +15,7 @@ from muntin.report.page.blocks import Section, Table
 from muntin.report.page.phrases import heading, settings
 from muntin.report.plan_text import (
     bridging_line,
+    no_set_point_line,
     not_forecast_line,
     plan_heading,
     usual_reason,
@@ -44,7 +45,11 @@ def next_section(basis: Basis) -> Section:
         reason = usual_reason(plan.wells)
         says += [f"{reason[:1].upper()}{reason[1:]}.", "No forecast before the first readings."]
     else:
-        says += [ruling_line(study, plan), *not_forecast_line(study, plan)]
+        says += [
+            ruling_line(study, plan),
+            *no_set_point_line(plan),
+            *not_forecast_line(study, plan),
+        ]
     tables = [*([] if fresh else [_forecast(study, plan)]), _wells(basis, plan)]
     return Section(
         name="next",
@@ -60,21 +65,24 @@ def _forecast(study: Study, plan: Plan) -> Table:
     forecast = plan.forecast
     taken = [name for name in _AMOUNTS if name in forecast]
     reaches = f"chance that it reaches {per_cent(asked_of_set_point(study))}"
+    told = bool(forecast["set_point"].notna().any())
     head = [
         "test wells",
         *(_AMOUNTS[name][0] for name in taken),
         *(["days"] if "days" in forecast else []),
         "range that may be called wrongly",
-        "set point passes",
-        reaches,
+        *(["set point passes", reaches] if told else []),
     ]
     rows = []
     for row in forecast.to_dict("records"):
         today = not row["wells"]
-        chance_of = ("yes" if row["reached"] else "no") if today else likely_text(row["reached"])
         cells = [f"{row[name]:{_AMOUNTS[name][1]}}" for name in taken]
         cells += [f"{row['days']:.1f}"] if "days" in forecast else []
-        cells += [share_text(row["wrong_share"]), share_text(row["set_point"]), chance_of]
+        cells += [share_text(row["wrong_share"])]
+        if told:
+            reached = row["reached"]
+            chance_of = ("yes" if reached else "no") if today else likely_text(reached)
+            cells += [share_text(row["set_point"]), chance_of]
         rows.append((f"{int(row['wells'])}{' (today)' if today else ''}", *cells))
     return Table(
         caption="What more test wells are expected to bring",
