@@ -128,6 +128,8 @@ def _screen(done: Session, study: Path) -> None:
     done.run("propose", study, "--wells", 4, *QUICK)
     done.run("propose", study, *QUICK, "--keep", _edited(study), "--by", "me", "--because", "why")
     done.run("check", study)
+    with (study / "ledger.jsonl").open("a", encoding="utf-8") as ledger:
+        ledger.write('{"number":')
     done.run("prepare", study)
     _sheets(done, study)
     _on_record(done, study)

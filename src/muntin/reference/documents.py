@@ -27,6 +27,13 @@ _COMMANDS = (
     "help",
 )
 _EVERY = Part(_COMMANDS, {"command": "the command that was run"})
+_REMARKS = Part(
+    ("reduce", "uptake", "prepare", "rehearse", "confirm", "report"),
+    {
+        "remarks": "what there is to say of the ledger and of earlier commands that were cut off; "
+        "left out where there is nothing"
+    },
+)
 _NEW = Part(("new",), {"files": "files written"})
 _HELP = Part(
     ("help",),
@@ -45,6 +52,7 @@ _HELP = Part(
 PARTS = (
     FAULT,
     _EVERY,
+    _REMARKS,
     *SETTINGS,
     STUDY,
     CHECK,
