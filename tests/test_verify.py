@@ -89,6 +89,12 @@ def left_out_by_response(folder: Path) -> None:
     PLANTED["a reading left out"][0](folder)
 
 
+def stop_rule_changed(folder: Path) -> None:
+    was = {"date": "2026-05-04", "wrong_share": 0.02, "best_probability": None}
+    write(folder, {"stop-rule.jsonl": json.dumps({**was, "wells_read": 0, "reason": ""}) + "\n"})
+    edit("study.toml", r"\Z", "\n[stop]\nwrong_share = 0.05\n")(folder)
+
+
 PLANTED: dict[str, tuple[Callable[[Path], None], str]] = {
     "a reading": (
         edit("plates/plate-01.csv", "^A1,test,4.5,50,0.021,", "A1,test,4.5,50,0.031,"),
@@ -118,6 +124,15 @@ PLANTED: dict[str, tuple[Callable[[Path], None], str]] = {
         left_out_by_response,
         rf"since {R2}: plate-01, recovery: left out A1 0.021: it dripped",
     ),
+    "the required probability": (
+        edit("study.toml", "^title = .*", 'title = "T"\nrequired_probability = 0.8'),
+        r"study.toml, required_probability: 0.9, now 0.8",
+    ),
+    "the stop rule": (
+        stop_rule_changed,
+        r"study.toml, stop: wrong_share 0.05 in place of wrong_share 0.02, recorded on 2026-05-04, "
+        "without a reason",
+    ),
     "a deleted plate": (deleted("plates/plate-02.csv"), r"plate-02 was deleted \(12 wells\)"),
     "an edited line": (
         edit(LEDGER, '"by":"lab 2"', '"by":"lab 3"'),
@@ -137,6 +152,22 @@ PLANTED: dict[str, tuple[Callable[[Path], None], str]] = {
     "a copied reading": (
         edit(f"{R1}/inputs/plates/plate-01.csv", "^A1,test,4.5,50,0.021,", "A1,test,4.5,50,0.031,"),
         rf"{R1}/inputs: plate-01, recovery: A1 0.021, now 0.031",
+    ),
+    "a copied factor": (
+        edit(f"{R1}/inputs/plates/plate-01.csv", "^A1,test,4.5,", "A1,test,5.0,"),
+        rf"{R1}/inputs: plate-01, ph: A1 4.5, now 5",
+    ),
+    "a copied prior": (
+        edit(f"{R1}/inputs/study.toml", "at_least = 0.8", "at_least = 0.8\npriors = {mean_sd = 2}"),
+        rf"{R1}/inputs: study.toml, responses, recovery, priors: none, now \(mean_sd 2\)",
+    ),
+    "a copied plate deleted": (
+        deleted(f"{R1}/inputs/plates/plate-02.csv"),
+        rf"{R1}/inputs/plates/plate-02.csv was deleted",
+    ),
+    "recorded versions": (
+        edit(f"{R1}/advice.json", '"numpy": "', '"numpy": "0'),
+        rf"{R1}/advice.json was altered after it was written",
     ),
     "a copy added": (
         lambda folder: write(folder, {f"{R1}/inputs/plates/plate-07.csv": plate(3)}) and None,
@@ -163,6 +194,13 @@ def test_plans_are_worked_on_and_plates_are_added(study: Path) -> None:
 
 def one_of(found: Verified, folder: str) -> job.Rechecked:
     return next(one for one in found.advice if one.folder == folder)
+
+
+def test_a_stop_rule_that_will_go_on_record_is_noted(study: Path) -> None:
+    edit("study.toml", r"\Z", "\n[stop]\nwrong_share = 0.05\n")(study)
+    found = verify(study, recompute=False)
+    assert found.clean
+    assert "study.toml, stop: seen first after 24 wells had been read" in found.notes[-1]
 
 
 def test_numbers_that_do_not_come_out_again_are_named(study: Path) -> None:

@@ -110,7 +110,11 @@ def _as_it_is(folder: Path) -> tuple[str, list[str], list[str]]:
     said = (*changes.sentences, *changes.left_out)
     told = [f"since {changes.since}: {one}" for one in said]
     aside = [path.name for path in sorted(folder.glob("ledger-torn-*.txt"))]
-    return study.definition.title, told, [f"{name}: a torn line, set aside" for name in aside]
+    remarks = [f"{name}: a torn line, set aside" for name in aside]
+    if stopping := study.stopping.notice:
+        # A rule that will go on record is a remark; one that is not followed is a change.
+        (remarks if study.stopping.unrecorded else told).append(stopping)
+    return study.definition.title, told, remarks
 
 
 def _explained(one: Explained) -> str:

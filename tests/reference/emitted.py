@@ -15,7 +15,13 @@ NAMES = {
     "<fraction>": ("ft", "e1", "strip"),
 }
 # Keys of study.toml and of records stand below these, and are told of where they are declared.
-WHOLE = ("settings.assay.<assay>", "plans.edits[].<key>", "plans[].<key>")
+WHOLE = (
+    "settings.assay.<assay>",
+    "plans.edits[].<key>",
+    "plans[].<key>",
+    "settings.<option>",
+    "asked.<key>",
+)
 _PLACE = re.compile(r"<[a-z ]+>")
 
 

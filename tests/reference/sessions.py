@@ -128,9 +128,11 @@ def _screen(done: Session, study: Path) -> None:
     done.run("propose", study, "--wells", 4, *QUICK)
     done.run("propose", study, *QUICK, "--keep", _edited(study), "--by", "me", "--because", "why")
     done.run("check", study)
+    with (study / "ledger.jsonl").open("a", encoding="utf-8") as ledger:
+        ledger.write('{"number":')
     done.run("prepare", study)
     _sheets(done, study)
-    done.run("advise", study, "--wells", 4, *QUICK)
+    _on_record(done, study)
     _columns(done, study)
     done.run("rehearse", study, "--plates", 4, "--series", 1, *QUICK, "--workers", 1)
     with pytest.MonkeyPatch.context() as patch:
@@ -138,6 +140,24 @@ def _screen(done: Session, study: Path) -> None:
         done.run("assess", study, *QUICK, "--engine", "nuts", "--draws", study / "draws")
     _run_otherwise(study)
     done.run("check", study)
+    lines = (study / "ledger.jsonl").read_text("utf-8").splitlines()
+    done.documents["ledger.jsonl"] += map(json.loads, lines)
+
+
+def _on_record(done: Session, study: Path) -> None:
+    """Advice after a target was changed, the page, and both held against what is there."""
+    toml = study / "study.toml"
+    toml.write_text(toml.read_text("utf-8").replace("at_most = 5000", "at_most = 5010"), "utf-8")
+    why = ("--by", "me", "--because", "the assay was recalibrated")
+    done.run("advise", study, "--wells", 4, *QUICK, *why)
+    # The second page tells what it replaced.
+    done.run("report", study, "--wells", 4, *QUICK)
+    facts = done.run("report", study, "--wells", 4, *QUICK)
+    record = json.loads((study / "report" / "report.json").read_text("utf-8"))
+    assert {name for name in facts if name not in record} == {"files"}
+    own = {name: value for name, value in record.items() if name not in facts}
+    done.documents["report/report.json"].append(own)
+    done.run("verify", study, "--no-recompute")
 
 
 def _columns(done: Session, study: Path) -> None:
@@ -151,6 +171,7 @@ def _columns(done: Session, study: Path) -> None:
 def _plate() -> str:
     lines = plate(14, "operator", "Z1|Z2").splitlines()
     told = [f"{line},{hcp}" for line, hcp in zip(lines[1:], range(100, 1500, 100), strict=True)]
+    told.append("B3,test,5.5,100,Z1,0.6,pipetted twice,700")
     return "\n".join([f"{lines[0]},hcp", *told]) + "\n"
 
 

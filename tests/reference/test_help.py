@@ -37,7 +37,7 @@ def test_every_entry_is_found_by_its_names(entry, capital) -> None:
         ("factors.kept_within", ("key", "kept_within", "[[factors]]")),
         ("[bench]", ("section", "[bench]", "study.toml")),
         ("[factors]", ("section", "[[factors]]", "study.toml")),
-        ("sides[].beyond", ("field", "window.sides[].beyond", "assess, advise")),
+        ("sides[].beyond", ("field", "window.sides[].beyond", "assess, advise, report")),
         ("bench.stocks", ("section", "[[bench.stocks]]", "study.toml")),
         ("assess", ("command", "assess", "")),
         ("muntin assess", ("command", "assess", "")),
@@ -45,8 +45,8 @@ def test_every_entry_is_found_by_its_names(entry, capital) -> None:
         ("transfers.csv", ("table", "sheets/<plan>/transfers.csv", "")),
         ("draw_ul", ("column", "draw_ul", "sheets/<plan>/transfers.csv")),
         ("yield_exclude", ("column", "<response>_exclude", "plates/<plate>.csv")),
-        ("window.sides[].beyond", ("field", "window.sides[].beyond", "assess, advise")),
-        ("Sides.Beyond", ("field", "window.sides[].beyond", "assess, advise")),
+        ("window.sides[].beyond", ("field", "window.sides[].beyond", "assess, advise, report")),
+        ("Sides.Beyond", ("field", "window.sides[].beyond", "assess, advise, report")),
     ],
 )
 def test_names_lead_to_entries(name: str, first: tuple[str, str, str]) -> None:

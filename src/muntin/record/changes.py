@@ -87,17 +87,19 @@ def changes_of(study: Study, ledger: Ledger, reopen: Callable[[Path], Study]) ->
     """
     lines = [line for line in ledger.sound if line.entry.asked and not line.open]
     advice = [line for line in lines if line.advice is not None]
-    sentences: list[str] = []
+    asked: list[str] = []
+    edited: list[str] = []
     left_out: list[str] = []
-    since = ""
     if lines and _has_data(study):
-        since = _named(lines[-1])
-        sentences += asked_changes(lines[-1].entry.asked, asked_of(study.definition))
+        asked = asked_changes(lines[-1].entry.asked, asked_of(study.definition))
     if advice:
-        found, left_out = input_changes(study, advice[-1], reopen)
-        since = since if sentences or not (found or left_out) else _named(advice[-1])
-        sentences += found
-    return Changes(since=since, sentences=tuple(sentences), left_out=tuple(left_out))
+        edited, left_out = input_changes(study, advice[-1], reopen)
+    since = lines[-1] if asked else advice[-1] if edited or left_out else None
+    return Changes(
+        since="" if since is None else _named(since),
+        sentences=(*asked, *edited),
+        left_out=tuple(left_out),
+    )
 
 
 def _named(line: Line) -> str:

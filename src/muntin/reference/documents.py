@@ -3,9 +3,10 @@
 from __future__ import annotations
 
 from muntin.reference.fields_columns import CONFIRM
-from muntin.reference.fields_handover import HANDOVER, RECORD
-from muntin.reference.fields_plans import ADVISE, PLAN, PREPARE, PROPOSE
+from muntin.reference.fields_handover import HANDOVER
+from muntin.reference.fields_plans import PLAN, PREPARE, PROPOSE
 from muntin.reference.fields_reads import REDUCE, REDUCTION, UPTAKE
+from muntin.reference.fields_record import RECORD
 from muntin.reference.fields_rehearsal import REHEARSE
 from muntin.reference.fields_study import ASSESS, CHECK, FAULT, SETTINGS, STANDING, STUDY
 from muntin.reference.part import Part
@@ -21,9 +22,18 @@ _COMMANDS = (
     "rehearse",
     "advise",
     "confirm",
+    "report",
+    "verify",
     "help",
 )
 _EVERY = Part(_COMMANDS, {"command": "the command that was run"})
+_REMARKS = Part(
+    ("reduce", "uptake", "prepare", "rehearse", "confirm", "report"),
+    {
+        "remarks": "what there is to say of the ledger and of earlier commands that were cut off; "
+        "left out where there is nothing"
+    },
+)
 _NEW = Part(("new",), {"files": "files written"})
 _HELP = Part(
     ("help",),
@@ -42,6 +52,7 @@ _HELP = Part(
 PARTS = (
     FAULT,
     _EVERY,
+    _REMARKS,
     *SETTINGS,
     STUDY,
     CHECK,
@@ -50,8 +61,7 @@ PARTS = (
     HANDOVER,
     PLAN,
     PROPOSE,
-    ADVISE,
-    RECORD,
+    *RECORD,
     PREPARE,
     REDUCE,
     REDUCTION,

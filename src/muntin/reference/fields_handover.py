@@ -1,4 +1,4 @@
-"""JSON fields of what is handed over of a window, and of what advice puts on record."""
+"""JSON fields of what is handed over of a window."""
 
 from __future__ import annotations
 
@@ -20,7 +20,7 @@ _BOX = {
 _CONDITION = {"condition": "the condition", "condition.<factor>": "its value of the factor"}
 
 HANDOVER = Part(
-    ("assess",),
+    ("assess", "report"),
     {
         "handover": "what can be handed over of the window; null before any reading, and where the "
         "data do not support a window",
@@ -82,24 +82,5 @@ HANDOVER = Part(
         "handover.optimism.best_run[].low": "lower end of the central 95 % of a new reading there",
         "handover.optimism.best_run[].high": "upper end",
         "handover.optimism.best_run[].drop": "what a repeat is expected to lose of the reading",
-    },
-)
-
-RECORD = Part(
-    ("advise",),
-    {
-        "by": "who gave the advice, as named by --by; null where nobody was",
-        "changes": "what differs from earlier advice",
-        "changes.said": "the differences, in sentences",
-        "changes.because": "the reason given for them (--because); null where none was",
-        "ledger": "the line of ledger.jsonl about this advice",
-        "ledger.line": "its number",
-        "ledger.before": "hash of the line before; empty for the first",
-        "predicted": "what each planned well is expected to read",
-        "predicted[].well": "the well",
-        "predicted[].response": "the response",
-        "predicted[].low": "lower end of the central 95 % of its reading, in the response's unit",
-        "predicted[].predicted": "middle of it",
-        "predicted[].high": "upper end",
     },
 )

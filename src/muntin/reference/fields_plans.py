@@ -43,7 +43,7 @@ _EDIT = {
 }
 
 PLAN = Part(
-    ("propose", "advise"),
+    ("propose", "advise", "report"),
     {
         "settings.wells": "test wells asked for",
         "plan": "the next plate",
@@ -87,22 +87,6 @@ PROPOSE = Part(
         "files.plan": "the plan's table",
         "files.record": "the record of what was changed (--keep)",
         "files.remark": "what to know of its name",
-    },
-)
-
-ADVISE = Part(
-    ("advise",),
-    {
-        "written_at": "time of writing, UTC",
-        "versions": "versions that the numbers depend on",
-        "versions.<package>": "version of a package, or of python",
-        "inputs": "SHA-256 of each input file",
-        "inputs.<file>": "SHA-256 of the file",
-        "cautions": "what to keep in mind",
-        "files": "where it was written",
-        "files.plan": "the plan's table",
-        "files.advice": "folder of the revision: map, numbers, copy of the inputs",
-        "files.remark": "what to know of the plan's name",
     },
 )
 

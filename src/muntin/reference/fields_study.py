@@ -31,7 +31,7 @@ FAULT = Part(
 )
 
 STUDY = Part(
-    ("check", "assess", "propose", "rehearse", "advise", "confirm"),
+    ("check", "assess", "propose", "rehearse", "advise", "confirm", "report"),
     {
         "study": "what was read",
         "study.folder": "folder of the study, as given",
@@ -146,7 +146,10 @@ _WINDOW = {
     "window.sides[].fails": "low or high: the likelier way",
 }
 
-STANDING = Part(("assess", "advise"), {**_MODEL, **_SAMPLED, **_TOGETHER, **_CHECKS, **_WINDOW})
+STANDING = Part(
+    ("assess", "advise", "report"),
+    {**_MODEL, **_SAMPLED, **_TOGETHER, **_CHECKS, **_WINDOW},
+)
 
 ASSESS = Part(
     ("assess",),
@@ -174,7 +177,7 @@ ASSESS = Part(
 )
 
 SETTINGS = (
-    Part(("assess", "propose", "rehearse", "advise"), _SETTINGS),
-    Part(("assess", "propose", "advise"), _ENGINE),
-    Part(("propose", "rehearse", "advise"), _AIM),
+    Part(("assess", "propose", "rehearse", "advise", "report"), _SETTINGS),
+    Part(("assess", "propose", "advise", "report"), _ENGINE),
+    Part(("propose", "rehearse", "advise", "report"), _AIM),
 )

@@ -10,6 +10,8 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 import pandas as pd
 
+from muntin.record.changes import explained_changes
+from muntin.record.ledger import read_ledger
 from muntin.record.study import Study
 from muntin.report.ruling_text import ruling_facts
 from muntin.report.words import WINDOW
@@ -47,6 +49,19 @@ def study_facts(study: Study) -> Facts:
         "excluded_wells": counts.excluded_wells,
         "readings": by_response,
         "notices": list(study.notices),
+    }
+
+
+def changes_facts(study: Study) -> Facts:
+    """Return what was changed since earlier advice, and what of it was explained: by whom, when,
+    why.
+    """
+    changes = study.changes
+    return {
+        "since": changes.since,
+        "said": list(changes.sentences),
+        "left_out": list(changes.left_out),
+        "explained": [asdict(one) for one in explained_changes(read_ledger(study.folder))],
     }
 
 

@@ -12,7 +12,7 @@ from muntin.report.advice_files import hashes, versions
 from muntin.report.cautions import cautions
 from muntin.report.drawn import Drawn
 from muntin.report.every_figure import report_figures
-from muntin.report.facts import Facts, plan_facts, standing_facts, study_facts
+from muntin.report.facts import Facts, changes_facts, plan_facts, standing_facts, study_facts
 from muntin.report.handover_text import handover_facts
 from muntin.report.page.ahead_sections import next_section, protein_section
 from muntin.report.page.answer import answer, standing_word
@@ -27,7 +27,12 @@ from muntin.report.page.evidence_sections import (
 from muntin.report.page.handover_section import handover_section
 from muntin.report.page.html import page_html
 from muntin.report.page.put_back import put_back
-from muntin.report.page.record_sections import cautions_section, data_section, provenance_section
+from muntin.report.page.record_sections import (
+    cautions_section,
+    changes_section,
+    data_section,
+    provenance_section,
+)
 from muntin.report.page.standing_sections import conditional, responses_section, window_section
 from muntin.window.assessment import Assessment
 
@@ -47,6 +52,7 @@ _SECTIONS: tuple[Callable[[Basis], Section], ...] = (
     left_out_section,
     protein_section,
     data_section,
+    changes_section,
     cautions_section,
     provenance_section,
 )
@@ -104,6 +110,7 @@ def build_page(
         "versions": versions(),
         "settings": settings or {},
         "inputs": hashes(inputs or {}),
+        "changes": changes_facts(view.study),
         "study": study_facts(view.study),
         **standing_facts(view, window),
         "plan": None if plan is None else plan_facts(view.study, plan),

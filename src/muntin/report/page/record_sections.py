@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from muntin.record.stop_rule import rule_text
 from muntin.report.edit_record import plans_on_record
 from muntin.report.page.basis import Basis
 from muntin.report.page.blocks import Section, Table
@@ -32,12 +33,49 @@ def cautions_section(basis: Basis) -> Section:
 def data_section(basis: Basis) -> Section:
     """Return what was read, what was noted, and how plans and plates differ."""
     lines, _ = plans_on_record(basis.study)
-    items = [*basis.study.notices, *lines]
+    # They have a section of their own.
+    changed = (basis.study.changes.notice, basis.study.stopping.notice)
+    items = [*(said for said in basis.study.notices if said not in changed), *lines]
     return Section(
         name="data",
         title="What was read",
         says=tuple(read_lines(basis.study)),
         items=tuple(items),
+    )
+
+
+def changes_section(basis: Basis) -> Section:
+    """Return what was changed: what nobody gave a reason for yet, and what was explained, by whom,
+    when and why.
+    """
+    changes = basis.facts["changes"]
+    since, said, left_out = (changes[name] for name in ("since", "said", "left_out"))
+    open_ = f"CHANGED since {since}, and no reason was given: {'; '.join(said)}."
+    explained = Table(
+        caption="Changes that were explained",
+        head=("date", "who", "why", "what was changed"),
+        rows=tuple(
+            (one["time"][:10], one["by"], one["because"], "; ".join(one["said"]))
+            for one in changes["explained"]
+        ),
+    )
+    stops = Table(
+        caption="Stop rules on record",
+        head=("first seen", "rule", "wells read by then", "why"),
+        rows=tuple(
+            (str(stop.date), rule_text(stop.rule), str(stop.wells_read), stop.reason)
+            for stop in basis.study.stops
+        ),
+        numbers=(2,),
+    )
+    tables = (explained, stops)
+    kept = tuple(t for t, least in zip(tables, (1, 2), strict=True) if len(t.rows) >= least)
+    return Section(
+        name="changes",
+        title="What was changed since earlier advice",
+        says=tuple(one for one in (open_ if said else "", basis.study.stopping.notice) if one),
+        tables=kept,
+        notes=tuple(f"Left out since {since}, with a reason: {one}." for one in left_out),
     )
 
 
@@ -47,6 +85,7 @@ def provenance_section(basis: Basis) -> Section:
     settings = facts["settings"]
     rows = [
         ("written at", facts["written_at"]),
+        *([("written by", facts["by"])] if facts["by"] else []),
         *((name, str(value)) for name, value in settings.items()),
         *((f"version of {name}", value) for name, value in facts["versions"].items()),
     ]
