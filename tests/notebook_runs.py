@@ -25,7 +25,8 @@ ROOT = Path(__file__).parents[1]
 NOTEBOOKS = sorted((ROOT / "notebooks").glob("*.ipynb"))
 _COLOURS = 64
 _PICTURE = "image/png"
-_STYLE = re.compile(r"\x1b\[[0-9;]*m")
+# Bold letters of a screen; what matplotlib says where it runs for the first time.
+_BESIDE = re.compile(r"\x1b\[[0-9;]*m|^Matplotlib is building the font cache.*\n?", re.MULTILINE)
 
 
 def run(path: Path, folder: Path, timeout: int = 600) -> Any:
@@ -64,9 +65,9 @@ def codes(notebook: Any) -> list[Any]:
 
 
 def texts(cell: Any) -> Iterator[str]:
-    """What a code cell says in plain text, without bold: what it prints, and what it shows."""
+    """What a code cell says in plain text, with nothing beside it: what it prints, and what it shows."""
     for stream in ("stdout", "stderr"):
-        yield _STYLE.sub("", "".join(o.text for o in cell.outputs if o.get("name") == stream))
+        yield _BESIDE.sub("", "".join(o.text for o in cell.outputs if o.get("name") == stream))
     for output in cell.outputs:
         data = output.get("data", {})
         if _PICTURE not in data:
