@@ -65,7 +65,7 @@ def codes(notebook: Any) -> list[Any]:
 
 
 def texts(cell: Any) -> Iterator[str]:
-    """What a code cell says in plain text, with nothing beside it: what it prints, and what it shows."""
+    """What a code cell prints and shows in plain text, with nothing beside it."""
     for stream in ("stdout", "stderr"):
         yield _BESIDE.sub("", "".join(o.text for o in cell.outputs if o.get("name") == stream))
     for output in cell.outputs:
