@@ -12,9 +12,9 @@ HIGH = Recipe(parts={"acid mix": 0.05, "NaCl": 0.25, "water": 0.7})
 def test_a_table_has_each_share_under_its_stock():
     lines = recipe_lines({"low salt": LOW, "high salt": HIGH}, 84)
     assert lines == [
-        ["mL per litre   acid mix  base mix   water    NaCl"],
-        ["[ ] low salt       35.3      14.7   950.0", "    pH 5.2."],
-        ["[ ] high salt      50.0             700.0   250.0"],
+        ["mL per litre   acid mix  base mix    NaCl   water"],
+        ["[ ] low salt       35.3      14.7           950.0", "    pH 5.2."],
+        ["[ ] high salt      50.0             250.0   700.0"],
     ]
 
 
