@@ -42,6 +42,7 @@ FILES = [
     "sheets/plate-02/map.pdf",
     "sheets/plate-02/map.png",
     "sheets/plate-02/recipes.csv",
+    "sheets/plate-02/stocks.csv",
     "sheets/plate-02/totals.csv",
     "sheets/plate-02/transfers.csv",
 ]

@@ -14,6 +14,7 @@ from hypothesis import strategies as st
 import muntin
 from muntin.bench.sheets import prepare
 from muntin.record import StudyFaults, open_study
+from muntin.record.faults import listed
 from muntin.report.plan_files import plan_table_text, write_plan
 from muntin.window.assessment import Assessment
 from tests.bench.bottled import HIGH, LOW, bottled
@@ -75,6 +76,29 @@ def test_small_draws_are_avoided_too(light: Assessment, tmp_path: Path) -> None:
     salts = muntin.propose(view, wells=12).wells["salt"].dropna()
     # 100 of 400 µL: from a quarter to three quarters of 500 mM.
     assert salts.between(125, 375).all()
+
+
+def test_what_bottles_measured_is_told_with_the_plan(light: Assessment, tmp_path: Path) -> None:
+    view = under(light, tmp_path)
+    (tmp_path / "stocks").mkdir()
+    levels = [f"{4.5 + 0.5 * n:.1f}" for n in range(7)]
+    rows = [f"high salt (pH {level}),salt,500,475" for level in levels]
+    path = tmp_path / "stocks" / "plate-02.csv"
+    path.write_text("\n".join(["bottle,factor,target,measured", *rows]) + "\n")
+    plan = muntin.propose(view, wells=12)
+    of = [notice for notice in plan.notices if "stocks/plate-02.csv" in notice]
+    counts = plan.wells["ph"].value_counts()
+    used = [level for level in levels if float(level) in counts.index]
+    shown = listed((f"high salt (pH {level})" for level in used), most=4)
+    assert of[0] == (
+        f"{shown} measured something else than the target (stocks/plate-02.csv): "
+        f"probabilities and forecast of {counts.sum()} wells are those of what the wells then hold"
+    )
+    assert [n.partition("from ")[2].partition(";")[0] for n in of[1:]] == [
+        f"high salt (pH {level})" for level in levels if level not in used
+    ]
+    # Every well holds salt, and 475 of 500 mM of it.
+    assert plan.wells["reason"].dropna().str.contains("Salt measured").sum() == counts.sum()
 
 
 @settings(deadline=None, derandomize=True, max_examples=40, phases=[Phase.generate])

@@ -78,3 +78,40 @@ def test_a_measured_setting_has_no_error_of_setting(tmp_path):
     table = Weighing(view, told, (), 1)
     assert (table.setting[:2] == 0.0).all()
     assert table.setting[2, 0] > 0.0
+
+
+def bottled(high=500.0):
+    """The small definition with two bottles of each pH."""
+    stocks = [
+        {"name": "low", "per": "ph", "holds": {"salt": 0}},
+        {"name": "high", "per": "ph", "holds": {"salt": high}},
+    ]
+    return Definition.model_validate(tables(bench={"ph_factor": "ph", "stocks": stocks}))
+
+
+def of_bottle(target, measured):
+    return Stock("salt", target, measured, "stocks/plate-02.csv", "row 2", "high (pH 5.0)")
+
+
+def test_bottles_move_what_is_blended_from_them_and_leave_the_error_of_the_pipette():
+    told = weighed(bottled(), FRAME, Terms(stocks=(of_bottle(500.0, 480.0),)))
+    assert told.targets["salt"].tolist() == [100.0, 200.0, 100.0]
+    np.testing.assert_allclose(told.actual["salt"], [96.0, 192.0, 100.0])
+    assert not told.measured.any()
+    assert not told.barred.any()
+
+
+def test_held_rows_of_a_bottle_may_be_repeated():
+    nan = np.nan
+    stock = of_bottle(500.0, 480.0)
+    told = weighed(bottled(), FRAME, Terms(held=held((5.0, 200, nan, 192.0)), stocks=(stock,)))
+    assert told.held == (1,)
+    assert told.barred.tolist() == [False, False, False, True]
+    assert not told.measured.any()
+
+
+def test_what_a_bottle_carries_beyond_the_range_is_not_chosen():
+    # The range ends at 450 mM, and a step of 50 beyond it is let pass.
+    frame = pd.DataFrame({"ph": [5.0, 5.0, 6.0], "salt": [400.0, 450.0, 450.0]})
+    told = weighed(bottled(450.0), frame, Terms(stocks=(of_bottle(450.0, 501.0),)))
+    assert told.barred.tolist() == [False, True, False]

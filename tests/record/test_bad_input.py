@@ -728,15 +728,15 @@ LATER = {
         {"stocks/plate-01.csv": "factor,target,measured\nsalt,100,911\n"},
         [
             "stocks/plate-01.csv, row 2, column measured: 911 lies outside -10 to 910 mM, "
-            "the range and a step (study.toml, factors, salt; what wells measured, such as those "
-            "blended from a bottle, goes to salt_measured of the plate table)"
+            "the range and a step (study.toml, factors, salt; if it is a bottle that wells are "
+            "blended from, name it in the column bottle)"
         ],
     ),
     "two_stocks_of_one_target": (
         {"stocks/plate-01.csv": "factor,target,measured\nsalt,100,101\nsalt,100,102\n"},
         [
             "stocks/plate-01.csv, row 3, column target: 100 is already the target of another "
-            "stock of salt on this plate"
+            "stock of salt on this plate (column bottle tells bottles apart)"
         ],
     ),
     "stocks_of_no_plate": (

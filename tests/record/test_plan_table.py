@@ -26,7 +26,7 @@ def reading(tmp_path, *lines, head=HEAD, file=FILE, plates=(RAN,), stocks="", **
         (study.folder / "stocks").mkdir()
         (study.folder / "stocks" / "plate-02.csv").write_text(stocks)
     found = Findings()
-    made = planned_stocks(study.folder, study.definition.factors, "plate-02", found)
+    made = planned_stocks(study.folder, study.definition, "plate-02", found)
     kept = read_plan(path, study, "plate-02", made, found)
     return kept, [fault.text for fault in found.faults]
 

@@ -14,7 +14,9 @@ import pytest
 
 from muntin.bench.sheets import Sheets, prepare
 from muntin.record import StudyFaults, open_study
+from muntin.record.faults import Findings
 from muntin.record.ledger import LEDGER, Entry
+from muntin.record.stocks import planned_stocks
 from muntin.record.writing import writing
 from muntin.report.cautions import bench_cautions
 from muntin.report.checklist import checklist_lines
@@ -26,7 +28,7 @@ from tests.report.studies import tree
 
 CONTROL = {"ph": 6.0, "salt": 250}
 NAMES = ["map.png", "map.pdf", "checklist.txt", "checklist.pdf"]
-TABLES = ["conditions.csv", "recipes.csv", "transfers.csv", "totals.csv"]
+TABLES = ["conditions.csv", "recipes.csv", "stocks.csv", "transfers.csv", "totals.csv"]
 
 
 def made(folder: Path, **changed: Any) -> Sheets:
@@ -66,6 +68,42 @@ high salt (pH 6.0),2,400,1000,1400
 """
 
 
+FORM = """\
+bottle,factor,target,measured
+low salt (pH 4.5),ph,4.5,
+low salt (pH 4.5),salt,0,
+high salt (pH 4.5),ph,4.5,
+high salt (pH 4.5),salt,500,
+"""
+
+
+def test_the_form_of_the_stocks_fills_in_and_comes_back(tmp_path: Path) -> None:
+    sheets = made(tmp_path)
+    form = sheet_tables(sheets)["stocks.csv"]
+    assert form.startswith(FORM)
+    assert len(form.splitlines()) == 1 + 2 * len(sheets.bottles)
+    (tmp_path / "stocks").mkdir()
+    (tmp_path / "stocks" / "plate-02.csv").write_text(form.replace("4.5,\n", "4.5,4.52\n"))
+    found = Findings()
+    told = planned_stocks(tmp_path, sheets.study.definition, "plate-02", found)
+    assert found.faults == []
+    assert [(s.bottle, s.factor, s.measured) for s in told] == [
+        ("low salt (pH 4.5)", "ph", 4.52),
+        ("high salt (pH 4.5)", "ph", 4.52),
+    ]
+
+
+def test_a_form_that_was_filled_in_is_not_replaced(tmp_path: Path) -> None:
+    folder = tmp_path / "sheets" / "plate-02"
+    put(folder, {"stocks.csv": FORM})
+    assert put(folder, {"stocks.csv": FORM}) == "Replaces the sheets that were there."
+    (folder / "stocks.csv").write_text(FORM.replace("0,\n", "0,1\n"))
+    before = tree(folder)
+    with pytest.raises(StudyFaults, match=r"row 3, column measured: 1 was filled in and would be"):
+        put(folder, {"stocks.csv": FORM})
+    assert tree(folder) == before
+
+
 def test_the_tables_by_hand(tmp_path: Path) -> None:
     tables = sheet_tables(made(tmp_path))
     assert tables["conditions.csv"] == CONDITIONS
@@ -91,7 +129,7 @@ def test_the_written_draws_add_up_to_the_written_totals(tmp_path: Path) -> None:
     ("changed", "left"),
     [
         ({}, TABLES),
-        ({"protein_mg_per_ml": None, "well_ul": None}, ["conditions.csv", "recipes.csv"]),
+        ({"protein_mg_per_ml": None, "well_ul": None}, TABLES[:3]),
         ({"stocks": None}, ["conditions.csv", "transfers.csv", "totals.csv"]),
         ({"stocks": None, "protein_mg_per_ml": None}, ["conditions.csv"]),
     ],

@@ -9,7 +9,7 @@ import numpy as np
 import pandas as pd
 
 from muntin.design.selection import select
-from muntin.design.terms import Terms, measured_by_stock
+from muntin.design.terms import Terms
 from muntin.design.weighing import Aim
 from muntin.record.definition import Definition
 from muntin.record.offers import (
@@ -26,6 +26,7 @@ from muntin.record.offers import (
 )
 from muntin.record.plan_table import KeptPlan
 from muntin.record.readings import INFORMING
+from muntin.record.stock_levels import stock_levels
 from muntin.record.stocks import Stock
 from muntin.window.assessment import Assessment
 
@@ -159,7 +160,7 @@ def _frame(
             frame[factor.name] = numbers.astype(float)
         elif not values.isin(factor.choices or ()).all():
             return None
-    measured = measured_by_stock(definition, frame, stocks)
+    measured = stock_levels(definition, frame, stocks).values
     columns = {f"{n}_measured": measured[:, i] for i, n in enumerate(names)}
     return frame.assign(role=[w.role for w in told], **columns)
 

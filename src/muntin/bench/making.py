@@ -4,9 +4,9 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 
-from muntin.bench.bottles import Bottle
 from muntin.bench.buffers import buffer_made, buffer_recipe
 from muntin.bench.recipe import Recipe, Refusal
+from muntin.record.bottles import Bottle
 from muntin.record.definition import Definition
 
 

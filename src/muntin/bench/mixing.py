@@ -7,15 +7,14 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
-from muntin.bench.blending import blends
-from muntin.bench.bottles import Bottle, Value, bottles_for, held_part
 from muntin.bench.buffers import buffer_recipe
 from muntin.bench.making import forms_made, making_of
 from muntin.bench.recipe import Condition, Recipe, Refusal
 from muntin.bench.volumes import Pipette, apportioned, pipette_of, volume_text
+from muntin.record.bottles import Bottle, Value, held_part
 from muntin.record.definition import Definition
 from muntin.record.faults import listed, number
-from muntin.record.keys import Floats
+from muntin.record.mixes import Mixes, mixes_of
 
 _HALF = 0.5 + 1e-9
 
@@ -73,28 +72,21 @@ class Mixer:
 
     def _blended(self, held: Mapping[str, Value]) -> Mix | Refusal:
         """The mix of bottles whose contents add up by volume."""
-        bottles = bottles_for(self.definition, held)
-        matched = self.definition.bench.matched(self.definition.factors)
-        tied = [name for name in held if name in matched]
-        if not all(any(name in bottle.holds for bottle in bottles) for name in tied):
-            wanted = " and ".join(self._shown(name, held[name]) for name in tied)
+        mixes = mixes_of(self.definition, held)
+        if not all(any(name in bottle.holds for bottle in mixes.bottles) for name in mixes.tied):
+            wanted = " and ".join(self._shown(name, held[name]) for name in mixes.tied)
             return Refusal(reason=f"finds no bottle of {wanted}", cause="there is no bottle of it")
-        asked = {n: float(v) for n, v in held.items() if n not in matched}
-        asked |= self.definition.bench.every_mix
-        contents = _contents(bottles, asked)
-        options = [
-            shares
-            for shares in blends(contents, np.array([*asked.values()]))
-            if _cover(bottles, shares, tied)
-        ]
-        if not options:
-            return self._out_of_reach(bottles, asked, contents)
+        if not mixes.shares:
+            return self._out_of_reach(mixes)
 
         def made(parts: Sequence[float]) -> dict[str, float]:
-            mixed = contents @ np.array(parts, dtype=float) / sum(parts)
-            return dict(zip(asked, mixed.tolist(), strict=True))
+            mixed = mixes.contents @ np.array(parts, dtype=float) / sum(parts)
+            return dict(zip(mixes.asked, mixed.tolist(), strict=True))
 
-        tried = [self._measured_out(held, asked, bottles, s.tolist(), made) for s in options]
+        tried = [
+            self._measured_out(held, mixes.asked, mixes.bottles, shares.tolist(), made)
+            for shares in mixes.shares
+        ]
         return next((mix for mix in tried if isinstance(mix, Mix)), tried[0])
 
     def _from_forms(self, held: Mapping[str, Value]) -> Mix | Refusal:
@@ -158,10 +150,8 @@ class Mixer:
             cause=f"they take less of a bottle than can be drawn: {floor}",
         )
 
-    def _out_of_reach(
-        self, bottles: list[Bottle], asked: Mapping[str, float], contents: Floats
-    ) -> Refusal:
-        for row, (name, value) in zip(contents, asked.items(), strict=True):
+    def _out_of_reach(self, mixes: Mixes) -> Refusal:
+        for row, (name, value) in zip(mixes.contents, mixes.asked.items(), strict=True):
             slack = 1e-9 * max(1.0, abs(value))
             if not row.min() - slack <= value <= row.max() + slack:
                 span = f"{number(row.min())} to {number(row.max())}"
@@ -170,20 +160,8 @@ class Mixer:
                     reason=f"is out of reach: {holds}",
                     cause=f"they are out of reach: {holds.replace('for it', 'for them')}",
                 )
-        names = listed(bottle.name for bottle in bottles)
+        names = listed(bottle.name for bottle in mixes.bottles)
         return Refusal(reason=f"is out of reach: no mix of {names} makes all of it at once")
 
     def _shown(self, name: str, value: Value) -> str:
         return f"{name} {self._by_name[name].shown(value)}"
-
-
-def _cover(bottles: Sequence[Bottle], shares: Floats, names: Sequence[str]) -> bool:
-    """Whether each of these factors is set by one of the bottles in a mix."""
-    used = [bottle for bottle, share in zip(bottles, shares, strict=True) if share > 0]
-    return all(any(name in bottle.holds for bottle in used) for name in names)
-
-
-def _contents(bottles: list[Bottle], asked: Mapping[str, float]) -> Floats:
-    """What each bottle holds of what is asked, shape (asked, bottles)."""
-    rows = [[float(bottle.holds.get(name, 0.0)) for bottle in bottles] for name in asked]
-    return np.array(rows, dtype=float).reshape(len(asked), len(bottles))

@@ -128,7 +128,7 @@ def _asked(
 ) -> tuple[Asked, tuple[Stock, ...]]:
     """Read what is kept and the stocks, and look for room; every fault comes in one report."""
     study, found = view.study, Findings()
-    stocks = planned_stocks(study.folder, study.definition.factors, plate, found)
+    stocks = planned_stocks(study.folder, study.definition, plate, found)
     kept = None if keep is None else read_plan(Path(keep), study, plate, stocks, found)
     if keep is None:
         for factor in study.definition.factors:

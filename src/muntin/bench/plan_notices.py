@@ -13,11 +13,13 @@ from muntin.bench.room import Asked
 from muntin.design.selection import Selection
 from muntin.design.stopping import Ruling
 from muntin.design.terms import Terms
+from muntin.record.bottles import alike
 from muntin.record.definition import Definition
-from muntin.record.faults import counted, number
+from muntin.record.faults import counted, listed, number
 from muntin.record.offers import Change, Offer
 from muntin.record.plan_table import KeptPlan
-from muntin.record.stocks import Stock, same_target
+from muntin.record.stock_levels import stock_levels, unused_stocks
+from muntin.record.stocks import Stock
 from muntin.window.assessment import Assessment
 
 
@@ -66,23 +68,29 @@ def _of_stocks(definition: Definition, selection: Selection, stocks: Sequence[St
     """Stocks of the plan that measured something else than they were made for."""
     rows = selection.candidates.iloc[[pick.candidate for pick in selection.picks]]
     factors = {factor.name: factor for factor in definition.factors}
-    notices = []
-    for stock in stocks:
-        factor = factors[stock.factor]
-        wells = sum(same_target(factor, v, stock.target) for v in rows[factor.name].tolist())
-        if not wells:
-            target = factor.named(factor.shown(stock.target))
-            notices.append(
-                f"{stock.file}: no well of the plan has {target} for its target; what was measured "
-                "is not used, also for wells that are blended from that bottle"
-            )
-        elif not same_target(factor, stock.measured, stock.target):
-            said = factor.named(factor.shown(stock.target))
-            notices.append(
-                f"{said} measured {number(stock.measured)} ({stock.file}): probabilities and "
-                f"forecast of {counted(wells, 'well')} are those of the measured value"
-            )
-    return notices
+    levels = stock_levels(definition, rows, stocks)
+    notices, blended = [], np.zeros(len(rows), dtype=bool)
+    bottles: dict[str, str] = {}
+    for stock, used in zip(stocks, levels.used.T, strict=True):
+        factor, wells = factors[stock.factor], int(used.sum())
+        if not wells or alike(factor, stock.measured, stock.target):
+            continue
+        if stock.bottle:
+            blended |= used
+            bottles[stock.bottle] = stock.file
+            continue
+        said = factor.named(factor.shown(stock.target))
+        notices.append(
+            f"{said} measured {number(stock.measured)} ({stock.file}): probabilities and "
+            f"forecast of {counted(wells, 'well')} are those of the measured value"
+        )
+    if bottles:
+        notices.append(
+            f"{listed(bottles, most=4)} measured something else than the target "
+            f"({next(iter(bottles.values()))}): probabilities and forecast of "
+            f"{counted(int(blended.sum()), 'well')} are those of what the wells then hold"
+        )
+    return [*notices, *unused_stocks(definition, stocks, levels, "the plan")]
 
 
 def _of_bottles(selection: Selection, terms: Terms) -> list[str]:

@@ -122,5 +122,5 @@ def _measured(definition: Definition, targets: pd.DataFrame, actual: pd.DataFram
         pairs = zip(targets[factor.name], actual[factor.name], strict=True)
         for row, (target, value) in enumerate(pairs):
             if factor.continuous and abs(value - target) > 1e-9:
-                said[row] += f"; {factor.label} measured {value:.6g}"
+                said[row] += f"; {factor.label} measured {value:.5g}"
     return said

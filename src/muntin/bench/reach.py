@@ -7,9 +7,9 @@ from itertools import product
 import numpy as np
 import pandas as pd
 
-from muntin.bench.bottles import Value
 from muntin.bench.mixing import Mixer
 from muntin.bench.recipe import Refusal
+from muntin.record.bottles import Value
 from muntin.record.definition import Definition
 from muntin.record.factors import Factor
 

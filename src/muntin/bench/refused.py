@@ -7,10 +7,10 @@ from __future__ import annotations
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 
-from muntin.bench.bottles import Value
 from muntin.bench.mixing import Mixer
 from muntin.bench.nearby import nearest_that
 from muntin.bench.recipe import Refusal
+from muntin.record.bottles import Value
 from muntin.record.faults import Fault, listed, number
 
 _MANY = 4

@@ -10,7 +10,6 @@ from typing import Any
 
 import pandas as pd
 
-from muntin.bench.bottles import Bottle, Value
 from muntin.bench.buffer.stocks import named_stocks, stock_names
 from muntin.bench.buffer_blends import Blend, blend_cautions, blend_of
 from muntin.bench.buffer_cautions import buffer_cautions
@@ -24,6 +23,7 @@ from muntin.bench.transfers import Total, Transfer, totals_of, transfers_of
 from muntin.bench.volumes import Pipette
 from muntin.bench.wells import well_index
 from muntin.record.bench import LOAD
+from muntin.record.bottles import Bottle, Value
 from muntin.record.definition import Definition
 from muntin.record.faults import Fault, Findings, StudyFaults, counted
 from muntin.record.plan_choice import chosen_plan
@@ -125,7 +125,7 @@ def prepare(study: Study, plan: str | Path | None = None) -> Sheets:
 def _read(study: Study, plate: str, path: Path) -> tuple[str, pd.DataFrame]:
     """The rows of a plan in plate order, every one with its well."""
     found = Findings()
-    stocks = planned_stocks(study.folder, study.definition.factors, plate, found)
+    stocks = planned_stocks(study.folder, study.definition, plate, found)
     kept = read_plan(path, study, plate, stocks, found)
     if kept is not None and not found.faults:
         homeless = int((kept.rows["well"] == "").sum())

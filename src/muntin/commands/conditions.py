@@ -11,7 +11,7 @@ from muntin.record.definition import Definition
 from muntin.record.faults import Fault, Findings, StudyFaults
 from muntin.record.files import write_atomic
 from muntin.record.inputs import input_paths
-from muntin.record.levels import read_choices, read_levels
+from muntin.record.levels import read_choices, read_targets
 from muntin.record.tables import Table, missing_column, read_table
 from muntin.window.assessment import Assessment
 
@@ -41,7 +41,7 @@ def _frame(table: Table, definition: Definition, found: Findings) -> pd.DataFram
         if factor.name not in table.columns:
             found.faults.append(missing_column(table, factor.name))
         elif factor.continuous:
-            columns[factor.name] = read_levels(table, factor, every, (), "", found)[1]
+            columns[factor.name] = read_targets(table, factor, every, found)
         else:
             columns[factor.name] = read_choices(table, factor, every, found)
     return pd.DataFrame(columns)

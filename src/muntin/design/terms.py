@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
+from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
@@ -10,7 +10,9 @@ import pandas as pd
 from numpy.typing import NDArray
 
 from muntin.record.definition import Definition
-from muntin.record.stocks import Stock, same_target
+from muntin.record.levels import beyond
+from muntin.record.stock_levels import stock_levels
+from muntin.record.stocks import Stock
 
 Truths = NDArray[np.bool_]
 
@@ -39,8 +41,8 @@ class Weighed:
     """Candidates under weighing, Q rows each.
 
     targets: as they are set (raw units). actual: the values that the model uses. measured (Q,
-    factors): where those were measured. held: number of the candidate of each held row. barred
-    (Q,): candidates that may be held but not chosen.
+    factors): where those were measured, not blended by the pipette. held: number of the candidate
+    of each held row. barred (Q,): candidates that may be held but not chosen.
     """
 
     targets: pd.DataFrame
@@ -52,20 +54,22 @@ class Weighed:
 
 def weighed(definition: Definition, frame: pd.DataFrame, terms: Terms) -> Weighed:
     """Return the candidates of a frame (targets, raw units) and of the held rows, at the values
-    that their stocks measured.
+    that their stocks measured. Candidates that these carry a step beyond the range are barred.
     """
-    own = measured_by_stock(definition, frame, terms.stocks)
+    of_stocks = stock_levels(definition, frame, terms.stocks)
+    own, sure = of_stocks.values, of_stocks.sure
     count, names = len(frame), list(definition.factor_names)
     held: list[int] = []
     barred = np.zeros(count, dtype=bool)
     if terms.held is not None and len(terms.held):
         targets = terms.held[names].astype(frame.dtypes.to_dict())
         of_held = terms.held[[f"{n}_measured" for n in names]].to_numpy(dtype=float)
-        of_stock = measured_by_stock(definition, targets, terms.stocks)
+        of_stocks = stock_levels(definition, targets, terms.stocks)
+        same = np.isclose(of_held, of_stocks.values, rtol=0.0, atol=1e-9, equal_nan=True)
         frame = pd.concat([frame, targets], ignore_index=True)
-        own = np.vstack([own, of_held])
+        own, sure = np.vstack([own, of_held]), np.vstack([sure, of_stocks.sure | ~same])
         held = _first_alike(frame, own, count)
-        odd = ~np.isclose(of_held, of_stock, rtol=0.0, atol=1e-9, equal_nan=True).all(axis=1)
+        odd = ~same.all(axis=1)
         barred = np.r_[barred, odd | (np.array(held) != np.arange(count, len(frame)))]
     known = np.isfinite(own)
     actual = frame.copy()
@@ -73,26 +77,13 @@ def weighed(definition: Definition, frame: pd.DataFrame, terms: Terms) -> Weighe
         if factor.continuous:
             x = frame[factor.name].to_numpy(dtype=float)
             actual[factor.name] = np.where(known[:, i], own[:, i], x)
+            barred |= beyond(factor, actual[factor.name].to_numpy(dtype=float))
     if terms.declined:
         rows = frame.itertuples(index=False, name=None)
         barred |= np.array([row in terms.declined for row in rows], dtype=bool)
     if terms.unfit is not None:
         barred |= terms.unfit(frame)
-    return Weighed(frame, actual, known, tuple(held), barred)
-
-
-def measured_by_stock(
-    definition: Definition, frame: pd.DataFrame, stocks: Sequence[Stock]
-) -> NDArray[np.float64]:
-    """What the stock of each candidate measured, shape (Q, factors), NaN where none is known."""
-    out = np.full((len(frame), len(definition.factors)), np.nan)
-    for i, factor in enumerate(definition.factors):
-        for stock in stocks:
-            if stock.factor == factor.name:
-                x = frame[factor.name].to_numpy(dtype=float)
-                used = [same_target(factor, value, stock.target) for value in x.tolist()]
-                out[np.array(used, dtype=bool), i] = stock.measured
-    return out
+    return Weighed(frame, actual, known & sure, tuple(held), barred)
 
 
 def _first_alike(frame: pd.DataFrame, measured: NDArray[np.float64], count: int) -> list[int]:

@@ -10,7 +10,7 @@ from muntin.record.cells import numbers
 from muntin.record.factors import Factor
 from muntin.record.faults import Fault, Findings, counted, did_you_mean, listed, number
 from muntin.record.keys import Floats, Truths
-from muntin.record.stocks import Stock, stock_values
+from muntin.record.stocks import Stock
 from muntin.record.tables import Table
 
 
@@ -30,31 +30,40 @@ def read_choices(table: Table, factor: Factor, needed: Truths, found: Findings) 
     return chosen
 
 
+def read_targets(table: Table, factor: Factor, needed: Truths, found: Findings) -> Floats:
+    """Return the targets of a factor (raw unit), shape (rows,), NaN where none is given.
+
+    Only rows that are `needed` must hold one, inside the range.
+    """
+    targets = numbers(table, factor.name, found.faults)
+    _check_targets(table, factor, targets, needed, found)
+    return targets
+
+
 def read_levels(
     table: Table,
     factor: Factor,
     needed: Truths,
-    stocks: Sequence[Stock],
-    plate: str,
+    targets: Floats,
+    of_stocks: tuple[Floats, Truths, Truths],
     found: Findings,
-) -> tuple[Floats, Floats, Truths]:
-    """Return the values that the model uses, the targets (raw unit) and whether a value was
-    measured, shape (rows,) each.
+) -> tuple[Floats, Truths]:
+    """Return the values that the model uses (raw unit) and whether a value was measured, shape
+    (rows,) each.
 
-    A value is the well's measured one, else its stock's, else the target. Only rows that are
-    `needed` must hold a value, inside the range.
+    A value is the well's measured one, else that of its stocks (beside it which of those are sure
+    and which reckoned from bottles), else the target. Only rows that are `needed` must lie inside
+    the range.
     """
-    column = f"{factor.name}_measured"
-    targets = numbers(table, factor.name, found.faults)
-    measured = numbers(table, column, found.faults)
-    of_stock = stock_values(factor, targets, stocks, plate, found)
-    _check_targets(table, factor, targets, needed, found)
+    measured = numbers(table, f"{factor.name}_measured", found.faults)
     _check_measured(table, factor, measured, needed, found)
-    check_stocks(factor, stocks, found)
-    measured = np.where(np.isfinite(measured), measured, of_stock)
-    found.notices.extend(_off_target(table, factor, targets, measured, needed))
-    known = np.isfinite(measured)
-    return np.where(known, measured, targets), targets, known
+    own = np.isfinite(measured)
+    level, sure, bottled = of_stocks
+    told = np.where(own, measured, level)
+    _check_blended(table, factor, np.where(bottled & ~own, level, np.nan), needed, found)
+    found.notices.extend(_off_target(table, factor, targets, told, needed))
+    known = np.isfinite(told)
+    return np.where(known, told, targets), own | (known & sure)
 
 
 def _check_targets(
@@ -91,21 +100,36 @@ def _measured_text(factor: Factor) -> str:
 def _check_measured(
     table: Table, factor: Factor, measured: Floats, needed: Truths, found: Findings
 ) -> None:
-    low, high = _measured_range(factor)
     rule = f"study.toml, factors, {factor.name}"
-    slack = 1e-9 * (high - low)
-    outside = (measured < low - slack) | (measured > high + slack)
-    for row in np.flatnonzero(needed & outside).tolist():
+    for row in np.flatnonzero(needed & beyond(factor, measured)).tolist():
         column = f"{factor.name}_measured"
         found.faults.append(_outside(table, row, column, _measured_text(factor), rule))
 
 
-def check_stocks(factor: Factor, stocks: Sequence[Stock], found: Findings) -> None:
-    """Report the stocks of a factor that measured more than a step outside its range."""
+def _check_blended(
+    table: Table, factor: Factor, blended: Floats, needed: Truths, found: Findings
+) -> None:
+    rule = "what its bottles measured, in stocks/"
+    for row in np.flatnonzero(needed & beyond(factor, blended)).tolist():
+        problem = f"comes to {number(float(f'{blended[row]:.6g}'))} in the well, outside"
+        found.faults.append(table.fault(row, factor.name, problem, _measured_text(factor), rule))
+
+
+def beyond(factor: Factor, values: Floats) -> Truths:
+    """Return which values (raw unit) lie more than a step outside the range; NaN do not."""
     low, high = _measured_range(factor)
     slack = 1e-9 * (high - low)
+    return np.asarray((values < low - slack) | (values > high + slack), dtype=bool)
+
+
+def check_stocks(factor: Factor, stocks: Sequence[Stock], found: Findings) -> None:
+    """Report the stocks of a factor that measured more than a step outside its range; what bottles
+    hold that wells are blended from may lie anywhere.
+    """
     for stock in stocks:
-        if stock.factor == factor.name and not low - slack <= stock.measured <= high + slack:
+        if stock.factor != factor.name or stock.bottle:
+            continue
+        if beyond(factor, np.array([stock.measured]))[0]:
             found.faults.append(
                 Fault(
                     file=stock.file,
@@ -114,8 +138,8 @@ def check_stocks(factor: Factor, stocks: Sequence[Stock], found: Findings) -> No
                     value=number(stock.measured),
                     problem="lies outside",
                     allowed=_measured_text(factor),
-                    hint=f"study.toml, factors, {factor.name}; what wells measured, such as those "
-                    f"blended from a bottle, goes to {factor.name}_measured of the plate table",
+                    hint=f"study.toml, factors, {factor.name}; if it is a bottle that wells are "
+                    "blended from, name it in the column bottle",
                 )
             )
 

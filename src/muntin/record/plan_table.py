@@ -13,12 +13,14 @@ import pandas as pd
 
 from muntin.record.cells import reasons
 from muntin.record.definition import Definition
+from muntin.record.factors import Factor
 from muntin.record.faults import Fault, Findings, listed
 from muntin.record.keys import Truths
-from muntin.record.levels import read_choices, read_levels
+from muntin.record.levels import check_stocks, read_choices, read_levels, read_targets
 from muntin.record.plan_faults import condition_faults, level_faults, line_faults, step_faults
 from muntin.record.plates import plate_columns, read_roles
 from muntin.record.readings import INFORMING, USED, response_columns
+from muntin.record.stock_levels import stock_levels
 from muntin.record.stocks import Stock
 from muntin.record.study import Study
 from muntin.record.tables import Table, missing_column, read_table
@@ -77,7 +79,7 @@ def read_plan(
     _check_plate(path, file, study, plate, found)
     table = _with_wells(table, definition, found)
     # What stocks measured is told with the plan, not row by row.
-    return _rows(path, table, study, plate, stocks, Findings(faults=found.faults))
+    return _rows(path, table, study, stocks, Findings(faults=found.faults))
 
 
 def _shown(path: Path, folder: Path) -> str:
@@ -134,7 +136,6 @@ def _rows(
     path: Path,
     table: Table,
     study: Study,
-    plate: str,
     stocks: Sequence[Stock],
     found: Findings,
 ) -> KeptPlan:
@@ -143,18 +144,18 @@ def _rows(
     out = reasons(table, "exclude", found.faults)
     needed = np.array([r in INFORMING and not o for r, o in zip(roles, out, strict=True)], bool)
     columns: dict[str, Any] = {"well": table.cells("well"), "role": roles}
-    for factor in definition.factors:
-        if factor.name not in table.columns:
-            found.faults.append(missing_column(table, factor.name))
-            columns |= {factor.name: np.full(len(table), np.nan), f"{factor.name}_measured": np.nan}
-        elif not factor.continuous:
-            chosen = read_choices(table, factor, needed, found)
-            columns[factor.name] = [c or None for c in chosen]
-            columns[f"{factor.name}_measured"] = np.nan
-        else:
-            used, targets, known = read_levels(table, factor, needed, stocks, plate, found)
-            columns[factor.name] = step_faults(table, factor, targets, needed, found)
-            columns[f"{factor.name}_measured"] = np.where(known, used, np.nan)
+    targets = {f.name: _targets(table, f, needed, found) for f in definition.factors}
+    of_stocks = stock_levels(definition, pd.DataFrame(targets), stocks)
+    for i, factor in enumerate(definition.factors):
+        name, measured = factor.name, f"{factor.name}_measured"
+        columns |= {name: targets[name], measured: np.full(len(table), np.nan)}
+        if factor.continuous:
+            check_stocks(factor, stocks, found)
+        if factor.continuous and name in table.columns:
+            at, told = targets[name], of_stocks.of(i)
+            used, known = read_levels(table, factor, needed, at, told, found)
+            columns[name] = step_faults(table, factor, at, needed, found)
+            columns[measured] = np.where(known | np.isfinite(told[0]), used, np.nan)
     columns["reason"] = table.cells("reason")
     frame = pd.DataFrame(columns, index=range(len(table)))
     controls = ~frame["role"].isin(INFORMING)
@@ -168,6 +169,16 @@ def _rows(
     rows = frame[~excluded].reset_index(drop=True)
     cells = cells[~excluded].reset_index(drop=True)
     return KeptPlan(file=table.file, path=path, rows=rows, left_out=left_out, cells=cells)
+
+
+def _targets(table: Table, factor: Factor, needed: Truths, found: Findings) -> Any:
+    """The levels of a factor that a plan asks for, one a row."""
+    if factor.name not in table.columns:
+        found.faults.append(missing_column(table, factor.name))
+        return np.full(len(table), np.nan)
+    if not factor.continuous:
+        return [choice or None for choice in read_choices(table, factor, needed, found)]
+    return read_targets(table, factor, needed, found)
 
 
 def _known(definition: Definition) -> set[str]:

@@ -15,8 +15,9 @@ from muntin.record.definition import Definition
 from muntin.record.factors import Factor
 from muntin.record.faults import Fault, Findings, counted, did_you_mean, listed, nearest, quoted
 from muntin.record.keys import Truths
-from muntin.record.levels import read_choices, read_levels
+from muntin.record.levels import check_stocks, read_choices, read_levels, read_targets
 from muntin.record.readings import INFORMING, Reading, read_readings, response_columns
+from muntin.record.stock_levels import stock_levels, unused_stocks
 from muntin.record.stocks import Stock
 from muntin.record.tables import Table, missing_column, read_table
 from muntin.record.wells import WellError, last_well, well_name
@@ -112,10 +113,22 @@ def read_plate(
         "role": roles,
         "exclude": excluded,
     }
-    for factor in definition.factors:
-        levels = _factor(table, factor, needed, stocks, name, found)
-        ends = ("", "_target", "_measured")
-        columns |= {f"{factor.name}{end}": v for end, v in zip(ends, levels, strict=True)}
+    targets = {f.name: _targets(table, f, needed, found) for f in definition.factors}
+    of_stocks = stock_levels(definition, pd.DataFrame(targets), stocks)
+    found.notices.extend(unused_stocks(definition, stocks, of_stocks, name))
+    for i, factor in enumerate(definition.factors):
+        target = targets[factor.name]
+        values, known = target, np.zeros(len(table), dtype=bool)
+        if factor.continuous:
+            check_stocks(factor, stocks, found)
+        if factor.continuous and factor.name in table.columns:
+            told = of_stocks.of(i)
+            values, known = read_levels(table, factor, needed, np.array(target), told, found)
+        columns |= {
+            factor.name: values,
+            f"{factor.name}_target": target,
+            f"{factor.name}_measured": known,
+        }
     readings = {
         response.name: read_readings(table, response, found.faults)
         for response in definition.responses
@@ -137,23 +150,13 @@ def read_roles(table: Table, found: Findings) -> list[str]:
     return roles
 
 
-def _factor(
-    table: Table,
-    factor: Factor,
-    needed: Truths,
-    stocks: Sequence[Stock],
-    plate: str,
-    found: Findings,
-) -> tuple[Any, Any, Any]:
-    """Values that the model uses, targets, and whether a value was measured."""
-    unmeasured = [False] * len(table)
+def _targets(table: Table, factor: Factor, needed: Truths, found: Findings) -> Any:
+    """The levels to which the wells were set, one a row."""
     if factor.name not in table.columns:
-        filled = _earlier(table, factor, needed, found)
-        return filled, filled, unmeasured
+        return _earlier(table, factor, needed, found)
     if not factor.continuous:
-        choices = read_choices(table, factor, needed, found)
-        return choices, choices, unmeasured
-    return read_levels(table, factor, needed, stocks, plate, found)
+        return read_choices(table, factor, needed, found)
+    return read_targets(table, factor, needed, found)
 
 
 def _earlier(table: Table, factor: Factor, needed: Truths, found: Findings) -> list[Any]:

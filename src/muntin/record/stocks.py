@@ -2,37 +2,42 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Iterable, Sequence
 from pathlib import Path
 from typing import NamedTuple
 
 import numpy as np
 
+from muntin.record.bottles import alike, bottle_examples, named_bottle, tells_bottles
 from muntin.record.cells import numbers
+from muntin.record.definition import Definition
 from muntin.record.factors import Factor
-from muntin.record.faults import Findings, did_you_mean, number
-from muntin.record.keys import Floats
+from muntin.record.faults import Fault, Findings, did_you_mean, number
 from muntin.record.notes import not_run
 from muntin.record.tables import Table, missing_column, read_table, table_files
 
-COLUMNS = ("factor", "target", "measured", "lot", "by")
+COLUMNS = ("factor", "target", "measured", "bottle", "lot", "by")
+# A slip of a digit is farther off than this share of the range, or of what the bottle is to hold.
+_FAR = 0.1
 
 
 class Stock(NamedTuple):
-    """One stock: factor, target and measured value (raw unit), and its address."""
+    """One stock: factor, target and measured value (raw unit), its address, and what stands on the
+    bottle of [bench] that it is, "" for the liquid of every well with that target.
+    """
 
     factor: str
     target: float
     measured: float
     file: str
     where: str
+    bottle: str = ""
 
 
 def read_stocks(
-    folder: Path, factors: Sequence[Factor], plates: Sequence[str], found: Findings
+    folder: Path, definition: Definition, plates: Sequence[str], found: Findings
 ) -> dict[str, list[Stock]]:
     """Return the measured stocks of each plate; those of planned ones are checked, too."""
-    by_name = {factor.name: factor for factor in factors}
     stocks = {}
     for plate, path in table_files(folder / "stocks", found):
         file = f"stocks/{path.name}"
@@ -40,82 +45,105 @@ def read_stocks(
         if plate not in plates:
             not_run(folder, plate, file, list(plates), found)
             if table is not None:
-                _stocks(table, by_name, found)
+                _stocks(table, definition, found)
         elif table is not None:
-            stocks[plate] = _stocks(table, by_name, found)
+            stocks[plate] = _stocks(table, definition, found)
     return stocks
 
 
 def planned_stocks(
-    folder: Path, factors: Sequence[Factor], plate: str, found: Findings
+    folder: Path, definition: Definition, plate: str, found: Findings
 ) -> tuple[Stock, ...]:
     """Return the stocks measured for a plate that is planned, not run; none where no file is."""
-    by_name = {factor.name: factor for factor in factors}
     passed_over = Findings()
     for stem, path in table_files(folder / "stocks", passed_over):
         table = read_table(path, f"stocks/{path.name}", COLUMNS, found) if stem == plate else None
         if table is not None:
-            return tuple(_stocks(table, by_name, found))
+            return tuple(_stocks(table, definition, found))
     return ()
 
 
-def _stocks(table: Table, factors: Mapping[str, Factor], found: Findings) -> list[Stock]:
+def _stocks(table: Table, definition: Definition, found: Findings) -> list[Stock]:
     lacking = [name for name in COLUMNS[:3] if name not in table.columns]
     found.faults.extend(missing_column(table, name) for name in lacking)
     if lacking:
         return []
+    factors = {factor.name: factor for factor in definition.factors}
     targets = numbers(table, "target", found.faults)
     measured = numbers(table, "measured", found.faults)
     stocks: list[Stock] = []
     for row, name in enumerate(table.cells("factor")):
-        if not _names_stock(table, row, name, factors, found):
+        if not _names_stock(table, row, name, definition.factors, found):
             continue
         if not table.cells("target")[row]:
             found.faults.append(table.fault(row, "target", "a stock needs it"))
-        stock = Stock(name, float(targets[row]), float(measured[row]), table.file, table.where[row])
-        if any(
-            same_target(factors[name], stock.target, s.target) for s in stocks if s.factor == name
-        ):
-            problem = f"is already the target of another stock of {name} on this plate"
-            found.faults.append(table.fault(row, "target", problem))
+        at = table.file, table.where[row]
+        stock = Stock(name, float(targets[row]), float(measured[row]), *at)
+        if table.cells("bottle")[row] and tells_bottles(definition):
+            stock = _bottled(table, row, definition, factors[name], stock, found)
+        found.faults.extend(_again(table, row, factors[name], stock, stocks))
         if np.isfinite(stock.measured):
             stocks.append(stock)
     return stocks
 
 
+def _bottled(
+    table: Table, row: int, definition: Definition, factor: Factor, stock: Stock, found: Findings
+) -> Stock:
+    """The stock as the bottle that its row names."""
+    name = table.cells("bottle")[row]
+    bottle = named_bottle(definition, name, {factor.name: stock.target})
+    if bottle is None:
+        found.faults.append(_no_bottle(table, row, definition))
+        return stock
+    holds = bottle.holds.get(factor.name)
+    if holds is None:
+        problem = f"holds no {factor.name}"
+        found.faults.append(table.fault(row, "bottle", problem, hint="study.toml, bench, stocks"))
+    elif np.isfinite(stock.target) and not alike(factor, holds, stock.target):
+        allowed = f"{factor.shown(holds)} {factor.unit}".rstrip()
+        problem, hint = f"is not what {bottle.name} holds:", "study.toml, bench, stocks"
+        found.faults.append(table.fault(row, "target", problem, allowed, hint))
+    low, high, _ = factor.span
+    most = _FAR * max(high - low, abs(stock.target))
+    if abs(stock.measured - stock.target) > most * (1.0 + 1e-9):
+        ends = f"{number(stock.target - most)} to {number(stock.target + most)} {factor.unit}"
+        problem = "lies too far from the target for a bottle of it, outside"
+        found.faults.append(table.fault(row, "measured", problem, ends.rstrip()))
+    return stock._replace(bottle=bottle.name)
+
+
+def _no_bottle(table: Table, row: int, definition: Definition) -> Fault:
+    names = bottle_examples(definition)
+    if not names:
+        return table.fault(row, "bottle", "names a bottle, but study.toml, bench, has no stocks")
+    hint = did_you_mean(table.cells("bottle")[row], names)
+    return table.fault(row, "bottle", "is not a bottle; one is called", names[0], hint)
+
+
+def _again(
+    table: Table, row: int, factor: Factor, stock: Stock, earlier: Iterable[Stock]
+) -> list[Fault]:
+    """A second value for what has one; bottles of one target may differ."""
+    for other in earlier:
+        alike_target = other.factor == stock.factor and alike(factor, other.target, stock.target)
+        if alike_target and (not stock.bottle or stock.bottle == other.bottle or not other.bottle):
+            problem = f"is already the target of another stock of {factor.name} on this plate"
+            hint = "" if stock.bottle and other.bottle else "column bottle tells bottles apart"
+            return [table.fault(row, "target", problem, hint=hint)]
+    return []
+
+
 def _names_stock(
-    table: Table, row: int, name: str, factors: Mapping[str, Factor], found: Findings
+    table: Table, row: int, name: str, factors: Sequence[Factor], found: Findings
 ) -> bool:
-    ranged = [factor.name for factor in factors.values() if factor.continuous]
+    ranged = [factor.name for factor in factors if factor.continuous]
     if name in ranged:
         return True
-    if name in factors:
+    if name in [factor.name for factor in factors]:
         problem = "has choices; only a factor with a range has measured stocks"
         found.faults.append(table.fault(row, "factor", problem))
     else:
         hint = did_you_mean(name, ranged) if name and ranged else ""
         found.faults.append(table.fault(row, "factor", "is not a factor", hint=hint))
     return False
-
-
-def same_target(factor: Factor, one: float, other: float) -> bool:
-    """Whether two set values (raw unit) are the same but for rounding."""
-    return bool(abs(one - other) <= 1e-6 * factor.span[2])
-
-
-def stock_values(
-    factor: Factor, targets: Floats, stocks: Sequence[Stock], plate: str, found: Findings
-) -> Floats:
-    """Return the measured value of the stock of each well, shape (wells,), NaN where none is."""
-    values = np.full(len(targets), np.nan)
-    for stock in stocks:
-        if stock.factor != factor.name:
-            continue
-        used = np.abs(targets - stock.target) <= 1e-6 * factor.span[2]
-        values[used] = stock.measured
-        if not used.any():
-            found.notices.append(
-                f"{stock.file}, {stock.where}: no well of {plate} has {factor.name} "
-                f"{number(stock.target)}; the stock is not used"
-            )
-    return values

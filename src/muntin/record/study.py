@@ -253,7 +253,7 @@ def _read_wells(
     excluding: bool,
     may_be_unread: bool,
 ) -> pd.DataFrame:
-    stocks = read_stocks(folder, definition.factors, [*tables], found)
+    stocks = read_stocks(folder, definition, [*tables], found)
     parts = {
         name: read_plate(name, table, definition, stocks.get(name, ()), found)
         for name, table in tables.items()

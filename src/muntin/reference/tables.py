@@ -70,6 +70,8 @@ _INPUTS = (
             "factor": "factor that the stock sets",
             "target": "value it was made for, in the factor's unit",
             "measured": "value it measured; empty where it was not measured",
+            "bottle": "the bottle of [bench] that it is, as its name stands on the sheets: wells "
+            "blended from it follow; empty where it is the liquid of all wells with that target",
             "lot": "lot of the stock, if you like",
             "by": "who measured it, if you like",
         },
@@ -230,6 +232,17 @@ _OUTPUTS = (
             "stock": "what goes into it",
             "ml_per_l": "mL of it in a litre",
             "ul": "µL of it for what has to be there",
+        },
+    ),
+    Sheet(
+        file="sheets/<plan>/stocks.csv",
+        says="a form for what the bottles measured, a row a factor of a bottle; filled in, it is "
+        "saved as stocks/<plate>.csv",
+        columns={
+            "bottle": "what stands on the bottle",
+            "factor": "what it holds",
+            "target": "how much of it, in the factor's unit",
+            "measured": "empty, to be filled in",
         },
     ),
     Sheet(

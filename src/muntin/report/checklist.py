@@ -27,6 +27,7 @@ _FILES = {
     "conditions.csv": "condition, factors, count, wells: the distinct conditions",
     "recipes.csv": "stocks of each liquid: mL per litre, and µL per well in pipette steps",
     "bottles.csv": "bottle, stock, ml_per_l, ul: what bottles are made from, and for how much",
+    "stocks.csv": "bottle, factor, target, measured: the form for what bottles measured",
     "transfers.csv": "stock, well, draw_ul: every draw in the order of work",
     "totals.csv": "stock, wells, drawn_ul (sum of its draws), dead_ul, needed_ul",
 }
@@ -105,24 +106,14 @@ def _bottles(sheets: Sheets) -> list[list[str]]:
 
 
 def _measured(sheets: Sheets) -> Iterator[str]:
-    ph = sheets.study.definition.bench.ph_factor
-    levels = [bottle for bottle in sheets.bottles if bottle.by_level]
-    if levels:
-        what = "the pH of" if ph else "the level of"
-        yield (
-            f"Measure {what} each bottle and write it to stocks/{sheets.plate}.csv (factor, "
-            "target, measured): the model uses measured values."
-        )
     definition = sheets.study.definition
-    matched = definition.bench.matched(definition.factors)
-    held = {name for bottle in sheets.bottles for name in bottle.holds} - matched
-    blended = [factor for factor in definition.factors if factor.name in held]
-    if blended:
-        names = " or ".join(factor.label for factor in blended)
-        columns = " or ".join(f"{factor.name}_measured" for factor in blended)
+    named = [f for f in definition.factors if any(f.name in b.holds for b in sheets.bottles)]
+    ranged = [factor.label for factor in named if factor.continuous]
+    if ranged:
         yield (
-            f"What a bottle's {names} measured reaches no well that is blended from it: measure "
-            f"such wells, and write it to {columns} of the plate table."
+            f"Measure {' and '.join(ranged)} of each bottle, as far as you can, and write it to "
+            f"the form stocks.csv; save that as stocks/{sheets.plate}.csv of the study. The model "
+            "then uses what bottles measured, also in the wells that are blended from them."
         )
 
 

@@ -7,16 +7,19 @@ from collections.abc import Mapping
 from pathlib import Path
 
 from muntin.bench.sheets import Sheets
+from muntin.record.faults import Findings, StudyFaults
+from muntin.record.stocks import COLUMNS
+from muntin.record.tables import read_table
 from muntin.report.checklist import checklist_lines
 from muntin.report.figures import saved
 from muntin.report.plate_map import draw_plate_map
 from muntin.report.plate_wells import by_number, conditions_of
-from muntin.report.sheet_tables import sheet_tables
+from muntin.report.sheet_tables import FORM, sheet_tables
 from muntin.report.text_pages import pdf_of, text_pages
 
 SHEETS = "sheets"
 _OWN = ("map.png", "map.pdf", "checklist.txt", "checklist.pdf")
-_OWN_TABLES = ("conditions.csv", "recipes.csv", "transfers.csv", "totals.csv", "bottles.csv")
+_OWN_TABLES = ("conditions.csv", "recipes.csv", "transfers.csv", "totals.csv", "bottles.csv", FORM)
 _WIDTH = 84
 
 
@@ -60,9 +63,20 @@ def _condition_lines(sheets: Sheets) -> list[str]:
 def sheets_replaced(folder: Path, files: Mapping[str, str | bytes]) -> tuple[list[Path], str]:
     """Return which earlier sheets have to go, as the new ones are not called so, and a remark.
 
-    Files of others in the folder stay.
+    Files of others in the folder stay. Raises StudyFaults where the form of the stocks was filled
+    in there, which new sheets would replace.
     """
     if not folder.is_dir():
         return [], ""
+    _check_form(folder)
     old = [folder / name for name in (*_OWN, *_OWN_TABLES) if name not in files]
     return [path for path in old if path.is_file()], "Replaces the sheets that were there."
+
+
+def _check_form(folder: Path) -> None:
+    path, file = folder / FORM, f"{SHEETS}/{folder.name}/{FORM}"
+    form = read_table(path, file, COLUMNS, Findings()) if path.is_file() else None
+    filled = [] if form is None else [r for r, cell in enumerate(form.cells("measured")) if cell]
+    if form is not None and filled:
+        problem = "was filled in and would be lost to the new form; move the file to the folder"
+        raise StudyFaults([form.fault(filled[0], "measured", problem, "stocks/ of the study")])

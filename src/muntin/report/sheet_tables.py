@@ -13,6 +13,7 @@ from muntin.bench.volumes import apportioned, volume_text
 from muntin.record.definition import Definition
 from muntin.report.plate_wells import conditions_of
 
+FORM = "stocks.csv"
 _ML_PER_L = 1000.0
 
 
@@ -22,7 +23,8 @@ def sheet_tables(sheets: Sheets) -> dict[str, str]:
     conditions.csv: number, factors, count of wells, wells. recipes.csv: a row a stock of a liquid:
     the factors it sets, stock, ml_per_l, ul_per_well (whole pipette steps), count of wells, wells.
     bottles.csv: what bottles are made from, a row a stock: bottle, stock, ml_per_l, ul (for what
-    has to be there, in whole µL).
+    has to be there, in whole µL). stocks.csv: what bottles are to hold, a row a factor of a bottle,
+    with an empty column for what they measured: the form of stocks/.
     transfers.csv: a row a draw, in the order of work: stock, well, draw_ul. totals.csv: a row a
     stock: stock, wells, drawn_ul (the sum of its draws), dead_ul, needed_ul.
     """
@@ -36,6 +38,8 @@ def sheet_tables(sheets: Sheets) -> dict[str, str]:
     if sheets.makings:
         heading = ["bottle", "stock", "ml_per_l", "ul"]
         tables["bottles.csv"] = _table(heading, _making_rows(sheets))
+    if form := [*_form_rows(sheets)]:
+        tables[FORM] = _table(["bottle", "factor", "target", "measured"], form)
     if sheets.transfers:
         draws = (
             {"stock": t.stock, "well": t.well, "draw_ul": sheets.pipette.shown(t.steps)}
@@ -99,6 +103,14 @@ def _making_rows(sheets: Sheets) -> Iterator[dict[str, Any]]:
         for stock, share in recipe.parts.items():
             ml, ul = f"{_ML_PER_L * share:.2f}", volumes.get(bottle, {}).get(stock, "")
             yield {"bottle": bottle, "stock": stock, "ml_per_l": ml, "ul": ul}
+
+
+def _form_rows(sheets: Sheets) -> Iterator[dict[str, str]]:
+    for bottle in sheets.bottles:
+        for factor in sheets.study.definition.factors:
+            if factor.continuous and factor.name in bottle.holds:
+                target = factor.shown(bottle.holds[factor.name])
+                yield {"bottle": bottle.name, "factor": factor.name, "target": target}
 
 
 def _per_well(sheets: Sheets, of: WellsMix, stock: str) -> str:

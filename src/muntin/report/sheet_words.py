@@ -6,9 +6,9 @@ from collections.abc import Mapping
 from decimal import Decimal
 from typing import Any
 
-from muntin.bench.bottles import Bottle
 from muntin.bench.load import Load
 from muntin.bench.volumes import volume_text
+from muntin.record.bottles import Bottle
 from muntin.record.definition import Definition
 from muntin.record.faults import number
 

@@ -8,7 +8,7 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 from scipy.optimize import linprog
 
-from muntin.bench.blending import blends
+from muntin.record.blending import blends
 
 STEADY = settings(deadline=None, derandomize=True, max_examples=80)
 
