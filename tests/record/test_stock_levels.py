@@ -126,6 +126,21 @@ def test_a_bottle_of_nothing_may_hold_a_little(tmp_path: Path) -> None:
     assert wells["salt"][0] == pytest.approx(0.8 * 5 + 0.2 * 490)
 
 
+def test_water_dilutes_salt_and_not_the_ph(tmp_path: Path) -> None:
+    rows = ("high salt (ph 5.5),ph,5.5,5.62", "high salt (ph 5.5),salt,500,500")
+    wells = study_of(tmp_path, *rows, stocks=(HIGH, {"name": "water", "holds": {}})).wells
+    assert list(wells["ph"][:2]) == pytest.approx([5.62, 5.62])
+    # What goes in undiluted and was measured is known, also where it measured what it should.
+    assert list(wells["salt"][:2]) == [100, 500]
+    assert list(wells["salt_measured"][:2]) == [False, True]
+
+
+def test_a_liquid_far_off_is_one_fault_also_beside_bottles(tmp_path: Path) -> None:
+    rows = ("high salt (ph 6.0),salt,500,480", ",salt,300,-50")
+    (line,) = lines_of(tmp_path, *rows)
+    assert line.startswith("stocks/plate-01.csv, row 3, column measured: -50 lies outside")
+
+
 AT = "stocks/plate-01.csv, row 2, column"
 FAULTS = {
     "no bottle": (
