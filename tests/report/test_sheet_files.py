@@ -218,6 +218,16 @@ def test_pages_hold_every_line_once() -> None:
         assert not any(t.get_text().startswith("HEAD") for t in page.texts[-4:-1])
 
 
+def test_a_last_page_of_a_few_lines_is_spared() -> None:
+    (page, last) = text_pages([f"line {n}" for n in range(120)])
+    assert len(page.texts) == 61
+    low = min(t.get_position()[1] for t in page.texts if "page" not in t.get_text())
+    # The lowest line, 9 points high, ends above the foot.
+    assert low - 9 / 72 / 11.69 > 0.05
+    assert len(last.texts) == 61
+    assert len(text_pages([f"line {n}" for n in range(140)])) == 3
+
+
 def put(folder: Path, files: dict[str, str | bytes]) -> str:
     """Write sheets as `prepare` does; return the remark."""
     with writing(folder.parents[1]) as pen:
