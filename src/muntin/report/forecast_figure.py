@@ -63,7 +63,7 @@ def _draw(study: Study, plan: Plan, panels: Sequence[Axes]) -> None:
     _curve(left, forecast["wrong_share"], at, LINE, "o")
     left.set_ylabel("May be called wrongly, %")
     if forecast["set_point"].notna().any():
-        _curve(right, forecast["set_point"], at, LINE, "o", "set point, expected probability")
+        _curve(right, forecast["set_point"], at, INK, "o", "set point, expected probability")
         asked = f"chance that it reaches {per_cent(asked_of_set_point(study))}"
         _curve(right, forecast["reached"], at, INK, "s", asked)
     else:

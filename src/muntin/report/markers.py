@@ -48,8 +48,8 @@ def mark_run(axes: Axes, table: pd.DataFrame, x: str, y: str) -> None:
 
 
 def mark_proposed(axes: Axes, table: pd.DataFrame, x: str, y: str) -> None:
-    """Mark conditions of the next plate by diamonds, those that only tie plates by squares; whole
-    ones at the border of the range too.
+    """Mark conditions of the next plate by diamonds, those that only tie plates by squares, each
+    with the number of its wells where it has several; whole ones at the border of the range too.
     """
     for bridging, marker, label in ((False, "D", "proposed"), (True, "s", "proposed, bridging")):
         here = table[table["bridging"] == bridging]
@@ -68,6 +68,19 @@ def mark_proposed(axes: Axes, table: pd.DataFrame, x: str, y: str) -> None:
                 clip_on=False,
                 zorder=5,
             )
+    for row in table[table["wells"] > 1].to_dict("records"):
+        axes.annotate(
+            f"×{row['wells']}",
+            (row[x], row[y]),
+            xytext=(7, -1),
+            textcoords="offset points",
+            va="center",
+            fontsize=7.5,
+            color=INK,
+            path_effects=halo(2.4),
+            annotation_clip=False,
+            zorder=6,
+        )
 
 
 def mark_set_point(axes: Axes, window: Window, x: float, y: float) -> None:
