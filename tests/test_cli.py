@@ -13,6 +13,7 @@ import pytest
 from typer.testing import CliRunner, Result
 
 from muntin.cli import app
+from muntin.record import open_study
 from tests.report.studies import ONE_FACTOR, STUDY, one_factor_plate, small, tree, write
 
 CHECKED = """\
@@ -89,6 +90,22 @@ def test_new_refuses_a_folder_with_a_study(study: Path) -> None:
 def test_check_prints_the_whole_of_what_was_read(study: Path) -> None:
     result = run("check", study)
     assert (result.exit_code, result.stdout, result.stderr) == (0, CHECKED, "")
+
+
+def test_check_writes_the_wells_as_they_were_read(study: Path, tmp_path: Path) -> None:
+    out = tmp_path / "wells.csv"
+    result = run("check", study, "--out", out)
+    assert result.exit_code == 0, result.stderr
+    assert f"{out}: the wells" in " ".join(result.stdout.split()).replace("/ ", "/")
+    read, wells = rows_of(out), open_study(study).wells
+    assert [row["well"] for row in read] == list(wells["well"])
+    assert [row["recovery_state"] for row in read] == list(wells["recovery_state"])
+    assert {*read[0]} >= {"plate", "role", "ph", "ph_target", "recovery", "recovery_sd", "exclude"}
+    plate = next((study / "plates").glob("*.csv"))
+    before = tree(study)
+    refused = run("check", study, "--out", plate)
+    assert "is read by this command and is not overwritten" in refused.stderr
+    assert tree(study) == before
 
 
 def test_check_shows_the_users_words_as_they_stand(tmp_path: Path) -> None:

@@ -171,3 +171,25 @@ def test_the_strength_of_a_bottle_of_what_every_mix_holds_is_the_users_own(tmp_p
         opened(tmp_path, rows=ROWS, **{**FORMS, "stocks": stocks}, every_mix={"buffer": 20})
     )
     assert sheets.makings == {}
+
+
+def test_recipes_that_every_mix_leaves_to_the_user_are_said_to_be_missing(tmp_path: Path) -> None:
+    stocks = [{**s, "holds": {**s["holds"], "buffer": 20}} for s in (LOW, HIGH)]
+    keys = {**FORMS, "stocks": stocks, "every_mix": {"buffer": 20}}
+    told = gaps(prepare(opened(tmp_path, rows=ROWS, **keys)))
+    (said,) = [s for s in told if "of buffer" in s]
+    assert said.startswith("How much of buffer a bottle holds is your own (study.toml, [bench], ")
+    assert "how to make low salt (pH 5.0), high salt (pH 5.0), low salt (pH 7.0)" in said
+
+
+def test_wells_thinned_with_water_are_told(tmp_path: Path) -> None:
+    water = {"name": "water"}
+    whole = prepare(opened(tmp_path / "a", rows=ROWS, **FORMS)).buffers
+    assert not any("thinned" in said for said in whole)
+    keys = {**FORMS, "stocks": [HIGH, water]}
+    told = prepare(opened(tmp_path / "b", rows=ROWS, **keys)).buffers
+    (said,) = [s for s in told if "thinned" in s]
+    # The wells of 100 mM take a fifth of 500 mM.
+    assert said.startswith(
+        "Wells thinned with water hold down to 20 % of the buffer in the bottles"
+    )

@@ -10,6 +10,7 @@ from muntin.record import open_study
 from muntin.record.definition import Definition
 from muntin.record.factors import Factor
 from muntin.record.keys import Amount, inner_model
+from muntin.record.notices import definition_notices
 from tests.record.conftest import STUDY
 
 
@@ -35,6 +36,19 @@ def test_defaults(make):
     assert (plan.bridging_wells, plan.repeats_min, plan.prepared_by) == (4, 1, "well")
     assert len(d.free_wells) == 96
     assert [r.name for r in d.judged] == ["recovery", "hcp"]
+
+
+def test_kept_within_that_is_not_counted_is_said(make):
+    said = [*definition_notices(definition(make, kept=("title", 'judged_by = "well"\ntitle')))]
+    assert [s for s in said if "kept_within" in s] == [
+        "study.toml, factors, ph: the window does not count kept_within, as judged_by is "
+        '"well"; "kept" does'
+    ]
+    for other in (None, "kept"):
+        kept = ("title", "title") if other is None else ("title", f'judged_by = "{other}"\ntitle')
+        assert not [
+            s for s in definition_notices(definition(make, kept=kept)) if "kept_within" in s
+        ]
 
 
 def test_judged_by_follows_kept_within(make):

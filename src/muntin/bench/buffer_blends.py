@@ -13,6 +13,7 @@ from muntin.bench.buffer.wanted import shown_ph
 from muntin.bench.buffers import buffer_made
 from muntin.bench.recipe import Recipe
 from muntin.record.definition import Definition
+from muntin.record.faults import listed
 
 _WORTH_IT = 0.02
 
@@ -34,6 +35,31 @@ def blend_of(ph: float, shares: Mapping[str, float], makings: Mapping[str, Recip
         for stock, part in makings[bottle].parts.items():
             parts[stock] = parts.get(stock, 0.0) + share * part
     return Blend(ph, parts)
+
+
+def thinned_caution(definition: Definition, mixes: Iterable[Mapping[str, float]]) -> str:
+    """Return a sentence where wells are thinned with a bottle that holds no buffer, else "".
+
+    mixes: shares of the volume by stock of study.toml. Where every_mix tells what every mix is to
+    hold, what the buffer comes to is the user's own.
+    """
+    bench = definition.bench
+    if not bench.buffers or bench.every_mix or bench.ph_factor is None:
+        return ""
+    without = {
+        stock.name
+        for stock in bench.stocks
+        if bench.ph_factor != stock.per and bench.ph_factor not in stock.holds
+    }
+    shares = [1.0 - sum(s for name, s in mix.items() if name in without) for mix in mixes]
+    thin = [share for share in shares if share < 1.0 - _WORTH_IT]
+    if not thin:
+        return ""
+    return (
+        f"wells thinned with {listed(sorted(without))} hold down to {100.0 * min(thin):.0f} % of "
+        "the buffer in the bottles, too little of it to hold the pH: thin with a bottle of the "
+        "same buffer"
+    )
 
 
 def blend_cautions(definition: Definition, blends: Iterable[Blend]) -> tuple[str, ...]:

@@ -6,6 +6,7 @@ from collections.abc import Iterator
 
 from muntin.bench.sheets import Sheets
 from muntin.record.bench import LOAD
+from muntin.record.bottles import Bottle
 from muntin.record.faults import listed, number
 
 _SLACK = 1e-6
@@ -33,8 +34,19 @@ def _of_liquids(sheets: Sheets) -> Iterator[str]:
             "No buffers are given (study.toml, [[bench.buffers]]): how the bottles are made is not "
             "in these sheets."
         )
+    elif unmade := [b.name for b in sheets.bottles if bench.buffers and _holds_own(sheets, b)]:
+        yield (
+            f"How much of {listed(bench.every_mix)} a bottle holds is your own (study.toml, "
+            f"[bench], stocks): how to make {listed(unmade, most=3)} is not in these sheets."
+        )
     if bench.held and bench.well_ul is None:
         yield "No well_ul is given (study.toml, [bench]): recipes are shares, with no draws."
+
+
+def _holds_own(sheets: Sheets, bottle: Bottle) -> bool:
+    """Whether a bottle has no recipe because it holds something of every_mix."""
+    own = sheets.study.definition.bench.every_mix
+    return bottle.name not in sheets.makings and any(name in bottle.holds for name in own)
 
 
 def _of_volumes(sheets: Sheets) -> Iterator[str]:

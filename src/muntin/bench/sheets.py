@@ -11,7 +11,7 @@ from typing import Any
 import pandas as pd
 
 from muntin.bench.buffer.stocks import named_stocks, stock_names
-from muntin.bench.buffer_blends import Blend, blend_cautions, blend_of
+from muntin.bench.buffer_blends import Blend, blend_cautions, blend_of, thinned_caution
 from muntin.bench.buffer_cautions import buffer_cautions
 from muntin.bench.fed import fed_lines, line_of
 from muntin.bench.load import Load, load_of
@@ -75,6 +75,8 @@ class Sheets:
         if not definition.bench.stocks:
             liquids = [of.mix.condition for of in self.mixes]
         said = [*buffer_cautions(definition, liquids), *blend_cautions(definition, self._blends())]
+        if thinned := thinned_caution(definition, [_by_stock(of.mix) for of in self.mixes]):
+            said.append(thinned)
         own = named_stocks(definition.bench) if liquids else ()
         return (*(f"{s[:1].upper()}{s[1:]}." for s in said), *(f"{held}." for held in own))
 
@@ -87,6 +89,11 @@ class Sheets:
             if name in of.mix.condition
         ]
         return [blend for blend in blends if blend is not None]
+
+
+def _by_stock(mix: Mix) -> dict[str, float]:
+    """The shares of a mix by stock of study.toml."""
+    return {b.stock: mix.recipe.parts.get(b.name, 0.0) for b in mix.bottles}
 
 
 def prepare(study: Study, plan: str | Path | None = None) -> Sheets:

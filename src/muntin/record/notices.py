@@ -27,6 +27,13 @@ def definition_notices(definition: Definition) -> Iterator[str]:
                     f"study.toml, factors, {factor.name}: whole steps from low end at "
                     f"{number(last)}, short of high, which is {number(high)}"
                 )
+    judged_by = definition.study.judged_by
+    kept = [factor.name for factor in definition.factors if factor.kept_within is not None]
+    if judged_by in ("well", "mean") and kept:
+        yield (
+            f"study.toml, factors, {', '.join(kept)}: the window does not count kept_within, as "
+            f'judged_by is "{judged_by}"; "kept" does'
+        )
     fractions = [response for response in definition.responses if response.kind == "fraction"]
     if len(fractions) > 1 and "shared_errors" not in definition.model_fields_set:
         names = ", ".join(response.name for response in fractions)

@@ -48,6 +48,15 @@ def wells_table(
     return _typed(pd.DataFrame(data), definition)
 
 
+def as_read(definition: Definition, wells: pd.DataFrame) -> pd.DataFrame:
+    """Return the wells (`Study.wells`) as a table to write: plate, well, role; each factor at the
+    value that the model uses, and its _target; each response with its _sd and _state; exclude.
+    """
+    factors = [f"{name}{end}" for name in definition.factor_names for end in ("", "_target")]
+    responses = [f"{r.name}{end}" for r in definition.responses for end in ("", "_sd", "_state")]
+    return wells[["plate", "well", "role", *factors, *responses, "exclude"]]
+
+
 def _stacked(rows: Sequence[PlateRows], name: str) -> list[Any]:
     cells: list[Any] = []
     for part in rows:

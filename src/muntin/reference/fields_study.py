@@ -54,6 +54,7 @@ CHECK = Part(
     ("check",),
     {
         "stocks": "which part of the range the stocks of [bench] cannot make; empty where none",
+        "out": "table of the wells that was asked for; null without --out",
         "plans": "what is on record of plans and of how they were run",
         "plans.edits": "records of edited plans, as in plans/<plate>.edit.toml",
         "plans.edits[].<key>": "key of the record; those without a value are left out",

@@ -186,6 +186,23 @@ _OUTPUTS = (
         columns={"<factor>": "the condition, in the factor's unit", **_PROBABILITIES},
     ),
     Sheet(
+        file="WELLS",
+        says="the wells as they were read (check --out)",
+        columns={
+            "plate": "the plate",
+            "well": "place on the plate",
+            "role": _ROLE,
+            "<factor>": "the value that the model uses, in the factor's unit: what the well "
+            "measured, or what its stocks and bottles make of it, or the target",
+            "<factor>_target": "what the well was set to",
+            "<response>": "the reading; of a censored one its limit; empty while awaited or left "
+            "out",
+            "<response>_sd": _SD,
+            "<response>_state": "read, censored, awaited, excluded, or none for a control without",
+            "exclude": "why the well was left out",
+        },
+    ),
+    Sheet(
         file="reductions/<plate>-masses.csv",
         says="concentrations, masses and quantities of a plate, a row a well, written by reduce",
         columns={

@@ -194,9 +194,11 @@ def _capital(text: str) -> str:
     return text[:1].upper() + text[1:]
 
 
-def check_screen(study: Study, plans: Sequence[str] = (), reach: str = "") -> RenderableType:
+def check_screen(
+    study: Study, plans: Sequence[str] = (), reach: str = "", written: Sequence[str] = ()
+) -> RenderableType:
     """Return the screen of `check`; `plans` is what is on record of edited plans, `reach` what the
-    stocks do not make.
+    stocks do not make, `written` the table that was asked for.
     """
     return sheet(
         study.definition.title,
@@ -206,6 +208,7 @@ def check_screen(study: Study, plans: Sequence[str] = (), reach: str = "") -> Re
             ("Plans", plans),
             ("Stocks", [reach] if reach else []),
             ("Sound", ["No faults were found."]),
+            ("Written", written),
         ],
     )
 
