@@ -94,9 +94,8 @@ def test_what_bottles_measured_is_told_with_the_plan(light: Assessment, tmp_path
         f"{shown} measured something else than the target (stocks/plate-02.csv): "
         f"probabilities and forecast of {counts.sum()} wells are those of what the wells then hold"
     )
-    assert [n.partition("from ")[2].partition(";")[0] for n in of[1:]] == [
-        f"high salt (pH {level})" for level in levels if level not in used
-    ]
+    rest = listed((f"high salt (pH {n})" for n in levels if n not in used), most=4)
+    assert [n.partition("from ")[2].partition(";")[0] for n in of[1:]] == [rest] * bool(rest)
     # Every well holds salt, and 475 of 500 mM of it.
     assert plan.wells["reason"].dropna().str.contains("Salt measured").sum() == counts.sum()
 

@@ -12,12 +12,15 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
+from muntin.bench.mixing import Mix, Mixer
+from muntin.bench.recipe import Refusal
 from muntin.record import StudyFaults, open_study
 from muntin.record.bottles import named_bottle
 from muntin.record.definition import Definition
+from muntin.record.mixes import mixes_of, poured
 from muntin.record.stock_levels import stock_levels
 from muntin.record.stocks import Stock
-from tests.bench.bottled import HIGH, LOW, bench_text
+from tests.bench.bottled import BENCH, HIGH, LOW, bench_text
 from tests.record.conftest import STUDY
 from tests.studies import PH, RESIN, SALT, tables
 
@@ -91,20 +94,29 @@ def test_a_well_of_its_own_and_a_liquid_of_its_own_come_first(tmp_path: Path) ->
 
 
 def test_what_is_not_known_of_the_other_bottle_is_said(tmp_path: Path) -> None:
-    study = study_of(tmp_path, "high salt (ph 5.5),ph,5.5,5.62")
+    study = study_of(tmp_path, "high salt (ph 5.5),ph,5.5,5.62", "high salt (ph 6.0),ph,6,6.1")
     assert list(study.wells["ph"]) == [5.5, 5.62, 6.0, 6.5]
     assert said(study) == [
-        "stocks/plate-01.csv, row 2: 1 well of plate-01 blended from high salt (ph 5.5) stay at "
-        "their targets, as it is not known what ph measured in low salt (ph 5.5)"
+        "stocks/plate-01.csv: ph is taken for the target in 2 wells of plate-01, as it is not "
+        "known what it measured in low salt (ph 5.5), low salt (ph 6.0)"
     ]
 
 
-def test_two_ways_to_blend_leave_the_target(tmp_path: Path) -> None:
-    study = study_of(tmp_path, "high salt (ph 6.0),salt,500,480", stocks=(LOW, MID, HIGH))
+def test_of_several_ways_to_blend_it_is_that_of_the_sheets(tmp_path: Path) -> None:
+    rows = ("high salt (ph 6.0),salt,500,480", "mid salt (ph 6.0),salt,250,260")
+    plate = PLATE.replace("A2,5.5,500", "A2,6.0,490")
+    study = study_of(tmp_path, *rows, stocks=(LOW, MID, HIGH), plate=plate)
+    # The mix whose smallest share is largest: 490 of 24 parts of high and 1 of mid, not 49 and 1 of
+    # low; 300 of 3 parts of high and 2 of low, not 1 and 4 of mid.
+    assert list(study.wells["salt"]) == pytest.approx([100, 471.2, 288, 250])
+
+
+def test_what_no_blend_makes_is_said(tmp_path: Path) -> None:
+    study = study_of(tmp_path, "high salt (ph 6.0),salt,500,480", stocks=(HIGH,))
     assert list(study.wells["salt"]) == [100, 500, 300, 250]
     assert said(study) == [
-        "stocks/plate-01.csv, row 2: 1 well of plate-01 cannot be blended from the bottles in just "
-        "one way, so that salt stays at the target there; write what such wells measured to "
+        "stocks/plate-01.csv: 1 well of plate-01 can be no blend of the bottles of study.toml, "
+        "[bench]: salt is taken for the target there; what such wells measured goes to "
         "salt_measured of the plate table"
     ]
 
@@ -112,11 +124,32 @@ def test_two_ways_to_blend_leave_the_target(tmp_path: Path) -> None:
 def test_what_no_well_rests_on_is_said(tmp_path: Path) -> None:
     rows = ("high salt (ph 7.0),salt,500,480", ",salt,0,3", ",salt,700,705")
     assert said(study_of(tmp_path, *rows)) == [
-        "stocks/plate-01.csv, row 2: no well of plate-01 is blended from high salt (ph 7.0); it is "
-        "not used",
         "stocks/plate-01.csv, row 3: no well of plate-01 has salt 0; the stock is not used; if it "
         "is a bottle that wells are blended from, name it in the column bottle",
         "stocks/plate-01.csv, row 4: no well of plate-01 has salt 700; the stock is not used",
+        "stocks/plate-01.csv: no well of plate-01 is blended from high salt (ph 7.0); what was "
+        "measured there is not used",
+    ]
+
+
+def test_a_bottle_far_off_is_used_and_pointed_out(tmp_path: Path) -> None:
+    study = study_of(tmp_path, "high salt (ph 6.0),salt,500,400")
+    assert study.wells["salt"][2] == pytest.approx(240)
+    assert said(study) == [
+        "stocks/plate-01.csv, row 2: high salt (ph 6.0) measured 400, far from its target of salt, "
+        "500; it is used as it stands"
+    ]
+
+
+def test_a_misspelt_heading_is_named_once(tmp_path: Path) -> None:
+    study = study_of(tmp_path, "high salt (ph 6.0),salt,500,480")
+    path = tmp_path / "stocks" / "plate-01.csv"
+    path.write_text(path.read_text().replace("bottle,", "Bottles,"))
+    with pytest.raises(StudyFaults) as raised:
+        open_study(study.folder)
+    assert raised.value.lines() == [
+        "stocks/plate-01.csv, column Bottles: resembles bottle, which this table lacks (rename "
+        "the column)"
     ]
 
 
@@ -145,13 +178,13 @@ AT = "stocks/plate-01.csv, row 2, column"
 FAULTS = {
     "no bottle": (
         "high slat (ph 5.5),salt,500,489",
-        f'{AT} bottle: "high slat (ph 5.5)" is not a bottle; one is called low salt (ph 4.5) '
-        '(did you mean "high salt (ph 4.5)"?)',
+        f'{AT} bottle: "high slat (ph 5.5)" is not a bottle of study.toml, [bench] '
+        "(one is called high salt (ph 4.5))",
     ),
     "the stock alone": (
         "high salt,salt,500,489",
-        f'{AT} bottle: "high salt" is not a bottle; one is called low salt (ph 4.5) '
-        '(did you mean "high salt (ph 4.5)"?)',
+        f'{AT} bottle: "high salt" is not a bottle of study.toml, [bench] '
+        "(one is called high salt (ph 4.5))",
     ),
     "another target": (
         "high salt (ph 5.5),salt,400,389",
@@ -164,7 +197,7 @@ FAULTS = {
     ),
     "a slip of a digit": (
         "high salt (ph 5.5),salt,500,48.9",
-        f"{AT} measured: 48.9 lies too far from the target for a bottle of it, outside 410 to 590 "
+        f"{AT} measured: 48.9 lies too far from the target for a bottle of it, outside 50 to 950 "
         "mM",
     ),
 }
@@ -180,8 +213,11 @@ def test_a_bottle_has_one_value(tmp_path: Path, bottle: str) -> None:
     (line,) = lines_of(
         tmp_path, "high salt (ph 5.5),salt,500,489", f"{bottle},salt,500,480", plate=PLATE
     )
-    assert "row 3, column target: 500 is already the target of another stock of salt" in line
-    assert ("column bottle tells bottles apart" in line) == (not bottle)
+    if bottle:
+        assert "row 3, column target: 500 of high salt (ph 5.5) has a row of its own alr" in line
+    else:
+        assert "row 3, column target: 500 is already the target of another stock of salt" in line
+        assert line.endswith("(column bottle tells bottles apart)")
 
 
 def test_without_stocks_there_is_no_bottle(tmp_path: Path) -> None:
@@ -260,3 +296,26 @@ def test_levels_are_those_of_the_volumes_poured_together(
     poured = [((1000.0 - high) * low + high * top) / 1000.0 for low, top in held.values()]
     kept = np.where(np.isfinite(made.values[0]), made.values[0], [ph, salt])
     np.testing.assert_allclose(kept, poured, atol=1e-6)
+
+
+@given(
+    st.integers(0, 90).map(lambda n: 10.0 * n),
+    st.sampled_from([(LOW, HIGH), (LOW, MID, HIGH), (HIGH, {"name": "water"}), (MID, HIGH)]),
+    st.sampled_from([None, 5, 60, 200]),
+    st.sampled_from([0.5, 5.0, 60.0]),
+)
+@settings(deadline=None, derandomize=True, max_examples=120)
+def test_the_mix_is_the_one_of_the_sheets(
+    salt: float, stocks: Any, floor: float, step: float
+) -> None:
+    keys = {**BENCH, "stocks": stocks, "pipette_floor_ul": floor, "pipette_step_ul": step}
+    definition = Definition.model_validate(tables() | {"bench": keys})
+    held = {"ph": 5.5, "salt": salt}
+    mixes, mix = mixes_of(definition, held), Mixer(definition).mix(held)
+    shares = poured(definition, mixes)
+    if shares is None:
+        assert isinstance(mix, Refusal)
+    else:
+        pairs = zip(mixes.bottles, shares.tolist(), strict=True)
+        assert isinstance(mix, Mix)
+        assert dict(mix.recipe.parts) == {b.name: share for b, share in pairs if share > 0}

@@ -8,10 +8,10 @@ from dataclasses import dataclass
 import pandas as pd
 
 from muntin.bench.protein import protein_left_mg, wells_mg
-from muntin.bench.volumes import Pipette
 from muntin.record.bench import LOAD
 from muntin.record.faults import Fault, listed, number
 from muntin.record.study import Study
+from muntin.record.volumes import Pipette
 
 _SLACK = 1e-9
 

@@ -10,13 +10,11 @@ import numpy as np
 from muntin.bench.buffers import buffer_recipe
 from muntin.bench.making import forms_made, making_of
 from muntin.bench.recipe import Condition, Recipe, Refusal
-from muntin.bench.volumes import Pipette, apportioned, pipette_of, volume_text
 from muntin.record.bottles import Bottle, Value, held_part
 from muntin.record.definition import Definition
 from muntin.record.faults import listed, number
-from muntin.record.mixes import Mixes, mixes_of
-
-_HALF = 0.5 + 1e-9
+from muntin.record.mixes import HALF_STEP, Mixes, mixes_of
+from muntin.record.volumes import Pipette, apportioned, pipette_of, volume_text
 
 
 @dataclass(frozen=True, eq=False)
@@ -140,7 +138,7 @@ class Mixer:
 
     def _off(self, name: str, made: float, asked: float) -> bool:
         """Whether what is made is more than half a bench step off."""
-        return abs(made - asked) > _HALF * self._by_name[name].span[2]
+        return abs(made - asked) > HALF_STEP * self._by_name[name].span[2]
 
     def _too_little(self, bottle: Bottle, share: float) -> Refusal:
         takes = number(round(share * float(self.pipette.ul(self.total or 0)), 2))

@@ -18,8 +18,9 @@ from muntin.record.definition import Definition
 from muntin.record.faults import counted, listed, number
 from muntin.record.offers import Change, Offer
 from muntin.record.plan_table import KeptPlan
-from muntin.record.stock_levels import stock_levels, unused_stocks
+from muntin.record.stock_levels import stock_levels
 from muntin.record.stocks import Stock
+from muntin.record.unused_stocks import unused_stocks
 from muntin.window.assessment import Assessment
 
 

@@ -20,7 +20,6 @@ from muntin.bench.plan import next_plate
 from muntin.bench.recipe import Recipe, Refusal
 from muntin.bench.refused import Refused, faults_of
 from muntin.bench.transfers import Total, Transfer, totals_of, transfers_of
-from muntin.bench.volumes import Pipette
 from muntin.bench.wells import well_index
 from muntin.record.bench import LOAD
 from muntin.record.bottles import Bottle, Value
@@ -31,6 +30,7 @@ from muntin.record.plan_table import read_plan
 from muntin.record.readings import INFORMING
 from muntin.record.stocks import planned_stocks
 from muntin.record.study import Study
+from muntin.record.volumes import Pipette
 
 _LIQUID_CONTROLS = ("blank", "no_resin")
 

@@ -6,7 +6,7 @@ from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass
 from decimal import Decimal
 
-from muntin.bench.volumes import Pipette
+from muntin.record.volumes import Pipette
 
 
 @dataclass(frozen=True, slots=True)

@@ -11,6 +11,10 @@ from muntin.record.blending import blends
 from muntin.record.bottles import Bottle, Value, bottles_for
 from muntin.record.definition import Definition
 from muntin.record.keys import Floats
+from muntin.record.volumes import apportioned, pipette_of
+
+# Half a bench step, and a little for rounding.
+HALF_STEP = 0.5 + 1e-9
 
 
 @dataclass(frozen=True, eq=False)
@@ -42,6 +46,24 @@ def mixes_of(definition: Definition, held: Mapping[str, Value]) -> Mixes:
     found = blends(contents, np.array([*asked.values()]))
     shares = tuple(s for s in found if _cover(bottles, s, tied))
     return Mixes(tuple(bottles), tied, asked, contents, shares)
+
+
+def poured(definition: Definition, mixes: Mixes) -> Floats | None:
+    """Return the shares of the mix that is made: the best that the pipette can draw and that comes
+    out, in its whole steps, within half a bench step of what is asked; None where none is.
+    """
+    bench, spans = definition.bench, {f.name: f.span[2] for f in definition.factors if f.continuous}
+    if bench.well_ul is None:
+        return mixes.shares[0] if mixes.shares else None
+    pipette = pipette_of(bench)
+    total = pipette.nearest(bench.well_ul)
+    for shares in mixes.shares:
+        steps = np.array(apportioned(shares.tolist(), total))
+        off = np.abs(mixes.contents @ steps / total - np.array([*mixes.asked.values()]))
+        most = [HALF_STEP * spans.get(name, np.inf) for name in mixes.asked]
+        if (steps[shares > 0] >= pipette.floor).all() and (off <= most).all():
+            return shares
+    return None
 
 
 def _cover(bottles: Sequence[Bottle], shares: Floats, names: Sequence[str]) -> bool:

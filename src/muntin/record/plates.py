@@ -17,9 +17,10 @@ from muntin.record.faults import Fault, Findings, counted, did_you_mean, listed,
 from muntin.record.keys import Truths
 from muntin.record.levels import check_stocks, read_choices, read_levels, read_targets
 from muntin.record.readings import INFORMING, Reading, read_readings, response_columns
-from muntin.record.stock_levels import stock_levels, unused_stocks
+from muntin.record.stock_levels import stock_levels
 from muntin.record.stocks import Stock
 from muntin.record.tables import Table, missing_column, read_table
+from muntin.record.unused_stocks import unused_stocks
 from muntin.record.wells import WellError, last_well, well_name
 
 ROLES = (*INFORMING, "blank", "load", "no_resin", "water")

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from collections import Counter
 from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass
 from typing import Any
@@ -12,14 +11,11 @@ import pandas as pd
 
 from muntin.record.bottles import Value, alike, bottles_for, held_part
 from muntin.record.definition import Definition
-from muntin.record.factors import Factor
-from muntin.record.faults import counted, listed, number
 from muntin.record.keys import Floats, Truths
-from muntin.record.mixes import Mixes, mixes_of
+from muntin.record.mixes import Mixes, mixes_of, poured
 from muntin.record.stocks import Stock
 
 _TINY = 1e-9
-_NAME_IT = "; if it is a bottle that wells are blended from, name it in the column bottle"
 
 
 @dataclass(frozen=True, eq=False)
@@ -29,16 +25,18 @@ class StockLevels:
     values (rows, factors): the level (raw unit), NaN where the stocks tell nothing beyond the
     target. sure (rows, factors): whether it is that of a liquid as it was measured, so that the
     pipette has no part in it. bottled (rows, factors): whether it was reckoned from bottles. used
-    (rows, stocks): which stocks a row's levels rest on. amiss: rows that a stock's bottle goes into
-    and which stay at their target all the same, counted by what they lack: a bottle that was not
-    measured, or "" where there is no one way to blend them.
+    (rows, stocks): which stocks a row's levels rest on. amiss: by factor, the rows that stay at
+    their target although a bottle for them was measured: by bottle of which that is not known, or
+    "" where no blend of the bottles makes the row. idle: numbers of the stocks whose bottle goes
+    into one of those.
     """
 
     values: Floats
     sure: Truths
     bottled: Truths
     used: Truths
-    amiss: Mapping[int, Counter[str]]
+    amiss: dict[str, dict[str, set[int]]]
+    idle: set[int]
 
     def of(self, factor: int) -> tuple[Floats, Truths, Truths]:
         """Return values, sure and bottled of one factor, by its number."""
@@ -61,9 +59,10 @@ def stock_levels(
         sure=np.zeros(shape, dtype=bool),
         bottled=np.zeros(shape, dtype=bool),
         used=np.zeros((len(targets), len(stocks)), dtype=bool),
-        amiss={j: Counter() for j, stock in enumerate(stocks) if stock.bottle},
+        amiss={},
+        idle=set(),
     )
-    if made.amiss:
+    if any(stock.bottle for stock in stocks):
         for condition, rows in _conditions(definition, targets):
             _blend(definition, condition, rows, stocks, made)
     for i, factor in enumerate(definition.factors):
@@ -105,14 +104,17 @@ def _blend(
     if not told:
         return
     mixes = mixes_of(definition, condition)
-    if len(mixes.shares) != 1:
-        for j in told.values():
-            made.amiss[j][""] += len(rows)
+    shares = poured(definition, mixes)
+    if shares is None:
+        made.idle.update(told.values())
+        for _, factor_name in told:
+            made.amiss.setdefault(factor_name, {}).setdefault("", set()).update(rows)
         return
     for i, factor in enumerate(definition.factors):
-        parts, unknown = _parts(mixes, factor.name, told)
-        for j in parts:
-            made.amiss[j].update({lacking: len(rows) for lacking in unknown})
+        parts, unknown = _parts(mixes, shares, factor.name, told)
+        made.idle.update(parts if unknown else ())
+        for lacking in unknown if parts else ():
+            made.amiss.setdefault(factor.name, {}).setdefault(lacking, set()).update(rows)
         if parts and not unknown:
             common = factor.name in mixes.tied
             whole = sum(parts.values()) if common else 1.0
@@ -125,49 +127,15 @@ def _blend(
 
 
 def _parts(
-    mixes: Mixes, name: str, told: Mapping[tuple[str, str], int]
+    mixes: Mixes, shares: Floats, name: str, told: Mapping[tuple[str, str], int]
 ) -> tuple[dict[int, float], list[str]]:
-    """The shares of the only mix, by the stocks that tell what they bring of a factor; and the
-    bottles of which that is not known.
+    """The shares of a mix by the stocks that tell what they bring of a factor, and the bottles of
+    which that is not known.
     """
     parts, unknown = dict[int, float](), []
-    for bottle, share in zip(mixes.bottles, mixes.shares[0].tolist(), strict=True):
+    for bottle, share in zip(mixes.bottles, shares.tolist(), strict=True):
         if share > 0 and (bottle.name, name) in told:
             parts[told[bottle.name, name]] = share
         elif share > 0 and bottle.holds.get(name):
             unknown.append(bottle.name)
     return parts, unknown
-
-
-def unused_stocks(
-    definition: Definition, stocks: Sequence[Stock], levels: StockLevels, plate: str
-) -> Iterator[str]:
-    """Yield a sentence on every stock that no row, or not every row, rests on as it might."""
-    by_name = {factor.name: factor for factor in definition.factors}
-    for j, stock in enumerate(stocks):
-        where, factor = f"{stock.file}, {stock.where}", by_name[stock.factor]
-        amiss: Mapping[str, int] = levels.amiss.get(j, {})
-        if rows := amiss.get("", 0):
-            yield (
-                f"{where}: {counted(rows, 'well')} of {plate} cannot be blended from the bottles "
-                f"in just one way, so that {factor.name} stays at the target there; write what "
-                f"such wells measured to {factor.name}_measured of the plate table"
-            )
-        elif amiss:
-            yield (
-                f"{where}: {counted(max(amiss.values()), 'well')} of {plate} blended from "
-                f"{stock.bottle} stay at their targets, as it is not known what {factor.name} "
-                f"measured in {listed(amiss)}"
-            )
-        elif not levels.used[:, j].any() and stock.bottle:
-            yield f"{where}: no well of {plate} is blended from {stock.bottle}; it is not used"
-        elif not levels.used[:, j].any():
-            value = number(stock.target)
-            said = f"{where}: no well of {plate} has {factor.name} {value}; the stock is not used"
-            yield said + (_NAME_IT if _is_bottle(definition, factor, stock.target) else "")
-
-
-def _is_bottle(definition: Definition, factor: Factor, target: float) -> bool:
-    """Whether a bottle holds just that of a factor."""
-    held = [s.holds.get(factor.name) for s in definition.bench.stocks]
-    return any(value is not None and alike(factor, value, target) for value in held)

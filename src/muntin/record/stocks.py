@@ -12,13 +12,14 @@ from muntin.record.bottles import alike, bottle_examples, named_bottle, tells_bo
 from muntin.record.cells import numbers
 from muntin.record.definition import Definition
 from muntin.record.factors import Factor
-from muntin.record.faults import Fault, Findings, did_you_mean, number
+from muntin.record.faults import Fault, Findings, did_you_mean, nearest, number
 from muntin.record.notes import not_run
 from muntin.record.tables import Table, missing_column, read_table, table_files
 
 COLUMNS = ("factor", "target", "measured", "bottle", "lot", "by")
-# A slip of a digit is farther off than this share of the range, or of what the bottle is to hold.
-_FAR = 0.1
+# Shares of the range, or of what a bottle is to hold, if that is more: so far off is worth a word,
+# and so far off a slip of a digit.
+_FAR, _TOO_FAR = 0.1, 0.5
 
 
 class Stock(NamedTuple):
@@ -66,7 +67,12 @@ def planned_stocks(
 def _stocks(table: Table, definition: Definition, found: Findings) -> list[Stock]:
     lacking = [name for name in COLUMNS[:3] if name not in table.columns]
     found.faults.extend(missing_column(table, name) for name in lacking)
-    if lacking:
+    there = table.columns
+    meant = [n for n in there if n not in COLUMNS and nearest(n, COLUMNS) == "bottle"]
+    if meant and "bottle" not in there:
+        problem, hint = "resembles bottle, which this table lacks", "rename the column"
+        found.faults.append(Fault(file=table.file, column=meant[0], problem=problem, hint=hint))
+    if lacking or (meant and "bottle" not in there):
         return []
     factors = {factor.name: factor for factor in definition.factors}
     targets = numbers(table, "target", found.faults)
@@ -105,11 +111,18 @@ def _bottled(
         problem, hint = f"is not what {bottle.name} holds:", "study.toml, bench, stocks"
         found.faults.append(table.fault(row, "target", problem, allowed, hint))
     low, high, _ = factor.span
-    most = _FAR * max(high - low, abs(stock.target))
-    if abs(stock.measured - stock.target) > most * (1.0 + 1e-9):
+    size = max(high - low, abs(stock.target))
+    off = abs(stock.measured - stock.target)
+    if off > _TOO_FAR * size * (1.0 + 1e-9):
+        most = _TOO_FAR * size
         ends = f"{number(stock.target - most)} to {number(stock.target + most)} {factor.unit}"
         problem = "lies too far from the target for a bottle of it, outside"
         found.faults.append(table.fault(row, "measured", problem, ends.rstrip()))
+    elif off > _FAR * size * (1.0 + 1e-9):
+        found.notices.append(
+            f"{stock.file}, {stock.where}: {bottle.name} measured {number(stock.measured)}, far "
+            f"from its target of {factor.name}, {number(stock.target)}; it is used as it stands"
+        )
     return stock._replace(bottle=bottle.name)
 
 
@@ -117,8 +130,9 @@ def _no_bottle(table: Table, row: int, definition: Definition) -> Fault:
     names = bottle_examples(definition)
     if not names:
         return table.fault(row, "bottle", "names a bottle, but study.toml, bench, has no stocks")
-    hint = did_you_mean(table.cells("bottle")[row], names)
-    return table.fault(row, "bottle", "is not a bottle; one is called", names[0], hint)
+    like = nearest(table.cells("bottle")[row], names) or names[0]
+    problem, hint = "is not a bottle of study.toml, [bench]", f"one is called {like}"
+    return table.fault(row, "bottle", problem, hint=hint)
 
 
 def _again(
@@ -129,7 +143,10 @@ def _again(
         alike_target = other.factor == stock.factor and alike(factor, other.target, stock.target)
         if alike_target and (not stock.bottle or stock.bottle == other.bottle or not other.bottle):
             problem = f"is already the target of another stock of {factor.name} on this plate"
-            hint = "" if stock.bottle and other.bottle else "column bottle tells bottles apart"
+            hint = "column bottle tells bottles apart"
+            if stock.bottle and other.bottle:
+                problem = f"of {stock.bottle} has a row of its own already"
+                hint = f"{factor.name} of a bottle has one value"
             return [table.fault(row, "target", problem, hint=hint)]
     return []
 

@@ -13,8 +13,8 @@ from muntin.bench.control_levels import control_levels
 from muntin.bench.gaps import gaps
 from muntin.bench.sheets import Sheets, WellsMix
 from muntin.bench.transfers import Total
-from muntin.bench.volumes import volume_text
 from muntin.record.faults import counted
+from muntin.record.volumes import volume_text
 from muntin.report.cautions import bench_cautions
 from muntin.report.checklist import ph_levels
 from muntin.report.facts import records

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 import textwrap
 from collections.abc import Mapping
 from pathlib import Path
@@ -78,5 +79,6 @@ def _check_form(folder: Path) -> None:
     form = read_table(path, file, COLUMNS, Findings()) if path.is_file() else None
     filled = [] if form is None else [r for r, cell in enumerate(form.cells("measured")) if cell]
     if form is not None and filled:
-        problem = "was filled in and would be lost to the new form; move the file to the folder"
-        raise StudyFaults([form.fault(filled[0], "measured", problem, "stocks/ of the study")])
+        plate = re.sub(r"\.r[0-9]+$", "", folder.name)
+        problem = "was filled in and would be lost to the new form; move the file to"
+        raise StudyFaults([form.fault(filled[0], "measured", problem, f"stocks/{plate}.csv")])

@@ -9,8 +9,8 @@ from collections.abc import Iterable, Iterator, Mapping
 from typing import Any
 
 from muntin.bench.sheets import Sheets, WellsMix
-from muntin.bench.volumes import apportioned, volume_text
 from muntin.record.definition import Definition
+from muntin.record.volumes import apportioned, volume_text
 from muntin.report.plate_wells import conditions_of
 
 FORM = "stocks.csv"

@@ -7,10 +7,10 @@ from decimal import Decimal
 from typing import Any
 
 from muntin.bench.load import Load
-from muntin.bench.volumes import volume_text
 from muntin.record.bottles import Bottle
 from muntin.record.definition import Definition
 from muntin.record.faults import number
+from muntin.record.volumes import volume_text
 
 
 def volume_ml(volume_ul: Decimal) -> str:

@@ -8,8 +8,8 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
-from muntin.bench.volumes import Pipette, apportioned, pipette_of, volume_text
 from muntin.record.bench import Bench
+from muntin.record.volumes import Pipette, apportioned, pipette_of, volume_text
 
 STEADY = settings(deadline=None, derandomize=True)
 weights = st.lists(st.floats(0.0, 1.0), min_size=1, max_size=6).filter(lambda w: sum(w) > 0.01)
