@@ -37,8 +37,8 @@ def scores(settings, count=WELLS, **wells):
     ("settings", "wells"),
     [
         ({"hold_up_mean_cv": 0.0}, {}),
-        ({"hold_up_mean_cv": 0.1}, {"mean_off": 0.1}),
-        ({"hold_up_mean_cv": 0.1}, {"mean_off": -0.1}),
+        pytest.param({"hold_up_mean_cv": 0.1}, {"mean_off": 0.1}, marks=pytest.mark.slow),
+        pytest.param({"hold_up_mean_cv": 0.1}, {"mean_off": -0.1}, marks=pytest.mark.slow),
         ({"hold_up_mean_cv": 0.1}, {"mean_sd": 0.1}),
     ],
     ids=["mean known", "mean 10 % high", "mean 10 % low", "mean drawn"],

@@ -399,6 +399,7 @@ def test_two_responses(tmp_path):
     assert plan.forecast["wrong_share"].is_monotonic_decreasing
 
 
+@pytest.mark.slow
 def test_four_factors(tmp_path):
     factors = [PH, SALT, LOAD, RESIN]
     study = written(tmp_path / "study", [read(spread(factors, 16))], factors=factors)

@@ -21,7 +21,7 @@ def test_best_finds_more_of_branin_than_as_many_wells_at_random():
     assert np.median(found) < 0.5 * NOISE_SD
 
 
-@pytest.mark.parametrize("name", ["Branin", "Hartmann-3"])
+@pytest.mark.parametrize("name", ["Branin", pytest.param("Hartmann-3", marks=pytest.mark.slow)])
 def test_opening_plate_is_that_of_the_edge_and_not_the_corners(name):
     fresh = assess(empty(CASES[name].definition), "gp")
     best, edge = (select(fresh, 8, aim, 1) for aim in ("best", "edge"))

@@ -234,7 +234,7 @@ def test_forecast_without_bridging_wells_starts_the_same_and_ends_higher(view):
         ([SALT], "best"),
         ([PH, SALT, RESIN], "both"),
         ([PH, SALT, LOAD], "edge"),
-        ([PH, SALT, LOAD, RESIN], "both"),
+        pytest.param([PH, SALT, LOAD, RESIN], "both", marks=pytest.mark.slow),
     ],
 )
 def test_one_three_and_four_factors(tmp_path, factors, aim):

@@ -1,4 +1,5 @@
-"""Simulation-based calibration of the whole fast engine: 40 data sets here, 200 with `-m slow`.
+"""Simulation-based calibration of the whole fast engine: 40 data sets of the Gaussian process here,
+200 of both surrogates with `-m slow`.
 
 Truth and readings are drawn from the model; the posterior distribution function at the truth must
 then be uniform (Cook, Gelman & Rubin 2006; Talts et al. 2018), which its empirical distribution is
@@ -18,7 +19,8 @@ from tests.benchmarks.simulated import Setup, simulate
 POINTS, ALPHA, TARGET = 20, 0.01, 0.7
 FEW, MANY = 40, 200
 FAMILIES = pytest.mark.parametrize("name", ["gp", "quadratic"])
-SIZES = pytest.mark.parametrize("sets", [FEW, pytest.param(MANY, marks=pytest.mark.slow)])
+SLOW = [pytest.param(name, MANY, marks=pytest.mark.slow) for name in ("gp", "quadratic")]
+SETS = pytest.mark.parametrize(("name", "sets"), [("gp", FEW), *SLOW])
 
 
 @cache
@@ -46,14 +48,13 @@ def uniform(u):
     return bands(len(u), POINTS, ALPHA).hold(u)
 
 
-@SIZES
-@FAMILIES
+@SETS
 @pytest.mark.parametrize("quantity", NEW)
 def test_what_a_new_condition_does_lies_anywhere_in_its_posterior_alike(name, sets, quantity):
     assert uniform(simulated(name, sets)[0].of(quantity))
 
 
-@FAMILIES
+@pytest.mark.parametrize("name", ["gp", pytest.param("quadratic", marks=pytest.mark.slow)])
 def test_hyperparameters_lie_anywhere_in_their_posterior_alike(name):
     places, _ = simulated(name, FEW)
     assert [n for n in places.names if not uniform(places.of(n))] == []
@@ -66,8 +67,7 @@ def test_hyperparameters_lie_anywhere_in_their_posterior_alike_in_many_sets(name
     assert [n for n in places.names if not uniform(places.of(n))] == []
 
 
-@SIZES
-@FAMILIES
+@SETS
 @pytest.mark.parametrize("which", [0, 1], ids=["p_mean", "p_well"])
 def test_what_is_said_to_happen_happens_as_often(name, sets, which):
     """Successes less the sum of their chances, in its own sd, and Brier's score the same way."""

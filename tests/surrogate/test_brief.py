@@ -36,6 +36,7 @@ def test_a_brief_fit_has_no_cloud_and_few_nodes():
     assert len(brief.fits[0].weights) < len(whole.fits[0].weights)
 
 
+@pytest.mark.slow
 def test_where_the_search_starts_moves_little():
     trial = both_errors()
     whole = stack(trial)

@@ -54,6 +54,7 @@ def test_predictions_agree_where_their_weights_can_be_relied_on(fits):
     assert np.abs(difference).mean() < 0.05
 
 
+@pytest.mark.slow
 def test_draws_of_a_seed_come_again(fits):
     fast, nuts = fits
     again = resampled(fast, 1, SETTINGS)

@@ -104,6 +104,7 @@ def cavities_only(model, posterior):
     )
 
 
+@pytest.mark.slow
 def test_every_reading_beside_a_wild_one_agrees_with_a_refit():
     """A log density off by 0.1 is off by a tenth of the density. From the cavities alone the wild
     well's is off by more than 2, that is by a factor of 7 of the density, and from the nodes of its

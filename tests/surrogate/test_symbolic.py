@@ -126,7 +126,7 @@ def test_of_an_identity_link_the_standardised_variables_are_standard_normal(name
         assert compiled(other) - compiled(first) == pytest.approx(normal, abs=1e-6)
 
 
-@pytest.mark.parametrize("name", ["gp", "quadratic"])
+@pytest.mark.parametrize("name", ["gp", pytest.param("quadratic", marks=pytest.mark.slow)])
 def test_gradient_is_that_of_the_log_density(name):
     """By central differences, also where conditions agree and the Matern distance is zero."""
     model = problem(name, "fraction")

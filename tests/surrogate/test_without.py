@@ -15,7 +15,11 @@ def spoiled(trial, rows):
 
 
 @pytest.mark.parametrize(
-    ("trial", "rows"), [(set_with_errors, [3]), (sixty_wells, [2, 7])], ids=["set", "repeats"]
+    ("trial", "rows"),
+    [
+        pytest.param(set_with_errors, [3], id="set"),
+        pytest.param(sixty_wells, [2, 7], id="repeats", marks=pytest.mark.slow),
+    ],
 )
 def test_it_is_the_fit_of_the_others(trial, rows):
     made = trial()
