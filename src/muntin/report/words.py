@@ -30,6 +30,24 @@ def condition_text(definition: Definition, condition: Mapping[Any, Any], kept: b
     return joined([setting_text(f, condition[f.name], kept) for f in definition.factors])
 
 
+def range_ends_text(definition: Definition, condition: Mapping[Any, Any]) -> str:
+    """Return "pH 7.5 is where its range ends: no data lie beyond it", or "" where no factor of a
+    condition is at an end of its range.
+    """
+    there = []
+    for factor in definition.factors:
+        if factor.continuous:
+            low, high, step = factor.span
+            value = float(condition[factor.name])
+            if min(abs(value - low), abs(value - high)) < 0.5 * step:
+                there.append(setting_text(factor, value))
+    if not there:
+        return ""
+    if len(there) == 1:
+        return f"{there[0]} is where its range ends: no data lie beyond it"
+    return f"{joined(there)} are where their ranges end: no data lie beyond them"
+
+
 def ranges_text(definition: Definition, ranges: Mapping[str, tuple[Any, Any]]) -> str:
     """Return ranges that hold together, such as "pH 5.0 to 5.8 and Salt 100 to 300 mM"."""
     texts = []

@@ -14,6 +14,7 @@ from muntin.report.words import (
     chance_text,
     condition_text,
     labels,
+    range_ends_text,
     ranges_text,
     share_text,
     success_text,
@@ -73,7 +74,8 @@ def _holds(basis: Basis, window: Window) -> str:
     if view.awaited:
         early = f"Provisional, as {labels(definition, view.awaited)} is not read yet: "
     if window.share:
-        return f"{early}{where}: {passes} ({targets})."
+        ends = range_ends_text(definition, window.setpoint.to_dict())
+        return f"{early}{where}: {passes} ({targets}){ends and f'; {ends}'}."
     required = chance_text(definition.required_probability)
     no = f"no condition reaches the required probability of {required} ({targets})"
     best = f"the best so far is {where}, where {passes}"
