@@ -251,7 +251,14 @@ def test_a_reason_makes_it_clean_and_stays_on_record(study: Path) -> None:
     text = " ".join(run("check", study).stdout.split())
     assert "CHANGED since advice/plate-03/r2, and no reason was given: plate-01, recovery" in text
     said = ("--by", "A. Tester", "--because", "typing error")
-    assert run("advise", study, *said, *QUICK).exit_code == 0
+    told = run("advise", study, *said, "--wells", "4", "--surrogate", "quadratic")
+    assert told.exit_code == 0
+    text = " ".join(told.stdout.split())
+    assert "no reason was given" not in text
+    assert (
+        "Changed since advice/plate-03/r2: plate-01, recovery: A1 0.021, now 0.031. Why: "
+        '"typing error" (A. Tester)'
+    ) in text
     found = verify(study, recompute=False)
     assert found.clean
     assert re.fullmatch(

@@ -31,21 +31,20 @@ def condition_text(definition: Definition, condition: Mapping[Any, Any], kept: b
 
 
 def range_ends_text(definition: Definition, condition: Mapping[Any, Any]) -> str:
-    """Return "pH 7.5 is where its range ends: no data lie beyond it", or "" where no factor of a
-    condition is at an end of its range.
+    """Return "the range ends at pH 7.5: no data lie beyond", or "" where no factor of a condition is
+    within half a bench step of an end of its range.
     """
     there = []
     for factor in definition.factors:
         if factor.continuous:
             low, high, step = factor.span
             value = float(condition[factor.name])
-            if min(abs(value - low), abs(value - high)) < 0.5 * step:
-                there.append(setting_text(factor, value))
+            ends = [end for end in (low, high) if abs(value - end) < 0.5 * step]
+            there += [setting_text(factor, end) for end in ends[:1]]
     if not there:
         return ""
-    if len(there) == 1:
-        return f"{there[0]} is where its range ends: no data lie beyond it"
-    return f"{joined(there)} are where their ranges end: no data lie beyond them"
+    what = "the range ends" if len(there) == 1 else "the ranges end"
+    return f"{what} at {joined(there)}: no data lie beyond"
 
 
 def ranges_text(definition: Definition, ranges: Mapping[str, tuple[Any, Any]]) -> str:
