@@ -138,6 +138,10 @@ PLANTED: dict[str, tuple[Callable[[Path], None], str]] = {
         edit(LEDGER, '"by":"lab 2"', '"by":"lab 3"'),
         r"ledger.jsonl, line 1: it was edited after it was written",
     ),
+    "the advice of an edited line": (
+        edit(LEDGER, '"by":"lab 2"', '"by":"lab 3"'),
+        rf"{R1} is on no line of ledger.jsonl: its line was deleted or edited",
+    ),
     "a deleted line": (lines_kept(0, 2), r"ledger.jsonl, line 2: number 2 was deleted before it"),
     "the last line deleted": (lines_kept(0, 1), rf"{R2} is on no line of ledger.jsonl"),
     "a torn line": (torn, r"ledger.jsonl: its last line is torn \([0-9]+ bytes without an end\)"),
@@ -250,6 +254,8 @@ def test_a_reason_makes_it_clean_and_stays_on_record(study: Path) -> None:
     )
     text = " ".join(run("check", study).stdout.split())
     assert "CHANGED since advice/plate-03/r2, and no reason was given: plate-01, recovery" in text
+    (note,) = verify(study, recompute=False).notes
+    assert note == "muntin advise --by NAME --because TEXT puts on record why it was changed"
     said = ("--by", "A. Tester", "--because", "typing error")
     told = run("advise", study, *said, "--wells", "4", "--surrogate", "quadratic")
     assert told.exit_code == 0
