@@ -31,8 +31,8 @@ def condition_text(definition: Definition, condition: Mapping[Any, Any], kept: b
 
 
 def range_ends_text(definition: Definition, condition: Mapping[Any, Any]) -> str:
-    """Return "the range ends at pH 7.5: no data lie beyond", or "" where no factor of a condition is
-    within half a bench step of an end of its range.
+    """Return "the range ends at pH 7.5: no data lie beyond", or "" where no factor of a condition
+    is within half a bench step of an end of its range.
     """
     there = []
     for factor in definition.factors:
