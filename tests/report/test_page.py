@@ -154,6 +154,8 @@ def test_a_set_point_at_the_end_of_a_range_is_told_in_the_answer(page: Page) -> 
     moved = {"ph": 7.5, "salt": 250.0, "probability": 0.934}
     basis = replace(page.basis, window=replace(window, share=0.2, setpoint=pd.Series(moved)))
     assert answer(basis)[0].endswith("); the range ends at pH 7.5: no data lie beyond.")
+    none = replace(basis, window=replace(basis.window, share=0.0))
+    assert answer(none)[0].endswith("new wells pass; the range ends at pH 7.5: no data lie beyond.")
     basis = replace(
         page.basis, window=replace(basis.window, setpoint=pd.Series({**moved, "ph": 6.0}))
     )
