@@ -65,6 +65,12 @@ def test_pictures_fit_a_slide(figures: dict[str, Drawn]) -> None:
         assert 16 / 9 * 0.85 <= width / height <= 16 / 9 * 1.01, name
 
 
+def test_sides_on_the_page_are_as_high_as_their_factors_need(figures: dict[str, Drawn]) -> None:
+    (width, height) = re.findall(r'viewBox="0 0 ([\d.]+) ([\d.]+)"', figures["sides"].svg)[0]
+    inches = 8.0 * float(height) / float(width)
+    assert inches == pytest.approx(1.25 + 2 * 0.85, abs=0.01)
+
+
 def test_ids_of_all_figures_together_are_each_their_own(figures: dict[str, Drawn]) -> None:
     ids = [
         found for figure in figures.values() for found in re.findall(r'\bid="([^"]+)"', figure.svg)
