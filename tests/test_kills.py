@@ -11,6 +11,7 @@ import time
 import warnings
 from collections.abc import Callable
 from pathlib import Path
+from typing import Any
 
 import numpy as np
 import pytest
@@ -19,7 +20,8 @@ from muntin import advise as main_job
 from muntin.advise import AdviceSettings, advise, find
 from muntin.record import StudyFaults, open_study
 from muntin.record.ledger import LEDGER, read_ledger
-from muntin.record.writing import writing
+from muntin.record.writing import STAGE, writing
+from muntin.report.page import build
 from muntin.verify import verify
 from tests.record.dying import dies_at, full_from
 from tests.report.studies import small, tree
@@ -131,6 +133,66 @@ def test_advice_killed_at_200_random_moments(study: Path) -> None:
         assert (study / "plans" / "plate-02.csv").is_file()
     assert 100 < killed < 200
     assert verify(study, recompute=False).clean
+
+
+# Options, and seconds that writing takes at most.
+CALLS = {"report": (QUICK, 0.06), "confirm": (("--quiet",), 0.015)}
+
+
+@pytest.mark.slow
+@forks
+@pytest.mark.parametrize("command", CALLS)
+def test_page_and_column_runs_killed_while_they_are_written(
+    study: Path, monkeypatch: pytest.MonkeyPatch, command: str
+) -> None:
+    # The page of the first call serves them all, so that the others only write.
+    monkeypatch.setattr(build, "build_page", once(build.build_page))
+    options, takes = CALLS[command]
+    assert run(command, study, *options).exit_code == 0
+    again = ("--again", "--because", "a second lot") if command == "confirm" else ()
+    lines, killed, finished = 1, 0, 0
+    for delay in np.random.default_rng(6).uniform(0.0, takes, 16):
+        with warnings.catch_warnings():
+            warnings.simplefilter("ignore", DeprecationWarning)
+            child = os.fork()
+        if child == 0:
+            os._exit(run(command, study, *options, *again).exit_code)
+        code = killed_once_it_writes(child, study / STAGE, delay)
+        assert code in (0, -signal.SIGKILL)
+        killed += code != 0
+        with writing(study) as pen:
+            finished += bool(pen.remarks)
+        found = verify(study, recompute=False)
+        assert (found.differs, found.notes) == ((), ())
+        assert found.lines in ((lines + 1,) if code == 0 else (lines, lines + 1))
+        assert not [path for path in study.rglob("*") if path.name.startswith(".")]
+        lines = found.lines
+    assert killed > 4
+    assert finished < killed
+
+
+def once(work: Callable[..., Any]) -> Callable[..., Any]:
+    """The same work, done at the first call only."""
+    done: list[Any] = []
+
+    def known(*given: Any, **named: Any) -> Any:
+        if not done:
+            done.append(work(*given, **named))
+        return done[0]
+
+    return known
+
+
+def killed_once_it_writes(child: int, stage: Path, delay: float) -> int:
+    """Kill a process so many seconds after it has begun to write; its exit code."""
+    while not stage.exists():
+        ended, status = os.waitpid(child, os.WNOHANG)
+        if ended:
+            return os.waitstatus_to_exitcode(status)
+        time.sleep(0.0005)
+    time.sleep(delay)
+    os.kill(child, signal.SIGKILL)
+    return os.waitstatus_to_exitcode(os.waitpid(child, 0)[1])
 
 
 @pytest.mark.slow

@@ -69,7 +69,7 @@ def test_a_well_that_was_run_elsewhere_is_predicted_anew(advised: Advice) -> Non
     same = told.loc[table["well"], "predicted"].to_numpy()
     assert np.abs(table["predicted"].to_numpy() - same)[1:].max() < 0.02
     _, said = predicted_figure(view, response)
-    assert said.endswith("(plate-02 computed now.)")
+    assert said.endswith("(plate-02 computed now, as if not yet run.)")
 
 
 def test_the_latest_revision_is_the_last(tmp_path: Path) -> None:

@@ -138,6 +138,10 @@ PLANTED: dict[str, tuple[Callable[[Path], None], str]] = {
         edit(LEDGER, '"by":"lab 2"', '"by":"lab 3"'),
         r"ledger.jsonl, line 1: it was edited after it was written",
     ),
+    "the advice of an edited line": (
+        edit(LEDGER, '"by":"lab 2"', '"by":"lab 3"'),
+        rf"{R1} is on no line of ledger.jsonl: its line was deleted or edited",
+    ),
     "a deleted line": (lines_kept(0, 2), r"ledger.jsonl, line 2: number 2 was deleted before it"),
     "the last line deleted": (lines_kept(0, 1), rf"{R2} is on no line of ledger.jsonl"),
     "a torn line": (torn, r"ledger.jsonl: its last line is torn \([0-9]+ bytes without an end\)"),
@@ -250,8 +254,17 @@ def test_a_reason_makes_it_clean_and_stays_on_record(study: Path) -> None:
     )
     text = " ".join(run("check", study).stdout.split())
     assert "CHANGED since advice/plate-03/r2, and no reason was given: plate-01, recovery" in text
+    (note,) = verify(study, recompute=False).notes
+    assert note == "muntin advise --by NAME --because TEXT puts on record why it was changed"
     said = ("--by", "A. Tester", "--because", "typing error")
-    assert run("advise", study, *said, *QUICK).exit_code == 0
+    told = run("advise", study, *said, "--wells", "4", "--surrogate", "quadratic")
+    assert told.exit_code == 0
+    text = " ".join(told.stdout.split())
+    assert "no reason was given" not in text
+    assert (
+        "Changed since advice/plate-03/r2: plate-01, recovery: A1 0.021, now 0.031. Why: "
+        '"typing error" (A. Tester)'
+    ) in text
     found = verify(study, recompute=False)
     assert found.clean
     assert re.fullmatch(

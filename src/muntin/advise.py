@@ -9,7 +9,7 @@ from pathlib import Path
 from muntin.bench.plan import Plan, propose
 from muntin.design.weighing import Aim
 from muntin.record import Study, open_study
-from muntin.record.entries import check_reason, entry_for
+from muntin.record.entries import check_reason, entry_for, with_reason
 from muntin.record.inputs import hashes, read_inputs, versions
 from muntin.record.ledger import Entry
 from muntin.record.study import stop_file
@@ -87,6 +87,7 @@ def advise(
     tell("reading the study")
     study = open_study(folder)
     check_reason(study, "advise", by, because)
+    study = with_reason(study, by, because)
     inputs = read_inputs(study.folder)
     found = find(study, settings, tell=tell, progress=progress)
 

@@ -111,6 +111,8 @@ def _as_it_is(folder: Path) -> tuple[str, list[str], list[str]]:
     told = [f"since {changes.since}: {one}" for one in said]
     aside = [path.name for path in sorted(folder.glob("ledger-torn-*.txt"))]
     remarks = [f"{name}: a torn line, set aside" for name in aside]
+    if changes.sentences:
+        remarks.append("muntin advise --by NAME --because TEXT puts on record why it was changed")
     if stopping := study.stopping.notice:
         # A rule that will go on record is a remark; one that is not followed is a change.
         (remarks if study.stopping.unrecorded else told).append(stopping)

@@ -14,7 +14,9 @@ from muntin.bench.plan import propose
 from muntin.record import open_study
 from muntin.report.drawn import Drawn, drawn, inline_svg
 from muntin.report.every_figure import report_figures
+from muntin.report.figures import saved
 from muntin.report.predicted_figure import predicted_figure
+from muntin.report.together_figure import together
 from muntin.report.window_map import map_figure
 from muntin.window.assessment import Assessment, assess
 from tests.report.plotted import study
@@ -63,6 +65,12 @@ def test_pictures_fit_a_slide(figures: dict[str, Drawn]) -> None:
         width, height = (int.from_bytes(figure.png[i : i + 4], "big") for i in (16, 20))
         assert width == 1920
         assert 16 / 9 * 0.85 <= width / height <= 16 / 9 * 1.01, name
+
+
+def test_sides_on_the_page_are_as_high_as_their_factors_need(figures: dict[str, Drawn]) -> None:
+    (width, height) = re.findall(r'viewBox="0 0 ([\d.]+) ([\d.]+)"', figures["sides"].svg)[0]
+    inches = 8.0 * float(height) / float(width)
+    assert inches == pytest.approx(1.25 + 2 * 0.85, abs=0.01)
 
 
 def test_ids_of_all_figures_together_are_each_their_own(figures: dict[str, Drawn]) -> None:
@@ -157,3 +165,13 @@ def test_ids_and_references_are_renamed_together() -> None:
     assert inline_svg(text, "x") == (
         '<svg><g id="x-a"/><use xlink:href="#x-a"/><b clip="url(#x-a)"/></svg>'
     )
+
+
+def test_labels_of_axes_keep_clear_of_the_title(view: Assessment) -> None:
+    figure = together(view)[0].get_figure(root=True)
+    assert figure is not None
+    saved(figure, "png")
+    (title,) = [text for text in figure.texts if text.get_text().startswith("All responses")]
+    below = title.get_window_extent().y0
+    for axes in figure.axes:
+        assert axes.yaxis.label.get_window_extent().y1 < below, axes.get_ylabel()

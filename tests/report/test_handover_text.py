@@ -13,6 +13,7 @@ from muntin.report.handover_text import (
     handover_facts,
     handover_lines,
     margins_line,
+    proposal_text,
     ranges_lines,
     setpoint_sentence,
     spread_text,
@@ -100,7 +101,7 @@ def test_whole_text():
         "Worst corner of the tolerance: pH 5.5 and Salt 238 mM: 88.0 % of new wells pass.",
         "Best well so far: Recovery 0.969 in plate-01 D7, of which a repeat is expected to read "
         "0.914 (0.833 to 0.993). Repeat the set point before believing it: 4 wells of a new plate, "
-        "3.7 of them expected to pass.",
+        "3 or 4 of them expected to pass.",
     ]
 
 
@@ -149,12 +150,33 @@ def test_spread_of_the_share_says_what_it_rests_on():
     sure = replace(handed().optimism, low=0.9997, high=1.0)
     told = spread_text(handed(optimism=sure))
     assert "pass at the set point lies above 99.9 % (95 %) if the model is right" in told
+    open_above = replace(handed().optimism, low=0.9971, high=0.9999)
+    told = spread_text(handed(optimism=open_above))
+    assert "pass at the set point lies above 99.7 % (95 %) if the model is right" in told
 
 
 def test_a_factor_without_margins_is_left_out():
     made = handed()
     line = margins_line(DEFINITION, handed(margins=made.margins[:2]))
     assert "Salt" not in line
+
+
+@pytest.mark.parametrize(
+    ("passes", "told"),
+    [
+        (3.98, "all of them"),
+        (3.94, "3 or 4 of them"),
+        (3.04, "3 of them"),
+        (2.97, "3 of them"),
+        (1.5, "1 or 2 of them"),
+        (0.3, "0 or 1 of them"),
+        (0.01, "none of them"),
+    ],
+)
+def test_wells_expected_to_pass_are_whole_ones(passes, told):
+    made = handed(optimism=replace(handed().optimism, expected_passes=passes))
+    said = proposal_text(made)
+    assert said.endswith(f"4 wells of a new plate, {told} expected to pass.")
 
 
 def test_facts_are_plain_values():

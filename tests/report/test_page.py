@@ -5,9 +5,11 @@ from __future__ import annotations
 import itertools
 import json
 import re
+from dataclasses import replace
 from importlib.resources import files
 from pathlib import Path
 
+import pandas as pd
 import pytest
 
 from muntin.record import open_study
@@ -144,6 +146,26 @@ def test_the_answer_is_three_sentences_with_the_numbers_of_the_facts(
     assert f"{share_text(window['share'])} of the range reaches" in told[1]
     assert f"{share_text(window['wrong_share'])} of the range may still" in told[1]
     assert told[2] == page.facts["plan"]["verdict"]["sentence"]
+
+
+def test_a_set_point_at_the_end_of_a_range_is_told_in_the_answer(page: Page) -> None:
+    window = page.basis.window
+    assert window is not None
+    moved = {"ph": 7.5, "salt": 250.0, "probability": 0.934}
+    basis = replace(page.basis, window=replace(window, share=0.2, setpoint=pd.Series(moved)))
+    assert answer(basis)[0].endswith("); the range ends at pH 7.5: no data lie beyond.")
+    none = replace(basis, window=replace(basis.window, share=0.0))
+    assert answer(none)[0].endswith("new wells pass; the range ends at pH 7.5: no data lie beyond.")
+    basis = replace(
+        page.basis, window=replace(basis.window, setpoint=pd.Series({**moved, "ph": 6.0}))
+    )
+    assert answer(basis)[0].endswith("(Recovery at least 0.8).")
+
+
+def test_no_line_ends_between_a_number_and_its_per_cent(page: Page) -> None:
+    text = re.sub(r"<(style|script|svg)\b.*?</\1>", "", page.html, flags=re.DOTALL)
+    assert len(re.findall("\\d\u00a0%", text)) > 20
+    assert not re.findall(r"\d\s+%", text.replace("\u00a0", ""))
 
 
 def test_what_was_asked_beforehand_is_told(read: Element) -> None:

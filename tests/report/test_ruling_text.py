@@ -11,7 +11,7 @@ from muntin.design.stopping import Ruling, rule_on
 from muntin.record.definition import StopRule
 from muntin.report.forecast_figure import draw_forecast
 from muntin.report.plan_text import forecast_table, no_set_point_line
-from muntin.report.ruling_text import ruling_facts, ruling_line
+from muntin.report.ruling_text import ruling_facts, ruling_line, wrong_share_texts
 from muntin.report.words import likely_text
 from tests.report.shown import shown
 from tests.studies import written
@@ -202,6 +202,19 @@ def test_table_of_the_forecast(tmp_path, stop, full, rows):
     plan = plan_of(Ruling(word="none", because="no rule"), forecast=forecast)
     table = forecast_table(written(tmp_path, stop=stop), plan, full)
     assert [" ".join(line.split()) for line in shown(table)] == [WELLS, *rows]
+
+
+def test_a_share_just_above_the_stop_rule_is_told_from_it(tmp_path):
+    forecast = FORECAST.assign(wrong_share=[0.0293, 0.02504, 0.0238, 0.02])
+    plan = plan_of(Ruling(word="none", because="no rule"), forecast=forecast)
+    ruled = written(tmp_path / "ruled", stop={"wrong_share": 0.025})
+    assert wrong_share_texts(ruled, plan) == ["2.9 %", "2.504 %", "2.4 %", "2.0 %"]
+    (row,) = [
+        " ".join(line.split()) for line in shown(forecast_table(ruled, plan)) if "may" in line
+    ]
+    assert row == "may be called wrongly 2.9 % 2.504 % 2.4 % 2.0 %"
+    other = written(tmp_path / "other", stop={"best_probability": 0.9})
+    assert wrong_share_texts(other, plan) == ["2.9 %", "2.5 %", "2.4 %", "2.0 %"]
 
 
 @pytest.mark.parametrize(

@@ -100,6 +100,17 @@ def test_window_in_words(view: Assessment, window: Window) -> None:
     ]
 
 
+def test_a_set_point_at_the_end_of_a_range_is_told_to_be_there(
+    view: Assessment, window: Window
+) -> None:
+    setpoint = pd.Series({"ph": 7.5, "salt": 300.0, "probability": 0.934})
+    lines = window_lines(view, replace(window, share=0.25, setpoint=setpoint, ranges=None))
+    assert lines[1] == (
+        "Set point: pH 7.5 and Salt 300 mM: 93.4 % of new wells pass. "
+        "The range ends at pH 7.5: no data lie beyond."
+    )
+
+
 def test_no_condition_inside(view: Assessment, window: Window) -> None:
     setpoint = pd.Series({"ph": 6.5, "salt": 300.0, "probability": 0.756})
     lines = window_lines(view, replace(window, share=0.0, setpoint=setpoint, ranges=None))

@@ -14,6 +14,7 @@ from muntin.report.words import (
     chance_text,
     condition_text,
     joined,
+    range_ends_text,
     ranges_text,
     reach_text,
     share_text,
@@ -52,6 +53,24 @@ def test_a_choice_that_begins_with_the_label_is_not_doubled() -> None:
 def test_ranges_name_a_single_level_once() -> None:
     ranges = {"ph": (5.0, 5.8), "salt": (100.0, 100.0), "resin": ("A", "A")}
     assert ranges_text(definition(), ranges) == "pH 5.0 to 5.8, salt 100 mM and resin A"
+
+
+@pytest.mark.parametrize(
+    ("ph", "salt", "text"),
+    [
+        (6.0, 250.0, ""),
+        (7.4, 490.0, ""),
+        (7.5, 250.0, "the range ends at pH 7.5: no data lie beyond"),
+        (4.5, 250.0, "the range ends at pH 4.5: no data lie beyond"),
+        (6.0, 496.0, "the range ends at salt 500 mM: no data lie beyond"),
+        (7.5, 50.0, "the ranges end at pH 7.5 and salt 50 mM: no data lie beyond"),
+    ],
+)
+def test_a_condition_at_the_end_of_a_range_is_told_to_be_there(
+    ph: float, salt: float, text: str
+) -> None:
+    condition = {"ph": ph, "salt": salt, "resin": "B"}
+    assert range_ends_text(definition(), condition) == text
 
 
 @pytest.mark.parametrize(

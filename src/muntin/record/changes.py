@@ -16,7 +16,7 @@ from typing import TYPE_CHECKING, Any
 import pandas as pd
 
 from muntin.record.asked import asked_changes, asked_of
-from muntin.record.faults import StudyFaults, counted, listed, number
+from muntin.record.faults import StudyFaults, counted, listed, number, quoted
 from muntin.record.inputs import hashes, read_inputs
 from muntin.record.ledger import Ledger, Line
 from muntin.record.readings import INFORMING, USED
@@ -42,13 +42,22 @@ class Changes:
         """One sentence for the screen; "" where nothing differs."""
         if not self.sentences:
             return ""
+        return (
+            f"CHANGED since {self.since}, and no reason was given: {self._first}. Say why with "
+            "--by NAME --because TEXT at the next muntin advise"
+        )
+
+    def explained(self, by: str, because: str) -> str:
+        """The same sentence once somebody says why; "" where nothing differs."""
+        if not self.sentences:
+            return ""
+        return f"Changed since {self.since}: {self._first}. Why: {quoted(because)} ({by})"
+
+    @property
+    def _first(self) -> str:
         rest = len(self.sentences) - _LIKE_IT
         more = f"; and {rest} more (muntin verify names all)" if rest > 0 else ""
-        return (
-            f"CHANGED since {self.since}, and no reason was given: "
-            f"{'; '.join(self.sentences[:_LIKE_IT])}{more}. Say why with --by NAME --because TEXT "
-            "at the next muntin advise"
-        )
+        return f"{'; '.join(self.sentences[:_LIKE_IT])}{more}"
 
 
 NO_CHANGES = Changes()

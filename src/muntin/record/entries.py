@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
+from dataclasses import replace
 from typing import Any
 
 from muntin.record.asked import asked_of
@@ -43,6 +44,14 @@ def entry_for(
         changes=study.changes.sentences,
         because=because,
     )
+
+
+def with_reason(study: Study, by: str | None, because: str | None) -> Study:
+    """Return a study that tells its changes with the reason now given, where one is."""
+    if by is None or because is None:
+        return study
+    told = {study.changes.notice: study.changes.explained(by, because)}
+    return replace(study, notices=tuple(told.get(said, said) for said in study.notices))
 
 
 def check_reason(study: Study, command: str, by: str | None, because: str | None) -> None:

@@ -112,11 +112,16 @@ def _without_line(
     lost, notes = [], []
     for name in left:
         shown = name.removesuffix(f"/{ADVICE_FILE}")
-        if ledger.texts and _written(folder / name) >= began:
+        if ledger.texts and (_names_a_line(folder / name) or _written(folder / name) >= began):
             lost.append(f"{shown} is on no line of {LEDGER}: its line was deleted or edited")
         else:
             notes.append(f"{shown} is on no line of {LEDGER}; it is older than that")
     return lost, notes
+
+
+def _names_a_line(path: Path) -> bool:
+    """Whether a record says itself which line tells of it."""
+    return isinstance(read_advice(path).get("ledger"), dict)
 
 
 def _written(path: Path) -> str:

@@ -51,12 +51,14 @@ def blank(
     return figure, Panels(grid.flat)
 
 
-def one_panel(axes: Axes | None, title: str, subtitle: str = "") -> tuple[Axes, bool]:
-    """Return the axes given, with the title above them, or those of a new figure; and whether it is
-    new.
+def one_panel(
+    axes: Axes | None, title: str, subtitle: str = "", height: float = SLIDE
+) -> tuple[Axes, bool]:
+    """Return the axes given, with the title above them, or those of a new figure of so many inches;
+    and whether it is new.
     """
     if axes is None:
-        return blank(title, subtitle)[1][0], True
+        return blank(title, subtitle, height)[1][0], True
     axes.set_title(_within(title, _width(axes) / _TITLE), loc="left", fontsize=10, color=INK)
     return axes, False
 

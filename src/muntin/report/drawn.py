@@ -58,11 +58,16 @@ class Drawn:
 
 
 def drawn(
-    figure: Figure, name: str, says: str, frames: Callable[[], tuple[Frame, ...]] = tuple
+    figure: Figure,
+    name: str,
+    says: str,
+    frames: Callable[[], tuple[Frame, ...]] = tuple,
+    slide: Figure | None = None,
 ) -> Drawn:
     """Return a figure as text and bytes, the same whenever it is drawn.
 
-    frames: gives the panels' places; asked once the SVG is drawn, which lays them out.
+    frames: gives the panels' places; asked once the SVG is drawn, which lays them out. slide: the
+    same in the shape of a slide, where the figure of the page has another.
     """
     title = figure.get_suptitle().splitlines()[:1]
     svg = inline_svg(saved(figure, "svg").decode(), name)
@@ -72,7 +77,7 @@ def drawn(
         title=title[0] if title else "",
         says=says,
         svg=svg,
-        png=saved(figure, "png", dpi=_SLIDE_DPI),
+        png=saved(slide or figure, "png", dpi=_SLIDE_DPI),
         frames=placed,
     )
 

@@ -48,7 +48,8 @@ def _standing(view: Assessment, plan: Plan | None) -> Iterator[Drawn]:
         return
     yield drawn(_of(joint(view)), "joint", words.joint_words(view))
     if view.window().sides:
-        yield drawn(_of(sides(view)), "sides", words.sides_words(view))
+        slide = _of(sides(view, slide=True))
+        yield drawn(_of(sides(view)), "sides", words.sides_words(view), slide=slide)
     if len(view.stacks) > 1:
         yield drawn(_of(together(view)[0]), "together", words.together_words(view))
     for factor in view.study.definition.factors:

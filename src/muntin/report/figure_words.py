@@ -14,7 +14,7 @@ from muntin.report.figures import figure_titles
 from muntin.report.joint_figure import joint_passes
 from muntin.report.plates_figure import repeated
 from muntin.report.protein_figure import protein_ledger
-from muntin.report.ruling_text import ruling_line
+from muntin.report.ruling_text import ruling_line, wrong_share_texts
 from muntin.report.sections import section
 from muntin.report.sides_figure import side_text
 from muntin.report.together_figure import tightest
@@ -85,7 +85,7 @@ def sides_words(view: Assessment) -> str:
         where = f"{word} {setting_text(factors[side.factor], side.at)}"
         split = ", " if side.response is not None else " "
         parts.append(f"{where}: {split.join(side_text(view, side))}")
-    return f"What fails first beyond the ranges that hold together. {'; '.join(parts)}."
+    return f"What fails first beyond the ranges that hold together, {'; '.join(parts)}."
 
 
 def together_words(view: Assessment) -> str:
@@ -136,9 +136,10 @@ def plates_words(view: Assessment, response: Response) -> str:
 
 def forecast_words(view: Assessment, plan: Plan) -> str:
     """Say what more test wells are expected to bring."""
+    shares = wrong_share_texts(view.study, plan)
     rows = [
-        f"{row['wells']} wells {100 * row['wrong_share']:.1f} %"
-        for row in plan.forecast.to_dict("records")
+        f"{wells} wells {share}"
+        for wells, share in zip(plan.forecast["wells"], shares, strict=True)
     ]
     return (
         f"Expected share of the range that may still be called wrongly: {', '.join(rows)}. "

@@ -23,6 +23,8 @@ from muntin.report.words import (
 from muntin.window.handover import HandOver, Margin, Repeat
 
 _ALL = 0.9995
+# A number of wells so near a whole one is told as that.
+_NEAR = 0.05
 _WAYS = {"low": "down", "high": "up"}
 
 
@@ -113,7 +115,15 @@ def proposal_text(handed: HandOver) -> str:
     what = "the set point" if handed.box is not None else "the best so far"
     wells, passes = handed.optimism.wells, handed.optimism.expected_passes
     asked = f"Repeat {what} before believing it: {counted(wells, 'well')} of a new plate"
-    return f"{asked}, {passes:.1f} of them expected to pass."
+    return f"{asked}, {_expected(wells, passes)} expected to pass."
+
+
+def _expected(wells: int, passes: float) -> str:
+    """Return "all of them", "3 of them" or "3 or 4 of them"."""
+    near = round(passes)
+    if abs(passes - near) < _NEAR:
+        return {0: "none of them", wells: "all of them"}.get(near, f"{near} of them")
+    return f"{int(passes)} or {int(passes) + 1} of them"
 
 
 def spread_text(handed: HandOver) -> str:
@@ -123,8 +133,9 @@ def spread_text(handed: HandOver) -> str:
     low, high = handed.optimism.low, handed.optimism.high
     if low is None or high is None:
         return ""
-    sure = low >= _ALL
-    shares = "above 99.9 %" if sure else f"between {share_text(low)} and {share_text(high)}"
+    shares = f"between {share_text(low)} and {share_text(high)}"
+    if high >= _ALL:
+        shares = f"above {share_text(min(low, _ALL - 0.0005))}"
     return (
         f"The share of new wells that pass at the set point lies {shares} (95 %) if the model is "
         "right; whether it is right where things look best, only a repeat can tell."

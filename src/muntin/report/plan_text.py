@@ -22,6 +22,7 @@ from muntin.record.factors import Factor
 from muntin.record.faults import counted
 from muntin.record.offers import without_measured
 from muntin.record.study import Study
+from muntin.report.ruling_text import wrong_share_texts
 from muntin.report.words import (
     UNSUPPORTED,
     WINDOW,
@@ -266,7 +267,7 @@ def forecast_table(study: Study, plan: Plan, full: bool = True) -> Table:
             digits = ".1f" if name == "days" else ".3g"
             of = f" of {left:.3g}" if name == "mg" and left is not None else ""
             table.add_row(label + of, *(f"{value:{digits}}" for value in forecast[name]))
-    table.add_row("may be called wrongly", *map(share_text, forecast["wrong_share"]))
+    table.add_row("may be called wrongly", *wrong_share_texts(study, plan))
     if forecast["set_point"].isna().all():
         return table
     asked = rule is not None and rule.best_probability is not None

@@ -93,7 +93,7 @@ def recorded_text(later: pd.DataFrame) -> str:
     then = [*dict.fromkeys(later["plate"][later["recorded"].astype(bool)])]
     now = [*dict.fromkeys(later["plate"][~later["recorded"].astype(bool)])]
     parts = [f"{joined(then)} as recorded beforehand"] if then else []
-    parts += [f"{joined(now)} computed now"] if now else []
+    parts += [f"{joined(now)} computed now, as if not yet run"] if now else []
     return f" ({', '.join(parts)}.)" if parts else ""
 
 

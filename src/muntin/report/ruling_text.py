@@ -65,6 +65,16 @@ def _figures(forecast: pd.DataFrame, rule: StopRule, wells: int) -> str:
     return "; ".join(parts)
 
 
+def wrong_share_texts(study: Study, plan: Plan) -> list[str]:
+    """Return the shares of a forecast that may be called wrongly, each so that it is told from what
+    the stop rule asks.
+    """
+    rule, shares = study.stopping.rule, plan.forecast["wrong_share"]
+    if rule is None or rule.wrong_share is None:
+        return [share_text(share) for share in shares]
+    return [beside(share, rule.wrong_share) for share in shares]
+
+
 def decision_facts(plan: Plan) -> dict[str, Any]:
     """Return the verdict on another plate as the ledger keeps it."""
     ruling = plan.ruling

@@ -8,7 +8,7 @@ import numpy as np
 
 from muntin.record.factors import Factor
 from muntin.report.canvas import finish, one_panel
-from muntin.report.style import INK, LINE, PAPER, QUIET
+from muntin.report.style import INK, LINE, PAPER, QUIET, SLIDE
 from muntin.report.words import axis_label, odds_text, setting_text
 from muntin.window.assessment import Assessment
 from muntin.window.limiting import Side
@@ -22,20 +22,29 @@ _TESTED = "#dfe4e6"
 _THIN, _NARROW = 0.012, 0.16
 # The bars take the middle of the panel; words stand to either side of them.
 _ENDS = (-0.58, 1.58)
+# Inches that a factor takes, and title and legend together.
+_ROW, _AROUND = 0.85, 1.25
+# Words of a slide, which has room, beside those of a page.
+_LARGER = 1.15
 
 
-def sides(view: Assessment, axes: Axes | None = None) -> Axes:
+def sides(view: Assessment, axes: Axes | None = None, *, slide: bool = False) -> Axes:
     """Draw, factor by factor, the tested range, the ranges that hold together, and at each end the
     response that is met least beyond it, with its probability alone.
 
-    Every factor's tested range is as wide as the panel's middle, on its own scale. Raises
-    ValueError where there are no ranges: no window, or factors without a range.
+    Every factor's tested range is as wide as the panel's middle, on its own scale. A new figure is
+    as high as its factors need, or has the shape of a slide. Raises ValueError where there are no
+    ranges: no window, or factors without a range.
     """
     window = None if view.fresh else view.window()
     if window is None or window.ranges is None or not window.sides:
         raise ValueError("there are no ranges that hold together, so they have no sides")
     factors = [f for f in view.study.definition.factors if f.continuous]
-    axes, new = one_panel(axes, "What fails first beyond the window", _subtitle(view, window))
+    title, height = (
+        "What fails first beyond the window",
+        SLIDE if slide else _AROUND + _ROW * len(factors),
+    )
+    axes, new = one_panel(axes, title, _subtitle(view, window), height)
     for row, factor in enumerate(factors):
         _factor(axes, view, window, factor, -float(row))
     axes.set(xlim=_ENDS, ylim=(-len(factors) + 0.45, 0.62), xticks=[])
@@ -43,6 +52,9 @@ def sides(view: Assessment, axes: Axes | None = None) -> Axes:
     axes.set_yticklabels([axis_label(f.label, f.unit) for f in factors], fontsize=9.5, color=INK)
     axes.tick_params(length=0)
     axes.spines[:].set_visible(False)
+    if slide:
+        for text in (*axes.texts, *axes.get_yticklabels()):
+            text.set_fontsize(_LARGER * float(text.get_fontsize()))
     return finish(axes, new)
 
 

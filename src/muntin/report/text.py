@@ -39,6 +39,7 @@ from muntin.report.words import (
     WINDOW,
     condition_text,
     labels,
+    range_ends_text,
     ranges_text,
     reach_text,
     share_text,
@@ -172,7 +173,9 @@ def _set_point(definition: Definition, window: Window) -> str:
     kept = definition.judged_by == "kept"
     where = condition_text(definition, window.setpoint.to_dict(), kept)
     passes = success_text(definition, float(window.setpoint["probability"]))
-    return f"{'Set point' if window.share else 'The best so far'}: {where}: {passes}."
+    ends = range_ends_text(definition, window.setpoint.to_dict())
+    told = f"{'Set point' if window.share else 'The best so far'}: {where}: {passes}."
+    return f"{told} {_capital(ends)}." if ends else told
 
 
 def _stop(view: Assessment, window: Window) -> list[str]:

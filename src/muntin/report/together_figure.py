@@ -23,7 +23,7 @@ if TYPE_CHECKING:
 _JUDGED = {
     "mean": "process mean",
     "well": "new wells",
-    "kept": "new wells, factors kept within ±",
+    "kept": "new wells, factors\nkept within ±",
 }
 
 

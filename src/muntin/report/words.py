@@ -30,6 +30,23 @@ def condition_text(definition: Definition, condition: Mapping[Any, Any], kept: b
     return joined([setting_text(f, condition[f.name], kept) for f in definition.factors])
 
 
+def range_ends_text(definition: Definition, condition: Mapping[Any, Any]) -> str:
+    """Return "the range ends at pH 7.5: no data lie beyond", or "" where no factor of a condition
+    is within half a bench step of an end of its range.
+    """
+    there = []
+    for factor in definition.factors:
+        if factor.continuous:
+            low, high, step = factor.span
+            value = float(condition[factor.name])
+            ends = [end for end in (low, high) if abs(value - end) < 0.5 * step]
+            there += [setting_text(factor, end) for end in ends[:1]]
+    if not there:
+        return ""
+    what = "the range ends" if len(there) == 1 else "the ranges end"
+    return f"{what} at {joined(there)}: no data lie beyond"
+
+
 def ranges_text(definition: Definition, ranges: Mapping[str, tuple[Any, Any]]) -> str:
     """Return ranges that hold together, such as "pH 5.0 to 5.8 and Salt 100 to 300 mM"."""
     texts = []

@@ -21,7 +21,7 @@ from muntin.report.plan_text import (
     usual_reason,
     why_text,
 )
-from muntin.report.ruling_text import ruling_line
+from muntin.report.ruling_text import ruling_line, wrong_share_texts
 from muntin.report.words import amount_text, likely_text, odds_text, per_cent, share_text
 
 if TYPE_CHECKING:
@@ -74,11 +74,12 @@ def _forecast(study: Study, plan: Plan) -> Table:
         *(["set point passes", reaches] if told else []),
     ]
     rows = []
-    for row in forecast.to_dict("records"):
+    wrong = wrong_share_texts(study, plan)
+    for row, share in zip(forecast.to_dict("records"), wrong, strict=True):
         today = not row["wells"]
         cells = [f"{row[name]:{_AMOUNTS[name][1]}}" for name in taken]
         cells += [f"{row['days']:.1f}"] if "days" in forecast else []
-        cells += [share_text(row["wrong_share"])]
+        cells += [share]
         if told:
             reached = row["reached"]
             chance_of = ("yes" if reached else "no") if today else likely_text(reached)

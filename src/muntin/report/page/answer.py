@@ -14,6 +14,7 @@ from muntin.report.words import (
     chance_text,
     condition_text,
     labels,
+    range_ends_text,
     ranges_text,
     share_text,
     success_text,
@@ -69,14 +70,16 @@ def _holds(basis: Basis, window: Window) -> str:
     where = condition_text(
         definition, window.setpoint.to_dict(), kept=definition.judged_by == "kept"
     )
+    ends = range_ends_text(definition, window.setpoint.to_dict())
+    ends = f"; {ends}" if ends else ""
     early = ""
     if view.awaited:
         early = f"Provisional, as {labels(definition, view.awaited)} is not read yet: "
     if window.share:
-        return f"{early}{where}: {passes} ({targets})."
+        return f"{early}{where}: {passes} ({targets}){ends}."
     required = chance_text(definition.required_probability)
     no = f"no condition reaches the required probability of {required} ({targets})"
-    best = f"the best so far is {where}, where {passes}"
+    best = f"the best so far is {where}, where {passes}{ends}"
     return f"{early}{no if early else no[:1].upper() + no[1:]}; {best}."
 
 

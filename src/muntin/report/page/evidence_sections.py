@@ -154,6 +154,6 @@ def _with_and_without(basis: Basis) -> tuple[str, ...]:
         return (f"They cannot be put back to see what they change. {back.unknown}".strip(),)
     count = len(back.values)
     what = "1 reading" if count == 1 else f"{count} readings"
-    now = () if window is None else (f"As used, without: {standing_text(basis.view, window)}.",)
+    now = () if window is None else (f"As it stands: {standing_text(basis.view, window)}.",)
     by = "" if basis.view.engine == "fast" else ", by the engine fast"
     return (*now, f"With {what} put back{by}: {standing_text(basis.view, back.window)}.")

@@ -26,6 +26,7 @@ def page_html(basis: Basis, sections: Sequence[Section]) -> str:
         autoescape=True,
         undefined=StrictUndefined,
         keep_trailing_newline=True,
+        finalize=_unbroken,
     )
     maps = basis.figures("map")
     standing = standing_word(basis)
@@ -46,6 +47,11 @@ def page_html(basis: Basis, sections: Sequence[Section]) -> str:
 
 def _day_and_time(written_at: str) -> str:
     return f"{datetime.fromisoformat(written_at):%Y-%m-%d, %H:%M} UTC"
+
+
+def _unbroken(value: object) -> object:
+    """Text in which no line ends between a number and its per cent; markup as it is."""
+    return value.replace(" %", "\u00a0%") if type(value) is str else value
 
 
 def _own(name: str) -> Markup:
