@@ -31,8 +31,8 @@ def told(folder, name: str, cells=BOTH, plates=()) -> str:
 @pytest.mark.parametrize("cells", [BOTH, LETTERS, UNLETTERED, TITLED])
 def test_an_unknown_fraction(tmp_path, cells):
     assert told(tmp_path, "plate-01_stripp_280.csv", cells) == (
-        'plate-01_stripp_280.csv, a grid by its content: "stripp" in its name is not a fraction of '
-        f'[assay]; did you mean "strip"? {ONE}'
+        'reads/plate-01_stripp_280.csv, a grid by its content: "stripp" in its name is not a '
+        f'fraction of [assay]; did you mean "strip"? {ONE}'
     )
 
 
@@ -56,13 +56,13 @@ def test_an_unknown_fraction(tmp_path, cells):
     ],
 )
 def test_what_is_not_understood(tmp_path, name, said):
-    assert told(tmp_path, name) == f"{name}, a grid by its content: {said} {ONE}"
+    assert told(tmp_path, name) == f"reads/{name}, a grid by its content: {said} {ONE}"
 
 
 def test_the_plate_may_not_be_left_out_where_there_are_several(tmp_path):
     assert told(tmp_path, "e1_280.csv", plates=("plate-02",)) == (
-        'e1_280.csv, a grid by its content: "e1" in its name stands without its plate, of which '
-        f"there are several ({HINT}plate-01, plate-02; fractions: load, ft, e1, strip)"
+        'reads/e1_280.csv, a grid by its content: "e1" in its name stands without its plate, of '
+        f"which there are several ({HINT}plate-01, plate-02; fractions: load, ft, e1, strip)"
     )
 
 

@@ -161,9 +161,9 @@ def test_a_mapped_column_that_is_not_there(tmp_path):
     assert lines_of(
         tmp_path, reads=(HEADING.replace("well", "Pos"), *READS), columns={"well": "Posn"}
     ) == [
-        'all.csv: has no column Posn (assay, columns, well; did you mean "Pos"?)',
-        "all.csv: has no column well (a tidy table has the headings well, fraction, wavelength, "
-        "absorbance, and plate where there are several ([assay.columns] names your own); a grid is "
+        'reads/all.csv: has no column Posn (assay, columns, well; did you mean "Pos"?)',
+        "reads/all.csv: has no column well (a tidy table has the headings well, fraction, "
+        "wavelength, absorbance, and plate where there are several ([assay.columns] names your own); a grid is "
         "named PLATE_FRACTION_WAVELENGTH.csv, such as plate-01_strip_280.csv)",
     ]
 
@@ -177,15 +177,15 @@ def test_all_faults_of_a_table_at_once(tmp_path):
         "A1,e1,280,0.5,0.2",
     )
     assert lines_of(tmp_path, reads=(HEADING, *READS, *wrong)) == [
-        'all.csv, row 16, column well: "Z9" is not a well of a 96-well plate (A1 to H12)',
-        'all.csv, row 17, column fraction: "e7" is not a fraction of [assay] '
+        'reads/all.csv, row 16, column well: "Z9" is not a well of a 96-well plate (A1 to H12)',
+        'reads/all.csv, row 17, column fraction: "e7" is not a fraction of [assay] '
         "(known: load, ft, e1, strip)",
-        "all.csv, row 18, column wavelength: 208 is none of the wavelengths of [assay] "
+        "reads/all.csv, row 18, column wavelength: 208 is none of the wavelengths of [assay] "
         "(known: 280, 320, 350, 900, 977 nm)",
-        'all.csv, row 19: "dark" is not a number (write ">" and the limit, or "over", where the '
-        "reader could not tell)",
-        "all.csv, row 20, column dilution: 0.2 must be at least 1, the factor by which the sample "
-        "was diluted",
+        'reads/all.csv, row 19: "dark" is not a number (write ">" and the limit, or "over", where '
+        "the reader could not tell)",
+        "reads/all.csv, row 20, column dilution: 0.2 must be at least 1, the factor by which the "
+        "sample was diluted",
     ]
 
 
@@ -327,3 +327,38 @@ def test_neither_the_order_of_rows_nor_the_number_of_files_matters(tmp_path, ord
     for name, quantity in plain.quantities.items():
         np.testing.assert_allclose(mixed.quantities[name].value, quantity.value, rtol=1e-12)
         np.testing.assert_allclose(mixed.quantities[name].total, quantity.total, rtol=1e-12)
+
+
+def test_reads_in_thousandths_are_one_fault_a_file(tmp_path):
+    cells = [row.split(",") for row in READS]
+    thousands = [f"{w},{f},{nm},{1000 * float(a):g},{d}" for w, f, nm, a, d in cells]
+    assert lines_of(tmp_path, reads=(HEADING, *thousands)) == [
+        "reads/all.csv, row 2, column absorbance: 450 lies above 10 AU, more than a reader tells, "
+        "and 13 more reads of this file (reads are taken in AU: 1000 mAU are 1)"
+    ]
+
+
+def test_samples_read_again_are_told_and_averaged(tmp_path):
+    again = reduced(tmp_path, reads=(HEADING, *READS, "A1,e1,280,1.070,"))
+    assert again.notices[-1] == (
+        "plate-01: 1 sample with several reads at one dilution, whose mean is taken (A1 e1 280 nm)"
+    )
+    once = reduced(tmp_path / "once", reads=(HEADING, *READS, "B2,e1,280,0.370,5"))
+    assert not [notice for notice in once.notices if "several reads" in notice]
+
+
+def test_a_load_far_from_what_was_made_is_told(tmp_path):
+    def told(name, strength):
+        folder = write(tmp_path / name)
+        with (folder / "study.toml").open("a") as stream:
+            stream.write(f"\n[bench]\nprotein_mg_per_ml = {strength}\n")
+        study = open_study(folder, reducing=True)
+        notices = reduce_reads(study, folder / "reads").notices
+        return [notice for notice in notices if "protein_mg_per_ml" in notice]
+
+    # 0.4 AU above the blank at 1:5: 2 mg/mL.
+    assert told("as made", 2.2) == []
+    assert told("tenfold", 0.2) == [
+        "plate-01: the load reads 2 mg/mL, 10 times the protein_mg_per_ml of [bench] (0.2): are "
+        "dilution, path and extinction right?"
+    ]

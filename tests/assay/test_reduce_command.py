@@ -140,7 +140,7 @@ def test_the_screen_says_what_matters(tmp_path):
         "14 reads on 1 plate, 3 wells reduced.",
         "eluates over load.",
         "It is in no recovery_sd.",
-        "priors = { scale_error = { median = 0.0",
+        "priors.scale_error = { median = 0.0",
         "plate-01, none for B2: its table holds 0.55, the reads give 0.6000.",
         "Flags take nothing out.",
     ):
@@ -149,8 +149,7 @@ def test_the_screen_says_what_matters(tmp_path):
 
 def test_the_line_that_tells_the_model_is_a_prior_of_the_study(tmp_path):
     study = write(tmp_path)
-    screen = " ".join(run("reduce", study, "reads").output.split())
-    line = re.search(r"priors = .*? \} \}", screen)[0]
+    (line,) = re.findall(r"priors\.scale_error = .*\}", run("reduce", study, "reads").output)
     path = study / "study.toml"
     path.write_text(path.read_text().replace("[[responses]]\n", f"[[responses]]\n{line}\n"))
     facts = json.loads(run("reduce", study, "reads", "--json").stdout)

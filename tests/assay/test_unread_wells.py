@@ -29,7 +29,8 @@ def test_a_well_that_was_left_out_needs_no_read(tmp_path):
 
 def test_a_well_read_under_the_name_of_another_of_the_table(tmp_path):
     """B2 went by the name of A1: its reads would be averaged with those of A1 without a word."""
-    (told,) = reduced(tmp_path, reads=renamed("B2", "A1")).notices
+    told, averaged = reduced(tmp_path, reads=renamed("B2", "A1")).notices
+    assert "with several reads at one dilution, whose mean is taken (A1 " in averaged
     assert told == (
         "plate-01: wells of the plate table without reads: B2 (test); A1 has more reads of one "
         "sample than others: is a well misnamed?"

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import re
 from collections import Counter
-from collections.abc import Mapping, Sequence
+from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass, replace
 from pathlib import Path
 
@@ -14,12 +14,14 @@ from muntin.assay.grids import GridName, grid_name, name_fault, read_grid
 from muntin.assay.mapping import mapped
 from muntin.record.assay import READ_COLUMNS, Assay
 from muntin.record.cells import CellError, parse_number
-from muntin.record.faults import Fault, Findings, counted, did_you_mean, quoted
+from muntin.record.faults import Fault, Findings, counted, did_you_mean, listed, number, quoted
 from muntin.record.tables import Table, missing_column, read_table, table_files
 from muntin.record.wells import WellError, last_well, well_name
 
 _NEEDED = ("well", "fraction", "wavelength", "absorbance")
 _OVER = re.compile(r"(?:>|≥)=?\s*(.*)|over", re.IGNORECASE)
+# No plate reader tells more absorbance than this, AU.
+_MOST_AU = 10.0
 _ONE_IN = re.compile(r"1\s*:\s*(.+)")
 
 
@@ -74,6 +76,7 @@ def read_reads(path: Path, asked: Asked, found: Findings) -> list[Read]:
         found.faults.append(Fault(file=str(path), problem=problem))
     reads: list[Read] = []
     volumes: dict[tuple[str, str, str], float] = {}
+    before = len(found.faults)
     for file in files:
         name = grid_name(file.stem, asked.plates, asked.fractions)
         if name is not None:
@@ -84,7 +87,14 @@ def read_reads(path: Path, asked: Asked, found: Findings) -> list[Read]:
             reads += _tidy(file, asked, found)
         else:
             found.faults.append(fault)
-    return _weighed(_once(reads, found), volumes)
+    found.faults.extend(_too_high(reads))
+    if path.is_dir():
+        # A plate table may bear the same name.
+        added = [replace(f, file=f"{path.name}/{f.file}") for f in found.faults[before:]]
+        found.faults[before:] = added
+    kept = _once(reads, found)
+    found.notices.extend(_repeated(kept))
+    return _weighed(kept, volumes)
 
 
 def _grid(
@@ -265,6 +275,38 @@ def _check_stage(table: Table, row: int, fraction: str, asked: Asked, found: Fin
     if cell and fraction and cell not in (kind, fraction.lower()):
         problem = f"is not the stage of {fraction}, which is {kind}"
         found.faults.append(table.fault(row, "stage", problem, hint="study.toml, assay, stages"))
+
+
+def _too_high(reads: Sequence[Read]) -> Iterator[Fault]:
+    """Yield a fault a file that holds more absorbance than there can be."""
+    by_file: dict[str, list[Read]] = {}
+    for read in reads:
+        if read.absorbance > _MOST_AU:
+            by_file.setdefault(read.file, []).append(read)
+    for file, here in by_file.items():
+        rest = f", and {counted(len(here) - 1, 'more read')} of this file" if here[1:] else ""
+        yield Fault(
+            file=file,
+            where=here[0].where,
+            column="absorbance",
+            value=number(here[0].absorbance),
+            problem=f"lies above {number(_MOST_AU)} AU, more than a reader tells{rest}",
+            hint="reads are taken in AU: 1000 mAU are 1",
+        )
+
+
+def _repeated(reads: Sequence[Read]) -> Iterator[str]:
+    """Yield what was read more than once at one dilution, by plate."""
+    times = Counter((r.plate, r.well, r.fraction, r.wavelength, r.dilution) for r in reads)
+    by_plate: dict[str, list[str]] = {}
+    for (plate, well, fraction, wavelength, _), count in times.items():
+        if count > 1:
+            by_plate.setdefault(plate, []).append(f"{well} {fraction} {wavelength:g} nm")
+    for plate, samples in by_plate.items():
+        yield (
+            f"{plate}: {counted(len(samples), 'sample')} with several reads at one dilution, whose "
+            f"mean is taken ({listed(samples, most=3)})"
+        )
 
 
 def _once(reads: list[Read], found: Findings) -> list[Read]:

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Iterator, Mapping
 from dataclasses import dataclass
 from pathlib import Path
 
@@ -10,7 +10,7 @@ import numpy as np
 
 from muntin.assay.censoring import Recovery, censored
 from muntin.assay.flags import Flag, Judged, flags
-from muntin.assay.inputs import Inputs
+from muntin.assay.inputs import Inputs, load_of
 from muntin.assay.reads import Asked, Read, read_reads
 from muntin.assay.samples import plate_inputs
 from muntin.assay.uncertainty import (
@@ -23,13 +23,15 @@ from muntin.assay.uncertainty import (
 )
 from muntin.assay.unread_wells import well_notices
 from muntin.record.assay import Assay, FixedWell
-from muntin.record.faults import Fault, Findings, StudyFaults, did_you_mean
+from muntin.record.faults import Fault, Findings, StudyFaults, did_you_mean, number
 from muntin.record.readings import INFORMING
 from muntin.record.responses import Response
 from muntin.record.study import Study
 from muntin.record.tables import natural_order
 
 _STUDY = "study.toml"
+# A load farther off than this factor is hardly what was made.
+_LOAD_OFF = 1.25
 
 
 @dataclass(frozen=True, kw_only=True, slots=True, eq=False)
@@ -149,9 +151,24 @@ def _reduced(
         here = [read for read in reads if read.plate == plate and read.well in run]
         inputs = plate_inputs(plate, wells, here, assay, study.definition.fixed_well, found)
         if inputs is not None:
+            found.notices.extend(_load_notice(study, plate, float(load_of(inputs, assay, {}))))
             rng = np.random.default_rng([seed, index])
             plates.append(reduce_plate(inputs, study, draws, rng))
     return plates
+
+
+def _load_notice(study: Study, plate: str, mg_per_ml: float) -> Iterator[str]:
+    """Yield a word where the load reads otherwise than [bench] has it."""
+    expected = study.definition.bench.protein_mg_per_ml
+    if expected is None or not np.isfinite(mg_per_ml):
+        return
+    ratio = mg_per_ml / expected
+    if not 1.0 / _LOAD_OFF <= ratio <= _LOAD_OFF:
+        yield (
+            f"{plate}: the load reads {mg_per_ml:.3g} mg/mL, {ratio:.2g} times the "
+            f"protein_mg_per_ml of [bench] ({number(expected)}): are dilution, path and "
+            "extinction right?"
+        )
 
 
 def reduce_plate(

@@ -218,19 +218,22 @@ def _shared(reduction: Reduction) -> list[str]:
     by = shared_facts(plate, reduction.assay)["shared_by"]
     most = sorted(by, key=lambda name: -by[name])[:3]
     name = reduction.response.name
-    own = "scale_error" in reduction.response.priors
-    told = (
-        f"The study has a prior of its own for the scale error of {name}; compare it."
-        if own
-        else f"To tell the model, put into [[responses]] of {name}: "
-        f"priors = {{ scale_error = {{ median = {scale:.3f}, log_sd = {_PRIOR_LOG_SD} }} }}"
-    )
     return [
         f"Wells of a plate read high or low together by {100 * scale:.1f} % (standard "
         f"uncertainty), most of it by {', '.join(_words(one) for one in most)}. It is in no "
         f"{name}_sd.",
-        told,
+        *_prior(name, scale, [*reduction.response.priors]),
     ]
+
+
+def _prior(name: str, scale: float, own: Sequence[str]) -> list[str]:
+    """How the study is told of the scale error: a line that can be copied."""
+    if "scale_error" in own:
+        return [f"The study has a prior of its own for the scale error of {name}; compare it."]
+    line = f"scale_error = {{ median = {scale:.3f}, log_sd = {_PRIOR_LOG_SD} }}"
+    if own:
+        return [f"To tell the model, put into the priors of {name} in study.toml:", line]
+    return [f"To tell the model, put into [[responses]] of {name}:", f"priors.{line}"]
 
 
 def _words(source: str) -> str:
