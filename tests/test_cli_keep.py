@@ -226,3 +226,16 @@ def test_the_same_edit_of_an_advised_plan_gives_the_same_plan(tmp_path: Path) ->
     results = [run("propose", folder, "--keep", path, "--json", *QUICK) for _ in range(2)]
     first, second = (json.loads(result.stdout)["plan"] for result in results)
     assert first == second
+
+
+def test_what_cannot_be_planned_is_told_before_the_fit(
+    study: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    def fitted(*_: object, **__: object) -> None:
+        raise AssertionError("fitted first")
+
+    monkeypatch.setattr("muntin.window.assessment.assess", fitted)
+    result = run("propose", study, "--wells", 500)
+    assert result.exit_code == 1
+    assert "500" in result.stderr
+    assert "fitted first" not in result.output

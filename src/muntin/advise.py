@@ -6,7 +6,7 @@ from collections.abc import Callable, Mapping
 from dataclasses import asdict, dataclass, replace
 from pathlib import Path
 
-from muntin.bench.plan import Plan, propose
+from muntin.bench.plan import Plan, check_plan, propose
 from muntin.design.weighing import Aim
 from muntin.record import Study, open_study
 from muntin.record.entries import check_reason, entry_for, with_reason
@@ -126,6 +126,7 @@ def find(
 ) -> Found:
     """Assess a study and plan its next plate; nothing is written. Raises StudyFaults."""
     engine, seed = settings.engine, settings.seed
+    check_plan(study, settings.wells)
     tell("" if progress and engine == "nuts" else "fitting the readings")
     view = assess(study, surrogate=settings.surrogate, engine=engine, seed=seed, progress=progress)
     window = None if view.fresh else view.window()

@@ -163,8 +163,8 @@ def test_a_mapped_column_that_is_not_there(tmp_path):
     ) == [
         'reads/all.csv: has no column Posn (assay, columns, well; did you mean "Pos"?)',
         "reads/all.csv: has no column well (a tidy table has the headings well, fraction, "
-        "wavelength, absorbance, and plate where there are several ([assay.columns] names your own); a grid is "
-        "named PLATE_FRACTION_WAVELENGTH.csv, such as plate-01_strip_280.csv)",
+        "wavelength, absorbance, and plate where there are several ([assay.columns] names your "
+        "own); a grid is named PLATE_FRACTION_WAVELENGTH.csv, such as plate-01_strip_280.csv)",
     ]
 
 

@@ -92,7 +92,7 @@ def propose(
     if aim not in AIMS:
         raise ValueError(f"aim {aim!r} is none of {', '.join(AIMS)}")
     plate = next_plate(view.study)
-    asked, stocks = _asked(view, wells, plate, keep)
+    asked, stocks = _asked(view.study, view.fresh, wells, plate, keep)
     found = None if asked.kept is None else edited(view, asked.kept, plate)
     terms = _terms(view.study, asked, stocks)
     selection = _selected(view, asked, aim, seed, terms)
@@ -123,18 +123,26 @@ def next_plate(study: Study) -> str:
     return f"plate-{max(numbers, default=0) + 1:02d}"
 
 
+def check_plan(study: Study, wells: int | None = None, keep: str | Path | None = None) -> None:
+    """Raise StudyFaults where `propose` would for what is kept, stocks and room; nothing need be
+    fitted for it.
+    """
+    fresh = not any(len(study.readings(r.name)) for r in study.definition.judged)
+    _asked(study, fresh, wells, next_plate(study), keep)
+
+
 def _asked(
-    view: Assessment, wells: int | None, plate: str, keep: str | Path | None
+    study: Study, fresh: bool, wells: int | None, plate: str, keep: str | Path | None
 ) -> tuple[Asked, tuple[Stock, ...]]:
     """Read what is kept and the stocks, and look for room; every fault comes in one report."""
-    study, found = view.study, Findings()
+    found = Findings()
     stocks = planned_stocks(study.folder, study.definition, plate, found)
     kept = None if keep is None else read_plan(Path(keep), study, plate, stocks, found)
     if keep is None:
         for factor in study.definition.factors:
             if factor.continuous:
                 check_stocks(factor, stocks, found)
-    asked = asked_of(study.definition, wells, _WELLS, kept, view.fresh)
+    asked = asked_of(study.definition, wells, _WELLS, kept, fresh)
     readable = keep is None or kept is not None
     faults = [*found.faults, *(room_faults(study, asked) if readable else [])]
     if faults:

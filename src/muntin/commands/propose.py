@@ -58,6 +58,7 @@ def propose(
     engine: EngineOption = Engine.fast,
 ) -> Output:
     """Plan the next plate: conditions at final wells, each with a reason; write it to plans/."""
+    from muntin.bench.plan import check_plan
     from muntin.bench.plan import propose as plan_next
     from muntin.record import open_study
     from muntin.report.facts import plan_facts, study_facts
@@ -67,6 +68,7 @@ def propose(
     _check_words(keep, because)
     tell("reading the study")
     study = open_study(folder)
+    check_plan(study, wells, keep)
     bar = tell.fitting(engine)
     view = assess(study, surrogate=surrogate.value, engine=engine.value, seed=seed, progress=bar)
     tell("planning the next plate")
