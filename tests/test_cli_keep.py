@@ -236,6 +236,6 @@ def test_what_cannot_be_planned_is_told_before_the_fit(
 
     monkeypatch.setattr("muntin.window.assessment.assess", fitted)
     result = run("propose", study, "--wells", 500)
-    assert result.exit_code == 1
+    assert result.exit_code == 2
     assert "500" in result.stderr
     assert "fitted first" not in result.output
