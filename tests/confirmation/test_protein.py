@@ -77,7 +77,10 @@ def test_without_the_tables_it_is_not_known() -> None:
     definition = Definition.model_validate(tables(factors=[PH, LOAD]))
     offered, notices = within_reserve(definition, SPOTS, 0.0)
     assert offered == SPOTS
-    assert notices == ["Whether the protein reaches is not known: study.toml has no [columns]."]
+    assert notices == [
+        "Whether the protein reaches is not known: study.toml had no [columns] when the runs were "
+        "planned; once it has, muntin confirm --again plans them anew."
+    ]
     assert run_mg(definition, SPOTS[0]) is None
 
 

@@ -160,6 +160,8 @@ def test_values_are_shown_with_the_decimals_of_the_step():
     ph, salt = factor(low=4.5, high=7.5, step=0.1), factor(low=50, high=500, step=10)
     assert [ph.shown(v) for v in (6, 6.1, 6.08)] == ["6.0", "6.1", "6.08"]
     assert [salt.shown(v) for v in (250, 92.07)] == ["250", "92.07"]
+    assert [ph.shown(v) for v in (5.98133, 7.9999996, 6.5)] == ["5.981", "8.0", "6.5"]
+    assert [salt.shown(v) for v in (322.6667, 280.5)] == ["322.67", "280.5"]
 
 
 def test_a_label_is_not_repeated_by_its_choice():

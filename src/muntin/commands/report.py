@@ -87,4 +87,4 @@ def report(
     written = write_page(study.folder, place, page, entry)
     files = [str(path) for path in written.paths]
     facts = {**page.facts, "ledger": written.ledger, "files": files}
-    return Output(facts, page_screen(page, written.paths), remarks=written.remarks)
+    return Output(facts, page_screen(page, study, written.paths), remarks=written.remarks)

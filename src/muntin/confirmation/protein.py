@@ -34,7 +34,10 @@ def within_reserve(
     notices = [] if len(spots) == _RUNS else ["The window has too few conditions for two edges."]
     if definition.columns is None or definition.protein is None:
         table = "[columns]" if definition.columns is None else "[protein]"
-        notices.append(f"Whether the protein reaches is not known: study.toml has no {table}.")
+        notices.append(
+            f"Whether the protein reaches is not known: study.toml had no {table} when the runs "
+            "were planned; once it has, muntin confirm --again plans them anew."
+        )
         return turns, notices
     reserve = definition.protein.reserved_mg
     left, offered = reserve - used_mg, list[Spot]()

@@ -140,12 +140,16 @@ class Factor(Keys):
         return kept
 
     def shown(self, value: Any) -> str:
-        """Return a value (raw unit) as the bench writes it: 6.0 where steps are 0.1; no unit."""
+        """Return a value (raw unit) as the bench writes it: 6.0 where steps are 0.1; no unit. One
+        off the steps has up to two digits more.
+        """
         if self.choices is not None:
             return str(value)
         low, _, step = self.span
-        text = f"{float(value):.{max(_decimals(low), _decimals(step))}f}"
-        return text if abs(float(text) - float(value)) < 1e-9 else f"{float(value):.6g}"
+        digits = max(_decimals(low), _decimals(step))
+        rounded = round(float(value), digits + 2)
+        texts = (f"{rounded:.{more}f}" for more in range(digits, digits + 3))
+        return next(text for text in texts if float(text) == rounded)
 
     def named(self, shown: str) -> str:
         """Return label and value, "pH 6.0"; a choice that begins with the label has it already."""

@@ -28,7 +28,9 @@ _RUN: dict[str, dict[str, Any]] = {
 
 
 def mark_run(axes: Axes, table: pd.DataFrame, x: str, y: str) -> None:
-    """Mark conditions that were run: filled passed, open failed, half filled between."""
+    """Mark conditions that were run: filled passed, open failed, half filled between; whole ones
+    beyond the border too, where a well measured up to a step outside the range.
+    """
     for verdict, look in _RUN.items():
         here = table[table["verdict"] == verdict]
         if len(here):
@@ -42,6 +44,7 @@ def mark_run(axes: Axes, table: pd.DataFrame, x: str, y: str) -> None:
                 markeredgewidth=1.1,
                 path_effects=halo(3.0),
                 label="run" if verdict == "tracked" else f"run, {verdict}",
+                clip_on=False,
                 zorder=4,
                 **look,
             )
