@@ -47,6 +47,14 @@ def test_failures_come_first_and_what_passed_is_counted() -> None:
     ]
 
 
+def test_a_check_with_too_few_readings_is_not_called_passed() -> None:
+    few = Check("lack of fit", True, True, "Too few repeats.", told=False)
+    assert check_lines((GOOD, few)) == [
+        "Passed, 1 of 2: coverage; too few readings to tell: lack of fit.",
+        "Nine of ten readings lie inside.",
+    ]
+
+
 def checks_of(*failed: tuple[str, str]) -> tuple[Check, ...]:
     return tuple(
         Check(name, (label, name) not in failed, False, f"{label}: {name} said.", response)

@@ -287,6 +287,7 @@ def sound_view(tmp_path_factory):
 def test_repeats_that_are_too_few_are_said(tmp_path):
     found, _ = checks(tmp_path, SOUND, "quadratic")
     assert found["lack of fit"].passed
+    assert not found["lack of fit"].told
     assert found["lack of fit"].sentence == (
         "Recovery: too few repeats to tell lack of fit from noise (no repeat; 3 are enough)."
     )

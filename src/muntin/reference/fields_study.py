@@ -115,6 +115,7 @@ _CHECKS = {
     "checks[].name": "which check",
     "checks[].response": "response that it is about, empty for all",
     "checks[].passed": "whether it passed",
+    "checks[].told": "whether the readings are enough to tell; where not, it counts as passed",
     "checks[].serious": "whether the window is not supported where it fails",
     "checks[].sentence": "what it found",
 }

@@ -84,6 +84,7 @@ def _check(check: Check) -> Facts:
         "name": check.name,
         "response": check.response,
         "passed": check.passed,
+        "told": check.told,
         "serious": check.serious,
         "sentence": check.sentence,
     }

@@ -107,7 +107,8 @@ def few(
 def check_lines(
     checks: Sequence[Check], told: Sequence[str] = (), labels: Mapping[str, str] | None = None
 ) -> list[str]:
-    """Return the checks of the model: failures first, then the names of those that passed.
+    """Return the checks of the model: failures first, then the names of those that passed, and of
+    those for which the readings are too few.
 
     `told` are sentences that stand elsewhere on the screen; here their checks are only named.
     `labels` are those of the responses, by name; where they are few, the coverage of each is said,
@@ -120,10 +121,12 @@ def check_lines(
     lines = lines if below else []
     said = [c for c in failed if c.sentence not in told]
     lines += [f"{'FAILED' if c.serious else 'Note'} ({c.name}): {c.sentence}" for c in said]
-    passed = [c for c in checks if c.passed]
+    passed = [c for c in checks if c.passed and c.told]
+    few_read = [c for c in checks if c.passed and not c.told]
+    untold = f"; too few readings to tell: {_named(few_read, checks, labels)}" if few_read else ""
     if passed:
         names = _named(passed, checks, labels)
-        lines.append(f"Passed, {len(passed)} of {len(checks)}: {names}.")
+        lines.append(f"Passed, {len(passed)} of {len(checks)}: {names}{untold}.")
     if len(labels) <= _FEW:
         lines += [c.sentence for c in passed if c.name in _SAID]
     return lines

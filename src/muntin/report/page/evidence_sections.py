@@ -11,8 +11,9 @@ from muntin.report.page.basis import Basis
 from muntin.report.page.blocks import Section, Table
 from muntin.report.page.phrases import heading, measure, settings
 from muntin.report.page.put_back import standing_text
+from muntin.window.checks.check import Check
 
-_VERDICTS = {(True, True): "passed", (True, False): "passed", (False, False): "note"}
+_OPEN = "too few"
 
 
 def predicted_section(basis: Basis) -> Section:
@@ -96,13 +97,12 @@ def checks_section(basis: Basis) -> Section:
     checks = sorted(basis.view.checks(), key=lambda c: (c.passed, not c.serious))
     if not checks:
         return Section(name="checks", title="Checks of the model")
-    rows = tuple(
-        (check.name, _VERDICTS.get((check.passed, check.serious), "FAILED"), check.sentence)
-        for check in checks
+    rows = tuple((check.name, _verdict(check), check.sentence) for check in checks)
+    passed, open_, notes, failed = (
+        sum(row[1] == verdict for row in rows) for verdict in ("passed", _OPEN, "note", "FAILED")
     )
-    failed = sum(row[1] == "FAILED" for row in rows)
-    notes = sum(row[1] == "note" for row in rows)
-    count = f"{len(rows) - failed - notes} passed, {notes} with a note, {failed} failed."
+    untold = f"{open_} with too few readings to tell, " if open_ else ""
+    count = f"{passed} passed, {untold}{notes} with a note, {failed} failed."
     return Section(
         name="checks",
         title="Checks of the model",
@@ -113,6 +113,12 @@ def checks_section(basis: Basis) -> Section:
             ),
         ),
     )
+
+
+def _verdict(check: Check) -> str:
+    if check.passed:
+        return "passed" if check.told else _OPEN
+    return "FAILED" if check.serious else "note"
 
 
 def left_out_section(basis: Basis) -> Section:

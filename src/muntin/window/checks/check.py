@@ -8,7 +8,8 @@ from dataclasses import dataclass
 @dataclass(frozen=True)
 class Check:
     """What was checked, whether it passed, whether a failure withdraws support from the window,
-    what was found in one sentence, and the name of the response, or None where it is of all.
+    what was found in one sentence, the name of the response, or None where it is of all, and
+    whether the readings are enough to tell; where they are not, it counts as passed.
     """
 
     name: str
@@ -16,3 +17,4 @@ class Check:
     serious: bool
     sentence: str
     response: str | None = None
+    told: bool = True

@@ -30,7 +30,7 @@ def lack_of_fit(response: Response, stack: Stack) -> list[Check]:
             f"{response.label}: too few repeats to tell lack of fit from noise ({repeats}; "
             f"{_FEWEST} are enough)."
         )
-        return [Check("lack of fit", True, True, sentence, response.name)]
+        return [Check("lack of fit", True, True, sentence, response.name, told=False)]
     tail = float(stack.shares @ [f.tail for f in found])
     needed = float(np.exp(stack.shares @ np.log([f.needed for f in found])))
     passed = tail >= _LEVEL

@@ -65,7 +65,7 @@ def other_plates(study: Study, response: Response, stack: Stack, seed: int) -> l
             f"{response.label}: the plates have too little in common to check one by the others; "
             "bridging wells would tell."
         )
-        return [Check("other plates", True, True, sentence, response.name)]
+        return [Check("other plates", True, True, sentence, response.name, told=False)]
     others = "plate" if len(found) == 2 else "plates"
     told = f"{hits} of {len(pit)} readings lie in the 90 % range predicted from the other {others}"
     if off:
