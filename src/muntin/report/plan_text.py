@@ -30,7 +30,8 @@ from muntin.report.words import (
     axis_label,
     condition_text,
     joined,
-    narrow_chance,
+    likely_text,
+    narrow,
     per_cent,
     share_text,
 )
@@ -267,16 +268,16 @@ def forecast_table(study: Study, plan: Plan, full: bool = True) -> Table:
             digits = ".1f" if name == "days" else ".3g"
             of = f" of {left:.3g}" if name == "mg" and left is not None else ""
             table.add_row(label + of, *(f"{value:{digits}}" for value in forecast[name]))
-    table.add_row("may be called wrongly", *wrong_share_texts(study, plan))
+    table.add_row("may be called wrongly", *map(narrow, wrong_share_texts(study, plan)))
     if forecast["set_point"].isna().all():
         return table
     asked = rule is not None and rule.best_probability is not None
     if full or not asked:
-        table.add_row("set point passes", *map(share_text, forecast["set_point"]))
+        table.add_row("set point passes", *(narrow(share_text(p)) for p in forecast["set_point"]))
     if full or asked:
         reaches = f"chance set point reaches {per_cent(asked_of_set_point(study))}"
         today, *then = forecast["reached"]
-        table.add_row(reaches, "yes" if today else "no", *map(narrow_chance, then))
+        table.add_row(reaches, "yes" if today else "no", *(narrow(likely_text(p)) for p in then))
     return table
 
 

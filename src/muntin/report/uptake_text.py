@@ -16,7 +16,7 @@ from muntin.assay.uptake_remarks import Remark
 from muntin.record.faults import counted, number
 from muntin.report.text import Section, sheet
 from muntin.report.uptake_facts import gain_of_longer, within
-from muntin.report.words import narrow_chance
+from muntin.report.words import likely_text, narrow
 
 _LOAD = "mg/mL resin"
 _HINT = "No contact time is planned: --at MIN, or planned_min in [uptake] of study.toml."
@@ -100,7 +100,7 @@ def _laws(uptake: Uptake, planned: float | None) -> Table:
         rate = within(grid, grid.law.rates(grid.half_time, grid.takes)).median
         table.add_row(
             grid.law.name,
-            narrow_chance(weight),
+            narrow(likely_text(weight)),
             *loads,
             f"{three_digits(time.median)} ({span})",
             three_digits(rate),

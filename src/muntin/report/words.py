@@ -88,9 +88,9 @@ def likely_text(chance: float) -> str:
     return f"{100 * chance:.0f} %"
 
 
-def narrow_chance(chance: float) -> str:
-    """Return the same as short as a narrow column needs it: ">99 %"."""
-    return likely_text(chance).replace("over ", ">").replace("under ", "<")
+def narrow(text: str) -> str:
+    """Return a share or a chance as short as a narrow column needs it: ">99 %"."""
+    return text.replace("over ", ">").replace("under ", "<")
 
 
 def chance_text(probability: float) -> str:
