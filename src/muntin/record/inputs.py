@@ -48,5 +48,17 @@ def hashes(inputs: Mapping[str, bytes]) -> dict[str, str]:
 
 
 def versions() -> dict[str, str]:
-    """Return the versions that the numbers depend on."""
-    return {"python": platform.python_version()} | {name: version(name) for name in _PACKAGES}
+    """Return the versions that the numbers depend on, and for which kind of processor the linear
+    algebra is made, since others round otherwise.
+    """
+    made = {"python": platform.python_version()} | {name: version(name) for name in _PACKAGES}
+    return made | {"processor": _processor()}
+
+
+def _processor() -> str:
+    import numpy  # noqa: F401 - it loads the linear algebra that is asked
+    from threadpoolctl import threadpool_info
+
+    blas = [pool for pool in threadpool_info() if pool["user_api"] == "blas"]
+    kinds = {str(pool.get("architecture") or "") for pool in blas}
+    return " ".join([platform.machine(), *sorted(kinds - {""})])

@@ -96,7 +96,7 @@ REDUCTION = Part(
         "inputs": "SHA-256 of each input file",
         "inputs.<file>": "SHA-256 of the file",
         "versions": "versions that the numbers depend on",
-        "versions.<package>": "version of a package, or of python",
+        "versions.<package>": "version of a package or of python, or the kind of processor",
         "reads": "SHA-256 of each file of reads",
         "reads.<file>": "SHA-256 of the file",
     },

@@ -10,7 +10,7 @@ _BOTH = Part(
         "written_at": "time of writing, UTC",
         "by": "who asked for it, as named by --by; null where nobody was",
         "versions": "versions that the numbers depend on",
-        "versions.<package>": "version of a package, or of python",
+        "versions.<package>": "version of a package or of python, or the kind of processor",
         "inputs": "SHA-256 of each input file",
         "inputs.<file>": "SHA-256 of the file",
         "changes": "what differs from earlier advice",
@@ -102,7 +102,7 @@ _LEDGER = Part(
         "inputs": "SHA-256 of each file that it read",
         "inputs.<file>": "SHA-256 of the file",
         "versions": "versions that the numbers depend on",
-        "versions.<package>": "version of a package, or of python",
+        "versions.<package>": "version of a package or of python, or the kind of processor",
         "asked": "what study.toml asked for: targets, factors, priors, required probability; empty "
         "where the command does not judge by it",
         "asked.<key>": "key of study.toml, or its entries by name",
