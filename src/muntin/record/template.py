@@ -35,7 +35,7 @@ from muntin.record.uptake_keys import UptakeKeys
 
 _APART = "stages"
 _STUDY = {"title": "Invented example: elution of a protein from a resin", "plate": 96}
-_STUDY |= {"required_probability": 0.90, "judged_by": "well"}
+_STUDY |= {"required_probability": 0.90}
 _FACTORS: tuple[dict[str, Any], ...] = (
     {"name": "elution_ph", "label": "Elution pH", "low": 4.5, "high": 7.5, "step": 0.1},
     {"name": "salt", "label": "Salt", "unit": "mM", "low": 0, "high": 500, "step": 10},

@@ -15,8 +15,8 @@ def threads_for(latents: int) -> Iterator[None]:
     if latents > _SMALL:
         yield
         return
-    # A library that is loaded later would not be held to it, and the first fit would round otherwise
-    # than those after it.
+    # A library that is loaded later would not be held to it, and the first fit would round
+    # otherwise than those after it.
     import scipy.linalg  # noqa: F401
     from threadpoolctl import threadpool_limits
 
