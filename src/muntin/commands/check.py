@@ -3,11 +3,14 @@
 from __future__ import annotations
 
 from pathlib import Path
-from typing import Annotated
+from typing import TYPE_CHECKING, Annotated
 
 import typer
 
 from muntin.commands.shared import Folder, Output, command
+
+if TYPE_CHECKING:
+    from muntin.record import Study
 
 _Out = Annotated[
     Path | None,
@@ -15,10 +18,17 @@ _Out = Annotated[
 ]
 
 
+def _reach(study: Study) -> str:
+    if not study.definition.bench.held:
+        return ""
+    from muntin.bench.reach import reach_notice
+
+    return reach_notice(study.definition)
+
+
 @command
 def check(folder: Folder, out: _Out = None) -> Output:
     """Read a study and name every fault at once: file, row or well, column and the mend."""
-    from muntin.bench.reach import reach_notice
     from muntin.commands.conditions import check_out, write_table
     from muntin.record import open_study
     from muntin.record.column_runs import read_columns
@@ -33,7 +43,7 @@ def check(folder: Folder, out: _Out = None) -> Output:
         check_out(out, None, study.folder)
     lines, plans = plans_on_record(study)
     columns = read_columns(study.folder, study.definition)
-    reach = reach_notice(study.definition)
+    reach = _reach(study)
     if out is not None:
         write_table(as_read(study.definition, study.wells), out)
     facts = {
