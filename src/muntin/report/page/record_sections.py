@@ -87,7 +87,10 @@ def provenance_section(basis: Basis) -> Section:
         ("written at", facts["written_at"]),
         *([("written by", facts["by"])] if facts["by"] else []),
         *((name, str(value)) for name, value in settings.items()),
-        *((f"version of {name}", value) for name, value in facts["versions"].items()),
+        *(
+            (name if name == "processor" else f"version of {name}", value)
+            for name, value in facts["versions"].items()
+        ),
     ]
     made = Table(caption="How it was made", head=("what", "value"), rows=tuple(rows))
     hashed = Table(
