@@ -328,8 +328,8 @@ def test_stocks_and_notes_of_a_planned_plate_wait(make):
     )
     assert [plate.name for plate in study.plates] == ["plate-01"]
     assert study.notices[:2] == (
-        "plates/plate-02.toml is not used yet: plate-02 is planned, not run",
-        "stocks/plate-02.csv is not used yet: plate-02 is planned, not run",
+        "plates/plate-02.toml is not used yet, as plate-02 is planned and not run",
+        "stocks/plate-02.csv is not used yet, but for its plan, as plate-02 is planned and not run",
     )
 
 

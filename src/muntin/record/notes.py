@@ -81,7 +81,8 @@ def _check_repeats(plate: Plate, names: list[str], found: Findings) -> None:
 def not_run(folder: Path, plate: str, file: str, names: list[str], found: Findings) -> None:
     """Note a file about a plate that is planned, or report one about a plate nobody knows."""
     if any((folder / "plans" / f"{plate}{end}").is_file() for end in (".csv", ".xlsx")):
-        found.notices.append(f"{file} is not used yet: {plate} is planned, not run")
+        until = "but for its plan, " if file.startswith("stocks/") else ""
+        found.notices.append(f"{file} is not used yet, {until}as {plate} is planned and not run")
         return
     found.faults.append(
         Fault(
