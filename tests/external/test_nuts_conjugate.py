@@ -18,6 +18,8 @@ from muntin.surrogate.nuts import Nuts, sample
 from muntin.surrogate.priors import LogNormal
 from tests.external.flat import Chosen, flat_model
 
+pytestmark = pytest.mark.slow
+
 DATA = Path(__file__).parent / "data"
 TERMS = ((), (2,), (0,), (1,), (0, 1), (0, 0), (1, 1))
 SD = np.array([10.0, 5.0, 2.0, 2.0, 2.0, 2.0, 2.0])

@@ -26,7 +26,7 @@ ASKED = conditions((5.0, 150), (6.0, 250), (7.5, 450), (6.27, 318))
 
 
 @pytest.mark.parametrize("surrogate", ["gp", "quadratic"])
-@pytest.mark.parametrize("clouded", [True, False])
+@pytest.mark.parametrize("clouded", [True, pytest.param(False, marks=pytest.mark.slow)])
 def test_drawn_surfaces_have_the_mean_and_the_variance_of_the_posterior(
     tmp_path: Path, surrogate: Surrogate, clouded: bool
 ) -> None:

@@ -70,8 +70,15 @@ def log_density(model, at):
 
 
 @pytest.mark.parametrize("name", ["gp", "quadratic"])
-@pytest.mark.parametrize("kind", ["fraction", "real"])
-@pytest.mark.parametrize("noise", ["normal", "student"])
+@pytest.mark.parametrize(
+    ("kind", "noise"),
+    [
+        ("fraction", "normal"),
+        ("real", "student"),
+        pytest.param("fraction", "student", marks=pytest.mark.slow),
+        pytest.param("real", "normal", marks=pytest.mark.slow),
+    ],
+)
 def test_log_density_is_that_of_the_statement(name, kind, noise):
     model = problem(name, kind)
     symbolic = pymc_model(model, noise)

@@ -10,7 +10,7 @@ import muntin
 from muntin.window.checks import Check
 from tests.window.planted import Plant, study
 
-SEEDS = (1, 2, *(pytest.param(seed, marks=pytest.mark.slow) for seed in range(3, 9)))
+SEEDS = (1, *(pytest.param(seed, marks=pytest.mark.slow) for seed in range(2, 9)))
 RIGHT = {
     "outlier": "wild wells",
     "plate": "other plates",
