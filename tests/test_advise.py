@@ -68,7 +68,8 @@ def test_files_of_an_advice(study: Path) -> None:
         "seed": 1,
     }
     assert facts["engine"] == "fast"
-    assert set(facts["versions"]) == {"muntin", "python", "numpy", "scipy", "pandas"}
+    names = {"muntin", "python", "numpy", "scipy", "pandas", "processor"}
+    assert set(facts["versions"]) == names
 
 
 def test_advice_says_what_the_plan_says(study: Path) -> None:
@@ -188,6 +189,7 @@ def crowded(folder: Path) -> Path:
     return write(folder, files)
 
 
+@pytest.mark.slow
 def test_screen_fits_40_lines_of_100_columns_even_when_crowded(tmp_path: Path) -> None:
     lines = screen(crowded(tmp_path), "--wells", "12")
     assert len(lines) <= 40

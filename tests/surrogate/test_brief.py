@@ -21,7 +21,7 @@ def chances(fitted):
     return mean_meets(fitted.surface, fitted.surface.latent(X), Target(low=0.8))
 
 
-@pytest.mark.parametrize("make", [both_errors, few_wells])
+@pytest.mark.parametrize("make", [pytest.param(both_errors, marks=pytest.mark.slow), few_wells])
 def test_a_brief_fit_says_nearly_what_the_whole_fit_says(make):
     """On 32 nodes a round against 256 or more: within 0.01 on average and 0.05 at the worst."""
     away = np.abs(chances(stack(make(), 32)) - chances(stack(make())))

@@ -185,6 +185,7 @@ def test_no_cloud_of_uneven_weights(monkeypatch):
     assert cloud_of(model, posterior, "logit", 1000, 1) is None
 
 
+@pytest.mark.slow
 def test_mixtures_join_their_clouds():
     trial = few_wells()
     surfaces = [
