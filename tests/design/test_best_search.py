@@ -10,6 +10,7 @@ from tests.benchmarks.best import CASES, NOISE_SD, empty, play
 SEEDS = range(8)
 
 
+@pytest.mark.slow
 def test_best_finds_more_of_branin_than_as_many_wells_at_random():
     # After 12 + 6 + 6 wells half of the searches come within half the noise of one well; with a
     # criterion upside down or idle they do not, though they begin with the same opening plate.

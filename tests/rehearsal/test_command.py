@@ -169,6 +169,7 @@ def test_plates_without_room_are_a_fault(study: Path) -> None:
     assert "plates, plate 1: 90 test wells are more than a plate has room for" in result.stderr
 
 
+@pytest.mark.slow
 def test_before_any_reading_labs_are_played(tmp_path: Path) -> None:
     folder = write(tmp_path, {"study.toml": STUDY})
     (folder / "plates").mkdir()

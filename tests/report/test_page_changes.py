@@ -67,6 +67,7 @@ def test_open_changes_and_reasons_are_told(study: Path) -> None:
     assert (row["why"], row["what was changed"]) == (HOSTILE, OPEN.partition(": ")[2][:-1])
 
 
+@pytest.mark.slow
 def test_changes_of_the_stop_rule_are_told(study: Path) -> None:
     told = section(page_of(study, wells=0))
     assert told is not None

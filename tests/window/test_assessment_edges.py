@@ -42,6 +42,7 @@ def test_a_plan_does_not_break_where_only_a_tracked_response_was_read(tmp_path):
     assert (plan.wells["role"] == "test").sum() == 4
 
 
+@pytest.mark.slow
 def test_p_kept_over_three_tolerances(tmp_path):
     factors = [
         {**PH, "kept_within": 0.2},
