@@ -53,6 +53,7 @@ def test_a_check_with_too_few_readings_is_not_called_passed() -> None:
         "Passed, 1 of 2: coverage; too few readings to tell: lack of fit.",
         "Nine of ten readings lie inside.",
     ]
+    assert check_lines((few,)) == ["Too few readings to tell: lack of fit."]
 
 
 def checks_of(*failed: tuple[str, str]) -> tuple[Check, ...]:

@@ -122,10 +122,8 @@ def _reads(judged: Judged) -> Iterator[Flag]:
     for i, j in np.argwhere(inputs.states != "read").tolist():
         kind, text = said[str(inputs.states[i, j])]
         if kind == "below_range" and above[i, j] < -_FAR_BELOW * assay.blank_sd:
-            kind, text = (
-                "below_blank",
-                f"{-above[i, j]:.3f} AU below its blank, as one that was not read",
-            )
+            kind = "below_blank"
+            text = f"{-above[i, j]:.3f} AU below its blank, as one that was not read"
         yield judged.flag(kind, text, i, assay.fractions[j])
 
 

@@ -123,10 +123,13 @@ def check_lines(
     lines += [f"{'FAILED' if c.serious else 'Note'} ({c.name}): {c.sentence}" for c in said]
     passed = [c for c in checks if c.passed and c.told]
     few_read = [c for c in checks if c.passed and not c.told]
-    untold = f"; too few readings to tell: {_named(few_read, checks, labels)}" if few_read else ""
+    counts = []
     if passed:
-        names = _named(passed, checks, labels)
-        lines.append(f"Passed, {len(passed)} of {len(checks)}: {names}{untold}.")
+        counts.append(f"Passed, {len(passed)} of {len(checks)}: {_named(passed, checks, labels)}")
+    if few_read:
+        counts.append(f"too few readings to tell: {_named(few_read, checks, labels)}")
+    if counts:
+        lines.append(_capital("; ".join(counts)) + ".")
     if len(labels) <= _FEW:
         lines += [c.sentence for c in passed if c.name in _SAID]
     return lines
