@@ -309,7 +309,9 @@ def test_the_mix_is_the_one_of_the_sheets(
     salt: float, stocks: Any, floor: float, step: float
 ) -> None:
     keys = {**BENCH, "stocks": stocks, "pipette_floor_ul": floor, "pipette_step_ul": step}
-    definition = Definition.model_validate(tables() | {"bench": keys})
+    # Steps of 10 mM: where the pipette's are large the best mix may come out too far off.
+    factors = [PH, {**SALT, "low": 0, "high": 900, "step": 10}]
+    definition = Definition.model_validate(tables(factors=factors) | {"bench": keys})
     held = {"ph": 5.5, "salt": salt}
     mixes, mix = mixes_of(definition, held), Mixer(definition).mix(held)
     shares = poured(definition, mixes)
