@@ -9,7 +9,7 @@ from typing import Any
 import numpy as np
 import pandas as pd
 import pytest
-from hypothesis import given, settings
+from hypothesis import example, given, settings
 from hypothesis import strategies as st
 
 from muntin.bench.mixing import Mix, Mixer
@@ -304,6 +304,8 @@ def test_levels_are_those_of_the_volumes_poured_together(
     st.sampled_from([None, 5, 60, 200]),
     st.sampled_from([0.5, 5.0, 60.0]),
 )
+# Of seven steps of 60 µL low and mid make 86 mM, which is too far off; low and high make 71.
+@example(70.0, (LOW, {**MID, "holds": {"salt": 300}}, HIGH), 5, 60.0)
 @settings(deadline=None, derandomize=True, max_examples=120)
 def test_the_mix_is_the_one_of_the_sheets(
     salt: float, stocks: Any, floor: float, step: float
